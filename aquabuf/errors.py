@@ -9,8 +9,12 @@ AquabufError
 Every message says the subject, the rule, the value found and the remedy.
 """
 
-import numpy as np
-import numpy.typing as npt
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+if TYPE_CHECKING:  # numpy is slow to import; the command line must start fast
+    import numpy as np
 
 __all__ = ["AquabufError", "FileError", "HeaderError", "InputError", "InputRangeError"]
 
@@ -26,9 +30,9 @@ class InputError(AquabufError, ValueError):
 class InputRangeError(InputError):
     """Readings outside the range of a method; `mask` marks the offending rows."""
 
-    def __init__(self, message: str, mask: npt.ArrayLike):
+    def __init__(self, message: str, mask: np.ndarray):
         super().__init__(message)
-        self.mask = np.asarray(mask, dtype=bool)
+        self.mask = mask
 
 
 class HeaderError(InputError):

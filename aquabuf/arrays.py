@@ -1,0 +1,18 @@
+"""Small helpers for arrays whose rows do not see each other."""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+__all__ = ["as_rows", "common_shape"]
+
+
+def common_shape(*values: ArrayLike) -> tuple[int, ...]:
+    """Shape to which all `values` broadcast; a ValueError of numpy's where they do not."""
+    return np.broadcast_shapes(*(np.shape(v) for v in values))
+
+
+def as_rows(value: ArrayLike, shape: tuple[int, ...]) -> NDArray[np.float64]:
+    """`value` as a float array of `shape`, read-only when it was stretched."""
+    return np.broadcast_to(np.asarray(value, dtype=float), shape)

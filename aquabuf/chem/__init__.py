@@ -1,0 +1,1 @@
+"""Facts of water chemistry: constants, activity, acids, ions, gases. Nothing is solved here."""

@@ -1,0 +1,1 @@
+"""Equilibrium: conditions, balance, solution, water, buffering, exchange, solids, mixing. Arrays in, arrays out."""
