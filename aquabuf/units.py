@@ -11,14 +11,13 @@ Every other dimension (temperature, pressure, flow ...) is a group of its own wi
 
 from __future__ import annotations
 
-import csv
 import re
 from dataclasses import dataclass, replace
 from functools import cache
-from pathlib import Path
 from typing import Any
 
 from aquabuf.errors import InputError
+from aquabuf.tables import read_table
 
 __all__ = [
     "Substance",
@@ -29,12 +28,10 @@ __all__ = [
     "key",
     "linear",
     "parse_unit",
-    "read_table",
     "substances",
     "to_house",
 ]
 
-_DATA = Path(__file__).parent / "data"
 CONCENTRATIONS = {"amount", "alkalinity", "hardness", "mass"}
 EQUIVALENTS_PER_MOL = {"CaCO3": 2.0, "CaO": 2.0}  # bases that count acid-binding equivalents, not atoms
 _SAMPLE_CHARGE = {"alkalinity": 1.0, "hardness": 2.0}
@@ -76,12 +73,6 @@ class Unit:
 _BASIS_UNITS = {"g_l", "mg_l", "ug_l", "g_kg", "mg_kg", "ug_kg"}
 
 
-def read_table(name: str) -> list[dict[str, str]]:
-    """Rows of a shipped table in `aquabuf/data`; lines starting with '#' are remarks."""
-    text = (_DATA / name).read_text(encoding="utf-8")
-    return list(csv.DictReader(line for line in text.splitlines() if not line.startswith("#")))
-
-
 def key(text: str) -> str:
     """Plain form of a header or unit: lower case, ASCII, words joined by '_' ("µS/cm" -> "us_cm")."""
     text = _PER.sub(r"/\1", text.translate(_MICRO_AND_SMALL).lower())
@@ -95,7 +86,7 @@ def substances() -> dict[str, Substance]:
         row["name"]: Substance(
             row["name"], row["formula"], float(row["molar_mass_g"]), int(row["charge"]) if row["charge"] else None
         )
-        for row in read_table("ions.csv")
+        for row in read_table("ions")
     }
 
 
@@ -122,13 +113,14 @@ def molar_mass_of(formula: str) -> float:
 def _group(group: str) -> dict[str, Unit]:
     """Units of one group by every plain spelling."""
     found: dict[str, Unit] = {}
-    for row in read_table("units.csv"):
+    for row in read_table("units"):
         if row["group"] != group:
             continue
         unit = Unit(
             group, row["kind"], row["unit"], row["suffix"], float(row["scale"]), float(row["offset"]),
             row["per_kg"] == "yes", row["basis"],
         )  # fmt: skip
+        found[row["unit"]] = unit  # "-" and "°" have no plain form
         for spelling in (row["suffix"], key(row["unit"]), *row["spellings"].split(";")):
             if spelling:
                 found[spelling] = unit
@@ -161,8 +153,9 @@ def parse_unit(text: str, dimension: str) -> Unit | None:
     """
     units = _group(_group_name(dimension))
     plain = key(text)
-    if plain in units:
-        return units[plain]
+    known = units.get(text.strip()) or units.get(plain)
+    if known:
+        return known
     bare, basis = _split_basis(plain)
     unit = units.get(bare)
     if unit is None or not basis or unit.suffix not in _BASIS_UNITS:

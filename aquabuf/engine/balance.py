@@ -123,9 +123,17 @@ def protons_lost(alpha: Sequence[Array]) -> Array:
 
 def moments(alpha: Sequence[Array]) -> tuple[Array, Array, Array]:
     """Mean, variance and third central moment of the number of protons lost. [-]"""
+    if len(alpha) == 2:
+        base = alpha[1]
+        variance = alpha[0] * base
+        return base, variance, variance * (alpha[0] - base)
     mean = protons_lost(alpha)
-    variance = sum((a * (j - mean) ** 2 for j, a in enumerate(alpha)), start=np.zeros_like(mean))
-    third = sum((a * (j - mean) ** 3 for j, a in enumerate(alpha)), start=np.zeros_like(mean))
+    variance = third = np.zeros_like(mean)
+    for j, a in enumerate(alpha):
+        off = j - mean
+        part = a * off * off
+        variance = variance + part
+        third = third + part * off
     return mean, variance, third
 
 

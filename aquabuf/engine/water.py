@@ -1,0 +1,457 @@
+"""`Water`: the engine for a Python user. Scalars or arrays in, arrays of their common shape out."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Sequence
+from difflib import get_close_matches
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from aquabuf.arrays import as_rows, common_shape
+from aquabuf.chem import gases, seasalt
+from aquabuf.chem.acids import Acid, acid_named, acid_table
+from aquabuf.engine import buffer, precipitate
+from aquabuf.engine.conditions import FRESH_BELOW, Conditions, conditions
+from aquabuf.engine.pairs import solve_pair
+from aquabuf.engine.state import CARBONATE_FORMS, PH_SCALES, Dissolved, Exchange, State
+from aquabuf.engine.status import OUT_OF_RANGE, STATUS_WORDS
+from aquabuf.errors import InputError, InputRangeError
+
+__all__ = ["BORON_OF_SEAWATER", "IONS", "Water", "mix"]
+
+Array = NDArray[np.float64]
+
+IONS = ("calcium", "magnesium", "sodium", "potassium")  # that pair with carbonate and sulfate
+BORON_OF_SEAWATER = {"uppstrom": seasalt.boron_uppstrom, "lee": seasalt.boron_lee}
+SUFFIX = "_mol_l"
+
+
+class Water:
+    """One or many waters with their acid-base equilibrium solved; read-only.
+
+    Make one with `from_ph_alkalinity`, `from_alkalinity_dic`, `from_ph_dic`, `from_alkalinity_pco2`, `from_ph_pco2`
+    or `from_dic_pco2`. All take, beside their pair:
+
+    t_c : temperature, 0 to 50. [°C]
+    salinity : practical, 0 to 50; below 1 the water is fresh, from 1 on it is marine. [-]
+    ionic_strength_mol_l : of fresh rows; without it the larger of what salinity and alkalinity imply. [mol/L]
+    pressure_atm : air pressure. [atm]
+    <acid>_mol_l : total of a weak acid of the shipped table or of `acids`, such as phosphate_mol_l. Boron, sulfate
+        and fluoride that are not given (or nan) come from salinity in marine rows. [mol/L]
+    calcium_mol_l, magnesium_mol_l, sodium_mol_l, potassium_mol_l : for calcium carbonate. Calcium from salinity in
+        marine rows where not given. [mol/L]
+    acids : the user's own `Acid` records.
+    carbonic, boron_ratio : marine constant set ("millero" or "lueker") and boron ratio ("uppstrom" or "lee").
+
+    One bad row never stops or changes another: see `status`, and `status_words` for its meaning. Raises InputError
+    only for unknown names and shapes that do not fit.
+    """
+
+    def __init__(self, state: State, shape: tuple[int, ...], options: dict):
+        self._state = state
+        self._shape = shape
+        self._options = options
+
+    # ---------------------------------------------------------------- making one
+
+    @classmethod
+    def from_ph_alkalinity(cls, *, ph: ArrayLike, alkalinity_eq_l: ArrayLike, ph_scale: str = "meter", **water) -> Water:
+        """Water of known pH (on `ph_scale`: meter, total, seawater, free) and alkalinity [eq/L]."""
+        return _make(cls, {"ph": ph, "alkalinity": alkalinity_eq_l}, ph_scale, **water)
+
+    @classmethod
+    def from_alkalinity_dic(cls, *, alkalinity_eq_l: ArrayLike, dic_mol_l: ArrayLike, **water) -> Water:
+        """Water of known alkalinity [eq/L] and total inorganic carbon [mol/L]."""
+        return _make(cls, {"alkalinity": alkalinity_eq_l, "dic": dic_mol_l}, **water)
+
+    @classmethod
+    def from_ph_dic(cls, *, ph: ArrayLike, dic_mol_l: ArrayLike, ph_scale: str = "meter", **water) -> Water:
+        """Water of known pH (on `ph_scale`) and total inorganic carbon [mol/L]."""
+        return _make(cls, {"ph": ph, "dic": dic_mol_l}, ph_scale, **water)
+
+    @classmethod
+    def from_alkalinity_pco2(cls, *, alkalinity_eq_l: ArrayLike, pco2_atm: ArrayLike, **water) -> Water:
+        """Water of known alkalinity [eq/L] in equilibrium with a CO2 pressure [atm]."""
+        return _make(cls, {"alkalinity": alkalinity_eq_l, "pco2": pco2_atm}, **water)
+
+    @classmethod
+    def from_ph_pco2(cls, *, ph: ArrayLike, pco2_atm: ArrayLike, ph_scale: str = "meter", **water) -> Water:
+        """Water of known pH (on `ph_scale`) and CO2 pressure [atm]."""
+        return _make(cls, {"ph": ph, "pco2": pco2_atm}, ph_scale, **water)
+
+    @classmethod
+    def from_dic_pco2(cls, *, dic_mol_l: ArrayLike, pco2_atm: ArrayLike, **water) -> Water:
+        """Water of known total inorganic carbon [mol/L] and CO2 pressure [atm]."""
+        return _make(cls, {"dic": dic_mol_l, "pco2": pco2_atm}, **water)
+
+    # ---------------------------------------------------------------- what it is
+
+    def _out(self, rows: NDArray) -> NDArray:
+        return rows.reshape(self._shape)
+
+    @property
+    def shape(self) -> tuple[int, ...]:
+        """Common shape of what was given."""
+        return self._shape
+
+    @property
+    def status(self) -> NDArray[np.int8]:
+        """0 solved, 1 solved outside a constant's range, negative not solved; see `status_words`."""
+        return self._out(self._state.status)
+
+    @property
+    def status_words(self) -> NDArray[np.str_]:
+        """Status of each row in words."""
+        words = np.array([STATUS_WORDS[int(s)] for s in self._state.status] or [""])
+        return self._out(words[: self._state.status.size])
+
+    def require_solved(self) -> Water:
+        """This water, if every row is solved. Raises InputRangeError whose `mask` marks the rows that are not."""
+        bad = self.status < 0
+        if bad.any():
+            first = int(self._state.status[np.flatnonzero(bad.ravel())[0]])
+            hint = " Is a temperature in °F?" if first == OUT_OF_RANGE else ""
+            raise InputRangeError(f"{int(bad.sum())} of {bad.size} waters are not solved; first: row "
+                                  f"{int(np.flatnonzero(bad.ravel())[0])}, {STATUS_WORDS[first]}.{hint} "
+                                  f"Correct or leave out the rows in `mask`.", bad)
+        return self
+
+    @property
+    def residual_eq_l(self) -> Array:
+        """Imbalance left in the alkalinity at the solution. [eq/L]"""
+        return self._out(self._state.residual)
+
+    @property
+    def ph(self) -> Array:
+        """pH as a meter calibrated with standard buffers reads it. [-]"""
+        return self.ph_on("meter")
+
+    @property
+    def ph_total(self) -> Array:
+        """pH on the total scale (mol/kg). [-]"""
+        return self.ph_on("total")
+
+    def ph_on(self, scale: str) -> Array:
+        """pH on `scale`: meter, total, seawater or free. Raises InputError for another name."""
+        return self._out(self._state.ph(_checked_scale(scale)))
+
+    @property
+    def alkalinity_eq_l(self) -> Array:
+        """Total alkalinity, signed. [eq/L]"""
+        return self._out(self._state.alkalinity)
+
+    @property
+    def dic_mol_l(self) -> Array:
+        """Total inorganic carbon. [mol/L]"""
+        return self._out(self._state.dic)
+
+    @property
+    def pco2_atm(self) -> Array:
+        """Partial pressure of CO2 in gas at equilibrium with the water. [atm]"""
+        return self._out(self._state.co2 / self._state.conditions.k0)
+
+    @property
+    def t_c(self) -> Array:
+        """Temperature. [°C]"""
+        return self._out(self._state.conditions.t_c)
+
+    @property
+    def salinity(self) -> Array:
+        """Practical salinity. [-]"""
+        return self._out(self._state.conditions.salinity)
+
+    @property
+    def ionic_strength_mol_l(self) -> Array:
+        """Ionic strength that the activity coefficients were taken at. [mol/L; mol/kg of water if marine]"""
+        return self._out(self._state.conditions.ionic_strength_mol_l)
+
+    @property
+    def is_marine(self) -> NDArray[np.bool_]:
+        """True where salinity is 1 or more."""
+        return self._out(self._state.conditions.is_marine)
+
+    @property
+    def density_kg_l(self) -> Array:
+        """Density. [kg/L]"""
+        return self._out(self._state.conditions.density_kg_l)
+
+    def total_mol_l(self, name: str) -> Array:
+        """Total of a weak acid or ion in the water; zero if absent. [mol/L]"""
+        for d in self._state.acids:
+            if d.acid.name == name:
+                return self._out(d.total)
+        return self._out(self._state.ions.get(name, np.zeros(self._state.h.shape)))
+
+    @property
+    def species_mol_l(self) -> dict[str, Array]:
+        """Concentration of every acid-base form by formula; carbonate forms include their ion pairs. [mol/L]"""
+        c, s = self._state.conditions, self._state
+        out = {f: s.dic * a for f, a in zip(CARBONATE_FORMS, s.carbonate_fractions(), strict=True)}
+        for d, family in zip(s.acids, s.families, strict=True):
+            alpha = buffer.fractions(family.k, 1.0 / s.h)
+            out |= {form: d.total * a for form, a in zip(d.acid.species, alpha, strict=True)}
+        out |= {"H+": c.c_h * s.h, "OH-": c.c_oh / s.h}
+        return {form: self._out(v) for form, v in out.items()}
+
+    def charge_eq_l(self, name: str) -> Array:
+        """Charge that a weak acid carries, all its forms together; "carbonate" for inorganic carbon. [eq/L]"""
+        s = self._state
+        if name == "carbonate":
+            return self._out(-s.dic * buffer.protons_lost(s.carbonate_fractions()))
+        for d, family in zip(s.acids, s.families, strict=True):
+            if d.acid.name == name:
+                lost = buffer.protons_lost(buffer.fractions(family.k, 1.0 / s.h))
+                return self._out(d.total * (d.acid.charge_full - lost))
+        raise InputError(f"no acid {name!r} is in this water; it holds carbonate"
+                         f"{''.join(', ' + d.acid.name for d in s.acids)}. Give {name}{SUFFIX} when making the water.")
+
+    # ---------------------------------------------------------------- buffering
+
+    def buffer_intensity_eq_l(self, exchange: Exchange = "closed") -> Array:
+        """dC_base/dpH: closed, or open with the CO2 pressure it has now held. [eq/L per pH]"""
+        s = self._state
+        return self._out(buffer.buffer_intensity(s, co2=s.co2 if _checked(exchange) == "open" else None))
+
+    def buffer_by_pair(self) -> dict[str, Array]:
+        """Closed buffer intensity split by conjugate pair and the water itself; the parts add up. [eq/L per pH]"""
+        return {p.label: self._out(p.intensity) for p in buffer.pair_shares(self._state)}
+
+    def effective_ranges(self) -> dict[str, tuple[Array, Array, NDArray[np.bool_]]]:
+        """Per conjugate pair: lowest and highest meter pH of its range (pKa - 1, pKa + 1), and whether pH is in it."""
+        reach = buffer.EFFECTIVE_RANGE
+        return {p.label: (self._out(p.pka - reach), self._out(p.pka + reach), self._out(p.in_range))
+                for p in buffer.pair_shares(self._state) if p.label not in (buffer.HYDROGEN, buffer.HYDROXIDE)}
+
+    def carrier(self) -> buffer.Carrier:
+        """The pair that buffers most now, its base-to-acid ratio, and the acid and base left in its range."""
+        found = buffer.carrier(self._state)
+        return buffer.Carrier(**{n: self._out(getattr(found, n)) for n in found.__dataclass_fields__})
+
+    def weakest_buffering(self) -> buffer.Weakest:
+        """The pH of weakest buffering near the sample, the intensity there, and how far it is."""
+        found = buffer.weakest_buffering(self._state)
+        return buffer.Weakest(**{n: self._out(getattr(found, n)) for n in found.__dataclass_fields__})
+
+    def acid_to_ph_eq_l(self, ph: float, exchange: Exchange = "closed", *, pco2_atm: ArrayLike | None = None) -> Array:
+        """Strong acid that brings the water to a meter pH; negative if base is needed. [eq/L]
+
+        Closed: carbon stays. Open: the water is kept at `pco2_atm` (its own by default).
+        """
+        return self._out(buffer.acid_to_ph(self._state, ph, co2=self._held_co2(exchange, pco2_atm)))
+
+    def base_to_ph_eq_l(self, ph: float, exchange: Exchange = "closed", *, pco2_atm: ArrayLike | None = None) -> Array:
+        """Strong base that brings the water to a meter pH; negative if acid is needed. [eq/L]"""
+        return -self.acid_to_ph_eq_l(ph, exchange, pco2_atm=pco2_atm)
+
+    def _held_co2(self, exchange: Exchange, pco2_atm: ArrayLike | None) -> Array | None:
+        if _checked(exchange) == "closed":
+            return None
+        if pco2_atm is None:
+            return self._state.co2
+        return as_rows(pco2_atm, self._shape).reshape(-1) * self._state.conditions.k0
+
+    def curve(self, ph: ArrayLike, exchange: Exchange = "closed", *, pco2_atm: ArrayLike | None = None) -> tuple[Array, Array]:
+        """Strong acid added [eq/L] and buffer intensity [eq/L per pH] at each of the meter pH values `ph` (1-D).
+
+        Shape of both: the water's own shape followed by that of `ph`.
+        """
+        points = np.asarray(ph, dtype=float)
+        found = buffer.curve(self._state, points, co2=self._held_co2(exchange, pco2_atm))
+        added, intensity = (v.reshape(self._shape + points.shape) for v in found)
+        return added, intensity
+
+    # ---------------------------------------------------------------- changing it
+
+    def after_acid(self, acid_eq_l: ArrayLike, exchange: Exchange = "closed", *, pco2_atm: ArrayLike | None = None) -> Water:
+        """The water after strong acid (negative: base) that adds no carbon; ionic strength and volume are held."""
+        alk = self.alkalinity_eq_l - np.asarray(acid_eq_l, dtype=float)
+        if _checked(exchange) == "closed":
+            return self._again({"alkalinity": alk, "dic": self.dic_mol_l})
+        return self._again({"alkalinity": alk, "pco2": self.pco2_atm if pco2_atm is None else pco2_atm})
+
+    def at_pco2(self, pco2_atm: ArrayLike) -> Water:
+        """The water after it has come to equilibrium with a CO2 pressure [atm]; alkalinity stays."""
+        return self._again({"alkalinity": self.alkalinity_eq_l, "pco2": pco2_atm})
+
+    def at_air(self, co2_ppm: ArrayLike = gases.AIR_CO2_PPM) -> Water:
+        """The water in equilibrium with air of `co2_ppm` (dry mole fraction) at its own pressure and temperature."""
+        c = self._state.conditions
+        return self.at_pco2(self._out(gases.pco2_of_air(
+            as_rows(co2_ppm, self._shape).reshape(-1), c.t_c, c.pressure_atm, c.salinity)))
+
+    def at_temperature(self, t_c: ArrayLike) -> Water:
+        """The closed sample at another temperature: amounts per kilogram stay, pH and CO2 pressure follow. [°C]"""
+        return self._again({"alkalinity": self.alkalinity_eq_l, "dic": self.dic_mol_l}, t_c=t_c)
+
+    def _again(self, known: dict[str, ArrayLike], *, t_c: ArrayLike | None = None) -> Water:
+        """Solve another pair for the same totals; concentrations follow the density."""
+        water = self._options | self._given()
+        if t_c is not None:
+            c = self._state.conditions
+            new = conditions(as_rows(t_c, self._shape).reshape(-1), c.salinity, 0.0)
+            ratio = self._out(new.density_kg_l / c.density_kg_l)
+            water |= {n: v * ratio for n, v in water.items() if n.endswith(SUFFIX)} | {"t_c": t_c}
+            known = {n: np.asarray(v) * ratio for n, v in known.items()}
+        return _make(type(self), known, **water)
+
+    def _given(self) -> dict[str, ArrayLike]:
+        """Everything but the pair, as keywords of a constructor."""
+        s, c = self._state, self._state.conditions
+        out = {f"{d.acid.name}{SUFFIX}": self._out(d.total) for d in s.acids}
+        out |= {f"{name}{SUFFIX}": self._out(v) for name, v in s.ions.items()}
+        return out | {"t_c": self.t_c, "salinity": self.salinity, "pressure_atm": self._out(c.pressure_atm),
+                      "ionic_strength_mol_l": self.ionic_strength_mol_l}
+
+    # ---------------------------------------------------------------- calcium carbonate
+
+    def saturation_index(self, mineral: str = "calcite") -> Array:
+        """log10 of saturation with "calcite", "aragonite" or "vaterite" (fresh only); nan without calcium. [-]"""
+        return self._out(precipitate.saturation_index(precipitate.pairing(self._state), _checked_mineral(mineral)))
+
+    def saturation_ratio(self, mineral: str = "calcite") -> Array:
+        """Ion activity product over solubility product. [-]"""
+        return 10.0 ** self.saturation_index(mineral)
+
+    def precipitation_potential_mol_l(self, mineral: str = "calcite") -> Array:
+        """Mineral that would precipitate (positive) or dissolve (negative) on the way to equilibrium. [mol/L]"""
+        return self._out(precipitate.precipitation_potential(
+            precipitate.pairing(self._state), _checked_mineral(mineral))[0])
+
+    def ph_at_saturation(self, mineral: str = "calcite") -> Array:
+        """Meter pH once the mineral has come to equilibrium with the closed water. [-]"""
+        return self._out(precipitate.precipitation_potential(
+            precipitate.pairing(self._state), _checked_mineral(mineral))[1])
+
+
+def _checked_scale(scale: str) -> str:
+    if scale not in PH_SCALES:
+        raise InputError(f"the pH scale must be one of {', '.join(PH_SCALES)}; found {scale!r}. "
+                         f"Use 'meter' for a meter calibrated with standard buffers.")
+    return scale
+
+
+def _checked(exchange: str) -> str:
+    if exchange not in ("closed", "open"):
+        raise InputError(f"exchange must be 'closed' or 'open'; found {exchange!r}. "
+                         f"Closed keeps the carbon, open holds the CO2 pressure.")
+    return exchange
+
+
+def _checked_mineral(mineral: str) -> str:
+    if mineral not in precipitate.MINERALS:
+        raise InputError(f"the mineral must be one of {', '.join(precipitate.MINERALS)}; found {mineral!r}. "
+                         f"Use 'calcite' unless you know better.")
+    return mineral
+
+
+def _make(
+    cls: type[Water], known: dict[str, ArrayLike], ph_scale: str = "meter", *,
+    t_c: ArrayLike, salinity: ArrayLike = 0.0, ionic_strength_mol_l: ArrayLike | None = None,
+    pressure_atm: ArrayLike = 1.0, acids: Iterable[Acid] = (), carbonic: str = "millero",
+    boron_ratio: str = "uppstrom", **totals: ArrayLike,
+) -> Water:
+    """Solve one pair; the shared keywords are described at `Water`."""
+    _checked_scale(ph_scale)
+    own = tuple(acids)
+    acid_totals, ion_totals = _sorted_totals(totals, own)
+    strengths = [] if ionic_strength_mol_l is None else [ionic_strength_mol_l]
+    try:
+        shape = common_shape(*known.values(), t_c, salinity, pressure_atm, *strengths, *totals.values())
+    except ValueError as error:
+        raise InputError(f"the inputs must broadcast to one shape; found {error}. Give scalars or arrays of one "
+                         f"length.") from None
+
+    def flat(v: ArrayLike) -> Array:
+        return as_rows(v, shape).reshape(-1)
+
+    values = {n: flat(v) for n, v in known.items()}
+    s, t, p = flat(salinity), flat(t_c), flat(pressure_atm)
+    sea = s >= FRESH_BELOW
+    if sea.any():
+        acid_totals = {n: acid_totals.get(n, np.nan) for n in ("boron", "sulfate", "fluoride")} | acid_totals
+        ion_totals = {"calcium": np.nan} | ion_totals
+    sulfate, fluoride = (flat(acid_totals.get(n, np.nan)) for n in ("sulfate", "fluoride"))
+
+    def solve(strength: Array) -> State:
+        c = conditions(t, s, strength, pressure_atm=p, sulfate_mol_l=sulfate, fluoride_mol_l=fluoride, carbonic=carbonic)
+        dissolved = tuple(Dissolved(acid_named(n, own), _with_sea(n, flat(v), c, boron_ratio))
+                          for n, v in acid_totals.items())
+        ions = {n: _with_sea(n, flat(v), c, boron_ratio) for n, v in ion_totals.items()}
+        return solve_pair(values, c, dissolved, ions, ph_scale=ph_scale)
+
+    given = np.full(s.shape, np.nan) if ionic_strength_mol_l is None else flat(ionic_strength_mol_l)
+    state = solve(_implied_strength(given, values, s, solve))
+    return cls(state, shape, {"acids": own, "carbonic": carbonic, "boron_ratio": boron_ratio})
+
+
+def _sorted_totals(totals: dict[str, ArrayLike], own: tuple[Acid, ...]) -> tuple[dict, dict]:
+    """Totals of weak acids and of ions by plain name. Raises InputError for a name that is neither."""
+    names = set(acid_table()) | {a.name for a in own} | set(IONS)
+    acid_totals, ion_totals = {}, {}
+    for keyword, value in totals.items():
+        name = keyword.removesuffix(SUFFIX)
+        if not keyword.endswith(SUFFIX) or name not in names:
+            near = get_close_matches(keyword, [n + SUFFIX for n in names], n=3) or sorted(n + SUFFIX for n in names)
+            raise InputError(f"{keyword!r} is not a total that water can have; nearest: {', '.join(near)}. "
+                             f"Correct the name, or describe your own acid in `acids`.")
+        (ion_totals if name in IONS else acid_totals)[name] = value
+    return acid_totals, ion_totals
+
+
+def _with_sea(name: str, given: Array, c: Conditions, boron_ratio: str) -> Array:
+    """A total with its gaps filled: from salinity in marine rows where sea salt brings it, else zero or unknown."""
+    if boron_ratio not in BORON_OF_SEAWATER:
+        raise InputError(f"boron_ratio must be one of {', '.join(BORON_OF_SEAWATER)}; found {boron_ratio!r}. "
+                         f"Leave it out for 'uppstrom'.")
+    of_salt = {"boron": BORON_OF_SEAWATER[boron_ratio], "sulfate": seasalt.sulfate_of_seawater,
+               "fluoride": seasalt.fluoride_of_seawater, "calcium": seasalt.calcium_of_seawater}
+    fill = np.full(given.shape, np.nan if name in IONS else 0.0)
+    if name in of_salt:
+        fill = np.where(c.is_marine, of_salt[name](c.salinity) * c.density_kg_l, fill)
+    return np.where(np.isnan(given), fill, given)
+
+
+def _implied_strength(given: Array, values: dict[str, Array], s: Array, solve) -> Array:
+    """Ionic strength: the given one, else the larger of what salinity and alkalinity (as a 1:1 salt) imply."""
+    missing = np.isnan(given)
+    if not missing.any():
+        return given
+    of_salt = seasalt.ionic_strength_seawater(np.clip(np.nan_to_num(s), 0.0, FRESH_BELOW))
+    alkalinity = values.get("alkalinity")
+    if alkalinity is None:
+        alkalinity = solve(of_salt).alkalinity
+    return np.where(missing, np.fmax(of_salt, np.abs(alkalinity)), given)
+
+
+def mix(waters: Sequence[Water], volumes: Sequence[ArrayLike]) -> Water:
+    """Mix waters in proportion to `volumes` (any unit); closed, so alkalinity, totals, salt and heat are conserved.
+
+    The pH is solved, never averaged. Heat capacity per kilogram is taken as equal (sea water has 5 % less).
+    Raises InputError where numbers of waters and volumes differ, a volume is negative, or all are zero.
+    """
+    if len(waters) != len(volumes) or not waters:
+        raise InputError(f"mixing needs one volume per water; found {len(waters)} waters and {len(volumes)} volumes. "
+                         f"Give them in the same order.")
+    v = [np.asarray(x, dtype=float) for x in volumes]
+    if any((x < 0.0).any() for x in v) or not np.all(sum(v) > 0.0):
+        raise InputError("volumes must not be negative and must not all be zero; found such a value. Correct it.")
+    mass = [x * w.density_kg_l for x, w in zip(v, waters, strict=True)]
+    whole = sum(mass)
+
+    def by_mass(name: str) -> Array:
+        return sum(m * getattr(w, name) for m, w in zip(mass, waters, strict=True)) / whole
+
+    t, s = by_mass("t_c"), by_mass("salinity")
+    density = conditions(t, s).density_kg_l
+
+    def amount(of) -> Array:
+        return sum(x * of(w) for x, w in zip(v, waters, strict=True)) / whole * density
+
+    names = {n for w in waters for n in [d.acid.name for d in w._state.acids] + list(w._state.ions)}
+    own = {a.name: a for w in waters for a in w._options["acids"]}
+    return Water.from_alkalinity_dic(
+        alkalinity_eq_l=amount(lambda w: w.alkalinity_eq_l), dic_mol_l=amount(lambda w: w.dic_mol_l), t_c=t, salinity=s,
+        ionic_strength_mol_l=by_mass("ionic_strength_mol_l"), pressure_atm=waters[0]._out(waters[0]._state.conditions.pressure_atm),
+        **(waters[0]._options | {"acids": tuple(own.values())}),
+        **{f"{n}{SUFFIX}": amount(lambda w, n=n: w.total_mol_l(n)) for n in sorted(names)})

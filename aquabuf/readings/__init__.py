@@ -1,0 +1,1 @@
+"""Files in: columns, units, missing and doubtful values. The schema imports without pandas; the readers need it."""

@@ -1,0 +1,191 @@
+"""What a column header means: quantity, uncertainty or value, and unit. Anything doubtful is an error, never a guess."""
+
+from __future__ import annotations
+
+import difflib
+import re
+from collections.abc import Mapping
+from dataclasses import dataclass, replace
+
+from aquabuf.errors import HeaderError
+from aquabuf.readings.schema import Quantity, label_for, unit_labels, usable_units, why_not
+from aquabuf.units import CONCENTRATIONS, Unit, find_basis, key, linear, parse_unit
+
+__all__ = ["Column", "column_for", "nearest_names", "parse_header"]
+
+Index = Mapping[str, tuple[Quantity, str]]
+_BRACKETS = re.compile(r"^(?P<name>.*?)\s*[(\[](?P<unit>[^()\[\]]*)[)\]]\s*$", re.DOTALL)
+_UNCERTAIN = re.compile(r"_(?:standard_uncertainty|uncertainty|sigma|u)$")
+_AS = re.compile(r"^(.+)_as_([a-z0-9_]+)$")
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Column:
+    """One column of a file: what it holds and how to bring it to house units (value * scale + offset)."""
+
+    header: str
+    quantity: Quantity
+    is_u: bool = False  # standard uncertainty of the quantity
+    unit: Unit | None = None  # None for text, dates and choices
+    scale: float = 1.0
+    offset: float = 0.0
+    negative: str = "keep"  # keep, zero or missing: what to do with values below zero
+    missing_below_limit: bool = False
+
+    @property
+    def name(self) -> str:
+        """Canonical column name in house units."""
+        return self.quantity.u_name if self.is_u else self.quantity.name
+
+    @property
+    def unit_label(self) -> str:
+        """Unit in the file, in words; "" when there is none."""
+        return label_for(self.quantity, self.unit) if self.unit else ""
+
+    def in_file_unit(self, house: float) -> float:
+        """A house value as the file would show it, rounded to the six figures a message needs."""
+        return float(f"{(house - self.offset) / self.scale:.6g}")
+
+
+def nearest_names(name: str, index: Index, count: int = 3) -> list[str]:
+    """Canonical names whose header resembles `name`, the best first."""
+    plain = key(name)
+    close = difflib.get_close_matches(plain, index, n=3 * count, cutoff=0.5)
+    words = [known for known in index if len(known) > 3 and known in plain]
+    return list(dict.fromkeys(index[known][0].name for known in (*close, *words)))[:count]
+
+
+def _lookup(name: str, index: Index) -> tuple[Quantity, bool, str] | None:
+    """Quantity, whether it is an uncertainty, and the basis said by a header name without unit."""
+    stated = _AS.match(name)
+    basis = find_basis(stated[2]) if stated else ""
+    for candidate in (name, stated[1] if stated and basis else ""):
+        bare = _UNCERTAIN.sub("", candidate)
+        if candidate in index:
+            quantity, own = index[candidate]
+            return quantity, False, own or (basis if candidate != name else "")
+        if bare in index and bare != candidate:
+            quantity, own = index[bare]
+            return quantity, True, own or (basis if candidate != name else "")
+    return None
+
+
+def _ambiguous(header: str, quantity: Quantity, unit: Unit) -> HeaderError:
+    ways = [replace(unit, basis=basis) for basis in quantity.bases]
+    labels = " or ".join(f"{way.unit} as {way.basis}" for way in ways)
+    names = " or ".join(f"{quantity.base}_{way.suffix}_{key(way.basis)}" for way in ways)
+    return HeaderError(
+        f"column {header!r} is ambiguous: {unit.unit} of {quantity.base} can mean {labels}, which are different amounts. "
+        f"Rename it to {names}, or say the unit in a map file."
+    )
+
+
+def column_for(header: str, quantity: Quantity, unit: Unit | None, *, is_u: bool = False, basis: str = "") -> Column:
+    """The column of a known quantity and unit; HeaderError when they do not go together.
+
+    `basis` is what the words of the header state ("NO3-N"), used when the unit itself states none.
+    """
+    if not quantity.is_number:
+        return Column(header=header, quantity=quantity)
+    if unit is None:
+        raise _unit_missing(header, quantity)
+    mass = unit.kind == "mass" and quantity.dimension in CONCENTRATIONS
+    if mass and not unit.basis and quantity.bases:
+        chosen = basis or quantity.bare_basis
+        if not chosen:
+            raise _ambiguous(header, quantity, unit)
+        unit = replace(unit, basis=chosen)
+    reason = why_not(quantity, unit)
+    if reason:
+        raise HeaderError(
+            f"column {header!r}: {quantity.base} cannot be given in {unit.label}, because {reason}. "
+            f"Use one of: {', '.join(unit_labels(quantity))}."
+        )
+    scale, offset = linear(unit, quantity.dimension, molar_mass_g=quantity.molar_mass_g, charge=quantity.charge)
+    return Column(
+        header=header, quantity=quantity, is_u=is_u, unit=unit, scale=scale, offset=0.0 if is_u else offset
+    )
+
+
+def _unit_missing(header: str, quantity: Quantity) -> HeaderError:
+    labels = ", ".join(unit_labels(quantity))
+    example = usable_units(quantity)[0]
+    ending = example.suffix + (f"_{key(example.basis)}" if example.label != example.unit else "")
+    return HeaderError(
+        f"column {header!r} needs a unit: {quantity.base} can be in {labels}. "
+        f"Write it in the header, e.g. {quantity.base}_{ending} or '{quantity.base} ({example.label})'."
+    )
+
+
+def _unknown_unit(header: str, text: str, quantity: Quantity) -> HeaderError:
+    if not quantity.is_number:
+        return HeaderError(f"column {header!r}: {quantity.name} takes no unit, found {text!r}. Remove it.")
+    return HeaderError(
+        f"column {header!r}: {text!r} is not a unit of {quantity.base}. Use one of: {', '.join(unit_labels(quantity))}."
+    )
+
+
+def _unknown(header: str, index: Index) -> HeaderError:
+    near = nearest_names(_BRACKETS.sub(r"\g<name>", header), index)
+    hint = f"The nearest known names are {', '.join(near)}. " if near else "No known name is near. "
+    return HeaderError(
+        f"column {header!r} is not known. {hint}Rename it, remove it, or give its meaning in a map file "
+        "([columns], or unlisted = \"ignore\")."
+    )
+
+
+def _bracketed(header: str, name: str, text: str, index: Index) -> Column | None:
+    """Header with its unit apart ("Calcium (mg/L)"); None when the name in front is not known."""
+    found = _lookup(key(name), index)
+    if found is None:
+        return None
+    quantity, is_u, basis = found
+    unit = parse_unit(text, quantity.dimension) if quantity.is_number else None
+    if unit is None:
+        raise _unknown_unit(header, text, quantity)
+    return column_for(header, quantity, unit, is_u=is_u, basis=basis)
+
+
+def _suffixed(header: str, index: Index) -> Column | None:
+    """Header that ends in its unit ("calcium_mg_l"), or has none; the longest known name wins."""
+    words = key(header).split("_")
+    for cut in range(len(words), 0, -1):
+        found = _lookup("_".join(words[:cut]), index)
+        if found is None:
+            continue
+        quantity, is_u, basis = found
+        if cut == len(words):
+            default = quantity.house if quantity.is_number and quantity.has_default_unit else None
+            return column_for(header, quantity, default, is_u=is_u, basis=basis)
+        unit = parse_unit("_".join(words[cut:]), quantity.dimension) if quantity.is_number else None
+        if unit is not None:
+            return column_for(header, quantity, unit, is_u=is_u, basis=basis)
+    return None
+
+
+def parse_header(header: str, index: Index) -> Column:
+    """The meaning of a header: "calcium_mg_l", "Calcium (mg/L)", "NO3-N [µg/L]", "pH", "alkalinity_u_ueq_l" ...
+
+    Parameters
+    ----------
+    header
+        As it stands in the file.
+    index
+        Known names, from `schema.name_index`.
+
+    Raises
+    ------
+    HeaderError
+        Unknown name or unit, unit missing where it matters, or two possible readings.
+    """
+    apart = _BRACKETS.match(header)
+    column = _bracketed(header, apart["name"], apart["unit"], index) if apart else None
+    if column is None and "," in header:
+        name, _, text = header.rpartition(",")
+        known = _lookup(key(name), index)
+        if known and parse_unit(text, known[0].dimension or "length"):
+            column = _bracketed(header, name, text, index)
+    column = column or _suffixed(header, index)
+    if column is None:
+        raise _unknown(header, index)
+    return column

@@ -1,0 +1,118 @@
+"""The schema as text: one line per column, or all there is to know about some of them."""
+
+from __future__ import annotations
+
+import textwrap
+from collections.abc import Sequence
+
+from aquabuf.errors import InputError
+from aquabuf.readings.headers import nearest_names
+from aquabuf.readings.schema import Quantity, name_index, quantities, unit_labels, usable_units
+from aquabuf.units import key
+
+__all__ = ["columns_text"]
+
+WIDTH = 100
+_LABEL = 14
+
+
+def columns_text(names: Sequence[str] = (), width: int = WIDTH) -> str:
+    """Text of the schema.
+
+    Parameters
+    ----------
+    names
+        Canonical names or other headers ("calcium", "EC25"); empty for the short list of all columns.
+    width
+        Line width. [characters]
+
+    Raises
+    ------
+    InputError
+        A name that is not known; the message shows the nearest ones.
+    """
+    if not names:
+        return _overview(width)
+    return "\n".join(_detail(_find(name), width) for name in names)
+
+
+def _find(name: str) -> Quantity:
+    index = name_index()
+    if name in quantities():
+        return quantities()[name]
+    if key(name) in index:
+        return index[key(name)][0]
+    near = nearest_names(name, index)
+    hint = f"The nearest are {', '.join(near)}." if near else "Ask for the list without a name."
+    raise InputError(f"no column is named {name!r}. {hint}")
+
+
+def _overview(width: int) -> str:
+    """One line per column: name, house unit, meaning."""
+    records = list(quantities().values())
+    name_width = max(len(q.name) for q in records)
+    unit_width = max(len(q.house_unit) for q in records)
+    lead = " " * (name_width + unit_width + 4)
+    lines = [f"{'column':{name_width}}  {'unit':{unit_width}}  meaning"]
+    for q in records:
+        start = f"{q.name:{name_width}}  {q.house_unit:{unit_width}}  "
+        lines.append(textwrap.fill(q.meaning, width, initial_indent=start, subsequent_indent=lead))
+    closing = (
+        "A column can be in any usual unit, said at the end of its header: calcium_mg_l, 'Calcium (mg/L)', "
+        "alkalinity_mg_l_caco3. Its standard uncertainty has _u before the unit: calcium_u_mg_l, ph_u. "
+        "Name a column to see its units, other headers, limits and default uncertainty."
+    )
+    return "\n".join((*lines, "", textwrap.fill(closing, width))) + "\n"
+
+
+def _item(label: str, text: str, width: int) -> str:
+    lead = " " * _LABEL
+    return textwrap.fill(
+        text, width, initial_indent=f"  {label:{_LABEL - 2}}", subsequent_indent=lead, break_long_words=False
+    )
+
+
+def _units(q: Quantity) -> str:
+    if not q.is_number:
+        return ""
+    must = "" if q.has_default_unit else " (must be said in the header)"
+    return ", ".join(unit_labels(q)) + must
+
+
+def _headers(q: Quantity) -> str:
+    """Examples of headers, and the other names."""
+    examples = [q.name]
+    if q.is_number and usable_units(q)[0].suffix:
+        label = next(label for label in (*_preferred(q), q.house_unit))
+        examples.append(f"'{q.base.replace('_', ' ').capitalize()} ({label})'")
+    others = [name.replace("_", " ") for name, _ in q.aliases]
+    return ", ".join(examples) + (f"; other names: {', '.join(others)}" if others else "")
+
+
+def _preferred(q: Quantity) -> list[str]:
+    return [label for label in unit_labels(q) if label.startswith("mg/L")][:1]
+
+
+def _range(q: Quantity) -> str:
+    unit = "" if q.house_unit == "-" else f" {q.house_unit}"
+    return f"{q.low:g} to {q.high:g}{unit}, else the row is rejected; usual {q.soft_low:g} to {q.soft_high:g}"
+
+
+def _uncertainty(q: Quantity) -> str:
+    unit = "" if q.house_unit == "-" else f" {q.house_unit}"
+    if not (q.default_u or q.default_u_rel):
+        return f"column {q.u_name}"
+    terms = [f"{q.default_u:g}{unit}"] if q.default_u else []
+    terms += [f"{100 * q.default_u_rel:g} %"] if q.default_u_rel else []
+    return f"column {q.u_name}, else {' + '.join(terms)} ({q.u_source})"
+
+
+def _detail(q: Quantity, width: int) -> str:
+    """Everything about one column."""
+    items = [("meaning", q.meaning), ("headers", _headers(q)), ("units", _units(q))]
+    items.append(("choices", ", ".join(dict.fromkeys(word for _, word in q.choices))))
+    if q.is_number:
+        items += [("range", _range(q)), ("uncertainty", _uncertainty(q))]
+        items.append(("below limit", "'<0.02' counts as half, with its spread" if q.below_limit else "not accepted"))
+    items.append(("needed by", q.needed_by))
+    return "\n".join((q.name, *(_item(label, text, width) for label, text in items if text))) + "\n"

@@ -1,0 +1,246 @@
+"""The schema: every quantity a table of readings may hold, from the one table `data/columns.csv`.
+
+Reading, the list of columns, the starter files, the tests and the documentation all derive from it.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from dataclasses import dataclass
+from functools import cache
+
+from aquabuf.errors import InputError
+from aquabuf.tables import read_table
+from aquabuf.units import CONCENTRATIONS, Unit, accepted_units, key, parse_unit, substances
+
+__all__ = ["Quantity", "acid_quantity", "columns_table", "find_quantity", "quantities", "unit_labels"]
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Quantity:
+    """One quantity of the schema; limits and default uncertainty are in the house unit."""
+
+    name: str  # canonical column name, unit included
+    kind: str  # text, date, choice or number
+    house_unit: str = ""
+    dimension: str = ""
+    has_default_unit: bool = False  # a header without a unit is harmless
+    substance: str = ""
+    molar_mass_g: float | None = None
+    charge: int | None = None
+    bases: tuple[str, ...] = ()  # formulas that may follow "as"
+    bare_basis: str = ""  # what mg/L alone means; "" = must be said
+    below_limit: bool = False  # "<0.02" can be used
+    choices: tuple[tuple[str, str], ...] = ()  # (spelling, word)
+    low: float = float("-inf")
+    high: float = float("inf")
+    soft_low: float = float("-inf")
+    soft_high: float = float("inf")
+    default_u: float = 0.0
+    default_u_rel: float = 0.0
+    u_source: str = ""
+    needed_by: str = ""
+    meaning: str = ""
+    aliases: tuple[tuple[str, str], ...] = ()  # (plain header, basis its words state)
+
+    @property
+    def is_number(self) -> bool:
+        """Whether the column holds numbers with a unit."""
+        return self.kind == "number"
+
+    @property
+    def house(self) -> Unit:
+        """The house unit as a `Unit`."""
+        unit = parse_unit(self.house_unit, self.dimension)
+        if unit is None:
+            raise InputError(f"{self.name}: the house unit {self.house_unit!r} is not in the unit table")
+        return unit
+
+    @property
+    def base(self) -> str:
+        """The name without its unit, e.g. "calcium"."""
+        suffix = self.house.suffix if self.is_number else ""
+        return self.name.removesuffix(f"_{suffix}") if suffix else self.name
+
+    @property
+    def u_name(self) -> str:
+        """Name of the column with the standard uncertainty, e.g. "calcium_u_mol_l"."""
+        return f"{self.base}_u{self.name.removeprefix(self.base)}"
+
+
+def _number(text: str, missing: float) -> float:
+    return float(text) if text else missing
+
+
+def _pairs(text: str) -> tuple[tuple[str, str], ...]:
+    """Aliases "a;b=N" as ((plain a, ""), (plain b, "N"))."""
+    items = (part.partition("=") for part in text.split(";") if part)
+    return tuple((key(name), basis) for name, _, basis in items)
+
+
+def _spellings(text: str) -> tuple[tuple[str, str], ...]:
+    """Choices "lake;stream=river|creek" as (plain spelling, word)."""
+    found = []
+    for word, _, others in (part.partition("=") for part in text.split(";") if part):
+        found += [(key(spelling), word) for spelling in (word, *filter(None, others.split("|")))]
+    return tuple(found)
+
+
+def _quantity(row: dict[str, str]) -> Quantity:
+    """One schema record from its table row."""
+    of = substances().get(row["substance"])
+    return Quantity(
+        name=row["name"],
+        kind=row["kind"],
+        house_unit=row["house_unit"],
+        dimension=row["dimension"],
+        has_default_unit=bool(row["default_unit"]),
+        substance=row["substance"],
+        molar_mass_g=of.molar_mass_g if of else None,
+        charge=of.charge if of else None,
+        bases=tuple(filter(None, row["bases"].split(";"))),
+        bare_basis=row["bare_basis"],
+        below_limit=row["below_limit"] == "yes",
+        choices=_spellings(row["choices"]),
+        low=_number(row["low"], float("-inf")),
+        high=_number(row["high"], float("inf")),
+        soft_low=_number(row["soft_low"], float("-inf")),
+        soft_high=_number(row["soft_high"], float("inf")),
+        default_u=_number(row["default_u"], 0.0),
+        default_u_rel=_number(row["default_u_rel"], 0.0),
+        u_source=row["u_source"],
+        needed_by=row["needed_by"],
+        meaning=row["meaning"],
+        aliases=_pairs(row["aliases"]),
+    )
+
+
+@cache
+def quantities() -> dict[str, Quantity]:
+    """The schema by canonical name, in table order (treat as read-only)."""
+    return {row["name"]: _quantity(row) for row in read_table("columns")}
+
+
+def acid_quantity(name: str, molar_mass_g: float | None = None, charge: int | None = None) -> Quantity:
+    """Schema record of an acid that the user defines in a map file; its column is `NAME_mol_l`."""
+    return Quantity(
+        name=f"{key(name)}_mol_l",
+        kind="number",
+        house_unit="mol/L",
+        dimension="amount",
+        molar_mass_g=molar_mass_g,
+        charge=charge,
+        below_limit=True,
+        low=0.0,
+        high=10.0,
+        default_u=1e-6,
+        default_u_rel=0.05,
+        u_source="common practice, no source",
+        needed_by="acid-base (an acid of your own)",
+        meaning=f"{name}, all forms (defined in the map file)",
+    )
+
+
+@cache
+def _shipped_index() -> dict[str, tuple[Quantity, str]]:
+    return index_of(quantities().values())
+
+
+def index_of(records: Iterable[Quantity]) -> dict[str, tuple[Quantity, str]]:
+    """Plain header name (no unit) -> quantity and the basis that the words state."""
+    found: dict[str, tuple[Quantity, str]] = {}
+    for record in records:
+        for name, basis in ((record.base, ""), *record.aliases):
+            if name in found and found[name][0] is not record:
+                raise InputError(
+                    f"the name {name!r} stands for both {found[name][0].name} and {record.name}; rename one"
+                )
+            found[name] = (record, basis)
+    return found
+
+
+def name_index(extra: Iterable[Quantity] = ()) -> dict[str, tuple[Quantity, str]]:
+    """Names of the schema, with the records of user-defined acids added."""
+    extra = tuple(extra)
+    return index_of((*quantities().values(), *extra)) if extra else _shipped_index()
+
+
+def schema_order(names: Iterable[str]) -> list[str]:
+    """Canonical names in the order of the schema, each uncertainty behind its quantity; others stay last."""
+    found = dict.fromkeys(names)
+    known = [name for q in quantities().values() for name in ((q.name, q.u_name) if q.is_number else (q.name,))]
+    return [name for name in dict.fromkeys((*known, *found)) if name in found]
+
+
+def find_quantity(name: str) -> Quantity:
+    """The schema record with this canonical name; InputError when there is none."""
+    try:
+        return quantities()[name]
+    except KeyError:
+        raise InputError(
+            f"no column is named {name!r}. Use a canonical name such as calcium_mol_l; `columns` lists them."
+        ) from None
+
+
+def usable_units(quantity: Quantity) -> list[Unit]:
+    """Units that a column of this quantity may have, mass units once per basis."""
+    if not quantity.is_number:
+        return []
+    units = accepted_units(quantity.dimension, quantity.bases)
+    return [unit for unit in units if not why_not(quantity, unit)]
+
+
+def why_not(quantity: Quantity, unit: Unit) -> str:
+    """Reason why `quantity` cannot be given in `unit`, "" when it can (bare mass units are judged elsewhere)."""
+    if quantity.dimension not in CONCENTRATIONS or unit == quantity.house:
+        return ""
+    degree = unit.basis and unit.label == unit.unit
+    if degree and "CaCO3" not in quantity.bases:
+        return "degrees of hardness are for hardness and alkalinity"
+    if unit.basis and not degree and unit.basis not in quantity.bases:
+        return f"it is not given as {unit.basis}"
+    fixed = quantity.dimension in ("alkalinity", "hardness") or quantity.charge
+    if unit.kind == "charge" and (not fixed or quantity.dimension == "mass"):
+        return "its charge is zero or depends on pH, so equivalents are not defined"
+    if unit.kind == "amount" and quantity.dimension == "mass" and quantity.molar_mass_g is None:
+        return "it is a mass with no one molar mass"
+    if unit.kind == "mass" and quantity.dimension == "amount" and not (quantity.bases or quantity.molar_mass_g):
+        return "it has no molar mass; give molar_mass_g in the map file"
+    return ""
+
+
+def label_for(quantity: Quantity, unit: Unit) -> str:
+    """The unit as it is best written for this quantity: the basis is left out where it goes without saying."""
+    bare = unit.basis and unit.basis == quantity.bare_basis and unit.label != unit.unit
+    return unit.unit if bare else unit.label
+
+
+def unit_labels(quantity: Quantity) -> list[str]:
+    """Accepted units in words, in table order."""
+    return [label_for(quantity, unit) for unit in usable_units(quantity)]
+
+
+def columns_table() -> list[dict[str, object]]:
+    """The schema as plain records: one dictionary per quantity, in table order."""
+    return [
+        {
+            "name": q.name,
+            "meaning": q.meaning,
+            "kind": q.kind,
+            "unit": q.house_unit,
+            "uncertainty_column": q.u_name if q.is_number else "",
+            "accepted_units": unit_labels(q),
+            "unit_needed": q.is_number and not q.has_default_unit,
+            "other_headers": [name for name, _ in q.aliases],
+            "choices": list(dict.fromkeys(word for _, word in q.choices)),
+            "low": q.low if q.is_number else None,
+            "high": q.high if q.is_number else None,
+            "usual_low": q.soft_low if q.is_number else None,
+            "usual_high": q.soft_high if q.is_number else None,
+            "default_u": q.default_u if q.is_number else None,
+            "default_u_rel": q.default_u_rel if q.is_number else None,
+            "u_source": q.u_source,
+            "needed_by": q.needed_by,
+        }
+        for q in quantities().values()
+    ]

@@ -1,0 +1,72 @@
+"""The page of constants names each public constant and shows what the code gives."""
+
+import importlib
+import inspect
+import re
+from pathlib import Path
+
+import numpy as np
+import pytest
+from numpy.testing import assert_allclose
+from published_rows import CHEM_TABLES
+
+from aquabuf.tables import read_table
+
+PAGE = (Path(__file__).parents[2] / "docs" / "constants.md").read_text(encoding="utf-8")
+MODULES = [importlib.import_module(f"aquabuf.chem.{name}") for name in CHEM_TABLES]
+PUBLIC = {name: getattr(module, name) for module in MODULES for name in module.__all__}
+LOOK_UPS = {"Acid", "acid_named", "acid_table"}  # they hold no number
+
+# The conditions that the page states above its tables.
+CONDITIONS = {
+    "t_c": 25.0, "salinity": 35.0, "elevation_m": 1000.0, "pressure_atm": 1.0, "co2_ppm": 400.0, "charge": 1,
+    "ionic_strength": 0.1, "a": 0.51, "b": 0.328, "size": 4.0, "slope": 0.075, "sulfate": 0.028235,
+    "k_bisulfate": 0.1003, "fluoride": 6.833e-5, "k_fluoride": 0.002366, "pk": 4.756, "enthalpy_j_mol": -410.0,
+    "heat_capacity_j_mol_k": -142.0,
+}
+
+
+def _cells(line):
+    return [cell.strip() for cell in line.strip("|").split("|")]
+
+
+TABLE_ROWS = [_cells(line) for line in PAGE.splitlines() if line.startswith("| `")]
+CONSTANT_ROWS = {row[0].strip("`"): row for row in TABLE_ROWS if len(row) == 7}
+ACID_ROWS = {row[0].strip("`"): row for row in TABLE_ROWS if len(row) == 5}
+
+
+def test_page_names_every_public_constant():
+    """Nothing is computed with that the page does not list."""
+    assert {name for name in set(PUBLIC) - LOOK_UPS if f"`{name}`" not in PAGE} == set()
+
+
+def test_page_lists_no_constant_that_is_gone():
+    """A row of the page belongs to a name of the code."""
+    assert set(CONSTANT_ROWS) - set(PUBLIC) == set()
+
+
+@pytest.mark.parametrize("name", CONSTANT_ROWS)
+def test_page_shows_the_value_of_the_code(name):
+    """The last column is right to its last digit."""
+    kind, printed = re.fullmatch(r"(pK |log |)(\S+)", CONSTANT_ROWS[name][-1]).groups()
+    target = PUBLIC[name]
+    if callable(target):
+        target = target(**{key: CONDITIONS[key] for key in inspect.signature(target).parameters})
+    value = {"pK ": lambda k: -np.log10(k), "log ": np.log10, "": lambda k: k}[kind](target)
+    mantissa, _, exponent = printed.partition("e")
+    digits = len(mantissa.partition(".")[2])
+    assert_allclose(value, float(printed), rtol=0, atol=0.51 * 10.0 ** (int(exponent or 0) - digits))
+
+
+def test_page_lists_the_shipped_acids():
+    """Acid by acid, the page repeats the shipped table."""
+    columns = ("pk", "enthalpy_kj_mol", "heat_capacity_j_mol_k", "mark")
+    expected = {row["name"]: [row[key].replace(";", ", ") for key in columns] for row in read_table("acids")}
+    assert {name: row[1:] for name, row in ACID_ROWS.items()} == expected
+
+
+def test_page_states_the_conditions_of_its_values():
+    """The conditions used here are those the reader is told."""
+    for phrase in ("25 °C and salinity 35", "elevation 1000 m, 1 atm and 400 ppm", "A 0.51, B 0.328, size 4.0 and slope 0.075",
+                   "sulfate 0.028235, its constant 0.1003", "fluoride 6.833e-5 and its constant 0.002366"):
+        assert phrase in PAGE.replace("\n", " ")
