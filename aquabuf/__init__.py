@@ -7,12 +7,13 @@ from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from aquabuf.chem.acids import Acid
-    from aquabuf.engine.water import Water, mix
+    from aquabuf.engine.mix import mix
+    from aquabuf.engine.water import Water
 
 __all__ = ["Acid", "Water", "__version__", "mix"]
 __version__ = "0.1.0"
 
-_HOME = {"Acid": "aquabuf.chem.acids", "Water": "aquabuf.engine.water", "mix": "aquabuf.engine.water"}
+_HOME = {"Acid": "aquabuf.chem.acids", "Water": "aquabuf.engine.water", "mix": "aquabuf.engine.mix"}
 
 
 def __getattr__(name: str) -> Any:

@@ -12,9 +12,24 @@ from aquabuf.chem.properties import kelvin
 from aquabuf.chem.seasalt import ionic_strength_seawater, per_kg_solution
 
 __all__ = [
-    "k0_co2", "k1_lueker", "k1_millero", "k1_phosphoric", "k2_lueker", "k2_millero", "k2_phosphoric",
-    "k3_phosphoric", "k_ammonium", "k_boric", "k_bisulfate", "k_fluoride", "k_fluoride_perez_fraga",
-    "k_silicic", "k_sulfide", "k_water_sea", "ksp_aragonite_sea", "ksp_calcite_sea",
+    "k0_co2",
+    "k1_lueker",
+    "k1_millero",
+    "k1_phosphoric",
+    "k2_lueker",
+    "k2_millero",
+    "k2_phosphoric",
+    "k3_phosphoric",
+    "k_ammonium",
+    "k_bisulfate",
+    "k_boric",
+    "k_fluoride",
+    "k_fluoride_perez_fraga",
+    "k_silicic",
+    "k_sulfide",
+    "k_water_sea",
+    "ksp_aragonite_sea",
+    "ksp_calcite_sea",
 ]
 
 Array = NDArray[np.float64]

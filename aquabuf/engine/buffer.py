@@ -11,7 +11,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from aquabuf.engine.balance import alkalinity_at, fractions, moments, protons_lost
+from aquabuf.engine.balance import alkalinity_at, fractions, moments
 from aquabuf.engine.state import CARBONATE_FORMS, State
 
 __all__ = [

@@ -2,29 +2,24 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Sequence
-from difflib import get_close_matches
+from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from aquabuf.arrays import as_rows, common_shape
-from aquabuf.chem import gases, seasalt
-from aquabuf.chem.acids import Acid, acid_named, acid_table
+from aquabuf.arrays import as_rows
+from aquabuf.chem import gases
 from aquabuf.engine import buffer, precipitate
-from aquabuf.engine.conditions import FRESH_BELOW, Conditions, conditions
-from aquabuf.engine.pairs import solve_pair
-from aquabuf.engine.state import CARBONATE_FORMS, PH_SCALES, Dissolved, Exchange, State
+from aquabuf.engine.balance import fractions, protons_lost
+from aquabuf.engine.build import SUFFIX, build_state, checked
+from aquabuf.engine.conditions import conditions
+from aquabuf.engine.state import CARBONATE_FORMS, PH_SCALES, Exchange, State
 from aquabuf.engine.status import OUT_OF_RANGE, STATUS_WORDS
 from aquabuf.errors import InputError, InputRangeError
 
-__all__ = ["BORON_OF_SEAWATER", "IONS", "Water", "mix"]
+__all__ = ["Water"]
 
 Array = NDArray[np.float64]
-
-IONS = ("calcium", "magnesium", "sodium", "potassium")  # that pair with carbonate and sulfate
-BORON_OF_SEAWATER = {"uppstrom": seasalt.boron_uppstrom, "lee": seasalt.boron_lee}
-SUFFIX = "_mol_l"
 
 
 class Water:
@@ -53,37 +48,41 @@ class Water:
         self._shape = shape
         self._options = options
 
+    @classmethod
+    def _make(cls, known: dict[str, ArrayLike], ph_scale: str = "meter", **water: Any) -> Water:
+        return cls(*build_state(known, ph_scale, **water))
+
     # ---------------------------------------------------------------- making one
 
     @classmethod
-    def from_ph_alkalinity(cls, *, ph: ArrayLike, alkalinity_eq_l: ArrayLike, ph_scale: str = "meter", **water) -> Water:
+    def from_ph_alkalinity(cls, *, ph: ArrayLike, alkalinity_eq_l: ArrayLike, ph_scale: str = "meter", **water: Any) -> Water:
         """Water of known pH (on `ph_scale`: meter, total, seawater, free) and alkalinity [eq/L]."""
-        return _make(cls, {"ph": ph, "alkalinity": alkalinity_eq_l}, ph_scale, **water)
+        return cls._make({"ph": ph, "alkalinity": alkalinity_eq_l}, ph_scale, **water)
 
     @classmethod
-    def from_alkalinity_dic(cls, *, alkalinity_eq_l: ArrayLike, dic_mol_l: ArrayLike, **water) -> Water:
+    def from_alkalinity_dic(cls, *, alkalinity_eq_l: ArrayLike, dic_mol_l: ArrayLike, **water: Any) -> Water:
         """Water of known alkalinity [eq/L] and total inorganic carbon [mol/L]."""
-        return _make(cls, {"alkalinity": alkalinity_eq_l, "dic": dic_mol_l}, **water)
+        return cls._make({"alkalinity": alkalinity_eq_l, "dic": dic_mol_l}, **water)
 
     @classmethod
-    def from_ph_dic(cls, *, ph: ArrayLike, dic_mol_l: ArrayLike, ph_scale: str = "meter", **water) -> Water:
+    def from_ph_dic(cls, *, ph: ArrayLike, dic_mol_l: ArrayLike, ph_scale: str = "meter", **water: Any) -> Water:
         """Water of known pH (on `ph_scale`) and total inorganic carbon [mol/L]."""
-        return _make(cls, {"ph": ph, "dic": dic_mol_l}, ph_scale, **water)
+        return cls._make({"ph": ph, "dic": dic_mol_l}, ph_scale, **water)
 
     @classmethod
-    def from_alkalinity_pco2(cls, *, alkalinity_eq_l: ArrayLike, pco2_atm: ArrayLike, **water) -> Water:
+    def from_alkalinity_pco2(cls, *, alkalinity_eq_l: ArrayLike, pco2_atm: ArrayLike, **water: Any) -> Water:
         """Water of known alkalinity [eq/L] in equilibrium with a CO2 pressure [atm]."""
-        return _make(cls, {"alkalinity": alkalinity_eq_l, "pco2": pco2_atm}, **water)
+        return cls._make({"alkalinity": alkalinity_eq_l, "pco2": pco2_atm}, **water)
 
     @classmethod
-    def from_ph_pco2(cls, *, ph: ArrayLike, pco2_atm: ArrayLike, ph_scale: str = "meter", **water) -> Water:
+    def from_ph_pco2(cls, *, ph: ArrayLike, pco2_atm: ArrayLike, ph_scale: str = "meter", **water: Any) -> Water:
         """Water of known pH (on `ph_scale`) and CO2 pressure [atm]."""
-        return _make(cls, {"ph": ph, "pco2": pco2_atm}, ph_scale, **water)
+        return cls._make({"ph": ph, "pco2": pco2_atm}, ph_scale, **water)
 
     @classmethod
-    def from_dic_pco2(cls, *, dic_mol_l: ArrayLike, pco2_atm: ArrayLike, **water) -> Water:
+    def from_dic_pco2(cls, *, dic_mol_l: ArrayLike, pco2_atm: ArrayLike, **water: Any) -> Water:
         """Water of known total inorganic carbon [mol/L] and CO2 pressure [atm]."""
-        return _make(cls, {"dic": dic_mol_l, "pco2": pco2_atm}, **water)
+        return cls._make({"dic": dic_mol_l, "pco2": pco2_atm}, **water)
 
     # ---------------------------------------------------------------- what it is
 
@@ -134,7 +133,7 @@ class Water:
 
     def ph_on(self, scale: str) -> Array:
         """pH on `scale`: meter, total, seawater or free. Raises InputError for another name."""
-        return self._out(self._state.ph(_checked_scale(scale)))
+        return self._out(self._state.ph(checked(scale, PH_SCALES, "the pH scale", "Use 'meter' for a usual meter.")))
 
     @property
     def alkalinity_eq_l(self) -> Array:
@@ -176,6 +175,26 @@ class Water:
         """Density. [kg/L]"""
         return self._out(self._state.conditions.density_kg_l)
 
+    @property
+    def pressure_atm(self) -> Array:
+        """Air pressure. [atm]"""
+        return self._out(self._state.conditions.pressure_atm)
+
+    @property
+    def state(self) -> State:
+        """The solved rows, flattened, for functions of the engine that work on them."""
+        return self._state
+
+    @property
+    def options(self) -> dict[str, Any]:
+        """Acids of the user's own and names of the marine sets this water was made with."""
+        return dict(self._options)
+
+    @property
+    def total_names(self) -> tuple[str, ...]:
+        """Names of the weak acids and ions this water was made with."""
+        return tuple(d.acid.name for d in self._state.acids) + tuple(self._state.ions)
+
     def total_mol_l(self, name: str) -> Array:
         """Total of a weak acid or ion in the water; zero if absent. [mol/L]"""
         for d in self._state.acids:
@@ -189,7 +208,7 @@ class Water:
         c, s = self._state.conditions, self._state
         out = {f: s.dic * a for f, a in zip(CARBONATE_FORMS, s.carbonate_fractions(), strict=True)}
         for d, family in zip(s.acids, s.families, strict=True):
-            alpha = buffer.fractions(family.k, 1.0 / s.h)
+            alpha = fractions(family.k, 1.0 / s.h)
             out |= {form: d.total * a for form, a in zip(d.acid.species, alpha, strict=True)}
         out |= {"H+": c.c_h * s.h, "OH-": c.c_oh / s.h}
         return {form: self._out(v) for form, v in out.items()}
@@ -198,10 +217,10 @@ class Water:
         """Charge that a weak acid carries, all its forms together; "carbonate" for inorganic carbon. [eq/L]"""
         s = self._state
         if name == "carbonate":
-            return self._out(-s.dic * buffer.protons_lost(s.carbonate_fractions()))
+            return self._out(-s.dic * protons_lost(s.carbonate_fractions()))
         for d, family in zip(s.acids, s.families, strict=True):
             if d.acid.name == name:
-                lost = buffer.protons_lost(buffer.fractions(family.k, 1.0 / s.h))
+                lost = protons_lost(fractions(family.k, 1.0 / s.h))
                 return self._out(d.total * (d.acid.charge_full - lost))
         raise InputError(f"no acid {name!r} is in this water; it holds carbonate"
                          f"{''.join(', ' + d.acid.name for d in s.acids)}. Give {name}{SUFFIX} when making the water.")
@@ -211,7 +230,7 @@ class Water:
     def buffer_intensity_eq_l(self, exchange: Exchange = "closed") -> Array:
         """dC_base/dpH: closed, or open with the CO2 pressure it has now held. [eq/L per pH]"""
         s = self._state
-        return self._out(buffer.buffer_intensity(s, co2=s.co2 if _checked(exchange) == "open" else None))
+        return self._out(buffer.buffer_intensity(s, co2=s.co2 if _checked_exchange(exchange) == "open" else None))
 
     def buffer_by_pair(self) -> dict[str, Array]:
         """Closed buffer intensity split by conjugate pair and the water itself; the parts add up. [eq/L per pH]"""
@@ -245,7 +264,7 @@ class Water:
         return -self.acid_to_ph_eq_l(ph, exchange, pco2_atm=pco2_atm)
 
     def _held_co2(self, exchange: Exchange, pco2_atm: ArrayLike | None) -> Array | None:
-        if _checked(exchange) == "closed":
+        if _checked_exchange(exchange) == "closed":
             return None
         if pco2_atm is None:
             return self._state.co2
@@ -266,7 +285,7 @@ class Water:
     def after_acid(self, acid_eq_l: ArrayLike, exchange: Exchange = "closed", *, pco2_atm: ArrayLike | None = None) -> Water:
         """The water after strong acid (negative: base) that adds no carbon; ionic strength and volume are held."""
         alk = self.alkalinity_eq_l - np.asarray(acid_eq_l, dtype=float)
-        if _checked(exchange) == "closed":
+        if _checked_exchange(exchange) == "closed":
             return self._again({"alkalinity": alk, "dic": self.dic_mol_l})
         return self._again({"alkalinity": alk, "pco2": self.pco2_atm if pco2_atm is None else pco2_atm})
 
@@ -293,7 +312,7 @@ class Water:
             ratio = self._out(new.density_kg_l / c.density_kg_l)
             water |= {n: v * ratio for n, v in water.items() if n.endswith(SUFFIX)} | {"t_c": t_c}
             known = {n: np.asarray(v) * ratio for n, v in known.items()}
-        return _make(type(self), known, **water)
+        return self._make(known, **water)
 
     def _given(self) -> dict[str, ArrayLike]:
         """Everything but the pair, as keywords of a constructor."""
@@ -324,134 +343,9 @@ class Water:
             precipitate.pairing(self._state), _checked_mineral(mineral))[1])
 
 
-def _checked_scale(scale: str) -> str:
-    if scale not in PH_SCALES:
-        raise InputError(f"the pH scale must be one of {', '.join(PH_SCALES)}; found {scale!r}. "
-                         f"Use 'meter' for a meter calibrated with standard buffers.")
-    return scale
-
-
-def _checked(exchange: str) -> str:
-    if exchange not in ("closed", "open"):
-        raise InputError(f"exchange must be 'closed' or 'open'; found {exchange!r}. "
-                         f"Closed keeps the carbon, open holds the CO2 pressure.")
-    return exchange
+def _checked_exchange(exchange: str) -> str:
+    return checked(exchange, ("closed", "open"), "exchange", "Closed keeps the carbon, open holds the CO2 pressure.")
 
 
 def _checked_mineral(mineral: str) -> str:
-    if mineral not in precipitate.MINERALS:
-        raise InputError(f"the mineral must be one of {', '.join(precipitate.MINERALS)}; found {mineral!r}. "
-                         f"Use 'calcite' unless you know better.")
-    return mineral
-
-
-def _make(
-    cls: type[Water], known: dict[str, ArrayLike], ph_scale: str = "meter", *,
-    t_c: ArrayLike, salinity: ArrayLike = 0.0, ionic_strength_mol_l: ArrayLike | None = None,
-    pressure_atm: ArrayLike = 1.0, acids: Iterable[Acid] = (), carbonic: str = "millero",
-    boron_ratio: str = "uppstrom", **totals: ArrayLike,
-) -> Water:
-    """Solve one pair; the shared keywords are described at `Water`."""
-    _checked_scale(ph_scale)
-    own = tuple(acids)
-    acid_totals, ion_totals = _sorted_totals(totals, own)
-    strengths = [] if ionic_strength_mol_l is None else [ionic_strength_mol_l]
-    try:
-        shape = common_shape(*known.values(), t_c, salinity, pressure_atm, *strengths, *totals.values())
-    except ValueError as error:
-        raise InputError(f"the inputs must broadcast to one shape; found {error}. Give scalars or arrays of one "
-                         f"length.") from None
-
-    def flat(v: ArrayLike) -> Array:
-        return as_rows(v, shape).reshape(-1)
-
-    values = {n: flat(v) for n, v in known.items()}
-    s, t, p = flat(salinity), flat(t_c), flat(pressure_atm)
-    sea = s >= FRESH_BELOW
-    if sea.any():
-        acid_totals = {n: acid_totals.get(n, np.nan) for n in ("boron", "sulfate", "fluoride")} | acid_totals
-        ion_totals = {"calcium": np.nan} | ion_totals
-    sulfate, fluoride = (flat(acid_totals.get(n, np.nan)) for n in ("sulfate", "fluoride"))
-
-    def solve(strength: Array) -> State:
-        c = conditions(t, s, strength, pressure_atm=p, sulfate_mol_l=sulfate, fluoride_mol_l=fluoride, carbonic=carbonic)
-        dissolved = tuple(Dissolved(acid_named(n, own), _with_sea(n, flat(v), c, boron_ratio))
-                          for n, v in acid_totals.items())
-        ions = {n: _with_sea(n, flat(v), c, boron_ratio) for n, v in ion_totals.items()}
-        return solve_pair(values, c, dissolved, ions, ph_scale=ph_scale)
-
-    given = np.full(s.shape, np.nan) if ionic_strength_mol_l is None else flat(ionic_strength_mol_l)
-    state = solve(_implied_strength(given, values, s, solve))
-    return cls(state, shape, {"acids": own, "carbonic": carbonic, "boron_ratio": boron_ratio})
-
-
-def _sorted_totals(totals: dict[str, ArrayLike], own: tuple[Acid, ...]) -> tuple[dict, dict]:
-    """Totals of weak acids and of ions by plain name. Raises InputError for a name that is neither."""
-    names = set(acid_table()) | {a.name for a in own} | set(IONS)
-    acid_totals, ion_totals = {}, {}
-    for keyword, value in totals.items():
-        name = keyword.removesuffix(SUFFIX)
-        if not keyword.endswith(SUFFIX) or name not in names:
-            near = get_close_matches(keyword, [n + SUFFIX for n in names], n=3) or sorted(n + SUFFIX for n in names)
-            raise InputError(f"{keyword!r} is not a total that water can have; nearest: {', '.join(near)}. "
-                             f"Correct the name, or describe your own acid in `acids`.")
-        (ion_totals if name in IONS else acid_totals)[name] = value
-    return acid_totals, ion_totals
-
-
-def _with_sea(name: str, given: Array, c: Conditions, boron_ratio: str) -> Array:
-    """A total with its gaps filled: from salinity in marine rows where sea salt brings it, else zero or unknown."""
-    if boron_ratio not in BORON_OF_SEAWATER:
-        raise InputError(f"boron_ratio must be one of {', '.join(BORON_OF_SEAWATER)}; found {boron_ratio!r}. "
-                         f"Leave it out for 'uppstrom'.")
-    of_salt = {"boron": BORON_OF_SEAWATER[boron_ratio], "sulfate": seasalt.sulfate_of_seawater,
-               "fluoride": seasalt.fluoride_of_seawater, "calcium": seasalt.calcium_of_seawater}
-    fill = np.full(given.shape, np.nan if name in IONS else 0.0)
-    if name in of_salt:
-        fill = np.where(c.is_marine, of_salt[name](c.salinity) * c.density_kg_l, fill)
-    return np.where(np.isnan(given), fill, given)
-
-
-def _implied_strength(given: Array, values: dict[str, Array], s: Array, solve) -> Array:
-    """Ionic strength: the given one, else the larger of what salinity and alkalinity (as a 1:1 salt) imply."""
-    missing = np.isnan(given)
-    if not missing.any():
-        return given
-    of_salt = seasalt.ionic_strength_seawater(np.clip(np.nan_to_num(s), 0.0, FRESH_BELOW))
-    alkalinity = values.get("alkalinity")
-    if alkalinity is None:
-        alkalinity = solve(of_salt).alkalinity
-    return np.where(missing, np.fmax(of_salt, np.abs(alkalinity)), given)
-
-
-def mix(waters: Sequence[Water], volumes: Sequence[ArrayLike]) -> Water:
-    """Mix waters in proportion to `volumes` (any unit); closed, so alkalinity, totals, salt and heat are conserved.
-
-    The pH is solved, never averaged. Heat capacity per kilogram is taken as equal (sea water has 5 % less).
-    Raises InputError where numbers of waters and volumes differ, a volume is negative, or all are zero.
-    """
-    if len(waters) != len(volumes) or not waters:
-        raise InputError(f"mixing needs one volume per water; found {len(waters)} waters and {len(volumes)} volumes. "
-                         f"Give them in the same order.")
-    v = [np.asarray(x, dtype=float) for x in volumes]
-    if any((x < 0.0).any() for x in v) or not np.all(sum(v) > 0.0):
-        raise InputError("volumes must not be negative and must not all be zero; found such a value. Correct it.")
-    mass = [x * w.density_kg_l for x, w in zip(v, waters, strict=True)]
-    whole = sum(mass)
-
-    def by_mass(name: str) -> Array:
-        return sum(m * getattr(w, name) for m, w in zip(mass, waters, strict=True)) / whole
-
-    t, s = by_mass("t_c"), by_mass("salinity")
-    density = conditions(t, s).density_kg_l
-
-    def amount(of) -> Array:
-        return sum(x * of(w) for x, w in zip(v, waters, strict=True)) / whole * density
-
-    names = {n for w in waters for n in [d.acid.name for d in w._state.acids] + list(w._state.ions)}
-    own = {a.name: a for w in waters for a in w._options["acids"]}
-    return Water.from_alkalinity_dic(
-        alkalinity_eq_l=amount(lambda w: w.alkalinity_eq_l), dic_mol_l=amount(lambda w: w.dic_mol_l), t_c=t, salinity=s,
-        ionic_strength_mol_l=by_mass("ionic_strength_mol_l"), pressure_atm=waters[0]._out(waters[0]._state.conditions.pressure_atm),
-        **(waters[0]._options | {"acids": tuple(own.values())}),
-        **{f"{n}{SUFFIX}": amount(lambda w, n=n: w.total_mol_l(n)) for n in sorted(names)})
+    return checked(mineral, precipitate.MINERALS, "the mineral", "Use 'calcite' unless you know better.")

@@ -1,0 +1,50 @@
+"""Mixing of waters."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from aquabuf.engine.build import SUFFIX
+from aquabuf.engine.conditions import conditions
+from aquabuf.engine.water import Water
+from aquabuf.errors import InputError
+
+__all__ = ["mix"]
+
+Array = NDArray[np.float64]
+
+
+def mix(waters: Sequence[Water], volumes: Sequence[ArrayLike]) -> Water:
+    """Mix waters in proportion to `volumes` (any unit); closed, so alkalinity, totals, salt and heat are conserved.
+
+    The pH is solved, never averaged. Heat capacity per kilogram is taken as equal (sea water has 5 % less).
+    Raises InputError where numbers of waters and volumes differ, a volume is negative, or all are zero.
+    """
+    if len(waters) != len(volumes) or not waters:
+        raise InputError(f"mixing needs one volume per water; found {len(waters)} waters and {len(volumes)} volumes. "
+                         f"Give them in the same order.")
+    v = [np.asarray(x, dtype=float) for x in volumes]
+    if any((x < 0.0).any() for x in v) or not np.all(sum(v) > 0.0):
+        raise InputError("volumes must not be negative and must not all be zero; found such a value. Correct it.")
+    mass = [x * w.density_kg_l for x, w in zip(v, waters, strict=True)]
+    whole = sum(mass)
+
+    def by_mass(name: str) -> Array:
+        return sum(m * getattr(w, name) for m, w in zip(mass, waters, strict=True)) / whole
+
+    t, s = by_mass("t_c"), by_mass("salinity")
+    density = conditions(t, s).density_kg_l
+
+    def amount(of: Callable[[Water], Array]) -> Array:
+        return sum(x * of(w) for x, w in zip(v, waters, strict=True)) / whole * density
+
+    names = sorted({n for w in waters for n in w.total_names})
+    own = {a.name: a for w in waters for a in w.options["acids"]}
+    return Water.from_alkalinity_dic(
+        alkalinity_eq_l=amount(lambda w: w.alkalinity_eq_l), dic_mol_l=amount(lambda w: w.dic_mol_l),
+        t_c=t, salinity=s, ionic_strength_mol_l=by_mass("ionic_strength_mol_l"), pressure_atm=waters[0].pressure_atm,
+        **(waters[0].options | {"acids": tuple(own.values())}),
+        **{f"{n}{SUFFIX}": amount(lambda w, n=n: w.total_mol_l(n)) for n in names})
