@@ -1,7 +1,8 @@
 """Units: what a header or an option may say, and the one conversion to the house unit.
 
-The table `data/units.csv` lists the units, `data/ions.csv` the molar masses. A concentration is read in three steps: the unit gives
-an amount, a charge or a mass; a basis ("as N", "as CaCO3") tells whose mass; the quantity decides what is wanted (its dimension):
+The table `data/units.csv` lists the units, `data/ions.csv` the molar masses. A concentration is read in three
+steps: the unit gives an amount, a charge or a mass; a basis ("as N", "as CaCO3") tells whose mass; the dimension
+of the quantity decides what is wanted:
 
     amount      mol/L of a substance            alkalinity  eq/L
     hardness    mol/L of calcium + magnesium    mass        mg/L of a substance
@@ -63,6 +64,7 @@ class Unit:
     offset: float
     per_kg: bool
     basis: str
+    rare: bool = False  # understood, but left out of short lists
 
     @property
     def label(self) -> str:
@@ -75,7 +77,7 @@ _BASIS_UNITS = {"g_l", "mg_l", "ug_l", "g_kg", "mg_kg", "ug_kg"}
 
 def key(text: str) -> str:
     """Plain form of a header or unit: lower case, ASCII, words joined by '_' ("µS/cm" -> "us_cm")."""
-    text = _PER.sub(r"/\1", text.translate(_MICRO_AND_SMALL).lower())
+    text = _PER.sub(r"/\1", text.lower().translate(_MICRO_AND_SMALL))  # lower first: capital µ is a Greek capital
     return _LITER.sub("_l", re.sub(r"[^a-z0-9]+", "_", text).strip("_").replace("_per_", "_"))
 
 
@@ -94,8 +96,8 @@ def substances() -> dict[str, Substance]:
 def _bases() -> dict[str, str]:
     """Formula of each substance by its plain form, and the element names people write instead."""
     found = {key(s.formula): s.formula for s in substances().values()}
-    found |= {s.name: s.formula for s in substances().values() if s.name in ("carbon", "nitrogen", "phosphorus")}
-    return found | {"boh3": "B(OH)3", "h3bo3": "B(OH)3"}
+    elements = ("carbon", "nitrogen", "phosphorus")
+    return found | {name: substances()[name].formula for name in elements} | {"h3bo3": "B(OH)3"}
 
 
 def find_basis(text: str) -> str:
@@ -118,7 +120,7 @@ def _group(group: str) -> dict[str, Unit]:
             continue
         unit = Unit(
             group, row["kind"], row["unit"], row["suffix"], float(row["scale"]), float(row["offset"]),
-            row["per_kg"] == "yes", row["basis"],
+            row["per_kg"] == "yes", row["basis"], row["rare"] == "yes",
         )  # fmt: skip
         found[row["unit"]] = unit  # "-" and "°" have no plain form
         for spelling in (row["suffix"], key(row["unit"]), *row["spellings"].split(";")):
@@ -181,9 +183,7 @@ def _mass_scale(unit: Unit, dimension: str, molar_mass_g: float | None, charge: 
         return 1e3
     mass = molar_mass_of(unit.basis) if unit.basis else molar_mass_g
     if mass is None:
-        raise InputError(
-            f"{unit.label} needs a basis to become an amount: none is given. Write e.g. 'mg/L as N'."
-        )
+        raise InputError(f"{unit.label} needs a basis to become an amount: none is given. Write e.g. 'mg/L as N'.")
     if unit.basis in EQUIVALENTS_PER_MOL:
         return EQUIVALENTS_PER_MOL[unit.basis] / mass / _whole_charge(unit, charge)
     return 1.0 / mass
@@ -236,9 +236,9 @@ def to_house(
     density_kg_l: Any = None,
     back: bool = False,
 ) -> Any:
-    """Values in the unit `text` as house units of `dimension` (mol/L, eq/L, °C, m³/d ...); `back` does the reverse.
+    """Values in the unit `text` as house units of `dimension` (mol/L, eq/L, °C, m³/d ...); `back` reverses.
 
-    `substance` is a name of the ion table where mass or charge is counted; arrays and scalars keep their shape.
+    `substance` is a name of the ion table where mass or charge is counted. Arrays and scalars keep their shape.
 
     >>> round(to_house(50.043, "mg/L as CaCO3", "alkalinity"), 9)
     0.001
@@ -260,4 +260,5 @@ def to_house(
 
 def convert(values: Any, from_unit: str, to_unit: str, dimension: str, substance: str = "") -> Any:
     """Values in `from_unit` expressed in `to_unit`, both of one dimension (see `to_house`)."""
-    return to_house(to_house(values, from_unit, dimension, substance), to_unit, dimension, substance, back=True)
+    house = to_house(values, from_unit, dimension, substance)
+    return to_house(house, to_unit, dimension, substance, back=True)

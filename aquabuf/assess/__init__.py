@@ -1,1 +1,1 @@
-"""."""
+"""The questions that users ask, answered with rules and uncertainty."""

@@ -17,7 +17,7 @@ from aquabuf.chem import activity, fresh, marine
 from aquabuf.engine.balance import System, alkalinity_at
 from aquabuf.engine.state import State
 
-__all__ = ["MINERALS", "Pairing", "pairing", "precipitation_potential", "saturation_index"]
+__all__ = ["MINERALS", "Pairing", "pairing", "precipitation_potential", "saturation_index", "solubility_ratio"]
 
 Array = NDArray[np.float64]
 
@@ -155,6 +155,11 @@ def _solubility(state: State, mineral: str) -> Array:
         at_sea = np.full(ksp.shape, np.nan) if of_sea is None else of_sea(c.t_c, c.salinity)
         ksp = np.where(c.is_marine, at_sea, ksp)
     return ksp * c.density_kg_l**2
+
+
+def solubility_ratio(state: State, mineral: str, other: str) -> Array:
+    """Solubility product of `mineral` over that of `other` at the water's conditions. [-]"""
+    return _solubility(state, mineral) / _solubility(state, other)
 
 
 def _follow(s: _Solution, h: Array, calcium: Array, bicarbonate: Array, now: _Spectators) -> _Spectators:

@@ -18,10 +18,10 @@ __all__ = ["DATE_ORDERS", "Numbers", "Problem", "parse_choice", "parse_date", "p
 MISSING = frozenset({"", "na", "n/a", "n.a.", "-", "--", "nan", "null"})
 DATE_ORDERS = ("day-month-year", "month-day-year")
 _NOT_PLAIN = re.compile(r"[^0-9eE+\-.,\n \t]")
-_NUMBER = re.compile(r"[+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?")
+_NUMBER = re.compile(r"[+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?", re.ASCII)
 _THOUSANDS = re.compile(r"[+-]?\d{1,3}(?:[,.' \u00a0\u202f]\d{3})+(?:[.,]\d+)?")
 _BELOW_WORDS = re.compile(r"(?:nd|n\.d\.|bdl|bql|b\.?d\.?|<?\s*(?:lod|loq|mdl|dl)|u)", re.IGNORECASE)
-_MONTHS = {name: i for i, name in enumerate("jan feb mar apr may jun jul aug sep oct nov dec".split(), 1)}
+_MONTHS = dict(zip("jan feb mar apr may jun jul aug sep oct nov dec".split(), range(1, 13), strict=True))  # noqa: SIM905
 
 
 @dataclass(frozen=True, slots=True)
@@ -52,11 +52,14 @@ def _bad_number(cell: str, decimal: str) -> tuple[str, str]:
     if _THOUSANDS.fullmatch(cell):
         return "thousands separators are not read", "write the number without them, e.g. 1234.5"
     if _BELOW_WORDS.fullmatch(cell):
-        return "a value below detection needs its limit", "write it as <0.02, or add the word to 'missing' in a map file"
+        return (
+            "a value below detection needs its limit",
+            "write it as <0.02, or add the word to 'missing' in a map file",
+        )
     if decimal == "." and _NUMBER.fullmatch(cell.replace(",", ".", 1)):
-        return "the decimal sign of this file is a point", "write 7.4, or say decimal = \",\" in a map file"
+        return "the decimal sign of this file is a point", 'write 7.4, or say decimal = "," in a map file'
     if decimal == "," and _NUMBER.fullmatch(cell):
-        return "the decimal sign of this file is a comma", "write 7,4, or say decimal = \".\" in a map file"
+        return "the decimal sign of this file is a comma", 'write 7,4, or say decimal = "." in a map file'
     return "must be a number", "correct it or leave it blank; units belong in the header"
 
 
@@ -155,7 +158,7 @@ def parse_date(cell: str, order: str = "") -> datetime.date | None:
     if not plain:
         return None
     first, second, year = int(plain[1]), int(plain[3]), _full_year(plain[4])
-    if not order and plain[2] == "." or order == DATE_ORDERS[0] or not order and (first > 12 or first == second):
+    if (not order and plain[2] == ".") or order == DATE_ORDERS[0] or (not order and (first > 12 or first == second)):
         return _date(year, second, first)
     if order == DATE_ORDERS[1] or second > 12:
         return _date(year, first, second)

@@ -1,4 +1,4 @@
-"""Quantities that follow from other columns of the same row: density, conductivity at 25 °C, calcium from its hardness."""
+"""What follows from other columns of the same row: density, conductivity at 25 °C, calcium from its hardness."""
 
 from __future__ import annotations
 
@@ -42,7 +42,9 @@ def _fill(sheet: Sheet, name: str, values: np.ndarray) -> None:
 def _from_raw_conductivity(sheet: Sheet) -> None:
     raw = sheet.numbers["conductivity_raw_us_cm"]
     t_c = sheet.numbers.get("temperature_c", np.full(len(sheet), np.nan))
-    sheet.flag(np.isfinite(raw) & np.isnan(t_c), "conductivity_raw_us_cm", None, "no temperature, so no conductivity at 25 °C")
+    sheet.flag(
+        np.isfinite(raw) & np.isnan(t_c), "conductivity_raw_us_cm", None, "no temperature, so no conductivity at 25 °C"
+    )
     own = np.isfinite(sheet.numbers.get("conductivity_us_cm", np.full(len(sheet), np.nan)))
     _fill(sheet, "conductivity_us_cm", conductivity_25(raw, t_c))
     spread = sheet.numbers.get("conductivity_raw_u_us_cm")

@@ -1,4 +1,4 @@
-"""What a column header means: quantity, uncertainty or value, and unit. Anything doubtful is an error, never a guess."""
+"""What a column header means: quantity, uncertainty or value, and unit. What is doubtful is an error, not a guess."""
 
 from __future__ import annotations
 
@@ -8,7 +8,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass, replace
 
 from aquabuf.errors import HeaderError
-from aquabuf.readings.schema import Quantity, label_for, unit_labels, usable_units, why_not
+from aquabuf.readings.schema import Quantity, example_header, label_for, unit_labels, why_not
 from aquabuf.units import CONCENTRATIONS, Unit, find_basis, key, linear, parse_unit
 
 __all__ = ["Column", "column_for", "nearest_names", "parse_header"]
@@ -30,7 +30,6 @@ class Column:
     scale: float = 1.0
     offset: float = 0.0
     negative: str = "keep"  # keep, zero or missing: what to do with values below zero
-    missing_below_limit: bool = False
 
     @property
     def name(self) -> str:
@@ -50,7 +49,7 @@ class Column:
 def nearest_names(name: str, index: Index, count: int = 3) -> list[str]:
     """Canonical names whose header resembles `name`, the best first."""
     plain = key(name)
-    close = difflib.get_close_matches(plain, index, n=3 * count, cutoff=0.5)
+    close = difflib.get_close_matches(plain, index, n=3 * count, cutoff=0.6)
     words = [known for known in index if len(known) > 3 and known in plain]
     return list(dict.fromkeys(index[known][0].name for known in (*close, *words)))[:count]
 
@@ -75,8 +74,8 @@ def _ambiguous(header: str, quantity: Quantity, unit: Unit) -> HeaderError:
     labels = " or ".join(f"{way.unit} as {way.basis}" for way in ways)
     names = " or ".join(f"{quantity.base}_{way.suffix}_{key(way.basis)}" for way in ways)
     return HeaderError(
-        f"column {header!r} is ambiguous: {unit.unit} of {quantity.base} can mean {labels}, which are different amounts. "
-        f"Rename it to {names}, or say the unit in a map file."
+        f"column {header!r} is ambiguous: {unit.unit} of {quantity.base} can mean {labels}, which are different "
+        f"amounts. Rename it to {names}, or say the unit in a map file."
     )
 
 
@@ -101,19 +100,17 @@ def column_for(header: str, quantity: Quantity, unit: Unit | None, *, is_u: bool
             f"column {header!r}: {quantity.base} cannot be given in {unit.label}, because {reason}. "
             f"Use one of: {', '.join(unit_labels(quantity))}."
         )
-    scale, offset = linear(unit, quantity.dimension, molar_mass_g=quantity.molar_mass_g, charge=quantity.charge)
-    return Column(
-        header=header, quantity=quantity, is_u=is_u, unit=unit, scale=scale, offset=0.0 if is_u else offset
-    )
+    mass_g, charge = quantity.molar_mass_g, quantity.charge
+    scale, offset = linear(unit, quantity.dimension, molar_mass_g=mass_g, charge=charge)
+    offset = 0.0 if is_u else offset  # a spread in °F has no zero point
+    return Column(header=header, quantity=quantity, is_u=is_u, unit=unit, scale=scale, offset=offset)
 
 
 def _unit_missing(header: str, quantity: Quantity) -> HeaderError:
-    labels = ", ".join(unit_labels(quantity))
-    example = usable_units(quantity)[0]
-    ending = example.suffix + (f"_{key(example.basis)}" if example.label != example.unit else "")
+    labels = unit_labels(quantity)
     return HeaderError(
-        f"column {header!r} needs a unit: {quantity.base} can be in {labels}. "
-        f"Write it in the header, e.g. {quantity.base}_{ending} or '{quantity.base} ({example.label})'."
+        f"column {header!r} needs a unit: {quantity.base} can be in {', '.join(labels)}. "
+        f"Write it in the header, e.g. {example_header(quantity)} or '{quantity.base} ({labels[0]})'."
     )
 
 
@@ -130,7 +127,7 @@ def _unknown(header: str, index: Index) -> HeaderError:
     hint = f"The nearest known names are {', '.join(near)}. " if near else "No known name is near. "
     return HeaderError(
         f"column {header!r} is not known. {hint}Rename it, remove it, or give its meaning in a map file "
-        "([columns], or unlisted = \"ignore\")."
+        '([columns], or unlisted = "ignore").'
     )
 
 
@@ -164,7 +161,7 @@ def _suffixed(header: str, index: Index) -> Column | None:
 
 
 def parse_header(header: str, index: Index) -> Column:
-    """The meaning of a header: "calcium_mg_l", "Calcium (mg/L)", "NO3-N [µg/L]", "pH", "alkalinity_u_ueq_l" ...
+    """The meaning of a header: "calcium_mg_l", "Calcium (mg/L)", "NO3-N [µg/L]", "alkalinity_u_ueq_l" ...
 
     Parameters
     ----------

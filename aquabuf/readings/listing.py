@@ -7,13 +7,18 @@ from collections.abc import Sequence
 
 from aquabuf.errors import InputError
 from aquabuf.readings.headers import nearest_names
-from aquabuf.readings.schema import Quantity, name_index, quantities, unit_labels, usable_units
+from aquabuf.readings.schema import Quantity, example_header, name_index, quantities, unit_labels
 from aquabuf.units import key
 
 __all__ = ["columns_text"]
 
 WIDTH = 100
-_LABEL = 14
+_LABEL = 15
+_CLOSING = (
+    "Readings may be in any usual unit, said at the end of the header: calcium_mg_l, 'Calcium (mg/L)', "
+    "alkalinity_ueq_l. The column name is what the program calls them, in its own unit. A standard uncertainty has "
+    "_u before the unit: calcium_u_mg_l, ph_u. Name a column to see its units, other headers and limits."
+)
 
 
 def columns_text(names: Sequence[str] = (), width: int = WIDTH) -> str:
@@ -48,21 +53,16 @@ def _find(name: str) -> Quantity:
 
 
 def _overview(width: int) -> str:
-    """One line per column: name, house unit, meaning."""
+    """One line per column: its name here, a header people write, its meaning."""
     records = list(quantities().values())
     name_width = max(len(q.name) for q in records)
-    unit_width = max(len(q.house_unit) for q in records)
-    lead = " " * (name_width + unit_width + 4)
-    lines = [f"{'column':{name_width}}  {'unit':{unit_width}}  meaning"]
+    example_width = max(len(example_header(q)) for q in records)
+    lead = " " * (name_width + example_width + 4)
+    lines = [f"{'column':{name_width}}  {'header, e.g.':{example_width}}  meaning"]
     for q in records:
-        start = f"{q.name:{name_width}}  {q.house_unit:{unit_width}}  "
+        start = f"{q.name:{name_width}}  {example_header(q):{example_width}}  "
         lines.append(textwrap.fill(q.meaning, width, initial_indent=start, subsequent_indent=lead))
-    closing = (
-        "A column can be in any usual unit, said at the end of its header: calcium_mg_l, 'Calcium (mg/L)', "
-        "alkalinity_mg_l_caco3. Its standard uncertainty has _u before the unit: calcium_u_mg_l, ph_u. "
-        "Name a column to see its units, other headers, limits and default uncertainty."
-    )
-    return "\n".join((*lines, "", textwrap.fill(closing, width))) + "\n"
+    return "\n".join((*lines, "", textwrap.fill(_CLOSING, width))) + "\n"
 
 
 def _item(label: str, text: str, width: int) -> str:
@@ -75,22 +75,16 @@ def _item(label: str, text: str, width: int) -> str:
 def _units(q: Quantity) -> str:
     if not q.is_number:
         return ""
-    must = "" if q.has_default_unit else " (must be said in the header)"
-    return ", ".join(unit_labels(q)) + must
+    must = "" if q.has_default_unit else "; must be said in the header"
+    more = "; also with other prefixes and per kg" if len(unit_labels(q, rare=True)) > len(unit_labels(q)) else ""
+    return ", ".join(unit_labels(q)) + more + must
 
 
 def _headers(q: Quantity) -> str:
     """Examples of headers, and the other names."""
-    examples = [q.name]
-    if q.is_number and usable_units(q)[0].suffix:
-        label = next(label for label in (*_preferred(q), q.house_unit))
-        examples.append(f"'{q.base.replace('_', ' ').capitalize()} ({label})'")
+    examples = list(dict.fromkeys((example_header(q), q.name)))
     others = [name.replace("_", " ") for name, _ in q.aliases]
     return ", ".join(examples) + (f"; other names: {', '.join(others)}" if others else "")
-
-
-def _preferred(q: Quantity) -> list[str]:
-    return [label for label in unit_labels(q) if label.startswith("mg/L")][:1]
 
 
 def _range(q: Quantity) -> str:

@@ -1,17 +1,17 @@
 """Map files (TOML): what the headers of someone else's table mean, so that it is read as it is.
 
-    unlisted = "ignore"                       headers not named below: "read" (default), "ignore" or "error"
-    [columns]
-    "Ca_ueq_L" = "calcium (µeq/L)"            any header this program knows, or
-    "NH4" = { is = "ammonium", unit = "µeq/L", multiply = 1.0, negative = "zero" }
-    [compose]
-    sample_id = ["site_id", "date"]           joined with "_"
-    [values]
-    temperature_c = 22                        the same for every row
-    [read]
-    delimiter, decimal, encoding, missing, date_order
-    [acids.NAME]
-    pk, charge, dh_j_mol, dcp_j_mol_k, molar_mass_g
+unlisted = "ignore"                       headers not named below: "read" (default), "ignore" or "error"
+[columns]
+"Ca_ueq_L" = "calcium (µeq/L)"            any header this program knows, or
+"NH4" = { is = "ammonium", unit = "µeq/L", multiply = 1.0, negative = "zero" }
+[compose]
+sample_id = ["site_id", "date"]           joined with "_"
+[values]
+temperature_c = 22                        the same for every row
+[read]
+delimiter, decimal, encoding, missing, date_order
+[acids.NAME]
+pk, charge, dh_j_mol, dcp_j_mol_k, molar_mass_g
 """
 
 from __future__ import annotations
@@ -89,7 +89,7 @@ def _is_number(value: Any) -> bool:
 
 def _header(place: _Place, where: str, text: Any, index: Mapping[str, tuple[Quantity, str]]) -> Column:
     if not isinstance(text, str):
-        raise place.error(where, f"must be a quantity in quotes, e.g. \"calcium (mg/L)\"; found {text!r}.")
+        raise place.error(where, f'must be a quantity in quotes, e.g. "calcium (mg/L)"; found {text!r}.')
     try:
         return parse_header(text, index)
     except HeaderError as error:
@@ -138,9 +138,7 @@ def _acid(place: _Place, name: str, value: Any) -> UserAcid:
     mass = entry.get("molar_mass_g")
     if mass is not None and not (_is_number(mass) and mass > 0):
         raise place.error(f"{where} molar_mass_g", f"must be a number above 0; found {mass!r}.")
-    steps = {
-        k: _numbers(place, f"{where} {k}", entry[k], len(pk)) for k in ("dh_j_mol", "dcp_j_mol_k") if k in entry
-    }
+    steps = {k: _numbers(place, f"{where} {k}", entry[k], len(pk)) for k in ("dh_j_mol", "dcp_j_mol_k") if k in entry}
     return UserAcid(name=key(name), pk=pk, charge=charge, molar_mass_g=mass, **steps)
 
 

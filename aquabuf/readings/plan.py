@@ -66,7 +66,7 @@ def _meaning(header: str, table_map: TableMap) -> Column | None:
         return None
     if table_map.unlisted == "error":
         raise HeaderError(
-            f"column {header!r} is not listed in the map file, and unlisted = \"error\". List it or set it to \"ignore\"."
+            f'column {header!r} is not listed in the map file, and unlisted = "error". List it or set it to "ignore".'
         )
     return parse_header(header, table_map.index)
 

@@ -42,7 +42,10 @@ def _misfits(piece: list[Record], plan: Plan) -> tuple[list[Record], pd.DataFram
             rule, value = f"each row needs {plan.width} fields, as the header has", f"{len(record)} fields"
             remedy = "check delimiters, decimal commas and quotation marks in this row"
         else:
-            rule, value = "a column without a header must be empty", next(filter(str.strip, (record[at] for at in plan.unnamed)))
+            rule, value = (
+                "a column without a header must be empty",
+                next(filter(str.strip, (record[at] for at in plan.unnamed))),
+            )
             remedy = "name the column or empty it"
         name = record[plan.id_fields[0]].strip() if len(plan.id_fields) == 1 and plan.id_fields[0] < len(record) else ""
         lines.append((row, name, "(row)", value, rule, remedy))
@@ -60,7 +63,7 @@ def _fill_sheet(sheet: Sheet, records: list[list[str]], plan: Plan, table_map: T
         work.append((column, (text,) * len(records)))
     per_kg = [(column, cells) for column, cells in work if column.unit and column.unit.per_kg]
     for column, cells in work:
-        if not column.quantity.is_number:
+        if column.unit is None:
             sheet.take_words(column, cells)
         elif not column.unit.per_kg:
             sheet.take_numbers(column, cells)
@@ -77,7 +80,8 @@ def _reject_duplicates(sheet: Sheet, seen: SeenNames) -> None:
     first = seen.first_rows(names, sheet.rows[at])
     remedy = "give each sample a name of its own; the first row is kept"
     again = [
-        Problem(int(at[i]), f"sample_id is already used in row {first[i]}", remedy) for i in np.flatnonzero(first).tolist()
+        Problem(int(at[i]), f"sample_id is already used in row {first[i]}", remedy)
+        for i in np.flatnonzero(first).tolist()
     ]
     sheet.reject("sample_id", sheet.ids, again)
 
@@ -157,9 +161,7 @@ def iter_readings(
         raise InputError(f"chunk_rows must be 1 or more; found {chunk_rows}.")
     path = Path(path)
     table_map = _as_map(mapping)
-    form = inspect_table(
-        path, encoding=table_map.encoding, delimiter=table_map.delimiter, decimal=table_map.decimal
-    )
+    form = inspect_table(path, encoding=table_map.encoding, delimiter=table_map.delimiter, decimal=table_map.decimal)
     records = open_records(path, form)
     plan = make_plan(next(records)[1], table_map)
     notes, seen, empty = _file_notes(form, plan), SeenNames(), True

@@ -56,7 +56,8 @@ def flag_notes(flags: pd.DataFrame) -> list[str]:
     notes = []
     for (what, column), part in flags.groupby(["what", "column"], sort=False):
         first = part.iloc[0]
-        notes.append(f"{len(part)} x {what} in {column} (first: row {first['row']}, {first['value']!r})")
+        value = f", {first['value']!r}" if first["value"] else ""
+        notes.append(f"{len(part)} x {what} in {column} (first: row {first['row']}{value})")
     return notes
 
 

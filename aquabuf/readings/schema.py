@@ -13,7 +13,17 @@ from aquabuf.errors import InputError
 from aquabuf.tables import read_table
 from aquabuf.units import CONCENTRATIONS, Unit, accepted_units, key, parse_unit, substances
 
-__all__ = ["Quantity", "acid_quantity", "columns_table", "find_quantity", "quantities", "unit_labels"]
+__all__ = [
+    "Quantity",
+    "acid_quantity",
+    "columns_table",
+    "example_header",
+    "find_quantity",
+    "name_index",
+    "quantities",
+    "schema_order",
+    "unit_labels",
+]
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -177,9 +187,7 @@ def find_quantity(name: str) -> Quantity:
     try:
         return quantities()[name]
     except KeyError:
-        raise InputError(
-            f"no column is named {name!r}. Use a canonical name such as calcium_mol_l; `columns` lists them."
-        ) from None
+        raise InputError(f"no column is named {name!r}. Use a canonical name such as calcium_mol_l.") from None
 
 
 def usable_units(quantity: Quantity) -> list[Unit]:
@@ -191,7 +199,7 @@ def usable_units(quantity: Quantity) -> list[Unit]:
 
 
 def why_not(quantity: Quantity, unit: Unit) -> str:
-    """Reason why `quantity` cannot be given in `unit`, "" when it can (bare mass units are judged elsewhere)."""
+    """Reason why `quantity` cannot be given in `unit`, "" when it can (a mass without basis is judged elsewhere)."""
     if quantity.dimension not in CONCENTRATIONS or unit == quantity.house:
         return ""
     degree = unit.basis and unit.label == unit.unit
@@ -204,20 +212,32 @@ def why_not(quantity: Quantity, unit: Unit) -> str:
         return "its charge is zero or depends on pH, so equivalents are not defined"
     if unit.kind == "amount" and quantity.dimension == "mass" and quantity.molar_mass_g is None:
         return "it is a mass with no one molar mass"
-    if unit.kind == "mass" and quantity.dimension == "amount" and not (quantity.bases or quantity.molar_mass_g):
+    weighable = quantity.bases or quantity.molar_mass_g
+    if unit.kind == "mass" and quantity.dimension == "amount" and not weighable:
         return "it has no molar mass; give molar_mass_g in the map file"
     return ""
 
 
 def label_for(quantity: Quantity, unit: Unit) -> str:
-    """The unit as it is best written for this quantity: the basis is left out where it goes without saying."""
+    """The unit as it is best written for this quantity, without the basis where it goes without saying."""
     bare = unit.basis and unit.basis == quantity.bare_basis and unit.label != unit.unit
     return unit.unit if bare else unit.label
 
 
-def unit_labels(quantity: Quantity) -> list[str]:
-    """Accepted units in words, in table order."""
-    return [label_for(quantity, unit) for unit in usable_units(quantity)]
+def unit_labels(quantity: Quantity, *, rare: bool = False) -> list[str]:
+    """Accepted units in words, in table order; `rare` adds those that short lists leave out."""
+    units = usable_units(quantity)
+    short = [unit for unit in units if rare or not unit.rare] or units
+    return [label_for(quantity, unit) for unit in short]
+
+
+def example_header(quantity: Quantity) -> str:
+    """A header as most people would write it: the first mass unit where there is one, else the house unit."""
+    common = next((u for u in usable_units(quantity) if u.suffix == "mg_l"), None)
+    if common is None:
+        return quantity.name
+    stated = "" if common.basis in ("", quantity.bare_basis) else f"_{key(common.basis)}"
+    return f"{quantity.base}_{common.suffix}{stated}"
 
 
 def columns_table() -> list[dict[str, object]]:
@@ -229,7 +249,8 @@ def columns_table() -> list[dict[str, object]]:
             "kind": q.kind,
             "unit": q.house_unit,
             "uncertainty_column": q.u_name if q.is_number else "",
-            "accepted_units": unit_labels(q),
+            "accepted_units": unit_labels(q, rare=True),
+            "example_header": example_header(q),
             "unit_needed": q.is_number and not q.has_default_unit,
             "other_headers": [name for name, _ in q.aliases],
             "choices": list(dict.fromkeys(word for _, word in q.choices)),

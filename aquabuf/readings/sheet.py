@@ -134,7 +134,9 @@ class Sheet:
     def rejected_frame(self) -> pd.DataFrame:
         """One line per problem, in the order of the file."""
         order = sorted(range(len(self.problems)), key=lambda i: self.problems[i][0])
-        lines = [(int(self.rows[self.problems[i][0]]), self.ids[self.problems[i][0]], *self.problems[i][1:]) for i in order]
+        lines = [
+            (int(self.rows[self.problems[i][0]]), self.ids[self.problems[i][0]], *self.problems[i][1:]) for i in order
+        ]
         return pd.DataFrame(lines, columns=list(REJECTED_COLUMNS))
 
     def flags_frame(self, good: np.ndarray) -> pd.DataFrame:

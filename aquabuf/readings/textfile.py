@@ -56,7 +56,9 @@ def _encoding(path: Path, wanted: str) -> str:
             if first and block.startswith((codecs.BOM_UTF16_LE, codecs.BOM_UTF16_BE)):
                 raise FileError(f"{path.name}: the file must be UTF-8 or Latin-1 text, found UTF-16. Save it as UTF-8.")
             if _BINARY.search(block):
-                raise FileError(f"{path.name}: the file must be a text table (CSV), found binary data. Export it as CSV.")
+                raise FileError(
+                    f"{path.name}: the file must be a text table (CSV), found binary data. Export it as CSV."
+                )
             utf8 = utf8 and _decodes(decoder, block)
             first = False
     utf8 = utf8 and _decodes(decoder, b"", final=True)
@@ -122,8 +124,9 @@ def _decimal(records: list[list[str]], delimiter: str, name: str) -> str:
         return "."
     if len(commas) == points:
         raise InputError(
-            f"{name}: decimal points and decimal commas are equally common in the first rows (e.g. {commas[0].strip()!r}); "
-            'one sign is needed. Say decimal = "," or "." under [read] in a map file.'
+            f"{name}: decimal points and decimal commas are equally common in the first rows "
+            f"(e.g. {commas[0].strip()!r}); one sign is needed. "
+            'Say decimal = "," or "." under [read] in a map file.'
         )
     if all(_THOUSANDS_LOOK.fullmatch(cell) for cell in commas):
         raise InputError(

@@ -1,0 +1,1 @@
+"""Assess samples one by one: state, buffering, calcium carbonate, quality and warnings."""

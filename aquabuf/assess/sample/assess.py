@@ -1,0 +1,163 @@
+"""Assess a table of readings: solve, describe, check, warn, and say what was refused and why."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from aquabuf.assess.limits import Limit, verdicts
+from aquabuf.assess.options import Options
+from aquabuf.assess.sample.closure import Closure, closure
+from aquabuf.assess.sample.columns import result_columns
+from aquabuf.assess.sample.draws import Intervals, intervals
+from aquabuf.assess.sample.headline import alkalinity_as_read, headline, words_and_details
+from aquabuf.assess.sample.inputs import alkalinity_reading, ionic_strength, own_acids, uncertainties, values_of
+from aquabuf.assess.sample.quality import Check, check_rows, sample_checks
+from aquabuf.assess.sample.refuse import refusals
+from aquabuf.assess.sample.solve import AIR, NO_PAIR, PAIRS, choose, groups, take_rows, water_of
+from aquabuf.chem.acids import Acid
+from aquabuf.engine.status import FLAGGED, SOLVED
+from aquabuf.readings.result import Readings
+
+__all__ = ["Assessment", "assess"]
+
+VERDICT_COLUMNS = ("row", "sample_id", "warning", "words", "quantity", "value", "low", "high", "operator", "limit",
+                   "unit", "probability", "next_step", "source")
+
+
+@dataclass(frozen=True, slots=True, eq=False, kw_only=True)
+class Assessment:
+    """Assessed samples in input order.
+
+    results : one row per accepted sample, columns of results.csv.
+    verdicts : one row per broken limit, with its rule.
+    checks : quality checks, one row per check that could be made (or only those not met).
+    rejected : rows refused, by the reader or here: row, sample_id, column, value, rule, remedy.
+    """
+
+    results: pd.DataFrame
+    verdicts: pd.DataFrame
+    checks: pd.DataFrame
+    rejected: pd.DataFrame
+    notes: tuple[str, ...]
+
+
+def assess(readings: Readings, options: Options, limits: tuple[Limit, ...], *, only_unmet_checks: bool = False,
+           ) -> Assessment:
+    """Assess every sample of `readings`; bad samples come back in `rejected`, the others are not disturbed."""
+    acids = own_acids(readings.acids)
+    frame = readings.frame
+    values = values_of(frame)
+    n = len(frame)
+    values.setdefault("temperature_c", np.full(n, np.nan))
+    u = uncertainties(values)
+    choice, figures = _solve(values, n, acids, options, closure(values, u, acids, options))
+    solved = choice != NO_PAIR
+    refused = refusals(frame, values, ~solved, acids, options)
+    keep = np.flatnonzero(solved)
+    figures = {name: v[keep] for name, v in figures.items()}
+    kept = frame.iloc[keep].reset_index(drop=True)
+    values, u, choice = take_rows(values, keep), take_rows(u, keep), choice[keep]
+    figures |= alkalinity_as_read(alkalinity_reading(values)[0], figures)
+    spread = intervals(values, u, choice, acids, options, limits)
+    figures["draws_solved"] = spread.solved
+    gap = closure(values, u, acids, options)
+    figures |= {"closure_meq_l": gap.carbon_meq_l, "closure_u_meq_l": gap.carbon_u_meq_l}
+    kind = kept["water_kind"].to_numpy(str) if "water_kind" in kept else np.full(keep.size, "")
+    broken = verdicts(limits, figures, kind, figures["regime"].astype(str))
+    table = _results(kept, figures, values, choice, spread, broken, options)
+    checks = sample_checks(values, u, figures, table["pair"].to_numpy(str), gap.carbonate, gap.carbonate_u)
+    return Assessment(
+        results=table,
+        verdicts=_verdict_rows(kept, limits, broken, figures, spread),
+        checks=check_rows(checks, kept, only_unmet=only_unmet_checks),
+        rejected=pd.concat([readings.rejected, refused], ignore_index=True) if len(refused) else readings.rejected,
+        notes=readings.notes,
+    )
+
+
+def _solve(values: Mapping[str, NDArray], n: int, acids: tuple[Acid, ...], options: Options, gap: Closure,
+           ) -> tuple[NDArray[np.int8], dict[str, NDArray]]:
+    """Pair used for each sample and its figures; pairs are tried in order until one has a solution."""
+    final = np.full(n, NO_PAIR, dtype=np.int8)
+    figures: dict[str, NDArray] = {}
+    tries = [*choose(values, n, options), np.where(gap.within_reach, PAIRS.index(AIR), NO_PAIR).astype(np.int8)]
+    for choice in tries:
+        open_now = np.where(final == NO_PAIR, choice, NO_PAIR).astype(np.int8)
+        for pair, ph_column, rows in groups(values, open_now):
+            part = take_rows(values, rows)
+            water = water_of(part, pair, ph_column, acids, options)
+            good = np.flatnonzero(water.status >= SOLVED)
+            if not good.size:
+                continue
+            if good.size < rows.size:
+                rows, part = rows[good], take_rows(part, good)
+                water = water_of(part, pair, ph_column, acids, options)
+            if options.exchange == "open" and pair != AIR:
+                water = water.at_air(options.air_co2_ppm)
+            numbers = headline(water, options)
+            numbers |= words_and_details(water, numbers["si_calcite"], numbers["ccpp_mg_l"])
+            numbers["flagged"] = water.status == FLAGGED
+            final[rows] = PAIRS.index(pair)
+            for name, v in numbers.items():
+                if name not in figures:
+                    empty = "" if v.dtype.kind in "UO" else False if v.dtype.kind == "b" else np.nan
+                    figures[name] = np.full(n, empty, dtype=object if v.dtype.kind in "UO" else v.dtype)
+                figures[name][rows] = v
+    return final, figures
+
+
+def _results(kept: pd.DataFrame, figures: Mapping[str, NDArray], values: Mapping[str, NDArray], choice: NDArray,
+             spread: Intervals, broken: Mapping[str, NDArray], options: Options) -> pd.DataFrame:
+    """One row per sample in the column order of results.csv."""
+    n = len(kept)
+    source = alkalinity_reading(values)[1]
+    from_air = (choice == PAIRS.index(AIR)) & (options.exchange == "closed")
+    status = np.where(from_air, "carbon from air", np.where(figures["flagged"], "outside range", "ok"))
+    reason = np.where(from_air, "pH and alkalinity leave no carbonate, within their uncertainty and the charge of "
+                                "organic acids; alkalinity was kept and carbon set by air",
+                      np.where(figures["flagged"], "temperature, salinity, ionic strength or pressure is outside the "
+                                                   "range of a constant", ""))
+    strength_from = ionic_strength(values)[1]
+    warnings = np.full(n, "", dtype=object)
+    for name, hit in broken.items():
+        warnings[hit] = np.where(warnings[hit] == "", name, warnings[hit] + "; " + name)
+    words: dict[str, NDArray] = {name: kept[name].to_numpy() for name in ("sample_id", "row", "site", "region", "water_kind")
+                                 if name in kept}
+    columns = dict(figures) | words | {
+        "status": status, "status_reason": reason, "pair": np.array(PAIRS, dtype=object)[choice],
+        "ionic_strength_from": strength_from, "alkalinity_from": source, "warnings": warnings,
+    }
+    ordered = {}
+    for column in result_columns(options):
+        if column.name in columns:
+            ordered[column.name] = columns[column.name]
+            if column.interval and column.name in spread.low:
+                ordered[f"{column.name}_low"] = spread.low[column.name]
+                ordered[f"{column.name}_high"] = spread.high[column.name]
+    return pd.DataFrame(ordered)
+
+
+def _verdict_rows(kept: pd.DataFrame, limits: tuple[Limit, ...], broken: Mapping[str, NDArray],
+                  figures: Mapping[str, NDArray], spread: Intervals) -> pd.DataFrame:
+    parts = []
+    nothing = np.full(len(kept), np.nan)
+    for order, limit in enumerate(limits):
+        hit = np.flatnonzero(broken.get(limit.name, np.zeros(0, dtype=bool)))
+        if hit.size:
+            q = limit.quantity
+            parts.append(pd.DataFrame({
+                "row": kept["row"].to_numpy()[hit], "sample_id": kept["sample_id"].to_numpy()[hit],
+                "warning": limit.name, "words": limit.words, "quantity": q, "value": figures[q][hit],
+                "low": spread.low.get(q, nothing)[hit], "high": spread.high.get(q, nothing)[hit],
+                "operator": limit.operator, "limit": limit.limit, "unit": limit.unit,
+                "probability": spread.probability.get(limit.name, nothing)[hit],
+                "next_step": limit.next_step, "source": limit.source, "order": order}))
+    if not parts:
+        return pd.DataFrame(columns=list(VERDICT_COLUMNS))
+    table = pd.concat(parts, ignore_index=True).sort_values(["row", "order"], kind="stable")
+    return table[list(VERDICT_COLUMNS)].reset_index(drop=True)

@@ -1,0 +1,38 @@
+"""The columns of results.csv, from the shipped table."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+
+from aquabuf.assess.options import Options
+from aquabuf.tables import read_table
+
+__all__ = ["ResultColumn", "result_columns"]
+
+
+@dataclass(frozen=True, slots=True)
+class ResultColumn:
+    """One column: name, unit, whether it has an interval, decimals written, meaning."""
+
+    name: str
+    unit: str
+    interval: bool
+    digits: int | None
+    meaning: str
+
+
+def result_columns(options: Options) -> Iterator[ResultColumn]:
+    """Columns of results.csv in order, tolerance columns for each threshold of `options`."""
+    from aquabuf.assess.sample.headline import threshold_column
+
+    for row in read_table("results"):
+        digits = int(row["digits"]) if row["digits"] else None
+        names = [row["name"]]
+        if "*" in row["name"]:
+            kind = row["name"].split("_")[0]
+            exchange = "open" if "_open_" in row["name"] else "closed"
+            thresholds = options.acid_thresholds if kind == "acid" else options.base_thresholds
+            names = [threshold_column(kind, ph, exchange) for ph in thresholds]
+        for name in names:
+            yield ResultColumn(name, row["unit"], row["interval"] == "yes", digits, row["meaning"])

@@ -1,0 +1,60 @@
+"""Intervals of the headline figures, and the probability of each warning, by random draws."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from aquabuf.assess.limits import Limit
+from aquabuf.assess.options import Options
+from aquabuf.assess.sample.headline import alkalinity_as_read, headline
+from aquabuf.assess.sample.inputs import Array, Values, alkalinity_reading
+from aquabuf.assess.sample.solve import AIR, groups, take_rows, water_of
+from aquabuf.assess.uncertainty import drawn, interval, row_blocks, share
+from aquabuf.chem.acids import Acid
+from aquabuf.engine.status import SOLVED
+
+__all__ = ["Intervals", "intervals"]
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Intervals:
+    """Low and high ends by column, probability by limit, and the share of draws that have a solution."""
+
+    low: dict[str, Array]
+    high: dict[str, Array]
+    probability: dict[str, Array]
+    solved: Array
+
+
+def intervals(values: Values, u: Values, choice: NDArray[np.int8], acids: tuple[Acid, ...], options: Options,
+              limits: tuple[Limit, ...]) -> Intervals:
+    """Draw every reading within its uncertainty and solve each draw with the pair its sample was solved with."""
+    n = choice.size
+    out = Intervals({}, {}, {}, np.full(n, np.nan))
+    if not options.draws:
+        return out
+    for pair, ph_column, rows in groups(values, choice):
+        for block in row_blocks(rows, options.draws):
+            part, part_u = take_rows(values, block), take_rows(u, block)
+            many = drawn(part, part_u, options.draws, options.seed, u)
+            water = water_of(many, pair, ph_column, acids, options)
+            if options.exchange == "open" and pair != AIR:
+                water = water.at_air(options.air_co2_ppm)
+            figures = headline(water, options)
+            figures |= alkalinity_as_read(alkalinity_reading(many)[0], figures)
+            solved = (water.status >= SOLVED).reshape(block.size, options.draws)
+            out.solved[block] = solved.mean(axis=1)
+            for name, v in figures.items():
+                ends = interval(v.reshape(block.size, options.draws))
+                for store, end in zip((out.low, out.high), ends, strict=True):
+                    store.setdefault(name, np.full(n, np.nan))[block] = end
+            for limit in limits:
+                if limit.quantity in figures:
+                    met = limit.met(figures[limit.quantity]).reshape(block.size, options.draws)
+                    valid = np.isfinite(figures[limit.quantity]).reshape(block.size, options.draws)
+                    out.probability.setdefault(limit.name, np.full(n, np.nan))[block] = share(met, valid)
+    return out
+

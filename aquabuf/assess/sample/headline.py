@@ -1,0 +1,120 @@
+"""The figures of an assessed sample, from a solved water. One array per column of results.csv."""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from aquabuf.assess.options import Options
+from aquabuf.chem.gases import pco2_of_air
+from aquabuf.engine import buffer, precipitate
+from aquabuf.engine.conditions import FRESH_BELOW
+from aquabuf.engine.water import Water
+from aquabuf.units import convert, substances
+
+__all__ = ["MARINE_FROM", "TEST_ACID_EQ_L", "alkalinity_as_read", "headline", "threshold_column", "words_and_details"]
+
+Array = NDArray[np.float64]
+
+TEST_ACID_EQ_L = 5e-5  # 0.05 meq/L: of the order of an acid episode in a dilute lake; common practice, no source
+MARINE_FROM = 30.0     # practical salinity; Venice system 1958 (recalled)
+CCPP_AT_REST_MG_L = 1.0  # within this the water is called balanced; common practice, no source
+
+
+def threshold_column(kind: str, ph: float, exchange: str) -> str:
+    """Column name of a tolerance, such as acid_to_ph_6_0_open_meq_l."""
+    digits = f"{ph:.2f}".rstrip("0")
+    digits = digits + "0" if digits.endswith(".") else digits
+    return f"{kind}_to_ph_{digits.replace('.', '_')}{'_open' if exchange == 'open' else ''}_meq_l"
+
+
+def headline(water: Water, options: Options) -> dict[str, Array]:
+    """Every figure that carries an interval, in the units of results.csv."""
+    s = water.state
+    air = pco2_of_air(options.air_co2_ppm, water.t_c, water.pressure_atm, water.salinity)
+    at_air = water if options.exchange == "open" else water.at_pco2(air)
+    pco2 = water.pco2_atm
+    out = {
+        "ph": water.ph,
+        "ph_total": np.where(water.salinity >= FRESH_BELOW, water.ph_total, np.nan),
+        **_alkalinity(water.alkalinity_eq_l),
+        "dic_mmol_l": water.dic_mol_l * 1e3,
+        "co2_mmol_l": s.co2 * 1e3,
+        "pco2_uatm": pco2 * 1e6,
+        "pco2_air_ratio": pco2 / air,
+        "ph_at_air": at_air.ph,
+        "buffer_closed_meq_l_ph": water.buffer_intensity_eq_l("closed") * 1e3,
+        "buffer_open_meq_l_ph": water.buffer_intensity_eq_l("open") * 1e3,
+        "ph_drop_test_acid": water.ph - water.after_acid(TEST_ACID_EQ_L).ph,
+    }
+    for kind, sign, thresholds in (("acid", 1e3, options.acid_thresholds), ("base", -1e3, options.base_thresholds)):
+        for ph in thresholds:
+            out[threshold_column(kind, ph, "closed")] = sign * water.acid_to_ph_eq_l(ph)
+            out[threshold_column(kind, ph, "open")] = sign * water.acid_to_ph_eq_l(ph, "open", pco2_atm=air)
+    pairs = precipitate.pairing(s)
+    out["si_calcite"] = precipitate.saturation_index(pairs, "calcite")
+    out["ccpp_mg_l"] = precipitate.precipitation_potential(pairs, "calcite")[0] * _mg_per_mol("calcium carbonate")
+    return out
+
+
+def _alkalinity(eq_l: Array) -> dict[str, Array]:
+    """Alkalinity in the two units of results.csv."""
+    return {"alkalinity_meq_l": eq_l * 1e3,
+            "alkalinity_mg_l_caco3": convert(eq_l, "eq/L", "mg/L as CaCO3", "alkalinity")}
+
+
+def alkalinity_as_read(measured_eq_l: Array, figures: dict[str, Array]) -> dict[str, Array]:
+    """Alkalinity columns that follow the titration where there is one, whatever pair was solved."""
+    return {name: np.where(np.isnan(v), figures[name], v) for name, v in _alkalinity(measured_eq_l).items()}
+
+
+def _mg_per_mol(name: str) -> float:
+    return substances()[name].molar_mass_g * 1e3
+
+
+def words_and_details(water: Water, si_calcite: Array, ccpp_mg_l: Array) -> dict[str, NDArray]:
+    """Figures without an interval: species, carrier, weakest buffering, aragonite, and the verdict on lime."""
+    s = water.state
+    carbonate = [f * s.dic * 1e3 for f in s.carbonate_fractions()]
+    found, weakest = water.carrier(), water.weakest_buffering()
+    aragonite_less = np.log10(precipitate.solubility_ratio(s, "calcite", "aragonite"))
+    salinity = water.salinity
+    return {
+        "regime": np.where(salinity < FRESH_BELOW, "fresh", np.where(salinity < MARINE_FROM, "brackish", "marine")),
+        "temperature_c": water.t_c,
+        "salinity": salinity,
+        "ionic_strength_mol_l": water.ionic_strength_mol_l,
+        "bicarbonate_mmol_l": carbonate[1],
+        "carbonate_mmol_l": carbonate[2],
+        "carrier": found.label,
+        "carrier_share": found.share,
+        "carrier_pka": found.pka,
+        "carrier_base_acid_ratio": found.base_acid_ratio,
+        "carrier_in_range": np.where(np.isnan(found.pka), "", np.where(found.in_range, "yes", "no")),
+        "pairs_in_range": _pairs_in_range(s),
+        "carrier_acid_left_meq_l": found.acid_left * 1e3,
+        "carrier_base_left_meq_l": found.base_left * 1e3,
+        "weakest_ph": weakest.ph,
+        "weakest_distance_ph": weakest.distance,
+        "weakest_buffer_meq_l_ph": weakest.intensity * 1e3,
+        "si_aragonite": si_calcite + aragonite_less,
+        "saturation_ratio_calcite": 10.0**si_calcite,
+        "ccpp_words": ccpp_in_words(ccpp_mg_l),
+    }
+
+
+def _pairs_in_range(s) -> NDArray[np.str_]:
+    """Labels of the pairs present whose effective range holds the pH, joined by semicolons."""
+    out = np.full(s.h.shape, "", dtype=object)
+    for share in buffer.pair_shares(s):
+        act = share.in_range & (share.intensity > 0.0)
+        out[act] = np.where(out[act] == "", share.label, out[act] + "; " + share.label)
+    return out
+
+
+def ccpp_in_words(ccpp_mg_l: Array) -> NDArray[np.str_]:
+    """What the precipitation potential means, in words; "" where it is not known."""
+    at_rest = np.abs(ccpp_mg_l) <= CCPP_AT_REST_MG_L
+    words = np.where(at_rest, "close to balance with calcite",
+                     np.where(ccpp_mg_l > 0.0, "would deposit calcium carbonate", "would dissolve calcium carbonate"))
+    return np.where(np.isnan(ccpp_mg_l), "", words)

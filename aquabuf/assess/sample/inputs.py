@@ -1,0 +1,130 @@
+"""From a table of readings to what the engine wants: values, uncertainties, ionic strength, pressure.
+
+Values are a dictionary of house-unit arrays, so that the same functions serve the readings and their random draws.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from aquabuf.chem.acids import Acid, acid_table
+from aquabuf.chem.properties import air_pressure
+from aquabuf.engine.build import IONS
+from aquabuf.readings.result import UserAcid
+from aquabuf.readings.schema import quantities
+from aquabuf.units import substances
+
+__all__ = ["MAJOR_IONS", "PH_COLUMNS", "Values", "ionic_strength", "own_acids", "pressure", "uncertainties",
+           "values_of", "water_keywords"]
+
+Array = NDArray[np.float64]
+Values = dict[str, Array]
+
+PH_COLUMNS = {"ph": "meter", "ph_total": "total", "ph_seawater": "seawater", "ph_free": "free"}
+MAJOR_IONS = ("calcium", "magnesium", "sodium", "chloride", "sulfate")  # needed before ions give ionic strength
+STRENGTH_PER_CONDUCTIVITY = 1.6e-5  # mol/L per µS/cm at 25 °C; Russell 1976 (recalled)
+STRENGTH_PER_TDS = 2.5e-5           # mol/L per mg/L; Langelier 1936
+STRENGTH_SOURCES = ("", "given", "ions", "conductivity", "dissolved solids", "salinity", "alkalinity")
+
+
+def values_of(frame: pd.DataFrame) -> Values:
+    """Every number of the readings that holds at least one value, by column name in house units."""
+    return {name: frame[name].to_numpy(dtype=float) for name in frame.columns
+            if name != "row" and pd.api.types.is_numeric_dtype(frame[name]) and frame[name].notna().any()}
+
+
+def uncertainties(values: Values) -> Values:
+    """Standard uncertainty of every quantity: its own column where given, else the default of the column table."""
+    known = quantities()
+    out = {}
+    for name, value in values.items():
+        quantity = known.get(name)
+        if quantity is None:  # an uncertainty column, or an acid of the user's own
+            if not name.endswith("_mol_l") or name.endswith("_u_mol_l"):
+                continue
+            default, u_name = 0.05 * np.abs(value), name.replace("_mol_l", "_u_mol_l")
+        else:
+            default, u_name = quantity.default_u + quantity.default_u_rel * np.abs(value), quantity.u_name
+        own = values.get(u_name)
+        out[name] = default if own is None else np.where(np.isfinite(own), own, default)
+    return out
+
+
+def own_acids(acids: Mapping[str, UserAcid]) -> tuple[Acid, ...]:
+    """Acids of the user's own, from the map file, as the engine wants them."""
+    return tuple(Acid(name=a.name, pk=tuple(a.pk), charge_full=a.charge, enthalpy_j_mol=tuple(a.dh_j_mol or ()),
+                      heat_capacity_j_mol_k=tuple(a.dcp_j_mol_k or ()), reference="given in the map file")
+                 for a in acids.values())
+
+
+def _get(values: Values, name: str, like: Array) -> Array:
+    return values.get(name, np.full(like.shape, np.nan))
+
+
+def pressure(values: Values) -> Array:
+    """Air pressure: measured, else of the elevation, else 1. [atm]"""
+    t = values["temperature_c"]
+    by_height = air_pressure(_get(values, "elevation_m", t))
+    given = _get(values, "air_pressure_atm", t)
+    return np.where(np.isfinite(given), given, np.where(np.isfinite(by_height), by_height, 1.0))
+
+
+def ionic_strength(values: Values) -> tuple[Array, NDArray[np.str_]]:
+    """Ionic strength of fresh rows [mol/L] and its source; nan where salinity or alkalinity must imply it.
+
+    Order: given, major ions, conductivity at 25 °C, dissolved solids.
+    """
+    t = values["temperature_c"]
+    candidates = (
+        _get(values, "ionic_strength_mol_l", t), _of_ions(values),
+        STRENGTH_PER_CONDUCTIVITY * _get(values, "conductivity_us_cm", t),
+        STRENGTH_PER_TDS * _get(values, "tds_mg_l", t),
+    )
+    out, source = np.full(t.shape, np.nan), np.zeros(t.shape, dtype=int)
+    for index, candidate in enumerate(candidates, start=1):
+        use = np.isnan(out) & np.isfinite(candidate)
+        out[use], source[use] = candidate[use], index
+    implied = np.isnan(out)
+    has_salt = np.nan_to_num(_get(values, "salinity", t)) > 0.0
+    source[implied] = np.where(has_salt[implied], STRENGTH_SOURCES.index("salinity"),
+                               STRENGTH_SOURCES.index("alkalinity"))
+    source[np.nan_to_num(_get(values, "salinity", t)) >= 1.0] = STRENGTH_SOURCES.index("salinity")
+    return out, np.array(STRENGTH_SOURCES)[source]
+
+
+def _of_ions(values: Values) -> Array:
+    """Half the sum of concentration times charge squared; nan unless all major ions and an alkalinity are there."""
+    alkalinity = alkalinity_reading(values)[0]
+    total = np.abs(alkalinity)  # bicarbonate in ordinary water, H+ in acid water
+    for name, ion in substances().items():
+        given = values.get(f"{name.replace(' ', '_')}_mol_l")
+        if ion.charge and given is not None:
+            total = total + ion.charge**2 * np.nan_to_num(given)
+    for name in MAJOR_IONS:
+        total = np.where(np.isnan(_get(values, f"{name}_mol_l", total)), np.nan, total)
+    return 0.5 * total
+
+
+def alkalinity_reading(values: Values) -> tuple[Array, NDArray[np.str_]]:
+    """Alkalinity, or ANC where only that was measured [eq/L], and which of the two it is."""
+    t = values["temperature_c"]
+    alkalinity, anc = _get(values, "alkalinity_eq_l", t), _get(values, "anc_eq_l", t)
+    use_anc = np.isnan(alkalinity) & np.isfinite(anc)
+    source = np.where(np.isfinite(alkalinity), "alkalinity", np.where(use_anc, "anc", "computed"))
+    return np.where(use_anc, anc, alkalinity), source
+
+
+def water_keywords(values: Values, acids: tuple[Acid, ...], carbonic: str) -> dict:
+    """Keywords for a `Water` beside its pair: conditions, weak acids and ions found in the readings."""
+    names = [a.name for a in acids] + list(acid_table()) + list(IONS)
+    totals = {f"{n}_mol_l": values[f"{n}_mol_l"] for n in names if f"{n}_mol_l" in values}
+    return totals | {
+        "t_c": values["temperature_c"], "salinity": np.nan_to_num(_get(values, "salinity", values["temperature_c"])),
+        "ionic_strength_mol_l": ionic_strength(values)[0], "pressure_atm": pressure(values),
+        "acids": acids, "carbonic": carbonic,
+    }

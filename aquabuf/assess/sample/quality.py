@@ -1,0 +1,189 @@
+"""Quality checks of each sample. A check that cannot be made (a reading is missing) is not listed."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from aquabuf.assess.sample.inputs import MAJOR_IONS, Array, Values
+from aquabuf.readings.schema import quantities
+from aquabuf.tables import read_table
+from aquabuf.units import substances
+
+__all__ = ["CHECK_COLUMNS", "Check", "check_rows", "file_checks", "sample_checks"]
+
+CHECK_COLUMNS = ("row", "sample_id", "check", "value", "limit", "unit", "met", "remedy", "source")
+ORGANIC_CHARGE_EQ_PER_MG = 1e-5  # upper site density, 10 µeq per mg C: Oliver, Thurman & Malcolm 1983
+WHOLE_MIN_ROWS, WHOLE_SHARE = 10, 90.0
+ROUNDED_COLUMNS = ("ph", "temperature_c", "alkalinity_eq_l", "anc_eq_l", "conductivity_us_cm", "dic_mol_l")
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Check:
+    """One check over all samples: value and lowest and highest allowed; nan value where it cannot be made."""
+
+    name: str
+    value: Array
+    low: Array | float
+    high: Array | float
+    detail: NDArray | None = None
+
+    @property
+    def met(self) -> NDArray[np.bool_]:
+        """True where the value lies within its limits."""
+        with np.errstate(invalid="ignore"):
+            return (self.value >= self.low) & (self.value <= self.high)
+
+
+def sample_checks(values: Values, u: Values, figures: Mapping[str, NDArray], pair: NDArray, carbonate_gap: Array,
+                  carbonate_gap_u: Array) -> list[Check]:
+    """All checks of the solved samples.
+
+    `figures` are columns of results.csv; `carbonate_gap` is the carbonate alkalinity that pH and alkalinity leave
+    [eq/L], with its standard uncertainty (nan without both readings).
+    """
+    rows = pair.size
+
+    def get(name: str) -> Array:
+        return values.get(name, np.full(rows, np.nan))
+
+    cations, anions, complete = _charges(values, figures, rows)
+    total = (cations + anions) * 1e6
+    imbalance = np.where(complete, 100.0 * (anions - cations) / (anions + cations), np.nan)
+    allowed = np.where(total < 50.0, 60.0, np.where(total <= 100.0, 30.0, 15.0))
+    measured = get("conductivity_us_cm")
+    computed = np.where(complete, _conductivity(values, figures), np.nan)
+    spread = np.where(measured < 5.0, 50.0, np.where(measured <= 30.0, 30.0, 20.0))
+    hardness = 100.0 * ((get("calcium_mol_l") + get("magnesium_mol_l")) / get("total_hardness_mol_l") - 1.0)
+    unstated_salinity = np.where(np.isnan(get("salinity")), measured, np.nan)
+    outside, names = _outside_usual(values, rows)
+    with np.errstate(divide="ignore", invalid="ignore"):
+        conductivity_off = 100.0 * (computed / np.where(measured > 0.0, measured, np.nan) - 1.0)
+    return [
+        Check("ion balance", imbalance, -allowed, allowed),
+        Check("conductivity", conductivity_off, -spread, spread),
+        Check("pH against alkalinity", carbonate_gap * 1e3, -2e3 * carbonate_gap_u, np.inf),
+        _over_determined(values, u, figures, rows),
+        *_brown(values, figures, pair),
+        Check("CO2 pressure", figures["pco2_uatm"], 10.0, 20_000.0),
+        Check("temperature", get("temperature_c"), -np.inf, 35.0),
+        Check("salinity", unstated_salinity, -np.inf, 2000.0),
+        Check("hardness", hardness, -10.0, 10.0),
+        Check("holding time", get("holding_days"), 0.0, 14.0),
+        Check("usual ranges", outside, 0.0, 0.0, names),
+        Check("draws", 100.0 * figures["draws_solved"], 90.0, np.inf),
+    ]
+
+
+def _charges(values: Values, figures: Mapping[str, NDArray], rows: int) -> tuple[Array, Array, NDArray[np.bool_]]:
+    """Cations and anions [eq/L] with H+ and the carbonate of the solution, and whether all major ions were measured."""
+    plus, minus = np.zeros(rows), np.zeros(rows)
+    for name, ion in substances().items():
+        given = values.get(f"{name.replace(' ', '_')}_mol_l")
+        if given is not None and ion.charge:
+            side = plus if ion.charge > 0 else minus
+            side += abs(ion.charge) * np.nan_to_num(given)
+    carbonate = figures["bicarbonate_mmol_l"] + 2.0 * figures["carbonate_mmol_l"]
+    minus += 1e-3 * carbonate + 1e-14 * 10.0 ** figures["ph"]
+    plus += 10.0 ** -figures["ph"]
+    complete = np.ones(rows, dtype=bool)
+    for name in MAJOR_IONS:
+        complete &= np.isfinite(values.get(f"{name}_mol_l", np.full(rows, np.nan)))
+    return plus, minus, complete
+
+
+def _conductivity(values: Values, figures: Mapping[str, NDArray]) -> Array:
+    """Conductivity at 25 °C from the ions. [µS/cm]
+
+    Sum of equivalent conductivities times the square of a monovalent activity coefficient, Standard Methods 2510
+    (recalled).
+    """
+    carbonate = {"bicarbonate": figures["bicarbonate_mmol_l"] * 1e-3, "carbonate": figures["carbonate_mmol_l"] * 1e-3,
+                 "hydrogen": 10.0 ** -figures["ph"], "hydroxide": 1e-14 * 10.0 ** figures["ph"]}
+    total = np.zeros(figures["ph"].shape)
+    for row in read_table("ions"):
+        given = carbonate.get(row["name"], values.get(f"{row['name'].replace(' ', '_')}_mol_l"))
+        if given is not None and row["conductivity_s_cm2_eq"]:
+            total += np.nan_to_num(given) * abs(int(row["charge"])) * float(row["conductivity_s_cm2_eq"]) * 1e3
+    root = np.sqrt(figures["ionic_strength_mol_l"])
+    return total * 10.0 ** (-2.0 * 0.5 * (root / (1.0 + root) - 0.3 * root * root))
+
+
+def _over_determined(values: Values, u: Values, figures: Mapping[str, NDArray], rows: int) -> Check:
+    """Titrated alkalinity against the one that pH and carbon give, where all three were measured."""
+    missing = np.full(rows, np.nan)
+    gap, gap_u = figures.get("closure_meq_l", missing), figures.get("closure_u_meq_l", missing)
+    return Check("alkalinity against pH and carbon", gap, -2.0 * gap_u, 2.0 * gap_u)
+
+
+def _brown(values: Values, figures: Mapping[str, NDArray], pair: NDArray) -> list[Check]:
+    """Whether pCO2 from pH and alkalinity can be trusted where organic acids share the alkalinity."""
+    doc = values.get("doc_mg_l", np.full(pair.size, np.nan))
+    rests_on_both = pair == "pH and alkalinity"
+    carbonate = 1e-3 * (figures["bicarbonate_mmol_l"] + 2.0 * figures["carbonate_mmol_l"])
+    organic = np.where(rests_on_both, 100.0 * ORGANIC_CHARGE_EQ_PER_MG * doc / np.maximum(carbonate, 1e-9), np.nan)
+    no_doc = np.where(rests_on_both & np.isnan(doc), figures["ph"], np.nan)
+    return [Check("CO2 in brown acid water", organic, -np.inf, 20.0),
+            Check("CO2 in brown acid water", no_doc, 5.5, np.inf)]
+
+
+def _outside_usual(values: Values, rows: int) -> tuple[Array, NDArray]:
+    """How many readings lie outside the soft limits of the column table, and which."""
+    count, names = np.zeros(rows), np.full(rows, "", dtype=object)
+    for name, quantity in quantities().items():
+        if name in values:
+            with np.errstate(invalid="ignore"):
+                hit = (values[name] < quantity.soft_low) | (values[name] > quantity.soft_high)
+            count += hit
+            names[hit] = np.where(names[hit] == "", name, names[hit] + ", " + name)
+    return count, names
+
+
+def check_rows(checks: list[Check], frame: pd.DataFrame, *, only_unmet: bool) -> pd.DataFrame:
+    """The checks as a long table, sample by sample; `frame` has `row` and `sample_id`."""
+    facts = {r["name"]: r for r in read_table("checks")}
+    parts = []
+    for order, check in enumerate(checks):
+        rows = np.flatnonzero(np.isfinite(check.value) & ~(check.met & only_unmet))
+        if not rows.size:
+            continue
+        fact = facts[check.name]
+        low, high = (np.broadcast_to(v, check.value.shape)[rows] for v in (check.low, check.high))
+        remedy = fact["remedy"] if check.detail is None else [
+            f"{fact['remedy']}: {d}" if d else "" for d in check.detail[rows]]
+        parts.append(pd.DataFrame({
+            "row": frame["row"].to_numpy()[rows], "sample_id": frame["sample_id"].to_numpy()[rows],
+            "check": check.name, "value": check.value[rows], "limit": _limit_words(low, high), "unit": fact["unit"],
+            "met": np.where(check.met[rows], "yes", "no"),
+            "remedy": np.where(check.met[rows], "", remedy), "source": fact["source"], "order": order}))
+    if not parts:
+        return pd.DataFrame(columns=list(CHECK_COLUMNS))
+    table = pd.concat(parts, ignore_index=True).sort_values(["row", "order"], kind="stable")
+    return table[list(CHECK_COLUMNS)].reset_index(drop=True)
+
+
+def _limit_words(low: Array, high: Array) -> list[str]:
+    def one(a: float, b: float) -> str:
+        if np.isneginf(a):
+            return f"at most {b:.4g}"
+        return f"at least {a:.4g}" if np.isposinf(b) else f"{a:.4g} to {b:.4g}"
+    return [one(a, b) for a, b in zip(low, high, strict=True)]
+
+
+def file_checks(values: Values, duplicates: int) -> list[tuple[str, float, str, bool, str]]:
+    """Checks of a whole table: name, value, limit, met, remedy."""
+    facts = {r["name"]: r for r in read_table("checks")}
+    out = [("duplicate names", float(duplicates), "0", duplicates == 0, facts["duplicate names"]["remedy"])]
+    for name in ROUNDED_COLUMNS:
+        given = values.get(name, np.empty(0))
+        scale = 1e6 if name.endswith("_l") else 1.0  # µeq/L and µmol/L are what rounded tables are written in
+        whole = given[np.isfinite(given)] * scale
+        if whole.size >= WHOLE_MIN_ROWS:
+            share = 100.0 * float(np.mean(np.abs(whole - np.round(whole)) < 1e-6 * np.maximum(np.abs(whole), 1.0)))
+            out.append(("whole numbers", share, f"below {WHOLE_SHARE:g} % in {name}", share < WHOLE_SHARE,
+                        facts["whole numbers"]["remedy"]))
+    return out

@@ -1,0 +1,107 @@
+"""Choose the known pair of each sample and solve it."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+import numpy as np
+from numpy.typing import NDArray
+
+from aquabuf.assess.options import Options
+from aquabuf.assess.sample.inputs import PH_COLUMNS, Array, Values, alkalinity_reading, water_keywords
+from aquabuf.chem.acids import Acid
+from aquabuf.chem.gases import pco2_of_air
+from aquabuf.engine.conditions import FRESH_BELOW
+from aquabuf.engine.water import Water
+
+__all__ = ["AIR", "NO_PAIR", "PAIRS", "choose", "groups", "take_rows", "water_of"]
+
+NO_PAIR = -1
+AIR = "alkalinity and air"
+
+# Order of preference. pH and alkalinity come first in fresh water; in salt water, where a meter's pH is the weakest
+# reading, alkalinity and carbon do. Air stands in last, and only where asked for or where a pair contradicts itself.
+PAIRS = ("pH and alkalinity", "pH and carbon", "alkalinity and carbon", "alkalinity and pCO2", "pH and pCO2",
+         "carbon and pCO2", AIR)
+_FRESH_ORDER = (0, 1, 2, 3, 4, 5)
+_SALT_ORDER = (2, 0, 1, 3, 4, 5)
+
+
+def has(values: Values, rows: int) -> dict[str, NDArray[np.bool_]]:
+    """Which of the four pair members each row has."""
+    def there(*names: str) -> NDArray[np.bool_]:
+        found = np.zeros(rows, dtype=bool)
+        for name in names:
+            if name in values:
+                found |= np.isfinite(values[name])
+        return found
+    return {"pH": there(*PH_COLUMNS), "alkalinity": there("alkalinity_eq_l", "anc_eq_l"),
+            "carbon": there("dic_mol_l"), "pCO2": there("pco2_atm")}
+
+
+def choose(values: Values, rows: int, options: Options) -> Iterator[NDArray[np.int8]]:
+    """Pair of each row by preference: first choice, second choice and so on; NO_PAIR where none is left."""
+    there = has(values, rows)
+    salt = np.nan_to_num(values.get("salinity", np.zeros(rows))) >= FRESH_BELOW
+    able = np.stack([np.logical_and(*(there[m] for m in pair.split(" and "))) for pair in PAIRS[:-1]])
+    tried = np.zeros_like(able)
+    for _ in PAIRS[:-1]:
+        choice = np.full(rows, NO_PAIR, dtype=np.int8)
+        for order, which in ((_FRESH_ORDER, ~salt), (_SALT_ORDER, salt)):
+            for index in reversed(order):
+                choice[which & able[index] & ~tried[index]] = index
+        if (choice == NO_PAIR).all():
+            break
+        tried[choice[choice != NO_PAIR], np.flatnonzero(choice != NO_PAIR)] = True
+        yield choice
+    if options.exchange == "open":
+        yield np.where(there["alkalinity"], PAIRS.index(AIR), NO_PAIR).astype(np.int8)
+
+
+def take_rows(values: Values, rows: NDArray) -> Values:
+    """The same values for some of the rows."""
+    return {name: v[rows] for name, v in values.items()}
+
+
+def groups(values: Values, choice: NDArray[np.int8]) -> Iterator[tuple[str, str, NDArray[np.intp]]]:
+    """Rows that are solved alike: pair, pH column and row numbers."""
+    salt = np.nan_to_num(values.get("salinity", np.zeros(choice.size))) >= FRESH_BELOW
+    column = np.full(choice.size, "ph", dtype="U12")
+    for which, order in ((~salt, ("ph", "ph_total", "ph_seawater", "ph_free")),
+                         (salt, ("ph_total", "ph_seawater", "ph_free", "ph"))):
+        for name in reversed(order):
+            if name in values:
+                column[which & np.isfinite(values[name])] = name
+    for index, pair in enumerate(PAIRS):
+        for name in PH_COLUMNS:
+            rows = np.flatnonzero((choice == index) & (column == name))
+            if rows.size:
+                yield pair, name, rows
+
+
+def water_of(values: Values, pair: str, ph_column: str, acids: tuple[Acid, ...], options: Options) -> Water:
+    """Solve rows that share a pair. A pH read at another temperature is solved there and carried to the water's."""
+    keywords = water_keywords(values, acids, options.carbonic)
+    alkalinity = alkalinity_reading(values)[0]
+    if pair == AIR:
+        return Water.from_alkalinity_pco2(alkalinity_eq_l=alkalinity, pco2_atm=air_pco2(keywords, options), **keywords)
+    known = {"alkalinity": ("alkalinity_eq_l", alkalinity), "carbon": ("dic_mol_l", values.get("dic_mol_l")),
+             "pCO2": ("pco2_atm", values.get("pco2_atm")), "pH": ("ph", values.get(ph_column))}
+    members = pair.split(" and ")
+    given = dict(known[m] for m in members)
+    if "pH" not in members:
+        make = {"alkalinity and carbon": Water.from_alkalinity_dic, "alkalinity and pCO2": Water.from_alkalinity_pco2,
+                "carbon and pCO2": Water.from_dic_pco2}[pair]
+        return make(**given, **keywords)
+    t_ph = values.get("ph_temperature_c", np.full(alkalinity.shape, np.nan))
+    t_water = keywords["t_c"]
+    keywords["t_c"] = np.where(np.isfinite(t_ph), t_ph, t_water)
+    make = {"pH and alkalinity": Water.from_ph_alkalinity, "pH and carbon": Water.from_ph_dic,
+            "pH and pCO2": Water.from_ph_pco2}[pair]
+    water = make(**given, ph_scale=PH_COLUMNS[ph_column], **keywords)
+    return water.at_temperature(t_water) if np.any(keywords["t_c"] != t_water) else water
+
+
+def air_pco2(keywords: dict, options: Options) -> Array:
+    """CO2 pressure of air over each row. [atm]"""
+    return pco2_of_air(options.air_co2_ppm, keywords["t_c"], keywords["pressure_atm"], keywords["salinity"])
