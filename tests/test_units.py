@@ -123,31 +123,50 @@ def test_concentrations_from_atomic_weights(text, dimension, substance, expected
 
 
 # legal or exact definitions
-@pytest.mark.parametrize(
-    ("value", "text", "dimension", "expected"),
-    [
-        (68.0, "°F", "temperature", 20.0), (-40.0, "degF", "temperature", -40.0), (273.15, "K", "temperature", 0.0),
-        (1.0, "mS/cm", "conductivity", 1000.0), (1.0, "S/m", "conductivity", 10000.0), (1.0, "mS/m", "conductivity", 10.0),
-        (101325.0, "Pa", "pressure", 1.0), (1013.25, "hPa", "pressure", 1.0), (101.325, "kPa", "pressure", 1.0),
-        (760.0, "mmHg", "pressure", 1.0), (29.9213, "inHg", "pressure", 1.0), (1.01325, "bar", "pressure", 1.0),
-        (420.0, "µatm", "pressure", 4.2e-4), (1000.0, "ft", "length", 304.8), (36.0, "h", "time", 1.5),
-        (1440.0, "min", "time", 1.0), (35.16504, "g/kg", "salinity", 35.0), (1.0, "gal", "volume", 3.785411784e-3),
-        (1.0, "MGD", "flow", 3785.411784), (1.0, "gpm", "flow", 3.785411784e-3 * 1440), (1.0, "L/s", "flow", 86.4),
-        (1.0, "cfs", "flow", 0.3048**3 * 86400), (1.0, "acre-ft", "volume", 43560 * 0.3048**3), (1.0, "m3/h", "flow", 24.0),
-        (1.0, "lb", "weight", 0.45359237), (1.0, "lb/h", "weight_rate", 24 * 0.45359237), (1.0, "short ton", "weight", 907.18474),
-        (1.0, "acre", "area", 43560 * 0.3048**2), (1.0, "ha", "area", 1e4), (1.0, "mL/min", "flow", 1.44e-3),
-        (1.0, "gpd", "flow", 3.785411784e-3), (1.0, "ft3", "volume", 0.3048**3), (1.0, "ft2", "area", 0.3048**2),
-        (1.0, "L/min", "flow", 1.44), (1.0, "m3/s", "flow", 86400.0), (1.0, "t/d", "weight_rate", 1000.0),
-    ],
-)  # fmt: skip
+EXACT = [
+    (68.0, "°F", "temperature", 20.0), (-40.0, "degF", "temperature", -40.0), (273.15, "K", "temperature", 0.0),
+    (1.0, "mS/cm", "conductivity", 1000.0), (1.0, "S/m", "conductivity", 10000.0), (1.0, "mS/m", "conductivity", 10.0),
+    (101325.0, "Pa", "pressure", 1.0), (1013.25, "hPa", "pressure", 1.0), (101.325, "kPa", "pressure", 1.0),
+    (760.0, "mmHg", "pressure", 1.0), (29.9213, "inHg", "pressure", 1.0), (1.01325, "bar", "pressure", 1.0),
+    (420.0, "µatm", "pressure", 4.2e-4), (1000.0, "ft", "length", 304.8), (36.0, "h", "time", 1.5),
+    (1440.0, "min", "time", 1.0), (35.16504, "g/kg", "salinity", 35.0), (1.0, "gal", "volume", 3.785411784e-3),
+    (1.0, "MGD", "flow", 3785.411784), (1.0, "gpm", "flow", 3.785411784e-3 * 1440), (1.0, "L/s", "flow", 86.4),
+    (1.0, "cfs", "flow", 0.3048**3 * 86400), (1.0, "acre-ft", "volume", 43560 * 0.3048**3), (1.0, "m3/h", "flow", 24.0),
+    (1.0, "lb", "weight", 0.45359237), (1.0, "lb/h", "weight_rate", 24 * 0.45359237), (1.0, "short ton", "weight", 907.18474),
+    (1.0, "acre", "area", 43560 * 0.3048**2), (1.0, "ha", "area", 1e4), (1.0, "mL/min", "flow", 1.44e-3),
+    (1.0, "gpd", "flow", 3.785411784e-3), (1.0, "ft3", "volume", 0.3048**3), (1.0, "ft2", "area", 0.3048**2),
+    (1.0, "L/min", "flow", 1.44), (1.0, "m3/s", "flow", 86400.0), (1.0, "t/d", "weight_rate", 1000.0),
+    (1.0, "cm", "length", 0.01), (1.0, "km", "length", 1000.0), (1.0, "matm", "pressure", 1e-3), (1.0, "L", "volume", 1e-3),
+    (1.0, "mL", "volume", 1e-6), (1.0, "megaliter", "volume", 1e3), (1.0, "g", "weight", 1e-3), (1.0, "mg", "weight", 1e-6),
+    (1.0, "t", "weight", 1e3), (1.0, "km2", "area", 1e6), (1.0, "L/h", "flow", 0.024), (1.0, "L/d", "flow", 1e-3),
+    (1.0, "kg/h", "weight_rate", 24.0), (1.0, "lb/d", "weight_rate", 0.45359237), (1.0, "mmol/L", "ionic_strength", 1e-3),
+]  # fmt: skip
+
+
+@pytest.mark.parametrize(("value", "text", "dimension", "expected"), EXACT)
 def test_exact_definitions(value, text, dimension, expected):
     """SI, the international foot and pound, the US gallon, the standard atmosphere; salinity by 35.16504/35."""
     assert_allclose(to_house(value, text, dimension), expected, rtol=2e-6, atol=1e-9)
 
 
+def test_no_unit_is_left_unchecked():
+    """A unit is a house unit (scale 1), a decimal multiple that its prefix tells, or stands among the checks above."""
+    checked = {parse_unit(text, dimension) for _, text, dimension, _ in EXACT}
+    prefix = {"m": 1e-3, "µ": 1e-6, "n": 1e-9}
+    for row in read_table("units"):
+        if row["group"] == "concentration" and not row["basis"]:
+            head = row["unit"].split("/")[0]
+            factor = 1.0 if head in ("mol", "eq", "g") else prefix[head[0]]
+            assert (float(row["scale"]), row["per_kg"] == "yes") == (factor, row["unit"].endswith("/kg")), row["unit"]
+        elif not row["basis"] and (float(row["scale"]), float(row["offset"])) != (1.0, 0.0):
+            assert parse_unit(row["unit"], row["group"]) in checked, row["unit"]
+
+
 def test_mass_per_kilogram_needs_the_density():
     """Sea water at 25 °C and salinity 35 has 1023.34306 kg/m3 (UNESCO technical paper 44, recalled from memory)."""
-    assert_allclose(to_house(2300.0, "µmol/kg", "alkalinity", density_kg_l=1.02334306), 2300e-6 * 1.02334306, rtol=1e-12)
+    assert_allclose(
+        to_house(2300.0, "µmol/kg", "alkalinity", density_kg_l=1.02334306), 2300e-6 * 1.02334306, rtol=1e-12
+    )
     with pytest.raises(InputError, match=r"µmol/kg needs the density of the sample; none is given"):
         to_house(2300.0, "µmol/kg", "alkalinity")
 

@@ -1,1 +1,1 @@
-"""."""
+"""The command line; it translates and thinks nothing."""

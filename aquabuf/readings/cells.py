@@ -17,6 +17,7 @@ __all__ = ["DATE_ORDERS", "Numbers", "Problem", "parse_choice", "parse_date", "p
 
 MISSING = frozenset({"", "na", "n/a", "n.a.", "-", "--", "nan", "null"})
 DATE_ORDERS = ("day-month-year", "month-day-year")
+_HUGE = 1e100  # beyond it a conversion could overflow
 _NOT_PLAIN = re.compile(r"[^0-9eE+\-.,\n \t]")
 _NUMBER = re.compile(r"[+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?", re.ASCII)
 _THOUSANDS = re.compile(r"[+-]?\d{1,3}(?:[,.' \u00a0\u202f]\d{3})+(?:[.,]\d+)?")
@@ -103,7 +104,7 @@ def parse_numbers(
     numbers = [float(word) for word in missing if isinstance(word, int | float)]
     if numbers:
         found.values[np.isin(found.values, numbers)] = np.nan
-    for at in np.flatnonzero(np.isinf(found.values)).tolist():
+    for at in np.flatnonzero(np.abs(found.values) > _HUGE).tolist():
         found.values[at] = np.nan
         found.problems.append(Problem(at, "must be finite", "leave the cell blank if there is no value"))
     return found

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 
+from aquabuf.readings.schema import find_quantity
 from aquabuf.readings.sheet import Sheet
 
 __all__ = ["conductivity_25", "density_kg_l", "derive"]
@@ -29,9 +30,15 @@ def density_kg_l(sheet: Sheet, column: str) -> np.ndarray:
     salinity = sheet.numbers.get("salinity", nothing)
     sheet.flag(np.isnan(t_c), column, None, f"no temperature, density at {DENSITY_T_C:g} °C used")
     sheet.flag(np.isnan(salinity), column, None, "no salinity, density of fresh water used")
-    t_c = np.where(np.isnan(t_c), DENSITY_T_C, t_c)
-    salinity = np.where(np.isnan(salinity), 0.0, np.maximum(salinity, 0.0))
+    t_c = _within("temperature_c", np.where(np.isnan(t_c), DENSITY_T_C, t_c))
+    salinity = _within("salinity", np.where(np.isnan(salinity), 0.0, salinity))
     return seawater_density(t_c, salinity) / 1e3
+
+
+def _within(name: str, values: np.ndarray) -> np.ndarray:
+    """Values inside the hard limits; rows outside are rejected anyway, and must not overflow."""
+    q = find_quantity(name)
+    return np.clip(values, q.low, q.high)
 
 
 def _fill(sheet: Sheet, name: str, values: np.ndarray) -> None:

@@ -8,6 +8,9 @@ import pandas as pd
 __all__ = ["SeenNames"]
 
 
+DUPLICATE_RULE = "sample_id is already used in row"
+
+
 class SeenNames:
     """Names already taken and the row that took each.
 

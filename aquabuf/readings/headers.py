@@ -115,7 +115,7 @@ def _unit_missing(header: str, quantity: Quantity) -> HeaderError:
 
 
 def _unknown_unit(header: str, text: str, quantity: Quantity) -> HeaderError:
-    if not quantity.is_number:
+    if not quantity.is_number or unit_labels(quantity) == ["-"]:
         return HeaderError(f"column {header!r}: {quantity.name} takes no unit, found {text!r}. Remove it.")
     return HeaderError(
         f"column {header!r}: {text!r} is not a unit of {quantity.base}. Use one of: {', '.join(unit_labels(quantity))}."
@@ -138,9 +138,12 @@ def _bracketed(header: str, name: str, text: str, index: Index) -> Column | None
         return None
     quantity, is_u, basis = found
     unit = parse_unit(text, quantity.dimension) if quantity.is_number else None
-    if unit is None:
+    if unit is not None:
+        return column_for(header, quantity, unit, is_u=is_u, basis=basis)
+    column = _suffixed(header, index)  # the brackets may hold a word of the name: "pH (field)"
+    if column is None:
         raise _unknown_unit(header, text, quantity)
-    return column_for(header, quantity, unit, is_u=is_u, basis=basis)
+    return column
 
 
 def _suffixed(header: str, index: Index) -> Column | None:

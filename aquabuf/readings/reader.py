@@ -12,7 +12,7 @@ import pandas as pd
 from aquabuf.errors import InputError
 from aquabuf.readings.cells import Problem
 from aquabuf.readings.derive import density_kg_l, derive
-from aquabuf.readings.duplicates import SeenNames
+from aquabuf.readings.duplicates import DUPLICATE_RULE, SeenNames
 from aquabuf.readings.mapping import TableMap, read_map
 from aquabuf.readings.plan import Plan, make_plan
 from aquabuf.readings.result import REJECTED_COLUMNS, Readings, flag_notes, join_readings
@@ -79,10 +79,7 @@ def _reject_duplicates(sheet: Sheet, seen: SeenNames) -> None:
     names = [sheet.ids[i] for i in at.tolist()]
     first = seen.first_rows(names, sheet.rows[at])
     remedy = "give each sample a name of its own; the first row is kept"
-    again = [
-        Problem(int(at[i]), f"sample_id is already used in row {first[i]}", remedy)
-        for i in np.flatnonzero(first).tolist()
-    ]
+    again = [Problem(int(at[i]), f"{DUPLICATE_RULE} {first[i]}", remedy) for i in np.flatnonzero(first).tolist()]
     sheet.reject("sample_id", sheet.ids, again)
 
 

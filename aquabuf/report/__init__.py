@@ -1,1 +1,1 @@
-"""."""
+"""Results to text, tables and figures."""

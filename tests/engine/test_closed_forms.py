@@ -6,12 +6,12 @@ applied here a second time.
 
 import numpy as np
 import pytest
+from by_hand import gamma
 from numpy.testing import assert_allclose
 from scipy.optimize import brentq
 
 from aquabuf import Water
 from aquabuf.chem import fresh
-from aquabuf.chem.activity import debye_huckel_a
 from aquabuf.chem.gases import co2_fugacity_ratio, pco2_of_air
 from aquabuf.chem.properties import water_density
 
@@ -20,13 +20,7 @@ STRENGTHS = [0.0, 0.001, 0.1]
 TEMPERATURES = [0.0, 12.5, 25.0, 50.0]
 
 
-def gamma(charge, strength, t_c):
-    """Davies 1962: log10 gamma = -A z2 (sqrt(I)/(1 + sqrt(I)) - 0.3 I)."""
-    root = np.sqrt(strength)
-    return 10.0 ** (-debye_huckel_a(t_c) * charge**2 * (root / (1.0 + root) - 0.3 * strength))
-
-
-def by_hand(t_c, strength):
+def constants(t_c, strength):
     """K1 and K2 for activity of H+ and concentrations of the rest, H+ and OH- in mol/L per activity, density."""
     g1, g2 = gamma(1, strength, t_c), gamma(2, strength, t_c)
     rho = water_density(t_c) / 1000.0
@@ -38,7 +32,7 @@ def by_hand(t_c, strength):
 @pytest.mark.parametrize("t_c", TEMPERATURES)
 def test_bicarbonate_point(t_c, strength):
     """At pH = (pK1 + pK2)/2 the carbonate alkalinity equals total carbon: CO2 and CO3-- are equal there."""
-    k1, k2, c_h, c_oh = by_hand(t_c, strength)
+    k1, k2, c_h, c_oh = constants(t_c, strength)
     h, dic = np.sqrt(k1 * k2), 2e-3
     water = Water.from_alkalinity_dic(alkalinity_eq_l=dic + c_oh / h - c_h * h, dic_mol_l=dic, t_c=t_c,
                                       ionic_strength_mol_l=strength)
@@ -63,7 +57,7 @@ def test_pure_water_by_the_handbook(t_c, pkw):
 @pytest.mark.parametrize("strength", STRENGTHS)
 def test_strong_acid_and_base_are_bare_hydrogen_and_hydroxide(strength):
     """Without carbon, alkalinity of -0.01 is H+ alone and +0.01 is OH- alone (the partner is 1e-10 of it)."""
-    _, _, c_h, c_oh = by_hand(25.0, strength)
+    _, _, c_h, c_oh = constants(25.0, strength)
     water = Water.from_alkalinity_dic(alkalinity_eq_l=[-0.01, 0.01], dic_mol_l=0.0, t_c=25.0, ionic_strength_mol_l=strength)
     assert_allclose(water.ph, [-np.log10(0.01 / c_h), -np.log10(c_oh / 0.01)], rtol=0, atol=1e-9)
 

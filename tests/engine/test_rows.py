@@ -2,7 +2,7 @@
 
 import numpy as np
 import pytest
-from hypothesis import given, settings
+from hypothesis import assume, given, settings
 from hypothesis import strategies as st
 from numpy.testing import assert_allclose, assert_array_equal
 
@@ -58,7 +58,7 @@ def test_broadcasting_keeps_the_common_shape():
     assert_allclose(water.alkalinity_eq_l, [[1e-3, 2e-3, 3e-3]] * 2)
 
 
-@settings(max_examples=30, deadline=None)
+@settings(max_examples=15, deadline=None)
 @given(st.permutations(range(12)))
 def test_order_of_rows_does_not_matter(order):
     """Permuting the rows permutes the answers."""
@@ -75,15 +75,14 @@ def test_infinite_calcium_is_a_row_without_an_answer():
     assert_array_equal(np.isnan(water.precipitation_potential_mol_l()), [False, True])
 
 
-@settings(max_examples=60, deadline=None)
+@settings(max_examples=40, deadline=None)
 @given(bad=st.sampled_from(["alkalinity_eq_l", "dic_mol_l", "t_c", "salinity", "calcium_mol_l"]),
        value=st.sampled_from([np.nan, np.inf, -np.inf, -50.0, 1e6]), row=st.integers(0, 11))
 def test_one_bad_row_changes_no_other(bad, value, row):
     """Whatever stands in one cell, the other eleven rows keep their answers."""
     values = readings(12)
     good = GOOD
-    if (bad, value) == ("calcium_mol_l", np.inf):
-        return  # has a test of its own
+    assume((bad, value) != ("calcium_mol_l", np.inf))  # has a test of its own
     values[bad] = values[bad].copy()
     values[bad][row] = value
     spoiled = answers(Water.from_alkalinity_dic(**values))

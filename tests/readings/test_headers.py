@@ -7,10 +7,10 @@ from aquabuf.readings.headers import nearest_names, parse_header
 from aquabuf.readings.schema import name_index
 
 INDEX = name_index()
-MICRO = "µμu"
 
 
 def read(header):
+    """The column that a header means."""
     return parse_header(header, INDEX)
 
 
@@ -47,7 +47,7 @@ def test_every_form_of_every_unit(form, name, unit, scale):
 @pytest.mark.parametrize(
     ("header", "name"),
     [
-        ("pH", "ph"), ("PH", "ph"), ("pH (total scale)".replace(" (total scale)", "_total"), "ph_total"), ("Salinity (PSU)", "salinity"),
+        ("pH", "ph"), ("PH", "ph"), ("pH (total)", "ph_total"), ("pH (field)", "ph"), ("Ca2+ (mg/L)", "calcium_mol_l"), ("SO4 2- (mg/L)", "sulfate_mol_l"), ("Salinity (PSU)", "salinity"),
         ("Specific conductance (µS/cm at 25 °C)", "conductivity_us_cm"), ("Sample ID", "sample_id"), ("Water kind", "water_kind"),
         ("Temperature of pH (°C)", "ph_temperature_c"), ("pH temperature (°C)", "ph_temperature_c"), ("NO3-N (mg/L)", "nitrate_mol_l"),
         ("Total hardness (°dH)", "total_hardness_mol_l"), ("ANC (µeq/L)", "anc_eq_l"), ("pCO2 (µatm)", "pco2_atm"),
@@ -82,13 +82,18 @@ def test_words_that_state_the_basis():
     assert read("NO3-N (mg/L)").scale == pytest.approx(1 / 14.007e3, rel=1e-6)
     assert read("SiO2 (mg/L)").scale == pytest.approx(1 / 60.083e3, rel=1e-5)
     assert read("Alkalinity as HCO3 (mg/L)").scale == pytest.approx(1 / 61.016e3, rel=1e-5)
+    assert read("SO4-S (mg/L)").scale == pytest.approx(1 / 32.06e3, rel=1e-6)  # against the bare mg/L of sulfate
+    assert read("Boric acid (mg/L)").scale == pytest.approx(1 / 61.831e3, rel=1e-5)
     assert read("SiO2 (mg/L as Si)").scale == pytest.approx(1 / 28.085e3, rel=1e-6)
 
 
 @pytest.mark.parametrize(
     ("header", "words"),
     [
-        ("nitrate_mg_l", r"'nitrate_mg_l' is ambiguous: mg/L of nitrate can mean mg/L as N or mg/L as NO3.*nitrate_mg_l_n or nitrate_mg_l_no3"),
+        (
+            "nitrate_mg_l",
+            r"'nitrate_mg_l' is ambiguous: mg/L of nitrate can mean mg/L as N or mg/L as NO3.*nitrate_mg_l_n or nitrate_mg_l_no3",
+        ),
         ("Ammonia (mg/L)", r"mg/L as N or mg/L as NH4 or mg/L as NH3"),
         ("phosphate_ug_l", r"µg/L as P or µg/L as PO4"),
         ("silica_mg_l", r"mg/L as SiO2 or mg/L as Si"),
@@ -106,7 +111,10 @@ def test_ambiguous_headers_show_both_readings(header, words):
 @pytest.mark.parametrize(
     ("header", "words"),
     [
-        ("temperature", r"'temperature' needs a unit: temperature can be in °C, °F, K\. Write it in the header, e\.g\. temperature_c"),
+        (
+            "temperature",
+            r"'temperature' needs a unit: temperature can be in °C, °F, K\. Write it in the header, e\.g\. temperature_c",
+        ),
         ("Calcium", r"needs a unit: calcium can be in mmol/L.*e\.g\. calcium_mg_l"),
         ("alkalinity", r"needs a unit: .*°dH.*e\.g\. alkalinity_mg_l_caco3"),
         ("conductivity", r"needs a unit: conductivity can be in µS/cm, mS/cm"),
@@ -123,14 +131,21 @@ def test_a_missing_unit_is_an_error_that_names_the_possible_ones(header, words):
     [
         ("calcum_mg_l", r"'calcum_mg_l' is not known\. The nearest known names are calcium_mol_l"),
         ("alkalinitty (meq/L)", r"nearest known names are alkalinity_eq_l"),
-        ("xyzzy", r"'xyzzy' is not known\. No known name is near\. Rename it, remove it, or give its meaning in a map file"),
+        (
+            "xyzzy",
+            r"'xyzzy' is not known\. No known name is near\. Rename it, remove it, or give its meaning in a map file",
+        ),
         ("Calcium (furlong)", r"'furlong' is not a unit of calcium\. Use one of: mmol/L"),
         ("pCO2 (ppm)", r"'ppm' is not a unit of pco2\. Use one of: atm"),
         ("calcium_mg_l_n", r"calcium cannot be given in mg/L as N, because it is not given as N"),
         ("phosphate_ueq_l", r"phosphate cannot be given in µeq/L, because its charge is zero or depends on pH"),
-        ("nitrate (°dH)", r"nitrate cannot be given in °dH, because degrees of hardness are for hardness and alkalinity"),
+        (
+            "nitrate (°dH)",
+            r"nitrate cannot be given in °dH, because degrees of hardness are for hardness and alkalinity",
+        ),
         ("tds_mmol_l", r"tds cannot be given in mmol/L, because it is a mass with no one molar mass"),
         ("site (m)", r"site takes no unit, found 'm'"),
+        ("pH (deep)", r"ph takes no unit, found 'deep'\. Remove it"),
     ],
 )
 def test_unusable_headers(header, words):

@@ -74,7 +74,9 @@ def test_headers_that_the_map_leaves_out(mapped, policy, words):
     text = policy + MAP.replace('"Operator" = "ignore"\n', "")
     with pytest.raises(HeaderError, match=words):
         mapped(text)
-    ignored = mapped('unlisted = "ignore"\n' + MAP.replace('"Operator" = "ignore"\n', "").replace('"T" = "temperature (°F)"\n', ""))
+    ignored = mapped(
+        'unlisted = "ignore"\n' + MAP.replace('"Operator" = "ignore"\n', "").replace('"T" = "temperature (°F)"\n', "")
+    )
     assert "temperature_c" not in ignored.frame
     assert ignored.notes[0] == "2 columns left out: T, Operator"
 
@@ -91,12 +93,16 @@ def test_options_of_the_file(mapped):
 def test_encoding_that_is_wrong(table):
     """A named encoding is not second-guessed."""
     with pytest.raises(FileError, match=r"cannot be decoded as utf-8\. Correct 'encoding' in the map file"):
-        read_readings(table("sample_id,site\na,Höhe\n".encode("latin-1")), table('[read]\nencoding = "utf-8"\n', "m.toml"))
+        read_readings(
+            table("sample_id,site\na,Höhe\n".encode("latin-1")), table('[read]\nencoding = "utf-8"\n', "m.toml")
+        )
 
 
 def test_words_for_no_value_of_ones_own(mapped):
     """Words and numbers, in text and number columns alike."""
-    frame = mapped('[read]\nmissing = ["no data", 99]\n', "sample_id,ph,site\na,no data,No Data\nb,99.0,S\nc,7,S\n").frame
+    frame = mapped(
+        '[read]\nmissing = ["no data", 99]\n', "sample_id,ph,site\na,no data,No Data\nb,99.0,S\nc,7,S\n"
+    ).frame
     assert frame["ph"].isna().tolist() == [True, True, False]
     assert frame["site"].tolist() == ["", "S", "S"]
 
@@ -108,8 +114,16 @@ def test_an_acid_of_ones_own(mapped):
     assert_allclose(readings.frame["malate_mol_l"], [1e-3, 0.25e-3])
     assert_allclose(readings.frame["malate_u_mol_l"], [1e-4, 0.5e-3 / 12**0.5])
     acid = readings.acids["malate_mol_l"]
-    assert (acid.name, acid.pk, acid.charge, acid.dh_j_mol, acid.dcp_j_mol_k) == ("malate", (3.4, 5.2), 0, (1.0, 2.0), ())
-    with pytest.raises(HeaderError, match=r"malate cannot be given in mg/L, because it has no molar mass; give molar_mass_g"):
+    assert (acid.name, acid.pk, acid.charge, acid.dh_j_mol, acid.dcp_j_mol_k) == (
+        "malate",
+        (3.4, 5.2),
+        0,
+        (1.0, 2.0),
+        (),
+    )
+    with pytest.raises(
+        HeaderError, match=r"malate cannot be given in mg/L, because it has no molar mass; give molar_mass_g"
+    ):
         mapped(text.replace("molar_mass_g = 134.0\n", ""), "sample_id,malate_mg_l\na,1\n")
 
 

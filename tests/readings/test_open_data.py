@@ -16,6 +16,7 @@ needs_data = pytest.mark.skipif(not DATA, reason="AQUABUF_OPEN_DATA names no fol
 
 
 def read(table, map_name):
+    """Readings of an agency table by a shipped map."""
     return read_readings(Path(DATA) / f"{table}.csv", MAPS / f"{map_name}.toml")
 
 
@@ -59,7 +60,12 @@ def test_national_lakes_assessment():
     assert (line["row"], line["sample_id"], line["column"], line["value"]) == (446, "6929", "temp_surface_C", "273")
     assert readings.frame["date_parsed"].dt.month.between(5, 10).all()  # the survey's summer season
     kept = [row for row in raw_rows("nla_lakes_2012") if row["uid"] != "6929"]
-    assert_allclose(readings.frame["nitrate_mol_l"].dropna() * 14.007e3, [float(r["NO3NO2_mgN_L"]) for r in kept if r["NO3NO2_mgN_L"]], rtol=1e-9, atol=1e-12)
+    assert_allclose(
+        readings.frame["nitrate_mol_l"].dropna() * 14.007e3,
+        [float(r["NO3NO2_mgN_L"]) for r in kept if r["NO3NO2_mgN_L"]],
+        rtol=1e-9,
+        atol=1e-12,
+    )
 
 
 @needs_data

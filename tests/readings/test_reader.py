@@ -33,6 +33,7 @@ def reject_of(readings, **where):
         ("ph", "1_0", "must be a number", "correct it"),
         ("ph", "0x7", "must be a number", "correct it"),
         ("ph", "1e400", "must be finite", "leave the cell blank"),
+        ("calcium_mg_l", "1e200", "must be finite", "leave the cell blank"),
         ("ph", "inf", "must be finite", "leave the cell blank"),
         ("ph", "-Infinity", "must be finite", "leave the cell blank"),
         ("ph", ">9", "above the range of the method", "diluted result or leave it blank"),
@@ -185,10 +186,14 @@ def test_choices_take_other_spellings(table):
 
 
 # factor [1 + 0.0191 (t - 25)] as tabulated for the linear compensation
-@pytest.mark.parametrize(("t_c", "factor"), [(5, 0.618), (10, 0.7135), (15, 0.809), (20, 0.9045), (25, 1.0), (30, 1.0955)])
+@pytest.mark.parametrize(
+    ("t_c", "factor"), [(5, 0.618), (10, 0.7135), (15, 0.809), (20, 0.9045), (25, 1.0), (30, 1.0955)]
+)
 def test_conductivity_is_brought_to_25_degrees(table, t_c, factor):
     """EC25 = EC / factor; the raw reading stays in its own column."""
-    readings = read_readings(table(f"sample_id,temperature_c,conductivity_raw_us_cm,conductivity_raw_u_us_cm\na,{t_c},100,3\n"))
+    readings = read_readings(
+        table(f"sample_id,temperature_c,conductivity_raw_us_cm,conductivity_raw_u_us_cm\na,{t_c},100,3\n")
+    )
     assert_allclose(readings.frame["conductivity_us_cm"], 100 / factor, rtol=1e-9)
     assert_allclose(readings.frame["conductivity_u_us_cm"], 3 / factor, rtol=1e-9)
     assert readings.frame["conductivity_raw_us_cm"][0] == 100
@@ -199,12 +204,16 @@ def test_measured_conductivity_at_25_degrees_stays(table):
     text = "sample_id,temperature_c,conductivity_us_cm,conductivity_raw_us_cm\na,5,150,100\nb,5,,100\nc,,,100\n"
     readings = read_readings(table(text))
     assert_allclose(readings.frame["conductivity_us_cm"], [150, 100 / 0.618, np.nan])
-    assert readings.notes == ("1 x no temperature, so no conductivity at 25 °C in conductivity_raw_us_cm (first: row 4)",)
+    assert readings.notes == (
+        "1 x no temperature, so no conductivity at 25 °C in conductivity_raw_us_cm (first: row 4)",
+    )
 
 
 def test_calcium_from_its_hardness(table):
     """100.086 mg/L as CaCO3 is 1 mmol/L; measured calcium stays."""
-    readings = read_readings(table("sample_id,calcium_hardness_mg_l_caco3,calcium_mg_l\na,100.086,\nb,100.086,20.039\n"))
+    readings = read_readings(
+        table("sample_id,calcium_hardness_mg_l_caco3,calcium_mg_l\na,100.086,\nb,100.086,20.039\n")
+    )
     assert_allclose(readings.frame["calcium_mol_l"], [1e-3, 0.5e-3], rtol=1e-9)
 
 
@@ -243,7 +252,9 @@ def test_all_rows_bad_is_still_an_answer(table):
 
 def test_no_row_is_lost(table):
     """Rows kept and rows rejected are the rows of the file."""
-    text = "sample_id,ph,calcium_mg_l\n" + "".join(f"s{i % 90},{i % 17},{'<' if i % 5 == 0 else ''}{i % 7}\n" for i in range(200))
+    text = "sample_id,ph,calcium_mg_l\n" + "".join(
+        f"s{i % 90},{i % 17},{'<' if i % 5 == 0 else ''}{i % 7}\n" for i in range(200)
+    )
     readings = read_readings(table(text))
     rows = set(readings.frame["row"]) | set(readings.rejected["row"])
     assert rows == set(range(2, 202))
@@ -270,7 +281,11 @@ def test_numbers_survive_every_dialect(table, values, dialect):
     delimiter, decimal = dialect
     rows = [f"s{i}{delimiter}{repr(value).replace('.', decimal)}" for i, value in enumerate(values)]
     first = f"first{delimiter}0{decimal}5"  # so that the decimal sign shows
-    path = table("\n".join([f"sample_id{delimiter}anc_eq_l", first, f"second{delimiter}1{decimal}25", *rows]).replace("anc_eq_l", "anc_meq_l"))
+    path = table(
+        "\n".join([f"sample_id{delimiter}anc_eq_l", first, f"second{delimiter}1{decimal}25", *rows]).replace(
+            "anc_eq_l", "anc_meq_l"
+        )
+    )
     kept = read_readings(path).frame["anc_eq_l"].to_numpy()[2:]
     assert kept.tolist() == [value * 1e-3 for value in values]
 

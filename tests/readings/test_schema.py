@@ -77,13 +77,20 @@ def test_unknown_canonical_name():
 
 def test_an_acid_of_the_user_may_not_take_a_known_name():
     """Its name would mean two things."""
-    with pytest.raises(InputError, match=r"the name 'acetate' stands for both acetate_mol_l and acetate_mol_l; rename one"):
+    with pytest.raises(
+        InputError, match=r"the name 'acetate' stands for both acetate_mol_l and acetate_mol_l; rename one"
+    ):
         name_index([acid_quantity("acetate")])
 
 
 def test_order_puts_uncertainty_behind_its_quantity():
     """Unknown names stay last."""
-    assert schema_order(["zzz", "calcium_u_mol_l", "ph", "calcium_mol_l"]) == ["ph", "calcium_mol_l", "calcium_u_mol_l", "zzz"]
+    assert schema_order(["zzz", "calcium_u_mol_l", "ph", "calcium_mol_l"]) == [
+        "ph",
+        "calcium_mol_l",
+        "calcium_u_mol_l",
+        "zzz",
+    ]
 
 
 def test_ambiguous_quantities_have_no_bare_unit():

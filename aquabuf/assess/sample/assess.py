@@ -13,14 +13,16 @@ from aquabuf.assess.limits import Limit, verdicts
 from aquabuf.assess.options import Options
 from aquabuf.assess.sample.closure import Closure, closure
 from aquabuf.assess.sample.columns import result_columns
+from aquabuf.assess.sample.curves import Inputs
 from aquabuf.assess.sample.draws import Intervals, intervals
 from aquabuf.assess.sample.headline import alkalinity_as_read, headline, words_and_details
 from aquabuf.assess.sample.inputs import alkalinity_reading, ionic_strength, own_acids, uncertainties, values_of
-from aquabuf.assess.sample.quality import Check, check_rows, sample_checks
+from aquabuf.assess.sample.quality import check_rows, counted, file_checks, sample_checks
 from aquabuf.assess.sample.refuse import refusals
-from aquabuf.assess.sample.solve import AIR, NO_PAIR, PAIRS, choose, groups, take_rows, water_of
+from aquabuf.assess.sample.solve import ALKALINITY_AIR, NO_PAIR, PAIRS, PH_AIR, choose, groups, take_rows, water_of
 from aquabuf.chem.acids import Acid
 from aquabuf.engine.status import FLAGGED, SOLVED
+from aquabuf.readings.duplicates import DUPLICATE_RULE
 from aquabuf.readings.result import Readings
 
 __all__ = ["Assessment", "assess"]
@@ -36,14 +38,20 @@ class Assessment:
     results : one row per accepted sample, columns of results.csv.
     verdicts : one row per broken limit, with its rule.
     checks : quality checks, one row per check that could be made (or only those not met).
+    made, unmet : how many samples each check could be made for, and how many broke it.
+    inputs : what each sample was solved from, for curves.
     rejected : rows refused, by the reader or here: row, sample_id, column, value, rule, remedy.
     """
 
     results: pd.DataFrame
     verdicts: pd.DataFrame
     checks: pd.DataFrame
+    inputs: Inputs
     rejected: pd.DataFrame
     notes: tuple[str, ...]
+    made: Mapping[str, int]
+    unmet: Mapping[str, int]
+    file_checks: tuple[tuple[str, float, str, bool, str], ...]
 
 
 def assess(readings: Readings, options: Options, limits: tuple[Limit, ...], *, only_unmet_checks: bool = False,
@@ -55,7 +63,8 @@ def assess(readings: Readings, options: Options, limits: tuple[Limit, ...], *, o
     n = len(frame)
     values.setdefault("temperature_c", np.full(n, np.nan))
     u = uncertainties(values)
-    choice, figures = _solve(values, n, acids, options, closure(values, u, acids, options))
+    gap = closure(values, u, acids, options)
+    choice, figures = _solve(values, n, acids, options, gap)
     solved = choice != NO_PAIR
     refused = refusals(frame, values, ~solved, acids, options)
     keep = np.flatnonzero(solved)
@@ -65,7 +74,7 @@ def assess(readings: Readings, options: Options, limits: tuple[Limit, ...], *, o
     figures |= alkalinity_as_read(alkalinity_reading(values)[0], figures)
     spread = intervals(values, u, choice, acids, options, limits)
     figures["draws_solved"] = spread.solved
-    gap = closure(values, u, acids, options)
+    gap = gap.take(keep)
     figures |= {"closure_meq_l": gap.carbon_meq_l, "closure_u_meq_l": gap.carbon_u_meq_l}
     kind = kept["water_kind"].to_numpy(str) if "water_kind" in kept else np.full(keep.size, "")
     broken = verdicts(limits, figures, kind, figures["regime"].astype(str))
@@ -75,9 +84,16 @@ def assess(readings: Readings, options: Options, limits: tuple[Limit, ...], *, o
         results=table,
         verdicts=_verdict_rows(kept, limits, broken, figures, spread),
         checks=check_rows(checks, kept, only_unmet=only_unmet_checks),
+        inputs=Inputs(kept[["row", "sample_id"]], values, choice, acids),
         rejected=pd.concat([readings.rejected, refused], ignore_index=True) if len(refused) else readings.rejected,
         notes=readings.notes,
+        made=counted(checks), unmet=counted(checks, only_unmet=True),
+        file_checks=tuple(file_checks(values, _duplicates(readings.rejected))),
     )
+
+
+def _duplicates(rejected: pd.DataFrame) -> int:
+    return int(rejected["rule"].astype(str).str.startswith(DUPLICATE_RULE).sum())
 
 
 def _solve(values: Mapping[str, NDArray], n: int, acids: tuple[Acid, ...], options: Options, gap: Closure,
@@ -85,8 +101,7 @@ def _solve(values: Mapping[str, NDArray], n: int, acids: tuple[Acid, ...], optio
     """Pair used for each sample and its figures; pairs are tried in order until one has a solution."""
     final = np.full(n, NO_PAIR, dtype=np.int8)
     figures: dict[str, NDArray] = {}
-    tries = [*choose(values, n, options), np.where(gap.within_reach, PAIRS.index(AIR), NO_PAIR).astype(np.int8)]
-    for choice in tries:
+    for choice in choose(values, n, options, carbon_first=gap.carbon_first, carbon_unknown=gap.carbon_unknown):
         open_now = np.where(final == NO_PAIR, choice, NO_PAIR).astype(np.int8)
         for pair, ph_column, rows in groups(values, open_now):
             part = take_rows(values, rows)
@@ -97,7 +112,7 @@ def _solve(values: Mapping[str, NDArray], n: int, acids: tuple[Acid, ...], optio
             if good.size < rows.size:
                 rows, part = rows[good], take_rows(part, good)
                 water = water_of(part, pair, ph_column, acids, options)
-            if options.exchange == "open" and pair != AIR:
+            if options.exchange == "open" and pair != ALKALINITY_AIR:
                 water = water.at_air(options.air_co2_ppm)
             numbers = headline(water, options)
             numbers |= words_and_details(water, numbers["si_calcite"], numbers["ccpp_mg_l"])
@@ -116,10 +131,10 @@ def _results(kept: pd.DataFrame, figures: Mapping[str, NDArray], values: Mapping
     """One row per sample in the column order of results.csv."""
     n = len(kept)
     source = alkalinity_reading(values)[1]
-    from_air = (choice == PAIRS.index(AIR)) & (options.exchange == "closed")
+    from_air = choice == PAIRS.index(PH_AIR)
     status = np.where(from_air, "carbon from air", np.where(figures["flagged"], "outside range", "ok"))
-    reason = np.where(from_air, "pH and alkalinity leave no carbonate, within their uncertainty and the charge of "
-                                "organic acids; alkalinity was kept and carbon set by air",
+    reason = np.where(from_air, "pH and alkalinity of this acid water cannot tell its carbon (carbonate within "
+                                "uncertainty and organic charge of zero); pH was kept and carbon set by air",
                       np.where(figures["flagged"], "temperature, salinity, ionic strength or pressure is outside the "
                                                    "range of a constant", ""))
     strength_from = ionic_strength(values)[1]

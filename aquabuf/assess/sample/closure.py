@@ -2,34 +2,43 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, fields
 
 import numpy as np
 from numpy.typing import NDArray
 
 from aquabuf.assess.options import Options
 from aquabuf.assess.sample.inputs import PH_COLUMNS, Array, Values, alkalinity_reading, water_keywords
-from aquabuf.assess.sample.quality import ORGANIC_CHARGE_EQ_PER_MG
+from aquabuf.assess.sample.quality import ORGANIC_SITES_EQ_PER_MG
 from aquabuf.chem.acids import Acid
+from aquabuf.engine.balance import protons_lost
 from aquabuf.engine.water import Water
 
 __all__ = ["Closure", "closure"]
 
 ALUMINUM_CHARGE = 3.0  # upper bound per mole in acid water
+MUCH_BETTER = 2.0      # times smaller uncertainty before measured carbon takes the place of alkalinity
 
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Closure:
     """Carbonate alkalinity that pH and alkalinity leave [eq/L], and titrated less computed alkalinity [meq/L].
 
-    within_reach : carbonate is below zero, but by no more than uncertainty, organic acids and aluminum can explain.
+    carbon_unknown : that carbonate cannot be told from zero: it is below twice its uncertainty, and if negative by no
+        more than uncertainty, organic acids and aluminum can explain.
+    carbon_first : carbon was measured much better than pH and alkalinity imply it.
     """
 
     carbonate: Array
     carbonate_u: Array
-    within_reach: NDArray[np.bool_]
+    carbon_unknown: NDArray[np.bool_]
+    carbon_first: NDArray[np.bool_]
     carbon_meq_l: Array
     carbon_u_meq_l: Array
+
+    def take(self, rows: NDArray[np.intp]) -> Closure:
+        """The same for some of the rows."""
+        return Closure(*(getattr(self, f.name)[rows] for f in fields(self)))
 
 
 def closure(values: Values, u: Values, acids: tuple[Acid, ...], options: Options) -> Closure:
@@ -41,7 +50,8 @@ def closure(values: Values, u: Values, acids: tuple[Acid, ...], options: Options
         if column in values and np.isnan(ph).all():
             ph, ph_u, scale = values[column], u[column], name
     if np.isnan(ph).all() or np.isnan(alkalinity).all():
-        return Closure(missing, missing, np.zeros(alkalinity.shape, dtype=bool), missing, missing)
+        never = np.zeros(alkalinity.shape, dtype=bool)
+        return Closure(missing, missing, never, never, missing, missing)
     keywords = water_keywords(values, acids, options.carbonic)
     t_ph = values.get("ph_temperature_c", missing)
     keywords["t_c"] = np.where(np.isfinite(t_ph), t_ph, keywords["t_c"])
@@ -49,13 +59,15 @@ def closure(values: Values, u: Values, acids: tuple[Acid, ...], options: Options
     bare = Water.from_ph_dic(ph=ph, dic_mol_l=0.0, ph_scale=scale, **keywords)
     carbonate = alkalinity - bare.alkalinity_eq_l
     carbonate_u = np.hypot(alkalinity_u, bare.buffer_intensity_eq_l() * ph_u)
-    allowance = (2.0 * carbonate_u + ORGANIC_CHARGE_EQ_PER_MG * np.nan_to_num(values.get("doc_mg_l", missing))
+    allowance = (2.0 * carbonate_u + ORGANIC_SITES_EQ_PER_MG * np.nan_to_num(values.get("doc_mg_l", missing))
                  + ALUMINUM_CHARGE * np.nan_to_num(values.get("aluminum_mol_l", missing)))
-    with np.errstate(invalid="ignore"):
-        reach = (carbonate < 0.0) & (carbonate >= -allowance)
     dic = values.get("dic_mol_l", missing)
+    dic_u = u.get("dic_mol_l", missing)
+    per_mole = protons_lost(bare.state.carbonate_fractions())
+    with np.errstate(invalid="ignore"):
+        unknown = (carbonate <= 2.0 * carbonate_u) & (carbonate >= -allowance)
+        carbon_first = carbonate_u / per_mole > MUCH_BETTER * dic_u
     with_carbon = Water.from_ph_dic(ph=ph, dic_mol_l=dic, ph_scale=scale, **keywords)
-    charge = -with_carbon.charge_eq_l("carbonate") / np.where(dic > 0.0, dic, np.nan)
-    spread = np.sqrt(alkalinity_u**2 + (charge * u.get("dic_mol_l", missing)) ** 2
-                     + (with_carbon.buffer_intensity_eq_l() * ph_u) ** 2)
-    return Closure(carbonate, carbonate_u, reach, 1e3 * (alkalinity - with_carbon.alkalinity_eq_l), 1e3 * spread)
+    spread = np.sqrt(alkalinity_u**2 + (per_mole * dic_u) ** 2 + (with_carbon.buffer_intensity_eq_l() * ph_u) ** 2)
+    return Closure(carbonate, carbonate_u, unknown, carbon_first, 1e3 * (alkalinity - with_carbon.alkalinity_eq_l),
+                   1e3 * spread)

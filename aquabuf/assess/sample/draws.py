@@ -11,7 +11,7 @@ from aquabuf.assess.limits import Limit
 from aquabuf.assess.options import Options
 from aquabuf.assess.sample.headline import alkalinity_as_read, headline
 from aquabuf.assess.sample.inputs import Array, Values, alkalinity_reading
-from aquabuf.assess.sample.solve import AIR, groups, take_rows, water_of
+from aquabuf.assess.sample.solve import ALKALINITY_AIR, groups, take_rows, water_of
 from aquabuf.assess.uncertainty import drawn, interval, row_blocks, share
 from aquabuf.chem.acids import Acid
 from aquabuf.engine.status import SOLVED
@@ -41,7 +41,7 @@ def intervals(values: Values, u: Values, choice: NDArray[np.int8], acids: tuple[
             part, part_u = take_rows(values, block), take_rows(u, block)
             many = drawn(part, part_u, options.draws, options.seed, u)
             water = water_of(many, pair, ph_column, acids, options)
-            if options.exchange == "open" and pair != AIR:
+            if options.exchange == "open" and pair != ALKALINITY_AIR:
                 water = water.at_air(options.air_co2_ppm)
             figures = headline(water, options)
             figures |= alkalinity_as_read(alkalinity_reading(many)[0], figures)

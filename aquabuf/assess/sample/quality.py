@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
+from functools import cache
 
 import numpy as np
 import pandas as pd
@@ -14,10 +15,11 @@ from aquabuf.readings.schema import quantities
 from aquabuf.tables import read_table
 from aquabuf.units import substances
 
-__all__ = ["CHECK_COLUMNS", "Check", "check_rows", "file_checks", "sample_checks"]
+__all__ = ["CHECK_COLUMNS", "Check", "check_rows", "counted", "file_checks", "sample_checks"]
 
 CHECK_COLUMNS = ("row", "sample_id", "check", "value", "limit", "unit", "met", "remedy", "source")
-ORGANIC_CHARGE_EQ_PER_MG = 1e-5  # upper site density, 10 µeq per mg C: Oliver, Thurman & Malcolm 1983
+ORGANIC_SITES_EQ_PER_MG = 1e-5      # site density, 10 µeq per mg C: Oliver, Thurman & Malcolm 1983
+ORGANIC_TITRATED_EQ_PER_MG = 5e-6   # of which a titration to pH 4 reaches about half, by the same pK function
 WHOLE_MIN_ROWS, WHOLE_SHARE = 10, 90.0
 ROUNDED_COLUMNS = ("ph", "temperature_c", "alkalinity_eq_l", "anc_eq_l", "conductivity_us_cm", "dic_mol_l")
 
@@ -125,7 +127,7 @@ def _brown(values: Values, figures: Mapping[str, NDArray], pair: NDArray) -> lis
     doc = values.get("doc_mg_l", np.full(pair.size, np.nan))
     rests_on_both = pair == "pH and alkalinity"
     carbonate = 1e-3 * (figures["bicarbonate_mmol_l"] + 2.0 * figures["carbonate_mmol_l"])
-    organic = np.where(rests_on_both, 100.0 * ORGANIC_CHARGE_EQ_PER_MG * doc / np.maximum(carbonate, 1e-9), np.nan)
+    organic = np.where(rests_on_both, 100.0 * ORGANIC_TITRATED_EQ_PER_MG * doc / np.maximum(carbonate, 1e-9), np.nan)
     no_doc = np.where(rests_on_both & np.isnan(doc), figures["ph"], np.nan)
     return [Check("CO2 in brown acid water", organic, -np.inf, 20.0),
             Check("CO2 in brown acid water", no_doc, 5.5, np.inf)]
@@ -141,6 +143,15 @@ def _outside_usual(values: Values, rows: int) -> tuple[Array, NDArray]:
             count += hit
             names[hit] = np.where(names[hit] == "", name, names[hit] + ", " + name)
     return count, names
+
+
+def counted(checks: list[Check], *, only_unmet: bool = False) -> dict[str, int]:
+    """Number of samples that each check could be made for, or those that broke it."""
+    out: dict[str, int] = {}
+    for check in checks:
+        hit = np.isfinite(check.value) & ~(check.met & only_unmet)
+        out[check.name] = out.get(check.name, 0) + int(hit.sum())
+    return out
 
 
 def check_rows(checks: list[Check], frame: pd.DataFrame, *, only_unmet: bool) -> pd.DataFrame:
@@ -167,11 +178,13 @@ def check_rows(checks: list[Check], frame: pd.DataFrame, *, only_unmet: bool) ->
 
 
 def _limit_words(low: Array, high: Array) -> list[str]:
+    """The limits in words; each distinct pair is worded once."""
+    @cache
     def one(a: float, b: float) -> str:
-        if np.isneginf(a):
+        if a == -np.inf:
             return f"at most {b:.4g}"
-        return f"at least {a:.4g}" if np.isposinf(b) else f"{a:.4g} to {b:.4g}"
-    return [one(a, b) for a, b in zip(low, high, strict=True)]
+        return f"at least {a:.4g}" if b == np.inf else f"{a:.4g} to {b:.4g}"
+    return [one(a, b) for a, b in zip(low.tolist(), high.tolist(), strict=True)]
 
 
 def file_checks(values: Values, duplicates: int) -> list[tuple[str, float, str, bool, str]]:

@@ -37,7 +37,8 @@ def refusals(frame: pd.DataFrame, values: Values, bad: NDArray[np.bool_], acids:
                           "give a second one" + (", or run with --exchange open" if found == "alkalinity" else ""))
     remaining = np.array([i for i in rows if i not in reasons], dtype=np.intp)
     if remaining.size:
-        first = next(choose(values, bad.size, options))
+        nowhere = np.zeros(bad.size, dtype=bool)
+        first = next(choose(values, bad.size, options, carbon_first=nowhere, carbon_unknown=nowhere))
         only = np.full(bad.size, NO_PAIR, dtype=np.int8)
         only[remaining] = first[remaining]
         for pair, ph_column, group in groups(values, only):

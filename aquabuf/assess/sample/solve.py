@@ -14,16 +14,20 @@ from aquabuf.chem.gases import pco2_of_air
 from aquabuf.engine.conditions import FRESH_BELOW
 from aquabuf.engine.water import Water
 
-__all__ = ["AIR", "NO_PAIR", "PAIRS", "choose", "groups", "take_rows", "water_of"]
+__all__ = ["ALKALINITY_AIR", "NO_PAIR", "PAIRS", "PH_AIR", "air_pco2", "choose", "groups", "has", "take_rows",
+           "water_of"]
 
 NO_PAIR = -1
-AIR = "alkalinity and air"
+ALKALINITY_AIR, PH_AIR = "alkalinity and air", "pH and air"
 
-# Order of preference. pH and alkalinity come first in fresh water; in salt water, where a meter's pH is the weakest
-# reading, alkalinity and carbon do. Air stands in last, and only where asked for or where a pair contradicts itself.
+# Order of preference. pH and alkalinity come first in fresh water, unless the carbon they imply is much less certain
+# than a measured one; in salt water, where a meter's pH is the weakest reading, alkalinity and carbon do. Air stands
+# in last: where asked for, or where pH and alkalinity of an acid water cannot tell its carbon.
 PAIRS = ("pH and alkalinity", "pH and carbon", "alkalinity and carbon", "alkalinity and pCO2", "pH and pCO2",
-         "carbon and pCO2", AIR)
+         "carbon and pCO2", PH_AIR, ALKALINITY_AIR)
+MEASURED_PAIRS = PAIRS[:6]
 _FRESH_ORDER = (0, 1, 2, 3, 4, 5)
+_CARBON_ORDER = (1, 0, 2, 3, 4, 5)
 _SALT_ORDER = (2, 0, 1, 3, 4, 5)
 
 
@@ -39,23 +43,32 @@ def has(values: Values, rows: int) -> dict[str, NDArray[np.bool_]]:
             "carbon": there("dic_mol_l"), "pCO2": there("pco2_atm")}
 
 
-def choose(values: Values, rows: int, options: Options) -> Iterator[NDArray[np.int8]]:
-    """Pair of each row by preference: first choice, second choice and so on; NO_PAIR where none is left."""
+def choose(values: Values, rows: int, options: Options, *, carbon_first: NDArray[np.bool_],
+           carbon_unknown: NDArray[np.bool_]) -> Iterator[NDArray[np.int8]]:
+    """Pair of each row by preference: first choice, second choice and so on; NO_PAIR where none is left.
+
+    carbon_first : fresh rows whose measured carbon is better than the one pH and alkalinity imply.
+    carbon_unknown : rows whose pH and alkalinity cannot tell the carbon, so that they are no pair.
+    """
     there = has(values, rows)
     salt = np.nan_to_num(values.get("salinity", np.zeros(rows))) >= FRESH_BELOW
-    able = np.stack([np.logical_and(*(there[m] for m in pair.split(" and "))) for pair in PAIRS[:-1]])
+    able = np.stack([np.logical_and(*(there[m] for m in pair.split(" and "))) for pair in MEASURED_PAIRS])
+    stand_in = carbon_unknown & able[0]
+    able[0] &= ~carbon_unknown
     tried = np.zeros_like(able)
-    for _ in PAIRS[:-1]:
+    for _ in MEASURED_PAIRS:
         choice = np.full(rows, NO_PAIR, dtype=np.int8)
-        for order, which in ((_FRESH_ORDER, ~salt), (_SALT_ORDER, salt)):
+        for order, which in ((_FRESH_ORDER, ~salt & ~carbon_first), (_CARBON_ORDER, ~salt & carbon_first),
+                             (_SALT_ORDER, salt)):
             for index in reversed(order):
                 choice[which & able[index] & ~tried[index]] = index
         if (choice == NO_PAIR).all():
             break
         tried[choice[choice != NO_PAIR], np.flatnonzero(choice != NO_PAIR)] = True
         yield choice
+    yield np.where(stand_in, PAIRS.index(PH_AIR), NO_PAIR).astype(np.int8)
     if options.exchange == "open":
-        yield np.where(there["alkalinity"], PAIRS.index(AIR), NO_PAIR).astype(np.int8)
+        yield np.where(there["alkalinity"], PAIRS.index(ALKALINITY_AIR), NO_PAIR).astype(np.int8)
 
 
 def take_rows(values: Values, rows: NDArray) -> Values:
@@ -83,8 +96,10 @@ def water_of(values: Values, pair: str, ph_column: str, acids: tuple[Acid, ...],
     """Solve rows that share a pair. A pH read at another temperature is solved there and carried to the water's."""
     keywords = water_keywords(values, acids, options.carbonic)
     alkalinity = alkalinity_reading(values)[0]
-    if pair == AIR:
+    if pair == ALKALINITY_AIR:
         return Water.from_alkalinity_pco2(alkalinity_eq_l=alkalinity, pco2_atm=air_pco2(keywords, options), **keywords)
+    if pair == PH_AIR:
+        values, pair = values | {"pco2_atm": air_pco2(keywords, options)}, "pH and pCO2"
     known = {"alkalinity": ("alkalinity_eq_l", alkalinity), "carbon": ("dic_mol_l", values.get("dic_mol_l")),
              "pCO2": ("pco2_atm", values.get("pco2_atm")), "pH": ("ph", values.get(ph_column))}
     members = pair.split(" and ")

@@ -1,0 +1,50 @@
+"""`aquabuf assess`: readings in, assessment out."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import click
+
+__all__ = ["assess"]
+
+
+def _thresholds(_: click.Context, option: click.Parameter, text: str | None) -> tuple[float, ...] | None:
+    if text is None:
+        return None
+    try:
+        return tuple(dict.fromkeys(float(x) for x in text.split(",") if x.strip()))
+    except ValueError:
+        raise click.BadParameter(f"must be pH values with commas between, such as 6.5,6.0; found {text!r}.") from None
+
+
+@click.command()
+@click.argument("readings", type=click.Path(path_type=Path))
+@click.option("--out", "folder", type=click.Path(path_type=Path), required=True, help="Folder for the results.")
+@click.option("--map", "mapping", type=click.Path(path_type=Path), help="What the headers of the table mean (TOML).")
+@click.option("--limits", type=click.Path(path_type=Path), help="Your own limits (TOML); they replace or add.")
+@click.option("--exchange", type=click.Choice(["closed", "open"]), default="closed", show_default=True,
+              help="Take the water as sampled, or bring it to equilibrium with air first.")
+@click.option("--air-co2-ppm", type=float, help="CO2 in dry air; the default and its year are printed.")
+@click.option("--thresholds", callback=_thresholds, help="pH values for acid tolerance, such as 6.5,6.0,5.5.")
+@click.option("--base-thresholds", callback=_thresholds, help="pH values for base tolerance, such as 8.5,9.0.")
+@click.option("--draws", type=int, help="Random draws behind the intervals; 0 leaves them out.  [default: 1000]")
+@click.option("--seed", type=int, help="Seed of the draws.  [default: 1]")
+@click.option("--marine-constants", "carbonic", type=click.Choice(["millero", "lueker"]),
+              help="K1 and K2 of salt water.  [default: millero]")
+@click.option("--figure/--no-figure", default=True, help="Draw the figure.  [default: figure]")
+@click.option("--force", is_flag=True, help="Replace an earlier result in the folder.")
+def assess(readings: Path, folder: Path, mapping: Path | None, limits: Path | None, force: bool, figure: bool,
+           thresholds: tuple[float, ...] | None, base_thresholds: tuple[float, ...] | None, **choices: object) -> None:
+    """Assess every sample of the table READINGS and write the results to a folder.
+
+    The folder gets results.csv (a row per sample), verdicts.csv (the rule behind each warning), checks.csv (quality),
+    curves.csv (pH against added acid, worst samples), rejected.csv (rows refused and why), run.json and a figure.
+    """
+    from aquabuf.assess.options import Options
+    from aquabuf.report.run import assess_file
+
+    given = choices | {"acid_thresholds": thresholds, "base_thresholds": base_thresholds}
+    options = Options(**{name: value for name, value in given.items() if value is not None})  # type: ignore[arg-type]
+    click.echo(assess_file(readings, folder, options, mapping=mapping, limits=limits, force=force, figure=figure),
+               nl=False)

@@ -1,0 +1,53 @@
+"""The `aquabuf` command: groups the commands and turns every error made on purpose into one line."""
+
+from __future__ import annotations
+
+import os
+import sys
+from typing import Any
+
+import click
+
+from aquabuf import __version__
+from aquabuf.cli.assess import assess
+from aquabuf.cli.columns import columns
+from aquabuf.cli.template import template
+from aquabuf.errors import AquabufError
+
+__all__ = ["main"]
+
+
+class _Group(click.Group):
+    """Exit codes: 0 done, 1 the readings cannot be assessed, 2 wrong usage."""
+
+    def invoke(self, ctx: click.Context) -> Any:
+        try:
+            return super().invoke(ctx)
+        except AquabufError as error:
+            raise click.ClickException(str(error)) from error
+        except BrokenPipeError:  # the reader of our output, such as `head`, has gone
+            os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+            raise SystemExit(1) from None
+
+    def resolve_command(self, ctx: click.Context, args: list[str]) -> Any:
+        from difflib import get_close_matches
+
+        if args and not args[0].startswith("-") and args[0] not in self.commands:
+            near = get_close_matches(args[0], self.commands, n=1)
+            hint = f" Did you mean {near[0]!r}?" if near else ""
+            raise click.UsageError(f"No such command {args[0]!r}.{hint} Commands: {', '.join(sorted(self.commands))}.")
+        return super().resolve_command(ctx, args)
+
+
+@click.group(cls=_Group, context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100})
+@click.version_option(__version__, prog_name="aquabuf")
+def main() -> None:
+    """Alkalinity, speciation, buffering and acid tolerance of water, from field readings, with error bars.
+
+    Start with `aquabuf template stream > readings.csv`, fill it in, then `aquabuf assess readings.csv --out result`.
+    """
+
+
+main.add_command(assess)
+main.add_command(columns)
+main.add_command(template)

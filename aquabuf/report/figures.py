@@ -1,0 +1,132 @@
+"""Figures of a sample set. Each drawing function takes an axis and returns it; the only module that needs Matplotlib."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from pathlib import Path
+
+import matplotlib
+import numpy as np
+import pandas as pd
+from matplotlib.axes import Axes
+from matplotlib.backends.backend_agg import FigureCanvasAgg
+from matplotlib.figure import Figure
+from matplotlib.ticker import FuncFormatter, MaxNLocator
+from numpy.typing import NDArray
+
+from aquabuf.assess.options import ALWAYS_ACID
+from aquabuf.assess.sample.curves import RANK_BY
+from aquabuf.assess.uncertainty import COVERAGE
+from aquabuf.report.tally import Tally
+
+__all__ = ["plot_alkalinity", "plot_buffering", "plot_curves", "plot_worst", "sample_figure", "save_samples"]
+
+# Distinct in gray print and to color-blind eyes
+CALM, WARNED, INK, FAINT = "#4a7ba6", "#c8553d", "#222222", "#b8b8b8"
+CURVE_COLORS = ("#c8553d", "#7a4e9e", "#2e7d6b", "#4a7ba6", "#9a6b1f", "#555555")
+BARS, CURVES = 12, 6
+MANY_POINTS = 3000  # beyond, points shrink and are drawn as pixels inside the vector file
+LINEAR_BELOW = 0.05  # meq/L, linear part of the alkalinity axis
+
+STYLE = {
+    "font.size": 9, "axes.titlesize": 10, "axes.titlelocation": "left", "axes.titleweight": "bold",
+    "axes.spines.top": False, "axes.spines.right": False, "axes.edgecolor": "#666666", "axes.linewidth": 0.8,
+    "xtick.color": INK, "ytick.color": INK, "legend.frameon": False, "legend.fontsize": 8,
+    "svg.fonttype": "none", "svg.hashsalt": "aquabuf", "figure.dpi": 100,
+}
+
+
+def _points(ax: Axes, x: NDArray, y: NDArray, warned: NDArray[np.bool_]) -> None:
+    many = x.size > MANY_POINTS
+    for mask, color, marker, label in ((~warned, CALM, "o", "no warning"), (warned, WARNED, "^", "warning")):
+        if mask.any():
+            ax.scatter(x[mask], y[mask], s=4 if many else 16, c=color, marker=marker, linewidths=0,
+                       alpha=0.4 if many else 0.75, rasterized=many, label=f"{label} ({int(mask.sum()):,})")
+
+
+def plot_alkalinity(ph: NDArray, alkalinity_meq_l: NDArray, warned: NDArray[np.bool_], *, ax: Axes) -> Axes:
+    """pH against alkalinity [meq/L] on an axis that is linear near zero and logarithmic beyond."""
+    _points(ax, alkalinity_meq_l, ph, warned)
+    ax.set_xscale("symlog", linthresh=LINEAR_BELOW, linscale=0.7)
+    low, high = np.nanmin(alkalinity_meq_l), np.nanmax(alkalinity_meq_l)
+    ticks = [t for t in (-10, -1, -0.1, 0, 0.1, 1, 10, 100) if low * (2 if low < 0 else 0) - 0.05 <= t <= high * 3 + 0.05]
+    ax.set_xticks(ticks, [f"{t:g}" for t in ticks])
+    ax.minorticks_off()
+    if low <= 0.0 <= high:
+        ax.axvline(0.0, color=FAINT, lw=0.8, zorder=0)
+    ax.set(xlabel="Alkalinity [meq/L]", ylabel="pH", title="What the samples are")
+    ax.legend(loc="lower right")
+    return ax
+
+
+def plot_buffering(ph: NDArray, buffer_meq_l_ph: NDArray, warned: NDArray[np.bool_], *, ax: Axes) -> Axes:
+    """Closed buffer intensity [meq/L per pH] against pH."""
+    _points(ax, ph, buffer_meq_l_ph, warned)
+    ax.set_yscale("log")
+    ax.yaxis.set_major_formatter(FuncFormatter(lambda v, _: f"{v:g}"))
+    ax.set(xlabel="pH", ylabel="Buffer intensity, closed [meq/L per pH]", title="How strongly they resist pH change")
+    return ax
+
+
+def plot_worst(worst: pd.DataFrame, *, ax: Axes) -> Axes:
+    """Bars of the acid that brings the worst-buffered samples to pH 6, with their intervals."""
+    table = worst.head(BARS)
+    place = np.arange(len(table))[::-1]
+    value = table[RANK_BY].to_numpy(dtype=float)
+    warned = (table["warnings"] != "").to_numpy()
+    ax.barh(place, value, height=0.62, color=np.where(warned, WARNED, CALM))
+    if f"{RANK_BY}_low" in table:
+        low, high = (table[f"{RANK_BY}_{end}"].to_numpy(dtype=float) for end in ("low", "high"))
+        ax.hlines(place, low, high, color=INK, lw=1.0)
+    ax.axvline(0.0, color="#666666", lw=0.8)
+    ax.set_yticks(place, [str(name)[:22] for name in table["sample_id"]])
+    ax.tick_params(axis="y", length=0)
+    ax.xaxis.set_major_locator(MaxNLocator(6))
+    line = f" (line: {COVERAGE:.0%} interval)" if f"{RANK_BY}_low" in table else ""
+    below = "; negative: below it already" if (value < 0.0).any() else ""
+    ax.set(xlabel=f"Strong acid to pH {ALWAYS_ACID:g}, closed [meq/L]{below}", title=f"Worst buffered first{line}")
+    return ax
+
+
+def plot_curves(curves: pd.DataFrame, worst: pd.DataFrame, *, ax: Axes) -> Axes:
+    """pH of the worst-buffered samples against strong acid (right) or base (left) added, closed."""
+    reach = 0.0
+    for color, (_, sample) in zip(CURVE_COLORS, worst.head(CURVES).iterrows(), strict=False):
+        curve = curves[curves["row"] == sample["row"]]
+        added = curve["acid_added_meq_l"].to_numpy()
+        ax.plot(added, curve["ph"], color=color, lw=1.5, label=str(sample["sample_id"])[:22])
+        ax.plot(0.0, sample["ph"], "o", color=color, ms=4)
+        reach = max(reach, abs(sample[RANK_BY]), 2.0 * abs(sample["alkalinity_meq_l"]))
+    reach = max(0.1, min(1.5 * reach, 5.0))
+    ax.axhline(ALWAYS_ACID, color=FAINT, lw=0.8, zorder=0)
+    ax.axvline(0.0, color=FAINT, lw=0.8, zorder=0)
+    ax.set(xlim=(-reach, reach), ylim=(3.5, 11.0), xlabel="Strong acid added [meq/L]  (left of 0: base)", ylabel="pH",
+           title="What acid or base does to them")
+    ax.legend(loc="upper right", ncols=1)
+    return ax
+
+
+def sample_figure(tally: Tally, curves: pd.DataFrame, *, source: str = "") -> Figure:
+    """Four panels on one landscape page: samples, worst first, buffer intensity, curves."""
+    with matplotlib.rc_context(STYLE):
+        figure = Figure(figsize=(11.0, 8.0), layout="constrained")
+        FigureCanvasAgg(figure)
+        axes = figure.subplots(2, 2)
+        ph, alkalinity, buffer, warned = np.concatenate(tally.drawn, axis=1).astype(float)
+        warned = warned > 0.5
+        plot_alkalinity(ph, alkalinity, warned, ax=axes[0, 0])
+        plot_worst(tally.worst, ax=axes[0, 1])
+        plot_buffering(ph, buffer, warned, ax=axes[1, 0])
+        plot_curves(curves, tally.worst, ax=axes[1, 1])
+        if source:
+            figure.suptitle(f"{source}: {tally.assessed:,} samples, {tally.warned:,} with a warning", x=0.01, ha="left")
+    return figure
+
+
+def save_samples(tally: Tally, curves: pd.DataFrame, paths: Mapping[str, Path], *, source: str = "") -> None:
+    """Write the figure to a path per format (png, svg); no date and no program name goes into the files."""
+    figure = sample_figure(tally, curves, source=source)
+    with matplotlib.rc_context(STYLE):
+        for kind, path in paths.items():
+            metadata = {"Date": None, "Creator": None} if kind == "svg" else {"Software": None}
+            figure.savefig(path, format=kind, dpi=150, metadata=metadata)

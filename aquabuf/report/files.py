@@ -1,0 +1,80 @@
+"""Output that appears whole or not at all, and never over an earlier result unless asked."""
+
+from __future__ import annotations
+
+import os
+import tempfile
+from collections.abc import Iterable
+from pathlib import Path
+from types import TracebackType
+
+from aquabuf.errors import FileError
+
+__all__ = ["OutputFolder"]
+
+
+class OutputFolder:
+    """Write files under temporary names in `folder` and give them their names once all are complete.
+
+    As a context manager: leaving without an error publishes the files, leaving with one removes them. Files named in
+    `names` that exist already are refused unless `force`; with `force`, those not written again are removed, so that
+    a folder never mixes two runs.
+    """
+
+    def __init__(self, folder: Path, names: Iterable[str], *, force: bool):
+        self.folder = folder
+        self._names = tuple(names)
+        self._force = force
+        self._parts: dict[str, Path] = {}
+
+    def __enter__(self) -> OutputFolder:
+        try:
+            self.folder.mkdir(parents=True, exist_ok=True)
+        except OSError as error:
+            raise FileError(f"the folder {self.folder.name!r} cannot be made: {_why(error)}. "
+                            f"Choose another with --out.") from None
+        there = [n for n in self._names if (self.folder / n).exists()]
+        if there and not self._force:
+            raise FileError(f"{self.folder.name}/{there[0]} exists already and is not overwritten. "
+                            f"Choose another folder with --out, or replace it with --force.")
+        return self
+
+    def part(self, name: str) -> Path:
+        """Temporary path to write the file `name` to. Raises FileError where the folder cannot be written."""
+        if name not in self._parts:
+            try:
+                handle, path = tempfile.mkstemp(prefix=f".{name}.", suffix=".part", dir=self.folder)
+            except OSError as error:
+                raise FileError(f"the folder {self.folder.name!r} cannot be written to: {_why(error)}. "
+                                f"Choose another with --out.") from None
+            os.close(handle)
+            umask = os.umask(0)
+            os.umask(umask)
+            os.chmod(path, 0o666 & ~umask)  # the usual permissions, which mkstemp narrows
+            self._parts[name] = Path(path)
+        return self._parts[name]
+
+    @property
+    def written(self) -> frozenset[str]:
+        """Names of the files that will be published."""
+        return frozenset(self._parts)
+
+    def drop(self, name: str) -> None:
+        """Forget a file that turned out to have nothing to say."""
+        if name in self._parts:
+            self._parts.pop(name).unlink(missing_ok=True)
+
+    def __exit__(self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None) -> None:
+        if kind is not None:
+            for path in self._parts.values():
+                path.unlink(missing_ok=True)
+            return
+        for name in self._names:
+            if name not in self._parts:
+                (self.folder / name).unlink(missing_ok=True)
+        for name, path in self._parts.items():
+            os.replace(path, self.folder / name)
+
+
+def _why(error: OSError) -> str:
+    return (error.strerror or "unknown reason").lower()

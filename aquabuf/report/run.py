@@ -1,0 +1,146 @@
+"""Assess a file piece by piece and write its results; memory does not grow with the file."""
+
+from __future__ import annotations
+
+import hashlib
+import json
+from collections.abc import Mapping
+from dataclasses import asdict
+from pathlib import Path
+from typing import IO
+
+import pandas as pd
+
+import aquabuf
+from aquabuf.assess.limits import Limit, read_limits
+from aquabuf.assess.options import Options
+from aquabuf.assess.sample.assess import Assessment, assess
+from aquabuf.assess.sample.columns import result_columns
+from aquabuf.errors import FileError, InputError
+from aquabuf.readings.mapping import read_map
+from aquabuf.readings.reader import iter_readings
+from aquabuf.report.files import OutputFolder
+from aquabuf.report.summary import summary_text
+from aquabuf.report.tables import csv_text, result_digits, rounded
+from aquabuf.report.tally import Tally
+from aquabuf.tables import read_table
+
+__all__ = ["OUTPUT_FILES", "assess_file"]
+
+OUTPUT_FILES = ("results.csv", "verdicts.csv", "checks.csv", "curves.csv", "rejected.csv", "run.json", "samples.png",
+                "samples.svg")
+CHUNK_ROWS = 8192        # one piece stays in the processor's cache
+ALL_CHECKS_UP_TO = 20_000  # samples; beyond, checks.csv holds the unmet ones only
+
+
+def assess_file(path: Path, folder: Path, options: Options, *, mapping: Path | None = None, limits: Path | None = None,
+                force: bool = False, figure: bool = True) -> str:
+    """Assess the table at `path`, write OUTPUT_FILES to `folder`, and return the summary text.
+
+    Raises InputError or FileError where the table as a whole cannot be used or no row is accepted; rejected.csv is
+    still written then.
+    """
+    table_map = None if mapping is None else read_map(mapping)
+    rules = read_limits(limits, {c.name: c.unit for c in result_columns(options) if c.unit})
+    hashes = {"readings": _sha256(path)} | {
+        name: _sha256(p) for name, p in (("map", mapping), ("limits", limits)) if p is not None}
+    pieces = iter_readings(path, table_map, CHUNK_ROWS)
+    tally, few = Tally(), _fewer_rows_than(path, ALL_CHECKS_UP_TO)
+    with OutputFolder(folder, OUTPUT_FILES, force=force) as out:
+        writer = _Tables(out, options)
+        with writer:
+            for piece in pieces:
+                part = assess(piece, options, rules, only_unmet_checks=not few)
+                writer.write(part)
+                tally.add(part)
+        if tally.refused_rows == set():
+            writer.drop("rejected.csv")
+        if tally.assessed:
+            curves = tally.curves(options)
+            out.part("curves.csv").write_text(csv_text(rounded(curves, {"ph": 2}), header=True), encoding="utf-8")
+            if figure:
+                _draw(tally, curves, out, path.name)
+        else:
+            for name in ("results.csv", "verdicts.csv", "checks.csv"):
+                writer.drop(name)
+        record = _record(path.name, hashes, options, rules, tally, all_checks=few)
+        out.part("run.json").write_text(json.dumps(record, indent=1, ensure_ascii=False) + "\n", encoding="utf-8")
+        written = [name for name in OUTPUT_FILES if name in out.written]
+    if not tally.assessed:
+        rule, count = tally.refusal_rules.most_common(1)[0]
+        raise InputError(f"no row of {path.name} can be assessed; {len(tally.refused_rows)} were refused, mostly since "
+                         f"{rule} ({count} x). rejected.csv in {folder.name} names row, column, value and remedy.")
+    return summary_text(tally, options, rules, source=path.name, files=written)
+
+
+class _Tables:
+    """The row-by-row tables of a run, written piece by piece."""
+
+    def __init__(self, out: OutputFolder, options: Options):
+        self._out = out
+        self._digits = result_digits(options)
+        self._open: dict[str, IO[str]] = {}
+
+    def __enter__(self) -> _Tables:
+        return self
+
+    def __exit__(self, *_: object) -> None:
+        for stream in self._open.values():
+            stream.close()
+
+    def write(self, part: Assessment) -> None:
+        for name, table in (("results.csv", part.results), ("verdicts.csv", part.verdicts), ("checks.csv", part.checks),
+                            ("rejected.csv", part.rejected)):
+            first = name not in self._open
+            if first:
+                self._open[name] = self._out.part(name).open("w", encoding="utf-8", newline="")
+            digits = self._digits if name == "results.csv" else {}
+            self._open[name].write(csv_text(rounded(table, digits), header=first))
+
+    def drop(self, name: str) -> None:
+        self._out.drop(name)
+
+
+def _draw(tally: Tally, curves: pd.DataFrame, out: OutputFolder, source: str) -> None:
+    from aquabuf.report.figures import save_samples  # drawing is slow to import
+
+    save_samples(tally, curves, {kind: out.part(f"samples.{kind}") for kind in ("png", "svg")}, source=source)
+
+
+def _sha256(path: Path) -> str:
+    """Hash of a file. Raises FileError where it cannot be read."""
+    try:
+        with path.open("rb") as stream:
+            return hashlib.file_digest(stream, "sha256").hexdigest()
+    except OSError as error:
+        raise FileError(f"{path.name} cannot be read: {(error.strerror or 'unknown reason').lower()}. "
+                        f"Check the path and its permissions.") from None
+
+
+def _fewer_rows_than(path: Path, count: int) -> bool:
+    """Whether the file has fewer lines than `count`, read no further than needed."""
+    lines = 0
+    with path.open("rb") as stream:
+        while block := stream.read(1 << 20):
+            lines += block.count(b"\n")
+            if lines > count:
+                return False
+    return True
+
+
+def _record(name: str, hashes: Mapping[str, str], options: Options, limits: tuple[Limit, ...], tally: Tally, *,
+            all_checks: bool) -> dict:
+    """What the run rests on, for run.json: no clock, no paths."""
+    regimes = {"fresh" if r == "fresh" else "salt" for r in tally.regimes} | {"both"}
+    return {
+        "program": "aquabuf", "version": aquabuf.__version__, "command": "assess", "input": name,
+        "sha256": dict(hashes), "options": asdict(options),
+        "samples": {"assessed": tally.assessed, "warned": tally.warned, "refused_rows": len(tally.refused_rows)},
+        "known_pairs": dict(sorted(tally.pairs.items())), "status": dict(sorted(tally.statuses.items())),
+        "ionic_strength_from": dict(sorted(tally.strengths.items())),
+        "checks_listed": "all" if all_checks else "unmet only",
+        "constants": [dict(row) for row in read_table("constants") if row["regime"] in regimes],
+        "limits": [{"name": x.name, "rule": x.rule(), "kinds": list(x.kinds), "regimes": list(x.regimes),
+                    "source": x.source} for x in limits],
+        "notes": list(tally.notes),
+    }

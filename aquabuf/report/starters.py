@@ -1,0 +1,39 @@
+"""Starter files of every kind, the limits file among them."""
+
+from __future__ import annotations
+
+import json
+
+from aquabuf.assess.limits import shipped_limits
+from aquabuf.errors import InputError
+from aquabuf.readings.template import template, template_kinds
+
+__all__ = ["starter"]
+
+LIMITS_KIND = "limits"
+
+
+def starter(kind: str) -> str:
+    """Text of a starter file. Raises InputError for an unknown kind, naming those there are."""
+    if kind == LIMITS_KIND:
+        return _limits_text()
+    if kind not in template_kinds():
+        raise InputError(f"no starter file is named {kind!r}. Use one of: {', '.join([*template_kinds(), LIMITS_KIND])}.")
+    return template(kind)
+
+
+def _limits_text() -> str:
+    """The shipped limits as a limits file, each commented out: remove the # of those to change."""
+    lines = ["# Limits of your own. A limit named as a shipped one replaces it; any other name adds one.",
+             "# These are the shipped limits; take away the # in front of those you change.",
+             '# remove = ["name"] drops shipped limits, only_mine = true drops all of them.', ""]
+    for x in shipped_limits():
+        entry = {"quantity": x.quantity, "operator": x.operator, "limit": x.limit, "unit": x.unit,
+                 "kinds": list(x.kinds), "regimes": list(x.regimes), "group": x.group, "words": x.words,
+                 "next_step": x.next_step, "source": x.source}
+        if x.lower > float("-inf"):
+            entry["lower"] = x.lower
+        lines.append(f'#[limits."{x.name}"]')
+        lines += [f"#{key} = {json.dumps(value, ensure_ascii=False)}" for key, value in entry.items()]
+        lines.append("")
+    return "\n".join(lines)

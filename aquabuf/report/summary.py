@@ -1,0 +1,147 @@
+"""The text that `assess` prints: what was found, the worst first, what it rests on, and what to do next."""
+
+from __future__ import annotations
+
+import textwrap
+from collections.abc import Iterable, Sequence
+
+import pandas as pd
+
+from aquabuf.assess.limits import UNSTATED, Limit
+from aquabuf.assess.options import Options
+from aquabuf.assess.sample.curves import RANK_BY
+from aquabuf.assess.sample.headline import TEST_ACID_EQ_L
+from aquabuf.assess.uncertainty import COVERAGE
+from aquabuf.chem.gases import AIR_CO2_PPM, AIR_CO2_YEAR
+from aquabuf.report.tally import Tally
+from aquabuf.tables import read_table
+
+__all__ = ["summary_text"]
+
+WIDTH = 100
+WORST_SHOWN = 8
+
+
+def summary_text(tally: Tally, options: Options, limits: Sequence[Limit], *, source: str, files: Iterable[str]) -> str:
+    """The whole summary; same run, same text."""
+    blocks = [_head(tally, source)]
+    if tally.assessed:
+        blocks += [_warnings(tally, limits), _worst(tally, limits), _quality(tally)]
+    blocks += [_refused(tally), _assumptions(tally, options), _cautions(tally), _next(tally, limits, files)]
+    return "\n\n".join(b for b in blocks if b) + "\n"
+
+
+def _plural(count: int, noun: str) -> str:
+    return f"{count:,} {noun}{'' if count == 1 else 's'}"
+
+
+def _item(text: str, mark: str = "  - ") -> str:
+    return textwrap.fill(text, WIDTH, initial_indent=mark, subsequent_indent=" " * len(mark))
+
+
+def _head(tally: Tally, source: str) -> str:
+    refused = len(tally.refused_rows)
+    return (f"{source}: {_plural(tally.assessed, 'sample')} assessed, {tally.warned:,} with a warning, "
+            f"{_plural(refused, 'row')} refused.")
+
+
+def _warnings(tally: Tally, limits: Sequence[Limit]) -> str:
+    if not tally.warnings:
+        return "No limit is broken (`aquabuf template limits` shows the limits)."
+    lines = ["Warnings"]
+    for limit in limits:
+        if limit.name in tally.warnings:
+            lines.append(_item(f"{tally.warnings[limit.name]:,} x {limit.name}: {limit.words} "
+                               f"[{limit.rule()}; {limit.source}]"))
+    return "\n".join(lines)
+
+
+def _number(value: float, digits: int) -> str:
+    return "-" if pd.isna(value) else f"{value:.{digits}f}"
+
+
+def _worst(tally: Tally, limits: Sequence[Limit]) -> str:
+    """The worst-buffered samples: the figures that matter and the reason in words."""
+    words = {limit.name: limit.words for limit in limits}
+    rows = []
+    for _, r in tally.worst.head(WORST_SHOWN).iterrows():
+        low, high = (r.get(f"{RANK_BY}_{end}", float("nan")) for end in ("low", "high"))
+        spread = "" if pd.isna(low) else f" ({low:.3f} to {high:.3f})"
+        first = r["warnings"].split("; ")[0]
+        rows.append((str(r["sample_id"])[:24], _number(r["ph"], 2), _number(r["alkalinity_meq_l"], 3),
+                     _number(r[RANK_BY], 3) + spread, r["carrier"], words.get(first, "no limit broken")))
+    head = ("sample", "pH", "alkalinity", "acid to pH 6", "carried by", "reason")
+    widths = [max(len(x[i]) for x in [head, *rows]) for i in range(5)]
+    lead = sum(widths) + 2 * 5
+    lines = ["Worst buffered first (meq/L; acid to pH 6 in the closed water"
+             + (f", {COVERAGE:.0%} interval" if f"{RANK_BY}_low" in tally.worst else "") + "; negative: below 6 already)"]
+    for row in [head, *rows]:
+        cells = [row[0].ljust(widths[0])] + [row[i].rjust(widths[i]) for i in (1, 2)]
+        cells += [row[i].ljust(widths[i]) for i in (3, 4)]
+        reason = textwrap.wrap(row[5], max(30, WIDTH + 20 - lead - 2)) or [""]
+        lines.append("  " + "  ".join([*cells, reason[0]]).rstrip())
+        lines += [" " * (lead + 2) + more for more in reason[1:]]
+    return "\n".join(lines)
+
+
+def _quality(tally: Tally) -> str:
+    facts = {r["name"]: r for r in read_table("checks")}
+    lines = []
+    for name, fact in facts.items():
+        if tally.unmet[name]:
+            lines.append(_item(f"{tally.unmet[name]:,} of {tally.made[name]:,} fail {name} "
+                               f"({fact['limit_words']}): {fact['remedy']}."))
+    for name, value, limit, met, remedy in tally.file_checks:
+        if not met:
+            lines.append(_item(f"{name}: {value:.4g} {facts[name]['unit']}, should be {limit}: {remedy}."))
+    if not lines:
+        return "Quality: every check that could be made is met."
+    return "\n".join(["Quality (checks.csv has each sample)", *dict.fromkeys(lines)])
+
+
+def _refused(tally: Tally) -> str:
+    if not tally.refused_rows:
+        return ""
+    lines = [f"Refused: {_plural(len(tally.refused_rows), 'row')} (rejected.csv names row, column, value and remedy)"]
+    lines += [_item(f"{count:,} x {rule}") for rule, count in tally.refusal_rules.most_common(5)]
+    return "\n".join(lines)
+
+
+def _counted(counter) -> str:
+    return ", ".join(f"{name} {count:,}" for name, count in counter.most_common())
+
+
+def _assumptions(tally: Tally, options: Options) -> str:
+    air = f"{options.air_co2_ppm:g} ppm CO2 in dry air"
+    if options.air_co2_ppm == AIR_CO2_PPM:
+        air += f" (default: about the global mean of {AIR_CO2_YEAR}, recalled)"
+    state = ("closed: the water as sampled, carbon kept in" if options.exchange == "closed"
+             else "open: every water brought to equilibrium with air first")
+    intervals = (f"{COVERAGE:.0%} intervals from {options.draws:,} seeded draws (seed {options.seed}) of the readings' own or "
+                 f"default uncertainties (`aquabuf columns NAME` shows the default); constants are taken as exact"
+                 if options.draws else "no intervals (--draws 0)")
+    lines = [f"Exchange {state}; {air}.", f"Known pair: {_counted(tally.pairs)}." if tally.pairs else "",
+             f"Ionic strength from: {_counted(tally.strengths)}." if tally.strengths else "",
+             "Alkalinity is the proton deficit at pH 4.5 zero level; pH is on the meter scale unless a column says so. "
+             "Air pressure is 1 atm where neither pressure nor elevation is given.",
+             f"Test dose of acid: {TEST_ACID_EQ_L * 1e3:g} meq/L. {intervals[0].upper()}{intervals[1:]}."]
+    if any(r != "fresh" for r in tally.regimes):
+        lines.append(f"Salt water: marine constants of set {options.carbonic!r}; boron, sulfate, fluoride and calcium "
+                     f"from salinity where not measured.")
+    odd = {s: c for s, c in tally.statuses.items() if s != "ok"}
+    if odd:
+        lines.append("Status other than ok: " + ", ".join(f"{s} {c:,}" for s, c in odd.items()) + ".")
+    return "\n".join(["What the answers rest on", *(_item(line) for line in lines if line)])
+
+
+def _cautions(tally: Tally) -> str:
+    kinds = {kind or UNSTATED for kind in tally.kinds}
+    lines = [row["words"] for row in read_table("cautions") if row["kinds"] == "any" or kinds & set(row["kinds"].split(";"))]
+    return "\n".join(["Cautions", *(_item(line) for line in lines)])
+
+
+def _next(tally: Tally, limits: Sequence[Limit], files: Iterable[str]) -> str:
+    steps = [limit.next_step for limit in limits if limit.next_step and tally.warnings[limit.name]]
+    lines = [_item(f"{step[0].upper()}{step[1:]}.") for step in dict.fromkeys(steps)]
+    lines.append(_item(f"Written: {', '.join(files)}."))
+    return "\n".join(["Next", *lines])

@@ -1,0 +1,50 @@
+"""Result tables as CSV text: rounded to what the figures can carry, the same bytes for the same input."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+
+import numpy as np
+import pandas as pd
+
+from aquabuf.assess.options import Options
+from aquabuf.assess.sample.columns import result_columns
+
+__all__ = ["csv_text", "rounded", "result_digits"]
+
+OTHER_DIGITS = 6  # significant digits of numbers without a stated number of decimals
+
+
+def result_digits(options: Options) -> dict[str, int]:
+    """Decimals of each column of results.csv, interval ends included."""
+    digits = {}
+    for column in result_columns(options):
+        if column.digits is not None:
+            for name in (column.name, f"{column.name}_low", f"{column.name}_high"):
+                digits[name] = column.digits
+    return digits
+
+
+def rounded(table: pd.DataFrame, digits: Mapping[str, int]) -> pd.DataFrame:
+    """Numbers rounded by column; others to OTHER_DIGITS significant digits. Integers and text are untouched."""
+    out = {}
+    for name in table.columns:
+        column = table[name]
+        if column.dtype.kind == "f":
+            v = column.to_numpy()
+            v = np.round(v, digits[name]) if name in digits else _significant(v)
+            column = pd.Series(v + 0.0, index=table.index)  # no negative zero
+        out[name] = column
+    return pd.DataFrame(out, index=table.index)
+
+
+def _significant(v: np.ndarray) -> np.ndarray:
+    with np.errstate(divide="ignore", invalid="ignore"):
+        power = np.where(np.isfinite(v) & (v != 0.0), np.floor(np.log10(np.abs(v))), 0.0)
+    scale = 10.0 ** (OTHER_DIGITS - 1 - power)
+    return np.round(v * scale) / scale
+
+
+def csv_text(table: pd.DataFrame, *, header: bool) -> str:
+    """CSV with \\n line ends and empty cells for what is missing."""
+    return table.to_csv(index=False, header=header, lineterminator="\n")

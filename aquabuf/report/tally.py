@@ -1,0 +1,74 @@
+"""What a run over many pieces of a table adds up to."""
+
+from __future__ import annotations
+
+from collections import Counter
+from dataclasses import dataclass, field
+
+import numpy as np
+import pandas as pd
+
+from aquabuf.assess.options import Options
+from aquabuf.assess.sample.assess import Assessment
+from aquabuf.assess.sample.curves import RANK_BY, Inputs, curve_rows, worst
+
+__all__ = ["Tally"]
+
+WORST_KEPT = 20
+FIGURE_COLUMNS = ("ph", "alkalinity_meq_l", "buffer_closed_meq_l_ph")
+
+
+@dataclass(slots=True)
+class Tally:
+    """Counts, the worst-buffered samples with their curves, and the few columns that the figure draws."""
+
+    assessed: int = 0
+    warned: int = 0
+    refused_rows: set[int] = field(default_factory=set)
+    refusal_rules: Counter = field(default_factory=Counter)
+    warnings: Counter = field(default_factory=Counter)
+    statuses: Counter = field(default_factory=Counter)
+    pairs: Counter = field(default_factory=Counter)
+    strengths: Counter = field(default_factory=Counter)
+    regimes: Counter = field(default_factory=Counter)
+    kinds: Counter = field(default_factory=Counter)
+    unmet: Counter = field(default_factory=Counter)
+    made: Counter = field(default_factory=Counter)
+    notes: dict[str, None] = field(default_factory=dict)
+    file_checks: list[tuple[str, float, str, bool, str]] = field(default_factory=list)
+    worst: pd.DataFrame = field(default_factory=pd.DataFrame)
+    worst_inputs: Inputs | None = None
+    drawn: list[np.ndarray] = field(default_factory=list)
+
+    def add(self, part: Assessment) -> None:
+        """Take in one assessed piece."""
+        results = part.results
+        self.assessed += len(results)
+        self.warned += int((results["warnings"] != "").sum())
+        self.refused_rows.update(part.rejected["row"].tolist())
+        self.refusal_rules.update(part.rejected["rule"].tolist())
+        self.warnings.update(part.verdicts["warning"].tolist())
+        for counter, column in ((self.statuses, "status"), (self.pairs, "pair"), (self.regimes, "regime"),
+                                (self.strengths, "ionic_strength_from")):
+            counter.update(results[column].tolist())
+        self.kinds.update(results["water_kind"].tolist() if "water_kind" in results else [""] * len(results))
+        self.made.update(part.made)
+        self.unmet.update(part.unmet)
+        self.notes |= dict.fromkeys(part.notes)
+        self.file_checks.extend(part.file_checks)
+        self._keep_worst(part)
+        columns = [results[name].to_numpy(dtype=np.float32) for name in FIGURE_COLUMNS]
+        self.drawn.append(np.stack([*columns, (results["warnings"] != "").to_numpy(dtype=np.float32)]))
+
+    def _keep_worst(self, part: Assessment) -> None:
+        best = worst(part.results[RANK_BY].to_numpy(), WORST_KEPT)
+        rows, inputs = part.results.iloc[best], part.inputs.take(best)
+        if self.worst_inputs is not None:
+            rows, inputs = pd.concat([self.worst, rows]), self.worst_inputs.joined(inputs)
+            best = worst(rows[RANK_BY].to_numpy(), WORST_KEPT)
+            rows, inputs = rows.iloc[best], inputs.take(best)
+        self.worst, self.worst_inputs = rows.reset_index(drop=True), inputs
+
+    def curves(self, options: Options) -> pd.DataFrame:
+        """Curves of the worst-buffered samples, worst first."""
+        return pd.DataFrame() if self.worst_inputs is None else curve_rows(self.worst_inputs, options)
