@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-__all__ = ["as_rows", "common_shape"]
+__all__ = ["as_rows", "common_shape", "worded"]
 
 
 def common_shape(*values: ArrayLike) -> tuple[int, ...]:
@@ -16,3 +16,11 @@ def common_shape(*values: ArrayLike) -> tuple[int, ...]:
 def as_rows(value: ArrayLike, shape: tuple[int, ...]) -> NDArray[np.float64]:
     """`value` as a float array of `shape`, read-only when it was stretched."""
     return np.broadcast_to(np.asarray(value, dtype=float), shape)
+
+
+def worded(rows: int, *cases: tuple[NDArray[np.bool_], str], default: str = "") -> NDArray[np.object_]:
+    """Words per row: `default`, overwritten by each case in turn where its mask holds."""
+    out = np.full(rows, default, dtype=object)
+    for mask, words in cases:
+        out[mask] = words
+    return out

@@ -11,7 +11,7 @@ import aquabuf
 
 ROOT = Path(aquabuf.__file__).parent
 FILES = sorted(ROOT.rglob("*.py"))
-FLOORS = ["errors", "units", "arrays", "tables", "chem", "engine", "readings", "assess", "report", "cli"]
+FLOORS = ["errors", "arrays", "tables", "units", "chem", "engine", "readings", "assess", "report", "cli"]
 LONGEST = 400  # lines
 ALLOWED = {  # imports from outside the standard library, by floor; pandas from the readings upward
     "errors": {"numpy"}, "units": {"numpy"}, "arrays": {"numpy"}, "tables": {"numpy"}, "chem": {"numpy", "scipy"},
@@ -53,7 +53,9 @@ def test_imports_go_downward(path):
         first, _, rest = module.partition(".")
         if first == "aquabuf":
             floor = rest.partition(".")[0]
-            assert not floor or FLOORS.index(floor) <= FLOORS.index(mine), f"{module} is above {mine}"
+            if floor in ("", "__version__"):  # the front door itself; what it offers is imported from its home
+                continue
+            assert FLOORS.index(floor) <= FLOORS.index(mine), f"{module} is above {mine}"
         elif first not in sys.stdlib_module_names:
             assert first in ALLOWED[mine], f"{mine} must not import {first}"
 

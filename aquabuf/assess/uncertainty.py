@@ -29,7 +29,8 @@ def row_blocks(rows: NDArray[np.intp], draws: int) -> Iterator[NDArray[np.intp]]
         yield rows[start:start + size]
 
 
-def drawn(values: dict[str, Array], u: dict[str, Array], draws: int, seed: int, names: Iterable[str]) -> dict[str, Array]:
+def drawn(values: dict[str, Array], u: dict[str, Array], draws: int, seed: int, names: Iterable[str],
+          ) -> dict[str, Array]:
     """Random draws of the named values, all others repeated: arrays of rows times draws, row by row.
 
     Amounts that cannot be negative are cut at zero.

@@ -25,8 +25,9 @@ LN10 = float(np.log(10.0))
 EFFECTIVE_RANGE = 1.0  # pH units on each side of pKa: base to acid 1:10 to 10:1, a third of the peak intensity
 HYDROGEN, HYDROXIDE = "H+ itself", "OH- itself"
 SEARCH_PH = (2.5, 12.0)
-SEARCH_STEP = 0.25
-HALVINGS = 10
+SEARCH_STEP = 0.5
+CLOSING_ROUNDS = 40
+WEAKEST_TOLERANCE = 1e-4  # pH; the intensity is flat there
 
 
 def _groups(state: State) -> list[tuple[tuple[str, ...], tuple[Array, ...], Array]]:
@@ -140,7 +141,7 @@ def acid_to_ph(state: State, ph: Array | float, *, co2: Array | None = None) -> 
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Weakest:
-    """Meter pH of the nearest minimum of closed buffer intensity, the intensity there, and the distance to it; nan if none."""
+    """Meter pH of the nearest minimum of closed buffer intensity, intensity there, distance to it; nan if none."""
 
     ph: Array
     intensity: Array
@@ -148,37 +149,48 @@ class Weakest:
 
 
 def weakest_buffering(state: State) -> Weakest:
-    """Follow the buffer intensity downhill from the sample to the bottom of its valley (pH 2.5 to 12)."""
+    """Follow the buffer intensity downhill from the sample to the bottom of its valley (pH 2.5 to 12).
+
+    Strides until the slope turns, then regula falsi with the Illinois weights on the slope.
+    """
     ph = state.ph()
-    solved = np.isfinite(ph)
-    low = high = np.where(solved, np.clip(ph, *SEARCH_PH), 7.0)
-    downhill = -np.sign(_intensity_slope(state, low))
-    active = solved & (downhill != 0.0)
-    while active.any():
-        rows = np.flatnonzero(active)
-        low = np.where(active, high, low)
-        high = np.where(active, np.clip(high + SEARCH_STEP * downhill, *SEARCH_PH), high)
-        turned = _intensity_slope(state, high, rows) * downhill[rows] >= 0.0
-        at_end = (high[rows] <= SEARCH_PH[0]) | (high[rows] >= SEARCH_PH[1])
-        active[rows[turned | at_end]] = False
-    for _ in range(HALVINGS):
-        middle = 0.5 * (low + high)
-        past = _intensity_slope(state, middle) * downhill >= 0.0
-        low, high = np.where(past, low, middle), np.where(past, middle, high)
-    bottom = 0.5 * (low + high)
-    found = solved & (bottom > SEARCH_PH[0] + 0.01) & (bottom < SEARCH_PH[1] - 0.01)
-    bottom = np.where(found, bottom, np.nan)
+    near = np.where(np.isfinite(ph), np.clip(ph, *SEARCH_PH), 7.0)
+    far, bottom = near.copy(), np.full(ph.shape, np.nan)
+    slope_near = _intensity_slope(state, near)
+    slope_far = slope_near.copy()
+    bottom[slope_near == 0.0] = near[slope_near == 0.0]
+    rows = np.flatnonzero(np.isfinite(ph) & (slope_near != 0.0))
+    turned = []
+    while rows.size:
+        near[rows], slope_near[rows] = far[rows], slope_far[rows]
+        far[rows] = np.clip(far[rows] - SEARCH_STEP * np.sign(slope_near[rows]), *SEARCH_PH)
+        slope_far[rows] = _intensity_slope(state, far[rows], rows)
+        has_turned = slope_far[rows] * slope_near[rows] <= 0.0
+        turned.append(rows[has_turned])
+        rows = rows[~has_turned & (far[rows] > SEARCH_PH[0]) & (far[rows] < SEARCH_PH[1])]
+    rows = np.sort(np.concatenate(turned)) if turned else rows
+    for _ in range(CLOSING_ROUNDS):
+        if not rows.size:
+            break
+        a, b, f_a, f_b = near[rows], far[rows], slope_near[rows], slope_far[rows]
+        new = np.where(f_b == f_a, b, b - f_b * (b - a) / np.where(f_b == f_a, 1.0, f_b - f_a))
+        f_new = _intensity_slope(state, new, rows)
+        crossed = f_new * f_b <= 0.0
+        near[rows], slope_near[rows] = np.where(crossed, b, a), np.where(crossed, f_b, 0.5 * f_a)
+        far[rows], slope_far[rows] = new, f_new
+        bottom[rows] = new
+        rows = rows[np.abs(new - b) > WEAKEST_TOLERANCE]
     return Weakest(bottom, buffer_intensity(state, state.h_from_ph(bottom)), bottom - ph)
 
 
 def _intensity_slope(state: State, ph: Array, rows: NDArray[np.intp] | None = None) -> Array:
-    """Slope of closed buffer intensity against pH, over ln10^2, at a meter pH, for some of the rows."""
-    pick = slice(None) if rows is None else rows
+    """Slope of closed buffer intensity against pH, over ln10^2, at meter pH values of some of the rows (or all)."""
+    pick = slice(None) if rows is None or rows.size == state.h.size else rows
     c = state.conditions
-    h = 10.0 ** -ph[pick] / c.activity_per_h[pick]
-    total = c.c_oh[pick] / h - c.c_h[pick] * h
+    inv = c.activity_per_h[pick] * 10.0**ph
+    total = c.c_oh[pick] * inv - c.c_h[pick] / inv
     for _, k, amount in _groups(state):
-        total += amount[pick] * moments(fractions([step[pick] for step in k], 1.0 / h))[2]
+        total += amount[pick] * moments(fractions([step[pick] for step in k], inv))[2]
     return np.where(np.isfinite(total), total, 0.0)
 
 

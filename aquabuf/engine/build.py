@@ -65,7 +65,8 @@ def build_state(
     sulfate, fluoride = (flat(acid_totals.get(n, np.nan)) for n in ("sulfate", "fluoride"))
 
     def solve(strength: Array) -> State:
-        c = conditions(t, s, strength, pressure_atm=p, sulfate_mol_l=sulfate, fluoride_mol_l=fluoride, carbonic=carbonic)
+        c = conditions(t, s, strength, pressure_atm=p, sulfate_mol_l=sulfate, fluoride_mol_l=fluoride,
+                       carbonic=carbonic)
         dissolved = tuple(Dissolved(acid_named(n, own), _with_sea(n, flat(v), c, boron_ratio))
                           for n, v in acid_totals.items())
         ions = {n: _with_sea(n, flat(v), c, boron_ratio) for n, v in ion_totals.items()}
@@ -79,7 +80,8 @@ def build_state(
 def _sorted_totals(totals: dict[str, ArrayLike], own: tuple[Acid, ...]) -> tuple[dict, dict]:
     """Totals of weak acids and of ions by plain name. Raises InputError for a name that is neither."""
     names = set(acid_table()) | {a.name for a in own} | set(IONS)
-    acid_totals, ion_totals = {}, {}
+    acid_totals: dict[str, ArrayLike] = {}
+    ion_totals: dict[str, ArrayLike] = {}
     for keyword, value in totals.items():
         name = keyword.removesuffix(SUFFIX)
         if not keyword.endswith(SUFFIX) or name not in names:

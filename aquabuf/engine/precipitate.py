@@ -238,8 +238,8 @@ def precipitation_potential(pairs: Pairing, mineral: str = "calcite") -> tuple[A
     path, x_now = path.take(active), x[active]
     slope = (path.index(x_now + SLOPE_STEP) - path.index(x_now)) / SLOPE_STEP
     for _ in range(PAIR_ROUNDS):
-        path, carbon = path.followed(x_now)
-        step = path.index(x_now) / slope
+        index, carbon, path = path.followed(x_now)
+        step = index / slope
         x_now = x_now - step
         settled = np.abs(step) < ROOT_TOLERANCE
         done = active[settled]
@@ -279,12 +279,16 @@ class _Path:
     def index(self, x: Array) -> Array:
         """Saturation index where -log10 h is `x`; rises with x."""
         calcium, bicarbonate, _ = self.at(x)
+        return self._index_of(calcium, bicarbonate, x)
+
+    def _index_of(self, calcium: Array, bicarbonate: Array, x: Array) -> Array:
         return np.log10(calcium * self.solution.k2 / self.ksp * bicarbonate) + x
 
-    def followed(self, x: Array) -> tuple[_Path, Array]:
-        """The same path with the spectators in balance at `x`, and total carbon there."""
+    def followed(self, x: Array) -> tuple[Array, Array, _Path]:
+        """Saturation index and total carbon at `x`, and the path with the spectators in balance there."""
         calcium, bicarbonate, dic = self.at(x)
-        return replace(self, spectators=_follow(self.solution, 10.0**-x, calcium, bicarbonate, self.spectators)), dic
+        now = _follow(self.solution, 10.0**-x, calcium, bicarbonate, self.spectators)
+        return self._index_of(calcium, bicarbonate, x), dic, replace(self, spectators=now)
 
 
 def _root_along(path: _Path, x: Array) -> tuple[Array, NDArray[np.bool_]]:

@@ -13,6 +13,7 @@ from aquabuf.engine import buffer, precipitate
 from aquabuf.engine.balance import fractions, protons_lost
 from aquabuf.engine.build import SUFFIX, build_state, checked
 from aquabuf.engine.conditions import conditions
+from aquabuf.engine.pairs import solve_pair
 from aquabuf.engine.state import CARBONATE_FORMS, PH_SCALES, Exchange, State
 from aquabuf.engine.status import OUT_OF_RANGE, STATUS_WORDS
 from aquabuf.errors import InputError, InputRangeError
@@ -55,7 +56,8 @@ class Water:
     # ---------------------------------------------------------------- making one
 
     @classmethod
-    def from_ph_alkalinity(cls, *, ph: ArrayLike, alkalinity_eq_l: ArrayLike, ph_scale: str = "meter", **water: Any) -> Water:
+    def from_ph_alkalinity(cls, *, ph: ArrayLike, alkalinity_eq_l: ArrayLike, ph_scale: str = "meter",
+                           **water: Any) -> Water:
         """Water of known pH (on `ph_scale`: meter, total, seawater, free) and alkalinity [eq/L]."""
         return cls._make({"ph": ph, "alkalinity": alkalinity_eq_l}, ph_scale, **water)
 
@@ -270,7 +272,8 @@ class Water:
             return self._state.co2
         return as_rows(pco2_atm, self._shape).reshape(-1) * self._state.conditions.k0
 
-    def curve(self, ph: ArrayLike, exchange: Exchange = "closed", *, pco2_atm: ArrayLike | None = None) -> tuple[Array, Array]:
+    def curve(self, ph: ArrayLike, exchange: Exchange = "closed", *, pco2_atm: ArrayLike | None = None,
+              ) -> tuple[Array, Array]:
         """Strong acid added [eq/L] and buffer intensity [eq/L per pH] at each of the meter pH values `ph` (1-D).
 
         Shape of both: the water's own shape followed by that of `ph`.
@@ -282,7 +285,8 @@ class Water:
 
     # ---------------------------------------------------------------- changing it
 
-    def after_acid(self, acid_eq_l: ArrayLike, exchange: Exchange = "closed", *, pco2_atm: ArrayLike | None = None) -> Water:
+    def after_acid(self, acid_eq_l: ArrayLike, exchange: Exchange = "closed", *,
+                   pco2_atm: ArrayLike | None = None) -> Water:
         """The water after strong acid (negative: base) that adds no carbon; ionic strength and volume are held."""
         alk = self.alkalinity_eq_l - np.asarray(acid_eq_l, dtype=float)
         if _checked_exchange(exchange) == "closed":
@@ -301,18 +305,18 @@ class Water:
 
     def at_temperature(self, t_c: ArrayLike) -> Water:
         """The closed sample at another temperature: amounts per kilogram stay, pH and CO2 pressure follow. [°C]"""
-        return self._again({"alkalinity": self.alkalinity_eq_l, "dic": self.dic_mol_l}, t_c=t_c)
+        c = self._state.conditions
+        new = conditions(as_rows(t_c, self._shape).reshape(-1), c.salinity, 0.0)
+        ratio = self._out(new.density_kg_l / c.density_kg_l)
+        water = {n: v * ratio if n.endswith(SUFFIX) else v for n, v in self._given().items()}
+        known = {"alkalinity": self.alkalinity_eq_l * ratio, "dic": self.dic_mol_l * ratio}
+        return self._make(known, **(self._options | water | {"t_c": t_c}))
 
-    def _again(self, known: dict[str, ArrayLike], *, t_c: ArrayLike | None = None) -> Water:
-        """Solve another pair for the same totals; concentrations follow the density."""
-        water = self._options | self._given()
-        if t_c is not None:
-            c = self._state.conditions
-            new = conditions(as_rows(t_c, self._shape).reshape(-1), c.salinity, 0.0)
-            ratio = self._out(new.density_kg_l / c.density_kg_l)
-            water |= {n: v * ratio for n, v in water.items() if n.endswith(SUFFIX)} | {"t_c": t_c}
-            known = {n: np.asarray(v) * ratio for n, v in known.items()}
-        return self._make(known, **water)
+    def _again(self, known: dict[str, ArrayLike]) -> Water:
+        """Another pair for the same totals and conditions."""
+        s = self._state
+        flat = {name: as_rows(v, self._shape).reshape(-1) for name, v in known.items()}
+        return type(self)(solve_pair(flat, s.conditions, s.acids, s.ions), self._shape, self._options)
 
     def _given(self) -> dict[str, ArrayLike]:
         """Everything but the pair, as keywords of a constructor."""

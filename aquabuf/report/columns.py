@@ -15,7 +15,7 @@ def result_columns_text() -> str:
     """One paragraph per result column: name, unit, interval, meaning."""
     rows = read_table("results")
     widest = max(len(r["name"]) for r in rows)
-    lines = ["Columns of results.csv (* stands for a pH such as 6_0; _low and _high end the interval of those marked ±)"]
+    lines = ["Columns of results.csv (* is a pH such as 6_0; those marked ± also have _low and _high, the interval)"]
     for r in rows:
         unit = f" [{r['unit']}]" if r["unit"] not in ("", "-") else ""
         mark = "±" if r["interval"] == "yes" else " "

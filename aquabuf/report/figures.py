@@ -1,4 +1,4 @@
-"""Figures of a sample set. Each drawing function takes an axis and returns it; the only module that needs Matplotlib."""
+"""Figures of a sample set, on axes that are handed in and returned; the only module that needs Matplotlib."""
 
 from __future__ import annotations
 
@@ -49,7 +49,8 @@ def plot_alkalinity(ph: NDArray, alkalinity_meq_l: NDArray, warned: NDArray[np.b
     _points(ax, alkalinity_meq_l, ph, warned)
     ax.set_xscale("symlog", linthresh=LINEAR_BELOW, linscale=0.7)
     low, high = np.nanmin(alkalinity_meq_l), np.nanmax(alkalinity_meq_l)
-    ticks = [t for t in (-10, -1, -0.1, 0, 0.1, 1, 10, 100) if low * (2 if low < 0 else 0) - 0.05 <= t <= high * 3 + 0.05]
+    ticks = [t for t in (-10, -1, -0.1, 0, 0.1, 1, 10, 100)
+             if min(2.0 * low, 0.0) - LINEAR_BELOW <= t <= 3.0 * high + LINEAR_BELOW]
     ax.set_xticks(ticks, [f"{t:g}" for t in ticks])
     ax.minorticks_off()
     if low <= 0.0 <= high:

@@ -64,7 +64,8 @@ class OutputFolder:
         if name in self._parts:
             self._parts.pop(name).unlink(missing_ok=True)
 
-    def __exit__(self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None) -> None:
+    def __exit__(self, kind: type[BaseException] | None, error: BaseException | None,
+                 trace: TracebackType | None) -> None:
         if kind is not None:
             for path in self._parts.values():
                 path.unlink(missing_ok=True)

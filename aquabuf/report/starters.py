@@ -18,7 +18,8 @@ def starter(kind: str) -> str:
     if kind == LIMITS_KIND:
         return _limits_text()
     if kind not in template_kinds():
-        raise InputError(f"no starter file is named {kind!r}. Use one of: {', '.join([*template_kinds(), LIMITS_KIND])}.")
+        kinds = ", ".join([*template_kinds(), LIMITS_KIND])
+        raise InputError(f"no starter file is named {kind!r}. Use one of: {kinds}.")
     return template(kind)
 
 

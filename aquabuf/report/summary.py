@@ -73,8 +73,8 @@ def _worst(tally: Tally, limits: Sequence[Limit]) -> str:
     head = ("sample", "pH", "alkalinity", "acid to pH 6", "carried by", "reason")
     widths = [max(len(x[i]) for x in [head, *rows]) for i in range(5)]
     lead = sum(widths) + 2 * 5
-    lines = ["Worst buffered first (meq/L; acid to pH 6 in the closed water"
-             + (f", {COVERAGE:.0%} interval" if f"{RANK_BY}_low" in tally.worst else "") + "; negative: below 6 already)"]
+    spread = f", {COVERAGE:.0%} interval" if f"{RANK_BY}_low" in tally.worst else ""
+    lines = [f"Worst buffered first (meq/L; acid to pH 6 in the closed water{spread}; negative: below 6 already)"]
     for row in [head, *rows]:
         cells = [row[0].ljust(widths[0])] + [row[i].rjust(widths[i]) for i in (1, 2)]
         cells += [row[i].ljust(widths[i]) for i in (3, 4)]
@@ -117,14 +117,14 @@ def _assumptions(tally: Tally, options: Options) -> str:
         air += f" (default: about the global mean of {AIR_CO2_YEAR}, recalled)"
     state = ("closed: the water as sampled, carbon kept in" if options.exchange == "closed"
              else "open: every water brought to equilibrium with air first")
-    intervals = (f"{COVERAGE:.0%} intervals from {options.draws:,} seeded draws (seed {options.seed}) of the readings' own or "
-                 f"default uncertainties (`aquabuf columns NAME` shows the default); constants are taken as exact"
-                 if options.draws else "no intervals (--draws 0)")
+    intervals = (f"{COVERAGE:.0%} intervals from {options.draws:,} seeded draws (seed {options.seed}) of the readings' "
+                 f"own or default uncertainties (`aquabuf columns NAME` shows the default); constants are taken as exact"
+                 if options.draws else "No intervals (--draws 0)")
     lines = [f"Exchange {state}; {air}.", f"Known pair: {_counted(tally.pairs)}." if tally.pairs else "",
              f"Ionic strength from: {_counted(tally.strengths)}." if tally.strengths else "",
              "Alkalinity is the proton deficit at pH 4.5 zero level; pH is on the meter scale unless a column says so. "
              "Air pressure is 1 atm where neither pressure nor elevation is given.",
-             f"Test dose of acid: {TEST_ACID_EQ_L * 1e3:g} meq/L. {intervals[0].upper()}{intervals[1:]}."]
+             f"Test dose of acid: {TEST_ACID_EQ_L * 1e3:g} meq/L. {intervals}."]
     if any(r != "fresh" for r in tally.regimes):
         lines.append(f"Salt water: marine constants of set {options.carbonic!r}; boron, sulfate, fluoride and calcium "
                      f"from salinity where not measured.")
@@ -136,7 +136,8 @@ def _assumptions(tally: Tally, options: Options) -> str:
 
 def _cautions(tally: Tally) -> str:
     kinds = {kind or UNSTATED for kind in tally.kinds}
-    lines = [row["words"] for row in read_table("cautions") if row["kinds"] == "any" or kinds & set(row["kinds"].split(";"))]
+    lines = [row["words"] for row in read_table("cautions")
+             if row["kinds"] == "any" or kinds & set(row["kinds"].split(";"))]
     return "\n".join(["Cautions", *(_item(line) for line in lines)])
 
 

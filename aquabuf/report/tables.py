@@ -10,7 +10,7 @@ import pandas as pd
 from aquabuf.assess.options import Options
 from aquabuf.assess.sample.columns import result_columns
 
-__all__ = ["csv_text", "rounded", "result_digits"]
+__all__ = ["csv_text", "result_digits", "rounded"]
 
 OTHER_DIGITS = 6  # significant digits of numbers without a stated number of decimals
 

@@ -14,21 +14,19 @@ from aquabuf.assess.options import Options
 from aquabuf.assess.sample.closure import Closure, closure
 from aquabuf.assess.sample.columns import result_columns
 from aquabuf.assess.sample.curves import Inputs
-from aquabuf.assess.sample.draws import Intervals, intervals
+from aquabuf.assess.sample.draws import intervals
 from aquabuf.assess.sample.headline import alkalinity_as_read, headline, words_and_details
-from aquabuf.assess.sample.inputs import alkalinity_reading, ionic_strength, own_acids, uncertainties, values_of
+from aquabuf.assess.sample.inputs import alkalinity_reading, own_acids, uncertainties, values_of
 from aquabuf.assess.sample.quality import check_rows, counted, file_checks, sample_checks
 from aquabuf.assess.sample.refuse import refusals
-from aquabuf.assess.sample.solve import ALKALINITY_AIR, NO_PAIR, PAIRS, PH_AIR, choose, groups, take_rows, water_of
+from aquabuf.assess.sample.solve import ALKALINITY_AIR, NO_PAIR, PAIRS, choose, groups, take_rows, water_of
+from aquabuf.assess.sample.tables import results_table, verdict_table
 from aquabuf.chem.acids import Acid
 from aquabuf.engine.status import FLAGGED, SOLVED
 from aquabuf.readings.duplicates import DUPLICATE_RULE
 from aquabuf.readings.result import Readings
 
 __all__ = ["Assessment", "assess"]
-
-VERDICT_COLUMNS = ("row", "sample_id", "warning", "words", "quantity", "value", "low", "high", "operator", "limit",
-                   "unit", "probability", "next_step", "source")
 
 
 @dataclass(frozen=True, slots=True, eq=False, kw_only=True)
@@ -68,6 +66,8 @@ def assess(readings: Readings, options: Options, limits: tuple[Limit, ...], *, o
     solved = choice != NO_PAIR
     refused = refusals(frame, values, ~solved, acids, options)
     keep = np.flatnonzero(solved)
+    if not keep.size:
+        figures = {c.name: np.full(n, np.nan) for c in result_columns(options)} | {"flagged": solved, "regime": solved}
     figures = {name: v[keep] for name, v in figures.items()}
     kept = frame.iloc[keep].reset_index(drop=True)
     values, u, choice = take_rows(values, keep), take_rows(u, keep), choice[keep]
@@ -78,18 +78,24 @@ def assess(readings: Readings, options: Options, limits: tuple[Limit, ...], *, o
     figures |= {"closure_meq_l": gap.carbon_meq_l, "closure_u_meq_l": gap.carbon_u_meq_l}
     kind = kept["water_kind"].to_numpy(str) if "water_kind" in kept else np.full(keep.size, "")
     broken = verdicts(limits, figures, kind, figures["regime"].astype(str))
-    table = _results(kept, figures, values, choice, spread, broken, options)
+    table = results_table(kept, figures, values, choice, spread, broken, options)
     checks = sample_checks(values, u, figures, table["pair"].to_numpy(str), gap.carbonate, gap.carbonate_u)
     return Assessment(
         results=table,
-        verdicts=_verdict_rows(kept, limits, broken, figures, spread),
+        verdicts=verdict_table(kept, limits, broken, figures, spread),
         checks=check_rows(checks, kept, only_unmet=only_unmet_checks),
         inputs=Inputs(kept[["row", "sample_id"]], values, choice, acids),
-        rejected=pd.concat([readings.rejected, refused], ignore_index=True) if len(refused) else readings.rejected,
+        rejected=_all_rejected(readings.rejected, refused),
         notes=readings.notes,
         made=counted(checks), unmet=counted(checks, only_unmet=True),
         file_checks=tuple(file_checks(values, _duplicates(readings.rejected))),
     )
+
+
+def _all_rejected(by_reader: pd.DataFrame, here: pd.DataFrame) -> pd.DataFrame:
+    """Rows refused by the reader and here, in file order."""
+    parts = [p for p in (by_reader, here) if len(p)]
+    return pd.concat(parts).sort_values("row", kind="stable").reset_index(drop=True) if parts else by_reader
 
 
 def _duplicates(rejected: pd.DataFrame) -> int:
@@ -118,61 +124,11 @@ def _solve(values: Mapping[str, NDArray], n: int, acids: tuple[Acid, ...], optio
             numbers |= words_and_details(water, numbers["si_calcite"], numbers["ccpp_mg_l"])
             numbers["flagged"] = water.status == FLAGGED
             final[rows] = PAIRS.index(pair)
+            if rows.size == n:
+                return final, numbers
             for name, v in numbers.items():
                 if name not in figures:
                     empty = "" if v.dtype.kind in "UO" else False if v.dtype.kind == "b" else np.nan
                     figures[name] = np.full(n, empty, dtype=object if v.dtype.kind in "UO" else v.dtype)
                 figures[name][rows] = v
     return final, figures
-
-
-def _results(kept: pd.DataFrame, figures: Mapping[str, NDArray], values: Mapping[str, NDArray], choice: NDArray,
-             spread: Intervals, broken: Mapping[str, NDArray], options: Options) -> pd.DataFrame:
-    """One row per sample in the column order of results.csv."""
-    n = len(kept)
-    source = alkalinity_reading(values)[1]
-    from_air = choice == PAIRS.index(PH_AIR)
-    status = np.where(from_air, "carbon from air", np.where(figures["flagged"], "outside range", "ok"))
-    reason = np.where(from_air, "pH and alkalinity of this acid water cannot tell its carbon (carbonate within "
-                                "uncertainty and organic charge of zero); pH was kept and carbon set by air",
-                      np.where(figures["flagged"], "temperature, salinity, ionic strength or pressure is outside the "
-                                                   "range of a constant", ""))
-    strength_from = ionic_strength(values)[1]
-    warnings = np.full(n, "", dtype=object)
-    for name, hit in broken.items():
-        warnings[hit] = np.where(warnings[hit] == "", name, warnings[hit] + "; " + name)
-    words: dict[str, NDArray] = {name: kept[name].to_numpy() for name in ("sample_id", "row", "site", "region", "water_kind")
-                                 if name in kept}
-    columns = dict(figures) | words | {
-        "status": status, "status_reason": reason, "pair": np.array(PAIRS, dtype=object)[choice],
-        "ionic_strength_from": strength_from, "alkalinity_from": source, "warnings": warnings,
-    }
-    ordered = {}
-    for column in result_columns(options):
-        if column.name in columns:
-            ordered[column.name] = columns[column.name]
-            if column.interval and column.name in spread.low:
-                ordered[f"{column.name}_low"] = spread.low[column.name]
-                ordered[f"{column.name}_high"] = spread.high[column.name]
-    return pd.DataFrame(ordered)
-
-
-def _verdict_rows(kept: pd.DataFrame, limits: tuple[Limit, ...], broken: Mapping[str, NDArray],
-                  figures: Mapping[str, NDArray], spread: Intervals) -> pd.DataFrame:
-    parts = []
-    nothing = np.full(len(kept), np.nan)
-    for order, limit in enumerate(limits):
-        hit = np.flatnonzero(broken.get(limit.name, np.zeros(0, dtype=bool)))
-        if hit.size:
-            q = limit.quantity
-            parts.append(pd.DataFrame({
-                "row": kept["row"].to_numpy()[hit], "sample_id": kept["sample_id"].to_numpy()[hit],
-                "warning": limit.name, "words": limit.words, "quantity": q, "value": figures[q][hit],
-                "low": spread.low.get(q, nothing)[hit], "high": spread.high.get(q, nothing)[hit],
-                "operator": limit.operator, "limit": limit.limit, "unit": limit.unit,
-                "probability": spread.probability.get(limit.name, nothing)[hit],
-                "next_step": limit.next_step, "source": limit.source, "order": order}))
-    if not parts:
-        return pd.DataFrame(columns=list(VERDICT_COLUMNS))
-    table = pd.concat(parts, ignore_index=True).sort_values(["row", "order"], kind="stable")
-    return table[list(VERDICT_COLUMNS)].reset_index(drop=True)

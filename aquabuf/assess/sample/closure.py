@@ -67,6 +67,8 @@ def closure(values: Values, u: Values, acids: tuple[Acid, ...], options: Options
     with np.errstate(invalid="ignore"):
         unknown = (carbonate <= 2.0 * carbonate_u) & (carbonate >= -allowance)
         carbon_first = carbonate_u / per_mole > MUCH_BETTER * dic_u
+    if np.isnan(dic).all():
+        return Closure(carbonate, carbonate_u, unknown, carbon_first, missing, missing)
     with_carbon = Water.from_ph_dic(ph=ph, dic_mol_l=dic, ph_scale=scale, **keywords)
     spread = np.sqrt(alkalinity_u**2 + (per_mole * dic_u) ** 2 + (with_carbon.buffer_intensity_eq_l() * ph_u) ** 2)
     return Closure(carbonate, carbonate_u, unknown, carbon_first, 1e3 * (alkalinity - with_carbon.alkalinity_eq_l),

@@ -5,6 +5,7 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
+from aquabuf.arrays import worded
 from aquabuf.assess.options import Options
 from aquabuf.chem.gases import pco2_of_air
 from aquabuf.engine import buffer, precipitate
@@ -80,17 +81,18 @@ def words_and_details(water: Water, si_calcite: Array, ccpp_mg_l: Array) -> dict
     aragonite_less = np.log10(precipitate.solubility_ratio(s, "calcite", "aragonite"))
     salinity = water.salinity
     return {
-        "regime": np.where(salinity < FRESH_BELOW, "fresh", np.where(salinity < MARINE_FROM, "brackish", "marine")),
+        "regime": worded(salinity.size, (salinity < FRESH_BELOW, "fresh"), (salinity >= MARINE_FROM, "marine"),
+                         default="brackish"),
         "temperature_c": water.t_c,
         "salinity": salinity,
         "ionic_strength_mol_l": water.ionic_strength_mol_l,
         "bicarbonate_mmol_l": carbonate[1],
         "carbonate_mmol_l": carbonate[2],
-        "carrier": found.label,
+        "carrier": found.label.astype(object),
         "carrier_share": found.share,
         "carrier_pka": found.pka,
         "carrier_base_acid_ratio": found.base_acid_ratio,
-        "carrier_in_range": np.where(np.isnan(found.pka), "", np.where(found.in_range, "yes", "no")),
+        "carrier_in_range": worded(salinity.size, (np.isfinite(found.pka), "no"), (found.in_range, "yes")),
         "pairs_in_range": _pairs_in_range(s),
         "carrier_acid_left_meq_l": found.acid_left * 1e3,
         "carrier_base_left_meq_l": found.base_left * 1e3,
@@ -112,9 +114,8 @@ def _pairs_in_range(s) -> NDArray[np.str_]:
     return out
 
 
-def ccpp_in_words(ccpp_mg_l: Array) -> NDArray[np.str_]:
+def ccpp_in_words(ccpp_mg_l: Array) -> NDArray[np.object_]:
     """What the precipitation potential means, in words; "" where it is not known."""
-    at_rest = np.abs(ccpp_mg_l) <= CCPP_AT_REST_MG_L
-    words = np.where(at_rest, "close to balance with calcite",
-                     np.where(ccpp_mg_l > 0.0, "would deposit calcium carbonate", "would dissolve calcium carbonate"))
-    return np.where(np.isnan(ccpp_mg_l), "", words)
+    return worded(ccpp_mg_l.size, (ccpp_mg_l > CCPP_AT_REST_MG_L, "would deposit calcium carbonate"),
+                  (ccpp_mg_l < -CCPP_AT_REST_MG_L, "would dissolve calcium carbonate"),
+                  (np.abs(ccpp_mg_l) <= CCPP_AT_REST_MG_L, "close to balance with calcite"))

@@ -6,12 +6,12 @@ Values are a dictionary of house-unit arrays, so that the same functions serve t
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
 
 import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
+from aquabuf.arrays import worded
 from aquabuf.chem.acids import Acid, acid_table
 from aquabuf.chem.properties import air_pressure
 from aquabuf.engine.build import IONS
@@ -74,7 +74,7 @@ def pressure(values: Values) -> Array:
     return np.where(np.isfinite(given), given, np.where(np.isfinite(by_height), by_height, 1.0))
 
 
-def ionic_strength(values: Values) -> tuple[Array, NDArray[np.str_]]:
+def ionic_strength(values: Values) -> tuple[Array, NDArray[np.object_]]:
     """Ionic strength of fresh rows [mol/L] and its source; nan where salinity or alkalinity must imply it.
 
     Order: given, major ions, conductivity at 25 °C, dissolved solids.
@@ -94,7 +94,7 @@ def ionic_strength(values: Values) -> tuple[Array, NDArray[np.str_]]:
     source[implied] = np.where(has_salt[implied], STRENGTH_SOURCES.index("salinity"),
                                STRENGTH_SOURCES.index("alkalinity"))
     source[np.nan_to_num(_get(values, "salinity", t)) >= 1.0] = STRENGTH_SOURCES.index("salinity")
-    return out, np.array(STRENGTH_SOURCES)[source]
+    return out, np.array(STRENGTH_SOURCES, dtype=object)[source]
 
 
 def _of_ions(values: Values) -> Array:
@@ -110,12 +110,12 @@ def _of_ions(values: Values) -> Array:
     return 0.5 * total
 
 
-def alkalinity_reading(values: Values) -> tuple[Array, NDArray[np.str_]]:
+def alkalinity_reading(values: Values) -> tuple[Array, NDArray[np.object_]]:
     """Alkalinity, or ANC where only that was measured [eq/L], and which of the two it is."""
     t = values["temperature_c"]
     alkalinity, anc = _get(values, "alkalinity_eq_l", t), _get(values, "anc_eq_l", t)
     use_anc = np.isnan(alkalinity) & np.isfinite(anc)
-    source = np.where(np.isfinite(alkalinity), "alkalinity", np.where(use_anc, "anc", "computed"))
+    source = worded(t.size, (use_anc, "anc"), (np.isfinite(alkalinity), "alkalinity"), default="computed")
     return np.where(use_anc, anc, alkalinity), source
 
 

@@ -10,14 +10,14 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
+from aquabuf.assess.frames import frame_of
 from aquabuf.assess.sample.inputs import MAJOR_IONS, Array, Values
 from aquabuf.readings.schema import quantities
 from aquabuf.tables import read_table
 from aquabuf.units import substances
 
-__all__ = ["CHECK_COLUMNS", "Check", "check_rows", "counted", "file_checks", "sample_checks"]
+__all__ = ["Check", "check_rows", "counted", "file_checks", "sample_checks"]
 
-CHECK_COLUMNS = ("row", "sample_id", "check", "value", "limit", "unit", "met", "remedy", "source")
 ORGANIC_SITES_EQ_PER_MG = 1e-5      # site density, 10 µeq per mg C: Oliver, Thurman & Malcolm 1983
 ORGANIC_TITRATED_EQ_PER_MG = 5e-6   # of which a titration to pH 4 reaches about half, by the same pK function
 WHOLE_MIN_ROWS, WHOLE_SHARE = 10, 90.0
@@ -157,24 +157,25 @@ def counted(checks: list[Check], *, only_unmet: bool = False) -> dict[str, int]:
 def check_rows(checks: list[Check], frame: pd.DataFrame, *, only_unmet: bool) -> pd.DataFrame:
     """The checks as a long table, sample by sample; `frame` has `row` and `sample_id`."""
     facts = {r["name"]: r for r in read_table("checks")}
-    parts = []
-    for order, check in enumerate(checks):
-        rows = np.flatnonzero(np.isfinite(check.value) & ~(check.met & only_unmet))
-        if not rows.size:
-            continue
-        fact = facts[check.name]
-        low, high = (np.broadcast_to(v, check.value.shape)[rows] for v in (check.low, check.high))
-        remedy = fact["remedy"] if check.detail is None else [
-            f"{fact['remedy']}: {d}" if d else "" for d in check.detail[rows]]
-        parts.append(pd.DataFrame({
-            "row": frame["row"].to_numpy()[rows], "sample_id": frame["sample_id"].to_numpy()[rows],
-            "check": check.name, "value": check.value[rows], "limit": _limit_words(low, high), "unit": fact["unit"],
-            "met": np.where(check.met[rows], "yes", "no"),
-            "remedy": np.where(check.met[rows], "", remedy), "source": fact["source"], "order": order}))
-    if not parts:
-        return pd.DataFrame(columns=list(CHECK_COLUMNS))
-    table = pd.concat(parts, ignore_index=True).sort_values(["row", "order"], kind="stable")
-    return table[list(CHECK_COLUMNS)].reset_index(drop=True)
+    value, met = (np.stack([getattr(c, field) for c in checks], axis=1) for field in ("value", "met"))
+    sample, which = np.nonzero(np.isfinite(value) & ~(met & only_unmet))
+    low, high = (np.stack([np.broadcast_to(getattr(c, end), len(frame)) for c in checks], axis=1)[sample, which]
+                 for end in ("low", "high"))
+    ok = met[sample, which]
+
+    def of_check(field: str) -> NDArray[np.object_]:
+        return np.array([facts[c.name][field] for c in checks], dtype=object)[which]
+
+    remedy = np.where(ok, "", of_check("remedy"))
+    for j, check in enumerate(checks):
+        if check.detail is not None:
+            at = (which == j) & ~ok
+            remedy[at] = remedy[at] + ": " + check.detail[sample[at]]
+    return frame_of({
+        "row": frame["row"].to_numpy()[sample], "sample_id": frame["sample_id"].to_numpy(dtype=object)[sample],
+        "check": of_check("name"), "value": value[sample, which],
+        "limit": np.array(_limit_words(low, high), dtype=object), "unit": of_check("unit"),
+        "met": np.where(ok, "yes", "no").astype(object), "remedy": remedy, "source": of_check("source")})
 
 
 def _limit_words(low: Array, high: Array) -> list[str]:

@@ -8,7 +8,7 @@ from numpy.typing import NDArray
 
 from aquabuf.assess.options import Options
 from aquabuf.assess.sample.inputs import Values
-from aquabuf.assess.sample.solve import NO_PAIR, PAIRS, choose, groups, has, take_rows, water_of
+from aquabuf.assess.sample.solve import NO_PAIR, choose, groups, has, take_rows, water_of
 from aquabuf.chem.acids import Acid
 from aquabuf.engine.conditions import LIMITS
 from aquabuf.engine.status import OUT_OF_RANGE

@@ -1,0 +1,86 @@
+"""The tables of an assessment: a row per sample, a row per broken limit."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from aquabuf.arrays import worded
+from aquabuf.assess.frames import frame_of
+from aquabuf.assess.limits import Limit
+from aquabuf.assess.options import Options
+from aquabuf.assess.sample.columns import result_columns
+from aquabuf.assess.sample.draws import Intervals
+from aquabuf.assess.sample.inputs import alkalinity_reading, ionic_strength
+from aquabuf.assess.sample.solve import PAIRS, PH_AIR
+
+__all__ = ["results_table", "verdict_table"]
+
+OUTSIDE_RANGE = "temperature, salinity, ionic strength or pressure is outside the range of a constant"
+CARBON_FROM_AIR = ("pH and alkalinity of this acid water cannot tell its carbon (carbonate within uncertainty and "
+                   "organic charge of zero); pH was kept and carbon set by air")
+
+
+AS_GIVEN = ("sample_id", "row", "site", "region", "water_kind")
+
+
+def results_table(kept: pd.DataFrame, figures: Mapping[str, NDArray], values: Mapping[str, NDArray],
+                  choice: NDArray, spread: Intervals, broken: Mapping[str, NDArray], options: Options) -> pd.DataFrame:
+    """One row per sample, all columns of results.csv in their order; site, region and kind only if they were given."""
+    n = len(kept)
+    columns = dict(figures) | _words(kept, figures, values, choice, broken)
+    ordered = {}
+    for column in result_columns(options):
+        if column.name in AS_GIVEN and column.name not in kept:
+            continue
+        ordered[column.name] = columns[column.name]
+        if column.interval and options.draws:
+            for end, store in (("low", spread.low), ("high", spread.high)):
+                ordered[f"{column.name}_{end}"] = store.get(column.name, np.full(n, np.nan))
+    return frame_of(ordered)
+
+
+def _words(kept: pd.DataFrame, figures: Mapping[str, NDArray], values: Mapping[str, NDArray], choice: NDArray,
+           broken: Mapping[str, NDArray]) -> dict[str, NDArray]:
+    """The columns that say where a row comes from and what became of it."""
+    n = len(kept)
+    from_air = choice == PAIRS.index(PH_AIR)
+    flagged = figures["flagged"].astype(bool)
+    warnings = np.full(n, "", dtype=object)
+    for name, hit in broken.items():
+        warnings[hit] = np.where(warnings[hit] == "", name, warnings[hit] + "; " + name)
+    return {name: kept[name].to_numpy() for name in AS_GIVEN if name in kept} | {
+        "status": worded(n, (flagged, "outside range"), (from_air, "carbon from air"), default="ok"),
+        "status_reason": worded(n, (flagged, OUTSIDE_RANGE), (from_air, CARBON_FROM_AIR)),
+        "pair": np.array(PAIRS, dtype=object)[choice],
+        "ionic_strength_from": ionic_strength(values)[1], "alkalinity_from": alkalinity_reading(values)[1],
+        "warnings": warnings,
+    }
+
+
+def verdict_table(kept: pd.DataFrame, limits: tuple[Limit, ...], broken: Mapping[str, NDArray],
+                  figures: Mapping[str, NDArray], spread: Intervals) -> pd.DataFrame:
+    """One row per broken limit, sample by sample, each with its rule and source."""
+    n = len(kept)
+    never, nothing = np.zeros(n, dtype=bool), np.full(n, np.nan)
+    sample, which = np.nonzero(np.stack([broken.get(x.name, never) for x in limits], axis=1) if limits
+                               else np.zeros((n, 0), dtype=bool))
+
+    def of_limit(field: str) -> NDArray:
+        values = [getattr(x, field) for x in limits]
+        return np.array(values, dtype=float if field == "limit" else object)[which]
+
+    def of_sample(source: Mapping[str, NDArray], field: str) -> NDArray:
+        columns = [source.get(getattr(x, field), nothing) for x in limits]
+        return np.stack(columns, axis=1)[sample, which].astype(float) if limits else np.empty(0)
+
+    return frame_of({
+        "row": kept["row"].to_numpy()[sample], "sample_id": kept["sample_id"].to_numpy(dtype=object)[sample],
+        "warning": of_limit("name"), "words": of_limit("words"), "quantity": of_limit("quantity"),
+        "value": of_sample(figures, "quantity"), "low": of_sample(spread.low, "quantity"),
+        "high": of_sample(spread.high, "quantity"), "operator": of_limit("operator"), "limit": of_limit("limit"),
+        "unit": of_limit("unit"), "probability": of_sample(spread.probability, "name"),
+        "next_step": of_limit("next_step"), "source": of_limit("source")})
