@@ -6,7 +6,7 @@ rows. A row's interval therefore depends on nothing but its own readings, whatev
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Iterator
+from collections.abc import Iterable, Iterator, Mapping
 from zlib import crc32
 
 import numpy as np
@@ -29,7 +29,7 @@ def row_blocks(rows: NDArray[np.intp], draws: int) -> Iterator[NDArray[np.intp]]
         yield rows[start:start + size]
 
 
-def drawn(values: dict[str, Array], u: dict[str, Array], draws: int, seed: int, names: Iterable[str],
+def drawn(values: Mapping[str, Array], u: Mapping[str, Array], draws: int, seed: int, names: Iterable[str],
           ) -> dict[str, Array]:
     """Random draws of the named values, all others repeated: arrays of rows times draws, row by row.
 

@@ -60,14 +60,15 @@ def per_kg_solution(salinity: ArrayLike) -> NDArray[np.float64]:
 
 def free_to_total_scale(sulfate: ArrayLike, k_bisulfate: ArrayLike) -> NDArray[np.float64]:
     """[H]total / [H]free = 1 + TS/KS, KS on the free scale. [-] Definition, Millero 2010 abstract."""
-    return 1.0 + np.asarray(sulfate) / k_bisulfate
+    return 1.0 + np.asarray(sulfate, dtype=float) / np.asarray(k_bisulfate, dtype=float)
 
 
 def free_to_seawater_scale(
     sulfate: ArrayLike, k_bisulfate: ArrayLike, fluoride: ArrayLike, k_fluoride: ArrayLike,
 ) -> NDArray[np.float64]:
     """[H]seawater / [H]free = 1 + TS/KS + TF/KF, both constants on the free scale. [-] Definition."""
-    return free_to_total_scale(sulfate, k_bisulfate) + np.asarray(fluoride) / k_fluoride
+    return free_to_total_scale(sulfate, k_bisulfate) + np.asarray(fluoride, dtype=float) / np.asarray(
+        k_fluoride, dtype=float)
 
 
 def hydrogen_activity_takahashi(t_c: ArrayLike, salinity: ArrayLike) -> NDArray[np.float64]:

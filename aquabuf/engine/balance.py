@@ -17,6 +17,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from aquabuf.errors import InputError
+
 __all__ = ["Family", "System", "alkalinity_at", "fractions", "moments", "protons_lost"]
 
 Array = NDArray[np.float64]
@@ -55,6 +57,14 @@ class System:
         return System(self.alkalinity[rows], self.c_h[rows], self.c_oh[rows], self.k1[rows], self.k2[rows],
                       pick(self.dic), pick(self.co2), tuple(f.take(rows) for f in self.families))
 
+    @property
+    def carbon(self) -> Array:
+        """The carbon that is given: total inorganic carbon, or the CO2 that is held. [mol/L]"""
+        given = self.co2 if self.dic is None else self.dic
+        if given is None:
+            raise InputError("a balance needs dic or co2; neither is given. Pass zeros for water without carbon.")
+        return given
+
     def sides(self, h: Array) -> tuple[Array, Array, Array, Array]:
         """Surplus and deficit at `h`, and their slopes against ln h. [eq/L]"""
         inv = 1.0 / h
@@ -80,7 +90,7 @@ class System:
         r = self.k1 * inv
         q2 = 2.0 * self.k2 * inv
         if self.dic is None:
-            bicarbonate = self.co2 * r
+            bicarbonate = self.carbon * r
             return bicarbonate * (1.0 + q2), -bicarbonate * (1.0 + 2.0 * q2)
         per_total = r / (1.0 + r + 0.5 * r * q2)
         charge = per_total * (1.0 + q2)
@@ -141,7 +151,9 @@ def alkalinity_at(system: System, h: Array) -> Array:
     """Alkalinity that the water of `system` has at `h`, whatever `system.alkalinity` says. [eq/L]"""
     inv = 1.0 / h
     r, q2 = system.k1 * inv, 2.0 * system.k2 * inv
-    bicarbonate = system.co2 * r if system.dic is None else system.dic * r / (1.0 + r + 0.5 * r * q2)
+    bicarbonate = system.carbon * r
+    if system.dic is not None:
+        bicarbonate = bicarbonate / (1.0 + r + 0.5 * r * q2)
     total = bicarbonate * (1.0 + q2) + system.c_oh * inv - system.c_h * h
     for f in system.families:
         total += f.total * (protons_lost(fractions(f.k, inv)) - f.zero)

@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass, field
+from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -193,13 +194,13 @@ _SEA_ACIDS: dict[str, tuple[tuple[Callable, ...], str]] = {
 
 def _acid_constants(c: Conditions, acid: Acid) -> tuple[Array, ...]:
     """Conditional constants of one acid: by its own marine equation where there is one, else by activities."""
-    def by_activity(step: int, r: object) -> Array:
+    def by_activity(step: int, r: Any) -> Array:
         k = k_of_temperature(acid.pk[step], acid.enthalpy_j_mol[step], acid.heat_capacity_j_mol_k[step], c.t_c[r])
         before, after = (_log_gamma(acid.charge_full - step - lost, c.ionic_strength_mol_l[r], c.debye_huckel_a[r])
                          for lost in (0, 1))
         return k * 10.0 ** (before - after)
 
-    def by_sea(step: int, r: object) -> Array:
+    def by_sea(step: int, r: Any) -> Array:
         if acid.name not in _SEA_ACIDS:
             return by_activity(step, r) / c.activity_per_h[r]
         functions, scale = _SEA_ACIDS[acid.name]

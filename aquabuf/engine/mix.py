@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Sequence
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -38,13 +38,13 @@ def mix(waters: Sequence[Water], volumes: Sequence[ArrayLike]) -> Water:
     t, s = by_mass("t_c"), by_mass("salinity")
     density = conditions(t, s).density_kg_l
 
-    def amount(of: Callable[[Water], Array]) -> Array:
-        return sum(x * of(w) for x, w in zip(v, waters, strict=True)) / whole * density
+    def amount(per_liter: Sequence[Array]) -> Array:
+        return sum(x * c for x, c in zip(v, per_liter, strict=True)) / whole * density
 
     names = sorted({n for w in waters for n in w.total_names})
     own = {a.name: a for w in waters for a in w.options["acids"]}
+    totals = {f"{name}{SUFFIX}": amount([w.total_mol_l(name) for w in waters]) for name in names}
     return Water.from_alkalinity_dic(
-        alkalinity_eq_l=amount(lambda w: w.alkalinity_eq_l), dic_mol_l=amount(lambda w: w.dic_mol_l),
+        alkalinity_eq_l=amount([w.alkalinity_eq_l for w in waters]), dic_mol_l=amount([w.dic_mol_l for w in waters]),
         t_c=t, salinity=s, ionic_strength_mol_l=by_mass("ionic_strength_mol_l"), pressure_atm=waters[0].pressure_atm,
-        **(waters[0].options | {"acids": tuple(own.values())}),
-        **{f"{n}{SUFFIX}": amount(lambda w, n=n: w.total_mol_l(n)) for n in names})
+        **(waters[0].options | {"acids": tuple(own.values())}), **totals)

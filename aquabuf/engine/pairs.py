@@ -45,7 +45,7 @@ def _solve(pair: tuple[str, ...], known: Mapping[str, Array], c: Conditions, aci
     def system(alk: Array = zero, **carbon: Array) -> System:
         return System(alk, c.c_h, c.c_oh, c.k1, c.k2, families=families, **carbon)
 
-    co2 = c.k0 * known["pco2"] if "pco2" in pair else None
+    co2 = c.k0 * known["pco2"] if "pco2" in pair else zero
     if "ph" in pair:
         h = 10.0 ** -known["ph"] / per_h(c, ph_scale)
         alpha = fractions((c.k1, c.k2), 1.0 / h)
@@ -53,15 +53,15 @@ def _solve(pair: tuple[str, ...], known: Mapping[str, Array], c: Conditions, aci
             alk = known["alkalinity"]
             dic = (alk - alkalinity_at(system(dic=zero), h)) / protons_lost(alpha)
         else:
-            dic = known["dic"] if co2 is None else co2 / alpha[0]
+            dic = co2 / alpha[0] if "pco2" in pair else known["dic"]
             alk = alkalinity_at(system(dic=dic), h)
         status = _direct_status(pair, known, dic, h)
         residual = alkalinity_at(system(dic=dic), h) - alk
     elif "alkalinity" in pair:
         alk = known["alkalinity"]
-        solved = solve_h(system(alk, dic=known["dic"]) if co2 is None else system(alk, co2=co2))
+        solved = solve_h(system(alk, co2=co2) if "pco2" in pair else system(alk, dic=known["dic"]))
         h, residual, status = solved.h, solved.residual, solved.status
-        dic = known["dic"] if co2 is None else co2 / fractions((c.k1, c.k2), 1.0 / h)[0]
+        dic = co2 / fractions((c.k1, c.k2), 1.0 / h)[0] if "pco2" in pair else known["dic"]
     else:
         dic = known["dic"]
         h = 1.0 / _inverse_h(c, dic / co2 - 1.0)

@@ -64,7 +64,7 @@ def solve_h(system: System) -> SolveResult:
 
 
 def _input_status(system: System) -> NDArray[np.int8]:
-    carbon = system.co2 if system.dic is None else system.dic
+    carbon = system.carbon
     arrays = [system.alkalinity, carbon, system.c_h, system.c_oh, system.k1, system.k2]
     totals = [carbon] + [f.total for f in system.families]
     finite = np.ones(system.alkalinity.shape, dtype=bool)
@@ -137,17 +137,17 @@ def _first_guess(system: System) -> Array:
     """
     alk, c_h, c_oh, k1, k2 = system.alkalinity, system.c_h, system.c_oh, system.k1, system.k2
     if system.dic is None:
-        q = system.co2 * k1 + c_oh
+        q = system.carbon * k1 + c_oh
         acid = _positive_root(c_h, alk, -q)
-        base = _positive_root(np.maximum(alk, 1e-12), -q, -2.0 * k2 * system.co2 * k1)
+        base = _positive_root(np.maximum(alk, 1e-12), -q, -2.0 * k2 * system.carbon * k1)
         return np.where(alk > 0.0, np.maximum(acid, base), acid)
     dic = system.dic
     excess = alk - dic
     a, b, c = dic / k1 + c_h, excess, -(dic * k2 + c_oh)
-    acid, base = excess < -0.1 * dic, excess > 0.1 * dic
-    a = np.where(acid, c_h, np.where(base, excess, a))
-    b = np.where(acid, c_h * k1 + alk, np.where(base, (alk - 2.0 * dic) * k2 - c_oh, b))
-    c = np.where(acid, k1 * excess, np.where(base, -c_oh * k2, c))
+    is_acid, is_base = excess < -0.1 * dic, excess > 0.1 * dic
+    a = np.where(is_acid, c_h, np.where(is_base, excess, a))
+    b = np.where(is_acid, c_h * k1 + alk, np.where(is_base, (alk - 2.0 * dic) * k2 - c_oh, b))
+    c = np.where(is_acid, k1 * excess, np.where(is_base, -c_oh * k2, c))
     return _positive_root(a, b, c)
 
 

@@ -318,7 +318,7 @@ class Water:
         flat = {name: as_rows(v, self._shape).reshape(-1) for name, v in known.items()}
         return type(self)(solve_pair(flat, s.conditions, s.acids, s.ions), self._shape, self._options)
 
-    def _given(self) -> dict[str, ArrayLike]:
+    def _given(self) -> dict[str, Array]:
         """Everything but the pair, as keywords of a constructor."""
         s, c = self._state, self._state.conditions
         out = {f"{d.acid.name}{SUFFIX}": self._out(d.total) for d in s.acids}

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from pathlib import Path
+from typing import Any
 
 import matplotlib
 import numpy as np
@@ -28,7 +29,7 @@ BARS, CURVES = 12, 6
 MANY_POINTS = 3000  # beyond, points shrink and are drawn as pixels inside the vector file
 LINEAR_BELOW = 0.05  # meq/L, linear part of the alkalinity axis
 
-STYLE = {
+STYLE: Any = {
     "font.size": 9, "axes.titlesize": 10, "axes.titlelocation": "left", "axes.titleweight": "bold",
     "axes.spines.top": False, "axes.spines.right": False, "axes.edgecolor": "#666666", "axes.linewidth": 0.8,
     "xtick.color": INK, "ytick.color": INK, "legend.frameon": False, "legend.fontsize": 8,

@@ -118,7 +118,7 @@ def _assumptions(tally: Tally, options: Options) -> str:
     state = ("closed: the water as sampled, carbon kept in" if options.exchange == "closed"
              else "open: every water brought to equilibrium with air first")
     intervals = (f"{COVERAGE:.0%} intervals from {options.draws:,} seeded draws (seed {options.seed}) of the readings' "
-                 f"own or default uncertainties (`aquabuf columns NAME` shows the default); constants are taken as exact"
+                 f"own or default uncertainties (`aquabuf columns NAME` shows them); constants are taken as exact"
                  if options.draws else "No intervals (--draws 0)")
     lines = [f"Exchange {state}; {air}.", f"Known pair: {_counted(tally.pairs)}." if tally.pairs else "",
              f"Ionic strength from: {_counted(tally.strengths)}." if tally.strengths else "",

@@ -9,7 +9,7 @@ from pathlib import Path
 import numpy as np
 
 sys.path.insert(0, str(Path(__file__).parents[1] / "engine"))
-from precise_balance import ph_errors, random_waters  # noqa: E402
+from precise_balance import ph_errors, random_waters
 
 
 def main():

@@ -79,8 +79,8 @@ def test_order_does_not_matter():
 
 
 def test_ph_is_not_averaged():
-    """Equal volumes of 1 mmol/L acid and base neutralize: pH 7, where the mean would be 7; of 1 and 0.5, strong acid is left:
-    0.25 mmol/L, pH 3.60, where the mean of 3 and 10.7 is 6.8 (hand-worked at I = 0)."""
+    """1 mmol/L acid (pH 3.0) and as much base (pH 11.0) give pure water; half the base (pH 10.7) leaves 0.25 mmol/L of acid,
+    pH 3.60, where the mean of the two pH would be 6.8 (hand-worked at I = 0)."""
     acid = Water.from_alkalinity_dic(alkalinity_eq_l=-1e-3, dic_mol_l=0.0, t_c=[25.0, 25.0], ionic_strength_mol_l=0.0)
     base = Water.from_alkalinity_dic(alkalinity_eq_l=[1e-3, 5e-4], dic_mol_l=0.0, t_c=25.0, ionic_strength_mol_l=0.0)
     assert_allclose(mix([acid, base], [1.0, 1.0]).ph, [6.997, -np.log10(2.5e-4 / 0.99705)], rtol=0, atol=0.001)

@@ -64,6 +64,9 @@ def test_phthalate_follows_hetzer(t_c):
     ("phosphate 1:1", 0.0, 6.984, 0.015),      # the same at other temperatures
     ("phosphate 1:1", 10.0, 6.923, 0.015),
     ("phosphate 1:1", 40.0, 6.838, 0.02),      # Davies departs most in the warm
+    ("phosphate 1:1", 50.0, 6.833, 0.02),
+    ("borax 0.01", 0.0, 9.464, 0.02),          # IUPAC, third decimal recalled from memory
+    ("borax 0.01", 50.0, 9.011, 0.02),
     ("phosphate 1:3.5", 25.0, 7.413, 0.015),   # NBS, recalled from memory, printed to 0.01
     ("borax 0.01", 10.0, 9.33, 0.015),         # JIS Z 8802 and a controller manual, printed
     ("borax 0.01", 25.0, 9.180, 0.015),        # Staples & Bates 1969, printed

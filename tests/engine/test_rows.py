@@ -126,7 +126,8 @@ def test_status_of_a_row(changed, status):
     assert np.isfinite(water.ph[[0, 2]]).all()
     assert np.isfinite(water.ph[1]) == (status >= 0)
     for quantity in (water.alkalinity_eq_l, water.dic_mol_l, water.pco2_atm, water.buffer_intensity_eq_l(),
-                     water.acid_to_ph_eq_l(4.5), water.weakest_buffering().intensity):
+                     water.acid_to_ph_eq_l(4.5), water.weakest_buffering().intensity, water.weakest_buffering().ph,
+                     water.carrier().acid_left):
         assert np.isfinite(quantity[1]) == (status >= 0)
 
 

@@ -42,7 +42,7 @@ class Inputs:
         n, m = len(self.names), len(other.names)
         values = {name: np.concatenate([self.values.get(name, np.full(n, np.nan)),
                                         other.values.get(name, np.full(m, np.nan))])
-                  for name in self.values | other.values}
+                  for name in {**self.values, **other.values}}
         return Inputs(pd.concat([self.names, other.names], ignore_index=True), values,
                       np.concatenate([self.choice, other.choice]), self.acids)
 

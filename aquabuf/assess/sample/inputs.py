@@ -23,7 +23,7 @@ __all__ = ["MAJOR_IONS", "PH_COLUMNS", "Values", "ionic_strength", "own_acids", 
            "values_of", "water_keywords"]
 
 Array = NDArray[np.float64]
-Values = dict[str, Array]
+Values = Mapping[str, Array]
 
 PH_COLUMNS = {"ph": "meter", "ph_total": "total", "ph_seawater": "seawater", "ph_free": "free"}
 MAJOR_IONS = ("calcium", "magnesium", "sodium", "chloride", "sulfate")  # needed before ions give ionic strength
@@ -32,13 +32,13 @@ STRENGTH_PER_TDS = 2.5e-5           # mol/L per mg/L; Langelier 1936
 STRENGTH_SOURCES = ("", "given", "ions", "conductivity", "dissolved solids", "salinity", "alkalinity")
 
 
-def values_of(frame: pd.DataFrame) -> Values:
+def values_of(frame: pd.DataFrame) -> dict[str, Array]:
     """Every number of the readings that holds at least one value, by column name in house units."""
     return {name: frame[name].to_numpy(dtype=float) for name in frame.columns
             if name != "row" and pd.api.types.is_numeric_dtype(frame[name]) and frame[name].notna().any()}
 
 
-def uncertainties(values: Values) -> Values:
+def uncertainties(values: Values) -> dict[str, Array]:
     """Standard uncertainty of every quantity: its own column where given, else the default of the column table."""
     known = quantities()
     out = {}

@@ -25,7 +25,7 @@ def refusals(frame: pd.DataFrame, values: Values, bad: NDArray[np.bool_], acids:
     reasons: dict[int, tuple[str, str, str, str]] = {}
     there = has(values, bad.size)
     t = values["temperature_c"]
-    for i in rows:
+    for i in rows.tolist():
         members = [m for m, v in there.items() if v[i]]
         if np.isnan(t[i]):
             reasons[i] = ("temperature_c", "", "every sample needs a water temperature",
@@ -35,7 +35,7 @@ def refusals(frame: pd.DataFrame, values: Values, bad: NDArray[np.bool_], acids:
             reasons[i] = ("ph, alkalinity, dic, pco2", f"found {found}",
                           "two of pH, alkalinity, carbon and CO2 pressure make a known pair",
                           "give a second one" + (", or run with --exchange open" if found == "alkalinity" else ""))
-    remaining = np.array([i for i in rows if i not in reasons], dtype=np.intp)
+    remaining = np.array([i for i in rows.tolist() if i not in reasons], dtype=np.intp)
     if remaining.size:
         nowhere = np.zeros(bad.size, dtype=bool)
         first = next(choose(values, bad.size, options, carbon_first=nowhere, carbon_unknown=nowhere))
@@ -43,10 +43,10 @@ def refusals(frame: pd.DataFrame, values: Values, bad: NDArray[np.bool_], acids:
         only[remaining] = first[remaining]
         for pair, ph_column, group in groups(values, only):
             status = water_of(take_rows(values, group), pair, ph_column, acids, options).status
-            for i, code in zip(group, status, strict=True):
+            for i, code in zip(group.tolist(), status.tolist(), strict=True):
                 reasons[i] = (_out_of_range(values, i) if code == OUT_OF_RANGE
                               else _contradiction(values, i, pair, ph_column))
-    lines = [(frame["row"].iloc[i], frame["sample_id"].iloc[i], *reasons[i]) for i in rows]
+    lines = [(frame["row"].iloc[i], frame["sample_id"].iloc[i], *reasons[i]) for i in rows.tolist()]
     return pd.DataFrame(lines, columns=list(REJECTED_COLUMNS))
 
 

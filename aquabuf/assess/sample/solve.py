@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 
 import numpy as np
 from numpy.typing import NDArray
@@ -26,6 +26,11 @@ ALKALINITY_AIR, PH_AIR = "alkalinity and air", "pH and air"
 PAIRS = ("pH and alkalinity", "pH and carbon", "alkalinity and carbon", "alkalinity and pCO2", "pH and pCO2",
          "carbon and pCO2", PH_AIR, ALKALINITY_AIR)
 MEASURED_PAIRS = PAIRS[:6]
+_MAKERS: dict[str, Callable[..., Water]] = {
+    "pH and alkalinity": Water.from_ph_alkalinity, "pH and carbon": Water.from_ph_dic,
+    "alkalinity and carbon": Water.from_alkalinity_dic, "alkalinity and pCO2": Water.from_alkalinity_pco2,
+    "pH and pCO2": Water.from_ph_pco2, "carbon and pCO2": Water.from_dic_pco2,
+}
 _FRESH_ORDER = (0, 1, 2, 3, 4, 5)
 _CARBON_ORDER = (1, 0, 2, 3, 4, 5)
 _SALT_ORDER = (2, 0, 1, 3, 4, 5)
@@ -71,7 +76,7 @@ def choose(values: Values, rows: int, options: Options, *, carbon_first: NDArray
         yield np.where(there["alkalinity"], PAIRS.index(ALKALINITY_AIR), NO_PAIR).astype(np.int8)
 
 
-def take_rows(values: Values, rows: NDArray) -> Values:
+def take_rows(values: Values, rows: NDArray) -> dict[str, Array]:
     """The same values for some of the rows."""
     return {name: v[rows] for name, v in values.items()}
 
@@ -99,21 +104,17 @@ def water_of(values: Values, pair: str, ph_column: str, acids: tuple[Acid, ...],
     if pair == ALKALINITY_AIR:
         return Water.from_alkalinity_pco2(alkalinity_eq_l=alkalinity, pco2_atm=air_pco2(keywords, options), **keywords)
     if pair == PH_AIR:
-        values, pair = values | {"pco2_atm": air_pco2(keywords, options)}, "pH and pCO2"
+        values, pair = {**values, "pco2_atm": air_pco2(keywords, options)}, "pH and pCO2"
     known = {"alkalinity": ("alkalinity_eq_l", alkalinity), "carbon": ("dic_mol_l", values.get("dic_mol_l")),
              "pCO2": ("pco2_atm", values.get("pco2_atm")), "pH": ("ph", values.get(ph_column))}
     members = pair.split(" and ")
     given = dict(known[m] for m in members)
     if "pH" not in members:
-        make = {"alkalinity and carbon": Water.from_alkalinity_dic, "alkalinity and pCO2": Water.from_alkalinity_pco2,
-                "carbon and pCO2": Water.from_dic_pco2}[pair]
-        return make(**given, **keywords)
+        return _MAKERS[pair](**given, **keywords)
     t_ph = values.get("ph_temperature_c", np.full(alkalinity.shape, np.nan))
     t_water = keywords["t_c"]
     keywords["t_c"] = np.where(np.isfinite(t_ph), t_ph, t_water)
-    make = {"pH and alkalinity": Water.from_ph_alkalinity, "pH and carbon": Water.from_ph_dic,
-            "pH and pCO2": Water.from_ph_pco2}[pair]
-    water = make(**given, ph_scale=PH_COLUMNS[ph_column], **keywords)
+    water = _MAKERS[pair](**given, ph_scale=PH_COLUMNS[ph_column], **keywords)
     return water.at_temperature(t_water) if np.any(keywords["t_c"] != t_water) else water
 
 
