@@ -46,5 +46,5 @@ def assess(readings: Path, folder: Path, mapping: Path | None, limits: Path | No
 
     given = choices | {"acid_thresholds": thresholds, "base_thresholds": base_thresholds}
     options = Options(**{name: value for name, value in given.items() if value is not None})  # type: ignore[arg-type]
-    click.echo(assess_file(readings, folder, options, mapping=mapping, limits=limits, force=force, figure=figure),
-               nl=False)
+    click.echo(assess_file(readings, folder, options, mapping=mapping, limits=limits, force=force, figure=figure,
+                           notify=lambda text: click.echo(text, err=True)), nl=False)

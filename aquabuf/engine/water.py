@@ -152,6 +152,15 @@ class Water:
         """Partial pressure of CO2 in gas at equilibrium with the water. [atm]"""
         return self._out(self._state.co2 / self._state.conditions.k0)
 
+    def pco2_air_ratio(self, co2_ppm: ArrayLike = gases.AIR_CO2_PPM) -> Array:
+        """CO2 pressure over that of air with `co2_ppm` (dry mole fraction); above 1 the water gives CO2 off. [-]"""
+        return self.pco2_atm / self._air_pco2(co2_ppm)
+
+    def _air_pco2(self, co2_ppm: ArrayLike) -> Array:
+        c = self._state.conditions
+        ppm = as_rows(co2_ppm, self._shape).reshape(-1)
+        return self._out(gases.pco2_of_air(ppm, c.t_c, c.pressure_atm, c.salinity))
+
     @property
     def t_c(self) -> Array:
         """Temperature. [°C]"""
@@ -299,9 +308,7 @@ class Water:
 
     def at_air(self, co2_ppm: ArrayLike = gases.AIR_CO2_PPM) -> Water:
         """The water in equilibrium with air of `co2_ppm` (dry mole fraction) at its own pressure and temperature."""
-        c = self._state.conditions
-        return self.at_pco2(self._out(gases.pco2_of_air(
-            as_rows(co2_ppm, self._shape).reshape(-1), c.t_c, c.pressure_atm, c.salinity)))
+        return self.at_pco2(self._air_pco2(co2_ppm))
 
     def at_temperature(self, t_c: ArrayLike) -> Water:
         """The closed sample at another temperature: amounts per kilogram stay, pH and CO2 pressure follow. [°C]"""

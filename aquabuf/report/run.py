@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import hashlib
 import json
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import asdict
 from pathlib import Path
 from typing import IO
@@ -29,13 +29,16 @@ __all__ = ["OUTPUT_FILES", "assess_file"]
 
 OUTPUT_FILES = ("results.csv", "verdicts.csv", "checks.csv", "curves.csv", "rejected.csv", "run.json", "samples.png",
                 "samples.svg")
+SECONDS_PER_DRAW = 7e-6  # on one core, measured; only for the notice
 CHUNK_ROWS = 8192        # one piece stays in the processor's cache
 ALL_CHECKS_UP_TO = 20_000  # samples; beyond, checks.csv holds the unmet ones only
 
 
 def assess_file(path: Path, folder: Path, options: Options, *, mapping: Path | None = None, limits: Path | None = None,
-                force: bool = False, figure: bool = True) -> str:
+                force: bool = False, figure: bool = True, notify: Callable[[str], None] = lambda text: None) -> str:
     """Assess the table at `path`, write OUTPUT_FILES to `folder`, and return the summary text.
+
+    `notify` is told beforehand when the draws of a long table will take long.
 
     Raises InputError or FileError where the table as a whole cannot be used or no row is accepted; rejected.csv is
     still written then.
@@ -46,6 +49,10 @@ def assess_file(path: Path, folder: Path, options: Options, *, mapping: Path | N
         name: _sha256(p) for name, p in (("map", mapping), ("limits", limits)) if p is not None}
     pieces = iter_readings(path, table_map, CHUNK_ROWS)
     tally, few = Tally(), _fewer_rows_than(path, ALL_CHECKS_UP_TO)
+    if not few and options.draws:
+        minutes = ALL_CHECKS_UP_TO * options.draws * SECONDS_PER_DRAW / 60.0
+        notify(f"{options.draws:,} draws for each of more than {ALL_CHECKS_UP_TO:,} rows take about {minutes:.0f} minutes "
+               f"per {ALL_CHECKS_UP_TO:,} rows; --draws 0 leaves the intervals out and takes seconds.")
     with OutputFolder(folder, OUTPUT_FILES, force=force) as out:
         writer = _Tables(out, options)
         with writer:
@@ -53,6 +60,7 @@ def assess_file(path: Path, folder: Path, options: Options, *, mapping: Path | N
                 part = assess(piece, options, rules, only_unmet_checks=not few)
                 writer.write(part)
                 tally.add(part)
+            writer.add("checks.csv", tally.file_checks())
         if tally.refused_rows == set():
             writer.drop("rejected.csv")
         if tally.assessed:
@@ -91,11 +99,15 @@ class _Tables:
     def write(self, part: Assessment) -> None:
         for name, table in (("results.csv", part.results), ("verdicts.csv", part.verdicts), ("checks.csv", part.checks),
                             ("rejected.csv", part.rejected)):
-            first = name not in self._open
-            if first:
-                self._open[name] = self._out.part(name).open("w", encoding="utf-8", newline="")
-            digits = self._digits if name == "results.csv" else {}
-            self._open[name].write(csv_text(rounded(table, digits), header=first))
+            self.add(name, table)
+
+    def add(self, name: str, table: pd.DataFrame) -> None:
+        """Append rows to a table, with the header before the first."""
+        first = name not in self._open
+        if first:
+            self._open[name] = self._out.part(name).open("w", encoding="utf-8", newline="")
+        digits = self._digits if name == "results.csv" else {}
+        self._open[name].write(csv_text(rounded(table, digits), header=first))
 
     def drop(self, name: str) -> None:
         self._out.drop(name)

@@ -91,9 +91,9 @@ def _quality(tally: Tally) -> str:
         if tally.unmet[name]:
             lines.append(_item(f"{tally.unmet[name]:,} of {tally.made[name]:,} fail {name} "
                                f"({fact['limit_words']}): {fact['remedy']}."))
-    for name, value, limit, met, remedy in tally.file_checks:
-        if not met:
-            lines.append(_item(f"{name}: {value:.4g} {facts[name]['unit']}, should be {limit}: {remedy}."))
+    for r in tally.file_checks().itertuples():
+        if r.met == "no":
+            lines.append(_item(f"{r.check}: {r.value:.4g} {r.unit}, should be {r.limit}: {r.remedy}."))
     if not lines:
         return "Quality: every check that could be made is met."
     return "\n".join(["Quality (checks.csv has each sample)", *dict.fromkeys(lines)])

@@ -11,6 +11,7 @@ import pandas as pd
 from aquabuf.assess.options import Options
 from aquabuf.assess.sample.assess import Assessment
 from aquabuf.assess.sample.curves import RANK_BY, Inputs, curve_rows, worst
+from aquabuf.assess.sample.quality import file_check_rows
 
 __all__ = ["Tally"]
 
@@ -35,7 +36,8 @@ class Tally:
     unmet: Counter = field(default_factory=Counter)
     made: Counter = field(default_factory=Counter)
     notes: dict[str, None] = field(default_factory=dict)
-    file_checks: list[tuple[str, float, str, bool, str]] = field(default_factory=list)
+    whole: dict[str, tuple[int, int]] = field(default_factory=dict)
+    duplicates: int = 0
     worst: pd.DataFrame = field(default_factory=pd.DataFrame)
     worst_inputs: Inputs | None = None
     drawn: list[np.ndarray] = field(default_factory=list)
@@ -55,7 +57,10 @@ class Tally:
         self.made.update(part.made)
         self.unmet.update(part.unmet)
         self.notes |= dict.fromkeys(part.notes)
-        self.file_checks.extend(part.file_checks)
+        self.duplicates += part.duplicates
+        for name, (count, size) in part.whole.items():
+            before = self.whole.get(name, (0, 0))
+            self.whole[name] = (before[0] + count, before[1] + size)
         self._keep_worst(part)
         columns = [results[name].to_numpy(dtype=np.float32) for name in FIGURE_COLUMNS]
         self.drawn.append(np.stack([*columns, (results["warnings"] != "").to_numpy(dtype=np.float32)]))
@@ -68,6 +73,10 @@ class Tally:
             best = worst(rows[RANK_BY].to_numpy(), WORST_KEPT)
             rows, inputs = rows.iloc[best], inputs.take(best)
         self.worst, self.worst_inputs = rows.reset_index(drop=True), inputs
+
+    def file_checks(self) -> pd.DataFrame:
+        """Checks of the table as a whole."""
+        return file_check_rows(self.whole, self.duplicates)
 
     def curves(self, options: Options) -> pd.DataFrame:
         """Curves of the worst-buffered samples, worst first."""

@@ -9,7 +9,7 @@ from numpy.typing import NDArray
 
 from aquabuf.assess.options import Options
 from aquabuf.assess.sample.inputs import PH_COLUMNS, Array, Values, alkalinity_reading, water_keywords
-from aquabuf.assess.sample.quality import ORGANIC_SITES_EQ_PER_MG
+from aquabuf.assess.sample.quality import ORGANIC_SITES_EQ_PER_MG, ORGANIC_TITRATED_EQ_PER_MG
 from aquabuf.chem.acids import Acid
 from aquabuf.engine.balance import protons_lost
 from aquabuf.engine.water import Water
@@ -17,6 +17,7 @@ from aquabuf.engine.water import Water
 __all__ = ["Closure", "closure"]
 
 ALUMINUM_CHARGE = 3.0  # upper bound per mole in acid water
+MAGNIFIED_BELOW = 0.1  # carbonate charge per mole of carbon; pH 5.4 and below
 MUCH_BETTER = 2.0      # times smaller uncertainty before measured carbon takes the place of alkalinity
 
 
@@ -24,8 +25,9 @@ MUCH_BETTER = 2.0      # times smaller uncertainty before measured carbon takes 
 class Closure:
     """Carbonate alkalinity that pH and alkalinity leave [eq/L], and titrated less computed alkalinity [meq/L].
 
-    carbon_unknown : that carbonate cannot be told from zero: it is below twice its uncertainty, and if negative by no
-        more than uncertainty, organic acids and aluminum can explain.
+    carbon_unknown : that carbonate cannot tell the carbon. It is negative, by no more than uncertainty, organic acids
+        and aluminum can explain; or the water is so acid that carbon is many times the carbonate, and carbonate is
+        within its uncertainty and the charge of titrated organic acids.
     carbon_first : carbon was measured much better than pH and alkalinity imply it.
     """
 
@@ -59,13 +61,16 @@ def closure(values: Values, u: Values, acids: tuple[Acid, ...], options: Options
     bare = Water.from_ph_dic(ph=ph, dic_mol_l=0.0, ph_scale=scale, **keywords)
     carbonate = alkalinity - bare.alkalinity_eq_l
     carbonate_u = np.hypot(alkalinity_u, bare.buffer_intensity_eq_l() * ph_u)
-    allowance = (2.0 * carbonate_u + ORGANIC_SITES_EQ_PER_MG * np.nan_to_num(values.get("doc_mg_l", missing))
+    doc = np.nan_to_num(values.get("doc_mg_l", missing))
+    allowance = (2.0 * carbonate_u + ORGANIC_SITES_EQ_PER_MG * doc
                  + ALUMINUM_CHARGE * np.nan_to_num(values.get("aluminum_mol_l", missing)))
     dic = values.get("dic_mol_l", missing)
     dic_u = u.get("dic_mol_l", missing)
     per_mole = protons_lost(bare.state.carbonate_fractions())
     with np.errstate(invalid="ignore"):
-        unknown = (carbonate <= 2.0 * carbonate_u) & (carbonate >= -allowance)
+        doubt = 2.0 * carbonate_u + ORGANIC_TITRATED_EQ_PER_MG * doc
+        in_acid_water = (per_mole < MAGNIFIED_BELOW) & (carbonate <= doubt)
+        unknown = (carbonate >= -allowance) & ((carbonate <= 0.0) | in_acid_water)
         carbon_first = carbonate_u / per_mole > MUCH_BETTER * dic_u
     if np.isnan(dic).all():
         return Closure(carbonate, carbonate_u, unknown, carbon_first, missing, missing)

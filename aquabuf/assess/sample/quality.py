@@ -16,11 +16,12 @@ from aquabuf.readings.schema import quantities
 from aquabuf.tables import read_table
 from aquabuf.units import substances
 
-__all__ = ["Check", "check_rows", "counted", "file_checks", "sample_checks"]
+__all__ = ["Check", "check_rows", "counted", "file_check_rows", "sample_checks", "whole_counts"]
 
 ORGANIC_SITES_EQ_PER_MG = 1e-5      # site density, 10 µeq per mg C: Oliver, Thurman & Malcolm 1983
 ORGANIC_TITRATED_EQ_PER_MG = 5e-6   # of which a titration to pH 4 reaches about half, by the same pK function
 WHOLE_MIN_ROWS, WHOLE_SHARE = 10, 90.0
+ALL_ROWS = "(all rows)"
 ROUNDED_COLUMNS = ("ph", "temperature_c", "alkalinity_eq_l", "anc_eq_l", "conductivity_us_cm", "dic_mol_l")
 
 
@@ -188,16 +189,27 @@ def _limit_words(low: Array, high: Array) -> list[str]:
     return [one(a, b) for a, b in zip(low.tolist(), high.tolist(), strict=True)]
 
 
-def file_checks(values: Values, duplicates: int) -> list[tuple[str, float, str, bool, str]]:
-    """Checks of a whole table: name, value, limit, met, remedy."""
-    facts = {r["name"]: r for r in read_table("checks")}
-    out = [("duplicate names", float(duplicates), "0", duplicates == 0, facts["duplicate names"]["remedy"])]
+def whole_counts(values: Values) -> dict[str, tuple[int, int]]:
+    """Per column that rounding would hurt: how many readings are whole numbers, and how many there are."""
+    out = {}
     for name in ROUNDED_COLUMNS:
         given = values.get(name, np.empty(0))
-        scale = 1e6 if name.endswith("_l") else 1.0  # µeq/L and µmol/L are what rounded tables are written in
-        whole = given[np.isfinite(given)] * scale
-        if whole.size >= WHOLE_MIN_ROWS:
-            share = 100.0 * float(np.mean(np.abs(whole - np.round(whole)) < 1e-6 * np.maximum(np.abs(whole), 1.0)))
-            out.append(("whole numbers", share, f"below {WHOLE_SHARE:g} % in {name}", share < WHOLE_SHARE,
-                        facts["whole numbers"]["remedy"]))
+        given = given[np.isfinite(given)] * (1e6 if name.endswith("_l") else 1.0)  # rounded tables are in µeq/L
+        whole = np.abs(given - np.round(given)) < 1e-6 * np.maximum(np.abs(given), 1.0)
+        if given.size:
+            out[name] = (int(whole.sum()), given.size)
     return out
+
+
+def file_check_rows(whole: Mapping[str, tuple[int, int]], duplicates: int) -> pd.DataFrame:
+    """Checks of a table as a whole, in the columns of `check_rows`; they belong to no row."""
+    found = [("duplicate names", float(duplicates), "0", duplicates == 0, "")]
+    for name, (count, size) in whole.items():
+        if size >= WHOLE_MIN_ROWS:
+            share = 100.0 * count / size
+            found.append(("whole numbers", share, f"below {WHOLE_SHARE:g}", share < WHOLE_SHARE, f": {name}"))
+    facts = {r["name"]: r for r in read_table("checks")}
+    return pd.DataFrame([{
+        "row": "", "sample_id": ALL_ROWS, "check": check, "value": value, "limit": limit, "unit": facts[check]["unit"],
+        "met": "yes" if met else "no", "remedy": "" if met else facts[check]["remedy"] + detail,
+        "source": facts[check]["source"]} for check, value, limit, met, detail in found])
