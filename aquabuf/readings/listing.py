@@ -14,6 +14,7 @@ __all__ = ["columns_text"]
 
 WIDTH = 100
 _LABEL = 15
+_MEANING_LEAD = " " * 4
 _CLOSING = (
     "Readings may be in any usual unit, said at the end of the header: calcium_mg_l, 'Calcium (mg/L)', "
     "alkalinity_ueq_l. The column name is what the program calls them, in its own unit. A standard uncertainty has "
@@ -53,16 +54,24 @@ def _find(name: str) -> Quantity:
 
 
 def _overview(width: int) -> str:
-    """One line per column: its name here, a header people write, its meaning."""
+    """Every column with a header people write, the unit and range it has here, its meaning and what needs it."""
     records = list(quantities().values())
-    name_width = max(len(q.name) for q in records)
-    example_width = max(len(example_header(q)) for q in records)
-    lead = " " * (name_width + example_width + 4)
-    lines = [f"{'column':{name_width}}  {'header, e.g.':{example_width}}  meaning"]
-    for q in records:
-        start = f"{q.name:{name_width}}  {example_header(q):{example_width}}  "
-        lines.append(textwrap.fill(q.meaning, width, initial_indent=start, subsequent_indent=lead))
+    rows = [(q.name, example_header(q), q.house_unit if q.is_number else "text",
+             f"{q.low:g} to {q.high:g}" if q.is_number else "") for q in records]
+    head = ("column", "header, e.g.", "unit", "range")
+    widths = [max(len(row[i]) for row in [head, *rows]) for i in range(4)]
+    lines = ["  ".join(cell.ljust(w) for cell, w in zip(head, widths, strict=True)).rstrip()]
+    lines += [_MEANING_LEAD + "meaning (what needs it)"]
+    for q, row in zip(records, rows, strict=True):
+        lines.append("  ".join(cell.ljust(w) for cell, w in zip(row, widths, strict=True)).rstrip())
+        choices = f": {_choices(q)}" if q.choices else ""
+        lines.append(textwrap.fill(f"{q.meaning}{choices} ({q.needed_by})", width, initial_indent=_MEANING_LEAD,
+                                   subsequent_indent=_MEANING_LEAD))
     return "\n".join((*lines, "", textwrap.fill(_CLOSING, width))) + "\n"
+
+
+def _choices(q: Quantity) -> str:
+    return ", ".join(dict.fromkeys(word for _, word in q.choices))
 
 
 def _item(label: str, text: str, width: int) -> str:
@@ -104,7 +113,7 @@ def _uncertainty(q: Quantity) -> str:
 def _detail(q: Quantity, width: int) -> str:
     """Everything about one column."""
     items = [("meaning", q.meaning), ("headers", _headers(q)), ("units", _units(q))]
-    items.append(("choices", ", ".join(dict.fromkeys(word for _, word in q.choices))))
+    items.append(("choices", _choices(q)))
     if q.is_number:
         items += [("range", _range(q)), ("uncertainty", _uncertainty(q))]
         items.append(("below limit", "'<0.02' counts as half, with its spread" if q.below_limit else "not accepted"))
