@@ -51,8 +51,8 @@ def assess_file(path: Path, folder: Path, options: Options, *, mapping: Path | N
     tally, few = Tally(), _fewer_rows_than(path, ALL_CHECKS_UP_TO)
     if not few and options.draws:
         minutes = ALL_CHECKS_UP_TO * options.draws * SECONDS_PER_DRAW / 60.0
-        notify(f"{options.draws:,} draws for each of more than {ALL_CHECKS_UP_TO:,} rows take about {minutes:.0f} minutes "
-               f"per {ALL_CHECKS_UP_TO:,} rows; --draws 0 leaves the intervals out and takes seconds.")
+        notify(f"{options.draws:,} draws for each of more than {ALL_CHECKS_UP_TO:,} rows take about {minutes:.0f} "
+               f"minutes per {ALL_CHECKS_UP_TO:,} rows; --draws 0 leaves the intervals out and takes seconds.")
     with OutputFolder(folder, OUTPUT_FILES, force=force) as out:
         writer = _Tables(out, options)
         with writer:

@@ -52,8 +52,13 @@ def _warnings(tally: Tally, limits: Sequence[Limit]) -> str:
     for limit in limits:
         if limit.name in tally.warnings:
             lines.append(_item(f"{tally.warnings[limit.name]:,} x {limit.name}: {limit.words} "
-                               f"[{limit.rule()}; {limit.source}]"))
+                               f"[{limit.rule()}; {_short(limit.source)}]"))
     return "\n".join(lines)
+
+
+def _short(source: str) -> str:
+    """The source without what follows its first colon or semicolon; verdicts.csv has it whole."""
+    return source.split(";")[0].split(": ")[0]
 
 
 def _number(value: float, digits: int) -> str:

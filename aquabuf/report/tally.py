@@ -11,7 +11,7 @@ import pandas as pd
 from aquabuf.assess.options import Options
 from aquabuf.assess.sample.assess import Assessment
 from aquabuf.assess.sample.curves import RANK_BY, Inputs, curve_rows, worst
-from aquabuf.assess.sample.quality import file_check_rows
+from aquabuf.assess.sample.quality import Rounding, file_check_rows
 
 __all__ = ["Tally"]
 
@@ -36,7 +36,7 @@ class Tally:
     unmet: Counter = field(default_factory=Counter)
     made: Counter = field(default_factory=Counter)
     notes: dict[str, None] = field(default_factory=dict)
-    whole: dict[str, tuple[int, int]] = field(default_factory=dict)
+    rounding: dict[str, Rounding] = field(default_factory=dict)
     duplicates: int = 0
     worst: pd.DataFrame = field(default_factory=pd.DataFrame)
     worst_inputs: Inputs | None = None
@@ -58,9 +58,8 @@ class Tally:
         self.unmet.update(part.unmet)
         self.notes |= dict.fromkeys(part.notes)
         self.duplicates += part.duplicates
-        for name, (count, size) in part.whole.items():
-            before = self.whole.get(name, (0, 0))
-            self.whole[name] = (before[0] + count, before[1] + size)
+        for name, found in part.rounding.items():
+            self.rounding[name] = self.rounding[name].plus(found) if name in self.rounding else found
         self._keep_worst(part)
         columns = [results[name].to_numpy(dtype=np.float32) for name in FIGURE_COLUMNS]
         self.drawn.append(np.stack([*columns, (results["warnings"] != "").to_numpy(dtype=np.float32)]))
@@ -76,7 +75,7 @@ class Tally:
 
     def file_checks(self) -> pd.DataFrame:
         """Checks of the table as a whole."""
-        return file_check_rows(self.whole, self.duplicates)
+        return file_check_rows(self.rounding, self.duplicates)
 
     def curves(self, options: Options) -> pd.DataFrame:
         """Curves of the worst-buffered samples, worst first."""

@@ -175,8 +175,25 @@ def test_without_calcium_there_is_no_index(totals):
     assert np.isnan(water.ph_at_saturation())
 
 
-def test_acid_water_without_carbonate_alkalinity_has_no_index():
-    """Where the measured alkalinity leaves nothing for carbonate, saturation is undefined."""
-    water = Water.from_alkalinity_dic(alkalinity_eq_l=[-1e-2, 2e-3], dic_mol_l=[0.0, 2e-3], t_c=25.0, calcium_mol_l=1e-3)
-    assert np.isnan(water.saturation_index()[0])
-    assert np.isfinite(water.saturation_index()[1])
+def test_water_without_carbon_has_no_index():
+    """Without carbon there is no carbonate to be saturated with, in acid and base alike; rounding must not decide."""
+    water = Water.from_alkalinity_dic(alkalinity_eq_l=np.geomspace(1e-6, 1e-2, 40) * np.resize([1, -1], 40), dic_mol_l=0.0,
+                                      t_c=20.0, calcium_mol_l=1e-3, phosphate_mol_l=1e-4)
+    assert np.isnan(water.saturation_index()).all()
+
+
+def test_many_waters_end_at_saturation():
+    """5,000 random waters with all pairs: each gets a potential, and rebuilt after it has SI = 0 within 1e-4 (the definition)."""
+    rng = np.random.default_rng(6)
+    n = 5000
+    rest = {"t_c": rng.uniform(0, 50, n), "ionic_strength_mol_l": 10 ** rng.uniform(-3, -1, n),
+            "sulfate_mol_l": 10 ** rng.uniform(-6, -2, n)}
+    rest |= {f"{m}_mol_l": 10 ** rng.uniform(-6, -2, n) for m in METALS[1:]}
+    alkalinity, calcium, ph = 10 ** rng.uniform(-4.5, -2.2, n), 10 ** rng.uniform(-6, -2, n), rng.uniform(5, 10, n)
+    before = Water.from_ph_alkalinity(ph=ph, alkalinity_eq_l=alkalinity, calcium_mol_l=calcium, **rest)
+    before_ok = before.status >= 0
+    x, then = before.precipitation_potential_mol_l(), before.ph_at_saturation()
+    assert before_ok.sum() > 4000
+    assert np.isfinite(x[before_ok]).all()
+    after = Water.from_ph_alkalinity(ph=then, alkalinity_eq_l=alkalinity - 2.0 * x, calcium_mol_l=calcium - x, **rest)
+    assert_allclose(after.saturation_index()[before_ok], 0.0, rtol=0, atol=1e-4)

@@ -142,6 +142,12 @@ def test_at_air_subtracts_water_vapor_at_the_waters_own_pressure():
     assert_allclose(aired.alkalinity_eq_l, 1e-3, rtol=1e-15)
 
 
+def test_at_air_over_sea_water():
+    """Salt lowers the vapor pressure: 0.030655 atm at S 35, 25 °C (Weiss & Price 1980, recalled from memory)."""
+    water = Water.from_alkalinity_dic(alkalinity_eq_l=2.3e-3, dic_mol_l=2e-3, t_c=25.0, salinity=[35.0])
+    assert_allclose(water.at_air(400.0).pco2_atm, 400e-6 * (1.0 - 0.030655), rtol=2e-6)
+
+
 def open_calcite_ph(k_h, k_1, k_2, k_s, pco2):
     """[H]3 = KH2 K1 2 K2 P2 / (2 Ks): ideal water with calcite and CO2 gas, charge balance 2 Ca = HCO3."""
     return -np.log10(k_h**2 * k_1**2 * k_2 * pco2**2 / (2.0 * k_s)) / 3.0

@@ -61,11 +61,11 @@ def test_every_known_pair_finds_the_same_water(pair):
     assert_allclose(again.pco2_atm, first.pco2_atm, rtol=1e-8)
 
 
-def test_plain_waters_need_three_steps():
-    """Carbonate waters of the usual kind are done after three Newton steps in nine of ten rows: speed is part of the promise."""
+def test_plain_waters_need_few_steps():
+    """Carbonate waters of the usual kind are done after four Newton steps: speed is part of the promise."""
     rng = np.random.default_rng(2)
     alkalinity = 10.0 ** rng.uniform(-5, -2, 5000)
     water = Water.from_alkalinity_dic(alkalinity_eq_l=alkalinity, dic_mol_l=alkalinity * rng.uniform(0.7, 1.5, 5000), t_c=12.0)
     iterations = solve_h(water.state.system()).iterations
-    assert np.mean(iterations <= 3) > 0.9
+    assert np.mean(iterations <= 4) > 0.99
     assert iterations.max() <= 8

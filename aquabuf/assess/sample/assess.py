@@ -17,7 +17,7 @@ from aquabuf.assess.sample.curves import Inputs
 from aquabuf.assess.sample.draws import intervals
 from aquabuf.assess.sample.headline import alkalinity_as_read, headline, words_and_details
 from aquabuf.assess.sample.inputs import alkalinity_reading, own_acids, uncertainties, values_of
-from aquabuf.assess.sample.quality import check_rows, counted, sample_checks, whole_counts
+from aquabuf.assess.sample.quality import Rounding, check_rows, counted, roundings, sample_checks
 from aquabuf.assess.sample.refuse import refusals
 from aquabuf.assess.sample.solve import ALKALINITY_AIR, NO_PAIR, PAIRS, choose, groups, take_rows, water_of
 from aquabuf.assess.sample.tables import results_table, verdict_table
@@ -37,7 +37,7 @@ class Assessment:
     verdicts : one row per broken limit, with its rule.
     checks : quality checks, one row per check that could be made (or only those not met).
     made, unmet : how many samples each check could be made for, and how many broke it.
-    whole, duplicates : whole numbers among the readings by column, and rows refused for a name used before.
+    rounding, duplicates : whole numbers among the readings by column, and rows refused for a name used before.
     inputs : what each sample was solved from, for curves.
     rejected : rows refused, by the reader or here: row, sample_id, column, value, rule, remedy.
     """
@@ -50,7 +50,7 @@ class Assessment:
     notes: tuple[str, ...]
     made: Mapping[str, int]
     unmet: Mapping[str, int]
-    whole: Mapping[str, tuple[int, int]]
+    rounding: Mapping[str, Rounding]
     duplicates: int
 
 
@@ -90,7 +90,7 @@ def assess(readings: Readings, options: Options, limits: tuple[Limit, ...], *, o
         rejected=_all_rejected(readings.rejected, refused),
         notes=readings.notes,
         made=counted(checks), unmet=counted(checks, only_unmet=True),
-        whole=whole_counts(values), duplicates=_duplicates(readings.rejected),
+        rounding=roundings(values, u, readings.headers), duplicates=_duplicates(readings.rejected),
     )
 
 

@@ -14,13 +14,14 @@ from aquabuf.assess.frames import frame_of
 from aquabuf.assess.sample.inputs import MAJOR_IONS, Array, Values
 from aquabuf.readings.schema import quantities
 from aquabuf.tables import read_table
-from aquabuf.units import substances
+from aquabuf.units import substances, to_house
 
-__all__ = ["Check", "check_rows", "counted", "file_check_rows", "sample_checks", "whole_counts"]
+__all__ = ["Check", "Rounding", "check_rows", "counted", "file_check_rows", "roundings", "sample_checks"]
 
 ORGANIC_SITES_EQ_PER_MG = 1e-5      # site density, 10 µeq per mg C: Oliver, Thurman & Malcolm 1983
 ORGANIC_TITRATED_EQ_PER_MG = 5e-6   # of which a titration to pH 4 reaches about half, by the same pK function
 WHOLE_MIN_ROWS, WHOLE_SHARE = 10, 90.0
+ROUNDING_SD = 1.0 / np.sqrt(12.0)   # of a unit: standard deviation of an even spread
 ALL_ROWS = "(all rows)"
 ROUNDED_COLUMNS = ("ph", "temperature_c", "alkalinity_eq_l", "anc_eq_l", "conductivity_us_cm", "dic_mol_l")
 
@@ -189,25 +190,47 @@ def _limit_words(low: Array, high: Array) -> list[str]:
     return [one(a, b) for a, b in zip(low.tolist(), high.tolist(), strict=True)]
 
 
-def whole_counts(values: Values) -> dict[str, tuple[int, int]]:
-    """Per column that rounding would hurt: how many readings are whole numbers, and how many there are."""
+@dataclass(frozen=True, slots=True)
+class Rounding:
+    """Readings of one column: how many, how many are whole numbers in the file's unit, and what rounding costs.
+
+    error : standard uncertainty of rounding to whole numbers; stated : sum of the readings' own. House unit.
+    """
+
+    size: int
+    whole: int
+    error: float
+    stated: float
+
+    def plus(self, other: Rounding) -> Rounding:
+        """Both pieces of a column together."""
+        return Rounding(self.size + other.size, self.whole + other.whole, self.error, self.stated + other.stated)
+
+    @property
+    def hurts(self) -> bool:
+        """Whether nearly all readings are whole numbers and rounding outweighs their mean stated uncertainty."""
+        return 100.0 * self.whole >= WHOLE_SHARE * self.size and self.error * self.size > self.stated
+
+
+def roundings(values: Values, u: Values, headers: Mapping[str, tuple[str, str]]) -> dict[str, Rounding]:
+    """Rounding of the columns where it can hide the truth, in the unit each has in the file."""
     out = {}
-    for name in ROUNDED_COLUMNS:
-        given = values.get(name, np.empty(0))
-        given = given[np.isfinite(given)] * (1e6 if name.endswith("_l") else 1.0)  # rounded tables are in µeq/L
-        whole = np.abs(given - np.round(given)) < 1e-6 * np.maximum(np.abs(given), 1.0)
-        if given.size:
-            out[name] = (int(whole.sum()), given.size)
+    for name, unit in headers.values():
+        if name in ROUNDED_COLUMNS and name in values:
+            quantity, given = quantities()[name], np.isfinite(values[name])
+            in_file = to_house(values[name][given], unit, quantity.dimension, quantity.substance, 1.0, back=True)
+            one = abs(float(to_house(1.0, unit, quantity.dimension, quantity.substance, 1.0)
+                            - to_house(0.0, unit, quantity.dimension, quantity.substance, 1.0)))
+            whole = np.abs(in_file - np.round(in_file)) < 1e-6 * np.maximum(np.abs(in_file), 1.0)
+            out[name] = Rounding(in_file.size, int(whole.sum()), ROUNDING_SD * one, float(u[name][given].sum()))
     return out
 
 
-def file_check_rows(whole: Mapping[str, tuple[int, int]], duplicates: int) -> pd.DataFrame:
+def file_check_rows(rounding: Mapping[str, Rounding], duplicates: int) -> pd.DataFrame:
     """Checks of a table as a whole, in the columns of `check_rows`; they belong to no row."""
     found = [("duplicate names", float(duplicates), "0", duplicates == 0, "")]
-    for name, (count, size) in whole.items():
-        if size >= WHOLE_MIN_ROWS:
-            share = 100.0 * count / size
-            found.append(("whole numbers", share, f"below {WHOLE_SHARE:g}", share < WHOLE_SHARE, f": {name}"))
+    found += [("whole numbers", 100.0 * r.whole / r.size, f"below {WHOLE_SHARE:g} in {name}, or rounding within its u",
+               not r.hurts, f": {name}") for name, r in rounding.items() if r.size >= WHOLE_MIN_ROWS]
     facts = {r["name"]: r for r in read_table("checks")}
     return pd.DataFrame([{
         "row": "", "sample_id": ALL_ROWS, "check": check, "value": value, "limit": limit, "unit": facts[check]["unit"],
