@@ -6,6 +6,7 @@ tables read with the csv module, and from laws written out here; none is copied 
 
 import csv
 import re
+from functools import cache
 from pathlib import Path
 
 import gsw
@@ -42,17 +43,21 @@ def raw(table, delimiter=","):
 
 @pytest.fixture(scope="module")
 def results(tmp_path_factory):
-    """Output folder of each table, assessed once with the default options but for the figure."""
-    folder = tmp_path_factory.mktemp("demo")
-    for table in EXTRA:
-        code, text = run(table, folder / table, "--no-figure")
+    """Output folder of a table, which is assessed once with the default options but for the figure."""
+    top = tmp_path_factory.mktemp("demo")
+
+    @cache
+    def folder_of(table):
+        code, text = run(table, top / table, "--no-figure")
         assert code == 0, text
-    return folder
+        return top / table
+
+    return folder_of
 
 
 def read(results, table, name):
     """One result table."""
-    return pd.read_csv(results / table / name, dtype={"warnings": str, "status": str}, keep_default_na=True)
+    return pd.read_csv(results(table) / name, dtype={"value": str} if name == "rejected.csv" else None)
 
 
 def by_id(results, table):
@@ -80,7 +85,7 @@ def test_no_row_is_lost(results, table, refused):
     """Assessed and refused rows together are the rows of the file; as many are refused as were spoiled."""
     rows = raw(table, ";" if table == PLANT else ",")[1]
     assert len(read(results, table, "results.csv")) == len(rows) - refused
-    assert (results / table / "rejected.csv").exists() == bool(refused)
+    assert (results(table) / "rejected.csv").exists() == bool(refused)
     if refused:
         assert read(results, table, "rejected.csv")["row"].nunique() == refused
 
@@ -230,11 +235,12 @@ def test_organic_alkalinity_is_seen_where_carbon_was_measured(results):
 
 
 def test_detection_limits_are_noted(results):
-    """Every '<' of an assessed row is counted in the notes."""
+    """Every '<' that was read is counted in the notes; two rows are refused only later, for want of a reading."""
     header, rows = raw(STREAM)
-    notes = " ".join((results / STREAM / "run.json").read_text(encoding="utf-8").split())
+    read_rows = rows[:24] + [row for row in rows[24:] if row[0] in ("TB-noon", "CS-noon")]
+    notes = " ".join((results(STREAM) / "run.json").read_text(encoding="utf-8").split())
     for name, column in (("Ammonium (mg/L as N)", "ammonium"), ("Aluminum (µg/L)", "aluminum")):
-        count = sum(row[header.index(name)].startswith("<") for row in rows[:24])
+        count = sum(row[header.index(name)].startswith("<") for row in read_rows)
         assert count > 0
         assert f"{count} x below detection in {column}_mol_l" in notes
 

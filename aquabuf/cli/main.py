@@ -25,9 +25,17 @@ class _Group(click.Group):
             return super().invoke(ctx)
         except AquabufError as error:
             raise click.ClickException(str(error)) from error
+        except (click.ClickException, click.Abort, click.exceptions.Exit):
+            raise
         except BrokenPipeError:  # the reader of our output, such as `head`, has gone
             os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
             raise SystemExit(1) from None
+        except Exception as error:  # a defect of ours; its place is for us, not for the user
+            if os.environ.get("AQUABUF_TRACEBACK"):
+                raise
+            raise click.ClickException(
+                f"aquabuf met a case it was not made for ({type(error).__name__}: {error}). Nothing was written over. "
+                f"Please report it with the table; AQUABUF_TRACEBACK=1 shows where it happened.") from None
 
     def resolve_command(self, ctx: click.Context, args: list[str]) -> Any:
         from difflib import get_close_matches

@@ -129,7 +129,8 @@ def _solution(state: State) -> _Solution:
     gamma = _gammas(state)
     rho, is_fresh = c.density_kg_l, ~c.is_marine
     totals = {d.acid.name: d.total for d in state.acids}
-    metals = {m: np.nan_to_num(state.ions[m]) for m in METALS if m in state.ions}
+    metals = {m: np.nan_to_num(state.ions.get(m, np.zeros(rho.shape))) for m in METALS
+              if m in state.ions or m == "calcium"}
     sulfate = np.nan_to_num(totals.get("sulfate", np.zeros(rho.shape)))
     pair_k = {}
     for (metal, ligand), (k, z) in PAIRS.items():

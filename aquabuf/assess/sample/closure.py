@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 from aquabuf.assess.options import Options
 from aquabuf.assess.sample.inputs import PH_COLUMNS, Array, Values, alkalinity_reading, water_keywords
 from aquabuf.assess.sample.quality import ORGANIC_SITES_EQ_PER_MG, ORGANIC_TITRATED_EQ_PER_MG
+from aquabuf.assess.sample.solve import ph_columns, take_rows
 from aquabuf.chem.acids import Acid
 from aquabuf.engine.balance import protons_lost
 from aquabuf.engine.water import Water
@@ -42,18 +43,30 @@ class Closure:
         """The same for some of the rows."""
         return Closure(*(getattr(self, f.name)[rows] for f in fields(self)))
 
+    def put(self, rows: NDArray[np.intp], values: Closure) -> None:
+        """Fill some of the rows."""
+        for f in fields(self):
+            getattr(self, f.name)[rows] = getattr(values, f.name)
+
 
 def closure(values: Values, u: Values, acids: tuple[Acid, ...], options: Options) -> Closure:
     """Compare alkalinity with what the pH alone, and pH with carbon, ask for; nan where a reading is missing."""
+    n = values["temperature_c"].size
+    out = Closure(*(np.full(n, np.nan) for _ in range(2)), *(np.zeros(n, dtype=bool) for _ in range(2)),
+                  *(np.full(n, np.nan) for _ in range(2)))
+    column = ph_columns(values, n)
+    for name, scale in PH_COLUMNS.items():
+        rows = np.flatnonzero(column == name)
+        if rows.size and name in values:
+            out.put(rows, _of_one_scale(take_rows(values, rows), take_rows(u, rows), name, scale, acids, options))
+    return out
+
+
+def _of_one_scale(values: Values, u: Values, ph_column: str, scale: str, acids: tuple[Acid, ...], options: Options,
+                  ) -> Closure:
+    ph, ph_u = values[ph_column], u[ph_column]
+    missing = np.full(ph.shape, np.nan)
     alkalinity, source = alkalinity_reading(values)
-    missing = np.full(alkalinity.shape, np.nan)
-    ph, ph_u, scale = missing, missing, "meter"
-    for column, name in PH_COLUMNS.items():
-        if column in values and np.isnan(ph).all():
-            ph, ph_u, scale = values[column], u[column], name
-    if np.isnan(ph).all() or np.isnan(alkalinity).all():
-        never = np.zeros(alkalinity.shape, dtype=bool)
-        return Closure(missing, missing, never, never, missing, missing)
     keywords = water_keywords(values, acids, options.carbonic)
     t_ph = values.get("ph_temperature_c", missing)
     keywords["t_c"] = np.where(np.isfinite(t_ph), t_ph, keywords["t_c"])
@@ -64,8 +77,7 @@ def closure(values: Values, u: Values, acids: tuple[Acid, ...], options: Options
     doc = np.nan_to_num(values.get("doc_mg_l", missing))
     allowance = (2.0 * carbonate_u + ORGANIC_SITES_EQ_PER_MG * doc
                  + ALUMINUM_CHARGE * np.nan_to_num(values.get("aluminum_mol_l", missing)))
-    dic = values.get("dic_mol_l", missing)
-    dic_u = u.get("dic_mol_l", missing)
+    dic, dic_u = values.get("dic_mol_l", missing), u.get("dic_mol_l", missing)
     per_mole = protons_lost(bare.state.carbonate_fractions())
     with np.errstate(invalid="ignore"):
         doubt = 2.0 * carbonate_u + ORGANIC_TITRATED_EQ_PER_MG * doc

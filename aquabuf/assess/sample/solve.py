@@ -14,7 +14,7 @@ from aquabuf.chem.gases import pco2_of_air
 from aquabuf.engine.conditions import FRESH_BELOW
 from aquabuf.engine.water import Water
 
-__all__ = ["ALKALINITY_AIR", "NO_PAIR", "PAIRS", "PH_AIR", "air_pco2", "choose", "groups", "has", "take_rows",
+__all__ = ["ALKALINITY_AIR", "NO_PAIR", "PAIRS", "PH_AIR", "air_pco2", "choose", "groups", "has", "ph_columns", "take_rows",
            "water_of"]
 
 NO_PAIR = -1
@@ -81,15 +81,21 @@ def take_rows(values: Values, rows: NDArray) -> dict[str, Array]:
     return {name: v[rows] for name, v in values.items()}
 
 
-def groups(values: Values, choice: NDArray[np.int8]) -> Iterator[tuple[str, str, NDArray[np.intp]]]:
-    """Rows that are solved alike: pair, pH column and row numbers."""
-    salt = np.nan_to_num(values.get("salinity", np.zeros(choice.size))) >= FRESH_BELOW
-    column = np.full(choice.size, "ph", dtype="U12")
+def ph_columns(values: Values, rows: int) -> NDArray[np.str_]:
+    """pH column that counts in each row: the meter's first in fresh water, last in salt water."""
+    salt = np.nan_to_num(values.get("salinity", np.zeros(rows))) >= FRESH_BELOW
+    column = np.full(rows, "ph", dtype="U12")
     for which, order in ((~salt, ("ph", "ph_total", "ph_seawater", "ph_free")),
                          (salt, ("ph_total", "ph_seawater", "ph_free", "ph"))):
         for name in reversed(order):
             if name in values:
                 column[which & np.isfinite(values[name])] = name
+    return column
+
+
+def groups(values: Values, choice: NDArray[np.int8]) -> Iterator[tuple[str, str, NDArray[np.intp]]]:
+    """Rows that are solved alike: pair, pH column and row numbers."""
+    column = ph_columns(values, choice.size)
     for index, pair in enumerate(PAIRS):
         for name in PH_COLUMNS:
             rows = np.flatnonzero((choice == index) & (column == name))
