@@ -334,11 +334,15 @@ def test_uncalibrated_ph_is_found(results):
 
 
 def test_computed_ph_agrees_with_the_dye(results):
-    """pH from alkalinity and carbon is within 0.03 of the measured total-scale pH, but for the uncalibrated one."""
+    """pH from alkalinity and carbon fits the measured total-scale pH, but for the uncalibrated one.
+
+    0.09 is three standard deviations of two readings of 4 µmol/kg each, over the weakest buffer there, 0.13 meq/L per
+    pH, with 0.01 for the dye.
+    """
     table, given = by_id(results, ESTUARY), estuary()
     off = (table["ph_total"] - given["pHT"]).dropna().drop("A8_0.5")
     assert len(off) == 11
-    assert_allclose(off, 0.0, rtol=0, atol=0.03)
+    assert_allclose(off, 0.0, rtol=0, atol=0.09)
     assert given.loc["A8_0.5", "pHT"] - table.loc["A8_0.5", "ph_total"] > 0.1
 
 

@@ -105,7 +105,7 @@ PUBLIC_OF_WATER = {
     "options", "total_names", "total_mol_l", "species_mol_l", "charge_eq_l",
     "buffer_intensity_eq_l", "buffer_by_pair", "effective_ranges", "carrier", "weakest_buffering", "acid_to_ph_eq_l",
     "base_to_ph_eq_l", "curve", "after_acid", "at_pco2", "at_air", "at_temperature",
-    "saturation_index", "saturation_ratio", "precipitation_potential_mol_l", "ph_at_saturation",
+    "pco2_air_ratio", "saturation_index", "saturation_ratio", "precipitation_potential_mol_l", "ph_at_saturation",
 }
 
 

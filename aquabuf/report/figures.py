@@ -12,7 +12,7 @@ import pandas as pd
 from matplotlib.axes import Axes
 from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.figure import Figure
-from matplotlib.ticker import FuncFormatter, MaxNLocator
+from matplotlib.ticker import FuncFormatter, LogLocator, MaxNLocator, NullFormatter
 from numpy.typing import NDArray
 
 from aquabuf.assess.options import ALWAYS_ACID
@@ -27,6 +27,7 @@ CALM, WARNED, INK, FAINT = "#4a7ba6", "#c8553d", "#222222", "#b8b8b8"
 CURVE_COLORS = ("#c8553d", "#7a4e9e", "#2e7d6b", "#4a7ba6", "#9a6b1f", "#555555")
 BARS, CURVES = 12, 6
 MANY_POINTS = 3000  # beyond, points shrink and are drawn as pixels inside the vector file
+WIDE = 10.0          # ratio of highest to lowest from which an axis is logarithmic
 LINEAR_BELOW = 0.05  # meq/L, linear part of the alkalinity axis
 
 STYLE: Any = {
@@ -45,27 +46,39 @@ def _points(ax: Axes, x: NDArray, y: NDArray, warned: NDArray[np.bool_]) -> None
                        alpha=0.4 if many else 0.75, rasterized=many, label=f"{label} ({int(mask.sum()):,})")
 
 
-def plot_alkalinity(ph: NDArray, alkalinity_meq_l: NDArray, warned: NDArray[np.bool_], *, ax: Axes) -> Axes:
-    """pH against alkalinity [meq/L] on an axis that is linear near zero and logarithmic beyond."""
-    _points(ax, alkalinity_meq_l, ph, warned)
+def _alkalinity_scale(ax: Axes, low: float, high: float) -> None:
+    """Plain axis for waters alike, else one that is linear near zero and logarithmic beyond."""
+    if low > 0.0 and high < WIDE * low:
+        return
     ax.set_xscale("symlog", linthresh=LINEAR_BELOW, linscale=0.7)
-    low, high = np.nanmin(alkalinity_meq_l), np.nanmax(alkalinity_meq_l)
     ticks = [t for t in (-10, -1, -0.1, 0, 0.1, 1, 10, 100)
              if min(2.0 * low, 0.0) - LINEAR_BELOW <= t <= 3.0 * high + LINEAR_BELOW]
     ax.set_xticks(ticks, [f"{t:g}" for t in ticks])
     ax.minorticks_off()
     if low <= 0.0 <= high:
         ax.axvline(0.0, color=FAINT, lw=0.8, zorder=0)
+
+
+def plot_alkalinity(ph: NDArray, alkalinity_meq_l: NDArray, warned: NDArray[np.bool_], *, ax: Axes) -> Axes:
+    """pH against alkalinity [meq/L]."""
+    _points(ax, alkalinity_meq_l, ph, warned)
+    _alkalinity_scale(ax, float(np.nanmin(alkalinity_meq_l)), float(np.nanmax(alkalinity_meq_l)))
     ax.set(xlabel="Alkalinity [meq/L]", ylabel="pH", title="What the samples are")
-    ax.legend(loc="lower right")
+    ax.legend(loc="best")
     return ax
 
 
 def plot_buffering(ph: NDArray, buffer_meq_l_ph: NDArray, warned: NDArray[np.bool_], *, ax: Axes) -> Axes:
     """Closed buffer intensity [meq/L per pH] against pH."""
     _points(ax, ph, buffer_meq_l_ph, warned)
-    ax.set_yscale("log")
-    ax.yaxis.set_major_formatter(FuncFormatter(lambda v, _: f"{v:g}"))
+    low, high = float(np.nanmin(buffer_meq_l_ph)), float(np.nanmax(buffer_meq_l_ph))
+    if high >= WIDE * low:
+        ax.set_yscale("log")
+        ax.yaxis.set_major_locator(LogLocator(subs=(1.0, 2.0, 5.0)))
+        ax.yaxis.set_major_formatter(FuncFormatter(lambda v, _: f"{v:g}"))
+        ax.yaxis.set_minor_formatter(NullFormatter())
+    else:
+        ax.set_ylim(0.0, 1.1 * high)
     ax.set(xlabel="pH", ylabel="Buffer intensity, closed [meq/L per pH]", title="How strongly they resist pH change")
     return ax
 
@@ -98,8 +111,8 @@ def plot_curves(curves: pd.DataFrame, worst: pd.DataFrame, *, ax: Axes) -> Axes:
         added = curve["acid_added_meq_l"].to_numpy()
         ax.plot(added, curve["ph"], color=color, lw=1.5, label=str(sample["sample_id"])[:22])
         ax.plot(0.0, sample["ph"], "o", color=color, ms=4)
-        reach = max(reach, abs(sample[RANK_BY]), 2.0 * abs(sample["alkalinity_meq_l"]))
-    reach = max(0.1, min(1.5 * reach, 5.0))
+        reach = max(reach, 1.5 * abs(sample[RANK_BY]), 1.2 * abs(sample["alkalinity_meq_l"]))
+    reach = min(max(0.1, reach), 5.0)
     ax.axhline(ALWAYS_ACID, color=FAINT, lw=0.8, zorder=0)
     ax.axvline(0.0, color=FAINT, lw=0.8, zorder=0)
     ax.set(xlim=(-reach, reach), ylim=(3.5, 11.0), xlabel="Strong acid added [meq/L]  (left of 0: base)", ylabel="pH",

@@ -222,7 +222,6 @@ def test_a_row_is_assessed_as_if_alone(row):
             assert_allclose(there[name], value, rtol=1e-9, atol=1e-12, err_msg=name)
 
 
-@pytest.mark.xfail(strict=True, reason="closure takes one pH column for the whole table", raises=KeyError)
 def test_ph_columns_may_differ_from_row_to_row():
     """The acid water of above on the total scale beside a meter reading: still carbon from air, as when alone."""
     row = T | {"sample_id": "x", "ph_total": 4.9, "alkalinity_eq_l": -1.5e-5}

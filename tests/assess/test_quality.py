@@ -7,7 +7,7 @@ from sample_tables import assessed, readings
 
 from aquabuf.assess.options import Options
 from aquabuf.assess.sample.assess import assess
-from aquabuf.assess.sample.quality import file_check_rows, sample_checks, whole_counts
+from aquabuf.assess.sample.quality import file_check_rows, roundings, sample_checks
 from aquabuf.readings.schema import quantities
 from aquabuf.tables import read_table
 
@@ -196,11 +196,11 @@ def test_usual_ranges_are_those_of_the_column_table():
 
 def test_unmet_checks_only():
     """Long tables list the unmet ones; the counts stay."""
-    found = assessed(W | {"holding_days": 20.0})
-    short = assess(readings(W | {"holding_days": 20.0}), Options(draws=0), (), only_unmet_checks=True)
-    assert short.checks["check"].tolist() == ["holding time"]
+    found = assessed(W | {"holding_days": 14.0, "elevation_m": 5001.0})
+    short = assess(readings(W | {"holding_days": 14.0, "elevation_m": 5001.0}), Options(draws=0), (), only_unmet_checks=True)
+    assert short.checks["check"].tolist() == ["usual ranges"]
     assert short.made == found.made
-    assert short.unmet["holding time"] == 1
+    assert short.unmet["usual ranges"] == 1
     assert sum(short.unmet.values()) == 1
 
 
@@ -215,25 +215,51 @@ def test_checks_of_several_samples_stand_sample_by_sample():
 # ------------------------------------------------------------------ checks of the table as a whole
 
 
-@pytest.mark.parametrize(("column", "scale"), [
-    ("ph", 1.0), ("temperature_c", 1.0), ("alkalinity_eq_l", 1e-6), ("anc_eq_l", 1e-6), ("conductivity_us_cm", 1.0), ("dic_mol_l", 1e-6)])
-def test_whole_numbers_are_counted(column, scale):
-    """µeq/L and µmol/L are what rounded tables are written in."""
-    given = np.array([5.0, 6.0, 7.4, np.nan, 12.0]) * scale
-    assert whole_counts({column: given}) == {column: (3, 4)}
+def rounded(column, unit, in_house, u):
+    """Rounding of one column with these values [house unit] and one standard uncertainty."""
+    values = {column: np.array(in_house, dtype=float)}
+    return roundings(values, {column: np.full(len(in_house), u)}, {"header": (column, unit)})[column]
 
 
-@pytest.mark.parametrize(("count", "size", "met"), [(9, 10, "no"), (8, 10, "yes"), (9, 9, None), (90, 100, "no"), (89, 100, "yes")])
-def test_a_column_of_whole_numbers_was_rounded(count, size, met):
-    """From ten values on, 90 % whole is too many."""
-    table = file_check_rows({"ph": (count, size)}, 0).set_index("check")
+@pytest.mark.parametrize(("column", "unit", "scale"), [
+    ("ph", "-", 1.0), ("temperature_c", "°C", 1.0), ("alkalinity_eq_l", "µeq/L", 1e-6), ("anc_eq_l", "meq/L", 1e-3),
+    ("alkalinity_eq_l", "mg/L as CaCO3", 1.0 / 50043.0), ("conductivity_us_cm", "mS/cm", 1e3), ("dic_mol_l", "µmol/L", 1e-6)])
+def test_whole_numbers_are_counted_in_the_unit_of_the_file(column, unit, scale):
+    """Three of four; rounding to whole numbers has a standard uncertainty of one over sqrt(12) (even spread, closed form)."""
+    found = rounded(column, unit, np.array([5.0, 6.0, 7.4, np.nan, 12.0]) * scale, 0.1 * scale)
+    assert (found.whole, found.size) == (3, 4)
+    assert_allclose([found.error, found.stated], [scale / np.sqrt(12.0), 0.4 * scale], rtol=1e-4)
+
+
+def test_whole_temperatures_in_fahrenheit():
+    """59 and 68 °F are 15 and 20 °C; a step of 1 °F is 5/9 °C."""
+    found = rounded("temperature_c", "°F", [15.0, 20.0, 15.3], 0.2)
+    assert (found.whole, found.size) == (2, 3)
+    assert_allclose(found.error, 5.0 / 9.0 / np.sqrt(12.0), rtol=1e-9)
+
+
+@pytest.mark.parametrize(("whole", "size", "u", "met"), [
+    (9, 10, 0.05, "no"), (8, 10, 0.05, "yes"), (9, 9, 0.05, None), (90, 100, 0.28, "no"), (90, 100, 0.29, "yes"), (89, 100, 0.05, "yes")])
+def test_a_column_of_whole_numbers_was_rounded(whole, size, u, met):
+    """From ten values on, 90 % whole is too many where rounding (0.2887) outweighs the uncertainty."""
+    values = [7.0] * whole + [7.3] * (size - whole)
+    table = file_check_rows({"ph": rounded("ph", "-", values, u)}, 0).set_index("check")
     if met is None:
         assert "whole numbers" not in table.index
         return
     line = table.loc["whole numbers"]
-    assert (line["met"], line["unit"], line["limit"]) == (met, "%", "below 90")
-    assert_allclose(line["value"], 100.0 * count / size, rtol=1e-12)
+    assert (line["met"], line["unit"]) == (met, "%")
+    assert line["limit"].startswith("below 90 in ph")
+    assert_allclose(line["value"], 100.0 * whole / size, rtol=1e-12)
     assert line["remedy"] == ("" if met == "yes" else FACTS["whole numbers"]["remedy"] + ": ph")
+
+
+def test_rounding_adds_up_over_pieces():
+    """Two pieces of a column are one column."""
+    a, b = rounded("ph", "-", [7.0, 8.0], 0.05), rounded("ph", "-", [7.2, 8.0, 6.0], 0.1)
+    both = a.plus(b)
+    assert (both.size, both.whole) == (5, 4)
+    assert_allclose([both.error, both.stated], [1.0 / np.sqrt(12.0), 0.4], rtol=1e-12)
 
 
 @pytest.mark.parametrize(("count", "met"), [(0, "yes"), (2, "no")])

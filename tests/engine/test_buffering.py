@@ -153,6 +153,12 @@ def test_carrier_by_hand():
     assert (found.share[1:4] > 0.5).all()
 
 
+def test_base_to_acid_ratio_of_the_carrier():
+    """Henderson-Hasselbalch: half a unit above pKa there is 10^0.5 times more base than acid."""
+    water = Water.from_ph_dic(ph=[5.256, 4.256], dic_mol_l=0.0, acetate_mol_l=1e-2, t_c=25.0, ionic_strength_mol_l=0.0)
+    assert_allclose(water.carrier().base_acid_ratio, [10.0**0.5, 10.0**-0.5], rtol=1e-9)
+
+
 def test_what_is_left_of_the_carrier_by_hand():
     """Acetate 10 mM alone at pH = pKa: acid to pKa - 1 takes 1/2 - 1/11 = 9/22 of it, and the change of free H+."""
     water = Water.from_ph_dic(ph=4.756, dic_mol_l=0.0, acetate_mol_l=1e-2, t_c=25.0, ionic_strength_mol_l=0.0)
@@ -177,3 +183,14 @@ def test_meter_pka_carries_the_activity_coefficients():
     water = Water.from_ph_dic(ph=4.7, dic_mol_l=0.0, acetate_mol_l=1e-2, t_c=25.0, ionic_strength_mol_l=0.1)
     low, _, _ = water.effective_ranges()["CH3COOH/CH3COO-"]
     assert_allclose(low + 1.0, 4.756 - 0.1072 - 0.01, rtol=0, atol=2e-4)
+
+
+def test_meter_pka_in_sea_water():
+    """On the meter scale pK1 is the printed 5.8401 (seawater scale, Millero et al. 2006) + 0.147 (Takahashi, recalled)."""
+    water = Water.from_ph_dic(ph=[6.0], dic_mol_l=2e-3, t_c=25.0, salinity=35.0)
+    low, high, inside = water.effective_ranges()["CO2/HCO3-"]
+    assert_allclose([low, high], [[5.8401 + 0.1467 - 1.0], [5.8401 + 0.1467 + 1.0]], rtol=0, atol=3e-4)
+    assert inside.all()
+    carrier = water.carrier()
+    assert_allclose(carrier.pka, low + 1.0, rtol=0, atol=1e-12)
+    assert_allclose(carrier.acid_left, water.acid_to_ph_eq_l(float(low[0])), rtol=1e-9)

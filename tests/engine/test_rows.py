@@ -135,12 +135,13 @@ def test_status_of_a_row(changed, status):
     {"ph": 9.0, "alkalinity_eq_l": -1e-3}, {"ph": 5.0, "alkalinity_eq_l": -1e-3}, {"ph": 16.0, "dic_mol_l": 1e-3},
     {"ph": -2.0, "dic_mol_l": 1e-3}, {"ph": 7.0, "dic_mol_l": -1e-3}, {"ph": 7.0, "pco2_atm": -1e-3},
     {"dic_mol_l": 1e-6, "pco2_atm": 1.0}, {"alkalinity_eq_l": 1e-3, "pco2_atm": -1e-3},
+    {"ph": 7.0, "dic_mol_l": 1e-3, "phosphate_mol_l": -1e-6},
 ], ids=str)
 def test_pairs_no_water_can_have(values):
-    """Negative carbon or CO2, more CO2 than carbon, a pH off the scale: impossible, and no number is given."""
+    """Negative carbon, CO2 or phosphate, more CO2 than carbon, a pH off the scale: impossible, and no number is given."""
     maker = {frozenset(["ph", "alkalinity_eq_l"]): Water.from_ph_alkalinity, frozenset(["ph", "dic_mol_l"]): Water.from_ph_dic,
              frozenset(["ph", "pco2_atm"]): Water.from_ph_pco2, frozenset(["dic_mol_l", "pco2_atm"]): Water.from_dic_pco2,
-             frozenset(["alkalinity_eq_l", "pco2_atm"]): Water.from_alkalinity_pco2}[frozenset(values)]
+             frozenset(["alkalinity_eq_l", "pco2_atm"]): Water.from_alkalinity_pco2}[frozenset(values) - {"phosphate_mol_l"}]
     water = maker(**values, t_c=20.0)
     assert water.status == -1
     assert water.status_words == "no water has this pair of values"

@@ -14,8 +14,8 @@ from aquabuf.chem.gases import pco2_of_air
 from aquabuf.engine.conditions import FRESH_BELOW
 from aquabuf.engine.water import Water
 
-__all__ = ["ALKALINITY_AIR", "NO_PAIR", "PAIRS", "PH_AIR", "air_pco2", "choose", "groups", "has", "ph_columns", "take_rows",
-           "water_of"]
+__all__ = ["ALKALINITY_AIR", "NO_PAIR", "PAIRS", "PH_AIR", "air_pco2", "choose", "groups", "has", "ph_columns",
+           "take_rows", "water_of"]
 
 NO_PAIR = -1
 ALKALINITY_AIR, PH_AIR = "alkalinity and air", "pH and air"
