@@ -76,13 +76,22 @@ class System:
         d_deficit = self.c_h * h
         deficit = d_deficit + np.maximum(self.alkalinity, 0.0)
         for f in self.families:
-            if f.zero == 0 and len(f.k) == 1:
-                base = f.k[0] / (f.k[0] + h)
+            if len(f.k) > 1:
+                deficit, d_deficit = _add_polyprotic(f, inv, surplus, d_surplus, deficit, d_deficit)
+                continue
+            base = f.k[0] + h
+            np.divide(f.k[0], base, out=base)  # in place: temporaries are what this loop costs
+            if f.zero == 0:
                 part = f.total * base
                 surplus += part
-                d_surplus -= part * (1.0 - base)
+                np.subtract(1.0, base, out=base)
+                base *= part
+                d_surplus -= base
             else:
-                deficit, d_deficit = _add_polyprotic(f, inv, surplus, d_surplus, deficit, d_deficit)
+                part = f.total * (1.0 - base)
+                deficit = deficit + part
+                base *= part
+                d_deficit = d_deficit + base
         return surplus, deficit, d_surplus, d_deficit
 
     def _carbonate(self, inv: Array) -> tuple[Array, Array]:
@@ -100,20 +109,40 @@ class System:
 
 def _add_polyprotic(f: Family, inv: Array, surplus: Array, d_surplus: Array, deficit: Array, d_deficit: Array,
                     ) -> tuple[Array, Array]:
-    """Add an acid of several steps, or a strong one, to both sides; the surplus is changed in place."""
-    alpha = fractions(f.k, inv)
-    lost = protons_lost(alpha)
-    for j, a in enumerate(alpha):
-        if j == f.zero:
-            continue
-        part = (j - f.zero) * f.total * a
-        slope = part * (lost - j)
+    """Add an acid of several steps to both sides; the surplus is changed in place.
+
+    Forms weigh K1..Kj / h^j; a side is total times its weighted protons over all weights, and the slope of a weight
+    against ln h is -j times itself.
+    """
+    weight = f.k[0] * inv
+    whole, protons = 1.0 + weight, weight.copy()
+    above = above_lost = None
+    below, below_lost = float(f.zero), 0.0
+    for j in range(1, len(f.k) + 1):
+        if j > 1:
+            weight = weight * f.k[j - 1]
+            weight *= inv
+            whole += weight
+            protons += j * weight
         if j > f.zero:
-            surplus += part
-            d_surplus += slope
-        else:
-            deficit = deficit - part
-            d_deficit = d_deficit - slope
+            part = weight if j == f.zero + 1 else (j - f.zero) * weight
+            above = part.copy() if above is None else above + part
+            above_lost = j * part if above_lost is None else above_lost + j * part
+        elif j < f.zero:
+            below, below_lost = below + (f.zero - j) * weight, below_lost + (f.zero - j) * j * weight
+    np.divide(1.0, whole, out=whole)
+    protons *= whole          # mean protons lost
+    whole *= f.total          # total over the sum of weights
+    if f.zero:
+        deficit = deficit + whole * below
+        d_deficit = d_deficit + whole * (protons * below - below_lost)
+    if above is not None:
+        above *= whole
+        surplus += above
+        above *= protons
+        d_surplus += above
+        above_lost *= whole
+        d_surplus -= above_lost
     return deficit, d_deficit
 
 

@@ -20,12 +20,13 @@ __all__ = ["PH_HIGHEST", "PH_LOWEST", "SolveResult", "solve_h"]
 Array = NDArray[np.float64]
 
 PH_LOWEST, PH_HIGHEST = -1.0, 15.0  # a root outside is reported as no water at all
-BLOCK_ROWS = 8192                   # temporaries of one block stay in the processor's cache
+BLOCK_ROWS = 16_384                 # temporaries of one block stay in the processor's cache
 LN10 = float(np.log(10.0))
 BRACKET = (-22.0 * LN10, 6.0 * LN10)
 STEP_DONE = 3e-8                    # in ln h; the quadratic step after it is below rounding
 MAX_ITERATIONS = 120
-BARE_STEPS = 3                      # enough for nine waters in ten from the first guess
+BARE_STEPS = 3                      # enough for most waters from the first guess
+BARE_STEPS_WITH_ACIDS = 5           # the first guess knows carbonate and water only
 LARGEST_STEP = 12.0                 # of a bare step, in ln h
 PATIENCE = 8                        # guarded steps before a stalled row is halved instead
 
@@ -81,10 +82,11 @@ def _input_status(system: System) -> NDArray[np.int8]:
 def _solve_block(system: System) -> tuple[Array, NDArray[np.int16]]:
     """A few bare Newton steps for the whole block, then guarded ones for the rows that are not done."""
     h = _first_guess(system)
-    for _ in range(BARE_STEPS):
+    bare_steps = BARE_STEPS_WITH_ACIDS if system.families else BARE_STEPS
+    for _ in range(bare_steps):
         _, step = _newton_step(system, h)
         h = h * np.exp(np.clip(step, -LARGEST_STEP, LARGEST_STEP))
-    count = np.full(h.shape, BARE_STEPS, dtype=np.int16)
+    count = np.full(h.shape, bare_steps, dtype=np.int16)
     rest = np.flatnonzero(~(np.abs(step) < STEP_DONE))
     if rest.size:
         h[rest], more = _solve_guarded(system.take(rest), h[rest])
@@ -100,13 +102,13 @@ def _newton_step(system: System, h: Array) -> tuple[Array, Array]:
 
 
 def _solve_guarded(system: System, h: Array) -> tuple[Array, NDArray[np.int16]]:
-    """Newton inside a bracket that only shrinks; rows that are done leave the arithmetic."""
+    """Newton inside a bracket that only shrinks; a row's answer is the one of the step that ended it."""
     n = h.shape[0]
     x_out, count = np.full(n, np.nan), np.zeros(n, dtype=np.int16)
     rows = np.arange(n)
     x = np.clip(np.log(h), *BRACKET)
     low, high = np.full(n, BRACKET[0]), np.full(n, BRACKET[1])
-    last = np.full(n, np.inf)
+    last, done = np.full(n, np.inf), np.zeros(n, dtype=bool)
     for iteration in range(1, MAX_ITERATIONS + 1):
         gap, step = _newton_step(system, np.exp(x))
         too_low = gap > 0.0  # more base than the balance asks for: h must rise
@@ -118,14 +120,15 @@ def _solve_guarded(system: System, h: Array) -> tuple[Array, NDArray[np.int16]]:
         new = np.where(halve, 0.5 * (low + high), new)
         last = np.abs(new - x)
         x = new
-        done = last < STEP_DONE
-        if done.any():
-            x_out[rows[done]], count[rows[done]] = x[done], iteration
+        done |= last < STEP_DONE
+        fresh = done & (count[rows] == 0)
+        x_out[rows[fresh]], count[rows[fresh]] = x[fresh], iteration
+        if done.all():
+            break
+        if 2 * np.count_nonzero(done) > done.size:  # gathering costs as much as a step
             keep = np.flatnonzero(~done)
-            if not keep.size:
-                break
             system, rows = system.take(keep), rows[keep]
-            x, low, high, last = x[keep], low[keep], high[keep], last[keep]
+            x, low, high, last, done = x[keep], low[keep], high[keep], last[keep], done[keep]
     return np.exp(x_out), count
 
 

