@@ -116,8 +116,10 @@ def _add_polyprotic(f: Family, inv: Array, surplus: Array, d_surplus: Array, def
     """
     weight = f.k[0] * inv
     whole, protons = 1.0 + weight, weight.copy()
-    above = above_lost = None
-    below, below_lost = float(f.zero), 0.0
+    above: Array | float = 0.0
+    above_lost: Array | float = 0.0
+    below: Array | float = float(f.zero)
+    below_lost: Array | float = 0.0
     for j in range(1, len(f.k) + 1):
         if j > 1:
             weight = weight * f.k[j - 1]
@@ -126,23 +128,21 @@ def _add_polyprotic(f: Family, inv: Array, surplus: Array, d_surplus: Array, def
             protons += j * weight
         if j > f.zero:
             part = weight if j == f.zero + 1 else (j - f.zero) * weight
-            above = part.copy() if above is None else above + part
-            above_lost = j * part if above_lost is None else above_lost + j * part
+            above, above_lost = above + part, above_lost + j * part
         elif j < f.zero:
             below, below_lost = below + (f.zero - j) * weight, below_lost + (f.zero - j) * j * weight
-    np.divide(1.0, whole, out=whole)
-    protons *= whole          # mean protons lost
-    whole *= f.total          # total over the sum of weights
+    np.divide(1.0, whole, out=whole)  # in place: temporaries are what this costs
+    protons *= whole                  # mean protons lost
+    whole *= f.total                  # total over the sum of weights
     if f.zero:
         deficit = deficit + whole * below
         d_deficit = d_deficit + whole * (protons * below - below_lost)
-    if above is not None:
-        above *= whole
-        surplus += above
-        above *= protons
-        d_surplus += above
-        above_lost *= whole
-        d_surplus -= above_lost
+    if f.zero < len(f.k):
+        surplus += whole * above
+        protons *= above
+        protons -= above_lost
+        protons *= whole
+        d_surplus += protons
     return deficit, d_deficit
 
 

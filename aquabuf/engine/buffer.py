@@ -158,7 +158,8 @@ def weakest_buffering(state: State) -> Weakest:
     far, bottom = near.copy(), np.full(ph.shape, np.nan)
     slope_near = _intensity_slope(state, near)
     slope_far = slope_near.copy()
-    bottom[slope_near == 0.0] = near[slope_near == 0.0]
+    at_bottom = np.isfinite(ph) & (slope_near == 0.0)
+    bottom[at_bottom] = near[at_bottom]
     rows = np.flatnonzero(np.isfinite(ph) & (slope_near != 0.0))
     turned = []
     while rows.size:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Collection, Iterable
+from collections.abc import Callable, Collection, Iterable, Mapping
 from difflib import get_close_matches
 
 import numpy as np
@@ -33,7 +33,7 @@ def checked(value: str, allowed: Collection[str], subject: str, remedy: str) -> 
 
 
 def build_state(
-    known: dict[str, ArrayLike], ph_scale: str = "meter", *,
+    known: Mapping[str, ArrayLike], ph_scale: str = "meter", *,
     t_c: ArrayLike, salinity: ArrayLike = 0.0, ionic_strength_mol_l: ArrayLike | None = None,
     pressure_atm: ArrayLike = 1.0, acids: Iterable[Acid] = (), carbonic: str = "millero",
     boron_ratio: str = "uppstrom", **totals: ArrayLike,
@@ -54,7 +54,10 @@ def build_state(
                          f"length.") from None
 
     def flat(v: ArrayLike) -> Array:
-        return as_rows(v, shape).reshape(-1)
+        try:
+            return as_rows(v, shape).reshape(-1)
+        except (TypeError, ValueError):
+            raise InputError(f"every input must be a number or an array of numbers; found {v!r}. Correct it.") from None
 
     values = {n: flat(v) for n, v in known.items()}
     s, t, p = flat(salinity), flat(t_c), flat(pressure_atm)
@@ -93,12 +96,13 @@ def _sorted_totals(totals: dict[str, ArrayLike], own: tuple[Acid, ...]) -> tuple
 
 
 def _with_sea(name: str, given: Array, c: Conditions, boron_ratio: str) -> Array:
-    """A total with its gaps filled: from salinity in marine rows where sea salt brings it, else zero or unknown."""
+    """A total with its gaps filled from salinity in marine rows, if sea salt brings it; boron is 0 in fresh."""
     of_salt = {"boron": BORON_OF_SEAWATER[boron_ratio], "sulfate": seasalt.sulfate_of_seawater,
                "fluoride": seasalt.fluoride_of_seawater, "calcium": seasalt.calcium_of_seawater}
-    fill = np.full(given.shape, np.nan if name in IONS else 0.0)
-    if name in of_salt:
-        fill = np.where(c.is_marine, of_salt[name](c.salinity) * c.density_kg_l, fill)
+    if name not in of_salt:
+        return given
+    in_fresh = np.nan if name in IONS else 0.0
+    fill = np.where(c.is_marine, of_salt[name](c.salinity) * c.density_kg_l, in_fresh)
     return np.where(np.isnan(given), fill, given)
 
 

@@ -100,15 +100,17 @@ def conditions(
 ) -> Conditions:
     """Constants at the given temperature [°C], practical salinity, ionic strength [mol/L] and air pressure [atm].
 
+    Scalars give scalars.
     Salinity from 1 on fixes the ionic strength; the one given counts for fresh rows only. Sulfate and fluoride
     (nan: from salinity) set the pH scales of marine rows. `carbonic` names the marine set of K1 and K2.
-    Rows outside the ranges in `LIMITS` are flagged or refused by their `status`, never raised.
+    Rows outside the ranges in `LIMITS` are flagged or refused by their `status`, never raised; refused rows are nan.
     Raises InputError for an unknown `carbonic`.
     """
     if carbonic not in CARBONIC_SETS:
         raise InputError(f"carbonic must be one of {', '.join(CARBONIC_SETS)}; found {carbonic!r}. "
                          f"Leave it out for 'millero'.")
     shape = common_shape(t_c, salinity, ionic_strength_mol_l, pressure_atm, sulfate_mol_l, fluoride_mol_l)
+    one, shape = shape == (), shape or (1,)
     t, s, i_given, p = (as_rows(v, shape) for v in (t_c, salinity, ionic_strength_mol_l, pressure_atm))
     status = _row_status(t, s, i_given, p, carbonic)
     bad = status < 0
@@ -130,12 +132,15 @@ def conditions(
                     lambda r: _carbonic_sea(carbonic, 2, t[r], s[r], total[r]))
     k_w = _by_regime(is_marine, lambda r: fresh.k_water(t[r]) / gamma_1[r], lambda r: marine.k_water_sea(t[r], s[r]))
     k_0 = _by_regime(is_marine, lambda r: fresh.k_henry_co2(t[r]) / gamma_0[r], lambda r: marine.k0_co2(t[r], s[r]))
-    return Conditions(
-        t_c=t, salinity=s, ionic_strength_mol_l=i, pressure_atm=p, is_marine=is_marine, density_kg_l=rho,
-        free_per_h=free, total_per_h=total, activity_per_h=act,
-        c_h=free * rho, c_oh=k_w * rho, k0=k_0 * gases.co2_fugacity_ratio(t, p) * rho, k1=k1, k2=k2,
-        status=status, debye_huckel_a=a,
-    )
+    found: dict[str, Any] = {
+        "t_c": t, "salinity": s, "ionic_strength_mol_l": i, "pressure_atm": p, "density_kg_l": rho,
+        "free_per_h": free, "total_per_h": total, "activity_per_h": act, "c_h": free * rho, "c_oh": k_w * rho,
+        "k0": k_0 * gases.co2_fugacity_ratio(t, p) * rho, "k1": k1, "k2": k2, "debye_huckel_a": a,
+    }
+    if bad.any():  # what was put in for the arithmetic must not be taken for an answer
+        found = {name: np.where(bad, np.nan, v) for name, v in found.items()}
+    found |= {"is_marine": is_marine, "status": status}
+    return Conditions(**({name: v.reshape(()) for name, v in found.items()} if one else found))
 
 
 def _row_status(t: Array, s: Array, i: Array, p: Array, carbonic: str) -> NDArray[np.int8]:

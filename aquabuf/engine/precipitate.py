@@ -36,12 +36,14 @@ PAIRS = {  # metal, ligand: constant, charge of the pair
 }
 CHARGE = {"calcium": 2, "magnesium": 2, "sodium": 1, "potassium": 1, "bicarbonate": -1, "carbonate": -2, "sulfate": -2}
 PAIR_TOLERANCE = 1e-11  # relative change of free calcium
-PAIR_ROUNDS = 100
+PAIR_ROUNDS = 200
+DAMP_FROM = 15           # rounds after which strongly paired waters are damped so that they settle
 FIRST_TOLERANCE = 1e-5  # of the saturation index while the spectators are still held
 ROOT_TOLERANCE = 1e-10  # of the pH once they follow
 SLOPE_STEP = 1e-4       # of pH
 ROOT_ROUNDS = 80
 SEARCH_PH = (1.0, 14.0)
+ROUNDING = 1e-9         # of alkalinity; carbonate below it is the difference of two equal numbers
 NOTHING = 1e-30         # mol/L; stands for "none left" under a logarithm
 
 
@@ -99,17 +101,19 @@ def pairing(state: State) -> Pairing:
     calcium = state.ions.get("calcium", np.full(state.h.shape, np.nan))
     other_alk = alkalinity_at(state.system(dic=np.zeros(state.h.shape)), state.h)
     with np.errstate(invalid="ignore"):
-        rows = np.flatnonzero((calcium > 0.0) & (state.alkalinity - other_alk > 0.0))
+        carbonate_alk = state.alkalinity - other_alk
+        some = carbonate_alk > ROUNDING * (np.abs(state.alkalinity) + np.abs(other_alk))
+        rows = np.flatnonzero((calcium > 0.0) & np.isfinite(calcium) & some)
     s, h = _solution(state).take(rows), state.h[rows]
-    amount = (state.alkalinity - other_alk)[rows]
+    amount = carbonate_alk[rows]
     n = rows.size
     out = Pairing(state, rows, s, _Spectators({m: np.zeros(n) for m in s.metals if m != "calcium"}, np.zeros(n)),
                   *(np.full(n, np.nan) for _ in range(3)))
     active, now = np.arange(n), _Spectators({m: v for m, v in s.metals.items() if m != "calcium"}, s.sulfate)
     before = np.full(n, np.inf)
-    for _ in range(PAIR_ROUNDS):
+    for turn in range(PAIR_ROUNDS):
         free_calcium, bicarbonate, dic = _calcium_and_carbonate(s, h, amount, now, 0.0, 2.0, None)
-        now = _follow(s, h, free_calcium, bicarbonate, now)
+        now = _follow(s, h, free_calcium, bicarbonate, now, damped=turn >= DAMP_FROM)
         settled = np.abs(free_calcium - before) <= PAIR_TOLERANCE * free_calcium
         if settled.any():
             done = active[settled]
@@ -129,15 +133,19 @@ def _solution(state: State) -> _Solution:
     gamma = _gammas(state)
     rho, is_fresh = c.density_kg_l, ~c.is_marine
     totals = {d.acid.name: d.total for d in state.acids}
-    metals = {m: np.nan_to_num(state.ions.get(m, np.zeros(rho.shape))) for m in METALS
-              if m in state.ions or m == "calcium"}
-    sulfate = np.nan_to_num(totals.get("sulfate", np.zeros(rho.shape)))
+    metals = {m: _known(state.ions.get(m, np.zeros(rho.shape))) for m in METALS if m in state.ions or m == "calcium"}
+    sulfate = _known(totals.get("sulfate", np.zeros(rho.shape)))
     pair_k = {}
     for (metal, ligand), (k, z) in PAIRS.items():
         if metal in metals:
             strength = gamma[CHARGE[metal]] * gamma[-CHARGE[ligand]] / gamma[abs(z)]
             pair_k[metal, ligand] = np.where(is_fresh, k(c.t_c) * strength / rho, 0.0)
     return _Solution(pair_k, metals, sulfate, c.k1, c.k2)
+
+
+def _known(total: Array) -> Array:
+    """A total with zero where it is not known; pairs of an unknown ion cannot be counted."""
+    return np.where(np.isfinite(total), total, 0.0)
 
 
 def _gammas(state: State) -> dict[int, Array]:
@@ -163,11 +171,16 @@ def solubility_ratio(state: State, mineral: str, other: str) -> Array:
     return _solubility(state, mineral) / _solubility(state, other)
 
 
-def _follow(s: _Solution, h: Array, calcium: Array, bicarbonate: Array, now: _Spectators) -> _Spectators:
-    """Spectators in balance with the given free calcium and bicarbonate, one round."""
+def _follow(s: _Solution, h: Array, calcium: Array, bicarbonate: Array, now: _Spectators, *, damped: bool,
+            ) -> _Spectators:
+    """Spectators in balance with the given free calcium and bicarbonate, one round; damped: half the way there."""
     ligands = {"bicarbonate": bicarbonate, "carbonate": s.k2 / h * bicarbonate, "sulfate": now.sulfate}
     metals = {m: s.metals[m] / _bound(s, ligands, metal=m) for m in now.metals}
-    return _Spectators(metals, s.sulfate / _bound(s, metals | {"calcium": calcium}, ligand="sulfate"))
+    sulfate = s.sulfate / _bound(s, metals | {"calcium": calcium}, ligand="sulfate")
+    if damped:
+        metals = {m: 0.5 * (v + now.metals[m]) for m, v in metals.items()}
+        sulfate = 0.5 * (sulfate + now.sulfate)
+    return _Spectators(metals, sulfate)
 
 
 def _calcium_and_carbonate(
@@ -238,11 +251,11 @@ def precipitation_potential(pairs: Pairing, mineral: str = "calcite") -> tuple[A
     active = np.flatnonzero(found)
     path, x_now = path.take(active), x[active]
     slope = (path.index(x_now + SLOPE_STEP) - path.index(x_now)) / SLOPE_STEP
-    for _ in range(PAIR_ROUNDS):
-        index, carbon, path = path.followed(x_now)
+    for turn in range(PAIR_ROUNDS):
+        index, carbon, path = path.followed(x_now, damped=turn >= DAMP_FROM)
         step = index / slope
         x_now = x_now - step
-        settled = np.abs(step) < ROOT_TOLERANCE
+        settled = (np.abs(step) < ROOT_TOLERANCE) & (turn > 0)  # the first turn still has the spectators of the start
         done = active[settled]
         x[done], dic[done] = x_now[settled], carbon[settled]
         keep = np.flatnonzero(~settled)
@@ -285,10 +298,10 @@ class _Path:
     def _index_of(self, calcium: Array, bicarbonate: Array, x: Array) -> Array:
         return np.log10(calcium * self.solution.k2 / self.ksp * bicarbonate) + x
 
-    def followed(self, x: Array) -> tuple[Array, Array, _Path]:
+    def followed(self, x: Array, *, damped: bool) -> tuple[Array, Array, _Path]:
         """Saturation index and total carbon at `x`, and the path with the spectators in balance there."""
         calcium, bicarbonate, dic = self.at(x)
-        now = _follow(self.solution, 10.0**-x, calcium, bicarbonate, self.spectators)
+        now = _follow(self.solution, 10.0**-x, calcium, bicarbonate, self.spectators, damped=damped)
         return self._index_of(calcium, bicarbonate, x), dic, replace(self, spectators=now)
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from typing import Any
 
 import numpy as np
@@ -34,7 +35,7 @@ class Water:
     ionic_strength_mol_l : of fresh rows; without it the larger of what salinity and alkalinity imply. [mol/L]
     pressure_atm : air pressure. [atm]
     <acid>_mol_l : total of a weak acid of the shipped table or of `acids`, such as phosphate_mol_l. Boron, sulfate
-        and fluoride that are not given (or nan) come from salinity in marine rows. [mol/L]
+        and fluoride that are not given (or nan) come from salinity in marine rows and are zero in fresh ones. [mol/L]
     calcium_mol_l, magnesium_mol_l, sodium_mol_l, potassium_mol_l : for calcium carbonate. Calcium from salinity in
         marine rows where not given. [mol/L]
     acids : the user's own `Acid` records.
@@ -50,7 +51,7 @@ class Water:
         self._options = options
 
     @classmethod
-    def _make(cls, known: dict[str, ArrayLike], ph_scale: str = "meter", **water: Any) -> Water:
+    def _make(cls, known: Mapping[str, ArrayLike], ph_scale: str = "meter", **water: Any) -> Water:
         return cls(*build_state(known, ph_scale, **water))
 
     # ---------------------------------------------------------------- making one
@@ -157,9 +158,17 @@ class Water:
         return self.pco2_atm / self._air_pco2(co2_ppm)
 
     def _air_pco2(self, co2_ppm: ArrayLike) -> Array:
-        c = self._state.conditions
-        ppm = as_rows(co2_ppm, self._shape).reshape(-1)
-        return self._out(gases.pco2_of_air(ppm, c.t_c, c.pressure_atm, c.salinity))
+        return gases.pco2_of_air(self._numbers(co2_ppm, "co2_ppm"), self.t_c, self.pressure_atm, self.salinity)
+
+    def _numbers(self, value: ArrayLike, name: str) -> Array:
+        """`value` as numbers that broadcast with this water. Raises InputError otherwise."""
+        try:
+            numbers = np.asarray(value, dtype=float)
+            np.broadcast_shapes(numbers.shape, self._shape)
+        except (TypeError, ValueError):
+            raise InputError(f"{name} and the water must be numbers that broadcast to one shape; the water has "
+                             f"{self._shape}, found {value!r}. Give one value, or one per row.") from None
+        return numbers
 
     @property
     def t_c(self) -> Array:
@@ -279,7 +288,11 @@ class Water:
             return None
         if pco2_atm is None:
             return self._state.co2
-        return as_rows(pco2_atm, self._shape).reshape(-1) * self._state.conditions.k0
+        held = self._numbers(pco2_atm, "pco2_atm")
+        if np.broadcast_shapes(held.shape, self._shape) != self._shape:
+            raise InputError(f"pco2_atm and the water must have one shape; the water has {self._shape}, found "
+                             f"{held.shape}. Make the water with one row per pressure.")
+        return as_rows(held, self._shape).reshape(-1) * self._state.conditions.k0
 
     def curve(self, ph: ArrayLike, exchange: Exchange = "closed", *, pco2_atm: ArrayLike | None = None,
               ) -> tuple[Array, Array]:
@@ -297,14 +310,15 @@ class Water:
     def after_acid(self, acid_eq_l: ArrayLike, exchange: Exchange = "closed", *,
                    pco2_atm: ArrayLike | None = None) -> Water:
         """The water after strong acid (negative: base) that adds no carbon; ionic strength and volume are held."""
-        alk = self.alkalinity_eq_l - np.asarray(acid_eq_l, dtype=float)
+        alk = self.alkalinity_eq_l - self._numbers(acid_eq_l, "acid_eq_l")
         if _checked_exchange(exchange) == "closed":
             return self._again({"alkalinity": alk, "dic": self.dic_mol_l})
-        return self._again({"alkalinity": alk, "pco2": self.pco2_atm if pco2_atm is None else pco2_atm})
+        held = self.pco2_atm if pco2_atm is None else self._numbers(pco2_atm, "pco2_atm")
+        return self._again({"alkalinity": alk, "pco2": held})
 
     def at_pco2(self, pco2_atm: ArrayLike) -> Water:
         """The water after it has come to equilibrium with a CO2 pressure [atm]; alkalinity stays."""
-        return self._again({"alkalinity": self.alkalinity_eq_l, "pco2": pco2_atm})
+        return self._again({"alkalinity": self.alkalinity_eq_l, "pco2": self._numbers(pco2_atm, "pco2_atm")})
 
     def at_air(self, co2_ppm: ArrayLike = gases.AIR_CO2_PPM) -> Water:
         """The water in equilibrium with air of `co2_ppm` (dry mole fraction) at its own pressure and temperature."""
@@ -312,16 +326,19 @@ class Water:
 
     def at_temperature(self, t_c: ArrayLike) -> Water:
         """The closed sample at another temperature: amounts per kilogram stay, pH and CO2 pressure follow. [°C]"""
-        c = self._state.conditions
-        new = conditions(as_rows(t_c, self._shape).reshape(-1), c.salinity, 0.0)
-        ratio = self._out(new.density_kg_l / c.density_kg_l)
+        t = self._numbers(t_c, "t_c")
+        shape = np.broadcast_shapes(t.shape, self._shape)
+        new = conditions(as_rows(t, shape).reshape(-1), as_rows(self.salinity, shape).reshape(-1))
+        ratio = new.density_kg_l.reshape(shape) / self.density_kg_l
         water = {n: v * ratio if n.endswith(SUFFIX) else v for n, v in self._given().items()}
         known = {"alkalinity": self.alkalinity_eq_l * ratio, "dic": self.dic_mol_l * ratio}
-        return self._make(known, **(self._options | water | {"t_c": t_c}))
+        return self._make(known, **(self._options | water | {"t_c": t}))
 
-    def _again(self, known: dict[str, ArrayLike]) -> Water:
-        """Another pair for the same totals and conditions."""
+    def _again(self, known: Mapping[str, ArrayLike]) -> Water:
+        """Another pair for the same totals and conditions; one water becomes many where the pair has many rows."""
         s = self._state
+        if np.broadcast_shapes(self._shape, *(np.shape(v) for v in known.values())) != self._shape:
+            return self._make(known, **(self._options | self._given()))
         flat = {name: as_rows(v, self._shape).reshape(-1) for name, v in known.items()}
         return type(self)(solve_pair(flat, s.conditions, s.acids, s.ions), self._shape, self._options)
 

@@ -26,6 +26,7 @@ Array = NDArray[np.float64]
 Values = Mapping[str, Array]
 
 PH_COLUMNS = {"ph": "meter", "ph_total": "total", "ph_seawater": "seawater", "ph_free": "free"}
+NAN_HAS_MEANING = (*IONS, "boron", "sulfate", "fluoride")  # to the engine; other acids not measured count as none
 MAJOR_IONS = ("calcium", "magnesium", "sodium", "chloride", "sulfate")  # needed before ions give ionic strength
 STRENGTH_PER_CONDUCTIVITY = 1.6e-5  # mol/L per µS/cm at 25 °C; Russell 1976 (recalled)
 STRENGTH_PER_TDS = 2.5e-5           # mol/L per mg/L; Langelier 1936
@@ -123,6 +124,7 @@ def water_keywords(values: Values, acids: tuple[Acid, ...], carbonic: str) -> di
     """Keywords for a `Water` beside its pair: conditions, weak acids and ions found in the readings."""
     names = [a.name for a in acids] + list(acid_table()) + list(IONS)
     totals = {f"{n}_mol_l": values[f"{n}_mol_l"] for n in names if f"{n}_mol_l" in values}
+    totals = {n: v if n.removesuffix("_mol_l") in NAN_HAS_MEANING else np.nan_to_num(v) for n, v in totals.items()}
     return totals | {
         "t_c": values["temperature_c"], "salinity": np.nan_to_num(_get(values, "salinity", values["temperature_c"])),
         "ionic_strength_mol_l": ionic_strength(values)[0], "pressure_atm": pressure(values),
