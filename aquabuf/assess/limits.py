@@ -18,6 +18,7 @@ __all__ = ["OPERATORS", "Limit", "read_limits", "shipped_limits", "verdicts"]
 
 OPERATORS: Mapping[str, Callable] = {"<": operator.lt, "<=": operator.le, ">": operator.gt, ">=": operator.ge}
 ANY = "any"
+EDGE = 1e-9  # relative distance below which a value is taken to be the limit itself
 UNSTATED = "unstated"  # kind of water not given in the readings
 _FILE_KEYS = {"quantity", "operator", "limit", "lower", "unit", "kinds", "regimes", "group", "words", "next_step",
               "source"}
@@ -47,12 +48,14 @@ class Limit:
     def rule(self) -> str:
         """The rule in one line."""
         floor = "" if np.isneginf(self.lower) else f" (and at least {self.lower:g})"
-        return f"{self.quantity} {self.operator} {self.limit:g} {self.unit}{floor}"
+        unit = "" if self.unit == "-" else f" {self.unit}"
+        return f"{self.quantity} {self.operator} {self.limit:g}{unit}{floor}"
 
     def met(self, value: NDArray) -> NDArray[np.bool_]:
         """Where the rule holds; never where the value is missing."""
+        on_edge = np.isclose(value, self.limit, rtol=EDGE, atol=EDGE * EDGE)  # rounding must not break a limit
         with np.errstate(invalid="ignore"):
-            return OPERATORS[self.operator](value, self.limit) & (value >= self.lower)
+            return OPERATORS[self.operator](np.where(on_edge, self.limit, value), self.limit) & (value >= self.lower)
 
     def applies(self, kind: NDArray, regime: NDArray) -> NDArray[np.bool_]:
         """Samples whose kind and regime this limit is for."""

@@ -8,6 +8,8 @@ unlisted = "ignore"                       headers not named below: "read" (defau
 sample_id = ["site_id", "date"]           joined with "_"
 [values]
 temperature_c = 22                        the same for every row
+[fill]
+temperature_c = 15                        only where a row has none; such rows are noted
 [read]
 delimiter, decimal, encoding, missing, date_order
 [acids.NAME]
@@ -32,7 +34,7 @@ from aquabuf.units import key
 
 __all__ = ["TableMap", "read_map"]
 
-_SECTIONS = ("unlisted", "columns", "compose", "values", "read", "acids")
+_SECTIONS = ("unlisted", "columns", "compose", "values", "fill", "read", "acids")
 _READ_KEYS = ("delimiter", "decimal", "encoding", "missing", "date_order")
 _COLUMN_KEYS = ("is", "unit", "multiply", "negative")
 _ACID_KEYS = ("pk", "charge", "dh_j_mol", "dcp_j_mol_k", "molar_mass_g")
@@ -48,6 +50,7 @@ class TableMap:
     columns: Mapping[str, Column | None] = field(default_factory=dict)  # by header in the file; None = ignore
     compose: tuple[str, ...] = ()  # headers that make the sample_id
     values: tuple[tuple[Column, str | float], ...] = ()  # the same for every row
+    fill: tuple[tuple[Column, float], ...] = ()  # numbers for rows that have none
     delimiter: str = ""
     decimal: str = ""
     encoding: str = ""
@@ -163,6 +166,21 @@ def _values(
     return tuple(found)
 
 
+def _fill(
+    place: _Place, entries: Mapping[str, Any], index: Mapping[str, tuple[Quantity, str]]
+) -> tuple[tuple[Column, float], ...]:
+    """Numbers of [fill], in the unit that their name states."""
+    found = []
+    for name, value in entries.items():
+        column = _header(place, f"[fill] {name!r}", name, index)
+        if not column.quantity.is_number or not _is_number(value):
+            raise place.error(f"[fill] {name!r}", f"must be a number for a column of numbers; found {value!r}.")
+        if column.unit is not None and column.unit.per_kg:
+            raise place.error(f"[fill] {name!r}", "cannot be per kilogram of water. Use a unit per liter.")
+        found.append((column, float(value)))
+    return tuple(found)
+
+
 def _read_options(place: _Place, entry: Mapping[str, Any]) -> dict[str, Any]:
     """Options of [read], checked."""
     place.known("[read]", entry, _READ_KEYS)
@@ -219,6 +237,7 @@ def read_map(path: str | Path) -> TableMap:
         columns={header: _column(place, header, value, index) for header, value in parts["columns"].items()},
         compose=tuple(compose),
         values=_values(place, parts["values"], index),
+        fill=_fill(place, parts["fill"], index),
         acids=acids,
         index=index,
         **_read_options(place, parts["read"]),

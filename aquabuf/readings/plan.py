@@ -55,6 +55,7 @@ def _meanings(names: Sequence[str], table_map: TableMap) -> tuple[list[tuple[int
         else:
             found.append((at, column))
     if errors:
+        errors.append("What headers mean can be said in a map file: `aquabuf template map` starts one, --map takes it.")
         raise HeaderError("\n".join(errors))
     return found, ignored
 

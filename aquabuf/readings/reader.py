@@ -67,6 +67,8 @@ def _fill_sheet(sheet: Sheet, records: list[list[str]], plan: Plan, table_map: T
             sheet.take_words(column, cells)
         elif not column.unit.per_kg:
             sheet.take_numbers(column, cells)
+    for column, number in table_map.fill:
+        sheet.fill(column, number)
     density = density_kg_l(sheet, per_kg[0][0].name) if per_kg else None
     for column, cells in per_kg:
         sheet.take_numbers(column, cells, density)

@@ -10,12 +10,12 @@ import pandas as pd
 
 from aquabuf.readings.schema import schema_order
 
-__all__ = ["FLAG_COLUMNS", "REJECTED_COLUMNS", "Readings", "UserAcid", "join_readings"]
+__all__ = ["FLAG_COLUMNS", "REJECTED_COLUMNS", "Readings", "UserAcid", "join_readings", "notes_on_file"]
 
 REJECTED_COLUMNS = ("row", "sample_id", "column", "value", "rule", "remedy")
 FLAG_COLUMNS = ("row", "sample_id", "column", "value", "what")
 _NOT_IN_SCHEMA = ("row", "date_parsed")
-BELOW_DETECTION = "below detection"
+BELOW_DETECTION = "below detection, half the limit used"
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -61,12 +61,17 @@ def flag_notes(flags: pd.DataFrame) -> list[str]:
     return notes
 
 
+def notes_on_file(readings: Readings) -> tuple[str, ...]:
+    """The notes that are about the file, not about single cells."""
+    about_cells = set(flag_notes(readings.flags))
+    return tuple(note for note in readings.notes if note not in about_cells)
+
+
 def join_readings(parts: Iterable[Readings]) -> Readings:
     """The chunks of one file as a whole; notes on single cells are counted anew."""
     parts = list(parts)
     flags = pd.concat([part.flags for part in parts], ignore_index=True)
-    counted = {note for part in parts for note in flag_notes(part.flags)}
-    about_file = dict.fromkeys(note for part in parts for note in part.notes if note not in counted)
+    about_file = dict.fromkeys(note for part in parts for note in notes_on_file(part))
     frame = pd.concat([part.frame for part in parts], ignore_index=True)
     order = schema_order(name for name in frame.columns if name not in _NOT_IN_SCHEMA)
     if "date" in order:

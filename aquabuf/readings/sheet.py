@@ -17,6 +17,7 @@ __all__ = ["Sheet"]
 
 RECTANGLE_SIGMA = 1.0 / (2.0 * math.sqrt(3.0))  # standard deviation of 0..1, evenly likely
 _SLACK = 1e-9  # relative, so that a limit converted from the file's unit still passes
+FILLED = "missing, filled from the map file"
 _UNREAD_DATE = "date not understood or with two readings (date_order in a map file says which number is the month)"
 
 
@@ -102,6 +103,13 @@ class Sheet:
         self._check_limits(column, cells, house)
         kept = self.numbers.get(column.name)  # an uncertainty may be there from a detection limit
         self.numbers[column.name] = house if kept is None else np.where(np.isnan(kept), house, kept)
+
+    def fill(self, column: Column, value: float) -> None:
+        """A number, in the unit of the column, for the rows that have none."""
+        given = self.numbers.get(column.name, np.full(len(self), np.nan))
+        missing = np.isnan(given)
+        self.numbers[column.name] = np.where(missing, value * column.scale + column.offset, given)
+        self.flag(missing, column.name, None, FILLED)
 
     def _halve(self, column: Column, cells: Sequence[str], house: np.ndarray, at: np.ndarray) -> None:
         """Below detection: half the limit, with the spread of a value evenly likely from 0 to the limit."""

@@ -16,7 +16,7 @@ from matplotlib.ticker import FuncFormatter, LogLocator, MaxNLocator, NullFormat
 from numpy.typing import NDArray
 
 from aquabuf.assess.options import ALWAYS_ACID
-from aquabuf.assess.sample.curves import RANK_BY
+from aquabuf.assess.sample.headline import RANK_BY
 from aquabuf.assess.uncertainty import COVERAGE
 from aquabuf.report.tally import Tally
 

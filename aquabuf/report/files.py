@@ -26,8 +26,10 @@ class OutputFolder:
         self._names = tuple(names)
         self._force = force
         self._parts: dict[str, Path] = {}
+        self._was_there = True
 
     def __enter__(self) -> OutputFolder:
+        self._was_there = self.folder.exists()
         try:
             self.folder.mkdir(parents=True, exist_ok=True)
         except OSError as error:
@@ -69,6 +71,8 @@ class OutputFolder:
         if kind is not None:
             for path in self._parts.values():
                 path.unlink(missing_ok=True)
+            if not self._was_there and not any(self.folder.iterdir()):
+                self.folder.rmdir()
             return
         for name in self._names:
             if name not in self._parts:

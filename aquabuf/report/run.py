@@ -75,9 +75,9 @@ def assess_file(path: Path, folder: Path, options: Options, *, mapping: Path | N
         out.part("run.json").write_text(json.dumps(record, indent=1, ensure_ascii=False) + "\n", encoding="utf-8")
         written = [name for name in OUTPUT_FILES if name in out.written]
     if not tally.assessed:
-        rule, count = tally.refusal_rules.most_common(1)[0]
-        raise InputError(f"no row of {path.name} can be assessed; {len(tally.refused_rows)} were refused, mostly since "
-                         f"{rule} ({count} x). rejected.csv in {folder.name} names row, column, value and remedy.")
+        (column, rule), count = tally.refusal_rules.most_common(1)[0]
+        raise InputError(f"no row of {path.name} can be assessed; {len(tally.refused_rows)} were refused, mostly for "
+                         f"{column}: {rule} ({count} x). rejected.csv in {folder.name} names each with its remedy.")
     return summary_text(tally, options, rules, source=path.name, files=written)
 
 
@@ -121,6 +121,8 @@ def _draw(tally: Tally, curves: pd.DataFrame, out: OutputFolder, source: str) ->
 
 def _sha256(path: Path) -> str:
     """Hash of a file. Raises FileError where it cannot be read."""
+    if path.is_dir():
+        raise FileError(f"{path.name} is a folder; a file is needed. Name the file in it.")
     try:
         with path.open("rb") as stream:
             return hashlib.file_digest(stream, "sha256").hexdigest()
@@ -154,5 +156,5 @@ def _record(name: str, hashes: Mapping[str, str], options: Options, limits: tupl
         "constants": [dict(row) for row in read_table("constants") if row["regime"] in regimes],
         "limits": [{"name": x.name, "rule": x.rule(), "kinds": list(x.kinds), "regimes": list(x.regimes),
                     "source": x.source} for x in limits],
-        "notes": list(tally.notes),
+        "notes": [*tally.notes, *(f"{count} x {what}: {column}" for (what, column), count in tally.flags.items())],
     }

@@ -9,8 +9,7 @@ import pandas as pd
 
 from aquabuf.assess.limits import UNSTATED, Limit
 from aquabuf.assess.options import Options
-from aquabuf.assess.sample.curves import RANK_BY
-from aquabuf.assess.sample.headline import TEST_ACID_EQ_L
+from aquabuf.assess.sample.headline import RANK_BY, TEST_ACID_EQ_L
 from aquabuf.assess.uncertainty import COVERAGE
 from aquabuf.chem.gases import AIR_CO2_PPM, AIR_CO2_YEAR
 from aquabuf.report.tally import Tally
@@ -20,14 +19,16 @@ __all__ = ["summary_text"]
 
 WIDTH = 100
 WORST_SHOWN = 8
+REASONS_SHOWN = 12
 
 
 def summary_text(tally: Tally, options: Options, limits: Sequence[Limit], *, source: str, files: Iterable[str]) -> str:
     """The whole summary; same run, same text."""
     blocks = [_head(tally, source)]
     if tally.assessed:
-        blocks += [_warnings(tally, limits), _worst(tally, limits), _quality(tally)]
-    blocks += [_refused(tally), _assumptions(tally, options), _cautions(tally), _next(tally, limits, files)]
+        blocks += [_warnings(tally, limits), _worst(tally, limits, options), _quality(tally)]
+    blocks += [_refused(tally), _notes(tally), _assumptions(tally, options), _cautions(tally)]
+    blocks.append(_next(tally, limits, files))
     return "\n\n".join(b for b in blocks if b) + "\n"
 
 
@@ -65,7 +66,7 @@ def _number(value: float, digits: int) -> str:
     return "-" if pd.isna(value) else f"{value:.{digits}f}"
 
 
-def _worst(tally: Tally, limits: Sequence[Limit]) -> str:
+def _worst(tally: Tally, limits: Sequence[Limit], options: Options) -> str:
     """The worst-buffered samples: the figures that matter and the reason in words."""
     words = {limit.name: limit.words for limit in limits}
     rows = []
@@ -78,8 +79,9 @@ def _worst(tally: Tally, limits: Sequence[Limit]) -> str:
     head = ("sample", "pH", "alkalinity", "acid to pH 6", "carried by", "reason")
     widths = [max(len(x[i]) for x in [head, *rows]) for i in range(5)]
     lead = sum(widths) + 2 * 5
+    state = "the closed water" if options.exchange == "closed" else "water at air, then closed"
     spread = f", {COVERAGE:.0%} interval" if f"{RANK_BY}_low" in tally.worst else ""
-    lines = [f"Worst buffered first (meq/L; acid to pH 6 in the closed water{spread}; negative: below 6 already)"]
+    lines = [f"Worst buffered first (meq/L; acid to pH 6 in {state}{spread}; negative: below 6 already)"]
     for row in [head, *rows]:
         cells = [row[0].ljust(widths[0])] + [row[i].rjust(widths[i]) for i in (1, 2)]
         cells += [row[i].ljust(widths[i]) for i in (3, 4)]
@@ -108,8 +110,17 @@ def _refused(tally: Tally) -> str:
     if not tally.refused_rows:
         return ""
     lines = [f"Refused: {_plural(len(tally.refused_rows), 'row')} (rejected.csv names row, column, value and remedy)"]
-    lines += [_item(f"{count:,} x {rule}") for rule, count in tally.refusal_rules.most_common(5)]
+    common = tally.refusal_rules.most_common(REASONS_SHOWN)
+    lines += [_item(f"{count:,} x {column}: {rule}") for (column, rule), count in common]
+    if len(tally.refusal_rules) > REASONS_SHOWN:
+        lines.append(f"  - and {len(tally.refusal_rules) - REASONS_SHOWN} more reasons")
     return "\n".join(lines)
+
+
+def _notes(tally: Tally) -> str:
+    """What the reader noticed and did: cells below detection, filled in, left out."""
+    lines = [*tally.notes, *(f"{count:,} x {what}: {column}" for (what, column), count in tally.flags.items())]
+    return "\n".join(["Readings", *(_item(line) for line in lines)]) if lines else ""
 
 
 def _counted(counter) -> str:

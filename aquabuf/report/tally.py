@@ -10,13 +10,20 @@ import pandas as pd
 
 from aquabuf.assess.options import Options
 from aquabuf.assess.sample.assess import Assessment
-from aquabuf.assess.sample.curves import RANK_BY, Inputs, curve_rows, worst
+from aquabuf.assess.sample.curves import Inputs, curve_rows, worst
+from aquabuf.assess.sample.headline import RANK_BY
 from aquabuf.assess.sample.quality import Rounding, file_check_rows
+from aquabuf.readings.duplicates import DUPLICATE_RULE
 
 __all__ = ["Tally"]
 
 WORST_KEPT = 20
 FIGURE_COLUMNS = ("ph", "alkalinity_meq_l", "buffer_closed_meq_l_ph")
+
+
+def _general(rules: pd.Series) -> list[str]:
+    """Rules without what differs from row to row."""
+    return [DUPLICATE_RULE.removesuffix(" in row") if rule.startswith(DUPLICATE_RULE) else rule for rule in rules]
 
 
 @dataclass(slots=True)
@@ -36,6 +43,7 @@ class Tally:
     unmet: Counter = field(default_factory=Counter)
     made: Counter = field(default_factory=Counter)
     notes: dict[str, None] = field(default_factory=dict)
+    flags: Counter = field(default_factory=Counter)
     rounding: dict[str, Rounding] = field(default_factory=dict)
     duplicates: int = 0
     worst: pd.DataFrame = field(default_factory=pd.DataFrame)
@@ -48,7 +56,7 @@ class Tally:
         self.assessed += len(results)
         self.warned += int((results["warnings"] != "").sum())
         self.refused_rows.update(part.rejected["row"].tolist())
-        self.refusal_rules.update(part.rejected["rule"].tolist())
+        self.refusal_rules.update(zip(part.rejected["column"], _general(part.rejected["rule"]), strict=True))
         self.warnings.update(part.verdicts["warning"].tolist())
         for counter, column in ((self.statuses, "status"), (self.pairs, "pair"), (self.regimes, "regime"),
                                 (self.strengths, "ionic_strength_from")):
@@ -57,6 +65,7 @@ class Tally:
         self.made.update(part.made)
         self.unmet.update(part.unmet)
         self.notes |= dict.fromkeys(part.notes)
+        self.flags.update(part.flags)
         self.duplicates += part.duplicates
         for name, found in part.rounding.items():
             self.rounding[name] = self.rounding[name].plus(found) if name in self.rounding else found

@@ -247,7 +247,7 @@ WRONG_TYPES = [
 @pytest.mark.xfail(strict=True, reason="types and words of a limits file are not all checked")
 def test_limits_file_values_of_the_wrong_type(limits_of, text):
     """A value of the wrong type, a number that is none, a kind or regime that does not exist: a message that names it."""
-    with pytest.raises(InputError, match="own.toml") as error:
+    with pytest.raises(InputError, match=r"own\.toml") as error:
         limits_of(text)
     assert "'a'; there are" not in str(error.value)  # a word taken letter by letter
 

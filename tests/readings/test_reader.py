@@ -98,7 +98,7 @@ def test_below_detection_is_half_with_its_spread(table):
     assert_allclose(readings.frame["calcium_u_mol_l"] * CA, [4 / math.sqrt(12), 8 / math.sqrt(12), 2.0])
     assert readings.below_detection("calcium_mol_l").tolist() == [True, True, False]
     assert readings.flags["value"].tolist() == ["<4", "< 8"]
-    assert readings.notes == ("2 x below detection in calcium_mol_l (first: row 2, '<4')",)
+    assert readings.notes == ("2 x below detection, half the limit used in calcium_mol_l (first: row 2, '<4')",)
 
 
 def test_below_detection_with_the_spread_column_first(table):

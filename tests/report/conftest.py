@@ -10,7 +10,8 @@ from aquabuf.report.run import assess_file
 
 sys.path.insert(0, str(Path(__file__).parent))
 
-from run_table import TABLE  # noqa: E402
+from run_table import TABLE
+
 
 @pytest.fixture
 def table(tmp_path):

@@ -7,7 +7,10 @@ from matplotlib.colors import to_hex
 from matplotlib.figure import Figure
 from numpy.testing import assert_allclose, assert_array_equal
 
+from aquabuf.assess.limits import shipped_limits
 from aquabuf.assess.options import Options
+from aquabuf.assess.sample.assess import assess
+from aquabuf.readings.reader import read_readings
 from aquabuf.report import figures
 from aquabuf.report.figures import (
     plot_alkalinity,
@@ -18,9 +21,6 @@ from aquabuf.report.figures import (
     save_samples,
 )
 from aquabuf.report.tally import Tally
-from aquabuf.assess.limits import shipped_limits
-from aquabuf.assess.sample.assess import assess
-from aquabuf.readings.reader import read_readings
 
 PH = np.array([5.5, 6.5, 7.5, 8.5])
 ALK = np.array([-0.02, 0.1, 1.0, 30.0])

@@ -124,6 +124,6 @@ def test_files_have_the_usual_permissions(tmp_path):
 def test_a_folder_in_place_of_a_file(tmp_path, contents):
     """With force, a folder of that name is not removed: a message, and no parts left."""
     (tmp_path / "out" / "a.csv").mkdir(parents=True)
-    with pytest.raises(FileError, match="a.csv"):
+    with pytest.raises(FileError, match=r"a\.csv"):
         write(tmp_path / "out", contents, force=True)
     assert [p.name for p in (tmp_path / "out").iterdir()] == ["a.csv"]

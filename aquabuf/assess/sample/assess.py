@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections import Counter
 from collections.abc import Mapping
 from dataclasses import dataclass
 
@@ -17,14 +18,14 @@ from aquabuf.assess.sample.curves import Inputs
 from aquabuf.assess.sample.draws import intervals
 from aquabuf.assess.sample.headline import alkalinity_as_read, headline, words_and_details
 from aquabuf.assess.sample.inputs import alkalinity_reading, own_acids, uncertainties, values_of
-from aquabuf.assess.sample.quality import Rounding, check_rows, counted, roundings, sample_checks
+from aquabuf.assess.sample.quality import Rounding, check_rows, counted, failed, roundings, sample_checks
 from aquabuf.assess.sample.refuse import refusals
 from aquabuf.assess.sample.solve import ALKALINITY_AIR, NO_PAIR, PAIRS, choose, groups, take_rows, water_of
 from aquabuf.assess.sample.tables import results_table, verdict_table
 from aquabuf.chem.acids import Acid
 from aquabuf.engine.status import FLAGGED, SOLVED
 from aquabuf.readings.duplicates import DUPLICATE_RULE
-from aquabuf.readings.result import Readings
+from aquabuf.readings.result import Readings, notes_on_file
 
 __all__ = ["Assessment", "assess"]
 
@@ -37,6 +38,7 @@ class Assessment:
     verdicts : one row per broken limit, with its rule.
     checks : quality checks, one row per check that could be made (or only those not met).
     made, unmet : how many samples each check could be made for, and how many broke it.
+    notes, flags : what the reader did to the file, and to how many cells of a column.
     rounding, duplicates : whole numbers among the readings by column, and rows refused for a name used before.
     inputs : what each sample was solved from, for curves.
     rejected : rows refused, by the reader or here: row, sample_id, column, value, rule, remedy.
@@ -48,6 +50,7 @@ class Assessment:
     inputs: Inputs
     rejected: pd.DataFrame
     notes: tuple[str, ...]
+    flags: Mapping[tuple[str, str], int]
     made: Mapping[str, int]
     unmet: Mapping[str, int]
     rounding: Mapping[str, Rounding]
@@ -66,7 +69,7 @@ def assess(readings: Readings, options: Options, limits: tuple[Limit, ...], *, o
     gap = closure(values, u, acids, options)
     choice, figures = _solve(values, n, acids, options, gap)
     solved = choice != NO_PAIR
-    refused = refusals(frame, values, ~solved, acids, options)
+    refused = refusals(frame, values, ~solved, acids, options, readings.headers)
     keep = np.flatnonzero(solved)
     if not keep.size:
         figures = {c.name: np.full(n, np.nan) for c in result_columns(options)} | {"flagged": solved, "regime": solved}
@@ -80,15 +83,18 @@ def assess(readings: Readings, options: Options, limits: tuple[Limit, ...], *, o
     figures |= {"closure_meq_l": gap.carbon_meq_l, "closure_u_meq_l": gap.carbon_u_meq_l}
     kind = kept["water_kind"].to_numpy(str) if "water_kind" in kept else np.full(keep.size, "")
     broken = verdicts(limits, figures, kind, figures["regime"].astype(str))
+    pair = np.array(PAIRS, dtype=object)[choice]
+    checks = sample_checks(values, u, figures, pair, gap.carbonate, gap.carbonate_u)
+    figures |= {"pair": pair, "failed_checks": failed(checks, keep.size)}
     table = results_table(kept, figures, values, choice, spread, broken, options)
-    checks = sample_checks(values, u, figures, table["pair"].to_numpy(str), gap.carbonate, gap.carbonate_u)
     return Assessment(
         results=table,
         verdicts=verdict_table(kept, limits, broken, figures, spread),
         checks=check_rows(checks, kept, only_unmet=only_unmet_checks),
         inputs=Inputs(kept[["row", "sample_id"]], values, choice, acids),
         rejected=_all_rejected(readings.rejected, refused),
-        notes=readings.notes,
+        notes=notes_on_file(readings),
+        flags=Counter(zip(readings.flags["what"], readings.flags["column"], strict=True)),
         made=counted(checks), unmet=counted(checks, only_unmet=True),
         rounding=roundings(values, u, readings.headers), duplicates=_duplicates(readings.rejected),
     )
@@ -109,7 +115,7 @@ def _solve(values: Mapping[str, NDArray], n: int, acids: tuple[Acid, ...], optio
     """Pair used for each sample and its figures; pairs are tried in order until one has a solution."""
     final = np.full(n, NO_PAIR, dtype=np.int8)
     figures: dict[str, NDArray] = {}
-    for choice in choose(values, n, options, carbon_first=gap.carbon_first, carbon_unknown=gap.carbon_unknown):
+    for choice in choose(values, n, options, preferred=gap.preferred, carbon_unknown=gap.carbon_unknown):
         open_now = np.where(final == NO_PAIR, choice, NO_PAIR).astype(np.int8)
         for pair, ph_column, rows in groups(values, open_now):
             part = take_rows(values, rows)

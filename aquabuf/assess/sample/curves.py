@@ -8,17 +8,15 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from aquabuf.assess.options import ALWAYS_ACID, Options
-from aquabuf.assess.sample.headline import threshold_column
+from aquabuf.assess.options import Options
 from aquabuf.assess.sample.inputs import Values, water_keywords
 from aquabuf.assess.sample.solve import ALKALINITY_AIR, air_pco2, groups, take_rows, water_of
 from aquabuf.chem.acids import Acid
 
-__all__ = ["CURVE_COLUMNS", "RANK_BY", "Inputs", "curve_rows", "worst"]
+__all__ = ["CURVE_COLUMNS", "Inputs", "curve_rows", "worst"]
 
 CURVE_COLUMNS = ("row", "sample_id", "ph", "acid_added_meq_l", "buffer_closed_meq_l_ph", "acid_added_open_meq_l",
                  "buffer_open_meq_l_ph")
-RANK_BY = threshold_column("acid", ALWAYS_ACID, "closed")
 PH_STEP = 0.1
 PH_ENDS = (3.5, 11.0)
 

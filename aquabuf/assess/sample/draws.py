@@ -11,12 +11,15 @@ from aquabuf.assess.limits import Limit
 from aquabuf.assess.options import Options
 from aquabuf.assess.sample.headline import alkalinity_as_read, headline
 from aquabuf.assess.sample.inputs import Array, Values, alkalinity_reading
-from aquabuf.assess.sample.solve import ALKALINITY_AIR, groups, take_rows, water_of
+from aquabuf.assess.sample.solve import ALKALINITY_AIR, PH_AIR, groups, take_rows, water_of
 from aquabuf.assess.uncertainty import drawn, interval, row_blocks, share
 from aquabuf.chem.acids import Acid
 from aquabuf.engine.status import SOLVED
 
 __all__ = ["Intervals", "intervals"]
+
+
+FREE_OF_CARBON = ("ph", "alkalinity_meq_l", "alkalinity_mg_l_caco3")
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -48,6 +51,8 @@ def intervals(values: Values, u: Values, choice: NDArray[np.int8], acids: tuple[
             solved = (water.status >= SOLVED).reshape(block.size, options.draws)
             out.solved[block] = solved.mean(axis=1)
             for name, v in figures.items():
+                if pair == PH_AIR and name not in FREE_OF_CARBON:
+                    continue  # its carbon is an assumption, and an assumption has no interval
                 ends = interval(v.reshape(block.size, options.draws))
                 for store, end in zip((out.low, out.high), ends, strict=True):
                     store.setdefault(name, np.full(n, np.nan))[block] = end

@@ -6,14 +6,15 @@ import numpy as np
 from numpy.typing import NDArray
 
 from aquabuf.arrays import worded
-from aquabuf.assess.options import Options
+from aquabuf.assess.options import ALWAYS_ACID, Options
 from aquabuf.chem.gases import pco2_of_air
 from aquabuf.engine import buffer, precipitate
 from aquabuf.engine.conditions import FRESH_BELOW
 from aquabuf.engine.water import Water
 from aquabuf.units import convert, substances
 
-__all__ = ["MARINE_FROM", "TEST_ACID_EQ_L", "alkalinity_as_read", "headline", "threshold_column", "words_and_details"]
+__all__ = ["MARINE_FROM", "RANK_BY", "TEST_ACID_EQ_L", "alkalinity_as_read", "headline", "threshold_column",
+           "words_and_details"]
 
 Array = NDArray[np.float64]
 
@@ -27,6 +28,9 @@ def threshold_column(kind: str, ph: float, exchange: str) -> str:
     digits = f"{ph:.2f}".rstrip("0")
     digits = digits + "0" if digits.endswith(".") else digits
     return f"{kind}_to_ph_{digits.replace('.', '_')}{'_open' if exchange == 'open' else ''}_meq_l"
+
+
+RANK_BY = threshold_column("acid", ALWAYS_ACID, "closed")  # what the worst-buffered samples are ranked by
 
 
 def headline(water: Water, options: Options) -> dict[str, Array]:
@@ -54,7 +58,8 @@ def headline(water: Water, options: Options) -> dict[str, Array]:
             out[threshold_column(kind, ph, "open")] = sign * water.acid_to_ph_eq_l(ph, "open", pco2_atm=air)
     pairs = precipitate.pairing(s)
     out["si_calcite"] = precipitate.saturation_index(pairs, "calcite")
-    out["ccpp_mg_l"] = precipitate.precipitation_potential(pairs, "calcite")[0] * _mg_per_mol("calcium carbonate")
+    potential, out["ph_at_saturation"] = precipitate.precipitation_potential(pairs, "calcite")
+    out["ccpp_mg_l"] = potential * _mg_per_mol("calcium carbonate")
     return out
 
 
@@ -85,6 +90,8 @@ def words_and_details(water: Water, si_calcite: Array, ccpp_mg_l: Array) -> dict
                          default="brackish"),
         "temperature_c": water.t_c,
         "salinity": salinity,
+        "alkalinity_umol_kg": water.alkalinity_eq_l / water.density_kg_l * 1e6,
+        "dic_umol_kg": water.dic_mol_l / water.density_kg_l * 1e6,
         "ionic_strength_mol_l": water.ionic_strength_mol_l,
         "bicarbonate_mmol_l": carbonate[1],
         "carbonate_mmol_l": carbonate[2],

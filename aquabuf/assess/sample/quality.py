@@ -11,15 +11,17 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from aquabuf.assess.frames import frame_of
+from aquabuf.assess.options import ALWAYS_ACID
+from aquabuf.assess.sample.headline import RANK_BY
 from aquabuf.assess.sample.inputs import MAJOR_IONS, Array, Values
+from aquabuf.assess.sample.leftout import demand, titrated_organic
+from aquabuf.assess.sample.solve import PH_AIR
 from aquabuf.readings.schema import quantities
 from aquabuf.tables import read_table
 from aquabuf.units import substances, to_house
 
-__all__ = ["Check", "Rounding", "check_rows", "counted", "file_check_rows", "roundings", "sample_checks"]
+__all__ = ["Check", "Rounding", "check_rows", "counted", "failed", "file_check_rows", "roundings", "sample_checks"]
 
-ORGANIC_SITES_EQ_PER_MG = 1e-5      # site density, 10 µeq per mg C: Oliver, Thurman & Malcolm 1983
-ORGANIC_TITRATED_EQ_PER_MG = 5e-6   # of which a titration to pH 4 reaches about half, by the same pK function
 WHOLE_MIN_ROWS, WHOLE_SHARE = 10, 90.0
 ROUNDING_SD = 1.0 / np.sqrt(12.0)   # of a unit: standard deviation of an even spread
 ALL_ROWS = "(all rows)"
@@ -125,14 +127,19 @@ def _over_determined(values: Values, u: Values, figures: Mapping[str, NDArray], 
 
 
 def _brown(values: Values, figures: Mapping[str, NDArray], pair: NDArray) -> list[Check]:
-    """Whether pCO2 from pH and alkalinity can be trusted where organic acids share the alkalinity."""
+    """Whether organic acids and aluminum spoil the CO2 pressure, or the tolerance, of a brown or acid water."""
     doc = values.get("doc_mg_l", np.full(pair.size, np.nan))
-    rests_on_both = pair == "pH and alkalinity"
+    rests_on_both = (pair == "pH and alkalinity") | (pair == PH_AIR)
     carbonate = 1e-3 * (figures["bicarbonate_mmol_l"] + 2.0 * figures["carbonate_mmol_l"])
-    organic = np.where(rests_on_both, 100.0 * ORGANIC_TITRATED_EQ_PER_MG * doc / np.maximum(carbonate, 1e-9), np.nan)
+    organic = titrated_organic(values, figures["ph"]) / np.maximum(carbonate, 1e-9)
     no_doc = np.where(rests_on_both & np.isnan(doc), figures["ph"], np.nan)
-    return [Check("CO2 in brown acid water", organic, -np.inf, 20.0),
-            Check("CO2 in brown acid water", no_doc, 5.5, np.inf)]
+    asked = np.maximum(np.abs(figures[RANK_BY]) * 1e-3, 1e-9)
+    share = demand(values, figures["ph"], ALWAYS_ACID) / asked
+    any_known = np.isfinite(doc) | np.isfinite(values.get("aluminum_mol_l", np.full(pair.size, np.nan)))
+    organic = np.where(rests_on_both & np.isfinite(doc), organic, np.nan)
+    return [Check("CO2 in brown acid water", 100.0 * organic, -np.inf, 20.0),
+            Check("CO2 in brown acid water", no_doc, 5.5, np.inf),
+            Check("acids not counted", np.where(any_known, 100.0 * share, np.nan), -np.inf, 20.0)]
 
 
 def _outside_usual(values: Values, rows: int) -> tuple[Array, NDArray]:
@@ -145,6 +152,15 @@ def _outside_usual(values: Values, rows: int) -> tuple[Array, NDArray]:
             count += hit
             names[hit] = np.where(names[hit] == "", name, names[hit] + ", " + name)
     return count, names
+
+
+def failed(checks: list[Check], rows: int) -> NDArray[np.object_]:
+    """Names of the checks that each sample fails, joined by semicolons."""
+    out = np.full(rows, "", dtype=object)
+    for check in checks:
+        hit = np.isfinite(check.value) & ~check.met
+        out[hit] = np.where(out[hit] == "", check.name, out[hit] + "; " + check.name)
+    return out
 
 
 def counted(checks: list[Check], *, only_unmet: bool = False) -> dict[str, int]:

@@ -2,15 +2,17 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
+
 import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
 from aquabuf.assess.options import Options
-from aquabuf.assess.sample.inputs import Values
+from aquabuf.assess.sample.inputs import Values, ionic_strength
 from aquabuf.assess.sample.solve import NO_PAIR, choose, groups, has, take_rows, water_of
 from aquabuf.chem.acids import Acid
-from aquabuf.engine.conditions import LIMITS
+from aquabuf.engine.conditions import CARBONIC_SETS, FRESH_BELOW, LIMITS
 from aquabuf.engine.status import OUT_OF_RANGE
 from aquabuf.readings.result import REJECTED_COLUMNS
 from aquabuf.units import convert
@@ -18,56 +20,70 @@ from aquabuf.units import convert
 __all__ = ["refusals"]
 
 
+Reason = tuple[tuple[str, ...], str, str, str]  # columns, value, rule, remedy
+
+
 def refusals(frame: pd.DataFrame, values: Values, bad: NDArray[np.bool_], acids: tuple[Acid, ...], options: Options,
-             ) -> pd.DataFrame:
-    """One line per refused sample: row, sample_id, column, value, rule, remedy."""
+             headers: Mapping[str, tuple[str, str]]) -> pd.DataFrame:
+    """One line per refused sample: row, sample_id, column, value, rule, remedy; columns by their header in the file."""
+    in_file = {name: header for header, (name, _) in headers.items()}
     rows = np.flatnonzero(bad)
-    reasons: dict[int, tuple[str, str, str, str]] = {}
+    reasons: dict[int, Reason] = {}
     there = has(values, bad.size)
     t = values["temperature_c"]
     for i in rows.tolist():
         members = [m for m, v in there.items() if v[i]]
         if np.isnan(t[i]):
-            reasons[i] = ("temperature_c", "", "every sample needs a water temperature",
-                          "give temperature_c, or one value for all rows under [values] of a map file")
+            reasons[i] = (("temperature_c",), "missing", "every sample needs a water temperature",
+                          "give temperature_c, or a value for rows without one under [fill] of a map file")
         elif len(members) < 2:
             found = members[0] if members else "none"
-            reasons[i] = ("ph, alkalinity, dic, pco2", f"found {found}",
+            reasons[i] = (("ph", "alkalinity", "dic", "pco2"), f"only {found}" if members else "none",
                           "two of pH, alkalinity, carbon and CO2 pressure make a known pair",
                           "give a second one" + (", or run with --exchange open" if found == "alkalinity" else ""))
     remaining = np.array([i for i in rows.tolist() if i not in reasons], dtype=np.intp)
     if remaining.size:
         nowhere = np.zeros(bad.size, dtype=bool)
-        first = next(choose(values, bad.size, options, carbon_first=nowhere, carbon_unknown=nowhere))
+        first = next(choose(values, bad.size, options, carbon_unknown=nowhere,
+                            preferred=np.full(bad.size, NO_PAIR, dtype=np.int8)))
         only = np.full(bad.size, NO_PAIR, dtype=np.int8)
         only[remaining] = first[remaining]
         for pair, ph_column, group in groups(values, only):
             status = water_of(take_rows(values, group), pair, ph_column, acids, options).status
             for i, code in zip(group.tolist(), status.tolist(), strict=True):
-                reasons[i] = (_out_of_range(values, i) if code == OUT_OF_RANGE
+                reasons[i] = (_out_of_range(values, i, options) if code == OUT_OF_RANGE
                               else _contradiction(values, i, pair, ph_column))
-    lines = [(frame["row"].iloc[i], frame["sample_id"].iloc[i], *reasons[i]) for i in rows.tolist()]
+    lines = [(frame["row"].iloc[i], frame["sample_id"].iloc[i], ", ".join(in_file.get(c, c) for c in reasons[i][0]),
+              *reasons[i][1:]) for i in rows.tolist()]
     return pd.DataFrame(lines, columns=list(REJECTED_COLUMNS))
 
 
-def _out_of_range(values: Values, i: int) -> tuple[str, str, str, str]:
+def _out_of_range(values: Values, i: int, options: Options) -> Reason:
     found = {"t_c": ("temperature_c", "°C"), "salinity": ("salinity", ""), "pressure_atm": ("air_pressure_atm", "atm")}
     for key, (column, unit) in found.items():
         low, high = LIMITS[key][2:]
         if column in values and not low <= np.nan_to_num(values[column][i], nan=low) <= high:
-            return (column, f"{values[column][i]:.4g}", f"{column} must be {low:g} to {high:g} {unit}".rstrip(),
+            return ((column,), f"{values[column][i]:.4g}", f"{column} must be {low:g} to {high:g} {unit}".rstrip(),
                     "correct the value or its unit")
-    return ("conductivity, salinity", "", f"ionic strength of fresh water must be at most "
-            f"{LIMITS['ionic_strength_mol_l'][3]:g} mol/L, and the marine constants must reach this salinity",
-            "give salinity if this is salt water; use --marine-constants millero")
+    t, s = values["temperature_c"][i], np.nan_to_num(values.get("salinity", np.zeros(i + 1))[i])
+    if s >= FRESH_BELOW:
+        name = options.carbonic
+        s_low, s_high, t_low, t_high = CARBONIC_SETS[name]
+        return (("salinity", "temperature_c"), f"{s:g}; {t:g} °C",
+                f"the {name} constants reach salinity {s_low:g} to {s_high:g} at {t_low:g} to {t_high:g} °C",
+                "use --marine-constants millero")
+    strength = ionic_strength({name: v[i:i + 1] for name, v in values.items()})
+    return (("conductivity_us_cm",), f"ionic strength {strength[0][0]:.3g} mol/L from {strength[1][0]}",
+            f"ionic strength of fresh water must be at most {LIMITS['ionic_strength_mol_l'][3]:g} mol/L",
+            "give salinity if this is salt water; correct the ions or the conductivity otherwise")
 
 
-def _contradiction(values: Values, i: int, pair: str, ph_column: str) -> tuple[str, str, str, str]:
+def _contradiction(values: Values, i: int, pair: str, ph_column: str) -> Reason:
     """A pair that no water has; the likely slip by pair."""
     alkalinity = next((name for name in ("alkalinity_eq_l", "anc_eq_l") if name in values
                        and np.isfinite(values[name][i])), "alkalinity_eq_l")
     names = {"pH": ph_column, "alkalinity": alkalinity, "carbon": "dic_mol_l", "pCO2": "pco2_atm"}
-    columns = [names[m] for m in pair.split(" and ")]
+    columns = tuple(names[m] for m in pair.split(" and "))
     shown = "; ".join(f"{c} {_shown(c, values[c][i])}" for c in columns)
     if pair == "pH and alkalinity":
         rule = "alkalinity must leave carbonate above zero at this pH, within uncertainty and organic charge"
@@ -76,7 +92,7 @@ def _contradiction(values: Values, i: int, pair: str, ph_column: str) -> tuple[s
         rule, remedy = "total carbon must be more than the CO2 that this pressure dissolves", "check both readings"
     else:
         rule, remedy = "no water has this pair of values", "check both readings and their units"
-    return (", ".join(columns), shown, rule, remedy)
+    return (columns, shown, rule, remedy)
 
 
 def _shown(column: str, value: float) -> str:

@@ -20,9 +20,9 @@ __all__ = ["ALKALINITY_AIR", "NO_PAIR", "PAIRS", "PH_AIR", "air_pco2", "choose",
 NO_PAIR = -1
 ALKALINITY_AIR, PH_AIR = "alkalinity and air", "pH and air"
 
-# Order of preference. pH and alkalinity come first in fresh water, unless the carbon they imply is much less certain
-# than a measured one; in salt water, where a meter's pH is the weakest reading, alkalinity and carbon do. Air stands
-# in last: where asked for, or where pH and alkalinity of an acid water cannot tell its carbon.
+# Order of preference, unless `closure` finds another pair better for a row: measured carbon where pH and alkalinity
+# imply it badly, alkalinity with carbon in salt water where the two tell the pH better than the meter. Air stands in
+# last: where asked for, or where pH and alkalinity of an acid water cannot tell its carbon.
 PAIRS = ("pH and alkalinity", "pH and carbon", "alkalinity and carbon", "alkalinity and pCO2", "pH and pCO2",
          "carbon and pCO2", PH_AIR, ALKALINITY_AIR)
 MEASURED_PAIRS = PAIRS[:6]
@@ -31,9 +31,6 @@ _MAKERS: dict[str, Callable[..., Water]] = {
     "alkalinity and carbon": Water.from_alkalinity_dic, "alkalinity and pCO2": Water.from_alkalinity_pco2,
     "pH and pCO2": Water.from_ph_pco2, "carbon and pCO2": Water.from_dic_pco2,
 }
-_FRESH_ORDER = (0, 1, 2, 3, 4, 5)
-_CARBON_ORDER = (1, 0, 2, 3, 4, 5)
-_SALT_ORDER = (2, 0, 1, 3, 4, 5)
 
 
 def has(values: Values, rows: int) -> dict[str, NDArray[np.bool_]]:
@@ -48,28 +45,27 @@ def has(values: Values, rows: int) -> dict[str, NDArray[np.bool_]]:
             "carbon": there("dic_mol_l"), "pCO2": there("pco2_atm")}
 
 
-def choose(values: Values, rows: int, options: Options, *, carbon_first: NDArray[np.bool_],
+def choose(values: Values, rows: int, options: Options, *, preferred: NDArray[np.int8],
            carbon_unknown: NDArray[np.bool_]) -> Iterator[NDArray[np.int8]]:
     """Pair of each row by preference: first choice, second choice and so on; NO_PAIR where none is left.
 
-    carbon_first : fresh rows whose measured carbon is better than the one pH and alkalinity imply.
+    preferred : pair to try first in each row, or NO_PAIR.
     carbon_unknown : rows whose pH and alkalinity cannot tell the carbon, so that they are no pair.
     """
     there = has(values, rows)
-    salt = np.nan_to_num(values.get("salinity", np.zeros(rows))) >= FRESH_BELOW
     able = np.stack([np.logical_and(*(there[m] for m in pair.split(" and "))) for pair in MEASURED_PAIRS])
     stand_in = carbon_unknown & able[0]
     able[0] &= ~carbon_unknown
-    tried = np.zeros_like(able)
     for _ in MEASURED_PAIRS:
         choice = np.full(rows, NO_PAIR, dtype=np.int8)
-        for order, which in ((_FRESH_ORDER, ~salt & ~carbon_first), (_CARBON_ORDER, ~salt & carbon_first),
-                             (_SALT_ORDER, salt)):
-            for index in reversed(order):
-                choice[which & able[index] & ~tried[index]] = index
-        if (choice == NO_PAIR).all():
+        for index in reversed(range(len(MEASURED_PAIRS))):
+            choice[able[index]] = index
+        first = np.flatnonzero((preferred != NO_PAIR) & able[preferred, np.arange(rows)])
+        choice[first] = preferred[first]
+        found = np.flatnonzero(choice != NO_PAIR)
+        if not found.size:
             break
-        tried[choice[choice != NO_PAIR], np.flatnonzero(choice != NO_PAIR)] = True
+        able[choice[found], found] = False
         yield choice
     yield np.where(stand_in, PAIRS.index(PH_AIR), NO_PAIR).astype(np.int8)
     if options.exchange == "open":

@@ -24,7 +24,7 @@ CARBON_FROM_AIR = ("pH and alkalinity of this acid water cannot tell its carbon 
                    "organic charge of zero); pH was kept and carbon set by air")
 
 
-AS_GIVEN = ("sample_id", "row", "site", "region", "water_kind")
+AS_GIVEN = ("sample_id", "row", "site", "region", "date", "time", "depth_m", "water_kind")
 
 
 def results_table(kept: pd.DataFrame, figures: Mapping[str, NDArray], values: Mapping[str, NDArray],
@@ -55,7 +55,6 @@ def _words(kept: pd.DataFrame, figures: Mapping[str, NDArray], values: Mapping[s
     return {name: kept[name].to_numpy() for name in AS_GIVEN if name in kept} | {
         "status": worded(n, (flagged, "outside range"), (from_air, "carbon from air"), default="ok"),
         "status_reason": worded(n, (flagged, OUTSIDE_RANGE), (from_air, CARBON_FROM_AIR)),
-        "pair": np.array(PAIRS, dtype=object)[choice],
         "ionic_strength_from": ionic_strength(values)[1], "alkalinity_from": alkalinity_reading(values)[1],
         "warnings": warnings,
     }
