@@ -95,7 +95,7 @@ BAD_ROWS = [  # sample, column, value found, words of the rule, words of the rem
     ("SB-noon", "Calcium (mg/L)", "trace", "must be a number", "leave it blank"),
     ("DM-noon", "pH (field)", "74", "must be -1 to 15", "7.4"),
     ("TA-noon", "Water temp (°C)", "62.6", "must be -2 to 60 °C", "°F (then 17.0 °C)"),
-    ("TB-noon", "temperature", "", "needs a water temperature", "temperature_c"),
+    ("TB-noon", "Water temp (°C)", "missing", "needs a water temperature", "[fill]"),
     ("BP-noon", "pH (field)", "4,98", "decimal sign of this file is a point", "write 7.4"),
     ("CS-noon", "alkalinity", "alkalinity", "make a known pair", "give a second one"),
     ("KB-noon", "Gran ANC (µeq/L)", "2,870", "thousands separators are not read", "without them"),
@@ -242,7 +242,7 @@ def test_detection_limits_are_noted(results):
     for name, column in (("Ammonium (mg/L as N)", "ammonium"), ("Aluminum (µg/L)", "aluminum")):
         count = sum(row[header.index(name)].startswith("<") for row in read_rows)
         assert count > 0
-        assert f"{count} x below detection in {column}_mol_l" in notes
+        assert f"{count} x below detection, half the limit used: {column}_mol_l" in notes
 
 
 # ---------------------------------------------------------------- plant
@@ -318,11 +318,12 @@ def test_alkalinity_mixes_along_a_line(results):
 
 
 def test_regime_and_pair_follow_salinity(results):
-    """Below 1 fresh, to 30 brackish, above marine; salt water is solved from alkalinity and carbon."""
+    """Below 1 fresh, to 30 brackish, above marine; at sea alkalinity and carbon tell pH better than the electrode."""
     table, s = by_id(results, ESTUARY), estuary()["S psu"]
     expected = np.where(s < 1, "fresh", np.where(s < 30, "brackish", "marine"))
     assert table["regime"].tolist() == expected.tolist()
-    assert (table.loc[s >= 1, "pair"] == "alkalinity and carbon").all()
+    assert (table.loc[(s >= 20).to_numpy(), "pair"] == "alkalinity and carbon").all()
+    assert set(table.loc[(s >= 1).to_numpy(), "pair"]) <= {"alkalinity and carbon", "pH and alkalinity"}
 
 
 def test_uncalibrated_ph_is_found(results):

@@ -22,7 +22,7 @@ CONDITIONS = {
     "t_c": 25.0, "salinity": 35.0, "elevation_m": 1000.0, "pressure_atm": 1.0, "co2_ppm": 400.0, "charge": 1,
     "ionic_strength": 0.1, "a": 0.51, "b": 0.328, "size": 4.0, "slope": 0.075, "sulfate": 0.028235,
     "k_bisulfate": 0.1003, "fluoride": 6.833e-5, "k_fluoride": 0.002366, "pk": 4.756, "enthalpy_j_mol": -410.0,
-    "heat_capacity_j_mol_k": -142.0,
+    "heat_capacity_j_mol_k": -142.0, "doc_mg_l": 1.0, "ph": 7.0,
 }
 
 

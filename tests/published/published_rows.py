@@ -8,12 +8,15 @@ named source), computed-by-library (a general reference library).
 
 import csv
 import importlib
+import pkgutil
 from pathlib import Path
 
 import numpy as np
 
+import aquabuf.chem
+
 MARKS = {"printed", "recalled", "derived", "computed-by-library"}
-CHEM_TABLES = ("fresh", "marine", "properties", "activity", "gases", "seasalt", "acids")
+CHEM_TABLES = tuple(sorted(m.name for m in pkgutil.iter_modules(aquabuf.chem.__path__)))  # a new one cannot be forgotten
 TRANSFORMS = {
     "plain": lambda k: k,
     "log10": np.log10,

@@ -199,3 +199,28 @@ def test_the_starter_map_is_valid(table):
     assert readings.frame["sample_id"].tolist() == ["A_2024-01-02"]
     assert_allclose(readings.frame["alkalinity_eq_l"], 2e-3, rtol=1e-9)
     assert_allclose(readings.frame["example_acid_mol_l"], 1e-4, rtol=1e-9)
+
+
+def test_fill_serves_only_rows_that_have_none(tmp_path):
+    """A missing cell takes the value, in the unit its name states, and is flagged; a given one stays."""
+    table, table_map = tmp_path / "t.csv", tmp_path / "m.toml"
+    table.write_text("sample_id,temperature_c\na,\nb,7.5\n", encoding="utf-8")
+    table_map.write_text('[fill]\n"temperature (°F)" = 59.0\n"elevation (m)" = 250\n', encoding="utf-8")
+    readings = read_readings(table, table_map)
+    assert_allclose(readings.frame["temperature_c"], [15.0, 7.5])
+    assert_allclose(readings.frame["elevation_m"], [250.0, 250.0])
+    assert readings.flags.query("column == 'temperature_c'")["row"].tolist() == [2]
+    assert "missing, filled from the map file" in readings.flags["what"].tolist()
+
+
+@pytest.mark.parametrize(("entry", "words"), [
+    ('temperature_c = "warm"', r"\[fill\] 'temperature_c': must be a number.*found 'warm'"),
+    ('site = 3', r"\[fill\] 'site': must be a number for a column of numbers; found 3"),
+    ('alkalinity_umol_kg = 2000', r"\[fill\] 'alkalinity_umol_kg': cannot be per kilogram"),
+])
+def test_fill_that_means_nothing(tmp_path, entry, words):
+    """Each wrong entry is named with the rule."""
+    table_map = tmp_path / "m.toml"
+    table_map.write_text(f"[fill]\n{entry}\n", encoding="utf-8")
+    with pytest.raises(InputError, match=words):
+        read_map(table_map)

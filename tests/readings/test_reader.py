@@ -152,7 +152,7 @@ def test_a_spread_that_begins_in_a_later_piece(table):
     whole = join_readings(iter_readings(path, chunk_rows=1))
     assert list(whole.frame.columns) == ["row", "sample_id", "calcium_mol_l", "calcium_u_mol_l", "doc_mg_l"]
     assert math.isnan(whole.frame["calcium_u_mol_l"][0])
-    assert whole.notes == ("1 x below detection in calcium_mol_l (first: row 3, '<4')",)
+    assert whole.notes == ("1 x below detection, half the limit used in calcium_mol_l (first: row 3, '<4')",)
 
 
 @pytest.mark.parametrize(

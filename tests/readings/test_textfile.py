@@ -97,9 +97,10 @@ def test_all_bad_headers_are_told_at_once(table):
     """So that the user need not try again for each."""
     with pytest.raises(HeaderError) as caught:
         read_readings(table("sample_id,xyzzy,nitrate_mg_l\na,1,1\n"))
-    first, second = str(caught.value).splitlines()
+    first, second, hint = str(caught.value).splitlines()
     assert "'xyzzy' is not known" in first
     assert "'nitrate_mg_l' is ambiguous" in second
+    assert "aquabuf template map" in hint
 
 
 def test_pieces_of_no_rows(table):
