@@ -9,6 +9,7 @@ from dataclasses import dataclass
 from pathlib import Path
 
 import numpy as np
+import pandas as pd
 from numpy.typing import NDArray
 
 from aquabuf.errors import FileError, InputError
@@ -53,18 +54,13 @@ class Limit:
 
     def met(self, value: NDArray) -> NDArray[np.bool_]:
         """Where the rule holds; never where the value is missing."""
-        on_edge = np.isclose(value, self.limit, rtol=EDGE, atol=EDGE * EDGE)  # rounding must not break a limit
         with np.errstate(invalid="ignore"):
+            on_edge = np.abs(value - self.limit) <= EDGE * max(abs(self.limit), EDGE)  # rounding must not break it
             return OPERATORS[self.operator](np.where(on_edge, self.limit, value), self.limit) & (value >= self.lower)
 
-    def applies(self, kind: NDArray, regime: NDArray) -> NDArray[np.bool_]:
-        """Samples whose kind and regime this limit is for."""
-        stated = np.where(kind == "", UNSTATED, kind)
-        return _among(stated, self.kinds) & _among(regime, self.regimes)
-
-
-def _among(values: NDArray, allowed: tuple[str, ...]) -> NDArray[np.bool_]:
-    return np.ones(values.shape, dtype=bool) if ANY in allowed else np.isin(values, allowed)
+    def applies(self, kind: str, regime: str) -> bool:
+        """Whether this limit is for waters of a kind ("" where it is not given) and regime."""
+        return bool({ANY, kind or UNSTATED} & set(self.kinds)) and bool({ANY, regime} & set(self.regimes))
 
 
 def shipped_limits() -> tuple[Limit, ...]:
@@ -154,11 +150,15 @@ def verdicts(limits: tuple[Limit, ...], figures: Mapping[str, NDArray], kind: ND
     """Which samples each limit warns about; of a group only the first limit met counts."""
     taken: dict[str, NDArray[np.bool_]] = {}
     out = {}
+    kind_code, kinds = pd.factorize(kind)
+    regime_code, regimes = pd.factorize(regime)
     for limit in limits:
         if limit.quantity not in figures:
             continue
         before = taken.get(limit.group, np.zeros(kind.shape, dtype=bool))
-        met = limit.met(figures[limit.quantity]) & limit.applies(kind, regime) & ~before
+        for_whom = np.array([[limit.applies(k, r) for r in regimes] for k in kinds], dtype=bool)
+        applies = for_whom[kind_code, regime_code] if for_whom.size else before
+        met = limit.met(figures[limit.quantity]) & applies & ~before
         taken[limit.group] = before | met
         out[limit.name] = met
     return out

@@ -38,8 +38,11 @@ CHARGE = {"calcium": 2, "magnesium": 2, "sodium": 1, "potassium": 1, "bicarbonat
 PAIR_TOLERANCE = 1e-11  # relative change of free calcium
 PAIR_ROUNDS = 200
 DAMP_FROM = 15           # rounds after which strongly paired waters are damped so that they settle
-FIRST_TOLERANCE = 1e-5  # of the saturation index while the spectators are still held
-ROOT_TOLERANCE = 1e-10  # of the pH once they follow
+FIRST_TOLERANCE = 1e-5  # of the saturation index where the spectators are held
+ROOT_TOLERANCE = 1e-9   # of the pH where they follow
+INDEX_TOLERANCE = 1e-8  # of the saturation index there
+SECANT_ROUNDS = 40
+LONGEST_STEP = 1.0      # of pH
 SLOPE_STEP = 1e-4       # of pH
 ROOT_ROUNDS = 80
 SEARCH_PH = (1.0, 14.0)
@@ -158,17 +161,24 @@ def _gammas(state: State) -> dict[int, Array]:
 def _solubility(state: State, mineral: str) -> Array:
     """Conditional solubility product. [(mol/L)^2]"""
     c = state.conditions
+    gamma = 10.0 ** activity.log_gamma_davies(2, c.ionic_strength_mol_l, c.debye_huckel_a)
+    return _tabulated(state, mineral) * np.where(c.is_marine, 1.0, gamma**-2.0) * c.density_kg_l**2
+
+
+def _tabulated(state: State, mineral: str) -> Array:
+    """Solubility product on the scale of its source: activities in fresh rows, concentrations in marine ones."""
+    c = state.conditions
     of_fresh, of_sea = MINERALS[mineral]
-    ksp = of_fresh(c.t_c) / _gammas(state)[2] ** 2
+    ksp = of_fresh(c.t_c)
     if c.is_marine.any():
         at_sea = np.full(ksp.shape, np.nan) if of_sea is None else of_sea(c.t_c, c.salinity)
         ksp = np.where(c.is_marine, at_sea, ksp)
-    return ksp * c.density_kg_l**2
+    return ksp
 
 
 def solubility_ratio(state: State, mineral: str, other: str) -> Array:
     """Solubility product of `mineral` over that of `other` at the water's conditions. [-]"""
-    return _solubility(state, mineral) / _solubility(state, other)
+    return _tabulated(state, mineral) / _tabulated(state, other)
 
 
 def _follow(s: _Solution, h: Array, calcium: Array, bicarbonate: Array, now: _Spectators, *, damped: bool,
@@ -246,22 +256,13 @@ def precipitation_potential(pairs: Pairing, mineral: str = "calcite") -> tuple[A
     others = state.system(dic=np.zeros(state.h.shape)).take(rows)
     fixed, gap = state.alkalinity[rows] - 2.0 * pairs.dic, s.metals["calcium"] - pairs.dic
     path = _Path(s, now, others, fixed, gap, ksp)
-    x, found = _root_along(path, -np.log10(state.h[rows]))
-    dic = np.full(rows.shape, np.nan)
-    active = np.flatnonzero(found)
-    path, x_now = path.take(active), x[active]
-    slope = (path.index(x_now + SLOPE_STEP) - path.index(x_now)) / SLOPE_STEP
-    for turn in range(PAIR_ROUNDS):
-        index, carbon, path = path.followed(x_now, damped=turn >= DAMP_FROM)
-        step = index / slope
-        x_now = x_now - step
-        settled = (np.abs(step) < ROOT_TOLERANCE) & (turn > 0)  # the first turn still has the spectators of the start
-        done = active[settled]
-        x[done], dic[done] = x_now[settled], carbon[settled]
-        keep = np.flatnonzero(~settled)
-        if not keep.size:
-            break
-        path, x_now, slope, active = path.take(keep), x_now[keep], slope[keep], active[keep]
+    start = -np.log10(state.h[rows])
+    x, dic = _follow_secant(path, start, np.arange(rows.size))
+    left = np.flatnonzero(np.isnan(x))
+    if left.size:  # a first root between fixed ends, from which the secant cannot miss
+        x[left], found = _root_along(path.take(left), start[left])
+        left = left[found]
+        x[left], dic[left] = _follow_secant(path.take(left), x[left], np.arange(left.size))
     out[rows] = pairs.dic - dic
     ph_then[rows] = np.where(np.isfinite(dic), x, np.nan) - np.log10(state.conditions.activity_per_h[rows])
     return out, ph_then
@@ -303,6 +304,30 @@ class _Path:
         calcium, bicarbonate, dic = self.at(x)
         now = _follow(self.solution, 10.0**-x, calcium, bicarbonate, self.spectators, damped=damped)
         return self._index_of(calcium, bicarbonate, x), dic, replace(self, spectators=now)
+
+
+def _follow_secant(path: _Path, x: Array, rows: NDArray[np.intp]) -> tuple[Array, Array]:
+    """Root of the saturation index by secant steps, the spectators following each one; total carbon there.
+
+    nan where it does not settle. `rows` numbers the rows of `path`.
+    """
+    root, dic = np.full(x.shape, np.nan), np.full(x.shape, np.nan)
+    f, _, path = path.followed(x, damped=False)
+    slope = (path.index(x + SLOPE_STEP) - path.index(x)) / SLOPE_STEP
+    for turn in range(SECANT_ROUNDS):
+        step = np.clip(f / slope, -LONGEST_STEP, LONGEST_STEP)
+        x = x - step
+        f_new, carbon, path = path.followed(x, damped=turn >= DAMP_FROM)
+        settled = (np.abs(step) < ROOT_TOLERANCE) & (np.abs(f_new) < INDEX_TOLERANCE)
+        root[rows[settled]], dic[rows[settled]] = x[settled], carbon[settled]
+        with np.errstate(divide="ignore", invalid="ignore"):
+            secant = (f - f_new) / step
+        slope = np.where((np.abs(step) > SLOPE_STEP) & (secant > 0.1 * slope), secant, slope)
+        keep = np.flatnonzero(~settled & np.isfinite(f_new))
+        if not keep.size:
+            break
+        path, x, f, slope, rows = path.take(keep), x[keep], f_new[keep], slope[keep], rows[keep]
+    return root, dic
 
 
 def _root_along(path: _Path, x: Array) -> tuple[Array, NDArray[np.bool_]]:

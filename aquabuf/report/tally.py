@@ -74,13 +74,18 @@ class Tally:
         self.drawn.append(np.stack([*columns, (results["warnings"] != "").to_numpy(dtype=np.float32)]))
 
     def _keep_worst(self, part: Assessment) -> None:
-        best = worst(part.results[RANK_BY].to_numpy(), WORST_KEPT)
-        rows, inputs = part.results.iloc[best], part.inputs.take(best)
-        if self.worst_inputs is not None:
-            rows, inputs = pd.concat([self.worst, rows]), self.worst_inputs.joined(inputs)
-            best = worst(rows[RANK_BY].to_numpy(), WORST_KEPT)
-            rows, inputs = rows.iloc[best], inputs.take(best)
-        self.worst, self.worst_inputs = rows.reset_index(drop=True), inputs
+        rank = part.results[RANK_BY].to_numpy()
+        best = worst(rank, WORST_KEPT)
+        if self.worst_inputs is None:
+            self.worst, self.worst_inputs = part.results.iloc[best], part.inputs.take(best)
+            return
+        if len(self.worst) == WORST_KEPT:  # only what is worse than the best of those kept can enter
+            best = best[rank[best] < self.worst[RANK_BY].max()]
+        if best.size:
+            rows = pd.concat([self.worst, part.results.iloc[best]])
+            keep = worst(rows[RANK_BY].to_numpy(), WORST_KEPT)
+            self.worst = rows.iloc[keep]
+            self.worst_inputs = self.worst_inputs.joined(part.inputs.take(best)).take(keep)
 
     def file_checks(self) -> pd.DataFrame:
         """Checks of the table as a whole."""

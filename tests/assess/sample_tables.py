@@ -8,7 +8,7 @@ from aquabuf.assess.options import Options
 from aquabuf.assess.sample.assess import assess
 from aquabuf.readings.result import REJECTED_COLUMNS, Readings
 
-TEXT = ("sample_id", "site", "region", "water_kind")
+TEXT = ("sample_id", "site", "region", "date", "time", "water_kind")
 
 
 def readings(*rows, acids=None):

@@ -7,7 +7,8 @@ from numpy.testing import assert_allclose
 from sample_tables import assessed
 
 from aquabuf.assess.options import Options
-from aquabuf.assess.sample.curves import CURVE_COLUMNS, RANK_BY, curve_rows, worst
+from aquabuf.assess.sample.curves import CURVE_COLUMNS, curve_rows, worst
+from aquabuf.assess.sample.headline import RANK_BY
 
 ALK = 1e-3
 HAND = BareWater(25.0, ALK)

@@ -64,6 +64,21 @@ def test_weakest_buffering_lies_halfway_between_the_pks(row):
     assert_allclose(row["weakest_buffer_meq_l_ph"], 1e3 * HAND.buffer(row["weakest_ph"], DIC), rtol=PRINTED)
 
 
+def test_amounts_per_kilogram(row):
+    """1 mmol/L over 0.99705 kg/L (density of water at 25 °C, handbook) is 1002.96 µmol/kg."""
+    assert_allclose(row["alkalinity_umol_kg"], 1e3 / 0.99705, rtol=1e-5)
+    assert_allclose(row["dic_umol_kg"], row["dic_mmol_l"] * 1e3 / 0.99705, rtol=1e-5)
+
+
+def test_ph_at_saturation_lies_on_the_right_side():
+    """Water that deposits calcite loses alkalinity and pH, water that dissolves it gains both."""
+    hard = WATER | {"alkalinity_eq_l": 4e-3, "calcium_mol_l": 2e-3, "ionic_strength_mol_l": 8e-3}
+    table = results(hard | {"sample_id": "over", "ph": 8.2}, hard | {"sample_id": "under", "ph": 6.8})
+    assert table.loc["over", "si_calcite"] > 0.0 > table.loc["under", "si_calcite"]
+    assert table.loc["under", "ph_at_saturation"] > 6.8
+    assert table.loc["over", "ph_at_saturation"] < 8.2
+
+
 def test_alkalinity_in_both_units(row):
     """1 meq/L is 50.04 mg/L as CaCO3: half of 100.087 g/mol (IUPAC)."""
     assert_allclose([row["alkalinity_meq_l"], row["alkalinity_mg_l_caco3"]], [1.0, 50.043], rtol=2e-5)
@@ -129,6 +144,7 @@ def test_threshold_columns_are_named_by_ph(kind, ph, exchange, name):
     assert threshold_column(kind, ph, exchange) == name
 
 
+AS_GIVEN = ("site", "region", "date", "time", "depth_m", "water_kind")  # come only if the readings had them
 CONTRACT = ["sample_id", "status", "regime", "ph", "temperature_c", "salinity", "ionic_strength_mol_l", "alkalinity_meq_l", "alkalinity_mg_l_caco3", "dic_mmol_l", "co2_mmol_l", "bicarbonate_mmol_l", "carbonate_mmol_l", "pco2_uatm", "pco2_air_ratio", "ph_at_air", "buffer_closed_meq_l_ph", "buffer_open_meq_l_ph", "carrier", "carrier_base_acid_ratio", "acid_to_ph_6_0_meq_l", "acid_to_ph_6_0_open_meq_l", "acid_to_ph_6_5_meq_l", "acid_to_ph_5_5_meq_l", "acid_to_ph_5_0_meq_l", "acid_to_ph_4_5_meq_l", "base_to_ph_8_5_meq_l", "base_to_ph_9_0_meq_l", "base_to_ph_9_5_meq_l", "si_calcite", "ccpp_mg_l", "warnings", "ph_total"]
 WITH_INTERVAL = ["ph", "alkalinity_meq_l", "dic_mmol_l", "pco2_uatm", "ph_at_air", "buffer_closed_meq_l_ph", "buffer_open_meq_l_ph", "acid_to_ph_6_0_meq_l", "acid_to_ph_6_0_open_meq_l", "base_to_ph_8_5_meq_l", "si_calcite", "ccpp_mg_l"]
 
@@ -142,7 +158,7 @@ def test_contract_columns():
 
 def test_columns_come_in_the_order_of_the_table():
     """Result columns follow the shipped table; each interval stands behind its figure; without draws there is none."""
-    order = [c.name for c in result_columns(Options()) if c.name not in ("site", "region", "water_kind")]
+    order = [c.name for c in result_columns(Options()) if c.name not in AS_GIVEN]
     assert assessed(WATER).results.columns.tolist() == order
     with_ends = assessed(WATER, draws=100).results.columns.tolist()
     assert [c for c in with_ends if not c.endswith(("_low", "_high"))] == order
@@ -151,9 +167,10 @@ def test_columns_come_in_the_order_of_the_table():
 
 
 def test_site_and_kind_are_repeated_only_where_given():
-    """Words of the reader's own come back as they were."""
-    table = assessed(WATER | {"site": "Upper weir", "region": "north", "water_kind": "stream"}).results
-    assert table.loc[0, ["site", "region", "water_kind"]].tolist() == ["Upper weir", "north", "stream"]
+    """What only tells samples apart comes back as it was."""
+    given = {"site": "Upper weir", "region": "north", "date": "2.5.2024", "time": "06:00", "depth_m": 1.5, "water_kind": "stream"}
+    table = assessed(WATER | given).results
+    assert table.loc[0, list(given)].tolist() == list(given.values())
 
 
 def test_thresholds_of_the_users_own():

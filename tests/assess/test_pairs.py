@@ -7,8 +7,10 @@ from numpy.testing import assert_allclose
 from sample_tables import assessed, readings, results
 
 from aquabuf.assess.options import Options
+from aquabuf.assess.sample.assess import assess
 from aquabuf.assess.sample.closure import closure
 from aquabuf.assess.sample.inputs import uncertainties, values_of
+from aquabuf.readings.reader import read_readings
 
 T = {"temperature_c": 25.0}
 PH, ALK = 7.5, 1e-3
@@ -40,10 +42,15 @@ def test_fresh_water_prefers_ph_and_alkalinity():
 
 
 def test_salt_water_prefers_alkalinity_and_carbon():
-    """A meter's pH is the weakest reading there; without carbon, pH and alkalinity."""
+    """Where the two tell the pH better than the meter: sea water buffers about 0.5 meq/L per pH, so 0.02 of pH is 10 µeq/L.
+
+    Readings of 3 µmol/L each (4.5 together) are better than that, the defaults of 48 and 62 µmol/L are worse.
+    """
     sea = T | {"salinity": 35.0, "ph_total": 8.05, "alkalinity_eq_l": 2.3e-3}
-    table = results(sea | {"sample_id": "all", "dic_mol_l": 2.0e-3}, sea | {"sample_id": "two"})
-    assert table["pair"].tolist() == ["alkalinity and carbon", "pH and alkalinity"]
+    sharp = {"dic_mol_l": 2.0e-3, "alkalinity_u_eq_l": 3e-6, "dic_u_mol_l": 3e-6}
+    table = results(sea | sharp | {"sample_id": "sharp"}, sea | {"sample_id": "blunt", "dic_mol_l": 2.0e-3}, sea | {"sample_id": "two"},
+                    {k: v for k, v in (sea | sharp).items() if k != "ph_total"} | {"sample_id": "no pH"})
+    assert table["pair"].tolist() == ["alkalinity and carbon", "pH and alkalinity", "pH and alkalinity", "alkalinity and carbon"]
 
 
 def test_carbon_comes_first_where_it_is_much_better():
@@ -54,6 +61,39 @@ def test_carbon_comes_first_where_it_is_much_better():
     table = results(water | {"sample_id": "sharp", "dic_mol_l": dic, "dic_u_mol_l": 1e-6},
                     water | {"sample_id": "blunt", "dic_mol_l": dic, "dic_u_mol_l": 5e-5})
     assert table["pair"].tolist() == ["pH and carbon", "pH and alkalinity"]
+
+
+@pytest.mark.parametrize(("ratio", "pair"), [(1.9, "pH and alkalinity"), (2.1, "pH and carbon")])
+def test_how_much_better_carbon_must_be(ratio, pair):
+    """Twice: the implied carbon has the spread of carbonate over the charge per mole; by hand at pH 6, carbon read with a
+    spread 1.9 or 2.1 times smaller."""
+    hand = BareWater(25.0, 2e-4)
+    _, a1, a2 = hand.shares(6.0)
+    spread = np.hypot(2e-6 + 0.02 * 2e-4, np.log(10.0) * hand.c_h * 1e-6 * 0.05) / (a1 + 2.0 * a2)
+    row = T | {"ph": 6.0, "alkalinity_eq_l": 2e-4, "ionic_strength_mol_l": 2e-4, "dic_mol_l": hand.dic(6.0, 2e-4), "dic_u_mol_l": spread / ratio}
+    assert results(row).iloc[0]["pair"] == pair
+
+
+def test_which_ph_counts_where_two_were_read():
+    """Salt water rests on the total scale, fresh water on the meter."""
+    both = T | {"ph": 8.3, "ph_total": 8.0, "alkalinity_eq_l": 2.2e-3}
+    salt, fresh = (results(both | {"salinity": s}).iloc[0] for s in (35.0, 0.0))
+    assert_allclose(salt["ph_total"], 8.0, rtol=0, atol=1e-9)
+    assert_allclose(fresh["ph"], 8.3, rtol=0, atol=1e-9)
+
+
+@pytest.mark.parametrize(("extra", "most"), [({}, 0.0), ({"doc_mg_l": 5.0}, 50e-6), ({"aluminum_mol_l": 1e-5}, 30e-6)], ids=["bare", "doc", "aluminum"])
+@pytest.mark.parametrize(("part", "accepted"), [(0.97, True), (1.03, False)])
+def test_how_far_below_zero_carbonate_may_be(extra, most, part, accepted):
+    """Twice its uncertainty, 10 µeq per mg of organic carbon (Oliver et al. 1983) and three charges per aluminum; beyond, the row is refused."""
+    hand = BareWater(25.0, 1e-3)
+    h = hand.c_h * 1e-5
+    target = -2.0 * np.hypot(2e-6 + 0.02 * 8e-5, np.log(10.0) * h * 0.05) - most
+    alkalinity = -h + part * target
+    u = {"alkalinity_u_eq_l": 2e-6 + 0.02 * 8e-5, "ionic_strength_mol_l": 1e-3}
+    found = assessed(T | {"ph": 5.0, "alkalinity_eq_l": alkalinity} | extra | u)
+    assert found.results["status"].tolist() == (["carbon from air"] if accepted else [])
+    assert len(found.rejected) == (0 if accepted else 1)
 
 
 def gap(**row):
@@ -120,18 +160,20 @@ def test_a_pair_that_contradicts_itself_is_refused_alone():
 
 
 REFUSED = [
-    ("no temperature", {"ph": 7.0, "alkalinity_eq_l": 1e-3}, "temperature_c", "", "every sample needs a water temperature",
-     r"one value for all rows under \[values\]"),
-    ("alkalinity alone", T | {"alkalinity_eq_l": 1e-3}, "ph, alkalinity, dic, pco2", "found alkalinity",
+    ("no temperature", {"ph": 7.0, "alkalinity_eq_l": 1e-3}, "temperature_c", "missing", "every sample needs a water temperature",
+     r"a value for rows without one under \[fill\]"),
+    ("alkalinity alone", T | {"alkalinity_eq_l": 1e-3}, "ph, alkalinity, dic, pco2", "only alkalinity",
      "two of pH, alkalinity, carbon and CO2 pressure make a known pair", "or run with --exchange open"),
-    ("pH alone", T | {"ph": 7.0}, "ph, alkalinity, dic, pco2", "found pH", "two of pH", "^give a second one$"),
-    ("nothing", T, "ph, alkalinity, dic, pco2", "found none", "two of pH", "^give a second one$"),
+    ("pH alone", T | {"ph": 7.0}, "ph, alkalinity, dic, pco2", "only pH", "two of pH", "^give a second one$"),
+    ("nothing", T, "ph, alkalinity, dic, pco2", "none", "two of pH", "^give a second one$"),
     ("gas beyond carbon", T | {"dic_mol_l": 1e-5, "pco2_atm": 0.01}, "dic_mol_l, pco2_atm", "dic_mol_l 10 µmol/L; pco2_atm 1e+04 µatm",
      "total carbon must be more than the CO2 that this pressure dissolves", "check both readings"),
     ("alkalinity beyond any pH", T | {"alkalinity_eq_l": 15.0, "dic_mol_l": 1e-3, "ionic_strength_mol_l": 0.01}, "alkalinity_eq_l, dic_mol_l",
      "alkalinity_eq_l 1.5e+07 µeq/L; dic_mol_l 1000 µmol/L", "no water has this pair of values", "check both readings and their units"),
-    ("thick brine without salinity", T | {"ph": 7.0, "alkalinity_eq_l": 1e-3, "ionic_strength_mol_l": 2.0}, "conductivity, salinity", "",
-     "ionic strength of fresh water must be at most 1 mol/L", "give salinity if this is salt water"),
+    ("thick brine without salinity", T | {"ph": 7.0, "alkalinity_eq_l": 1e-3, "ionic_strength_mol_l": 2.0}, "conductivity_us_cm",
+     "ionic strength 2 mol/L from given", "ionic strength of fresh water must be at most 1 mol/L", "give salinity if this is salt water"),
+    ("Lueker in brackish water", T | {"salinity": 5.0, "ph_total": 8.0, "alkalinity_eq_l": 2e-3}, "salinity, temperature_c", "5; 25 °C",
+     "the lueker constants reach salinity 19 to 43 at 2 to 35 °C", "use --marine-constants millero"),
     ("thin air", T | {"ph": 7.0, "alkalinity_eq_l": 1e-3, "air_pressure_atm": 0.1}, "air_pressure_atm", "0.1",
      "air_pressure_atm must be 0.2 to 2 atm", "correct the value or its unit"),
     ("hot", {"temperature_c": 70.0, "ph": 7.0, "alkalinity_eq_l": 1e-3}, "temperature_c", "70", "temperature_c must be -2 to 60 °C", "correct the value"),
@@ -141,12 +183,20 @@ REFUSED = [
 @pytest.mark.parametrize("case", REFUSED, ids=[c[0] for c in REFUSED])
 def test_refusal_says_column_value_rule_and_remedy(case):
     """Each way to be refused, in the words of rejected.csv."""
-    _, row, column, value, rule, remedy = case
-    line = assessed(row).rejected.iloc[0]
+    name, row, column, value, rule, remedy = case
+    line = assessed(row, carbonic="lueker" if name.startswith("Lueker") else "millero").rejected.iloc[0]
     assert (line["column"], line["value"]) == (column, value)
     assert line["rule"].startswith(rule)
     with pytest.raises(ValueError, match=remedy):
         raise ValueError(line["remedy"])
+
+
+def test_refusal_names_the_headers_of_the_file(tmp_path):
+    """The user looks for the column under the name it has in the file."""
+    path = tmp_path / "t.csv"
+    path.write_text("sample_id,Water temperature (°C),Field pH,ANC (µeq/L)\nx,25,10,50\n", encoding="utf-8")
+    line = assess(read_readings(path), Options(draws=0), ()).rejected.iloc[0]
+    assert line["column"] == "Field pH, ANC (µeq/L)"
 
 
 def test_open_exchange_needs_alkalinity_only():

@@ -129,6 +129,14 @@ def test_share_of_draws_that_have_a_solution():
     assert_allclose(results(row, draws=20000).loc["w", "draws_solved"], norm.cdf(1.5), rtol=0, atol=0.01)
 
 
+def test_assumed_carbon_has_no_interval():
+    """An acid water whose carbon is that of air: pH and alkalinity are readings and have intervals, what rests on carbon has none."""
+    row = results({"sample_id": "w", "temperature_c": 10.0, "ph": 4.9, "alkalinity_eq_l": -1.5e-5}, draws=100).loc["w"]
+    assert row["status"] == "carbon from air"
+    ends = [name for name in row.index if name.endswith("_low") and np.isfinite(row[name])]
+    assert ends == ["ph_low", "alkalinity_meq_l_low", "alkalinity_mg_l_caco3_low"]
+
+
 def test_no_draws_no_intervals():
     """And nothing that depends on them."""
     found = assessed(W | {"alkalinity_eq_l": 1e-4}, draws=0)

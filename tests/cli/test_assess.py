@@ -86,7 +86,7 @@ CANNOT = [
     ("no limits", HEADER + "a,10,7,1\n", ("--limits", "none.toml"), "the limits file none.toml cannot be read: No such file"),
     ("readings as map", HEADER + "a,10,7,1\n", ("--map", "t.csv"), "t.csv"),
     ("readings as limits", HEADER + "a,10,7,1\n", ("--limits", "t.csv"), "t.csv is not valid TOML"),
-    ("no row accepted", HEADER + "a,,7,1\n", (), "no row of t.csv can be assessed; 1 were refused, mostly since every sample needs"),
+    ("no row accepted", HEADER + "a,,7,1\n", (), "no row of t.csv can be assessed; 1 were refused, mostly for temperature_c: every sample needs"),
 ]
 
 
@@ -107,7 +107,7 @@ def test_rejected_rows_are_written_even_if_none_is_accepted(call, table):
     call("assess", table(HEADER + "a,,7,1\nb,10,x,1\n"), "--out", "o", *QUICK)
     with open("o/rejected.csv", encoding="utf-8", newline="") as stream:
         lines = [(r["row"], r["sample_id"], r["column"], r["value"]) for r in csv.DictReader(stream)]
-    assert lines == [("2", "a", "temperature_c", ""), ("3", "b", "ph", "x")]
+    assert lines == [("2", "a", "temperature_c", "missing"), ("3", "b", "ph", "x")]
 
 
 @pytest.mark.parametrize("option", ["readings", "--map", "--limits", "--out"])

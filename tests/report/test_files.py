@@ -38,10 +38,22 @@ def test_files_get_their_names_at_the_end(tmp_path):
 
 @pytest.mark.parametrize("error", [RuntimeError("x"), KeyboardInterrupt(), SystemExit(3)], ids=type)
 def test_nothing_is_left_after_an_error(tmp_path, error):
-    """Neither a half file nor a part of one; the error goes on."""
+    """Neither a half file nor a part of one, nor a new folder; the error goes on."""
     with pytest.raises(type(error)):
         write(tmp_path / "out", {"a.csv": "1", "b.csv": "2"}, fail=error)
-    assert seen(tmp_path / "out") == {}
+    assert not (tmp_path / "out").exists()
+
+
+def test_a_folder_that_was_there_stays_after_an_error(tmp_path):
+    """Empty as it was; and a new folder stays if someone else has put a file there meanwhile."""
+    (tmp_path / "old").mkdir()
+    with pytest.raises(RuntimeError, match="x"):
+        write(tmp_path / "old", {"a.csv": "1"}, fail=RuntimeError("x"))
+    assert seen(tmp_path / "old") == {}
+    with pytest.raises(RuntimeError, match="x"), OutputFolder(tmp_path / "new", NAMES, force=False):
+        (tmp_path / "new" / "other.txt").write_text("theirs")
+        raise RuntimeError("x")
+    assert seen(tmp_path / "new") == {"other.txt": "theirs"}
 
 
 def test_an_error_leaves_the_earlier_result(tmp_path):
@@ -96,7 +108,7 @@ def test_a_folder_that_cannot_be_written(tmp_path, monkeypatch):
     monkeypatch.setattr("aquabuf.report.files.tempfile.mkstemp", refuse)
     with pytest.raises(FileError, match=r"^the folder 'out' cannot be written to: permission denied. Choose another with --out.$"):
         write(tmp_path / "out", {"a.csv": "1"})
-    assert seen(tmp_path / "out") == {}
+    assert not (tmp_path / "out").exists()
 
 
 @pytest.mark.skipif(hasattr(os, "geteuid") and os.geteuid() == 0, reason="the superuser may write anywhere")

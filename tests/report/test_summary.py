@@ -84,7 +84,7 @@ def test_refusals_and_unmet_checks_are_counted(run):
     flat = " ".join(words.split())
     assert "2 of 2 fail holding time (at most 14): titrate sooner; within a day is better." in flat
     assert "Refused: 2 rows" in flat
-    assert "2 x every sample needs a water temperature" in flat
+    assert "2 x temperature_c: every sample needs a water temperature" in flat
 
 
 def test_salt_water_names_its_constants(run):

@@ -81,8 +81,8 @@ def assess(readings: Readings, options: Options, limits: tuple[Limit, ...], *, o
     figures["draws_solved"] = spread.solved
     gap = gap.take(keep)
     figures |= {"closure_meq_l": gap.carbon_meq_l, "closure_u_meq_l": gap.carbon_u_meq_l}
-    kind = kept["water_kind"].to_numpy(str) if "water_kind" in kept else np.full(keep.size, "")
-    broken = verdicts(limits, figures, kind, figures["regime"].astype(str))
+    kind = kept["water_kind"].to_numpy(dtype=object) if "water_kind" in kept else np.full(keep.size, "", dtype=object)
+    broken = verdicts(limits, figures, kind, figures["regime"].astype(object))
     pair = np.array(PAIRS, dtype=object)[choice]
     checks = sample_checks(values, u, figures, pair, gap.carbonate, gap.carbonate_u)
     figures |= {"pair": pair, "failed_checks": failed(checks, keep.size)}
