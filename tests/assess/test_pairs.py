@@ -96,6 +96,16 @@ def test_how_far_below_zero_carbonate_may_be(extra, most, part, accepted):
     assert len(found.rejected) == (0 if accepted else 1)
 
 
+@pytest.mark.parametrize(("ph", "pair"), [(5.3, "pH and air"), (5.5, "pH and alkalinity")])
+def test_where_a_little_carbonate_cannot_tell_the_carbon(ph, pair):
+    """Below a tenth of a charge per mole of carbon, at pH pK1 - log10 9 = 5.4: there carbonate of one standard uncertainty
+    would be blown up tenfold, above it is used as it is."""
+    hand = BareWater(25.0, 1e-4)
+    h = hand.c_h * 10.0**-ph
+    row = T | {"ph": ph, "alkalinity_eq_l": np.hypot(2e-6, np.log(10.0) * h * 0.05) - h, "alkalinity_u_eq_l": 2e-6, "ionic_strength_mol_l": 1e-4}
+    assert results(row).iloc[0]["pair"] == pair
+
+
 def gap(**row):
     """Closure of one sample."""
     values = values_of(readings(T | row).frame)

@@ -159,12 +159,12 @@ def oliver(doc, ph):
     return 10.0 * doc / (1.0 + 10.0 ** (0.96 + 0.90 * ph - 0.039 * ph * ph - ph))
 
 
-def organic(doc, ph, carbonate_meq_l, acid_to_six_meq_l=0.1, aluminum=0.0):
+def organic(doc, ph, carbonate_meq_l, acid_to_six_meq_l=0.1, aluminum=0.0, pair="pH and alkalinity"):
     """The two checks of organic charge for one sample."""
     values = {"doc_mg_l": one(doc), "temperature_c": one(10.0), "aluminum_mol_l": one(aluminum)}
     figures = {"ph": one(ph), "bicarbonate_mmol_l": one(carbonate_meq_l), "carbonate_mmol_l": one(0.0), "pco2_uatm": one(400.0),
                "ionic_strength_mol_l": one(0.0), "draws_solved": one(np.nan), RANK_BY: one(acid_to_six_meq_l)}
-    found = sample_checks(values, {}, figures, np.array(["pH and alkalinity"]), one(np.nan), one(np.nan))
+    found = sample_checks(values, {}, figures, np.array([pair]), one(np.nan), one(np.nan))
     return {c.name: c for c in reversed(found)}
 
 
@@ -200,6 +200,12 @@ def test_failed_checks_stand_in_the_results():
     """By name, joined by semicolons; empty where all are met."""
     table = assessed(W | {"sample_id": "a"}, W | {"sample_id": "b", "holding_days": 20.0, "turbidity_ntu": 1001.0}).results
     assert table["failed_checks"].tolist() == ["", "holding time; usual ranges"]
+
+
+@pytest.mark.parametrize(("pair", "made"), [("pH and alkalinity", True), ("pH and air", True), ("pH and carbon", False), ("carbon and pCO2", False)])
+def test_brown_water_matters_where_alkalinity_speaks_for_carbon(pair, made):
+    """And where it could not; not where carbon was measured."""
+    assert np.isfinite(organic(5.0, 6.0, 0.1, pair=pair)["CO2 in brown acid water"].value[0]) == made
 
 
 def test_brown_water_matters_only_for_ph_and_alkalinity():

@@ -46,6 +46,13 @@ def test_options_reach_the_run(call, table):
                          "base_to_ph_10_0_meq_l", "base_to_ph_10_0_open_meq_l"]
 
 
+def test_zero_is_a_choice_of_its_own(call, table):
+    """--draws 0 and --seed 0 are not the defaults: no intervals, and the seed as given."""
+    call("assess", table(), "--out", "o", "--draws", "0", "--seed", "0", "--no-figure")
+    assert (record()["options"]["draws"], record()["options"]["seed"]) == (0, 0)
+    assert "_low" not in Path("o/results.csv").read_text(encoding="utf-8").split("\n")[0]
+
+
 def test_defaults_of_the_command_are_those_of_the_options(call, table):
     """No second set of defaults."""
     from dataclasses import asdict

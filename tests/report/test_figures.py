@@ -173,6 +173,16 @@ def test_odd_tables_are_drawn(table, tmp_path, text):
     assert "</svg>" in paths["svg"].read_text(encoding="utf-8")
 
 
+@pytest.mark.xfail(strict=True, reason="names are taken for mathematics, private labels or letters of the font")
+@pytest.mark.parametrize(("where", "name"), [("sample", "a $\\frac{$ b"), ("file", "a $\\frac{$ b"), ("sample", "_hidden"), ("sample", "湖水")])
+def test_any_name_can_be_drawn(table, tmp_path, name, where):
+    """Dollar signs, a leading underscore, another script: drawn as they are, or as well as the font can, without a warning."""
+    tally, curves = tally_of(table, f'sample_id,temperature_c,ph,alkalinity_meq_l\n"{name if where == "sample" else "plain"}",10,7,1\n')
+    save_samples(tally, curves, {"svg": tmp_path / "f.svg"}, source=name if where == "file" else "plain")
+    svg = (tmp_path / "f.svg").read_text(encoding="utf-8")
+    assert name in svg
+
+
 def test_figure_files_have_no_date_and_no_program(table, tmp_path):
     """Two files of the same data are the same bytes; text in the vector file stays text."""
     tally, curves = tally_of(table)

@@ -50,9 +50,9 @@ def test_a_folder_that_was_there_stays_after_an_error(tmp_path):
     with pytest.raises(RuntimeError, match="x"):
         write(tmp_path / "old", {"a.csv": "1"}, fail=RuntimeError("x"))
     assert seen(tmp_path / "old") == {}
-    with pytest.raises(RuntimeError, match="x"), OutputFolder(tmp_path / "new", NAMES, force=False):
-        (tmp_path / "new" / "other.txt").write_text("theirs")
-        raise RuntimeError("x")
+    out = OutputFolder(tmp_path / "new", NAMES, force=False).__enter__()
+    (tmp_path / "new" / "other.txt").write_text("theirs")
+    out.__exit__(RuntimeError, RuntimeError("x"), None)
     assert seen(tmp_path / "new") == {"other.txt": "theirs"}
 
 

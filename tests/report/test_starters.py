@@ -1,5 +1,7 @@
 """Starter files: every kind can be read and assessed as it is; the limits file repeats the shipped limits."""
 
+import tomllib
+
 import pytest
 
 from aquabuf.assess.limits import read_limits, shipped_limits
@@ -32,6 +34,17 @@ def test_limits_starter_changes_nothing_as_it_is(tmp_path):
     path = tmp_path / "limits.toml"
     path.write_text(starter("limits"), encoding="utf-8")
     assert read_limits(path, QUANTITIES) == shipped_limits()
+
+
+def test_limits_starter_holds_every_number():
+    """Limit, floor, group, waters and words of each shipped limit stand behind its #."""
+    text = "\n".join(line.removeprefix("#") for line in starter("limits").splitlines() if not line.startswith("# "))
+    found = tomllib.loads(text)["limits"]
+    assert list(found) == [x.name for x in shipped_limits()]
+    for x in shipped_limits():
+        entry = found[x.name]
+        assert (entry["limit"], entry.get("lower", float("-inf")), entry["group"]) == (x.limit, x.lower, x.group)
+        assert (tuple(entry["kinds"]), tuple(entry["regimes"]), entry["words"]) == (x.kinds, x.regimes, x.words)
 
 
 @pytest.mark.xfail(strict=True, reason="a shipped limit has another unit than its quantity")
