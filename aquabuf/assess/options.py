@@ -42,6 +42,8 @@ class Options:
         if self.draws != 0 and not 100 <= self.draws <= 100_000:
             raise InputError(f"draws must be 0 or from 100 to 100000; found {self.draws}. "
                              f"Use 1000, or 0 for no intervals.")
+        if self.seed < 0:
+            raise InputError(f"seed must be 0 or more; found {self.seed}. Any whole number does.")
         for name in ("acid_thresholds", "base_thresholds"):
             for ph in getattr(self, name):
                 if not 2.0 <= ph <= 12.0:

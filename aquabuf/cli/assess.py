@@ -6,6 +6,8 @@ from pathlib import Path
 
 import click
 
+from aquabuf.errors import InputError
+
 __all__ = ["assess"]
 
 
@@ -45,6 +47,9 @@ def assess(readings: Path, folder: Path, mapping: Path | None, limits: Path | No
     from aquabuf.report.run import assess_file
 
     given = choices | {"acid_thresholds": thresholds, "base_thresholds": base_thresholds}
-    options = Options(**{name: value for name, value in given.items() if value is not None})  # type: ignore[arg-type]
+    try:
+        options = Options(**{n: v for n, v in given.items() if v is not None})  # type: ignore[arg-type]
+    except InputError as error:
+        raise click.UsageError(str(error)) from None
     click.echo(assess_file(readings, folder, options, mapping=mapping, limits=limits, force=force, figure=figure,
                            notify=lambda text: click.echo(text, err=True)), nl=False)

@@ -4,6 +4,8 @@ from __future__ import annotations
 
 import click
 
+from aquabuf.errors import InputError
+
 __all__ = ["columns"]
 
 
@@ -19,4 +21,7 @@ def columns(names: tuple[str, ...], results: bool) -> None:
     else:
         from aquabuf.readings.listing import columns_text
 
-        click.echo(columns_text(names))
+        try:
+            click.echo(columns_text(names))
+        except InputError as error:
+            raise click.UsageError(str(error)) from None

@@ -4,6 +4,8 @@ from __future__ import annotations
 
 import click
 
+from aquabuf.errors import InputError
+
 __all__ = ["template"]
 
 
@@ -17,4 +19,7 @@ def template(kind: str) -> None:
     """
     from aquabuf.report.starters import starter
 
-    click.echo(starter(kind), nl=False)
+    try:
+        click.echo(starter(kind), nl=False)
+    except InputError as error:
+        raise click.UsageError(str(error)) from None

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import warnings
 from collections.abc import Mapping
 from pathlib import Path
 from typing import Any
@@ -25,7 +26,7 @@ __all__ = ["plot_alkalinity", "plot_buffering", "plot_curves", "plot_worst", "sa
 # Distinct in gray print and to color-blind eyes
 CALM, WARNED, INK, FAINT = "#4a7ba6", "#c8553d", "#222222", "#b8b8b8"
 CURVE_COLORS = ("#c8553d", "#7a4e9e", "#2e7d6b", "#4a7ba6", "#9a6b1f", "#555555")
-BARS, CURVES = 12, 6
+BARS, CURVES, NAME_LENGTH = 12, 6, 22
 MANY_POINTS = 3000  # beyond, points shrink and are drawn as pixels inside the vector file
 WIDE = 10.0          # ratio of highest to lowest from which an axis is logarithmic
 LINEAR_BELOW = 0.05  # meq/L, linear part of the alkalinity axis
@@ -48,11 +49,11 @@ def _points(ax: Axes, x: NDArray, y: NDArray, warned: NDArray[np.bool_]) -> None
 
 def _alkalinity_scale(ax: Axes, low: float, high: float) -> None:
     """Plain axis for waters alike, else one that is linear near zero and logarithmic beyond."""
-    if low > 0.0 and high < WIDE * low:
+    if low * high > 0.0 and max(low / high, high / low) < WIDE:
         return
     ax.set_xscale("symlog", linthresh=LINEAR_BELOW, linscale=0.7)
     ticks = [t for t in (-10, -1, -0.1, 0, 0.1, 1, 10, 100)
-             if min(2.0 * low, 0.0) - LINEAR_BELOW <= t <= 3.0 * high + LINEAR_BELOW]
+             if min(2.0 * low, 0.0) - LINEAR_BELOW <= t <= max(3.0 * high, high / 3.0) + LINEAR_BELOW]
     ax.set_xticks(ticks, [f"{t:g}" for t in ticks])
     ax.minorticks_off()
     if low <= 0.0 <= high:
@@ -83,6 +84,12 @@ def plot_buffering(ph: NDArray, buffer_meq_l_ph: NDArray, warned: NDArray[np.boo
     return ax
 
 
+def _name(sample_id: object) -> str:
+    """A sample's name as a label: short, and not hidden as names with a leading underscore would be."""
+    text = str(sample_id)[:NAME_LENGTH]
+    return f" {text}" if text.startswith("_") else text
+
+
 def plot_worst(worst: pd.DataFrame, *, ax: Axes) -> Axes:
     """Bars of the acid that brings the worst-buffered samples to pH 6, with their intervals."""
     table = worst.head(BARS)
@@ -94,7 +101,7 @@ def plot_worst(worst: pd.DataFrame, *, ax: Axes) -> Axes:
         low, high = (table[f"{RANK_BY}_{end}"].to_numpy(dtype=float) for end in ("low", "high"))
         ax.hlines(place, low, high, color=INK, lw=1.0)
     ax.axvline(0.0, color="#666666", lw=0.8)
-    ax.set_yticks(place, [str(name)[:22] for name in table["sample_id"]])
+    ax.set_yticks(place, [_name(name) for name in table["sample_id"]], parse_math=False)
     ax.tick_params(axis="y", length=0)
     ax.xaxis.set_major_locator(MaxNLocator(6))
     line = f" (line: {COVERAGE:.0%} interval)" if f"{RANK_BY}_low" in table else ""
@@ -109,7 +116,7 @@ def plot_curves(curves: pd.DataFrame, worst: pd.DataFrame, *, ax: Axes) -> Axes:
     for color, (_, sample) in zip(CURVE_COLORS, worst.head(CURVES).iterrows(), strict=False):
         curve = curves[curves["row"] == sample["row"]]
         added = curve["acid_added_meq_l"].to_numpy()
-        ax.plot(added, curve["ph"], color=color, lw=1.5, label=str(sample["sample_id"])[:22])
+        ax.plot(added, curve["ph"], color=color, lw=1.5, label=_name(sample["sample_id"]))
         ax.plot(0.0, sample["ph"], "o", color=color, ms=4)
         reach = max(reach, 1.5 * abs(sample[RANK_BY]), 1.2 * abs(sample["alkalinity_meq_l"]))
     reach = min(max(0.1, reach), 5.0)
@@ -117,7 +124,9 @@ def plot_curves(curves: pd.DataFrame, worst: pd.DataFrame, *, ax: Axes) -> Axes:
     ax.axvline(0.0, color=FAINT, lw=0.8, zorder=0)
     ax.set(xlim=(-reach, reach), ylim=(3.5, 11.0), xlabel="Strong acid added [meq/L]  (left of 0: base)", ylabel="pH",
            title="What acid or base does to them")
-    ax.legend(loc="upper right", ncols=1)
+    if ax.lines[2:]:
+        for text in ax.legend(loc="upper right").get_texts():
+            text.set_parse_math(False)
     return ax
 
 
@@ -134,14 +143,16 @@ def sample_figure(tally: Tally, curves: pd.DataFrame, *, source: str = "") -> Fi
         plot_buffering(ph, buffer, warned, ax=axes[1, 0])
         plot_curves(curves, tally.worst, ax=axes[1, 1])
         if source:
-            figure.suptitle(f"{source}: {tally.assessed:,} samples, {tally.warned:,} with a warning", x=0.01, ha="left")
+            figure.suptitle(f"{source}: {tally.assessed:,} samples, {tally.warned:,} with a warning", x=0.01, ha="left",
+                            parse_math=False)
     return figure
 
 
 def save_samples(tally: Tally, curves: pd.DataFrame, paths: Mapping[str, Path], *, source: str = "") -> None:
     """Write the figure to a path per format (png, svg); no date and no program name goes into the files."""
     figure = sample_figure(tally, curves, source=source)
-    with matplotlib.rc_context(STYLE):
+    with matplotlib.rc_context(STYLE), warnings.catch_warnings():
+        warnings.filterwarnings("ignore", "Glyph")  # a name in letters that the font lacks is drawn as boxes
         for kind, path in paths.items():
             metadata = {"Date": None, "Creator": None} if kind == "svg" else {"Software": None}
             figure.savefig(path, format=kind, dpi=150, metadata=metadata)

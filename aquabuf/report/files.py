@@ -35,6 +35,10 @@ class OutputFolder:
         except OSError as error:
             raise FileError(f"the folder {self.folder.name!r} cannot be made: {_why(error)}. "
                             f"Choose another with --out.") from None
+        for name in self._names:
+            if (self.folder / name).is_dir():
+                raise FileError(f"{self.folder.name}/{name} is a folder, where a file is to be written. "
+                                f"Choose another folder with --out.")
         there = [n for n in self._names if (self.folder / n).exists()]
         if there and not self._force:
             raise FileError(f"{self.folder.name}/{there[0]} exists already and is not overwritten. "
@@ -74,11 +78,17 @@ class OutputFolder:
             if not self._was_there and not any(self.folder.iterdir()):
                 self.folder.rmdir()
             return
-        for name in self._names:
-            if name not in self._parts:
-                (self.folder / name).unlink(missing_ok=True)
-        for name, path in self._parts.items():
-            os.replace(path, self.folder / name)
+        try:
+            for name in self._names:
+                if name not in self._parts:
+                    (self.folder / name).unlink(missing_ok=True)
+            for name, path in self._parts.items():
+                os.replace(path, self.folder / name)
+        except OSError as problem:
+            for path in self._parts.values():
+                path.unlink(missing_ok=True)
+            raise FileError(f"results could not be put into {self.folder.name!r}: {_why(problem)}. Files there may be "
+                            f"of this run and of an earlier one; choose another folder with --out.") from None
 
 
 def _why(error: OSError) -> str:

@@ -12,10 +12,11 @@ from typing import IO
 import pandas as pd
 
 import aquabuf
-from aquabuf.assess.limits import Limit, read_limits
+from aquabuf.assess.limits import Limit
+from aquabuf.assess.limits_file import read_limits
 from aquabuf.assess.options import Options
 from aquabuf.assess.sample.assess import Assessment, assess
-from aquabuf.assess.sample.columns import result_columns
+from aquabuf.assess.sample.columns import limit_quantities
 from aquabuf.errors import FileError, InputError
 from aquabuf.readings.mapping import read_map
 from aquabuf.readings.reader import iter_readings
@@ -44,7 +45,7 @@ def assess_file(path: Path, folder: Path, options: Options, *, mapping: Path | N
     still written then.
     """
     table_map = None if mapping is None else read_map(mapping)
-    rules = read_limits(limits, {c.name: c.unit for c in result_columns(options) if c.unit})
+    rules = read_limits(limits, limit_quantities(options))
     hashes = {"readings": _sha256(path)} | {
         name: _sha256(p) for name, p in (("map", mapping), ("limits", limits)) if p is not None}
     pieces = iter_readings(path, table_map, CHUNK_ROWS)

@@ -12,6 +12,7 @@ from aquabuf.assess.sample.columns import result_columns
 
 __all__ = ["csv_text", "result_digits", "rounded"]
 
+TINY = 1e-250     # smaller is nothing, and its power of ten would overflow
 OTHER_DIGITS = 6  # significant digits of numbers without a stated number of decimals
 
 
@@ -39,10 +40,10 @@ def rounded(table: pd.DataFrame, digits: Mapping[str, int]) -> pd.DataFrame:
 
 
 def _significant(v: np.ndarray) -> np.ndarray:
-    with np.errstate(divide="ignore", invalid="ignore"):
-        power = np.where(np.isfinite(v) & (v != 0.0), np.floor(np.log10(np.abs(v))), 0.0)
+    usable = np.isfinite(v) & (np.abs(v) > TINY)
+    power = np.floor(np.log10(np.where(usable, np.abs(v), 1.0)))
     scale = 10.0 ** (OTHER_DIGITS - 1 - power)
-    return np.round(v * scale) / scale
+    return np.where(usable, np.round(v * scale) / scale, np.where(np.isfinite(v), 0.0, v))
 
 
 def csv_text(table: pd.DataFrame, *, header: bool) -> str:

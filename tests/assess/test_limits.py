@@ -6,15 +6,16 @@ import numpy as np
 import pytest
 from sample_tables import assessed, results
 
-from aquabuf.assess.limits import Limit, read_limits, shipped_limits, verdicts
+from aquabuf.assess.limits import Limit, shipped_limits, verdicts
+from aquabuf.assess.limits_file import read_limits
 from aquabuf.assess.options import Options
-from aquabuf.assess.sample.columns import result_columns
+from aquabuf.assess.sample.columns import limit_quantities
 from aquabuf.errors import FileError, InputError
 from aquabuf.readings.schema import quantities
 from aquabuf.tables import read_table
 
 SHIPPED = {limit.name: limit for limit in shipped_limits()}
-QUANTITIES = {c.name: c.unit for c in result_columns(Options()) if c.unit}
+QUANTITIES = limit_quantities(Options())
 NATURAL, PLANT = ("lake", "stream", "estuary", ""), ("raw_water", "groundwater")
 EVERY_KIND = ("", "lake", "stream", "raw_water", "treated_water", "estuary", "sea", "wastewater", "groundwater")
 UP, DOWN = np.inf, -np.inf
@@ -71,9 +72,7 @@ def test_limit_is_for_its_kinds_and_regimes_only(name):
             assert (warned([SHIPPED[name]], beyond, kind, regime) == [name]) == expected, (kind, regime)
 
 
-@pytest.mark.parametrize("name", [
-    pytest.param(n, marks=pytest.mark.xfail(strict=True, reason="'pH' in one table, '-' in the other"))
-    if x.quantity == "ph_drop_test_acid" else n for n, x in SHIPPED.items()])
+@pytest.mark.parametrize("name", SHIPPED)
 def test_limit_tells_words_source_and_next_step(name):
     """A verdict shows its rule: words, source and what to do; the quantity is a result in the same unit."""
     limit = SHIPPED[name]
@@ -167,9 +166,7 @@ def test_no_limits_at_all():
 EVERY_FIGURE = {"ph_total": 8.0, "alkalinity_eq_l": 2e-3, "temperature_c": 15.0, "salinity": 20.0, "calcium_mol_l": 5e-3, "depth_m": 3.0}
 
 
-@pytest.mark.parametrize("quantity", [
-    pytest.param(q, marks=pytest.mark.xfail(strict=True, reason="a reading that is only repeated is offered as a figure"))
-    if q == "depth_m" else q for q in QUANTITIES])
+@pytest.mark.parametrize("quantity", QUANTITIES)
 def test_every_quantity_that_a_limit_may_name_is_judged(quantity):
     """A limit that is accepted and then never looked at would be a silent hole: one that all numbers meet warns."""
     limit = Limit(name="x", group="x", quantity=quantity, operator=">", limit=-1e9, lower=-np.inf, unit="", kinds=("any",),
@@ -269,7 +266,6 @@ WRONG_TYPES = [
 
 
 @pytest.mark.parametrize("text", WRONG_TYPES)
-@pytest.mark.xfail(strict=True, reason="types and words of a limits file are not all checked")
 def test_limits_file_values_of_the_wrong_type(limits_of, text):
     """A value of the wrong type, a number that is none, a kind or regime that does not exist: a message that names it."""
     with pytest.raises(InputError, match=r"own\.toml") as error:

@@ -218,7 +218,6 @@ def test_open_exchange_needs_alkalinity_only():
     assert_allclose(table["ph"], by_hand, rtol=0, atol=0.002)
 
 
-@pytest.mark.xfail(strict=True, reason="the refusal of a lone alkalinity does not look at the exchange of the run")
 def test_a_lone_alkalinity_that_cannot_be_solved_is_not_told_to_run_open():
     """Refused in an open run for its ionic strength, so that is what the line must say."""
     line = assessed(T | {"alkalinity_eq_l": 1e-3, "ionic_strength_mol_l": 2.0}, exchange="open").rejected.iloc[0]

@@ -132,7 +132,6 @@ def test_option_that_makes_no_sense(call, table, words, message):
     assert not Path("o").exists()
 
 
-@pytest.mark.xfail(strict=True, reason="values that an option cannot have end with 1")
 @pytest.mark.parametrize("words", [("assess", "t.csv", "--out", "o", *w) for w, _ in NO_SENSE] + [("template", "pond"), ("columns", "nosuch")],
                          ids=" ".join)
 def test_value_that_an_option_cannot_have_is_wrong_usage(call, table, words):
@@ -141,7 +140,6 @@ def test_value_that_an_option_cannot_have_is_wrong_usage(call, table, words):
     assert call(*words).exit_code == 2
 
 
-@pytest.mark.xfail(strict=True, reason="a seed below zero reaches the random generator")
 def test_seed_below_zero(call, table):
     """Said in a line."""
     done = call("assess", table(), "--out", "o", "--seed", "-1", "--no-figure")

@@ -131,7 +131,6 @@ def test_files_have_the_usual_permissions(tmp_path):
     assert stat.S_IMODE((tmp_path / "a.csv").stat().st_mode) == 0o640
 
 
-@pytest.mark.xfail(strict=True, reason="publishing does not expect a folder in place of a file")
 @pytest.mark.parametrize("contents", [{"a.csv": "1", "b.csv": "2"}, {"b.csv": "2"}], ids=["written", "stale"])
 def test_a_folder_in_place_of_a_file(tmp_path, contents):
     """With force, a folder of that name is not removed: a message, and no parts left."""

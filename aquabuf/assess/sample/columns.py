@@ -8,7 +8,9 @@ from dataclasses import dataclass
 from aquabuf.assess.options import Options
 from aquabuf.tables import read_table
 
-__all__ = ["ResultColumn", "result_columns"]
+__all__ = ["AS_GIVEN", "ResultColumn", "limit_quantities", "result_columns"]
+
+AS_GIVEN = ("sample_id", "row", "site", "region", "date", "time", "depth_m", "water_kind")  # only repeated
 
 
 @dataclass(frozen=True, slots=True)
@@ -36,3 +38,8 @@ def result_columns(options: Options) -> Iterator[ResultColumn]:
             names = [threshold_column(kind, ph, exchange) for ph in thresholds]
         for name in names:
             yield ResultColumn(name, row["unit"], row["interval"] == "yes", digits, row["meaning"])
+
+
+def limit_quantities(options: Options) -> dict[str, str]:
+    """Figures that a limit can be set on, with their unit: the numbers that are worked out, not those only repeated."""
+    return {c.name: c.unit for c in result_columns(options) if c.unit and c.name not in AS_GIVEN}

@@ -13,20 +13,20 @@ from aquabuf.engine.conditions import FRESH_BELOW
 from aquabuf.engine.water import Water
 from aquabuf.units import convert, substances
 
-__all__ = ["MARINE_FROM", "RANK_BY", "TEST_ACID_EQ_L", "alkalinity_as_read", "headline", "threshold_column",
+__all__ = ["MARINE_FROM", "RANK_BY", "REGIMES", "TEST_ACID_EQ_L", "alkalinity_as_read", "headline", "threshold_column",
            "words_and_details"]
 
 Array = NDArray[np.float64]
 
 TEST_ACID_EQ_L = 5e-5  # 0.05 meq/L: of the order of an acid episode in a dilute lake; common practice, no source
+REGIMES = ("fresh", "brackish", "marine")
 MARINE_FROM = 30.0     # practical salinity; Venice system 1958 (recalled)
 CCPP_AT_REST_MG_L = 1.0  # within this the water is called balanced; common practice, no source
 
 
 def threshold_column(kind: str, ph: float, exchange: str) -> str:
     """Column name of a tolerance, such as acid_to_ph_6_0_open_meq_l."""
-    digits = f"{ph:.2f}".rstrip("0")
-    digits = digits + "0" if digits.endswith(".") else digits
+    digits = f"{ph:g}" if ph % 1.0 else f"{ph:.1f}"
     return f"{kind}_to_ph_{digits.replace('.', '_')}{'_open' if exchange == 'open' else ''}_meq_l"
 
 

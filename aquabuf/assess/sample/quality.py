@@ -64,11 +64,10 @@ def sample_checks(values: Values, u: Values, figures: Mapping[str, NDArray], pai
     measured = get("conductivity_us_cm")
     computed = np.where(complete, _conductivity(values, figures), np.nan)
     spread = np.where(measured < 5.0, 50.0, np.where(measured <= 30.0, 30.0, 20.0))
-    hardness = 100.0 * ((get("calcium_mol_l") + get("magnesium_mol_l")) / get("total_hardness_mol_l") - 1.0)
+    hardness = _percent_off(get("calcium_mol_l") + get("magnesium_mol_l"), get("total_hardness_mol_l"), 1e-9)
     unstated_salinity = np.where(np.isnan(get("salinity")), measured, np.nan)
     outside, names = _outside_usual(values, rows)
-    with np.errstate(divide="ignore", invalid="ignore"):
-        conductivity_off = 100.0 * (computed / np.where(measured > 0.0, measured, np.nan) - 1.0)
+    conductivity_off = _percent_off(computed, measured, 0.01)
     return [
         Check("ion balance", imbalance, -allowed, allowed),
         Check("conductivity", conductivity_off, -spread, spread),
@@ -83,6 +82,13 @@ def sample_checks(values: Values, u: Values, figures: Mapping[str, NDArray], pai
         Check("usual ranges", outside, 0.0, 0.0, names),
         Check("draws", 100.0 * figures["draws_solved"], 90.0, np.inf),
     ]
+
+
+def _percent_off(value: Array, reference: Array, least: float) -> Array:
+    """How far a value is from its reference [%]; nan where the reference is not more than `least`."""
+    with np.errstate(invalid="ignore"):
+        usable = reference > least
+    return 100.0 * (value / np.where(usable, reference, np.nan) - 1.0)
 
 
 def _charges(values: Values, figures: Mapping[str, NDArray], rows: int) -> tuple[Array, Array, NDArray[np.bool_]]:
@@ -138,7 +144,7 @@ def _brown(values: Values, figures: Mapping[str, NDArray], pair: NDArray) -> lis
     any_known = np.isfinite(doc) | np.isfinite(values.get("aluminum_mol_l", np.full(pair.size, np.nan)))
     organic = np.where(rests_on_both & np.isfinite(doc), organic, np.nan)
     return [Check("CO2 in brown acid water", 100.0 * organic, -np.inf, 20.0),
-            Check("CO2 in brown acid water", no_doc, 5.5, np.inf),
+            Check("CO2 in acid water", no_doc, 5.5, np.inf),
             Check("acids not counted", np.where(any_known, 100.0 * share, np.nan), -np.inf, 20.0)]
 
 
@@ -201,8 +207,8 @@ def _limit_words(low: Array, high: Array) -> list[str]:
     @cache
     def one(a: float, b: float) -> str:
         if a == -np.inf:
-            return f"at most {b:.4g}"
-        return f"at least {a:.4g}" if b == np.inf else f"{a:.4g} to {b:.4g}"
+            return f"at most {b:.5g}"
+        return f"at least {a:.5g}" if b == np.inf else f"{a:.5g} to {b:.5g}"
     return [one(a, b) for a, b in zip(low.tolist(), high.tolist(), strict=True)]
 
 

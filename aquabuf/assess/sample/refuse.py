@@ -36,18 +36,18 @@ def refusals(frame: pd.DataFrame, values: Values, bad: NDArray[np.bool_], acids:
         if np.isnan(t[i]):
             reasons[i] = (("temperature_c",), "missing", "every sample needs a water temperature",
                           "give temperature_c, or a value for rows without one under [fill] of a map file")
-        elif len(members) < 2:
-            found = members[0] if members else "none"
-            reasons[i] = (("ph", "alkalinity", "dic", "pco2"), f"only {found}" if members else "none",
+        elif len(members) < 2 and not (members == ["alkalinity"] and options.exchange == "open"):
+            other = ", or run with --exchange open" if members == ["alkalinity"] else ""
+            reasons[i] = (("ph", "alkalinity", "dic", "pco2"), f"only {members[0]}" if members else "none",
                           "two of pH, alkalinity, carbon and CO2 pressure make a known pair",
-                          "give a second one" + (", or run with --exchange open" if found == "alkalinity" else ""))
+                          f"give a second one{other}")
     remaining = np.array([i for i in rows.tolist() if i not in reasons], dtype=np.intp)
     if remaining.size:
-        nowhere = np.zeros(bad.size, dtype=bool)
-        first = next(choose(values, bad.size, options, carbon_unknown=nowhere,
-                            preferred=np.full(bad.size, NO_PAIR, dtype=np.int8)))
         only = np.full(bad.size, NO_PAIR, dtype=np.int8)
-        only[remaining] = first[remaining]
+        for choice in choose(values, bad.size, options, carbon_unknown=np.zeros(bad.size, dtype=bool),
+                             preferred=np.full(bad.size, NO_PAIR, dtype=np.int8)):
+            open_rows = remaining[only[remaining] == NO_PAIR]
+            only[open_rows] = choice[open_rows]
         for pair, ph_column, group in groups(values, only):
             status = water_of(take_rows(values, group), pair, ph_column, acids, options).status
             for i, code in zip(group.tolist(), status.tolist(), strict=True):

@@ -12,7 +12,7 @@ from aquabuf.arrays import worded
 from aquabuf.assess.frames import frame_of
 from aquabuf.assess.limits import Limit
 from aquabuf.assess.options import Options
-from aquabuf.assess.sample.columns import result_columns
+from aquabuf.assess.sample.columns import AS_GIVEN, result_columns
 from aquabuf.assess.sample.draws import Intervals
 from aquabuf.assess.sample.inputs import alkalinity_reading, ionic_strength
 from aquabuf.assess.sample.solve import PAIRS, PH_AIR
@@ -22,9 +22,6 @@ __all__ = ["results_table", "verdict_table"]
 OUTSIDE_RANGE = "temperature, salinity, ionic strength or pressure is outside the range of a constant"
 CARBON_FROM_AIR = ("pH and alkalinity of this acid water cannot tell its carbon (carbonate within uncertainty and "
                    "organic charge of zero); pH was kept and carbon set by air")
-
-
-AS_GIVEN = ("sample_id", "row", "site", "region", "date", "time", "depth_m", "water_kind")
 
 
 def results_table(kept: pd.DataFrame, figures: Mapping[str, NDArray], values: Mapping[str, NDArray],
