@@ -8,6 +8,7 @@ No range check here: `engine.conditions` checks readings once, at the border.
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+from aquabuf.arrays import exp10
 from aquabuf.chem.properties import GAS_CONSTANT, kelvin, water_density
 
 __all__ = [
@@ -32,7 +33,7 @@ _PLUMMER_BUSENBERG = {
 def _plummer_busenberg(key: str, t_c: ArrayLike) -> NDArray[np.float64]:
     a, b, c, d, e = _PLUMMER_BUSENBERG[key]
     t = kelvin(t_c)
-    return 10.0 ** (a + b * t + c / t + d * np.log10(t) + e / (t * t))
+    return exp10(a + b * t + c / t + d * np.log10(t) + e / (t * t))
 
 
 def k_henry_co2(t_c: ArrayLike) -> NDArray[np.float64]:
@@ -78,18 +79,18 @@ def k_pair_caco3(t_c: ArrayLike) -> NDArray[np.float64]:
 def k_pair_mghco3(t_c: ArrayLike) -> NDArray[np.float64]:
     """Mg++ + HCO3- = MgHCO3+, 10 to 90 °C. [kg/mol] Siebert & Hostetler 1977 (recalled; 1.07 at 25 °C)."""
     t = kelvin(t_c)
-    return 10.0 ** (-59.215 + 2537.455 / t + 20.92298 * np.log10(t))
+    return exp10(-59.215 + 2537.455 / t + 20.92298 * np.log10(t))
 
 
 def k_pair_mgco3(t_c: ArrayLike) -> NDArray[np.float64]:
     """Mg++ + CO3-- = MgCO3(aq), 10 to 90 °C. [kg/mol] Siebert & Hostetler 1977 (recalled; 2.98 at 25 °C)."""
-    return 10.0 ** (0.991 + 0.00667 * kelvin(t_c))
+    return exp10(0.991 + 0.00667 * kelvin(t_c))
 
 
 def _van_t_hoff(log_k25: float, enthalpy_j_mol: float, t_c: ArrayLike) -> NDArray[np.float64]:
     """Association constant from its value at 25 °C and a constant enthalpy."""
     inverse = 1.0 / kelvin(t_c) - 1.0 / kelvin(25.0)
-    return 10.0 ** (log_k25 - enthalpy_j_mol / (np.log(10.0) * GAS_CONSTANT) * inverse)
+    return exp10(log_k25 - enthalpy_j_mol / (np.log(10.0) * GAS_CONSTANT) * inverse)
 
 
 def k_pair_nahco3(t_c: ArrayLike) -> NDArray[np.float64]:
@@ -133,7 +134,7 @@ def k_water(t_c: ArrayLike) -> NDArray[np.float64]:
     q = rho * np.exp(-0.864671 + 8659.19 / t - 22786.2 / (t * t) * rho ** (2.0 / 3.0))
     gas = 0.61415 + 48251.33 / t - 67707.93 / t**2 + 10102100.0 / t**3
     liquid = np.log10(1.0 + q) - q / (q + 1.0) * rho * (0.642044 - 56.8534 / t - 0.375754 * rho)
-    return 10.0 ** -(-12.0 * liquid + gas + 2.0 * np.log10(0.018015268))
+    return exp10(12.0 * liquid - gas - 2.0 * np.log10(0.018015268))
 
 
 def k_water_marshall_franck(t_c: ArrayLike) -> NDArray[np.float64]:
@@ -145,4 +146,4 @@ def k_water_marshall_franck(t_c: ArrayLike) -> NDArray[np.float64]:
     t = kelvin(t_c)
     log_rho = np.log10(water_density(t_c) / 1000.0)
     base = -4.098 - 3245.2 / t + 2.2362e5 / t**2 - 3.984e7 / t**3
-    return 10.0 ** (base + (13.957 - 1262.3 / t + 8.5641e5 / t**2) * log_rho)
+    return exp10(base + (13.957 - 1262.3 / t + 8.5641e5 / t**2) * log_rho)

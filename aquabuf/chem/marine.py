@@ -8,6 +8,7 @@ No range check here: `engine.conditions` checks readings once, at the border.
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+from aquabuf.arrays import exp10
 from aquabuf.chem.properties import kelvin
 from aquabuf.chem.seasalt import ionic_strength_seawater, per_kg_solution
 
@@ -55,8 +56,8 @@ def k1_millero(t_c: ArrayLike, salinity: ArrayLike) -> Array:
     t, s, root = _ts(t_c, salinity)
     log_t = np.log(t)
     fresh = -126.34048 + 6320.813 / t + 19.568224 * log_t
-    return 10.0 ** -(fresh + 13.4191 * root + 0.0331 * s - 5.33e-5 * s * s
-                     + (-530.123 * root - 6.103 * s) / t - 2.06950 * root * log_t)
+    return exp10(-(fresh + 13.4191 * root + 0.0331 * s - 5.33e-5 * s * s
+                     + (-530.123 * root - 6.103 * s) / t - 2.06950 * root * log_t))
 
 
 def k2_millero(t_c: ArrayLike, salinity: ArrayLike) -> Array:
@@ -67,8 +68,8 @@ def k2_millero(t_c: ArrayLike, salinity: ArrayLike) -> Array:
     t, s, root = _ts(t_c, salinity)
     log_t = np.log(t)
     fresh = -90.18333 + 5143.692 / t + 14.613358 * log_t
-    return 10.0 ** -(fresh + 21.0894 * root + 0.1248 * s - 3.687e-4 * s * s
-                     + (-772.483 * root - 20.051 * s) / t - 3.3336 * root * log_t)
+    return exp10(-(fresh + 21.0894 * root + 0.1248 * s - 3.687e-4 * s * s
+                     + (-772.483 * root - 20.051 * s) / t - 3.3336 * root * log_t))
 
 
 def k1_lueker(t_c: ArrayLike, salinity: ArrayLike) -> Array:
@@ -77,7 +78,7 @@ def k1_lueker(t_c: ArrayLike, salinity: ArrayLike) -> Array:
     Source: Lueker, Dickson & Keeling 2000, Mar. Chem. 70:105, abstract.
     """
     t, s, _ = _ts(t_c, salinity)
-    return 10.0 ** -(3633.86 / t - 61.2172 + 9.67770 * np.log(t) - 0.011555 * s + 0.0001152 * s * s)
+    return exp10(-(3633.86 / t - 61.2172 + 9.67770 * np.log(t) - 0.011555 * s + 0.0001152 * s * s))
 
 
 def k2_lueker(t_c: ArrayLike, salinity: ArrayLike) -> Array:
@@ -86,7 +87,7 @@ def k2_lueker(t_c: ArrayLike, salinity: ArrayLike) -> Array:
     Source: Lueker, Dickson & Keeling 2000, Mar. Chem. 70:105, abstract.
     """
     t, s, _ = _ts(t_c, salinity)
-    return 10.0 ** -(471.78 / t + 25.9290 - 3.16967 * np.log(t) - 0.01781 * s + 0.0001122 * s * s)
+    return exp10(-(471.78 / t + 25.9290 - 3.16967 * np.log(t) - 0.01781 * s + 0.0001122 * s * s))
 
 
 def k_boric(t_c: ArrayLike, salinity: ArrayLike) -> Array:
@@ -175,12 +176,12 @@ def k_sulfide(t_c: ArrayLike, salinity: ArrayLike) -> Array:
 def ksp_calcite_sea(t_c: ArrayLike, salinity: ArrayLike) -> Array:
     """Stoichiometric solubility product of calcite; S 5 to 44, 5 to 40 °C. [(mol/kg)^2] Mucci 1983 (recalled)."""
     t, s, root = _ts(t_c, salinity)
-    return 10.0 ** (-171.9065 - 0.077993 * t + 2839.319 / t + 71.595 * np.log10(t)
+    return exp10(-171.9065 - 0.077993 * t + 2839.319 / t + 71.595 * np.log10(t)
                     + (-0.77712 + 0.0028426 * t + 178.34 / t) * root - 0.07711 * s + 0.0041249 * s * root)
 
 
 def ksp_aragonite_sea(t_c: ArrayLike, salinity: ArrayLike) -> Array:
     """Stoichiometric solubility product of aragonite; S 5 to 44, 5 to 40 °C. [(mol/kg)^2] Mucci 1983 (recalled)."""
     t, s, root = _ts(t_c, salinity)
-    return 10.0 ** (-171.945 - 0.077993 * t + 2903.293 / t + 71.595 * np.log10(t)
+    return exp10(-171.945 - 0.077993 * t + 2903.293 / t + 71.595 * np.log10(t)
                     + (-0.068393 + 0.0017276 * t + 88.135 / t) * root - 0.10018 * s + 0.0059415 * s * root)

@@ -11,6 +11,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from aquabuf.arrays import LN10, exp10
 from aquabuf.engine.balance import alkalinity_at, fractions, moments
 from aquabuf.engine.state import CARBONATE_FORMS, State
 
@@ -20,7 +21,6 @@ __all__ = [
 ]
 
 Array = NDArray[np.float64]
-LN10 = float(np.log(10.0))
 
 EFFECTIVE_RANGE = 1.0  # pH units on each side of pKa: base to acid 1:10 to 10:1, a third of the peak intensity
 HYDROGEN, HYDROXIDE = "H+ itself", "OH- itself"
@@ -136,7 +136,7 @@ def acid_to_ph(state: State, ph: Array | float, *, co2: Array | None = None) -> 
 
     Closed: its carbon stays. Open: `co2` [mol/L] is held, as in water kept in equilibrium with air.
     """
-    return state.alkalinity - state.alkalinity_at_ph(np.broadcast_to(np.asarray(ph, float), state.h.shape), co2=co2)
+    return state.alkalinity - state.alkalinity_at_ph(np.asarray(ph, dtype=float), co2=co2)
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -188,7 +188,7 @@ def _intensity_slope(state: State, ph: Array, rows: NDArray[np.intp] | None = No
     """Slope of closed buffer intensity against pH, over ln10^2, at meter pH values of some of the rows (or all)."""
     pick = slice(None) if rows is None or rows.size == state.h.size else rows
     c = state.conditions
-    inv = c.activity_per_h[pick] * 10.0**ph
+    inv = c.activity_per_h[pick] * exp10(ph)
     total = c.c_oh[pick] * inv - c.c_h[pick] / inv
     for _, k, amount in _groups(state):
         total += amount[pick] * moments(fractions([step[pick] for step in k], inv))[2]

@@ -14,7 +14,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from aquabuf.arrays import as_rows, common_shape
+from aquabuf.arrays import as_rows, common_shape, exp10
 from aquabuf.chem import activity, fresh, gases, marine, seasalt
 from aquabuf.chem.acids import Acid, k_of_temperature
 from aquabuf.chem.properties import seawater_density, water_density
@@ -120,8 +120,8 @@ def conditions(
     i = np.where(is_marine, seasalt.ionic_strength_seawater(s), i_given)
     rho = _by_regime(is_marine, lambda r: water_density(t[r]), lambda r: seawater_density(t[r], s[r])) / 1000.0
     a = activity.debye_huckel_a(t)
-    gamma_1 = 10.0 ** activity.log_gamma_davies(1, i, a)
-    gamma_0 = 10.0 ** activity.log_gamma_neutral(i)
+    gamma_1 = exp10(activity.log_gamma_davies(1, i, a))
+    gamma_0 = exp10(activity.log_gamma_neutral(i))
     sulfate = _per_kg(sulfate_mol_l, rho, seasalt.sulfate_of_seawater(s))
     fluoride = _per_kg(fluoride_mol_l, rho, seasalt.fluoride_of_seawater(s))
     free, total, act = _scales(is_marine, t, s, gamma_1, sulfate, fluoride)
@@ -203,7 +203,7 @@ def _acid_constants(c: Conditions, acid: Acid) -> tuple[Array, ...]:
         k = k_of_temperature(acid.pk[step], acid.enthalpy_j_mol[step], acid.heat_capacity_j_mol_k[step], c.t_c[r])
         before, after = (_log_gamma(acid.charge_full - step - lost, c.ionic_strength_mol_l[r], c.debye_huckel_a[r])
                          for lost in (0, 1))
-        return k * 10.0 ** (before - after)
+        return k * exp10(before - after)
 
     def by_sea(step: int, r: Any) -> Array:
         if acid.name not in _SEA_ACIDS:

@@ -7,6 +7,7 @@ from collections.abc import Mapping
 import numpy as np
 from numpy.typing import NDArray
 
+from aquabuf.arrays import exp10
 from aquabuf.engine.balance import System, alkalinity_at, fractions, protons_lost
 from aquabuf.engine.conditions import Conditions
 from aquabuf.engine.solve import PH_HIGHEST, PH_LOWEST, solve_h
@@ -47,7 +48,7 @@ def _solve(pair: tuple[str, ...], known: Mapping[str, Array], c: Conditions, aci
 
     co2 = c.k0 * known["pco2"] if "pco2" in pair else zero
     if "ph" in pair:
-        h = 10.0 ** -known["ph"] / per_h(c, ph_scale)
+        h = exp10(-known["ph"]) / per_h(c, ph_scale)
         alpha = fractions((c.k1, c.k2), 1.0 / h)
         if "alkalinity" in pair:
             alk = known["alkalinity"]

@@ -13,6 +13,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from aquabuf.arrays import exp10
 from aquabuf.chem import activity, fresh, marine
 from aquabuf.engine.balance import System, alkalinity_at
 from aquabuf.engine.state import State
@@ -154,14 +155,14 @@ def _known(total: Array) -> Array:
 def _gammas(state: State) -> dict[int, Array]:
     """Activity coefficients by number of charges. [-]"""
     i, a = state.conditions.ionic_strength_mol_l, state.conditions.debye_huckel_a
-    return {0: 10.0 ** activity.log_gamma_neutral(i)} | {
-        z: 10.0 ** activity.log_gamma_davies(z, i, a) for z in (1, 2)}
+    return {0: exp10(activity.log_gamma_neutral(i))} | {
+        z: exp10(activity.log_gamma_davies(z, i, a)) for z in (1, 2)}
 
 
 def _solubility(state: State, mineral: str) -> Array:
     """Conditional solubility product. [(mol/L)^2]"""
     c = state.conditions
-    gamma = 10.0 ** activity.log_gamma_davies(2, c.ionic_strength_mol_l, c.debye_huckel_a)
+    gamma = exp10(activity.log_gamma_davies(2, c.ionic_strength_mol_l, c.debye_huckel_a))
     return _tabulated(state, mineral) * np.where(c.is_marine, 1.0, gamma**-2.0) * c.density_kg_l**2
 
 
@@ -287,7 +288,7 @@ class _Path:
 
     def at(self, x: Array) -> tuple[Array, Array, Array]:
         """Free calcium, free bicarbonate and total carbon where -log10 h is `x`."""
-        h = 10.0**-x
+        h = exp10(-x)
         amount = np.maximum(alkalinity_at(self.others, h) - self.fixed, NOTHING)
         return _calcium_and_carbonate(self.solution, h, amount, self.spectators, 2.0, 0.0, self.gap)
 
@@ -302,7 +303,7 @@ class _Path:
     def followed(self, x: Array, *, damped: bool) -> tuple[Array, Array, _Path]:
         """Saturation index and total carbon at `x`, and the path with the spectators in balance there."""
         calcium, bicarbonate, dic = self.at(x)
-        now = _follow(self.solution, 10.0**-x, calcium, bicarbonate, self.spectators, damped=damped)
+        now = _follow(self.solution, exp10(-x), calcium, bicarbonate, self.spectators, damped=damped)
         return self._index_of(calcium, bicarbonate, x), dic, replace(self, spectators=now)
 
 

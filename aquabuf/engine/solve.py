@@ -12,6 +12,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from aquabuf.arrays import LN10
 from aquabuf.engine.balance import System, alkalinity_at
 from aquabuf.engine.status import IMPOSSIBLE, NOT_FINITE, SOLVED
 
@@ -21,7 +22,6 @@ Array = NDArray[np.float64]
 
 PH_LOWEST, PH_HIGHEST = -1.0, 15.0  # a root outside is reported as no water at all
 BLOCK_ROWS = 16_384                 # temporaries of one block stay in the processor's cache
-LN10 = float(np.log(10.0))
 BRACKET = (-22.0 * LN10, 6.0 * LN10)
 STEP_DONE = 3e-8                    # in ln h; the quadratic step after it is below rounding
 MAX_ITERATIONS = 120

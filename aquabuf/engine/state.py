@@ -8,6 +8,7 @@ from typing import Literal
 import numpy as np
 from numpy.typing import NDArray
 
+from aquabuf.arrays import exp10
 from aquabuf.chem.acids import Acid
 from aquabuf.engine.balance import Family, System, alkalinity_at, fractions
 from aquabuf.engine.conditions import Conditions
@@ -69,7 +70,7 @@ class State:
 
     def h_from_ph(self, ph: Array, scale: str = "meter") -> Array:
         """Hydrogen variable of a pH on one of PH_SCALES."""
-        return 10.0 ** -ph / self.per_h(scale)
+        return exp10(-ph) / self.per_h(scale)
 
     def ph(self, scale: str = "meter") -> Array:
         """pH on one of PH_SCALES. [-]"""

@@ -8,7 +8,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from aquabuf.arrays import as_rows
+from aquabuf.arrays import as_rows, exp10
 from aquabuf.chem import gases
 from aquabuf.engine import buffer, precipitate
 from aquabuf.engine.balance import fractions, protons_lost
@@ -358,7 +358,7 @@ class Water:
 
     def saturation_ratio(self, mineral: str = "calcite") -> Array:
         """Ion activity product over solubility product. [-]"""
-        return 10.0 ** self.saturation_index(mineral)
+        return exp10(self.saturation_index(mineral))
 
     def precipitation_potential_mol_l(self, mineral: str = "calcite") -> Array:
         """Mineral that would precipitate (positive) or dissolve (negative) on the way to equilibrium. [mol/L]"""

@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 from aquabuf.assess.options import Options
 from aquabuf.assess.sample.inputs import PH_COLUMNS, Array, Values, alkalinity_reading, water_keywords
 from aquabuf.assess.sample.leftout import charge_allowance, titrated_organic
-from aquabuf.assess.sample.solve import NO_PAIR, PAIRS, ph_columns, take_rows
+from aquabuf.assess.sample.solve import NO_PAIR, PAIRS, blocks, ph_columns, take_rows
 from aquabuf.chem.acids import Acid
 from aquabuf.engine.balance import protons_lost
 from aquabuf.engine.water import Water
@@ -56,8 +56,7 @@ def closure(values: Values, u: Values, acids: tuple[Acid, ...], options: Options
                   carbon_u_meq_l=np.full(n, np.nan))
     column = ph_columns(values, n)
     for name, scale in PH_COLUMNS.items():
-        rows = np.flatnonzero(column == name)
-        if rows.size and name in values:
+        for rows in blocks(np.flatnonzero((column == name) & (name in values))):
             out.put(rows, _of_one_scale(take_rows(values, rows), take_rows(u, rows), name, scale, acids, options))
     return out
 

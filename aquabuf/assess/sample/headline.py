@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
-from aquabuf.arrays import worded
+from aquabuf.arrays import exp10, worded
 from aquabuf.assess.options import ALWAYS_ACID, Options
 from aquabuf.chem.gases import pco2_of_air
 from aquabuf.engine import buffer, precipitate
@@ -107,7 +107,7 @@ def words_and_details(water: Water, si_calcite: Array, ccpp_mg_l: Array) -> dict
         "weakest_distance_ph": weakest.distance,
         "weakest_buffer_meq_l_ph": weakest.intensity * 1e3,
         "si_aragonite": si_calcite + aragonite_less,
-        "saturation_ratio_calcite": 10.0**si_calcite,
+        "saturation_ratio_calcite": exp10(si_calcite),
         "ccpp_words": ccpp_in_words(ccpp_mg_l),
     }
 

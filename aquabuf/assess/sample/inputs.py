@@ -19,7 +19,7 @@ from aquabuf.readings.result import UserAcid
 from aquabuf.readings.schema import quantities
 from aquabuf.units import substances
 
-__all__ = ["MAJOR_IONS", "PH_COLUMNS", "Values", "ionic_strength", "own_acids", "pressure", "uncertainties",
+__all__ = ["MAJOR_IONS", "PH_COLUMNS", "Values", "ionic_strength", "own_acids", "pressure", "reading", "uncertainties",
            "values_of", "water_keywords"]
 
 Array = NDArray[np.float64]
@@ -63,15 +63,16 @@ def own_acids(acids: Mapping[str, UserAcid]) -> tuple[Acid, ...]:
                  for a in acids.values())
 
 
-def _get(values: Values, name: str, like: Array) -> Array:
-    return values.get(name, np.full(like.shape, np.nan))
+def reading(values: Values, name: str) -> Array:
+    """The values of one quantity, nan throughout where it was not measured. (The temperature is always there.)"""
+    given = values.get(name)
+    return np.full(values["temperature_c"].shape, np.nan) if given is None else given
 
 
 def pressure(values: Values) -> Array:
     """Air pressure: measured, else of the elevation, else 1. [atm]"""
-    t = values["temperature_c"]
-    by_height = air_pressure(_get(values, "elevation_m", t))
-    given = _get(values, "air_pressure_atm", t)
+    by_height = air_pressure(reading(values, "elevation_m"))
+    given = reading(values, "air_pressure_atm")
     return np.where(np.isfinite(given), given, np.where(np.isfinite(by_height), by_height, 1.0))
 
 
@@ -82,19 +83,19 @@ def ionic_strength(values: Values) -> tuple[Array, NDArray[np.object_]]:
     """
     t = values["temperature_c"]
     candidates = (
-        _get(values, "ionic_strength_mol_l", t), _of_ions(values),
-        STRENGTH_PER_CONDUCTIVITY * _get(values, "conductivity_us_cm", t),
-        STRENGTH_PER_TDS * _get(values, "tds_mg_l", t),
+        reading(values, "ionic_strength_mol_l"), _of_ions(values),
+        STRENGTH_PER_CONDUCTIVITY * reading(values, "conductivity_us_cm"),
+        STRENGTH_PER_TDS * reading(values, "tds_mg_l"),
     )
     out, source = np.full(t.shape, np.nan), np.zeros(t.shape, dtype=int)
     for index, candidate in enumerate(candidates, start=1):
         use = np.isnan(out) & np.isfinite(candidate)
         out[use], source[use] = candidate[use], index
     implied = np.isnan(out)
-    has_salt = np.nan_to_num(_get(values, "salinity", t)) > 0.0
+    has_salt = np.nan_to_num(reading(values, "salinity")) > 0.0
     source[implied] = np.where(has_salt[implied], STRENGTH_SOURCES.index("salinity"),
                                STRENGTH_SOURCES.index("alkalinity"))
-    source[np.nan_to_num(_get(values, "salinity", t)) >= 1.0] = STRENGTH_SOURCES.index("salinity")
+    source[np.nan_to_num(reading(values, "salinity")) >= 1.0] = STRENGTH_SOURCES.index("salinity")
     return out, np.array(STRENGTH_SOURCES, dtype=object)[source]
 
 
@@ -107,14 +108,14 @@ def _of_ions(values: Values) -> Array:
         if ion.charge and given is not None:
             total = total + ion.charge**2 * np.nan_to_num(given)
     for name in MAJOR_IONS:
-        total = np.where(np.isnan(_get(values, f"{name}_mol_l", total)), np.nan, total)
+        total = np.where(np.isnan(reading(values, f"{name}_mol_l")), np.nan, total)
     return 0.5 * total
 
 
 def alkalinity_reading(values: Values) -> tuple[Array, NDArray[np.object_]]:
     """Alkalinity, or ANC where only that was measured [eq/L], and which of the two it is."""
     t = values["temperature_c"]
-    alkalinity, anc = _get(values, "alkalinity_eq_l", t), _get(values, "anc_eq_l", t)
+    alkalinity, anc = reading(values, "alkalinity_eq_l"), reading(values, "anc_eq_l")
     use_anc = np.isnan(alkalinity) & np.isfinite(anc)
     source = worded(t.size, (use_anc, "anc"), (np.isfinite(alkalinity), "alkalinity"), default="computed")
     return np.where(use_anc, anc, alkalinity), source
@@ -126,7 +127,7 @@ def water_keywords(values: Values, acids: tuple[Acid, ...], carbonic: str) -> di
     totals = {f"{n}_mol_l": values[f"{n}_mol_l"] for n in names if f"{n}_mol_l" in values}
     totals = {n: v if n.removesuffix("_mol_l") in NAN_HAS_MEANING else np.nan_to_num(v) for n, v in totals.items()}
     return totals | {
-        "t_c": values["temperature_c"], "salinity": np.nan_to_num(_get(values, "salinity", values["temperature_c"])),
+        "t_c": values["temperature_c"], "salinity": np.nan_to_num(reading(values, "salinity")),
         "ionic_strength_mol_l": ionic_strength(values)[0], "pressure_atm": pressure(values),
         "acids": acids, "carbonic": carbonic,
     }

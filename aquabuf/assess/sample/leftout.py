@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
-from aquabuf.assess.sample.inputs import Values
+from aquabuf.assess.sample.inputs import Values, reading
 from aquabuf.chem.organic import OLIVER_SITES_EQ_PER_MG, organic_anion_oliver
 
 __all__ = ["charge_allowance", "demand", "titrated_organic"]
@@ -18,7 +18,7 @@ ALUMINUM_ACTS_BELOW = 5.5  # pH; it buffers between 4.5 and 5.5: Driscoll & Biso
 
 
 def _get(values: Values, name: str) -> Array:
-    return np.nan_to_num(values.get(name, np.zeros(values["temperature_c"].shape)))
+    return np.nan_to_num(reading(values, name))
 
 
 def titrated_organic(values: Values, ph: Array) -> Array:

@@ -10,10 +10,11 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
+from aquabuf.arrays import exp10
 from aquabuf.assess.frames import frame_of
 from aquabuf.assess.options import ALWAYS_ACID
 from aquabuf.assess.sample.headline import RANK_BY
-from aquabuf.assess.sample.inputs import MAJOR_IONS, Array, Values
+from aquabuf.assess.sample.inputs import MAJOR_IONS, Array, Values, reading
 from aquabuf.assess.sample.leftout import demand, titrated_organic
 from aquabuf.assess.sample.solve import PH_AIR
 from aquabuf.readings.schema import quantities
@@ -55,7 +56,7 @@ def sample_checks(values: Values, u: Values, figures: Mapping[str, NDArray], pai
     rows = pair.size
 
     def get(name: str) -> Array:
-        return values.get(name, np.full(rows, np.nan))
+        return reading(values, name)
 
     cations, anions, complete = _charges(values, figures, rows)
     total = (cations + anions) * 1e6
@@ -100,11 +101,11 @@ def _charges(values: Values, figures: Mapping[str, NDArray], rows: int) -> tuple
             side = plus if ion.charge > 0 else minus
             side += abs(ion.charge) * np.nan_to_num(given)
     carbonate = figures["bicarbonate_mmol_l"] + 2.0 * figures["carbonate_mmol_l"]
-    minus += 1e-3 * carbonate + 1e-14 * 10.0 ** figures["ph"]
-    plus += 10.0 ** -figures["ph"]
+    minus += 1e-3 * carbonate + 1e-14 * exp10(figures["ph"])
+    plus += exp10(-figures["ph"])
     complete = np.ones(rows, dtype=bool)
     for name in MAJOR_IONS:
-        complete &= np.isfinite(values.get(f"{name}_mol_l", np.full(rows, np.nan)))
+        complete &= np.isfinite(reading(values, f"{name}_mol_l"))
     return plus, minus, complete
 
 
@@ -115,14 +116,14 @@ def _conductivity(values: Values, figures: Mapping[str, NDArray]) -> Array:
     (recalled).
     """
     carbonate = {"bicarbonate": figures["bicarbonate_mmol_l"] * 1e-3, "carbonate": figures["carbonate_mmol_l"] * 1e-3,
-                 "hydrogen": 10.0 ** -figures["ph"], "hydroxide": 1e-14 * 10.0 ** figures["ph"]}
+                 "hydrogen": exp10(-figures["ph"]), "hydroxide": 1e-14 * exp10(figures["ph"])}
     total = np.zeros(figures["ph"].shape)
     for row in read_table("ions"):
         given = carbonate.get(row["name"], values.get(f"{row['name'].replace(' ', '_')}_mol_l"))
         if given is not None and row["conductivity_s_cm2_eq"]:
             total += np.nan_to_num(given) * abs(int(row["charge"])) * float(row["conductivity_s_cm2_eq"]) * 1e3
     root = np.sqrt(figures["ionic_strength_mol_l"])
-    return total * 10.0 ** (-2.0 * 0.5 * (root / (1.0 + root) - 0.3 * root * root))
+    return total * exp10(-2.0 * 0.5 * (root / (1.0 + root) - 0.3 * root * root))
 
 
 def _over_determined(values: Values, u: Values, figures: Mapping[str, NDArray], rows: int) -> Check:
@@ -134,14 +135,14 @@ def _over_determined(values: Values, u: Values, figures: Mapping[str, NDArray], 
 
 def _brown(values: Values, figures: Mapping[str, NDArray], pair: NDArray) -> list[Check]:
     """Whether organic acids and aluminum spoil the CO2 pressure, or the tolerance, of a brown or acid water."""
-    doc = values.get("doc_mg_l", np.full(pair.size, np.nan))
+    doc = reading(values, "doc_mg_l")
     rests_on_both = (pair == "pH and alkalinity") | (pair == PH_AIR)
     carbonate = 1e-3 * (figures["bicarbonate_mmol_l"] + 2.0 * figures["carbonate_mmol_l"])
     organic = titrated_organic(values, figures["ph"]) / np.maximum(carbonate, 1e-9)
     no_doc = np.where(rests_on_both & np.isnan(doc), figures["ph"], np.nan)
     asked = np.maximum(np.abs(figures[RANK_BY]) * 1e-3, 1e-9)
     share = demand(values, figures["ph"], ALWAYS_ACID) / asked
-    any_known = np.isfinite(doc) | np.isfinite(values.get("aluminum_mol_l", np.full(pair.size, np.nan)))
+    any_known = np.isfinite(doc) | np.isfinite(reading(values, "aluminum_mol_l"))
     organic = np.where(rests_on_both & np.isfinite(doc), organic, np.nan)
     return [Check("CO2 in brown acid water", 100.0 * organic, -np.inf, 20.0),
             Check("CO2 in acid water", no_doc, 5.5, np.inf),

@@ -9,7 +9,7 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from aquabuf.assess.options import Options
-from aquabuf.assess.sample.inputs import Values, ionic_strength
+from aquabuf.assess.sample.inputs import Values, ionic_strength, reading
 from aquabuf.assess.sample.solve import NO_PAIR, choose, groups, has, take_rows, water_of
 from aquabuf.chem.acids import Acid
 from aquabuf.engine.conditions import CARBONIC_SETS, FRESH_BELOW, LIMITS
@@ -65,7 +65,7 @@ def _out_of_range(values: Values, i: int, options: Options) -> Reason:
         if column in values and not low <= np.nan_to_num(values[column][i], nan=low) <= high:
             return ((column,), f"{values[column][i]:.4g}", f"{column} must be {low:g} to {high:g} {unit}".rstrip(),
                     "correct the value or its unit")
-    t, s = values["temperature_c"][i], np.nan_to_num(values.get("salinity", np.zeros(i + 1))[i])
+    t, s = values["temperature_c"][i], np.nan_to_num(reading(values, "salinity")[i])
     if s >= FRESH_BELOW:
         name = options.carbonic
         s_low, s_high, t_low, t_high = CARBONIC_SETS[name]

@@ -8,16 +8,17 @@ import numpy as np
 from numpy.typing import NDArray
 
 from aquabuf.assess.options import Options
-from aquabuf.assess.sample.inputs import PH_COLUMNS, Array, Values, alkalinity_reading, water_keywords
+from aquabuf.assess.sample.inputs import PH_COLUMNS, Array, Values, alkalinity_reading, reading, water_keywords
 from aquabuf.chem.acids import Acid
 from aquabuf.chem.gases import pco2_of_air
 from aquabuf.engine.conditions import FRESH_BELOW
 from aquabuf.engine.water import Water
 
-__all__ = ["ALKALINITY_AIR", "NO_PAIR", "PAIRS", "PH_AIR", "air_pco2", "choose", "groups", "has", "ph_columns",
+__all__ = ["ALKALINITY_AIR", "NO_PAIR", "PAIRS", "PH_AIR", "air_pco2", "blocks", "choose", "groups", "has",
            "take_rows", "water_of"]
 
 NO_PAIR = -1
+BLOCK_ROWS = 16_384
 ALKALINITY_AIR, PH_AIR = "alkalinity and air", "pH and air"
 
 # Order of preference, unless `closure` finds another pair better for a row: measured carbon where pH and alkalinity
@@ -79,7 +80,7 @@ def take_rows(values: Values, rows: NDArray) -> dict[str, Array]:
 
 def ph_columns(values: Values, rows: int) -> NDArray[np.str_]:
     """pH column that counts in each row: the meter's first in fresh water, last in salt water."""
-    salt = np.nan_to_num(values.get("salinity", np.zeros(rows))) >= FRESH_BELOW
+    salt = np.nan_to_num(reading(values, "salinity")) >= FRESH_BELOW
     column = np.full(rows, "ph", dtype="U12")
     for which, order in ((~salt, ("ph", "ph_total", "ph_seawater", "ph_free")),
                          (salt, ("ph_total", "ph_seawater", "ph_free", "ph"))):
@@ -90,13 +91,18 @@ def ph_columns(values: Values, rows: int) -> NDArray[np.str_]:
 
 
 def groups(values: Values, choice: NDArray[np.int8]) -> Iterator[tuple[str, str, NDArray[np.intp]]]:
-    """Rows that are solved alike: pair, pH column and row numbers."""
+    """Rows that are solved alike, in blocks: pair, pH column and row numbers."""
     column = ph_columns(values, choice.size)
     for index, pair in enumerate(PAIRS):
         for name in PH_COLUMNS:
-            rows = np.flatnonzero((choice == index) & (column == name))
-            if rows.size:
+            for rows in blocks(np.flatnonzero((choice == index) & (column == name))):
                 yield pair, name, rows
+
+
+def blocks(rows: NDArray[np.intp]) -> Iterator[NDArray[np.intp]]:
+    """Row numbers in blocks whose arrays stay in the processor's cache."""
+    for start in range(0, rows.size, BLOCK_ROWS):
+        yield rows[start:start + BLOCK_ROWS]
 
 
 def water_of(values: Values, pair: str, ph_column: str, acids: tuple[Acid, ...], options: Options) -> Water:
@@ -113,7 +119,7 @@ def water_of(values: Values, pair: str, ph_column: str, acids: tuple[Acid, ...],
     given = dict(known[m] for m in members)
     if "pH" not in members:
         return _MAKERS[pair](**given, **keywords)
-    t_ph = values.get("ph_temperature_c", np.full(alkalinity.shape, np.nan))
+    t_ph = reading(values, "ph_temperature_c")
     t_water = keywords["t_c"]
     keywords["t_c"] = np.where(np.isfinite(t_ph), t_ph, t_water)
     water = _MAKERS[pair](**given, ph_scale=PH_COLUMNS[ph_column], **keywords)
