@@ -26,6 +26,12 @@ def _general(rules: pd.Series) -> list[str]:
     return [DUPLICATE_RULE.removesuffix(" in row") if rule.startswith(DUPLICATE_RULE) else rule for rule in rules]
 
 
+def _count(counter: Counter, column: pd.Series) -> None:
+    """Count the words of a column."""
+    codes, words = pd.factorize(column.to_numpy(dtype=object))
+    counter.update(dict(zip(words.tolist(), np.bincount(codes, minlength=words.size).tolist(), strict=True)))
+
+
 @dataclass(slots=True)
 class Tally:
     """Counts, the worst-buffered samples with their curves, and the few columns that the figure draws."""
@@ -54,14 +60,17 @@ class Tally:
         """Take in one assessed piece."""
         results = part.results
         self.assessed += len(results)
-        self.warned += int((results["warnings"] != "").sum())
+        warned = (results["warnings"] != "").to_numpy()
+        self.warned += int(warned.sum())
         self.refused_rows.update(part.rejected["row"].tolist())
         self.refusal_rules.update(zip(part.rejected["column"], _general(part.rejected["rule"]), strict=True))
-        self.warnings.update(part.verdicts["warning"].tolist())
+        _count(self.warnings, part.verdicts["warning"])
         for counter, column in ((self.statuses, "status"), (self.pairs, "pair"), (self.regimes, "regime"),
-                                (self.strengths, "ionic_strength_from")):
-            counter.update(results[column].tolist())
-        self.kinds.update(results["water_kind"].tolist() if "water_kind" in results else [""] * len(results))
+                                (self.strengths, "ionic_strength_from"), (self.kinds, "water_kind")):
+            if column in results:
+                _count(counter, results[column])
+        if "water_kind" not in results:
+            self.kinds[""] += len(results)
         self.made.update(part.made)
         self.unmet.update(part.unmet)
         self.notes |= dict.fromkeys(part.notes)
@@ -71,7 +80,7 @@ class Tally:
             self.rounding[name] = self.rounding[name].plus(found) if name in self.rounding else found
         self._keep_worst(part)
         columns = [results[name].to_numpy(dtype=np.float32) for name in FIGURE_COLUMNS]
-        self.drawn.append(np.stack([*columns, (results["warnings"] != "").to_numpy(dtype=np.float32)]))
+        self.drawn.append(np.stack([*columns, warned.astype(np.float32)]))
 
     def _keep_worst(self, part: Assessment) -> None:
         rank = part.results[RANK_BY].to_numpy()

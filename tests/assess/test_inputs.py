@@ -7,6 +7,7 @@ from sample_tables import assessed, results
 
 from aquabuf.assess.sample.inputs import (
     alkalinity_reading,
+    alkalinity_source,
     ionic_strength,
     own_acids,
     pressure,
@@ -122,9 +123,8 @@ def test_anc_stands_in_for_alkalinity():
     """Measured alkalinity first; ANC where only that was measured; the name of the definition stays."""
     table = {"temperature_c": np.full(3, 10.0), "alkalinity_eq_l": np.array([1e-4, np.nan, np.nan]),
              "anc_eq_l": np.array([9e-5, 8e-5, np.nan])}
-    found, source = alkalinity_reading(table)
-    assert_array_equal(found, [1e-4, 8e-5, np.nan])
-    assert source.tolist() == ["alkalinity", "anc", "computed"]
+    assert_array_equal(alkalinity_reading(table), [1e-4, 8e-5, np.nan])
+    assert alkalinity_source(table).tolist() == ["alkalinity", "anc", "computed"]
 
 
 def test_values_leave_empty_columns_and_words_out():

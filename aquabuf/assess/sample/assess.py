@@ -76,7 +76,7 @@ def assess(readings: Readings, options: Options, limits: tuple[Limit, ...], *, o
     figures = {name: v[keep] for name, v in figures.items()}
     kept = frame.iloc[keep].reset_index(drop=True)
     values, u, choice = take_rows(values, keep), take_rows(u, keep), choice[keep]
-    figures |= alkalinity_as_read(alkalinity_reading(values)[0], figures)
+    figures |= alkalinity_as_read(alkalinity_reading(values), figures)
     spread = intervals(values, u, choice, acids, options, limits)
     figures["draws_solved"] = spread.solved
     gap = gap.take(keep)

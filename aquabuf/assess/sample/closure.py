@@ -65,11 +65,12 @@ def _of_one_scale(values: Values, u: Values, ph_column: str, scale: str, acids: 
                   ) -> Closure:
     ph, ph_u = values[ph_column], u[ph_column]
     missing = np.full(ph.shape, np.nan)
-    alkalinity, source = alkalinity_reading(values)
+    alkalinity = alkalinity_reading(values)
     keywords = water_keywords(values, acids, options.carbonic)
     t_ph = values.get("ph_temperature_c", missing)
     keywords["t_c"] = np.where(np.isfinite(t_ph), t_ph, keywords["t_c"])
-    alkalinity_u = np.where(source == "anc", u.get("anc_eq_l", missing), u.get("alkalinity_eq_l", missing))
+    alkalinity_u = np.where(np.isnan(values.get("alkalinity_eq_l", missing)), u.get("anc_eq_l", missing),
+                            u.get("alkalinity_eq_l", missing))
     bare = Water.from_ph_dic(ph=ph, dic_mol_l=0.0, ph_scale=scale, **keywords)
     carbonate = alkalinity - bare.alkalinity_eq_l
     carbonate_u = np.hypot(alkalinity_u, bare.buffer_intensity_eq_l() * ph_u)

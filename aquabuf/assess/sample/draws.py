@@ -47,7 +47,7 @@ def intervals(values: Values, u: Values, choice: NDArray[np.int8], acids: tuple[
             if options.exchange == "open" and pair != ALKALINITY_AIR:
                 water = water.at_air(options.air_co2_ppm)
             figures = headline(water, options)
-            figures |= alkalinity_as_read(alkalinity_reading(many)[0], figures)
+            figures |= alkalinity_as_read(alkalinity_reading(many), figures)
             solved = (water.status >= SOLVED).reshape(block.size, options.draws)
             out.solved[block] = solved.mean(axis=1)
             for name, v in figures.items():

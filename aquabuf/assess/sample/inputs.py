@@ -19,8 +19,8 @@ from aquabuf.readings.result import UserAcid
 from aquabuf.readings.schema import quantities
 from aquabuf.units import substances
 
-__all__ = ["MAJOR_IONS", "PH_COLUMNS", "Values", "ionic_strength", "own_acids", "pressure", "reading", "uncertainties",
-           "values_of", "water_keywords"]
+__all__ = ["MAJOR_IONS", "PH_COLUMNS", "Values", "alkalinity_reading", "alkalinity_source", "ionic_strength",
+           "own_acids", "pressure", "reading", "uncertainties", "values_of", "water_keywords"]
 
 Array = NDArray[np.float64]
 Values = Mapping[str, Array]
@@ -35,8 +35,8 @@ STRENGTH_SOURCES = ("", "given", "ions", "conductivity", "dissolved solids", "sa
 
 def values_of(frame: pd.DataFrame) -> dict[str, Array]:
     """Every number of the readings that holds at least one value, by column name in house units."""
-    return {name: frame[name].to_numpy(dtype=float) for name in frame.columns
-            if name != "row" and pd.api.types.is_numeric_dtype(frame[name]) and frame[name].notna().any()}
+    numbers = {name: frame[name].to_numpy() for name in frame.columns if name != "row"}
+    return {name: v for name, v in numbers.items() if v.dtype.kind == "f" and not np.isnan(v).all()}
 
 
 def uncertainties(values: Values) -> dict[str, Array]:
@@ -101,7 +101,7 @@ def ionic_strength(values: Values) -> tuple[Array, NDArray[np.object_]]:
 
 def _of_ions(values: Values) -> Array:
     """Half the sum of concentration times charge squared; nan unless all major ions and an alkalinity are there."""
-    alkalinity = alkalinity_reading(values)[0]
+    alkalinity = alkalinity_reading(values)
     total = np.abs(alkalinity)  # bicarbonate in ordinary water, H+ in acid water
     for name, ion in substances().items():
         given = values.get(f"{name.replace(' ', '_')}_mol_l")
@@ -112,13 +112,18 @@ def _of_ions(values: Values) -> Array:
     return 0.5 * total
 
 
-def alkalinity_reading(values: Values) -> tuple[Array, NDArray[np.object_]]:
-    """Alkalinity, or ANC where only that was measured [eq/L], and which of the two it is."""
-    t = values["temperature_c"]
-    alkalinity, anc = reading(values, "alkalinity_eq_l"), reading(values, "anc_eq_l")
-    use_anc = np.isnan(alkalinity) & np.isfinite(anc)
-    source = worded(t.size, (use_anc, "anc"), (np.isfinite(alkalinity), "alkalinity"), default="computed")
-    return np.where(use_anc, anc, alkalinity), source
+def alkalinity_reading(values: Values) -> Array:
+    """Alkalinity, or ANC where only that was measured; nan where neither was. [eq/L]"""
+    if "anc_eq_l" not in values:
+        return reading(values, "alkalinity_eq_l")
+    alkalinity = reading(values, "alkalinity_eq_l")
+    return np.where(np.isnan(alkalinity), values["anc_eq_l"], alkalinity)
+
+
+def alkalinity_source(values: Values) -> NDArray[np.object_]:
+    """Where each alkalinity comes from: alkalinity, anc, or computed."""
+    measured, anc = (np.isfinite(reading(values, name)) for name in ("alkalinity_eq_l", "anc_eq_l"))
+    return worded(measured.size, (anc, "anc"), (measured, "alkalinity"), default="computed")
 
 
 def water_keywords(values: Values, acids: tuple[Acid, ...], carbonic: str) -> dict:

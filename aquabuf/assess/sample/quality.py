@@ -10,8 +10,8 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from aquabuf.arrays import exp10
-from aquabuf.assess.frames import frame_of
+from aquabuf.arrays import exp10, worded
+from aquabuf.assess.frames import LongRows, frame_of
 from aquabuf.assess.options import ALWAYS_ACID
 from aquabuf.assess.sample.headline import RANK_BY
 from aquabuf.assess.sample.inputs import MAJOR_IONS, Array, Values, reading
@@ -182,25 +182,27 @@ def counted(checks: list[Check], *, only_unmet: bool = False) -> dict[str, int]:
 def check_rows(checks: list[Check], frame: pd.DataFrame, *, only_unmet: bool) -> pd.DataFrame:
     """The checks as a long table, sample by sample; `frame` has `row` and `sample_id`."""
     facts = {r["name"]: r for r in read_table("checks")}
-    value, met = (np.stack([getattr(c, field) for c in checks], axis=1) for field in ("value", "met"))
-    sample, which = np.nonzero(np.isfinite(value) & ~(met & only_unmet))
-    low, high = (np.stack([np.broadcast_to(getattr(c, end), len(frame)) for c in checks], axis=1)[sample, which]
-                 for end in ("low", "high"))
-    ok = met[sample, which]
+    n = len(frame)
+    met = [c.met for c in checks]
+    rows = LongRows([np.isfinite(c.value) & ~(m & only_unmet) for c, m in zip(checks, met, strict=True)])
+    low, high = (rows.pick([np.broadcast_to(getattr(c, end), n) for c in checks]) for end in ("low", "high"))
+    ok = rows.pick(met).astype(bool)
 
     def of_check(field: str) -> NDArray[np.object_]:
-        return np.array([facts[c.name][field] for c in checks], dtype=object)[which]
+        return rows.of_mask([facts[c.name][field] for c in checks])
 
-    remedy = np.where(ok, "", of_check("remedy"))
+    remedy = of_check("remedy")
+    remedy[ok] = ""
     for j, check in enumerate(checks):
         if check.detail is not None:
-            at = (which == j) & ~ok
-            remedy[at] = remedy[at] + ": " + check.detail[sample[at]]
+            at = (rows.which == j) & ~ok
+            remedy[at] = remedy[at] + ": " + check.detail[rows.sample[at]]
     return frame_of({
-        "row": frame["row"].to_numpy()[sample], "sample_id": frame["sample_id"].to_numpy(dtype=object)[sample],
-        "check": of_check("name"), "value": value[sample, which],
+        "row": frame["row"].to_numpy()[rows.sample],
+        "sample_id": frame["sample_id"].to_numpy(dtype=object)[rows.sample],
+        "check": of_check("name"), "value": rows.pick([c.value for c in checks]),
         "limit": np.array(_limit_words(low, high), dtype=object), "unit": of_check("unit"),
-        "met": np.where(ok, "yes", "no").astype(object), "remedy": remedy, "source": of_check("source")})
+        "met": worded(ok.size, (ok, "yes"), default="no"), "remedy": remedy, "source": of_check("source")})
 
 
 def _limit_words(low: Array, high: Array) -> list[str]:

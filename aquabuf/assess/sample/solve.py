@@ -108,7 +108,7 @@ def blocks(rows: NDArray[np.intp]) -> Iterator[NDArray[np.intp]]:
 def water_of(values: Values, pair: str, ph_column: str, acids: tuple[Acid, ...], options: Options) -> Water:
     """Solve rows that share a pair. A pH read at another temperature is solved there and carried to the water's."""
     keywords = water_keywords(values, acids, options.carbonic)
-    alkalinity = alkalinity_reading(values)[0]
+    alkalinity = alkalinity_reading(values)
     if pair == ALKALINITY_AIR:
         return Water.from_alkalinity_pco2(alkalinity_eq_l=alkalinity, pco2_atm=air_pco2(keywords, options), **keywords)
     if pair == PH_AIR:

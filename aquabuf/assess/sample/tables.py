@@ -9,12 +9,12 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from aquabuf.arrays import worded
-from aquabuf.assess.frames import frame_of
+from aquabuf.assess.frames import LongRows, frame_of
 from aquabuf.assess.limits import Limit
 from aquabuf.assess.options import Options
 from aquabuf.assess.sample.columns import AS_GIVEN, result_columns
 from aquabuf.assess.sample.draws import Intervals
-from aquabuf.assess.sample.inputs import alkalinity_reading, ionic_strength
+from aquabuf.assess.sample.inputs import alkalinity_source, ionic_strength
 from aquabuf.assess.sample.solve import PAIRS, PH_AIR
 
 __all__ = ["results_table", "verdict_table"]
@@ -52,7 +52,7 @@ def _words(kept: pd.DataFrame, figures: Mapping[str, NDArray], values: Mapping[s
     return {name: kept[name].to_numpy() for name in AS_GIVEN if name in kept} | {
         "status": worded(n, (flagged, "outside range"), (from_air, "carbon from air"), default="ok"),
         "status_reason": worded(n, (flagged, OUTSIDE_RANGE), (from_air, CARBON_FROM_AIR)),
-        "ionic_strength_from": ionic_strength(values)[1], "alkalinity_from": alkalinity_reading(values)[1],
+        "ionic_strength_from": ionic_strength(values)[1], "alkalinity_from": alkalinity_source(values),
         "warnings": warnings,
     }
 
@@ -62,21 +62,19 @@ def verdict_table(kept: pd.DataFrame, limits: tuple[Limit, ...], broken: Mapping
     """One row per broken limit, sample by sample, each with its rule and source."""
     n = len(kept)
     never, nothing = np.zeros(n, dtype=bool), np.full(n, np.nan)
-    sample, which = np.nonzero(np.stack([broken.get(x.name, never) for x in limits], axis=1) if limits
-                               else np.zeros((n, 0), dtype=bool))
+    rows = LongRows([broken.get(x.name, never) for x in limits])
 
     def of_limit(field: str) -> NDArray:
-        values = [getattr(x, field) for x in limits]
-        return np.array(values, dtype=float if field == "limit" else object)[which]
+        return rows.of_mask([getattr(x, field) for x in limits])
 
     def of_sample(source: Mapping[str, NDArray], field: str) -> NDArray:
-        columns = [source.get(getattr(x, field), nothing) for x in limits]
-        return np.stack(columns, axis=1)[sample, which].astype(float) if limits else np.empty(0)
+        return rows.pick([source.get(getattr(x, field), nothing) for x in limits]).astype(float)
 
     return frame_of({
-        "row": kept["row"].to_numpy()[sample], "sample_id": kept["sample_id"].to_numpy(dtype=object)[sample],
+        "row": kept["row"].to_numpy()[rows.sample], "sample_id": kept["sample_id"].to_numpy(dtype=object)[rows.sample],
         "warning": of_limit("name"), "words": of_limit("words"), "quantity": of_limit("quantity"),
         "value": of_sample(figures, "quantity"), "low": of_sample(spread.low, "quantity"),
-        "high": of_sample(spread.high, "quantity"), "operator": of_limit("operator"), "limit": of_limit("limit"),
-        "unit": of_limit("unit"), "probability": of_sample(spread.probability, "name"),
-        "next_step": of_limit("next_step"), "source": of_limit("source")})
+        "high": of_sample(spread.high, "quantity"), "operator": of_limit("operator"),
+        "limit": of_limit("limit").astype(float), "unit": of_limit("unit"),
+        "probability": of_sample(spread.probability, "name"), "next_step": of_limit("next_step"),
+        "source": of_limit("source")})
