@@ -231,3 +231,10 @@ def test_marine_constants_can_be_chosen():
     sea = {"alkalinity_eq_l": 2.3e-3, "dic_mol_l": 2.0e-3, "temperature_c": 25.0, "salinity": 35.0}
     millero, lueker = (results(sea, carbonic=name).iloc[0]["pco2_uatm"] for name in ("millero", "lueker"))
     assert 0.002 < abs(np.log10(millero / lueker)) < 0.03
+
+
+def test_alkalinity_per_kilogram_is_the_one_that_was_read():
+    """Acid water whose ANC and pH disagree: all alkalinity columns follow the titration, and 0.9997 kg is a liter at 10 °C."""
+    table = assessed({"ph": 4.74, "anc_eq_l": -35e-6, "temperature_c": 10.0}).results
+    assert_allclose(table["alkalinity_umol_kg"], -35.0 / 0.9997, rtol=1e-3)
+    assert_allclose(table["alkalinity_meq_l"], -0.035, rtol=1e-9)

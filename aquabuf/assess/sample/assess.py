@@ -72,11 +72,13 @@ def assess(readings: Readings, options: Options, limits: tuple[Limit, ...], *, o
     refused = refusals(frame, values, ~solved, acids, options, readings.headers)
     keep = np.flatnonzero(solved)
     if not keep.size:
-        figures = {c.name: np.full(n, np.nan) for c in result_columns(options)} | {"flagged": solved, "regime": solved}
+        figures = {c.name: np.full(n, np.nan) for c in result_columns(options)} | {
+            "flagged": solved, "regime": solved, "density_kg_l": np.ones(n)}
     figures = {name: v[keep] for name, v in figures.items()}
     kept = frame.iloc[keep].reset_index(drop=True)
     values, u, choice = take_rows(values, keep), take_rows(u, keep), choice[keep]
     figures |= alkalinity_as_read(alkalinity_reading(values), figures)
+    figures["alkalinity_umol_kg"] = figures["alkalinity_meq_l"] / figures["density_kg_l"] * 1e3
     spread = intervals(values, u, choice, acids, options, limits)
     figures["draws_solved"] = spread.solved
     gap = gap.take(keep)

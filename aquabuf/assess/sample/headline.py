@@ -90,7 +90,7 @@ def words_and_details(water: Water, si_calcite: Array, ccpp_mg_l: Array) -> dict
                          default="brackish"),
         "temperature_c": water.t_c,
         "salinity": salinity,
-        "alkalinity_umol_kg": water.alkalinity_eq_l / water.density_kg_l * 1e6,
+        "density_kg_l": water.density_kg_l,
         "dic_umol_kg": water.dic_mol_l / water.density_kg_l * 1e6,
         "ionic_strength_mol_l": water.ionic_strength_mol_l,
         "bicarbonate_mmol_l": carbonate[1],
