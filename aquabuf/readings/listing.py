@@ -107,7 +107,10 @@ def _uncertainty(q: Quantity) -> str:
         return f"column {q.u_name}"
     terms = [f"{q.default_u:g}{unit}"] if q.default_u else []
     terms += [f"{100 * q.default_u_rel:g} %"] if q.default_u_rel else []
-    return f"column {q.u_name}, else {' + '.join(terms)} ({q.u_source})"
+    text = f"column {q.u_name}, else {' + '.join(terms)} ({q.u_source})"
+    if q.default_u_per_kg is not None:
+        text += f"; {q.default_u_per_kg:g}{unit} where the file is per kilogram ({q.u_per_kg_source})"
+    return text
 
 
 def _detail(q: Quantity, width: int) -> str:

@@ -49,6 +49,8 @@ class Quantity:
     default_u: float = 0.0
     default_u_rel: float = 0.0
     u_source: str = ""
+    default_u_per_kg: float | None = None  # takes the place of both where the file is in a unit per kilogram
+    u_per_kg_source: str = ""
     needed_by: str = ""
     meaning: str = ""
     aliases: tuple[tuple[str, str], ...] = ()  # (plain header, basis its words state)
@@ -119,6 +121,8 @@ def _quantity(row: dict[str, str]) -> Quantity:
         default_u=_number(row["default_u"], 0.0),
         default_u_rel=_number(row["default_u_rel"], 0.0),
         u_source=row["u_source"],
+        default_u_per_kg=float(row["default_u_per_kg"]) if row["default_u_per_kg"] else None,
+        u_per_kg_source=row["u_per_kg_source"],
         needed_by=row["needed_by"],
         meaning=row["meaning"],
         aliases=_pairs(row["aliases"]),

@@ -152,3 +152,14 @@ def test_own_acid_has_an_uncertainty():
     table = {"humus_mol_l": np.array([2e-4, 2e-4]), "humus_u_mol_l": np.array([np.nan, 1e-6]), "temperature_c": np.full(2, 5.0)}
     assert_allclose(uncertainties(table)["humus_mol_l"][1], 1e-6, rtol=1e-12)
     assert_allclose(uncertainties(table)["humus_mol_l"][0], 0.05 * 2e-4, rtol=0.11)
+
+
+def test_readings_per_kilogram_have_the_default_of_sea_laboratories(tmp_path):
+    """10 µmol/kg whatever the size where the file is per kilogram; its own column wins; 2 µeq/L and 2 % otherwise."""
+    path = tmp_path / "t.csv"
+    path.write_text("sample_id,temperature_c,salinity,ph,alkalinity_umol_kg,alkalinity_u_umol_kg\n"
+                    "a,20,35,8.1,2300,\nb,20,35,8.1,2300,3\n", encoding="utf-8")
+    readings = read_readings(path)
+    found = values_of(readings.frame)
+    assert_allclose(uncertainties(found, readings.headers)["alkalinity_eq_l"], [1e-5, 3e-6 * 1.0248], rtol=1e-3)
+    assert_allclose(uncertainties(found)["alkalinity_eq_l"][0], 2e-6 + 0.02 * 2300e-6 * 1.0248, rtol=1e-3)

@@ -65,7 +65,7 @@ def assess(readings: Readings, options: Options, limits: tuple[Limit, ...], *, o
     values = values_of(frame)
     n = len(frame)
     values.setdefault("temperature_c", np.full(n, np.nan))
-    u = uncertainties(values)
+    u = uncertainties(values, readings.headers)
     gap = closure(values, u, acids, options)
     choice, figures = _solve(values, n, acids, options, gap)
     solved = choice != NO_PAIR

@@ -28,6 +28,7 @@ Values = Mapping[str, Array]
 PH_COLUMNS = {"ph": "meter", "ph_total": "total", "ph_seawater": "seawater", "ph_free": "free"}
 NAN_HAS_MEANING = (*IONS, "boron", "sulfate", "fluoride")  # to the engine; other acids not measured count as none
 MAJOR_IONS = ("calcium", "magnesium", "sodium", "chloride", "sulfate")  # needed before ions give ionic strength
+OWN_ACID_U_REL = 0.05  # common practice, as for the shipped acids
 STRENGTH_PER_CONDUCTIVITY = 1.6e-5  # mol/L per µS/cm at 25 °C; Russell 1976 (recalled)
 STRENGTH_PER_TDS = 2.5e-5           # mol/L per mg/L; Langelier 1936
 STRENGTH_SOURCES = ("", "given", "ions", "conductivity", "dissolved solids", "salinity", "alkalinity")
@@ -39,16 +40,22 @@ def values_of(frame: pd.DataFrame) -> dict[str, Array]:
     return {name: v for name, v in numbers.items() if v.dtype.kind == "f" and not np.isnan(v).all()}
 
 
-def uncertainties(values: Values) -> dict[str, Array]:
-    """Standard uncertainty of every quantity: its own column where given, else the default of the column table."""
+def uncertainties(values: Values, headers: Mapping[str, tuple[str, str]] | None = None) -> dict[str, Array]:
+    """Standard uncertainty of every quantity: its own column where given, else the default of the column table.
+
+    `headers` (file header to column and unit) tell which were given per kilogram, as sea laboratories do.
+    """
     known = quantities()
+    per_kg = {name for name, unit in (headers or {}).values() if "/kg" in unit}
     out = {}
     for name, value in values.items():
         quantity = known.get(name)
         if quantity is None:  # an uncertainty column, or an acid of the user's own
             if not name.endswith("_mol_l") or name.endswith("_u_mol_l"):
                 continue
-            default, u_name = 0.05 * np.abs(value), name.replace("_mol_l", "_u_mol_l")
+            default, u_name = OWN_ACID_U_REL * np.abs(value), name.replace("_mol_l", "_u_mol_l")
+        elif name in per_kg and quantity.default_u_per_kg is not None:
+            default, u_name = np.full(value.shape, quantity.default_u_per_kg), quantity.u_name
         else:
             default, u_name = quantity.default_u + quantity.default_u_rel * np.abs(value), quantity.u_name
         own = values.get(u_name)
