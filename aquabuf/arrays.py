@@ -1,4 +1,4 @@
-"""Small helpers for arrays whose rows do not see each other."""
+"""Small functions for arrays whose rows do not see each other."""
 
 from __future__ import annotations
 

@@ -45,6 +45,7 @@ class Options:
         if self.seed < 0:
             raise InputError(f"seed must be 0 or more; found {self.seed}. Any whole number does.")
         for name in ("acid_thresholds", "base_thresholds"):
+            object.__setattr__(self, name, tuple(dict.fromkeys(round(ph, 3) for ph in getattr(self, name))))
             for ph in getattr(self, name):
                 if not 2.0 <= ph <= 12.0:
                     raise InputError(f"a pH threshold must be from 2 to 12; found {ph:g}. Correct the list.")

@@ -31,7 +31,7 @@ FRESH_BELOW = 1.0  # practical salinity at which the seawater scale takes over
 LIMITS = {
     "t_c": (0.0, 50.0, -2.0, 60.0),
     "salinity": (0.0, 50.0, 0.0, 55.0),
-    "ionic_strength_mol_l": (0.0, 0.1, 0.0, 1.0),  # of fresh water: the Davies equation
+    "ionic_strength_mol_l": (0.0, 0.1, 0.0, 0.5),  # of fresh water: the Davies equation
     "pressure_atm": (0.4, 1.2, 0.2, 2.0),
 }
 CARBONIC_SETS = {  # salinity and temperature range of each marine set

@@ -30,7 +30,7 @@ def solve_pair(
 ) -> State:
     """State of each row from one of KNOWN_PAIRS (ph on `ph_scale`; alkalinity eq/L; dic mol/L; pco2 atm)."""
     with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
-        h, dic, alk, residual, status = _solve(tuple(known), known, c, acids, ph_scale)
+        h, dic, alk, residual, status = _solve(tuple(known), known, c, acids, ions, ph_scale)
     status = np.where(c.status < SOLVED, c.status, np.where(status < SOLVED, status, c.status)).astype(np.int8)
     lost = status < SOLVED
     h, dic, alk, residual = (np.where(lost, np.nan, v) for v in (h, dic, alk, residual))
@@ -38,7 +38,7 @@ def solve_pair(
 
 
 def _solve(pair: tuple[str, ...], known: Mapping[str, Array], c: Conditions, acids: tuple[Dissolved, ...],
-           ph_scale: str) -> tuple[Array, Array, Array, Array, NDArray[np.int8]]:
+           ions: Mapping[str, Array], ph_scale: str) -> tuple[Array, Array, Array, Array, NDArray[np.int8]]:
     families = families_of(c, acids)
     shape = c.t_c.shape
     zero = np.zeros(shape)
@@ -69,6 +69,8 @@ def _solve(pair: tuple[str, ...], known: Mapping[str, Array], c: Conditions, aci
         alk = alkalinity_at(system(dic=dic), h)
         status = _direct_status(pair, known, dic - co2, h)
         residual = zero
+    for amount in ions.values():
+        status[(amount < 0.0) & (status == SOLVED)] = IMPOSSIBLE
     for d in acids:
         status[(d.total < 0.0) & (status == SOLVED)] = IMPOSSIBLE
         status[~np.isfinite(d.total)] = NOT_FINITE

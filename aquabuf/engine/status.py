@@ -13,7 +13,7 @@ NOT_FINITE = -3
 STATUS_WORDS = {
     SOLVED: "solved",
     FLAGGED: "solved outside the range of a constant",
-    IMPOSSIBLE: "no water has this pair of values",
+    IMPOSSIBLE: "no water has these values",
     OUT_OF_RANGE: "temperature, salinity or ionic strength far outside the range of the constants",
     NOT_FINITE: "a value is missing or not a number",
 }

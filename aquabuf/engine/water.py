@@ -37,7 +37,7 @@ class Water:
     <acid>_mol_l : total of a weak acid of the shipped table or of `acids`, such as phosphate_mol_l. Boron, sulfate
         and fluoride that are not given (or nan) come from salinity in marine rows and are zero in fresh ones. [mol/L]
     calcium_mol_l, magnesium_mol_l, sodium_mol_l, potassium_mol_l : for calcium carbonate. Calcium from salinity in
-        marine rows where not given. [mol/L]
+        marine rows where not given; the others count as none where not given or nan. [mol/L]
     acids : the user's own `Acid` records.
     carbonic, boron_ratio : marine constant set ("millero" or "lueker") and boron ratio ("uppstrom" or "lee").
 
@@ -52,7 +52,15 @@ class Water:
 
     @classmethod
     def _make(cls, known: Mapping[str, ArrayLike], ph_scale: str = "meter", **water: Any) -> Water:
+        if "t_c" not in water:
+            raise InputError("a water needs its temperature; t_c is missing. Give t_c in °C.")
         return cls(*build_state(known, ph_scale, **water))
+
+    def __repr__(self) -> str:
+        solved = int((self._state.status >= 0).sum())
+        ph = self._state.ph()[self._state.status >= 0]
+        spread = f", pH {ph.min():.2f} to {ph.max():.2f}" if solved else ""
+        return f"<Water: {self._state.status.size} rows, {solved} solved{spread}>"
 
     # ---------------------------------------------------------------- making one
 
@@ -272,14 +280,21 @@ class Water:
         found = buffer.weakest_buffering(self._state)
         return buffer.Weakest(**{n: self._out(getattr(found, n)) for n in found.__dataclass_fields__})
 
-    def acid_to_ph_eq_l(self, ph: float, exchange: Exchange = "closed", *, pco2_atm: ArrayLike | None = None) -> Array:
+    def acid_to_ph_eq_l(self, ph: ArrayLike, exchange: Exchange = "closed", *,
+                        pco2_atm: ArrayLike | None = None) -> Array:
         """Strong acid that brings the water to a meter pH; negative if base is needed. [eq/L]
 
         Closed: carbon stays. Open: the water is kept at `pco2_atm` (its own by default).
         """
-        return self._out(buffer.acid_to_ph(self._state, ph, co2=self._held_co2(exchange, pco2_atm)))
+        target = self._numbers(ph, "ph")
+        if np.broadcast_shapes(target.shape, self._shape) != self._shape:
+            raise InputError(f"ph and the water must have one shape; the water has {self._shape}, found "
+                             f"{target.shape}. Ask for one pH after the other, or use curve().")
+        rows = as_rows(target, self._shape).reshape(-1) if target.ndim else target
+        return self._out(buffer.acid_to_ph(self._state, rows, co2=self._held_co2(exchange, pco2_atm)))
 
-    def base_to_ph_eq_l(self, ph: float, exchange: Exchange = "closed", *, pco2_atm: ArrayLike | None = None) -> Array:
+    def base_to_ph_eq_l(self, ph: ArrayLike, exchange: Exchange = "closed", *,
+                        pco2_atm: ArrayLike | None = None) -> Array:
         """Strong base that brings the water to a meter pH; negative if acid is needed. [eq/L]"""
         return -self.acid_to_ph_eq_l(ph, exchange, pco2_atm=pco2_atm)
 
@@ -300,7 +315,12 @@ class Water:
 
         Shape of both: the water's own shape followed by that of `ph`.
         """
-        points = np.asarray(ph, dtype=float)
+        try:
+            points = np.atleast_1d(np.asarray(ph, dtype=float))
+        except (TypeError, ValueError):
+            points = np.zeros((0, 0))
+        if points.ndim != 1:
+            raise InputError(f"the pH values of a curve must be numbers in one row; found {ph!r}. Correct them.")
         found = buffer.curve(self._state, points, co2=self._held_co2(exchange, pco2_atm))
         added, intensity = (v.reshape(self._shape + points.shape) for v in found)
         return added, intensity

@@ -18,10 +18,11 @@ class OutputFolder:
 
     As a context manager: leaving without an error publishes the files, leaving with one removes them. Files named in
     `names` that exist already are refused unless `force`; with `force`, those not written again are removed, so that
-    a folder never mixes two runs.
+    a folder never mixes two runs. What a failed run left (exactly the `leftovers`) gives way without `force`.
     """
 
-    def __init__(self, folder: Path, names: Iterable[str], *, force: bool):
+    def __init__(self, folder: Path, names: Iterable[str], *, force: bool, leftovers: Iterable[str] = ()):
+        self._leftovers = set(leftovers)
         self.folder = folder
         self._names = tuple(names)
         self._force = force
@@ -40,7 +41,7 @@ class OutputFolder:
                 raise FileError(f"{self.folder.name}/{name} is a folder, where a file is to be written. "
                                 f"Choose another folder with --out.")
         there = [n for n in self._names if (self.folder / n).exists()]
-        if there and not self._force:
+        if there and not self._force and set(there) != self._leftovers:
             raise FileError(f"{self.folder.name}/{there[0]} exists already and is not overwritten. "
                             f"Choose another folder with --out, or replace it with --force.")
         return self

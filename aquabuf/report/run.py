@@ -31,6 +31,7 @@ __all__ = ["OUTPUT_FILES", "assess_file"]
 OUTPUT_FILES = ("results.csv", "verdicts.csv", "checks.csv", "curves.csv", "rejected.csv", "run.json", "samples.png",
                 "samples.svg")
 SECONDS_PER_DRAW = 7e-6  # on one core, measured; only for the notice
+FAILED_RUN_FILES = ("rejected.csv", "run.json")  # of a run that could assess no row
 CHUNK_ROWS = 16_384      # long enough for the fixed cost of a piece not to count, short enough for the cache
 ALL_CHECKS_UP_TO = 20_000  # samples; beyond, checks.csv holds the unmet ones only
 
@@ -54,7 +55,7 @@ def assess_file(path: Path, folder: Path, options: Options, *, mapping: Path | N
         minutes = ALL_CHECKS_UP_TO * options.draws * SECONDS_PER_DRAW / 60.0
         notify(f"{options.draws:,} draws for each of more than {ALL_CHECKS_UP_TO:,} rows take about {minutes:.0f} "
                f"minutes per {ALL_CHECKS_UP_TO:,} rows; --draws 0 leaves the intervals out and takes seconds.")
-    with OutputFolder(folder, OUTPUT_FILES, force=force) as out:
+    with OutputFolder(folder, OUTPUT_FILES, force=force, leftovers=FAILED_RUN_FILES) as out:
         writer = _Tables(out, options)
         with writer:
             for piece in pieces:
@@ -70,16 +71,23 @@ def assess_file(path: Path, folder: Path, options: Options, *, mapping: Path | N
             if figure:
                 _draw(tally, curves, out, path.name)
         else:
+            failure = _nothing_assessed(path.name, tally)
+            if (folder / OUTPUT_FILES[0]).exists():  # a failed run must not take an earlier result away
+                raise InputError(f"{failure} The earlier result is untouched; use another --out to see the reasons.")
             for name in ("results.csv", "verdicts.csv", "checks.csv"):
                 writer.drop(name)
         record = _record(path.name, hashes, options, rules, tally, all_checks=few)
         out.part("run.json").write_text(json.dumps(record, indent=1, ensure_ascii=False) + "\n", encoding="utf-8")
         written = [name for name in OUTPUT_FILES if name in out.written]
     if not tally.assessed:
-        (column, rule), count = tally.refusal_rules.most_common(1)[0]
-        raise InputError(f"no row of {path.name} can be assessed; {len(tally.refused_rows)} were refused, mostly for "
-                         f"{column}: {rule} ({count} x). rejected.csv in {folder.name} names each with its remedy.")
+        raise InputError(f"{failure} rejected.csv in {folder.name} names each with its remedy.")
     return summary_text(tally, options, rules, source=path.name, files=written)
+
+
+def _nothing_assessed(name: str, tally: Tally) -> str:
+    (column, rule), count = tally.refusal_rules.most_common(1)[0]
+    return (f"no row of {name} can be assessed; {len(tally.refused_rows)} were refused, mostly for {column}: {rule} "
+            f"({count} x).")
 
 
 class _Tables:

@@ -10,6 +10,7 @@ import pandas as pd
 from aquabuf.assess.limits import UNSTATED, Limit
 from aquabuf.assess.options import Options
 from aquabuf.assess.sample.headline import RANK_BY, TEST_ACID_EQ_L
+from aquabuf.assess.sample.quality import allowed, check_facts
 from aquabuf.assess.uncertainty import COVERAGE
 from aquabuf.chem.gases import AIR_CO2_PPM, AIR_CO2_YEAR
 from aquabuf.report.tally import Tally
@@ -92,12 +93,12 @@ def _worst(tally: Tally, limits: Sequence[Limit], options: Options) -> str:
 
 
 def _quality(tally: Tally) -> str:
-    facts = {r["name"]: r for r in read_table("checks")}
+    facts = check_facts()
     lines = []
     for name, fact in facts.items():
         if tally.unmet[name]:
             lines.append(_item(f"{tally.unmet[name]:,} of {tally.made[name]:,} fail {name} "
-                               f"({fact['limit_words']}): {fact['remedy']}."))
+                               f"({allowed(fact)}): {fact['remedy']}."))
     for r in tally.file_checks().itertuples():
         if r.met == "no":
             lines.append(_item(f"{r.check}: {r.value:.4g} {r.unit}, should be {r.limit}: {r.remedy}."))

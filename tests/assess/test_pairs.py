@@ -162,7 +162,7 @@ def test_a_pair_that_contradicts_itself_is_refused_alone():
     found = assessed(bad, good)
     line = found.rejected.iloc[0]
     assert (line["row"], line["sample_id"], line["column"]) == (2, "bad", "ph, alkalinity_eq_l")
-    assert line["value"] == "ph 10; alkalinity_eq_l 50 µeq/L"
+    assert line["value"] == "ph = 10; alkalinity_eq_l = 50 µeq/L"
     assert line["rule"].startswith("alkalinity must leave carbonate above zero at this pH")
     assert "check pH and titration" in line["remedy"]
     assert found.results["sample_id"].tolist() == ["good"]
@@ -176,12 +176,12 @@ REFUSED = [
      "two of pH, alkalinity, carbon and CO2 pressure make a known pair", "or run with --exchange open"),
     ("pH alone", T | {"ph": 7.0}, "ph, alkalinity, dic, pco2", "only pH", "two of pH", "^give a second one$"),
     ("nothing", T, "ph, alkalinity, dic, pco2", "none", "two of pH", "^give a second one$"),
-    ("gas beyond carbon", T | {"dic_mol_l": 1e-5, "pco2_atm": 0.01}, "dic_mol_l, pco2_atm", "dic_mol_l 10 µmol/L; pco2_atm 1e+04 µatm",
+    ("gas beyond carbon", T | {"dic_mol_l": 1e-5, "pco2_atm": 0.01}, "dic_mol_l, pco2_atm", "dic_mol_l = 10 µmol/L; pco2_atm = 1e+04 µatm",
      "total carbon must be more than the CO2 that this pressure dissolves", "check both readings"),
     ("alkalinity beyond any pH", T | {"alkalinity_eq_l": 15.0, "dic_mol_l": 1e-3, "ionic_strength_mol_l": 0.01}, "alkalinity_eq_l, dic_mol_l",
-     "alkalinity_eq_l 1.5e+07 µeq/L; dic_mol_l 1000 µmol/L", "no water has this pair of values", "check both readings and their units"),
-    ("thick brine without salinity", T | {"ph": 7.0, "alkalinity_eq_l": 1e-3, "ionic_strength_mol_l": 2.0}, "conductivity_us_cm",
-     "ionic strength 2 mol/L from given", "ionic strength of fresh water must be at most 1 mol/L", "give salinity if this is salt water"),
+     "alkalinity_eq_l = 1.5e+07 µeq/L; dic_mol_l = 1000 µmol/L", "no water has these values", "check both readings and their units"),
+    ("thick brine without salinity", T | {"ph": 7.0, "alkalinity_eq_l": 1e-3, "ionic_strength_mol_l": 2.0}, "ionic_strength_mol_l",
+     "ionic strength 2 mol/L from given", "ionic strength of fresh water must be at most 0.5 mol/L", "give salinity if this is salt water"),
     ("Lueker in brackish water", T | {"salinity": 5.0, "ph_total": 8.0, "alkalinity_eq_l": 2e-3}, "salinity, temperature_c", "5; 25 °C",
      "the lueker constants reach salinity 19 to 43 at 2 to 35 °C", "use --marine-constants millero"),
     ("thin air", T | {"ph": 7.0, "alkalinity_eq_l": 1e-3, "air_pressure_atm": 0.1}, "air_pressure_atm", "0.1",
@@ -222,7 +222,7 @@ def test_a_lone_alkalinity_that_cannot_be_solved_is_not_told_to_run_open():
     """Refused in an open run for its ionic strength, so that is what the line must say."""
     line = assessed(T | {"alkalinity_eq_l": 1e-3, "ionic_strength_mol_l": 2.0}, exchange="open").rejected.iloc[0]
     assert "--exchange open" not in line["remedy"]
-    assert line["rule"].startswith("ionic strength of fresh water must be at most 1 mol/L")
+    assert line["rule"].startswith("ionic strength of fresh water must be at most 0.5 mol/L")
 
 
 def test_ph_read_in_the_laboratory_is_carried_to_the_water():
@@ -293,4 +293,30 @@ def test_status_outside_range():
     """Beyond 50 °C the constants are stretched: the row is kept and says so."""
     row = results({"temperature_c": 55.0, "ph": 7.5, "alkalinity_eq_l": 1e-3}).iloc[0]
     assert row["status"] == "outside range"
-    assert "outside the range of a constant" in row["status_reason"]
+    assert "the range of the constants" in row["status_reason"]
+
+
+def test_more_carbon_dioxide_than_a_surface_holds_is_refused():
+    """pH 4 with 4 meq/L: CO2 = alkalinity h / K1 = 4e-3 x 1e-4 / 10^-6.46 = 1.2 mol/L, over K0 0.054 some 21 atm."""
+    line = assessed({"temperature_c": 10.0, "ph": 4.0, "alkalinity_eq_l": 4e-3}).rejected.iloc[0]
+    assert "must be at most 2 atm" in line["rule"]
+    assert 18.0 < float(line["rule"].split("implies, ")[1].split(" atm")[0]) < 25.0
+    assert "check both readings" in line["remedy"]
+
+
+def test_alkalinity_that_the_answer_rests_on_is_told():
+    """Where pH and carbon were used, the solved alkalinity stands beside the titrated one."""
+    row = results({"sample_id": "w", "temperature_c": 15.0, "ph": 5.2, "anc_eq_l": 4e-5, "dic_mol_l": 1e-4}).loc["w"]
+    assert row["pair"] == "pH and carbon"
+    assert row["alkalinity_meq_l"] == 0.04
+    k1 = 10.0**-6.419  # Plummer & Busenberg 1982 at 15 °C
+    by_hand = 1e-4 * k1 / (k1 + 10.0**-5.2) - 10.0**-5.2
+    np.testing.assert_allclose(row["alkalinity_used_meq_l"], 1e3 * by_hand, atol=2e-4)
+
+
+def test_half_limits_are_named_on_the_row(tmp_path):
+    """A row that holds half a detection limit says of which column."""
+    path = tmp_path / "t.csv"
+    path.write_text("sample_id,temperature_c,ph,alkalinity_meq_l,sulfate_mg_l\na,10,7,1,<0.2\nb,10,7,1,4\n", encoding="utf-8")
+    found = assess(read_readings(path), Options(draws=0), ())
+    assert found.results["below_detection"].tolist() == ["sulfate_mol_l", ""]

@@ -27,12 +27,18 @@ def one(value):
     return np.array([float(value)])
 
 
+NO_OTHER_IONS = {name: one(0.0) for name in ("weak_cations_meq_l", "weak_anions_meq_l", "hydrogen_meq_l", "hydroxide_meq_l")}
+
+
 def lake_checks(strength=0.0, measured=23.7):
     """Checks of the lake, by name."""
     values = {f"{n}_mol_l": one(v * 1e-6 / CHARGE.get(n, 1)) for n, v in LAKE.items()}
     values |= {"conductivity_us_cm": one(measured), "temperature_c": one(10.0)}
     figures = {"ph": one(-np.log10(LAKE_H * 1e-6)), "bicarbonate_mmol_l": one(LAKE_HCO3 * 1e-3), "carbonate_mmol_l": one(0.0),
                "ionic_strength_mol_l": one(strength), "pco2_uatm": one(600.0), "draws_solved": one(np.nan), RANK_BY: one(-0.02)}
+    weak = {"weak_cations_meq_l": one(LAKE["ammonium"] * 1e-3),  # all ammonium, sulfate and fluoride charged, as EPA did
+            "weak_anions_meq_l": one((LAKE["sulfate"] + LAKE["fluoride"]) * 1e-3)}
+    figures |= weak | {"hydrogen_meq_l": one(LAKE_H * 1e-3), "hydroxide_meq_l": one(0.0)}
     found = sample_checks(values, {}, figures, np.array(["pH and carbon"]), one(np.nan), one(np.nan))
     return {c.name: c for c in found}
 
@@ -74,7 +80,8 @@ def salt(cations, anions):
     names = ("calcium", "magnesium", "sulfate")
     values = {f"{n}_mol_l": one(0.0) for n in names} | {"sodium_mol_l": one(cations - 1e-7), "chloride_mol_l": one(anions - 1e-7)}
     figures = {"ph": one(7.0), "bicarbonate_mmol_l": one(0.0), "carbonate_mmol_l": one(0.0), "ionic_strength_mol_l": one(0.0),
-               "pco2_uatm": one(400.0), "draws_solved": one(np.nan), RANK_BY: one(0.1)}
+               "pco2_uatm": one(400.0), "draws_solved": one(np.nan), RANK_BY: one(0.1)} | NO_OTHER_IONS
+    figures |= {"hydrogen_meq_l": one(1e-4), "hydroxide_meq_l": one(1e-4)}  # of pH 7
     values["temperature_c"] = one(10.0)
     return {c.name: c for c in sample_checks(values, {}, figures, np.array([""]), one(np.nan), one(np.nan))}["ion balance"]
 
@@ -163,7 +170,7 @@ def organic(doc, ph, carbonate_meq_l, acid_to_six_meq_l=0.1, aluminum=0.0, pair=
     """The two checks of organic charge for one sample."""
     values = {"doc_mg_l": one(doc), "temperature_c": one(10.0), "aluminum_mol_l": one(aluminum)}
     figures = {"ph": one(ph), "bicarbonate_mmol_l": one(carbonate_meq_l), "carbonate_mmol_l": one(0.0), "pco2_uatm": one(400.0),
-               "ionic_strength_mol_l": one(0.0), "draws_solved": one(np.nan), RANK_BY: one(acid_to_six_meq_l)}
+               "ionic_strength_mol_l": one(0.0), "draws_solved": one(np.nan), RANK_BY: one(acid_to_six_meq_l)} | NO_OTHER_IONS
     found = sample_checks(values, {}, figures, np.array([pair]), one(np.nan), one(np.nan))
     return {c.name: c for c in reversed(found)}
 
@@ -218,6 +225,7 @@ def test_carbon_dioxide_limits():
     """10 and 20 000 µatm, both allowed."""
     figures = {"pco2_uatm": np.array([9.9, 10.0, 20000.0, 20001.0]), "ph": np.full(4, 7.0), "bicarbonate_mmol_l": np.zeros(4),
                "carbonate_mmol_l": np.zeros(4), "ionic_strength_mol_l": np.zeros(4), "draws_solved": np.array([0.9, 0.89, 1.0, 0.0]), RANK_BY: np.ones(4)}
+    figures |= {name: np.zeros(4) for name in NO_OTHER_IONS}
     nan = np.full(4, np.nan)
     checks = {c.name: c for c in sample_checks({"temperature_c": np.full(4, 10.0)}, {}, figures, np.full(4, ""), nan, nan)}
     assert checks["CO2 pressure"].met.tolist() == [False, True, True, False]

@@ -130,11 +130,17 @@ def test_share_of_draws_that_have_a_solution():
 
 
 def test_assumed_carbon_has_no_interval():
-    """An acid water whose carbon is that of air: pH and alkalinity are readings and have intervals, what rests on carbon has none."""
-    row = results({"sample_id": "w", "temperature_c": 10.0, "ph": 4.9, "alkalinity_eq_l": -1.5e-5}, draws=100).loc["w"]
+    """An acid water whose carbon is that of air: an assumption has no interval; what rests on its H+ has that of the pH.
+
+    Acid to pH 6 is nearly the H+ of the water, so its 90 % width is h (10^d - 10^-d) with d = 1.645 x 0.05 pH.
+    """
+    row = results({"sample_id": "w", "temperature_c": 10.0, "ph": 4.9, "alkalinity_eq_l": -1.5e-5}, draws=2000).loc["w"]
     assert row["status"] == "carbon from air"
-    ends = [name for name in row.index if name.endswith("_low") and np.isfinite(row[name])]
-    assert ends == ["ph_low", "alkalinity_meq_l_low", "alkalinity_mg_l_caco3_low"]
+    of_carbon = ("dic_mmol_l", "co2_mmol_l", "pco2_uatm", "pco2_air_ratio", "ph_at_air", "si_calcite", "ccpp_mg_l")
+    assert all(np.isnan(row[f"{name}_{end}"]) for name in of_carbon for end in ("low", "high"))
+    d = 1.645 * 0.05
+    width = 1e3 * 10.0**-4.9 * (10.0**d - 10.0**-d)
+    assert_allclose(row["acid_to_ph_6_0_meq_l_high"] - row["acid_to_ph_6_0_meq_l_low"], width, rtol=0.08)
 
 
 def test_no_draws_no_intervals():

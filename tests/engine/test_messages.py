@@ -90,7 +90,7 @@ def test_require_solved_marks_the_rows():
     with pytest.raises(InputRangeError, match=r"2 of 3 waters are not solved; first: row 1, temperature.*°F\?.*`mask`") as err:
         mixed.require_solved()
     assert_array_equal(err.value.mask, [False, True, True])
-    with pytest.raises(InputRangeError, match=r"1 of 1 waters are not solved; first: row 0, no water has this pair of values\. Correct"):
+    with pytest.raises(InputRangeError, match=r"1 of 1 waters are not solved; first: row 0, no water has these values\. Correct"):
         water(dic_mol_l=-1.0).require_solved()
     good = water()
     assert good.require_solved() is good
@@ -102,3 +102,34 @@ def test_status_words_name_the_trouble():
     assert list(words) == ["solved", "solved outside the range of a constant",
                            "temperature, salinity or ionic strength far outside the range of the constants",
                            "a value is missing or not a number"]
+
+
+def test_a_water_without_temperature():
+    """The missing keyword is named, not an internal function."""
+    with pytest.raises(AquabufError, match=r"t_c is missing\. Give t_c in °C"):
+        Water.from_ph_alkalinity(ph=7.0, alkalinity_eq_l=1e-3)
+
+
+@pytest.mark.parametrize("ph", ["x", [6.0, 5.0], [[6.0]]])
+def test_ph_targets_that_do_not_fit_one_water(ph):
+    """A target is one pH per water."""
+    with pytest.raises(AquabufError, match="one shape"):
+        water().acid_to_ph_eq_l(ph)
+
+
+@pytest.mark.parametrize("ph", ["x", [[6.0, 5.0]]])
+def test_curve_points_that_are_no_row_of_numbers(ph):
+    """The points of a curve are numbers in one row; a single number is one point."""
+    with pytest.raises(AquabufError, match="numbers in one row"):
+        water().curve(ph)
+    assert water().curve(7.0)[0].shape == (*water().shape, 1)
+
+
+def test_negative_ions_are_impossible():
+    """A negative amount of an ion is no water, in its row only."""
+    assert water(calcium_mol_l=[-1e-3, 1e-3]).status.tolist() == [-1, 0]
+
+
+def test_repr_tells_rows_and_ph():
+    """What a Python user sees first: rows, how many are solved, and the span of pH."""
+    assert repr(water(t_c=[10.0, 99.0])).startswith("<Water: 2 rows, 1 solved, pH ")

@@ -144,7 +144,7 @@ def test_pairs_no_water_can_have(values):
              frozenset(["alkalinity_eq_l", "pco2_atm"]): Water.from_alkalinity_pco2}[frozenset(values) - {"phosphate_mol_l"}]
     water = maker(**values, t_c=20.0)
     assert water.status == -1
-    assert water.status_words == "no water has this pair of values"
+    assert water.status_words == "no water has these values"
     assert np.isnan(water.ph)
     assert np.isnan(water.dic_mol_l)
     assert np.isnan(water.alkalinity_eq_l)

@@ -57,7 +57,7 @@ def test_limit(limit):
 @pytest.mark.parametrize("check", read_table("checks"), ids=lambda r: r["name"])
 def test_check(check):
     """Limit, remedy and source as in the shipped table."""
-    expected = row(check["name"], check["unit"], check["limit_words"], check["remedy"], check["mark"], check["source"])
+    expected = row(check["name"], check["unit"], check["limit_words"], check["low"], check["high"], check["remedy"], check["mark"], check["source"])
     assert expected in SECTIONS["Quality checks"].splitlines()
 
 

@@ -215,3 +215,27 @@ def test_worst_samples_of_all_pieces_get_their_curves(run, monkeypatch):
     at_six = curves[curves["ph"] == 6.0].set_index("sample_id")["acid_added_meq_l"]
     merged = results.set_index("sample_id")["acid_to_ph_6_0_meq_l"].loc[at_six.index]
     assert_allclose(at_six, merged, rtol=0, atol=6e-5)
+
+
+def test_a_run_that_fails_leaves_the_earlier_result_alone(tmp_path):
+    """Even with force: a table without one usable row is no reason to lose a good result."""
+    good, bad, out = tmp_path / "good.csv", tmp_path / "bad.csv", tmp_path / "out"
+    good.write_text("sample_id,temperature_c,ph,alkalinity_meq_l\na,10,7,1\n", encoding="utf-8")
+    bad.write_text("sample_id,temperature_c,ph\na,10,7\n", encoding="utf-8")
+    assess_file(good, out, Options(draws=0), figure=False)
+    before = {path.name: path.read_bytes() for path in out.iterdir()}
+    with pytest.raises(InputError, match="earlier result is untouched"):
+        assess_file(bad, out, Options(draws=0), figure=False, force=True)
+    assert {path.name: path.read_bytes() for path in out.iterdir()} == before
+
+
+def test_a_corrected_table_may_follow_a_failed_run(tmp_path):
+    """What a failed run left is no result, so the next run needs no force."""
+    table, out = tmp_path / "t.csv", tmp_path / "out"
+    table.write_text("sample_id,temperature_c,ph\na,10,7\n", encoding="utf-8")
+    with pytest.raises(InputError, match=r"rejected\.csv"):
+        assess_file(table, out, Options(draws=0), figure=False)
+    assert sorted(path.name for path in out.iterdir()) == ["rejected.csv", "run.json"]
+    table.write_text("sample_id,temperature_c,ph,alkalinity_meq_l\na,10,7,1\n", encoding="utf-8")
+    assess_file(table, out, Options(draws=0), figure=False)
+    assert "rejected.csv" not in {path.name for path in out.iterdir()}

@@ -82,7 +82,7 @@ def test_refusals_and_unmet_checks_are_counted(run):
     """With rule and remedy."""
     words, _ = run("sample_id,temperature_c,ph,alkalinity_meq_l,holding_days\na,10,7.6,2,20\nb,,7,1,3\nc,,7,1,3\nd,10,7.2,2,30\n")
     flat = " ".join(words.split())
-    assert "2 of 2 fail holding time (at most 14): titrate sooner; within a day is better." in flat
+    assert "2 of 2 fail holding time (days from sampling to titration: 0 to 14 d): titrate sooner; within a day is better." in flat
     assert "Refused: 2 rows" in flat
     assert "2 x temperature_c: every sample needs a water temperature" in flat
 

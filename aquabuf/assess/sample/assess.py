@@ -16,16 +16,16 @@ from aquabuf.assess.sample.closure import Closure, closure
 from aquabuf.assess.sample.columns import result_columns
 from aquabuf.assess.sample.curves import Inputs
 from aquabuf.assess.sample.draws import intervals
-from aquabuf.assess.sample.headline import alkalinity_as_read, headline, words_and_details
+from aquabuf.assess.sample.headline import BESIDE_RESULTS, alkalinity_as_read, headline, words_and_details
 from aquabuf.assess.sample.inputs import alkalinity_reading, own_acids, uncertainties, values_of
 from aquabuf.assess.sample.quality import Rounding, check_rows, counted, failed, roundings, sample_checks
 from aquabuf.assess.sample.refuse import refusals
-from aquabuf.assess.sample.solve import ALKALINITY_AIR, NO_PAIR, PAIRS, choose, groups, take_rows, water_of
+from aquabuf.assess.sample.solve import ALKALINITY_AIR, NO_PAIR, PAIRS, believable, choose, groups, take_rows, water_of
 from aquabuf.assess.sample.tables import results_table, verdict_table
 from aquabuf.chem.acids import Acid
-from aquabuf.engine.status import FLAGGED, SOLVED
+from aquabuf.engine.status import FLAGGED
 from aquabuf.readings.duplicates import DUPLICATE_RULE
-from aquabuf.readings.result import Readings, notes_on_file
+from aquabuf.readings.result import BELOW_DETECTION, Readings, notes_on_file
 
 __all__ = ["Assessment", "assess"]
 
@@ -72,8 +72,8 @@ def assess(readings: Readings, options: Options, limits: tuple[Limit, ...], *, o
     refused = refusals(frame, values, ~solved, acids, options, readings.headers)
     keep = np.flatnonzero(solved)
     if not keep.size:
-        figures = {c.name: np.full(n, np.nan) for c in result_columns(options)} | {
-            "flagged": solved, "regime": solved, "density_kg_l": np.ones(n)}
+        names = [c.name for c in result_columns(options)] + list(BESIDE_RESULTS)
+        figures = {name: np.full(n, np.nan) for name in names}
     figures = {name: v[keep] for name, v in figures.items()}
     kept = frame.iloc[keep].reset_index(drop=True)
     values, u, choice = take_rows(values, keep), take_rows(u, keep), choice[keep]
@@ -87,7 +87,7 @@ def assess(readings: Readings, options: Options, limits: tuple[Limit, ...], *, o
     broken = verdicts(limits, figures, kind, figures["regime"].astype(object))
     pair = np.array(PAIRS, dtype=object)[choice]
     checks = sample_checks(values, u, figures, pair, gap.carbonate, gap.carbonate_u)
-    figures |= {"pair": pair, "failed_checks": failed(checks, keep.size)}
+    figures |= {"pair": pair, "failed_checks": failed(checks, keep.size), "below_detection": _halved(readings, kept)}
     table = results_table(kept, figures, values, choice, spread, broken, options)
     return Assessment(
         results=table,
@@ -108,6 +108,17 @@ def _all_rejected(by_reader: pd.DataFrame, here: pd.DataFrame) -> pd.DataFrame:
     return pd.concat(parts).sort_values("row", kind="stable").reset_index(drop=True) if parts else by_reader
 
 
+def _halved(readings: Readings, kept: pd.DataFrame) -> NDArray[np.object_]:
+    """Columns of each sample that hold half a detection limit, joined by semicolons."""
+    flags = readings.flags[readings.flags["what"] == BELOW_DETECTION]
+    out = np.full(len(kept), "", dtype=object)
+    place = {row: i for i, row in enumerate(kept["row"].tolist())} if len(flags) else {}
+    for row, column in zip(flags["row"], flags["column"], strict=True):
+        if row in place:
+            out[place[row]] += f"; {column}" if out[place[row]] else column
+    return out
+
+
 def _duplicates(rejected: pd.DataFrame) -> int:
     return int(rejected["rule"].astype(str).str.startswith(DUPLICATE_RULE).sum())
 
@@ -122,7 +133,7 @@ def _solve(values: Mapping[str, NDArray], n: int, acids: tuple[Acid, ...], optio
         for pair, ph_column, rows in groups(values, open_now):
             part = take_rows(values, rows)
             water = water_of(part, pair, ph_column, acids, options)
-            good = np.flatnonzero(water.status >= SOLVED)
+            good = np.flatnonzero(believable(water))
             if not good.size:
                 continue
             if good.size < rows.size:

@@ -17,8 +17,8 @@ from aquabuf.engine.water import Water
 
 __all__ = ["Closure", "closure"]
 
-MAGNIFIED_BELOW = 0.1  # carbonate charge per mole of carbon; pH 5.4 and below
-MUCH_BETTER = 2.0      # times smaller uncertainty before measured carbon takes the place of alkalinity
+MAGNIFIED_BELOW = 0.1  # carbonate charge per mole of carbon; pH 5.4 and below; our choice
+MUCH_BETTER = 2.0      # times smaller uncertainty before measured carbon takes the place of alkalinity; our choice
 
 
 @dataclass(frozen=True, slots=True, eq=False)

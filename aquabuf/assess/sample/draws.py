@@ -11,15 +11,14 @@ from aquabuf.assess.limits import Limit
 from aquabuf.assess.options import Options
 from aquabuf.assess.sample.headline import alkalinity_as_read, headline
 from aquabuf.assess.sample.inputs import Array, Values, alkalinity_reading
-from aquabuf.assess.sample.solve import ALKALINITY_AIR, PH_AIR, groups, take_rows, water_of
+from aquabuf.assess.sample.solve import ALKALINITY_AIR, PH_AIR, believable, groups, take_rows, water_of
 from aquabuf.assess.uncertainty import drawn, interval, row_blocks, share
 from aquabuf.chem.acids import Acid
-from aquabuf.engine.status import SOLVED
 
 __all__ = ["Intervals", "intervals"]
 
 
-FREE_OF_CARBON = ("ph", "alkalinity_meq_l", "alkalinity_mg_l_caco3")
+OF_CARBON = ("dic_mmol_l", "co2_mmol_l", "pco2_uatm", "pco2_air_ratio", "ph_at_air", "si_calcite", "ccpp_mg_l")
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -48,10 +47,10 @@ def intervals(values: Values, u: Values, choice: NDArray[np.int8], acids: tuple[
                 water = water.at_air(options.air_co2_ppm)
             figures = headline(water, options)
             figures |= alkalinity_as_read(alkalinity_reading(many), figures)
-            solved = (water.status >= SOLVED).reshape(block.size, options.draws)
+            solved = believable(water).reshape(block.size, options.draws)
             out.solved[block] = solved.mean(axis=1)
             for name, v in figures.items():
-                if pair == PH_AIR and name not in FREE_OF_CARBON:
+                if pair == PH_AIR and name in OF_CARBON:
                     continue  # its carbon is an assumption, and an assumption has no interval
                 ends = interval(v.reshape(block.size, options.draws))
                 for store, end in zip((out.low, out.high), ends, strict=True):

@@ -19,6 +19,8 @@ __all__ = ["MARINE_FROM", "RANK_BY", "REGIMES", "TEST_ACID_EQ_L", "alkalinity_as
 Array = NDArray[np.float64]
 
 TEST_ACID_EQ_L = 5e-5  # 0.05 meq/L: of the order of an acid episode in a dilute lake; common practice, no source
+BESIDE_RESULTS = ("flagged", "density_kg_l", "weak_cations_meq_l", "weak_anions_meq_l", "hydrogen_meq_l",
+                  "hydroxide_meq_l")
 REGIMES = ("fresh", "brackish", "marine")
 MARINE_FROM = 30.0     # practical salinity; Venice system 1958 (recalled)
 CCPP_AT_REST_MG_L = 1.0  # within this the water is called balanced; common practice, no source
@@ -91,6 +93,8 @@ def words_and_details(water: Water, si_calcite: Array, ccpp_mg_l: Array) -> dict
         "temperature_c": water.t_c,
         "salinity": salinity,
         "density_kg_l": water.density_kg_l,
+        "alkalinity_used_meq_l": water.alkalinity_eq_l * 1e3,
+        **_charges(water),
         "dic_umol_kg": water.dic_mol_l / water.density_kg_l * 1e6,
         "ionic_strength_mol_l": water.ionic_strength_mol_l,
         "bicarbonate_mmol_l": carbonate[1],
@@ -110,6 +114,16 @@ def words_and_details(water: Water, si_calcite: Array, ccpp_mg_l: Array) -> dict
         "saturation_ratio_calcite": exp10(si_calcite),
         "ccpp_words": ccpp_in_words(ccpp_mg_l),
     }
+
+
+def _charges(water: Water) -> dict[str, Array]:
+    """Charge of the weak acids beside carbonate, and of the water itself. [meq/L]"""
+    s, species = water.state, water.species_mol_l
+    weak = np.stack([np.zeros(water.shape)] + [water.charge_eq_l(d.acid.name) * 1e3 for d in s.acids])
+    return {"weak_cations_meq_l": np.maximum(weak, 0.0).sum(axis=0),
+            "weak_anions_meq_l": np.maximum(-weak, 0.0).sum(axis=0),
+            "hydrogen_meq_l": species["H+"] * 1e3,
+            "hydroxide_meq_l": species["OH-"] * 1e3}
 
 
 def _pairs_in_range(s) -> NDArray[np.str_]:

@@ -8,12 +8,12 @@ from numpy.typing import NDArray
 from aquabuf.assess.sample.inputs import Values, reading
 from aquabuf.chem.organic import OLIVER_SITES_EQ_PER_MG, organic_anion_oliver
 
-__all__ = ["charge_allowance", "demand", "titrated_organic"]
+__all__ = ["ALUMINUM_ACTS_BELOW", "charge_allowance", "demand", "titrated_organic"]
 
 Array = NDArray[np.float64]
 
-TITRATION_END_PH = 4.0   # about where a Gran titration stops reaching weak acids
-ALUMINUM_CHARGE = 3.0    # upper bound per mole in acid water
+TITRATION_END_PH = 4.0   # about where a Gran titration stops reaching weak acids; common practice
+ALUMINUM_CHARGE = 3.0    # upper bound per mole in acid water (Al+++)
 ALUMINUM_ACTS_BELOW = 5.5  # pH; it buffers between 4.5 and 5.5: Driscoll & Bisogni 1983
 
 

@@ -15,15 +15,19 @@ from aquabuf.assess.frames import LongRows, frame_of
 from aquabuf.assess.options import ALWAYS_ACID
 from aquabuf.assess.sample.headline import RANK_BY
 from aquabuf.assess.sample.inputs import MAJOR_IONS, Array, Values, reading
-from aquabuf.assess.sample.leftout import demand, titrated_organic
+from aquabuf.assess.sample.leftout import ALUMINUM_ACTS_BELOW, demand, titrated_organic
 from aquabuf.assess.sample.solve import PH_AIR
+from aquabuf.chem.acids import acid_table
+from aquabuf.chem.activity import log_gamma_davies
 from aquabuf.readings.schema import quantities
 from aquabuf.tables import read_table
 from aquabuf.units import substances, to_house
 
-__all__ = ["Check", "Rounding", "check_rows", "counted", "failed", "file_check_rows", "roundings", "sample_checks"]
+__all__ = ["Check", "Rounding", "allowed", "check_facts", "check_rows", "counted", "failed", "file_check_rows",
+           "roundings", "sample_checks"]
 
-WHOLE_MIN_ROWS, WHOLE_SHARE = 10, 90.0
+SM_2510_A = 0.5                      # Debye-Hückel slope that the method uses at 25 °C
+WHOLE_MIN_ROWS, WHOLE_SHARE = 10, 90.0  # common practice, no source
 ROUNDING_SD = 1.0 / np.sqrt(12.0)   # of a unit: standard deviation of an even spread
 ALL_ROWS = "(all rows)"
 ROUNDED_COLUMNS = ("ph", "temperature_c", "alkalinity_eq_l", "anc_eq_l", "conductivity_us_cm", "dic_mol_l")
@@ -46,6 +50,25 @@ class Check:
             return (self.value >= self.low) & (self.value <= self.high)
 
 
+def check_facts() -> dict[str, dict[str, str]]:
+    """Rows of the shipped table of checks by name."""
+    return {r["name"]: r for r in read_table("checks")}
+
+
+def allowed(fact: Mapping[str, str]) -> str:
+    """What a check allows, in words: its own where the limit varies, else built from the limits of the table."""
+    low, high = float(fact["low"] or "-inf"), float(fact["high"] or "inf")
+    if not (fact["low"] or fact["high"]):
+        return fact["limit_words"]
+    return f"{fact['limit_words']}: {_limit_words(np.array([low]), np.array([high]))[0]} {fact['unit']}"
+
+
+def _fixed(name: str, value: Array, detail: NDArray | None = None) -> Check:
+    """A check whose limits are the same for all samples, as the table has them."""
+    fact = check_facts()[name]
+    return Check(name, value, float(fact["low"] or "-inf"), float(fact["high"] or "inf"), detail)
+
+
 def sample_checks(values: Values, u: Values, figures: Mapping[str, NDArray], pair: NDArray, carbonate_gap: Array,
                   carbonate_gap_u: Array) -> list[Check]:
     """All checks of the solved samples.
@@ -60,7 +83,8 @@ def sample_checks(values: Values, u: Values, figures: Mapping[str, NDArray], pai
 
     cations, anions, complete = _charges(values, figures, rows)
     total = (cations + anions) * 1e6
-    imbalance = np.where(complete, 100.0 * (anions - cations) / (anions + cations), np.nan)
+    some = complete & (total > 0.0)
+    imbalance = 100.0 * (anions - cations) / np.where(some, anions + cations, np.nan)
     allowed = np.where(total < 50.0, 60.0, np.where(total <= 100.0, 30.0, 15.0))
     measured = get("conductivity_us_cm")
     computed = np.where(complete, _conductivity(values, figures), np.nan)
@@ -75,13 +99,13 @@ def sample_checks(values: Values, u: Values, figures: Mapping[str, NDArray], pai
         Check("pH against alkalinity", carbonate_gap * 1e3, -2e3 * carbonate_gap_u, np.inf),
         _over_determined(values, u, figures, rows),
         *_brown(values, figures, pair),
-        Check("CO2 pressure", figures["pco2_uatm"], 10.0, 20_000.0),
-        Check("temperature", get("temperature_c"), -np.inf, 35.0),
-        Check("salinity", unstated_salinity, -np.inf, 2000.0),
-        Check("hardness", hardness, -10.0, 10.0),
-        Check("holding time", get("holding_days"), 0.0, 14.0),
-        Check("usual ranges", outside, 0.0, 0.0, names),
-        Check("draws", 100.0 * figures["draws_solved"], 90.0, np.inf),
+        _fixed("CO2 pressure", figures["pco2_uatm"]),
+        _fixed("temperature", get("temperature_c")),
+        _fixed("salinity", unstated_salinity),
+        _fixed("hardness", hardness),
+        _fixed("holding time", get("holding_days")),
+        _fixed("usual ranges", outside, names),
+        _fixed("draws", 100.0 * figures["draws_solved"]),
     ]
 
 
@@ -93,16 +117,22 @@ def _percent_off(value: Array, reference: Array, least: float) -> Array:
 
 
 def _charges(values: Values, figures: Mapping[str, NDArray], rows: int) -> tuple[Array, Array, NDArray[np.bool_]]:
-    """Cations and anions [eq/L] with H+ and the carbonate of the solution, and whether all major ions were measured."""
+    """Cations and anions [eq/L] with those of the solution, and whether all major ions were measured.
+
+    Weak acids count with the charge they have at the pH; aluminum counts where it is dissolved as Al+++.
+    """
     plus, minus = np.zeros(rows), np.zeros(rows)
     for name, ion in substances().items():
         given = values.get(f"{name.replace(' ', '_')}_mol_l")
-        if given is not None and ion.charge:
+        if given is not None and ion.charge and name not in acid_table():
             side = plus if ion.charge > 0 else minus
-            side += abs(ion.charge) * np.nan_to_num(given)
-    carbonate = figures["bicarbonate_mmol_l"] + 2.0 * figures["carbonate_mmol_l"]
-    minus += 1e-3 * carbonate + 1e-14 * exp10(figures["ph"])
-    plus += exp10(-figures["ph"])
+            amount = np.nan_to_num(given)
+            if name == "aluminum":
+                amount = np.where(figures["ph"] < ALUMINUM_ACTS_BELOW, amount, 0.0)
+            side += abs(ion.charge) * amount
+    plus += 1e-3 * (figures["hydrogen_meq_l"] + figures["weak_cations_meq_l"])
+    minus += 1e-3 * (figures["bicarbonate_mmol_l"] + 2.0 * figures["carbonate_mmol_l"] + figures["hydroxide_meq_l"]
+                     + figures["weak_anions_meq_l"])
     complete = np.ones(rows, dtype=bool)
     for name in MAJOR_IONS:
         complete &= np.isfinite(reading(values, f"{name}_mol_l"))
@@ -112,18 +142,18 @@ def _charges(values: Values, figures: Mapping[str, NDArray], rows: int) -> tuple
 def _conductivity(values: Values, figures: Mapping[str, NDArray]) -> Array:
     """Conductivity at 25 °C from the ions. [µS/cm]
 
-    Sum of equivalent conductivities times the square of a monovalent activity coefficient, Standard Methods 2510
-    (recalled).
+    Sum of equivalent conductivities times the square of a monovalent activity coefficient at 25 °C, Standard Methods
+    2510 (recalled).
     """
-    carbonate = {"bicarbonate": figures["bicarbonate_mmol_l"] * 1e-3, "carbonate": figures["carbonate_mmol_l"] * 1e-3,
-                 "hydrogen": exp10(-figures["ph"]), "hydroxide": 1e-14 * exp10(figures["ph"])}
+    solved = {"bicarbonate": "bicarbonate_mmol_l", "carbonate": "carbonate_mmol_l", "hydrogen": "hydrogen_meq_l",
+              "hydroxide": "hydroxide_meq_l"}
     total = np.zeros(figures["ph"].shape)
     for row in read_table("ions"):
-        given = carbonate.get(row["name"], values.get(f"{row['name'].replace(' ', '_')}_mol_l"))
+        name = row["name"]
+        given = 1e-3 * figures[solved[name]] if name in solved else values.get(f"{name.replace(' ', '_')}_mol_l")
         if given is not None and row["conductivity_s_cm2_eq"]:
             total += np.nan_to_num(given) * abs(int(row["charge"])) * float(row["conductivity_s_cm2_eq"]) * 1e3
-    root = np.sqrt(figures["ionic_strength_mol_l"])
-    return total * exp10(-2.0 * 0.5 * (root / (1.0 + root) - 0.3 * root * root))
+    return total * exp10(2.0 * log_gamma_davies(1, figures["ionic_strength_mol_l"], SM_2510_A))
 
 
 def _over_determined(values: Values, u: Values, figures: Mapping[str, NDArray], rows: int) -> Check:
@@ -144,9 +174,9 @@ def _brown(values: Values, figures: Mapping[str, NDArray], pair: NDArray) -> lis
     share = demand(values, figures["ph"], ALWAYS_ACID) / asked
     any_known = np.isfinite(doc) | np.isfinite(reading(values, "aluminum_mol_l"))
     organic = np.where(rests_on_both & np.isfinite(doc), organic, np.nan)
-    return [Check("CO2 in brown acid water", 100.0 * organic, -np.inf, 20.0),
-            Check("CO2 in acid water", no_doc, 5.5, np.inf),
-            Check("acids not counted", np.where(any_known, 100.0 * share, np.nan), -np.inf, 20.0)]
+    return [_fixed("CO2 in brown acid water", 100.0 * organic),
+            _fixed("CO2 in acid water", no_doc),
+            _fixed("acids not counted", np.where(any_known, 100.0 * share, np.nan))]
 
 
 def _outside_usual(values: Values, rows: int) -> tuple[Array, NDArray]:
@@ -181,7 +211,7 @@ def counted(checks: list[Check], *, only_unmet: bool = False) -> dict[str, int]:
 
 def check_rows(checks: list[Check], frame: pd.DataFrame, *, only_unmet: bool) -> pd.DataFrame:
     """The checks as a long table, sample by sample; `frame` has `row` and `sample_id`."""
-    facts = {r["name"]: r for r in read_table("checks")}
+    facts = check_facts()
     n = len(frame)
     met = [c.met for c in checks]
     rows = LongRows([np.isfinite(c.value) & ~(m & only_unmet) for c, m in zip(checks, met, strict=True)])
@@ -256,7 +286,7 @@ def file_check_rows(rounding: Mapping[str, Rounding], duplicates: int) -> pd.Dat
     found = [("duplicate names", float(duplicates), "0", duplicates == 0, "")]
     found += [("whole numbers", 100.0 * r.whole / r.size, f"below {WHOLE_SHARE:g} in {name}, or rounding within its u",
                not r.hurts, f": {name}") for name, r in rounding.items() if r.size >= WHOLE_MIN_ROWS]
-    facts = {r["name"]: r for r in read_table("checks")}
+    facts = check_facts()
     return pd.DataFrame([{
         "row": "", "sample_id": ALL_ROWS, "check": check, "value": value, "limit": limit, "unit": facts[check]["unit"],
         "met": "yes" if met else "no", "remedy": "" if met else facts[check]["remedy"] + detail,

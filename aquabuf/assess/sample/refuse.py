@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from aquabuf.assess.options import Options
 from aquabuf.assess.sample.inputs import Values, ionic_strength, reading
-from aquabuf.assess.sample.solve import NO_PAIR, choose, groups, has, take_rows, water_of
+from aquabuf.assess.sample.solve import MOST_PCO2_ATM, NO_PAIR, choose, groups, has, take_rows, water_of
 from aquabuf.chem.acids import Acid
 from aquabuf.engine.conditions import CARBONIC_SETS, FRESH_BELOW, LIMITS
 from aquabuf.engine.status import OUT_OF_RANGE
@@ -20,6 +20,10 @@ from aquabuf.units import convert
 __all__ = ["refusals"]
 
 
+STRENGTH_COLUMNS = {  # where each estimate of ionic strength comes from
+    "given": "ionic_strength_mol_l", "ions": "major ions", "conductivity": "conductivity_us_cm",
+    "dissolved solids": "tds_mg_l", "salinity": "salinity", "alkalinity": "alkalinity_eq_l",
+}
 Reason = tuple[tuple[str, ...], str, str, str]  # columns, value, rule, remedy
 
 
@@ -49,10 +53,10 @@ def refusals(frame: pd.DataFrame, values: Values, bad: NDArray[np.bool_], acids:
             open_rows = remaining[only[remaining] == NO_PAIR]
             only[open_rows] = choice[open_rows]
         for pair, ph_column, group in groups(values, only):
-            status = water_of(take_rows(values, group), pair, ph_column, acids, options).status
-            for i, code in zip(group.tolist(), status.tolist(), strict=True):
+            water = water_of(take_rows(values, group), pair, ph_column, acids, options)
+            for i, code, pco2 in zip(group.tolist(), water.status.tolist(), water.pco2_atm.tolist(), strict=True):
                 reasons[i] = (_out_of_range(values, i, options) if code == OUT_OF_RANGE
-                              else _contradiction(values, i, pair, ph_column))
+                              else _contradiction(values, i, pair, ph_column, pco2, in_file))
     lines = [(frame["row"].iloc[i], frame["sample_id"].iloc[i], ", ".join(in_file.get(c, c) for c in reasons[i][0]),
               *reasons[i][1:]) for i in rows.tolist()]
     return pd.DataFrame(lines, columns=list(REJECTED_COLUMNS))
@@ -73,25 +77,29 @@ def _out_of_range(values: Values, i: int, options: Options) -> Reason:
                 f"the {name} constants reach salinity {s_low:g} to {s_high:g} at {t_low:g} to {t_high:g} °C",
                 "use --marine-constants millero")
     strength = ionic_strength({name: v[i:i + 1] for name, v in values.items()})
-    return (("conductivity_us_cm",), f"ionic strength {strength[0][0]:.3g} mol/L from {strength[1][0]}",
+    return ((STRENGTH_COLUMNS[strength[1][0]],), f"ionic strength {strength[0][0]:.3g} mol/L from {strength[1][0]}",
             f"ionic strength of fresh water must be at most {LIMITS['ionic_strength_mol_l'][3]:g} mol/L",
             "give salinity if this is salt water; correct the ions or the conductivity otherwise")
 
 
-def _contradiction(values: Values, i: int, pair: str, ph_column: str) -> Reason:
-    """A pair that no water has; the likely slip by pair."""
+def _contradiction(values: Values, i: int, pair: str, ph_column: str, pco2_atm: float, in_file: Mapping[str, str],
+                   ) -> Reason:
+    """A pair that no water has, or none at the surface; the likely slip by pair."""
     alkalinity = next((name for name in ("alkalinity_eq_l", "anc_eq_l") if name in values
                        and np.isfinite(values[name][i])), "alkalinity_eq_l")
-    names = {"pH": ph_column, "alkalinity": alkalinity, "carbon": "dic_mol_l", "pCO2": "pco2_atm"}
-    columns = tuple(names[m] for m in pair.split(" and "))
-    shown = "; ".join(f"{c} {_shown(c, values[c][i])}" for c in columns)
-    if pair == "pH and alkalinity":
+    names = {"pH": ph_column, "alkalinity": alkalinity, "carbon": "dic_mol_l", "pCO2": "pco2_atm", "air": "air"}
+    columns = tuple(names[m] for m in pair.split(" and ") if m != "air")
+    shown = "; ".join(f"{in_file.get(c, c)} = {_shown(c, values[c][i])}" for c in columns)
+    if pco2_atm > MOST_PCO2_ATM:
+        rule = f"the CO2 pressure that this pair implies, {pco2_atm:.3g} atm, must be at most {MOST_PCO2_ATM:g} atm"
+        remedy = "check both readings and their units; more CO2 would leave as bubbles"
+    elif pair == "pH and alkalinity":
         rule = "alkalinity must leave carbonate above zero at this pH, within uncertainty and organic charge"
-        remedy = "check pH and titration; give dic, or doc if organic acids carry charge"
+        remedy = "check pH and titration; give dic, or doc and aluminum if these carry charge"
     elif pair == "carbon and pCO2":
         rule, remedy = "total carbon must be more than the CO2 that this pressure dissolves", "check both readings"
     else:
-        rule, remedy = "no water has this pair of values", "check both readings and their units"
+        rule, remedy = "no water has these values", "check both readings and their units"
     return (columns, shown, rule, remedy)
 
 

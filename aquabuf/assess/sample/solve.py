@@ -12,13 +12,15 @@ from aquabuf.assess.sample.inputs import PH_COLUMNS, Array, Values, alkalinity_r
 from aquabuf.chem.acids import Acid
 from aquabuf.chem.gases import pco2_of_air
 from aquabuf.engine.conditions import FRESH_BELOW
+from aquabuf.engine.status import SOLVED
 from aquabuf.engine.water import Water
 
-__all__ = ["ALKALINITY_AIR", "NO_PAIR", "PAIRS", "PH_AIR", "air_pco2", "blocks", "choose", "groups", "has",
-           "take_rows", "water_of"]
+__all__ = ["ALKALINITY_AIR", "MOST_PCO2_ATM", "NO_PAIR", "PAIRS", "PH_AIR", "air_pco2", "believable", "blocks",
+           "choose", "groups", "has", "ph_columns", "take_rows", "water_of"]
 
 NO_PAIR = -1
 BLOCK_ROWS = 16_384
+MOST_PCO2_ATM = 2.0  # more would leave any water at the surface as bubbles; common practice, no source
 ALKALINITY_AIR, PH_AIR = "alkalinity and air", "pH and air"
 
 # Order of preference, unless `closure` finds another pair better for a row: measured carbon where pH and alkalinity
@@ -103,6 +105,12 @@ def blocks(rows: NDArray[np.intp]) -> Iterator[NDArray[np.intp]]:
     """Row numbers in blocks whose arrays stay in the processor's cache."""
     for start in range(0, rows.size, BLOCK_ROWS):
         yield rows[start:start + BLOCK_ROWS]
+
+
+def believable(water: Water) -> NDArray[np.bool_]:
+    """Rows that are solved and whose CO2 could stay in water at the surface."""
+    with np.errstate(invalid="ignore"):
+        return (water.status >= SOLVED) & (water.pco2_atm <= MOST_PCO2_ATM)
 
 
 def water_of(values: Values, pair: str, ph_column: str, acids: tuple[Acid, ...], options: Options) -> Water:

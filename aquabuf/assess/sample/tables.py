@@ -16,10 +16,11 @@ from aquabuf.assess.sample.columns import AS_GIVEN, result_columns
 from aquabuf.assess.sample.draws import Intervals
 from aquabuf.assess.sample.inputs import alkalinity_source, ionic_strength
 from aquabuf.assess.sample.solve import PAIRS, PH_AIR
+from aquabuf.engine.conditions import FRESH_BELOW, LIMITS
 
 __all__ = ["results_table", "verdict_table"]
 
-OUTSIDE_RANGE = "temperature, salinity, ionic strength or pressure is outside the range of a constant"
+OUTSIDE_RANGE = "air pressure is outside the range of the constants"
 CARBON_FROM_AIR = ("pH and alkalinity of this acid water cannot tell its carbon (carbonate within uncertainty and "
                    "organic charge of zero); pH was kept and carbon set by air")
 
@@ -51,10 +52,24 @@ def _words(kept: pd.DataFrame, figures: Mapping[str, NDArray], values: Mapping[s
         warnings[hit] = np.where(warnings[hit] == "", name, warnings[hit] + "; " + name)
     return {name: kept[name].to_numpy() for name in AS_GIVEN if name in kept} | {
         "status": worded(n, (flagged, "outside range"), (from_air, "carbon from air"), default="ok"),
-        "status_reason": worded(n, (flagged, OUTSIDE_RANGE), (from_air, CARBON_FROM_AIR)),
+        "status_reason": worded(n, (flagged, OUTSIDE_RANGE), *_beyond(figures), (from_air, CARBON_FROM_AIR)),
         "ionic_strength_from": ionic_strength(values)[1], "alkalinity_from": alkalinity_source(values),
         "warnings": warnings,
     }
+
+
+def _beyond(figures: Mapping[str, NDArray]) -> list[tuple[NDArray[np.bool_], str]]:
+    """Which quantity of a sample is outside the range of the constants, in words."""
+    cases = []
+    for key, (column, unit) in {"t_c": ("temperature_c", " °C"), "salinity": ("salinity", ""),
+                                "ionic_strength_mol_l": ("ionic_strength_mol_l", " mol/L of fresh water")}.items():
+        low, high = LIMITS[key][:2]
+        value = figures[column].astype(float)
+        outside = (value < low) | (value > high)
+        if key == "ionic_strength_mol_l":
+            outside &= figures["salinity"].astype(float) < FRESH_BELOW
+        cases.append((outside, f"{column} is outside {low:g} to {high:g}{unit}, the range of the constants"))
+    return cases
 
 
 def verdict_table(kept: pd.DataFrame, limits: tuple[Limit, ...], broken: Mapping[str, NDArray],
