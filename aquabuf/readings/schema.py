@@ -16,7 +16,6 @@ from aquabuf.units import CONCENTRATIONS, Unit, accepted_units, key, parse_unit,
 __all__ = [
     "Quantity",
     "acid_quantity",
-    "columns_table",
     "example_header",
     "find_quantity",
     "name_index",
@@ -242,30 +241,3 @@ def example_header(quantity: Quantity) -> str:
         return quantity.name
     stated = "" if common.basis in ("", quantity.bare_basis) else f"_{key(common.basis)}"
     return f"{quantity.base}_{common.suffix}{stated}"
-
-
-def columns_table() -> list[dict[str, object]]:
-    """The schema as plain records: one dictionary per quantity, in table order."""
-    return [
-        {
-            "name": q.name,
-            "meaning": q.meaning,
-            "kind": q.kind,
-            "unit": q.house_unit,
-            "uncertainty_column": q.u_name if q.is_number else "",
-            "accepted_units": unit_labels(q, rare=True),
-            "example_header": example_header(q),
-            "unit_needed": q.is_number and not q.has_default_unit,
-            "other_headers": [name for name, _ in q.aliases],
-            "choices": list(dict.fromkeys(word for _, word in q.choices)),
-            "low": q.low if q.is_number else None,
-            "high": q.high if q.is_number else None,
-            "usual_low": q.soft_low if q.is_number else None,
-            "usual_high": q.soft_high if q.is_number else None,
-            "default_u": q.default_u if q.is_number else None,
-            "default_u_rel": q.default_u_rel if q.is_number else None,
-            "u_source": q.u_source,
-            "needed_by": q.needed_by,
-        }
-        for q in quantities().values()
-    ]
