@@ -10,16 +10,15 @@ __all__ = ["template"]
 
 
 @click.command()
-@click.argument("kind")
-def template(kind: str) -> None:
+@click.argument("kind", required=False)
+def template(kind: str | None) -> None:
     """Print a starter file: a table of readings for a KIND of water, a map file, or a limits file.
 
-    \b
-    Tables: stream, lake, plant, estuary.   Settings: map, limits.
+    Without a KIND, list the kinds there are.
     """
-    from aquabuf.report.starters import starter
+    from aquabuf.report.starters import starter, starter_kinds
 
     try:
-        click.echo(starter(kind), nl=False)
+        click.echo("\n".join(starter_kinds()) + "\n" if kind is None else starter(kind), nl=False)
     except InputError as error:
         raise click.UsageError(str(error)) from None

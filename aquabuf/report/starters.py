@@ -8,7 +8,7 @@ from aquabuf.assess.limits import shipped_limits
 from aquabuf.errors import InputError
 from aquabuf.readings.template import template, template_kinds
 
-__all__ = ["starter"]
+__all__ = ["starter", "starter_kinds"]
 
 LIMITS_KIND = "limits"
 
@@ -17,10 +17,14 @@ def starter(kind: str) -> str:
     """Text of a starter file. Raises InputError for an unknown kind, naming those there are."""
     if kind == LIMITS_KIND:
         return _limits_text()
-    if kind not in template_kinds():
-        kinds = ", ".join([*template_kinds(), LIMITS_KIND])
-        raise InputError(f"no starter file is named {kind!r}. Use one of: {kinds}.")
+    if kind not in starter_kinds():
+        raise InputError(f"no starter file is named {kind!r}. Use one of: {', '.join(starter_kinds())}.")
     return template(kind)
+
+
+def starter_kinds() -> list[str]:
+    """Kinds of starter file: tables of readings, then the two settings files."""
+    return [*template_kinds(), LIMITS_KIND]
 
 
 def _limits_text() -> str:

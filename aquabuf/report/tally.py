@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections import Counter
 from dataclasses import dataclass, field
+from functools import reduce
 
 import numpy as np
 import pandas as pd
@@ -52,8 +53,8 @@ class Tally:
     flags: Counter = field(default_factory=Counter)
     rounding: dict[str, Rounding] = field(default_factory=dict)
     duplicates: int = 0
-    worst: pd.DataFrame = field(default_factory=pd.DataFrame)
-    worst_inputs: Inputs | None = None
+    _candidates: list[tuple[pd.DataFrame, Inputs]] = field(default_factory=list)
+    _ranks: np.ndarray = field(default_factory=lambda: np.empty(0))
     drawn: list[np.ndarray] = field(default_factory=list)
 
     def add(self, part: Assessment) -> None:
@@ -83,18 +84,30 @@ class Tally:
         self.drawn.append(np.stack([*columns, warned.astype(np.float32)]))
 
     def _keep_worst(self, part: Assessment) -> None:
+        """Keep the samples that may be among the worst; they are put together when someone asks."""
         rank = part.results[RANK_BY].to_numpy()
         best = worst(rank, WORST_KEPT)
-        if self.worst_inputs is None:
-            self.worst, self.worst_inputs = part.results.iloc[best], part.inputs.take(best)
-            return
-        if len(self.worst) == WORST_KEPT:  # only what is worse than the best of those kept can enter
-            best = best[rank[best] < self.worst[RANK_BY].max()]
+        if len(self._ranks) >= WORST_KEPT:  # only what is worse than the last of the worst so far can enter
+            best = best[rank[best] < np.sort(self._ranks)[WORST_KEPT - 1]]
         if best.size:
-            rows = pd.concat([self.worst, part.results.iloc[best]])
+            self._ranks = np.concatenate([self._ranks, rank[best]])
+            self._candidates.append((part.results.iloc[best].reset_index(drop=True), part.inputs.take(best)))
+
+    def _worst(self) -> tuple[pd.DataFrame, Inputs | None]:
+        if not self._candidates:
+            return pd.DataFrame(), None
+        if len(self._candidates) > 1:
+            rows = pd.concat([rows for rows, _ in self._candidates])
+            inputs = reduce(Inputs.joined, (inputs for _, inputs in self._candidates))
             keep = worst(rows[RANK_BY].to_numpy(), WORST_KEPT)
-            self.worst = rows.iloc[keep]
-            self.worst_inputs = self.worst_inputs.joined(part.inputs.take(best)).take(keep)
+            self._candidates = [(rows.iloc[keep].reset_index(drop=True), inputs.take(keep))]
+            self._ranks = self._ranks[np.argsort(self._ranks, kind="stable")[:WORST_KEPT]]
+        return self._candidates[0]
+
+    @property
+    def worst(self) -> pd.DataFrame:
+        """Result rows of the worst-buffered samples, worst first."""
+        return self._worst()[0]
 
     def file_checks(self) -> pd.DataFrame:
         """Checks of the table as a whole."""
@@ -102,4 +115,5 @@ class Tally:
 
     def curves(self, options: Options) -> pd.DataFrame:
         """Curves of the worst-buffered samples, worst first."""
-        return pd.DataFrame() if self.worst_inputs is None else curve_rows(self.worst_inputs, options)
+        inputs = self._worst()[1]
+        return pd.DataFrame() if inputs is None else curve_rows(inputs, options)

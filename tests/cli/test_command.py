@@ -171,3 +171,10 @@ def test_a_defect_is_told_without_a_traceback(call, table, monkeypatch):
     assert "(ZeroDivisionError: boom)" in done.stderr
     assert "AQUABUF_TRACEBACK=1" in done.stderr
     assert not Path("o").exists()
+
+
+def test_template_without_a_kind_lists_the_kinds(call):
+    """Each of the kinds listed gives a file."""
+    kinds = call("template").stdout.split()
+    assert {"stream", "lake", "plant", "estuary", "map", "limits"} <= set(kinds)
+    assert all(call("template", kind).exit_code == 0 for kind in kinds)

@@ -9,6 +9,7 @@ from aquabuf.arrays import exp10, worded
 from aquabuf.assess.options import ALWAYS_ACID, Options
 from aquabuf.chem.gases import pco2_of_air
 from aquabuf.engine import buffer, precipitate
+from aquabuf.engine.balance import fractions, protons_lost
 from aquabuf.engine.conditions import FRESH_BELOW
 from aquabuf.engine.water import Water
 from aquabuf.units import convert, substances
@@ -46,7 +47,7 @@ def headline(water: Water, options: Options) -> dict[str, Array]:
         "ph_total": np.where(water.salinity >= FRESH_BELOW, water.ph_total, np.nan),
         **_alkalinity(water.alkalinity_eq_l),
         "dic_mmol_l": water.dic_mol_l * 1e3,
-        "co2_mmol_l": s.co2 * 1e3,
+        "co2_mmol_l": pco2 * s.conditions.k0 * 1e3,
         "pco2_uatm": pco2 * 1e6,
         "pco2_air_ratio": pco2 / air,
         "ph_at_air": at_air.ph,
@@ -118,12 +119,15 @@ def words_and_details(water: Water, si_calcite: Array, ccpp_mg_l: Array) -> dict
 
 def _charges(water: Water) -> dict[str, Array]:
     """Charge of the weak acids beside carbonate, and of the water itself. [meq/L]"""
-    s, species = water.state, water.species_mol_l
-    weak = np.stack([np.zeros(water.shape)] + [water.charge_eq_l(d.acid.name) * 1e3 for d in s.acids])
-    return {"weak_cations_meq_l": np.maximum(weak, 0.0).sum(axis=0),
-            "weak_anions_meq_l": np.maximum(-weak, 0.0).sum(axis=0),
-            "hydrogen_meq_l": species["H+"] * 1e3,
-            "hydroxide_meq_l": species["OH-"] * 1e3}
+    s, c = water.state, water.state.conditions
+    plus, minus = np.zeros(s.h.shape), np.zeros(s.h.shape)
+    for dissolved, family in zip(s.acids, s.families, strict=True):
+        lost = protons_lost(fractions(family.k, 1.0 / s.h))
+        charge = dissolved.total * (dissolved.acid.charge_full - lost)
+        plus += np.maximum(charge, 0.0)
+        minus -= np.minimum(charge, 0.0)
+    return {"weak_cations_meq_l": plus * 1e3, "weak_anions_meq_l": minus * 1e3,
+            "hydrogen_meq_l": c.c_h * s.h * 1e3, "hydroxide_meq_l": c.c_oh / s.h * 1e3}
 
 
 def _pairs_in_range(s) -> NDArray[np.str_]:
