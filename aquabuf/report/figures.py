@@ -51,13 +51,18 @@ def _alkalinity_scale(ax: Axes, low: float, high: float) -> None:
     """Plain axis for waters alike, else one that is linear near zero and logarithmic beyond."""
     if low * high > 0.0 and max(low / high, high / low) < WIDE:
         return
+    _wide_axis(ax, low, high)
+    if low <= 0.0 <= high:
+        ax.axvline(0.0, color=FAINT, lw=0.8, zorder=0)
+
+
+def _wide_axis(ax: Axes, low: float, high: float) -> None:
+    """Horizontal axis [meq/L] that is linear near zero and logarithmic beyond, with plain numbers."""
     ax.set_xscale("symlog", linthresh=LINEAR_BELOW, linscale=0.7)
     ticks = [t for t in (-10, -1, -0.1, 0, 0.1, 1, 10, 100)
              if min(2.0 * low, 0.0) - LINEAR_BELOW <= t <= max(3.0 * high, high / 3.0) + LINEAR_BELOW]
     ax.set_xticks(ticks, [f"{t:g}" for t in ticks])
     ax.minorticks_off()
-    if low <= 0.0 <= high:
-        ax.axvline(0.0, color=FAINT, lw=0.8, zorder=0)
 
 
 def plot_alkalinity(ph: NDArray, alkalinity_meq_l: NDArray, warned: NDArray[np.bool_], *, ax: Axes) -> Axes:
@@ -103,7 +108,11 @@ def plot_worst(worst: pd.DataFrame, *, ax: Axes) -> Axes:
     ax.axvline(0.0, color="#666666", lw=0.8)
     ax.set_yticks(place, [_name(name) for name in table["sample_id"]], parse_math=False)
     ax.tick_params(axis="y", length=0)
-    ax.xaxis.set_major_locator(MaxNLocator(6))
+    size = np.abs(value)
+    if size.max() > WIDE * max(float(np.median(size)), LINEAR_BELOW):
+        _wide_axis(ax, min(float(value.min()), 0.0), max(float(value.max()), 0.0))
+    else:
+        ax.xaxis.set_major_locator(MaxNLocator(6))
     line = f" (line: {COVERAGE:.0%} interval)" if f"{RANK_BY}_low" in table else ""
     below = "; negative: below it already" if (value < 0.0).any() else ""
     ax.set(xlabel=f"Strong acid to pH {ALWAYS_ACID:g}, closed [meq/L]{below}", title=f"Worst buffered first{line}")
@@ -112,14 +121,14 @@ def plot_worst(worst: pd.DataFrame, *, ax: Axes) -> Axes:
 
 def plot_curves(curves: pd.DataFrame, worst: pd.DataFrame, *, ax: Axes) -> Axes:
     """pH of the worst-buffered samples against strong acid (right) or base (left) added, closed."""
-    reach = 0.0
+    reaches = [0.1]
     for color, (_, sample) in zip(CURVE_COLORS, worst.head(CURVES).iterrows(), strict=False):
         curve = curves[curves["row"] == sample["row"]]
         added = curve["acid_added_meq_l"].to_numpy()
         ax.plot(added, curve["ph"], color=color, lw=1.5, label=_name(sample["sample_id"]))
         ax.plot(0.0, sample["ph"], "o", color=color, ms=4)
-        reach = max(reach, 1.5 * abs(sample[RANK_BY]), 1.2 * abs(sample["alkalinity_meq_l"]))
-    reach = min(max(0.1, reach), 5.0)
+        reaches.append(max(1.5 * abs(sample[RANK_BY]), 1.2 * abs(sample["alkalinity_meq_l"])))
+    reach = min(max(reaches), WIDE * float(np.median(reaches)), 5.0)  # one odd sample must not hide the others
     ax.axhline(ALWAYS_ACID, color=FAINT, lw=0.8, zorder=0)
     ax.axvline(0.0, color=FAINT, lw=0.8, zorder=0)
     ax.set(xlim=(-reach, reach), ylim=(3.5, 11.0), xlabel="Strong acid added [meq/L]  (left of 0: base)", ylabel="pH",

@@ -41,10 +41,11 @@ def refusals(frame: pd.DataFrame, values: Values, bad: NDArray[np.bool_], acids:
             reasons[i] = (("temperature_c",), "missing", "every sample needs a water temperature",
                           "give temperature_c, or a value for rows without one under [fill] of a map file")
         elif len(members) < 2 and not (members == ["alkalinity"] and options.exchange == "open"):
+            remedy = "give alkalinity, which air completes" if options.exchange == "open" else "give a second one"
             other = ", or run with --exchange open" if members == ["alkalinity"] else ""
             reasons[i] = (("ph", "alkalinity", "dic", "pco2"), f"only {members[0]}" if members else "none",
                           "two of pH, alkalinity, carbon and CO2 pressure make a known pair",
-                          f"give a second one{other}")
+                          f"{remedy}{other}")
     remaining = np.array([i for i in rows.tolist() if i not in reasons], dtype=np.intp)
     if remaining.size:
         only = np.full(bad.size, NO_PAIR, dtype=np.int8)
