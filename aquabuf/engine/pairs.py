@@ -14,21 +14,16 @@ from aquabuf.engine.solve import PH_HIGHEST, PH_LOWEST, solve_h
 from aquabuf.engine.state import Dissolved, State, families_of, per_h
 from aquabuf.engine.status import IMPOSSIBLE, NOT_FINITE, SOLVED
 
-__all__ = ["KNOWN_PAIRS", "solve_pair"]
+__all__ = ["solve_pair"]
 
 Array = NDArray[np.float64]
-
-KNOWN_PAIRS = (
-    ("ph", "alkalinity"), ("ph", "dic"), ("alkalinity", "dic"),
-    ("alkalinity", "pco2"), ("ph", "pco2"), ("dic", "pco2"),
-)
 
 
 def solve_pair(
     known: Mapping[str, Array], c: Conditions, acids: tuple[Dissolved, ...], ions: dict[str, Array],
     *, ph_scale: str = "meter",
 ) -> State:
-    """State of each row from one of KNOWN_PAIRS (ph on `ph_scale`; alkalinity eq/L; dic mol/L; pco2 atm)."""
+    """State of each row from any two of ph (on `ph_scale`), alkalinity [eq/L], dic [mol/L] and pco2 [atm]."""
     with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
         h, dic, alk, residual, status = _solve(tuple(known), known, c, acids, ions, ph_scale)
     status = np.where(c.status < SOLVED, c.status, np.where(status < SOLVED, status, c.status)).astype(np.int8)

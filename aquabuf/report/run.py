@@ -63,7 +63,7 @@ def assess_file(path: Path, folder: Path, options: Options, *, mapping: Path | N
                 writer.write(part)
                 tally.add(part)
             writer.add("checks.csv", tally.file_checks())
-        if tally.refused_rows == set():
+        if not tally.refused_rows:
             writer.drop("rejected.csv")
         if tally.assessed:
             curves = tally.curves(options)

@@ -39,7 +39,7 @@ def lake_checks(strength=0.0, measured=23.7):
     weak = {"weak_cations_meq_l": one(LAKE["ammonium"] * 1e-3),  # all ammonium, sulfate and fluoride charged, as EPA did
             "weak_anions_meq_l": one((LAKE["sulfate"] + LAKE["fluoride"]) * 1e-3)}
     figures |= weak | {"hydrogen_meq_l": one(LAKE_H * 1e-3), "hydroxide_meq_l": one(0.0)}
-    found = sample_checks(values, {}, figures, np.array(["pH and carbon"]), one(np.nan), one(np.nan))
+    found = sample_checks(values, figures, np.array(["pH and carbon"]), one(np.nan), one(np.nan))
     return {c.name: c for c in found}
 
 
@@ -83,7 +83,7 @@ def salt(cations, anions):
                "pco2_uatm": one(400.0), "draws_solved": one(np.nan), RANK_BY: one(0.1)} | NO_OTHER_IONS
     figures |= {"hydrogen_meq_l": one(1e-4), "hydroxide_meq_l": one(1e-4)}  # of pH 7
     values["temperature_c"] = one(10.0)
-    return {c.name: c for c in sample_checks(values, {}, figures, np.array([""]), one(np.nan), one(np.nan))}["ion balance"]
+    return {c.name: c for c in sample_checks(values, figures, np.array([""]), one(np.nan), one(np.nan))}["ion balance"]
 
 
 @pytest.mark.parametrize(("total", "allowed"), [(49.0, 60.0), (51.0, 30.0), (99.9, 30.0), (101.0, 15.0)])
@@ -171,7 +171,7 @@ def organic(doc, ph, carbonate_meq_l, acid_to_six_meq_l=0.1, aluminum=0.0, pair=
     values = {"doc_mg_l": one(doc), "temperature_c": one(10.0), "aluminum_mol_l": one(aluminum)}
     figures = {"ph": one(ph), "bicarbonate_mmol_l": one(carbonate_meq_l), "carbonate_mmol_l": one(0.0), "pco2_uatm": one(400.0),
                "ionic_strength_mol_l": one(0.0), "draws_solved": one(np.nan), RANK_BY: one(acid_to_six_meq_l)} | NO_OTHER_IONS
-    found = sample_checks(values, {}, figures, np.array([pair]), one(np.nan), one(np.nan))
+    found = sample_checks(values, figures, np.array([pair]), one(np.nan), one(np.nan))
     return {c.name: c for c in reversed(found)}
 
 
@@ -227,7 +227,7 @@ def test_carbon_dioxide_limits():
                "carbonate_mmol_l": np.zeros(4), "ionic_strength_mol_l": np.zeros(4), "draws_solved": np.array([0.9, 0.89, 1.0, 0.0]), RANK_BY: np.ones(4)}
     figures |= {name: np.zeros(4) for name in NO_OTHER_IONS}
     nan = np.full(4, np.nan)
-    checks = {c.name: c for c in sample_checks({"temperature_c": np.full(4, 10.0)}, {}, figures, np.full(4, ""), nan, nan)}
+    checks = {c.name: c for c in sample_checks({"temperature_c": np.full(4, 10.0)}, figures, np.full(4, ""), nan, nan)}
     assert checks["CO2 pressure"].met.tolist() == [False, True, True, False]
     assert checks["draws"].met.tolist() == [True, False, True, False]
 

@@ -86,7 +86,7 @@ def assess(readings: Readings, options: Options, limits: tuple[Limit, ...], *, o
     kind = kept["water_kind"].to_numpy(dtype=object) if "water_kind" in kept else np.full(keep.size, "", dtype=object)
     broken = verdicts(limits, figures, kind, figures["regime"].astype(object))
     pair = np.array(PAIRS, dtype=object)[choice]
-    checks = sample_checks(values, u, figures, pair, gap.carbonate, gap.carbonate_u)
+    checks = sample_checks(values, figures, pair, gap.carbonate, gap.carbonate_u)
     figures |= {"pair": pair, "failed_checks": failed(checks, keep.size), "below_detection": _halved(readings, kept)}
     table = results_table(kept, figures, values, choice, spread, broken, options)
     return Assessment(

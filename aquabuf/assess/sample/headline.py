@@ -11,6 +11,7 @@ from aquabuf.chem.gases import pco2_of_air
 from aquabuf.engine import buffer, precipitate
 from aquabuf.engine.balance import fractions, protons_lost
 from aquabuf.engine.conditions import FRESH_BELOW
+from aquabuf.engine.state import State
 from aquabuf.engine.water import Water
 from aquabuf.units import convert, substances
 
@@ -130,7 +131,7 @@ def _charges(water: Water) -> dict[str, Array]:
             "hydrogen_meq_l": c.c_h * s.h * 1e3, "hydroxide_meq_l": c.c_oh / s.h * 1e3}
 
 
-def _pairs_in_range(s) -> NDArray[np.str_]:
+def _pairs_in_range(s: State) -> NDArray[np.object_]:
     """Labels of the pairs present whose effective range holds the pH, joined by semicolons."""
     out = np.full(s.h.shape, "", dtype=object)
     for share in buffer.pair_shares(s):

@@ -69,7 +69,7 @@ def _fixed(name: str, value: Array, detail: NDArray | None = None) -> Check:
     return Check(name, value, float(fact["low"] or "-inf"), float(fact["high"] or "inf"), detail)
 
 
-def sample_checks(values: Values, u: Values, figures: Mapping[str, NDArray], pair: NDArray, carbonate_gap: Array,
+def sample_checks(values: Values, figures: Mapping[str, NDArray], pair: NDArray, carbonate_gap: Array,
                   carbonate_gap_u: Array) -> list[Check]:
     """All checks of the solved samples.
 
@@ -85,7 +85,7 @@ def sample_checks(values: Values, u: Values, figures: Mapping[str, NDArray], pai
     total = (cations + anions) * 1e6
     some = complete & (total > 0.0)
     imbalance = 100.0 * (anions - cations) / np.where(some, anions + cations, np.nan)
-    allowed = np.where(total < 50.0, 60.0, np.where(total <= 100.0, 30.0, 15.0))
+    most = np.where(total < 50.0, 60.0, np.where(total <= 100.0, 30.0, 15.0))
     measured = get("conductivity_us_cm")
     computed = np.where(complete, _conductivity(values, figures), np.nan)
     spread = np.where(measured < 5.0, 50.0, np.where(measured <= 30.0, 30.0, 20.0))
@@ -94,10 +94,10 @@ def sample_checks(values: Values, u: Values, figures: Mapping[str, NDArray], pai
     outside, names = _outside_usual(values, rows)
     conductivity_off = _percent_off(computed, measured, 0.01)
     return [
-        Check("ion balance", imbalance, -allowed, allowed),
+        Check("ion balance", imbalance, -most, most),
         Check("conductivity", conductivity_off, -spread, spread),
         Check("pH against alkalinity", carbonate_gap * 1e3, -2e3 * carbonate_gap_u, np.inf),
-        _over_determined(values, u, figures, rows),
+        _over_determined(figures, rows),
         *_brown(values, figures, pair),
         _fixed("CO2 pressure", figures["pco2_uatm"]),
         _fixed("temperature", get("temperature_c")),
@@ -156,7 +156,7 @@ def _conductivity(values: Values, figures: Mapping[str, NDArray]) -> Array:
     return total * exp10(2.0 * log_gamma_davies(1, figures["ionic_strength_mol_l"], SM_2510_A))
 
 
-def _over_determined(values: Values, u: Values, figures: Mapping[str, NDArray], rows: int) -> Check:
+def _over_determined(figures: Mapping[str, NDArray], rows: int) -> Check:
     """Titrated alkalinity against the one that pH and carbon give, where all three were measured."""
     missing = np.full(rows, np.nan)
     gap, gap_u = figures.get("closure_meq_l", missing), figures.get("closure_u_meq_l", missing)

@@ -27,7 +27,7 @@ CARBON_FROM_AIR = ("pH and alkalinity of this acid water cannot tell its carbon 
 
 def results_table(kept: pd.DataFrame, figures: Mapping[str, NDArray], values: Mapping[str, NDArray],
                   choice: NDArray, spread: Intervals, broken: Mapping[str, NDArray], options: Options) -> pd.DataFrame:
-    """One row per sample, all columns of results.csv in their order; site, region and kind only if they were given."""
+    """One row per sample, all columns of results.csv in their order; those only repeated where they were given."""
     n = len(kept)
     columns = dict(figures) | _words(kept, figures, values, choice, broken)
     ordered = {}
