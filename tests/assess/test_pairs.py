@@ -182,6 +182,8 @@ REFUSED = [
      "alkalinity_eq_l = 1.5e+07 µeq/L; dic_mol_l = 1000 µmol/L", "no water has these values", "check both readings and their units"),
     ("thick brine without salinity", T | {"ph": 7.0, "alkalinity_eq_l": 1e-3, "ionic_strength_mol_l": 2.0}, "ionic_strength_mol_l",
      "ionic strength 2 mol/L from given", "ionic strength of fresh water must be at most 0.5 mol/L", "give salinity if this is salt water"),
+    ("alkalinity of a brine", {"temperature_c": 10.0, "ph": 12.0, "alkalinity_eq_l": 0.9}, "alkalinity_eq_l",
+     "ionic strength 0.9 mol/L from alkalinity", "ionic strength of fresh water must be at most 0.5 mol/L", "give salinity"),
     ("Lueker in brackish water", T | {"salinity": 5.0, "ph_total": 8.0, "alkalinity_eq_l": 2e-3}, "salinity, temperature_c", "5; 25 °C",
      "the lueker constants reach salinity 19 to 43 at 2 to 35 °C", "use --marine-constants millero"),
     ("thin air", T | {"ph": 7.0, "alkalinity_eq_l": 1e-3, "air_pressure_atm": 0.1}, "air_pressure_atm", "0.1",

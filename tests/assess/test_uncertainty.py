@@ -168,3 +168,15 @@ def test_intervals_hold_the_truth_as_often_as_they_say():
              "acid_to_ph_6_0_meq_l": 1e3 * truth.acid_to_ph_eq_l(6.0)}
     held = {name: np.mean((table[f"{name}_low"] <= v) & (v <= table[f"{name}_high"])) for name, v in exact.items()}
     assert all(0.85 <= part <= 0.95 for part in held.values()), held
+
+
+def test_draws_that_no_water_can_have_stay_out():
+    """At pH 5, 3 mmol/L of alkalinity ask for some 1.7 atm of CO2: many draws pass the 2 atm at which readings are
+    refused. They count as not solved, enter no interval, and leave the interval of the reading itself whole."""
+    row = results({"sample_id": "w", "temperature_c": 10.0, "ph": 5.0, "ph_u": 0.1, "alkalinity_eq_l": 3e-3,
+                   "alkalinity_u_eq_l": 1e-4}, draws=2000).loc["w"]
+    assert 1.4e6 < row["pco2_uatm"] < 2e6
+    assert row["pco2_uatm"] < row["pco2_uatm_high"] <= 2e6
+    assert 0.5 < row["draws_solved"] < 0.95
+    z = norm.ppf(0.95)
+    assert_allclose([row["alkalinity_meq_l_low"], row["alkalinity_meq_l_high"]], [3.0 - 0.1 * z, 3.0 + 0.1 * z], rtol=0, atol=0.02)

@@ -17,7 +17,6 @@ from aquabuf.chem.acids import Acid
 
 __all__ = ["Intervals", "intervals"]
 
-
 OF_CARBON = ("dic_mmol_l", "co2_mmol_l", "pco2_uatm", "pco2_air_ratio", "ph_at_air", "si_calcite", "ccpp_mg_l")
 
 
@@ -45,10 +44,10 @@ def intervals(values: Values, u: Values, choice: NDArray[np.int8], acids: tuple[
             water = water_of(many, pair, ph_column, acids, options)
             if options.exchange == "open" and pair != ALKALINITY_AIR:
                 water = water.at_air(options.air_co2_ppm)
-            figures = headline(water, options)
-            figures |= alkalinity_as_read(alkalinity_reading(many), figures)
-            solved = believable(water).reshape(block.size, options.draws)
-            out.solved[block] = solved.mean(axis=1)
+            solved = believable(water)
+            out.solved[block] = solved.reshape(block.size, options.draws).mean(axis=1)
+            figures = {name: np.where(solved, v, np.nan) for name, v in headline(water, options).items()}
+            figures |= alkalinity_as_read(alkalinity_reading(many), figures)  # a reading stands, solved or not
             for name, v in figures.items():
                 if pair == PH_AIR and name in OF_CARBON:
                     continue  # its carbon is an assumption, and an assumption has no interval

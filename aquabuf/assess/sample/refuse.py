@@ -9,7 +9,7 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from aquabuf.assess.options import Options
-from aquabuf.assess.sample.inputs import Values, ionic_strength, reading
+from aquabuf.assess.sample.inputs import Values, alkalinity_reading, ionic_strength, reading
 from aquabuf.assess.sample.solve import MOST_PCO2_ATM, NO_PAIR, choose, groups, has, take_rows, water_of
 from aquabuf.chem.acids import Acid
 from aquabuf.engine.conditions import CARBONIC_SETS, FRESH_BELOW, LIMITS
@@ -77,8 +77,11 @@ def _out_of_range(values: Values, i: int, options: Options) -> Reason:
         return (("salinity", "temperature_c"), f"{s:g}; {t:g} °C",
                 f"the {name} constants reach salinity {s_low:g} to {s_high:g} at {t_low:g} to {t_high:g} °C",
                 "use --marine-constants millero")
-    strength = ionic_strength({name: v[i:i + 1] for name, v in values.items()})
-    return ((STRENGTH_COLUMNS[strength[1][0]],), f"ionic strength {strength[0][0]:.3g} mol/L from {strength[1][0]}",
+    one = {name: v[i:i + 1] for name, v in values.items()}
+    strength, source = (v[0] for v in ionic_strength(one))
+    if np.isnan(strength):  # not estimated: the least that the alkalinity implies
+        strength = abs(alkalinity_reading(one)[0])
+    return ((STRENGTH_COLUMNS[source],), f"ionic strength {strength:.3g} mol/L from {source}",
             f"ionic strength of fresh water must be at most {LIMITS['ionic_strength_mol_l'][3]:g} mol/L",
             "give salinity if this is salt water; correct the ions or the conductivity otherwise")
 
