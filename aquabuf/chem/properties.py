@@ -7,12 +7,13 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 __all__ = [
-    "GAS_CONSTANT", "T_ZERO_K", "air_pressure", "dielectric_constant",
+    "FARADAY", "GAS_CONSTANT", "T_ZERO_K", "air_pressure", "dielectric_constant",
     "seawater_density", "vapor_pressure", "water_density",
 ]
 
 T_ZERO_K = 273.15          # ice point in kelvin, exact (SI)
 GAS_CONSTANT = 8.314462618  # J/(mol K), exact (SI 2019)
+FARADAY = 96485.33212       # C/mol, exact (SI 2019)
 
 
 def kelvin(t_c: ArrayLike) -> NDArray[np.float64]:

@@ -16,12 +16,13 @@ from aquabuf.engine.pairs import solve_pair
 from aquabuf.engine.state import PH_SCALES, Dissolved, State
 from aquabuf.errors import InputError
 
-__all__ = ["BORON_OF_SEAWATER", "IONS", "SUFFIX", "build_state", "checked"]
+__all__ = ["BORON_OF_SEAWATER", "IONS", "SEA_SALTS", "SUFFIX", "build_state", "checked", "of_sea_salt"]
 
 Array = NDArray[np.float64]
 
 IONS = ("calcium", "magnesium", "sodium", "potassium")  # that pair with carbonate and sulfate
 BORON_OF_SEAWATER = {"uppstrom": seasalt.boron_uppstrom, "lee": seasalt.boron_lee}
+SEA_SALTS = ("boron", "sulfate", "fluoride", "calcium")
 SUFFIX = "_mol_l"
 
 
@@ -63,7 +64,7 @@ def build_state(
     s, t, p = flat(salinity), flat(t_c), flat(pressure_atm)
     sea = s >= FRESH_BELOW
     if sea.any():
-        acid_totals = {n: acid_totals.get(n, np.nan) for n in ("boron", "sulfate", "fluoride")} | acid_totals
+        acid_totals = {n: acid_totals.get(n, np.nan) for n in SEA_SALTS if n not in IONS} | acid_totals
         ion_totals = {"calcium": np.nan} | ion_totals
     sulfate, fluoride = (flat(acid_totals.get(n, np.nan)) for n in ("sulfate", "fluoride"))
 
@@ -95,14 +96,19 @@ def _sorted_totals(totals: dict[str, ArrayLike], own: tuple[Acid, ...]) -> tuple
     return acid_totals, ion_totals
 
 
-def _with_sea(name: str, given: Array, c: Conditions, boron_ratio: str) -> Array:
-    """A total with its gaps filled from salinity in marine rows, if sea salt brings it; boron is 0 in fresh."""
+def of_sea_salt(name: str, salinity: Array, boron_ratio: str = "uppstrom") -> Array:
+    """Total of boron, sulfate, fluoride or calcium that sea salt brings. [mol/kg]"""
     of_salt = {"boron": BORON_OF_SEAWATER[boron_ratio], "sulfate": seasalt.sulfate_of_seawater,
                "fluoride": seasalt.fluoride_of_seawater, "calcium": seasalt.calcium_of_seawater}
-    if name not in of_salt:
+    return of_salt[name](salinity)
+
+
+def _with_sea(name: str, given: Array, c: Conditions, boron_ratio: str) -> Array:
+    """A total with its gaps filled from salinity in marine rows, if sea salt brings it; boron is 0 in fresh."""
+    if name not in SEA_SALTS:
         return given
     in_fresh = np.nan if name in IONS else 0.0
-    fill = np.where(c.is_marine, of_salt[name](c.salinity) * c.density_kg_l, in_fresh)
+    fill = np.where(c.is_marine, of_sea_salt(name, c.salinity, boron_ratio) * c.density_kg_l, in_fresh)
     return np.where(np.isnan(given), fill, given)
 
 

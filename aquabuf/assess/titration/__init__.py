@@ -1,0 +1,1 @@
+"""From a titration to the alkalinity or acidity that it stands for, by every recognized method."""

@@ -1,0 +1,243 @@
+"""What went wrong in a titration, or may have: each finding with its value, limit, remedy and source."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+from functools import cache
+
+import numpy as np
+from numpy.typing import NDArray
+
+from aquabuf.arrays import LN10
+from aquabuf.assess.titration.choose import Choice, best_guess
+from aquabuf.assess.titration.convert import fixed_to_proton_balance
+from aquabuf.assess.titration.options import ALWAYS_END_POINT
+from aquabuf.assess.titration.solve import Solved, text_of, value_of
+from aquabuf.tables import read_table
+
+__all__ = ["Finding", "finding_facts", "findings"]
+
+Array = NDArray[np.float64]
+
+LEAST_SLOPE_ERROR = 0.05
+SIGMAS = 2.0
+DISAGREE_SIGMAS = 2.5
+LEAST_TURN = 0.05          # pH
+TURN_SIGMAS = 4.0
+OFF_CURVE = (6.0, 0.08)    # times scatter, pH
+WINDOW_MATTERS = (5e-6, 0.04)  # eq per unit of sample, share of the result
+EXPLAINED = 0.12           # of the logarithm of a slope ratio that the offset of the fit leaves; about a quarter
+MILLIVOLT_DRIFT = 59.0     # mV per pH, to judge drift by one limit
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Finding:
+    """One finding over all titrations: where it holds, its value, the point it is about (-1: none), and more words."""
+
+    name: str
+    here: NDArray[np.bool_]
+    value: Array
+    point: NDArray[np.intp]
+    more: NDArray[np.object_]
+
+
+@cache
+def finding_facts() -> dict[str, dict[str, str]]:
+    """Words, limits, remedy and source of each finding, in table order."""
+    return {row["name"]: row for row in read_table("titration_findings")}
+
+
+@cache
+def _bounds(name: str) -> tuple[float, float]:
+    row = finding_facts()[name]
+    return float(row["low"] or "-inf"), float(row["high"] or "inf")
+
+
+def findings(s: Solved, choice: Choice) -> tuple[Finding, ...]:
+    """All findings in the order of the table."""
+    found = {f.name: f for part in (_strength, _course, _points, _lines, _fits, _electrode, _methods)
+             for f in part(s, choice)}
+    return tuple(found[name] for name in finding_facts() if name in found)
+
+
+def _finding(name: str, here: NDArray, value: Array, *, point: NDArray | None = None, more: NDArray | None = None,
+             ) -> Finding:
+    n = here.size
+    return Finding(name, here.astype(bool), np.broadcast_to(np.asarray(value, dtype=float), (n,)),
+                   np.full(n, -1, dtype=np.intp) if point is None else point,
+                   np.full(n, "", dtype=object) if more is None else more)
+
+
+def _outside(name: str, value: Array, where: NDArray | bool = True) -> Finding:
+    """Finding by the limits of the table."""
+    low, high = _bounds(name)
+    with np.errstate(invalid="ignore"):
+        return _finding(name, ((value < low) | (value > high)) & where, value)
+
+
+def _strength(s: Solved, choice: Choice) -> Iterator[Finding]:
+    """Is the titrant what it is said to be?"""
+    c, ratio = s.curves, s.gran.slope_ratio
+    checked = np.isfinite(ratio) & ~(c.is_potential & (s.calibration.standards == 0))
+    with np.errstate(invalid="ignore", divide="ignore"):
+        limit = np.maximum(SIGMAS * np.hypot(c.relative_u, LN10 * c.u_ph), LEAST_SLOPE_ERROR)
+        off = np.abs(np.log(ratio)) > limit
+    doubtful = _outside("strength doubtful", ratio, checked)
+    yield _finding(doubtful.name, doubtful.here, ratio, more=_what_tells(s, doubtful.here))
+    slope = checked & off & ~doubtful.here
+    yield _finding("Gran slope", slope, ratio, more=_what_tells(s, slope))
+    yield _outside("strength outside usual", c.strength)
+    conductivity = value_of(s.samples, "conductivity_us_cm", c.count.size)
+    with np.errstate(invalid="ignore", divide="ignore"):
+        yield _outside("alkalinity against conductivity", best_guess(s) * 1e6 / conductivity, conductivity > 0.0)
+
+
+def _what_tells(s: Solved, here: NDArray[np.bool_]) -> NDArray[np.object_]:
+    """Whether the bicarbonate part of the curve sides with the electrode or with the strength."""
+    offset, u = s.fit.fit.offset_ph, s.fit.u_offset
+    ratio = s.gran.slope_ratio
+    more = np.full(here.size, "", dtype=object)
+    for i in np.flatnonzero(here & np.isfinite(offset)).tolist():
+        left = float(np.log10(ratio[i]) + offset[i])
+        if abs(left) < EXPLAINED and u[i] < EXPLAINED:
+            more[i] = (f"the bicarbonate part of the curve shows the same electrode offset ({offset[i]:+.2f} pH): it is the "
+                       f"electrode, if no CO2 was lost, and the Gran result stands")
+        elif abs(offset[i]) < EXPLAINED and u[i] < EXPLAINED:
+            more[i] = (f"the bicarbonate part of the curve finds the electrode right: it is the strength, if no CO2 was "
+                       f"lost, and the true result is about {ratio[i]:.2f} times the one given")
+        else:
+            more[i] = (f"the bicarbonate part of the curve (electrode {offset[i]:+.2f} pH) explains it in part only; if the "
+                       f"strength is wrong, the result is wrong by the same factor")
+    return more
+
+
+def _course(s: Solved, choice: Choice) -> Iterator[Finding]:
+    """How the titration was done."""
+    c, n = s.curves, s.curves.count.size
+    yield _finding("temperature missing", np.isnan(value_of(s.samples, "temperature_c", n)), np.nan)
+    yield _outside("few points", c.count.astype(float))
+    with np.errstate(invalid="ignore"):
+        lowest = np.nanmin(np.where(np.isfinite(s.ph), s.ph, np.inf), axis=1, initial=np.inf)
+    yield _outside("stops too soon", lowest, ~c.is_base & np.isfinite(lowest))
+    yield _outside("coarse end point", s.crossings[ALWAYS_END_POINT].step_ph)
+    drift = c.drift / np.where(c.is_potential, MILLIVOLT_DRIFT, 1.0)
+    yield _outside("drift", drift)
+    took = np.nanmax(np.where(np.isfinite(c.minutes), c.minutes, -np.inf), axis=1, initial=-np.inf)
+    yield _outside("slow titration", took, np.isfinite(took) & ~s.purged)
+    at_end = s.crossings[ALWAYS_END_POINT].before
+    thinned = 100.0 * (1.0 - c.dilution[np.arange(n), np.maximum(at_end, 0)])
+    yield _outside("dilution", thinned, at_end >= 0)
+
+
+def _points(s: Solved, choice: Choice) -> Iterator[Finding]:
+    """Readings that go the wrong way."""
+    c = s.curves
+    limit = np.maximum(TURN_SIGMAS * np.sqrt(2.0) * c.u_ph_scatter, LEAST_TURN)[:, None]
+    ph = np.where(c.is_base[:, None], -s.ph, s.ph)
+    rise = np.diff(ph, axis=1)
+    with np.errstate(invalid="ignore"):
+        back = rise > limit
+    if not back.any():
+        return
+    at = np.where(back, rise, -np.inf).argmax(axis=1)
+    here = back.any(axis=1)
+    rows, width = np.arange(len(ph)), ph.shape[1]
+
+    def reading(k: NDArray) -> Array:
+        return np.where((k >= 0) & (k < width), ph[rows, np.clip(k, 0, width - 1)], np.nan)
+
+    with np.errstate(invalid="ignore"):
+        # changing the two over mends the order on both sides
+        mends = ~(reading(at - 1) < reading(at + 1)) & ~(reading(at) < reading(at + 2)) & (back.sum(axis=1) == 1)
+    value = rise[rows, at]
+    yield _finding("points swapped", here & mends, value, point=np.where(here & mends, at, -1))
+    turned = here & ~mends
+    yield _finding("pH turns back", turned, value, point=np.where(turned, at + 1, -1))
+
+
+def _lines(s: Solved, choice: Choice) -> Iterator[Finding]:
+    """The Gran line."""
+    g = s.gran
+    with np.errstate(invalid="ignore"):
+        curved = (g.first >= 0) & ~g.straight
+        span = g.high - g.low
+        matters = span > np.maximum(WINDOW_MATTERS[0], WINDOW_MATTERS[1] * np.abs(g.acid))
+        beyond = g.u_window > SIGMAS * g.u_line
+    yield _finding("curved Gran line", curved, g.reduced_chi2)
+    yield _finding("choice of points matters", g.straight & matters & beyond, span * 1e6)
+
+
+def _fits(s: Solved, choice: Choice) -> Iterator[Finding]:
+    """The fit of the whole curve."""
+    c, f = s.curves, s.fit
+    yield _outside("fit is poor", f.fit.reduced_chi2)
+    residual = np.abs(f.fit.residual_ph)
+    safe = np.where(np.isfinite(residual), residual, 0.0)
+    at, largest = safe.argmax(axis=1), safe.max(axis=1)
+    # near the end point a small error of volume moves pH far: count it as scatter
+    slope = np.abs(np.gradient(np.where(np.isfinite(s.ph), s.ph, 0.0), axis=1))
+    spacing = np.abs(np.gradient(np.where(np.isfinite(c.acid), c.acid, 0.0), axis=1))
+    rows = np.arange(c.count.size)
+    with np.errstate(invalid="ignore", divide="ignore"):
+        by_volume = np.nan_to_num(slope[rows, at] / spacing[rows, at]) * c.u_acid
+        limit = np.maximum(OFF_CURVE[0] * np.hypot(c.u_ph_scatter, by_volume), OFF_CURVE[1])
+    off = largest > limit
+    yield _finding("point off the curve", off, largest, point=np.where(off, at, -1))
+    with np.errstate(invalid="ignore", divide="ignore"):
+        lost = 100.0 * (1.0 - f.fit.carbon / s.carbon_at_start)
+        clear = (s.carbon_at_start - f.fit.carbon) > SIGMAS * f.u_carbon
+    measured = value_of(s.samples, "dic_mol_l", c.count.size) / np.where(c.by_mass, c.density_kg_l, 1.0)
+    yield _outside("carbon dioxide lost", lost, clear & np.isnan(measured) & (s.ph[:, 0] < 8.5))
+    u_measured = value_of(s.samples, "dic_u_mol_l", c.count.size)
+    u_measured = np.where(np.isfinite(u_measured), u_measured, 0.03 * measured)
+    with np.errstate(invalid="ignore", divide="ignore"):
+        gap = f.fit.carbon - measured
+        differs = np.abs(gap) > DISAGREE_SIGMAS * np.hypot(f.u_carbon, u_measured)
+        yield _finding("carbon differs", differs, 100.0 * gap / measured)
+
+
+def _electrode(s: Solved, choice: Choice) -> Iterator[Finding]:
+    """The electrode."""
+    c, k = s.curves, s.calibration
+    with np.errstate(invalid="ignore"):
+        found = np.where(np.isfinite(s.fit.fit.offset_ph), s.fit.fit.offset_ph, s.excess.fit.offset_ph)
+        u = np.where(np.isfinite(s.fit.u_offset), s.fit.u_offset, s.excess.u_offset)
+        clear = np.abs(found) > SIGMAS * u
+    offset = _outside("electrode offset", np.abs(found), clear & ~(c.is_potential & (k.standards == 0)))
+    yield _finding(offset.name, offset.here, found)
+    yield _outside("electrode slope", 100.0 * k.efficiency, c.is_potential & (k.standards > 1))
+    yield _finding("zero from the acid", c.is_potential & (k.standards == 0), k.zero_mv)
+
+
+def _methods(s: Solved, choice: Choice) -> Iterator[Finding]:
+    """Methods against each other, and against the water."""
+    n = s.curves.count.size
+    fixed = s.estimates[f"fixed_{ALWAYS_END_POINT:g}"]
+    balanced = fixed_to_proton_balance(s)
+    able = choice.water != "dilute"
+    candidates = {
+        "Gran line": (s.estimates["gran"].value, s.estimates["gran"].own_u, s.gran.straight),
+        "fit": (s.estimates["fit"].value, s.estimates["fit"].own_u, True),
+        "inflection": (s.estimates["inflection"].value, s.estimates["inflection"].own_u, able),
+        "end point 4.5 (proton balance)": (balanced, fixed.own_u, s.crossings[ALWAYS_END_POINT].step_ph < 0.8),
+        "two end points": (s.estimates["two_point"].value, s.estimates["two_point"].own_u, ~able),
+    }
+    worst, words = np.zeros(n), np.full(n, "", dtype=object)
+    names = list(candidates)
+    for a in range(len(names)):
+        for b in range(a + 1, len(names)):
+            (va, ua, wa), (vb, ub, wb) = candidates[names[a]], candidates[names[b]]
+            with np.errstate(invalid="ignore", divide="ignore"):
+                gap = np.where(wa & wb & np.isfinite(va) & np.isfinite(vb), np.abs(va - vb) / np.hypot(ua, ub), 0.0)
+            for i in np.flatnonzero(gap > worst).tolist():
+                words[i] = f"{names[a]} {va[i] * 1e6:.1f}, {names[b]} {vb[i] * 1e6:.1f} µeq per unit of sample"
+            worst = np.maximum(worst, gap)
+    disagree = _outside("methods disagree", worst)
+    yield _finding(disagree.name, disagree.here, worst, more=np.where(disagree.here, words, ""))
+    reference = best_guess(s)
+    with np.errstate(invalid="ignore"):
+        hidden = (fixed.value > 0.0) & (reference <= 0.0) & np.isfinite(s.gran.acid)
+    yield _finding("end point hides acid", hidden, fixed.value * 1e6)
+    own = text_of(s.samples, "own_method", n)
+    yield _finding("own method unfit", (own != "") & (choice.own_problem != ""), np.nan, more=choice.own_problem)

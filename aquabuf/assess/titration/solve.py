@@ -1,0 +1,260 @@
+"""Every method on every titration of a piece: from arrays of points to estimates of the alkalinity."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from aquabuf.arrays import worded
+from aquabuf.assess.sample.inputs import own_acids
+from aquabuf.assess.titration.calibrate import Calibration, by_standards, zero_potential_of_acid
+from aquabuf.assess.titration.curves import Curves, curves_of
+from aquabuf.assess.titration.endpoints import (
+    TWO_POINT_STEP,
+    Crossing,
+    alkalinity_two_points,
+    crossing,
+    end_point_for,
+    left_at,
+)
+from aquabuf.assess.titration.fits import Fitted, fit_acid_excess, fit_closed
+from aquabuf.assess.titration.gran import BIAS_RMS, Gran, GranLines, gran_lines, windows
+from aquabuf.assess.titration.inflection import Inflection, inflection
+from aquabuf.assess.titration.options import ALWAYS_END_POINT, TitrationOptions
+from aquabuf.chem.acids import Acid, acid_table
+from aquabuf.chem.seasalt import ionic_strength_seawater
+from aquabuf.engine.build import IONS, SEA_SALTS, of_sea_salt
+from aquabuf.engine.conditions import FRESH_BELOW
+from aquabuf.engine.titrate import Points, mixed_ionic_strength, points_at
+from aquabuf.readings.titration.result import Titrations
+from aquabuf.units import convert
+
+__all__ = ["ACIDITY_END_POINTS", "Estimate", "Solved", "solve_titrations", "text_of", "value_of"]
+
+Array = NDArray[np.float64]
+
+ACIDITY_END_POINTS = (3.7, 4.5, 8.3)  # mineral acidity by either old end point, and total acidity by phenolphthalein
+REFERENCE_ACID_PH = 3.5
+LEAST_CARBON = 2e-5       # of an acid water, about what air gives. [mol/L]
+MOST_CARBON = 5.0         # times alkalinity, where the start pH implies more it is a slip
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Estimate:
+    """One method's result per titration: value and standard uncertainty [eq per unit of sample], nan where there is none.
+
+    own_u : the part of the uncertainty that other methods do not share. why_not : reason where there is no value.
+    """
+
+    value: Array
+    u: Array
+    own_u: Array
+    why_not: NDArray[np.object_]
+
+
+@dataclass(frozen=True, slots=True, eq=False, kw_only=True)
+class Solved:
+    """All that was found of a piece; arrays over its usable titrations, amounts per unit of sample."""
+
+    curves: Curves
+    samples: Mapping[str, NDArray]
+    points: Points
+    ph: Array
+    calibration: Calibration
+    purged: NDArray[np.bool_]
+    first_guess: Array
+    carbon_at_start: Array
+    gran: Gran
+    gran_lines: GranLines
+    inflection: Inflection
+    crossings: Mapping[float, Crossing]
+    level_ph: Array
+    level: Crossing
+    fit: Fitted
+    excess: Fitted
+    estimates: Mapping[str, Estimate]
+    acidity: Mapping[float, Estimate]
+
+
+def value_of(samples: Mapping[str, NDArray], name: str, size: int) -> Array:
+    """A number of each sample, nan throughout where it was not given."""
+    v = samples.get(name)
+    return np.full(size, np.nan) if v is None else v
+
+
+def text_of(samples: Mapping[str, NDArray], name: str, size: int) -> NDArray[np.object_]:
+    """A word of each sample, "" throughout where it was not given."""
+    v = samples.get(name)
+    return np.full(size, "", dtype=object) if v is None else v
+
+
+def solve_titrations(t: Titrations, options: TitrationOptions) -> Solved:
+    """Every method on the usable titrations of `t`."""
+    c = curves_of(t)
+    n = c.count.size
+    frame = t.samples[t.usable]
+    samples = {name: frame[name].to_numpy(dtype=float if frame[name].dtype.kind in "fi" else object)
+               for name in frame.columns}
+    purged = text_of(samples, "exchange", n) == "purged"
+    totals = _totals(samples, c, own_acids(t.acids))
+    sulfuric = (text_of(samples, "titrant_acid", n) == "sulfuric") & ~c.is_base
+    own_strength = value_of(samples, "titrant_ionic_strength_mol_l", n)
+    plain = np.where(sulfuric, 1.5, 1.0) * np.abs(c.per_added) * c.sample  # ionic strength of 2:1 and 1:1 acids
+    titrant = np.where(np.isfinite(own_strength), own_strength, plain)
+    is_sea = c.salinity >= FRESH_BELOW
+
+    acid, dilution = np.nan_to_num(c.acid), np.nan_to_num(c.dilution, nan=1.0)  # a point that is not there does no harm
+
+    def points_with(alkalinity: Array) -> Points:
+        sample = np.where(np.isfinite(c.ionic_strength_mol_l), c.ionic_strength_mol_l, np.abs(alkalinity))
+        sample = np.where(is_sea, ionic_strength_seawater(c.salinity), sample)
+        strength = mixed_ionic_strength(sample[:, None], titrant[:, None], acid, alkalinity[:, None], dilution)
+        return points_at(acid, dilution, t_c=c.t_c, salinity=c.salinity, ionic_strength_mol_l=strength,
+                         totals=totals, by_mass=c.by_mass, sulfuric=sulfuric)
+
+    calibration, ph = _readings_as_ph(c, samples, points_with)
+    guess = _first_guess(c, ph)
+    points = points_with(guess)
+    there = np.isfinite(ph) & c.there
+    carbon = _carbon_at_start(points, ph, guess, samples, purged, c)
+    gran = windows(points, ph, there, alkalinity=guess, carbon=carbon, u_ph=c.u_ph_scatter, u_acid=c.u_acid)
+    near = np.where(np.isfinite(gran.acid), gran.acid, guess)
+    common = {"u_ph": c.u_ph_scatter, "u_acid": c.u_acid, "relative_u": c.relative_u, "purged": purged}
+    fit = fit_closed(points, ph, there, near, weak_acid=options.weak_acid, **common)
+    excess = fit_acid_excess(points, ph, there, near, salinity=c.salinity, **common)
+    turned = np.where(c.is_base[:, None], np.nan, ph)
+    crossings = {e: crossing(c.acid, turned, e) for e in options.end_points}
+    level_ph = end_point_for(_mg_caco3(near))
+    level = crossing(c.acid, turned, level_ph)
+    bend = inflection(c.acid, turned, c.u_ph_scatter, c.u_acid)
+    estimates = {
+        "gran": _of_gran(gran, c), "fit": _of_fit(fit), "inflection": _of_inflection(bend, c),
+        "two_point": _two_point(c, turned, crossings[ALWAYS_END_POINT], carbon, points),
+        "fixed_level": _of_crossing(level, c), "acid_excess": _of_fit(excess),
+    } | {f"fixed_{e:g}": _of_crossing(found, c) for e, found in crossings.items()}
+    return Solved(
+        curves=c, samples=samples, points=points, ph=ph, calibration=calibration, purged=purged, first_guess=guess,
+        carbon_at_start=carbon, gran=gran,
+        gran_lines=gran_lines(points, ph, there & ~purged[:, None], near, c.u_ph_scatter, c.u_acid),
+        inflection=bend, crossings=crossings, level_ph=level_ph, level=level, fit=fit, excess=excess,
+        estimates=estimates, acidity=_acidity(c, ph))
+
+
+def _totals(samples: Mapping[str, NDArray], c: Curves, own: tuple[Acid, ...]) -> dict[Acid, Array]:
+    """Weak acids of the samples, per unit of sample; sea salt brings its own where they were not measured."""
+    unit = np.where(c.by_mass, c.density_kg_l, 1.0)
+    is_sea = c.salinity >= FRESH_BELOW
+    acids = [a for a in (*acid_table().values(), *own)
+             if f"{a.name}_mol_l" in samples or (is_sea.any() and a.name in SEA_SALTS and a.name not in IONS)]
+    out = {}
+    for acid in acids:
+        given = value_of(samples, f"{acid.name}_mol_l", c.count.size)
+        if acid.name in SEA_SALTS:
+            salt = np.where(is_sea, of_sea_salt(acid.name, c.salinity) * c.density_kg_l, 0.0)
+            given = np.where(np.isnan(given), salt, given)
+        out[acid] = np.nan_to_num(given) / unit
+    return out
+
+
+def _readings_as_ph(c: Curves, samples: Mapping[str, NDArray], points_with) -> tuple[Calibration, Array]:
+    """pH of every point; potentials by their standards, else by the acid end of the titration."""
+    calibration = by_standards(samples, c.t_c)
+    rows = np.flatnonzero(c.is_potential & (calibration.standards == 0))
+    if rows.size:
+        points = points_with(np.zeros(c.count.size)).take(rows)
+        activity = np.full(points.acid.shape, 10.0**-REFERENCE_ACID_PH)
+        d_rest = points.terms(activity * points.h_per_activity)[3]
+        per_acid = activity / (-d_rest * points.dilution)
+        calibration.zero_mv[rows] = zero_potential_of_acid(
+            c.reading[rows], c.acid[rows], c.dilution[rows], per_acid, calibration.slope_mv[rows])
+    return calibration, np.where(c.is_potential[:, None], calibration.ph(c.reading), c.reading)
+
+
+def _first_guess(c: Curves, ph: Array) -> Array:
+    """Alkalinity to start from: where pH passes 4.5, less the free acid there; of an acid water minus its free acid."""
+    free = 10.0**-ALWAYS_END_POINT
+    found = crossing(c.acid, np.where(c.is_base[:, None], np.nan, ph), ALWAYS_END_POINT).acid - free
+    rows = np.arange(c.count.size)
+    last = c.acid[rows, np.maximum(c.count - 1, 0)]
+    of_start = np.where(ph[:, 0] < ALWAYS_END_POINT, -(10.0 ** -np.minimum(ph[:, 0], 14.0)),
+                        np.where(c.is_base, 0.0, last))
+    return np.where(np.isfinite(found), found, np.nan_to_num(of_start))
+
+
+def _carbon_at_start(points: Points, ph: Array, alkalinity: Array, samples: Mapping[str, NDArray],
+                     purged: NDArray[np.bool_], c: Curves) -> Array:
+    """Carbon: measured, else what the first reading and the alkalinity imply, within reason; none where swept out."""
+    start = np.where(np.isfinite(ph), ph, 7.0)
+    per_carbon, rest, _, _ = points.terms(points.h(start))
+    least = np.maximum(alkalinity, 0.0) + LEAST_CARBON
+    implied = (alkalinity - points.acid[:, 0] - rest[:, 0]) / per_carbon[:, 0]
+    implied = np.clip(implied, 0.0, MOST_CARBON * least)
+    implied = np.where((ph[:, 0] > 5.5) & np.isfinite(implied), implied, least)
+    measured = value_of(samples, "dic_mol_l", c.count.size) / np.where(c.by_mass, c.density_kg_l, 1.0)
+    return np.where(purged, 0.0, np.where(np.isfinite(measured), measured, implied))
+
+
+def _mg_caco3(eq_l: Array) -> Array:
+    return convert(eq_l, "eq/L", "mg/L as CaCO3", "alkalinity")
+
+
+def _shared(c: Curves, value: Array) -> Array:
+    """Uncertainty that every method shares: strength of the titrant, volume of the sample, scale of the burette."""
+    return c.relative_u * np.abs(value)
+
+
+def _of_gran(g: Gran, c: Curves) -> Estimate:
+    own = np.sqrt(g.u_line**2 + g.u_window**2 + g.u_bias**2)
+    why = worded(c.count.size, (g.first < 0, "needs three points in a row from pH 4.6 to 2.7"))
+    return Estimate(g.acid, np.hypot(own, _shared(c, g.acid)), own, why)
+
+
+def _of_fit(f: Fitted) -> Estimate:
+    return Estimate(f.fit.alkalinity, f.u_alkalinity, f.u_shape, f.why_not)
+
+
+def _of_inflection(b: Inflection, c: Curves) -> Estimate:
+    own = np.hypot(b.u_acid, c.u_acid)
+    why = worded(c.count.size, (np.isnan(b.acid), "pH falls fastest at no point within the curve"))
+    return Estimate(b.acid, np.hypot(own, _shared(c, b.acid)), own, why)
+
+
+def _of_crossing(found: Crossing, c: Curves) -> Estimate:
+    """A fixed end point. What the electrode reads wrong moves it along the curve."""
+    u_ph = np.hypot(c.u_ph, c.u_ph_scatter)
+    own = np.sqrt(found.u_curve**2 + (found.slope * u_ph) ** 2 + c.u_acid**2)
+    why = worded(c.count.size, (np.isnan(found.acid), "the curve does not pass this pH"), (c.is_base, "titrated with base"))
+    return Estimate(found.acid, np.hypot(own, _shared(c, found.acid)), own, why)
+
+
+def _two_point(c: Curves, ph: Array, first: Crossing, carbon: Array, points: Points) -> Estimate:
+    """Low-alkalinity form from pH 4.5 and 0.30 below."""
+    second = crossing(c.acid, ph, ALWAYS_END_POINT - TWO_POINT_STEP)
+    value = alkalinity_two_points(first.acid, second.acid)
+    k1, per_activity = points.k1[:, 0], points.h_per_activity[:, 0]
+    left = (2.0 * left_at(ALWAYS_END_POINT, k1, per_activity)
+            - left_at(ALWAYS_END_POINT - TWO_POINT_STEP, k1, per_activity))
+    scatter = np.hypot(2.0 * first.slope, second.slope) * c.u_ph_scatter
+    own = np.sqrt(4.0 * first.u_curve**2 + second.u_curve**2 + scatter**2
+                  + ((2.0 * first.slope - second.slope) * c.u_ph) ** 2 + 5.0 * c.u_acid**2
+                  + (BIAS_RMS * left * carbon) ** 2)
+    why = worded(c.count.size, (np.isnan(value), "the curve does not pass pH 4.5 and 4.2"))
+    return Estimate(value, np.hypot(own, _shared(c, value)), own, why)
+
+
+def _acidity(c: Curves, ph: Array) -> dict[float, Estimate]:
+    """Base taken up to each end point; of an acid titration that starts above one, its acid with a minus sign."""
+    out = {}
+    for end in ACIDITY_END_POINTS:
+        up = crossing(-c.acid, np.where(c.is_base[:, None], -ph, np.nan), -end)
+        down = crossing(c.acid, np.where(c.is_base[:, None], np.nan, ph), end)
+        value = np.where(c.is_base, up.acid, -down.acid)
+        slope, u_curve = (np.where(c.is_base, getattr(up, f), getattr(down, f)) for f in ("slope", "u_curve"))
+        own = np.sqrt(u_curve**2 + (slope * np.hypot(c.u_ph, c.u_ph_scatter)) ** 2 + c.u_acid**2)
+        why = worded(c.count.size, (np.isnan(value), "the curve does not pass this pH"))
+        out[end] = Estimate(value, np.hypot(own, _shared(c, value)), own, why)
+    return out
+
