@@ -140,6 +140,11 @@ EXACT = [
     (1.0, "mL", "volume", 1e-6), (1.0, "megaliter", "volume", 1e3), (1.0, "g", "weight", 1e-3), (1.0, "mg", "weight", 1e-6),
     (1.0, "t", "weight", 1e3), (1.0, "km2", "area", 1e6), (1.0, "L/h", "flow", 0.024), (1.0, "L/d", "flow", 1e-3),
     (1.0, "kg/h", "weight_rate", 24.0), (1.0, "lb/d", "weight_rate", 0.45359237), (1.0, "mmol/L", "ionic_strength", 1e-3),
+    (250.0, "µL", "small_volume", 0.25), (0.05, "L", "small_volume", 50.0), (1500.0, "mg", "small_mass", 1.5),
+    (0.1, "kg", "small_mass", 100.0), (-0.177, "V", "potential", -177.0), (20.0, "meq/L", "titrant_strength", 0.02),
+    (100.0, "meq/kg", "titrant_per_kg", 0.1), (998.2, "kg/m3", "density", 0.9982), (90.0, "s", "minutes", 1.5),
+    (0.5, "h", "minutes", 30.0), (1.0, "cc", "small_volume", 1.0), (1.0, "N", "titrant_strength", 1.0),
+    (1.0, "mol H+/L", "titrant_strength", 1.0), (1.1, "g/cm³", "density", 1.1), (7.0, "digits", "count", 7.0),
 ]  # fmt: skip
 
 

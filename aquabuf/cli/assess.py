@@ -25,6 +25,11 @@ def _thresholds(_: click.Context, option: click.Parameter, text: str | None) -> 
 @click.option("--out", "folder", type=click.Path(path_type=Path), required=True, help="Folder for the results.")
 @click.option("--map", "mapping", type=click.Path(path_type=Path), help="What the headers of the table mean (TOML).")
 @click.option("--limits", type=click.Path(path_type=Path), help="Your own limits (TOML); they replace or add.")
+@click.option("--titrations", type=click.Path(path_type=Path),
+              help="Titrations (as for `aquabuf titration`) that give the alkalinity of the samples they name.")
+@click.option("--titration-samples", type=click.Path(path_type=Path), help="Their table of samples.")
+@click.option("--titration-map", type=click.Path(path_type=Path), help="What the headers of titrations mean (TOML).")
+@click.option("--titration-samples-map", type=click.Path(path_type=Path), help="The same for their table of samples.")
 @click.option("--exchange", type=click.Choice(["closed", "open"]), default="closed", show_default=True,
               help="Take the water as sampled, or bring it to equilibrium with air first.")
 @click.option("--air-co2-ppm", type=float, help="CO2 in dry air; the default and its year are printed.")
@@ -36,14 +41,17 @@ def _thresholds(_: click.Context, option: click.Parameter, text: str | None) -> 
               help="K1 and K2 of salt water.  [default: millero]")
 @click.option("--figure/--no-figure", default=True, help="Draw the figure.  [default: figure]")
 @click.option("--force", is_flag=True, help="Replace an earlier result in the folder.")
-def assess(readings: Path, folder: Path, mapping: Path | None, limits: Path | None, force: bool, figure: bool,
-           thresholds: tuple[float, ...] | None, base_thresholds: tuple[float, ...] | None, **choices: object) -> None:
+def assess(readings: Path, folder: Path, mapping: Path | None, limits: Path | None, titrations: Path | None,
+           titration_samples: Path | None, titration_map: Path | None, titration_samples_map: Path | None, force: bool,
+           figure: bool, thresholds: tuple[float, ...] | None, base_thresholds: tuple[float, ...] | None,
+           **choices: object) -> None:
     """Assess every sample of the table READINGS and write the results to a folder.
 
     The folder gets results.csv (a row per sample), verdicts.csv (the rule behind each warning), checks.csv (quality),
     curves.csv (pH against added acid, worst samples), rejected.csv (rows refused and why), run.json and a figure.
     """
     from aquabuf.assess.options import Options
+    from aquabuf.readings.titration.paths import TitrationFiles
     from aquabuf.report.run import assess_file
 
     given = choices | {"acid_thresholds": thresholds, "base_thresholds": base_thresholds}
@@ -51,5 +59,9 @@ def assess(readings: Path, folder: Path, mapping: Path | None, limits: Path | No
         options = Options(**{n: v for n, v in given.items() if v is not None})  # type: ignore[arg-type]
     except InputError as error:
         raise click.UsageError(str(error)) from None
-    click.echo(assess_file(readings, folder, options, mapping=mapping, limits=limits, force=force, figure=figure,
-                           notify=lambda text: click.echo(text, err=True)), nl=False)
+    beside = (titration_samples, titration_map, titration_samples_map)
+    if titrations is None and any(beside):
+        raise click.UsageError("--titration-samples and the titration maps need --titrations. Name the file of points.")
+    files = None if titrations is None else TitrationFiles(titrations, *beside)
+    click.echo(assess_file(readings, folder, options, mapping=mapping, limits=limits, titrations=files, force=force,
+                           figure=figure, notify=lambda text: click.echo(text, err=True)), nl=False)

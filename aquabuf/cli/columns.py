@@ -11,17 +11,19 @@ __all__ = ["columns"]
 
 @click.command()
 @click.argument("names", nargs=-1)
-@click.option("--results", is_flag=True, help="Show the columns of results.csv instead.")
-def columns(names: tuple[str, ...], results: bool) -> None:
+@click.option("--results", is_flag=True, help="Show the columns of the results instead.")
+@click.option("--titration", is_flag=True, help="Show the columns of titrations (with --results: of alkalinity.csv).")
+def columns(names: tuple[str, ...], results: bool, titration: bool) -> None:
     """Print the columns that a table of readings may have; name some to see their units, headers and ranges."""
     if results:
-        from aquabuf.report.columns import result_columns_text
+        from aquabuf.report.columns import result_columns_text, titration_columns_text
 
-        click.echo(result_columns_text())
+        click.echo(titration_columns_text() if titration else result_columns_text())
     else:
         from aquabuf.readings.listing import columns_text
+        from aquabuf.readings.schema import titration_quantities
 
         try:
-            click.echo(columns_text(names))
+            click.echo(columns_text(names, schema=titration_quantities() if titration else None))
         except InputError as error:
             raise click.UsageError(str(error)) from None

@@ -12,6 +12,7 @@ from aquabuf import __version__
 from aquabuf.cli.assess import assess
 from aquabuf.cli.columns import columns
 from aquabuf.cli.template import template
+from aquabuf.cli.titration import titration
 from aquabuf.errors import AquabufError
 
 __all__ = ["main"]
@@ -59,3 +60,4 @@ def main() -> None:
 main.add_command(assess)
 main.add_command(columns)
 main.add_command(template)
+main.add_command(titration)

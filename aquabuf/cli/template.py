@@ -12,7 +12,7 @@ __all__ = ["template"]
 @click.command()
 @click.argument("kind", required=False)
 def template(kind: str | None) -> None:
-    """Print a starter file: a table of readings for a KIND of water, a map file, or a limits file.
+    """Print a starter file: a table of readings for a KIND of water, a map or limits file, or tables of titrations.
 
     Without a KIND, list the kinds there are.
     """

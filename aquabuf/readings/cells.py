@@ -5,7 +5,7 @@ from __future__ import annotations
 import datetime
 import math
 import re
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -13,7 +13,7 @@ import numpy as np
 from aquabuf.readings.schema import Quantity
 from aquabuf.units import key
 
-__all__ = ["DATE_ORDERS", "Numbers", "Problem", "parse_choice", "parse_date", "parse_numbers"]
+__all__ = ["DATE_ORDERS", "Numbers", "Problem", "no_value_words", "parse_choice", "parse_date", "parse_numbers"]
 
 MISSING = frozenset({"", "na", "n/a", "n.a.", "-", "--", "nan", "null"})
 DATE_ORDERS = ("day-month-year", "month-day-year")
@@ -41,6 +41,11 @@ class Numbers:
     values: np.ndarray
     problems: list[Problem] = field(default_factory=list)
     below: list[int] = field(default_factory=list)  # positions of "<x"; the value there is x
+
+
+def no_value_words(missing: Iterable[object] = ()) -> frozenset[str]:
+    """Words that stand for "no value", in lower case: the usual ones and those of a map file."""
+    return MISSING | {str(word).strip().lower() for word in missing}
 
 
 def _bad_number(cell: str, decimal: str) -> tuple[str, str]:
@@ -93,7 +98,7 @@ def parse_numbers(
     cells: Sequence[str], quantity: Quantity, *, decimal: str = ".", missing: Sequence[object] = ()
 ) -> Numbers:
     """Numbers of one column; `missing` adds words and numbers that stand for "no value" (such as -9999)."""
-    own_words = MISSING | {str(word).strip().lower() for word in missing}
+    own_words = no_value_words(missing)
     values = _fast(cells, decimal)
     found = Numbers(np.full(len(cells), np.nan)) if values is None else Numbers(values)
     if values is None:

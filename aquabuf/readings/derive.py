@@ -21,15 +21,19 @@ def conductivity_25(conductivity_us_cm, t_c):
     return conductivity_us_cm / (1.0 + CONDUCTIVITY_PER_DEGREE * (t_c - 25.0))
 
 
-def density_kg_l(sheet: Sheet, column: str) -> np.ndarray:
-    """Density of each sample from its temperature and salinity; what is missing is replaced and flagged. [kg/L]"""
+def density_kg_l(sheet: Sheet, column: str, needed: np.ndarray | None = None) -> np.ndarray:
+    """Density of each sample from its temperature and salinity; what is missing is replaced and flagged. [kg/L]
+
+    `needed` marks the rows that will use it (all if it is not given): only they are flagged.
+    """
     from aquabuf.chem.properties import seawater_density  # only tables per kilogram need it
 
     nothing = np.full(len(sheet), np.nan)
+    needed = np.ones(len(sheet), dtype=bool) if needed is None else needed
     t_c = sheet.numbers.get("temperature_c", nothing)
     salinity = sheet.numbers.get("salinity", nothing)
-    sheet.flag(np.isnan(t_c), column, None, f"no temperature, density at {DENSITY_T_C:g} °C used")
-    sheet.flag(np.isnan(salinity), column, None, "no salinity, density of fresh water used")
+    sheet.flag(np.isnan(t_c) & needed, column, None, f"no temperature, density at {DENSITY_T_C:g} °C used")
+    sheet.flag(np.isnan(salinity) & needed, column, None, "no salinity, density of fresh water used")
     t_c = _within("temperature_c", np.where(np.isnan(t_c), DENSITY_T_C, t_c))
     salinity = _within("salinity", np.where(np.isnan(salinity), 0.0, salinity))
     return seawater_density(t_c, salinity) / 1e3

@@ -5,10 +5,14 @@ from __future__ import annotations
 import numpy as np
 import pandas as pd
 
-__all__ = ["SeenNames"]
-
+__all__ = ["DUPLICATE_RULE", "SeenNames", "hashes_of"]
 
 DUPLICATE_RULE = "sample_id is already used in row"
+
+
+def hashes_of(names: list[str]) -> np.ndarray:
+    """64-bit hash of each name, the same in every run."""
+    return pd.util.hash_array(np.asarray(names, dtype=object), categorize=False)
 
 
 class SeenNames:
@@ -24,7 +28,7 @@ class SeenNames:
 
     def first_rows(self, names: list[str], rows: np.ndarray) -> np.ndarray:
         """Row that had each name first, 0 for a new name; new names are remembered. One per name."""
-        hashes = pd.util.hash_array(np.asarray(names, dtype=object), categorize=False)
+        hashes = hashes_of(names)
         first = self._before(hashes)
         unique, position, back = np.unique(hashes, return_index=True, return_inverse=True)
         same = position[back]  # earliest position in this piece with the same name
@@ -32,6 +36,10 @@ class SeenNames:
         new = self._before(unique) == 0
         self._add(unique[new], rows[position[new]])
         return first
+
+    def rows_of(self, names: list[str]) -> np.ndarray:
+        """Row that had each name first, 0 for a name that is not known; nothing is remembered."""
+        return self._before(hashes_of(names))
 
     def _before(self, hashes: np.ndarray) -> np.ndarray:
         at = np.searchsorted(self._hashes, hashes)

@@ -4,19 +4,27 @@ from __future__ import annotations
 
 import difflib
 import re
-from collections.abc import Mapping
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
+from typing import NamedTuple
 
 from aquabuf.errors import HeaderError
-from aquabuf.readings.schema import Quantity, example_header, label_for, unit_labels, why_not
+from aquabuf.readings.schema import Index, Quantity, example_header, label_for, unit_labels, why_not
 from aquabuf.units import CONCENTRATIONS, Unit, find_basis, key, linear, parse_unit
 
 __all__ = ["Column", "column_for", "nearest_names", "parse_header"]
 
-Index = Mapping[str, tuple[Quantity, str]]
 _BRACKETS = re.compile(r"^(?P<name>.*?)\s*[(\[](?P<unit>[^()\[\]]*)[)\]]\s*$", re.DOTALL)
 _UNCERTAIN = re.compile(r"_(?:standard_uncertainty|uncertainty|sigma|u)$")
 _AS = re.compile(r"^(.+)_as_([a-z0-9_]+)$")
+
+
+class _Meaning(NamedTuple):
+    """One quantity that a header may mean."""
+
+    quantity: Quantity
+    is_u: bool  # its standard uncertainty
+    basis: str  # that the words state
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -51,22 +59,38 @@ def nearest_names(name: str, index: Index, count: int = 3) -> list[str]:
     plain = key(name)
     close = difflib.get_close_matches(plain, index, n=3 * count, cutoff=0.6)
     words = [known for known in index if len(known) > 3 and known in plain]
-    return list(dict.fromkeys(index[known][0].name for known in (*close, *words)))[:count]
+    return list(dict.fromkeys(quantity.name for known in (*close, *words) for quantity, _ in index[known]))[:count]
 
 
-def _lookup(name: str, index: Index) -> tuple[Quantity, bool, str] | None:
-    """Quantity, whether it is an uncertainty, and the basis said by a header name without unit."""
+def _lookup(name: str, index: Index) -> list[_Meaning]:
+    """What a header name without unit may mean; empty when it is not known."""
     stated = _AS.match(name)
     basis = find_basis(stated[2]) if stated else ""
     for candidate in (name, stated[1] if stated and basis else ""):
         bare = _UNCERTAIN.sub("", candidate)
-        if candidate in index:
-            quantity, own = index[candidate]
-            return quantity, False, own or (basis if candidate != name else "")
-        if bare in index and bare != candidate:
-            quantity, own = index[bare]
-            return quantity, True, own or (basis if candidate != name else "")
+        for known in (candidate, bare):
+            if known in index:
+                said = basis if candidate != name else ""
+                return [_Meaning(quantity, known != candidate, own or said) for quantity, own in index[known]]
+    return []
+
+
+def _with_unit(header: str, meanings: Sequence[_Meaning], text: str) -> Column | None:
+    """The column of the first meaning that `text` is a unit of; None when it is a unit of none."""
+    for quantity, is_u, basis in meanings:
+        unit = parse_unit(text, quantity.dimension) if quantity.is_number else None
+        if unit is not None:
+            return column_for(header, quantity, unit, is_u=is_u, basis=basis)
     return None
+
+
+def _without_unit(header: str, meanings: Sequence[_Meaning]) -> Column:
+    """The column of a header that says no unit; HeaderError where one is needed."""
+    if len(meanings) > 1:
+        raise _units_missing(header, [meaning.quantity for meaning in meanings])
+    quantity, is_u, basis = meanings[0]
+    default = quantity.house if quantity.is_number and quantity.has_default_unit else None
+    return column_for(header, quantity, default, is_u=is_u, basis=basis)
 
 
 def _ambiguous(header: str, quantity: Quantity, unit: Unit) -> HeaderError:
@@ -114,12 +138,21 @@ def _unit_missing(header: str, quantity: Quantity) -> HeaderError:
     )
 
 
-def _unknown_unit(header: str, text: str, quantity: Quantity) -> HeaderError:
-    if not quantity.is_number or unit_labels(quantity) == ["-"]:
-        return HeaderError(f"column {header!r}: {quantity.name} takes no unit, found {text!r}. Remove it.")
+def _units_missing(header: str, quantities: Sequence[Quantity]) -> HeaderError:
+    ways = "; ".join(f"{q.base} in {', '.join(unit_labels(q))}" for q in quantities)
     return HeaderError(
-        f"column {header!r}: {text!r} is not a unit of {quantity.base}. Use one of: {', '.join(unit_labels(quantity))}."
+        f"column {header!r} needs a unit, which says what is meant: {ways}. "
+        f"Write it in the header, e.g. {example_header(quantities[0])}."
     )
+
+
+def _unknown_unit(header: str, text: str, quantities: Sequence[Quantity]) -> HeaderError:
+    first = quantities[0]
+    if not first.is_number or (len(quantities) == 1 and unit_labels(first) == ["-"]):
+        return HeaderError(f"column {header!r}: {first.name} takes no unit, found {text!r}. Remove it.")
+    names = " or ".join(dict.fromkeys(q.base for q in quantities))
+    labels = ", ".join(label for q in quantities for label in unit_labels(q) if label != "-")
+    return HeaderError(f"column {header!r}: {text!r} is not a unit of {names}. Use one of: {labels}.")
 
 
 def _unknown(header: str, index: Index) -> HeaderError:
@@ -133,16 +166,13 @@ def _unknown(header: str, index: Index) -> HeaderError:
 
 def _bracketed(header: str, name: str, text: str, index: Index) -> Column | None:
     """Header with its unit apart ("Calcium (mg/L)"); None when the name in front is not known."""
-    found = _lookup(key(name), index)
-    if found is None:
+    meanings = _lookup(key(name), index)
+    if not meanings:
         return None
-    quantity, is_u, basis = found
-    unit = parse_unit(text, quantity.dimension) if quantity.is_number else None
-    if unit is not None:
-        return column_for(header, quantity, unit, is_u=is_u, basis=basis)
-    column = _suffixed(header, index)  # the brackets may hold a word of the name: "pH (field)"
+    # the brackets may hold a word of the name: "pH (field)"
+    column = _with_unit(header, meanings, text) or _suffixed(header, index)
     if column is None:
-        raise _unknown_unit(header, text, quantity)
+        raise _unknown_unit(header, text, [meaning.quantity for meaning in meanings])
     return column
 
 
@@ -150,16 +180,12 @@ def _suffixed(header: str, index: Index) -> Column | None:
     """Header that ends in its unit ("calcium_mg_l"), or has none; the longest known name wins."""
     words = key(header).split("_")
     for cut in range(len(words), 0, -1):
-        found = _lookup("_".join(words[:cut]), index)
-        if found is None:
-            continue
-        quantity, is_u, basis = found
-        if cut == len(words):
-            default = quantity.house if quantity.is_number and quantity.has_default_unit else None
-            return column_for(header, quantity, default, is_u=is_u, basis=basis)
-        unit = parse_unit("_".join(words[cut:]), quantity.dimension) if quantity.is_number else None
-        if unit is not None:
-            return column_for(header, quantity, unit, is_u=is_u, basis=basis)
+        meanings = _lookup("_".join(words[:cut]), index)
+        if meanings and cut == len(words):
+            return _without_unit(header, meanings)
+        column = _with_unit(header, meanings, "_".join(words[cut:]))
+        if column is not None:
+            return column
     return None
 
 
@@ -182,9 +208,7 @@ def parse_header(header: str, index: Index) -> Column:
     column = _bracketed(header, apart["name"], apart["unit"], index) if apart else None
     if column is None and "," in header:
         name, _, text = header.rpartition(",")
-        known = _lookup(key(name), index)
-        if known and parse_unit(text, known[0].dimension or "length"):
-            column = _bracketed(header, name, text, index)
+        column = _with_unit(header, _lookup(key(name), index), text)
     column = column or _suffixed(header, index)
     if column is None:
         raise _unknown(header, index)

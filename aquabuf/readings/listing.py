@@ -1,4 +1,4 @@
-"""The schema as text: one line per column, or all there is to know about some of them."""
+"""A schema as text: one line per column, or all there is to know about some of them."""
 
 from __future__ import annotations
 
@@ -7,7 +7,7 @@ from collections.abc import Sequence
 
 from aquabuf.errors import InputError
 from aquabuf.readings.headers import nearest_names
-from aquabuf.readings.schema import Quantity, example_header, name_index, quantities, unit_labels
+from aquabuf.readings.schema import Quantity, Schema, example_header, name_index, quantities, unit_labels
 from aquabuf.units import key
 
 __all__ = ["columns_text"]
@@ -22,8 +22,8 @@ _CLOSING = (
 )
 
 
-def columns_text(names: Sequence[str] = (), width: int = WIDTH) -> str:
-    """Text of the schema.
+def columns_text(names: Sequence[str] = (), width: int = WIDTH, schema: Schema | None = None) -> str:
+    """Text of a schema.
 
     Parameters
     ----------
@@ -31,31 +31,35 @@ def columns_text(names: Sequence[str] = (), width: int = WIDTH) -> str:
         Canonical names or other headers ("calcium", "EC25"); empty for the short list of all columns.
     width
         Line width. [characters]
+    schema
+        The columns to list; those of readings if none is given.
 
     Raises
     ------
     InputError
         A name that is not known; the message shows the nearest ones.
     """
+    schema = quantities() if schema is None else schema
     if not names:
-        return _overview(width)
-    return "\n".join(_detail(_find(name), width) for name in names)
+        return _overview(schema, width)
+    return "\n".join(_detail(quantity, width) for name in names for quantity in _find(name, schema))
 
 
-def _find(name: str) -> Quantity:
-    index = name_index()
-    if name in quantities():
-        return quantities()[name]
+def _find(name: str, schema: Schema) -> list[Quantity]:
+    """What a name means: one quantity, or several where only the unit in a header tells them apart."""
+    index = name_index(schema=schema)
+    if name in schema:
+        return [schema[name]]
     if key(name) in index:
-        return index[key(name)][0]
+        return [quantity for quantity, _ in index[key(name)]]
     near = nearest_names(name, index)
     hint = f"The nearest are {', '.join(near)}." if near else "Ask for the list without a name."
     raise InputError(f"no column is named {name!r}. {hint}")
 
 
-def _overview(width: int) -> str:
+def _overview(schema: Schema, width: int) -> str:
     """Every column with a header people write, the unit and range it has here, its meaning and what needs it."""
-    records = list(quantities().values())
+    records = list(schema.values())
     rows = [(q.name, example_header(q), q.house_unit if q.is_number else "text",
              f"{q.low:g} to {q.high:g}" if q.is_number else "") for q in records]
     head = ("column", "header, e.g.", "unit", "range")

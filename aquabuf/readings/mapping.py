@@ -29,7 +29,7 @@ from aquabuf.errors import FileError, HeaderError, InputError
 from aquabuf.readings.cells import DATE_ORDERS
 from aquabuf.readings.headers import Column, parse_header
 from aquabuf.readings.result import UserAcid
-from aquabuf.readings.schema import Quantity, acid_quantity, name_index
+from aquabuf.readings.schema import Index, Quantity, Schema, acid_quantity, name_index
 from aquabuf.units import key
 
 __all__ = ["TableMap", "read_map"]
@@ -57,7 +57,7 @@ class TableMap:
     missing: tuple[str | float, ...] = ()
     date_order: str = ""
     acids: Mapping[str, UserAcid] = field(default_factory=dict)  # by column name
-    index: Mapping[str, tuple[Quantity, str]] = field(default_factory=name_index)
+    index: Index = field(default_factory=name_index)
 
 
 class _Place:
@@ -90,7 +90,7 @@ def _is_number(value: Any) -> bool:
     return isinstance(value, int | float) and not isinstance(value, bool) and math.isfinite(value)
 
 
-def _header(place: _Place, where: str, text: Any, index: Mapping[str, tuple[Quantity, str]]) -> Column:
+def _header(place: _Place, where: str, text: Any, index: Index) -> Column:
     if not isinstance(text, str):
         raise place.error(where, f'must be a quantity in quotes, e.g. "calcium (mg/L)"; found {text!r}.')
     try:
@@ -99,7 +99,7 @@ def _header(place: _Place, where: str, text: Any, index: Mapping[str, tuple[Quan
         raise HeaderError(f"map file {place.name}, {where}: {error}") from None
 
 
-def _column(place: _Place, header: str, value: Any, index: Mapping[str, tuple[Quantity, str]]) -> Column | None:
+def _column(place: _Place, header: str, value: Any, index: Index) -> Column | None:
     """Meaning of one header from its entry under [columns]."""
     where = f"[columns] {header!r}"
     if value == "ignore":
@@ -151,9 +151,7 @@ def _acids(place: _Place, entries: Mapping[str, Any]) -> tuple[dict[str, UserAci
     return {record.name: acid for record, acid in zip(records, acids, strict=True)}, records
 
 
-def _values(
-    place: _Place, entries: Mapping[str, Any], index: Mapping[str, tuple[Quantity, str]]
-) -> tuple[tuple[Column, str | float], ...]:
+def _values(place: _Place, entries: Mapping[str, Any], index: Index) -> tuple[tuple[Column, str | float], ...]:
     """Constants of [values], as columns with one content."""
     found = []
     for name, value in entries.items():
@@ -166,9 +164,7 @@ def _values(
     return tuple(found)
 
 
-def _fill(
-    place: _Place, entries: Mapping[str, Any], index: Mapping[str, tuple[Quantity, str]]
-) -> tuple[tuple[Column, float], ...]:
+def _fill(place: _Place, entries: Mapping[str, Any], index: Index) -> tuple[tuple[Column, float], ...]:
     """Numbers of [fill], in the unit that their name states."""
     found = []
     for name, value in entries.items():
@@ -208,8 +204,15 @@ def _load(path: Path) -> dict[str, Any]:
         raise FileError(f"{path.name}: the map file is not valid TOML: {error}. Correct that line.") from None
 
 
-def read_map(path: str | Path) -> TableMap:
+def read_map(path: str | Path, schema: Schema | None = None) -> TableMap:
     """Read and check a map file.
+
+    Parameters
+    ----------
+    path
+        The file.
+    schema
+        Quantities that the table may hold; those of readings if none is given.
 
     Raises
     ------
@@ -225,7 +228,7 @@ def read_map(path: str | Path) -> TableMap:
     parts = {name: place.table(f"[{name}]", content.get(name, {})) for name in _SECTIONS[1:]}
     acids, records = _acids(place, parts["acids"])
     try:
-        index = name_index(records)
+        index = name_index(records, schema)
     except InputError as error:
         raise place.error("[acids]", str(error)) from None
     place.known("[compose]", parts["compose"], ("sample_id",))

@@ -6,7 +6,7 @@ import difflib
 from collections.abc import Sequence
 from dataclasses import dataclass
 
-from aquabuf.errors import HeaderError, InputError
+from aquabuf.errors import HeaderError
 from aquabuf.readings.headers import Column, parse_header
 from aquabuf.readings.mapping import TableMap
 
@@ -106,11 +106,11 @@ def make_plan(header: Sequence[str], table_map: TableMap) -> Plan:
     Raises
     ------
     HeaderError
-        A header that is unknown, ambiguous, repeated, or listed in the map and not in the file; no sample_id.
+        A header that is unknown, ambiguous, repeated, or listed in the map and not in the file; no sample_id; no names.
     """
     names = [name.strip() for name in header]
     if not any(names):
-        raise InputError("the header line has no names. The first line that is no comment must name the columns.")
+        raise HeaderError("the header line has no names. The first line that is no comment must name the columns.")
     repeated = next((name for at, name in enumerate(names) if name and name in names[:at]), None)
     if repeated is not None:
         raise HeaderError(f"two columns have the same header {repeated!r}; rename or remove one.")

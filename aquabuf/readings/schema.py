@@ -1,11 +1,11 @@
-"""The schema: every quantity a table of readings may hold, from the one table `data/columns.csv`.
+"""The schemas: every quantity a table may hold, from `data/columns.csv` (readings) and `data/titration_columns.csv`.
 
-Reading, the list of columns, the starter files, the tests and the documentation all derive from it.
+Reading, the list of columns, the starter files, the tests and the documentation all derive from them.
 """
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from functools import cache
 
@@ -14,13 +14,16 @@ from aquabuf.tables import read_table
 from aquabuf.units import CONCENTRATIONS, Unit, accepted_units, key, parse_unit, substances
 
 __all__ = [
+    "Index",
     "Quantity",
+    "Schema",
     "acid_quantity",
     "example_header",
     "find_quantity",
     "name_index",
     "quantities",
     "schema_order",
+    "titration_quantities",
     "unit_labels",
 ]
 
@@ -79,6 +82,10 @@ class Quantity:
         return f"{self.base}_u{self.name.removeprefix(self.base)}"
 
 
+Schema = Mapping[str, Quantity]  # by canonical name, in table order
+Index = Mapping[str, tuple[tuple[Quantity, str], ...]]  # by plain header: each quantity meant, basis its words state
+
+
 def _number(text: str, missing: float) -> float:
     return float(text) if text else missing
 
@@ -130,8 +137,30 @@ def _quantity(row: dict[str, str]) -> Quantity:
 
 @cache
 def quantities() -> dict[str, Quantity]:
-    """The schema by canonical name, in table order (treat as read-only)."""
+    """The schema of readings by canonical name, in table order (treat as read-only)."""
     return {row["name"]: _quantity(row) for row in read_table("columns")}
+
+
+@cache
+def titration_quantities(table: str = "") -> dict[str, Quantity]:
+    """The schema of titrations by canonical name, in table order (treat as read-only).
+
+    `table` leaves only what belongs to single points ("points") or to the whole sample ("samples"); the name of the
+    sample is in both.
+    """
+    found: dict[str, Quantity] = {}
+    for row in read_table("titration_columns"):
+        if table in ("", row["table"]) or row["table"] == "both":
+            found |= _titration_records(row)
+    return found
+
+
+def _titration_records(row: dict[str, str]) -> dict[str, Quantity]:
+    """Records of one row: its own, that of a column of readings, or those of all weak acids of the readings."""
+    if row["kind"] != "shared":
+        return {row["name"]: _quantity(row)}
+    names = [f"{acid['name']}_mol_l" for acid in read_table("acids")] if row["name"] == "acids" else [row["name"]]
+    return {name: quantities()[name] for name in names}
 
 
 def acid_quantity(name: str, molar_mass_g: float | None = None, charge: int | None = None) -> Quantity:
@@ -155,33 +184,51 @@ def acid_quantity(name: str, molar_mass_g: float | None = None, charge: int | No
 
 
 @cache
-def _shipped_index() -> dict[str, tuple[Quantity, str]]:
+def _shipped_index() -> Index:
     return index_of(quantities().values())
 
 
-def index_of(records: Iterable[Quantity]) -> dict[str, tuple[Quantity, str]]:
-    """Plain header name (no unit) -> quantity and the basis that the words state."""
-    found: dict[str, tuple[Quantity, str]] = {}
+def _clash(name: str, one: Quantity, other: Quantity) -> InputError:
+    return InputError(f"the name {name!r} stands for both {one.name} and {other.name}; rename one")
+
+
+def _told_apart(one: Quantity, other: Quantity) -> bool:
+    """Whether the unit in a header says which of the two is meant."""
+    groups = {"" if q.dimension in CONCENTRATIONS else q.dimension for q in (one, other)}
+    return one.is_number and other.is_number and len(groups) == 2
+
+
+def index_of(records: Iterable[Quantity]) -> Index:
+    """Plain header name (no unit) -> the quantities it may mean, each with the basis that the words state.
+
+    One name may stand for several quantities where the unit tells them apart ("titrant" in mL, g or eq/L).
+    """
+    found: dict[str, tuple[tuple[Quantity, str], ...]] = {}
     for record in records:
-        for name, basis in ((record.base, ""), *record.aliases):
-            if name in found and found[name][0] is not record:
-                raise InputError(
-                    f"the name {name!r} stands for both {found[name][0].name} and {record.name}; rename one"
-                )
-            found[name] = (record, basis)
+        for name, basis in dict(((key(record.base), ""), *record.aliases)).items():
+            others = found.get(name, ())
+            for other, _ in others:
+                if not _told_apart(other, record):
+                    raise _clash(name, other, record)
+            found[name] = (*others, (record, basis))
     return found
 
 
-def name_index(extra: Iterable[Quantity] = ()) -> dict[str, tuple[Quantity, str]]:
-    """Names of the schema, with the records of user-defined acids added."""
-    extra = tuple(extra)
-    return index_of((*quantities().values(), *extra)) if extra else _shipped_index()
+def name_index(extra: Iterable[Quantity] = (), schema: Schema | None = None) -> Index:
+    """Names of a schema (that of readings if none is given), with the records of user-defined acids added."""
+    shipped = _shipped_index() if schema is None else index_of(schema.values())
+    own = index_of(extra)
+    for name in own:
+        if name in shipped:
+            raise _clash(name, shipped[name][0][0], own[name][0][0])
+    return {**shipped, **own} if own else shipped
 
 
-def schema_order(names: Iterable[str]) -> list[str]:
+def schema_order(names: Iterable[str], schema: Schema | None = None) -> list[str]:
     """Canonical names in the order of the schema, each uncertainty behind its quantity; others stay last."""
     found = dict.fromkeys(names)
-    known = [name for q in quantities().values() for name in ((q.name, q.u_name) if q.is_number else (q.name,))]
+    records = (quantities() if schema is None else schema).values()
+    known = [name for q in records for name in ((q.name, q.u_name) if q.is_number else (q.name,))]
     return [name for name in dict.fromkeys((*known, *found)) if name in found]
 
 

@@ -9,7 +9,7 @@ from dataclasses import dataclass, field
 import numpy as np
 import pandas as pd
 
-from aquabuf.readings.cells import MISSING, Problem, parse_choice, parse_date, parse_numbers
+from aquabuf.readings.cells import Problem, no_value_words, parse_choice, parse_date, parse_numbers
 from aquabuf.readings.headers import Column
 from aquabuf.readings.result import BELOW_DETECTION, FLAG_COLUMNS, REJECTED_COLUMNS
 
@@ -33,6 +33,7 @@ class Sheet:
     words: dict[str, list[str]] = field(default_factory=dict)
     days: np.ndarray | None = None
     numbers: dict[str, np.ndarray] = field(default_factory=dict)  # house units
+    per_kg: list[tuple[Column, Sequence[str]]] = field(default_factory=list)  # columns that wait for a density
     problems: list[tuple[int, str, str, str, str]] = field(default_factory=list)  # at, column, value, rule, remedy
     flagged: list[tuple[np.ndarray, str, list[str], str]] = field(default_factory=list)  # at, column, value, what
 
@@ -51,17 +52,16 @@ class Sheet:
 
     def plain_words(self, cells: Sequence[str]) -> list[str]:
         """Cells without outer blanks; "" where a word for "no value" stands."""
-        absent = MISSING | {str(word).strip().lower() for word in self.missing}
+        absent = no_value_words(self.missing)
         short = max(map(len, absent))
         stripped = [cell.strip() for cell in cells]
         return [cell if len(cell) > short or cell.lower() not in absent else "" for cell in stripped]
 
-    def take_ids(self, columns: Sequence[Sequence[str]], header: str) -> None:
-        """The sample_id of each record, composed where it has several parts."""
+    def take_ids(self, columns: Sequence[Sequence[str]], header: str, remedy: str) -> None:
+        """The sample_id of each record, composed where it has several parts; `remedy` is for one that has none."""
         parts = [self.plain_words(cells) for cells in columns]
         self.ids = ["_".join(record) if all(record) else "" for record in zip(*parts, strict=True)]
         rule = "each row needs a sample_id"
-        remedy = "fill in a name of its own"
         self.reject(header, self.ids, [Problem(at, rule, remedy) for at, name in enumerate(self.ids) if not name])
 
     def take_words(self, column: Column, cells: Sequence[str]) -> None:
@@ -174,5 +174,6 @@ def likely_slip(column: Column, house: float) -> str:
         if q.dimension in ("ph", "temperature") and q.soft_low <= house / power <= q.soft_high:
             return f"is it {value / power:g}? Check the decimal sign"
     if house < q.low == 0.0:
-        return "it cannot be below zero; leave it blank, or write <limit if it was below detection"
+        below = "write <limit if it was below detection" if q.below_limit else "correct it"
+        return f"it cannot be below zero; leave it blank, or {below}"
     return "check the unit in the header and the decimal sign"

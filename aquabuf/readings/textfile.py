@@ -12,7 +12,9 @@ from pathlib import Path
 
 from aquabuf.errors import FileError, InputError
 
-__all__ = ["TableFormat", "inspect_table", "open_records"]
+__all__ = ["Record", "TableFormat", "inspect_table", "open_records"]
+
+Record = tuple[int, list[str]]  # line in the file, fields
 
 DELIMITERS = {",": "comma", ";": "semicolon", "\t": "tab"}
 _SAMPLE_RECORDS = 300
@@ -163,7 +165,7 @@ def inspect_table(path: Path, *, encoding: str = "", delimiter: str = "", decima
     return TableFormat(encoding, delimiter, decimal, tuple(notes))
 
 
-def open_records(path: Path, form: TableFormat) -> Iterator[tuple[int, list[str]]]:
+def open_records(path: Path, form: TableFormat) -> Iterator[Record]:
     """Records of the table with the line each begins on (1 = first line of the file); blank ones are left out.
 
     Raises

@@ -1,11 +1,10 @@
-"""Figures of a sample set, on axes that are handed in and returned; the only module that needs Matplotlib."""
+"""Figures of a sample set, on axes that are handed in and returned."""
 
 from __future__ import annotations
 
 import warnings
 from collections.abc import Mapping
 from pathlib import Path
-from typing import Any
 
 import matplotlib
 import numpy as np
@@ -19,24 +18,15 @@ from numpy.typing import NDArray
 from aquabuf.assess.options import ALWAYS_ACID
 from aquabuf.assess.sample.headline import RANK_BY
 from aquabuf.assess.uncertainty import COVERAGE
+from aquabuf.report.style import CALM, CURVE_COLORS, FAINT, INK, STYLE, WARNED, short_name
 from aquabuf.report.tally import Tally
 
 __all__ = ["plot_alkalinity", "plot_buffering", "plot_curves", "plot_worst", "sample_figure", "save_samples"]
 
-# Distinct in gray print and to color-blind eyes
-CALM, WARNED, INK, FAINT = "#4a7ba6", "#c8553d", "#222222", "#b8b8b8"
-CURVE_COLORS = ("#c8553d", "#7a4e9e", "#2e7d6b", "#4a7ba6", "#9a6b1f", "#555555")
-BARS, CURVES, NAME_LENGTH = 12, 6, 22
+BARS, CURVES = 12, 6
 MANY_POINTS = 3000  # beyond, points shrink and are drawn as pixels inside the vector file
 WIDE = 10.0          # ratio of highest to lowest from which an axis is logarithmic
 LINEAR_BELOW = 0.05  # meq/L, linear part of the alkalinity axis
-
-STYLE: Any = {
-    "font.size": 9, "axes.titlesize": 10, "axes.titlelocation": "left", "axes.titleweight": "bold",
-    "axes.spines.top": False, "axes.spines.right": False, "axes.edgecolor": "#666666", "axes.linewidth": 0.8,
-    "xtick.color": INK, "ytick.color": INK, "legend.frameon": False, "legend.fontsize": 8,
-    "svg.fonttype": "none", "svg.hashsalt": "aquabuf", "figure.dpi": 100,
-}
 
 
 def _points(ax: Axes, x: NDArray, y: NDArray, warned: NDArray[np.bool_]) -> None:
@@ -89,12 +79,6 @@ def plot_buffering(ph: NDArray, buffer_meq_l_ph: NDArray, warned: NDArray[np.boo
     return ax
 
 
-def _name(sample_id: object) -> str:
-    """A sample's name as a label: short, and not hidden as names with a leading underscore would be."""
-    text = str(sample_id)[:NAME_LENGTH]
-    return f" {text}" if text.startswith("_") else text
-
-
 def plot_worst(worst: pd.DataFrame, *, ax: Axes) -> Axes:
     """Bars of the acid that brings the worst-buffered samples to pH 6, with their intervals."""
     table = worst.head(BARS)
@@ -106,7 +90,7 @@ def plot_worst(worst: pd.DataFrame, *, ax: Axes) -> Axes:
         low, high = (table[f"{RANK_BY}_{end}"].to_numpy(dtype=float) for end in ("low", "high"))
         ax.hlines(place, low, high, color=INK, lw=1.0)
     ax.axvline(0.0, color="#666666", lw=0.8)
-    ax.set_yticks(place, [_name(name) for name in table["sample_id"]], parse_math=False)
+    ax.set_yticks(place, [short_name(name) for name in table["sample_id"]], parse_math=False)
     ax.tick_params(axis="y", length=0)
     size = np.abs(value)
     if size.max() > WIDE * max(float(np.median(size)), LINEAR_BELOW):
@@ -125,7 +109,7 @@ def plot_curves(curves: pd.DataFrame, worst: pd.DataFrame, *, ax: Axes) -> Axes:
     for color, (_, sample) in zip(CURVE_COLORS, worst.head(CURVES).iterrows(), strict=False):
         curve = curves[curves["row"] == sample["row"]]
         added = curve["acid_added_meq_l"].to_numpy()
-        ax.plot(added, curve["ph"], color=color, lw=1.5, label=_name(sample["sample_id"]))
+        ax.plot(added, curve["ph"], color=color, lw=1.5, label=short_name(sample["sample_id"]))
         ax.plot(0.0, sample["ph"], "o", color=color, ms=4)
         reaches.append(max(1.5 * abs(sample[RANK_BY]), 1.2 * abs(sample["alkalinity_meq_l"])))
     reach = min(max(reaches), WIDE * float(np.median(reaches)), 5.0)  # one odd sample must not hide the others

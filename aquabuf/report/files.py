@@ -17,8 +17,9 @@ class OutputFolder:
     """Write files under temporary names in `folder` and give them their names once all are complete.
 
     As a context manager: leaving without an error publishes the files, leaving with one removes them. Files named in
-    `names` that exist already are refused unless `force`; with `force`, those not written again are removed, so that
-    a folder never mixes two runs. What a failed run left (exactly the `leftovers`) gives way without `force`.
+    `names` (where * stands for anything) that exist already are refused unless `force`; with `force`, those not written
+    again are removed, so that a folder never mixes two runs. What a failed run left (exactly the `leftovers`) gives way
+    without `force`.
     """
 
     def __init__(self, folder: Path, names: Iterable[str], *, force: bool, leftovers: Iterable[str] = ()):
@@ -36,15 +37,19 @@ class OutputFolder:
         except OSError as error:
             raise FileError(f"the folder {self.folder.name!r} cannot be made: {_why(error)}. "
                             f"Choose another with --out.") from None
-        for name in self._names:
+        for name in self._there():
             if (self.folder / name).is_dir():
                 raise FileError(f"{self.folder.name}/{name} is a folder, where a file is to be written. "
                                 f"Choose another folder with --out.")
-        there = [n for n in self._names if (self.folder / n).exists()]
+        there = self._there()
         if there and not self._force and set(there) != self._leftovers:
             raise FileError(f"{self.folder.name}/{there[0]} exists already and is not overwritten. "
                             f"Choose another folder with --out, or replace it with --force.")
         return self
+
+    def _there(self) -> list[str]:
+        """Files of this kind of run that are in the folder."""
+        return [path.name for name in self._names for path in sorted(self.folder.glob(name))]
 
     def part(self, name: str) -> Path:
         """Temporary path to write the file `name` to. Raises FileError where the folder cannot be written."""
@@ -80,7 +85,7 @@ class OutputFolder:
                 self.folder.rmdir()
             return
         try:
-            for name in self._names:
+            for name in self._there():
                 if name not in self._parts:
                     (self.folder / name).unlink(missing_ok=True)
             for name, path in self._parts.items():

@@ -17,16 +17,18 @@ from aquabuf.assess.limits_file import read_limits
 from aquabuf.assess.options import Options
 from aquabuf.assess.sample.assess import Assessment, assess
 from aquabuf.assess.sample.columns import limit_quantities
+from aquabuf.assess.sample.titrated import Titrated, titrated_by
 from aquabuf.errors import FileError, InputError
 from aquabuf.readings.mapping import read_map
 from aquabuf.readings.reader import iter_readings
+from aquabuf.readings.titration.paths import TitrationFiles
 from aquabuf.report.files import OutputFolder
 from aquabuf.report.summary import summary_text
 from aquabuf.report.tables import csv_text, result_digits, rounded
 from aquabuf.report.tally import Tally
 from aquabuf.tables import read_table
 
-__all__ = ["OUTPUT_FILES", "assess_file"]
+__all__ = ["OUTPUT_FILES", "assess_file", "sha256"]
 
 OUTPUT_FILES = ("results.csv", "verdicts.csv", "checks.csv", "curves.csv", "rejected.csv", "run.json", "samples.png",
                 "samples.svg")
@@ -37,19 +39,23 @@ ALL_CHECKS_UP_TO = 20_000  # samples; beyond, checks.csv holds the unmet ones on
 
 
 def assess_file(path: Path, folder: Path, options: Options, *, mapping: Path | None = None, limits: Path | None = None,
-                force: bool = False, figure: bool = True, notify: Callable[[str], None] = lambda text: None) -> str:
+                titrations: TitrationFiles | None = None, force: bool = False, figure: bool = True,
+                notify: Callable[[str], None] = lambda text: None) -> str:
     """Assess the table at `path`, write OUTPUT_FILES to `folder`, and return the summary text.
 
-    `notify` is told beforehand when the draws of a long table will take long.
+    `titrations` give the alkalinity of the samples they name, in place of any that the table has. `notify` is told
+    beforehand when the draws of a long table will take long.
 
     Raises InputError or FileError where the table as a whole cannot be used or no row is accepted; rejected.csv is
     still written then.
     """
     table_map = None if mapping is None else read_map(mapping)
     rules = read_limits(limits, limit_quantities(options))
-    hashes = {"readings": _sha256(path)} | {
-        name: _sha256(p) for name, p in (("map", mapping), ("limits", limits)) if p is not None}
+    hashes = {"readings": sha256(path)} | {
+        name: sha256(p) for name, p in (("map", mapping), ("limits", limits)) if p is not None}
+    hashes |= {f"titration {name}": sha256(p) for name, p in (titrations.given() if titrations else {}).items()}
     pieces = iter_readings(path, table_map, CHUNK_ROWS)
+    titrated = Titrated() if titrations is None else titrated_by(titrations)
     tally, few = Tally(), _fewer_rows_than(path, ALL_CHECKS_UP_TO)
     if not few and options.draws:
         minutes = ALL_CHECKS_UP_TO * options.draws * SECONDS_PER_DRAW / 60.0
@@ -59,7 +65,8 @@ def assess_file(path: Path, folder: Path, options: Options, *, mapping: Path | N
         writer = _Tables(out, options)
         with writer:
             for piece in pieces:
-                part = assess(piece, options, rules, only_unmet_checks=not few)
+                readings = piece if titrations is None else titrated.put_into(piece)
+                part = assess(readings, options, rules, only_unmet_checks=not few)
                 writer.write(part)
                 tally.add(part)
             writer.add("checks.csv", tally.file_checks())
@@ -76,6 +83,8 @@ def assess_file(path: Path, folder: Path, options: Options, *, mapping: Path | N
                 raise InputError(f"{failure} The earlier result is untouched; use another --out to see the reasons.")
             for name in ("results.csv", "verdicts.csv", "checks.csv"):
                 writer.drop(name)
+        if titrations is not None:
+            tally.titrations = titrated.in_words(titrations.points.name)
         record = _record(path.name, hashes, options, rules, tally, all_checks=few)
         out.part("run.json").write_text(json.dumps(record, indent=1, ensure_ascii=False) + "\n", encoding="utf-8")
         written = [name for name in OUTPUT_FILES if name in out.written]
@@ -128,7 +137,7 @@ def _draw(tally: Tally, curves: pd.DataFrame, out: OutputFolder, source: str) ->
     save_samples(tally, curves, {kind: out.part(f"samples.{kind}") for kind in ("png", "svg")}, source=source)
 
 
-def _sha256(path: Path) -> str:
+def sha256(path: Path) -> str:
     """Hash of a file. Raises FileError where it cannot be read."""
     if path.is_dir():
         raise FileError(f"{path.name} is a folder; a file is needed. Name the file in it.")
@@ -161,7 +170,7 @@ def _record(name: str, hashes: Mapping[str, str], options: Options, limits: tupl
         "samples": {"assessed": tally.assessed, "warned": tally.warned, "refused_rows": len(tally.refused_rows)},
         "known_pairs": dict(sorted(tally.pairs.items())), "status": dict(sorted(tally.statuses.items())),
         "ionic_strength_from": dict(sorted(tally.strengths.items())),
-        "checks_listed": "all" if all_checks else "unmet only",
+        "titrations": tally.titrations, "checks_listed": "all" if all_checks else "unmet only",
         "constants": [dict(row) for row in read_table("constants") if row["regime"] in regimes],
         "limits": [{"name": x.name, "rule": x.rule(), "kinds": list(x.kinds), "regimes": list(x.regimes),
                     "source": x.source} for x in limits],

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+from importlib.resources import files
 
 from aquabuf.assess.limits import shipped_limits
 from aquabuf.errors import InputError
@@ -11,20 +12,23 @@ from aquabuf.readings.template import template, template_kinds
 __all__ = ["starter", "starter_kinds"]
 
 LIMITS_KIND = "limits"
+TITRATION_KINDS = ("titration_points", "titration_samples")
 
 
 def starter(kind: str) -> str:
     """Text of a starter file. Raises InputError for an unknown kind, naming those there are."""
     if kind == LIMITS_KIND:
         return _limits_text()
+    if kind in TITRATION_KINDS:
+        return (files("aquabuf") / "data" / f"starter_{kind}.csv").read_text(encoding="utf-8")
     if kind not in starter_kinds():
         raise InputError(f"no starter file is named {kind!r}. Use one of: {', '.join(starter_kinds())}.")
     return template(kind)
 
 
 def starter_kinds() -> list[str]:
-    """Kinds of starter file: tables of readings, then the two settings files."""
-    return [*template_kinds(), LIMITS_KIND]
+    """Kinds of starter file: tables of readings, the two settings files, and the two tables of titrations."""
+    return [*template_kinds(), LIMITS_KIND, *TITRATION_KINDS]
 
 
 def _limits_text() -> str:

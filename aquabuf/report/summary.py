@@ -7,7 +7,7 @@ from collections.abc import Iterable, Sequence
 
 import pandas as pd
 
-from aquabuf.assess.limits import UNSTATED, Limit
+from aquabuf.assess.limits import ANY, UNSTATED, Limit
 from aquabuf.assess.options import Options
 from aquabuf.assess.sample.headline import RANK_BY, TEST_ACID_EQ_L
 from aquabuf.assess.sample.quality import allowed, check_facts
@@ -16,7 +16,7 @@ from aquabuf.chem.gases import AIR_CO2_PPM, AIR_CO2_YEAR
 from aquabuf.report.tally import Tally
 from aquabuf.tables import read_table
 
-__all__ = ["summary_text"]
+__all__ = ["cautions", "item", "plural", "summary_text"]
 
 WIDTH = 100
 WORST_SHOWN = 8
@@ -33,18 +33,20 @@ def summary_text(tally: Tally, options: Options, limits: Sequence[Limit], *, sou
     return "\n\n".join(b for b in blocks if b) + "\n"
 
 
-def _plural(count: int, noun: str) -> str:
+def plural(count: int, noun: str) -> str:
+    """A count with its noun."""
     return f"{count:,} {noun}{'' if count == 1 else 's'}"
 
 
-def _item(text: str, mark: str = "  - ") -> str:
+def item(text: str, mark: str = "  - ") -> str:
+    """A wrapped line of a list."""
     return textwrap.fill(text, WIDTH, initial_indent=mark, subsequent_indent=" " * len(mark))
 
 
 def _head(tally: Tally, source: str) -> str:
     refused = len(tally.refused_rows)
-    return (f"{source}: {_plural(tally.assessed, 'sample')} assessed, {tally.warned:,} with a warning, "
-            f"{_plural(refused, 'row')} refused.")
+    return (f"{source}: {plural(tally.assessed, 'sample')} assessed, {tally.warned:,} with a warning, "
+            f"{plural(refused, 'row')} refused.")
 
 
 def _warnings(tally: Tally, limits: Sequence[Limit]) -> str:
@@ -53,7 +55,7 @@ def _warnings(tally: Tally, limits: Sequence[Limit]) -> str:
     lines = ["Warnings"]
     for limit in limits:
         if limit.name in tally.warnings:
-            lines.append(_item(f"{tally.warnings[limit.name]:,} x {limit.name}: {limit.words} "
+            lines.append(item(f"{tally.warnings[limit.name]:,} x {limit.name}: {limit.words} "
                                f"[{limit.rule()}; {_short(limit.source)}]"))
     return "\n".join(lines)
 
@@ -97,11 +99,11 @@ def _quality(tally: Tally) -> str:
     lines = []
     for name, fact in facts.items():
         if tally.unmet[name]:
-            lines.append(_item(f"{tally.unmet[name]:,} of {tally.made[name]:,} fail {name} "
+            lines.append(item(f"{tally.unmet[name]:,} of {tally.made[name]:,} fail {name} "
                                f"({allowed(fact)}): {fact['remedy']}."))
     for r in tally.file_checks().itertuples():
         if r.met == "no":
-            lines.append(_item(f"{r.check}: {r.value:.4g} {r.unit}, should be {r.limit}: {r.remedy}."))
+            lines.append(item(f"{r.check}: {r.value:.4g} {r.unit}, should be {r.limit}: {r.remedy}."))
     if not lines:
         return "Quality: every check that could be made is met."
     return "\n".join(["Quality (checks.csv has each sample)", *dict.fromkeys(lines)])
@@ -110,9 +112,9 @@ def _quality(tally: Tally) -> str:
 def _refused(tally: Tally) -> str:
     if not tally.refused_rows:
         return ""
-    lines = [f"Refused: {_plural(len(tally.refused_rows), 'row')} (rejected.csv names row, column, value and remedy)"]
+    lines = [f"Refused: {plural(len(tally.refused_rows), 'row')} (rejected.csv names row, column, value and remedy)"]
     common = tally.refusal_rules.most_common(REASONS_SHOWN)
-    lines += [_item(f"{count:,} x {column}: {rule}") for (column, rule), count in common]
+    lines += [item(f"{count:,} x {column}: {rule}") for (column, rule), count in common]
     if len(tally.refusal_rules) > REASONS_SHOWN:
         lines.append(f"  - and {len(tally.refusal_rules) - REASONS_SHOWN} more reasons")
     return "\n".join(lines)
@@ -121,7 +123,7 @@ def _refused(tally: Tally) -> str:
 def _notes(tally: Tally) -> str:
     """What the reader noticed and did: cells below detection, filled in, left out."""
     lines = [*tally.notes, *(f"{count:,} x {what}: {column}" for (what, column), count in tally.flags.items())]
-    return "\n".join(["Readings", *(_item(line) for line in lines)]) if lines else ""
+    return "\n".join(["Readings", *(item(line) for line in lines)]) if lines else ""
 
 
 def _counted(counter) -> str:
@@ -137,7 +139,8 @@ def _assumptions(tally: Tally, options: Options) -> str:
     intervals = (f"{COVERAGE:.0%} intervals from {options.draws:,} seeded draws (seed {options.seed}) of the readings' "
                  f"own or default uncertainties (`aquabuf columns NAME` shows them); constants are taken as exact"
                  if options.draws else "No intervals (--draws 0)")
-    lines = [f"Exchange {state}; {air}.", f"Known pair: {_counted(tally.pairs)}." if tally.pairs else "",
+    lines = [f"Exchange {state}; {air}.", *tally.titrations,
+             f"Known pair: {_counted(tally.pairs)}." if tally.pairs else "",
              f"Ionic strength from: {_counted(tally.strengths)}." if tally.strengths else "",
              "Alkalinity is the proton deficit at pH 4.5 zero level; pH is on the meter scale unless a column says so. "
              "Air pressure is 1 atm where neither pressure nor elevation is given.",
@@ -148,18 +151,22 @@ def _assumptions(tally: Tally, options: Options) -> str:
     odd = {s: c for s, c in tally.statuses.items() if s != "ok"}
     if odd:
         lines.append("Status other than ok: " + ", ".join(f"{s} {c:,}" for s, c in odd.items()) + ".")
-    return "\n".join(["What the answers rest on", *(_item(line) for line in lines if line)])
+    return "\n".join(["What the answers rest on", *(item(line) for line in lines if line)])
 
 
 def _cautions(tally: Tally) -> str:
     kinds = {kind or UNSTATED for kind in tally.kinds}
-    lines = [row["words"] for row in read_table("cautions")
-             if row["kinds"] == "any" or kinds & set(row["kinds"].split(";"))]
-    return "\n".join(["Cautions", *(_item(line) for line in lines)])
+    return "\n".join(["Cautions", *(item(line) for line in cautions("assess", kinds))])
+
+
+def cautions(command: str, kinds: Iterable[str] = ()) -> list[str]:
+    """The cautions that belong to a command and to these kinds of water."""
+    return [row["words"] for row in read_table("cautions") if row["command"] == command
+            and (row["kinds"] == ANY or set(kinds) & set(row["kinds"].split(";")))]
 
 
 def _next(tally: Tally, limits: Sequence[Limit], files: Iterable[str]) -> str:
     steps = [limit.next_step for limit in limits if limit.next_step and tally.warnings[limit.name]]
-    lines = [_item(f"{step[0].upper()}{step[1:]}.") for step in dict.fromkeys(steps)]
-    lines.append(_item(f"Written: {', '.join(files)}."))
+    lines = [item(f"{step[0].upper()}{step[1:]}.") for step in dict.fromkeys(steps)]
+    lines.append(item(f"Written: {', '.join(files)}."))
     return "\n".join(["Next", *lines])

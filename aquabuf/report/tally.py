@@ -53,6 +53,7 @@ class Tally:
     flags: Counter = field(default_factory=Counter)
     rounding: dict[str, Rounding] = field(default_factory=dict)
     duplicates: int = 0
+    titrations: list[str] = field(default_factory=list)  # what titrations gave, in words
     _candidates: list[tuple[pd.DataFrame, Inputs]] = field(default_factory=list)
     _ranks: np.ndarray = field(default_factory=lambda: np.empty(0))
     drawn: list[np.ndarray] = field(default_factory=list)

@@ -72,6 +72,7 @@ def test_a_plain_file_needs_no_note(table):
         (b'sample_id,ph\na,7\nb,"7\nc,7\n', FileError, r"table\.csv, line 4: the fields cannot be told apart .*quotation marks"),
         (b"sample_id;ph\na;7,5\nb;7.5\n", InputError, r"equally common in the first rows \(e\.g\. '7,5'\).*decimal = "),
         (b"sample_id;anc_ueq_l\na;1,234\nb;2,500\n", InputError, r"'1,234' can be a decimal comma or a thousands separator"),
+        (b",,\n", HeaderError, r"the header line has no names\. The first line that is no comment must name"),
         (b" , \n1,2\n", InputError, r"the header line has no names\. The first line that is no comment must name"),
         (b"ph,calcium_mg_l\n7,1\n", HeaderError, r"has no column sample_id, and each row needs a name\. .*\[compose\]"),
         (b"sample_id,ph,ph\na,7,7\n", HeaderError, r"two columns have the same header 'ph'"),

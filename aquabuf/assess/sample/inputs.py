@@ -19,8 +19,8 @@ from aquabuf.readings.result import UserAcid
 from aquabuf.readings.schema import quantities
 from aquabuf.units import substances
 
-__all__ = ["MAJOR_IONS", "PH_COLUMNS", "Values", "alkalinity_reading", "alkalinity_source", "ionic_strength",
-           "own_acids", "pressure", "reading", "uncertainties", "values_of", "water_keywords"]
+__all__ = ["MAJOR_IONS", "PH_COLUMNS", "TITRATED_BY", "Values", "alkalinity_reading", "alkalinity_source",
+           "ionic_strength", "own_acids", "pressure", "reading", "uncertainties", "values_of", "water_keywords"]
 
 Array = NDArray[np.float64]
 Values = Mapping[str, Array]
@@ -28,6 +28,7 @@ Values = Mapping[str, Array]
 PH_COLUMNS = {"ph": "meter", "ph_total": "total", "ph_seawater": "seawater", "ph_free": "free"}
 NAN_HAS_MEANING = (*IONS, "boron", "sulfate", "fluoride")  # to the engine; other acids not measured count as none
 MAJOR_IONS = ("calcium", "magnesium", "sodium", "chloride", "sulfate")  # needed before ions give ionic strength
+TITRATED_BY = "titrated_by"  # column of the readings: method of the titration, "" where there was none
 OWN_ACID_U_REL = 0.05  # common practice, as for the shipped acids
 STRENGTH_PER_CONDUCTIVITY = 1.6e-5  # mol/L per µS/cm at 25 °C; Russell 1976 (recalled)
 STRENGTH_PER_TDS = 2.5e-5           # mol/L per mg/L; Langelier 1936

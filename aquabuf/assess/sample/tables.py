@@ -14,7 +14,7 @@ from aquabuf.assess.limits import Limit
 from aquabuf.assess.options import Options
 from aquabuf.assess.sample.columns import AS_GIVEN, result_columns
 from aquabuf.assess.sample.draws import Intervals
-from aquabuf.assess.sample.inputs import alkalinity_source, ionic_strength
+from aquabuf.assess.sample.inputs import TITRATED_BY, alkalinity_source, ionic_strength
 from aquabuf.assess.sample.solve import PAIRS, PH_AIR
 from aquabuf.engine.conditions import FRESH_BELOW, LIMITS
 
@@ -53,9 +53,18 @@ def _words(kept: pd.DataFrame, figures: Mapping[str, NDArray], values: Mapping[s
     return {name: kept[name].to_numpy() for name in AS_GIVEN if name in kept} | {
         "status": worded(n, (flagged, "outside range"), (from_air, "carbon from air"), default="ok"),
         "status_reason": worded(n, (flagged, OUTSIDE_RANGE), *_beyond(figures), (from_air, CARBON_FROM_AIR)),
-        "ionic_strength_from": ionic_strength(values)[1], "alkalinity_from": alkalinity_source(values),
+        "ionic_strength_from": ionic_strength(values)[1], "alkalinity_from": _alkalinity_from(kept, values),
         "warnings": warnings,
     }
+
+
+def _alkalinity_from(kept: pd.DataFrame, values: Mapping[str, NDArray]) -> NDArray[np.object_]:
+    """Where each alkalinity comes from: as measured, computed, or a titration and the method it was worked out by."""
+    source = alkalinity_source(values)
+    if TITRATED_BY not in kept:
+        return source
+    method = kept[TITRATED_BY].to_numpy(dtype=object)
+    return np.where(method != "", source + " by titration (" + method + ")", source)
 
 
 def _beyond(figures: Mapping[str, NDArray]) -> list[tuple[NDArray[np.bool_], str]]:

@@ -25,7 +25,8 @@ class TitrationResult:
 
     results : one row per sample, refused ones too; columns of alkalinity.csv.
     findings : one row per finding. rejected : reasons of refusal. solved : all that was worked out, for figures.
-    at : place in `results` of each titration in `solved`. choice : recommended results. kinds : number of each assumption.
+    at : place in `results` of each titration in `solved`. choice : recommended results.
+    found : findings before they became a table. assumed : how many titrations rest on each assumption, in words.
     """
 
     results: pd.DataFrame
@@ -38,7 +39,8 @@ class TitrationResult:
     assumed: Mapping[str, int]
 
 
-def assess_titrations(t: Titrations, options: TitrationOptions, *, by_liter: bool, by_kilogram: bool) -> TitrationResult:
+def assess_titrations(t: Titrations, options: TitrationOptions, *, by_liter: bool, by_kilogram: bool,
+                      ) -> TitrationResult:
     """Assess the titrations of `t`; `by_liter` and `by_kilogram` say which columns the table is to have."""
     s = solve_titrations(t, options)
     choice = choose(s)
@@ -72,6 +74,8 @@ def _assumed(s: Solved) -> dict[str, int]:
         "ionic strength from the alkalinity alone (no conductivity, salinity or ions)":
             np.isnan(s.curves.ionic_strength_mol_l) & blank("salinity"),
         "filtered or not is not stated": blank("filtered"),
+        "no standards: the zero potential is taken from the acid end of the curve, so the strength is not checked":
+            s.curves.is_potential & (s.calibration.standards == 0),
         "density of the titrant not stated: 1 kg/L": blank("titrant_density_kg_l") & s.curves.needs_density,
     }
     return {words: int(mask.sum()) for words, mask in cases.items() if mask.any()}

@@ -11,7 +11,13 @@ from numpy.typing import NDArray
 
 from aquabuf.assess.titration.options import ALWAYS_END_POINT
 from aquabuf.assess.titration.solve import Estimate, Solved, text_of, value_of
-from aquabuf.chem.organic import OLIVER_SITES_EQ_PER_MG
+from aquabuf.assess.titration.strength import (
+    GOOD_CHI2,
+    doubt_in_words,
+    organic_sites,
+    strength_doubtful,
+    unresolved,
+)
 from aquabuf.engine.conditions import FRESH_BELOW
 from aquabuf.tables import read_table
 
@@ -22,8 +28,7 @@ Array = NDArray[np.float64]
 DILUTE_BELOW_EQ = 4e-4      # alkalinity below which an inflection cannot be told; US Geological Survey field manual
 DILUTE_BELOW_PH = 7.0       # the same source
 DILUTE_BELOW_US_CM = 100.0  # the same source
-ORGANIC_SHARE = 0.1         # of alkalinity that organic acid sites may be; the source says "appreciable", the figure is ours
-MOST_CHI2 = 5.0             # reduced, of a fit that is still recommended
+ORGANIC_SHARE = 0.1         # of alkalinity that organic acid sites may be; the source says "appreciable"
 MOST_U_OFFSET = 0.3         # pH; beyond, the curve does not tell offset from alkalinity
 MOST_STEP_PH = 1.2          # around a fixed end point that is still recommended
 LEAST_RESOLVED = 0.05       # uncertainty over value of an inflection that is still recommended
@@ -44,8 +49,8 @@ def method_key(name: str) -> str:
 class Choice:
     """Recommended result per titration: value and standard uncertainty [eq per unit of sample], method, reason.
 
-    water : kind of water that decided. own_problem : why the user's own method cannot work here, "" where it can or none
-    was named.
+    water : kind of water that decided. own_problem : why the user's own method cannot work here, "" where it can or
+    none was named. able : where each method can be recommended, and why not elsewhere.
     """
 
     value: Array
@@ -54,6 +59,7 @@ class Choice:
     reason: NDArray[np.object_]
     water: NDArray[np.object_]
     own_problem: NDArray[np.object_]
+    able: Mapping[str, tuple[NDArray[np.bool_], NDArray[np.object_]]]
 
 
 def best_guess(s: Solved) -> Array:
@@ -88,11 +94,6 @@ def water_kinds(s: Solved) -> tuple[NDArray[np.object_], NDArray[np.object_]]:
     return kind, detail
 
 
-def organic_sites(s: Solved) -> Array:
-    """Acid sites of the organic carbon, 0 where it was not measured. [eq/L]"""
-    return OLIVER_SITES_EQ_PER_MG * np.nan_to_num(value_of(s.samples, "doc_mg_l", s.curves.count.size))
-
-
 def able(s: Solved, kind: NDArray[np.object_]) -> dict[str, tuple[NDArray[np.bool_], NDArray[np.object_]]]:
     """Where each method can be recommended, and why not elsewhere."""
     n = s.curves.count.size
@@ -115,7 +116,7 @@ def _limits(s: Solved, name: str, e: Estimate, kind: NDArray[np.object_]) -> lis
             return [(~s.gran.straight, "its points do not lie on a line")]
         if name == "fit":
             return [(s.fit.u_offset > MOST_U_OFFSET, "the points do not tell electrode offset from alkalinity"),
-                    (s.fit.fit.reduced_chi2 > MOST_CHI2, "the curve does not fit")]
+                    (s.fit.fit.reduced_chi2 > GOOD_CHI2, "the curve does not fit")]
         if name == "inflection":
             return [(kind == "dilute", "not below pH 7, 400 µeq/L or 100 µS/cm, or with organic acids"),
                     (e.own_u > LEAST_RESOLVED * np.abs(e.value), "steps too coarse to tell it")]
@@ -130,7 +131,7 @@ def _limits(s: Solved, name: str, e: Estimate, kind: NDArray[np.object_]) -> lis
 
 
 def choose(s: Solved) -> Choice:
-    """Recommended method of each titration: the user's own where it can work, else the first able one for this water."""
+    """Recommended method of each titration: the user's own where it can work, else the first able one for the water."""
     n = s.curves.count.size
     kind, detail = water_kinds(s)
     can = able(s, kind)
@@ -144,13 +145,19 @@ def choose(s: Solved) -> Choice:
     for water, facts in method_facts("water").items():
         for name in facts["order"].split(";"):
             method[(kind == water) & (method == "") & can[name][0]] = name
-    method[s.curves.is_base] = ""
+    base, doubtful = s.curves.is_base, strength_doubtful(s)
+    method[base] = np.where(can["gran"][0][base], "gran", "")
+    method[doubtful] = ""
     value, u = np.full(n, np.nan), np.full(n, np.nan)
     for name in can:
         at, e = method == name, s.estimates[method_key(name)]
         value[at], u[at] = e.value[at], e.u[at]
-    reason = np.array([_reason(s, i, method[i], kind[i], detail[i], can, bool(by_wish[i])) for i in range(n)], dtype=object)
-    return Choice(value, u, method, reason, kind, problem)
+    # evenly likely from no error of the strength to all that the slope shows
+    strength = np.where(unresolved(s), np.abs(s.gran.slope_ratio - 1.0) / np.sqrt(3.0), 0.0)
+    u = np.hypot(u, strength * np.abs(value))
+    reason = [doubt_in_words(s, i) if doubtful[i]
+              else _reason(s, i, method[i], kind[i], detail[i], can, bool(by_wish[i])) for i in range(n)]
+    return Choice(value, u, method, np.array(reason, dtype=object), kind, problem, can)
 
 
 def _reason(s: Solved, i: int, method: str, kind: str, detail: str, can: Mapping, by_wish: bool) -> str:
@@ -158,7 +165,8 @@ def _reason(s: Solved, i: int, method: str, kind: str, detail: str, can: Mapping
     facts = method_facts("water")[kind]
     water = facts["words"] + (f" ({detail})" if detail else "")
     if s.curves.is_base[i]:
-        return "titrated with base: see the acidity columns"
+        line = f"; its free acid by the Gran line, {_quality(s, i, method)}" if method else ""
+        return f"titrated with base: see the acidity columns{line}"
     skipped = [f"{method_facts('method')[name]['words']}: {can[name][1][i]}"
                for name in facts["order"].split(";") if can[name][1][i]]
     if not method:
@@ -183,6 +191,8 @@ def _quality(s: Solved, i: int, method: str) -> str:
         return f"{f.points[i]} points, electrode offset {f.fit.offset_ph[i]:+.3f}"
     if method == "inflection":
         return f"known to {s.inflection.resolution[i] * 1e6:.3g} µeq per unit of sample by the steps"
-    found, end = (s.level, s.level_ph[i]) if method == "fixed_level" else (s.crossings[ALWAYS_END_POINT], ALWAYS_END_POINT)
+    if method == "fixed_level":
+        return f"pH {s.level_ph[i]:g}, points {s.level.step_ph[i]:.2f} pH apart there"
+    found, end = s.crossings[ALWAYS_END_POINT], ALWAYS_END_POINT
     return f"pH {end:g}, points {found.step_ph[i]:.2f} pH apart there"
 

@@ -12,10 +12,8 @@ from aquabuf.arrays import LN10
 from aquabuf.assess.sample.inputs import STRENGTH_PER_CONDUCTIVITY
 from aquabuf.assess.titration.calibrate import nernst_mv_per_ph
 from aquabuf.chem.properties import seawater_density
-
 from aquabuf.readings.schema import Quantity, titration_quantities
 from aquabuf.readings.titration.result import COUNTS_PER_ML, Titrations
-
 
 __all__ = ["ASSUMED_PH_SCATTER", "ASSUMED_T_C", "Curves", "curves_of", "u_of"]
 
@@ -121,8 +119,9 @@ def curves_of(t: Titrations) -> Curves:
         acid=per_added[:, None] * padded["added"],
         dilution=sample[:, None] / (sample[:, None] + titrant_per_added[:, None] * padded["added"]),
         per_added=per_added, relative_u=relative_u, u_acid=np.abs(per_added) * u_added,
-        u_ph_scatter=value("ph_scatter", ASSUMED_PH_SCATTER), u_ph=_shared_ph_u(values, value, potential, relative_u, t_c),
-        drift=drift, by_mass=by_mass, added_mass=added_mass, is_base=is_base, is_potential=potential, strength=strength, sample=sample,
+        u_ph_scatter=value("ph_scatter", ASSUMED_PH_SCATTER),
+        u_ph=_shared_ph_u(values, value, potential, relative_u, t_c), drift=drift, by_mass=by_mass,
+        added_mass=added_mass, is_base=is_base, is_potential=potential, strength=strength, sample=sample,
         needs_density=(added_mass != by_mass) | (added_mass != np.isfinite(value("titrant_strength_eq_kg"))),
         t_c=t_c, salinity=salinity, density_kg_l=density,
         ionic_strength_mol_l=np.where(np.isfinite(value("ionic_strength_mol_l")), value("ionic_strength_mol_l"),

@@ -1,7 +1,7 @@
 """Where a titration curve passes a pH, and what follows from such end points.
 
-Acid is counted per unit of sample [eq/L or eq/kg], negative for base; arrays are titrations times points with nan behind
-the last point. pH falls along the points (of a base titration it rises: mirror it first).
+Acid is counted per unit of sample [eq/L or eq/kg], negative for base; arrays are titrations times points with nan
+behind the last point. pH falls along the points (of a base titration it rises: mirror it first).
 """
 
 from __future__ import annotations

@@ -9,25 +9,24 @@ from functools import cache
 import numpy as np
 from numpy.typing import NDArray
 
-from aquabuf.arrays import LN10
 from aquabuf.assess.titration.choose import Choice, best_guess
 from aquabuf.assess.titration.convert import fixed_to_proton_balance
 from aquabuf.assess.titration.options import ALWAYS_END_POINT
 from aquabuf.assess.titration.solve import Solved, text_of, value_of
+from aquabuf.assess.titration.strength import slope_off, strength_doubtful, what_tells
 from aquabuf.tables import read_table
 
 __all__ = ["Finding", "finding_facts", "findings"]
 
 Array = NDArray[np.float64]
 
-LEAST_SLOPE_ERROR = 0.05
 SIGMAS = 2.0
 DISAGREE_SIGMAS = 2.5
 LEAST_TURN = 0.05          # pH
 TURN_SIGMAS = 4.0
 OFF_CURVE = (6.0, 0.08)    # times scatter, pH
 WINDOW_MATTERS = (5e-6, 0.04)  # eq per unit of sample, share of the result
-EXPLAINED = 0.12           # of the logarithm of a slope ratio that the offset of the fit leaves; about a quarter
+OFFSET_SPOILS = 0.1        # pH; an electrode farther off spoils every fixed end point
 MILLIVOLT_DRIFT = 59.0     # mV per pH, to judge drift by one limit
 
 
@@ -61,8 +60,8 @@ def findings(s: Solved, choice: Choice) -> tuple[Finding, ...]:
     return tuple(found[name] for name in finding_facts() if name in found)
 
 
-def _finding(name: str, here: NDArray, value: Array, *, point: NDArray | None = None, more: NDArray | None = None,
-             ) -> Finding:
+def _finding(name: str, here: NDArray, value: Array | float, *, point: NDArray | None = None,
+             more: NDArray | None = None) -> Finding:
     n = here.size
     return Finding(name, here.astype(bool), np.broadcast_to(np.asarray(value, dtype=float), (n,)),
                    np.full(n, -1, dtype=np.intp) if point is None else point,
@@ -79,37 +78,13 @@ def _outside(name: str, value: Array, where: NDArray | bool = True) -> Finding:
 def _strength(s: Solved, choice: Choice) -> Iterator[Finding]:
     """Is the titrant what it is said to be?"""
     c, ratio = s.curves, s.gran.slope_ratio
-    checked = np.isfinite(ratio) & ~(c.is_potential & (s.calibration.standards == 0))
-    with np.errstate(invalid="ignore", divide="ignore"):
-        limit = np.maximum(SIGMAS * np.hypot(c.relative_u, LN10 * c.u_ph), LEAST_SLOPE_ERROR)
-        off = np.abs(np.log(ratio)) > limit
-    doubtful = _outside("strength doubtful", ratio, checked)
-    yield _finding(doubtful.name, doubtful.here, ratio, more=_what_tells(s, doubtful.here))
-    slope = checked & off & ~doubtful.here
-    yield _finding("Gran slope", slope, ratio, more=_what_tells(s, slope))
+    yield _finding("strength doubtful", strength_doubtful(s), ratio)
+    slope = slope_off(s)
+    yield _finding("Gran slope", slope, ratio, more=what_tells(s, slope))
     yield _outside("strength outside usual", c.strength)
     conductivity = value_of(s.samples, "conductivity_us_cm", c.count.size)
     with np.errstate(invalid="ignore", divide="ignore"):
         yield _outside("alkalinity against conductivity", best_guess(s) * 1e6 / conductivity, conductivity > 0.0)
-
-
-def _what_tells(s: Solved, here: NDArray[np.bool_]) -> NDArray[np.object_]:
-    """Whether the bicarbonate part of the curve sides with the electrode or with the strength."""
-    offset, u = s.fit.fit.offset_ph, s.fit.u_offset
-    ratio = s.gran.slope_ratio
-    more = np.full(here.size, "", dtype=object)
-    for i in np.flatnonzero(here & np.isfinite(offset)).tolist():
-        left = float(np.log10(ratio[i]) + offset[i])
-        if abs(left) < EXPLAINED and u[i] < EXPLAINED:
-            more[i] = (f"the bicarbonate part of the curve shows the same electrode offset ({offset[i]:+.2f} pH): it is the "
-                       f"electrode, if no CO2 was lost, and the Gran result stands")
-        elif abs(offset[i]) < EXPLAINED and u[i] < EXPLAINED:
-            more[i] = (f"the bicarbonate part of the curve finds the electrode right: it is the strength, if no CO2 was "
-                       f"lost, and the true result is about {ratio[i]:.2f} times the one given")
-        else:
-            more[i] = (f"the bicarbonate part of the curve (electrode {offset[i]:+.2f} pH) explains it in part only; if the "
-                       f"strength is wrong, the result is wrong by the same factor")
-    return more
 
 
 def _course(s: Solved, choice: Choice) -> Iterator[Finding]:
@@ -120,7 +95,7 @@ def _course(s: Solved, choice: Choice) -> Iterator[Finding]:
     with np.errstate(invalid="ignore"):
         lowest = np.nanmin(np.where(np.isfinite(s.ph), s.ph, np.inf), axis=1, initial=np.inf)
     yield _outside("stops too soon", lowest, ~c.is_base & np.isfinite(lowest))
-    yield _outside("coarse end point", s.crossings[ALWAYS_END_POINT].step_ph)
+    yield _outside("coarse end point", s.crossings[ALWAYS_END_POINT].step_ph, ~s.purged)
     drift = c.drift / np.where(c.is_potential, MILLIVOLT_DRIFT, 1.0)
     yield _outside("drift", drift)
     took = np.nanmax(np.where(np.isfinite(c.minutes), c.minutes, -np.inf), axis=1, initial=-np.inf)
@@ -207,7 +182,6 @@ def _electrode(s: Solved, choice: Choice) -> Iterator[Finding]:
     offset = _outside("electrode offset", np.abs(found), clear & ~(c.is_potential & (k.standards == 0)))
     yield _finding(offset.name, offset.here, found)
     yield _outside("electrode slope", 100.0 * k.efficiency, c.is_potential & (k.standards > 1))
-    yield _finding("zero from the acid", c.is_potential & (k.standards == 0), k.zero_mv)
 
 
 def _methods(s: Solved, choice: Choice) -> Iterator[Finding]:
@@ -215,13 +189,18 @@ def _methods(s: Solved, choice: Choice) -> Iterator[Finding]:
     n = s.curves.count.size
     fixed = s.estimates[f"fixed_{ALWAYS_END_POINT:g}"]
     balanced = fixed_to_proton_balance(s)
-    able = choice.water != "dilute"
+    able, kept = choice.water != "dilute", ~s.purged  # CO2 swept out on the way leaves no curve to read end points from
+    with np.errstate(invalid="ignore"):
+        electrode = ~(np.abs(s.fit.fit.offset_ph) > OFFSET_SPOILS)
     candidates = {
-        "Gran line": (s.estimates["gran"].value, s.estimates["gran"].own_u, s.gran.straight),
-        "fit": (s.estimates["fit"].value, s.estimates["fit"].own_u, True),
-        "inflection": (s.estimates["inflection"].value, s.estimates["inflection"].own_u, able),
-        "end point 4.5 (proton balance)": (balanced, fixed.own_u, s.crossings[ALWAYS_END_POINT].step_ph < 0.8),
-        "two end points": (s.estimates["two_point"].value, s.estimates["two_point"].own_u, ~able),
+        "Gran line": (s.estimates["gran"].value, s.estimates["gran"].own_u,
+                      s.gran.straight & (choice.water != "salt")),
+        "fit": (s.estimates["fit"].value, s.estimates["fit"].own_u, kept),
+        "acid in excess": (s.estimates["acid_excess"].value, s.estimates["acid_excess"].own_u, ~kept),
+        "inflection": (s.estimates["inflection"].value, s.estimates["inflection"].own_u, able & kept),
+        "end point 4.5 (proton balance)": (balanced, fixed.own_u,
+                                           kept & electrode & (s.crossings[ALWAYS_END_POINT].step_ph < 0.8)),
+        "two end points": (s.estimates["two_point"].value, s.estimates["two_point"].own_u, ~able & kept),
     }
     worst, words = np.zeros(n), np.full(n, "", dtype=object)
     names = list(candidates)

@@ -10,7 +10,7 @@ from dataclasses import dataclass, fields, replace
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.stats import chi2
+from scipy.special import chdtri
 
 from aquabuf.arrays import LN10
 from aquabuf.engine.titrate import Points
@@ -21,7 +21,7 @@ Array = NDArray[np.float64]
 
 GRAN_PH = (2.7, 4.6)     # where free acid outweighs bicarbonate, and activity and bisulfate are still small corrections
 FEWEST = 3               # points on a line
-LEAST_SPAN_PH = 0.4      # of a window: free acid more than doubles, so that the line has something to stand on
+LEAST_SPAN_PH = 0.3      # of a window: free acid doubles, so that the line has something to stand on
 LEAST_FREE_ACID = 5e-6   # eq per unit of sample, taken for points that lie before a first guess of the end point
 MOST_LENGTHS = 40        # lengths of window that are tried in a long titration
 NOT_BY_CHANCE = 0.01     # probability of so much scatter, below which points are called curved
@@ -50,12 +50,13 @@ class Line:
 class Gran:
     """First Gran function of each titration; nan where no window of points will do.
 
-    acid : root: the alkalinity. u_line : standard uncertainty from the scatter of the points. u_bias : from bicarbonate,
-    bisulfate and weak acids left. u_window : spread of the roots of all admissible windows beyond what scatter gives them.
-    [eq per unit of sample]
+    acid : root: the alkalinity. u_line : standard uncertainty from the scatter of the points. u_bias : from
+    bicarbonate, bisulfate and weak acids left. u_window : spread of the roots of all admissible windows beyond what
+    scatter gives them. [eq per unit of sample]
     low, high : least and greatest root of the admissible windows; count : their number.
-    first, last : index of the first and last point of the chosen window. slope_ratio : slope over theory. r : of the line.
-    reduced_chi2 : scatter of its points over the one expected; straight : whether any window is straight within scatter.
+    first, last : index of the first and last point of the chosen window. slope, r : of the line.
+    slope_ratio : slope over theory. reduced_chi2 : scatter of its points over the one expected.
+    straight : whether any window is straight within scatter.
     """
 
     acid: Array
@@ -146,9 +147,10 @@ def windows(points: Points, ph: Array, use: NDArray[np.bool_], *, alkalinity: Ar
             u_acid: Array) -> Gran:
     """Choose the window of points for the first function: smallest expected error among the straight ones.
 
-    Every run of three or more points within GRAN_PH is tried. One is admissible when it spans 0.4 pH, its line rises, its
-    root lies before its first point, and its points scatter about it no more than pH and burette explain (chi-squared test at
-    1 %). Expected error: scatter, and what `carbon` [mol per unit of sample] and the weak acids still hold of the acid.
+    Every run of three or more points within GRAN_PH is tried. One is admissible when it spans 0.3 pH, its line rises,
+    its root lies before its first point, and its points scatter about it no more than pH and burette explain
+    (chi-squared test at 1 %). Expected error: scatter, and what `carbon` [mol per unit of sample] and the weak acids
+    still hold of the acid.
     It is worked out for an ideal line through a first guess of the `alkalinity`, not for the readings: else the window
     would be picked by its own scatter, which pulls the result up. Where no window is straight the straightest is taken
     and said to be curved.
@@ -172,7 +174,7 @@ def windows(points: Points, ph: Array, use: NDArray[np.bool_], *, alkalinity: Ar
         bias = np.abs(corrected.all_starts(length).root - line.root)
         solid = np.concatenate([run[:, length - 1:length], run[:, length:] - run[:, :-length]], axis=1) == length
         solid &= np.abs(safe[:, length - 1:] - safe[:, :m - length + 1]) >= LEAST_SPAN_PH
-        best.offer(length, line, bias, solid, x[:, :m - length + 1], float(chi2.isf(NOT_BY_CHANCE, length - 2)))
+        best.offer(length, line, bias, solid, x[:, :m - length + 1], float(chdtri(length - 2, NOT_BY_CHANCE)))
     return best.gran(steepness, plain, expected)
 
 
@@ -189,7 +191,8 @@ class _Best:
         self.total, self.squares, self.expected = np.zeros(n), np.zeros(n), np.zeros(n)
         self.zero = np.full(n, np.nan)  # a first root, so that the sums keep their digits
 
-    def offer(self, length: int, line: Line, bias: Array, solid: NDArray[np.bool_], x: Array, chi2_limit: float) -> None:
+    def offer(self, length: int, line: Line, bias: Array, solid: NDArray[np.bool_], x: Array, chi2_limit: float,
+              ) -> None:
         """Take in all windows of one length."""
         with np.errstate(invalid="ignore"):
             able = solid & (line.slope > 0.0) & (line.root < x) & np.isfinite(line.root)
@@ -245,8 +248,9 @@ class _Best:
         worse = np.where(self.straight, 1.0, np.sqrt(np.maximum(line.reduced_chi2, 1.0)))
         return Gran(or_nan(line.root), or_nan(line.u_root * worse), or_nan(BIAS_RMS * self.bias),
                     or_nan(np.sqrt(np.maximum(variance, 0.0))),
-                    np.where(np.isfinite(self.low), self.low, np.nan), np.where(np.isfinite(self.high), self.high, np.nan),
-                    self.count, self.first, self.last, or_nan(line.slope), or_nan(line.slope * mean), or_nan(line.r),
+                    np.where(np.isfinite(self.low), self.low, np.nan),
+                    np.where(np.isfinite(self.high), self.high, np.nan), self.count, self.first, self.last,
+                    or_nan(line.slope), or_nan(line.slope * mean), or_nan(line.r),
                     or_nan(line.reduced_chi2), self.straight)
 
 
@@ -256,8 +260,8 @@ class GranLines:
 
     carbonate : acid to the carbonate end point, from the second and the third function; negative: that much free CO2.
     [eq per unit of sample]
-    k1_ratio : first constant of carbonic acid that the second function implies over the one of tables; an electrode that
-    reads d too high divides it by 10^d.
+    k1_ratio : first constant of carbonic acid that the second function implies over the one of tables; an electrode
+    that reads d too high divides it by 10^d.
     """
 
     carbonate_second: Array
@@ -270,8 +274,9 @@ def gran_lines(points: Points, ph: Array, use: NDArray[np.bool_], alkalinity: Ar
                ) -> GranLines:
     """Second function between bicarbonate and CO2, and third between carbonate and bicarbonate.
 
-    With A the alkalinity, x1 the acid to the carbonate end point and x' the acid that carbonate has taken up (acid added
-    less free acid, water and other weak acids): (A - x') h = K1 (x' - x1), and (A - 2 x1 + x') / h = (x1 - x') / K2.
+    With A the alkalinity, x1 the acid to the carbonate end point and x' the acid that carbonate has taken up (acid
+    added less free acid, water and other weak acids): (A - x') h = K1 (x' - x1), and
+    (A - 2 x1 + x') / h = (x1 - x') / K2.
     """
     h = points.h(np.where(use, ph, 7.0))
     taken = points.acid + points.terms(h)[1]

@@ -14,7 +14,7 @@ Array = NDArray[np.float64]
 INFLECTION_PH = (3.7, 6.2)  # where that of alkalinity is looked for
 SPANS = (1, 2, 3, 4, 6, 8)  # steps between the two points of a slope: as few as the scatter allows
 NOISE_PART = 0.05           # largest share of the fall that scatter of the two readings may have
-STEP_PARTS = 0.2            # of a step that the top of a parabola is off, found by simulation with 5 to 40 points to the end point
+STEP_PARTS = 0.2            # of a step that the top of a parabola is off, found by simulation
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -60,7 +60,7 @@ def inflection(acid: Array, ph: Array, u_ph: Array, u_acid: Array) -> Inflection
         for kept, new in zip(out, (found, u, width), strict=True):
             kept[better] = new[better]
         span[better] = steps
-    return Inflection(*out, span)
+    return Inflection(out[0], out[1], out[2], span)
 
 
 def _steepest(acid: Array, ph: Array, steps: int, u_ph: Array, u_acid: Array,

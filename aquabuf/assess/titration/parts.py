@@ -67,7 +67,7 @@ def species(s: Solved, total: Array) -> tuple[Array, Array, Array]:
 
 
 def co2_acidity(s: Solved) -> Array:
-    """Free CO2 by base to pH 8.3, less what was needed to pH 4.5 where the water was more acid. [mol per unit of sample]"""
+    """Free CO2 by base to pH 8.3, less what was needed to pH 4.5 from below. [mol per unit of sample]"""
     to_8_3, to_4_5 = s.acidity[8.3].value, s.acidity[4.5].value
     return np.where(s.curves.is_base, to_8_3 - np.nan_to_num(to_4_5), np.nan)
 
@@ -75,8 +75,8 @@ def co2_acidity(s: Solved) -> Array:
 def calculated_acidity(samples: Mapping[str, NDArray], ph: Array) -> Array:
     """Acidity that metals give once oxidized and hydrolyzed: 2 Fe(II) + 3 Fe(III) + 3 Al + 2 Mn + 10^-pH. [eq/L]
 
-    nan where no metal was measured. Source: Kirby & Cravotta 2005, Appl. Geochem. 20:1920 (form seen in print, reference
-    recalled); it counts Fe(III) and Al a little too high and bisulfate too low, which roughly cancel.
+    nan where no metal was measured. Source: Kirby & Cravotta 2005, Appl. Geochem. (form as printed in their abstract,
+    journal recalled); it counts Fe(III) and Al a little too high and bisulfate too low, which roughly cancel.
     """
     metals = {name: value_of(samples, name, ph.size) for name in METAL_ACIDITY}
     measured = np.any([np.isfinite(v) for v in metals.values()], axis=0)

@@ -44,7 +44,7 @@ MOST_CARBON = 5.0         # times alkalinity, where the start pH implies more it
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Estimate:
-    """One method's result per titration: value and standard uncertainty [eq per unit of sample], nan where there is none.
+    """One method's result per titration: value and standard uncertainty [eq per unit of sample], nan where none.
 
     own_u : the part of the uncertainty that other methods do not share. why_not : reason where there is no value.
     """
@@ -123,7 +123,7 @@ def solve_titrations(t: Titrations, options: TitrationOptions) -> Solved:
     gran = windows(points, ph, there, alkalinity=guess, carbon=carbon, u_ph=c.u_ph_scatter, u_acid=c.u_acid)
     near = np.where(np.isfinite(gran.acid), gran.acid, guess)
     common = {"u_ph": c.u_ph_scatter, "u_acid": c.u_acid, "relative_u": c.relative_u, "purged": purged}
-    fit = fit_closed(points, ph, there, near, weak_acid=options.weak_acid, **common)
+    fit = fit_closed(points, ph, there, near, is_base=c.is_base, weak_acid=options.weak_acid, **common)
     excess = fit_acid_excess(points, ph, there, near, salinity=c.salinity, **common)
     turned = np.where(c.is_base[:, None], np.nan, ph)
     crossings = {e: crossing(c.acid, turned, e) for e in options.end_points}
@@ -226,7 +226,8 @@ def _of_crossing(found: Crossing, c: Curves) -> Estimate:
     """A fixed end point. What the electrode reads wrong moves it along the curve."""
     u_ph = np.hypot(c.u_ph, c.u_ph_scatter)
     own = np.sqrt(found.u_curve**2 + (found.slope * u_ph) ** 2 + c.u_acid**2)
-    why = worded(c.count.size, (np.isnan(found.acid), "the curve does not pass this pH"), (c.is_base, "titrated with base"))
+    why = worded(c.count.size, (np.isnan(found.acid), "the curve does not pass this pH"),
+                 (c.is_base, "titrated with base"))
     return Estimate(found.acid, np.hypot(own, _shared(c, found.acid)), own, why)
 
 

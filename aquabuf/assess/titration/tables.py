@@ -13,14 +13,15 @@ from aquabuf.assess.frames import LongRows, frame_of
 from aquabuf.assess.titration.choose import Choice
 from aquabuf.assess.titration.convert import converted
 from aquabuf.assess.titration.findings import Finding, finding_facts
-from aquabuf.assess.titration.options import ALWAYS_END_POINT, TitrationOptions, ph_digits
+from aquabuf.assess.titration.options import TitrationOptions, ph_digits
 from aquabuf.assess.titration.parts import calculated_acidity, co2_acidity, partition_of, species
 from aquabuf.assess.titration.solve import ACIDITY_END_POINTS, Estimate, Solved, text_of
 from aquabuf.readings.titration.result import Titrations
 from aquabuf.tables import read_table
 from aquabuf.units import convert
 
-__all__ = ["MICRO", "column_facts", "definition_of", "figures_of", "findings_table", "results_table", "titration_digits"]
+__all__ = ["MICRO", "NO_RESULT", "REFUSED", "WARNED", "column_facts", "definition_of", "figures_of", "findings_table",
+           "results_table", "titration_digits"]
 
 Array = NDArray[np.float64]
 
@@ -49,18 +50,15 @@ def titration_digits(options: TitrationOptions) -> dict[str, int]:
     return {name: int(row["digits"]) for name, _, row in column_facts(options) if row["digits"]}
 
 
-def definition_of(s: Solved) -> NDArray[np.object_]:
+def definition_of(s: Solved, choice: Choice) -> NDArray[np.object_]:
     """What the result of each titration is called."""
     filtered = text_of(s.samples, "filtered", s.curves.count.size)
     return worded(filtered.size, (filtered == "yes", "alkalinity"), (filtered == "no", "ANC"),
-                  (s.curves.is_base, "acidity"), default="alkalinity or ANC")
+                  (s.curves.is_base & (choice.method == ""), "acidity"), default="alkalinity or ANC")
 
 
-def _estimate(name: str, e: Estimate, *, status: bool = True) -> dict[str, NDArray]:
-    out: dict[str, NDArray] = {f"{name}_{{eq}}": e.value, f"{name}_u_{{eq}}": e.u}
-    if status:
-        out[f"{name}_status"] = np.where(np.isfinite(e.value), OK, e.why_not)
-    return out
+def _estimate(name: str, e: Estimate) -> dict[str, NDArray]:
+    return {f"{name}_{{eq}}": e.value, f"{name}_u_{{eq}}": e.u}
 
 
 def figures_of(s: Solved, choice: Choice, options: TitrationOptions) -> dict[str, NDArray]:
@@ -68,26 +66,24 @@ def figures_of(s: Solved, choice: Choice, options: TitrationOptions) -> dict[str
     n, estimates = s.curves.count.size, s.estimates
     wanted = options.conversion != "none"
     out: dict[str, NDArray] = {
-        "definition": definition_of(s), "recommended_{eq}": choice.value, "recommended_u_{eq}": choice.u,
+        "definition": definition_of(s, choice), "recommended_{eq}": choice.value, "recommended_u_{eq}": choice.u,
         "recommended_mg_l_caco3": _mg_l(s, choice.value), "recommended_u_mg_l_caco3": _mg_l(s, choice.u),
         "recommended_method": choice.method, "recommended_reason": choice.reason,
         "converted_{eq}": converted(s, options.conversion, choice.value),
         "converted_to": np.full(n, options.conversion if wanted else "", dtype=object),
     }
-    out |= _estimate("gran", estimates["gran"]) | _gran(s)
-    out |= _estimate("inflection", estimates["inflection"])
+    for name in ("gran", "inflection", "two_point", "fit", "acid_excess", "fixed_level"):
+        out |= _estimate(name, estimates[name])
+    for name, (able, why) in choice.able.items():
+        out[f"{name}_status"] = np.where(able, OK, why)
+    out |= _gran(s) | _fit(s, options)
     out["inflection_resolution_{eq}"] = s.inflection.resolution
     for end in options.end_points:
-        out |= _estimate(f"fixed_{ph_digits(end)}", estimates[f"fixed_{end:g}"], status=False)
-    out |= _estimate("fixed_level", estimates["fixed_level"], status=False)
+        out |= _estimate(f"fixed_{ph_digits(end)}", estimates[f"fixed_{end:g}"])
     out["fixed_level_ph"] = np.where(np.isfinite(estimates["fixed_level"].value), s.level_ph, np.nan)
-    at_4_5 = estimates[f"fixed_{ALWAYS_END_POINT:g}"]
-    out["fixed_status"] = np.where(np.isfinite(at_4_5.value), OK, at_4_5.why_not)
-    out |= _estimate("two_point", estimates["two_point"]) | _fit(s, options)
-    out |= _estimate("acid_excess", estimates["acid_excess"])
     out["acid_excess_offset_ph"] = s.excess.fit.offset_ph
     for end in ACIDITY_END_POINTS:
-        out |= _estimate(f"acidity_{ph_digits(end)}", s.acidity[end], status=False)
+        out |= _estimate(f"acidity_{ph_digits(end)}", s.acidity[end])
     out |= _made_of(s, choice)
     return out | _conditions(s)
 
@@ -118,7 +114,7 @@ def _gran(s: Solved) -> dict[str, NDArray]:
 def _fit(s: Solved, options: TitrationOptions) -> dict[str, NDArray]:
     f = s.fit
     nothing = np.full(s.curves.count.size, np.nan)
-    return _estimate("fit", s.estimates["fit"]) | {
+    return {
         "fit_dic_{mol}": f.fit.carbon, "fit_dic_u_{mol}": f.u_carbon, "fit_offset_ph": f.fit.offset_ph,
         "fit_offset_u_ph": f.u_offset, "fit_acid_{mol}": f.fit.acid_total if options.weak_acid else nothing,
         "fit_acid_pk": f.fit.acid_pk if options.weak_acid else nothing, "fit_chi2": f.fit.reduced_chi2,
@@ -162,11 +158,24 @@ def results_table(t: Titrations, s: Solved, choice: Choice, found: Sequence[Find
             columns[name] = status
         elif key in t.samples.columns and key in ("sample_id", "row", "site", "date"):
             columns[name] = t.samples[key].to_numpy()
+        elif key == "recommended_reason":
+            columns[name] = _spread(figures[key], at, n)
+            _add_refusals(columns[name], t)
         elif key in figures:
             columns[name] = _spread(_scaled(figures[key], name, row["unit"], s.curves.by_mass), at, n)
         else:
             columns[name] = np.full(n, "", dtype=object)
     return frame_of(columns)
+
+
+def _add_refusals(reason: NDArray[np.object_], t: Titrations) -> None:
+    """Put the first reason of refusal of each refused titration where the others have theirs."""
+    first = t.rejected.drop_duplicates("sample_id").set_index("sample_id")
+    names = t.samples["sample_id"].to_numpy(dtype=object)
+    for i in np.flatnonzero(~t.usable).tolist():
+        if names[i] in first.index:
+            line = first.loc[names[i]]
+            reason[i] = f"refused ({line['file']}, row {line['row']}): {line['column']}: {line['rule']}"
 
 
 def _scaled(v: NDArray, name: str, unit: str, by_mass: NDArray[np.bool_]) -> NDArray:

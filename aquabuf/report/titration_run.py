@@ -1,0 +1,139 @@
+"""Assess a file of titrations piece by piece and write its results; memory does not grow with the file."""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Callable
+from dataclasses import asdict
+from pathlib import Path
+from typing import IO
+
+import pandas as pd
+
+import aquabuf
+from aquabuf.assess.titration.assess import TitrationResult, assess_titrations
+from aquabuf.assess.titration.options import TitrationOptions
+from aquabuf.assess.titration.tables import titration_digits
+from aquabuf.errors import InputError
+from aquabuf.readings.titration.paths import TitrationFiles
+from aquabuf.readings.titration.reader import iter_titrations
+from aquabuf.report.files import OutputFolder
+from aquabuf.report.run import sha256
+from aquabuf.report.tables import csv_text, rounded
+from aquabuf.report.titration_summary import titration_summary
+from aquabuf.report.titration_tally import TitrationTally
+from aquabuf.tables import read_table
+
+__all__ = ["ALL_FIGURES", "OUTPUT_FILES", "titrate_file"]
+
+FIGURE_NAMES = "titration_*.png"
+OUTPUT_FILES = ("alkalinity.csv", "findings.csv", "rejected.csv", "run.json", FIGURE_NAMES)
+FAILED_RUN_FILES = ("rejected.csv",)
+ALL_FIGURES = 10**9
+SLOW_FROM = 100  # figures, from which the user is told
+
+
+def titrate_file(files: TitrationFiles, folder: Path, options: TitrationOptions, *, force: bool = False,
+                 figures: int = 50, notify: Callable[[str], None] = lambda text: None) -> str:
+    """Assess the titrations in `files`, write OUTPUT_FILES to `folder`, and return the text.
+
+    `figures` is the number of titrations to draw, in the order of the file. `notify` is told when drawing will take
+    long.
+
+    Raises InputError or FileError where a file as a whole cannot be used or no titration is accepted; rejected.csv is
+    still written then.
+    """
+    hashes = {name: sha256(path) for name, path in files.given().items()}
+    pieces = iter_titrations(files.points, files.samples, points_map=files.points_map, samples_map=files.samples_map)
+    tally = TitrationTally()
+    with OutputFolder(folder, OUTPUT_FILES, force=force, leftovers=FAILED_RUN_FILES) as out:
+        with _Tables(out, titration_digits(options)) as tables:
+            for t in pieces:
+                columns = {name for name, _ in t.headers.values()}
+                by_kilogram = "sample_mass_g" in columns
+                part = assess_titrations(t, options, by_kilogram=by_kilogram,
+                                         by_liter="sample_volume_ml" in columns or not by_kilogram)
+                _draw(part, tally, out, figures, notify)
+                for name, table in (("alkalinity.csv", part.results), ("findings.csv", part.findings),
+                                    ("rejected.csv", part.rejected)):
+                    tables.add(name, table)
+                tally.add(t, part)
+        if not tally.refusals:
+            out.drop("rejected.csv")
+        usable = tally.samples - tally.status["refused"]
+        if not usable:
+            failure = _nothing(files.points.name, tally)
+            if (folder / OUTPUT_FILES[0]).exists():  # a failed run must not take an earlier result away
+                raise InputError(f"{failure} The earlier result is untouched; use another --out to see the reasons.")
+            for name in ("alkalinity.csv", "findings.csv"):
+                out.drop(name)
+        else:
+            record = _record(files, hashes, options, tally)
+            out.part("run.json").write_text(json.dumps(record, indent=1, ensure_ascii=False) + "\n", encoding="utf-8")
+        written = [name for name in OUTPUT_FILES if name in out.written] + ([FIGURE_NAMES] if tally.figures else [])
+    if not usable:
+        raise InputError(f"{failure} rejected.csv in {folder.name} names each with its remedy.")
+    return titration_summary(tally, options, source=files.points.name, files=written)
+
+
+def _nothing(name: str, tally: TitrationTally) -> str:
+    (column, rule), count = tally.refusals.most_common(1)[0]
+    return (f"no titration of {name} can be used; {tally.samples:,} were refused, mostly for {column}: {rule} "
+            f"({count} x).")
+
+
+class _Tables:
+    """Tables that grow piece by piece."""
+
+    def __init__(self, out: OutputFolder, digits: dict[str, int]):
+        self._out, self._digits = out, digits
+        self._open: dict[str, IO[str]] = {}
+
+    def __enter__(self) -> _Tables:
+        return self
+
+    def __exit__(self, *_: object) -> None:
+        for stream in self._open.values():
+            stream.close()
+
+    def add(self, name: str, table: pd.DataFrame) -> None:
+        """Append rows, with the header before the first."""
+        first = name not in self._open
+        if first:
+            self._open[name] = self._out.part(name).open("w", encoding="utf-8", newline="")
+        digits = self._digits if name == "alkalinity.csv" else {}
+        self._open[name].write(csv_text(rounded(table, digits), header=first))
+
+
+def _draw(part: TitrationResult, tally: TitrationTally, out: OutputFolder, figures: int, notify: Callable[[str], None],
+          ) -> None:
+    """Figures of the piece while the number asked for is not reached; their names go into the table.
+
+    Files are numbered by the place in alkalinity.csv: a sample's name never becomes a file name.
+    """
+    room = figures - tally.figures
+    if room <= 0 or not part.at.size:
+        return
+    from aquabuf.report.titration_figures import save_titration  # drawing is slow to import
+
+    names = part.results["figure"].to_numpy(dtype=object, copy=True)
+    for i, place in enumerate(part.at[:room].tolist()):
+        names[place] = FIGURE_NAMES.replace("*", f"{tally.samples + place + 1:05d}")
+        save_titration(part, i, out.part(names[place]))
+        tally.figures += 1
+        if tally.figures == SLOW_FROM:
+            notify("drawing; each figure takes about a quarter of a second. --figures 0 leaves them out.")
+    part.results["figure"] = names
+
+
+def _record(files: TitrationFiles, hashes: dict[str, str], options: TitrationOptions, tally: TitrationTally) -> dict:
+    """What the run rests on, for run.json: no clock, no paths."""
+    return {
+        "program": "aquabuf", "version": aquabuf.__version__, "command": "titration",
+        "files": {name: path.name for name, path in files.given().items()}, "sha256": hashes,
+        "options": asdict(options),
+        "titrations": {"seen": tally.samples, **{k: int(v) for k, v in sorted(tally.status.items())}},
+        "methods": dict(sorted(tally.methods.items())), "findings": dict(sorted(tally.findings.items())),
+        "assumed": dict(tally.assumed), "constants": [dict(row) for row in read_table("constants")],
+        "notes": [*tally.notes, *(f"{count} x {what}: {column}" for (what, column), count in tally.flags.items())],
+    }
