@@ -29,7 +29,7 @@ class Calibration:
 
     zero_mv : potential at pH 0. [mV]
     slope_mv : fall of potential per pH. [mV]
-    efficiency : slope over the one of theory. [-]
+    efficiency : slope over the one of theory; not above zero where the standards make no electrode. [-]
     standards : number of standards used; 0 where the titration itself gave the zero potential.
     """
 
@@ -66,10 +66,10 @@ def by_standards(values: Mapping[str, Array], t_c: Array) -> Calibration:
     spread = (np.where(known, ph - mean_x[:, None], 0.0) ** 2).sum(axis=1)
     product = (np.where(known, (ph - mean_x[:, None]) * (mv - mean_y[:, None]), 0.0)).sum(axis=1)
     with np.errstate(invalid="ignore", divide="ignore"):
-        slope = np.where(spread > 0.0, -product / spread, theory)
-        slope = np.where(slope > 0.0, slope, np.nan)  # a rising potential with pH is no glass electrode
+        read = np.where(spread > 0.0, -product / spread, theory)
+    slope = np.where(read > 0.0, read, np.nan)  # a rising potential with pH is no glass electrode
     zero = np.where(count > 0, mean_y + slope * mean_x, np.nan)
-    return Calibration(zero, np.where(count > 0, slope, theory), slope / theory, count.astype(np.intp))
+    return Calibration(zero, np.where(count > 0, slope, theory), read / theory, count.astype(np.intp))
 
 
 def zero_potential_of_acid(potential_mv: Array, acid: Array, dilution: Array, activity_per_acid: Array, slope_mv: Array,

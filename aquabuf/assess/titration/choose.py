@@ -74,11 +74,11 @@ def water_kinds(s: Solved) -> tuple[NDArray[np.object_], NDArray[np.object_]]:
     alkalinity, start = best_guess(s), s.ph[:, 0]
     conductivity, doc = value_of(s.samples, "conductivity_us_cm", n), value_of(s.samples, "doc_mg_l", n)
     organic = organic_sites(s)
-    acid = ~s.curves.is_base
+    own_ph = ~s.curves.is_base & (s.curves.added[:, 0] == 0.0)  # else the first reading is not that of the sample
     with np.errstate(invalid="ignore"):
         cases = (
             (organic > ORGANIC_SHARE * np.abs(alkalinity), "dilute", lambda i: f"organic carbon {doc[i]:.3g} mg/L"),
-            (acid & (start < DILUTE_BELOW_PH), "dilute", lambda i: f"pH {start[i]:.2f} at the start, below 7"),
+            (own_ph & (start < DILUTE_BELOW_PH), "dilute", lambda i: f"pH {start[i]:.2f} at the start, below 7"),
             (conductivity < DILUTE_BELOW_US_CM, "dilute",
              lambda i: f"conductivity {conductivity[i]:.3g} µS/cm, below 100"),
             (alkalinity < DILUTE_BELOW_EQ, "dilute",
@@ -162,6 +162,9 @@ def choose(s: Solved) -> Choice:
 
 def _reason(s: Solved, i: int, method: str, kind: str, detail: str, can: Mapping, by_wish: bool) -> str:
     """Why this method and no other, for one titration."""
+    if not np.isfinite(s.ph[i]).any():
+        return ("no pH can be made of the potentials: give standards, and see whether two of them are exchanged or the "
+                "sign of the meter is turned")
     facts = method_facts("water")[kind]
     water = facts["words"] + (f" ({detail})" if detail else "")
     if s.curves.is_base[i]:

@@ -38,6 +38,7 @@ class Curves:
     u_acid : scatter of one reading of `acid`. [eq/L or eq/kg]
     u_ph_scatter, u_ph : scatter of one pH reading, and what all readings share. [-]
     drift : largest change between repeated readings at one volume, in the unit of `reading`; nan where there are none.
+    repeats : most readings in a row at one volume.
     by_mass : whether the sample is given by mass, so that amounts are per kilogram.
     added_mass : whether the titrant was weighed. needs_density : whether volume and mass had to be brought together.
     """
@@ -56,6 +57,7 @@ class Curves:
     u_ph_scatter: Array
     u_ph: Array
     drift: Array
+    repeats: NDArray[np.intp]
     by_mass: NDArray[np.bool_]
     added_mass: NDArray[np.bool_]
     needs_density: NDArray[np.bool_]
@@ -101,7 +103,7 @@ def curves_of(t: Titrations) -> Curves:
     def word(name: str) -> NDArray[np.object_]:
         return frame[name].to_numpy(dtype=object) if name in frame else np.full(n, "", dtype=object)
 
-    padded, count, drift = _padded(t, rows)
+    padded, count, drift, repeats = _padded(t, rows)
     t_c, salinity = value("temperature_c", ASSUMED_T_C), value("salinity", 0.0)
     density = seawater_density(t_c, salinity) / 1e3
     by_mass = np.isfinite(value("sample_mass_g"))
@@ -120,7 +122,7 @@ def curves_of(t: Titrations) -> Curves:
         dilution=sample[:, None] / (sample[:, None] + titrant_per_added[:, None] * padded["added"]),
         per_added=per_added, relative_u=relative_u, u_acid=np.abs(per_added) * u_added,
         u_ph_scatter=value("ph_scatter", ASSUMED_PH_SCATTER),
-        u_ph=_shared_ph_u(values, value, potential, relative_u, t_c), drift=drift, by_mass=by_mass,
+        u_ph=_shared_ph_u(values, value, potential, relative_u, t_c), drift=drift, repeats=repeats, by_mass=by_mass,
         added_mass=added_mass, is_base=is_base, is_potential=potential, strength=strength, sample=sample,
         needs_density=(added_mass != by_mass) | (added_mass != np.isfinite(value("titrant_strength_eq_kg"))),
         t_c=t_c, salinity=salinity, density_kg_l=density,
@@ -128,8 +130,9 @@ def curves_of(t: Titrations) -> Curves:
                                       STRENGTH_PER_CONDUCTIVITY * value("conductivity_us_cm")))
 
 
-def _padded(t: Titrations, rows: NDArray[np.intp]) -> tuple[dict[str, NDArray], NDArray[np.intp], Array]:
-    """Points side by side; repeated readings at one volume give way to the last, and their change is the drift."""
+def _padded(t: Titrations, rows: NDArray[np.intp]) -> tuple[dict[str, NDArray], NDArray[np.intp], Array,
+                                                            NDArray[np.intp]]:
+    """Points side by side, repeated readings at one volume given way to the last; their change and number."""
     number = np.repeat(np.arange(t.usable.size), np.diff(t.start))
     same = np.zeros(t.added.size, dtype=bool)  # as the next point
     same[:-1] = (number[:-1] == number[1:]) & (t.added[:-1] == t.added[1:])
@@ -140,6 +143,8 @@ def _padded(t: Titrations, rows: NDArray[np.intp]) -> tuple[dict[str, NDArray], 
     np.fmax.at(drift, place[number[steps]], np.abs(t.reading[steps + 1] - t.reading[steps]))
     kept = np.flatnonzero(~same)
     of = place[number[kept]]
+    repeats = np.zeros(rows.size, dtype=np.intp)
+    np.maximum.at(repeats, of, np.diff(kept, prepend=-1))
     count = np.bincount(of, minlength=rows.size)
     column = np.arange(kept.size) - np.concatenate([[0], np.cumsum(count)[:-1]])[of] if kept.size else kept
     shape = (rows.size, max(int(count.max(initial=0)), 1))
@@ -149,7 +154,7 @@ def _padded(t: Titrations, rows: NDArray[np.intp]) -> tuple[dict[str, NDArray], 
         out[name][of, column] = source[kept]
     out["row"] = np.zeros(shape, dtype=np.int64)
     out["row"][of, column] = t.point_row[kept]
-    return out, count, drift
+    return out, count, drift, repeats
 
 
 def _titrant(value, by_weight: NDArray[np.bool_], by_mass: NDArray[np.bool_]) -> tuple[Array, Array]:

@@ -20,7 +20,7 @@ Array = NDArray[np.float64]
 # 4.59 and 4.33); the bounds between them are the geometric means.
 LEVELS = ((np.sqrt(30.0 * 150.0), 4.9), (np.sqrt(150.0 * 500.0), 4.6), (np.inf, 4.3))
 TWO_POINT_STEP = 0.30      # pH between the two end points: the free acid doubles
-CURVATURE_SHARE = 0.5      # of the difference between straight and curved interpolation; found by simulation
+CURVATURE_SHARE = 0.75     # of the difference between straight and curved interpolation; found by simulation
 
 
 @dataclass(frozen=True, slots=True, eq=False)

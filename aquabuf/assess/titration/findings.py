@@ -13,7 +13,7 @@ from aquabuf.assess.titration.choose import Choice, best_guess
 from aquabuf.assess.titration.convert import fixed_to_proton_balance
 from aquabuf.assess.titration.options import ALWAYS_END_POINT
 from aquabuf.assess.titration.solve import Solved, text_of, value_of
-from aquabuf.assess.titration.strength import slope_off, strength_doubtful, what_tells
+from aquabuf.assess.titration.strength import doubt_in_words, slope_off, strength_doubtful, what_tells
 from aquabuf.tables import read_table
 
 __all__ = ["Finding", "finding_facts", "findings"]
@@ -22,10 +22,11 @@ Array = NDArray[np.float64]
 
 SIGMAS = 2.0
 DISAGREE_SIGMAS = 2.5
+STEPS_MOVE = 0.1           # pH that changes at "one" volume when steps were written down instead of running totals
 LEAST_TURN = 0.05          # pH
 TURN_SIGMAS = 4.0
 OFF_CURVE = (6.0, 0.08)    # times scatter, pH
-WINDOW_MATTERS = (5e-6, 0.04)  # eq per unit of sample, share of the result
+WINDOW_MATTERS = (2e-6, 0.02)  # standard deviation over the windows: eq per unit of sample, share of the result
 OFFSET_SPOILS = 0.1        # pH; an electrode farther off spoils every fixed end point
 MILLIVOLT_DRIFT = 59.0     # mV per pH, to judge drift by one limit
 
@@ -78,7 +79,10 @@ def _outside(name: str, value: Array, where: NDArray | bool = True) -> Finding:
 def _strength(s: Solved, choice: Choice) -> Iterator[Finding]:
     """Is the titrant what it is said to be?"""
     c, ratio = s.curves, s.gran.slope_ratio
-    yield _finding("strength doubtful", strength_doubtful(s), ratio)
+    doubtful, said = strength_doubtful(s), np.full(ratio.size, "", dtype=object)
+    for i in np.flatnonzero(doubtful).tolist():
+        said[i] = doubt_in_words(s, i)
+    yield _finding("strength doubtful", doubtful, ratio, more=said)
     slope = slope_off(s)
     yield _finding("Gran slope", slope, ratio, more=what_tells(s, slope))
     yield _outside("strength outside usual", c.strength)
@@ -97,7 +101,9 @@ def _course(s: Solved, choice: Choice) -> Iterator[Finding]:
     yield _outside("stops too soon", lowest, ~c.is_base & np.isfinite(lowest))
     yield _outside("coarse end point", s.crossings[ALWAYS_END_POINT].step_ph, ~s.purged)
     drift = c.drift / np.where(c.is_potential, MILLIVOLT_DRIFT, 1.0)
-    yield _outside("drift", drift)
+    steps = _outside("running total", c.repeats.astype(float), drift > STEPS_MOVE)
+    yield steps
+    yield _outside("drift", drift, ~steps.here)
     took = np.nanmax(np.where(np.isfinite(c.minutes), c.minutes, -np.inf), axis=1, initial=-np.inf)
     yield _outside("slow titration", took, np.isfinite(took) & ~s.purged)
     at_end = s.crossings[ALWAYS_END_POINT].before
@@ -136,11 +142,10 @@ def _lines(s: Solved, choice: Choice) -> Iterator[Finding]:
     g = s.gran
     with np.errstate(invalid="ignore"):
         curved = (g.first >= 0) & ~g.straight
-        span = g.high - g.low
-        matters = span > np.maximum(WINDOW_MATTERS[0], WINDOW_MATTERS[1] * np.abs(g.acid))
-        beyond = g.u_window > SIGMAS * g.u_line
+        matters = g.u_window > np.maximum(WINDOW_MATTERS[0], WINDOW_MATTERS[1] * np.abs(g.acid))
+        beyond = g.u_window > g.u_line
     yield _finding("curved Gran line", curved, g.reduced_chi2)
-    yield _finding("choice of points matters", g.straight & matters & beyond, span * 1e6)
+    yield _finding("choice of points matters", g.straight & matters & beyond, g.u_window * 1e6)
 
 
 def _fits(s: Solved, choice: Choice) -> Iterator[Finding]:
@@ -151,9 +156,7 @@ def _fits(s: Solved, choice: Choice) -> Iterator[Finding]:
     safe = np.where(np.isfinite(residual), residual, 0.0)
     at, largest = safe.argmax(axis=1), safe.max(axis=1)
     # near the end point a small error of volume moves pH far: count it as scatter
-    slope = np.abs(np.gradient(np.where(np.isfinite(s.ph), s.ph, 0.0), axis=1))
-    spacing = np.abs(np.gradient(np.where(np.isfinite(c.acid), c.acid, 0.0), axis=1))
-    rows = np.arange(c.count.size)
+    slope, spacing, rows = _change(s.ph), _change(c.acid), np.arange(c.count.size)
     with np.errstate(invalid="ignore", divide="ignore"):
         by_volume = np.nan_to_num(slope[rows, at] / spacing[rows, at]) * c.u_acid
         limit = np.maximum(OFF_CURVE[0] * np.hypot(c.u_ph_scatter, by_volume), OFF_CURVE[1])
@@ -170,6 +173,13 @@ def _fits(s: Solved, choice: Choice) -> Iterator[Finding]:
         gap = f.fit.carbon - measured
         differs = np.abs(gap) > DISAGREE_SIGMAS * np.hypot(f.u_carbon, u_measured)
         yield _finding("carbon differs", differs, 100.0 * gap / measured)
+
+
+def _change(v: Array) -> Array:
+    """Mean change from the point before and to the one after; of only one of them at the ends, 0 of a single point."""
+    step, edge = np.abs(np.diff(v, axis=1)), np.full((len(v), 1), np.nan)
+    both = np.stack([np.concatenate([edge, step], axis=1), np.concatenate([step, edge], axis=1)])
+    return np.nan_to_num(both).sum(axis=0) / np.maximum(np.isfinite(both).sum(axis=0), 1)
 
 
 def _electrode(s: Solved, choice: Choice) -> Iterator[Finding]:

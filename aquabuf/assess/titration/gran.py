@@ -23,9 +23,10 @@ GRAN_PH = (2.7, 4.6)     # where free acid outweighs bicarbonate, and activity a
 FEWEST = 3               # points on a line
 LEAST_SPAN_PH = 0.3      # of a window: free acid doubles, so that the line has something to stand on
 LEAST_FREE_ACID = 5e-6   # eq per unit of sample, taken for points that lie before a first guess of the end point
+CHANCE_PARTS = 2.0       # of the variance expected of windows that chance may bring about
 MOST_LENGTHS = 40        # lengths of window that are tried in a long titration
 NOT_BY_CHANCE = 0.01     # probability of so much scatter, below which points are called curved
-BIAS_RMS = 1.0 / np.sqrt(3.0)  # of an error evenly likely from nothing to all of it
+BIAS_SHARE = 0.8         # of the error from acid still bound; some goes with escaping CO2; found by simulation
 BUFFER_PH = (5.4, 7.8)   # where carbon dioxide and bicarbonate share the carbon: second function
 CARBONATE_FROM_PH = 8.8  # above it bicarbonate and carbonate do: third function
 
@@ -51,8 +52,8 @@ class Gran:
     """First Gran function of each titration; nan where no window of points will do.
 
     acid : root: the alkalinity. u_line : standard uncertainty from the scatter of the points. u_bias : from
-    bicarbonate, bisulfate and weak acids left. u_window : spread of the roots of all admissible windows beyond what
-    scatter gives them. [eq per unit of sample]
+    bicarbonate, bisulfate and weak acids left. u_window : spread over all admissible windows beyond what scatter and
+    these known acids give them: what is not known takes part. [eq per unit of sample]
     low, high : least and greatest root of the admissible windows; count : their number.
     first, last : index of the first and last point of the chosen window. slope, r : of the line.
     slope_ratio : slope over theory. reduced_chi2 : scatter of its points over the one expected.
@@ -171,10 +172,10 @@ def windows(points: Points, ph: Array, use: NDArray[np.bool_], *, alkalinity: Ar
     lengths = np.unique(np.round(np.geomspace(FEWEST, max(m, FEWEST), MOST_LENGTHS)).astype(int))
     for length in lengths[lengths <= m]:
         line = replace(plain.all_starts(length), u_root=expected.all_starts(length).u_root)
-        bias = np.abs(corrected.all_starts(length).root - line.root)
+        true = corrected.all_starts(length).root
         solid = np.concatenate([run[:, length - 1:length], run[:, length:] - run[:, :-length]], axis=1) == length
         solid &= np.abs(safe[:, length - 1:] - safe[:, :m - length + 1]) >= LEAST_SPAN_PH
-        best.offer(length, line, bias, solid, x[:, :m - length + 1], float(chdtri(length - 2, NOT_BY_CHANCE)))
+        best.offer(length, line, true, solid, x[:, :m - length + 1], float(chdtri(length - 2, NOT_BY_CHANCE)))
     return best.gran(steepness, plain, expected)
 
 
@@ -191,25 +192,27 @@ class _Best:
         self.total, self.squares, self.expected = np.zeros(n), np.zeros(n), np.zeros(n)
         self.zero = np.full(n, np.nan)  # a first root, so that the sums keep their digits
 
-    def offer(self, length: int, line: Line, bias: Array, solid: NDArray[np.bool_], x: Array, chi2_limit: float,
+    def offer(self, length: int, line: Line, true: Array, solid: NDArray[np.bool_], x: Array, chi2_limit: float,
               ) -> None:
-        """Take in all windows of one length."""
+        """Take in all windows of one length; `true` is the root once the acids that are known are counted."""
+        bias = np.abs(true - line.root)
         with np.errstate(invalid="ignore"):
             able = solid & (line.slope > 0.0) & (line.root < x) & np.isfinite(line.root)
             straight = able & (line.reduced_chi2 * (length - 2) <= chi2_limit)
-        self._spread(line, straight)
-        error = np.where(straight, np.hypot(line.u_root, BIAS_RMS * bias), np.inf)
+        self._spread(line, true, straight)
+        error = np.where(straight, np.hypot(line.u_root, BIAS_SHARE * bias), np.inf)
         self._choose(length, error, np.where(straight, 0.0, np.inf), bias, straight=True)
         chi = np.where(able, line.reduced_chi2, np.inf)
         self._choose(length, np.full(chi.shape, np.inf), chi, bias, straight=False)
 
-    def _spread(self, line: Line, straight: NDArray[np.bool_]) -> None:
+    def _spread(self, line: Line, true: Array, straight: NDArray[np.bool_]) -> None:
         """Add the roots of straight windows to the spread."""
         root = np.where(straight, line.root, np.nan)
+        straight = straight & np.isfinite(true)
         has = straight.any(axis=1)
-        first = root[np.arange(len(root)), straight.argmax(axis=1)]
+        first = true[np.arange(len(root)), straight.argmax(axis=1)]
         self.zero = np.where(np.isnan(self.zero) & has, first, self.zero)
-        off = np.where(straight, root - self.zero[:, None], 0.0)
+        off = np.where(straight, true - self.zero[:, None], 0.0)
         self.count += straight.sum(axis=1)
         self.total += off.sum(axis=1)
         self.squares += (off**2).sum(axis=1)
@@ -241,12 +244,12 @@ class _Best:
         in_window = (np.arange(steepness.shape[1]) >= start[:, None]) & (np.arange(steepness.shape[1]) < stop[:, None])
         mean = np.where(in_window, steepness, 0.0).sum(axis=1) / np.maximum(stop - start, 1)
         count = np.maximum(self.count, 1)
-        variance = (self.squares - self.expected) / count - (self.total / count) ** 2
+        variance = (self.squares - CHANCE_PARTS * self.expected) / count - (self.total / count) ** 2
 
         def or_nan(v: Array) -> Array:
             return np.where(has, v, np.nan)
         worse = np.where(self.straight, 1.0, np.sqrt(np.maximum(line.reduced_chi2, 1.0)))
-        return Gran(or_nan(line.root), or_nan(line.u_root * worse), or_nan(BIAS_RMS * self.bias),
+        return Gran(or_nan(line.root), or_nan(line.u_root * worse), or_nan(BIAS_SHARE * self.bias),
                     or_nan(np.sqrt(np.maximum(variance, 0.0))),
                     np.where(np.isfinite(self.low), self.low, np.nan),
                     np.where(np.isfinite(self.high), self.high, np.nan), self.count, self.first, self.last,

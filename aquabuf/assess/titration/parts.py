@@ -40,14 +40,15 @@ def partition_of(s: Solved, total: Array) -> tuple[tuple[Array, Array, Array], N
     start = s.ph[:, 0]
     passed = -s.acidity[PARTITION_PH].value
     with np.errstate(invalid="ignore"):
-        phenolphthalein = np.where(start <= PARTITION_PH, 0.0, passed)
+        from_sample = np.where(s.curves.added[:, 0] == 0.0, 0.0, np.nan)  # a later reading does not tell the sample's pH
+        phenolphthalein = np.where(start <= PARTITION_PH, from_sample, passed)
         parts = partition(phenolphthalein, np.where(s.curves.is_base, np.nan, total))
         hydroxide, carbonate, bicarbonate = species(s, total)
         others = np.abs(total - hydroxide - carbonate - bicarbonate) > OTHER_SHARE * np.abs(total)
         holds = np.full(total.size, "yes", dtype=object)
         holds[others] = f"other bases or acids hold more than {OTHER_SHARE:.0%} of it"
         holds[start > PARTITION_TO_PH] = f"the first pH is above {PARTITION_TO_PH:g}"
-    holds[np.isnan(parts[0])] = "no total alkalinity above zero with a curve from pH 8.3"
+    holds[np.isnan(parts[0])] = "no total alkalinity above zero, or no reading before the first acid"
     return parts, holds
 
 

@@ -21,7 +21,7 @@ from aquabuf.assess.titration.endpoints import (
     left_at,
 )
 from aquabuf.assess.titration.fits import Fitted, fit_acid_excess, fit_closed
-from aquabuf.assess.titration.gran import BIAS_RMS, Gran, GranLines, gran_lines, windows
+from aquabuf.assess.titration.gran import BIAS_SHARE, Gran, GranLines, gran_lines, windows
 from aquabuf.assess.titration.inflection import Inflection, inflection
 from aquabuf.assess.titration.options import ALWAYS_END_POINT, TitrationOptions
 from aquabuf.chem.acids import Acid, acid_table
@@ -241,7 +241,7 @@ def _two_point(c: Curves, ph: Array, first: Crossing, carbon: Array, points: Poi
     scatter = np.hypot(2.0 * first.slope, second.slope) * c.u_ph_scatter
     own = np.sqrt(4.0 * first.u_curve**2 + second.u_curve**2 + scatter**2
                   + ((2.0 * first.slope - second.slope) * c.u_ph) ** 2 + 5.0 * c.u_acid**2
-                  + (BIAS_RMS * left * carbon) ** 2)
+                  + (BIAS_SHARE * left * carbon) ** 2)
     why = worded(c.count.size, (np.isnan(value), "the curve does not pass pH 4.5 and 4.2"))
     return Estimate(value, np.hypot(own, _shared(c, value)), own, why)
 

@@ -13,7 +13,7 @@ from aquabuf.assess.frames import LongRows, frame_of
 from aquabuf.assess.titration.choose import Choice
 from aquabuf.assess.titration.convert import converted
 from aquabuf.assess.titration.findings import Finding, finding_facts
-from aquabuf.assess.titration.options import TitrationOptions, ph_digits
+from aquabuf.assess.titration.options import ALWAYS_END_POINT, TitrationOptions, ph_digits
 from aquabuf.assess.titration.parts import calculated_acidity, co2_acidity, partition_of, species
 from aquabuf.assess.titration.solve import ACIDITY_END_POINTS, Estimate, Solved, text_of
 from aquabuf.readings.titration.result import Titrations
@@ -127,9 +127,11 @@ def _made_of(s: Solved, choice: Choice) -> dict[str, NDArray]:
     by_rule, holds = partition_of(s, choice.value)
     by_species = species(s, choice.value)
     metals = calculated_acidity(s.samples, s.ph[:, 0]) / np.where(s.curves.by_mass, s.curves.density_kg_l, 1.0)
+    with np.errstate(invalid="ignore"):  # below pH 4.5 there is no alkalinity; above, an unknown one stays unknown
+        alkalinity = np.where(s.ph[:, 0] < ALWAYS_END_POINT, 0.0, np.maximum(choice.value, 0.0))
     out: dict[str, NDArray] = {"partition_holds": holds, "co2_acidity_{mol}": co2_acidity(s),
                                "calculated_acidity_{eq}": metals,
-                               "net_acidity_{eq}": metals - np.maximum(np.nan_to_num(choice.value), 0.0)}
+                               "net_acidity_{eq}": metals - alkalinity}
     for part, rule, spec in zip(("hydroxide", "carbonate", "bicarbonate"), by_rule, by_species, strict=True):
         out[f"partition_{part}_{{eq}}"], out[f"species_{part}_{{eq}}"] = rule, spec
     return out

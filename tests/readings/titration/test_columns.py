@@ -1,6 +1,7 @@
 """The schema of titrations: its names, and headers whose unit says what is meant."""
 
 import re
+from dataclasses import replace
 
 import pytest
 
@@ -124,8 +125,10 @@ def test_names_that_no_unit_tells_apart_clash():
         index_of([a, b])
     with pytest.raises(InputError, match=r"the name 'titrant' stands for both titrant_volume_ml and titrant_mol_l"):
         name_index([acid_quantity("titrant")], SCHEMA)
-    with pytest.raises(InputError, match=r"the name 'site' stands for both site and site"):
-        index_of([SCHEMA["site"], quantities()["site"]])
+    with pytest.raises(InputError, match=r"the name 'site' stands for both site and titrant_counts"):
+        index_of([SCHEMA["site"], replace(SCHEMA["titrant_counts"], aliases=(("site", ""),))])
+    with pytest.raises(InputError, match=r"the name 'alkalinity' stands for both alkalinity_eq_l and alkalinity_mol_l"):
+        index_of([quantities()["alkalinity_eq_l"], acid_quantity("alkalinity")])
 
 
 def test_a_map_file_of_titrations(table):

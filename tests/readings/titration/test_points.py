@@ -4,6 +4,9 @@ import numpy as np
 import pytest
 from numpy.testing import assert_array_equal
 
+from aquabuf.readings.schema import titration_quantities
+from aquabuf.readings.table import as_map, open_table
+from aquabuf.readings.titration import blocks
 from aquabuf.readings.titration.blocks import MOST_POINTS
 
 HEADER = "sample_id,titrant_ml,ph,sample_volume_ml,titrant_eq_l"
@@ -27,6 +30,7 @@ HEADER = "sample_id,titrant_ml,ph,sample_volume_ml,titrant_eq_l"
         ("x,0,7,50,0\nx,1,5,50,0\n", (4, "titrant_eq_l", "0"), "must be 1e-06 to 40 eq/L", "check the unit in the header"),
         ("x,0,7,50,0.1\nx,1,6\n", (5, "(row)", "3 fields"), "each row needs 5 fields, as the header has", "check delimiters"),
         ("x,0,7,50,0.1\n,1,6,50,0.1\n", (5, "sample_id", ""), "each row needs a sample_id", "till then the sample above is refused"),
+        ("x,0,7,50,0.1\nNA,1,6,50,0.1\n", (5, "sample_id", ""), "each row needs a sample_id", "fill in the name of its sample"),
         ("x,0,7,50,0.1\n,1\n", (5, "(row)", "2 fields"), "each row needs 5 fields", "check delimiters"),
     ],
 )  # fmt: skip
@@ -101,9 +105,9 @@ def test_points_are_sorted_by_their_number(titrations):
     """Only samples out of order are noted; one without numbers keeps its rows."""
     found = titrations(
         f"{HEADER},sequence,minutes\na,0.5,5,50,0.1,2,3\na,0,7,50,0.1,1,0\na,1,4,50,0.1,3,6\n"
-        "b,0,7,50,0.1,1,\nb,0.5,5,50,0.1,2,\nc,0,7,50,0.1,,\nc,0.5,5,50,0.1,,\n"
+        "b,0,7,50,0.1,1,\nb,0.5,5,50,0.1,2,\nc,0,7,50,0.1,,\nc,0.5,5,50,0.1,,\nno volume,1,5,,0.1,2,\nno volume,0,7,,0.1,1,\n"
     )
-    assert found.rejected.empty
+    assert found.usable.tolist() == [True, True, True, False]
     assert found.added.tolist() == [0, 0.5, 1, 0, 0.5, 0, 0.5]
     assert found.point_row.tolist() == [3, 2, 4, 5, 6, 7, 8]
     assert_array_equal(found.minutes, [0, 3, 6, np.nan, np.nan, np.nan, np.nan])
@@ -147,6 +151,14 @@ def test_a_titration_that_is_too_long(titrations, points, usable):
         assert line["remedy"] == "leave out points, or give each titration a name of its own"
 
 
+def test_no_row_of_a_titration_that_is_too_long_is_kept(table, monkeypatch):
+    """A file of one endless titration does not fill the memory."""
+    monkeypatch.setattr(blocks, "MOST_POINTS", 10)
+    opened = open_table(table(f"{HEADER}\n" + "long,0,7,50,0.1\n" * 11 + "b,0,7,50,0.1\n"), as_map(None, titration_quantities()))
+    (batch,) = blocks.batches(opened, 5, blocks.scan_names(opened))
+    assert (batch.names, batch.lengths.tolist(), [row for row, _ in batch.records]) == (["long", "b"], [11, 1], [13])
+
+
 def test_a_nameless_row_before_all_others(titrations):
     """It belongs to no sample, and has its line."""
     found = titrations(f"{HEADER}\n,0,7,50,0.1\nb,0,7,50,0.1\nb,1,5,50,0.1\n")
@@ -157,9 +169,9 @@ def test_a_nameless_row_before_all_others(titrations):
 
 def test_several_problems_of_one_sample(titrations):
     """Each bad cell has its line; what is said of the sample in every row counts once."""
-    found = titrations(f"{HEADER}\na,x,7,wide,0.1\na,0,99,wide,0.1\na,1,5,wide,0.1\n")
+    found = titrations(f"{HEADER}\na,x,7,wide,0.1\na,0,99,wide,0.1\na,1,99,wide,0.1\n")
     assert found.rejected[["row", "column", "value"]].to_numpy().tolist() == [
-        [2, "titrant_ml", "x"], [2, "sample_volume_ml", "wide"], [3, "ph", "99"],
+        [2, "titrant_ml", "x"], [2, "sample_volume_ml", "wide"], [3, "ph", "99"], [4, "ph", "99"],
     ]  # fmt: skip
 
 

@@ -200,21 +200,45 @@ def test_below_detection_is_half_with_its_spread_and_said_once(titrations):
 
 
 def test_flags_of_refused_samples_are_left_out(titrations):
-    """As they are not used."""
-    found = titrations(POINTS.replace("b,0.5,4", "b,0.5,44"), SAMPLES.replace("\n", ",doc_mg_l\n") + "b,50,0.1,<4\na,50,0.1,<2\n")
-    assert found.flags["sample_id"].tolist() == ["a"]
+    """As they are not used: those of both files, and of what a map fills in."""
+    points = POINTS.replace("ph\n", "ph,aluminum_mg_l\n").replace("7\n", "7,<1\n").replace("4\n", "4,\n")
+    samples = SAMPLES.replace("\n", ",doc_mg_l\n") + "b,,0.1,<4\na,50,0.1,<2\n"
+    found = titrations(points, samples, "[fill]\ntemperature_c = 20\n")
+    assert found.usable.tolist() == [True, False]
+    assert found.flags[["file", "sample_id", "column"]].to_numpy().tolist() == [
+        ["points", "a", "aluminum_mol_l"], ["points", "a", "temperature_c"], ["samples", "a", "doc_mg_l"],
+    ]  # fmt: skip
+
+
+def test_a_header_that_both_files_have(titrations):
+    """Where it means two things, that of the points is told."""
+    found = titrations(
+        POINTS.replace("titrant_ml", "V"), SAMPLES.replace("sample_volume_ml", "V") + "a,50,0.1\nb,50,0.1\n",
+        '[columns]\nV = "titrant (mL)"\n', '[columns]\nV = "sample volume (mL)"\n',
+    )  # fmt: skip
+    assert found.headers["V"] == ("titrant_volume_ml", "mL")
+    assert found.samples["sample_volume_ml"].tolist() == [50, 50]
+
+
+def test_what_contradicts_is_not_judged_further(titrations):
+    """One line, though a mass is given beside the two volumes."""
+    points = POINTS.replace("ph\n", "ph,sample_volume_ml\n").replace("7\n", "7,50\n").replace("4\n", "4,\n")
+    found = titrations(points, "sample_id,sample_volume_ml,sample_mass_g,titrant_n\na,49,50,0.1\nb,50,,0.1\n")
+    assert only(found)["rule"] == "both files must say the same; samples.csv has 49 mL in row 2"
 
 
 def test_per_kilogram_by_the_density_of_the_sample(titrations):
     """Temperature and salinity may stand in the other file; UNESCO technical paper 44 (recalled): 1023.34306 kg/m3."""
-    points = "sample_id,titrant_ml,ph,temperature_c,salinity,boron_umol_kg\na,0,7,25,35,416\na,1,4,,,\nb,0,7,,,\nb,1,4,,,\n"
-    samples = SAMPLES.replace("\n", ",dic_umol_kg,dic_u_umol_kg\n") + "a,50,0.1,2000,2\nb,50,0.1,1000,\n"
+    points = "sample_id,titrant_ml,ph,temperature_c,salinity,boron_umol_kg\na,0,7,25,35,<416\na,1,4,,,\nb,0,7,,,\nb,1,4,,,\nc,0,7,,,\nc,1,4,,,\n"
+    samples = SAMPLES.replace("\n", ",dic_umol_kg,dic_u_umol_kg\n") + "a,50,0.1,2000,2\nb,50,0.1,1000,\nc,50,0.1,,\n"
     found = titrations(points, samples)
     pure = 0.99820  # 20 °C, IAPWS
-    assert_allclose(found.samples["dic_mol_l"], [2000e-6 * 1.02334306, 1000e-6 * pure], rtol=1e-5)
-    assert_allclose(found.samples["dic_u_mol_l"], [2e-6 * 1.02334306, np.nan], rtol=1e-5)
-    assert_allclose(found.samples["boron_mol_l"], [416e-6 * 1.02334306, np.nan], rtol=1e-5)
+    assert_allclose(found.samples["dic_mol_l"], [2000e-6 * 1.02334306, 1000e-6 * pure, np.nan], rtol=1e-5)
+    assert_allclose(found.samples["dic_u_mol_l"], [2e-6 * 1.02334306, np.nan, np.nan], rtol=1e-5)
+    assert_allclose(found.samples["boron_mol_l"], [208e-6 * 1.02334306, np.nan, np.nan], rtol=1e-5)
+    assert_allclose(found.samples["boron_u_mol_l"], [416e-6 / math.sqrt(12) * 1.02334306, np.nan, np.nan], rtol=1e-5)
     assert found.notes == (
+        "points: 1 x below detection, half the limit used in boron_mol_l (first: row 2, '<416')",
         "points: 1 x no temperature, density at 20 °C used in dic_mol_l (first: row 4)",
         "points: 1 x no salinity, density of fresh water used in dic_mol_l (first: row 4)",
     )
