@@ -77,6 +77,7 @@ WATERS = {
     "Sea water": sea(np.arange(0.0, 4.0, 0.1), carbon=2.0e-3),
     "Swept sea water": sea(np.arange(0.0, 4.0, 0.1), carbon=0.0, exchange="purged"),
     "Mine water": fresh(np.arange(0.0, 9.0, 0.25), strength=-0.05, alkalinity=-2e-3, carbon=1e-3, titrant_kind="base"),
+    "Mine water begun": fresh(np.arange(0.0, 3.6, 0.25), strength=-0.05, alkalinity=-2e-3, carbon=1e-3, titrant_kind="base"),
     "Swapped": swapped(),
     "Three points": fresh([0.0, 0.5, 1.0], strength=0.02, alkalinity=50e-6, carbon=75e-6, ionic_strength=4e-4),
     "Three past the end": fresh([6.6, 7.0, 7.4], strength=0.05, alkalinity=3e-3, carbon=3.2e-3),

@@ -371,12 +371,13 @@ def test_commands_of_the_walk_through_run(tmp_path, monkeypatch):
     """Every command of docs/first_hour.md ends well; its output goes elsewhere."""
     text = (ROOT / "docs" / "first_hour.md").read_text(encoding="utf-8")
     commands = re.findall(r"^    aquabuf (.+)$", text, flags=re.MULTILINE)
-    assert len(commands) >= 9
+    assert len(commands) >= 11
     monkeypatch.chdir(ROOT)
     for command in commands:
         words = command.split(" > ")[0].split()
         if "--out" in words:
             at = words.index("--out") + 1
-            words[at:at + 1] = [str(tmp_path / words[at]), "--no-figure", "--draws", "0"]
+            quick = ["--figures", "0"] if words[0] == "titration" else ["--no-figure", "--draws", "0"]
+            words[at:at + 1] = [str(tmp_path / words[at]), *quick]
         done = CliRunner().invoke(main, words)
         assert done.exit_code == 0, f"{command}: {done.output or done.exception}"

@@ -12,11 +12,12 @@ from zlib import crc32
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["COVERAGE", "drawn", "interval", "row_blocks", "share"]
+__all__ = ["COVERAGE", "TO_COVERAGE", "drawn", "interval", "row_blocks", "share"]
 
 Array = NDArray[np.float64]
 
 COVERAGE = 0.90            # of the intervals
+TO_COVERAGE = 1.645        # half their width over the standard uncertainty, of a normal distribution
 BLOCK_STATES = 32_768      # rows times draws at once
 SIGNED = ("ph", "ph_total", "ph_seawater", "ph_free", "alkalinity_eq_l", "anc_eq_l", "temperature_c",
           "ph_temperature_c", "elevation_m")

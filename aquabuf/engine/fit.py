@@ -6,14 +6,15 @@ of pH and of the burette make of it. Many titrations are fitted at once by Leven
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from aquabuf.arrays import LN10
 from aquabuf.chem.acids import ZERO_LEVEL_PK
-from aquabuf.engine.titrate import Points
+from aquabuf.engine.balance import Family
+from aquabuf.engine.titrate import Points, titration_curve
 
 __all__ = ["CurveFit", "fit_curve"]
 
@@ -152,6 +153,14 @@ def _inside(p: Array) -> Array:
     return p
 
 
+def _curve(points: Points, p: Array) -> Array:
+    """What the electrode would read along the fitted curve."""
+    shape = points.acid.shape
+    k = np.exp(-LN10 * p[:, 4, None]) * points.h_per_activity
+    more = replace(points, families=(*points.families, Family(np.broadcast_to(p[:, 3, None], shape), (k,), 0)))
+    return titration_curve(more, p[:, 0], p[:, 1]) + p[:, 2, None]
+
+
 def _outcome(points: Points, ph: Array, use: NDArray[np.bool_], u_ph: Array, u_acid: Array, p: Array,
              sought: NDArray[np.bool_], converged: NDArray[np.bool_]) -> CurveFit:
     """Covariance, response, residuals and quality of the fit at its solution."""
@@ -171,9 +180,10 @@ def _outcome(points: Points, ph: Array, use: NDArray[np.bool_], u_ph: Array, u_a
     covariance[np.ix_(np.arange(n), at, at)] = inverse
     response[:, at] = np.einsum("nij,nj->ni", inverse, pull)
     alkalinity = p[:, 0] - np.where(p[:, 4] < ZERO_LEVEL_PK, p[:, 3], 0.0)
-    slope = jacobian[..., 2]
-    with np.errstate(divide="ignore", invalid="ignore"):
-        residual_ph = np.where(use & converged[:, None], -residual / slope, np.nan)
+    residual_ph = np.full(ph.shape, np.nan)
+    rows = np.flatnonzero(converged)
+    if rows.size:
+        residual_ph[rows] = np.where(use[rows], ph[rows] - _curve(points.take(rows), p[rows]), np.nan)
 
     def or_nan(v: Array) -> Array:
         return np.where(converged, v, np.nan)

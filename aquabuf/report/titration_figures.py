@@ -17,9 +17,10 @@ from numpy.typing import NDArray
 
 from aquabuf.assess.titration.assess import TitrationResult
 from aquabuf.assess.titration.gran import first_gran
-from aquabuf.assess.titration.inflection import slopes
+from aquabuf.assess.titration.inflection import SPANS, slopes
 from aquabuf.assess.titration.smooth import fit_of
 from aquabuf.assess.titration.tables import MICRO
+from aquabuf.assess.uncertainty import COVERAGE, TO_COVERAGE
 from aquabuf.report.labels import SIZE, label_column
 from aquabuf.report.style import CALM, FAINT, INK, STYLE, WARNED
 from aquabuf.report.titration_view import (
@@ -48,7 +49,8 @@ LEAST_SCATTERS = 3.0    # of expected scatter that the axis of residuals shows
 WRAP = 46               # letters per line of words in an empty panel
 WIDE, HIGH = 11.0, 8.0  # of the page in inches
 TITLE_INCHES, LINE_INCHES, BELOW_INCHES, FOOT_INCHES = 0.36, 0.145, 0.12, 0.2
-SIGNS = "± is one standard uncertainty. Hollow points are left out. Diamonds: end points, the recommended one filled."
+SIGNS = (f"± is half the {COVERAGE:.0%} interval. Hollow points are left out. Diamonds: end points, the recommended "
+         f"one filled.")
 
 
 def _size(one: OneTitration) -> float:
@@ -100,13 +102,14 @@ def plot_curve(result: TitrationResult, i: int, *, ax: Axes) -> Axes:
     ax.set(ylabel="pH", title=f"Titration curve{line}")
     _across(ax, one)
     if not one.added.size:
-        _say(ax, "No reading could be brought to pH.")
+        ax.set_yticks([])
+        _say(ax, "No reading could be brought to pH")
         return ax
     low, high = float(np.nanmin(one.ph)), float(np.nanmax(one.ph))
     margin = max(0.06 * (high - low), 0.05)
     ax.set_ylim(low - margin, high + margin)
     marks = marks_of(result, one, i)
-    for mark in marks:
+    for mark in (m for m in marks if np.isfinite(m.x)):
         ax.plot(mark.x, mark.y, ls="", marker="D", ms=6.5 if mark.bold else 4.5, mec=INK, mew=0.9,
                 mfc=INK if mark.bold else "white", label="_mark", zorder=3.5)
     label_column(ax, marks, one.added, one.ph)
@@ -130,6 +133,8 @@ def plot_gran(result: TitrationResult, i: int, *, ax: Axes) -> Axes:
     top = float(f.max(initial=0.0)) or 1.0
     ax.set_ylim(-0.05 * top, (1.08 if chosen.any() else 1.2) * top)
     ax.yaxis.set_major_formatter(FuncFormatter(lambda v, _: f"{v:,.6g}"))
+    if not f.size:
+        ax.set_yticks([])
     if not chosen.any():
         _note(ax, f"No line: {s.estimates['gran'].why_not[i]}", right=one.is_base)
         return ax
@@ -157,7 +162,8 @@ def _gran_line(ax: Axes, one: OneTitration, slope: float, ratio: float, root: fl
 def plot_derivative(result: TitrationResult, i: int, *, ax: Axes) -> Axes:
     """Change of pH per titrant, with the inflection and the step it is known to."""
     one, b = one_titration(result, i), result.solved.inflection
-    span = max(int(b.span[i]), 1, 0 if np.isfinite(b.acid[i]) else one.added.size // MANY_SLOPES)
+    at, width = float(b.acid[i]) / one.per_added, float(b.resolution[i]) / one.per_added
+    span = _steps(one, at, width)
     x, fall, _ = slopes(one.added[None], (-one.ph if one.is_base else one.ph)[None], span)
     ax.plot(x[0], fall[0], color=CALM, lw=0.9, marker="o", ms=0.7 * _size(one), label="_slope", zorder=2)
     ax.axhline(0.0, color=FAINT, lw=0.8, zorder=0)
@@ -167,21 +173,33 @@ def plot_derivative(result: TitrationResult, i: int, *, ax: Axes) -> Axes:
     if x.shape[1]:
         low, high = float(np.nanmin(fall, initial=0.0)), float(np.nanmax(fall, initial=0.0))
         ax.set_ylim(low - 0.05 * (high - low or 1.0), low + SLOPE_ROOM * (high - low or 1.0))
-    if not np.isfinite(b.acid[i]):
+    else:
+        ax.set_yticks([])
+    if not np.isfinite(at):
         why = result.solved.estimates["inflection"].why_not[i]
         words = "No inflection is sought in a titration with base" if one.is_base else f"No inflection: {why}"
         _note(ax, words + (f"\nslopes over {span} steps" if span > 1 else ""))
         return ax
-    at, half = float(b.acid[i]) / one.per_added, 0.5 * float(b.resolution[i]) / one.per_added
-    ax.axvspan(at - half, at + half, color=BAND, lw=0, zorder=0)
+    ax.axvspan(at - 0.5 * width, at + 0.5 * width, color=BAND, lw=0, zorder=0)
     ax.axvline(at, color=INK, lw=1.0, zorder=1)
     u = result.solved.estimates["inflection"].own_u[i] / one.per_added
     right = at > np.mean(ax.get_xlim())
-    words = f"Inflection {volume(one, at)}\n± {volume(one, u)}; slopes over {volume(one, 2.0 * half)} (band)"
+    words = f"Inflection {volume(one, at)}\n± {volume(one, TO_COVERAGE * u)}; slopes over {volume(one, width)} (band)"
     ax.annotate(words, (at, 0.98), (-5.0 if right else 5.0, 0.0), xycoords=("data", "axes fraction"),
                 textcoords="offset points", ha="right" if right else "left", va="top", fontsize=SIZE, linespacing=1.4,
                 parse_math=False)
     return ax
+
+
+def _steps(one: OneTitration, at: float, width: float) -> int:
+    """Number of steps that the steepest slope was taken over; of a curve without inflection, as many as it is long."""
+    if not np.isfinite(at):
+        return max(one.added.size // MANY_SLOPES, 1)
+    for steps in SPANS:
+        middle, size = 0.5 * (one.added[steps:] + one.added[:-steps]), one.added[steps:] - one.added[:-steps]
+        if (np.isclose(size, width, rtol=1e-6, atol=0.0) & (np.abs(middle - at) <= width)).any():
+            return steps
+    return 1
 
 
 def plot_residuals(result: TitrationResult, i: int, *, ax: Axes) -> Axes:
@@ -207,9 +225,9 @@ def plot_residuals(result: TitrationResult, i: int, *, ax: Axes) -> Axes:
     for k in np.flatnonzero(one.named & inside).tolist():
         _row(ax, one, k)
     chi2, offset, u = found.fit.reduced_chi2[i], found.fit.offset_ph[i], found.u_offset[i]
-    sign = "+" if offset > 0.0 else ""
+    sign, half = "+" if offset > 0.0 else "", TO_COVERAGE * u
     _note(ax, f"{found.points[i]} points, reduced chi-squared {number(chi2, chi2)}; band: expected scatter\n"
-              f"Electrode offset {sign}{number(offset, u)} ± {number(u, u)} pH")
+              f"Electrode offset {sign}{number(offset, half)} ± {number(half, half)} pH")
     return ax
 
 

@@ -4,18 +4,18 @@ from __future__ import annotations
 
 import math
 
-from aquabuf.assess.titration.choose import method_facts
+from aquabuf.assess.titration.choose import DILUTE_BELOW_EQ, method_facts
 from aquabuf.assess.titration.options import ALWAYS_END_POINT
 from aquabuf.assess.titration.plan import COARSE_TO_PH, FINE_TO_PH, LAST_PH, Plan, Setup
+from aquabuf.assess.uncertainty import TO_COVERAGE
 from aquabuf.chem.gases import AIR_CO2_PPM, AIR_CO2_YEAR
 from aquabuf.readings.titration.result import COUNTS_PER_ML
-from aquabuf.report.summary import cautions, item
+from aquabuf.report.summary import cautions, item, plural
 from aquabuf.units import convert
 
 __all__ = ["plan_text"]
 
 BETTER_SHOWN = 3
-TO_90_PERCENT = 1.645
 
 
 def plan_text(p: Plan) -> str:
@@ -28,7 +28,7 @@ def _amount(s: Setup, ml: float) -> str:
     """Titrant in mL, and in counts for a digital titrator."""
     if math.isnan(ml):
         return "below it at the start"
-    counts = f" = {ml * COUNTS_PER_ML:.0f} counts" if s.device == "counts" else ""
+    counts = f" = {plural(round(ml * COUNTS_PER_ML), 'count')}" if s.device == "counts" else ""
     return f"{ml:.3f} mL{counts}"
 
 
@@ -57,14 +57,16 @@ def _verdict(p: Plan) -> str:
 
 def _volumes(p: Plan) -> str:
     s, lines = p.setup, ["Titrant to expect"]
+    level = ("the fixed end point for this alkalinity; in so dilute water it reads too much"
+             if s.alkalinity_eq_l < DILUTE_BELOW_EQ else "the end point that suits this alkalinity")
     for end, ml in p.volumes_ml.items():
         if end == "equivalence point":
-            where = f" (pH {p.end_ph:.2f} with the CO2 kept in)"
-            where = " (below zero: base would be needed)" if math.isnan(p.end_ph) else where
-            lines.append(f"  - to the equivalence point{where}: {_amount(s, ml)}")
+            where = f" (pH {p.end_ph:.2f} with the CO2 kept in): {_amount(s, ml)}"
+            where = ": none; alkalinity is below zero, base would be needed" if math.isnan(p.end_ph) else where
+            lines.append(item(f"to the equivalence point{where}"))
             continue
-        note = {p.level_ph: " (the end point that suits this alkalinity)", LAST_PH: " (last point)"}.get(float(end), "")
-        lines.append(f"  - to pH {end:g}{note}: {_amount(s, ml)}")
+        note = {p.level_ph: f" ({level})", LAST_PH: " (last point)"}.get(float(end), "")
+        lines.append(item(f"to pH {end:g}{note}: {_amount(s, ml)}"))
     return "\n".join(lines)
 
 
@@ -73,9 +75,11 @@ def _steps(p: Plan) -> str:
     lines = ["Steps; go by the pH you read, since the alkalinity is only expected"]
     if p.first_ph > COARSE_TO_PH:
         lines.append(item(f"down to pH {COARSE_TO_PH:g}: {_amount(s, coarse)} at a time"))
-    lines.append(item(f"from there to pH {FINE_TO_PH:g}: {_amount(s, fine)} at a time, so that no step passes more "
-                      f"than about 0.3 pH; wait until pH moves less than 0.01 in 30 s"))
-    lines.append(item(f"on to pH {LAST_PH:g}: {_amount(s, past)} at a time; these points carry the Gran line, so take "
+    if p.first_ph > FINE_TO_PH:
+        lines.append(item(f"{'from there' if p.first_ph > COARSE_TO_PH else 'down'} to pH {FINE_TO_PH:g}: "
+                          f"{_amount(s, fine)} at a time, so that no step passes more than about 0.3 pH; wait until "
+                          f"pH moves less than 0.01 in 30 s"))
+    lines.append(item(f"{'on' if p.first_ph > FINE_TO_PH else 'down'} to pH {LAST_PH:g}: {_amount(s, past)} at a time; these points carry the Gran line, so take "
                       f"five or more"))
     lines.append(item("write down titrant (running total) and pH each time; cover the vessel, stir gently, and be "
                       "done within 10 minutes"))
@@ -99,11 +103,11 @@ def _worth(p: Plan) -> str:
     method = r["recommended_method"]
     if not method:
         return f"Such a curve gives no result to rely on: {r['recommended_reason']}."
-    mg = TO_90_PERCENT * r["recommended_u_mg_l_caco3"]
+    mg = TO_COVERAGE * r["recommended_u_mg_l_caco3"]
     return item(f"Such a curve gives the alkalinity by the {method_facts('method')[method]['words']} to "
-                f"± {TO_90_PERCENT * r['recommended_u_ueq_l']:.2g} µeq/L (± {mg:.2g} mg/L as CaCO3; 90 % interval with "
+                f"± {TO_COVERAGE * r['recommended_u_ueq_l']:.2g} µeq/L (± {mg:.2g} mg/L as CaCO3; 90 % interval with "
                 f"the default uncertainties of pH, strength and volumes). A single end point at "
-                f"pH {ALWAYS_END_POINT:g} would read {r['fixed_4_5_ueq_l']:.1f} µeq/L.", mark="")
+                f"pH {ALWAYS_END_POINT:g} would read {r['fixed_4_5_ueq_l']:,.1f} µeq/L.", mark="")
 
 
 def _rests_on(p: Plan) -> str:

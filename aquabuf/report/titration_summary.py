@@ -9,14 +9,13 @@ import pandas as pd
 from aquabuf.assess.titration.choose import method_facts
 from aquabuf.assess.titration.findings import finding_facts
 from aquabuf.assess.titration.options import TitrationOptions
+from aquabuf.assess.uncertainty import TO_COVERAGE
 from aquabuf.report.summary import cautions, item, plural
-from aquabuf.report.titration_tally import LISTED, TitrationTally
+from aquabuf.report.titration_tally import LISTED, NAME_LENGTH, TitrationTally
 
 __all__ = ["titration_summary"]
 
 REASONS_SHOWN = 12
-NAME_LENGTH = 20
-TO_90_PERCENT = 1.645
 
 
 def titration_summary(tally: TitrationTally, options: TitrationOptions, *, source: str, files: Iterable[str]) -> str:
@@ -35,7 +34,7 @@ def _head(tally: TitrationTally, source: str) -> str:
 
 def _result(value: float, u: float) -> str:
     """A result and its 90 % interval, with the decimals that the interval allows."""
-    half = TO_90_PERCENT * u
+    half = TO_COVERAGE * u
     digits = 0 if half >= 10.0 else 1
     return f"{value:,.{digits}f} ± {half:,.{digits}f}"
 
@@ -43,27 +42,28 @@ def _result(value: float, u: float) -> str:
 def _row(r: pd.Series) -> tuple[str, str, str, str, str]:
     name = str(r["sample_id"])[:NAME_LENGTH]
     unit = next((u for u in ("ueq_l", "umol_kg") if not pd.isna(r.get(f"recommended_{u}", float("nan")))), "")
-    if unit:
+    if r["titrated_with"] == "base":
+        result, per_l = _acidity(r), ""
+    elif unit:
         value, u = r[f"recommended_{unit}"], r[f"recommended_u_{unit}"]
         result = f"{_result(value, u)} {'µeq/L' if unit == 'ueq_l' else 'µmol/kg'}"
         per_l = f"{r['recommended_mg_l_caco3']:.4g}"
     else:
-        result, per_l = _acidity(r), ""
+        result, per_l = "-", ""
     warnings = r["warnings"].split("; ") if r["warnings"] else []
     more = f" (+{len(warnings) - 1})" if len(warnings) > 1 else ""
     said = warnings[0] + more if warnings else r["status"] if r["status"] != "ok" else ""
-    return name, result, per_l, r["recommended_method"] or r["definition"], said
+    method = "end point" if r["titrated_with"] == "base" and result != "-" else r["recommended_method"]
+    return name, result, per_l, method, said
 
 
 def _acidity(r: pd.Series) -> str:
     """Acidity to the highest end point that a base titration reached."""
-    if r["definition"] != "acidity":
-        return "-"
     for end in ("8_3", "4_5", "3_7"):
         for unit, words in (("ueq_l", "µeq/L"), ("umol_kg", "µmol/kg")):
             value = r.get(f"acidity_{end}_{unit}", float("nan"))
             if not pd.isna(value):
-                return f"{_result(value, r[f'acidity_{end}_u_{unit}'])} {words} to pH {end.replace('_', '.')}"
+                return f"{_result(value, r[f'acidity_{end}_u_{unit}'])} {words} acidity to pH {end.replace('_', '.')}"
     return "-"
 
 
@@ -86,7 +86,8 @@ def _findings(tally: TitrationTally) -> str:
     lines = ["Diagnosis (findings.csv has each, with value, limit and source)"]
     for name, fact in finding_facts().items():
         if tally.findings[name]:
-            lines.append(item(f"{tally.findings[name]:,} x {name}: {fact['words']}. Next: {fact['remedy']}."))
+            names = ", ".join(tally.named[name]) + (" ..." if tally.findings[name] > len(tally.named[name]) else "")
+            lines.append(item(f"{tally.findings[name]:,} x {name} ({names}): {fact['words']}. Next: {fact['remedy']}."))
     return "\n".join(lines)
 
 
@@ -127,7 +128,8 @@ def _rests_on(tally: TitrationTally, options: TitrationOptions) -> str:
 def _next(tally: TitrationTally, files: Iterable[str]) -> str:
     lines = ["alkalinity.csv holds every method beside the recommended result and the reason for the choice."]
     if tally.with_result:
-        lines.append("`aquabuf assess READINGS.csv --titrations POINTS.csv` takes these results into the assessment.")
+        lines.append("`aquabuf assess READINGS.csv --titrations POINTS.csv` takes these results into the assessment; give "
+                     "it the same samples and maps.")
     if tally.figures < tally.samples and tally.figures:
         lines.append(f"Figures were drawn of the first {tally.figures:,}; --figures all draws every one.")
     lines.append(f"Written: {', '.join(files)}.")

@@ -8,27 +8,34 @@ from dataclasses import dataclass, field
 import pandas as pd
 
 from aquabuf.assess.titration.assess import TitrationResult
+from aquabuf.readings.duplicates import DUPLICATE_RULE
 from aquabuf.readings.titration.result import Titrations
 
-__all__ = ["LISTED", "TitrationTally"]
+__all__ = ["LISTED", "NAME_LENGTH", "TitrationTally"]
 
 LISTED = 20  # samples that the text shows one by one
+NAMED = 3    # samples that the text names for each finding
+NAME_LENGTH = 20
+
+
+def _general(rule: str) -> str:
+    """A rule without what differs from sample to sample."""
+    return DUPLICATE_RULE.removesuffix(" in row") if rule.startswith(DUPLICATE_RULE) else rule.split(";")[0]
 
 
 @dataclass(slots=True)
 class TitrationTally:
-    """Counts and the first rows of a run."""
+    """Counts and the first rows of a run; `named` are the first samples of each finding."""
 
     status: Counter = field(default_factory=Counter)
     methods: Counter = field(default_factory=Counter)
     findings: Counter = field(default_factory=Counter)
     refusals: Counter = field(default_factory=Counter)
+    named: dict[str, list[str]] = field(default_factory=dict)
     assumed: Counter = field(default_factory=Counter)
-    definitions: Counter = field(default_factory=Counter)
     flags: Counter = field(default_factory=Counter)
     notes: dict[str, None] = field(default_factory=dict)
     shown: list[pd.Series] = field(default_factory=list)
-    extra_rejected: int = 0
     figures: int = 0
 
     def add(self, t: Titrations, part: TitrationResult) -> None:
@@ -37,13 +44,15 @@ class TitrationTally:
         self.status.update(results["status"])
         has = results["status"].isin(["ok", "warned"])
         self.methods.update(m for m in results.loc[has, "recommended_method"] if m)
-        self.definitions.update(d for d in results.loc[has, "definition"] if d)
         self.findings.update(part.findings["finding"])
+        columns = (part.findings[name].tolist() for name in ("finding", "sample_id", "point_row"))
+        for finding, sample_id, row in zip(*columns, strict=True):
+            names = self.named.setdefault(finding, [])
+            if len(names) < NAMED:
+                names.append(sample_id[:NAME_LENGTH] + ("" if row is pd.NA else f" row {row}"))
         self.assumed.update(part.assumed)
-        for sample in part.rejected.drop_duplicates(["file", "sample_id"]).itertuples():
-            self.refusals[(sample.column, sample.rule)] += 1
-        refused = set(results.loc[results["status"] == "refused", "sample_id"])
-        self.extra_rejected += len(set(part.rejected["sample_id"]) - refused)
+        first = part.rejected.drop_duplicates(["file", "sample_id"])
+        self.refusals.update(zip(first["column"], map(_general, first["rule"]), strict=True))
         self.flags.update(zip(t.flags["what"], t.flags["column"], strict=True))
         self.notes |= dict.fromkeys(t.notes)
         room = LISTED - len(self.shown)

@@ -15,6 +15,7 @@ from aquabuf.assess.titration.options import ALWAYS_END_POINT
 from aquabuf.assess.titration.smooth import fit_of, fitted_curve
 from aquabuf.assess.titration.solve import ACIDITY_END_POINTS, Solved
 from aquabuf.assess.titration.tables import MICRO
+from aquabuf.assess.uncertainty import TO_COVERAGE
 from aquabuf.report.labels import Label
 from aquabuf.report.style import short_name
 
@@ -111,13 +112,14 @@ def number(value: float, u: float) -> str:
     """A value with as many digits as two of its uncertainty ask for."""
     if not np.isfinite(value):
         return "none"
-    digits = 1 - int(np.floor(np.log10(u))) if np.isfinite(u) and u > 0.0 else 0 if abs(value) >= FOUR_DIGITS else 1
+    has_u = np.isfinite(u) and u > 0.0
+    digits = 1 - int(np.floor(np.log10(u))) if has_u else int(abs(value) < FOUR_DIGITS)
     return f"{round(value, digits):,.{max(digits, 0)}f}".replace("-", "−")
 
 
 def amount(s: Solved, i: int, value: float, u: float) -> str:
-    """A result of titration `i` [eq per unit of sample] with its standard uncertainty, where that is known."""
-    value, u, unit = value * MICRO, u * MICRO, "µmol/kg" if s.curves.by_mass[i] else "µeq/L"
+    """A result of titration `i` [eq per unit of sample] with half its interval, where that is known."""
+    value, u, unit = value * MICRO, TO_COVERAGE * u * MICRO, "µmol/kg" if s.curves.by_mass[i] else "µeq/L"
     return f"{number(value, u)} ± {number(u, u)} {unit}" if np.isfinite(u) else f"{number(value, u)} {unit}"
 
 
@@ -164,7 +166,7 @@ def _mark(one: OneTitration, words: str, said: str, added: float, ph: float) -> 
 
 
 def title_line(result: TitrationResult, i: int) -> str:
-    """Sample, recommended result with its standard uncertainty, and method in words."""
+    """Sample, recommended result with its interval, and method in words."""
     s, choice = result.solved, result.choice
     name, method = " ".join(short_name(s.curves.names[i]).split()), str(choice.method[i])
     if method:
@@ -172,7 +174,8 @@ def title_line(result: TitrationResult, i: int) -> str:
         words = amount(s, i, choice.value[i], choice.u[i])
         return f"{name}: {definition} {words}, {method_facts('method')[method]['words']}"
     if any(mask[i] for mask, _ in choice.able.values()) and not s.curves.is_base[i]:
-        return textwrap.shorten(f"{name}: no result; {choice.reason[i]}", TITLE_LENGTH, placeholder=" …")
+        why = str(choice.reason[i]).split(":")[0]
+        return textwrap.shorten(f"{name}: no result; {why}", TITLE_LENGTH, placeholder=" …")
     if not s.curves.is_base[i]:
         return f"{name}: no result by any method for {method_facts('water')[choice.water[i]]['words']}"
     for end in reversed(ACIDITY_END_POINTS):

@@ -1,6 +1,7 @@
 """Words about one titration: digits that the uncertainty allows, title, findings."""
 
 import sys
+from dataclasses import replace
 from pathlib import Path
 
 import pytest
@@ -53,7 +54,7 @@ def test_title_gives_the_recommended_value(result):
     """The figure of the table, as one may read it aloud."""
     i = of(result, "Hard water")
     value, u = result.choice.value[i] * 1e6, result.choice.u[i] * 1e6
-    assert f" {value:,.0f} ± {u:.0f} µeq/L" in title_line(result, i)
+    assert f" {value:,.0f} ± {1.645 * u:.0f} µeq/L" in title_line(result, i)
     assert round(value) == round(result.results["recommended_ueq_l"].iloc[result.at[i]])
 
 
@@ -72,6 +73,16 @@ def test_findings_are_named_with_their_remedy(result, water):
         assert finding_facts()[name]["remedy"][:40] in line
         assert len(line) <= 165
     assert lines[-1].endswith(f"(and {len(table) - 3} more)") == (len(table) > 3)
+
+
+def test_fourth_finding_is_counted(result):
+    """One more than there is room for is not left out silently."""
+    i = of(result, "Wrong strength")
+    here = tuple(f for f in result.found if f.here[i])
+    for count, end in ((3, ""), (4, "(and 1 more)"), (5, "(and 2 more)")):
+        last = finding_lines(replace(result, found=here[:count]), i)[-1]
+        assert last.startswith(here[2].name)
+        assert last.partition("  (")[1:] == (("  (", end[1:]) if end else ("", ""))
 
 
 def test_finding_names_its_rows(result):

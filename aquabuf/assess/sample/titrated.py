@@ -17,6 +17,7 @@ from aquabuf.readings.titration.reader import iter_titrations
 
 __all__ = ["Titrated", "titrated_by"]
 
+ACIDITY_ONLY = "acidity only"
 COLUMNS = {False: ("alkalinity_eq_l", "alkalinity_u_eq_l"), True: ("anc_eq_l", "anc_u_eq_l")}  # by "is it an ANC"
 
 
@@ -61,18 +62,26 @@ class Titrated:
         count = sum(self.used.values())
         by = ", ".join(f"{method} {n:,}" for method, n in self.used.most_common())
         instead = f"; in {self.replaced:,} of them it took the place of the alkalinity in the readings"
-        lines = [f"Alkalinity of {count:,} samples is the recommended result of their titration in {source}"
-                 + (f" ({by})" if by else "") + (instead if self.replaced else "") + "."]
+        lines = [f"Alkalinity of {_many(count, 'sample')} is the recommended result of "
+                 f"{'its' if count == 1 else 'their'} titration in {source} ({by})"
+                 + (instead if self.replaced else "") + "."]
+        if not count:
+            lines = [f"No accepted sample of the readings has a titration with a result in {source}."]
         if len(self.results) > count:
-            lines.append(f"{len(self.results) - count:,} titrations with a result have no sample of their name in the "
-                         f"readings.")
+            lines.append(f"Without an accepted sample of their name in the readings: "
+                         f"{_many(len(self.results) - count, 'titration')} with a result.")
         if self.without:
             words = ", ".join(f"{status} {n:,}" for status, n in sorted(self.without.items()))
-            lines.append(f"{sum(self.without.values()):,} titrations gave nothing ({words}); the readings' own "
-                         f"alkalinity stands. `aquabuf titration` says why.")
+            lines.append(f"Nothing came of {_many(sum(self.without.values()), 'titration')} ({words}): where the "
+                         f"readings have an alkalinity of their own, it stands. `aquabuf titration` says why.")
         if self.warned:
-            lines.append(f"{self.warned:,} results carry a warning of their titration; see `aquabuf titration`.")
+            lines.append(f"A warning stands with {_many(self.warned, 'result')} of titrations; `aquabuf titration` "
+                         f"tells which.")
         return lines
+
+
+def _many(count: int, noun: str) -> str:
+    return f"{count:,} {noun}{'' if count == 1 else 's'}"
 
 
 def titrated_by(files: TitrationFiles) -> Titrated:
@@ -86,7 +95,8 @@ def titrated_by(files: TitrationFiles) -> Titrated:
         for i in np.flatnonzero(np.isfinite(choice.value)).tolist():
             out.results[s.curves.names[i]] = (float(choice.value[i] * per_liter[i]), float(choice.u[i] * per_liter[i]),
                                               str(choice.method[i]), bool(is_anc[i]))
-        status = part.results["status"].tolist()
-        out.without.update(word for word in status if word in (REFUSED, NO_RESULT))
-        out.warned += status.count(WARNED)
+        status, has = part.results["status"].to_numpy(), np.zeros(len(t), dtype=bool)
+        has[part.at] = np.isfinite(choice.value)
+        out.without.update(word if word in (REFUSED, NO_RESULT) else ACIDITY_ONLY for word in status[~has].tolist())
+        out.warned += int((status[has] == WARNED).sum())
     return out

@@ -32,6 +32,7 @@ class Crossing:
     u_curve : standard uncertainty that the spacing of the points leaves. [eq per unit of sample]
     step_ph : pH between the two points around it. [-]
     before : index of the point before it; -1 where there is none.
+    scatter : scatter of the crossing over that of one reading, both points around it having part in it. [-]
     """
 
     acid: Array
@@ -39,6 +40,7 @@ class Crossing:
     u_curve: Array
     step_ph: Array
     before: NDArray[np.intp]
+    scatter: Array
 
 
 def crossing(acid: Array, ph: Array, at_ph: Array | float) -> Crossing:
@@ -76,7 +78,8 @@ def crossing(acid: Array, ph: Array, at_ph: Array | float) -> Crossing:
     return Crossing(
         acid=np.where(known, curved, np.nan), slope=np.where(known, np.nan_to_num(slope), np.nan),
         u_curve=np.where(known, CURVATURE_SHARE * np.abs(curved - straight), np.nan),
-        step_ph=np.where(known, width, np.nan), before=np.where(known & (after > 0), i, np.where(known, 0, -1)))
+        step_ph=np.where(known, width, np.nan), before=np.where(known & (after > 0), i, np.where(known, 0, -1)),
+        scatter=np.where(known, np.hypot(share, 1.0 - share), np.nan))
 
 
 def _end_slope(inner: Array, outer: Array, inner_width: Array, outer_width: Array) -> Array:

@@ -12,8 +12,9 @@ from numpy.typing import NDArray
 from aquabuf.assess.titration.choose import Choice, best_guess
 from aquabuf.assess.titration.convert import fixed_to_proton_balance
 from aquabuf.assess.titration.options import ALWAYS_END_POINT
+from aquabuf.assess.titration.parts import hydrolyzing_metals
 from aquabuf.assess.titration.solve import Solved, text_of, value_of
-from aquabuf.assess.titration.strength import doubt_in_words, slope_off, strength_doubtful, what_tells
+from aquabuf.assess.titration.strength import GOOD_CHI2, doubt_in_words, slope_off, strength_doubtful, what_tells
 from aquabuf.tables import read_table
 
 __all__ = ["Finding", "finding_facts", "findings"]
@@ -25,7 +26,7 @@ DISAGREE_SIGMAS = 2.5
 STEPS_MOVE = 0.1           # pH that changes at "one" volume when steps were written down instead of running totals
 LEAST_TURN = 0.05          # pH
 TURN_SIGMAS = 4.0
-OFF_CURVE = (6.0, 0.08)    # times scatter, pH
+OFF_CURVE = (6.0, 0.08, 6.0)  # times scatter, pH, times the median of all points: one that stands out of its curve
 WINDOW_MATTERS = (2e-6, 0.02)  # standard deviation over the windows: eq per unit of sample, share of the result
 OFFSET_SPOILS = 0.1        # pH; an electrode farther off spoils every fixed end point
 MILLIVOLT_DRIFT = 59.0     # mV per pH, to judge drift by one limit
@@ -128,13 +129,13 @@ def _points(s: Solved, choice: Choice) -> Iterator[Finding]:
     def reading(k: NDArray) -> Array:
         return np.where((k >= 0) & (k < width), ph[rows, np.clip(k, 0, width - 1)], np.nan)
 
-    with np.errstate(invalid="ignore"):
-        # changing the two over mends the order on both sides
-        mends = ~(reading(at - 1) < reading(at + 1)) & ~(reading(at) < reading(at + 2)) & (back.sum(axis=1) == 1)
+    with np.errstate(invalid="ignore"):  # is the order right without the first of the two, without the second?
+        first_off, second_off = ~(reading(at - 1) < reading(at + 1)), ~(reading(at) < reading(at + 2))
+    mends = first_off & second_off & (back.sum(axis=1) == 1)  # then changing them over mends it on both sides
     value = rise[rows, at]
     yield _finding("points swapped", here & mends, value, point=np.where(here & mends, at, -1))
     turned = here & ~mends
-    yield _finding("pH turns back", turned, value, point=np.where(turned, at + 1, -1))
+    yield _finding("pH turns back", turned, value, point=np.where(turned, at + ~(first_off & ~second_off), -1))
 
 
 def _lines(s: Solved, choice: Choice) -> Iterator[Finding]:
@@ -144,6 +145,9 @@ def _lines(s: Solved, choice: Choice) -> Iterator[Finding]:
         curved = (g.first >= 0) & ~g.straight
         matters = g.u_window > np.maximum(WINDOW_MATTERS[0], WINDOW_MATTERS[1] * np.abs(g.acid))
         beyond = g.u_window > g.u_line
+    with np.errstate(invalid="ignore", divide="ignore"):
+        share = 100.0 * hydrolyzing_metals(s.samples, s.curves.count.size) / np.abs(g.acid)
+    yield _outside("metals take part", share)
     yield _finding("curved Gran line", curved, g.reduced_chi2)
     yield _finding("choice of points matters", g.straight & matters & beyond, g.u_window * 1e6)
 
@@ -160,7 +164,8 @@ def _fits(s: Solved, choice: Choice) -> Iterator[Finding]:
     with np.errstate(invalid="ignore", divide="ignore"):
         by_volume = np.nan_to_num(slope[rows, at] / spacing[rows, at]) * c.u_acid
         limit = np.maximum(OFF_CURVE[0] * np.hypot(c.u_ph_scatter, by_volume), OFF_CURVE[1])
-    off = largest > limit
+    usual = _median(residual)
+    off = largest > np.maximum(limit, OFF_CURVE[2] * usual)
     yield _finding("point off the curve", off, largest, point=np.where(off, at, -1))
     with np.errstate(invalid="ignore", divide="ignore"):
         lost = 100.0 * (1.0 - f.fit.carbon / s.carbon_at_start)
@@ -173,6 +178,14 @@ def _fits(s: Solved, choice: Choice) -> Iterator[Finding]:
         gap = f.fit.carbon - measured
         differs = np.abs(gap) > DISAGREE_SIGMAS * np.hypot(f.u_carbon, u_measured)
         yield _finding("carbon differs", differs, 100.0 * gap / measured)
+
+
+def _median(v: Array) -> Array:
+    """Median of the finite values of each row; infinite where there are none."""
+    ordered, count = np.sort(v, axis=1), np.isfinite(v).sum(axis=1)  # nan sorts to the end
+    rows = np.arange(len(v))
+    low, high = (ordered[rows, np.clip(k, 0, v.shape[1] - 1)] for k in ((count - 1) // 2, count // 2))
+    return np.where(count > 0, 0.5 * (low + high), np.inf)
 
 
 def _change(v: Array) -> Array:
@@ -188,7 +201,7 @@ def _electrode(s: Solved, choice: Choice) -> Iterator[Finding]:
     with np.errstate(invalid="ignore"):
         found = np.where(np.isfinite(s.fit.fit.offset_ph), s.fit.fit.offset_ph, s.excess.fit.offset_ph)
         u = np.where(np.isfinite(s.fit.u_offset), s.fit.u_offset, s.excess.u_offset)
-        clear = np.abs(found) > SIGMAS * u
+        clear = (np.abs(found) > SIGMAS * u) & ~(s.fit.fit.reduced_chi2 > GOOD_CHI2)
     offset = _outside("electrode offset", np.abs(found), clear & ~(c.is_potential & (k.standards == 0)))
     yield _finding(offset.name, offset.here, found)
     yield _outside("electrode slope", 100.0 * k.efficiency, c.is_potential & (k.standards > 1))

@@ -24,9 +24,9 @@ FEWEST = 3               # points on a line
 LEAST_SPAN_PH = 0.3      # of a window: free acid doubles, so that the line has something to stand on
 LEAST_FREE_ACID = 5e-6   # eq per unit of sample, taken for points that lie before a first guess of the end point
 CHANCE_PARTS = 2.0       # of the variance expected of windows that chance may bring about
-MOST_LENGTHS = 40        # lengths of window that are tried in a long titration
+LENGTH_STEP = 1.1        # between the lengths of window that are tried, at least one point
 NOT_BY_CHANCE = 0.01     # probability of so much scatter, below which points are called curved
-BIAS_SHARE = 0.8         # of the error from acid still bound; some goes with escaping CO2; found by simulation
+BIAS_SHARE = 0.7         # of the error from acid still bound; some goes with escaping CO2; found by simulation
 BUFFER_PH = (5.4, 7.8)   # where carbon dioxide and bicarbonate share the carbon: second function
 CARBONATE_FROM_PH = 8.8  # above it bicarbonate and carbonate do: third function
 
@@ -169,14 +169,22 @@ def windows(points: Points, ph: Array, use: NDArray[np.bool_], *, alkalinity: Ar
     plain, corrected, expected = (_Sums(x, y, u_f, use) for y in (f, excess, ideal))
     best = _Best(n)
     run = use.cumsum(axis=1)
-    lengths = np.unique(np.round(np.geomspace(FEWEST, max(m, FEWEST), MOST_LENGTHS)).astype(int))
-    for length in lengths[lengths <= m]:
+    for length in _lengths(m):
         line = replace(plain.all_starts(length), u_root=expected.all_starts(length).u_root)
         true = corrected.all_starts(length).root
         solid = np.concatenate([run[:, length - 1:length], run[:, length:] - run[:, :-length]], axis=1) == length
         solid &= np.abs(safe[:, length - 1:] - safe[:, :m - length + 1]) >= LEAST_SPAN_PH
         best.offer(length, line, true, solid, x[:, :m - length + 1], float(chdtri(length - 2, NOT_BY_CHANCE)))
     return best.gran(steepness, plain, expected)
+
+
+def _lengths(most: int) -> list[int]:
+    """Lengths of window from FEWEST points on; the same for every titration, however long its neighbors are."""
+    out, length = [], FEWEST
+    while length <= most:
+        out.append(length)
+        length = max(length + 1, round(length * LENGTH_STEP))
+    return out
 
 
 class _Best:

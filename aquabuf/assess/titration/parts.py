@@ -10,7 +10,8 @@ from numpy.typing import ArrayLike, NDArray
 from aquabuf.assess.titration.solve import Solved, value_of
 from aquabuf.engine.balance import fractions
 
-__all__ = ["PARTITION_PH", "calculated_acidity", "co2_acidity", "partition", "partition_of", "species"]
+__all__ = ["PARTITION_PH", "calculated_acidity", "co2_acidity", "hydrolyzing_metals", "partition", "partition_of",
+           "species"]
 
 Array = NDArray[np.float64]
 
@@ -40,7 +41,7 @@ def partition_of(s: Solved, total: Array) -> tuple[tuple[Array, Array, Array], N
     start = s.ph[:, 0]
     passed = -s.acidity[PARTITION_PH].value
     with np.errstate(invalid="ignore"):
-        from_sample = np.where(s.curves.added[:, 0] == 0.0, 0.0, np.nan)  # a later reading does not tell the sample's pH
+        from_sample = np.where(s.curves.added[:, 0] == 0.0, 0.0, np.nan)  # a later reading is not the sample's own pH
         phenolphthalein = np.where(start <= PARTITION_PH, from_sample, passed)
         parts = partition(phenolphthalein, np.where(s.curves.is_base, np.nan, total))
         hydroxide, carbonate, bicarbonate = species(s, total)
@@ -71,6 +72,12 @@ def co2_acidity(s: Solved) -> Array:
     """Free CO2 by base to pH 8.3, less what was needed to pH 4.5 from below. [mol per unit of sample]"""
     to_8_3, to_4_5 = s.acidity[8.3].value, s.acidity[4.5].value
     return np.where(s.curves.is_base, to_8_3 - np.nan_to_num(to_4_5), np.nan)
+
+
+def hydrolyzing_metals(samples: Mapping[str, NDArray], size: int) -> Array:
+    """Acid that iron(III) and aluminum can give off or bind along a Gran line: three per mole. [eq/L]"""
+    return 3.0 * sum((np.nan_to_num(value_of(samples, name, size)) for name in ("iron_3_mol_l", "aluminum_mol_l")),
+                     start=np.zeros(size))
 
 
 def calculated_acidity(samples: Mapping[str, NDArray], ph: Array) -> Array:

@@ -8,6 +8,7 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
+from aquabuf.assess.sample.solve import believable
 from aquabuf.assess.titration.assess import TitrationResult, assess_titrations
 from aquabuf.assess.titration.endpoints import end_point_for
 from aquabuf.assess.titration.options import ALWAYS_END_POINT, TitrationOptions
@@ -110,8 +111,7 @@ def plan(setup: Setup) -> Plan:
     dense = np.linspace(0.0, _reach(setup), DENSE)
     ph = _curve(setup, carbon, dense)
     if not np.isfinite(ph).all():
-        raise InputError(f"no water has an alkalinity of {setup.alkalinity_eq_l * 1e6:g} µeq/L at pH {first_ph:g}. "
-                         f"Leave the pH out, or correct one of them.")
+        raise _no_water(setup)
     level = float(end_point_for(np.array(_mg(setup.alkalinity_eq_l))))
     at = {e: _volume_at(dense, ph, e) for e in dict.fromkeys((8.3, level, ALWAYS_END_POINT, 4.2, LAST_PH))}
     end = setup.alkalinity_eq_l * setup.sample_ml / setup.strength_eq_l
@@ -140,11 +140,17 @@ def _water(setup: Setup) -> tuple[float, float]:
     else:
         water = Water.from_ph_alkalinity(ph=setup.ph, alkalinity_eq_l=setup.alkalinity_eq_l, t_c=setup.t_c,
                                          ionic_strength_mol_l=strength)
-    if int(water.status) < 0:
-        raise InputError(f"no water has an alkalinity of {setup.alkalinity_eq_l * 1e6:g} µeq/L"
-                         + ("" if setup.ph is None else f" at pH {setup.ph:g}")
-                         + ". Leave the pH out, or correct one of them.")
+    if not believable(water):
+        raise _no_water(setup)
     return float(water.dic_mol_l), float(water.ph)
+
+
+def _no_water(setup: Setup) -> InputError:
+    """That no water is like the one expected."""
+    alkalinity = f"no water has an alkalinity of {setup.alkalinity_eq_l * 1e6:g} µeq/L"
+    if setup.ph is None:
+        return InputError(f"{alkalinity} in equilibrium with air. Correct the alkalinity or its unit.")
+    return InputError(f"{alkalinity} at pH {setup.ph:g}. Leave the pH out, or correct one of them.")
 
 
 def _reach(setup: Setup) -> float:
@@ -176,12 +182,12 @@ def _volume_at(added_ml: Array, ph: Array, end_ph: float) -> float:
 
 
 def _readable(step_ml: float, smallest_ml: float) -> float:
-    """The step rounded down to 1, 2 or 5 times a power of ten, not below what the device can show."""
-    if not step_ml > smallest_ml:
+    """The step rounded down to 1, 2 or 5 times a power of ten of what the device can show, and not below that."""
+    shown = step_ml / smallest_ml
+    if not shown > 1.0:
         return smallest_ml
-    power = 10.0 ** np.floor(np.log10(step_ml))
-    lead = max(k for k in (1.0, 2.0, 5.0) if k * power <= step_ml * (1.0 + 1e-9))
-    return max(lead * power, smallest_ml)
+    power = 10.0 ** np.floor(np.log10(shown))
+    return max(k for k in (1.0, 2.0, 5.0) if k * power <= shown * (1.0 + 1e-9)) * power * smallest_ml
 
 
 def _steps(setup: Setup, added_ml: Array, ph: Array) -> tuple[float, float, float]:

@@ -174,13 +174,13 @@ def _readings_as_ph(c: Curves, samples: Mapping[str, NDArray], points_with) -> t
 
 
 def _first_guess(c: Curves, ph: Array) -> Array:
-    """Alkalinity to start from: where pH passes 4.5, less the free acid there; of an acid water minus its free acid."""
+    """Alkalinity to start from: where pH passes 4.5, else the first point, less the free acid there."""
     free = 10.0**-ALWAYS_END_POINT
     found = crossing(c.acid, np.where(c.is_base[:, None], np.nan, ph), ALWAYS_END_POINT).acid - free
     rows = np.arange(c.count.size)
     last = c.acid[rows, np.maximum(c.count - 1, 0)]
-    of_start = np.where(ph[:, 0] < ALWAYS_END_POINT, -(10.0 ** -np.minimum(ph[:, 0], 14.0)),
-                        np.where(c.is_base, 0.0, last))
+    acid_start = c.acid[:, 0] - 10.0 ** -np.minimum(ph[:, 0], 14.0) / c.dilution[:, 0]
+    of_start = np.where(ph[:, 0] < ALWAYS_END_POINT, acid_start, np.where(c.is_base, 0.0, last))
     return np.where(np.isfinite(found), found, np.nan_to_num(of_start))
 
 
@@ -218,17 +218,22 @@ def _of_fit(f: Fitted) -> Estimate:
 
 def _of_inflection(b: Inflection, c: Curves) -> Estimate:
     own = np.hypot(b.u_acid, c.u_acid)
-    why = worded(c.count.size, (np.isnan(b.acid), "pH falls fastest at no point within the curve"))
+    why = worded(c.count.size, (np.isnan(b.acid), "no point of the curve is steepest beyond scatter"))
     return Estimate(b.acid, np.hypot(own, _shared(c, b.acid)), own, why)
 
 
 def _of_crossing(found: Crossing, c: Curves) -> Estimate:
     """A fixed end point. What the electrode reads wrong moves it along the curve."""
-    u_ph = np.hypot(c.u_ph, c.u_ph_scatter)
-    own = np.sqrt(found.u_curve**2 + (found.slope * u_ph) ** 2 + c.u_acid**2)
+    own = np.sqrt(found.u_curve**2 + _reading_u(found, c) ** 2)
     why = worded(c.count.size, (np.isnan(found.acid), "the curve does not pass this pH"),
                  (c.is_base, "titrated with base"))
     return Estimate(found.acid, np.hypot(own, _shared(c, found.acid)), own, why)
+
+
+def _reading_u(found: Crossing, c: Curves) -> Array:
+    """What readings make of a crossing: an electrode that is off moves it along the curve, scatter moves its points."""
+    scatter = found.scatter * np.hypot(found.slope * c.u_ph_scatter, c.u_acid)
+    return np.hypot(found.slope * c.u_ph, scatter)
 
 
 def _two_point(c: Curves, ph: Array, first: Crossing, carbon: Array, points: Points) -> Estimate:
@@ -238,9 +243,10 @@ def _two_point(c: Curves, ph: Array, first: Crossing, carbon: Array, points: Poi
     k1, per_activity = points.k1[:, 0], points.h_per_activity[:, 0]
     left = (2.0 * left_at(ALWAYS_END_POINT, k1, per_activity)
             - left_at(ALWAYS_END_POINT - TWO_POINT_STEP, k1, per_activity))
-    scatter = np.hypot(2.0 * first.slope, second.slope) * c.u_ph_scatter
+    scatter = np.hypot(2.0 * first.scatter * np.hypot(first.slope * c.u_ph_scatter, c.u_acid),
+                       second.scatter * np.hypot(second.slope * c.u_ph_scatter, c.u_acid))
     own = np.sqrt(4.0 * first.u_curve**2 + second.u_curve**2 + scatter**2
-                  + ((2.0 * first.slope - second.slope) * c.u_ph) ** 2 + 5.0 * c.u_acid**2
+                  + ((2.0 * first.slope - second.slope) * c.u_ph) ** 2
                   + (BIAS_SHARE * left * carbon) ** 2)
     why = worded(c.count.size, (np.isnan(value), "the curve does not pass pH 4.5 and 4.2"))
     return Estimate(value, np.hypot(own, _shared(c, value)), own, why)
@@ -253,8 +259,7 @@ def _acidity(c: Curves, ph: Array) -> dict[float, Estimate]:
         up = crossing(-c.acid, np.where(c.is_base[:, None], -ph, np.nan), -end)
         down = crossing(c.acid, np.where(c.is_base[:, None], np.nan, ph), end)
         value = np.where(c.is_base, up.acid, -down.acid)
-        slope, u_curve = (np.where(c.is_base, getattr(up, f), getattr(down, f)) for f in ("slope", "u_curve"))
-        own = np.sqrt(u_curve**2 + (slope * np.hypot(c.u_ph, c.u_ph_scatter)) ** 2 + c.u_acid**2)
+        own = np.where(c.is_base, np.hypot(up.u_curve, _reading_u(up, c)), np.hypot(down.u_curve, _reading_u(down, c)))
         why = worded(c.count.size, (np.isnan(value), "the curve does not pass this pH"))
         out[end] = Estimate(value, np.hypot(own, _shared(c, value)), own, why)
     return out

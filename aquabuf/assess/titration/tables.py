@@ -66,7 +66,9 @@ def figures_of(s: Solved, choice: Choice, options: TitrationOptions) -> dict[str
     n, estimates = s.curves.count.size, s.estimates
     wanted = options.conversion != "none"
     out: dict[str, NDArray] = {
-        "definition": definition_of(s, choice), "recommended_{eq}": choice.value, "recommended_u_{eq}": choice.u,
+        "definition": definition_of(s, choice),
+        "titrated_with": np.where(s.curves.is_base, "base", "acid").astype(object),
+        "recommended_{eq}": choice.value, "recommended_u_{eq}": choice.u,
         "recommended_mg_l_caco3": _mg_l(s, choice.value), "recommended_u_mg_l_caco3": _mg_l(s, choice.u),
         "recommended_method": choice.method, "recommended_reason": choice.reason,
         "converted_{eq}": converted(s, options.conversion, choice.value),

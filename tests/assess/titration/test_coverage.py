@@ -11,7 +11,7 @@ from aquabuf.assess.titration.choose import choose
 from aquabuf.assess.titration.options import TitrationOptions
 from aquabuf.assess.titration.solve import solve_titrations
 
-COUNT = 700
+COUNT = 1500
 TO_90_PERCENT = 1.6449
 WATERS = {"dilute": (-1e-4, 4e-4), "ordinary": (4e-4, 2e-3), "hard": (2e-3, 8e-3)}  # alkalinity, eq/L
 INSIDE = (0.85, 0.95)
