@@ -7,7 +7,6 @@ import json
 from collections.abc import Callable, Mapping
 from dataclasses import asdict
 from pathlib import Path
-from typing import IO
 
 import pandas as pd
 
@@ -15,7 +14,7 @@ import aquabuf
 from aquabuf.assess.limits import Limit
 from aquabuf.assess.limits_file import read_limits
 from aquabuf.assess.options import Options
-from aquabuf.assess.sample.assess import Assessment, assess
+from aquabuf.assess.sample.assess import assess
 from aquabuf.assess.sample.columns import limit_quantities
 from aquabuf.assess.sample.titrated import Titrated, titrated_by
 from aquabuf.errors import FileError, InputError
@@ -24,7 +23,7 @@ from aquabuf.readings.reader import iter_readings
 from aquabuf.readings.titration.paths import TitrationFiles
 from aquabuf.report.files import OutputFolder
 from aquabuf.report.summary import summary_text
-from aquabuf.report.tables import csv_text, result_digits, rounded
+from aquabuf.report.tables import GrowingTables, csv_text, result_digits, rounded
 from aquabuf.report.tally import Tally
 from aquabuf.tables import read_table
 
@@ -62,16 +61,17 @@ def assess_file(path: Path, folder: Path, options: Options, *, mapping: Path | N
         notify(f"{options.draws:,} draws for each of more than {ALL_CHECKS_UP_TO:,} rows take about {minutes:.0f} "
                f"minutes per {ALL_CHECKS_UP_TO:,} rows; --draws 0 leaves the intervals out and takes seconds.")
     with OutputFolder(folder, OUTPUT_FILES, force=force, leftovers=FAILED_RUN_FILES) as out:
-        writer = _Tables(out, options)
-        with writer:
+        with GrowingTables(out, {"results.csv": result_digits(options)}) as writer:
             for piece in pieces:
                 readings = piece if titrations is None else titrated.put_into(piece)
                 part = assess(readings, options, rules, only_unmet_checks=not few)
-                writer.write(part)
+                for name, table in (("results.csv", part.results), ("verdicts.csv", part.verdicts),
+                                    ("checks.csv", part.checks), ("rejected.csv", part.rejected)):
+                    writer.add(name, table)
                 tally.add(part)
             writer.add("checks.csv", tally.file_checks())
         if not tally.refused_rows:
-            writer.drop("rejected.csv")
+            out.drop("rejected.csv")
         if tally.assessed:
             curves = tally.curves(options)
             out.part("curves.csv").write_text(csv_text(rounded(curves, {"ph": 2}), header=True), encoding="utf-8")
@@ -82,7 +82,7 @@ def assess_file(path: Path, folder: Path, options: Options, *, mapping: Path | N
             if (folder / OUTPUT_FILES[0]).exists():  # a failed run must not take an earlier result away
                 raise InputError(f"{failure} The earlier result is untouched; use another --out to see the reasons.")
             for name in ("results.csv", "verdicts.csv", "checks.csv"):
-                writer.drop(name)
+                out.drop(name)
         if titrations is not None:
             tally.titrations = titrated.in_words(titrations.points.name)
         record = _record(path.name, hashes, options, rules, tally, all_checks=few)
@@ -97,38 +97,6 @@ def _nothing_assessed(name: str, tally: Tally) -> str:
     (column, rule), count = tally.refusal_rules.most_common(1)[0]
     return (f"no row of {name} can be assessed; {len(tally.refused_rows)} were refused, mostly for {column}: {rule} "
             f"({count} x).")
-
-
-class _Tables:
-    """The row-by-row tables of a run, written piece by piece."""
-
-    def __init__(self, out: OutputFolder, options: Options):
-        self._out = out
-        self._digits = result_digits(options)
-        self._open: dict[str, IO[str]] = {}
-
-    def __enter__(self) -> _Tables:
-        return self
-
-    def __exit__(self, *_: object) -> None:
-        for stream in self._open.values():
-            stream.close()
-
-    def write(self, part: Assessment) -> None:
-        for name, table in (("results.csv", part.results), ("verdicts.csv", part.verdicts), ("checks.csv", part.checks),
-                            ("rejected.csv", part.rejected)):
-            self.add(name, table)
-
-    def add(self, name: str, table: pd.DataFrame) -> None:
-        """Append rows to a table, with the header before the first."""
-        first = name not in self._open
-        if first:
-            self._open[name] = self._out.part(name).open("w", encoding="utf-8", newline="")
-        digits = self._digits if name == "results.csv" else {}
-        self._open[name].write(csv_text(rounded(table, digits), header=first))
-
-    def drop(self, name: str) -> None:
-        self._out.drop(name)
 
 
 def _draw(tally: Tally, curves: pd.DataFrame, out: OutputFolder, source: str) -> None:

@@ -3,17 +3,44 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from typing import IO
 
 import numpy as np
 import pandas as pd
 
 from aquabuf.assess.options import Options
 from aquabuf.assess.sample.columns import result_columns
+from aquabuf.report.files import OutputFolder
 
-__all__ = ["csv_text", "result_digits", "rounded"]
+__all__ = ["GrowingTables", "csv_text", "result_digits", "rounded"]
 
 TINY = 1e-250     # smaller is nothing, and its power of ten would overflow
 OTHER_DIGITS = 6  # significant digits of numbers without a stated number of decimals
+
+
+class GrowingTables:
+    """CSV tables of a run that are written piece by piece, each with its header before the first.
+
+    `digits` are the decimals of the columns of a table, by the name of its file.
+    """
+
+    def __init__(self, out: OutputFolder, digits: Mapping[str, Mapping[str, int]]):
+        self._out, self._digits = out, digits
+        self._open: dict[str, IO[str]] = {}
+
+    def __enter__(self) -> GrowingTables:
+        return self
+
+    def __exit__(self, *_: object) -> None:
+        for stream in self._open.values():
+            stream.close()
+
+    def add(self, name: str, table: pd.DataFrame) -> None:
+        """Append rows to the table `name`."""
+        first = name not in self._open
+        if first:
+            self._open[name] = self._out.part(name).open("w", encoding="utf-8", newline="")
+        self._open[name].write(csv_text(rounded(table, self._digits.get(name, {})), header=first))
 
 
 def result_digits(options: Options) -> dict[str, int]:

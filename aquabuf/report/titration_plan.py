@@ -79,8 +79,8 @@ def _steps(p: Plan) -> str:
         lines.append(item(f"{'from there' if p.first_ph > COARSE_TO_PH else 'down'} to pH {FINE_TO_PH:g}: "
                           f"{_amount(s, fine)} at a time, so that no step passes more than about 0.3 pH; wait until "
                           f"pH moves less than 0.01 in 30 s"))
-    lines.append(item(f"{'on' if p.first_ph > FINE_TO_PH else 'down'} to pH {LAST_PH:g}: {_amount(s, past)} at a time; these points carry the Gran line, so take "
-                      f"five or more"))
+    lines.append(item(f"{'on' if p.first_ph > FINE_TO_PH else 'down'} to pH {LAST_PH:g}: {_amount(s, past)} at a time; "
+                      f"these points carry the Gran line, so take five or more"))
     lines.append(item("write down titrant (running total) and pH each time; cover the vessel, stir gently, and be "
                       "done within 10 minutes"))
     return "\n".join(lines)
@@ -102,12 +102,12 @@ def _worth(p: Plan) -> str:
     r = p.result.results.iloc[0]
     method = r["recommended_method"]
     if not method:
-        return f"Such a curve gives no result to rely on: {r['recommended_reason']}."
-    mg = TO_COVERAGE * r["recommended_u_mg_l_caco3"]
+        return item(f"Such a curve gives no result to rely on: {r['recommended_reason']}.", mark="")
+    mg, fixed = TO_COVERAGE * r["recommended_u_mg_l_caco3"], r["fixed_4_5_ueq_l"]
+    alone = f" A single end point at pH {ALWAYS_END_POINT:g} would read {fixed:,.1f} µeq/L."
     return item(f"Such a curve gives the alkalinity by the {method_facts('method')[method]['words']} to "
                 f"± {TO_COVERAGE * r['recommended_u_ueq_l']:.2g} µeq/L (± {mg:.2g} mg/L as CaCO3; 90 % interval with "
-                f"the default uncertainties of pH, strength and volumes). A single end point at "
-                f"pH {ALWAYS_END_POINT:g} would read {r['fixed_4_5_ueq_l']:,.1f} µeq/L.", mark="")
+                f"the default uncertainties of pH, strength and volumes).{'' if math.isnan(fixed) else alone}", mark="")
 
 
 def _rests_on(p: Plan) -> str:

@@ -6,9 +6,6 @@ import json
 from collections.abc import Callable
 from dataclasses import asdict
 from pathlib import Path
-from typing import IO
-
-import pandas as pd
 
 import aquabuf
 from aquabuf.assess.titration.assess import TitrationResult, assess_titrations
@@ -19,7 +16,7 @@ from aquabuf.readings.titration.paths import TitrationFiles
 from aquabuf.readings.titration.reader import iter_titrations
 from aquabuf.report.files import OutputFolder
 from aquabuf.report.run import sha256
-from aquabuf.report.tables import csv_text, rounded
+from aquabuf.report.tables import GrowingTables
 from aquabuf.report.titration_summary import titration_summary
 from aquabuf.report.titration_tally import TitrationTally
 from aquabuf.tables import read_table
@@ -47,7 +44,7 @@ def titrate_file(files: TitrationFiles, folder: Path, options: TitrationOptions,
     pieces = iter_titrations(files.points, files.samples, points_map=files.points_map, samples_map=files.samples_map)
     tally = TitrationTally()
     with OutputFolder(folder, OUTPUT_FILES, force=force, leftovers=FAILED_RUN_FILES) as out:
-        with _Tables(out, titration_digits(options)) as tables:
+        with GrowingTables(out, {"alkalinity.csv": titration_digits(options)}) as tables:
             for t in pieces:
                 columns = {name for name, _ in t.headers.values()}
                 by_kilogram = "sample_mass_g" in columns
@@ -80,29 +77,6 @@ def _nothing(name: str, tally: TitrationTally) -> str:
     (column, rule), count = tally.refusals.most_common(1)[0]
     return (f"no titration of {name} can be used; {tally.samples:,} were refused, mostly for {column}: {rule} "
             f"({count} x).")
-
-
-class _Tables:
-    """Tables that grow piece by piece."""
-
-    def __init__(self, out: OutputFolder, digits: dict[str, int]):
-        self._out, self._digits = out, digits
-        self._open: dict[str, IO[str]] = {}
-
-    def __enter__(self) -> _Tables:
-        return self
-
-    def __exit__(self, *_: object) -> None:
-        for stream in self._open.values():
-            stream.close()
-
-    def add(self, name: str, table: pd.DataFrame) -> None:
-        """Append rows, with the header before the first."""
-        first = name not in self._open
-        if first:
-            self._open[name] = self._out.part(name).open("w", encoding="utf-8", newline="")
-        digits = self._digits if name == "alkalinity.csv" else {}
-        self._open[name].write(csv_text(rounded(table, digits), header=first))
 
 
 def _draw(part: TitrationResult, tally: TitrationTally, out: OutputFolder, figures: int, notify: Callable[[str], None],

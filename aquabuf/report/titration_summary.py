@@ -128,8 +128,8 @@ def _rests_on(tally: TitrationTally, options: TitrationOptions) -> str:
 def _next(tally: TitrationTally, files: Iterable[str]) -> str:
     lines = ["alkalinity.csv holds every method beside the recommended result and the reason for the choice."]
     if tally.with_result:
-        lines.append("`aquabuf assess READINGS.csv --titrations POINTS.csv` takes these results into the assessment; give "
-                     "it the same samples and maps.")
+        lines.append("`aquabuf assess READINGS.csv --titrations POINTS.csv` takes these results into the assessment; "
+                     "give it the same samples and maps.")
     if tally.figures < tally.samples and tally.figures:
         lines.append(f"Figures were drawn of the first {tally.figures:,}; --figures all draws every one.")
     lines.append(f"Written: {', '.join(files)}.")

@@ -23,7 +23,8 @@ def python(code, **more):
 START = "import sys; sys.argv = ['aquabuf', {words}]\ntry:\n    from aquabuf.cli.main import main; main()\nexcept SystemExit: pass\nprint(*sys.modules, file=sys.stderr)"
 
 
-@pytest.mark.parametrize("words", ["'--help'", "'--version'", "'assess', '--help'", "'asess'"])
+@pytest.mark.parametrize("words", ["'--help'", "'--version'", "'assess', '--help'", "'asess'", "'titration', '--help'", "'titration', 'run', '--help'",
+                                   "'titration', 'plan', '--help'", "'titration', 'x.csv'", "'titration', 'plan'", "'titration'"])
 def test_help_loads_nothing_heavy(words):
     """Help, version and a slip of the pen are answered without numpy, scipy, pandas or matplotlib."""
     done = python(START.format(words=words))
@@ -94,7 +95,7 @@ def test_columns(call):
 # ------------------------------------------------------------------ wrong usage is 2
 
 WRONG = [
-    ((), "Usage: aquabuf"), (("asess",), "No such command 'asess'. Did you mean 'assess'? Commands: assess, columns, template."),
+    ((), "Usage: aquabuf"), (("asess",), "No such command 'asess'. Did you mean 'assess'? Commands: assess, columns, template, titration."),
     (("xyz",), "No such command 'xyz'. Commands: assess"), (("assess",), "Missing argument 'READINGS'"),
     (("assess", "t.csv"), "Missing option '--out'"), (("assess", "t.csv", "--out", "o", "--wide"), "No such option"),
     (("assess", "t.csv", "--out", "o", "--exchange", "ajar"), "'ajar' is not one of 'closed', 'open'"),

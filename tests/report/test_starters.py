@@ -8,9 +8,12 @@ from aquabuf.assess.limits import shipped_limits
 from aquabuf.assess.limits_file import read_limits
 from aquabuf.assess.options import Options
 from aquabuf.assess.sample.columns import limit_quantities
+from aquabuf.assess.titration.options import TitrationOptions
 from aquabuf.errors import InputError
 from aquabuf.readings.template import template_kinds
-from aquabuf.report.starters import starter
+from aquabuf.readings.titration.paths import TitrationFiles
+from aquabuf.report.starters import TITRATION_KINDS, starter
+from aquabuf.report.titration_run import titrate_file
 
 TABLES = [kind for kind in template_kinds() if kind != "map"]
 QUANTITIES = limit_quantities(Options())
@@ -54,3 +57,20 @@ def test_limits_starter_repeats_the_shipped_limits(tmp_path):
     path = tmp_path / "limits.toml"
     path.write_text(text, encoding="utf-8")
     assert read_limits(path, QUANTITIES) == shipped_limits()
+
+
+def test_starter_titrations_can_be_assessed(table, tmp_path):
+    """Both invented titrations come out without a warning: dilute by the Gran line, ordinary by the fit."""
+    files = TitrationFiles(*(table(starter(kind), f"{kind}.csv") for kind in TITRATION_KINDS))
+    words = titrate_file(files, tmp_path / "out", TitrationOptions(), figures=0)
+    assert words.startswith("titration_points.csv: 2 titrations, 2 with a result (0 of them with a warning), 0 without, 0 refused.")
+    assert [line.split()[-1] for line in words.splitlines() if line.startswith("  P")] == ["gran", "fit"]
+
+
+def test_starter_titrations_say_what_each_column_is():
+    """Each column of a starter stands in the remarks above it, with its unit where it has one."""
+    for kind in TITRATION_KINDS:
+        lines = starter(kind).splitlines()
+        remarks = " ".join(line for line in lines if line.startswith("#"))
+        header = next(line for line in lines if not line.startswith("#"))
+        assert all(name in remarks for name in header.split(",")), kind

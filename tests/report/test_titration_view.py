@@ -41,7 +41,7 @@ def test_number_has_the_digits_of_its_uncertainty(value, u, said):
     ("Swept sea water", "Swept sea water: alkalinity or ANC 2,", " µmol/kg, acid in excess after CO2 was swept out"),
     ("Acid lake", "Acid lake: ANC −", " µeq/L, Gran line"),
     ("Three points", "Three points: no result by any method for dilute", " or acid water"),
-    ("Wrong strength", "Wrong strength: no result; the strength of the titrant is in doubt", "…")])
+    ("Wrong strength", "Wrong strength: no result; the strength of the titrant is in doubt", "in doubt")])
 def test_title(result, water, start, end):
     """Sample, what it is, value with uncertainty and unit, method; or that there is none, and why."""
     title = title_line(result, of(result, water))
@@ -77,7 +77,7 @@ def test_findings_are_named_with_their_remedy(result, water):
 
 def test_fourth_finding_is_counted(result):
     """One more than there is room for is not left out silently."""
-    i = of(result, "Wrong strength")
+    i = of(result, "Swapped")
     here = tuple(f for f in result.found if f.here[i])
     for count, end in ((3, ""), (4, "(and 1 more)"), (5, "(and 2 more)")):
         last = finding_lines(replace(result, found=here[:count]), i)[-1]

@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cache
 
 import numpy as np
 from numpy.typing import NDArray
 
+from aquabuf.assess.titration.calibrate import nernst_mv_per_ph
 from aquabuf.assess.titration.choose import Choice, best_guess
 from aquabuf.assess.titration.convert import fixed_to_proton_balance
 from aquabuf.assess.titration.options import ALWAYS_END_POINT
@@ -29,7 +30,9 @@ TURN_SIGMAS = 4.0
 OFF_CURVE = (6.0, 0.08, 6.0)  # times scatter, pH, times the median of all points: one that stands out of its curve
 WINDOW_MATTERS = (2e-6, 0.02)  # standard deviation over the windows: eq per unit of sample, share of the result
 OFFSET_SPOILS = 0.1        # pH; an electrode farther off spoils every fixed end point
-MILLIVOLT_DRIFT = 59.0     # mV per pH, to judge drift by one limit
+# What a wrong strength brings about; said beside it, it would lead astray
+OF_THE_STRENGTH = ("point off the curve", "fit is poor", "carbon dioxide lost", "carbon differs", "electrode offset",
+                   "methods disagree")
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -59,6 +62,9 @@ def findings(s: Solved, choice: Choice) -> tuple[Finding, ...]:
     """All findings in the order of the table."""
     found = {f.name: f for part in (_strength, _course, _points, _lines, _fits, _electrode, _methods)
              for f in part(s, choice)}
+    sound = ~strength_doubtful(s)
+    for name in OF_THE_STRENGTH:
+        found[name] = replace(found[name], here=found[name].here & sound)
     return tuple(found[name] for name in finding_facts() if name in found)
 
 
@@ -101,7 +107,8 @@ def _course(s: Solved, choice: Choice) -> Iterator[Finding]:
         lowest = np.nanmin(np.where(np.isfinite(s.ph), s.ph, np.inf), axis=1, initial=np.inf)
     yield _outside("stops too soon", lowest, ~c.is_base & np.isfinite(lowest))
     yield _outside("coarse end point", s.crossings[ALWAYS_END_POINT].step_ph, ~s.purged)
-    drift = c.drift / np.where(c.is_potential, MILLIVOLT_DRIFT, 1.0)
+    drift = c.drift / np.where(c.is_potential, nernst_mv_per_ph(c.t_c), 1.0)
+    yield _outside("wrong way", _wrong_way(s))
     steps = _outside("running total", c.repeats.astype(float), drift > STEPS_MOVE)
     yield steps
     yield _outside("drift", drift, ~steps.here)
@@ -112,6 +119,14 @@ def _course(s: Solved, choice: Choice) -> Iterator[Finding]:
     yield _outside("dilution", thinned, at_end >= 0)
 
 
+def _wrong_way(s: Solved) -> Array:
+    """Change from the first to the last reading against the one that the titrant should bring about. [pH]"""
+    c = s.curves
+    change = c.reading[np.arange(c.count.size), np.maximum(c.count - 1, 0)] - c.reading[:, 0]
+    as_ph = np.where(c.is_potential, -change / nernst_mv_per_ph(c.t_c), change)
+    return np.where(c.is_base, -as_ph, as_ph)
+
+
 def _points(s: Solved, choice: Choice) -> Iterator[Finding]:
     """Readings that go the wrong way."""
     c = s.curves
@@ -119,7 +134,7 @@ def _points(s: Solved, choice: Choice) -> Iterator[Finding]:
     ph = np.where(c.is_base[:, None], -s.ph, s.ph)
     rise = np.diff(ph, axis=1)
     with np.errstate(invalid="ignore"):
-        back = rise > limit
+        back = (rise > limit) & ~_outside("wrong way", _wrong_way(s)).here[:, None]
     if not back.any():
         return
     at = np.where(back, rise, -np.inf).argmax(axis=1)
@@ -169,7 +184,7 @@ def _fits(s: Solved, choice: Choice) -> Iterator[Finding]:
     yield _finding("point off the curve", off, largest, point=np.where(off, at, -1))
     with np.errstate(invalid="ignore", divide="ignore"):
         lost = 100.0 * (1.0 - f.fit.carbon / s.carbon_at_start)
-        clear = (s.carbon_at_start - f.fit.carbon) > SIGMAS * f.u_carbon
+        clear = ((s.carbon_at_start - f.fit.carbon) > SIGMAS * f.u_carbon) & ~(f.fit.acid_total > 0.0)
     measured = value_of(s.samples, "dic_mol_l", c.count.size) / np.where(c.by_mass, c.density_kg_l, 1.0)
     yield _outside("carbon dioxide lost", lost, clear & np.isnan(measured) & (s.ph[:, 0] < 8.5))
     u_measured = value_of(s.samples, "dic_u_mol_l", c.count.size)

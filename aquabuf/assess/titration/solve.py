@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -26,19 +26,24 @@ from aquabuf.assess.titration.inflection import Inflection, inflection
 from aquabuf.assess.titration.options import ALWAYS_END_POINT, TitrationOptions
 from aquabuf.chem.acids import Acid, acid_table
 from aquabuf.chem.seasalt import ionic_strength_seawater
+from aquabuf.engine.balance import Family
 from aquabuf.engine.build import IONS, SEA_SALTS, of_sea_salt
-from aquabuf.engine.conditions import FRESH_BELOW
+from aquabuf.engine.conditions import FRESH_BELOW, LIMITS
+from aquabuf.engine.fit import fit_curve
 from aquabuf.engine.titrate import Points, mixed_ionic_strength, points_at
 from aquabuf.readings.titration.result import Titrations
 from aquabuf.units import convert
 
-__all__ = ["ACIDITY_END_POINTS", "Estimate", "Solved", "solve_titrations", "text_of", "value_of"]
+__all__ = ["ACIDITY_END_POINTS", "LEAST_SLOPE_ERROR", "Estimate", "Solved", "solve_titrations", "text_of", "value_of"]
 
 Array = NDArray[np.float64]
 
 ACIDITY_END_POINTS = (3.7, 4.5, 8.3)  # mineral acidity by either old end point, and total acidity by phenolphthalein
+LEAST_SLOPE_ERROR = 0.05  # of a slope that is noticed; common practice, no source
 REFERENCE_ACID_PH = 3.5
 LEAST_CARBON = 2e-5       # of an acid water, about what air gives. [mol/L]
+TOO_SALTY = (f"ionic strength above {LIMITS['ionic_strength_mol_l'][3]:g} mol/L, where the fresh-water constants end; "
+             f"give the salinity of salt water")
 MOST_CARBON = 5.0         # times alkalinity, where the start pH implies more it is a slip
 
 
@@ -57,7 +62,10 @@ class Estimate:
 
 @dataclass(frozen=True, slots=True, eq=False, kw_only=True)
 class Solved:
-    """All that was found of a piece; arrays over its usable titrations, amounts per unit of sample."""
+    """All that was found of a piece; arrays over its usable titrations, amounts per unit of sample.
+
+    chi2_by_slope : reduced chi-squared of the fit, had the titrant the strength that the Gran line implies. [-]
+    """
 
     curves: Curves
     samples: Mapping[str, NDArray]
@@ -77,6 +85,7 @@ class Solved:
     excess: Fitted
     estimates: Mapping[str, Estimate]
     acidity: Mapping[float, Estimate]
+    chi2_by_slope: Array
 
 
 def value_of(samples: Mapping[str, NDArray], name: str, size: int) -> Array:
@@ -118,13 +127,15 @@ def solve_titrations(t: Titrations, options: TitrationOptions) -> Solved:
     calibration, ph = _readings_as_ph(c, samples, points_with)
     guess = _first_guess(c, ph)
     points = points_with(guess)
-    there = np.isfinite(ph) & c.there
+    known = np.isfinite(points.k1)
+    there, safe = np.isfinite(ph) & c.there & known, _harmless(points, known)
+    too_salty = np.asarray(np.any(np.isfinite(ph) & c.there & ~known, axis=1))
     carbon = _carbon_at_start(points, ph, guess, samples, purged, c)
     gran = windows(points, ph, there, alkalinity=guess, carbon=carbon, u_ph=c.u_ph_scatter, u_acid=c.u_acid)
     near = np.where(np.isfinite(gran.acid), gran.acid, guess)
     common = {"u_ph": c.u_ph_scatter, "u_acid": c.u_acid, "relative_u": c.relative_u, "purged": purged}
-    fit = fit_closed(points, ph, there, near, is_base=c.is_base, weak_acid=options.weak_acid, **common)
-    excess = fit_acid_excess(points, ph, there, near, salinity=c.salinity, **common)
+    fit = fit_closed(safe, ph, there, near, is_base=c.is_base, weak_acid=options.weak_acid, **common)
+    excess = fit_acid_excess(safe, ph, there, near, salinity=c.salinity, **common)
     turned = np.where(c.is_base[:, None], np.nan, ph)
     crossings = {e: crossing(c.acid, turned, e) for e in options.end_points}
     level_ph = end_point_for(_mg_caco3(near))
@@ -134,13 +145,48 @@ def solve_titrations(t: Titrations, options: TitrationOptions) -> Solved:
         "gran": _of_gran(gran, c), "fit": _of_fit(fit), "inflection": _of_inflection(bend, c),
         "two_point": _two_point(c, turned, crossings[ALWAYS_END_POINT], carbon, points),
         "fixed_level": _of_crossing(level, c), "acid_excess": _of_fit(excess),
-    } | {f"fixed_{e:g}": _of_crossing(found, c) for e, found in crossings.items()}
+    }
+    estimates |= {name: _because(estimates[name], too_salty) for name in ("gran", "fit", "two_point", "acid_excess")}
+    estimates |= {f"fixed_{e:g}": _of_crossing(found, c) for e, found in crossings.items()}
     return Solved(
         curves=c, samples=samples, points=points, ph=ph, calibration=calibration, purged=purged, first_guess=guess,
         carbon_at_start=carbon, gran=gran,
         gran_lines=gran_lines(points, ph, there & ~purged[:, None], near, c.u_ph_scatter, c.u_acid),
         inflection=bend, crossings=crossings, level_ph=level_ph, level=level, fit=fit, excess=excess,
-        estimates=estimates, acidity=_acidity(c, ph))
+        estimates=estimates, acidity=_acidity(c, ph), chi2_by_slope=_chi2_by_slope(safe, ph, fit, gran, c))
+
+
+def _chi2_by_slope(points: Points, ph: Array, fit: Fitted, gran: Gran, c: Curves) -> Array:
+    """Reduced chi-squared of the fit, had the titrant the strength that the slope of the Gran line implies.
+
+    nan where there is no fit, or where the slope is right. Strength and electrode make the same free acid; what tells
+    them apart is how well the rest of the curve then fits.
+    """
+    out, ratio = np.full(c.count.size, np.nan), gran.slope_ratio
+    with np.errstate(invalid="ignore", divide="ignore"):
+        rows = np.flatnonzero(fit.fit.converged & (np.abs(np.log(ratio)) > LEAST_SLOPE_ERROR))
+    if rows.size:
+        p, r = points.take(rows), ratio[rows]
+        other = fit_curve(replace(p, acid=p.acid * r[:, None]), ph[rows], np.isfinite(fit.fit.residual_ph[rows]),
+                          u_ph=c.u_ph_scatter[rows], u_acid=c.u_acid[rows] * r, alkalinity=fit.fit.alkalinity[rows] * r)
+        out[rows] = other.reduced_chi2
+    return out
+
+
+def _harmless(points: Points, known: NDArray[np.bool_]) -> Points:
+    """The points with constants of 1 where there are none, so that a fit that gives them no weight is not upset."""
+    if known.all():
+        return points
+    families = tuple(Family(f.total, tuple(np.where(known, k, 1.0) for k in f.k), f.zero) for f in points.families)
+    constants = {name: np.where(known, getattr(points, name), 1.0) for name in ("k1", "k2", "c_h", "c_oh",
+                                                                               "h_per_activity")}
+    return replace(points, families=families, **constants)
+
+
+def _because(e: Estimate, too_salty: NDArray[np.bool_]) -> Estimate:
+    """The estimate with the reason that so much salt has no constants, where it has no value."""
+    none = too_salty & ~(np.isfinite(e.value) & np.isfinite(e.u))
+    return replace(e, why_not=np.where(none, TOO_SALTY, e.why_not))
 
 
 def _totals(samples: Mapping[str, NDArray], c: Curves, own: tuple[Acid, ...]) -> dict[Acid, Array]:

@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from aquabuf.arrays import LN10
-from aquabuf.assess.titration.solve import Solved, value_of
+from aquabuf.assess.titration.solve import LEAST_SLOPE_ERROR, Solved, value_of
 from aquabuf.chem.organic import OLIVER_SITES_EQ_PER_MG
 
 __all__ = ["GOOD_CHI2", "doubt_in_words", "offset_explains", "organic_lowers", "organic_sites", "slope_off",
@@ -20,9 +20,9 @@ Array = NDArray[np.float64]
 
 GOOD_CHI2 = 5.0           # reduced, of a fit that is believed
 SLOPE_RATIO = (0.3, 3.0)  # beyond which the strength is in doubt; common practice, no source
-LEAST_ERROR = 0.05        # of a slope that is noticed; common practice, no source
-SIGMAS = 2.0
+SIGMAS = 2.5
 EXPLAINED = 0.12          # of log10 of the ratio that an electrode offset may leave; about a quarter
+CLEARLY_BETTER = 9.0      # chi-squared between electrode and strength: three standard deviations
 ORGANIC_SHARE = 0.1       # of the acid on the line that organic sites may be before they spoil the test
 
 
@@ -41,10 +41,22 @@ def _good_fit(s: Solved) -> NDArray[np.bool_]:
         return (s.fit.u_offset < EXPLAINED) & (s.fit.fit.reduced_chi2 <= GOOD_CHI2)
 
 
+def _for_electrode(s: Solved) -> Array:
+    """Chi-squared that an electrode that is off leaves less than a strength that is wrong; nan where not known."""
+    return (s.chi2_by_slope - s.fit.fit.reduced_chi2) * np.maximum(s.fit.points - 3, 1)
+
+
 def offset_explains(s: Solved) -> NDArray[np.bool_]:
-    """Where a good fit, whose offset rests on the bicarbonate part, finds the electrode off by just that much."""
+    """Where an electrode that is off by just that much fits the whole curve, and a strength that is wrong does not."""
     with np.errstate(invalid="ignore", divide="ignore"):
-        return _good_fit(s) & (np.abs(np.log10(s.gran.slope_ratio) + s.fit.fit.offset_ph) < EXPLAINED)
+        by_so_much = np.abs(np.log10(s.gran.slope_ratio) + s.fit.fit.offset_ph) < EXPLAINED
+        return _good_fit(s) & by_so_much & (_for_electrode(s) > CLEARLY_BETTER)
+
+
+def strength_explains(s: Solved) -> NDArray[np.bool_]:
+    """Where a strength that is wrong by just that much fits the whole curve, and an electrode that is off does not."""
+    with np.errstate(invalid="ignore"):
+        return (s.chi2_by_slope <= GOOD_CHI2) & (_for_electrode(s) < -CLEARLY_BETTER)
 
 
 def organic_lowers(s: Solved) -> NDArray[np.bool_]:
@@ -63,8 +75,8 @@ def strength_doubtful(s: Solved) -> NDArray[np.bool_]:
 
 
 def slope_off(s: Solved) -> NDArray[np.bool_]:
-    """Where the slope is off by more than twice what strength and electrode allow, and by 5 %."""
-    allowed = np.maximum(SIGMAS * np.hypot(s.curves.relative_u, LN10 * s.curves.u_ph), LEAST_ERROR)
+    """Where the slope is off by more than 2.5 times what strength and electrode allow, and by 5 %."""
+    allowed = np.maximum(SIGMAS * np.hypot(s.curves.relative_u, LN10 * s.curves.u_ph), LEAST_SLOPE_ERROR)
     with np.errstate(invalid="ignore", divide="ignore"):
         return _checked(s) & (np.abs(np.log(s.gran.slope_ratio)) > allowed) & ~strength_doubtful(s)
 
@@ -85,16 +97,16 @@ def doubt_in_words(s: Solved, i: int) -> str:
 def what_tells(s: Solved, here: NDArray[np.bool_]) -> NDArray[np.object_]:
     """Whether the bicarbonate part of the curve sides with the electrode or with the strength."""
     offset, ratio = s.fit.fit.offset_ph, s.gran.slope_ratio
-    organic, explains, good = organic_lowers(s), offset_explains(s), _good_fit(s)
+    organic, electrode, strength = organic_lowers(s), offset_explains(s), strength_explains(s)
     more = np.full(here.size, "", dtype=object)
     for i in np.flatnonzero(here).tolist():
         if organic[i]:
             more[i] = ("organic acids bind acid along the line and lower its slope; with so much organic carbon the "
                        "slope cannot test strength and electrode")
-        elif explains[i]:
+        elif electrode[i]:
             more[i] = (f"the bicarbonate part of the curve shows the same electrode offset ({offset[i]:+.2f} pH): it "
                        f"is the electrode, if no CO2 was lost, and the result stands")
-        elif good[i] and abs(offset[i]) < EXPLAINED:
+        elif strength[i]:
             more[i] = (f"the bicarbonate part of the curve finds the electrode right: it is the strength, if no CO2 "
                        f"was lost, and the true result is about {ratio[i]:.2f} times the one given; the uncertainty "
                        f"counts it")

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping, Sequence
+from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -156,7 +157,7 @@ def results_table(t: Titrations, s: Solved, choice: Choice, found: Sequence[Find
     status = np.full(n, REFUSED, dtype=object)
     status[at] = worded(at.size, (~has, NO_RESULT), (has & (warnings != ""), WARNED), default=OK)
     figures = {**figures, "warnings": warnings}
-    columns: dict[str, NDArray] = {}
+    columns: dict[str, Any] = {}
     for name, key, row in column_facts(options, by_liter=by_liter, by_kilogram=by_kilogram):
         if key == "status":
             columns[name] = status
@@ -190,10 +191,12 @@ def _scaled(v: NDArray, name: str, unit: str, by_mass: NDArray[np.bool_]) -> NDA
     return np.where(wanted, v * MICRO, np.nan)
 
 
-def _spread(v: NDArray, at: NDArray[np.intp], n: int) -> NDArray:
-    """Values of the usable titrations among all; counts stay whole where nobody was refused."""
-    if v.dtype.kind in "iu" and at.size == n:
-        return v
+def _spread(v: NDArray, at: NDArray[np.intp], n: int) -> Any:
+    """Values of the usable titrations among all; blank for the others, and counts stay whole."""
+    if v.dtype.kind in "iu":
+        counts = pd.array([pd.NA] * n, dtype="Int64")
+        counts[at] = v
+        return counts
     text = v.dtype.kind in "OU"
     out = np.full(n, "" if text else np.nan, dtype=object if text else float)
     out[at] = v

@@ -99,7 +99,7 @@ def test_coarse_steps_leave_the_inflection_out():
     one = sample([0.0, 1.0, 2.0, 2.8, 3.2, 3.6, 4.0], alkalinity=2e-3, carbon=2.2e-3)
     r = row(one)
     assert r["recommended_method"] == "fixed_level"
-    assert r["inflection_status"] in ("steps too coarse to tell it", "pH falls fastest at no point within the curve")
+    assert r["inflection_status"] != "ok"
     assert "end point by alkalinity: pH 4.9, 4.6 or 4.3 by the alkalinity found; pH 4.6, points " in r["recommended_reason"]
 
 
@@ -118,6 +118,18 @@ def test_no_method_at_all():
     for words in ("; no method for it has a result (Gran line: needs three points in a row from pH 4.6 to 2.7; ",
                   "fit of the whole curve: needs 5 points or more", "two end points 0.30 pH apart: the curve does not pass pH 4.5 and 4.2)"):
         assert words in r["recommended_reason"]
+
+
+@pytest.mark.parametrize("facts", [{"ionic_strength_mol_l": 0.7}, {"ionic_strength_mol_l": np.nan, "conductivity_us_cm": 60000.0}], ids=["given", "conductivity"])
+def test_salt_water_that_is_not_called_so(facts):
+    """No constants above 0.5 mol/L unless the salinity is known: methods that need none still work, the others say why, neighbors are untouched."""
+    table = results(hard(**facts), hard())
+    salty, plain = table.iloc[0], table.iloc[1]
+    assert salty["recommended_method"] == "inflection"
+    words = "ionic strength above 0.5 mol/L, where the fresh-water constants end; give the salinity of salt water"
+    assert [salty[f"{name}_status"] for name in ("fit", "gran")] == [words, words]
+    assert salty["fixed_4_5_ueq_l"] == plain["fixed_4_5_ueq_l"]
+    assert plain["recommended_ueq_l"] == row(hard())["recommended_ueq_l"]
 
 
 def test_curved_gran_line_is_passed_over():

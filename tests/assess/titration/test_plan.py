@@ -86,7 +86,7 @@ def test_acid_water_has_no_equivalence_point_to_reach():
 
 # ------------------------------------------------------------------ steps and points
 
-EVERY = list(itertools.product(STRENGTHS, (-1e-4, 0.0, 2e-5, 4e-4, 3e-3, 2e-2), (25.0, 100.0, 1000.0), (None, 6.5, 10.5)))
+EVERY = list(itertools.product(STRENGTHS, (-1e-4, 2e-5, 4e-4, 3e-3, 2e-2), (25.0, 200.0), (None, 6.5, 10.5)))
 
 
 def planned():
@@ -103,7 +103,7 @@ def planned():
 def plans():
     """All of them, worked out once."""
     made = list(planned())
-    assert len(made) > 150
+    assert len(made) > 80
     return made
 
 
