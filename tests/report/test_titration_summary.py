@@ -2,6 +2,7 @@
 
 import os
 import re
+from functools import partial
 from pathlib import Path
 
 import pytest
@@ -11,6 +12,7 @@ from titration_tables import BROKEN, FACTS, HARD, HEADER, POINTS, SAMPLES, SOFT,
 from aquabuf.assess.titration.findings import finding_facts
 from aquabuf.assess.titration.options import TitrationOptions
 from aquabuf.readings.titration.paths import TitrationFiles
+from aquabuf.report import titration_run
 from aquabuf.report.titration_run import titrate_file
 from aquabuf.report.titration_summary import titration_summary
 from aquabuf.report.titration_tally import LISTED, TitrationTally
@@ -113,10 +115,13 @@ def test_refusals_are_counted_by_rule(words):
         "  - 1 x ph: must be 0 to 14"]
 
 
-def test_long_files_list_the_first_samples(words):
-    """Twenty lines, and how many there are."""
-    many = "".join(points(f"s{i}", 1e-4, count=8) for i in range(LISTED + 3))
-    text = words(f"{HEADER}\n{many}", f"{FACTS}\n" + "".join(facts(f"s{i}") for i in range(LISTED + 3)))
+def test_long_files_list_the_first_samples(words, monkeypatch):
+    """Twenty lines, and how many there are; the same when the file is read in pieces."""
+    many_text = f"{HEADER}\n" + "".join(points(f"s{i}", 1e-4, count=8) for i in range(LISTED + 3))
+    many_samples = f"{FACTS}\n" + "".join(facts(f"s{i}") for i in range(LISTED + 3))
+    text = words(many_text, many_samples)
+    monkeypatch.setattr(titration_run, "iter_titrations", partial(titration_run.iter_titrations, chunk_samples=7))
+    assert words(many_text, many_samples) == text
     lines = block(text, "Results (first 20 of 23)")
     assert [line.split()[0] for line in lines[2:]] == [f"s{i}" for i in range(LISTED)]
 
@@ -133,8 +138,9 @@ def test_acidity_of_a_base_titration(words):
     lines = "".join(f"mine,{v / 10:g},{ph:.2f}\n" for v, ph in zip(range(0, 26, 2), (3.0, 3.05, 3.10, 3.16, 3.22, 3.3, 3.4, 3.53, 3.7, 4.01, 7.0, 10.0, 10.3),
                                                                strict=True))
     text = words(f"{HEADER}\n{lines}", "sample_id,sample_volume_ml,titrant_eq_l,temperature_c,titrant_kind\nmine,100,0.05,25,base\n")
-    result = cells(text, "mine")[1]
+    _, result, method, *_ = cells(text, "mine")
     assert result.endswith(" µeq/L acidity to pH 8.3")
+    assert method == "end point"
     assert_allclose(float(result.split(" ± ")[0].replace(",", "")), 1000.0, rtol=0, atol=60.0)
 
 

@@ -78,7 +78,7 @@ def test_findings_are_named_with_their_remedy(result, water):
 def test_fourth_finding_is_counted(result):
     """One more than there is room for is not left out silently."""
     i = of(result, "Swapped")
-    here = tuple(f for f in result.found if f.here[i])
+    here = 2 * tuple(f for f in result.found if f.here[i])
     for count, end in ((3, ""), (4, "(and 1 more)"), (5, "(and 2 more)")):
         last = finding_lines(replace(result, found=here[:count]), i)[-1]
         assert last.startswith(here[2].name)

@@ -21,7 +21,8 @@ from aquabuf.assess.titration.strength import (
 from aquabuf.engine.conditions import FRESH_BELOW
 from aquabuf.tables import read_table
 
-__all__ = ["DILUTE_BELOW_EQ", "Choice", "choose", "method_facts", "method_key", "water_kinds"]
+__all__ = ["DILUTE_BELOW_EQ", "Choice", "choose", "method_facts", "method_key", "read_at",
+           "water_kinds"]
 
 Array = NDArray[np.float64]
 
@@ -31,6 +32,8 @@ DILUTE_BELOW_US_CM = 100.0  # the same source
 ORGANIC_SHARE = 0.1         # of alkalinity that organic acid sites may be; the source says "appreciable"
 MOST_U_OFFSET = 0.3         # pH; beyond, the curve does not tell offset from alkalinity
 MOST_STEP_PH = 1.2          # around a fixed end point that is still recommended
+COARSEST_STEP = 0.2         # over value: steepest step of an inflection that is still recommended
+AT_END_POINT = 0.1          # pH between a reading and an end point that was titrated to
 LEAST_RESOLVED = 0.05       # uncertainty over value of an inflection that is still recommended
 
 
@@ -119,15 +122,23 @@ def _limits(s: Solved, name: str, e: Estimate, kind: NDArray[np.object_]) -> lis
                     (s.fit.fit.reduced_chi2 > GOOD_CHI2, "the curve does not fit")]
         if name == "inflection":
             return [(kind == "dilute", "not below pH 7, 400 µeq/L or 100 µS/cm, or with organic acids"),
-                    (e.own_u > LEAST_RESOLVED * np.abs(e.value), "steps too coarse to tell it")]
+                    ((e.own_u > LEAST_RESOLVED * np.abs(e.value))
+                     | (s.inflection.resolution > COARSEST_STEP * np.abs(e.value)), "steps too coarse to tell it")]
         if name == "two_point":
             return [(best_guess(s) >= DILUTE_BELOW_EQ, "made for less than 400 µeq/L"),
                     (s.crossings[ALWAYS_END_POINT].step_ph > MOST_STEP_PH, "steps too coarse at pH 4.5")]
         if name.startswith("fixed"):
-            found = s.level if name == "fixed_level" else s.crossings[ALWAYS_END_POINT]
+            found, end = s.crossings[ALWAYS_END_POINT], np.full(kind.size, ALWAYS_END_POINT)
+            found, end = (s.level, s.level_ph) if name == "fixed_level" else (found, end)
             return [(kind == "dilute", "a fixed end point counts free acid as alkalinity, about 32 µeq/L at pH 4.5"),
-                    (found.step_ph > MOST_STEP_PH, "steps too coarse at the end point")]
+                    ((found.step_ph > MOST_STEP_PH) & ~read_at(s, end), "steps too coarse at the end point")]
     return []
+
+
+def read_at(s: Solved, end_ph: Array | float) -> NDArray[np.bool_]:
+    """Where a reading was taken at an end point, so that it does not matter how far the next one is."""
+    distance = np.abs(s.ph - np.broadcast_to(np.asarray(end_ph, dtype=float), (len(s.ph),))[:, None])
+    return np.asarray(np.any(distance <= AT_END_POINT, axis=1))
 
 
 def choose(s: Solved) -> Choice:

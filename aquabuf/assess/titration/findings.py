@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from aquabuf.assess.titration.calibrate import nernst_mv_per_ph
-from aquabuf.assess.titration.choose import Choice, best_guess
+from aquabuf.assess.titration.choose import Choice, best_guess, read_at
 from aquabuf.assess.titration.convert import fixed_to_proton_balance
 from aquabuf.assess.titration.options import ALWAYS_END_POINT
 from aquabuf.assess.titration.parts import hydrolyzing_metals
@@ -106,7 +106,8 @@ def _course(s: Solved, choice: Choice) -> Iterator[Finding]:
     with np.errstate(invalid="ignore"):
         lowest = np.nanmin(np.where(np.isfinite(s.ph), s.ph, np.inf), axis=1, initial=np.inf)
     yield _outside("stops too soon", lowest, ~c.is_base & np.isfinite(lowest))
-    yield _outside("coarse end point", s.crossings[ALWAYS_END_POINT].step_ph, ~s.purged)
+    yield _outside("coarse end point", s.crossings[ALWAYS_END_POINT].step_ph,
+                   ~s.purged & ~read_at(s, ALWAYS_END_POINT))
     drift = c.drift / np.where(c.is_potential, nernst_mv_per_ph(c.t_c), 1.0)
     yield _outside("wrong way", _wrong_way(s))
     steps = _outside("running total", c.repeats.astype(float), drift > STEPS_MOVE)

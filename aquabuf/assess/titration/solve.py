@@ -30,6 +30,7 @@ from aquabuf.engine.balance import Family
 from aquabuf.engine.build import IONS, SEA_SALTS, of_sea_salt
 from aquabuf.engine.conditions import FRESH_BELOW, LIMITS
 from aquabuf.engine.fit import fit_curve
+from aquabuf.engine.solve import PH_HIGHEST, PH_LOWEST
 from aquabuf.engine.titrate import Points, mixed_ionic_strength, points_at
 from aquabuf.readings.titration.result import Titrations
 from aquabuf.units import convert
@@ -216,7 +217,11 @@ def _readings_as_ph(c: Curves, samples: Mapping[str, NDArray], points_with) -> t
         per_acid = activity / (-d_rest * points.dilution)
         calibration.zero_mv[rows] = zero_potential_of_acid(
             c.reading[rows], c.acid[rows], c.dilution[rows], per_acid, calibration.slope_mv[rows])
-    return calibration, np.where(c.is_potential[:, None], calibration.ph(c.reading), c.reading)
+    ph = calibration.ph(c.reading)
+    with np.errstate(invalid="ignore"):
+        beyond = ((ph < PH_LOWEST) | (ph > PH_HIGHEST)).any(axis=1)
+    ph[beyond] = np.nan  # one potential that no water has spoils the titration, as a pH of 20 would
+    return calibration, np.where(c.is_potential[:, None], ph, c.reading)
 
 
 def _first_guess(c: Curves, ph: Array) -> Array:

@@ -95,6 +95,12 @@ def test_the_acid_end_gives_the_zero_of_any_electrode(make, zero):
     assert_allclose(a.results["recommended_ueq_l"], row(one)["recommended_ueq_l"], rtol=0.002)
 
 
+def test_zero_by_the_acid_end_does_not_depend_on_where_the_search_begins():
+    """Four electrodes far apart: each zero is found just as well, to a thousandth of a millivolt."""
+    off = [assessed(millivolts(hard(), zero=zero)).solved.calibration.zero_mv[0] - zero for zero in (-700.0, 0.0, 413.7, 900.0)]
+    assert np.ptp(off) < 1e-3
+
+
 def test_zero_by_the_acid_end_says_nothing_of_the_strength():
     """A strength stated ten times too high moves the zero by 59 mV: no doubt is raised, as the text says."""
     a = assessed(millivolts(hard(titrant_strength_eq_l=0.5)))

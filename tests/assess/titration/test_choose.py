@@ -5,7 +5,8 @@ import re
 import numpy as np
 import pytest
 from numpy.testing import assert_allclose
-from titrations import acid_steps, assessed, dilute, hard, results, row, sample, steps
+from scipy.optimize import brentq
+from titrations import acid_steps, assessed, curve, dilute, hard, results, row, sample, steps
 
 from aquabuf.assess.titration.choose import DILUTE_BELOW_EQ, method_facts
 
@@ -89,7 +90,7 @@ def test_inflection_where_the_curve_stops_at_the_end_point():
     """Neither fit nor Gran line has its points, but the inflection is seen."""
     method, reason = chosen(SHORT)
     assert method == "inflection"
-    assert "inflection point: the point of steepest fall of pH; known to " in reason
+    assert f"inflection point: the point of steepest fall of pH; known to {row(SHORT)['inflection_resolution_ueq_l']:.3g} µeq per unit of sample by" in reason
     for words in ("fit of the whole curve cannot be used: needs two points below", "Gran line cannot be used: needs three points in a row from pH 4.6 to 2.7"):
         assert words in reason
 
@@ -181,6 +182,29 @@ def test_own_method_is_refused_where_it_cannot_work(one, own, instead, why):
     assert "your own method, which can work here" not in r["recommended_reason"]
 
 
+def test_end_point_that_was_titrated_to_needs_no_fine_steps():
+    """What most waterworks write down: first pH, and the acid to pH 4.5. By hand that is A less what is left at pH 4.5."""
+    alkalinity, carbon, ionic = 2e-3, 2.2e-3, 5e-3
+    acid = brentq(lambda v: curve([v], alkalinity=alkalinity, carbon=carbon, ionic=ionic)[0] - 4.5, 3.0, 5.0)
+    one = sample([0.0, round(acid, 3)], alkalinity=alkalinity, carbon=carbon, ionic=ionic, own_method="fixed_4_5")
+    r = row(one)
+    assert (r["recommended_method"], r["fixed_4_5_status"]) == ("fixed_4_5", "ok")
+    assert_allclose(r["recommended_ueq_l"], acid * 500.0, rtol=1e-3)
+    assert r["warnings"] == "few points; stops too soon"
+
+
+def test_each_end_point_has_its_own_steps():
+    """A reading at pH 4.65 and the next at 3.2: the end point at 4.6 was titrated to, the one at 4.5 lies in a gap."""
+    r = row(sample([0.0, 3.0, 3.6, 3.96, 5.4], alkalinity=2e-3, carbon=2.2e-3))
+    assert (r["fixed_level_ph"], r["fixed_level_status"], r["fixed_4_5_status"]) == (4.6, "ok", "steps too coarse at the end point")
+
+
+def test_steep_steps_tell_no_inflection():
+    """Four readings with 30 % of the alkalinity between two of them: a top of their slopes may be anywhere."""
+    r = row(sample([0.0, 3.0, 4.2, 4.6], alkalinity=2e-3, carbon=2.2e-3))
+    assert (r["recommended_method"], r["inflection_status"]) == ("", "steps too coarse to tell it")
+
+
 # ------------------------------------------------------------------ the strength of the titrant
 
 @pytest.mark.parametrize(("factor", "fits"), [(10.0, 0.05), (0.1, 0.05)])
@@ -194,6 +218,12 @@ def test_a_strength_off_by_ten_gives_no_result(factor, fits):
     assert before.endswith(f" of what {0.05 * factor:.3g}")
     assert_allclose(float(after.split(" eq/L would; correct the strength or its unit")[0]), fits, rtol=0.05)
     assert np.isfinite(r["gran_ueq_l"])  # the value of the method is there to look at
+
+
+@pytest.mark.parametrize(("factor", "doubtful"), [(1.0 / 3.4, True), (1.0 / 2.8, False), (2.9, False), (3.6, True)])
+def test_border_of_doubt(factor, doubtful):
+    """A factor of three either way may be an electrode or a bottle; beyond, there is no result."""
+    assert (row(hard(titrant_strength_eq_l=0.05 * factor))["recommended_method"] == "") == doubtful
 
 
 def test_own_method_gets_no_result_either_with_a_doubtful_strength():
@@ -212,6 +242,16 @@ def test_an_unresolved_slope_widens_the_uncertainty():
     assert_allclose(bad.recommended_ueq_l, 2400.0, rtol=0.01)
     assert_allclose(bad.recommended_u_ueq_l, 231.0, rtol=0.1)
     assert abs(bad.recommended_ueq_l - 2000.0) < 2.0 * bad.recommended_u_ueq_l
+
+
+def test_a_wrong_strength_in_dilute_water_is_not_hidden_by_the_electrode():
+    """Stated twice as strong, an acid makes 200 of 100 µeq/L; the interval must tell that half of it may be wrong.
+
+    (1 - 1/2) over the root of three, of 200 µeq/L, is 58.
+    """
+    r = row(dilute(titrant_strength_eq_l=0.04))
+    assert_allclose(r["recommended_ueq_l"], 200.0, rtol=0.03)
+    assert_allclose(r["recommended_u_ueq_l"], 58.0, rtol=0.05)
 
 
 def test_a_slope_that_the_electrode_explains_does_not_widen_it():

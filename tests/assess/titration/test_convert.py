@@ -11,7 +11,7 @@ from aquabuf.assess.titration.options import CONVERSIONS, TitrationOptions
 from aquabuf.errors import InputError
 
 # (A - 31.6) + 0.646 sqrt(A - 31.6), worked out by hand, µeq/L
-HENRIKSEN = [(31.6, 0.0), (32.6, 1.646), (47.6, 18.584), (81.6, 54.5679), (131.6, 106.46), (531.6, 514.4450)]
+HENRIKSEN = [(31.6, 0.0), (32.0, 0.8086), (32.6, 1.646), (47.6, 18.584), (81.6, 54.5679), (131.6, 106.46), (531.6, 514.4450)]
 
 
 @pytest.mark.parametrize(("titrated", "expected"), HENRIKSEN)

@@ -124,6 +124,12 @@ def test_sound_titration_has_no_finding(sound, name):
     assert mine[["finding", "value", "more"]].values.tolist() == []
 
 
+def test_base_titration_of_neutral_water_is_sound():
+    """It has no acid end to reach and no alkalinity to find: nothing to warn of."""
+    a = assessed(sample(np.linspace(0.0, 1.6, 17), alkalinity=1e-3, carbon=1.5e-3, strength=-0.05, scatter=0.005))
+    assert (a.results["status"].tolist(), a.findings["finding"].tolist()) == (["ok"], [])
+
+
 @pytest.mark.parametrize(("name", "limit"), [("strength doubtful", "0.3 to 3"), ("few points", "at least 5"), ("dilution", "at most 20"),
                                              ("electrode slope", "95 to 102"), ("points swapped", "")])
 def test_limits_in_words(name, limit):
@@ -150,6 +156,30 @@ def test_turned_reading_is_the_one_that_was_misread(at, by):
     assert "points swapped" not in f.index
 
 
+@pytest.mark.parametrize(("rise", "turned"), [(0.07, True), (0.05, False)])
+def test_a_turn_is_more_than_scatter(rise, turned):
+    """Four times the scatter of a difference, 0.057 at 0.01 each."""
+    one = hard()
+    names = set(found(moved(one, 24, one["ph"][23] - one["ph"][24] + rise)).index)
+    assert bool(names & {"pH turns back", "points swapped"}) == turned
+
+
+def test_small_errors_of_slope_are_seen_by_good_instruments():
+    """Strength 8 % off, electrode known to 0.005 and strength to 0.02 %: free acid rises by 0.98/1.08, which is told."""
+    exact = {"ph_u": 0.005, "titrant_strength_u_eq_l": 1e-5}
+    assert "Gran slope" in found(hard(titrant_strength_eq_l=0.054, **exact)).index
+    assert "Gran slope" not in found(hard(titrant_strength_eq_l=0.054)).index
+    assert "Gran slope" not in found(hard(**exact)).index
+
+
+def test_wrong_standards_make_an_offset_and_none_make_none():
+    """Standards of pH 7.15 and 4.15 taken for 7 and 4: every pH is 0.15 low; without standards there is nothing to be off."""
+    one = millivolts(hard(), 59.16)
+    off = {name: v + (59.16 * 0.15 if name.endswith("_mv") else 0.0) if name.startswith("standard") else v for name, v in one.items()}
+    assert_allclose(found(off).loc["electrode offset", "value"], 0.15, rtol=0, atol=0.01)
+    assert "electrode offset" not in found({name: v for name, v in one.items() if not name.startswith("standard")}).index
+
+
 @pytest.mark.parametrize("at", [4, 9, 14, 22])
 def test_swapped_pair_is_told_from_a_jump(at):
     """The first of the two rows; a swap is no turn."""
@@ -166,7 +196,8 @@ def test_a_base_titration_turns_the_other_way():
 def test_more_words_where_the_table_cannot_know_them():
     """Which strength would fit, which two methods differ and by how much, why the user's own cannot work."""
     assert found(CASES["strength doubtful"][0]).loc["strength doubtful", "more"].endswith(" eq/L would; correct the strength or its unit")
-    assert found(UNSEEN).loc["methods disagree", "more"].endswith(" µeq per unit of sample")
+    r = row(UNSEEN)
+    assert found(UNSEEN).loc["methods disagree", "more"] == f"Gran line {r['gran_ueq_l']:.1f}, fit {r['fit_ueq_l']:.1f} µeq per unit of sample"
     assert found(CASES["own method unfit"][0]).loc["own method unfit", "more"] == "not below pH 7, 400 µeq/L or 100 µS/cm, or with organic acids"
 
 
@@ -175,19 +206,42 @@ def test_a_doubtful_strength_is_told_without_what_follows_from_it():
     assert list(found(hard(titrant_strength_eq_l=0.5, scatter=0.01)).index) == ["strength doubtful"]
 
 
-SLOPES = {
-    "organic acids bind acid along the line and lower its slope": hard(titrant_strength_eq_l=0.06, doc_mg_l=20.0),
-    "the bicarbonate part of the curve shows the same electrode offset (+0.15 pH): it is the electrode, if no CO2 was lost, and the result stands":
-        hard(offset=0.15),
-    "the curve cannot tell which; if it is the strength, the true result is about 0.82 times the one given; the uncertainty counts it":
-        hard(titrant_strength_eq_l=0.06),
-}
+def water(alkalinity, *, stated=1.0, offset=0.0, seed=1):
+    """A titration to 0.6 meq/L past the end point, read to 0.01 with that scatter; strength stated wrong, or electrode off."""
+    strength = 0.02 if alkalinity < 1e-3 else 0.05
+    one = sample(acid_steps(6e-4, alkalinity=alkalinity, strength=strength), alkalinity=alkalinity, carbon=1.1 * alkalinity + 2e-5, strength=strength,
+                 offset=offset, scatter=0.01, seed=seed)
+    return one | {"ph": np.round(one["ph"], 2), "titrant_strength_eq_l": strength * stated}
 
 
-@pytest.mark.parametrize("words", SLOPES)
-def test_what_a_slope_off_theory_may_mean(words):
-    """Organic acids, electrode, or not to be told."""
-    assert found(SLOPES[words]).loc["Gran slope", "more"].startswith(words)
+ELECTRODE, STRENGTH, UNTOLD = "the bicarbonate part of the curve shows the same electrode offset (", "the bicarbonate part of the curve finds the electrode right: ", \
+    "the curve cannot tell which; "
+SLOPES = [
+    (hard(titrant_strength_eq_l=0.06, doc_mg_l=20.0), "organic acids bind acid along the line and lower its slope; "),
+    (hard(titrant_strength_eq_l=0.03, doc_mg_l=20.0), STRENGTH),  # they never raise it
+    (water(3e-5, stated=1.3), UNTOLD), (water(3e-5, offset=0.114), UNTOLD),  # too little bicarbonate
+    *((water(a, stated=n), STRENGTH) for a in (1e-4, 3e-4, 2e-3) for n in (2.0, 0.5)), *((water(a, offset=d), ELECTRODE) for a in (1e-4, 3e-4, 2e-3) for d in (0.3, -0.3)),
+]
+
+
+@pytest.mark.parametrize(("one", "words"), SLOPES, ids=[f"{i} {words[:30]}" for i, (_, words) in enumerate(SLOPES)])
+def test_what_a_slope_off_theory_may_mean(one, words):
+    """Organic acids; strength or electrode, whichever the rest of the curve sides with, in dilute water too; or not to be told."""
+    assert found(one).loc["Gran slope", "more"].startswith(words)
+
+
+def test_strength_and_electrode_are_never_taken_for_each_other():
+    """Sixty noisy titrations of dilute water: a wrong strength is not called an electrode that is off, nor the reverse."""
+    fault = [{"stated": 1.3}, {"stated": 1.0 / 1.3}, {"offset": 0.114}, {"offset": -0.114}] * 15
+    crowd = [water(1e-4, **more, seed=i) | {"sample_id": f"{next(iter(more))} {i}"} for i, more in enumerate(fault)]
+    findings = assessed(*crowd).findings
+    slopes = findings[findings["finding"] == "Gran slope"]
+    assert len(slopes) > 55
+    of_strength = slopes["sample_id"].str.startswith("stated")
+    assert not slopes[of_strength]["more"].str.startswith(ELECTRODE).any()
+    assert not slopes[~of_strength]["more"].str.startswith(STRENGTH).any()
+    assert slopes[of_strength]["more"].str.startswith(STRENGTH).mean() > 0.7
+    assert slopes[~of_strength]["more"].str.startswith(ELECTRODE).mean() > 0.7
 
 
 # ------------------------------------------------------------------ limits from both sides

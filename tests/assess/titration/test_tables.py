@@ -120,6 +120,12 @@ def test_gran_volume_times_strength_is_the_alkalinity():
     assert_allclose(r["gran_volume_ml"] * 0.05 / 100.0 * 1e6, r["gran_ueq_l"], rtol=1e-12)
 
 
+def test_line_of_an_acid_water_may_begin_at_its_first_point():
+    """Its pH stands in the table then too."""
+    r = row(sample(np.linspace(0.0, 3.0, 20), alkalinity=-3e-4, carbon=3e-5, strength=0.02))
+    assert (r["gran_ph_first"], r["gran_ph_last"]) == (r["first_ph"], r["lowest_ph"])
+
+
 def test_counts_of_a_digital_titrator_are_brought_to_milliliters_before():
     """The points come in mL; the cartridge factor multiplies the strength, so twice 1.01 is 1 % more."""
     plain, corrected = results(hard(), hard(cartridge_factor=1.01)).itertuples()
