@@ -9,6 +9,7 @@ import pandas as pd
 from aquabuf.assess.titration.choose import method_facts
 from aquabuf.assess.titration.findings import finding_facts
 from aquabuf.assess.titration.options import TitrationOptions
+from aquabuf.assess.titration.tables import NO_RESULT
 from aquabuf.assess.uncertainty import TO_COVERAGE
 from aquabuf.report.summary import cautions, item, plural
 from aquabuf.report.titration_tally import LISTED, NAME_LENGTH, TitrationTally
@@ -74,10 +75,16 @@ def _results(tally: TitrationTally) -> str:
     rows = [head, *(_row(r) for r in tally.shown)]
     widths = [max(len(row[i]) for row in rows) for i in range(4)]
     lines = [f"Results{'' if tally.samples <= LISTED else f' (first {LISTED} of {tally.samples:,})'}"]
-    for row in rows:
+    for row, why in zip(rows, ["", *(_why_none(r) for r in tally.shown)], strict=True):
         cells = [row[0].ljust(widths[0]), row[1].ljust(widths[1]), row[2].rjust(widths[2]), row[3].ljust(widths[3])]
         lines.append("  " + "  ".join([*cells, row[4]]).rstrip())
+        lines += [item(why, mark=" " * (widths[0] + 4))] if why else []
     return "\n".join(lines)
+
+
+def _why_none(r: pd.Series) -> str:
+    """Reason of a titration without result; those refused have theirs further down."""
+    return f"{r['recommended_reason']}." if r["status"] == NO_RESULT else ""
 
 
 def _findings(tally: TitrationTally) -> str:

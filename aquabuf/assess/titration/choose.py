@@ -28,6 +28,7 @@ Array = NDArray[np.float64]
 
 DILUTE_BELOW_EQ = 4e-4      # alkalinity below which an inflection cannot be told; US Geological Survey field manual
 DILUTE_BELOW_PH = 7.0       # the same source
+ACID_BELOW_EQ = 1e-3        # a hard groundwater starts below pH 7 by its CO2 alone; common practice, no source
 DILUTE_BELOW_US_CM = 100.0  # the same source
 ORGANIC_SHARE = 0.1         # of alkalinity that organic acid sites may be; the source says "appreciable"
 MOST_U_OFFSET = 0.3         # pH; beyond, the curve does not tell offset from alkalinity
@@ -77,11 +78,11 @@ def water_kinds(s: Solved) -> tuple[NDArray[np.object_], NDArray[np.object_]]:
     alkalinity, start = best_guess(s), s.ph[:, 0]
     conductivity, doc = value_of(s.samples, "conductivity_us_cm", n), value_of(s.samples, "doc_mg_l", n)
     organic = organic_sites(s)
-    own_ph = ~s.curves.is_base & (s.curves.added[:, 0] == 0.0)  # else the first reading is not that of the sample
     with np.errstate(invalid="ignore"):
         cases = (
             (organic > ORGANIC_SHARE * np.abs(alkalinity), "dilute", lambda i: f"organic carbon {doc[i]:.3g} mg/L"),
-            (own_ph & (start < DILUTE_BELOW_PH), "dilute", lambda i: f"pH {start[i]:.2f} at the start, below 7"),
+            (starts_acid(s) & (alkalinity < ACID_BELOW_EQ), "dilute",
+             lambda i: f"pH {start[i]:.2f} at the start, below 7"),
             (conductivity < DILUTE_BELOW_US_CM, "dilute",
              lambda i: f"conductivity {conductivity[i]:.3g} µS/cm, below 100"),
             (alkalinity < DILUTE_BELOW_EQ, "dilute",
@@ -95,6 +96,12 @@ def water_kinds(s: Solved) -> tuple[NDArray[np.object_], NDArray[np.object_]]:
         for i in np.flatnonzero(mask).tolist():
             detail[i] = words(i)
     return kind, detail
+
+
+def starts_acid(s: Solved) -> NDArray[np.bool_]:
+    """Where the sample itself is below pH 7; a first reading after acid was added does not tell."""
+    with np.errstate(invalid="ignore"):
+        return ~s.curves.is_base & (s.curves.added[:, 0] == 0.0) & (s.ph[:, 0] < DILUTE_BELOW_PH)
 
 
 def able(s: Solved, kind: NDArray[np.object_]) -> dict[str, tuple[NDArray[np.bool_], NDArray[np.object_]]]:
@@ -121,7 +128,8 @@ def _limits(s: Solved, name: str, e: Estimate, kind: NDArray[np.object_]) -> lis
             return [(s.fit.u_offset > MOST_U_OFFSET, "the points do not tell electrode offset from alkalinity"),
                     (s.fit.fit.reduced_chi2 > GOOD_CHI2, "the curve does not fit")]
         if name == "inflection":
-            return [(kind == "dilute", "not below pH 7, 400 µeq/L or 100 µS/cm, or with organic acids"),
+            return [((kind == "dilute") | starts_acid(s),
+                     "not below pH 7, 400 µeq/L or 100 µS/cm, or with organic acids"),
                     ((e.own_u > LEAST_RESOLVED * np.abs(e.value))
                      | (s.inflection.resolution > COARSEST_STEP * np.abs(e.value)), "steps too coarse to tell it")]
         if name == "two_point":

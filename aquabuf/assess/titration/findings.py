@@ -171,7 +171,7 @@ def _lines(s: Solved, choice: Choice) -> Iterator[Finding]:
 def _fits(s: Solved, choice: Choice) -> Iterator[Finding]:
     """The fit of the whole curve."""
     c, f = s.curves, s.fit
-    yield _outside("fit is poor", f.fit.reduced_chi2)
+    yield _outside("fit is poor", f.fit.reduced_chi2, choice.water != "complex")  # there weak acids are expected
     residual = np.abs(f.fit.residual_ph)
     safe = np.where(np.isfinite(residual), residual, 0.0)
     at, largest = safe.argmax(axis=1), safe.max(axis=1)
@@ -234,7 +234,7 @@ def _methods(s: Solved, choice: Choice) -> Iterator[Finding]:
     candidates = {
         "Gran line": (s.estimates["gran"].value, s.estimates["gran"].own_u,
                       s.gran.straight & (choice.water != "salt")),
-        "fit": (s.estimates["fit"].value, s.estimates["fit"].own_u, kept),
+        "fit": (s.estimates["fit"].value, s.estimates["fit"].own_u, kept & (choice.water != "complex")),
         "acid in excess": (s.estimates["acid_excess"].value, s.estimates["acid_excess"].own_u, ~kept),
         "inflection": (s.estimates["inflection"].value, s.estimates["inflection"].own_u, able & kept),
         "end point 4.5 (proton balance)": (balanced, fixed.own_u,

@@ -26,7 +26,7 @@ LEAST_FREE_ACID = 5e-6   # eq per unit of sample, taken for points that lie befo
 CHANCE_PARTS = 2.0       # of the variance expected of windows that chance may bring about
 LENGTH_STEP = 1.1        # between the lengths of window that are tried, at least one point
 NOT_BY_CHANCE = 0.01     # probability of so much scatter, below which points are called curved
-BIAS_SHARE = 0.7         # of the error from acid still bound; some goes with escaping CO2; found by simulation
+BIAS_SHARE = 0.75        # of the error from acid still bound; some goes with escaping CO2; found by simulation
 BUFFER_PH = (5.4, 7.8)   # where carbon dioxide and bicarbonate share the carbon: second function
 CARBONATE_FROM_PH = 8.8  # above it bicarbonate and carbonate do: third function
 

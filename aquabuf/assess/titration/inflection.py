@@ -17,6 +17,8 @@ NOISE_PART = 0.05           # largest share of the fall that scatter of the two 
 HALF_WIDTH_PH = 0.55        # of the piece of curve that is smoothed
 FEWEST_SMOOTHED = 5         # points in it; with fewer the steepest steps must do
 STEP_PARTS = 0.1            # of a step that the top of a parabola through three slopes is off, found by simulation
+STEP_FALL = 0.7             # pH; beyond, the square of the fall counts, up to anywhere within the step
+ANYWHERE = 1.0 / np.sqrt(12.0)
 ROUNDS = 4
 # Share of the free acid at the bend by which it may miss the equivalence point: bicarbonate gives way to CO2 near
 # pH 6.3, so that the curve is not quite the same on both sides; found by simulation.
@@ -98,7 +100,9 @@ def _steepest(acid: Array, ph: Array, steps: int, u_ph: Array, u_acid: Array,
         # a slope is wrong by scatter over its interval; the top of a parabola moves by that over its curvature
         noise = np.hypot(u_ph, y1 * u_acid) / width / np.abs(curved) / (0.5 * (x2 - x0))
     noise = np.where(np.isfinite(noise), np.minimum(noise, 0.5 * width), 0.5 * width)
-    u = np.hypot(STEP_PARTS * width / steps, noise)
+    with np.errstate(invalid="ignore"):
+        parts = np.clip(STEP_PARTS * np.maximum(y1 * width / STEP_FALL, 1.0) ** 2, STEP_PARTS, ANYWHERE)
+    u = np.hypot(parts * width / steps, noise)
 
     def or_nan(v: Array) -> Array:
         return np.where(is_peak, v, np.nan)

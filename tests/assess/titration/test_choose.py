@@ -31,7 +31,7 @@ KINDS = {
     "ordinary": (hard(), "fit", "ordinary fresh water; fit of the whole curve: "),
     "alkalinity": (dilute(), "gran", r"dilute or acid water \(alkalinity about \d+ µeq/L, below 400\); Gran line: "),
     "conductivity": (hard(conductivity_us_cm=90.0), "gran", r"dilute or acid water \(conductivity 90 µS/cm, below 100\); Gran line: "),
-    "first pH": (sample(steps(4.0), alkalinity=2e-3, carbon=2.8e-3), "gran", r"dilute or acid water \(pH 6.\d\d at the start, below 7\); Gran line: "),
+    "first pH": (sample(steps(1.6), alkalinity=8e-4, carbon=1.12e-3), "gran", r"dilute or acid water \(pH 6.\d\d at the start, below 7\); Gran line: "),
     "organic carbon": (hard(doc_mg_l=25.0), "gran", r"dilute or acid water \(organic carbon 25 mg/L\); Gran line: "),
     "wastewater": (hard(water_kind="wastewater"), "fixed_4_5", r"waste water \(water_kind wastewater\); end point at pH 4.5: "),
     "salt, CO2 swept out": (sample(acid_steps(1.5e-3, alkalinity=2e-3, strength=0.1), alkalinity=2e-3, carbon=0.0, strength=0.1,
@@ -46,6 +46,14 @@ def test_kind_of_water_decides(name):
     found = chosen(one)
     assert found[0] == method
     assert re.match(reason, found[1]), found[1]
+
+
+def test_hard_groundwater_is_not_dilute_for_its_carbon_dioxide():
+    """Below pH 7 by its CO2 alone; yet the inflection, which the field manual forbids there, stays out."""
+    r = row(sample(steps(4.0), alkalinity=2e-3, carbon=2.8e-3))
+    assert r["first_ph"] < 7.0
+    assert r["recommended_reason"].startswith("ordinary fresh water; fit of the whole curve: ")
+    assert r["inflection_status"] == "not below pH 7, 400 µeq/L or 100 µS/cm, or with organic acids"
 
 
 @pytest.mark.parametrize("facts", [{"doc_mg_l": 15.0}, {"conductivity_us_cm": 110.0}, {"salinity": 0.9}, {"water_kind": "stream"}], ids=str)
