@@ -148,13 +148,12 @@ def windows(points: Points, ph: Array, use: NDArray[np.bool_], *, alkalinity: Ar
             u_acid: Array) -> Gran:
     """Choose the window of points for the first function: smallest expected error among the straight ones.
 
-    Every run of three or more points within GRAN_PH is tried (of up to 40 lengths in a long titration). One is admissible when it spans 0.3 pH, its line rises,
-    its root lies before its first point, and its points scatter about it no more than pH and burette explain
-    (chi-squared test at 1 %). Expected error: scatter, and what `carbon` [mol per unit of sample] and the weak acids
-    still hold of the acid.
-    It is worked out for an ideal line through a first guess of the `alkalinity`, not for the readings: else the window
-    would be picked by its own scatter, which pulls the result up. Where no window is straight the straightest is taken
-    and said to be curved.
+    Every run of three or more points within GRAN_PH is tried (runs of up to 40 lengths in a long titration). One is
+    admissible when it spans 0.3 pH, its line rises, its root lies before its first point, and its points scatter about
+    it no more than pH and burette explain (chi-squared test at 1 %). Expected error: scatter, and what `carbon`
+    [mol per unit of sample] and the weak acids still hold of the acid. It is worked out for an ideal line through a
+    first guess of the `alkalinity`, not for the readings: else the window would be picked by its own scatter, which
+    pulls the result up. Where no window is straight the straightest is taken and said to be curved.
     """
     x, n, m = points.acid, *ph.shape
     with np.errstate(invalid="ignore"):
