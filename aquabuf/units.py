@@ -183,7 +183,9 @@ def _mass_scale(unit: Unit, dimension: str, molar_mass_g: float | None, charge: 
         return 1e3
     mass = molar_mass_of(unit.basis) if unit.basis else molar_mass_g
     if mass is None:
-        raise InputError(f"{unit.label} needs a basis to become an amount: none is given. Write e.g. 'mg/L as N'.")
+        example = "CaCO3" if dimension in ("alkalinity", "hardness") else "N"
+        raise InputError(f"{unit.label} needs a basis to become an amount: none is given. "
+                         f"Write e.g. '{unit.label} as {example}'.")
     if unit.basis in EQUIVALENTS_PER_MOL:
         return EQUIVALENTS_PER_MOL[unit.basis] / mass / _whole_charge(unit, charge)
     return 1.0 / mass

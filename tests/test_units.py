@@ -201,7 +201,7 @@ def test_messages_name_the_remedy():
     """Unknown unit, mass without basis, equivalents without a fixed charge, mass of an unknown substance, no group."""
     with pytest.raises(InputError, match=r"'furlong' is not a unit of temperature\. Use one of: °C, °F, K"):
         to_house(1.0, "furlong", "temperature")
-    with pytest.raises(InputError, match=r"mg/L needs a basis .*Write e\.g\. 'mg/L as N'"):
+    with pytest.raises(InputError, match=r"mg/L needs a basis .*Write e\.g\. 'mg/L as CaCO3'"):
         to_house(1.0, "mg/L", "alkalinity")
     with pytest.raises(InputError, match=r"meq/L counts charges, .*Use mmol/L or mg/L"):
         to_house(1.0, "meq/L", "amount", "phosphate")

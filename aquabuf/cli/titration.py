@@ -58,9 +58,10 @@ def run(points: Path, folder: Path, samples: Path | None, points_map: Path | Non
     """Assess the titrations of the table POINTS and write the results to a folder.
 
     POINTS has a row per reading (sample_id, titrant_ml or titrant_counts or titrant_mass_g, ph or potential_mv); what
-    is known of a sample (sample_volume_ml, titrant_eq_l, temperature_c, ...) stands there too or in SAMPLES.
-    `aquabuf columns --titration` lists the columns, `aquabuf template titration_points` starts a table. The folder gets
-    alkalinity.csv (a row per sample), findings.csv (what went wrong), a figure per sample, rejected.csv and run.json.
+    is known of a sample (sample_volume_ml, titrant_eq_l, temperature_c, ...) stands there too or in SAMPLES; where a
+    permit prescribes a method, name it in own_method. `aquabuf columns --titration` lists the columns, `aquabuf
+    template titration_points` starts a table. The folder gets alkalinity.csv (a row per sample), findings.csv (what
+    went wrong), a figure per sample, rejected.csv and run.json.
     """
     from aquabuf.assess.titration.options import TitrationOptions
     from aquabuf.readings.titration.paths import TitrationFiles

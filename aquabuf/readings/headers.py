@@ -139,7 +139,9 @@ def _unit_missing(header: str, quantity: Quantity) -> HeaderError:
 
 
 def _units_missing(header: str, quantities: Sequence[Quantity]) -> HeaderError:
-    ways = "; ".join(f"{q.base} in {', '.join(unit_labels(q))}" for q in quantities)
+    ways = "; ".join(f"{q.base} in {', '.join(unit_labels(q))}" for q in quantities if unit_labels(q) != ["-"])
+    bare = [q.name for q in quantities if unit_labels(q) == ["-"]]
+    ways += f"; or write {' or '.join(bare)}, which has no unit" if bare else ""
     return HeaderError(
         f"column {header!r} needs a unit, which says what is meant: {ways}. "
         f"Write it in the header, e.g. {example_header(quantities[0])}."

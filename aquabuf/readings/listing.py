@@ -5,9 +5,17 @@ from __future__ import annotations
 import textwrap
 from collections.abc import Sequence
 
-from aquabuf.errors import InputError
-from aquabuf.readings.headers import nearest_names
-from aquabuf.readings.schema import Quantity, Schema, example_header, name_index, quantities, unit_labels
+from aquabuf.errors import HeaderError, InputError
+from aquabuf.readings.headers import nearest_names, parse_header
+from aquabuf.readings.schema import (
+    Quantity,
+    Schema,
+    example_header,
+    name_index,
+    quantities,
+    titration_quantities,
+    unit_labels,
+)
 from aquabuf.units import key
 
 __all__ = ["columns_text"]
@@ -52,6 +60,12 @@ def _find(name: str, schema: Schema) -> list[Quantity]:
         return [schema[name]]
     if key(name) in index:
         return [quantity for quantity, _ in index[key(name)]]
+    try:
+        return [parse_header(name, index).quantity]  # a header with its unit
+    except HeaderError:
+        pass
+    if schema is quantities() and key(name) in name_index(schema=titration_quantities()):
+        raise InputError(f"no column of readings is named {name!r}, but one of titrations is. Add --titration.")
     near = nearest_names(name, index)
     hint = f"The nearest are {', '.join(near)}." if near else "Ask for the list without a name."
     raise InputError(f"no column is named {name!r}. {hint}")

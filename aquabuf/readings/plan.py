@@ -55,7 +55,8 @@ def _meanings(names: Sequence[str], table_map: TableMap) -> tuple[list[tuple[int
         else:
             found.append((at, column))
     if errors:
-        errors.append("What headers mean can be said in a map file: `aquabuf template map` starts one, --map takes it.")
+        errors.append("What headers mean can be said in a map file: `aquabuf template map` starts one, and the map "
+                      "option for this table takes it (see --help).")
         raise HeaderError("\n".join(errors))
     return found, ignored
 

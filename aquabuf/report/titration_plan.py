@@ -6,7 +6,7 @@ import math
 
 from aquabuf.assess.titration.choose import DILUTE_BELOW_EQ, method_facts
 from aquabuf.assess.titration.options import ALWAYS_END_POINT
-from aquabuf.assess.titration.plan import COARSE_TO_PH, FINE_TO_PH, LAST_PH, Plan, Setup
+from aquabuf.assess.titration.plan import COARSE_TO_PH, FINE_TO_PH, LAST_PH, LEAST_JUDGED_EQ, Plan, Setup
 from aquabuf.assess.uncertainty import TO_COVERAGE
 from aquabuf.chem.gases import AIR_CO2_PPM, AIR_CO2_YEAR
 from aquabuf.readings.titration.result import COUNTS_PER_ML
@@ -47,7 +47,7 @@ def _verdict(p: Plan) -> str:
     for v in p.better[:BETTER_SHOWN]:
         device = "" if v.setup.device == p.setup.device else f" in a {v.setup.device}"
         lines.append(item(f"{v.setup.strength_eq_l:g} eq/L{device} with {v.setup.sample_ml:g} mL of sample: "
-                          f"{_amount(p.setup, v.end_ml)} to the end point, {v.dilution:.1%} titrant."))
+                          f"{_amount(p.setup, v.end_ml)} to the end point, {100.0 * v.dilution:.1f} % titrant."))
     if not p.better:
         lines[1] = ("No usual strength with 25 to 200 mL of sample suits this device. For very dilute water take a "
                     "microburette; for very strong water thin a measured part of the sample with pure water, and "
@@ -81,8 +81,8 @@ def _steps(p: Plan) -> str:
                           f"pH moves less than 0.01 in 30 s"))
     lines.append(item(f"{'on' if p.first_ph > FINE_TO_PH else 'down'} to pH {LAST_PH:g}: {_amount(s, past)} at a time; "
                       f"these points carry the Gran line, so take five or more"))
-    lines.append(item("write down titrant (running total) and pH each time; cover the vessel, stir gently, and be "
-                      "done within 10 minutes"))
+    lines.append(item("write down titrant (running total) and pH each time; cover the vessel and stir gently; "
+                      "without a cover be done within 10 minutes"))
     return "\n".join(lines)
 
 
@@ -98,6 +98,11 @@ def _table(p: Plan) -> str:
     return "\n".join(lines)
 
 
+def _two_figures(v: float) -> str:
+    """A number to two figures, never with a power of ten."""
+    return f"{float(f'{v:.2g}'):,.6g}"
+
+
 def _worth(p: Plan) -> str:
     r = p.result.results.iloc[0]
     method = r["recommended_method"]
@@ -105,9 +110,10 @@ def _worth(p: Plan) -> str:
         return item(f"Such a curve gives no result to rely on: {r['recommended_reason']}.", mark="")
     mg, fixed = TO_COVERAGE * r["recommended_u_mg_l_caco3"], r["fixed_4_5_ueq_l"]
     alone = f" A single end point at pH {ALWAYS_END_POINT:g} would read {fixed:,.1f} µeq/L."
+    u = TO_COVERAGE * r["recommended_u_ueq_l"]
     return item(f"Such a curve gives the alkalinity by the {method_facts('method')[method]['words']} to "
-                f"± {TO_COVERAGE * r['recommended_u_ueq_l']:.2g} µeq/L (± {mg:.2g} mg/L as CaCO3; 90 % interval with "
-                f"the default uncertainties of pH, strength and volumes).{'' if math.isnan(fixed) else alone}", mark="")
+                f"± {_two_figures(u)} µeq/L (± {_two_figures(mg)} mg/L as CaCO3; 90 % interval with the default "
+                f"uncertainties of pH, strength and volumes).{'' if math.isnan(fixed) else alone}", mark="")
 
 
 def _rests_on(p: Plan) -> str:
@@ -117,5 +123,7 @@ def _rests_on(p: Plan) -> str:
               f"{AIR_CO2_YEAR}, recalled); groundwater and lakes hold more CO2 and start lower")
     lines = [carbon + ".", "CO2 stays in the vessel; carbonate is the only weak acid.",
              f"{COUNTS_PER_ML:g} counts are 1 mL." if s.device == "counts" else "",
+             f"Strength and sample are judged as for {LEAST_JUDGED_EQ * 1e6:g} µeq/L: water with less still needs "
+             "titrant enough for the points past the end point." if abs(s.alkalinity_eq_l) < LEAST_JUDGED_EQ else "",
              "What suits a device (titrant to the end point, at most 20 % of titrant) is common practice, no source."]
     return "\n".join(["What the plan rests on", *(item(line) for line in lines if line)])

@@ -75,7 +75,8 @@ def titrate_file(files: TitrationFiles, folder: Path, options: TitrationOptions,
 
 def _nothing(name: str, tally: TitrationTally) -> str:
     (column, rule), count = tally.refusals.most_common(1)[0]
-    return (f"no titration of {name} can be used; {tally.samples:,} were refused, mostly for {column}: {rule} "
+    were = "was" if tally.samples == 1 else "were"
+    return (f"no titration of {name} can be used; {tally.samples:,} {were} refused, mostly for {column}: {rule} "
             f"({count} x).")
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterable
 
 import pandas as pd
@@ -9,14 +10,16 @@ import pandas as pd
 from aquabuf.assess.titration.choose import method_facts
 from aquabuf.assess.titration.findings import finding_facts
 from aquabuf.assess.titration.options import TitrationOptions
-from aquabuf.assess.titration.tables import NO_RESULT
+from aquabuf.assess.titration.tables import MICRO, NO_RESULT, limit_words
 from aquabuf.assess.uncertainty import TO_COVERAGE
 from aquabuf.report.summary import cautions, item, plural
-from aquabuf.report.titration_tally import LISTED, NAME_LENGTH, TitrationTally
+from aquabuf.report.titration_tally import LISTED, NAME_LENGTH, NAMED, TitrationTally
+from aquabuf.units import convert
 
 __all__ = ["titration_summary"]
 
 REASONS_SHOWN = 12
+UNITS = {"ueq_l": "µeq/L", "umol_kg": "µmol/kg"}
 
 
 def titration_summary(tally: TitrationTally, options: TitrationOptions, *, source: str, files: Iterable[str]) -> str:
@@ -42,12 +45,12 @@ def _result(value: float, u: float) -> str:
 
 def _row(r: pd.Series) -> tuple[str, str, str, str, str]:
     name = str(r["sample_id"])[:NAME_LENGTH]
-    unit = next((u for u in ("ueq_l", "umol_kg") if not pd.isna(r.get(f"recommended_{u}", float("nan")))), "")
+    unit = next((u for u in UNITS if not pd.isna(r.get(f"recommended_{u}", float("nan")))), "")
     if r["titrated_with"] == "base":
-        result, per_l = _acidity(r), ""
+        result, per_l = _acidity(r)
     elif unit:
         value, u = r[f"recommended_{unit}"], r[f"recommended_u_{unit}"]
-        result = f"{_result(value, u)} {'µeq/L' if unit == 'ueq_l' else 'µmol/kg'}"
+        result = f"{_result(value, u)} {UNITS[unit]}"
         per_l = f"{r['recommended_mg_l_caco3']:.4g}"
     else:
         result, per_l = "-", ""
@@ -58,14 +61,16 @@ def _row(r: pd.Series) -> tuple[str, str, str, str, str]:
     return name, result, per_l, method, said
 
 
-def _acidity(r: pd.Series) -> str:
-    """Acidity to the highest end point that a base titration reached."""
+def _acidity(r: pd.Series) -> tuple[str, str]:
+    """Acidity to the highest end point that a base titration reached, and the same in mg/L as CaCO3."""
     for end in ("8_3", "4_5", "3_7"):
-        for unit, words in (("ueq_l", "µeq/L"), ("umol_kg", "µmol/kg")):
+        for unit, words in UNITS.items():
             value = r.get(f"acidity_{end}_{unit}", float("nan"))
             if not pd.isna(value):
-                return f"{_result(value, r[f'acidity_{end}_u_{unit}'])} {words} acidity to pH {end.replace('_', '.')}"
-    return "-"
+                said = f"{_result(value, r[f'acidity_{end}_u_{unit}'])} {words} acidity to pH {end.replace('_', '.')}"
+                mg = convert(value / MICRO, "eq/L", "mg/L as CaCO3", "alkalinity") if unit == "ueq_l" else None
+                return said, "" if mg is None else f"{mg:.4g}"
+    return "-", ""
 
 
 def _results(tally: TitrationTally) -> str:
@@ -75,26 +80,55 @@ def _results(tally: TitrationTally) -> str:
     rows = [head, *(_row(r) for r in tally.shown)]
     widths = [max(len(row[i]) for row in rows) for i in range(4)]
     lines = [f"Results{'' if tally.samples <= LISTED else f' (first {LISTED} of {tally.samples:,})'}"]
-    for row, why in zip(rows, ["", *(_why_none(r) for r in tally.shown)], strict=True):
+    for row, why in zip(rows, ["", *(_below(r) for r in tally.shown)], strict=True):
         cells = [row[0].ljust(widths[0]), row[1].ljust(widths[1]), row[2].rjust(widths[2]), row[3].ljust(widths[3])]
         lines.append("  " + "  ".join([*cells, row[4]]).rstrip())
         lines += [item(why, mark=" " * (widths[0] + 4))] if why else []
     return "\n".join(lines)
 
 
-def _why_none(r: pd.Series) -> str:
-    """Reason of a titration without result; those refused have theirs further down."""
-    return f"{r['recommended_reason']}." if r["status"] == NO_RESULT else ""
+def _converted(r: pd.Series) -> str:
+    """The result by the definition that was asked for."""
+    for unit, words in UNITS.items():
+        value = r.get(f"converted_{unit}", math.nan)
+        if not pd.isna(value):
+            return f"{value:,.1f} {words} by {r['converted_to']}."
+    return ""
+
+
+def _below(r: pd.Series) -> str:
+    """What stands under a line: why there is no result (those refused have theirs further down), more on acidity."""
+    if r["status"] == NO_RESULT:
+        return f"{r['recommended_reason']}."
+    if r["titrated_with"] != "base":
+        return _converted(r)
+    unit = next((u for u in UNITS for name in ("acidity_8_3", "recommended")
+                 if not pd.isna(r.get(f"{name}_{u}", math.nan))), "ueq_l")
+    words = UNITS[unit]
+    calculated, net, value = (r.get(f"{name}_{unit}", math.nan) for name in ("calculated_acidity", "net_acidity",
+                                                                            "recommended"))
+    said = []
+    if not pd.isna(calculated):
+        said.append(f"acidity calculated from metals and pH {calculated:,.0f} {words}" +
+                    ("" if pd.isna(net) else f", net {net:,.0f} {words}"))
+    if not pd.isna(value):
+        said.append(f"signed alkalinity by the Gran line {_result(value, r[f'recommended_u_{unit}'])} {words}")
+    return f"{'; '.join(said)}." if said else ""
 
 
 def _findings(tally: TitrationTally) -> str:
     if not tally.findings:
         return "Diagnosis: nothing suspicious was found." if tally.with_result else ""
+    told = {r["recommended_reason"] for r in tally.shown}
     lines = ["Diagnosis (findings.csv has each, with value, limit and source)"]
     for name, fact in finding_facts().items():
         if tally.findings[name]:
             names = ", ".join(tally.named[name]) + (" ..." if tally.findings[name] > len(tally.named[name]) else "")
-            lines.append(item(f"{tally.findings[name]:,} x {name} ({names}): {fact['words']}. Next: {fact['remedy']}."))
+            limit = f"; limit: {limit_words(fact)}" if fact["low"] or fact["high"] else ""
+            more = tally.first_more[name] if tally.findings[name] == 1 else ""
+            more = f"; {more}" if more and more not in told else ""
+            lines.append(item(f"{tally.findings[name]:,} x {name} ({names}{limit}): {fact['words']}{more}. "
+                              f"Next: {fact['remedy']}."))
     return "\n".join(lines)
 
 
@@ -102,8 +136,10 @@ def _refused(tally: TitrationTally) -> str:
     if not tally.refusals:
         return ""
     lines = ["Refused (rejected.csv names file, row, column, value and remedy)"]
-    lines += [item(f"{count:,} x {column}: {rule}")
-              for (column, rule), count in tally.refusals.most_common(REASONS_SHOWN)]
+    for key, count in tally.refusals.most_common(REASONS_SHOWN):
+        names = tally.refused_names[key]
+        more = "" if count <= NAMED else ", ..."
+        lines.append(item(f"{count:,} x {key[0]}: {key[1]} ({', '.join(names)}{more})"))
     if len(tally.refusals) > REASONS_SHOWN:
         lines.append(f"  - and {len(tally.refusals) - REASONS_SHOWN} more reasons")
     return "\n".join(lines)
@@ -135,8 +171,8 @@ def _rests_on(tally: TitrationTally, options: TitrationOptions) -> str:
 def _next(tally: TitrationTally, files: Iterable[str]) -> str:
     lines = ["alkalinity.csv holds every method beside the recommended result and the reason for the choice."]
     if tally.with_result:
-        lines.append("`aquabuf assess READINGS.csv --titrations POINTS.csv` takes these results into the assessment; "
-                     "give it the same samples and maps.")
+        lines.append("`aquabuf assess READINGS.csv --titrations POINTS.csv --out FOLDER` takes these results into the "
+                     "assessment; where there is a table of samples, add --titration-samples SAMPLES.csv.")
     if tally.figures < tally.samples and tally.figures:
         lines.append(f"Figures were drawn of the first {tally.figures:,}; --figures all draws every one.")
     lines.append(f"Written: {', '.join(files)}.")

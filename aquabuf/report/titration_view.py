@@ -146,7 +146,7 @@ def marks_of(result: TitrationResult, one: OneTitration, i: int) -> list[Label]:
     for words, acid, ph, name in places:
         if np.isfinite(acid):
             said = f", acidity {amount(s, i, -acid, np.nan)}" if one.is_base and not name else ""
-            said += ", recommended" if method and name == method else ""
+            said += f", recommended{' for alkalinity' if one.is_base else ''}" if method and name == method else ""
             marks.append(_mark(one, words, said, float(acid) / one.per_added, float(ph)))
     return marks
 
@@ -169,6 +169,10 @@ def title_line(result: TitrationResult, i: int) -> str:
     """Sample, recommended result with its interval, and method in words."""
     s, choice = result.solved, result.choice
     name, method = " ".join(short_name(s.curves.names[i]).split()), str(choice.method[i])
+    to_end = [end for end in reversed(ACIDITY_END_POINTS) if np.isfinite(s.acidity[end].value[i])]
+    if s.curves.is_base[i] and to_end:
+        words = amount(s, i, s.acidity[to_end[0]].value[i], s.acidity[to_end[0]].u[i])
+        return f"{name}: acidity {words}, titrated with base to pH {to_end[0]:g}"
     if method:
         definition = result.results["definition"].iloc[result.at[i]]
         words = amount(s, i, choice.value[i], choice.u[i])
@@ -178,10 +182,6 @@ def title_line(result: TitrationResult, i: int) -> str:
         return textwrap.shorten(f"{name}: no result; {why}", TITLE_LENGTH, placeholder=" …")
     if not s.curves.is_base[i]:
         return f"{name}: no result by any method for {method_facts('water')[choice.water[i]]['words']}"
-    for end in reversed(ACIDITY_END_POINTS):
-        if np.isfinite(s.acidity[end].value[i]):
-            words = amount(s, i, s.acidity[end].value[i], s.acidity[end].u[i])
-            return f"{name}: acidity {words}, titrated with base to pH {end:g}"
     return f"{name}: no acidity; the curve passes no end point"
 
 

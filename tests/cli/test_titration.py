@@ -229,7 +229,7 @@ CANNOT = [
     ("no file", None, "points.csv cannot be read: no such file or directory"), ("empty", "", "points.csv"), ("header only", "sample_id,titrant_ml,ph\n", "points.csv"),
     ("no titrant", "sample_id,ph\na,7\n", "no column gives the titrant added"), ("no reading", "sample_id,titrant_ml\na,7\n", "no column gives the pH or potential read"),
     ("unknown header", "sample_id,titrant_ml,ph,foo\na,0,7,1\n", "foo"), ("no sample_id", "titrant_ml,ph\n0,7\n", "sample_id"),
-    ("nothing known of the samples", "sample_id,titrant_ml,ph\na,0,7\na,1,4\n", "no titration of points.csv can be used; 1 were refused, mostly for sample_volume_ml"),
+    ("nothing known of the samples", "sample_id,titrant_ml,ph\na,0,7\na,1,4\n", "no titration of points.csv can be used; 1 was refused, mostly for sample_volume_ml"),
 ]
 
 

@@ -132,6 +132,13 @@ def test_details_of_an_unknown_column():
         columns_text(["alkalinty"])
     with pytest.raises(InputError, match=r"no column is named 'qqq'\. Ask for the list without a name"):
         columns_text(["qqq"])
+    with pytest.raises(InputError, match=r"no column of readings is named 'titrant', but one of titrations is\. Add --titration"):
+        columns_text(["titrant"])
+
+
+def test_details_of_a_header_with_its_unit():
+    """As it stands in a table."""
+    assert columns_text(["calcium_mg_l"]) == columns_text(["calcium_mol_l"])
 
 
 def test_lists_and_starter_files_come_without_the_slow_libraries():

@@ -143,7 +143,7 @@ def test_a_root_beyond_the_last_reading_is_told_without_a_mark(draw):
     """Base that stops before the mineral acid is used up: words, no diamond beyond the curve, and the root in the Gran panel."""
     ax, result, i = draw("curve", "Mine water begun")
     root = -result.solved.gran.acid[i] * 2000.0
-    assert f"Gran line: {root:.3f} mL, recommended (not reached)" in words(ax)
+    assert f"Gran line: {root:.3f} mL, recommended for alkalinity (not reached)" in words(ax)
     assert "_mark" not in lines(ax)
     assert draw("gran", "Mine water begun")[0].get_xlim()[1] > root
 
@@ -174,7 +174,7 @@ def test_gran_panel_shows_the_slope_of_theory(draw):
     """One equivalent of free acid per equivalent added: strength over sample, times the activity coefficient of about 0.976."""
     ax, result, i = draw("gran", "Dilute lake")
     (x0, x1), (y0, y1) = lines(ax)["_theory"][0]
-    assert (y1 - y0) / (x1 - x0) == pytest.approx(0.02 / 100.0 * 1e6 * 0.976, rel=0.003)
+    assert (y1 - y0) / (x1 - x0) == pytest.approx(0.02 / 100.0 * 1e6 * 0.976, rel=0.005)  # a little bicarbonate is left on it
     assert f"slope {result.solved.gran.slope_ratio[i]:.2f} of theory" in words(ax)
     assert f"alkalinity {result.choice.value[i] * 1e6:.1f} ± {1.645 * result.choice.u[i] * 1e6:.1f} µeq/L" in words(ax)
 

@@ -117,7 +117,7 @@ def test_verdict_and_better_choices():
     words = block(text_of(SOFT | {"device": "burette"})[0], "Strength and sample volume do not suit")
     assert words[0] == "Strength and sample volume do not suit: too little titrant to the end point: its reading is too coarse."
     assert words[1] == "Better:"
-    assert words[2] == "  - 0.02 eq/L in a microburette with 100 mL of sample: 0.500 mL to the end point, 0.5% titrant."
+    assert words[2] == "  - 0.02 eq/L in a microburette with 100 mL of sample: 0.500 mL to the end point, 0.5 % titrant."
     assert 3 <= len(words) <= 5
 
 

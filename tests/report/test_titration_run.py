@@ -142,7 +142,7 @@ def test_a_failed_run_keeps_the_earlier_result(titrate):
     """Even with force: no usable titration is no reason to lose a good result."""
     _, folder = titrate(figures=1)
     before = contents(folder)
-    with pytest.raises(InputError, match=r"no titration of points.csv can be used; 1 were refused, mostly for ph: must be 0 to 14 \(1 x\). "
+    with pytest.raises(InputError, match=r"no titration of points.csv can be used; 1 was refused, mostly for ph: must be 0 to 14 \(1 x\). "
                                          r"The earlier result is untouched; use another --out to see the reasons"):
         titrate(*NOTHING, force=True)
     assert contents(folder) == before
@@ -150,7 +150,7 @@ def test_a_failed_run_keeps_the_earlier_result(titrate):
 
 def test_no_usable_titration(titrate, tmp_path):
     """The reasons are written, nothing else; a corrected table may follow without force."""
-    with pytest.raises(InputError, match=r"no titration of points.csv can be used; 1 were refused, mostly for ph: must be 0 to 14 \(1 x\). "
+    with pytest.raises(InputError, match=r"no titration of points.csv can be used; 1 was refused, mostly for ph: must be 0 to 14 \(1 x\). "
                                          r"rejected.csv in out names each with its remedy"):
         titrate(*NOTHING)
     assert names(tmp_path / "out") == ["rejected.csv"]

@@ -87,7 +87,7 @@ def test_findings_are_told_with_sample_remedy_and_row(words):
     text = words(f"{HEADER}\n" + "\n".join(swap) + "\n" + SLIPS.split("\n", 1)[1].replace("soft", "s2"), SLIP_SAMPLES.replace("soft", "s2") + facts("soft"))
     lines = flat("\n".join(block(text, "Diagnosis")))
     fact = finding_facts()["points swapped"]
-    assert f"- 1 x points swapped (soft row 11): {fact['words']}. Next: {fact['remedy']}." in lines
+    assert re.search(rf"- 1 x points swapped \(soft row 11: 0\.\d+\): {re.escape(fact['words'])}\. Next: {re.escape(fact['remedy'])}\.", lines)
     assert "- 1 x temperature missing (s2): no temperature, so 20 °C is taken" in lines
     told = [name for name in finding_facts() if f" x {name} (" in lines]
     assert told == sorted(told, key=lambda name: lines.index(f" x {name} ("))
@@ -138,7 +138,9 @@ def test_acidity_of_a_base_titration(words):
     lines = "".join(f"mine,{v / 10:g},{ph:.2f}\n" for v, ph in zip(range(0, 26, 2), (3.0, 3.05, 3.10, 3.16, 3.22, 3.3, 3.4, 3.53, 3.7, 4.01, 7.0, 10.0, 10.3),
                                                                strict=True))
     text = words(f"{HEADER}\n{lines}", "sample_id,sample_volume_ml,titrant_eq_l,temperature_c,titrant_kind\nmine,100,0.05,25,base\n")
-    _, result, method, *_ = cells(text, "mine")
+    _, result, per_l, method, *_ = cells(text, "mine")
+    assert_allclose(float(per_l), 50.04 * float(result.split(" ± ")[0].replace(",", "")) / 1000.0, rtol=1e-3)
+    assert "signed alkalinity by the Gran line -" in text
     assert result.endswith(" µeq/L acidity to pH 8.3")
     assert method == "end point"
     assert_allclose(float(result.split(" ± ")[0].replace(",", "")), 1000.0, rtol=0, atol=60.0)
@@ -159,6 +161,18 @@ def test_definition_is_told(words, conversion, words_of_it):
     assert words_of_it in flat(words(conversion=conversion))
 
 
+def test_the_converted_result_is_told(words):
+    """Below the result of the sample, with its unit and what it is converted to."""
+    assert re.search(r"\d µeq/L by henriksen_1982\.", words(conversion="henriksen_1982"))
+
+
+def test_what_a_finding_adds_is_told(words):
+    """Of a single sample: the finding explains itself on the screen, not in the table alone."""
+    off = SOFT.replace("soft", "off")
+    text = flat(words(f"{HEADER}\n{off}", f"{FACTS}\n{facts('off', strength='0.03')}"))
+    assert "the uncertainty counts it. Next: titrate a weighed" in text
+
+
 def test_cautions_of_the_table(words):
     """Each caution of this command, no other."""
     lines = flat("\n".join(block(words(), "Cautions")))
@@ -174,7 +188,8 @@ def test_next_steps_and_files(words, monkeypatch):
     assert none.endswith("  - Written: alkalinity.csv, findings.csv, rejected.csv, run.json.\n")
     assert "Figures were drawn of the first 2; --figures all draws every one." in some
     assert "Figures" not in none
-    assert "`aquabuf assess READINGS.csv --titrations POINTS.csv` takes these results into the assessment; give it the same samples and maps." in flat(some)
+    assert "`aquabuf assess READINGS.csv --titrations POINTS.csv --out FOLDER` takes these results into the assessment; " in flat(some)
+    assert "where there is a table of samples, add --titration-samples SAMPLES.csv." in flat(some)
 
 
 def test_an_empty_tally_has_a_text():

@@ -6,9 +6,10 @@ from collections import Counter
 from dataclasses import dataclass, field, replace
 
 import numpy as np
+from numpy.typing import NDArray
 
 from aquabuf.assess.sample.inputs import TITRATED_BY
-from aquabuf.assess.titration.assess import assess_titrations
+from aquabuf.assess.titration.assess import TitrationResult, assess_titrations
 from aquabuf.assess.titration.options import TitrationOptions
 from aquabuf.assess.titration.tables import NO_RESULT, REFUSED, WARNED
 from aquabuf.readings.result import Readings
@@ -17,6 +18,7 @@ from aquabuf.readings.titration.reader import iter_titrations
 
 __all__ = ["Titrated", "titrated_by"]
 
+METALS = "metals take part"  # finding of a Gran line
 ACIDITY_ONLY = "acidity only"
 COLUMNS = {False: ("alkalinity_eq_l", "alkalinity_u_eq_l"), True: ("anc_eq_l", "anc_u_eq_l")}  # by "is it an ANC"
 
@@ -84,6 +86,12 @@ def _many(count: int, noun: str) -> str:
     return f"{count:,} {noun}{'' if count == 1 else 's'}"
 
 
+def _acid_of_metals(part: TitrationResult) -> NDArray[np.bool_]:
+    """Titrations with base whose Gran line counts iron and aluminum: their free acid is no alkalinity to go on."""
+    metals = next((f.here for f in part.found if f.name == METALS), np.zeros(part.at.size, dtype=bool))
+    return part.solved.curves.is_base & metals
+
+
 def titrated_by(files: TitrationFiles) -> Titrated:
     """Assess the titrations and keep what an assessment of readings needs. Raises as `iter_titrations` does."""
     out = Titrated()
@@ -92,11 +100,12 @@ def titrated_by(files: TitrationFiles) -> Titrated:
         s, choice = part.solved, part.choice
         per_liter = np.where(s.curves.by_mass, s.curves.density_kg_l, 1.0)
         is_anc = part.results["definition"].to_numpy()[part.at] == "ANC"
-        for i in np.flatnonzero(np.isfinite(choice.value)).tolist():
+        usable = np.isfinite(choice.value) & ~_acid_of_metals(part)
+        for i in np.flatnonzero(usable).tolist():
             out.results[s.curves.names[i]] = (float(choice.value[i] * per_liter[i]), float(choice.u[i] * per_liter[i]),
                                               str(choice.method[i]), bool(is_anc[i]))
         status, has = part.results["status"].to_numpy(), np.zeros(len(t), dtype=bool)
-        has[part.at] = np.isfinite(choice.value)
+        has[part.at] = usable
         out.without.update(word if word in (REFUSED, NO_RESULT) else ACIDITY_ONLY for word in status[~has].tolist())
         out.warned += int((status[has] == WARNED).sum())
     return out

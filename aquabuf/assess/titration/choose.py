@@ -10,12 +10,12 @@ import numpy as np
 from numpy.typing import NDArray
 
 from aquabuf.assess.titration.options import ALWAYS_END_POINT
-from aquabuf.assess.titration.solve import Estimate, Solved, text_of, value_of
+from aquabuf.assess.titration.solve import Estimate, Solved, organic_sites, text_of, value_of
 from aquabuf.assess.titration.strength import (
     GOOD_CHI2,
     doubt_in_words,
-    organic_sites,
     strength_doubtful,
+    strength_explains,
     unresolved,
 )
 from aquabuf.engine.conditions import FRESH_BELOW
@@ -77,7 +77,7 @@ def water_kinds(s: Solved) -> tuple[NDArray[np.object_], NDArray[np.object_]]:
     n = s.curves.count.size
     alkalinity, start = best_guess(s), s.ph[:, 0]
     conductivity, doc = value_of(s.samples, "conductivity_us_cm", n), value_of(s.samples, "doc_mg_l", n)
-    organic = organic_sites(s)
+    organic = organic_sites(s.samples, n)
     with np.errstate(invalid="ignore"):
         cases = (
             (organic > ORGANIC_SHARE * np.abs(alkalinity), "dilute", lambda i: f"organic carbon {doc[i]:.3g} mg/L"),
@@ -171,8 +171,9 @@ def choose(s: Solved) -> Choice:
     for name in can:
         at, e = method == name, s.estimates[method_key(name)]
         value[at], u[at] = e.value[at], e.u[at]
-    # evenly likely from no error of the strength to all that the slope shows
-    strength = np.where(unresolved(s), np.abs(s.gran.slope_ratio - 1.0) / np.sqrt(3.0), 0.0)
+    # all that the slope shows where the curve sides with the strength; else evenly likely from nothing to that
+    share = np.where(strength_explains(s), 1.0, 1.0 / np.sqrt(3.0))
+    strength = np.where(unresolved(s), share * np.abs(s.gran.slope_ratio - 1.0), 0.0)
     u = np.hypot(u, strength * np.abs(value))
     reason = [doubt_in_words(s, i) if doubtful[i]
               else _reason(s, i, method[i], kind[i], detail[i], can, bool(by_wish[i])) for i in range(n)]
@@ -212,7 +213,8 @@ def _quality(s: Solved, i: int, method: str) -> str:
         f = s.fit if method == "fit" else s.excess
         return f"{f.points[i]} points, electrode offset {f.fit.offset_ph[i]:+.3f}"
     if method == "inflection":
-        return f"known to {s.inflection.resolution[i] * 1e6:.3g} µeq per unit of sample by the steps"
+        unit = "µmol/kg" if s.curves.by_mass[i] else "µeq/L"
+        return f"known to {s.inflection.resolution[i] * 1e6:.3g} {unit} by the steps"
     if method == "fixed_level":
         return f"pH {s.level_ph[i]:g}, points {s.level.step_ph[i]:.2f} pH apart there"
     found, end = s.crossings[ALWAYS_END_POINT], ALWAYS_END_POINT

@@ -21,6 +21,8 @@ Array = NDArray[np.float64]
 
 ASSUMED_T_C = 20.0         # a laboratory bench, where no temperature is given
 ASSUMED_PH_SCATTER = 0.01  # of one reading about the curve; common practice, no source
+COARSE_PH = (0.1, 0.05, 0.02)  # steps that a meter may be read to; anywhere in a step is as likely
+LEAST_READ = 6             # readings that must all be whole steps before it counts as how the meter was read
 PER_LITER = 1e3            # mL per L, and g per kg
 ADDED_BY = {"volume": "titrant_volume_ml", "counts": "titrant_counts", "mass": "titrant_mass_g"}
 
@@ -121,7 +123,7 @@ def curves_of(t: Titrations) -> Curves:
         acid=per_added[:, None] * padded["added"],
         dilution=sample[:, None] / (sample[:, None] + titrant_per_added[:, None] * padded["added"]),
         per_added=per_added, relative_u=relative_u, u_acid=np.abs(per_added) * u_added,
-        u_ph_scatter=value("ph_scatter", ASSUMED_PH_SCATTER),
+        u_ph_scatter=_scatter(value("ph_scatter"), padded["reading"], potential),
         u_ph=_shared_ph_u(values, value, potential, relative_u, t_c), drift=drift, repeats=repeats, by_mass=by_mass,
         added_mass=added_mass, is_base=is_base, is_potential=potential, strength=strength, sample=sample,
         needs_density=(added_mass != by_mass) | (added_mass != np.isfinite(value("titrant_strength_eq_kg"))),
@@ -155,6 +157,16 @@ def _padded(t: Titrations, rows: NDArray[np.intp]) -> tuple[dict[str, NDArray], 
     out["row"] = np.zeros(shape, dtype=np.int64)
     out["row"][of, column] = t.point_row[kept]
     return out, count, drift, repeats
+
+
+def _scatter(given: Array, reading: Array, is_potential: NDArray[np.bool_]) -> Array:
+    """Scatter of one pH reading: as given, else the assumed one and what reading the meter to coarse steps adds."""
+    step = np.zeros(given.size)
+    enough = ~is_potential & (np.isfinite(reading).sum(axis=1) >= LEAST_READ)
+    for size in sorted(COARSE_PH):
+        off = np.abs(reading / size - np.round(reading / size))
+        step = np.where(enough & (np.nan_to_num(off) < 1e-6).all(axis=1), size, step)
+    return np.where(np.isfinite(given), given, np.hypot(ASSUMED_PH_SCATTER, step / np.sqrt(12.0)))
 
 
 def _titrant(value, by_weight: NDArray[np.bool_], by_mass: NDArray[np.bool_]) -> tuple[Array, Array]:

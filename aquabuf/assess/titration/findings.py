@@ -14,7 +14,7 @@ from aquabuf.assess.titration.choose import Choice, best_guess, read_at
 from aquabuf.assess.titration.convert import fixed_to_proton_balance
 from aquabuf.assess.titration.options import ALWAYS_END_POINT
 from aquabuf.assess.titration.parts import hydrolyzing_metals
-from aquabuf.assess.titration.solve import Solved, text_of, value_of
+from aquabuf.assess.titration.solve import IMPLIES_ABOVE_PH, Solved, text_of, value_of
 from aquabuf.assess.titration.strength import GOOD_CHI2, doubt_in_words, slope_off, strength_doubtful, what_tells
 from aquabuf.tables import read_table
 
@@ -102,10 +102,11 @@ def _course(s: Solved, choice: Choice) -> Iterator[Finding]:
     """How the titration was done."""
     c, n = s.curves, s.curves.count.size
     yield _finding("temperature missing", np.isnan(value_of(s.samples, "temperature_c", n)), np.nan)
-    yield _outside("few points", c.count.astype(float))
+    as_prescribed = (text_of(s.samples, "own_method", n) == choice.method) & _is_fixed(choice)  # no more is needed then
+    yield _outside("few points", c.count.astype(float), ~as_prescribed)
     with np.errstate(invalid="ignore"):
         lowest = np.nanmin(np.where(np.isfinite(s.ph), s.ph, np.inf), axis=1, initial=np.inf)
-    yield _outside("stops too soon", lowest, ~c.is_base & np.isfinite(lowest))
+    yield _outside("stops too soon", lowest, ~c.is_base & np.isfinite(lowest) & ~as_prescribed)
     yield _outside("coarse end point", s.crossings[ALWAYS_END_POINT].step_ph,
                    ~s.purged & ~read_at(s, ALWAYS_END_POINT))
     drift = c.drift / np.where(c.is_potential, nernst_mv_per_ph(c.t_c), 1.0)
@@ -118,6 +119,11 @@ def _course(s: Solved, choice: Choice) -> Iterator[Finding]:
     at_end = s.crossings[ALWAYS_END_POINT].before
     thinned = 100.0 * (1.0 - c.dilution[np.arange(n), np.maximum(at_end, 0)])
     yield _outside("dilution", thinned, at_end >= 0)
+
+
+def _is_fixed(choice: Choice) -> NDArray[np.bool_]:
+    """Where the result is a fixed end point."""
+    return np.array([str(name).startswith("fixed") for name in choice.method], dtype=bool)
 
 
 def _wrong_way(s: Solved) -> Array:
@@ -185,9 +191,13 @@ def _fits(s: Solved, choice: Choice) -> Iterator[Finding]:
     yield _finding("point off the curve", off, largest, point=np.where(off, at, -1))
     with np.errstate(invalid="ignore", divide="ignore"):
         lost = 100.0 * (1.0 - f.fit.carbon / s.carbon_at_start)
-        clear = ((s.carbon_at_start - f.fit.carbon) > SIGMAS * f.u_carbon) & ~(f.fit.acid_total > 0.0)
+        gran = s.estimates["gran"]  # the alkalinity that the first pH is taken with
+        u_implied = s.carbon_at_start * np.nan_to_num(gran.own_u / np.abs(gran.value))
+        clear = (s.carbon_at_start - f.fit.carbon) > SIGMAS * np.hypot(f.u_carbon, u_implied)
+        clear &= ~(f.fit.acid_total > 0.0) & ~slope_off(s)  # a wrong pH implies a wrong carbon
+        implied = (s.ph[:, 0] > IMPLIES_ABOVE_PH) & (s.ph[:, 0] < 8.5)
     measured = value_of(s.samples, "dic_mol_l", c.count.size) / np.where(c.by_mass, c.density_kg_l, 1.0)
-    yield _outside("carbon dioxide lost", lost, clear & np.isnan(measured) & (s.ph[:, 0] < 8.5))
+    yield _outside("carbon dioxide lost", lost, clear & np.isnan(measured) & implied)
     u_measured = value_of(s.samples, "dic_u_mol_l", c.count.size)
     u_measured = np.where(np.isfinite(u_measured), u_measured, 0.03 * measured)
     with np.errstate(invalid="ignore", divide="ignore"):
@@ -249,7 +259,8 @@ def _methods(s: Solved, choice: Choice) -> Iterator[Finding]:
             with np.errstate(invalid="ignore", divide="ignore"):
                 gap = np.where(wa & wb & np.isfinite(va) & np.isfinite(vb), np.abs(va - vb) / np.hypot(ua, ub), 0.0)
             for i in np.flatnonzero(gap > worst).tolist():
-                words[i] = f"{names[a]} {va[i] * 1e6:.1f}, {names[b]} {vb[i] * 1e6:.1f} µeq per unit of sample"
+                unit = "µmol/kg" if s.curves.by_mass[i] else "µeq/L"
+                words[i] = f"{names[a]} {va[i] * 1e6:.1f}, {names[b]} {vb[i] * 1e6:.1f} {unit}"
             worst = np.maximum(worst, gap)
     disagree = _outside("methods disagree", worst)
     yield _finding(disagree.name, disagree.here, worst, more=np.where(disagree.here, words, ""))

@@ -56,7 +56,8 @@ class Gran:
     these known acids give them: what is not known takes part. [eq per unit of sample]
     low, high : least and greatest root of the admissible windows; count : their number.
     first, last : index of the first and last point of the chosen window. slope, r : of the line.
-    slope_ratio : slope over theory. reduced_chi2 : scatter of its points over the one expected.
+    slope_ratio : slope over theory; of free acid alone and of bicarbonate counted, what comes nearer to 1, since that
+    much bicarbonate explains. reduced_chi2 : scatter of its points over the one expected.
     straight : whether any window is straight within scatter.
     """
 
@@ -174,7 +175,7 @@ def windows(points: Points, ph: Array, use: NDArray[np.bool_], *, alkalinity: Ar
         solid = np.concatenate([run[:, length - 1:length], run[:, length:] - run[:, :-length]], axis=1) == length
         solid &= np.abs(safe[:, length - 1:] - safe[:, :m - length + 1]) >= LEAST_SPAN_PH
         best.offer(length, line, true, solid, x[:, :m - length + 1], float(chdtri(length - 2, NOT_BY_CHANCE)))
-    return best.gran(steepness, plain, expected)
+    return best.gran(steepness, plain, corrected, expected)
 
 
 def _lengths(most: int) -> list[int]:
@@ -243,13 +244,17 @@ class _Best:
         self.last = np.where(better, at + length - 1, self.last)
         self.bias = np.where(better, bias[rows, at], self.bias)
 
-    def gran(self, steepness: Array, sums: _Sums, expected: _Sums) -> Gran:
+    def gran(self, steepness: Array, sums: _Sums, corrected: _Sums, expected: _Sums) -> Gran:
         """The outcome, with the line through the chosen points worked out again."""
         has = self.first >= 0
         start, stop = np.where(has, self.first, 0), np.where(has, self.last + 1, 0)
         line = replace(sums.line(start, stop), u_root=expected.line(start, stop).u_root)
         in_window = (np.arange(steepness.shape[1]) >= start[:, None]) & (np.arange(steepness.shape[1]) < stop[:, None])
         mean = np.where(in_window, steepness, 0.0).sum(axis=1) / np.maximum(stop - start, 1)
+        alone = line.slope * mean
+        bound = corrected.line(start, stop).slope - alone  # by a carbon that was worked out with the strength as stated
+        with np.errstate(invalid="ignore", divide="ignore"):
+            counted = np.where(bound < 1.0, alone / (1.0 - bound), np.inf)
         count = np.maximum(self.count, 1)
         variance = (self.squares - CHANCE_PARTS * self.expected) / count - (self.total / count) ** 2
 
@@ -260,8 +265,13 @@ class _Best:
                     or_nan(np.sqrt(np.maximum(variance, 0.0))),
                     np.where(np.isfinite(self.low), self.low, np.nan),
                     np.where(np.isfinite(self.high), self.high, np.nan), self.count, self.first, self.last,
-                    or_nan(line.slope), or_nan(line.slope * mean), or_nan(line.r),
+                    or_nan(line.slope), or_nan(_nearest_one(alone, counted)), or_nan(line.r),
                     or_nan(line.reduced_chi2), self.straight)
+
+
+def _nearest_one(a: Array, b: Array) -> Array:
+    """1 where it lies between both, else the nearer of the two."""
+    return np.clip(1.0, np.fmin(a, b), np.fmax(a, b))
 
 
 @dataclass(frozen=True, slots=True, eq=False)

@@ -69,9 +69,17 @@ def species(s: Solved, total: Array) -> tuple[Array, Array, Array]:
 
 
 def co2_acidity(s: Solved) -> Array:
-    """Free CO2 by base to pH 8.3, less what was needed to pH 4.5 from below. [mol per unit of sample]"""
+    """Free CO2 by base to pH 8.3, less what was needed to pH 4.5 from below and the free acid left there.
+
+    Of a water that starts above pH 4.5, less the free acid at its start. [mol per unit of sample]
+    """
     to_8_3, to_4_5 = s.acidity[8.3].value, s.acidity[4.5].value
-    return np.where(s.curves.is_base, to_8_3 - np.nan_to_num(to_4_5), np.nan)
+    rows = np.arange(to_8_3.size)
+    with np.errstate(invalid="ignore"):
+        at = (s.ph >= 4.5).argmax(axis=1)
+    start = np.maximum(np.where(np.isfinite(s.ph[:, :1]), s.ph[:, :1], 7.0), 4.5)
+    free = s.points.c_h * s.points.h(start) / s.points.dilution
+    return np.where(s.curves.is_base, to_8_3 - np.nan_to_num(to_4_5) - free[rows, at], np.nan)
 
 
 def hydrolyzing_metals(samples: Mapping[str, NDArray], size: int) -> Array:

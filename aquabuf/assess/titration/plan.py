@@ -35,6 +35,7 @@ STRENGTHS = {"burette": (0.01, 0.02, 0.05, 0.1), "microburette": (0.01, 0.02, 0.
              "counts": (0.16, 1.6)}  # eq/L, as sold or usual; recalled
 SAMPLE_ML = (25.0, 50.0, 100.0, 200.0)
 MOST_DILUTION = 0.2
+LEAST_JUDGED_EQ = 5e-5  # alkalinity below which titrant is counted as for this one; common practice, no source
 COARSE_TO_PH, FINE_TO_PH, LAST_PH = 5.5, 4.3, 3.3
 COARSE_STEPS, ACID_STEPS = 8, 8
 FINE_STEP_PH = 0.3
@@ -181,13 +182,16 @@ def _volume_at(added_ml: Array, ph: Array, end_ph: float) -> float:
     return float(np.interp(-end_ph, -ph, added_ml)) if ph[0] >= end_ph else float("nan")
 
 
-def _readable(step_ml: float, smallest_ml: float) -> float:
-    """The step rounded down to 1, 2 or 5 times a power of ten of what the device can show, and not below that."""
+def _readable(step_ml: float, smallest_ml: float, *, down: bool) -> float:
+    """The step as 1, 2, 3 or 5 times a power of ten of what the device can show: the nearest, or the next below."""
     shown = step_ml / smallest_ml
     if not shown > 1.0:
         return smallest_ml
     power = 10.0 ** np.floor(np.log10(shown))
-    return max(k for k in (1.0, 2.0, 5.0) if k * power <= shown * (1.0 + 1e-9)) * power * smallest_ml
+    steps = np.array([1.0, 2.0, 3.0, 5.0, 10.0]) * power
+    if down:
+        return float(steps[steps <= shown * (1.0 + 1e-9)].max() * smallest_ml)
+    return float(steps[np.abs(np.log(steps / shown)).argmin()] * smallest_ml)
 
 
 def _steps(setup: Setup, added_ml: Array, ph: Array) -> tuple[float, float, float]:
@@ -202,8 +206,8 @@ def _steps(setup: Setup, added_ml: Array, ph: Array) -> tuple[float, float, floa
     fine = float(between.min()) if between.size else smallest
     coarse = volume(COARSE_TO_PH) / COARSE_STEPS
     past = (volume(LAST_PH) - volume(FINE_TO_PH)) / ACID_STEPS
-    sizes = [float(_readable(v, smallest)) for v in (coarse, fine, past)]
-    return max(sizes[:2]), sizes[1], sizes[2]
+    step = _readable(fine, smallest, down=True)
+    return max(_readable(coarse, smallest, down=False), step), step, _readable(past, smallest, down=False)
 
 
 def _table(setup: Setup, carbon: float, steps: tuple[float, float, float], dense: Array, ph: Array) -> pd.DataFrame:
@@ -223,7 +227,7 @@ def _table(setup: Setup, carbon: float, steps: tuple[float, float, float], dense
 def judge(setup: Setup) -> Verdict:
     """Whether the strength and the sample volume of `setup` suit."""
     low, high, _ = DEVICES[setup.device]
-    size = max(abs(setup.alkalinity_eq_l), 5e-5) * setup.sample_ml
+    size = max(abs(setup.alkalinity_eq_l), LEAST_JUDGED_EQ) * setup.sample_ml
     end = size / setup.strength_eq_l
     dilution = end / (setup.sample_ml + end)
     problem = ""
@@ -232,7 +236,7 @@ def judge(setup: Setup) -> Verdict:
     elif end > high:
         problem = "more titrant to the end point than the device holds well"
     elif dilution > MOST_DILUTION:
-        problem = f"the titrant would thin the sample by {dilution:.0%}"
+        problem = f"the titrant would thin the sample by {100.0 * dilution:.0f} %"
     return Verdict(setup, end, dilution, problem)
 
 

@@ -25,6 +25,7 @@ from aquabuf.assess.titration.gran import BIAS_SHARE, Gran, GranLines, gran_line
 from aquabuf.assess.titration.inflection import Inflection, inflection
 from aquabuf.assess.titration.options import ALWAYS_END_POINT, TitrationOptions
 from aquabuf.chem.acids import Acid, acid_table
+from aquabuf.chem.organic import OLIVER_SITES_EQ_PER_MG
 from aquabuf.chem.seasalt import ionic_strength_seawater
 from aquabuf.engine.balance import Family
 from aquabuf.engine.build import IONS, SEA_SALTS, of_sea_salt
@@ -35,7 +36,8 @@ from aquabuf.engine.titrate import Points, mixed_ionic_strength, points_at
 from aquabuf.readings.titration.result import Titrations
 from aquabuf.units import convert
 
-__all__ = ["ACIDITY_END_POINTS", "LEAST_SLOPE_ERROR", "Estimate", "Solved", "solve_titrations", "text_of", "value_of"]
+__all__ = ["ACIDITY_END_POINTS", "IMPLIES_ABOVE_PH", "LEAST_SLOPE_ERROR", "Estimate", "Solved", "organic_sites",
+           "solve_titrations", "text_of", "value_of"]
 
 Array = NDArray[np.float64]
 
@@ -45,6 +47,10 @@ REFERENCE_ACID_PH = 3.5
 LEAST_CARBON = 2e-5       # of an acid water, about what air gives. [mol/L]
 TOO_SALTY = (f"ionic strength above {LIMITS['ionic_strength_mol_l'][3]:g} mol/L, where the fresh-water constants end; "
              f"give the salinity of salt water")
+# Share of the acid sites of measured organic carbon by which a result may be off, since they hold acid all along its
+# points; found by simulation of acids of many strengths.
+ORGANIC_SHARES = {"gran": 0.06, "acid_excess": 0.06, "fit": 0.12, "two_point": 0.13}
+IMPLIES_ABOVE_PH = 5.5    # of the first reading, below which alkalinity and pH say nothing of the carbon
 MOST_CARBON = 5.0         # times alkalinity, where the start pH implies more it is a slip
 
 
@@ -131,7 +137,8 @@ def solve_titrations(t: Titrations, options: TitrationOptions) -> Solved:
     known = np.isfinite(points.k1)
     there, safe = np.isfinite(ph) & c.there & known, _harmless(points, known)
     too_salty = np.asarray(np.any(np.isfinite(ph) & c.there & ~known, axis=1))
-    carbon = _carbon_at_start(points, ph, guess, samples, purged, c)
+    acidity = _acidity(c, ph)
+    carbon = _carbon_at_start(points, ph, guess, samples, purged, c, acidity)
     gran = windows(points, ph, there, alkalinity=guess, carbon=carbon, u_ph=c.u_ph_scatter, u_acid=c.u_acid)
     near = np.where(np.isfinite(gran.acid), gran.acid, guess)
     common = {"u_ph": c.u_ph_scatter, "u_acid": c.u_acid, "relative_u": c.relative_u, "purged": purged}
@@ -147,21 +154,24 @@ def solve_titrations(t: Titrations, options: TitrationOptions) -> Solved:
         "two_point": _two_point(c, turned, crossings[ALWAYS_END_POINT], carbon, points),
         "fixed_level": _of_crossing(level, c), "acid_excess": _of_fit(excess),
     }
+    sites = organic_sites(samples, n)
+    estimates |= {name: _with_sites(estimates[name], share * sites) for name, share in ORGANIC_SHARES.items()}
     estimates |= {name: _because(estimates[name], too_salty) for name in ("gran", "fit", "two_point", "acid_excess")}
     estimates |= {f"fixed_{e:g}": _of_crossing(found, c) for e, found in crossings.items()}
     return Solved(
         curves=c, samples=samples, points=points, ph=ph, calibration=calibration, purged=purged, first_guess=guess,
-        carbon_at_start=carbon, gran=gran,
+        carbon_at_start=_carbon_at_start(points, ph, _known_best(gran, fit, guess), samples, purged, c, acidity),
+        gran=gran,
         gran_lines=gran_lines(points, ph, there & ~purged[:, None], near, c.u_ph_scatter, c.u_acid),
         inflection=bend, crossings=crossings, level_ph=level_ph, level=level, fit=fit, excess=excess,
-        estimates=estimates, acidity=_acidity(c, ph), chi2_by_slope=_chi2_by_slope(safe, ph, fit, gran, c))
+        estimates=estimates, acidity=acidity, chi2_by_slope=_chi2_by_slope(safe, ph, fit, gran, c))
 
 
 def _chi2_by_slope(points: Points, ph: Array, fit: Fitted, gran: Gran, c: Curves) -> Array:
     """Reduced chi-squared of the fit, had the titrant the strength that the slope of the Gran line implies.
 
-    nan where there is no fit, or where the slope is right. Strength and electrode make the same free acid; what tells
-    them apart is how well the rest of the curve then fits.
+    nan where there is no fit, or where the slope is right; infinite where no curve can be found for that strength.
+    Strength and electrode make the same free acid; what tells them apart is how well the rest of the curve then fits.
     """
     out, ratio = np.full(c.count.size, np.nan), gran.slope_ratio
     with np.errstate(invalid="ignore", divide="ignore"):
@@ -170,7 +180,7 @@ def _chi2_by_slope(points: Points, ph: Array, fit: Fitted, gran: Gran, c: Curves
         p, r = points.take(rows), ratio[rows]
         other = fit_curve(replace(p, acid=p.acid * r[:, None]), ph[rows], np.isfinite(fit.fit.residual_ph[rows]),
                           u_ph=c.u_ph_scatter[rows], u_acid=c.u_acid[rows] * r, alkalinity=fit.fit.alkalinity[rows] * r)
-        out[rows] = other.reduced_chi2
+        out[rows] = np.where(other.converged, other.reduced_chi2, np.inf)
     return out
 
 
@@ -182,6 +192,16 @@ def _harmless(points: Points, known: NDArray[np.bool_]) -> Points:
     constants = {name: np.where(known, getattr(points, name), 1.0) for name in ("k1", "k2", "c_h", "c_oh",
                                                                                "h_per_activity")}
     return replace(points, families=families, **constants)
+
+
+def organic_sites(samples: Mapping[str, NDArray], size: int) -> Array:
+    """Acid sites of the organic carbon, 0 where it was not measured. [eq/L]"""
+    return OLIVER_SITES_EQ_PER_MG * np.nan_to_num(value_of(samples, "doc_mg_l", size))
+
+
+def _with_sites(e: Estimate, organic: Array) -> Estimate:
+    """The estimate with what organic acids may add or take counted in its uncertainty."""
+    return replace(e, u=np.hypot(e.u, organic), own_u=np.hypot(e.own_u, organic))
 
 
 def _because(e: Estimate, too_salty: NDArray[np.bool_]) -> Estimate:
@@ -236,16 +256,27 @@ def _first_guess(c: Curves, ph: Array) -> Array:
 
 
 def _carbon_at_start(points: Points, ph: Array, alkalinity: Array, samples: Mapping[str, NDArray],
-                     purged: NDArray[np.bool_], c: Curves) -> Array:
-    """Carbon: measured, else what the first reading and the alkalinity imply, within reason; none where swept out."""
+                     purged: NDArray[np.bool_], c: Curves, acidity: Mapping[float, Estimate]) -> Array:
+    """Carbon: measured, else what the first reading and the alkalinity imply, within reason; none where swept out.
+
+    An acid water titrated with base: what took up base between the two end points.
+    """
     start = np.where(np.isfinite(ph), ph, 7.0)
     per_carbon, rest, _, _ = points.terms(points.h(start))
     least = np.maximum(alkalinity, 0.0) + LEAST_CARBON
     implied = (alkalinity - points.acid[:, 0] - rest[:, 0]) / per_carbon[:, 0]
     implied = np.clip(implied, 0.0, MOST_CARBON * least)
-    implied = np.where((ph[:, 0] > 5.5) & np.isfinite(implied), implied, least)
+    by_base = np.maximum(acidity[8.3].value - acidity[ALWAYS_END_POINT].value - 10.0**-ALWAYS_END_POINT, 0.0)
+    unknown = np.where(c.is_base & np.isfinite(by_base), by_base, least)
+    implied = np.where((ph[:, 0] > IMPLIES_ABOVE_PH) & np.isfinite(implied), implied, unknown)
     measured = value_of(samples, "dic_mol_l", c.count.size) / np.where(c.by_mass, c.density_kg_l, 1.0)
     return np.where(purged, 0.0, np.where(np.isfinite(measured), measured, implied))
+
+
+def _known_best(gran: Gran, fit: Fitted, guess: Array) -> Array:
+    """Alkalinity by Gran, which lost CO2 does not change, else by the fit, else the first guess."""
+    by_fit = np.where(np.isfinite(fit.fit.alkalinity), fit.fit.alkalinity, guess)
+    return np.where(np.isfinite(gran.acid), gran.acid, by_fit)
 
 
 def _mg_caco3(eq_l: Array) -> Array:

@@ -10,11 +10,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from aquabuf.arrays import LN10
-from aquabuf.assess.titration.solve import LEAST_SLOPE_ERROR, Solved, value_of
-from aquabuf.chem.organic import OLIVER_SITES_EQ_PER_MG
+from aquabuf.assess.titration.solve import LEAST_SLOPE_ERROR, Solved, organic_sites
 
-__all__ = ["GOOD_CHI2", "doubt_in_words", "offset_explains", "organic_lowers", "organic_sites", "slope_off",
-           "strength_doubtful", "unresolved", "what_tells"]
+__all__ = ["GOOD_CHI2", "doubt_in_words", "offset_explains", "organic_lowers", "slope_off", "strength_doubtful",
+           "strength_explains", "unresolved", "what_tells"]
 
 Array = NDArray[np.float64]
 
@@ -24,11 +23,6 @@ SIGMAS = 2.5
 EXPLAINED = 0.12          # of log10 of the ratio that an electrode offset may leave; about a quarter
 CLEARLY_BETTER = 9.0      # chi-squared between electrode and strength: three standard deviations
 ORGANIC_SHARE = 0.1       # of the acid on the line that organic sites may be before they spoil the test
-
-
-def organic_sites(s: Solved) -> Array:
-    """Acid sites of the organic carbon, 0 where it was not measured. [eq/L]"""
-    return OLIVER_SITES_EQ_PER_MG * np.nan_to_num(value_of(s.samples, "doc_mg_l", s.curves.count.size))
 
 
 def _checked(s: Solved) -> NDArray[np.bool_]:
@@ -63,7 +57,7 @@ def organic_lowers(s: Solved) -> NDArray[np.bool_]:
     """Where organic acids along the line bind so much acid that its slope tests nothing."""
     on_line = s.curves.acid[np.arange(s.curves.count.size), np.maximum(s.gran.last, 0)] - s.gran.acid
     with np.errstate(invalid="ignore"):
-        return (s.gran.slope_ratio < 1.0) & (organic_sites(s) > ORGANIC_SHARE * on_line)
+        return (s.gran.slope_ratio < 1.0) & (organic_sites(s.samples, s.curves.count.size) > ORGANIC_SHARE * on_line)
 
 
 def strength_doubtful(s: Solved) -> NDArray[np.bool_]:

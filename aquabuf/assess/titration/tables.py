@@ -22,12 +22,13 @@ from aquabuf.tables import read_table
 from aquabuf.units import convert
 
 __all__ = ["MICRO", "NO_RESULT", "REFUSED", "WARNED", "column_facts", "definition_of", "figures_of", "findings_table",
-           "results_table", "titration_digits"]
+           "limit_words", "results_table", "titration_digits"]
 
 Array = NDArray[np.float64]
 
 MICRO = 1e6
 PER_LITER, PER_KILOGRAM = {"eq": "ueq_l", "mol": "umol_l"}, {"eq": "umol_kg", "mol": "umol_kg"}
+PER_SAMPLE = "µeq"  # in the table of findings: per liter, or per kilogram for samples by mass
 REFUSED, NO_RESULT, WARNED, OK = "refused", "no result", "warned", "ok"
 
 
@@ -221,17 +222,20 @@ def findings_table(s: Solved, found: Sequence[Finding], rows: NDArray) -> pd.Dat
 
     def fact(name: str) -> NDArray:
         return long.of_mask([row[name] for row in facts])
-    words = fact("words").astype(object)
+    words, unit = fact("words").astype(object), fact("unit").astype(object)
+    per_sample = unit == PER_SAMPLE
+    unit[per_sample] = np.where(s.curves.by_mass[long.sample[per_sample]], "µmol/kg", "µeq/L")
     return pd.DataFrame({
         "sample_id": s.curves.names[long.sample], "row": rows[long.sample],
         "point_row": pd.Series(np.where(line > 0, line, -1), dtype="Int64").mask(line <= 0),
-        "finding": fact("name"), "value": long.pick([f.value for f in found]).astype(float), "unit": fact("unit"),
-        "limit": long.of_mask([_limit_words(row) for row in facts]), "words": words, "more": more,
+        "finding": fact("name"), "value": long.pick([f.value for f in found]).astype(float), "unit": unit,
+        "limit": long.of_mask([limit_words(row) for row in facts]), "words": words, "more": more,
         "remedy": fact("remedy"), "source": long.of_mask([_source(row) for row in facts]),
     })
 
 
-def _limit_words(row: Mapping[str, str]) -> str:
+def limit_words(row: Mapping[str, str]) -> str:
+    """The limits of a finding in words; "" where it has none."""
     low, high = row["low"], row["high"]
     if low and high:
         return f"{low} to {high}"

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import difflib
+
 import numpy as np
 
 from aquabuf.readings.titration.merge import Known
@@ -11,6 +13,8 @@ from aquabuf.readings.titration.refusal import Labels, Refusal
 __all__ = ["check_needs"]
 
 ONE_OF = (("sample_volume_ml", "sample_mass_g"), ("titrant_strength_eq_l", "titrant_strength_eq_kg"))
+MOST_COMPARED = 500  # samples, beyond which no likeness of names is sought
+LEAST_LIKE = 0.9
 STANDARDS = tuple((f"standard_{i}_ph", f"standard_{i}_mv") for i in (1, 2, 3))
 
 
@@ -37,11 +41,34 @@ def _how_to_give(piece: Piece, i: int, names: tuple[str, str]) -> str:
         return f"add a column {either} to {points.file}, or to a file of samples with a row for each sample_id"
     file = samples.labels.file
     if piece.place[i] < 0:
-        return f"add a row of this name to {file} with {either}, or give it in {points.file}"
+        add = f"add a row of this name to {file} with {either}, or give it in {points.file}"
+        return f"{_misspelled(piece, i)}{add}"
     there = [samples.labels.header(name) for name in names if name in samples.labels]
     if not there:
         return f"add a column {either} to {file} or to {points.file}"
     return f"fill in {' or '.join(there)} in row {samples.rows[piece.place[i]]} of {file}"
+
+
+def _plain(name: str) -> str:
+    return " ".join(name.casefold().split())
+
+
+def _figures(name: str) -> str:
+    return "".join(c for c in name if c.isdigit())
+
+
+def _misspelled(piece: Piece, i: int) -> str:
+    """A name of the file of samples that may be meant by that of sample `i`, as a question: like it, same figures."""
+    samples = piece.samples
+    if samples is None or len(samples.names) > MOST_COMPARED:
+        return ""
+    name = _plain(piece.batch.names[i])
+    plain = {_plain(other): at for at, other in enumerate(samples.names.tolist()) if _figures(other) == _figures(name)}
+    near = difflib.get_close_matches(name, plain, n=1, cutoff=LEAST_LIKE)
+    if not near:
+        return ""
+    at = plain[near[0]]
+    return f"is it {samples.names[at]} in row {samples.rows[at]} of {samples.labels.file}? Else "
 
 
 def check_needs(known: Known, piece: Piece, good: np.ndarray) -> list[Refusal]:

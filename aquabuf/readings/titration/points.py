@@ -118,6 +118,7 @@ def _falls(points: Points, refused: np.ndarray, labels: Labels) -> list[Refusal]
     fall[1:] = (added[1:] < added[:-1]) & (block[1:] == block[:-1])
     remedy = "correct it" + (" or the numbers of the points" if "sequence" in labels
                              else ", or add a column sequence with the order of the points")
+    remedy += "; where these are steps, give the running total"
     refusals = []
     for i, at in _first_of(block, fall & ~refused[block]):
         name = ADDED[points.added_by[i]]

@@ -108,12 +108,12 @@ def plans():
 
 
 def test_steps_can_be_read(plans):
-    """1, 2 or 5 times a power of ten of the smallest reading, never below it: a digital titrator shows whole counts."""
+    """1, 2, 3 or 5 times a power of ten of the smallest reading, never below it: a digital titrator shows whole counts."""
     for p in plans:
         for step in p.steps_ml:
             shown = step / SMALLEST_ML[p.setup.device]
             assert_allclose(shown, round(shown), rtol=0, atol=1e-6)
-            assert f"{shown:.0e}"[0] in "125", shown
+            assert f"{shown:.0e}"[0] in "1235", shown
             assert_allclose(float(f"{shown:.0e}"), shown)
 
 
@@ -154,7 +154,7 @@ def test_the_planned_titration_gives_the_water_back():
     for setup, method in ((HARD, "fit"), (SOFT, "gran"), (COUNTS, "fit")):
         r = plan(Setup(**setup)).result.results.iloc[0]
         assert r["recommended_method"] == method
-        assert_allclose(r["recommended_ueq_l"], setup["alkalinity_eq_l"] * 1e6, rtol=0.02)
+        assert abs(r["recommended_ueq_l"] - setup["alkalinity_eq_l"] * 1e6) < 1.645 * r["recommended_u_ueq_l"]
         assert 0.0 < r["recommended_u_ueq_l"] < 0.05 * setup["alkalinity_eq_l"] * 1e6
         assert r["warnings"] == ""
 
@@ -172,7 +172,7 @@ VERDICTS = [
     (HARD, ""), (SOFT, ""), (COUNTS, ""),
     (SOFT | {"device": "burette"}, "too little titrant to the end point: its reading is too coarse"),  # 0.5 mL
     (HARD | {"alkalinity_eq_l": 6e-3}, "more titrant to the end point than the device holds well"),    # 30 mL
-    (HARD | {"alkalinity_eq_l": 6e-3, "sample_ml": 50.0}, "the titrant would thin the sample by 23%"),  # 15 of 65 mL
+    (HARD | {"alkalinity_eq_l": 6e-3, "sample_ml": 50.0}, "the titrant would thin the sample by 23 %"),  # 15 of 65 mL
     (COUNTS | {"strength_eq_l": 1.6}, "too little titrant to the end point: its reading is too coarse"),  # 50 counts
 ]
 

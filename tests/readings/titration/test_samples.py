@@ -71,6 +71,15 @@ def test_a_size_that_is_missing(titrations, points, samples, row, remedy):
     assert line["remedy"] == remedy
 
 
+@pytest.mark.parametrize(("name", "other", "asked"), [("Loch A", "loch  a", True), ("Tarn-mouth", "Tarn mouth", True), ("Loch A 12", "loch a 13", False),
+                                                      ("a", "b", False), ("Ж", "Я", False)])
+def test_a_misspelled_name_is_asked_about(titrations, name, other, asked):
+    """A name of the same figures that differs in a letter, case or spaces only."""
+    line = only(titrations(POINTS.replace("a,", f"{name},"), f"{SAMPLES}{other},50,0.1\nb,50,0.1\n"), sample_id=name, column="sample_volume_ml")
+    assert line["remedy"].startswith(f"is it {other} in row 2 of samples.csv? Else add a row") == asked
+    assert "add a row of this name to samples.csv" in line["remedy"]
+
+
 def test_a_strength_that_is_missing(titrations):
     """Alike."""
     found = titrations(POINTS, "sample_id,sample_volume_ml\na,50\nb,50\n")
