@@ -111,8 +111,8 @@ def test_refusals_are_counted_by_rule(words):
     falls = "".join(f"f{i},0,7\nf{i},{i},5\nf{i},0.5,4\n" for i in (2, 3))
     text = words(f"{HEADER}\n{SOFT}{falls}{BROKEN}", f"{FACTS}\n{facts('soft')}{facts('f2')}{facts('f3')}{facts('broken')}")
     assert block(text, "Refused") == [
-        "Refused (rejected.csv names file, row, column, value and remedy)", "  - 2 x titrant_ml: the titrant added since the start must not fall",
-        "  - 1 x ph: must be 0 to 14"]
+        "Refused (rejected.csv names file, row, column, value and remedy)", "  - 2 x titrant_ml: the titrant added since the start must not fall (f2, f3)",
+        "  - 1 x ph: must be 0 to 14 (broken)"]
 
 
 def test_long_files_list_the_first_samples(words, monkeypatch):

@@ -99,7 +99,7 @@ def titrated_by(files: TitrationFiles) -> Titrated:
         part = assess_titrations(t, TitrationOptions(), by_liter=True, by_kilogram=True)
         s, choice = part.solved, part.choice
         per_liter = np.where(s.curves.by_mass, s.curves.density_kg_l, 1.0)
-        is_anc = part.results["definition"].to_numpy()[part.at] == "ANC"
+        is_anc = [str(words).startswith("ANC") for words in part.results["definition"].to_numpy()[part.at]]
         usable = np.isfinite(choice.value) & ~_acid_of_metals(part)
         for i in np.flatnonzero(usable).tolist():
             out.results[s.curves.names[i]] = (float(choice.value[i] * per_liter[i]), float(choice.u[i] * per_liter[i]),

@@ -74,7 +74,8 @@ def _assumed(s: Solved) -> dict[str, int]:
         "ionic strength from the alkalinity alone (no conductivity, salinity or ions)":
             np.isnan(s.curves.ionic_strength_mol_l) & blank("salinity"),
         "filtered or not is not stated": blank("filtered"),
-        "no standards: the zero potential is taken from the acid end of the curve, so the strength is not checked":
+        "no standards: the zero potential comes from the acid end of the curve and the slope from theory; neither "
+        "strength nor electrode is checked, and an electrode of 96 % slope would read dilute water 5 to 10 % low":
             s.curves.is_potential & (s.calibration.standards == 0),
         "density of the titrant not stated: 1 kg/L": blank("titrant_density_kg_l") & s.curves.needs_density,
     }

@@ -141,7 +141,7 @@ def _points(s: Solved, choice: Choice) -> Iterator[Finding]:
     ph = np.where(c.is_base[:, None], -s.ph, s.ph)
     rise = np.diff(ph, axis=1)
     with np.errstate(invalid="ignore"):
-        back = (rise > limit) & ~_outside("wrong way", _wrong_way(s)).here[:, None]
+        back = (rise > limit) & ~(_outside("wrong way", _wrong_way(s)).here | s.purged)[:, None]  # sweeping raises pH
     if not back.any():
         return
     at = np.where(back, rise, -np.inf).argmax(axis=1)

@@ -55,8 +55,12 @@ def titration_digits(options: TitrationOptions) -> dict[str, int]:
 def definition_of(s: Solved, choice: Choice) -> NDArray[np.object_]:
     """What the result of each titration is called."""
     filtered = text_of(s.samples, "filtered", s.curves.count.size)
-    return worded(filtered.size, (filtered == "yes", "alkalinity"), (filtered == "no", "ANC"),
-                  (s.curves.is_base & (choice.method == ""), "acidity"), default="alkalinity or ANC")
+    words = worded(filtered.size, (filtered == "yes", "alkalinity"), (filtered == "no", "ANC"),
+                   (s.curves.is_base & (choice.method == ""), "acidity"), default="alkalinity or ANC")
+    for name, end in (("fixed_4_5", np.full(words.size, ALWAYS_END_POINT)), ("fixed_level", s.level_ph)):
+        for i in np.flatnonzero(choice.method == name).tolist():
+            words[i] += f" to pH {end[i]:g}"
+    return words
 
 
 def _estimate(name: str, e: Estimate) -> dict[str, NDArray]:

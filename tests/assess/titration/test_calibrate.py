@@ -106,7 +106,7 @@ def test_zero_by_the_acid_end_says_nothing_of_the_strength():
     a = assessed(millivolts(hard(titrant_strength_eq_l=0.5)))
     assert a.results["recommended_method"].iloc[0] != ""
     assert not set(a.findings["finding"]) & {"strength doubtful", "Gran slope", "electrode offset"}
-    assert any(words.startswith("no standards: the zero potential is taken from the acid end") for words in a.assumed)
+    assert any(words.startswith("no standards: the zero potential comes from the acid end") for words in a.assumed)
     with_standards = millivolts(hard(titrant_strength_eq_l=0.5)) | {"standard_1_ph": 7.0, "standard_1_mv": 410.0 - 59.16 * 7.0}
     assert "strength doubtful" in set(assessed(with_standards).findings["finding"])
 
