@@ -40,7 +40,7 @@ def plural(count: int, noun: str) -> str:
 
 def item(text: str, mark: str = "  - ") -> str:
     """A wrapped line of a list."""
-    return textwrap.fill(text, WIDTH, initial_indent=mark, subsequent_indent=" " * len(mark))
+    return textwrap.fill(text, WIDTH, initial_indent=mark, subsequent_indent=" " * len(mark), break_on_hyphens=False)
 
 
 def _head(tally: Tally, source: str) -> str:

@@ -137,9 +137,10 @@ def _wrong_way(s: Solved) -> Array:
 def _points(s: Solved, choice: Choice) -> Iterator[Finding]:
     """Readings that go the wrong way."""
     c = s.curves
-    limit = np.maximum(TURN_SIGMAS * np.sqrt(2.0) * c.u_ph_scatter, LEAST_TURN)[:, None]
     ph = np.where(c.is_base[:, None], -s.ph, s.ph)
     rise = np.diff(ph, axis=1)
+    by_burette = TURN_SIGMAS * c.u_acid[:, None] * _steepness(np.abs(c.acid), ph)
+    limit = np.maximum(np.sqrt(2.0) * np.hypot(TURN_SIGMAS * c.u_ph_scatter[:, None], by_burette), LEAST_TURN)
     with np.errstate(invalid="ignore"):
         back = (rise > limit) & ~(_outside("wrong way", _wrong_way(s)).here | s.purged)[:, None]  # sweeping raises pH
     if not back.any():
@@ -158,6 +159,16 @@ def _points(s: Solved, choice: Choice) -> Iterator[Finding]:
     yield _finding("points swapped", here & mends, value, point=np.where(here & mends, at, -1))
     turned = here & ~mends
     yield _finding("pH turns back", turned, value, point=np.where(turned, at + ~(first_off & ~second_off), -1))
+
+
+def _steepness(acid: Array, ph: Array) -> Array:
+    """Fall of pH per acid about each step, from the point before it to the point after it; 0 where there is none."""
+    if ph.shape[1] < 4:
+        return np.zeros((len(ph), max(ph.shape[1] - 1, 0)))
+    with np.errstate(invalid="ignore", divide="ignore"):
+        wide = np.abs(ph[:, 3:] - ph[:, :-3]) / (acid[:, 3:] - acid[:, :-3])
+    padded = np.concatenate([wide[:, :1], wide, wide[:, -1:]], axis=1)
+    return np.where(np.isfinite(padded), padded, 0.0)
 
 
 def _lines(s: Solved, choice: Choice) -> Iterator[Finding]:
