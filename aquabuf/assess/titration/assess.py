@@ -74,9 +74,10 @@ def _assumed(s: Solved) -> dict[str, int]:
         "ionic strength from the alkalinity alone (no conductivity, salinity or ions)":
             np.isnan(s.curves.ionic_strength_mol_l) & blank("salinity"),
         "filtered or not is not stated": blank("filtered"),
-        "no standards: the zero potential comes from the acid end of the curve and the slope from theory; neither "
-        "strength nor electrode is checked, and an electrode of 96 % slope would read dilute water 5 to 10 % low":
+        "no standards: the zero potential comes from the acid end of the curve, so the strength is not checked":
             s.curves.is_potential & (s.calibration.standards == 0),
+        "fewer than two standards: slope of the electrode as in theory, to 1 % unless electrode_slope_spread says so":
+            s.curves.is_potential & (s.calibration.standards < 2),
         "density of the titrant not stated: 1 kg/L": blank("titrant_density_kg_l") & s.curves.needs_density,
     }
     return {words: int(mask.sum()) for words, mask in cases.items() if mask.any()}

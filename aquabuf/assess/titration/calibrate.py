@@ -48,8 +48,11 @@ def nernst_mv_per_ph(t_c: Array) -> Array:
     return 1e3 * LN10 * GAS_CONSTANT * kelvin(t_c) / FARADAY
 
 
-def by_standards(values: Mapping[str, Array], t_c: Array) -> Calibration:
-    """Calibration from the standards given: one keeps the slope of theory, more give a least-squares line."""
+def by_standards(values: Mapping[str, Array], t_c: Array, slope_over_theory: Array | float = 1.0) -> Calibration:
+    """Calibration from the standards given: more than one give a least-squares line, fewer keep the slope of theory.
+
+    `slope_over_theory` takes another slope in place of that of theory.
+    """
     n = t_c.size
 
     def column(name: str) -> Array:
@@ -59,7 +62,7 @@ def by_standards(values: Mapping[str, Array], t_c: Array) -> Calibration:
     mv = np.stack([column(f"standard_{k}_mv") for k in STANDARDS], axis=1)
     known = np.isfinite(ph) & np.isfinite(mv)
     count = known.sum(axis=1)
-    theory = nernst_mv_per_ph(t_c)
+    theory = nernst_mv_per_ph(t_c) * slope_over_theory
     safe = np.maximum(count, 1)
     x, y = np.where(known, ph, 0.0), np.where(known, mv, 0.0)
     mean_x, mean_y = x.sum(axis=1) / safe, y.sum(axis=1) / safe

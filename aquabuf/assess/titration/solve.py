@@ -44,6 +44,7 @@ Array = NDArray[np.float64]
 ACIDITY_END_POINTS = (3.7, 4.5, 8.3)  # mineral acidity by either old end point, and total acidity by phenolphthalein
 LEAST_SLOPE_ERROR = 0.05  # of a slope that is noticed; common practice, no source
 REFERENCE_ACID_PH = 3.5
+ELECTRODE_SLOPE_SPREAD = 0.01  # of theory, where no two standards tell the slope; common practice, no source
 LEAST_CARBON = 2e-5       # of an acid water, about what air gives. [mol/L]
 TOO_SALTY = (f"ionic strength above {LIMITS['ionic_strength_mol_l'][3]:g} mol/L, where the fresh-water constants end; "
              f"give the salinity of salt water")
@@ -108,14 +109,41 @@ def text_of(samples: Mapping[str, NDArray], name: str, size: int) -> NDArray[np.
 
 
 def solve_titrations(t: Titrations, options: TitrationOptions) -> Solved:
-    """Every method on the usable titrations of `t`."""
+    """Every method on the usable titrations of `t`.
+
+    Where fewer than two standards tell the slope of the electrode, all is worked out a second time with a slope that is
+    lower by its standard uncertainty, and what that changes is added to the uncertainty of every estimate.
+    """
     c = curves_of(t)
     n = c.count.size
     frame = t.samples[t.usable]
     samples = {name: frame[name].to_numpy(dtype=float if frame[name].dtype.kind in "fi" else object)
                for name in frame.columns}
+    solved = _solve(c, samples, own_acids(t.acids), options)
+    untold = c.is_potential & (solved.calibration.standards < 2)
+    if not untold.any():
+        return solved
+    spread = value_of(samples, "electrode_slope_spread", n)
+    spread = np.where(untold, np.where(np.isfinite(spread), spread, ELECTRODE_SLOPE_SPREAD), 0.0)
+    other = _solve(c, samples, own_acids(t.acids), options, 1.0 - spread)
+    return replace(
+        solved,
+        estimates={name: _shifted(e, other.estimates[name], untold) for name, e in solved.estimates.items()},
+        acidity={end: _shifted(e, other.acidity[end], untold) for end, e in solved.acidity.items()})
+
+
+def _shifted(e: Estimate, other: Estimate, where: NDArray[np.bool_]) -> Estimate:
+    """The estimate with its change to another one counted in its uncertainty."""
+    shift = np.where(where & np.isfinite(other.value) & np.isfinite(e.value), np.abs(other.value - e.value), 0.0)
+    return replace(e, u=np.hypot(e.u, shift), own_u=np.hypot(e.own_u, shift))
+
+
+def _solve(c: Curves, samples: Mapping[str, NDArray], acids: tuple[Acid, ...], options: TitrationOptions,
+           slope_over_theory: Array | float = 1.0) -> Solved:
+    """Every method with one slope of the electrodes that no standards tell."""
+    n = c.count.size
     purged = text_of(samples, "exchange", n) == "purged"
-    totals = _totals(samples, c, own_acids(t.acids))
+    totals = _totals(samples, c, acids)
     sulfuric = (text_of(samples, "titrant_acid", n) == "sulfuric") & ~c.is_base
     own_strength = value_of(samples, "titrant_ionic_strength_mol_l", n)
     plain = np.where(sulfuric, 1.5, 1.0) * np.abs(c.per_added) * c.sample  # ionic strength of 2:1 and 1:1 acids
@@ -131,7 +159,7 @@ def solve_titrations(t: Titrations, options: TitrationOptions) -> Solved:
         return points_at(acid, dilution, t_c=c.t_c, salinity=c.salinity, ionic_strength_mol_l=strength,
                          totals=totals, by_mass=c.by_mass, sulfuric=sulfuric)
 
-    calibration, ph = _readings_as_ph(c, samples, points_with)
+    calibration, ph = _readings_as_ph(c, samples, points_with, slope_over_theory)
     guess = _first_guess(c, ph)
     points = points_with(guess)
     known = np.isfinite(points.k1)
@@ -226,9 +254,10 @@ def _totals(samples: Mapping[str, NDArray], c: Curves, own: tuple[Acid, ...]) ->
     return out
 
 
-def _readings_as_ph(c: Curves, samples: Mapping[str, NDArray], points_with) -> tuple[Calibration, Array]:
+def _readings_as_ph(c: Curves, samples: Mapping[str, NDArray], points_with, slope_over_theory: Array | float,
+                    ) -> tuple[Calibration, Array]:
     """pH of every point; potentials by their standards, else by the acid end of the titration."""
-    calibration = by_standards(samples, c.t_c)
+    calibration = by_standards(samples, c.t_c, slope_over_theory)
     rows = np.flatnonzero(c.is_potential & (calibration.standards == 0))
     if rows.size:
         points = points_with(np.zeros(c.count.size)).take(rows)

@@ -3,6 +3,8 @@
 Curves are made without aquabuf's chemistry (`simulated.py`); only those of sea water use its forward model.
 """
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
 from simulated import ERRORS, Bench
@@ -83,6 +85,18 @@ def test_carbon_and_offset_interval(bench, water):
     assert 0.84 <= coverage(solved.fit.fit.carbon, solved.fit.u_carbon, made.carbon) <= 0.96
     spread = np.nanstd(solved.fit.fit.offset_ph)
     assert 0.9 * ERRORS["ph_all"] <= spread <= 1.3 * ERRORS["ph_all"]
+
+
+@pytest.mark.parametrize("water", WATERS)
+def test_potentials_without_standards(bench, water):
+    """Electrodes whose slope is off by 1 % (standard deviation) and whose zero nobody knows."""
+    made, _ = bench(water)
+    slope = 59.16 * (1.0 + 0.01 * np.random.default_rng(5).standard_normal((COUNT, 1)))
+    read = replace(made.titrations(), reading=(415.0 - slope * made.ph).ravel(), read_as=np.full(COUNT, "potential", dtype=object))
+    solved = solve_titrations(read, TitrationOptions())
+    chosen = choose(solved)
+    for e in (solved.estimates["gran"], solved.estimates["fit"], chosen):
+        assert INSIDE[0] <= coverage(e.value, e.u, made.alkalinity) <= INSIDE[1]
 
 
 def test_an_interval_of_half_the_width_fails(bench):
