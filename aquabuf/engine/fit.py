@@ -114,7 +114,7 @@ def _iterate(points: Points, ph: Array, use: NDArray[np.bool_], u_ph: Array, u_a
     out, done_all = p.copy(), np.zeros(len(p), dtype=bool)
     rows, damping = np.arange(len(p)), np.full(len(p), DAMPING[0])
     ph = np.where(use, ph, 7.0)
-    weight = np.zeros_like(ph)
+    weight, done = np.zeros_like(ph), np.zeros(len(p), dtype=bool)
     for iteration in range(ROUNDS):
         residual, jacobian = _model(points, ph, p)
         if iteration < WEIGHT_ROUNDS:
@@ -129,9 +129,9 @@ def _iterate(points: Points, ph: Array, use: NDArray[np.bool_], u_ph: Array, u_a
         trial = _inside(trial)
         new, _ = _model(points, ph, trial)
         better = (weight * new**2).sum(axis=1) <= cost * (1.0 + 1e-12)
-        p = np.where(better[:, None], trial, p)
+        p = np.where((better & ~done)[:, None], trial, p)  # one that is done stands still, whatever the others need
         damping = np.clip(np.where(better, damping / 10.0, damping * 10.0), *DAMPING[1:])
-        done = (iteration >= WEIGHT_ROUNDS) & (np.abs(step / scale).max(axis=1) < DONE)
+        done |= (iteration >= WEIGHT_ROUNDS) & (np.abs(step / scale).max(axis=1) < DONE)
         done |= (iteration >= WEIGHT_ROUNDS) & ~better & (damping >= DAMPING[2])
         out[rows] = p
         done_all[rows] = done
@@ -141,6 +141,7 @@ def _iterate(points: Points, ph: Array, use: NDArray[np.bool_], u_ph: Array, u_a
         if 2 * keep.size < done.size:
             points, ph, use, weight = points.take(keep), ph[keep], use[keep], weight[keep]
             p, damping, rows, u_ph, u_acid = p[keep], damping[keep], rows[keep], u_ph[keep], u_acid[keep]
+            done = done[keep]
     return out, done_all
 
 

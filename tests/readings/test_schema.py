@@ -16,6 +16,7 @@ from aquabuf.readings.schema import (
     name_index,
     quantities,
     schema_order,
+    titration_quantities,
     unit_labels,
 )
 from aquabuf.readings.template import template, template_kinds
@@ -52,7 +53,8 @@ def test_every_alias_is_known_and_none_is_given_twice():
             assert len(alias) > 1, f"{alias!r} of {quantity.name} is too short to be safe"
 
 
-@pytest.mark.parametrize("quantity", NUMBERS, ids=lambda q: q.name)
+@pytest.mark.parametrize("quantity", [*NUMBERS, *(q for q in titration_quantities().values() if q.is_number and q not in NUMBERS)],
+                         ids=lambda q: q.name)
 def test_limits_are_in_order_and_uncertainty_has_a_source(quantity):
     """Hard limits enclose the usual ones; a default uncertainty says where it comes from."""
     assert quantity.low <= quantity.soft_low < quantity.soft_high <= quantity.high

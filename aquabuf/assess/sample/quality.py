@@ -19,12 +19,12 @@ from aquabuf.assess.sample.leftout import ALUMINUM_ACTS_BELOW, demand, titrated_
 from aquabuf.assess.sample.solve import PH_AIR
 from aquabuf.chem.acids import acid_table
 from aquabuf.chem.activity import log_gamma_davies
-from aquabuf.readings.schema import quantities
+from aquabuf.readings.schema import Schema, quantities
 from aquabuf.tables import read_table
 from aquabuf.units import substances, to_house
 
 __all__ = ["Check", "Rounding", "allowed", "check_facts", "check_rows", "counted", "failed", "file_check_rows",
-           "roundings", "sample_checks"]
+           "outside_usual", "roundings", "sample_checks"]
 
 SM_2510_A = 0.5                      # Debye-Hückel slope that the method uses at 25 °C
 WHOLE_MIN_ROWS, WHOLE_SHARE = 10, 90.0  # common practice, no source
@@ -91,7 +91,7 @@ def sample_checks(values: Values, figures: Mapping[str, NDArray], pair: NDArray,
     spread = np.where(measured < 5.0, 50.0, np.where(measured <= 30.0, 30.0, 20.0))
     hardness = _percent_off(get("calcium_mol_l") + get("magnesium_mol_l"), get("total_hardness_mol_l"), 1e-9)
     unstated_salinity = np.where(np.isnan(get("salinity")), measured, np.nan)
-    outside, names = _outside_usual(values, rows)
+    outside, names = outside_usual(values, rows)
     conductivity_off = _percent_off(computed, measured, 0.01)
     return [
         Check("ion balance", imbalance, -most, most),
@@ -179,11 +179,11 @@ def _brown(values: Values, figures: Mapping[str, NDArray], pair: NDArray) -> lis
             _fixed("acids not counted", np.where(any_known, 100.0 * share, np.nan))]
 
 
-def _outside_usual(values: Values, rows: int) -> tuple[Array, NDArray]:
-    """How many readings lie outside the soft limits of the column table, and which."""
+def outside_usual(values: Mapping[str, NDArray], rows: int, schema: Schema | None = None) -> tuple[Array, NDArray]:
+    """How many readings lie outside the soft limits of the column table (of readings if none is given), and which."""
     count, names = np.zeros(rows), np.full(rows, "", dtype=object)
-    for name, quantity in quantities().items():
-        if name in values:
+    for name, quantity in (schema or quantities()).items():
+        if name in values and quantity.is_number:
             with np.errstate(invalid="ignore"):
                 hit = (values[name] < quantity.soft_low) | (values[name] > quantity.soft_high)
             count += hit

@@ -83,7 +83,7 @@ def zero_potential_of_acid(potential_mv: Array, acid: Array, dilution: Array, ac
     added gives it, once the strength of the acid is taken as right. `activity_per_acid` is meter activity of H+ per
     free acid in the mixture (titrations times points). Source of the function: Gran 1952.
     """
-    zero = np.full(len(acid), GLASS_ZERO_PH) * slope_mv
+    zero, settled = np.full(len(acid), GLASS_ZERO_PH) * slope_mv, np.zeros(len(acid), dtype=bool)
     with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
         for _ in range(ZERO_ROUNDS):
             ph = (zero[:, None] - potential_mv) / slope_mv[:, None]
@@ -97,8 +97,9 @@ def zero_potential_of_acid(potential_mv: Array, acid: Array, dilution: Array, ac
             off = np.where(use, acid - mean_x[:, None], 0.0)
             gain = (off * np.where(use, free - mean_f[:, None], 0.0)).sum(axis=1) / (off**2).sum(axis=1)
             step = slope_mv * np.log10(gain)
-            zero = np.where(np.isfinite(step), zero + step, np.nan)
-            if not np.nanmax(np.abs(step), initial=0.0) > SETTLED_MV:
+            zero = np.where(settled, zero, np.where(np.isfinite(step), zero + step, np.nan))
+            settled |= ~(np.abs(step) > SETTLED_MV)
+            if settled.all():
                 break
     return zero
 

@@ -21,9 +21,9 @@ OLIVER_LEAST_PH = 3.0            # range of the organic anion relation
 def henriksen_1982(alkalinity_4_5_ueq_l: ArrayLike) -> NDArray[np.float64]:
     """Alkalinity at the equivalence point from the one titrated to pH 4.5, Scandinavian convention. [µeq/L]
 
-    (A - 31.6) + 0.646 sqrt(A - 31.6); nan below 31.6. Source: Henriksen 1982 (recalled). 0.646 squared is K1 in µeq/L:
-    the convention adds the free H+ at the equivalence point and drops the bicarbonate left, so that it lies 2 (at
-    50 µeq/L) to 7 µeq/L (at 500) above the proton balance.
+    (A - 31.6) + 0.646 sqrt(A - 31.6); nan below 31.6. Source: Henriksen 1982 (recalled). 0.646 squared is K1 in
+    µeq/L: the convention adds the free H+ at the equivalence point and drops the bicarbonate left, so that it lies
+    3 to 9 µeq/L above the proton balance from 30 to 1,000 µeq/L, and below it beyond about 2,000.
     """
     rest = np.asarray(alkalinity_4_5_ueq_l, dtype=float) - HENRIKSEN_FREE_ACID_UEQ
     return np.where(rest >= 0.0, rest + HENRIKSEN_FACTOR * np.sqrt(np.maximum(rest, 0.0)), np.nan)

@@ -9,13 +9,16 @@ from functools import cache
 import numpy as np
 from numpy.typing import NDArray
 
+from aquabuf.assess.sample.quality import outside_usual
 from aquabuf.assess.titration.calibrate import nernst_mv_per_ph
 from aquabuf.assess.titration.choose import Choice, best_guess, read_at
 from aquabuf.assess.titration.convert import fixed_to_proton_balance
+from aquabuf.assess.titration.curves import u_of
 from aquabuf.assess.titration.options import ALWAYS_END_POINT
 from aquabuf.assess.titration.parts import hydrolyzing_metals
 from aquabuf.assess.titration.solve import IMPLIES_ABOVE_PH, Solved, text_of, value_of
 from aquabuf.assess.titration.strength import GOOD_CHI2, doubt_in_words, slope_off, strength_doubtful, what_tells
+from aquabuf.readings.schema import titration_quantities
 from aquabuf.tables import read_table
 
 __all__ = ["Finding", "finding_facts", "findings"]
@@ -92,7 +95,8 @@ def _strength(s: Solved, choice: Choice) -> Iterator[Finding]:
     yield _finding("strength doubtful", doubtful, ratio, more=said)
     slope = slope_off(s)
     yield _finding("Gran slope", slope, ratio, more=what_tells(s, slope))
-    yield _outside("strength outside usual", c.strength)
+    outside, names = outside_usual(s.samples, c.count.size, titration_quantities("samples"))
+    yield replace(_outside("outside usual", outside), more=names)
     conductivity = value_of(s.samples, "conductivity_us_cm", c.count.size)
     with np.errstate(invalid="ignore", divide="ignore"):
         yield _outside("alkalinity against conductivity", best_guess(s) * 1e6 / conductivity, conductivity > 0.0)
@@ -209,8 +213,7 @@ def _fits(s: Solved, choice: Choice) -> Iterator[Finding]:
         implied = (s.ph[:, 0] > IMPLIES_ABOVE_PH) & (s.ph[:, 0] < 8.5)
     measured = value_of(s.samples, "dic_mol_l", c.count.size) / np.where(c.by_mass, c.density_kg_l, 1.0)
     yield _outside("carbon dioxide lost", lost, clear & np.isnan(measured) & implied)
-    u_measured = value_of(s.samples, "dic_u_mol_l", c.count.size)
-    u_measured = np.where(np.isfinite(u_measured), u_measured, 0.03 * measured)
+    u_measured = u_of(s.samples, titration_quantities()["dic_mol_l"], measured)
     with np.errstate(invalid="ignore", divide="ignore"):
         gap = f.fit.carbon - measured
         differs = np.abs(gap) > DISAGREE_SIGMAS * np.hypot(f.u_carbon, u_measured)

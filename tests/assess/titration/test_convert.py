@@ -38,6 +38,16 @@ def test_scandinavian_convention_of_a_curve():
 
 
 @pytest.mark.parametrize("t_c", [10.0, 25.0])
+@pytest.mark.parametrize(("ueq", "low", "high"),
+                         [(30.0, 3.0, 9.5), (100.0, 3.0, 9.5), (500.0, 3.0, 9.5), (1000.0, 3.0, 9.5), (4000.0, -30.0, 0.0)])
+def test_scandinavian_convention_against_the_proton_balance(ueq, low, high, t_c):
+    """What the page says of it: 3 to 9 µeq/L above up to 1 meq/L, below beyond about 2; closed water without dilution."""
+    water = BareWater(t_c, 1.2e-6 * ueq + 1e-4)
+    acid = ueq - water.alkalinity(4.5, 1.1e-6 * ueq + 1e-5) * 1e6
+    assert low < henriksen_1982(acid) - ueq < high
+
+
+@pytest.mark.parametrize("t_c", [10.0, 25.0])
 @pytest.mark.parametrize("alkalinity", [5e-5, 1e-4, 2e-3])
 def test_proton_balance_at_the_end_point(t_c, alkalinity):
     """Free acid and bicarbonate left at pH 4.5 are taken out: the true alkalinity of a curve made by hand comes back.
