@@ -7,7 +7,7 @@ of the quantity decides what is wanted:
     amount      mol/L of a substance            alkalinity  eq/L
     hardness    mol/L of calcium + magnesium    mass        mg/L of a substance
 
-Every other dimension (temperature, pressure, flow ...) is a group of its own with a fixed scale and offset.
+A load (deposition) is a charge or a mass per area and year, and its mass needs a basis too. Every other dimension (temperature, pressure, flow ...) is a group of its own with a fixed scale and offset.
 """
 
 from __future__ import annotations
@@ -34,12 +34,13 @@ __all__ = [
 ]
 
 CONCENTRATIONS = {"amount", "alkalinity", "hardness", "mass"}
+WITH_BASIS = CONCENTRATIONS | {"load"}  # dimensions whose mass units count somebody's mass
 EQUIVALENTS_PER_MOL = {"CaCO3": 2.0, "CaO": 2.0}  # bases that count acid-binding equivalents, not atoms
 _SAMPLE_CHARGE = {"alkalinity": 1.0, "hardness": 2.0}
 _MICRO_AND_SMALL = str.maketrans("µμ⁻−¹²³₀₁₂₃₄₅₆₇₈₉", "uu--12301" + "23456789")
 _PER = re.compile(r"[\s·*.]*\b(l|kg|cm|m|d|h|s)\s*\^?-1(?!\d)")
 _LITER = re.compile(r"_(?:liter|litre|dm3)(?=_|$)")
-_INNER_BASIS = re.compile(r"^([mu]?g)_?([a-z][a-z0-9]*)_(l|kg)$")
+_INNER_BASIS = re.compile(r"^([muk]?g)_?([a-z][a-z0-9]*)_(l|kg|m2_yr|ha_yr)$")
 
 
 @dataclass(frozen=True, slots=True)
@@ -72,7 +73,7 @@ class Unit:
         return f"{self.unit} as {self.basis}" if self.basis and self.suffix in _BASIS_UNITS else self.unit
 
 
-_BASIS_UNITS = {"g_l", "mg_l", "ug_l", "g_kg", "mg_kg", "ug_kg"}
+_BASIS_UNITS = {"g_l", "mg_l", "ug_l", "g_kg", "mg_kg", "ug_kg", "g_m2_yr", "mg_m2_yr", "kg_ha_yr"}
 
 
 def key(text: str) -> str:
@@ -171,7 +172,7 @@ def accepted_units(dimension: str, bases: tuple[str, ...] = ()) -> list[Unit]:
     for unit in dict.fromkeys(_group(_group_name(dimension)).values()):
         if unit.basis and dimension not in _SAMPLE_CHARGE:  # degrees are for alkalinity and hardness
             continue
-        if unit.group == "concentration" and unit.kind == "mass" and not unit.basis and bases:
+        if unit.group in ("concentration", "load") and unit.kind == "mass" and not unit.basis and bases:
             found += [replace(unit, basis=basis) for basis in bases]
         else:
             found.append(unit)
@@ -217,6 +218,8 @@ def linear(
     InputError
         Mass without a basis, or equivalents of something whose charge is not fixed.
     """
+    if unit.group == "load" and unit.kind == "mass":
+        return unit.scale * _mass_scale(unit, dimension, molar_mass_g, charge) * _whole_charge(unit, charge), 0.0
     if unit.group != "concentration":
         return unit.scale, unit.offset
     charge = _SAMPLE_CHARGE.get(dimension, charge)

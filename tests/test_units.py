@@ -115,6 +115,10 @@ def test_one_mmol_of_calcium_as_hardness():
         ("mg/L as Cl2", "amount", "hypochlorite", 1e-3 / 70.9),
         ("mg/L as S", "amount", "sulfate", 1e-3 / 32.06),
         ("µmol/L", "mass", "oxygen", 31.998e-3),  # mg/L
+        ("g/m²/yr as SO4", "load", "sulfate", 2.0 / 96.056),
+        ("kg S/ha/yr", "load", "sulfate", 0.1 * 2.0 / 32.06),
+        ("kg/ha/yr as N", "load", "nitrate", 0.1 / 14.007),
+        ("mg/m2/yr as NH4", "load", "ammonium", 1e-3 / 18.039),
     ],
 )
 def test_concentrations_from_atomic_weights(text, dimension, substance, expected):
@@ -145,13 +149,19 @@ EXACT = [
     (100.0, "meq/kg", "titrant_per_kg", 0.1), (998.2, "kg/m3", "density", 0.9982), (90.0, "s", "minutes", 1.5),
     (0.5, "h", "minutes", 30.0), (1.0, "cc", "small_volume", 1.0), (1.0, "N", "titrant_strength", 1.0),
     (1.0, "mol H+/L", "titrant_strength", 1.0), (1.1, "g/cm³", "density", 1.1), (7.0, "digits", "count", 7.0),
+    (1.0, "hm3", "volume", 1e6), (1.0, "keq/ha/yr", "load", 0.1), (1.0, "eq/ha/yr", "load", 1e-4),
+    (1.0, "meq/m²/yr", "load", 1e-3), (1.0, "g/m2/yr as H", "load", 1.0 / 1.008), (1.0, "cm/yr", "runoff", 0.01),
+    (1000.0, "mm/yr", "runoff", 1.0), (100.0, "in/yr", "runoff", 2.54), (100.0, "L/s/km2", "runoff", 3.15576),
+    (18.0, "months", "years", 1.5), (365.25, "d", "years", 1.0), (36.0, "km/h", "speed", 10.0),
+    (1.0, "kn", "speed", 1852.0 / 3600.0), (1.0, "mph", "speed", 1609.344 / 3600.0),
 ]  # fmt: skip
 
 
 @pytest.mark.parametrize(("value", "text", "dimension", "expected"), EXACT)
 def test_exact_definitions(value, text, dimension, expected):
-    """SI, the international foot and pound, the US gallon, the standard atmosphere; salinity by 35.16504/35."""
-    assert_allclose(to_house(value, text, dimension), expected, rtol=2e-6, atol=1e-9)
+    """SI, the international foot, pound, mile and knot, the US gallon, the standard atmosphere, the Julian year."""
+    substance = "hydrogen" if text.endswith("as H") else ""
+    assert_allclose(to_house(value, text, dimension, substance), expected, rtol=2e-6, atol=1e-9)
 
 
 def test_no_unit_is_left_unchecked():
@@ -163,6 +173,8 @@ def test_no_unit_is_left_unchecked():
             head = row["unit"].split("/")[0]
             factor = 1.0 if head in ("mol", "eq", "g") else prefix[head[0]]
             assert (float(row["scale"]), row["per_kg"] == "yes") == (factor, row["unit"].endswith("/kg")), row["unit"]
+        elif row["group"] == "load" and row["kind"] == "mass":  # by area: m² or ha; the bases are checked above
+            assert float(row["scale"]) == {"g/m²/yr": 1.0, "mg/m²/yr": 1e-3, "kg/ha/yr": 1e3 / 1e4}[row["unit"]]
         elif not row["basis"] and (float(row["scale"]), float(row["offset"])) != (1.0, 0.0):
             assert parse_unit(row["unit"], row["group"]) in checked, row["unit"]
 

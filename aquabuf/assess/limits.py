@@ -58,14 +58,14 @@ class Limit:
         return bool({ANY, kind or UNSTATED} & set(self.kinds)) and bool({ANY, regime} & set(self.regimes))
 
 
-def shipped_limits() -> tuple[Limit, ...]:
-    """The limits of the shipped table, in its order."""
+def shipped_limits(table: str = "limits") -> tuple[Limit, ...]:
+    """The limits of a shipped table, in its order: "limits" of samples or "lake_limits"."""
     return tuple(
         Limit(name=r["name"], group=r["group"], quantity=r["quantity"], operator=r["operator"], limit=float(r["limit"]),
               lower=float(r["lower"] or "-inf"), unit=r["unit"], kinds=tuple(r["kinds"].split(";")),
               regimes=tuple(r["regimes"].split(";")), words=r["words"], next_step=r["next_step"],
               source=f"{r['source']}{' (recalled)' if r['mark'] == 'recalled' else ''}")
-        for r in read_table("limits"))
+        for r in read_table(table))
 
 
 def verdicts(limits: tuple[Limit, ...], figures: Mapping[str, NDArray], kind: NDArray, regime: NDArray,

@@ -27,13 +27,13 @@ _NUMBERS = ("limit", "lower")
 _LISTS = ("kinds", "regimes")
 
 
-def read_limits(path: Path | None, quantities: Mapping[str, str]) -> tuple[Limit, ...]:
-    """Limits to use: the shipped ones, changed by the user's file if there is one.
+def read_limits(path: Path | None, quantities: Mapping[str, str], table: str = "limits") -> tuple[Limit, ...]:
+    """Limits to use: those of the shipped table, changed by the user's file if there is one.
 
     `quantities` are the figures that can be limited, with their unit. New limits lead their group; one that replaces a
     shipped limit takes its place. Raises FileError or InputError naming file, key, value and remedy.
     """
-    limits = {limit.name: limit for limit in shipped_limits()}
+    limits = {limit.name: limit for limit in shipped_limits(table)}
     if path is None:
         return tuple(limits.values())
     content = _toml(path)

@@ -4,15 +4,20 @@ Totals are in mol per kg of solution and proportional to practical salinity. Riv
 boron break the proportion at low salinity: a measured total always wins.
 """
 
+from collections.abc import Mapping
+from functools import cache
+from types import MappingProxyType
+
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from aquabuf.chem.properties import kelvin
+from aquabuf.tables import read_table
 
 __all__ = [
-    "boron_lee", "boron_uppstrom", "calcium_of_seawater", "fluoride_of_seawater", "free_to_seawater_scale",
-    "free_to_total_scale", "hydrogen_activity_takahashi", "ionic_strength_seawater", "per_kg_solution",
-    "sulfate_of_seawater",
+    "boron_lee", "boron_uppstrom", "calcium_of_seawater", "equivalents_per_chloride", "equivalents_per_sodium",
+    "fluoride_of_seawater", "free_to_seawater_scale", "free_to_total_scale", "hydrogen_activity_takahashi",
+    "ionic_strength_seawater", "per_kg_solution", "sulfate_of_seawater",
 ]
 
 CHLORINITY_RATIO = 1.80655  # practical salinity over chlorinity, by definition
@@ -80,3 +85,20 @@ def hydrogen_activity_takahashi(t_c: ArrayLike, salinity: ArrayLike) -> NDArray[
     t = kelvin(t_c)
     s = np.asarray(salinity, dtype=float)
     return 1.2948 - 0.002036 * t + (0.0004607 - 0.000001475 * t) * s * s
+
+
+@cache
+def equivalents_per_chloride() -> Mapping[str, float]:
+    """Equivalents of each ion that come with one of chloride in sea water, by name of the ion table. [-]"""
+    return _equivalents("chloride")
+
+
+@cache
+def equivalents_per_sodium() -> Mapping[str, float]:
+    """Equivalents of each ion that come with one of sodium in sea water, by name of the ion table. [-]"""
+    return _equivalents("sodium")
+
+
+def _equivalents(tracer: str) -> Mapping[str, float]:
+    rows = (row for row in read_table("sea_salt_ratios") if row["tracer"] == tracer)
+    return MappingProxyType({row["ion"]: float(row["ratio"]) for row in rows})

@@ -5,9 +5,14 @@ from __future__ import annotations
 import numpy as np
 import pandas as pd
 
-__all__ = ["DUPLICATE_RULE", "SeenNames", "hashes_of"]
+__all__ = ["DUPLICATE_RULE", "SeenNames", "duplicate_rows", "hashes_of"]
 
 DUPLICATE_RULE = "sample_id is already used in row"
+
+
+def duplicate_rows(rejected: pd.DataFrame) -> int:
+    """How many of the refused rows were refused for a name used before."""
+    return int(rejected["rule"].astype(str).str.startswith(DUPLICATE_RULE).sum())
 
 
 def hashes_of(names: list[str]) -> np.ndarray:

@@ -10,7 +10,7 @@ from typing import NamedTuple
 
 from aquabuf.errors import HeaderError
 from aquabuf.readings.schema import Index, Quantity, example_header, label_for, unit_labels, why_not
-from aquabuf.units import CONCENTRATIONS, Unit, find_basis, key, linear, parse_unit
+from aquabuf.units import WITH_BASIS, Unit, find_basis, key, linear, parse_unit
 
 __all__ = ["Column", "column_for", "nearest_names", "parse_header"]
 
@@ -112,7 +112,7 @@ def column_for(header: str, quantity: Quantity, unit: Unit | None, *, is_u: bool
         return Column(header=header, quantity=quantity)
     if unit is None:
         raise _unit_missing(header, quantity)
-    mass = unit.kind == "mass" and quantity.dimension in CONCENTRATIONS
+    mass = unit.kind == "mass" and quantity.dimension in WITH_BASIS
     if mass and not unit.basis and quantity.bases:
         chosen = basis or quantity.bare_basis
         if not chosen:

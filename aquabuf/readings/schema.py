@@ -11,7 +11,7 @@ from functools import cache
 
 from aquabuf.errors import InputError
 from aquabuf.tables import read_table
-from aquabuf.units import CONCENTRATIONS, Unit, accepted_units, key, parse_unit, substances
+from aquabuf.units import CONCENTRATIONS, WITH_BASIS, Unit, accepted_units, key, parse_unit, substances
 
 __all__ = [
     "Index",
@@ -250,14 +250,16 @@ def usable_units(quantity: Quantity) -> list[Unit]:
 
 def why_not(quantity: Quantity, unit: Unit) -> str:
     """Reason why `quantity` cannot be given in `unit`, "" when it can (a mass without basis is judged elsewhere)."""
-    if quantity.dimension not in CONCENTRATIONS or unit == quantity.house:
+    if quantity.dimension not in WITH_BASIS or unit == quantity.house:
         return ""
+    if quantity.dimension == "load" and unit.kind == "mass" and not quantity.bases:
+        return "it is a sum of several ions, so that a mass does not tell its charge"
     degree = unit.basis and unit.label == unit.unit
     if degree and "CaCO3" not in quantity.bases:
         return "degrees of hardness are for hardness and alkalinity"
     if unit.basis and not degree and unit.basis not in quantity.bases:
         return f"it is not given as {unit.basis}"
-    fixed = quantity.dimension in ("alkalinity", "hardness") or quantity.charge
+    fixed = quantity.dimension in ("alkalinity", "hardness", "load") or quantity.charge
     if unit.kind == "charge" and (not fixed or quantity.dimension == "mass"):
         return "its charge is zero or depends on pH, so equivalents are not defined"
     if unit.kind == "amount" and quantity.dimension == "mass" and quantity.molar_mass_g is None:

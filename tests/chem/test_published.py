@@ -11,8 +11,10 @@ from aquabuf.chem.acids import acid_named, acid_table, k_of_temperature
 ROWS = [row for name in CHEM_TABLES for row in read_rows(name)]
 ACID_ROWS = read_rows("weak_acids")
 
-# Public names that are no quantities: a record, two look-ups, and the year that labels AIR_CO2_PPM.
-NOT_QUANTITIES = {"Acid", "acid_named", "acid_table", "AIR_CO2_YEAR"}
+# Public names that are no quantities: records, look-ups, the year that labels AIR_CO2_PPM, and a pair of a quantity with
+# its slope, which has tests of its own.
+NOT_QUANTITIES = {"Acid", "acid_named", "acid_table", "AIR_CO2_YEAR", "OrganicModel", "organic_models", "charge_and_slope",
+                  "TransferRelation", "transfer_relations", "schmidt_relations", "transfer_velocity_m_d"}
 
 
 def _public_quantities():

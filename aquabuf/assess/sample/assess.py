@@ -24,7 +24,7 @@ from aquabuf.assess.sample.solve import ALKALINITY_AIR, NO_PAIR, PAIRS, believab
 from aquabuf.assess.sample.tables import results_table, verdict_table
 from aquabuf.chem.acids import Acid
 from aquabuf.engine.status import FLAGGED
-from aquabuf.readings.duplicates import DUPLICATE_RULE
+from aquabuf.readings.duplicates import duplicate_rows
 from aquabuf.readings.result import BELOW_DETECTION, Readings, notes_on_file
 
 __all__ = ["Assessment", "assess"]
@@ -98,7 +98,7 @@ def assess(readings: Readings, options: Options, limits: tuple[Limit, ...], *, o
         notes=notes_on_file(readings),
         flags=Counter(zip(readings.flags["what"], readings.flags["column"], strict=True)),
         made=counted(checks), unmet=counted(checks, only_unmet=True),
-        rounding=roundings(values, u, readings.headers), duplicates=_duplicates(readings.rejected),
+        rounding=roundings(values, u, readings.headers), duplicates=duplicate_rows(readings.rejected),
     )
 
 
@@ -117,10 +117,6 @@ def _halved(readings: Readings, kept: pd.DataFrame) -> NDArray[np.object_]:
         if row in place:
             out[place[row]] += f"; {column}" if out[place[row]] else column
     return out
-
-
-def _duplicates(rejected: pd.DataFrame) -> int:
-    return int(rejected["rule"].astype(str).str.startswith(DUPLICATE_RULE).sum())
 
 
 def _solve(values: Mapping[str, NDArray], n: int, acids: tuple[Acid, ...], options: Options, gap: Closure,

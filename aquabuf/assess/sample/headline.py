@@ -28,10 +28,10 @@ MARINE_FROM = 30.0     # practical salinity; Venice system 1958 (recalled)
 CCPP_AT_REST_MG_L = 1.0  # within this the water is called balanced; common practice, no source
 
 
-def threshold_column(kind: str, ph: float, exchange: str) -> str:
+def threshold_column(kind: str, ph: float, exchange: str, unit: str = "meq_l") -> str:
     """Column name of a tolerance, such as acid_to_ph_6_0_open_meq_l."""
     digits = f"{ph:g}" if ph % 1.0 else f"{ph:.1f}"
-    return f"{kind}_to_ph_{digits.replace('.', '_')}{'_open' if exchange == 'open' else ''}_meq_l"
+    return f"{kind}_to_ph_{digits.replace('.', '_')}{'_open' if exchange == 'open' else ''}_{unit}"
 
 
 RANK_BY = threshold_column("acid", ALWAYS_ACID, "closed")  # what the worst-buffered samples are ranked by

@@ -10,23 +10,22 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from aquabuf.arrays import exp10, worded
+from aquabuf.arrays import worded
 from aquabuf.assess.frames import LongRows, frame_of
+from aquabuf.assess.ionsums import conductivity_of_ions, most_conductivity_percent, most_imbalance_percent
 from aquabuf.assess.options import ALWAYS_ACID
 from aquabuf.assess.sample.headline import RANK_BY
 from aquabuf.assess.sample.inputs import MAJOR_IONS, Array, Values, reading
 from aquabuf.assess.sample.leftout import ALUMINUM_ACTS_BELOW, demand, titrated_organic
 from aquabuf.assess.sample.solve import PH_AIR
 from aquabuf.chem.acids import acid_table
-from aquabuf.chem.activity import log_gamma_davies
 from aquabuf.readings.schema import Schema, quantities
 from aquabuf.tables import read_table
 from aquabuf.units import substances, to_house
 
 __all__ = ["Check", "Rounding", "allowed", "check_facts", "check_rows", "counted", "failed", "file_check_rows",
-           "outside_usual", "roundings", "sample_checks"]
+           "fixed_check", "outside_usual", "roundings", "sample_checks"]
 
-SM_2510_A = 0.5                      # Debye-Hückel slope that the method uses at 25 °C
 WHOLE_MIN_ROWS, WHOLE_SHARE = 10, 90.0  # common practice, no source
 ROUNDING_SD = 1.0 / np.sqrt(12.0)   # of a unit: standard deviation of an even spread
 ALL_ROWS = "(all rows)"
@@ -51,8 +50,8 @@ class Check:
 
 
 def check_facts() -> dict[str, dict[str, str]]:
-    """Rows of the shipped table of checks by name."""
-    return {r["name"]: r for r in read_table("checks")}
+    """Rows of the shipped tables of checks by name, those of samples first."""
+    return {r["name"]: r for table in ("checks", "lake_checks") for r in read_table(table)}
 
 
 def allowed(fact: Mapping[str, str]) -> str:
@@ -63,7 +62,7 @@ def allowed(fact: Mapping[str, str]) -> str:
     return f"{fact['limit_words']}: {_limit_words(np.array([low]), np.array([high]))[0]} {fact['unit']}"
 
 
-def _fixed(name: str, value: Array, detail: NDArray | None = None) -> Check:
+def fixed_check(name: str, value: Array, detail: NDArray | None = None) -> Check:
     """A check whose limits are the same for all samples, as the table has them."""
     fact = check_facts()[name]
     return Check(name, value, float(fact["low"] or "-inf"), float(fact["high"] or "inf"), detail)
@@ -85,10 +84,10 @@ def sample_checks(values: Values, figures: Mapping[str, NDArray], pair: NDArray,
     total = (cations + anions) * 1e6
     some = complete & (total > 0.0)
     imbalance = 100.0 * (anions - cations) / np.where(some, anions + cations, np.nan)
-    most = np.where(total < 50.0, 60.0, np.where(total <= 100.0, 30.0, 15.0))
+    most = most_imbalance_percent(total)
     measured = get("conductivity_us_cm")
     computed = np.where(complete, _conductivity(values, figures), np.nan)
-    spread = np.where(measured < 5.0, 50.0, np.where(measured <= 30.0, 30.0, 20.0))
+    spread = most_conductivity_percent(measured)
     hardness = _percent_off(get("calcium_mol_l") + get("magnesium_mol_l"), get("total_hardness_mol_l"), 1e-9)
     unstated_salinity = np.where(np.isnan(get("salinity")), measured, np.nan)
     outside, names = outside_usual(values, rows)
@@ -99,13 +98,13 @@ def sample_checks(values: Values, figures: Mapping[str, NDArray], pair: NDArray,
         Check("pH against alkalinity", carbonate_gap * 1e3, -2e3 * carbonate_gap_u, np.inf),
         _over_determined(figures, rows),
         *_brown(values, figures, pair),
-        _fixed("CO2 pressure", figures["pco2_uatm"]),
-        _fixed("temperature", get("temperature_c")),
-        _fixed("salinity", unstated_salinity),
-        _fixed("hardness", hardness),
-        _fixed("holding time", get("holding_days")),
-        _fixed("usual ranges", outside, names),
-        _fixed("draws", 100.0 * figures["draws_solved"]),
+        fixed_check("CO2 pressure", figures["pco2_uatm"]),
+        fixed_check("temperature", get("temperature_c")),
+        fixed_check("salinity", unstated_salinity),
+        fixed_check("hardness", hardness),
+        fixed_check("holding time", get("holding_days")),
+        fixed_check("usual ranges", outside, names),
+        fixed_check("draws", 100.0 * figures["draws_solved"]),
     ]
 
 
@@ -140,20 +139,15 @@ def _charges(values: Values, figures: Mapping[str, NDArray], rows: int) -> tuple
 
 
 def _conductivity(values: Values, figures: Mapping[str, NDArray]) -> Array:
-    """Conductivity at 25 °C from the ions. [µS/cm]
-
-    Sum of equivalent conductivities times the square of a monovalent activity coefficient at 25 °C, Standard Methods
-    2510 (recalled).
-    """
+    """Conductivity at 25 °C from the ions. [µS/cm]"""
     solved = {"bicarbonate": "bicarbonate_mmol_l", "carbonate": "carbonate_mmol_l", "hydrogen": "hydrogen_meq_l",
               "hydroxide": "hydroxide_meq_l"}
-    total = np.zeros(figures["ph"].shape)
-    for row in read_table("ions"):
-        name = row["name"]
+    charges = {}
+    for name, ion in substances().items():
         given = 1e-3 * figures[solved[name]] if name in solved else values.get(f"{name.replace(' ', '_')}_mol_l")
-        if given is not None and row["conductivity_s_cm2_eq"]:
-            total += np.nan_to_num(given) * abs(int(row["charge"])) * float(row["conductivity_s_cm2_eq"]) * 1e3
-    return total * exp10(2.0 * log_gamma_davies(1, figures["ionic_strength_mol_l"], SM_2510_A))
+        if given is not None and ion.charge:
+            charges[name] = abs(ion.charge) * given
+    return conductivity_of_ions(charges, figures["ionic_strength_mol_l"])
 
 
 def _over_determined(figures: Mapping[str, NDArray], rows: int) -> Check:
@@ -174,9 +168,9 @@ def _brown(values: Values, figures: Mapping[str, NDArray], pair: NDArray) -> lis
     share = demand(values, figures["ph"], ALWAYS_ACID) / asked
     any_known = np.isfinite(doc) | np.isfinite(reading(values, "aluminum_mol_l"))
     organic = np.where(rests_on_both & np.isfinite(doc), organic, np.nan)
-    return [_fixed("CO2 in brown acid water", 100.0 * organic),
-            _fixed("CO2 in acid water", no_doc),
-            _fixed("acids not counted", np.where(any_known, 100.0 * share, np.nan))]
+    return [fixed_check("CO2 in brown acid water", 100.0 * organic),
+            fixed_check("CO2 in acid water", no_doc),
+            fixed_check("acids not counted", np.where(any_known, 100.0 * share, np.nan))]
 
 
 def outside_usual(values: Mapping[str, NDArray], rows: int, schema: Schema | None = None) -> tuple[Array, NDArray]:

@@ -1,0 +1,1 @@
+"""The lake: acid sensitivity from survey readings to decision."""

@@ -1,0 +1,121 @@
+"""The water of each lake: its carbon, what acid does to it closed and open to air, its pH at air.
+
+Closed answers start from the pH and the carbon that were measured; open ones from an ANC, which air completes.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from aquabuf.assess.lake.budget import Budget, gran_leaves_out
+from aquabuf.assess.lake.inputs import Lakes
+from aquabuf.engine.lake import LakeBalance
+
+__all__ = ["ANC_SOURCES", "CARBON_SOURCES", "Chemistry", "chemistry", "choose_sources", "of_titration"]
+
+Array = NDArray[np.float64]
+
+# What the charge-balance ANC of the open answers is worked out from, best first
+ANC_SOURCES = ("Gran ANC", "alkalinity", "charge balance", "pH and carbon")
+# What the carbon of the closed answers is worked out from, best first
+CARBON_SOURCES = ("carbon", "CO2 pressure", "pH and ANC")
+NONE = len(ANC_SOURCES)
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Chemistry:
+    """Each lake's water; nan where a reading is missing.
+
+    anc : charge-balance ANC that the open answers rest on. [eq/L]
+    ph : in the lake, closed. dic : inorganic carbon. carbonate : carbonate alkalinity. [mol/L, eq/L]
+    organic : charge of organic anions at that pH. [eq/L]
+    closed_to, open_to : strong acid to each threshold. [eq/L]
+    """
+
+    anc: Array
+    ph: Array
+    dic: Array
+    carbonate: Array
+    organic: Array
+    pco2_atm: Array
+    ph_at_air: Array
+    buffer_closed: Array
+    buffer_open: Array
+    closed_to: tuple[Array, ...]
+    open_to: tuple[Array, ...]
+
+
+def choose_sources(lakes: Lakes, b: Budget) -> tuple[NDArray[np.intp], NDArray[np.intp]]:
+    """For each lake (from its values, not its draws) the index in ANC_SOURCES and in CARBON_SOURCES; the length if none."""
+    ph = np.isfinite(lakes.get("ph"))
+    carbon = (np.isfinite(lakes.get("dic_mol_l")), np.isfinite(lakes.get("pco2_atm")))
+    titrated = np.isfinite(b.gran) | np.isfinite(b.alkalinity)
+    anc = (np.isfinite(b.gran), np.isfinite(b.alkalinity), np.isfinite(b.charge), ph & (carbon[0] | carbon[1]))
+    # the sum of ions carries too much error to tell carbon; only a titration does
+    carbons = (*carbon, ph & titrated)
+    return _first(anc), _first(carbons)
+
+
+def _first(there: Sequence[NDArray[np.bool_]]) -> NDArray[np.intp]:
+    out = np.full(there[0].shape[0], len(there), dtype=np.intp)
+    for index in reversed(range(len(there))):
+        out[there[index][:, 0]] = index
+    return out
+
+
+def chemistry(lakes: Lakes, b: Budget, sources: tuple[NDArray[np.intp], NDArray[np.intp]],
+              thresholds: Sequence[float]) -> Chemistry:
+    """Work out each lake; `sources` as chosen for its values, thresholds are pH values."""
+    anc_from, carbon_from = (s[:, None] for s in sources)
+    water, meter = lakes.balance(), lakes.balance(at_meter=True)
+    measured = lakes.get("ph")
+    titrated = of_titration(lakes, np.where(anc_from == 0, b.gran, b.alkalinity))
+    carbonate = titrated - meter.without_carbon(measured)
+    dic = _carbon(lakes, meter, measured, carbonate, carbon_from)
+    of_pair = meter.anc(measured, dic=dic)
+    by_charge = b.charge - np.nan_to_num(lakes.charge("fluoride"))
+    anc = np.select([anc_from <= 1, anc_from == 2, anc_from == 3], [titrated, by_charge, of_pair], np.nan)
+    ph = _closed_ph(lakes, water, measured, of_pair, anc, dic)
+    air = lakes.setting.air_co2_mol_l
+    ph_at_air = water.ph(anc, co2=air)
+    at_start = water.anc(ph, dic=dic)
+    shape = np.broadcast_shapes(anc.shape, ph.shape)
+    levels = [np.full((1, 1), t) for t in thresholds]
+    return Chemistry(
+        anc=anc, ph=ph, dic=dic,
+        carbonate=np.where(np.isfinite(measured), meter.carbonate_per_dic(measured) * dic,
+                           water.carbonate_per_dic(ph) * dic),
+        organic=np.where(np.isfinite(lakes.get("doc_mg_l")), lakes.organic.anion_eq_l(lakes.doc_mg_l, ph), np.nan),
+        pco2_atm=dic * water.co2_per_dic(ph) / lakes.setting.lake.k0,
+        ph_at_air=ph_at_air,
+        buffer_closed=water.intensity(ph, dic=dic), buffer_open=water.intensity(ph_at_air, co2=air),
+        closed_to=tuple(np.broadcast_to(at_start - water.anc(x, dic=dic), shape) for x in levels),
+        open_to=tuple(np.broadcast_to(anc - water.anc(x, co2=air), shape) for x in levels))
+
+
+def of_titration(lakes: Lakes, titrated: Array) -> Array:
+    """Charge-balance ANC of a titrated one: with the organic anions, less the aluminum, that a Gran line leaves out."""
+    organic, aluminum = gran_leaves_out(lakes)
+    return titrated + organic - aluminum
+
+
+def _carbon(lakes: Lakes, meter: LakeBalance, ph: Array, carbonate: Array, carbon_from: NDArray[np.intp]) -> Array:
+    """Inorganic carbon: measured, of a CO2 pressure, or what the carbonate alkalinity at this pH needs; not below none."""
+    of_pressure = lakes.get("pco2_atm") * lakes.setting.lake.k0 / meter.co2_per_dic(ph)
+    of_anc = np.maximum(carbonate, 0.0) / meter.carbonate_per_dic(ph)
+    return np.select([carbon_from == 0, carbon_from == 1, carbon_from == 2],
+                     [lakes.get("dic_mol_l"), of_pressure, of_anc], np.nan)
+
+
+def _closed_ph(lakes: Lakes, water: LakeBalance, measured: Array, of_pair: Array, anc: Array, dic: Array) -> Array:
+    """pH in the lake: as read, carried to the lake's temperature where it was read at another, else of ANC and carbon."""
+    moved = lakes.setting.moved & np.isfinite(measured)
+    missing = np.isnan(measured)
+    if not moved.any() and not missing.any():
+        return measured
+    asked = np.where(moved, of_pair, np.where(missing, anc, np.nan))
+    return np.where(moved | missing, water.ph(asked, dic=dic), measured)

@@ -1,0 +1,111 @@
+"""Readings of lakes as the lake questions want them: charges per ion, what they rest on, the conditions of each water.
+
+Arrays have the shape (lakes, 1), or (lakes, draws) for random draws of the readings; conditions are (lakes, 1).
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from aquabuf.assess.sample.inputs import ionic_strength, pressure, reading
+from aquabuf.chem.gases import pco2_of_air
+from aquabuf.chem.organic import OrganicModel
+from aquabuf.engine.conditions import Conditions, conditions
+from aquabuf.engine.lake import LakeBalance
+from aquabuf.units import substances
+
+__all__ = ["ANION_NAMES", "BASE_CATIONS", "CATION_NAMES", "IONS", "STRONG_ANIONS", "Lakes", "Setting", "setting_of"]
+
+Array = NDArray[np.float64]
+
+BASE_CATIONS = ("calcium", "magnesium", "sodium", "potassium")
+STRONG_ANIONS = ("sulfate", "nitrate", "chloride")
+CATION_NAMES, ANION_NAMES = (*BASE_CATIONS, "ammonium"), (*STRONG_ANIONS, "fluoride")
+IONS = (*CATION_NAMES, *ANION_NAMES)
+LEAST_STRENGTH = 2e-5  # mol/L where nothing tells it; activity coefficients are within 0.5 % of 1 there
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Setting:
+    """What does not vary between draws: constants in the lake and at the temperature of the pH reading, CO2 of air.
+
+    air_pco2_atm : CO2 pressure of air over the lake; air_co2_mol_l : CO2 dissolved at equilibrium with it.
+    """
+
+    lake: Conditions
+    at_meter: Conditions
+    moved: NDArray[np.bool_]  # whether pH was read at another temperature than the lake's
+    air_pco2_atm: Array
+    air_co2_mol_l: Array
+
+    def take(self, rows: NDArray[np.intp] | slice) -> Setting:
+        """The same for some of the lakes."""
+        return Setting(_take(self.lake, rows), _take(self.at_meter, rows), self.moved[rows], self.air_pco2_atm[rows],
+                       self.air_co2_mol_l[rows])
+
+
+def _take(c: Conditions, rows: Any) -> Conditions:
+    fields = {n: getattr(c, n)[rows] for n in c.__dataclass_fields__ if n != "_cache"}
+    return Conditions(**fields)
+
+
+def setting_of(values: Mapping[str, Array], air_co2_ppm: float, carbonic: str = "millero") -> Setting:
+    """Conditions of each row of `values` (one-dimensional); nan where the temperature is missing."""
+    t = values["temperature_c"]
+    strength = ionic_strength(values)[0]
+    titrated = np.fmax(np.abs(reading(values, "anc_eq_l")), np.abs(reading(values, "alkalinity_eq_l")))
+    strength = np.where(np.isnan(strength), np.fmax(titrated, LEAST_STRENGTH), strength)
+    salinity, p = np.nan_to_num(reading(values, "salinity")), pressure(values)
+    t_ph = reading(values, "ph_temperature_c")
+    moved = np.isfinite(t_ph) & (t_ph != t)
+
+    def at(temperature: Array) -> Conditions:
+        c = conditions(temperature, salinity, strength, pressure_atm=p, carbonic=carbonic)
+        return _take(c, (slice(None), None))
+
+    lake = at(t)
+    air = pco2_of_air(air_co2_ppm, lake.t_c, lake.pressure_atm, lake.salinity)
+    return Setting(lake, at(np.where(moved, t_ph, t)) if moved.any() else lake, moved[:, None], air, air * lake.k0)
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Lakes:
+    """Values in house units by column name, of shape (lakes, 1) or (lakes, draws), with what they are solved with.
+
+    organic_error : factor on the charge of organic anions, 1 for the value itself, drawn for its uncertainty.
+    """
+
+    values: Mapping[str, Array]
+    setting: Setting
+    organic: OrganicModel
+    organic_error: Array
+
+    def get(self, name: str) -> Array:
+        """Values of a column; nan where it was not measured."""
+        found = self.values.get(name)
+        return np.full((self.setting.air_pco2_atm.shape[0], 1), np.nan) if found is None else found
+
+    def charge(self, ion: str) -> Array:
+        """Charge of a strong ion as measured, always positive; nan where missing. [eq/L]"""
+        of = substances()[ion]
+        return abs(of.charge or 1) * self.get(f"{ion}_mol_l")
+
+    @property
+    def doc_mg_l(self) -> Array:
+        """Organic carbon as the organic acids count it: none where not measured, times the drawn model error. [mg/L]"""
+        return np.nan_to_num(self.get("doc_mg_l")) * self.organic_error
+
+    @property
+    def aluminum_mol_l(self) -> Array:
+        """Dissolved aluminum; none where not measured. [mol/L]"""
+        return np.nan_to_num(self.get("aluminum_mol_l"))
+
+    def balance(self, *, at_meter: bool = False) -> LakeBalance:
+        """Charge balance in the lake, or at the temperature of the pH reading."""
+        s = self.setting
+        return LakeBalance(s.at_meter if at_meter else s.lake, self.doc_mg_l, self.aluminum_mol_l, self.organic)

@@ -1,0 +1,118 @@
+"""What stands beside the numbers of each lake in words: what is missing and which column would bring it, what explains a gap."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from aquabuf.arrays import worded
+from aquabuf.assess.lake.answers import ANC_KINDS, Answers, Plan
+from aquabuf.assess.lake.budget import NEEDED
+from aquabuf.assess.lake.chemistry import ANC_SOURCES, CARBON_SOURCES
+from aquabuf.assess.lake.inputs import Lakes
+
+__all__ = ["anc_used_words", "carbon_words", "charge_form_words", "gap_words", "left_out_words"]
+
+Array = NDArray[np.float64]
+Words = NDArray[np.object_]
+
+TITRATED = ("anc", "alkalinity")
+
+
+@dataclass(frozen=True, slots=True)
+class _Answer:
+    """A result, what it is called, and the readings it needs: of each tuple any one serves."""
+
+    column: str
+    label: str
+    needs: tuple[tuple[str, ...], ...]
+
+
+_ION_NEEDS = tuple((ion,) for ion in NEEDED)
+_ANSWERS = (
+    _Answer("anc_used_ueq_l", "class", (("anc", "alkalinity", "all major ions"),)),
+    _Answer("anc_charge_ueq_l", "charge-balance ANC", _ION_NEEDS),
+    _Answer("organic_anion_ueq_l", "organic anions", (("doc",), ("ph",))),
+    _Answer("acid_to_ph_6_0_ueq_l", "closed tolerance", (("ph",), ("temperature",), (*TITRATED, "dic"))),
+    _Answer("ph_at_air", "pH at air", (("temperature",), (*TITRATED, "all major ions"))),
+    _Answer("critical_load_meq_m2_yr", "critical load", (("runoff",), *_ION_NEEDS)),
+    _Answer("exceedance_meq_m2_yr", "exceedance", (("sulfur_deposition",),)),
+    _Answer("lake_volume_m3", "the whole lake's figures", (("lake_volume", "mean_depth", "residence_time"),)),
+    _Answer("years_to_anc_limit", "years", (("sulfur_deposition",), ("residence_time", "lake_volume"),
+                                            ("watershed_area", "runoff"))),
+    _Answer("episode_anc_ueq_l", "episode", (("precipitation",), ("sulfur_deposition",), ("nitrate_deposition",))),
+    _Answer("gas_transfer_m_d", "CO2 flux", (("wind_speed",),)),
+    _Answer("reacidify_yr", "re-acidification", (("residence_time",),)),
+)
+BASES = {"anc": "anc_eq_l", "alkalinity": "alkalinity_eq_l", "ph": "ph", "dic": "dic_mol_l", "temperature": "temperature_c",
+         "doc": "doc_mg_l", "runoff": "runoff_m_yr", "lake_volume": "lake_volume_m3", "mean_depth": "mean_depth_m",
+         "residence_time": "residence_time_yr", "watershed_area": "watershed_area_m2", "wind_speed": "wind_speed_m_s",
+         "precipitation": "precipitation_m_yr", "sulfur_deposition": "sulfur_deposition_eq_m2_yr",
+         "nitrate_deposition": "nitrate_deposition_eq_m2_yr"} | {ion: f"{ion}_mol_l" for ion in NEEDED}
+
+
+def left_out_words(lakes: Lakes, columns: Mapping[str, NDArray], *, with_event: bool) -> Words:
+    """For each lake the answers that could not be worked out, each with the columns of readings that would bring it."""
+    there = {name: np.isfinite(lakes.get(column))[:, 0] for name, column in BASES.items()}
+    there["all major ions"] = np.logical_and.reduce([there[ion] for ion in NEEDED])
+    out = np.full(next(iter(there.values())).size, "", dtype=object)
+    for answer in _ANSWERS:
+        needs = () if answer.column.startswith("episode") and with_event else answer.needs
+        gone = np.isnan(columns[answer.column].astype(float))
+        if answer.column == "reacidify_yr":  # blank too where no lime is needed or the lake stays above the limit
+            gone &= ~there["residence_time"] & np.isnan(columns["lake_volume_m3"].astype(float))
+        lacking = [~np.logical_or.reduce([there[name] for name in need]) for need in needs]
+        for pattern in np.unique(np.stack(lacking, axis=1), axis=0) if lacking else ():
+            needed = [" or ".join(need) for need, misses in zip(needs, pattern, strict=True) if misses]
+            if needed:
+                hit = gone & (np.stack(lacking, axis=1) == pattern).all(axis=1)
+                out[hit] += np.where(out[hit] == "", "", "; ") + f"{answer.label} (give {', '.join(needed)})"
+    return out
+
+
+def anc_used_words(plan: Plan, method: Words) -> Words:
+    """Which ANC each lake's answers rest on, with its method where it was stated."""
+    out = worded(plan.used.size, *((plan.used == k, name) for k, name in enumerate(ANC_KINDS)))
+    stated = (plan.used == 0) & (method != "") & (method != "gran")
+    out[stated] = "titrated ANC (" + method[stated] + ")"
+    out[(plan.used == 0) & (method == "")] += " (method unstated)"
+    return out
+
+
+def charge_form_words(answers: Answers, computed: NDArray[np.bool_]) -> Words:
+    """Whether the charge-balance ANC counts ammonium."""
+    b = answers.budget
+    known = np.isfinite(b.charge)[:, 0]
+    return worded(known.size, (known, "without ammonium"), (known & b.with_ammonium[:, 0], "with ammonium"),
+                  (known & computed & np.isnan(b.charge_bare)[:, 0], "as given"))
+
+
+def carbon_words(plan: Plan) -> Words:
+    """What the carbon of each lake rests on."""
+    return worded(plan.sources[1].size, *((plan.sources[1] == k, name) for k, name in enumerate(CARBON_SOURCES)))
+
+
+def chemistry_words(plan: Plan) -> Words:
+    """What the open answers of each lake rest on."""
+    return worded(plan.sources[0].size, *((plan.sources[0] == k, name) for k, name in enumerate(ANC_SOURCES)))
+
+
+def gap_words(columns: Mapping[str, NDArray]) -> Words:
+    """What explains the difference between charge-balance and titrated ANC of each lake."""
+    gap, organic, aluminum, rest, u = (columns[f"anc_gap{part}_ueq_l"].astype(float)
+                                       for part in ("", "_organic", "_aluminum", "_rest", "_u"))
+    known, explained = np.isfinite(gap), np.abs(rest) <= 2.0 * u
+    small = np.abs(gap) <= 2.0 * u
+    by = _largest([(np.abs(organic), "organic anions"), (np.abs(aluminum), "aluminum")])
+    unknown_doc = known & np.isnan(organic)
+    return worded(gap.size, (known & ~explained, "not explained by organic anions and aluminum: error or an ion not measured"),
+                  *((known & explained & (by == k), f"mostly {name}") for k, name in enumerate(("organic anions", "aluminum"))),
+                  (known & small, "within error"),
+                  (unknown_doc & ~small, "organic carbon not given: organic anions cannot be told from error"))
+
+
+def _largest(parts: Sequence[tuple[Array, str]]) -> NDArray[np.intp]:
+    return np.argmax(np.stack([np.nan_to_num(size) for size, _ in parts]), axis=0)
