@@ -7,7 +7,8 @@ of the quantity decides what is wanted:
     amount      mol/L of a substance            alkalinity  eq/L
     hardness    mol/L of calcium + magnesium    mass        mg/L of a substance
 
-A load (deposition) is a charge or a mass per area and year, and its mass needs a basis too. Every other dimension (temperature, pressure, flow ...) is a group of its own with a fixed scale and offset.
+A load (deposition) is a charge or a mass per area and year, and its mass needs a basis too. Every other dimension
+(temperature, pressure, flow ...) is a group of its own with a fixed scale and offset.
 """
 
 from __future__ import annotations
@@ -38,7 +39,8 @@ WITH_BASIS = CONCENTRATIONS | {"load"}  # dimensions whose mass units count some
 EQUIVALENTS_PER_MOL = {"CaCO3": 2.0, "CaO": 2.0}  # bases that count acid-binding equivalents, not atoms
 _SAMPLE_CHARGE = {"alkalinity": 1.0, "hardness": 2.0}
 _MICRO_AND_SMALL = str.maketrans("µμ⁻−¹²³₀₁₂₃₄₅₆₇₈₉", "uu--12301" + "23456789")
-_PER = re.compile(r"[\s·*.]*\b(l|kg|cm|m|d|h|s)\s*\^?-1(?!\d)")
+_PER = re.compile(r"[\s·*.]*\b(l|kg|cm|m|d|h|s|ha|yr|a)\s*\^?-1(?!\d)")
+_PER_AREA = re.compile(r"[\s·*.]*\b(m|km)\s*\^?-2(?!\d)")
 _LITER = re.compile(r"_(?:liter|litre|dm3)(?=_|$)")
 _INNER_BASIS = re.compile(r"^([muk]?g)_?([a-z][a-z0-9]*)_(l|kg|m2_yr|ha_yr)$")
 
@@ -78,7 +80,8 @@ _BASIS_UNITS = {"g_l", "mg_l", "ug_l", "g_kg", "mg_kg", "ug_kg", "g_m2_yr", "mg_
 
 def key(text: str) -> str:
     """Plain form of a header or unit: lower case, ASCII, words joined by '_' ("µS/cm" -> "us_cm")."""
-    text = _PER.sub(r"/\1", text.lower().translate(_MICRO_AND_SMALL))  # lower first: capital µ is a Greek capital
+    plain = text.lower().translate(_MICRO_AND_SMALL)  # lower first: capital µ is a Greek capital
+    text = _PER_AREA.sub(r"/\g<1>2", _PER.sub(r"/\1", plain))
     return _LITER.sub("_l", re.sub(r"[^a-z0-9]+", "_", text).strip("_").replace("_per_", "_"))
 
 

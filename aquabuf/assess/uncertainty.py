@@ -19,8 +19,8 @@ Array = NDArray[np.float64]
 COVERAGE = 0.90            # of the intervals
 TO_COVERAGE = 1.645        # half their width over the standard uncertainty, of a normal distribution
 BLOCK_STATES = 32_768      # rows times draws at once
-SIGNED = ("ph", "ph_air_equilibrated", "ph_total", "ph_seawater", "ph_free", "alkalinity_eq_l", "anc_eq_l", "temperature_c",
-          "ph_temperature_c", "elevation_m")
+SIGNED = ("ph", "ph_air_equilibrated", "ph_total", "ph_seawater", "ph_free", "alkalinity_eq_l", "anc_eq_l",
+          "temperature_c", "ph_temperature_c", "elevation_m", "base_cation_deposition_eq_m2_yr")
 
 
 def row_blocks(rows: NDArray[np.intp], draws: int) -> Iterator[NDArray[np.intp]]:

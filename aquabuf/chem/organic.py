@@ -21,7 +21,7 @@ __all__ = ["OLIVER_SITES_EQ_PER_MG", "OrganicModel", "organic_anion_oliver", "or
 Array = NDArray[np.float64]
 
 OLIVER_SITES_EQ_PER_MG = 1e-5  # acid sites per mg of carbon; Oliver, Thurman & Malcolm 1983
-STRONG_SHARE = 1.0 / 3.0       # of the sites of a triprotic acid that act as a strong acid; Lydersen et al. 2004 (recalled)
+STRONG_SHARE = 1.0 / 3.0       # of the sites of a triprotic acid, a strong acid; Lydersen et al. 2004 (recalled)
 MG_C_PER_UMOL = 12.011e-3
 
 
@@ -105,6 +105,7 @@ class OrganicModel:
 def organic_models() -> dict[str, OrganicModel]:
     """The shipped models by name (treat as read-only)."""
     return {r["name"]: OrganicModel(
-        name=r["name"], sites_eq_mg=float(r["sites_ueq_mg"]) * 1e-6, pk=tuple(map(float, filter(None, r["pk"].split(";")))),
+        name=r["name"], sites_eq_mg=float(r["sites_ueq_mg"]) * 1e-6,
+        pk=tuple(float(step) for step in r["pk"].split(";") if step),
         source=f"{r['source']}{' (recalled)' if r['mark'] == 'recalled' else ''}", words=r["words"])
         for r in read_table("organic_acids")}

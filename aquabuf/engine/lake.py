@@ -111,6 +111,7 @@ class LakeBalance:
                 if step > PATIENCE:
                     halve |= np.abs(new - x) > 0.5 * last
                 np.copyto(new, 0.5 * (low + high), where=halve)
+                np.copyto(new, x, where=last <= STEP_DONE)  # rows that are done do not wait for their neighbors
                 last, x = np.abs(new - x), new
                 if not (last > STEP_DONE).any():
                     break

@@ -25,11 +25,16 @@ CHUNK_ROWS = 50_000
 
 def _complete(sheet: Sheet, table_map: TableMap) -> None:
     """What depends on other columns: numbers of the map for gaps, columns per kilogram, derived quantities."""
+    by_mass = {column.name for column, _ in sheet.per_kg}
     for column, number in table_map.fill:
-        sheet.fill(column, number)
+        if column.name not in by_mass:
+            sheet.fill(column, number)
     density = density_kg_l(sheet, sheet.per_kg[0][0].name) if sheet.per_kg else None
     for column, cells in sheet.per_kg:
         sheet.take_numbers(column, cells, density)
+    for column, number in table_map.fill:
+        if column.name in by_mass:  # what was measured stands
+            sheet.fill(column, number)
     derive(sheet)
 
 

@@ -213,6 +213,16 @@ def test_fill_serves_only_rows_that_have_none(tmp_path):
     assert "missing, filled from the map file" in readings.flags["what"].tolist()
 
 
+def test_fill_leaves_what_was_measured_per_kilogram(tmp_path):
+    """A reading per kilogram is a reading: only the row without one is filled."""
+    table, table_map = tmp_path / "t.csv", tmp_path / "m.toml"
+    table.write_text("sample_id,ph,temperature_c,alkalinity_umol_kg\na,8,10,2000\nb,8,10,\n", encoding="utf-8")
+    table_map.write_text('[fill]\n"alkalinity (meq/L)" = 5\n', encoding="utf-8")
+    readings = read_readings(table, table_map)
+    assert_allclose(readings.frame["alkalinity_eq_l"], [2000e-6 * 0.9997, 5e-3], rtol=1e-4)  # fresh water at 10 °C
+    assert readings.flags["sample_id"].tolist().count("b") >= 1
+
+
 @pytest.mark.parametrize(("entry", "words"), [
     ('temperature_c = "warm"', r"\[fill\] 'temperature_c': must be a number.*found 'warm'"),
     ('site = 3', r"\[fill\] 'site': must be a number for a column of numbers; found 3"),

@@ -39,6 +39,7 @@ def find_anc_limit(text: str) -> AncLimit:
     except ValueError:
         value = 2.0 * MOST_LIMIT_EQ_L
     if not abs(value) <= MOST_LIMIT_EQ_L and text not in rows:
-        raise InputError(f"the ANC limit must be a number of µeq/L within {MICRO * MOST_LIMIT_EQ_L:g} of zero or one of "
+        raise InputError(f"the ANC limit must be a number of µeq/L within {MICRO * MOST_LIMIT_EQ_L:g} of zero or one "
+                         f"of "
                          f"{', '.join(rows)}; found {text!r}. Write for example 20.")
     return AncLimit(name=text, value_eq_l=value)

@@ -33,7 +33,7 @@ from aquabuf.assess.lake.liming import anc_for_ph, product_g_m3, product_kg, rea
 from aquabuf.assess.lake.options import LakeOptions, Rules
 from aquabuf.chem.transfer import transfer_velocity_m_d
 
-__all__ = ["ANC_KINDS", "Answers", "Episode", "Plan", "answers", "plan_of", "with_carbon"]
+__all__ = ["ANC_KINDS", "Answers", "Episode", "Plan", "answers", "closed_lake", "plan_of", "with_carbon"]
 
 Array = NDArray[np.float64]
 
@@ -204,6 +204,11 @@ def episode(lakes: Lakes, c: Chemistry, rules: Rules, options: LakeOptions, used
         "event_fraction_to_limit": fraction_at_anc(used, event_anc, limit),
     }
     return Episode(lake, event, event_anc, fraction), columns
+
+
+def closed_lake(of: Answers) -> Mapping[str, Array]:
+    """The lakes' water as the closed answers take it: ANC of the pH and the carbon that were measured."""
+    return {**of.episode.lake, "anc_eq_l": of.chemistry.anc_closed}
 
 
 def with_carbon(lakes: Lakes, event: Mapping[str, Array]) -> Mapping[str, Array]:

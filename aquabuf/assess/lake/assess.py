@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 
 from aquabuf.arrays import worded
 from aquabuf.assess.frames import frame_of
-from aquabuf.assess.lake.answers import Answers, Plan, answers, plan_of, with_carbon
+from aquabuf.assess.lake.answers import Answers, Plan, answers, closed_lake, plan_of, with_carbon
 from aquabuf.assess.lake.budget import NEEDED, anc_kinds, gran_leaves_out, missing_ions
 from aquabuf.assess.lake.classes import (
     basis_words,
@@ -35,6 +35,7 @@ from aquabuf.assess.lake.quality import HISTORY_COLUMNS, IonSums, ion_sums, lake
 from aquabuf.assess.lake.schemes import Scheme
 from aquabuf.assess.lake.sea_salt import negative_words, non_marine
 from aquabuf.assess.lake.simple_lake import at_both_ends, lake_share
+from aquabuf.assess.lake.survey import site_keys
 from aquabuf.assess.lake.words import anc_used_words, carbon_words, charge_form_words, gap_words, left_out_words
 from aquabuf.assess.limits import Limit, shipped_limits, verdicts
 from aquabuf.assess.sample.inputs import TITRATED_BY, uncertainties, values_of
@@ -52,7 +53,8 @@ Words = NDArray[np.object_]
 BUBBLED_T_C, BUBBLED_U_PH = 22.5, 0.05  # of a laboratory where air is bubbled through; what 5 °C either way move pH by
 CONDUCTIVITY_ROOM = 0.02                # relative allowance of the conductivity meter for what missing ions may carry
 EXCEEDED = "critical load exceeded"     # limit whose probability stands in a column of its own
-NOTHING = ("no ANC, alkalinity, complete major ions or pH", "a lake needs ANC, alkalinity, all of the major ions, or pH",
+NOTHING = ("no ANC, alkalinity, complete major ions or pH", "a lake needs ANC, alkalinity, all of the major ions, or "
+                                                            "pH",
            "titrate the sample, or give the ions that are missing")
 
 
@@ -136,15 +138,16 @@ def assess_lakes(readings: Readings, rules: Rules, options: LakeOptions, limits:
     }
     figures["left_out"] = left_out_words(lakes, figures, with_event=rules.event is not None)
     figures["status"] = _status(lakes, figures)
-    checks = lake_checks(lakes, u, found.budget, found.chemistry, sums, figures, _at_equilibration(lakes, found, u, values))
+    bubbled = _at_equilibration(lakes, found, u, values)
+    checks = lake_checks(lakes, u, found.budget, found.chemistry, sums, figures, bubbled)
     kind = frame["water_kind"].to_numpy(dtype=object) if "water_kind" in frame else np.full(keep.size, "", dtype=object)
     broken = verdicts(limits, figures, kind, np.full(keep.size, "fresh", dtype=object))
     checks.append(_history(frame, figures))
     figures |= {"failed_checks": failed(checks, keep.size), "warnings": _warnings(figures, rules.schemes[0], broken)}
     refused = _refused(readings, np.flatnonzero(~good))
     return LakeAssessment(
-        results=_results(frame, figures, around, options), frame=frame, lakes=lakes, plan=plan, answers=found, spread=around,
-        rules=rules, index=index, used=used, broken=broken, checks=checks, rejected=refused,
+        results=_results(frame, figures, around, options), frame=frame, lakes=lakes, plan=plan, answers=found,
+        spread=around, rules=rules, index=index, used=used, broken=broken, checks=checks, rejected=refused,
         notes=notes_on_file(readings),
         flags=Counter(zip(readings.flags["what"], readings.flags["column"], strict=True)),
         rounding=roundings(values, u, readings.headers), duplicates=duplicate_rows(readings.rejected))
@@ -241,8 +244,7 @@ def _classes(figures: dict, found: Answers, rules: Rules, around: Spread) -> tup
     figures |= {
         "scheme": np.where(code >= 0, first.name, ""), "class": class_names(first, code),
         "class_on": basis_words(first, place),
-        "class_probability": np.where(code >= 0, np.take_along_axis(chance, np.maximum(code, 0)[:, None], axis=1)[:, 0],
-                                      np.nan),
+        "class_probability": np.where(code >= 0, chance[np.arange(code.size), np.maximum(code, 0)], np.nan),
         "class_also": second_class(first, code, chance),
         "class_conflicts": disagreements(index, {s.name: s for s in rules.schemes}),
         "episode_class": class_names(first, classify(first, _episode_value(figures, first))),
@@ -258,9 +260,11 @@ def _lime_words(lakes: Lakes, found: Answers, rules: Rules, figures: Mapping[str
     """pH after liming, in the first days and at air, and the warning of over-liming."""
     dose = 1e-6 * figures["lime_dose_ueq_l"][:, None]
     c = found.chemistry
-    after = after_liming(lakes.balance(), c.anc, c.dic, dose, rules.lime, lakes.setting.air_co2_mol_l)
+    air = lakes.setting.air_co2_mol_l
+    after = after_liming(lakes.balance(), c.anc_closed, c.dic, dose, rules.lime, air)
     needed = (dose > 0.0)[:, 0]
-    closed, at_air = (np.where(needed, v[:, 0], np.nan) for v in (after.ph_closed, after.ph_open))
+    closed = np.where(needed, after.ph_closed[:, 0], np.nan)
+    at_air = np.where(needed, lakes.balance().ph(c.anc + dose, co2=air)[:, 0], np.nan)
     limit = next(x.limit for x in shipped_limits("lake_limits") if x.quantity == "lime_ph_closed")
     return {"lime_ph_closed": closed, "lime_ph_at_air": at_air,
             "lime_warning": over_liming_words(closed, after.aluminate_ug_l[:, 0], limit, rules.lime)}
@@ -286,7 +290,7 @@ def _sensitivity(lakes: Lakes, found: Answers, rules: Rules) -> dict[str, NDArra
 
 def _closed_episode(lakes: Lakes, found: Answers) -> dict[str, NDArray]:
     """pH of the mixture before air changes its carbon."""
-    mixed = mix(found.episode.lake, with_carbon(lakes, found.episode.event), found.episode.fraction)
+    mixed = mix(closed_lake(found), with_carbon(lakes, found.episode.event), found.episode.fraction)
     balance = balance_of(mixed, lakes.setting.lake, lakes.organic)
     return {"episode_ph_closed": balance.ph(mixed["anc_eq_l"], dic=mixed["dic_mol_l"])[:, 0]}
 
@@ -300,7 +304,7 @@ def _event_words(lakes: Lakes, rules: Rules, figures: Mapping[str, NDArray]) -> 
 
 def _at_equilibration(lakes: Lakes, found: Answers, u: Mapping[str, Array], values: Mapping[str, Array],
                       ) -> tuple[Array, Array]:
-    """pH for the air that was bubbled through the sample, and its standard uncertainty; nan where that air is not given."""
+    """pH for the air bubbled through the sample, and its standard uncertainty; nan where that air is not given."""
     ppm = lakes.get("equilibration_co2_ppm")
     warm = setting_of({**values, "temperature_c": np.full(values["temperature_c"].shape, BUBBLED_T_C)}, 1.0)
     balance = replace(lakes, setting=warm).balance()
@@ -319,7 +323,7 @@ def _status(lakes: Lakes, figures: Mapping[str, NDArray]) -> Words:
 
 def _history(frame: pd.DataFrame, figures: Mapping[str, NDArray]) -> Check:
     table = frame_of({name: figures[name] for name in HISTORY_COLUMNS})
-    count, names = own_history(table.assign(site=frame["site"].to_numpy()) if "site" in frame else table)
+    count, names = own_history(table, site_keys(frame))
     return fixed_check("own history", count, names)
 
 

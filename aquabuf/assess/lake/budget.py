@@ -16,12 +16,13 @@ from aquabuf.chem.aluminum import charge_and_slope
 from aquabuf.chem.organic import OrganicModel, strong_organic_anion
 from aquabuf.tables import read_table
 
-__all__ = ["GRAN_PH", "NEEDED", "AncKinds", "Budget", "Missing", "anc_kinds", "budget", "gran_leaves_out", "left_out_by_gran", "missing_ions"]
+__all__ = ["GRAN_PH", "NEEDED", "AncKinds", "Budget", "Missing", "anc_kinds", "budget", "gran_leaves_out",
+           "left_out_by_gran", "missing_ions"]
 
 Array = NDArray[np.float64]
 
-# Where the line of a Gran titration is taken to touch the curve of organic acids and aluminum. The usual window is
-# pH 4.5 to 3.7; its upper end predicts the air-equilibrated pH of the Eastern Lake Survey best (figures in docs/lake.md).
+# Where the line of a Gran titration is taken to touch the curve of organic acids and aluminum. Of the usual window,
+# pH 4.5 to 3.7, its upper end predicts the pH at air of lakes above pH 5 best (open survey; figures in docs/lake.md).
 GRAN_PH = 4.5
 NEEDED = (*BASE_CATIONS, *STRONG_ANIONS)  # ions without which there is no charge-balance ANC
 
@@ -30,8 +31,10 @@ NEEDED = (*BASE_CATIONS, *STRONG_ANIONS)  # ions without which there is no charg
 class Budget:
     """ANC of each lake by definition, and the sums they are made of. [eq/L]
 
-    charge : base cations and ammonium less sulfate, nitrate and chloride; without ammonium where that is not measured.
-    charge_bare : the same without ammonium.
+    charge : base cations and ammonium less sulfate, nitrate and chloride; without ammonium where that is not measured;
+    as given where it was worked out elsewhere and ions are missing. charge_bare : of the ions, without ammonium.
+    gran, alkalinity, end_point : titrated, of the whole sample, of the filtered one, to a fixed pH.
+    organic_corrected : charge less a third of all organic acid sites. surplus : charge_bare less strong organic anions.
     gap : charge less Gran; of it organic (organic anions that the titration leaves out), aluminum, and the rest.
     """
 
@@ -59,7 +62,7 @@ class Budget:
 class AncKinds:
     """What the column of ANC holds in each lake; masks of shape (lakes, 1).
 
-    is_gran : a Gran ANC, or one by a method that agrees with it. is_end_point : titrated to a fixed pH, which is another
+    is_gran : a Gran ANC, or one by a method that agrees with it. is_end_point : titrated to a fixed pH, another
     quantity. is_computed : a charge balance that was worked out elsewhere.
     """
 

@@ -65,8 +65,9 @@ class Deposition:
 def deposition(lakes: Lakes) -> Deposition:
     """Deposition of each lake.
 
-    Ammonium counts as acid because plants and microbes that take it up, or oxidize it, give off one H+ per NH4+; nitrate
-    counts because its H+ came with it. What soils and plants hold back is not taken off: the most acid.
+    Ammonium counts as acid because plants and microbes that take it up or oxidize it give off H+, one more than it
+    bound in the air; nitrate counts because its H+ came with it. What soils and plants hold back is not taken off, so
+    that this is the most acid there can be.
     """
     def load(name: str) -> Array:
         return lakes.get(f"{name}_deposition_eq_m2_yr")
@@ -80,7 +81,8 @@ def deposition(lakes: Lakes) -> Deposition:
                               ("base cations", cations, " - ")):
         here = np.isfinite(value)[:, 0] & np.isfinite(sulfur)[:, 0]
         words[here] += f"{sign}{name}"
-    nitrogen = np.where(np.isnan(nitrate) & np.isnan(ammonium), np.nan, np.nan_to_num(nitrate) + np.nan_to_num(ammonium))
+    some = np.isfinite(nitrate) | np.isfinite(ammonium)
+    nitrogen = np.where(some, np.nan_to_num(nitrate) + np.nan_to_num(ammonium), np.nan)
     return Deposition(sulfur, nitrogen, net, words)
 
 
@@ -90,7 +92,7 @@ def keq(concentration_eq_l: Array, volume_m3: Array) -> Array:
 
 
 def years_left(anc_above_eq_l: Array, lakes: Lakes, water: Hydrology, net_acid_eq_m2_yr: Array) -> tuple[Array, Array]:
-    """Years until the lake water's own ANC above a limit is used up: by acid on the whole catchment, by acid on the lake.
+    """Years until the water's own ANC above a limit is used up: by acid on the whole catchment, by acid on the lake.
 
     Mass balance with nothing neutralized on the way and nothing washed out or in, so that the truth lies between and
     beyond: soils lengthen both. Without areas, the first follows from runoff and residence time. 0 where the limit is

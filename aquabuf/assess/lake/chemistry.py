@@ -30,13 +30,15 @@ NONE = len(ANC_SOURCES)
 class Chemistry:
     """Each lake's water; nan where a reading is missing.
 
-    anc : charge-balance ANC that the open answers rest on. [eq/L]
+    anc : charge-balance ANC that the open answers rest on; anc_closed : that of the pH and the carbon, which the closed
+    answers start from, so that no error between readings is taken for a change. [eq/L]
     ph : in the lake, closed. dic : inorganic carbon. carbonate : carbonate alkalinity. [mol/L, eq/L]
     organic : charge of organic anions at that pH. [eq/L]
     closed_to, open_to : strong acid to each threshold. [eq/L]
     """
 
     anc: Array
+    anc_closed: Array
     ph: Array
     dic: Array
     carbonate: Array
@@ -50,7 +52,7 @@ class Chemistry:
 
 
 def choose_sources(lakes: Lakes, b: Budget) -> tuple[NDArray[np.intp], NDArray[np.intp]]:
-    """For each lake (from its values, not its draws) the index in ANC_SOURCES and in CARBON_SOURCES; the length if none."""
+    """Index of each lake in ANC_SOURCES and in CARBON_SOURCES, from its values, not its draws; their length if none."""
     ph = np.isfinite(lakes.get("ph"))
     carbon = (np.isfinite(lakes.get("dic_mol_l")), np.isfinite(lakes.get("pco2_atm")))
     titrated = np.isfinite(b.gran) | np.isfinite(b.alkalinity)
@@ -86,7 +88,7 @@ def chemistry(lakes: Lakes, b: Budget, sources: tuple[NDArray[np.intp], NDArray[
     shape = np.broadcast_shapes(anc.shape, ph.shape)
     levels = [np.full((1, 1), t) for t in thresholds]
     return Chemistry(
-        anc=anc, ph=ph, dic=dic,
+        anc=anc, anc_closed=at_start, ph=ph, dic=dic,
         carbonate=np.where(np.isfinite(measured), meter.carbonate_per_dic(measured) * dic,
                            water.carbonate_per_dic(ph) * dic),
         organic=np.where(np.isfinite(lakes.get("doc_mg_l")), lakes.organic.anion_eq_l(lakes.doc_mg_l, ph), np.nan),
@@ -104,7 +106,7 @@ def of_titration(lakes: Lakes, titrated: Array) -> Array:
 
 
 def _carbon(lakes: Lakes, meter: LakeBalance, ph: Array, carbonate: Array, carbon_from: NDArray[np.intp]) -> Array:
-    """Inorganic carbon: measured, of a CO2 pressure, or what the carbonate alkalinity at this pH needs; not below none."""
+    """Inorganic carbon: measured, of a CO2 pressure, or what carbonate alkalinity at this pH needs; none at least."""
     of_pressure = lakes.get("pco2_atm") * lakes.setting.lake.k0 / meter.co2_per_dic(ph)
     of_anc = np.maximum(carbonate, 0.0) / meter.carbonate_per_dic(ph)
     return np.select([carbon_from == 0, carbon_from == 1, carbon_from == 2],
@@ -112,7 +114,7 @@ def _carbon(lakes: Lakes, meter: LakeBalance, ph: Array, carbonate: Array, carbo
 
 
 def _closed_ph(lakes: Lakes, water: LakeBalance, measured: Array, of_pair: Array, anc: Array, dic: Array) -> Array:
-    """pH in the lake: as read, carried to the lake's temperature where it was read at another, else of ANC and carbon."""
+    """pH in the lake: as read, brought to its temperature where it was read at another, else of ANC and carbon."""
     moved = lakes.setting.moved & np.isfinite(measured)
     missing = np.isnan(measured)
     if not moved.any() and not missing.any():

@@ -9,8 +9,8 @@ from aquabuf.assess.sample.headline import threshold_column
 
 __all__ = ["AS_GIVEN", "TO_PH_6", "acid_column", "lake_columns", "lake_quantities"]
 
-AS_GIVEN = ("sample_id", "row", "site", "region", "date", "depth_m", "water_kind", "survey_weight", "filtered", "ph_kind",
-            "anc_method")  # only repeated
+AS_GIVEN = ("sample_id", "row", "site", "region", "date", "depth_m", "water_kind", "survey_weight", "filtered",
+            "ph_kind", "anc_method")  # only repeated
 
 
 def acid_column(ph: float, exchange: str) -> str:

@@ -106,7 +106,7 @@ def original_base_cations_iterated(
         inside = ~whole & (total > 0.0)
         twice = 1.0 + 2.0 * acid
         first = 2.0 * total / (twice + np.sqrt(np.maximum(twice * twice - 4.0 * acid * total, 0.0)))
-        x = _halley(HALF_PI * first, HALF_PI * acid, HALF_PI * total, STEPS)
+        x = np.asarray(_halley(HALF_PI * first, HALF_PI * acid, HALF_PI * total, STEPS))
         left = x + HALF_PI * (acid * np.sin(x) - total)
         undone = inside & (np.abs(left) > TOLERANCE)
         if undone.any():

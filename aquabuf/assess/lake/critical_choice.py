@@ -29,8 +29,9 @@ from aquabuf.errors import InputError
 from aquabuf.tables import read_table
 
 __all__ = [
-    "BASE_CATIONS_AT", "EXCESS", "FORMS", "LIMIT_MOST_EQ_L", "LIMIT_SLOPE_YR_M", "MOST_LIMIT_EQ_L", "CriticalLoadChoice",
-    "Form", "NamedLimit", "SulfateBackground", "limit_words", "parse_choice", "sulfate_backgrounds",
+    "BASE_CATIONS_AT", "EXCESS", "FORMS", "LIMIT_MOST_EQ_L", "LIMIT_SLOPE_YR_M", "MOST_LIMIT_EQ_L",
+    "CriticalLoadChoice", "Form", "NamedLimit", "SulfateBackground", "limit_words", "parse_choice",
+    "sulfate_backgrounds",
 ]
 
 
@@ -39,18 +40,18 @@ class Form:
     """What the share F of the soil depends on, the amount at which it reaches 1, and where that comes from."""
 
     s_scale: float  # [eq/L, or eq/m2/yr]
-    unit: str       # of `s_scale` times a million or a thousand, as people write it
-    per_unit: float
+    unit: str       # as people write it
+    units: float    # of those in one eq/L, or one eq/m2/yr
     words: str
     source: str
 
 
 FORMS: Mapping[str, Form] = MappingProxyType({
     "concentration": Form(
-        s_scale=4e-4, unit="µeq/L", per_unit=1e-6, words="the concentration of base cations",
+        s_scale=4e-4, unit="µeq/L", units=1e6, words="the concentration of base cations",
         source="S and equation printed in the abstract of the Nordic critical loads; the factor pi/2 is recalled"),
     "flux": Form(
-        s_scale=0.4, unit="meq/m²/yr", per_unit=1e-3, words="the base cations that run off per area and year",
+        s_scale=0.4, unit="meq/m²/yr", units=1e3, words="the base cations that run off per area and year",
         source="Henriksen & Posch 2001, Mapping Manual (recalled)"),
 })
 BASE_CATIONS_AT: Mapping[str, str] = MappingProxyType({
@@ -145,9 +146,9 @@ class CriticalLoadChoice:
         usual, found = FORMS[self.form], self.scale
         low, high = LEAST_SCALE * usual.s_scale, MOST_SCALE * usual.s_scale
         if not low <= found <= high:
-            raise InputError(f"S of the {self.form} form must be from {low / usual.per_unit:g} to "
-                             f"{high / usual.per_unit:g} {usual.unit}; found {found / usual.per_unit:g}. "
-                             f"The usual one is {usual.s_scale / usual.per_unit:g}.")
+            raise InputError(f"S of the {self.form} form must be from {low * usual.units:g} to "
+                             f"{high * usual.units:g} {usual.unit}; found {found * usual.units:g}. "
+                             f"The usual one is {usual.s_scale * usual.units:g}.")
 
     @property
     def scale(self) -> float:
@@ -167,18 +168,18 @@ class CriticalLoadChoice:
     @property
     def label(self) -> str:
         """The choice as `parse_choice` reads it, such as "concentration today norway"; other defaults are left out."""
-        usual = FORMS[self.form].per_unit
+        units = FORMS[self.form].units
         rest = [] if self.excess_background == "kept" else [self.excess_background]
-        rest += [] if self.has_usual_scale else [f"{SCALE_KEY}{self.scale / usual:g}"]
+        rest += [] if self.has_usual_scale else [f"{SCALE_KEY}{self.scale * units:g}"]
         rest += [] if self.tracer == "chloride" else [NO_TRACER_WORD if self.tracer == NO_TRACER else self.tracer]
         return " ".join([self.form, self.base_cations, self.sulfate_background, *rest])
 
     def lines(self) -> tuple[str, ...]:
         """Every choice in words with its source, a line each."""
         form = FORMS[self.form]
-        usual = "" if self.has_usual_scale else f", given by the user; usual {form.s_scale / form.per_unit:g}"
+        usual = "" if self.has_usual_scale else f", given by the user; usual {form.s_scale * form.units:g}"
         return (
-            f"F = sin(pi/2 x/S), at most 1, x {form.words}, S {self.scale / form.per_unit:g} {form.unit}{usual} "
+            f"F = sin(pi/2 x/S), at most 1, x {form.words}, S {self.scale * form.units:g} {form.unit}{usual} "
             f"({form.source})",
             f"F {BASE_CATIONS_AT[self.base_cations]}",
             f"sulfate before acid deposition {self.background.in_words()}; {EXCESS[self.excess_background]}",
@@ -225,9 +226,8 @@ def parse_choice(text: str, limit: NamedLimit | None = None) -> CriticalLoadChoi
     if found.get("tracer") == NO_TRACER_WORD:
         found["tracer"] = NO_TRACER
     usual = CriticalLoadChoice(**found)  # type: ignore[arg-type]
-    per_unit = FORMS[usual.form].per_unit
     anc = usual.anc_limit_eq_l if limit is None else None if limit.is_variable else limit.value_eq_l
-    own = None if scale is None else per_unit * _number(scale.removeprefix(SCALE_KEY))
+    own = None if scale is None else _number(scale.removeprefix(SCALE_KEY)) / FORMS[usual.form].units
     return replace(usual, anc_limit_eq_l=anc, s_scale=own)
 
 

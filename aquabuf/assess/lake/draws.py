@@ -35,7 +35,7 @@ ORGANIC_U_REL = 0.15  # of the charge of organic anions: what the published mode
 
 @dataclass(slots=True, eq=False)
 class Spread:
-    """Low and high end by column, class probabilities by (scheme, definition), probability that each limit is broken."""
+    """Low and high end by column, class probabilities by (scheme, definition), probability of each broken limit."""
 
     low: dict[str, Array] = field(default_factory=dict)
     high: dict[str, Array] = field(default_factory=dict)
@@ -45,7 +45,7 @@ class Spread:
 
 def spread(values: Mapping[str, Array], u: Mapping[str, Array], setting: Setting, plan: Plan, rules: Rules,
            options: LakeOptions, limits: tuple[Limit, ...]) -> Spread:
-    """Draw the readings of each lake within their uncertainty and answer every draw. Arrays of lakes, one-dimensional."""
+    """Draw the readings of each lake within their uncertainty and answer every draw. Arrays are one-dimensional."""
     out = Spread()
     n = values["temperature_c"].size
     if not options.draws or not n:

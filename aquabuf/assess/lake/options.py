@@ -31,8 +31,7 @@ class LakeOptions:
     schemes : names or TOML paths, the first one gives the class. organic : a shipped model or SITES:PK,PK,PK.
     critical_load : words of the variant, none for the default. anc_limit : µeq/L, a shipped name, or variable.
     lime, lime_anc_ueq_l, lime_ph : product and target; a pH takes the place of the ANC.
-    event_fraction : share of event water. deposition_changes : percent. convert_end_point : whether an ANC titrated to a
-    fixed end point may stand in once the acid left at the end point is taken off.
+    event_fraction : share of event water. deposition_changes : percent.
     """
 
     schemes: tuple[str, ...] = ("survey_bands",)
@@ -70,7 +69,8 @@ class LakeOptions:
             _range("a change of deposition", change, -100.0, 1000.0, "Give percent, such as -30.")
         object.__setattr__(self, "thresholds", tuple(dict.fromkeys(
             (*ALWAYS_THRESHOLDS, *(round(ph, 3) for ph in self.thresholds)))))
-        for subject, value, allowed in (("the group", self.group, GROUPS), ("the carbonic set", self.carbonic, CARBONIC_SETS),
+        for subject, value, allowed in (("the group", self.group, GROUPS), ("the carbonic "
+                                                                            "set", self.carbonic, CARBONIC_SETS),
                                         ("the wind relation", self.wind_relation, transfer_relations())):
             if value not in allowed:
                 raise InputError(f"{subject} must be one of {', '.join(allowed)}; found {value!r}. Correct it.")

@@ -1,4 +1,4 @@
-"""Quality checks of lakes: ions against each other, against conductivity, against titration, pH and carbon, and history."""
+"""Quality checks of lakes: ions against each other, conductivity, titration, pH and carbon, and the lake's history."""
 
 from __future__ import annotations
 
@@ -70,12 +70,12 @@ def _sum(charges: Mapping[str, Array], names: tuple[str, ...]) -> Array:
     return sum((np.nan_to_num(charges[n]) for n in names[1:]), start=np.nan_to_num(charges[names[0]]))
 
 
-def lake_checks(lakes: Lakes, u: Mapping[str, Array], b: Budget, c: Chemistry, sums: IonSums, figures: Mapping[str, NDArray],
-                at_equilibration: tuple[Array, Array]) -> list[Check]:
+def lake_checks(lakes: Lakes, u: Mapping[str, Array], b: Budget, c: Chemistry, sums: IonSums,
+                figures: Mapping[str, NDArray], at_equilibration: tuple[Array, Array]) -> list[Check]:
     """All checks of single lakes; `figures` are columns of the result.
 
-    u : standard uncertainty of each reading, one-dimensional. at_equilibration : pH computed for the air that was bubbled
-    through, and its standard uncertainty.
+    u : standard uncertainty of each reading, one-dimensional. at_equilibration : pH computed for the air that was
+    bubbled through, and its standard uncertainty.
     """
     n = c.ph.shape[0]
 
@@ -116,17 +116,17 @@ def _carbonate_left(lakes: Lakes, b: Budget) -> Array:
     return (of_titration(lakes, titrated) - lakes.balance(at_meter=True).without_carbon(lakes.get("ph")))[:, 0]
 
 
-def own_history(results: pd.DataFrame) -> tuple[Array, NDArray[np.object_]]:
-    """How many readings of each row lie far from those of its own lake, and which; nan where the lake has too few samples.
+def own_history(results: pd.DataFrame, keys: NDArray[np.object_]) -> tuple[Array, NDArray[np.object_]]:
+    """How many readings of each row lie far from those of its own lake, and which; nan where too few samples are there.
 
-    Robust: distance from the lake's median over 1.4826 times the median distance, at least the rounding of a tenth.
+    `keys` name the lake of each row, empty where it is not known. Robust: distance from the lake's median over 1.4826
+    times the median distance, at least a tenth of the unit, which is rounding.
     """
     n = len(results)
     count, names = np.full(n, np.nan), np.full(n, "", dtype=object)
-    if "site" not in results:
-        return count, names
-    for found in results.groupby("site", sort=False).indices.values():
-        rows = np.asarray(found)
+    named = np.flatnonzero(keys != "")
+    for place in pd.Series(keys[named], dtype=object).groupby(keys[named], sort=False).indices.values():
+        rows = named[np.asarray(place)]
         if rows.size < HISTORY_LEAST:
             continue
         count[rows] = 0.0

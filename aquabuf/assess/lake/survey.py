@@ -7,10 +7,12 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from aquabuf.assess.lake.schemes import Scheme
+from aquabuf.units import key
 
-__all__ = ["ALL_LAKES", "group_table", "latest_of_site", "priorities"]
+__all__ = ["ALL_LAKES", "group_table", "latest_of_site", "priorities", "site_keys", "weighted_quantile"]
 
 ALL_LAKES = "(all)"
+FAR_DEGREES = 0.02  # between samples of one lake, about 2 km; common practice, no source
 QUANTILES = (("low", 0.1), ("median", 0.5), ("high", 0.9))
 SPREAD_OF = ("anc_used_ueq_l", "ph", "critical_load_meq_m2_yr", "exceedance_meq_m2_yr")
 PRIORITY_COLUMNS = ("sample_id", "row", "site", "region", "class", "class_probability", "anc_used_ueq_l", "ph",
@@ -31,7 +33,7 @@ def priorities(results: pd.DataFrame, scheme: Scheme) -> pd.DataFrame:
     kept = [name for name in PRIORITY_COLUMNS if name in results]
     table = results.iloc[at][kept].reset_index(drop=True)
     by_name = {c.name: c for c in scheme.classes}
-    reason = [_reason(by_name[name].words if name in by_name else "no ANC or pH to class it by", p, warnings)
+    reason = [_reason(name, by_name[name].words if name in by_name else "no ANC or pH to class it by", p, warnings)
               for name, p, warnings in zip(table["class"], exceeded[at], table["warnings"], strict=True)]
     steps = [by_name[name].next_step if name in by_name else "titrate it, or have its ions measured"
              for name in table["class"]]
@@ -39,24 +41,52 @@ def priorities(results: pd.DataFrame, scheme: Scheme) -> pd.DataFrame:
     return table.assign(reason=reason, next_step=steps)
 
 
-def _reason(words: str, exceeded: float, warnings: str) -> str:
+def _reason(class_name: str, words: str, exceeded: float, warnings: str) -> str:
     parts = [words]
     if exceeded > 0.5:
         parts.append(f"critical load exceeded (probability {exceeded:.2f})")
-    parts += [w for w in warnings.split("; ") if w and w != "critical load exceeded"]
+    parts += [w for w in warnings.split("; ") if w and w not in (class_name, "critical load exceeded")]
     return "; ".join(parts)
 
 
-def latest_of_site(results: pd.DataFrame, dates: NDArray) -> NDArray[np.bool_]:
-    """Rows that stand for their lake in the survey: the latest sample of each site; every row without a site."""
-    if "site" not in results:
-        return np.ones(len(results), dtype=bool)
-    site = results["site"].to_numpy(dtype=object)
-    keep = site == ""
+def site_keys(frame: pd.DataFrame) -> NDArray[np.object_]:
+    """Name of the lake of each row, unique for the place: its site, with the region where one name stands in several.
+
+    Rows of one site whose coordinates lie far apart (FAR_DEGREES) are different lakes with one name and get the
+    coordinates into theirs. Empty where no site is given.
+    """
+    site = frame["site"].to_numpy(dtype=object) if "site" in frame else np.full(len(frame), "", dtype=object)
+    keys = site.copy()
+    parts = [frame["region"].to_numpy(dtype=object)] if "region" in frame else []
+    if "latitude" in frame and "longitude" in frame:
+        parts.append(_coordinates(frame, site))
+    for part in parts:
+        several = pd.Series(part).groupby(pd.Series(site, dtype=object)).transform("nunique").to_numpy() > 1
+        more = several & (site != "") & (part != "")
+        keys[more] = keys[more] + " (" + part[more] + ")"
+    return keys
+
+
+def _coordinates(frame: pd.DataFrame, site: NDArray) -> NDArray[np.object_]:
+    """Rounded coordinates of rows whose site lies in places that are far apart; empty elsewhere."""
+    places = frame[["latitude", "longitude"]]
+    grouped = places.groupby(pd.Series(site, dtype=object))
+    width = (grouped.transform("max") - grouped.transform("min")).max(axis=1).to_numpy()
+    known = np.isfinite(places.to_numpy()).all(axis=1)
+    with np.errstate(invalid="ignore"):
+        far = known & (width > FAR_DEGREES)
+    out = np.full(len(frame), "", dtype=object)
+    out[far] = [f"{lat:.2f}, {lon:.2f}" for lat, lon in places.to_numpy()[far].tolist()]
+    return out
+
+
+def latest_of_site(keys: NDArray[np.object_], dates: NDArray[np.datetime64]) -> NDArray[np.bool_]:
+    """Rows that stand for their lake in the survey: the latest sample of each key; every row without one."""
+    keep = keys == ""
     named = np.flatnonzero(~keep)
     when = np.where(np.isnat(dates), np.datetime64("0001-01-01"), dates)[named]
     order = named[np.lexsort((named, when))]
-    last = {site[i]: i for i in order.tolist()}
+    last = {keys[i]: i for i in order.tolist()}
     keep[list(last.values())] = True
     return keep
 
@@ -85,8 +115,8 @@ def _group_row(name: str, group: str, table: pd.DataFrame, weight: NDArray, sche
         "weighted": "yes" if weighted else "no", "lakes_stood_for": float(weight.sum()) if weighted else np.nan}
     for c in scheme.classes:
         hit = (table["class"] == c.name).to_numpy()
-        row[f"count: {c.name}"] = int(hit.sum())
-        row[f"share: {c.name}"] = float(weight[hit].sum()) / whole if whole > 0.0 else np.nan
+        row[f"lakes_{key(c.name)}"] = int(hit.sum())
+        row[f"share_{key(c.name)}"] = float(weight[hit].sum()) / whole if whole > 0.0 else np.nan
     for column in SPREAD_OF:
         values = table[column].to_numpy(dtype=float)
         for word, quantile in QUANTILES:

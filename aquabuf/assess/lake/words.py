@@ -1,4 +1,4 @@
-"""What stands beside the numbers of each lake in words: what is missing and which column would bring it, what explains a gap."""
+"""What stands beside the numbers of each lake in words: what is missing and what brings it, what explains a gap."""
 
 from __future__ import annotations
 
@@ -47,11 +47,13 @@ _ANSWERS = (
     _Answer("gas_transfer_m_d", "CO2 flux", (("wind_speed",),)),
     _Answer("reacidify_yr", "re-acidification", (("residence_time",),)),
 )
-BASES = {"anc": "anc_eq_l", "alkalinity": "alkalinity_eq_l", "ph": "ph", "dic": "dic_mol_l", "temperature": "temperature_c",
-         "doc": "doc_mg_l", "runoff": "runoff_m_yr", "lake_volume": "lake_volume_m3", "mean_depth": "mean_depth_m",
-         "residence_time": "residence_time_yr", "watershed_area": "watershed_area_m2", "wind_speed": "wind_speed_m_s",
-         "precipitation": "precipitation_m_yr", "sulfur_deposition": "sulfur_deposition_eq_m2_yr",
-         "nitrate_deposition": "nitrate_deposition_eq_m2_yr"} | {ion: f"{ion}_mol_l" for ion in NEEDED}
+BASES = {
+    "anc": "anc_eq_l", "alkalinity": "alkalinity_eq_l", "ph": "ph", "dic": "dic_mol_l", "temperature": "temperature_c",
+    "doc": "doc_mg_l", "runoff": "runoff_m_yr", "lake_volume": "lake_volume_m3", "mean_depth": "mean_depth_m",
+    "residence_time": "residence_time_yr", "watershed_area": "watershed_area_m2", "wind_speed": "wind_speed_m_s",
+    "precipitation": "precipitation_m_yr", "sulfur_deposition": "sulfur_deposition_eq_m2_yr",
+    "nitrate_deposition": "nitrate_deposition_eq_m2_yr", **{ion: f"{ion}_mol_l" for ion in NEEDED},
+}
 
 
 def left_out_words(lakes: Lakes, columns: Mapping[str, NDArray], *, with_event: bool) -> Words:
@@ -108,8 +110,10 @@ def gap_words(columns: Mapping[str, NDArray]) -> Words:
     small = np.abs(gap) <= 2.0 * u
     by = _largest([(np.abs(organic), "organic anions"), (np.abs(aluminum), "aluminum")])
     unknown_doc = known & np.isnan(organic)
-    return worded(gap.size, (known & ~explained, "not explained by organic anions and aluminum: error or an ion not measured"),
-                  *((known & explained & (by == k), f"mostly {name}") for k, name in enumerate(("organic anions", "aluminum"))),
+    return worded(gap.size, (known & ~explained, "not explained by organic anions and aluminum: error or an ion not "
+                                                 "measured"),
+                  *((known & explained & (by == k), f"mostly {name}") for k, name in enumerate(("organic "
+                                                                                                "anions", "aluminum"))),
                   (known & small, "within error"),
                   (unknown_doc & ~small, "organic carbon not given: organic anions cannot be told from error"))
 

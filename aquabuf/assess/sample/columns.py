@@ -25,7 +25,7 @@ class ResultColumn:
 
 
 def table_columns(table: str, expand: Callable[[str], list[str]]) -> Iterator[ResultColumn]:
-    """Columns of a shipped table of result columns, in its order; `expand` gives the names that one with a * stands for."""
+    """Columns of a shipped table of result columns, in its order; `expand` gives the names that a * stands for."""
     for row in read_table(table):
         digits = int(row["digits"]) if row["digits"] else None
         for name in expand(row["name"]) if "*" in row["name"] else [row["name"]]:

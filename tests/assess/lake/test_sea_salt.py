@@ -42,11 +42,12 @@ def test_ratios_are_those_of_sea_water(tracer, ion):
 def test_diluted_sea_salt_leaves_nothing(tracer):
     """Salt in the proportions of the table is zero after the correction and is not called negative by rounding."""
     amount = np.geomspace(1e-7, 1e-2, 50)
-    salt = {ion: ratio * amount for ion, ratio in TRACERS[tracer]().items()} | {tracer: amount}
+    salt = {ion: ratio * (amount * 3.0) / 3.0 for ion, ratio in TRACERS[tracer]().items()} | {tracer: amount}
     found = non_marine(salt, tracer)
     for ion in salt:
         assert_allclose(found.eq_l[ion], 0.0, rtol=0, atol=1e-17)
         assert not found.negative[ion].any()
+    assert min(left.min() for left in found.eq_l.values()) < 0.0  # rounding did go below
 
 
 def test_sea_salt_added_to_a_lake_is_taken_off_again():

@@ -1,0 +1,1 @@
+"""Long tables: one row per sample and characteristic, brought to the one row per sample that everything else reads."""

@@ -1,0 +1,220 @@
+"""What the panels of a survey share: the axis of ANC, the lines at limits, names of lakes and of curves."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+import pandas as pd
+from matplotlib.axes import Axes
+from matplotlib.colors import to_rgb
+from matplotlib.figure import Figure
+from matplotlib.ticker import FixedLocator, FuncFormatter, MaxNLocator, NullFormatter
+from numpy.typing import NDArray
+
+from aquabuf.assess.lake.schemes import QUANTITIES, Scheme
+from aquabuf.report.labels import SIZE
+from aquabuf.report.style import FAINT, INK, short_name
+
+__all__ = ["GRAY", "Curve", "anc_axis", "anc_label", "dark_edge", "empty", "label_curves", "lake_names", "limit_lines",
+           "limits_of", "text_width"]
+
+Array = NDArray[np.float64]
+
+GRAY = "#777777"
+MICRO = 1e6
+PLAIN_TO = 500.0       # µeq/L, up to which the axis of ANC is plain
+LINEAR_BELOW = 100.0   # µeq/L, linear part of a wide axis
+LINEAR_DECADES = 1.5   # decades that half of it takes
+MARGIN = 0.04          # of an axis beyond the data
+LEAST_SPAN = 60.0      # µeq/L
+LETTER = 0.58          # width of a letter in type sizes
+ROW = 1.5              # height of a row of labels in type sizes
+LEVELS = (50.0, 40.0, 60.0, 30.0, 70.0, 20.0, 80.0, 12.0, 88.0)  # percent, where a curve may carry its name
+
+
+# ------------------------------------------------------------------ ANC
+
+
+def anc_axis(ax: Axes, values: Array, limits: Sequence[float] = ()) -> None:
+    """Horizontal axis of ANC [µeq/L] that holds values and limits: plain, or linear near zero and logarithmic beyond."""
+    known = values[np.isfinite(values)]
+    low, high = (float(f([*known, *limits] or [0.0])) for f in (np.min, np.max))
+    if max(-low, high) > PLAIN_TO:
+        _wide(ax, low, high)
+        return
+    middle, half = 0.5 * (low + high), max(0.5 * (high - low), 0.5 * LEAST_SPAN) * (1.0 + 2.0 * MARGIN)
+    ax.set_xlim(middle - half, middle + half)
+    ax.xaxis.set_major_locator(MaxNLocator(7, steps=[1, 2, 5, 10]))
+
+
+def _wide(ax: Axes, low: float, high: float) -> None:
+    ax.set_xscale("symlog", linthresh=LINEAR_BELOW, linscale=LINEAR_DECADES)
+    scale = ax.xaxis.get_transform()
+    a, b = scale.transform([low, high])
+    margin = MARGIN * (b - a)
+    ax.set_xlim(*scale.inverted().transform([a - margin, b + margin]))
+    left, right = ax.get_xlim()
+    powers = 10.0 ** np.arange(2, 8)
+    ticks = [t for t in (*(-powers[::-1]), 0.0, *powers) if left <= t <= right]
+    if -50.0 >= left and right < 100.0 * LINEAR_BELOW:  # there is room for a label between
+        ticks += [-50.0, 50.0]
+    between = [s * p * k for s in (-1.0, 1.0) for p in powers for k in range(2, 10)] + [-75.0, -25.0, 25.0, 75.0]
+    ax.xaxis.set_major_locator(FixedLocator(sorted(ticks)))
+    ax.xaxis.set_minor_locator(FixedLocator([t for t in between if left <= t <= right]))
+    ax.xaxis.set_major_formatter(FuncFormatter(lambda v, _: f"{v:,.0f}".replace("-", "−")))
+    ax.xaxis.set_minor_formatter(NullFormatter())
+
+
+def anc_label(results: pd.DataFrame) -> str:
+    """Name and unit of the ANC in use: its definition, or the most common of several."""
+    kinds = results.loc[results["anc_used_ueq_l"].notna(), "anc_used_from"].value_counts()
+    if not len(kinds):
+        return "ANC in use [µeq/L]"
+    return f"{kinds.index[0]} [µeq/L]" if len(kinds) == 1 else f"ANC in use, mostly {kinds.index[0]} [µeq/L]"
+
+
+# ------------------------------------------------------------------ limits
+
+
+def limits_of(scheme: Scheme) -> list[float]:
+    """Limits between the classes in the unit of results, from the worst to the best."""
+    return [c.upper * (1.0 if scheme.quantity == "ph" else MICRO) for c in scheme.classes[:-1]]
+
+
+def limit_lines(ax: Axes, scheme: Scheme, anc_limit_ueq_l: float, *, named: bool = True) -> None:
+    """Upright lines at the class limits, their values in the room above the data, and a dashed one at the ANC limit.
+
+    The limits of the axes must stand before; the vertical axis is stretched for the values.
+    """
+    limits = [] if scheme.quantity == "ph" else limits_of(scheme)
+    for x in limits:
+        ax.axvline(x, color=GRAY, lw=0.8, label="_class_limit", zorder=1.5)
+    if limits:
+        _values_above(ax, limits)
+    if np.isfinite(anc_limit_ueq_l):
+        ax.axvline(anc_limit_ueq_l, color=INK, lw=0.9, ls=(0, (4, 3)), label="_anc_limit", zorder=1.6)
+        if named:
+            ax.annotate(f"ANC limit {anc_limit_ueq_l:g}", (anc_limit_ueq_l, 0.02), (2.0, 0.0), rotation=90,
+                        xycoords=("data", "axes fraction"), textcoords="offset points", ha="left", va="bottom",
+                        fontsize=SIZE, color=INK)
+
+
+def _values_above(ax: Axes, limits: Sequence[float]) -> None:
+    """Limits as small numbers at the top, in as many rows as it takes to keep them apart."""
+    width, height = _inches(ax)
+    ends: list[float] = []
+    placed = []
+    for x in sorted(limits):
+        half = 0.5 * text_width(f"{x:g}") / width
+        at = float(_across(ax, np.array([x]))[0])
+        row = next((k for k, end in enumerate(ends) if at - half > end), len(ends))
+        ends[row:row + 1] = [at + half + 0.5 * SIZE / 72.0 / width]
+        placed.append((x, row))
+    step = ROW * SIZE / 72.0 / height
+    bottom, top = ax.get_ylim()
+    ax.set_ylim(bottom, bottom + (top - bottom) / (1.0 - step * len(ends)))
+    for x, row in placed:
+        ax.annotate(f"{x:g}".replace("-", "−"), (x, 1.0 - (row + 0.5) * step), xycoords=("data", "axes fraction"),
+                    ha="center", va="center", fontsize=SIZE, color=INK, zorder=4,
+                    bbox={"facecolor": "white", "edgecolor": "none", "pad": 0.8})
+
+
+def text_width(words: str, size: float = SIZE) -> float:
+    """About how wide some words are. [inches]"""
+    return LETTER * size / 72.0 * len(words)
+
+
+def _inches(ax: Axes) -> tuple[float, float]:
+    box = ax.get_position()
+    figure = ax.get_figure()
+    wide, high = figure.get_size_inches() if isinstance(figure, Figure) else (1.0, 1.0)
+    return box.width * wide, box.height * high
+
+
+def _across(ax: Axes, x: Array) -> Array:
+    """Places along the horizontal axis as shares of its length."""
+    scale = ax.xaxis.get_transform()
+    a, b = scale.transform(np.array(ax.get_xlim()))
+    return (scale.transform(x) - a) / (b - a)
+
+
+# ------------------------------------------------------------------ names
+
+
+def lake_names(results: pd.DataFrame) -> list[str]:
+    """Short name of each lake: its site where all of these differ, else its sample."""
+    for column in ("site", "sample_id"):
+        if column in results:
+            names = [short_name(name) for name in results[column]]
+            if all(name.strip() for name in names) and len(set(names)) == len(names):
+                return names
+    return [short_name(name) for name in results["sample_id"]]
+
+
+@dataclass(frozen=True, slots=True)
+class Curve:
+    """A rising curve of cumulative shares: its name and color, its values in order and their shares [%]."""
+
+    name: str
+    color: str
+    x: Array
+    share: Array
+    bold: bool = False
+
+    def at(self, percent: float) -> float:
+        """Value up to which the share goes."""
+        return float(self.x[min(np.searchsorted(self.share, percent), self.x.size - 1)])
+
+
+def label_curves(ax: Axes, curves: Sequence[Curve]) -> bool:
+    """Write each curve's name beside it, clear of all others. Where one finds no room nothing is written: False."""
+    boxes: list[tuple[float, float, float, float]] = []
+    for curve in curves:
+        box = next((b for b in _places(ax, curve, curves) if not any(_meet(b, other) for other in boxes)), None)
+        if box is None:
+            return False
+        boxes.append(box)
+    bottom, top = ax.get_ylim()
+    for curve, (left, _, low, high) in zip(curves, boxes, strict=True):
+        ax.text(left, (0.5 * (low + high) - bottom) / (top - bottom), curve.name, transform=ax.transAxes, va="center",
+                fontsize=SIZE, color=curve.color, parse_math=False, fontweight="bold" if curve.bold else "normal")
+    return True
+
+
+def _places(ax: Axes, curve: Curve, curves: Sequence[Curve]) -> list[tuple[float, float, float, float]]:
+    """Boxes beside the curve that meet no curve: left and right as shares of the axis, low and high in percent."""
+    width, height = _inches(ax)
+    bottom, top = ax.get_ylim()
+    half = 0.5 * ROW * SIZE / 72.0 / height * (top - bottom)
+    wide, gap = 1.1 * text_width(curve.name) / width, 0.4 * SIZE / 72.0 / width
+    found = []
+    for level in LEVELS:
+        low, high = level - half, level + half
+        spans = [_across(ax, np.array([c.at(low), c.at(high)])) for c in curves if c is not curve]
+        own = _across(ax, np.array([curve.at(low), curve.at(high)]))
+        for left in (own[1] + gap, own[0] - gap - wide):
+            clear = all(span[1] < left - gap or span[0] > left + wide + gap for span in spans)
+            if clear and left > 0.01 and left + wide < 0.99:
+                found.append((float(left), float(left + wide), low, high))
+    return found
+
+
+def _meet(a: tuple[float, ...], b: tuple[float, ...]) -> bool:
+    return a[0] < b[1] and b[0] < a[1] and a[2] < b[3] and b[2] < a[3]
+
+
+# ------------------------------------------------------------------ small things
+
+
+def dark_edge(color: str) -> tuple[float, ...]:
+    """A darker shade, for the edge of a mark on white."""
+    return tuple(0.6 * part for part in to_rgb(color))
+
+
+def empty(ax: Axes, words: str) -> Axes:
+    """Words in a panel that has nothing to show."""
+    ax.set(xticks=[], yticks=[])
+    ax.text(0.5, 0.5, words, transform=ax.transAxes, ha="center", va="center", color=GRAY, parse_math=False)
+    return ax
