@@ -23,7 +23,7 @@ def _thresholds(_: click.Context, option: click.Parameter, text: str | None) -> 
 @click.command()
 @click.argument("readings", type=click.Path(path_type=Path))
 @click.option("--out", "folder", type=click.Path(path_type=Path), required=True, help="Folder for the results.")
-@click.option("--map", "mapping", type=click.Path(path_type=Path), help="What the headers of the table mean (TOML).")
+@click.option("--map", "mapping", help="What the headers mean: a TOML file, or wqx for a long table of that exchange.")
 @click.option("--limits", type=click.Path(path_type=Path), help="Your own limits (TOML); they replace or add.")
 @click.option("--titrations", type=click.Path(path_type=Path),
               help="Titrations (as for `aquabuf titration`) that give the alkalinity of the samples they name.")
@@ -41,7 +41,7 @@ def _thresholds(_: click.Context, option: click.Parameter, text: str | None) -> 
               help="K1 and K2 of salt water.  [default: millero]")
 @click.option("--figure/--no-figure", default=True, help="Draw the figure.  [default: figure]")
 @click.option("--force", is_flag=True, help="Replace an earlier result in the folder.")
-def assess(readings: Path, folder: Path, mapping: Path | None, limits: Path | None, titrations: Path | None,
+def assess(readings: Path, folder: Path, mapping: str | None, limits: Path | None, titrations: Path | None,
            titration_samples: Path | None, titration_map: Path | None, titration_samples_map: Path | None, force: bool,
            figure: bool, thresholds: tuple[float, ...] | None, base_thresholds: tuple[float, ...] | None,
            **choices: object) -> None:

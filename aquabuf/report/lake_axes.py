@@ -13,23 +13,23 @@ from matplotlib.figure import Figure
 from matplotlib.ticker import FixedLocator, FuncFormatter, MaxNLocator, NullFormatter
 from numpy.typing import NDArray
 
-from aquabuf.assess.lake.schemes import QUANTITIES, Scheme
+from aquabuf.assess.lake.schemes import Scheme
 from aquabuf.report.labels import SIZE
-from aquabuf.report.style import FAINT, INK, short_name
+from aquabuf.report.style import INK, short_name
 
-__all__ = ["GRAY", "Curve", "anc_axis", "anc_label", "dark_edge", "empty", "label_curves", "lake_names", "limit_lines",
-           "limits_of", "text_width"]
+__all__ = ["GRAY", "MICRO", "Curve", "across", "anc_axis", "anc_label", "dark_edge", "empty", "label_curves",
+           "lake_names", "limit_lines", "limits_of", "text_width"]
 
 Array = NDArray[np.float64]
 
 GRAY = "#777777"
 MICRO = 1e6
 PLAIN_TO = 500.0       # µeq/L, up to which the axis of ANC is plain
-LINEAR_BELOW = 100.0   # µeq/L, linear part of a wide axis
-LINEAR_DECADES = 1.5   # decades that half of it takes
+LINEAR_BELOW = 50.0    # µeq/L, near linear part of a wide axis
 MARGIN = 0.04          # of an axis beyond the data
 LEAST_SPAN = 60.0      # µeq/L
 LETTER = 0.58          # width of a letter in type sizes
+TICK_SIZE = 9.0        # points
 ROW = 1.5              # height of a row of labels in type sizes
 LEVELS = (50.0, 40.0, 60.0, 30.0, 70.0, 20.0, 80.0, 12.0, 88.0)  # percent, where a curve may carry its name
 
@@ -38,7 +38,7 @@ LEVELS = (50.0, 40.0, 60.0, 30.0, 70.0, 20.0, 80.0, 12.0, 88.0)  # percent, wher
 
 
 def anc_axis(ax: Axes, values: Array, limits: Sequence[float] = ()) -> None:
-    """Horizontal axis of ANC [µeq/L] that holds values and limits: plain, or linear near zero and logarithmic beyond."""
+    """Horizontal axis of ANC [µeq/L] that holds values and limits: plain, or linear near zero and logarithmic far off."""
     known = values[np.isfinite(values)]
     low, high = (float(f([*known, *limits] or [0.0])) for f in (np.min, np.max))
     if max(-low, high) > PLAIN_TO:
@@ -50,18 +50,24 @@ def anc_axis(ax: Axes, values: Array, limits: Sequence[float] = ()) -> None:
 
 
 def _wide(ax: Axes, low: float, high: float) -> None:
-    ax.set_xscale("symlog", linthresh=LINEAR_BELOW, linscale=LINEAR_DECADES)
+    """An inverse hyperbolic sine: no kink where linear turns into logarithmic, so that curves keep their shape."""
+    ax.set_xscale("asinh", linear_width=LINEAR_BELOW)
     scale = ax.xaxis.get_transform()
-    a, b = scale.transform([low, high])
+    a, b = scale.transform(np.array([low, high]))
     margin = MARGIN * (b - a)
-    ax.set_xlim(*scale.inverted().transform([a - margin, b + margin]))
-    left, right = ax.get_xlim()
-    powers = 10.0 ** np.arange(2, 8)
-    ticks = [t for t in (*(-powers[::-1]), 0.0, *powers) if left <= t <= right]
-    if -50.0 >= left and right < 100.0 * LINEAR_BELOW:  # there is room for a label between
-        ticks += [-50.0, 50.0]
-    between = [s * p * k for s in (-1.0, 1.0) for p in powers for k in range(2, 10)] + [-75.0, -25.0, 25.0, 75.0]
-    ax.xaxis.set_major_locator(FixedLocator(sorted(ticks)))
+    left, right = scale.inverted().transform(np.array([a - margin, b + margin]))
+    ax.set_xlim(left, right)
+    powers = 10.0 ** np.arange(1, 8)
+    wanted = [0.0, *(sign * p for p in powers[1:] for sign in (1.0, -1.0)),
+              *(sign * k * p for p in powers for k in (5.0, 2.0) for sign in (1.0, -1.0))]
+    width, _ = _inches(ax)
+    kept: list[tuple[float, float]] = []
+    for tick in (t for t in wanted if left <= t <= right):
+        at, half = across(ax, tick), 0.5 * text_width(f"{tick:,.0f} ", TICK_SIZE) / width
+        if all(abs(at - across(ax, t)) > half + other for t, other in kept):
+            kept.append((tick, half))
+    between = [sign * k * p for p in powers for k in range(1, 10) for sign in (1.0, -1.0)]
+    ax.xaxis.set_major_locator(FixedLocator(sorted(t for t, _ in kept)))
     ax.xaxis.set_minor_locator(FixedLocator([t for t in between if left <= t <= right]))
     ax.xaxis.set_major_formatter(FuncFormatter(lambda v, _: f"{v:,.0f}".replace("-", "−")))
     ax.xaxis.set_minor_formatter(NullFormatter())
@@ -108,7 +114,7 @@ def _values_above(ax: Axes, limits: Sequence[float]) -> None:
     placed = []
     for x in sorted(limits):
         half = 0.5 * text_width(f"{x:g}") / width
-        at = float(_across(ax, np.array([x]))[0])
+        at = across(ax, x)
         row = next((k for k, end in enumerate(ends) if at - half > end), len(ends))
         ends[row:row + 1] = [at + half + 0.5 * SIZE / 72.0 / width]
         placed.append((x, row))
@@ -133,11 +139,10 @@ def _inches(ax: Axes) -> tuple[float, float]:
     return box.width * wide, box.height * high
 
 
-def _across(ax: Axes, x: Array) -> Array:
-    """Places along the horizontal axis as shares of its length."""
-    scale = ax.xaxis.get_transform()
-    a, b = scale.transform(np.array(ax.get_xlim()))
-    return (scale.transform(x) - a) / (b - a)
+def across(ax: Axes, x: float) -> float:
+    """Place along the horizontal axis as a share of its length."""
+    a, b, at = ax.xaxis.get_transform().transform(np.array([*ax.get_xlim(), x]))
+    return float((at - a) / (b - a))
 
 
 # ------------------------------------------------------------------ names
@@ -179,7 +184,8 @@ def label_curves(ax: Axes, curves: Sequence[Curve]) -> bool:
     bottom, top = ax.get_ylim()
     for curve, (left, _, low, high) in zip(curves, boxes, strict=True):
         ax.text(left, (0.5 * (low + high) - bottom) / (top - bottom), curve.name, transform=ax.transAxes, va="center",
-                fontsize=SIZE, color=curve.color, parse_math=False, fontweight="bold" if curve.bold else "normal")
+                fontsize=SIZE, color=curve.color, parse_math=False, fontweight="bold" if curve.bold else "normal",
+                bbox={"facecolor": "white", "edgecolor": "none", "alpha": 0.85, "pad": 0.5})
     return True
 
 
@@ -192,8 +198,8 @@ def _places(ax: Axes, curve: Curve, curves: Sequence[Curve]) -> list[tuple[float
     found = []
     for level in LEVELS:
         low, high = level - half, level + half
-        spans = [_across(ax, np.array([c.at(low), c.at(high)])) for c in curves if c is not curve]
-        own = _across(ax, np.array([curve.at(low), curve.at(high)]))
+        spans = [(across(ax, c.at(low)), across(ax, c.at(high))) for c in curves if c is not curve]
+        own = (across(ax, curve.at(low)), across(ax, curve.at(high)))
         for left in (own[1] + gap, own[0] - gap - wide):
             clear = all(span[1] < left - gap or span[0] > left + wide + gap for span in spans)
             if clear and left > 0.01 and left + wide < 0.99:

@@ -12,6 +12,7 @@ from aquabuf.assess.sample.quality import allowed, check_facts
 from aquabuf.assess.uncertainty import COVERAGE
 from aquabuf.chem.gases import AIR_CO2_PPM, AIR_CO2_YEAR
 from aquabuf.chem.transfer import transfer_relations
+from aquabuf.report import lake_answer_blocks as answer_blocks
 from aquabuf.report import lake_blocks as blocks
 from aquabuf.report.lake_blocks import LakeRun, block
 from aquabuf.report.summary import cautions
@@ -65,11 +66,11 @@ def _joined(parts: Iterable[str]) -> str:
 
 def _answers(run: LakeRun) -> list[str]:
     return [
-        blocks.tolerance(run),
-        blocks.critical_loads(run),
-        blocks.episodes(run),
-        blocks.carbon(run),
-        blocks.liming(run),
+        answer_blocks.tolerance(run),
+        answer_blocks.critical_loads(run),
+        answer_blocks.episodes(run),
+        answer_blocks.carbon(run),
+        answer_blocks.liming(run),
     ]
 
 

@@ -18,8 +18,7 @@ from aquabuf.assess.sample.assess import assess
 from aquabuf.assess.sample.columns import limit_quantities
 from aquabuf.assess.sample.titrated import Titrated, titrated_by
 from aquabuf.errors import FileError, InputError
-from aquabuf.readings.mapping import read_map
-from aquabuf.readings.reader import iter_readings
+from aquabuf.readings.source import open_any, resolve_map
 from aquabuf.readings.titration.paths import TitrationFiles
 from aquabuf.report.files import OutputFolder
 from aquabuf.report.summary import summary_text
@@ -37,10 +36,12 @@ CHUNK_ROWS = 16_384      # long enough for the fixed cost of a piece not to coun
 ALL_CHECKS_UP_TO = 20_000  # samples; beyond, checks.csv holds the unmet ones only
 
 
-def assess_file(path: Path, folder: Path, options: Options, *, mapping: Path | None = None, limits: Path | None = None,
-                titrations: TitrationFiles | None = None, force: bool = False, figure: bool = True,
-                notify: Callable[[str], None] = lambda text: None) -> str:
+def assess_file(path: Path, folder: Path, options: Options, *, mapping: str | Path | None = None,
+                limits: Path | None = None, titrations: TitrationFiles | None = None, force: bool = False,
+                figure: bool = True, notify: Callable[[str], None] = lambda text: None) -> str:
     """Assess the table at `path`, write OUTPUT_FILES to `folder`, and return the summary text.
+
+    `mapping` is a map file or the name of a shipped map.
 
     `titrations` give the alkalinity of the samples they name, in place of any that the table has. `notify` is told
     beforehand when the draws of a long table will take long.
@@ -48,12 +49,12 @@ def assess_file(path: Path, folder: Path, options: Options, *, mapping: Path | N
     Raises InputError or FileError where the table as a whole cannot be used or no row is accepted; rejected.csv is
     still written then.
     """
-    table_map = None if mapping is None else read_map(mapping)
+    map_file = None if mapping is None else resolve_map(mapping)
     rules = read_limits(limits, limit_quantities(options))
     hashes = {"readings": sha256(path)} | {
-        name: sha256(p) for name, p in (("map", mapping), ("limits", limits)) if p is not None}
+        name: sha256(p) for name, p in (("map", map_file), ("limits", limits)) if p is not None}
     hashes |= {f"titration {name}": sha256(p) for name, p in (titrations.given() if titrations else {}).items()}
-    pieces = iter_readings(path, table_map, CHUNK_ROWS)
+    pieces = open_any(path, map_file, CHUNK_ROWS)
     titrated = Titrated() if titrations is None else titrated_by(titrations)
     tally, few = Tally(), _fewer_rows_than(path, ALL_CHECKS_UP_TO)
     if not few and options.draws:

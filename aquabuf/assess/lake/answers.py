@@ -31,6 +31,7 @@ from aquabuf.assess.lake.event_file import water_of_event
 from aquabuf.assess.lake.inputs import IONS, Lakes
 from aquabuf.assess.lake.liming import anc_for_ph, product_g_m3, product_kg, reacidification_yr
 from aquabuf.assess.lake.options import LakeOptions, Rules
+from aquabuf.assess.lake.sea_salt import NO_TRACER
 from aquabuf.chem.transfer import transfer_velocity_m_d
 
 __all__ = ["ANC_KINDS", "Answers", "Episode", "Plan", "answers", "closed_lake", "plan_of", "with_carbon"]
@@ -98,7 +99,8 @@ def answers(lakes: Lakes, plan: Plan, rules: Rules, options: LakeOptions, *, dra
     """All numbers of the lakes. `draws` is the number of draws that `lakes` hold, 0 for the readings themselves."""
     b = budget(lakes, plan.kinds, ammonium=options.ammonium)
     c = chemistry(lakes, b, plan.sources, options.thresholds)
-    water, fallen = hydrology(lakes), deposition(lakes)
+    water = hydrology(lakes)
+    fallen = deposition(lakes, keep_sea_salt=rules.critical.tracer == NO_TRACER)
     used = np.choose(np.minimum(plan.used, 2)[:, None], np.broadcast_arrays(b.gran, b.alkalinity, b.charge))
     load = critical_load({ion: lakes.charge(ion) for ion in IONS}, lakes.get("runoff_m_yr"), rules.critical,
                          sulfur_deposition_eq_m2_yr=fallen.sulfur)

@@ -23,12 +23,12 @@ from aquabuf.assess.lake.classes import (
     second_class,
     values_used,
 )
-from aquabuf.assess.lake.co2 import stateable
+from aquabuf.assess.lake.co2 import NEAL_AIR_ATM, neal_excess_temperature, neal_left_out_share, stateable
 from aquabuf.assess.lake.columns import AS_GIVEN, lake_columns
 from aquabuf.assess.lake.critical_variants import sensitivity
 from aquabuf.assess.lake.draws import ORGANIC_U_REL, Spread, spread
 from aquabuf.assess.lake.episode import DEPOSITION, balance_of, deposition_words, mix
-from aquabuf.assess.lake.inputs import IONS, Lakes, setting_of
+from aquabuf.assess.lake.inputs import IONS, Lakes, as_recorded, setting_of, words_of
 from aquabuf.assess.lake.liming import after_liming, over_liming_words
 from aquabuf.assess.lake.options import LakeOptions, Rules
 from aquabuf.assess.lake.quality import HISTORY_COLUMNS, IonSums, ion_sums, lake_checks, own_history
@@ -51,6 +51,7 @@ Array = NDArray[np.float64]
 Words = NDArray[np.object_]
 
 BUBBLED_T_C, BUBBLED_U_PH = 22.5, 0.05  # of a laboratory where air is bubbled through; what 5 °C either way move pH by
+NEAL_LEAVES_OUT = 0.1                   # share of carbonate and hydroxide from which the relation is not used
 CONDUCTIVITY_ROOM = 0.02                # relative allowance of the conductivity meter for what missing ions may carry
 EXCEEDED = "critical load exceeded"     # limit whose probability stands in a column of its own
 NOTHING = ("no ANC, alkalinity, complete major ions or pH", "a lake needs ANC, alkalinity, all of the major ions, or "
@@ -110,12 +111,12 @@ def assess_lakes(readings: Readings, rules: Rules, options: LakeOptions, limits:
     good = _usable(values, readings.frame)
     keep = np.flatnonzero(good)
     frame = readings.frame.iloc[keep].reset_index(drop=True)
-    values = {name: v[keep] for name, v in values.items()}
+    values = as_recorded({name: v[keep] for name, v in values.items()}, words_of(frame, "filtered"),
+                         words_of(frame, "ph_kind"))
     u = uncertainties(values, readings.headers)
     setting = setting_of(values, options.air_co2_ppm, options.carbonic)
     lakes = Lakes({name: v[:, None] for name, v in values.items()}, setting, rules.organic, np.ones((1, 1)))
-    method = _words_of(frame, "anc_method")
-    titrated = _words_of(frame, TITRATED_BY)
+    method, titrated = words_of(frame, "anc_method"), words_of(frame, TITRATED_BY)
     plan = plan_of(lakes, anc_kinds(np.where(titrated != "", "gran", method)), options)
     found = answers(lakes, plan, rules, options)
     figures: dict[str, NDArray] = {name: np.broadcast_to(v, (keep.size, 1))[:, 0].copy()
@@ -123,7 +124,7 @@ def assess_lakes(readings: Readings, rules: Rules, options: LakeOptions, limits:
     figures["event_fraction_to_limit"][np.isinf(figures["event_fraction_to_limit"])] = np.nan
     around = spread(values, u, setting, plan, rules, options, limits)
     _add_ions(figures, lakes, u, found, rules)
-    _add_carbon(figures, around, lakes, plan, found)
+    _add_carbon(figures, around, lakes, plan, found, words_of(frame, "ph_kind"))
     sums = ion_sums(lakes, found.chemistry)
     _add_quality(figures, lakes, found, sums, values)
     index, used = _classes(figures, found, rules, around)
@@ -151,10 +152,6 @@ def assess_lakes(readings: Readings, rules: Rules, options: LakeOptions, limits:
         notes=notes_on_file(readings),
         flags=Counter(zip(readings.flags["what"], readings.flags["column"], strict=True)),
         rounding=roundings(values, u, readings.headers), duplicates=duplicate_rows(readings.rejected))
-
-
-def _words_of(frame: pd.DataFrame, name: str) -> Words:
-    return frame[name].to_numpy(dtype=object) if name in frame else np.full(len(frame), "", dtype=object)
 
 
 def _usable(values: Mapping[str, Array], frame: pd.DataFrame) -> NDArray[np.bool_]:
@@ -201,7 +198,7 @@ def _add_ions(figures: dict, lakes: Lakes, u: Mapping[str, Array], found: Answer
     figures["anc_gap_u_ueq_l"] = np.where(np.isfinite(figures["anc_gap_ueq_l"]), spread_u, np.nan)
 
 
-def _add_carbon(figures: dict, around: Spread, lakes: Lakes, plan: Plan, found: Answers) -> None:
+def _add_carbon(figures: dict, around: Spread, lakes: Lakes, plan: Plan, found: Answers, ph_kind: Words) -> None:
     """Take the CO2 pressure, and what rests on it, away where it cannot be stated, and say why."""
     c = found.chemistry
     n = c.pco2_atm.shape[0]
@@ -210,11 +207,21 @@ def _add_carbon(figures: dict, around: Spread, lakes: Lakes, plan: Plan, found: 
     of = stateable(c.pco2_atm[:, 0], of_titration=plan.sources[1] == 2, ph=c.ph[:, 0], carbonate_eq_l=c.carbonate[:, 0],
                    organic_eq_l=counted_organic[:, 0], low_atm=1e-6 * around.low.get("pco2_uatm", none),
                    high_atm=1e-6 * around.high.get("pco2_uatm", none))
-    for name in ("pco2_uatm", "pco2_air_ratio", "co2_flux_mmol_m2_d"):
+    figures["pco2_neal_uatm"] = 1e6 * _neal(lakes, found)
+    for name in ("pco2_uatm", "pco2_air_ratio", "co2_flux_mmol_m2_d", "pco2_neal_uatm"):
         for store in (figures, around.low, around.high):
             if name in store:
                 store[name] = np.where(of.mask, store[name], np.nan)
-    figures["pco2_from"] = np.where(of.mask, carbon_words(plan), of.words)
+    figures["pco2_from"] = np.where(of.mask, carbon_words(plan, ph_kind), of.words)
+
+
+def _neal(lakes: Lakes, found: Answers) -> Array:
+    """CO2 pressure after Neal et al. from titrated ANC and pH, where what they leave out is small. [atm]"""
+    b, ph, t_c = found.budget, lakes.get("ph"), lakes.setting.at_meter.t_c
+    titrated = np.where(np.isfinite(b.gran), b.gran, b.alkalinity)
+    with np.errstate(invalid="ignore"):
+        small = neal_left_out_share(titrated, ph, t_c) <= NEAL_LEAVES_OUT
+    return np.where(small, NEAL_AIR_ATM * neal_excess_temperature(titrated, ph, t_c), np.nan)[:, 0]
 
 
 def _add_quality(figures: dict, lakes: Lakes, found: Answers, sums: IonSums, values: Mapping[str, Array]) -> None:
@@ -273,10 +280,11 @@ def _lime_words(lakes: Lakes, found: Answers, rules: Rules, figures: Mapping[str
 def _simple_lake(lakes: Lakes, found: Answers) -> dict[str, NDArray]:
     """Whether sulfur and nitrogen together exceed the simple lake form, where its readings are there."""
     share = lake_share(lakes.get("lake_area_m2"), lakes.get("watershed_area_m2"))
-    worse, _ = at_both_ends(found.critical.load, lakes.get("nitrogen_sink_eq_m2_yr"), lakes.get("runoff_m_yr"), share,
-                            found.deposition.sulfur, found.deposition.nitrogen)
+    worse, better = at_both_ends(found.critical.load, lakes.get("nitrogen_sink_eq_m2_yr"), lakes.get("runoff_m_yr"),
+                                 share, found.deposition.sulfur, found.deposition.nitrogen)
     known = np.isfinite(worse.excess)[:, 0]
-    return {"simple_lake_exceeded": worded(known.size, (known, "no"), (worse.outside[:, 0], "yes")),
+    outside = (known, "no"), (worse.outside[:, 0], "only with slow nitrogen uptake"), (better.outside[:, 0], "yes")
+    return {"simple_lake_exceeded": worded(known.size, *outside),
             "simple_lake_sulfur_cut_meq_m2_yr": 1e3 * worse.sulfur_cut[:, 0]}
 
 

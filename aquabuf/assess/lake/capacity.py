@@ -62,8 +62,8 @@ class Deposition:
     counted: NDArray[np.object_]
 
 
-def deposition(lakes: Lakes) -> Deposition:
-    """Deposition of each lake.
+def deposition(lakes: Lakes, *, keep_sea_salt: bool = False) -> Deposition:
+    """Deposition of each lake; its sulfur with the sea salt left in if that is kept in the water too.
 
     Ammonium counts as acid because plants and microbes that take it up or oxidize it give off H+, one more than it
     bound in the air; nitrate counts because its H+ came with it. What soils and plants hold back is not taken off, so
@@ -72,7 +72,7 @@ def deposition(lakes: Lakes) -> Deposition:
     def load(name: str) -> Array:
         return lakes.get(f"{name}_deposition_eq_m2_yr")
 
-    chloride = np.nan_to_num(load("chloride"))
+    chloride = 0.0 if keep_sea_salt else np.nan_to_num(load("chloride"))
     sulfur = load("sulfur") - equivalents_per_chloride()["sulfate"] * chloride
     nitrate, ammonium, cations = load("nitrate"), load("ammonium"), load("base_cation")
     net = sulfur + np.nan_to_num(nitrate) + np.nan_to_num(ammonium) - np.nan_to_num(cations)

@@ -10,6 +10,7 @@ from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
+import pandas as pd
 from numpy.typing import NDArray
 
 from aquabuf.assess.sample.inputs import ionic_strength, pressure, reading
@@ -19,7 +20,8 @@ from aquabuf.engine.conditions import Conditions, conditions
 from aquabuf.engine.lake import LakeBalance
 from aquabuf.units import substances
 
-__all__ = ["ANION_NAMES", "BASE_CATIONS", "CATION_NAMES", "IONS", "STRONG_ANIONS", "Lakes", "Setting", "setting_of"]
+__all__ = ["ANION_NAMES", "BASE_CATIONS", "CATION_NAMES", "IONS", "STRONG_ANIONS", "Lakes", "Setting", "as_recorded",
+           "setting_of", "words_of"]
 
 Array = NDArray[np.float64]
 
@@ -52,6 +54,39 @@ class Setting:
 def _take(c: Conditions, rows: Any) -> Conditions:
     fields = {n: getattr(c, n)[rows] for n in c.__dataclass_fields__ if n != "_cache"}
     return Conditions(**fields)
+
+
+def words_of(frame: pd.DataFrame, name: str) -> NDArray[np.object_]:
+    """A column of words; empty where it was not given."""
+    return frame[name].to_numpy(dtype=object) if name in frame else np.full(len(frame), "", dtype=object)
+
+
+def as_recorded(values: Mapping[str, Array], filtered: NDArray[np.object_], ph_kind: NDArray[np.object_],
+                ) -> dict[str, Array]:
+    """Values under the names that their record asks for.
+
+    A titration of a filtered sample is an alkalinity and one of a whole sample an ANC, whichever column it came in; a
+    pH read after air was bubbled through is no pH of the lake.
+    """
+    out = dict(values)
+    for words, source, target in (("yes", "anc", "alkalinity"), ("no", "alkalinity", "anc")):
+        _move(out, filtered == words, f"{source}_eq_l", f"{target}_eq_l", f"{source}_u_eq_l", f"{target}_u_eq_l")
+    _move(out, ph_kind == "air_equilibrated", "ph", "ph_air_equilibrated", "ph_u", "ph_air_equilibrated_u")
+    return out
+
+
+def _move(values: dict[str, Array], rows: NDArray[np.bool_], source: str, target: str, source_u: str, target_u: str,
+          ) -> None:
+    """Move values with their uncertainty to another name, where that has none; they leave the first name anyway."""
+    if source not in values or not rows.any():
+        return
+    nothing = np.full(rows.shape, np.nan)
+    there = values.get(target, nothing)
+    moved = rows & np.isnan(there)
+    for name, new in ((source, target), (source_u, target_u)):
+        old, have = values.get(name, nothing), values.get(new, nothing)
+        values[new] = np.where(moved, old, have)
+        values[name] = np.where(moved, np.nan, old)
 
 
 def setting_of(values: Mapping[str, Array], air_co2_ppm: float, carbonic: str = "millero") -> Setting:

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from aquabuf.arrays import worded
 from aquabuf.assess.lake.answers import ANC_KINDS, Answers, Plan
 from aquabuf.assess.lake.budget import NEEDED
-from aquabuf.assess.lake.chemistry import ANC_SOURCES, CARBON_SOURCES
+from aquabuf.assess.lake.chemistry import CARBON_SOURCES
 from aquabuf.assess.lake.inputs import Lakes
 
 __all__ = ["anc_used_words", "carbon_words", "charge_form_words", "gap_words", "left_out_words"]
@@ -92,14 +92,12 @@ def charge_form_words(answers: Answers, computed: NDArray[np.bool_]) -> Words:
                   (known & computed & np.isnan(b.charge_bare)[:, 0], "as given"))
 
 
-def carbon_words(plan: Plan) -> Words:
+def carbon_words(plan: Plan, ph_kind: Words) -> Words:
     """What the carbon of each lake rests on."""
-    return worded(plan.sources[1].size, *((plan.sources[1] == k, name) for k, name in enumerate(CARBON_SOURCES)))
-
-
-def chemistry_words(plan: Plan) -> Words:
-    """What the open answers of each lake rest on."""
-    return worded(plan.sources[0].size, *((plan.sources[0] == k, name) for k, name in enumerate(ANC_SOURCES)))
+    out = worded(plan.sources[1].size, *((plan.sources[1] == k, name) for k, name in enumerate(CARBON_SOURCES)))
+    lost = (ph_kind == "open_bottle") & (plan.sources[1] == CARBON_SOURCES.index("pH and ANC"))
+    out[lost] += "; pH of an open bottle, which has lost CO2: too low"
+    return out
 
 
 def gap_words(columns: Mapping[str, NDArray]) -> Words:
