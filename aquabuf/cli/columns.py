@@ -13,12 +13,16 @@ __all__ = ["columns"]
 @click.argument("names", nargs=-1)
 @click.option("--results", is_flag=True, help="Show the columns of the results instead.")
 @click.option("--titration", is_flag=True, help="Show the columns of titrations (with --results: of alkalinity.csv).")
-def columns(names: tuple[str, ...], results: bool, titration: bool) -> None:
+@click.option("--lake", is_flag=True, help="With --results: those of `aquabuf lake`, which reads the same readings.")
+def columns(names: tuple[str, ...], results: bool, titration: bool, lake: bool) -> None:
     """Print the columns that a table of readings may have; name some to see their units, headers and ranges."""
+    if lake and titration:
+        raise click.UsageError("--lake and --titration must not come together. Drop one.")
     if results:
-        from aquabuf.report.columns import result_columns_text, titration_columns_text
+        from aquabuf.report.columns import lake_columns_text, result_columns_text, titration_columns_text
 
-        click.echo(titration_columns_text() if titration else result_columns_text())
+        text = titration_columns_text if titration else lake_columns_text if lake else result_columns_text
+        click.echo(text())
     else:
         from aquabuf.readings.listing import columns_text
         from aquabuf.readings.schema import titration_quantities

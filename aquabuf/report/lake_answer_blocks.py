@@ -8,6 +8,7 @@ import pandas as pd
 
 from aquabuf.assess.lake.columns import TO_PH_6
 from aquabuf.report.lake_blocks import LakeRun, block, figure_or_dash
+from aquabuf.report.summary import plural
 
 __all__ = ["carbon", "critical_loads", "episodes", "liming", "tolerance"]
 
@@ -46,7 +47,7 @@ def critical_loads(run: LakeRun) -> str:
     lines = [
         f"Critical load: median {load.median():.0f} meq/m²/yr ({load.quantile(0.1):.0f} to {load.quantile(0.9):.0f} "
         f"from "
-        f"the 10th to the 90th percentile of {int(load.notna().sum()):,} lakes)."
+        f"the 10th to the 90th percentile of {plural(int(load.notna().sum()), 'lake')})."
     ]
     if over.notna().any():
         known = over.notna()
@@ -106,7 +107,8 @@ def carbon(run: LakeRun) -> str:
     if stated.any():
         ratio = t["pco2_air_ratio"][stated]
         lines.append(
-            f"CO2 pressure is stated for {int(stated.sum()):,} lakes: median {t['pco2_uatm'].median():.0f} µatm; "
+            f"CO2 pressure is stated for {plural(int(stated.sum()), 'lake')}: median "
+            f"{t['pco2_uatm'].median():.0f} µatm; "
             f"{int((ratio > 1).sum()):,} of them hold more than air does."
         )
         flux = t["co2_flux_mmol_m2_d"].dropna()
@@ -118,7 +120,7 @@ def carbon(run: LakeRun) -> str:
 
 def _kind_of_refusal(words: str) -> str:
     """The reason without the figures of the single lake."""
-    text = words.removeprefix("not stated: ").split(";")[0]
+    text = words.removeprefix("not stated: ").split(";")[0].replace("more than ", "")
     return " ".join(
         "..." if any(ch.isdigit() for ch in word) and not word.startswith("(") else word
         for word in text.split(" (")[0].split()
@@ -135,7 +137,8 @@ def liming(run: LakeRun) -> str:
     rules = run.found.rules
     target = f"pH {o.lime_ph:g} at air" if o.lime_ph is not None else f"an ANC of {o.lime_anc_ueq_l:g} µeq/L"
     lines = [
-        f"{len(need):,} lakes are below {target}. Dose: median {need['lime_g_m3'].median():.1f} g/m³ of "
+        f"{plural(len(need), 'lake')} {'is' if len(need) == 1 else 'are'} below {target}. "
+        f"Dose: median {need['lime_g_m3'].median():.1f} g/m³ of "
         f"{rules.lime.name} "
         f"({100 * rules.lime.dissolved_usual:g} % dissolving; {100 * rules.lime.dissolved_low:g} to "
         f"{100 * rules.lime.dissolved_high:g} % in liming tables)."

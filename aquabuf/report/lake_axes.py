@@ -1,29 +1,29 @@
-"""What the panels of a survey share: the axis of ANC, the lines at limits, names of lakes and of curves."""
+"""What the panels of a survey share: the axis of ANC, the lines at limits, and names beside curves."""
 
 from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 import pandas as pd
 from matplotlib.axes import Axes
-from matplotlib.colors import to_rgb
 from matplotlib.figure import Figure
 from matplotlib.ticker import FixedLocator, FuncFormatter, MaxNLocator, NullFormatter
 from numpy.typing import NDArray
 
+from aquabuf.assess.lake.classes import class_names, classify
 from aquabuf.assess.lake.schemes import Scheme
 from aquabuf.report.labels import SIZE
-from aquabuf.report.style import INK, short_name
+from aquabuf.report.lake_marks import MICRO, limits_of
+from aquabuf.report.style import GRAY, INK
 
-__all__ = ["GRAY", "MICRO", "Curve", "across", "anc_axis", "anc_label", "dark_edge", "empty", "label_curves",
-           "lake_names", "limit_lines", "limits_of", "text_width"]
+__all__ = ["WHITE", "Curve", "across", "anc_axis", "anc_kind", "anc_label", "label_curves", "limit_lines", "text_width"]
 
 Array = NDArray[np.float64]
 
-GRAY = "#777777"
-MICRO = 1e6
+WHITE: Any = {"facecolor": "white", "edgecolor": "none", "alpha": 0.85}  # behind words
 PLAIN_TO = 500.0       # µeq/L, up to which the axis of ANC is plain
 LINEAR_BELOW = 50.0    # µeq/L, near linear part of a wide axis
 MARGIN = 0.04          # of an axis beyond the data
@@ -38,7 +38,7 @@ LEVELS = (50.0, 40.0, 60.0, 30.0, 70.0, 20.0, 80.0, 12.0, 88.0)  # percent, wher
 
 
 def anc_axis(ax: Axes, values: Array, limits: Sequence[float] = ()) -> None:
-    """Horizontal axis of ANC [µeq/L] that holds values and limits: plain, or linear near zero and logarithmic far off."""
+    """Horizontal axis of ANC [µeq/L] that holds values and limits: plain, or linear near zero and logarithmic away."""
     known = values[np.isfinite(values)]
     low, high = (float(f([*known, *limits] or [0.0])) for f in (np.min, np.max))
     if max(-low, high) > PLAIN_TO:
@@ -73,20 +73,24 @@ def _wide(ax: Axes, low: float, high: float) -> None:
     ax.xaxis.set_minor_formatter(NullFormatter())
 
 
-def anc_label(results: pd.DataFrame) -> str:
-    """Name and unit of the ANC in use: its definition, or the most common of several."""
+def anc_kind(results: pd.DataFrame) -> str:
+    """The most common definition of the ANC in use, in words."""
     kinds = results.loc[results["anc_used_ueq_l"].notna(), "anc_used_from"].value_counts()
-    if not len(kinds):
-        return "ANC in use [µeq/L]"
-    return f"{kinds.index[0]} [µeq/L]" if len(kinds) == 1 else f"ANC in use, mostly {kinds.index[0]} [µeq/L]"
+    return str(kinds.index[0]) if len(kinds) else "ANC"
+
+
+def anc_label(results: pd.DataFrame, scheme: Scheme) -> str:
+    """Name and unit of the ANC in use: its definition, or the most common of several; whether classes rest on it."""
+    used = results[results["anc_used_ueq_l"].notna()]
+    kind = anc_kind(results)
+    label = f"{kind if (used['anc_used_from'] == kind).all() else f'ANC in use, mostly {kind}'} [µeq/L]"
+    if scheme.quantity == "ph":
+        return label
+    of_used = class_names(scheme, classify(scheme, used["anc_used_ueq_l"].to_numpy(dtype=float) / MICRO))
+    return f"{label}; classes rest on another" if (of_used != used["class"].to_numpy()).any() else label
 
 
 # ------------------------------------------------------------------ limits
-
-
-def limits_of(scheme: Scheme) -> list[float]:
-    """Limits between the classes in the unit of results, from the worst to the best."""
-    return [c.upper * (1.0 if scheme.quantity == "ph" else MICRO) for c in scheme.classes[:-1]]
 
 
 def limit_lines(ax: Axes, scheme: Scheme, anc_limit_ueq_l: float, *, named: bool = True) -> None:
@@ -104,7 +108,7 @@ def limit_lines(ax: Axes, scheme: Scheme, anc_limit_ueq_l: float, *, named: bool
         if named:
             ax.annotate(f"ANC limit {anc_limit_ueq_l:g}", (anc_limit_ueq_l, 0.02), (2.0, 0.0), rotation=90,
                         xycoords=("data", "axes fraction"), textcoords="offset points", ha="left", va="bottom",
-                        fontsize=SIZE, color=INK)
+                        fontsize=SIZE, color=INK, zorder=4, bbox=WHITE | {"pad": 0.5})
 
 
 def _values_above(ax: Axes, limits: Sequence[float]) -> None:
@@ -123,8 +127,7 @@ def _values_above(ax: Axes, limits: Sequence[float]) -> None:
     ax.set_ylim(bottom, bottom + (top - bottom) / (1.0 - step * len(ends)))
     for x, row in placed:
         ax.annotate(f"{x:g}".replace("-", "−"), (x, 1.0 - (row + 0.5) * step), xycoords=("data", "axes fraction"),
-                    ha="center", va="center", fontsize=SIZE, color=INK, zorder=4,
-                    bbox={"facecolor": "white", "edgecolor": "none", "pad": 0.8})
+                    ha="center", va="center", fontsize=SIZE, color=INK, zorder=4, bbox=WHITE | {"pad": 0.8})
 
 
 def text_width(words: str, size: float = SIZE) -> float:
@@ -148,16 +151,6 @@ def across(ax: Axes, x: float) -> float:
 # ------------------------------------------------------------------ names
 
 
-def lake_names(results: pd.DataFrame) -> list[str]:
-    """Short name of each lake: its site where all of these differ, else its sample."""
-    for column in ("site", "sample_id"):
-        if column in results:
-            names = [short_name(name) for name in results[column]]
-            if all(name.strip() for name in names) and len(set(names)) == len(names):
-                return names
-    return [short_name(name) for name in results["sample_id"]]
-
-
 @dataclass(frozen=True, slots=True)
 class Curve:
     """A rising curve of cumulative shares: its name and color, its values in order and their shares [%]."""
@@ -170,7 +163,7 @@ class Curve:
 
     def at(self, percent: float) -> float:
         """Value up to which the share goes."""
-        return float(self.x[min(np.searchsorted(self.share, percent), self.x.size - 1)])
+        return float(self.x[min(int(np.searchsorted(self.share, percent)), self.x.size - 1)])
 
 
 def label_curves(ax: Axes, curves: Sequence[Curve]) -> bool:
@@ -185,7 +178,7 @@ def label_curves(ax: Axes, curves: Sequence[Curve]) -> bool:
     for curve, (left, _, low, high) in zip(curves, boxes, strict=True):
         ax.text(left, (0.5 * (low + high) - bottom) / (top - bottom), curve.name, transform=ax.transAxes, va="center",
                 fontsize=SIZE, color=curve.color, parse_math=False, fontweight="bold" if curve.bold else "normal",
-                bbox={"facecolor": "white", "edgecolor": "none", "alpha": 0.85, "pad": 0.5})
+                bbox=WHITE | {"pad": 0.5})
     return True
 
 
@@ -209,18 +202,3 @@ def _places(ax: Axes, curve: Curve, curves: Sequence[Curve]) -> list[tuple[float
 
 def _meet(a: tuple[float, ...], b: tuple[float, ...]) -> bool:
     return a[0] < b[1] and b[0] < a[1] and a[2] < b[3] and b[2] < a[3]
-
-
-# ------------------------------------------------------------------ small things
-
-
-def dark_edge(color: str) -> tuple[float, ...]:
-    """A darker shade, for the edge of a mark on white."""
-    return tuple(0.6 * part for part in to_rgb(color))
-
-
-def empty(ax: Axes, words: str) -> Axes:
-    """Words in a panel that has nothing to show."""
-    ax.set(xticks=[], yticks=[])
-    ax.text(0.5, 0.5, words, transform=ax.transAxes, ha="center", va="center", color=GRAY, parse_math=False)
-    return ax

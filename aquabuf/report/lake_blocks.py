@@ -124,7 +124,7 @@ def _by_definition(run: LakeRun) -> list[str]:
     for definition, code in codes.items():
         names = Counter(name for name in class_names(scheme, code) if name)
         counts = ", ".join(f"{names[c.name]:,} {c.name}" for c in scheme.classes)
-        lines.append(f"By {QUANTITIES[definition]} ({int((code >= 0).sum()):,} lakes): {counts}.")
+        lines.append(f"By {QUANTITIES[definition]} ({plural(int((code >= 0).sum()), 'lake')}): {counts}.")
     every = np.stack(list(codes.values()))
     known = (every >= 0).sum(axis=0) > 1
     lowest = np.where(every >= 0, every, 99).min(axis=0)
@@ -223,6 +223,12 @@ def quality(run: LakeRun) -> str:
         for name, fact in facts.items()
         if unmet.get(name)
     ]
+    bare, organic = unmet.get("ion balance", 0), unmet.get("ion balance with organic anions", 0)
+    if organic < bare:
+        lines.append(
+            f"Of the {bare:,} that fail the ion balance, {bare - organic:,} pass once organic anions and aluminum are "
+            f"counted: these explain it."
+        )
     for r in file_check_rows(run.found.rounding, run.found.duplicates).itertuples():
         if r.met == "no":
             lines.append(f"{r.check}: {r.value:.4g} {r.unit}, should be {r.limit}: {r.remedy}.")
@@ -233,7 +239,7 @@ def quality(run: LakeRun) -> str:
     if missing:
         lines.append(
             f"Ions not measured, so that there is no charge balance: "
-            f"{', '.join(f'{w} ({c:,} lakes)' for w, c in missing.most_common(5))}."
+            f"{', '.join(w + ' (' + plural(c, 'lake') + ')' for w, c in missing.most_common(5))}."
         )
     return block("Quality (checks.csv has each lake)", lines or ["Every check that could be made is met."])
 

@@ -13,6 +13,7 @@ import pandas as pd
 from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.figure import Figure
 from matplotlib.layout_engine import ConstrainedLayoutEngine
+from matplotlib.legend import Legend
 from matplotlib.lines import Line2D
 from numpy.typing import NDArray
 
@@ -20,18 +21,10 @@ from aquabuf.assess.lake.assess import LakeAssessment
 from aquabuf.assess.lake.response import ResponseCurves, survey_response
 from aquabuf.assess.lake.schemes import Scheme
 from aquabuf.chem.gases import AIR_CO2_PPM
-from aquabuf.report.lake_axes import GRAY, MICRO, dark_edge
-from aquabuf.report.lake_panels import (
-    NO_CLASS,
-    has_loads,
-    plot_classes,
-    plot_distribution,
-    plot_first,
-    plot_loads,
-    plot_response,
-    styles_of,
-)
-from aquabuf.report.style import STYLE, short_name
+from aquabuf.report.lake_anc_panels import plot_distribution, plot_response
+from aquabuf.report.lake_class_panels import has_loads, plot_classes, plot_first, plot_loads
+from aquabuf.report.lake_marks import MICRO, NO_CLASS, dark_edge, styles_of
+from aquabuf.report.style import GRAY, STYLE, short_name
 
 __all__ = ["lake_figure", "save_lakes"]
 
@@ -41,7 +34,8 @@ SOURCE_LETTERS, FOOT_LETTERS = 60, 190
 
 
 def lake_figure(results: pd.DataFrame, scheme: Scheme, response: ResponseCurves | None, *, source: str,
-                anc_limit_ueq_l: float = np.nan, group: str = "region", latest: NDArray[np.bool_] | None = None) -> Figure:
+                anc_limit_ueq_l: float = np.nan, group: str = "region",
+                latest: NDArray[np.bool_] | None = None) -> Figure:
     """One landscape page of four panels on the lakes of a survey.
 
     results : of a lake assessment. scheme : of its classes. response : None draws no curves.
@@ -70,24 +64,32 @@ def _head(figure: Figure, lakes: pd.DataFrame, samples: int, scheme: Scheme, sou
     name = source if len(source) <= SOURCE_LETTERS else source[:SOURCE_LETTERS - 1] + "…"
     count = f"{len(lakes):,} lake{'s' if len(lakes) != 1 else ''}"
     count += f" ({samples:,} samples)" if samples > len(lakes) else ""
-    title = figure.suptitle(f"{name}: {count}, {risk:,} at risk by {scheme.name}", x=0.01, y=1.0 - 0.1 / HIGH, ha="left",
-                            va="top", parse_math=False, fontsize=11, fontweight="bold")
-    counts = lakes["class"].value_counts()
-    styles = {c: s for c, s in styles_of(scheme).items() if c or c in counts}
-    key = figure.legend([Line2D([], [], ls="", marker=marker, color=color, ms=6, mew=0.5 if marker != "x" else 1.2,
-                                mec=color if marker == "x" else dark_edge(color)) for color, marker in styles.values()],
-                        [f"{short_name(c) or NO_CLASS} ({counts.get(c, 0):,})" for c in styles], loc="upper left", ncols=len(styles), fontsize=8,
-                        bbox_to_anchor=(0.0, 1.0 - 0.3 / HIGH), handletextpad=0.1, columnspacing=1.4)
-    words = (f"Classes: {scheme.name}{f', {scheme.words}' if scheme.words else ''}. Upright gray lines: limits between "
-             "classes.") if scheme.quantity != "ph" else f"Classes: {scheme.name}, {scheme.words}. Level lines: limits."
+    title = figure.suptitle(f"{name}: {count}, {risk:,} at risk by {scheme.name}", x=0.01, y=1.0 - 0.1 / HIGH,
+                            ha="left", va="top", parse_math=False, fontsize=11, fontweight="bold")
+    kind = "Level" if scheme.quantity == "ph" else "Upright"
+    words = f"Classes: {scheme.name}{f', {scheme.words}' if scheme.words else ''}. {kind} gray lines: their limits."
     if samples > len(lakes):
         words += " First panel: all samples; others: the latest of each lake."
-    foot = figure.text(0.99, 0.06 / HIGH, textwrap.shorten(words, FOOT_LETTERS, placeholder=" …"), ha="right", va="bottom",
-                       fontsize=7, color=GRAY, parse_math=False)
-    for text in (*key.get_texts(), title, foot):
-        text.set_parse_math(False)
-    for thing in (key, title, foot):
+    foot = figure.text(0.99, 0.06 / HIGH, textwrap.shorten(words, FOOT_LETTERS, placeholder=" …"), ha="right",
+                       va="bottom", fontsize=7, color=GRAY, parse_math=False)
+    for thing in (title, foot, _key(figure, lakes, scheme)):
         thing.set_in_layout(False)
+
+
+def _key(figure: Figure, lakes: pd.DataFrame, scheme: Scheme) -> Legend:
+    """Color, marker and number of lakes of each class."""
+    counts = lakes["class"].value_counts()
+    signs, words = [], []
+    for name, (color, marker) in styles_of(scheme).items():
+        if name or name in counts:
+            edge = dark_edge(color) if name else color
+            signs.append(Line2D([], [], ls="", marker=marker, color=color, ms=6, mec=edge, mew=0.5 if name else 1.2))
+            words.append(f"{short_name(name) or NO_CLASS} ({counts.get(name, 0):,})")
+    key = figure.legend(signs, words, loc="upper left", ncols=len(words), fontsize=8, handletextpad=0.1,
+                        bbox_to_anchor=(0.0, 1.0 - 0.3 / HIGH), columnspacing=1.4)
+    for text in key.get_texts():
+        text.set_parse_math(False)
+    return key
 
 
 def save_lakes(found: LakeAssessment, latest: NDArray[np.bool_], paths: Mapping[str, Path], *, source: str,

@@ -245,9 +245,17 @@ def _write(out: OutputFolder, tables: Mapping[str, pd.DataFrame], options: LakeO
 
 
 def _draw(found: LakeAssessment, run: LakeRun, out: OutputFolder) -> None:
-    from aquabuf.report.lake_figures import save_lakes, save_trends  # drawing is slow to import
+    from aquabuf.report.lake_figures import save_lakes  # drawing is slow to import
+    from aquabuf.report.trend_figures import save_trends
 
-    save_lakes(found, run.latest, {kind: out.part(f"lakes.{kind}") for kind in ("png", "svg")}, source=run.source)
+    save_lakes(
+        found,
+        run.latest,
+        {kind: out.part(f"lakes.{kind}") for kind in ("png", "svg")},
+        source=run.source,
+        group=run.options.group,
+        air_co2_ppm=run.options.air_co2_ppm,
+    )
     if len(run.trends) and (run.trends["status"] == "ok").any():
         save_trends(
             run.series, run.trends, {kind: out.part(f"trends.{kind}") for kind in ("png", "svg")}, source=run.source

@@ -15,7 +15,7 @@ from aquabuf.chem.transfer import transfer_relations
 from aquabuf.report import lake_answer_blocks as answer_blocks
 from aquabuf.report import lake_blocks as blocks
 from aquabuf.report.lake_blocks import LakeRun, block
-from aquabuf.report.summary import cautions
+from aquabuf.report.summary import cautions, plural
 
 __all__ = ["LakeRun", "lake_report", "lake_summary"]
 
@@ -89,24 +89,27 @@ def _assumptions(run: LakeRun) -> str:
     if o.air_co2_ppm == AIR_CO2_PPM:
         air += f" (default: about the global mean of {AIR_CO2_YEAR}, recalled)"
     target = f"pH {o.lime_ph:g} at equilibrium with air" if o.lime_ph is not None else f"ANC {o.lime_anc_ueq_l:g} µeq/L"
+    end_point = int(run.lakes["anc_end_point_ueq_l"].notna().sum())
     unstated = sum("method unstated" in str(w) for w in run.lakes["anc_used_from"])
     draws = (
         f"{COVERAGE:.0%} intervals and probabilities from {o.draws:,} seeded draws (seed {o.seed}) of the readings' "
-        f"own or "
-        f"default uncertainties (`aquabuf columns NAME` shows them), and {ORGANIC_U_REL:.0%} on the charge of organic "
-        f"anions; temperature and constants are taken as exact"
+        f"own or default uncertainties (`aquabuf columns NAME` shows them), and {ORGANIC_U_REL:.0%} on the charge of "
+        f"organic anions; temperature and constants are taken as exact"
         if o.draws
         else "No intervals (--draws 0)"
     )
     lines = [
         f"ANC in use: Gran ANC, else alkalinity, else charge balance ("
         f"{', '.join(f'{w} {c:,}' for w, c in Counter(w for w in run.lakes['anc_used_from'] if w).most_common(6))}).",
-        f"An ANC whose method is not given counts as Gran: {unstated:,} lakes (column anc_method tells)."
+        f"An ANC whose method is not given counts as Gran: {plural(unstated, 'lake')} (column anc_method tells)."
         if unstated
         else "",
+        f"ANC titrated to a fixed end point: {plural(end_point, 'lake')}. It is kept in its own column and never used: "
+        f"in dilute water it is about 32 µeq/L too high."
+        if end_point
+        else "",
         f"Charge balance: calcium, magnesium, sodium, potassium{' and ammonium' if o.ammonium else ''} less sulfate, "
-        f"nitrate and "
-        f"chloride; fluoride is left out of it but counts in pH. Missing ions are never taken as zero.",
+        f"nitrate and chloride; fluoride is left out of it but counts in pH. Missing ions are never taken as zero.",
         f"Organic anions by {rules.organic.in_words()}; counted with their sites at pH, a third of all sites as "
         f"strong acids "
         f"(Hesthagen et al. 2008). A Gran titration leaves out what its tangent at pH {GRAN_PH:g} leaves out.",
@@ -186,7 +189,7 @@ def _next(run: LakeRun, files: Iterable[str]) -> str:
     if left:
         steps.append(
             "Left out for want of readings: "
-            + ", ".join(f"{name} ({c:,} lakes)" for name, c in left.most_common())
+            + ", ".join(f"{name} ({plural(c, 'lake')})" for name, c in left.most_common())
             + "; the column left_out says which column would bring each."
         )
     steps.append(

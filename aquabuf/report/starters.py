@@ -1,4 +1,4 @@
-"""Starter files of every kind, the limits file among them."""
+"""Starter files of every kind: tables of readings, maps, limits, schemes, event water, titrations."""
 
 from __future__ import annotations
 
@@ -13,22 +13,23 @@ __all__ = ["starter", "starter_kinds"]
 
 LIMITS_KIND = "limits"
 TITRATION_KINDS = ("titration_points", "titration_samples")
+FILES = {"long_map": "toml", "scheme": "toml", "event": "toml"} | dict.fromkeys(TITRATION_KINDS, "csv")  # their endings
 
 
 def starter(kind: str) -> str:
     """Text of a starter file. Raises InputError for an unknown kind, naming those there are."""
     if kind == LIMITS_KIND:
         return _limits_text()
-    if kind in TITRATION_KINDS:
-        return (files("aquabuf") / "data" / f"starter_{kind}.csv").read_text(encoding="utf-8")
+    if kind in FILES:
+        return (files("aquabuf") / "data" / f"starter_{kind}.{FILES[kind]}").read_text(encoding="utf-8")
     if kind not in starter_kinds():
         raise InputError(f"no starter file is named {kind!r}. Use one of: {', '.join(starter_kinds())}.")
     return template(kind)
 
 
 def starter_kinds() -> list[str]:
-    """Kinds of starter file: tables of readings, the two settings files, and the two tables of titrations."""
-    return [*template_kinds(), LIMITS_KIND, *TITRATION_KINDS]
+    """Kinds of starter file: tables of readings and a map, then what a run may be given beside them."""
+    return [*template_kinds(), LIMITS_KIND, *FILES]
 
 
 def _limits_text() -> str:

@@ -4,11 +4,11 @@ from __future__ import annotations
 
 from typing import Any
 
-__all__ = ["CALM", "CLASS_COLORS", "CLASS_MARKERS", "CURVE_COLORS", "FAINT", "INK", "NAME_LENGTH", "STYLE", "WARNED",
-           "class_styles", "short_name"]
+__all__ = ["CALM", "CLASS_COLORS", "CLASS_MARKERS", "CURVE_COLORS", "FAINT", "GRAY", "INK", "NAME_LENGTH", "STYLE",
+           "WARNED", "class_styles", "short_name"]
 
 # Distinct in gray print and to color-blind eyes
-CALM, WARNED, INK, FAINT = "#4a7ba6", "#c8553d", "#222222", "#b8b8b8"
+CALM, WARNED, INK, GRAY, FAINT = "#4a7ba6", "#c8553d", "#222222", "#777777", "#b8b8b8"
 CURVE_COLORS = ("#c8553d", "#7a4e9e", "#2e7d6b", "#4a7ba6", "#9a6b1f", "#555555")
 # Sensitivity classes from worst to best: lighter from step to step, with a marker each as second sign
 CLASS_COLORS = ("#571838", "#8d3036", "#b8562c", "#bb8a3e", "#82b69b", "#b7dae8")

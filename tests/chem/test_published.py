@@ -12,9 +12,10 @@ ROWS = [row for name in CHEM_TABLES for row in read_rows(name)]
 ACID_ROWS = read_rows("weak_acids")
 
 # Public names that are no quantities: records, look-ups, the year that labels AIR_CO2_PPM, and a pair of a quantity with
-# its slope, which has tests of its own.
+# its slope, which has tests of its own; the ratios of sea salt have their rows in critical_loads.csv.
 NOT_QUANTITIES = {"Acid", "acid_named", "acid_table", "AIR_CO2_YEAR", "OrganicModel", "organic_models", "charge_and_slope",
-                  "TransferRelation", "transfer_relations", "schmidt_relations", "transfer_velocity_m_d"}
+                  "TransferRelation", "transfer_relations", "schmidt_relations", "transfer_velocity_m_d",
+                  "equivalents_per_chloride", "equivalents_per_sodium"}
 
 
 def _public_quantities():

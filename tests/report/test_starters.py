@@ -1,18 +1,27 @@
 """Starter files: every kind can be read and assessed as it is; the limits file repeats the shipped limits."""
 
+import json
 import tomllib
 
+import pandas as pd
 import pytest
+from numpy.testing import assert_allclose
 
+from aquabuf.assess.lake.event_file import read_event
+from aquabuf.assess.lake.options import LakeOptions
+from aquabuf.assess.lake.schemes import read_scheme
 from aquabuf.assess.limits import shipped_limits
 from aquabuf.assess.limits_file import read_limits
 from aquabuf.assess.options import Options
 from aquabuf.assess.sample.columns import limit_quantities
 from aquabuf.assess.titration.options import TitrationOptions
 from aquabuf.errors import InputError
+from aquabuf.readings.result import join_readings
+from aquabuf.readings.source import open_any
 from aquabuf.readings.template import template_kinds
 from aquabuf.readings.titration.paths import TitrationFiles
-from aquabuf.report.starters import TITRATION_KINDS, starter
+from aquabuf.report.lake_run import LakeFiles, assess_survey
+from aquabuf.report.starters import FILES, TITRATION_KINDS, starter, starter_kinds
 from aquabuf.report.titration_run import titrate_file
 
 TABLES = [kind for kind in template_kinds() if kind != "map"]
@@ -74,3 +83,74 @@ def test_starter_titrations_say_what_each_column_is():
         remarks = " ".join(line for line in lines if line.startswith("#"))
         header = next(line for line in lines if not line.startswith("#"))
         assert all(name in remarks for name in header.split(",")), kind
+
+
+# ------------------------------------------------------------------ lakes
+
+LAKE_STARTERS = ("scheme", "event")
+
+
+@pytest.fixture
+def lake_starters(table):
+    """The starter table of lakes, a starter scheme and starter event water, as files."""
+    return table(starter("lake"), "lakes.csv"), table(starter("scheme"), "s.toml"), table(starter("event"), "e.toml")
+
+
+def test_every_starter_file_is_offered():
+    """Each file of its own is among the kinds, once."""
+    assert [kind for kind in starter_kinds() if kind in FILES] == list(FILES)
+    assert set(LAKE_STARTERS) < set(FILES)
+
+
+def test_starter_lakes_bring_every_answer(lake_starters, tmp_path):
+    """Neither lake is refused, lacks a reading, or fails a check; hydrology and deposition lead to every answer."""
+    words = assess_survey(LakeFiles(survey=lake_starters[0]), tmp_path / "out", LakeOptions(), figure=False)
+    assert words.startswith("lakes.csv: 2 lakes assessed")
+    assert "0 rows refused" in words
+    found = pd.read_csv(tmp_path / "out" / "results.csv", keep_default_na=False)
+    for column in ("left_out", "missing_ions", "failed_checks"):
+        assert found[column].tolist() == ["", ""], column
+    assert found["status"].tolist() == ["ok", "ok"]
+    assert found["anc_used_from"].tolist() == ["Gran ANC", "Gran ANC"]
+    for column in ("exceedance_meq_m2_yr", "episode_anc_ueq_l", "co2_flux_mmol_m2_d", "years_to_anc_limit", "lake_volume_m3"):
+        assert (found[column] != "").all(), column
+    groups = pd.read_csv(tmp_path / "out" / "groups.csv")
+    assert (groups["weighted"][0], groups["lakes_stood_for"][0]) == ("yes", 20.5)  # 12.5 and 8 lakes
+
+
+def test_starter_scheme_and_event_serve_a_run(lake_starters, tmp_path):
+    """Both are read as they are, and the run says that it rests on them."""
+    lakes, scheme, event = lake_starters
+    options = LakeOptions(schemes=("survey_bands", str(scheme)), draws=0)
+    assess_survey(LakeFiles(survey=lakes, event=event), tmp_path / "out", options, figure=False)
+    record = json.loads((tmp_path / "out" / "run.json").read_text(encoding="utf-8"))
+    assert [s["name"] for s in record["schemes"]] == ["survey_bands", read_scheme(scheme).name]
+    assert record["event"][0].startswith(read_event(event).name)
+    shares = pd.read_csv(tmp_path / "out" / "episodes.csv")["event_fraction"].unique()
+    assert_allclose(shares, read_event(event).fractions)
+
+
+# ------------------------------------------------------------------ long tables
+
+LONG = """Station,Day,Parameter,Result,Unit,Fraction,Qualifier,Detection limit,Kind
+Raven Tarn,10/9/2024,Water temperature,10.8,°C,,,,sample
+Raven Tarn,10/9/2024,pH,6.1,,,,,sample
+Raven Tarn,10/9/2024,Gran ANC,31,µeq/L,,,,sample
+Raven Tarn,10/9/2024,Nitrate-N,,mg/L,,below detection,0.02,sample
+Raven Tarn,10/9/2024,Calcium,1.90,mg/L,Total,,,sample
+Raven Tarn,10/9/2024,Calcium,1.80,mg/L,Dissolved,,,sample
+Raven Tarn,10/9/2024,Calcium,0.05,mg/L,Dissolved,,,field blank
+Raven Tarn,10/9/2024,Color,40,,,,,sample
+Raven Tarn,10/9/2024,pH,,,,bottle broke,,replicate 2
+"""
+
+
+def test_starter_long_map_reads_a_long_table(table):
+    """Its remarks are true: which fraction, whose mass, half the limit, blanks left out, words that go along."""
+    readings = join_readings(open_any(table(LONG, "long.csv"), table(starter("long_map"), "map.toml")))
+    assert readings.rejected.empty
+    row = readings.frame.iloc[0]
+    assert (len(readings.frame), row["sample_id"], row["water_kind"], row["anc_method"]) == (1, "Raven Tarn_10/9/2024", "lake", "gran")
+    assert row["date_parsed"] == pd.Timestamp(2024, 9, 10)
+    found = row[["temperature_c", "ph", "anc_eq_l", "calcium_mol_l", "nitrate_mol_l"]].astype(float)
+    assert_allclose(found, [10.8, 6.1, 31e-6, 1.80e-3 / 40.078, 0.01e-3 / 14.007], rtol=1e-12)  # molar masses: IUPAC

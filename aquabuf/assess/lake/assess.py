@@ -212,7 +212,7 @@ def _add_carbon(figures: dict, around: Spread, lakes: Lakes, plan: Plan, found: 
         for store in (figures, around.low, around.high):
             if name in store:
                 store[name] = np.where(of.mask, store[name], np.nan)
-    figures["pco2_from"] = np.where(of.mask, carbon_words(plan, ph_kind), of.words)
+    figures["pco2_from"] = np.where(of.mask, carbon_words(plan, ph_kind, lakes.get("doc_mg_l")[:, 0]), of.words)
 
 
 def _neal(lakes: Lakes, found: Answers) -> Array:

@@ -90,7 +90,8 @@ def lake_checks(lakes: Lakes, u: Mapping[str, Array], b: Budget, c: Chemistry, s
     allowed = most_conductivity_percent(measured)
     gap_u = figures["anc_gap_u_ueq_l"]
     left = _carbonate_left(lakes, b)
-    left_u = np.hypot(spread("anc_eq_l"), c.buffer_closed[:, 0] * spread("ph"))
+    titrated_u = np.where(np.isfinite(b.gran[:, 0]), spread("anc_eq_l"), spread("alkalinity_eq_l"))
+    left_u = np.hypot(titrated_u, c.buffer_closed[:, 0] * spread("ph"))
     outside, names = outside_usual({k: v[:, 0] for k, v in lakes.values.items()}, n)
     computed, computed_u = at_equilibration
     negative = np.array([float(t.count(";") + 1) if t else 0.0 for t in figures["sea_salt_negative"]])

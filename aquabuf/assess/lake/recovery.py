@@ -34,7 +34,7 @@ class _Seen:
 
 # Verdict, whether the lake recovers, and when: the first that holds counts.
 _VERDICTS: tuple[tuple[str, str, Callable[[_Seen], bool]], ...] = (
-    ("ANC not known", "unknown", lambda s: not s.anc),
+    ("no trend of ANC can be told", "unknown", lambda s: not s.anc),
     ("definitions of ANC disagree", "unclear", lambda s: {"rising", "falling"} <= set(s.anc)),
     ("ANC rises as acid anions fall", "yes", lambda s: s.anc[0] == "rising" and s.driven),
     ("ANC rises, cause not shown", "unclear", lambda s: s.anc[0] == "rising"),

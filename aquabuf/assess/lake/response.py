@@ -25,7 +25,7 @@ CO2_TIMES = (1.0, 4.0)  # of the CO2 of air, between which many lakes lie; pract
 BROWN_QUANTILE = 0.9    # of the survey's organic carbon, for its brown water; practice
 PH = np.linspace(2.5, 10.5, 401)
 MOST_STRENGTH = LIMITS["ionic_strength_mol_l"][1]  # up to which the activity equation holds
-PASSES = 6              # until ionic strength and ANC agree; each leaves less than a tenth of the difference
+PASSES = 12             # until ionic strength and ANC agree; each leaves less than a third of the difference
 
 
 @dataclass(frozen=True, slots=True, eq=False, kw_only=True)
@@ -100,16 +100,16 @@ def _anc(t_c: float, strength: float, pco2_atm: Array, doc_mg_l: float, organic:
 
 
 def survey_response(results: pd.DataFrame, air_co2_ppm: float, organic_model: OrganicModel) -> ResponseCurves | None:
-    """Curves at the survey's median temperature and conductivity, brown water at `BROWN_QUANTILE` of its organic carbon.
+    """Curves at the survey's median temperature and conductivity; brown water at `BROWN_QUANTILE` of its DOC.
 
     `results` as of a lake assessment. None where no lake has a temperature.
     """
     t_c, conductivity = (_quantile(results, name, 0.5) for name in ("temperature_c", "conductivity_us_cm"))
     if np.isnan(t_c):
         return None
-    strength = float(ionic_strength({"temperature_c": np.array([t_c]), "conductivity_us_cm": np.array([conductivity])})[0][0])
-    return response_curves(t_c, min(float(np.fmax(strength, LEAST_STRENGTH)), MOST_STRENGTH), air_co2_ppm,
-                           _quantile(results, "doc_mg_l", BROWN_QUANTILE), organic_model)
+    middle = {"temperature_c": np.array([t_c]), "conductivity_us_cm": np.array([conductivity])}
+    strength = float(np.fmin(np.fmax(ionic_strength(middle)[0][0], LEAST_STRENGTH), MOST_STRENGTH))
+    return response_curves(t_c, strength, air_co2_ppm, _quantile(results, "doc_mg_l", BROWN_QUANTILE), organic_model)
 
 
 def _quantile(results: pd.DataFrame, name: str, quantile: float) -> float:

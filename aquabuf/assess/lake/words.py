@@ -92,11 +92,12 @@ def charge_form_words(answers: Answers, computed: NDArray[np.bool_]) -> Words:
                   (known & computed & np.isnan(b.charge_bare)[:, 0], "as given"))
 
 
-def carbon_words(plan: Plan, ph_kind: Words) -> Words:
+def carbon_words(plan: Plan, ph_kind: Words, doc_mg_l: Array) -> Words:
     """What the carbon of each lake rests on."""
     out = worded(plan.sources[1].size, *((plan.sources[1] == k, name) for k, name in enumerate(CARBON_SOURCES)))
-    lost = (ph_kind == "open_bottle") & (plan.sources[1] == CARBON_SOURCES.index("pH and ANC"))
-    out[lost] += "; pH of an open bottle, which has lost CO2: too low"
+    of_anc = plan.sources[1] == CARBON_SOURCES.index("pH and ANC")
+    out[of_anc & (ph_kind == "open_bottle")] += "; pH of an open bottle, which has lost CO2: too low"
+    out[of_anc & np.isnan(doc_mg_l)] += "; organic carbon not given: too high where the water is brown"
     return out
 
 

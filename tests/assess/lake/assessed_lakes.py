@@ -11,7 +11,7 @@ from aquabuf.assess.lake.options import LakeOptions, rules_of
 from aquabuf.assess.limits import shipped_limits
 from aquabuf.readings.result import REJECTED_COLUMNS, Readings
 
-TEXT = ("site", "region", "date", "water_kind", "filtered", "anc_method", "ph_kind")
+TEXT = ("site", "region", "date", "water_kind", "filtered", "anc_method", "ph_kind", "titrated_by")
 SULFATE_G, NITRATE_G = 96.06 / 2, 62.005  # grams per equivalent
 
 # Every reading that an answer needs; ions sum to a charge balance of 60 µeq/L without ammonium

@@ -19,7 +19,7 @@ CASES = {  # slopes per year of what is measured, and the verdict
                 "acid anions fall, ANC does not surely rise"),
     "still": ({"anc_gran_ueq_l": 0, "sulfate_ueq_l": 0, "ph": 0.1}, "no sure trend of ANC"),
     "worse": ({"anc_gran_ueq_l": -1, "sulfate_ueq_l": 2}, "ANC falls"),
-    "meter only": ({"ph": 0.1, "sulfate_ueq_l": -3}, "ANC not known"),
+    "meter only": ({"ph": 0.1, "sulfate_ueq_l": -3}, "no trend of ANC can be told"),
 }
 
 
