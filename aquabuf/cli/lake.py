@@ -39,6 +39,7 @@ def _numbers(_: click.Context, option: click.Parameter, text: str | None) -> tup
 @click.option("--lime", help="Liming product.  [default: limestone]")
 @click.option("--lime-anc", "lime_anc_ueq_l", type=float, help="ANC to lime to, in µeq/L.  [default: 100]")
 @click.option("--lime-ph", type=float, help="pH to lime to, at equilibrium with air, instead of an ANC.")
+@click.option("--lime-date", help="Day of liming, such as 2026-05-01, for the date of re-acidification.")
 @click.option("--wind-relation", help="Gas transfer by wind: cole_caraco or vachon_prairie.  [default: cole_caraco]")
 @click.option("--ammonium/--no-ammonium", default=None, help="Count ammonium in the charge balance.  [default: "
                                                              "ammonium]")

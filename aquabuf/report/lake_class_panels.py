@@ -134,7 +134,7 @@ def _corner(ax: Axes, words: str, *, right: bool = False) -> None:
 
 
 FIRST = (("critical_load_meq_m2_yr", "Critical load [meq/m²/yr]; deposition not known"),
-         (TO_PH_6, "Strong acid to pH 6, open to air [µeq/L]"),
+         (TO_PH_6, "Acid to pH 6, open to air [µeq/L]"),
          ("acid_to_anc_limit_ueq_l", "ANC above the limit [µeq/L]"))
 
 
@@ -160,7 +160,7 @@ def plot_first(results: pd.DataFrame, scheme: Scheme, *, ax: Axes) -> Axes:
     ax.axvline(0.0, color="#666666", lw=0.8)
     ax.set_yticks(place, lake_names(table), parse_math=False)
     ax.tick_params(axis="y", length=0)
-    below = "; negative: below it already" if column == TO_PH_6 and (value < 0.0).any() else ""
+    below = "; negative: below it" if column == TO_PH_6 and (value < 0.0).any() else ""
     line = f" (line: {COVERAGE:.0%} interval)" if has_lines else ""
     ax.set(xlabel=f"{label}{below}", ylim=_rows(len(table)), title=f"First lakes to look at{line}")
     return ax

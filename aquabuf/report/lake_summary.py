@@ -7,7 +7,7 @@ from collections.abc import Iterable
 
 from aquabuf.assess.lake.budget import GRAN_PH
 from aquabuf.assess.lake.critical_variants import LIMITS_EQ_L
-from aquabuf.assess.lake.draws import ORGANIC_U_REL
+from aquabuf.assess.lake.inputs import ORGANIC_U_REL
 from aquabuf.assess.sample.quality import allowed, check_facts
 from aquabuf.assess.uncertainty import COVERAGE
 from aquabuf.chem.gases import AIR_CO2_PPM, AIR_CO2_YEAR

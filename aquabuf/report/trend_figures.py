@@ -138,7 +138,7 @@ def _words(ax: Axes, trend: pd.Series, width_inches: float) -> None:
     label = str(trend["label"])
     heading = f"{label[:1].upper()}{label[1:]}, {short_name(trend['site']).strip()}"
     ax.set_title("\n".join(_wrapped(heading, HEADING_SIZE, BOLD_LETTER, width_inches)), fontsize=HEADING_SIZE,
-                 pad=7.0 + SPACING * WORD_SIZE * len(lines), parse_math=False)
+                 pad=7.5 + SPACING * WORD_SIZE * len(lines), parse_math=False)
 
 
 def _wrapped(text: str, size: float, letter: float, width_inches: float) -> list[str]:

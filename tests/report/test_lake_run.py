@@ -363,3 +363,24 @@ def test_the_latest_sample_stands_for_its_lake(lakes):
     assert [r["sample_id"] for r in read(folder, "priorities.csv")] == ["C-24", "new"]
     assert read(folder, "groups.csv")[0]["lakes"] == "2"
     assert words.startswith("lakes.csv: 2 lakes from 3 samples assessed, ")
+
+
+# ------------------------------------------------------------------ figures
+
+def test_figures_of_a_run(table, tmp_path):
+    """Survey and trends as PNG and SVG, the same bytes again, without path or date; none where --no-figure was said."""
+    text = table_of(ALDER, CEDAR, *series("Fir", QA_SERIES, range(80, 58, -2)))
+    files = LakeFiles(survey=table(text, "lakes.csv"))
+    drawn = []
+    for name in ("a", "b"):
+        words = assess_survey(files, tmp_path / name, LakeOptions(draws=0))
+        drawn.append({n: b for n, b in contents(tmp_path / name).items() if n.endswith((".png", ".svg"))})
+    assert set(drawn[0]) == {"lakes.png", "lakes.svg", "trends.png", "trends.svg"}
+    assert all(name in words for name in drawn[0])
+    assert drawn[0] == drawn[1]
+    for name, content in drawn[0].items():
+        assert content.startswith(b"\x89PNG") if name.endswith("png") else b"<svg" in content
+        assert str(tmp_path).encode() not in content
+        assert b"dc:date" not in content
+    assess_survey(files, tmp_path / "a", LakeOptions(draws=0), force=True, figure=False)
+    assert not {p.suffix for p in (tmp_path / "a").iterdir()} & {".png", ".svg"}

@@ -26,9 +26,9 @@ from aquabuf.assess.lake.classes import (
 from aquabuf.assess.lake.co2 import NEAL_AIR_ATM, neal_excess_temperature, neal_left_out_share, stateable
 from aquabuf.assess.lake.columns import AS_GIVEN, lake_columns
 from aquabuf.assess.lake.critical_variants import sensitivity
-from aquabuf.assess.lake.draws import ORGANIC_U_REL, Spread, spread
+from aquabuf.assess.lake.draws import Spread, spread
 from aquabuf.assess.lake.episode import DEPOSITION, balance_of, deposition_words, mix
-from aquabuf.assess.lake.inputs import IONS, Lakes, as_recorded, setting_of, words_of
+from aquabuf.assess.lake.inputs import IONS, ORGANIC_U_REL, Lakes, as_recorded, setting_of, words_of
 from aquabuf.assess.lake.liming import after_liming, over_liming_words
 from aquabuf.assess.lake.options import LakeOptions, Rules
 from aquabuf.assess.lake.quality import HISTORY_COLUMNS, IonSums, ion_sums, lake_checks, own_history

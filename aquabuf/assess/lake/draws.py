@@ -12,13 +12,13 @@ from numpy.typing import NDArray
 from aquabuf.assess.lake.answers import Plan, answers
 from aquabuf.assess.lake.classes import class_probabilities, definition_used, values_used
 from aquabuf.assess.lake.columns import lake_columns
-from aquabuf.assess.lake.inputs import IONS, Lakes, Setting
+from aquabuf.assess.lake.inputs import IONS, ORGANIC_U_REL, Lakes, Setting
 from aquabuf.assess.lake.options import LakeOptions, Rules
 from aquabuf.assess.limits import Limit
 from aquabuf.assess.sample.solve import take_rows
 from aquabuf.assess.uncertainty import drawn, interval, row_blocks, share
 
-__all__ = ["DRAWN", "ORGANIC_U_REL", "Spread", "spread"]
+__all__ = ["DRAWN", "Spread", "spread"]
 
 Array = NDArray[np.float64]
 
@@ -30,7 +30,6 @@ DRAWN = (
     "ammonium_deposition_eq_m2_yr", "chloride_deposition_eq_m2_yr", "base_cation_deposition_eq_m2_yr",
     "hydrogen_deposition_eq_m2_yr",
 )
-ORGANIC_U_REL = 0.15  # of the charge of organic anions: what the published models differ by at pH 5 to 6.5 (derived)
 
 
 @dataclass(slots=True, eq=False)

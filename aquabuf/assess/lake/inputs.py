@@ -20,8 +20,8 @@ from aquabuf.engine.conditions import Conditions, conditions
 from aquabuf.engine.lake import LakeBalance
 from aquabuf.units import substances
 
-__all__ = ["ANION_NAMES", "BASE_CATIONS", "CATION_NAMES", "IONS", "STRONG_ANIONS", "Lakes", "Setting", "as_recorded",
-           "setting_of", "words_of"]
+__all__ = ["ANION_NAMES", "BASE_CATIONS", "CATION_NAMES", "IONS", "ORGANIC_U_REL", "STRONG_ANIONS", "Lakes", "Setting",
+           "as_recorded", "setting_of", "words_of"]
 
 Array = NDArray[np.float64]
 
@@ -29,6 +29,7 @@ BASE_CATIONS = ("calcium", "magnesium", "sodium", "potassium")
 STRONG_ANIONS = ("sulfate", "nitrate", "chloride")
 CATION_NAMES, ANION_NAMES = (*BASE_CATIONS, "ammonium"), (*STRONG_ANIONS, "fluoride")
 IONS = (*CATION_NAMES, *ANION_NAMES)
+ORGANIC_U_REL = 0.15  # of the charge of organic anions: what the published models differ by at pH 5 to 6.5 (derived)
 LEAST_STRENGTH = 2e-5  # mol/L where nothing tells it; activity coefficients are within 0.5 % of 1 there
 
 

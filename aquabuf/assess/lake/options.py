@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, field
+from datetime import date
 from difflib import get_close_matches
 from pathlib import Path
 
@@ -30,7 +31,7 @@ class LakeOptions:
 
     schemes : names or TOML paths, the first one gives the class. organic : a shipped model or SITES:PK,PK,PK.
     critical_load : words of the variant, none for the default. anc_limit : µeq/L, a shipped name, or variable.
-    lime, lime_anc_ueq_l, lime_ph : product and target; a pH takes the place of the ANC.
+    lime, lime_anc_ueq_l, lime_ph, lime_date : product, target (a pH takes the place of the ANC) and day of liming.
     event_fraction : share of event water. deposition_changes : percent.
     """
 
@@ -41,6 +42,7 @@ class LakeOptions:
     lime: str = "limestone"
     lime_anc_ueq_l: float = 100.0
     lime_ph: float | None = None
+    lime_date: str = ""
     event_fraction: float = 0.4
     wind_relation: str = "cole_caraco"
     deposition_changes: tuple[float, ...] = (-50.0, -25.0, 25.0)
@@ -58,6 +60,12 @@ class LakeOptions:
         _range("the liming target", self.lime_anc_ueq_l, -1000.0, 10_000.0, "Give it in µeq/L, such as 100.")
         if self.lime_ph is not None:
             _range("the liming target pH", self.lime_ph, 4.0, 9.0, "Planning takes 6.0 to 6.5.")
+        if self.lime_date:
+            try:
+                date.fromisoformat(self.lime_date)
+            except ValueError:
+                raise InputError(f"the day of liming must be written as 2026-05-01; found {self.lime_date!r}. "
+                                 f"Correct it.") from None
         if self.draws != 0 and not 100 <= self.draws <= 100_000:
             raise InputError(f"draws must be 0 or from 100 to 100000; found {self.draws}. "
                              f"Use 1000, or 0 for no intervals.")

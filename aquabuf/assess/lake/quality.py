@@ -10,9 +10,9 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from aquabuf.assess.ionsums import conductivity_of_ions, most_conductivity_percent, most_imbalance_percent
-from aquabuf.assess.lake.budget import NEEDED, Budget
+from aquabuf.assess.lake.budget import NEEDED, Budget, gran_leaves_out
 from aquabuf.assess.lake.chemistry import Chemistry, of_titration
-from aquabuf.assess.lake.inputs import ANION_NAMES, CATION_NAMES, Lakes
+from aquabuf.assess.lake.inputs import ANION_NAMES, CATION_NAMES, ORGANIC_U_REL, Lakes
 from aquabuf.assess.sample.quality import Check, fixed_check, outside_usual
 
 __all__ = ["HISTORY_COLUMNS", "IonSums", "ion_sums", "lake_checks", "own_history"]
@@ -100,6 +100,7 @@ def lake_checks(lakes: Lakes, u: Mapping[str, Array], b: Budget, c: Chemistry, s
         Check("ion balance with organic anions", sums.balance_organic, -most, most),
         Check("conductivity", figures["conductivity_percent"], -allowed, allowed),
         Check("pH against alkalinity", left * 1e3, -2e3 * left_u, np.inf),
+        _over_determined(lakes, b, c, titrated_u, spread("dic_mol_l"), spread("ph")),
         Check("ANC by charge against titration", figures["anc_gap_rest_ueq_l"], -2.0 * gap_u, 2.0 * gap_u),
         Check("pH at air", computed - get("ph_air_equilibrated"), -2.0 * computed_u, 2.0 * computed_u),
         fixed_check("sea salt", np.where(np.isfinite(figures["sulfate_star_ueq_l"]), negative, np.nan),
@@ -109,6 +110,17 @@ def lake_checks(lakes: Lakes, u: Mapping[str, Array], b: Budget, c: Chemistry, s
         fixed_check("holding time", get("holding_days")),
         fixed_check("usual ranges", outside, names),
     ]
+
+
+def _over_determined(lakes: Lakes, b: Budget, c: Chemistry, titrated_u: Array, dic_u: Array, ph_u: Array) -> Check:
+    """Titrated ANC against the one that pH and carbon give, where all three were measured."""
+    meter, ph, dic = lakes.balance(at_meter=True), lakes.get("ph"), lakes.get("dic_mol_l")
+    titrated = of_titration(lakes, np.where(np.isfinite(b.gran), b.gran, b.alkalinity))
+    gap = 1e3 * (titrated - meter.anc(ph, dic=dic))[:, 0]
+    of_carbon, of_ph = meter.carbonate_per_dic(ph)[:, 0] * dic_u, meter.intensity(ph, dic=dic)[:, 0] * ph_u
+    organic = ORGANIC_U_REL * (lakes.organic.anion_eq_l(lakes.doc_mg_l, ph) - gran_leaves_out(lakes)[0])[:, 0]
+    both = 2e3 * np.sqrt(titrated_u**2 + of_carbon**2 + of_ph**2 + organic**2)
+    return Check("alkalinity against pH and carbon", gap, -both, both)
 
 
 def _carbonate_left(lakes: Lakes, b: Budget) -> Array:

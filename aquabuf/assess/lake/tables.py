@@ -17,7 +17,7 @@ from aquabuf.assess.lake.critical import after_deposition_change
 from aquabuf.assess.lake.critical_variants import sensitivity
 from aquabuf.assess.lake.episode import anc_changes, balance_of, mix, solved, weak_changes
 from aquabuf.assess.lake.inputs import IONS
-from aquabuf.assess.lake.liming import DEMANDS, lime_dose, reacidification_words
+from aquabuf.assess.lake.liming import DEMANDS, lime_dose, product_g_m3, reacidification_words
 from aquabuf.assess.lake.options import LakeOptions
 from aquabuf.assess.lake.schemes import QUANTITIES
 from aquabuf.assess.limits import Limit
@@ -29,6 +29,7 @@ Array = NDArray[np.float64]
 LEAST_SHOWN = 0.005  # probability from which a class gets a row of its own
 SHARES = (0.1, 0.2, 0.3, 0.4, 0.5, 0.6, 0.8, 1.0)
 MICRO, MILLI = 1e6, 1e3
+DAYS_PER_YEAR, MOST_YEARS = 365.25, 1000.0
 CLASS_VERDICT = "class"
 
 
@@ -231,13 +232,28 @@ def liming_table(a: LakeAssessment, options: LakeOptions) -> pd.DataFrame:
     repeated = ("lime_dose_ueq_l", "lime_g_m3", "lime_t", "lime_least_t", "lime_most_t", "lime_stream_t_yr",
                 "lime_ph_closed", "lime_ph_at_air", "lime_warning", "reacidify_yr")
     target = f"ANC {options.lime_anc_ueq_l:g} µeq/L" if options.lime_ph is None else f"pH {options.lime_ph:g} at air"
-    again = _reacidify_words(a, rows)
+    again, limit = _reacidify_words(a, rows), np.broadcast_to(a.answers.limit, a.answers.anc_used.shape)[:, 0]
+    limed_to = a.results["anc_used_ueq_l"].to_numpy(dtype=float) + dose
+    repeat = np.where(again == "", (limed_to - MICRO * limit)[rows.sample], np.nan)  # from the limit to the target
     return frame_of(_head(a, rows) | {
         "product": rows.of_mask([a.rules.lime.name]), "target": rows.of_mask([target]),
         **{name: a.results[name].to_numpy()[rows.sample] for name in repeated}, "reacidify_words": again,
+        "reacidify_date": _days_later(options.lime_date, a.results["reacidify_yr"].to_numpy(dtype=float)[rows.sample]),
+        "repeat_dose_ueq_l": repeat,
+        "repeat_g_m3": product_g_m3(repeat / MICRO, a.rules.lime, a.rules.lime.dissolved_usual),
         **{f"taken_by_{name}_ueq_l": MICRO * v[:, 0][rows.sample] for name, v in demands.demand_eq_l.items()
            if name in DEMANDS},
         "hazard": rows.of_mask([a.rules.lime.hazard])})
+
+
+def _days_later(day: str, years: Array) -> NDArray[np.object_]:
+    """The day so many years after `day`; empty where either is not known."""
+    out = np.full(years.shape, "", dtype=object)
+    known = np.isfinite(years) & (years < MOST_YEARS)
+    if day:
+        days = np.round(years[known] * DAYS_PER_YEAR).astype("timedelta64[D]")
+        out[known] = (np.datetime64(day) + days).astype(str)
+    return out
 
 
 def _reacidify_words(a: LakeAssessment, rows: LongRows) -> NDArray[np.object_]:

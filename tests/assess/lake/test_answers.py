@@ -55,17 +55,16 @@ def test_a_plan_of_some_lakes():
     assert_array_equal(part.sources[0], plan.sources[0][[2, 0]])
 
 
-@pytest.mark.parametrize("method", ["end_point"])
-def test_a_fixed_end_point_never_becomes_gran_anc_nor_a_class(method):
+@pytest.mark.parametrize("titrated", [{"anc_eq_l": 5e-5}, {"anc_eq_l": 5e-5, "filtered": "no"}, {"alkalinity_eq_l": 5e-5, "filtered": "no"}])
+def test_a_fixed_end_point_never_becomes_gran_anc_nor_a_class(titrated):
     """It keeps a column of its own; without ions there is no class, with them the class is theirs."""
-    bare = {"anc_eq_l": 5e-5, "anc_method": method, "temperature_c": 10.0, "ph": 6.0}
-    row = result(bare | LAND | FALL)
+    row = result(titrated | {"anc_method": "end_point", "temperature_c": 10.0, "ph": 6.0} | LAND | FALL)
     assert row["anc_end_point_ueq_l"] == pytest.approx(50.0)
     assert (row["class"], row["anc_used_from"], row["status"]) == ("", "", "partial")
     for name in ("anc_gran_ueq_l", "alkalinity_ueq_l", "anc_used_ueq_l", "acid_to_anc_limit_ueq_l", "anc_limit_ueq_l",
                  "episode_anc_ueq_l", "lime_dose_ueq_l", "pco2_uatm", "anc_gap_ueq_l"):
         assert np.isnan(row[name]), name
-    row = result(WATER | {"anc_method": method, "anc_eq_l": -5e-5})
+    row = result(without(WATER, "anc_eq_l") | titrated | {"anc_method": "end_point"})
     assert (row["class"], row["class_on"]) == ("sensitive", "charge balance, standing in for Gran ANC")
     assert row["anc_used_ueq_l"] == pytest.approx(62.0)
 

@@ -219,7 +219,7 @@ def test_conductivity_of_zero_is_no_check():
     assert np.isnan(check_of("conductivity", FULL | {"conductivity_us_cm": 0.0}).value).all()
 
 
-def test_carbonate_that_pH_leaves():
+def test_carbonate_left_by_the_ph():
     """Titrated ANC + OH- and H+ of the pH, in meq/L, for a clear lake; at most twice its uncertainty below zero."""
     row = without(FULL, "doc_mg_l", "aluminum_mol_l") | {"ionic_strength_mol_l": STRENGTH, "anc_u_eq_l": 3e-6, "ph_u": 0.0}
     check = check_of("pH against alkalinity", row)

@@ -18,7 +18,10 @@ def ppm(pco2_atm):
     return 1e6 * pco2_atm / (1.0 - VAPOR_25)
 
 
-def curves(t_c=25.0, strength=1e-3, air=ppm(420e-6), doc=8.0, model=HRUSKA):
+AIR = ppm(420e-6)
+
+
+def curves(t_c=25.0, strength=1e-3, air=AIR, doc=8.0, model=HRUSKA):
     """Curves at 25 °C unless said."""
     return response_curves(t_c, strength, air, doc, model)
 
