@@ -76,13 +76,11 @@ def _ph_limits(ax: Axes, scheme: Scheme) -> None:
 
 def _curves(ax: Axes, r: ResponseCurves, is_charge_balance: bool) -> None:
     """Clear and brown water from the CO2 of air to the multiple of it."""
-    limits = ax.get_xlim()
     brown = r.brown_eq_l + is_charge_balance * r.left_out_eq_l
     waters = [("clear", r.clear_eq_l, f"clear water: CO2 of air (line) to {CO2_TIMES[-1]:g} times", 0.5)]
     if np.isfinite(brown).any():
         waters.append(("brown", brown, f"brown water, DOC {r.doc_mg_l:.3g} mg/L", 0.4))
     signs = [_band(ax, r.ph, anc * MICRO, name, order) for name, anc, _, order in waters]
-    ax.set_xlim(limits)
     ax.legend(handles=signs, labels=[words for _, _, words, _ in waters], loc="lower right", handler_map={
         tuple: HandlerTuple(ndivide=1)}, title=f"At {r.temperature_c:.3g} °C, air of {r.air_co2_ppm:.4g} ppm", **LEGEND)
 
@@ -124,7 +122,6 @@ def plot_distribution(results: pd.DataFrame, scheme: Scheme, *, ax: Axes, group:
     for curve, dashes in zip(curves, (*DASHES[:len(curves) - 1], "-"), strict=True):
         ax.step([left, *curve.x, right], [0.0, *curve.share, 100.0], where="post", color=curve.color, ls=dashes,
                 lw=2.0 if curve.bold else 1.1, label=curve.name.strip(), zorder=2.6 if curve.bold else 2.5)
-    ax.set_xlim(left, right)
     if len(curves) > 1 and not label_curves(ax, curves):
         _curve_legend(ax, curves)
     return ax

@@ -61,6 +61,8 @@ def critical_loads(run: LakeRun) -> str:
         )
     limit = "a variable ANC limit" if rules.limit.is_variable else f"ANC limit {1e6 * rules.limit.value_eq_l:g} µeq/L"
     lines.append(f"Variant: {rules.critical.label}; {limit}. critical_loads.csv shows every change of it.")
+    notes = Counter(words for text in t["critical_load_notes"] for words in text.split("; ") if words)
+    lines += [f"{plural(count, 'lake')}: {words}." for words, count in notes.most_common()]
     simple = Counter(t["simple_lake_exceeded"])
     if simple["yes"] + simple["no"]:
         lines.append(

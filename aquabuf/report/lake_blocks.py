@@ -18,6 +18,7 @@ from aquabuf.assess.lake.options import LakeOptions
 from aquabuf.assess.lake.schemes import QUANTITIES
 from aquabuf.assess.limits import Limit
 from aquabuf.assess.sample.quality import allowed, check_facts, file_check_rows
+from aquabuf.readings.duplicates import DUPLICATE_RULE
 from aquabuf.report.summary import WIDTH, item, plural
 
 __all__ = ["LakeRun", "block", "classes", "figure_or_dash", "first_to_look_at", "groups", "head", "quality",
@@ -26,6 +27,7 @@ __all__ = ["LakeRun", "block", "classes", "figure_or_dash", "first_to_look_at", 
 FIRST_SHOWN = 8
 SITES_SHOWN = 12
 REASONS_SHOWN = 10
+FAR_YEARS = 5  # between the latest samples of a survey's lakes; common practice, no source
 
 
 @dataclass(frozen=True, slots=True, eq=False, kw_only=True)
@@ -79,6 +81,10 @@ def head(run: LakeRun) -> str:
         f"{run.source}: {plural(lakes, 'lake')}{samples} assessed, {warned:,} with a warning, "
         f"{plural(refused_rows, 'row')} refused."
     )
+    dates = run.found.dates[run.latest]
+    known = dates[~np.isnat(dates)].astype("datetime64[Y]")
+    if known.size and (known.max() - known.min()).astype(int) > FAR_YEARS:
+        text += f" The latest samples of these lakes are from {known.min()} to {known.max()}: old ones tell of then."
     return textwrap.fill(text, WIDTH)
 
 
@@ -253,6 +259,10 @@ def refused(run: LakeRun) -> str:
     lines = [f"{count:,} x {column}: {rule}" for (column, rule), count in counted.most_common(REASONS_SHOWN)]
     if len(counted) > REASONS_SHOWN:
         lines.append(f"and {len(counted) - REASONS_SHOWN} more reasons")
+    again = rejected["rule"].astype(str).str.startswith(DUPLICATE_RULE)
+    single = rejected["row"][rejected["sample_id"].isin(run.found.results["sample_id"]) & ~again].nunique()
+    if single:  # only a long table has them
+        lines.append(f"{single:,} of these are single results of samples that are assessed without them")
     return block(
         f"Refused: {plural(rejected['row'].nunique(), 'row')} (rejected.csv names row, column, value and remedy)", lines
     )

@@ -14,6 +14,8 @@ import pandas as pd
 import aquabuf
 from aquabuf.assess.lake.assess import LakeAssessment, assess_lakes
 from aquabuf.assess.lake.columns import lake_columns, lake_quantities
+from aquabuf.assess.lake.episode import CHANGES, WEAK_CHANGES
+from aquabuf.assess.lake.liming import DEMANDS
 from aquabuf.assess.lake.options import LakeOptions, Rules, rules_of
 from aquabuf.assess.lake.recovery import recovery
 from aquabuf.assess.lake.survey import group_table, latest_of_site, priorities, site_keys
@@ -31,7 +33,7 @@ from aquabuf.assess.limits_file import read_limits
 from aquabuf.assess.sample.quality import check_rows, file_check_rows
 from aquabuf.assess.sample.titrated import Titrated, titrated_by
 from aquabuf.errors import InputError
-from aquabuf.readings.result import Readings, join_readings
+from aquabuf.readings.result import join_readings
 from aquabuf.readings.source import open_any, resolve_map
 from aquabuf.readings.titration.paths import TitrationFiles
 from aquabuf.report.files import OutputFolder
@@ -128,7 +130,6 @@ def assess_survey(
                 options,
                 limits,
                 files.survey.name,
-                readings,
                 titrated.in_words(files.titrations.points.name) if files.titrations else [],
             )
             _write(out, _tables(found, run, options, limits), options)
@@ -160,7 +161,6 @@ def _run_of(
     options: LakeOptions,
     limits: tuple[Limit, ...],
     source: str,
-    readings: Readings,
     titrations: list[str],
 ) -> LakeRun:
     """All that report and summary tell of."""
@@ -234,6 +234,9 @@ def _digits(options: LakeOptions) -> dict[str, dict[str, int]]:
         if c.digits is not None
         for end in ("", "_low", "_high")
     }
+    of_results |= {"anc_ueq_l": 1, "anc_change_ueq_l": 1, "ph_closed": 2, "change_percent": 1, "repeat_dose_ueq_l": 1}
+    of_results |= {f"change_{name}_ueq_l": 2 for name in (*CHANGES, *WEAK_CHANGES)}
+    of_results |= {f"taken_by_{name}_ueq_l": 2 for name in DEMANDS} | {"repeat_g_m3": 2, "probability": 3}
     of_trends = {r["name"]: int(r["digits"]) for r in read_table("trend_columns") if r["digits"]}
     return dict.fromkeys(OUTPUT_FILES, of_results) | {"trends.csv": of_trends}
 
@@ -272,6 +275,7 @@ def _record(
 ) -> dict:
     """What the run rests on, for run.json: no clock, no paths."""
     found = run.found
+    salt = bool(found.lakes.setting.lake.is_marine.any())
     return {
         "program": "aquabuf",
         "version": aquabuf.__version__,
@@ -302,7 +306,7 @@ def _record(
         "lime": rules.lime.name,
         "event": rules.event.in_words() if rules.event else None,
         "titrations": run.titrations,
-        "constants": [dict(row) for row in read_table("constants")],
+        "constants": [dict(row) for row in read_table("constants") if row["regime"] != "salt" or salt],
         "limits": [{"name": x.name, "rule": x.rule(), "source": x.source} for x in limits],
         "notes": [*found.notes, *(f"{count} x {what}: {column}" for (what, column), count in found.flags.items())],
     }

@@ -89,6 +89,7 @@ def _assumptions(run: LakeRun) -> str:
     if o.air_co2_ppm == AIR_CO2_PPM:
         air += f" (default: about the global mean of {AIR_CO2_YEAR}, recalled)"
     target = f"pH {o.lime_ph:g} at equilibrium with air" if o.lime_ph is not None else f"ANC {o.lime_anc_ueq_l:g} µeq/L"
+    has_loads = bool(run.lakes["critical_load_meq_m2_yr"].notna().any())
     end_point = int(run.lakes["anc_end_point_ueq_l"].notna().sum())
     unstated = sum("method unstated" in str(w) for w in run.lakes["anc_used_from"])
     draws = (
@@ -117,7 +118,9 @@ def _assumptions(run: LakeRun) -> str:
         "does not "
         "settle out.",
         f"Closed: the carbon of the sample stays. Air: {air}; pressure by elevation, 1 atm where neither is given.",
-        *(f"Critical load: {line}." for line in rules.critical.lines()),
+        "Tolerance, years, episode and re-acidification compare the ANC in use with the ANC limit, whatever definition that "
+        "limit was found with; the critical load works with base cations and strong acid anions.",
+        *(f"Critical load: {line}." for line in (rules.critical.lines() if has_loads else ())),
         "Sulfur deposition is taken as given; its sea salt is taken off only where chloride deposition is given. Net "
         "acid "
         "deposition counts sulfur, nitrate and ammonium less base cations, of those given.",

@@ -109,6 +109,7 @@ def _record(files: TitrationFiles, hashes: dict[str, str], options: TitrationOpt
         "options": asdict(options),
         "titrations": {"seen": tally.samples, **{k: int(v) for k, v in sorted(tally.status.items())}},
         "methods": dict(sorted(tally.methods.items())), "findings": dict(sorted(tally.findings.items())),
-        "assumed": dict(tally.assumed), "constants": [dict(row) for row in read_table("constants")],
+        "assumed": dict(tally.assumed),
+        "constants": [dict(row) for row in read_table("constants") if row["regime"] != "lake"],
         "notes": [*tally.notes, *(f"{count} x {what}: {column}" for (what, column), count in tally.flags.items())],
     }

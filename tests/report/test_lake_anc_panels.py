@@ -52,8 +52,9 @@ def test_class_limits_and_anc_limit_are_marked(ax):
     assert words(ax) == ["0", "50", "200", "ANC limit 20"]
     number = next(t for t in ax.texts if t.get_text() == "200")
     assert number.xy[0] == pytest.approx(200.0)
-    _, top = ax.get_ylim()
-    assert number.xy[1] * (top - ax.get_ylim()[0]) + ax.get_ylim()[0] > table["ph"].max()
+    highest = ax.transData.transform((0.0, table["ph"].max()))[1]
+    ax.figure.draw_without_rendering()
+    assert number.get_window_extent().y0 > highest + 3.0
 
 
 def test_limits_close_together_stand_in_two_rows(ax):
@@ -166,6 +167,7 @@ def test_wide_axis(ax, anc):
     plot_response(survey(anc), BANDS, None, ax=ax)
     low, high = ax.get_xlim()
     assert low < min(anc) < max(anc) < high
+    assert ax.get_xscale() == "asinh"
     ticks = [t for t in ax.get_xticks() if low <= t <= high]
     assert 0.0 in ticks
     assert len(ticks) >= 4
@@ -234,6 +236,14 @@ def test_only_the_largest_groups_have_a_curve(ax):
     assert shown == {"all lakes", *(f"g{k}" for k in range(2, 8))}
     assert GROUP_CURVES == 6
     assert title(ax) == "How ANC is spread (6 of 9 groups)"
+
+
+def test_a_group_just_large_enough_has_a_curve(ax):
+    """Five lakes make a distribution, four do not."""
+    table = survey(np.linspace(0.0, 200.0, 2 * GROUP_LAKES - 1), region=["b"] * GROUP_LAKES + ["a"] * (GROUP_LAKES - 1))
+    plot_distribution(table, BANDS, ax=ax)
+    assert {line.get_label() for line in ax.lines if not line.get_label().startswith("_")} == {"all lakes", "b"}
+    assert title(ax) == "How ANC is spread (1 of 2 groups)"
 
 
 def test_every_public_plot_is_tested():

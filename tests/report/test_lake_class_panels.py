@@ -28,6 +28,7 @@ def test_classes_by_group(ax):
     table = survey([-5.0, 10.0, 20.0, 300.0, 60.0, 70.0, 80.0, 10.0], region=["a"] * 4 + ["b"] * 4)
     plot_classes(table, BANDS, ax=ax)
     assert bars(ax) == {"a": [1, 2, 1], "b": [1, 3]}
+    assert [p.get_x() for p in ax.patches] == [0, 1, 0, 1, 3]  # end to end
     assert [t.get_text() for t in ax.get_yticklabels()] == ["b", "a"]  # from below
     assert words(ax) == ["1", "3", "1 of 4 at risk", "1", "2", "1", "3 of 4 at risk"]
     assert ax.get_xlabel() == "Lakes sampled (counts, no shares of a population)"
@@ -45,10 +46,14 @@ def test_classes_by_survey_weight(ax):
 
 def test_lakes_without_class_are_shown_and_not_counted_as_safe(ax):
     """A segment of their own; the share at risk is of the lakes that have a class."""
-    plot_classes(survey([-5.0, np.nan, np.nan, 300.0]), BANDS, ax=ax)
+    table = survey([-5.0, np.nan, np.nan, 300.0])
+    plot_classes(table, BANDS, ax=ax)
     assert bars(ax) == {"all lakes": [1, 1, 2]}
     assert "1 of 2 at risk" in words(ax)
     assert title(ax) == "Classes"
+    ax.clear()
+    plot_classes(table.assign(survey_weight=7.0), BANDS, ax=ax)
+    assert "50% at risk (4 sampled)" in words(ax)
 
 
 def test_groups_beyond_the_largest_are_counted(ax):

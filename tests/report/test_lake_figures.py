@@ -2,6 +2,7 @@
 
 import itertools
 import sys
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -93,6 +94,20 @@ def test_page():
     assert figure.texts[1].get_text().startswith("Classes: survey_bands, bands of the US lake surveys. Upright gray lines")
     assert tuple(figure.get_size_inches()) == (11.0, 8.0)
     assert title(drawn_page("no loads").axes[3]).startswith("First lakes to look at")
+
+
+def test_long_names_of_file_and_classes_are_cut():
+    """A file of two hundred letters, classes of the user's own with signs of all kinds: inside the page, as they are."""
+    classes = tuple(replace(c, name=f"$\\frac{{$ _class {k} of a very long name") for k, c in enumerate(BANDS.classes))
+    scheme = replace(BANDS, classes=classes, words="own words " * 40)
+    figure = lake_figure(survey(MANY_ANC, scheme=scheme), scheme, None, source="x" * 200)
+    figure.draw_without_rendering()
+    for text in (*figure.texts, *figure.legends[0].get_texts()):
+        box = text.get_window_extent()
+        assert figure.bbox.x0 <= box.x0 < box.x1 <= figure.bbox.x1
+    assert figure.legends[0].get_texts()[0].get_text().startswith("$\\frac{$ _class 0 of a")
+    assert figure.get_suptitle().startswith("x" * 59 + "…: ")
+    assert figure.texts[1].get_text().endswith("…")
 
 
 def test_samples_of_one_lake_count_once():

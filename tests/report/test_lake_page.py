@@ -14,7 +14,7 @@ import pytest
 from click.testing import CliRunner
 from numpy.testing import assert_allclose
 
-from aquabuf.assess.lake import draws, quality, survey, trend, trend_words, trends, words
+from aquabuf.assess.lake import quality, survey, trend, trend_words, trends, words
 from aquabuf.assess.lake.budget import GRAN_PH, NEEDED, anc_kinds, budget, left_out_by_gran
 from aquabuf.assess.lake.chemistry import chemistry, choose_sources
 from aquabuf.assess.lake.classes import SECOND_SHARE
@@ -29,7 +29,7 @@ from aquabuf.assess.lake.critical_choice import (
 )
 from aquabuf.assess.lake.critical_variants import full_factorial
 from aquabuf.assess.lake.episode import CHANGES, WEAK_CHANGES
-from aquabuf.assess.lake.inputs import Lakes, setting_of
+from aquabuf.assess.lake.inputs import ORGANIC_U_REL, Lakes, setting_of
 from aquabuf.assess.lake.liming import DEMANDS, lime_products
 from aquabuf.assess.lake.options import LakeOptions
 from aquabuf.assess.lake.recovery import VERDICTS
@@ -196,7 +196,7 @@ def spoken():
     yield f"*Sure* is below {trend_words.SURE:.2f}, *likely* below {trend_words.LIKELY:.2f}"
     yield f"more than {survey.FAR_DEGREES:g}° apart"
     yield f"drawn {options.draws} times"
-    yield f"drawn with {100 * draws.ORGANIC_U_REL:g} %"
+    yield f"drawn with {100 * ORGANIC_U_REL:g} %"
     yield f"beyond {lake_run.ALL_CHECKS_UP_TO:,} samples"
     yield f"`{options.organic}`. Median error"
 

@@ -74,6 +74,16 @@ def test_values_stand_at_their_dates(ax):
     assert (ax.get_ylabel(), title(ax)) == ("µeq/L", "Sulfate, Pond")
 
 
+def test_many_values_are_drawn_small(ax):
+    """Up to sixty stand large."""
+    sizes = []
+    for last in (2019, 2020):
+        frame = samples(last=last)
+        plot_trend(frame, row(frame), ax=ax)
+        sizes.append(next(line for line in reversed(ax.lines) if line.get_label().startswith("_values")).get_markersize())
+    assert sizes[0] > sizes[1]
+
+
 def test_only_the_site_s_own_values(ax):
     """Another lake in the table is not in the panel."""
     both = pd.concat([samples("Pond"), samples("Tarn", slope=5.0)])

@@ -71,12 +71,18 @@ def plan_of(lakes: Lakes, kinds: AncKinds, options: LakeOptions) -> Plan:
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Episode:
-    """The two waters that mix, the ANC of the event water in the definition in use [eq/L], and its share."""
+    """The two waters that mix, the ANC of the event water by definition and as the one in use [eq/L], and its share."""
 
     lake: Mapping[str, Array]
     event: Mapping[str, Array]
+    event_by_definition: Mapping[str, Array]
     event_anc: Array
     fraction: float
+
+    def after(self, share: float, lakes: Mapping[str, Array], ph: Array) -> dict[str, Array]:
+        """Each ANC of `lakes`, by definition, after a share of event water; pH is `ph`, which does not mix."""
+        mixed = {d: (1.0 - share) * v + share * self.event_by_definition[d] for d, v in lakes.items() if d != "ph"}
+        return mixed | {"ph": ph}
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -194,7 +200,11 @@ def episode(lakes: Lakes, c: Chemistry, rules: Rules, options: LakeOptions, used
         event = water_of_event(rules.event, rules.organic, options.air_co2_ppm, draws=draws, seed=options.seed,
                                organic_error=lakes.organic_error)
     left_organic, left_aluminum = left_out_by_gran(lakes.organic, event["doc_mg_l"], event["aluminum_mol_l"])
-    event_anc = event["anc_eq_l"] - np.where(is_titrated[:, None], left_organic - left_aluminum, 0.0)
+    titrated = event["anc_eq_l"] - left_organic + left_aluminum
+    by_definition = {
+        "anc_gran": titrated, "alkalinity": titrated, "anc_charge": event["anc_eq_l"],
+        "anc_organic_corrected": event["anc_eq_l"] - lakes.organic.strong_eq_l(event["doc_mg_l"])}
+    event_anc = np.where(is_titrated[:, None], titrated, event["anc_eq_l"])
     fraction = options.event_fraction if rules.event is None else max(rules.event.fractions)
     mixed = mix(lake, event, fraction)
     balance = balance_of(mixed, lakes.setting.lake, lakes.organic)
@@ -205,7 +215,7 @@ def episode(lakes: Lakes, c: Chemistry, rules: Rules, options: LakeOptions, used
         "event_fraction": np.where(np.isfinite(after), fraction, np.nan),
         "event_fraction_to_limit": fraction_at_anc(used, event_anc, limit),
     }
-    return Episode(lake, event, event_anc, fraction), columns
+    return Episode(lake, event, by_definition, event_anc, fraction), columns
 
 
 def closed_lake(of: Answers) -> Mapping[str, Array]:

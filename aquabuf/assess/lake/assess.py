@@ -25,6 +25,7 @@ from aquabuf.assess.lake.classes import (
 )
 from aquabuf.assess.lake.co2 import NEAL_AIR_ATM, neal_excess_temperature, neal_left_out_share, stateable
 from aquabuf.assess.lake.columns import AS_GIVEN, lake_columns
+from aquabuf.assess.lake.critical import FLAGS
 from aquabuf.assess.lake.critical_variants import sensitivity
 from aquabuf.assess.lake.draws import Spread, spread
 from aquabuf.assess.lake.episode import DEPOSITION, balance_of, deposition_words, mix
@@ -45,7 +46,7 @@ from aquabuf.readings.duplicates import duplicate_rows
 from aquabuf.readings.result import REJECTED_COLUMNS, Readings, notes_on_file
 from aquabuf.units import substances
 
-__all__ = ["BUBBLED_T_C", "LakeAssessment", "assess_lakes"]
+__all__ = ["BUBBLED_T_C", "LakeAssessment", "assess_lakes", "class_after", "closed_carbon"]
 
 Array = NDArray[np.float64]
 Words = NDArray[np.object_]
@@ -129,6 +130,7 @@ def assess_lakes(readings: Readings, rules: Rules, options: LakeOptions, limits:
     _add_quality(figures, lakes, found, sums, values)
     index, used = _classes(figures, found, rules, around)
     figures |= _lime_words(lakes, found, rules, figures) | _simple_lake(lakes, found)
+    figures["critical_load_notes"] = _load_notes(found)
     figures |= _sensitivity(lakes, found, rules) | _closed_episode(lakes, found)
     figures["exceedance_probability"] = around.limits.get(EXCEEDED, np.full(keep.size, np.nan))
     figures |= {
@@ -254,13 +256,38 @@ def _classes(figures: dict, found: Answers, rules: Rules, around: Spread) -> tup
         "class_probability": np.where(code >= 0, chance[np.arange(code.size), np.maximum(code, 0)], np.nan),
         "class_also": second_class(first, code, chance),
         "class_conflicts": disagreements(index, {s.name: s for s in rules.schemes}),
-        "episode_class": class_names(first, classify(first, _episode_value(figures, first))),
+        "episode_class": class_after(first, found.episode.after(
+            found.episode.fraction, found.by_definition, figures["episode_ph"][:, None]), place),
     }
     return index | {(first.name, ""): code}, used
 
 
-def _episode_value(figures: Mapping[str, NDArray], scheme: Scheme) -> Array:
-    return figures["episode_ph"] if scheme.quantity == "ph" else 1e-6 * figures["episode_anc_ueq_l"]
+def class_after(scheme: Scheme, by_definition: Mapping[str, Array], place: NDArray[np.intp]) -> Words:
+    """Class of each lake by values after a change, on the definition that its class rests on today."""
+    values = {d: np.broadcast_to(v, (place.size, 1))[:, 0] for d, v in by_definition.items()}
+    return class_names(scheme, classify(scheme, values_used(scheme, values, place)))
+
+
+def _load_notes(found: Answers) -> Words:
+    """What the critical load of each lake has to be told of, in words."""
+    known = np.isfinite(found.critical.load)[:, 0]
+    out = np.full(known.size, "", dtype=object)
+    for name, words in FLAGS.items():
+        hit = known & np.broadcast_to(found.critical.flags[name], (known.size, 1))[:, 0]
+        out[hit] = np.where(out[hit] == "", words, out[hit] + "; " + words)
+    return out
+
+
+def closed_carbon(lakes: Lakes, found: Answers, figures: Mapping[str, NDArray]) -> tuple[Array, Array]:
+    """Carbon and ANC that the first days after liming start from: those of the lake where its CO2 can be stated.
+
+    Elsewhere the CO2 of air at the lake's pH, which is the least that a lake open to air holds for long.
+    """
+    c, balance = found.chemistry, lakes.balance()
+    own = np.isfinite(figures["pco2_uatm"])[:, None]
+    of_air = lakes.setting.air_co2_mol_l / balance.co2_per_dic(c.ph)
+    dic = np.where(own, c.dic, of_air)
+    return dic, np.where(own, c.anc_closed, balance.anc(c.ph, dic=dic))
 
 
 def _lime_words(lakes: Lakes, found: Answers, rules: Rules, figures: Mapping[str, NDArray]) -> dict[str, NDArray]:
@@ -268,7 +295,8 @@ def _lime_words(lakes: Lakes, found: Answers, rules: Rules, figures: Mapping[str
     dose = 1e-6 * figures["lime_dose_ueq_l"][:, None]
     c = found.chemistry
     air = lakes.setting.air_co2_mol_l
-    after = after_liming(lakes.balance(), c.anc_closed, c.dic, dose, rules.lime, air)
+    dic, anc = closed_carbon(lakes, found, figures)
+    after = after_liming(lakes.balance(), anc, dic, dose, rules.lime, air)
     needed = (dose > 0.0)[:, 0]
     closed = np.where(needed, after.ph_closed[:, 0], np.nan)
     at_air = np.where(needed, lakes.balance().ph(c.anc + dose, co2=air)[:, 0], np.nan)

@@ -11,7 +11,7 @@ from aquabuf.assess.lake.anc_limit import AncLimit, find_anc_limit
 from aquabuf.assess.lake.critical import CriticalLoadChoice, parse_choice
 from aquabuf.assess.lake.event_file import EventWater, read_event
 from aquabuf.assess.lake.liming import LimeProduct, lime_products
-from aquabuf.assess.lake.schemes import Scheme, find_scheme
+from aquabuf.assess.lake.schemes import FILE_ENDING, Scheme, find_scheme
 from aquabuf.chem.gases import AIR_CO2_PPM, AIR_CO2_YEAR
 from aquabuf.chem.organic import OrganicModel, organic_models
 from aquabuf.chem.transfer import transfer_relations
@@ -82,6 +82,12 @@ class LakeOptions:
                                         ("the wind relation", self.wind_relation, transfer_relations())):
             if value not in allowed:
                 raise InputError(f"{subject} must be one of {', '.join(allowed)}; found {value!r}. Correct it.")
+        for scheme in self.schemes:
+            if not scheme.endswith(FILE_ENDING):
+                find_scheme(scheme)
+        find_organic(self.organic)
+        parse_choice(self.critical_load, find_anc_limit(self.anc_limit))
+        _find_product(self.lime)
         if not self.schemes:
             raise InputError("a scheme is needed for the class; found none. Leave the option out for survey_bands.")
 

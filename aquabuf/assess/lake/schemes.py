@@ -31,7 +31,8 @@ from aquabuf.readings.schema import Quantity, quantities
 from aquabuf.tables import read_table
 from aquabuf.units import accepted_units, linear, parse_unit, to_house
 
-__all__ = ["OWN", "QUANTITIES", "Scheme", "SensitivityClass", "find_scheme", "read_scheme", "shipped_schemes"]
+__all__ = ["FILE_ENDING", "OWN", "QUANTITIES", "Scheme", "SensitivityClass", "find_scheme", "read_scheme",
+           "shipped_schemes"]
 
 # What a scheme can be defined on, and the words for it
 QUANTITIES: Mapping[str, str] = MappingProxyType({

@@ -11,8 +11,9 @@ from numpy.typing import NDArray
 from aquabuf.arrays import worded
 from aquabuf.assess.frames import LongRows, frame_of
 from aquabuf.assess.lake.answers import closed_lake, with_carbon
-from aquabuf.assess.lake.assess import LakeAssessment
-from aquabuf.assess.lake.classes import basis_words, class_names, classify
+from aquabuf.assess.lake.assess import LakeAssessment, class_after, closed_carbon
+from aquabuf.assess.lake.classes import basis_words
+from aquabuf.assess.lake.columns import lake_columns
 from aquabuf.assess.lake.critical import after_deposition_change
 from aquabuf.assess.lake.critical_variants import sensitivity
 from aquabuf.assess.lake.episode import anc_changes, balance_of, mix, solved, weak_changes
@@ -26,6 +27,7 @@ __all__ = ["class_table", "deposition_table", "episode_table", "liming_table", "
 
 Array = NDArray[np.float64]
 
+OTHER_DIGITS = 3     # decimals of a quantity that has none of its own
 LEAST_SHOWN = 0.005  # probability from which a class gets a row of its own
 SHARES = (0.1, 0.2, 0.3, 0.4, 0.5, 0.6, 0.8, 1.0)
 MICRO, MILLI = 1e6, 1e3
@@ -82,8 +84,18 @@ def verdict_table(a: LakeAssessment, limits: Sequence[Limit]) -> pd.DataFrame:
             "next_step": np.where(hit, limit.next_step, "").astype(object),
             "source": np.full(n, limit.source, dtype=object)})
     rows = LongRows([p["mask"] for p in parts])
-    names = [name for name in parts[0] if name != "mask"]
-    return frame_of(_head(a, rows) | {name: rows.pick([p[name] for p in parts]) for name in names})
+    columns = {name: rows.pick([p[name] for p in parts]) for name in parts[0] if name != "mask"}
+    digits = {c.name: c.digits for c in lake_columns(()) if c.digits is not None}
+    places = np.array([digits.get(name, OTHER_DIGITS) for name in columns["quantity"]])
+    for name in ("value", "low", "high"):
+        columns[name] = _rounded(columns[name].astype(float), places)
+    return frame_of(_head(a, rows) | columns)
+
+
+def _rounded(values: Array, places: NDArray[np.intp]) -> Array:
+    """Values to so many decimals each, as results.csv shows them."""
+    scale = 10.0**places
+    return np.round(values * scale) / scale + 0.0
 
 
 def _class_verdicts(a: LakeAssessment, k: int) -> dict[str, NDArray]:
@@ -185,8 +197,7 @@ def episode_table(a: LakeAssessment) -> pd.DataFrame:
                    **{f"change_{name}_ueq_l": MICRO * v for name, v in causes.items()}}
         one = {name: np.broadcast_to(v, (n, 1))[:, 0] for name, v in figures.items()}
         one["event_fraction"] = np.full(n, share)
-        value = one["ph_at_air"] if scheme.quantity == "ph" else one["anc_ueq_l"] / MICRO
-        one["class"] = class_names(scheme, classify(scheme, value))
+        one["class"] = class_after(scheme, e.after(share, a.answers.by_definition, at_air), a.used[scheme.name])
         with np.errstate(invalid="ignore"):
             below = np.broadcast_to(anc < limit, (n, 1))[:, 0]
         one["below_anc_limit"] = worded(n, (np.isfinite(one["anc_ueq_l"]), "no"), (below, "yes"))
@@ -205,6 +216,7 @@ def deposition_table(a: LakeAssessment, options: LakeOptions) -> pd.DataFrame:
     for one in found:
         anc = np.broadcast_to(one.anc, (n, 1))[:, 0]
         ph = a.lakes.balance().ph(a.answers.chemistry.anc + one.anc_change, co2=a.lakes.setting.air_co2_mol_l)[:, 0]
+        by_definition = {d: v + one.anc_change for d, v in a.answers.by_definition.items()} | {"ph": ph[:, None]}
         sulfur = np.broadcast_to(a.answers.deposition.sulfur, (n, 1))[:, 0]
         exceeded = a.results["exceedance_meq_m2_yr"].to_numpy(dtype=float) + MILLI * one.change * sulfur
         net = a.results["net_acid_deposition_meq_m2_yr"].to_numpy(dtype=float)
@@ -215,7 +227,7 @@ def deposition_table(a: LakeAssessment, options: LakeOptions) -> pd.DataFrame:
         parts.append({
             "sulfur_deposition_change_percent": np.full(n, 100.0 * one.change), "anc_ueq_l": MICRO * anc,
             "anc_change_ueq_l": MICRO * np.broadcast_to(one.anc_change, (n, 1))[:, 0],
-            "class": class_names(scheme, classify(scheme, ph if scheme.quantity == "ph" else anc)), "ph_at_air": ph,
+            "class": class_after(scheme, by_definition, a.used[scheme.name]), "ph_at_air": ph,
             "exceedance_meq_m2_yr": exceeded, "years_to_anc_limit": lasts})
     rows = LongRows([np.isfinite(p["anc_ueq_l"]) for p in parts])
     return frame_of(_head(a, rows) | {name: rows.pick([p[name] for p in parts]) for name in parts[0]})
@@ -224,9 +236,8 @@ def deposition_table(a: LakeAssessment, options: LakeOptions) -> pd.DataFrame:
 def liming_table(a: LakeAssessment, options: LakeOptions) -> pd.DataFrame:
     """Dose, product and what takes it up, for each lake below the liming target."""
     dose = a.results["lime_dose_ueq_l"].to_numpy(dtype=float)
-    c = a.answers.chemistry
-    demands = lime_dose(a.lakes.balance(), c.anc_closed, c.dic, c.anc_closed + dose[:, None] / MICRO,
-                        a.lakes.setting.air_co2_mol_l)
+    dic, anc = closed_carbon(a.lakes, a.answers, {"pco2_uatm": a.results["pco2_uatm"].to_numpy(dtype=float)})
+    demands = lime_dose(a.lakes.balance(), anc, dic, anc + dose[:, None] / MICRO, a.lakes.setting.air_co2_mol_l)
     with np.errstate(invalid="ignore"):
         rows = LongRows([dose > 0.0])
     repeated = ("lime_dose_ueq_l", "lime_g_m3", "lime_t", "lime_least_t", "lime_most_t", "lime_stream_t_yr",
