@@ -118,8 +118,8 @@ def _assumptions(run: LakeRun) -> str:
         "does not "
         "settle out.",
         f"Closed: the carbon of the sample stays. Air: {air}; pressure by elevation, 1 atm where neither is given.",
-        "Tolerance, years, episode and re-acidification compare the ANC in use with the ANC limit, whatever definition that "
-        "limit was found with; the critical load works with base cations and strong acid anions.",
+        "Tolerance, years, episode and re-acidification compare the ANC in use with the ANC limit, whatever definition "
+        "that limit was found with; the critical load works with base cations and strong acid anions.",
         *(f"Critical load: {line}." for line in (rules.critical.lines() if has_loads else ())),
         "Sulfur deposition is taken as given; its sea salt is taken off only where chloride deposition is given. Net "
         "acid "

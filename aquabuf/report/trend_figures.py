@@ -132,8 +132,9 @@ def _words(ax: Axes, trend: pd.Series, width_inches: float) -> None:
     """Quantity and site in bold, below them direction and slope in the words of the table."""
     told = str(trend["words"]).split("; ")[0] + (f": {trend['toward']}" if trend["toward"] else "")
     lines = _wrapped(told, WORD_SIZE, LETTER, width_inches)
-    ax.annotate("\n".join(lines), (0.0, 1.0), (0.0, 4.0), xycoords="axes fraction", textcoords="offset points",
-                va="bottom", fontsize=WORD_SIZE, color=INK, linespacing=SPACING, parse_math=False)
+    words = ax.annotate("\n".join(lines), (0.0, 1.0), (0.0, 4.0), xycoords="axes fraction", textcoords="offset points",
+                        va="bottom", fontsize=WORD_SIZE, color=INK, linespacing=SPACING, parse_math=False)
+    words.set_in_layout(False)  # the title above keeps the room, and long words do not narrow the panel
     label = str(trend["label"])
     heading = f"{label[:1].upper()}{label[1:]}, {short_name(trend['site']).strip()}"
     ax.set_title("\n".join(_wrapped(heading, HEADING_SIZE, BOLD_LETTER, width_inches)), fontsize=HEADING_SIZE,

@@ -114,6 +114,18 @@ def test_loads_far_above_the_deposition_are_counted_not_drawn(ax):
     assert words(ax)[-1].endswith(", 2 of them beyond the axis")
 
 
+def test_axis_of_loads(ax):
+    """Of few lakes up to four times the deposition; down to as much below zero, and what lies deeper is counted as exceeded."""
+    table = survey([10.0, 20.0, 30.0, 40.0], critical_load_meq_m2_yr=[30.0, 150.0, 900.0, -700.0],
+                   critical_load_meq_m2_yr_low=np.nan, critical_load_meq_m2_yr_high=np.nan)
+    table["exceedance_meq_m2_yr"] = 40.0 - table["critical_load_meq_m2_yr"]
+    plot_loads(table, BANDS, ax=ax)
+    low, high = ax.get_ylim()
+    assert 150.0 < high < 200.0
+    assert -60.0 < low < -40.0
+    assert words(ax)[1:] == ["exceeded: 2 of 4 lakes, 1 of them beyond the axis", "not exceeded: 2, 1 of them beyond the axis"]
+
+
 def test_which_panel_of_loads():
     """Load and deposition of one lake at least, in the same lake."""
     assert has_loads(survey([10.0, 20.0]))

@@ -166,6 +166,15 @@ def test_a_change_of_method_is_marked(ax):
     assert early[0][1] < change[0][0] <= late[0][0]
 
 
+def test_three_methods_are_named_once_each(ax):
+    """The first on the left of the first line, every later one on the right of its own."""
+    frame = samples(step=(2000, 5.0))
+    frame.loc[frame["date"].dt.year >= 2005, "method"] = "IC"
+    plot_trend(frame, row(frame), ax=ax)
+    assert [t.get_text() for t in ax.texts[:-1] if t.get_text()] == ["AAS", "ICP", "IC"]
+    assert len(drawn(ax, "_sen")) == 3
+
+
 def test_unknown_method_is_called_so(ax):
     """An empty name on one side."""
     frame = samples(step=(2000, 0.0)).replace({"method": {"AAS": ""}})
@@ -279,6 +288,14 @@ def test_words_keep_their_place(name):
         for text in ax.texts[:-1]:
             box, frame_box = text.get_window_extent(), ax.get_window_extent()
             assert frame_box.y0 <= box.y0 < box.y1 <= frame_box.y1, text.get_text()
+
+
+def test_wide_words_do_not_narrow_the_panels():
+    """Letters wider than the usual: the panels still reach the edge of the page."""
+    frame = samples()
+    figure = trend_figure(frame, trend_table(frame).assign(words="WWWW MMMM " * 9))
+    figure.draw_without_rendering()
+    assert max(ax.get_position().x1 for ax in figure.axes) > 0.98
 
 
 def saved(folder, frame, name):

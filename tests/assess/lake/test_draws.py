@@ -8,8 +8,8 @@ from numpy.testing import assert_allclose, assert_array_equal
 from scipy.stats import norm
 
 from aquabuf.assess.lake.assess import assess_lakes
-from aquabuf.assess.lake.draws import DRAWN, ORGANIC_U_REL, spread
-from aquabuf.assess.lake.inputs import IONS
+from aquabuf.assess.lake.draws import DRAWN, spread
+from aquabuf.assess.lake.inputs import IONS, ORGANIC_U_REL
 from aquabuf.assess.lake.options import rules_of
 from aquabuf.assess.limits import shipped_limits
 from aquabuf.readings.schema import quantities

@@ -144,6 +144,7 @@ CASES = {  # check: a lake that meets it, a lake that breaks it
     "ion balance with organic anions": (BROWN, FULL | ions(sodium=250.0)),
     "conductivity": (FULL, FULL | {"conductivity_us_cm": 30.0}),
     "pH against alkalinity": (FULL, FULL | {"ph": 9.5, "anc_eq_l": 1e-6}),
+    "alkalinity against pH and carbon": (FULL, FULL | {"dic_mol_l": 160e-6}),
     "ANC by charge against titration": (FULL, FULL | {"anc_eq_l": -60e-6}),
     "pH at air": (FULL | {"ph_air_equilibrated": 6.6, "equilibration_co2_ppm": 420.0},
                   FULL | {"ph_air_equilibrated": 7.8, "equilibration_co2_ppm": 420.0}),
@@ -178,7 +179,8 @@ def test_every_check_is_in_a_table_and_tested_here():
 @pytest.mark.parametrize(("name", "gone"), [
     ("ion balance", "sodium_mol_l"), ("ion balance with organic anions", "sulfate_mol_l"), ("conductivity", "conductivity_us_cm"),
     ("conductivity", "calcium_mol_l"), ("pH against alkalinity", "ph"), ("pH against alkalinity", "anc_eq_l"),
-    ("ANC by charge against titration", "nitrate_mol_l"), ("ANC by charge against titration", "doc_mg_l"),
+    ("alkalinity against pH and carbon", "ph"), ("alkalinity against pH and carbon", "dic_mol_l"),
+    ("alkalinity against pH and carbon", "anc_eq_l"), ("ANC by charge against titration", "nitrate_mol_l"), ("ANC by charge against titration", "doc_mg_l"),
     ("sea salt", "chloride_mol_l"), ("CO2 pressure", "temperature_c"), ("temperature", "temperature_c"),
 ])
 def test_check_without_its_reading_is_not_made(name, gone):
@@ -227,6 +229,18 @@ def test_carbonate_left_by_the_ph():
     assert_allclose(check.value, 1e3 * left, rtol=1e-3)
     assert_allclose(check.low, -2.0 * 3e-3, rtol=1e-9)
     assert check.high == np.inf
+
+
+@pytest.mark.parametrize("named", ["anc", "alkalinity"])
+def test_titration_against_ph_and_carbon(named):
+    """Clear water: 40 µeq/L less what pH 6.5 and 80 µmol/L make by printed constants, in meq/L; all three uncertain."""
+    row = without(FULL, "doc_mg_l", "aluminum_mol_l", "anc_eq_l", "anc_method") | {
+        "ionic_strength_mol_l": STRENGTH, f"{named}_eq_l": 40e-6, f"{named}_u_eq_l": 3e-6, "ph_u": 0.04, "dic_u_mol_l": 2e-6}
+    check = check_of("alkalinity against pH and carbon", row)
+    _, a1, a2 = HAND.shares(6.5)
+    u = np.sqrt(3e-6**2 + ((a1 + 2.0 * a2) * 2e-6) ** 2 + (HAND.buffer(6.5, 80e-6) * 0.04) ** 2)
+    assert_allclose(check.value, 1e3 * (40e-6 - HAND.alkalinity(6.5, 80e-6)), rtol=0, atol=2e-4)
+    assert_allclose([check.low, check.high], 2e3 * u * np.array([[-1.0], [1.0]]), rtol=5e-3)
 
 
 def test_ph_of_bubbled_water():

@@ -7,7 +7,7 @@ from dataclasses import replace
 import numpy as np
 import pytest
 from assessed_lakes import FULL, HAWK, assessed, options_of, without
-from numpy.testing import assert_allclose, assert_array_equal
+from numpy.testing import assert_allclose
 
 from aquabuf.assess.lake.critical_variants import one_at_a_time
 from aquabuf.assess.lake.tables import (
@@ -20,9 +20,11 @@ from aquabuf.assess.lake.tables import (
     verdict_table,
 )
 from aquabuf.assess.limits import shipped_limits
+from aquabuf.tables import read_table
 
 OPERATORS = {"<": operator.lt, "<=": operator.le, ">": operator.gt, ">=": operator.ge}
 LIMITS = shipped_limits("lake_limits")
+DIGITS = {row["name"]: int(row["digits"]) for row in read_table("lake_results") if row["digits"]}
 LAKES = [
     FULL | {"sample_id": "full"},
     FULL | {"sample_id": "acid", "anc_eq_l": -60e-6, "ph": 4.6, "aluminum_mol_l": 9e-6},
@@ -124,13 +126,15 @@ def test_each_verdict_tells_its_rule_and_truth(survey):
     checked = set()
     for row in table[table["verdict"].isin(limits)].to_dict("records"):
         limit, lake = limits[row["verdict"]], results.loc[row["sample_id"]]
-        assert row["value"] == lake[row["quantity"]]
+        places = DIGITS[row["quantity"]]
+        assert_allclose(row["value"], lake[row["quantity"]], rtol=0, atol=0.5001 * 10.0**-places)
         assert row["rule"].split(" ")[0] == row["quantity"] == limit.quantity
         assert row["rule"].endswith(f" {limit.unit}" if limit.unit != "-" else f"{limit.limit:g}")
-        assert (row["warned"] == "yes") == holds(row["rule"], row["value"]), row
+        assert (row["warned"] == "yes") == holds(row["rule"], lake[row["quantity"]]) == holds(row["rule"], row["value"]), row
         assert (row["words"], row["next_step"]) == ((limit.words, limit.next_step) if row["warned"] == "yes" else ("", ""))
         if f"{row['quantity']}_low" in results:
-            assert_array_equal([row["low"], row["high"]], [lake[f"{row['quantity']}_low"], lake[f"{row['quantity']}_high"]])
+            ends = [lake[f"{row['quantity']}_low"], lake[f"{row['quantity']}_high"]]
+            assert_allclose([row["low"], row["high"]], ends, rtol=0, atol=0.5001 * 10.0**-places)
         assert (row["verdict"] in lake["warnings"].split("; ")) == (row["warned"] == "yes")
         checked.add((row["verdict"], row["warned"]))
     assert {name for name, _ in checked} == set(limits)
@@ -153,7 +157,7 @@ def test_verdict_of_the_class(survey):
     classes = table[table["verdict"].str.startswith("class by ")].to_dict("records")
     assert len(classes) == 2 * 5  # two schemes, five lakes with an ANC
     for row in classes:
-        assert row["value"] == results.loc[row["sample_id"], row["quantity"]]
+        assert_allclose(row["value"], results.loc[row["sample_id"], row["quantity"]], rtol=0, atol=0.05)
         assert holds(row["rule"].partition(" ")[2], row["value"]), row
         assert row["unit"] == "µeq/L"
         scheme, _, name = row["verdict"].removeprefix("class by ").partition(": ")
@@ -174,7 +178,15 @@ def test_verdict_by_a_ph_scheme():
     assert (row["verdict"], row["quantity"], row["unit"], row["value"]) == ("class by sweden_ph: class 5, strongly acid", "ph", "-", 5.6)
     assert (row["rule"], row["warned"]) == ("pH <= 5.6", "yes")
     assert_allclose(row["probability"], 0.5, rtol=0, atol=4 * 0.5 / np.sqrt(20_000))
-    assert [row["low"], row["high"]] == found.results[["ph_low", "ph_high"]].iloc[0].tolist()
+    assert_allclose([row["low"], row["high"]], found.results[["ph_low", "ph_high"]].iloc[0].tolist(), rtol=0, atol=0.0051)
+
+
+@pytest.mark.xfail(strict=True, reason="the value is rounded onto its limit, and the rule beside it then says the opposite")
+def test_a_value_beside_its_limit_does_not_contradict_its_rule():
+    """pH 5.996 is below 6, and 0.04 µeq/L above 0: whatever figures are shown, the rule must hold for them."""
+    table = verdict_table(assessed(FULL | {"anc_eq_l": 0.04e-6, "ph": 5.996}), LIMITS).set_index("verdict")
+    for verdict in ("below pH 6", "class by survey_bands: prone to turn acid"):
+        assert holds(table.loc[verdict, "rule"].partition(" ")[2], table.loc[verdict, "value"]), verdict
 
 
 @pytest.mark.parametrize(("verdict", "words"), [

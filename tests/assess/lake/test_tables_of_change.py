@@ -122,7 +122,6 @@ def test_shares_of_a_file(tmp_path):
 
 
 @pytest.mark.parametrize("table", [lambda a: episode_table(a).query("event_fraction == 0.1"), lambda a: deposition_table(a, options_of())])
-@pytest.mark.xfail(strict=True, reason="the class is that of the ANC in use, whatever the scheme is defined on")
 def test_class_of_the_definition_of_the_scheme(table):
     """Gran ANC 10, charge balance 62 µeq/L: by the charge balance the lake stands far above 20, today and with 10 % of rain."""
     found = assessed(FULL | {"anc_eq_l": 10e-6}, schemes=("norway_20",))
@@ -216,6 +215,17 @@ def test_target_in_words(options, target):
     found = assessed(FULL | {"anc_eq_l": -20e-6}, lime="hydrated lime", **options)
     table = liming_table(found, options_of(lime="hydrated lime", **options))
     assert (table["target"].item(), table["product"].item()) == (target, "hydrated lime")
+
+
+def test_the_next_liming():
+    """From the limit of 20 back to 100 µeq/L: 80 as CaCO3, 70 % dissolved; on the day 0.8 ln 9 years later."""
+    rows = [FULL | {"anc_eq_l": 10e-6}, FULL, without(FULL, "residence_time_yr", "lake_volume_m3") | {"anc_eq_l": 10e-6}]
+    table = liming_table(assessed(*rows), options_of(lime_date="2026-05-01"))
+    day = np.datetime64("2026-05-01") + np.timedelta64(round(0.8 * np.log(9.0) * 365.25), "D")
+    assert list(table["reacidify_date"]) == [str(day), "", ""]
+    assert_allclose(table["repeat_dose_ueq_l"], [80.0, np.nan, np.nan], rtol=1e-9)
+    assert_allclose(table["repeat_g_m3"], [80e-6 * 50.04e3 / 0.7, np.nan, np.nan], rtol=1e-4)
+    assert set(liming_table(assessed(*rows), options_of())["reacidify_date"]) == {""}
 
 
 def test_how_long_lime_lasts_in_words():

@@ -26,7 +26,8 @@ SOLVED = PRESSURE | {"pco2_from", "gas_transfer_m_d", "ph_at_air", "buffer_close
                      "episode_ph_closed", "lime_ph_closed", "lime_ph_at_air", "acid_to_ph_6_0_open_keq",
                      *(f"acid_to_ph_{ph}{kind}_ueq_l" for ph in ("6_0", "5_5", "5_0") for kind in ("", "_open"))}
 # Never told of a whole lake: only said where there is something to say
-SPOKEN = {"warnings", "failed_checks", "class_conflicts", "left_out", "lime_warning", "class_also", "missing_ions", "sea_salt_negative"}
+SPOKEN = {"warnings", "failed_checks", "class_conflicts", "left_out", "lime_warning", "class_also", "missing_ions", "sea_salt_negative",
+          "critical_load_notes"}
 CASES = [  # readings gone, answers that go with them beside the reading itself, words
     (("runoff_m_yr",), LOADS | {"f_factor", "lime_stream_t_yr"}, "critical load (give runoff)"),
     (("lake_volume_m3", "residence_time_yr"), WHOLE_LAKE | YEARS | {"reacidify_yr"},
