@@ -20,8 +20,9 @@ from aquabuf.assess.limits import Limit
 from aquabuf.assess.sample.quality import allowed, check_facts, file_check_rows
 from aquabuf.readings.duplicates import DUPLICATE_RULE
 from aquabuf.report.summary import WIDTH, item, plural
+from aquabuf.units import key
 
-__all__ = ["LakeRun", "block", "classes", "figure_or_dash", "first_to_look_at", "groups", "head", "quality",
+__all__ = ["LakeRun", "block", "classes", "first_to_look_at", "groups", "head", "quality",
            "refused", "trends"]
 
 FIRST_SHOWN = 8
@@ -57,10 +58,10 @@ class LakeRun:
 
 def block(title: str, lines: Sequence[str]) -> str:
     """A titled list; nothing where there are no lines."""
-    return "\n".join([title, *(item(line) for line in lines)]) if lines else ""
+    return "\n".join([textwrap.fill(title, WIDTH), *(item(line) for line in lines)]) if lines else ""
 
 
-def figure_or_dash(value: float, digits: int = 0) -> str:
+def _n(value: float, digits: int = 0) -> str:
     """A number with so many decimals; a dash where there is none."""
     return "-" if pd.isna(value) else f"{value:.{digits}f}"
 
@@ -68,7 +69,7 @@ def figure_or_dash(value: float, digits: int = 0) -> str:
 def _spread(row: pd.Series, name: str, digits: int = 0) -> str:
     low, high = (row.get(f"{name}_{end}", np.nan) for end in ("low", "high"))
     around = "" if pd.isna(low) else f" ({low:.{digits}f} to {high:.{digits}f})"
-    return figure_or_dash(row[name], digits) + around
+    return _n(row[name], digits) + around
 
 
 def head(run: LakeRun) -> str:
@@ -100,7 +101,7 @@ def classes(run: LakeRun) -> str:
         )
         lines.append(f"{count:,} x {one.name}{expected}: {one.words} [{scheme.rule(k)}; {_first_source(one.source)}]")
     unknown = int((table["class"] == "").sum())
-    lines += [f"{unknown:,} x no class: neither ANC nor pH to go by"] if unknown else []
+    lines += [f"{unknown:,} x no class: nothing that this scheme can class them by"] if unknown else []
     rests = Counter(w for w in table["class_on"] if w)
     lines.append(f"The class rests on: {', '.join(f'{w} {c:,}' for w, c in rests.most_common())}.")
     lines += _by_definition(run) + _by_scheme(run)
@@ -136,7 +137,7 @@ def _by_definition(run: LakeRun) -> list[str]:
     lowest = np.where(every >= 0, every, 99).min(axis=0)
     differ = int((known & (lowest != every.max(axis=0))).sum())
     lines.append(
-        f"{differ:,} of {int(known.sum()):,} lakes with more than one definition of ANC change class with it "
+        f"{differ:,} of {plural(int(known.sum()), 'lake')} with more than one definition of ANC change class with it "
         f"(column class_conflicts)."
     )
     return lines
@@ -167,7 +168,7 @@ def first_to_look_at(run: LakeRun) -> str:
     ]
     for _, p in table.iterrows():
         r = by_row.loc[p["row"]]
-        name = str(r.get("site") or r["sample_id"])[:40]
+        name = _one_line(r.get("site") or r["sample_id"])
         chance = "" if pd.isna(r["class_probability"]) else f" (probability {r['class_probability']:.2f})"
         also = f", could be {r['class_also']}" if r["class_also"] else ""
         load = (
@@ -215,7 +216,7 @@ def trends(run: LakeRun) -> str:
         f"{plural(len(run.recovery), 'lake')} sampled in several years. Recovering from acid: "
         f"{', '.join(f'{w} {c:,}' for w, c in counts.most_common())}."
     ]
-    lines += [f"{r.site}: {r.words}" for r in run.recovery.head(SITES_SHOWN).itertuples()]
+    lines += [f"{_one_line(r.site)}: {r.words}" for r in run.recovery.head(SITES_SHOWN).itertuples()]
     if len(run.recovery) > SITES_SHOWN:
         lines.append(f"and {len(run.recovery) - SITES_SHOWN:,} more in recovery.csv")
     return block("Trends (trends.csv has each quantity with its slope, interval and both p)", lines)
@@ -269,27 +270,21 @@ def refused(run: LakeRun) -> str:
 
 
 def groups(run: LakeRun) -> str:
-    """Lakes of each group by class, as a small table."""
+    """Lakes of each group by class."""
     scheme, table = run.found.rules.schemes[0], run.groups
     if len(table) < 2:
         return ""
-    from aquabuf.units import key
+    lines = []
+    for _, r in table.iterrows():
+        counts = ", ".join(f"{int(r[f'lakes_{key(c.name)}']):,} {c.name}" for c in scheme.classes)
+        anc = r["anc_used_ueq_l_median"]
+        known = int(r["with_critical_load"])
+        middle = "" if pd.isna(anc) else f"; median ANC {anc:.0f} µeq/L"
+        over = f"; critical load exceeded in {int(r['exceeded']):,} of {known:,}" if known else ""
+        lines.append(f"{_one_line(r['group'])}, {plural(int(r['lakes']), 'lake')}: {counts}{middle}{over}")
+    return block(f"Lakes by {run.options.group} and class (counts)", lines)
 
-    names = [c.name for c in scheme.classes]
-    rows = [
-        [
-            str(r["group"])[:24],
-            f"{int(r['lakes']):,}",
-            *(f"{int(r[f'lakes_{key(name)}']):,}" for name in names),
-            figure_or_dash(r["anc_used_ueq_l_median"]),
-            f"{int(r['exceeded']):,} of {int(r['with_critical_load']):,}",
-        ]
-        for _, r in table.iterrows()
-    ]
-    header = [run.options.group, "lakes", *names, "median ANC", "exceeded"]
-    widths = [max(len(row[i]) for row in [header, *rows]) for i in range(len(header))]
-    lines = [
-        "  " + "  ".join([row[0].ljust(widths[0]), *(row[i].rjust(widths[i]) for i in range(1, len(header)))])
-        for row in [header, *rows]
-    ]
-    return "\n".join([f"Lakes by {run.options.group} and class (counts; median ANC in µeq/L)", *lines])
+
+def _one_line(name: object) -> str:
+    """A name of the user's as part of a line: short and without breaks."""
+    return " ".join(str(name).split())[:40]

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import fnmatch
 import json
 from collections import Counter
 from collections.abc import Callable, Mapping
@@ -18,6 +19,7 @@ from aquabuf.assess.lake.episode import CHANGES, WEAK_CHANGES
 from aquabuf.assess.lake.liming import DEMANDS
 from aquabuf.assess.lake.options import LakeOptions, Rules, rules_of
 from aquabuf.assess.lake.recovery import recovery
+from aquabuf.assess.lake.schemes import FILE_ENDING
 from aquabuf.assess.lake.survey import group_table, latest_of_site, priorities, site_keys
 from aquabuf.assess.lake.tables import (
     class_table,
@@ -63,11 +65,12 @@ OUTPUT_FILES = (
     "run.json",
     "lakes.png",
     "lakes.svg",
-    "trends.png",
-    "trends.svg",
+    "trends*.png",
+    "trends*.svg",
 )
 SECONDS_PER_DRAW = 6e-6  # on one core, measured; only for the notice
 NOTICE_FROM = 10_000  # lakes
+TREND_PAGES = 10         # of the figure of trends, three or more lakes each
 TREND_YEARS = 3  # years with a sample from which a lake gets rows in the table of trends
 ALL_CHECKS_UP_TO = 20_000
 
@@ -82,10 +85,11 @@ class LakeFiles:
     event: Path | None = None
     titrations: TitrationFiles | None = None
 
-    def given(self) -> dict[str, Path]:
-        """Every file by what it is."""
+    def given(self, schemes: tuple[str, ...] = ()) -> dict[str, Path]:
+        """Every file by what it is; of `schemes` those that are files."""
         mapping = None if self.mapping is None else resolve_map(self.mapping)
         found = {"readings": self.survey, "map": mapping, "limits": self.limits, "event": self.event}
+        found |= {f"scheme {k}": Path(name) for k, name in enumerate(schemes, start=1) if name.endswith(FILE_ENDING)}
         more = self.titrations.given() if self.titrations else {}
         return {k: v for k, v in found.items() if v is not None} | {f"titration {k}": v for k, v in more.items()}
 
@@ -106,7 +110,7 @@ def assess_survey(
     """
     rules = rules_of(options, files.event)
     limits = read_limits(files.limits, lake_quantities(options.thresholds), "lake_limits")
-    hashes = {name: sha256(path) for name, path in files.given().items()}
+    hashes = {name: sha256(path) for name, path in files.given(options.schemes).items()}
     titrated = Titrated() if files.titrations is None else titrated_by(files.titrations)
     readings = join_readings(open_any(files.survey, files.mapping))
     if files.titrations is not None:
@@ -138,7 +142,7 @@ def assess_survey(
             record = _record(files, hashes, options, rules, run, limits)
             out.part("run.json").write_text(json.dumps(record, indent=1, ensure_ascii=False) + "\n", encoding="utf-8")
             out.part("report.txt").write_text(lake_report(run), encoding="utf-8")
-            written = [name for name in OUTPUT_FILES if name in out.written]
+            written = [name for name in OUTPUT_FILES if fnmatch.filter(out.written, name)]
     if not len(found.results):
         raise InputError(f"{failure} rejected.csv in {folder.name} names each with its remedy.")
     return lake_summary(run, written)
@@ -249,7 +253,7 @@ def _write(out: OutputFolder, tables: Mapping[str, pd.DataFrame], options: LakeO
 
 def _draw(found: LakeAssessment, run: LakeRun, out: OutputFolder) -> None:
     from aquabuf.report.lake_figures import save_lakes  # drawing is slow to import
-    from aquabuf.report.trend_figures import save_trends
+    from aquabuf.report.trend_figures import save_trends, sites_on_page
 
     save_lakes(
         found,
@@ -260,9 +264,10 @@ def _draw(found: LakeAssessment, run: LakeRun, out: OutputFolder) -> None:
         air_co2_ppm=run.options.air_co2_ppm,
     )
     if len(run.trends) and (run.trends["status"] == "ok").any():
-        save_trends(
-            run.series, run.trends, {kind: out.part(f"trends.{kind}") for kind in ("png", "svg")}, source=run.source
-        )
+        for page, sites in enumerate(sites_on_page(run.trends)[:TREND_PAGES], start=1):
+            name = "trends" if page == 1 else f"trends_{page}"
+            paths = {kind: out.part(f"{name}.{kind}") for kind in ("png", "svg")}
+            save_trends(run.series, run.trends, paths, source=run.source, sites=sites)
 
 
 def _record(
@@ -280,9 +285,9 @@ def _record(
         "program": "aquabuf",
         "version": aquabuf.__version__,
         "command": "lake",
-        "files": {name: path.name for name, path in files.given().items()},
+        "files": {name: path.name for name, path in files.given(options.schemes).items()},
         "sha256": dict(hashes),
-        "options": asdict(options),
+        "options": asdict(options) | {"schemes": [Path(name).name for name in options.schemes]},
         "lakes": {
             "rows": len(found.results),
             "lakes": int(run.latest.sum()),

@@ -14,6 +14,7 @@ from aquabuf.arrays import worded
 from aquabuf.assess.frames import frame_of
 from aquabuf.assess.lake.answers import Answers, Plan, answers, closed_lake, plan_of, with_carbon
 from aquabuf.assess.lake.budget import NEEDED, anc_kinds, gran_leaves_out, missing_ions
+from aquabuf.assess.lake.chemistry import CARBON_SOURCES
 from aquabuf.assess.lake.classes import (
     basis_words,
     class_names,
@@ -54,7 +55,6 @@ Words = NDArray[np.object_]
 BUBBLED_T_C, BUBBLED_U_PH = 22.5, 0.05  # of a laboratory where air is bubbled through; what 5 °C either way move pH by
 NEAL_LEAVES_OUT = 0.1                   # share of carbonate and hydroxide from which the relation is not used
 CONDUCTIVITY_ROOM = 0.02                # relative allowance of the conductivity meter for what missing ions may carry
-EXCEEDED = "critical load exceeded"     # limit whose probability stands in a column of its own
 NOTHING = ("no ANC, alkalinity, complete major ions or pH", "a lake needs ANC, alkalinity, all of the major ions, or "
                                                             "pH",
            "titrate the sample, or give the ions that are missing")
@@ -113,7 +113,7 @@ def assess_lakes(readings: Readings, rules: Rules, options: LakeOptions, limits:
     keep = np.flatnonzero(good)
     frame = readings.frame.iloc[keep].reset_index(drop=True)
     values = as_recorded({name: v[keep] for name, v in values.items()}, words_of(frame, "filtered"),
-                         words_of(frame, "ph_kind"))
+                         words_of(frame, "ph_kind"), words_of(frame, "anc_method"))
     u = uncertainties(values, readings.headers)
     setting = setting_of(values, options.air_co2_ppm, options.carbonic)
     lakes = Lakes({name: v[:, None] for name, v in values.items()}, setting, rules.organic, np.ones((1, 1)))
@@ -132,14 +132,15 @@ def assess_lakes(readings: Readings, rules: Rules, options: LakeOptions, limits:
     figures |= _lime_words(lakes, found, rules, figures) | _simple_lake(lakes, found)
     figures["critical_load_notes"] = _load_notes(found)
     figures |= _sensitivity(lakes, found, rules) | _closed_episode(lakes, found)
-    figures["exceedance_probability"] = around.limits.get(EXCEEDED, np.full(keep.size, np.nan))
+    figures["exceedance_probability"] = np.full(keep.size, np.nan) if around.exceeded is None else around.exceeded
     figures |= {
         "anc_used_from": anc_used_words(plan, np.where(titrated != "", titrated, method)),
         "anc_charge_form": charge_form_words(found, plan.kinds.is_computed[:, 0]), "anc_gap_words": gap_words(figures),
         "volume_from": found.water.volume_from, "net_acid_from": found.deposition.counted,
         "event_from": _event_words(lakes, rules, figures),
     }
-    figures["left_out"] = left_out_words(lakes, figures, with_event=rules.event is not None)
+    figures["left_out"] = left_out_words(lakes, figures, plan.kinds.is_gran[:, 0],
+                                         with_event=rules.event is not None)
     figures["status"] = _status(lakes, figures)
     bubbled = _at_equilibration(lakes, found, u, values)
     checks = lake_checks(lakes, u, found.budget, found.chemistry, sums, figures, bubbled)
@@ -206,7 +207,8 @@ def _add_carbon(figures: dict, around: Spread, lakes: Lakes, plan: Plan, found: 
     n = c.pco2_atm.shape[0]
     counted_organic = c.organic - gran_leaves_out(lakes)[0]
     none = np.full(n, np.nan)
-    of = stateable(c.pco2_atm[:, 0], of_titration=plan.sources[1] == 2, ph=c.ph[:, 0], carbonate_eq_l=c.carbonate[:, 0],
+    of_titration = plan.sources[1] >= CARBON_SOURCES.index("pH and ANC")
+    of = stateable(c.pco2_atm[:, 0], of_titration=of_titration, ph=c.ph[:, 0], carbonate_eq_l=c.carbonate[:, 0],
                    organic_eq_l=counted_organic[:, 0], low_atm=1e-6 * around.low.get("pco2_uatm", none),
                    high_atm=1e-6 * around.high.get("pco2_uatm", none))
     figures["pco2_neal_uatm"] = 1e6 * _neal(lakes, found)

@@ -60,7 +60,7 @@ class Budget:
 
 @dataclass(frozen=True, slots=True, eq=False)
 class AncKinds:
-    """What the column of ANC holds in each lake; masks of shape (lakes, 1).
+    """What the columns of ANC and alkalinity hold in each lake; masks of shape (lakes, 1).
 
     is_gran : a Gran ANC, or one by a method that agrees with it. is_end_point : titrated to a fixed pH, another
     quantity. is_computed : a charge balance that was worked out elsewhere.
@@ -89,15 +89,17 @@ def budget(lakes: Lakes, kinds: AncKinds, *, ammonium: bool = True) -> Budget:
     nh4 = lakes.charge("ammonium")
     counted = np.isfinite(nh4) & ammonium
     bare = base - acid
-    anc = lakes.get("anc_eq_l")
+    anc, alkalinity = lakes.get("anc_eq_l"), lakes.get("alkalinity_eq_l")
     of_ions = bare + np.where(counted, np.nan_to_num(nh4), 0.0)
-    charge = np.where(np.isnan(of_ions) & kinds.is_computed, anc, of_ions)
+    computed = np.where(np.isfinite(anc), anc, alkalinity)
+    charge = np.where(np.isnan(of_ions) & kinds.is_computed, computed, of_ions)
     gran = np.where(kinds.is_gran, anc, np.nan)
     organic, aluminum = gran_leaves_out(lakes)
     doc = lakes.get("doc_mg_l")
     return Budget(
         base_cations=base, strong_anions=acid, charge=charge, charge_bare=bare, with_ammonium=counted, gran=gran,
-        alkalinity=lakes.get("alkalinity_eq_l"), end_point=np.where(kinds.is_end_point, anc, np.nan),
+        alkalinity=np.where(kinds.is_gran, alkalinity, np.nan),
+        end_point=np.where(kinds.is_end_point, np.where(np.isfinite(anc), anc, alkalinity), np.nan),
         organic_corrected=charge - lakes.organic.strong_eq_l(doc),
         surplus=bare - strong_organic_anion(doc),
         gap=charge - gran, gap_organic=np.where(np.isfinite(doc), organic, np.nan),

@@ -22,7 +22,7 @@ Array = NDArray[np.float64]
 # What the charge-balance ANC of the open answers is worked out from, best first
 ANC_SOURCES = ("Gran ANC", "alkalinity", "charge balance", "pH and carbon")
 # What the carbon of the closed answers is worked out from, best first
-CARBON_SOURCES = ("carbon", "CO2 pressure", "pH and ANC")
+CARBON_SOURCES = ("carbon", "CO2 pressure", "pH and ANC", "air, because pH and ANC leave no carbonate")
 NONE = len(ANC_SOURCES)
 
 
@@ -58,7 +58,10 @@ def choose_sources(lakes: Lakes, b: Budget) -> tuple[NDArray[np.intp], NDArray[n
     titrated = np.isfinite(b.gran) | np.isfinite(b.alkalinity)
     anc = (np.isfinite(b.gran), np.isfinite(b.alkalinity), np.isfinite(b.charge), ph & (carbon[0] | carbon[1]))
     # the sum of ions carries too much error to tell carbon; only a titration does
-    carbons = (*carbon, ph & titrated)
+    left = of_titration(lakes, np.where(np.isfinite(b.gran), b.gran, b.alkalinity))
+    left = left - lakes.balance(at_meter=True).without_carbon(lakes.get("ph"))
+    with np.errstate(invalid="ignore"):
+        carbons = (*carbon, ph & titrated & ~(left <= 0.0), ph & titrated)
     return _first(anc), _first(carbons)
 
 
@@ -89,8 +92,8 @@ def chemistry(lakes: Lakes, b: Budget, sources: tuple[NDArray[np.intp], NDArray[
     levels = [np.full((1, 1), t) for t in thresholds]
     return Chemistry(
         anc=anc, anc_closed=at_start, ph=ph, dic=dic,
-        carbonate=np.where(np.isfinite(measured), meter.carbonate_per_dic(measured) * dic,
-                           water.carbonate_per_dic(ph) * dic),
+        carbonate=np.where(carbon_from == 3, carbonate, np.where(
+            np.isfinite(measured), meter.carbonate_per_dic(measured), water.carbonate_per_dic(ph)) * dic),
         organic=np.where(np.isfinite(lakes.get("doc_mg_l")), lakes.organic.anion_eq_l(lakes.doc_mg_l, ph), np.nan),
         pco2_atm=dic * water.co2_per_dic(ph) / lakes.setting.lake.k0,
         ph_at_air=ph_at_air,
@@ -106,11 +109,12 @@ def of_titration(lakes: Lakes, titrated: Array) -> Array:
 
 
 def _carbon(lakes: Lakes, meter: LakeBalance, ph: Array, carbonate: Array, carbon_from: NDArray[np.intp]) -> Array:
-    """Inorganic carbon: measured, of a CO2 pressure, or what carbonate alkalinity at this pH needs; none at least."""
+    """Inorganic carbon: measured, of a CO2 pressure, what carbonate alkalinity at this pH needs, or that of air."""
     of_pressure = lakes.get("pco2_atm") * lakes.setting.lake.k0 / meter.co2_per_dic(ph)
     of_anc = np.maximum(carbonate, 0.0) / meter.carbonate_per_dic(ph)
-    return np.select([carbon_from == 0, carbon_from == 1, carbon_from == 2],
-                     [lakes.get("dic_mol_l"), of_pressure, of_anc], np.nan)
+    of_air = lakes.setting.air_co2_mol_l / meter.co2_per_dic(ph)
+    return np.select([carbon_from == k for k in range(len(CARBON_SOURCES))],
+                     [lakes.get("dic_mol_l"), of_pressure, of_anc, of_air], np.nan)
 
 
 def _closed_ph(lakes: Lakes, water: LakeBalance, measured: Array, of_pair: Array, anc: Array, dic: Array) -> Array:

@@ -40,6 +40,7 @@ class Spread:
     high: dict[str, Array] = field(default_factory=dict)
     classes: dict[tuple[str, str], Array] = field(default_factory=dict)
     limits: dict[str, Array] = field(default_factory=dict)
+    exceeded: Array | None = None  # share of the draws above the critical load
 
 
 def spread(values: Mapping[str, Array], u: Mapping[str, Array], setting: Setting, plan: Plan, rules: Rules,
@@ -49,6 +50,7 @@ def spread(values: Mapping[str, Array], u: Mapping[str, Array], setting: Setting
     n = values["temperature_c"].size
     if not options.draws or not n:
         return out
+    exceeded = np.full(n, np.nan)
     wanted = [c.name for c in lake_columns(options.thresholds) if c.interval]
     used = {name: v for name, v in values.items() if name in DRAWN}
     error = np.random.default_rng([options.seed, crc32(b"organic model")]).standard_normal(options.draws)
@@ -67,6 +69,9 @@ def spread(values: Mapping[str, Array], u: Mapping[str, Array], setting: Setting
                 figures = np.broadcast_to(found.columns[limit.quantity], (block.size, options.draws))
                 chance = share(limit.met(figures), np.isfinite(figures))
                 out.limits.setdefault(limit.name, np.full(n, np.nan))[block] = chance
+        over = np.broadcast_to(found.columns["exceedance_meq_m2_yr"], (block.size, options.draws))
+        exceeded[block] = share(over > 0.0, np.isfinite(over))
+    out.exceeded = exceeded
     return out
 
 

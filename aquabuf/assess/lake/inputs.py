@@ -63,7 +63,7 @@ def words_of(frame: pd.DataFrame, name: str) -> NDArray[np.object_]:
 
 
 def as_recorded(values: Mapping[str, Array], filtered: NDArray[np.object_], ph_kind: NDArray[np.object_],
-                ) -> dict[str, Array]:
+                anc_method: NDArray[np.object_]) -> dict[str, Array]:
     """Values under the names that their record asks for.
 
     A titration of a filtered sample is an alkalinity and one of a whole sample an ANC, whichever column it came in; a
@@ -71,14 +71,18 @@ def as_recorded(values: Mapping[str, Array], filtered: NDArray[np.object_], ph_k
     """
     out = dict(values)
     for words, source, target in (("yes", "anc", "alkalinity"), ("no", "alkalinity", "anc")):
-        _move(out, filtered == words, f"{source}_eq_l", f"{target}_eq_l", f"{source}_u_eq_l", f"{target}_u_eq_l")
-    _move(out, ph_kind == "air_equilibrated", "ph", "ph_air_equilibrated", "ph_u", "ph_air_equilibrated_u")
+        rows = (filtered == words) & (anc_method != "charge_balance")
+        _move(out, rows, f"{source}_eq_l", f"{target}_eq_l", f"{source}_u_eq_l", f"{target}_u_eq_l")
+    bubbled = ph_kind == "air_equilibrated"
+    _move(out, bubbled, "ph", "ph_air_equilibrated", "ph_u", "ph_air_equilibrated_u")
+    if "ph" in out:
+        out["ph"] = np.where(bubbled, np.nan, out["ph"])
     return out
 
 
 def _move(values: dict[str, Array], rows: NDArray[np.bool_], source: str, target: str, source_u: str, target_u: str,
           ) -> None:
-    """Move values with their uncertainty to another name, where that has none; they leave the first name anyway."""
+    """Move values with their uncertainty to another name, where that has none."""
     if source not in values or not rows.any():
         return
     nothing = np.full(rows.shape, np.nan)

@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass, field
-from datetime import date
+from datetime import datetime
 from difflib import get_close_matches
 from pathlib import Path
 
@@ -62,7 +63,8 @@ class LakeOptions:
             _range("the liming target pH", self.lime_ph, 4.0, 9.0, "Planning takes 6.0 to 6.5.")
         if self.lime_date:
             try:
-                date.fromisoformat(self.lime_date)
+                if datetime.strptime(self.lime_date, "%Y-%m-%d").strftime("%Y-%m-%d") != self.lime_date:
+                    raise ValueError
             except ValueError:
                 raise InputError(f"the day of liming must be written as 2026-05-01; found {self.lime_date!r}. "
                                  f"Correct it.") from None
@@ -137,7 +139,8 @@ def own_organic_model(text: str) -> OrganicModel:
         density, pk = float(sites), tuple(float(p) for p in steps.split(","))
     except ValueError:
         density, pk = 0.0, ()
-    if len(pk) != 3 or not 0.0 < density <= 50.0 or list(pk) != sorted(pk) or not -2.0 <= pk[0] <= pk[2] <= 14.0:
+    sound = len(pk) == 3 and all(map(math.isfinite, pk)) and list(pk) == sorted(pk) and -2.0 <= pk[0] <= pk[-1] <= 14.0
+    if not (sound and 0.0 < density <= 50.0):
         raise InputError(f"an organic acid model of your own must read {SITES_WORDS}, pK rising; found {text!r}. "
                          f"Write for example 10.2:3.04,4.51,6.46.")
     return OrganicModel(name="own", sites_eq_mg=density * 1e-6, pk=pk, source="given by the user",

@@ -51,17 +51,19 @@ def ion_sums(lakes: Lakes, c: Chemistry) -> IonSums:
                 "bicarbonate": 2.0 * ionized - carbonate, "carbonate": 2.0 * (carbonate - ionized)}
     plus = _sum(charges, (*CATION_NAMES, "hydrogen"))
     minus = _sum(charges, (*ANION_NAMES, "bicarbonate", "carbonate", "hydroxide"))
-    complete = np.isfinite(c.ph) & np.isfinite(c.dic)
+    complete = np.isfinite(lakes.get("ph")) & np.isfinite(h) & np.isfinite(c.dic)
     for ion in NEEDED:
         complete &= np.isfinite(charges[ion])
     beside = water.beside_carbonate(c.ph)
+    organic = lakes.organic.anion_eq_l(lakes.doc_mg_l, c.ph)
+    both = organic + np.abs(organic - beside)  # organic anions and aluminum
     known = conductivity_of_ions(charges, constants.ionic_strength_mol_l)
 
-    def percent(extra: Array | float) -> Array:
-        total = np.where(complete & (plus + minus > 0.0), plus + minus + np.abs(extra), np.nan)
+    def percent(extra: Array | float, size: Array | float) -> Array:
+        total = np.where(complete & (plus + minus > 0.0), plus + minus + size, np.nan)
         return (100.0 * (minus + extra - plus) / total)[:, 0]
 
-    return IonSums(balance=percent(0.0), balance_organic=percent(beside),
+    return IonSums(balance=percent(0.0, 0.0), balance_organic=percent(beside, both),
                    total=np.where(complete, 1e6 * (plus + minus), np.nan)[:, 0],
                    conductivity=np.where(complete, known, np.nan)[:, 0], known=known[:, 0])
 

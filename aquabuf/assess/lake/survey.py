@@ -6,12 +6,13 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from aquabuf.assess.lake.schemes import Scheme
+from aquabuf.assess.lake.schemes import QUANTITIES, Scheme
 from aquabuf.units import key
 
 __all__ = ["ALL_LAKES", "group_table", "latest_of_site", "priorities", "site_keys", "weighted_quantile"]
 
 ALL_LAKES = "(all)"
+NO_NAMES = {"", "no_name", "noname", "unnamed", "unnamed_lake", "unknown", "none", "na", "n_a"}  # in plain form
 FAR_DEGREES = 0.02  # between samples of one lake, about 2 km; common practice, no source
 QUANTILES = (("low", 0.1), ("median", 0.5), ("high", 0.9))
 SPREAD_OF = ("anc_used_ueq_l", "ph", "critical_load_meq_m2_yr", "exceedance_meq_m2_yr")
@@ -26,14 +27,15 @@ def priorities(results: pd.DataFrame, scheme: Scheme) -> pd.DataFrame:
     """
     order = {c.name: i for i, c in enumerate(scheme.classes)}
     rank = results["class"].map(lambda name: order.get(name, len(order))).to_numpy()
-    chance = results["exceedance_probability"].to_numpy(dtype=float) if "exceedance_probability" in results else np.nan
-    exceeded = np.nan_to_num(np.broadcast_to(chance, rank.shape), nan=0.0)
+    exceeded = _exceedance(results)
     anc = results["anc_used_ueq_l"].to_numpy(dtype=float)
     at = np.lexsort((np.where(np.isnan(anc), np.inf, anc), -exceeded, rank))
     kept = [name for name in PRIORITY_COLUMNS if name in results]
     table = results.iloc[at][kept].reset_index(drop=True)
     by_name = {c.name: c for c in scheme.classes}
-    reason = [_reason(name, by_name[name].words if name in by_name else "no ANC or pH to class it by", p, warnings)
+    unknown = f"nothing to class it by: {scheme.name} needs {' or '.join(QUANTITIES[d] for d in scheme.definitions)}"
+    drawn = bool(np.isfinite(results["exceedance_probability"].to_numpy(dtype=float)).any())
+    reason = [_reason(name, by_name[name].words if name in by_name else unknown, p, warnings, drawn)
               for name, p, warnings in zip(table["class"], exceeded[at], table["warnings"], strict=True)]
     steps = [by_name[name].next_step if name in by_name else "titrate it, or have its ions measured"
              for name in table["class"]]
@@ -41,10 +43,17 @@ def priorities(results: pd.DataFrame, scheme: Scheme) -> pd.DataFrame:
     return table.assign(reason=reason, next_step=steps)
 
 
-def _reason(class_name: str, words: str, exceeded: float, warnings: str) -> str:
+def _exceedance(results: pd.DataFrame) -> NDArray[np.float64]:
+    """Probability that the critical load is exceeded; 1 or 0 by the value itself where there are no draws."""
+    chance = results["exceedance_probability"].to_numpy(dtype=float)
+    by_value = (results["exceedance_meq_m2_yr"].to_numpy(dtype=float) > 0.0).astype(float)
+    return np.where(np.isfinite(chance), chance, by_value)
+
+
+def _reason(class_name: str, words: str, exceeded: float, warnings: str, drawn: bool) -> str:
     parts = [words]
     if exceeded > 0.5:
-        parts.append(f"critical load exceeded (probability {exceeded:.2f})")
+        parts.append(f"critical load exceeded{f' (probability {exceeded:.2f})' if drawn else ''}")
     parts += [w for w in warnings.split("; ") if w and w not in (class_name, "critical load exceeded")]
     return "; ".join(parts)
 
@@ -52,32 +61,36 @@ def _reason(class_name: str, words: str, exceeded: float, warnings: str) -> str:
 def site_keys(frame: pd.DataFrame) -> NDArray[np.object_]:
     """Name of the lake of each row, unique for the place: its site, with the region where one name stands in several.
 
-    Rows of one site whose coordinates lie far apart (FAR_DEGREES) are different lakes with one name and get the
-    coordinates into theirs. Empty where no site is given.
+    Rows of one name whose coordinates lie far apart (FAR_DEGREES) are different lakes, told apart by a number behind
+    the name in order of appearance. Empty where no site is given, or only words such as "unnamed".
     """
     site = frame["site"].to_numpy(dtype=object) if "site" in frame else np.full(len(frame), "", dtype=object)
-    keys = site.copy()
-    parts = [frame["region"].to_numpy(dtype=object)] if "region" in frame else []
+    keys = np.array(["" if key(name) in NO_NAMES else name for name in site], dtype=object)
+    if "region" in frame:
+        region = frame["region"].to_numpy(dtype=object)
+        given = pd.Series(region, dtype=object).where(region != "")
+        several = given.groupby(pd.Series(keys, dtype=object)).transform("nunique").to_numpy() > 1
+        more = several & (keys != "") & (region != "")
+        keys[more] = keys[more] + " (" + region[more] + ")"
     if "latitude" in frame and "longitude" in frame:
-        parts.append(_coordinates(frame, site))
-    for part in parts:
-        several = pd.Series(part).groupby(pd.Series(site, dtype=object)).transform("nunique").to_numpy() > 1
-        more = several & (site != "") & (part != "")
-        keys[more] = keys[more] + " (" + part[more] + ")"
+        _number_places(keys, frame[["latitude", "longitude"]].to_numpy(dtype=float))
     return keys
 
 
-def _coordinates(frame: pd.DataFrame, site: NDArray) -> NDArray[np.object_]:
-    """Rounded coordinates of rows whose site lies in places that are far apart; empty elsewhere."""
-    places = frame[["latitude", "longitude"]]
-    grouped = places.groupby(pd.Series(site, dtype=object))
-    width = (grouped.transform("max") - grouped.transform("min")).max(axis=1).to_numpy()
-    known = np.isfinite(places.to_numpy()).all(axis=1)
-    with np.errstate(invalid="ignore"):
-        far = known & (width > FAR_DEGREES)
-    out = np.full(len(frame), "", dtype=object)
-    out[far] = [f"{lat:.2f}, {lon:.2f}" for lat, lon in places.to_numpy()[far].tolist()]
-    return out
+def _number_places(keys: NDArray[np.object_], places: NDArray[np.float64]) -> None:
+    """Put a number behind the names that stand in places far apart; a place is that of the first row near it."""
+    known = np.flatnonzero((keys != "") & np.isfinite(places).all(axis=1))
+    for rows in pd.Series(keys[known], dtype=object).groupby(keys[known], sort=False).indices.values():
+        at = known[np.asarray(rows)]
+        if (np.ptp(places[at], axis=0) <= FAR_DEGREES).all():
+            continue
+        seen: list[NDArray[np.float64]] = []
+        for i in at.tolist():
+            near = next((k for k, p in enumerate(seen) if (np.abs(places[i] - p) <= FAR_DEGREES).all()), None)
+            if near is None:
+                near = len(seen)
+                seen.append(places[i])
+            keys[i] = f"{keys[i]} ({near + 1})"
 
 
 def latest_of_site(keys: NDArray[np.object_], dates: NDArray[np.datetime64]) -> NDArray[np.bool_]:

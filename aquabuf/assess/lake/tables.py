@@ -13,7 +13,6 @@ from aquabuf.assess.frames import LongRows, frame_of
 from aquabuf.assess.lake.answers import closed_lake, with_carbon
 from aquabuf.assess.lake.assess import LakeAssessment, class_after, closed_carbon
 from aquabuf.assess.lake.classes import basis_words
-from aquabuf.assess.lake.columns import lake_columns
 from aquabuf.assess.lake.critical import after_deposition_change
 from aquabuf.assess.lake.critical_variants import sensitivity
 from aquabuf.assess.lake.episode import anc_changes, balance_of, mix, solved, weak_changes
@@ -27,7 +26,6 @@ __all__ = ["class_table", "deposition_table", "episode_table", "liming_table", "
 
 Array = NDArray[np.float64]
 
-OTHER_DIGITS = 3     # decimals of a quantity that has none of its own
 LEAST_SHOWN = 0.005  # probability from which a class gets a row of its own
 SHARES = (0.1, 0.2, 0.3, 0.4, 0.5, 0.6, 0.8, 1.0)
 MICRO, MILLI = 1e6, 1e3
@@ -84,18 +82,8 @@ def verdict_table(a: LakeAssessment, limits: Sequence[Limit]) -> pd.DataFrame:
             "next_step": np.where(hit, limit.next_step, "").astype(object),
             "source": np.full(n, limit.source, dtype=object)})
     rows = LongRows([p["mask"] for p in parts])
-    columns = {name: rows.pick([p[name] for p in parts]) for name in parts[0] if name != "mask"}
-    digits = {c.name: c.digits for c in lake_columns(()) if c.digits is not None}
-    places = np.array([digits.get(name, OTHER_DIGITS) for name in columns["quantity"]])
-    for name in ("value", "low", "high"):
-        columns[name] = _rounded(columns[name].astype(float), places)
-    return frame_of(_head(a, rows) | columns)
-
-
-def _rounded(values: Array, places: NDArray[np.intp]) -> Array:
-    """Values to so many decimals each, as results.csv shows them."""
-    scale = 10.0**places
-    return np.round(values * scale) / scale + 0.0
+    names = [name for name in parts[0] if name != "mask"]
+    return frame_of(_head(a, rows) | {name: rows.pick([p[name] for p in parts]) for name in names})
 
 
 def _class_verdicts(a: LakeAssessment, k: int) -> dict[str, NDArray]:

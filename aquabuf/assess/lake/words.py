@@ -40,10 +40,14 @@ _ANSWERS = (
     _Answer("ph_at_air", "pH at air", (("temperature",), (*TITRATED, "all major ions"))),
     _Answer("critical_load_meq_m2_yr", "critical load", (("runoff",), *_ION_NEEDS)),
     _Answer("exceedance_meq_m2_yr", "exceedance", (("sulfur_deposition",),)),
-    _Answer("lake_volume_m3", "the whole lake's figures", (("lake_volume", "mean_depth", "residence_time"),)),
+    _Answer("lake_volume_m3", "the whole lake's figures", (("lake_volume", "mean_depth", "residence_time"),
+                                                           ("lake_volume", "lake_area", "watershed_area"),
+                                                           ("lake_volume", "mean_depth", "watershed_area"))),
     _Answer("years_to_anc_limit", "years", (("sulfur_deposition",), ("residence_time", "lake_volume"),
-                                            ("watershed_area", "runoff"))),
-    _Answer("episode_anc_ueq_l", "episode", (("precipitation",), ("sulfur_deposition",), ("nitrate_deposition",))),
+                                            ("watershed_area", "residence_time"), ("watershed_area", "runoff"))),
+    _Answer("episode_anc_ueq_l", "episode", (
+        ("precipitation",), ("hydrogen_deposition", "sulfur_deposition"), ("hydrogen_deposition", "nitrate_deposition"),
+        ("hydrogen_deposition", "ammonium_deposition"))),
     _Answer("gas_transfer_m_d", "CO2 flux", (("wind_speed",),)),
     _Answer("reacidify_yr", "re-acidification", (("residence_time",),)),
 )
@@ -52,13 +56,18 @@ BASES = {
     "doc": "doc_mg_l", "runoff": "runoff_m_yr", "lake_volume": "lake_volume_m3", "mean_depth": "mean_depth_m",
     "residence_time": "residence_time_yr", "watershed_area": "watershed_area_m2", "wind_speed": "wind_speed_m_s",
     "precipitation": "precipitation_m_yr", "sulfur_deposition": "sulfur_deposition_eq_m2_yr",
-    "nitrate_deposition": "nitrate_deposition_eq_m2_yr", **{ion: f"{ion}_mol_l" for ion in NEEDED},
+    "nitrate_deposition": "nitrate_deposition_eq_m2_yr", "ammonium_deposition": "ammonium_deposition_eq_m2_yr",
+    "hydrogen_deposition": "hydrogen_deposition_eq_m2_yr", "lake_area": "lake_area_m2",
+    **{ion: f"{ion}_mol_l" for ion in NEEDED},
 }
 
 
-def left_out_words(lakes: Lakes, columns: Mapping[str, NDArray], *, with_event: bool) -> Words:
+def left_out_words(lakes: Lakes, columns: Mapping[str, NDArray], usable_titration: NDArray[np.bool_], *,
+                   with_event: bool) -> Words:
     """For each lake the answers that could not be worked out, each with the columns of readings that would bring it."""
     there = {name: np.isfinite(lakes.get(column))[:, 0] for name, column in BASES.items()}
+    for name in TITRATED:  # one to a fixed end point, or worked out from ions, is none
+        there[name] &= usable_titration
     there["all major ions"] = np.logical_and.reduce([there[ion] for ion in NEEDED])
     out = np.full(next(iter(there.values())).size, "", dtype=object)
     for answer in _ANSWERS:
