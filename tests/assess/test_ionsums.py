@@ -1,4 +1,4 @@
-"""Conductivity of ions and the limits of both sums: a printed lake, every lake of a survey, and a formula written here."""
+"""Conductivity of ions and the limits of both sums: a printed lake, every lake of a survey, a formula."""
 
 import csv
 import os
@@ -19,13 +19,18 @@ FUNCTIONS = {"most_imbalance": most_imbalance_percent, "most_conductivity": most
 DATA = os.environ.get("AQUABUF_OPEN_DATA", "")
 
 # µeq/L of lake 1A1-003, Eastern Lake Survey 1984 (US EPA)
-HAWK_POND = {"hydrogen": 16.2181, "calcium": 59.281, "magnesium": 16.287, "sodium": 17.487, "potassium": 6.341, "ammonium": 5.156,
+HAWK_POND = {"hydrogen": 16.2181, "calcium": 59.281, "magnesium": 16.287, "sodium": 17.487, "potassium": 6.341,
+             "ammonium": 5.156,
              "sulfate": 132.457, "nitrate": 9.775, "chloride": 8.040, "fluoride": 2.853, "bicarbonate": 0.882}
 # Equivalent conductivities that the survey used, recovered from 1798 lakes [µS/cm per meq/L, 25 °C]
-LAMBDA = {"hydrogen": 349.65, "calcium": 59.47, "magnesium": 53.0, "sodium": 50.08, "potassium": 73.48, "ammonium": 73.5,
-          "sulfate": 80.0, "nitrate": 71.42, "chloride": 76.31, "fluoride": 55.41, "bicarbonate": 44.5, "carbonate": 69.3}
-COLUMNS = {"hydrogen": "H_ueq_L", "calcium": "Ca_ueq_L", "magnesium": "Mg_ueq_L", "sodium": "Na_ueq_L", "potassium": "K_ueq_L",
-           "ammonium": "NH4_ueq_L", "sulfate": "SO4_ueq_L", "nitrate": "NO3_ueq_L", "chloride": "Cl_ueq_L", "fluoride": "F_ueq_L",
+LAMBDA = {"hydrogen": 349.65, "calcium": 59.47, "magnesium": 53.0, "sodium": 50.08, "potassium": 73.48,
+          "ammonium": 73.5,
+          "sulfate": 80.0, "nitrate": 71.42, "chloride": 76.31, "fluoride": 55.41, "bicarbonate": 44.5,
+          "carbonate": 69.3}
+COLUMNS = {"hydrogen": "H_ueq_L", "calcium": "Ca_ueq_L", "magnesium": "Mg_ueq_L", "sodium": "Na_ueq_L",
+           "potassium": "K_ueq_L",
+           "ammonium": "NH4_ueq_L", "sulfate": "SO4_ueq_L", "nitrate": "NO3_ueq_L", "chloride": "Cl_ueq_L",
+           "fluoride": "F_ueq_L",
            "bicarbonate": "HCO3_calc_ueq_L", "carbonate": "CO3_calc_ueq_L"}
 
 
@@ -60,7 +65,8 @@ def test_limits_take_arrays():
 def test_conductivity_of_a_printed_lake():
     """The agency's own figure, at infinite dilution."""
     row = published("conductivity")
-    assert_allclose(conductivity_of_ions(hawk_pond(), np.zeros(1)), float(row["expected"]), rtol=0, atol=float(row["atol"]))
+    assert_allclose(conductivity_of_ions(hawk_pond(), np.zeros(1)), float(row["expected"]), rtol=0,
+                    atol=float(row["atol"]))
 
 
 @pytest.mark.parametrize("ion", LAMBDA)
@@ -70,7 +76,7 @@ def test_each_ion_by_its_own_conductivity(ion):
 
 
 def test_ionic_strength_lowers_conductivity():
-    """Square of a monovalent Davies coefficient with A = 0.5 (Standard Methods 2510, recalled), each lake by its own."""
+    """Square of a monovalent Davies coefficient with A = 0.5 (Standard Methods 2510, recalled), row by row."""
     strength = np.array([0.0, 2.5e-4, 0.01, 0.1])
     s = np.sqrt(strength)
     by_hand = 23.886 * 10.0 ** (-2 * 0.5 * (s / (1 + s) - 0.3 * strength))

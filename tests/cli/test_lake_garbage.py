@@ -173,6 +173,15 @@ def test_one_column_of_numbers_after_another_is_taken_away(lake):
         assert len(rows()) + len(refused) == 4, name
 
 
+@pytest.mark.parametrize("column", ["conductivity_us_cm", "dic_mg_l_c", "sulfur_deposition_meq_m2_yr", "runoff_m_yr", "doc_mg_l", "wind_speed_m_s"])
+def test_the_smallest_numbers(lake, column):
+    """A number below 1e-308 is as good as zero, or refused: no warning of the machine."""
+    row = {"sample_id": "a", "temperature_c": 10, "ph": 6.5, "anc_ueq_l": 60, **ions(70, 20, 30, 5, 2, 40, 5, 20), "dic_mg_l_c": 1, "doc_mg_l": 2,
+           "conductivity_us_cm": 15, "runoff_m_yr": 0.7, "residence_time_yr": 0.5, "sulfur_deposition_meq_m2_yr": 40, "wind_speed_m_s": 3}
+    for tiny in ("1e-310", "1e-320"):
+        assert lake(table_of({**row, column: tiny}), "--force").exit_code in (0, 1)
+
+
 # ------------------------------------------------------------------ how tables are written
 
 def test_semicolons_decimal_commas_and_marks_of_other_systems(lake):

@@ -151,19 +151,25 @@ def test_tolerance(survey):
     """Median acid to each pH at air, lakes below it already, and years against deposition."""
     for ph in ("6", "5.5", "5"):
         column = survey.numbers(f"acid_to_ph_{float(ph):.1f}_open_ueq_l".replace(".", "_"))
-        median, below, of = found(rf"Acid to pH {re.escape(ph)} at equilibrium with air: median (-?\d+) µeq/L; (\d+) of (\d+) lakes", survey.flat)
+        median, below, of = found(rf"Acid to pH {re.escape(ph)} at equilibrium with air: median (-?\d+) µeq/L; below that pH already: (\d+) of (\d+) lakes", survey.flat)
         assert_allclose(median, np.nanmedian(column), rtol=0, atol=0.56)
         assert (below, of) == ((column < 0).sum(), np.isfinite(column).sum())
-    years = survey.numbers("years_to_anc_limit")
-    assert found(r"lasts ([\d.]+) years \(median of (\d+) lakes?", survey.flat)[1] == (years > 0).sum()
+    years, above = survey.numbers("years_to_anc_limit"), survey.numbers("acid_to_anc_limit_ueq_l")
+    lasts, count = found(r"lasts ([\d.]+) years \(median of the (\d+) lakes? above", survey.flat)
+    assert_allclose(lasts, np.median(years[years > 0]), rtol=0, atol=0.056)
+    assert count == (years > 0).sum()
+    assert found(r"Below the ANC limit already: (\d+) of (\d+) lakes", survey.flat) == [(years == 0).sum(), np.isfinite(years).sum()]
+    assert (years == 0).sum() == (above[np.isfinite(years)] <= 0).sum()
 
 
 def test_critical_loads(survey):
     """Median, exceeded lakes, those surely so, and the same by each variant in the report."""
     load, over, chance = (survey.numbers(n) for n in ("critical_load_meq_m2_yr", "exceedance_meq_m2_yr", "exceedance_probability"))
     assert_allclose(found(r"Critical load: median (\d+) meq", survey.flat)[0], np.nanmedian(load), rtol=0, atol=0.51)
-    assert found(r"Exceeded in (\d+) of (\d+) lakes by the chosen variant, (\d+) of them with a probability above 0\.95", survey.flat) == [
-        (over > 0).sum(), np.isfinite(over).sum(), (chance > 0.95).sum()]
+    assert found(r"Exceeded in (\d+) of (\d+) lakes by the chosen variant, with a probability above 0\.95 in (\d+); in (\d+) by .*? and in (\d+) by", survey.flat) == [
+        (over > 0).sum(), np.isfinite(over).sum(), (chance > 0.95).sum(),
+        *((over + load - survey.numbers(f"critical_load_{end}_meq_m2_yr") > 0).sum() for end in ("highest", "lowest"))]
+    assert found(r"(\d+) lakes?: F reached 1", survey.flat)[0] == (survey.numbers("f_factor") == 1.0).sum()
     part = {}
     for r in survey.rows("critical_loads.csv"):
         part.setdefault(r["variant"], []).append(float(r["exceedance_meq_m2_yr"] or "nan"))
@@ -179,13 +185,15 @@ def test_episode_carbon_and_lime(survey):
     now, then, limit, pco2, dose, tons = (survey.numbers(n) for n in ("anc_used_ueq_l", "episode_anc_ueq_l", "anc_limit_ueq_l", "pco2_uatm",
                                                                        "lime_dose_ueq_l", "lime_t"))
     known = np.isfinite(then)
-    assert found(r"(\d+) lakes? ends? at or below 0 \((\d+) [a-z ]+ today\), (\d+) below the ANC limit \((\d+) today\)", survey.flat) == [
-        (then <= 0).sum(), (now[known] <= 0).sum(), (then < limit).sum(), (now < limit)[known].sum()]
-    assert found(r"CO2 pressure is stated for (\d+) lakes?: median (\d+) µatm", survey.flat)[0] == np.isfinite(pco2).sum()
+    assert found(r"At or below 0 then: (\d+) of (\d+) lakes \((\d+) today\); below the ANC limit then: (\d+) \((\d+) today\)", survey.flat) == [
+        (then <= 0).sum(), known.sum(), (now[known] <= 0).sum(), (then < limit).sum(), (now < limit)[known].sum()]
+    assert found(r"limit is crossed: median [\d.]+ of the (\d+) lakes", survey.flat)[0] == (survey.numbers("event_fraction_to_limit") > 0).sum()
+    assert found(r"CO2 pressure is stated for (\d+) lakes?: median \d+ µatm; more than air holds: (\d+)\.", survey.flat) == [
+        np.isfinite(pco2).sum(), (survey.numbers("pco2_air_ratio") > 1).sum()]
     refused = sum(r["pco2_from"].startswith("not stated") for r in survey.rows())
-    assert sum(float(n) for n in re.findall(r"Not stated for (\d+): ", survey.flat)) == refused > 0
-    assert found(r"(\d+) lakes? (?:is|are) below an ANC of 100 µeq/L", survey.flat)[0] == (dose > 0).sum()
-    assert_allclose(found(r"with a volume: (\d+) t in all", survey.flat)[0], tons[dose > 0][np.isfinite(tons[dose > 0])].sum(), rtol=0, atol=0.51)
+    assert sum(float(n) for n in re.findall(r"Not stated for (\d+) lakes?: ", survey.flat)) == refused > 0
+    assert found(r"Below an ANC of 100 µeq/L: (\d+) lakes", survey.flat)[0] == (dose > 0).sum()
+    assert_allclose(found(r"with a volume: ([\d.]+) t in all", survey.flat)[0], tons[dose > 0][np.isfinite(tons[dose > 0])].sum(), rtol=0, atol=0.51)
 
 
 def test_quality(survey):
@@ -229,7 +237,7 @@ def test_every_assumption_is_told(told, table):
         "Air: 410 ppm CO2 in dry air; pressure by elevation, 1 atm where neither is given.", "Organic anions by fakhraei: ", organic["source"],
         *(f"Critical load: {line}." for line in record["critical_load"]), "base cations that run off per area and year, S 400", "sulfate before acid deposition 5 µeq/L + 0.05 BC*",
         "ANC limit 67 µeq/L (brown trout, Hesthagen et al. 2008, abstract)", "Liming: quicklime (CaO) to ANC 100 µeq/L", lime["source"],
-        f"Gas transfer: vachon_prairie, {transfer_relations()['vachon_prairie'].source}", "first melt", "90% intervals and probabilities from 100 seeded draws (seed 5)",
+        f"Gas transfer: vachon_prairie, {transfer_relations()['vachon_prairie'].source}", *(f"Event water, {line}." for line in record["event"]), "90% intervals and probabilities from 100 seeded draws (seed 5)",
         "Charge balance: calcium, magnesium, sodium, potassium less sulfate", "Missing ions are never taken as zero",
         "An ANC whose method is not given counts as Gran: 1 lake", "temperature and constants are taken as exact"]
     for text in (run.flat, run.flat_report):
@@ -244,7 +252,7 @@ def test_defaults_are_told_as_such(told):
     assert "potassium and ammonium less sulfate" in flat
     assert "No intervals (--draws 0)." in flat
     assert "to pH 6.3 at equilibrium with air" in flat
-    assert "below pH 6.3 at air" in flat
+    assert "Below pH 6.3 at air: 1 lake." in flat
 
 
 def test_nothing_is_said_of_probability_without_draws(told):

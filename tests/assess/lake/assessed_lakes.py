@@ -17,14 +17,17 @@ SULFATE_G, NITRATE_G = 96.06 / 2, 62.005  # grams per equivalent
 # Every reading that an answer needs; ions sum to a charge balance of 60 µeq/L without ammonium
 WATER = {"temperature_c": 10.0, "ph": 6.5, "anc_eq_l": 40e-6, "anc_method": "gran", "dic_mol_l": 80e-6, "doc_mg_l": 3.0,
          "aluminum_mol_l": 1e-6, "conductivity_us_cm": 22.0,
-         **ions(calcium=80.0, magnesium=30.0, sodium=40.0, potassium=5.0, ammonium=2.0, sulfate=65.0, nitrate=5.0, chloride=25.0)}
-LAND = {"runoff_m_yr": 0.6, "precipitation_m_yr": 1.0, "residence_time_yr": 0.8, "lake_volume_m3": 9.6e5, "lake_area_m2": 2e5,
+         **ions(calcium=80.0, magnesium=30.0, sodium=40.0, potassium=5.0, ammonium=2.0, sulfate=65.0, nitrate=5.0,
+                chloride=25.0)}
+LAND = {"runoff_m_yr": 0.6, "precipitation_m_yr": 1.0, "residence_time_yr": 0.8, "lake_volume_m3": 9.6e5,
+        "lake_area_m2": 2e5,
         "watershed_area_m2": 2e6, "wind_speed_m_s": 3.0}
 FALL = {"sulfur_deposition_eq_m2_yr": 0.04, "nitrate_deposition_eq_m2_yr": 0.02, "ammonium_deposition_eq_m2_yr": 0.015,
-        "chloride_deposition_eq_m2_yr": 0.02, "base_cation_deposition_eq_m2_yr": 0.01, "hydrogen_deposition_eq_m2_yr": 0.03,
+        "chloride_deposition_eq_m2_yr": 0.02, "base_cation_deposition_eq_m2_yr": 0.01,
+        "hydrogen_deposition_eq_m2_yr": 0.03,
         "nitrogen_sink_eq_m2_yr": 0.01}
 FULL = WATER | LAND | FALL
-# Lake 1A1-003 of the Eastern Lake Survey 1984 (US EPA): Gran ANC, runoff and sulfate deposition as the agency prints them
+# Lake 1A1-003 of the Eastern Lake Survey 1984 (US EPA): Gran ANC, runoff and sulfate deposition as printed
 HAWK = ions(**HAWK_POND) | {"anc_eq_l": -21.7e-6, "temperature_c": 10.0, "runoff_m_yr": 0.762,
                             "sulfur_deposition_eq_m2_yr": 2.10 / SULFATE_G}
 
@@ -51,7 +54,8 @@ def readings(*rows):
 def assessed(*rows, limits=None, event: Path | None = None, **options):
     """Assessment of the rows; without draws unless asked for."""
     chosen = options_of(**options)
-    return assess_lakes(readings(*rows), rules_of(chosen, event), chosen, shipped_limits("lake_limits") if limits is None else limits)
+    return assess_lakes(readings(*rows), rules_of(chosen, event), chosen,
+                        shipped_limits("lake_limits") if limits is None else limits)
 
 
 def options_of(**options):

@@ -30,7 +30,8 @@ def test_shipped_names(name, ueq_l):
     assert_allclose(limit.value_eq_l, np.nan if ueq_l is None else ueq_l * 1e-6, rtol=1e-12)
 
 
-@pytest.mark.parametrize(("text", "ueq_l"), [("20", 20), ("-5", -5), ("0", 0), ("37.5", 37.5), ("1e2", 100), ("1000", 1000),
+@pytest.mark.parametrize(("text", "ueq_l"),
+                         [("20", 20), ("-5", -5), ("0", 0), ("37.5", 37.5), ("1e2", 100), ("1000", 1000),
                                              ("-1000", -1000)])
 def test_numbers_are_microequivalents(text, ueq_l):
     """Both ends of what is accepted are in it; a number does not vary."""
@@ -39,13 +40,14 @@ def test_numbers_are_microequivalents(text, ueq_l):
     assert not limit.is_variable
 
 
-@pytest.mark.parametrize("text", ["1000.001", "-1001", "nan", "inf", "-inf", "", " ", "twenty", "20 µeq/L", "norway", "NORWAY_20",
+@pytest.mark.parametrize("text", ["1000.001", "-1001", "nan", "inf", "-inf", "", " ", "twenty", "20 µeq/L", "norway",
+                                  "NORWAY_20",
                                   "2e-5 eq"])
 def test_what_is_no_limit(text):
     """Neither a name nor a number of that size: rule, all names, value and remedy are told."""
-    rule = ("the ANC limit must be a number of µeq/L within 1000 of zero or one of uk_0, norway_20, scotland_39, scotland_low, "
-            f"scotland_high, trout_1986, trout_1995, trout_toc_low, trout_toc_middle, variable; found {text!r}. "
-            "Write for example 20.")
+    rule = ("the ANC limit must be a number of µeq/L within 1000 of zero or one of uk_0, norway_20, scotland_39, "
+            f"scotland_low, scotland_high, trout_1986, trout_1995, trout_toc_low, trout_toc_middle, variable; found "
+            f"{text!r}. Write for example 20.")
     with pytest.raises(InputError, match=f"^{re.escape(rule)}$"):
         find_anc_limit(text)
 

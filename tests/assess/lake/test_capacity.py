@@ -99,7 +99,8 @@ def test_residence_times_of_a_survey():
     names = {"runoff_m_yr": ("runoff_m_yr", 1.0), "precip_m_yr": ("precipitation_m_yr", 1.0),
              "lake_area_ha": ("lake_area_m2", 1e4), "watershed_ha": ("watershed_area_m2", 1e4),
              "lake_volume_1e6_m3": ("lake_volume_m3", 1e6)}
-    lakes = lakes_of(*({ours: float(row[theirs] or "nan") * scale for theirs, (ours, scale) in names.items()} for row in rows))
+    lakes = lakes_of(*({ours: float(row[theirs] or "nan") * scale for theirs,
+                        (ours, scale) in names.items()} for row in rows))
     printed = np.array([float(row["residence_time_yr"] or "nan") for row in rows])
     found = hydrology(lakes)
     known = np.isfinite(printed) & np.isfinite(found.residence_yr[:, 0])
@@ -119,7 +120,8 @@ def test_equivalents_of_a_lake():
     assert_allclose(H2SO4_KG_PER_KEQ, 98.07 / 2.0, rtol=0, atol=0.005)
 
 
-@pytest.mark.parametrize("gone", [(), *((name,) for name in LOADS), ("nitrate", "ammonium"), ("nitrate", "ammonium", "base_cation")])
+@pytest.mark.parametrize("gone", [(), *((name,) for name in LOADS), ("nitrate", "ammonium"),
+                                  ("nitrate", "ammonium", "base_cation")])
 def test_net_acid_counts_what_is_given(gone):
     """Sulfur, nitrate and ammonium less base cations, of those given; nothing without sulfur; and told in words."""
     row = {name: v for name, v in LOADS.items() if name not in gone}
@@ -127,7 +129,8 @@ def test_net_acid_counts_what_is_given(gone):
     sign = {"sulfur": 1, "nitrate": 1, "ammonium": 1, "base_cation": -1}
     net = sum(sign[name] * v for name, v in row.items()) if "sulfur" in row else NAN
     assert_allclose(found.net_acid[:, 0], [net, 0.065], rtol=1e-12)
-    nitrogen = sum(row.get(name, 0.0) for name in ("nitrate", "ammonium")) if {"nitrate", "ammonium"} & set(row) else NAN
+    nitrogen = sum(row.get(name, 0.0) for name in ("nitrate", "ammonium")) if {"nitrate",
+                                                                               "ammonium"} & set(row) else NAN
     assert_allclose(found.nitrogen[:, 0], [nitrogen, 0.035], rtol=1e-12)
     words = {"sulfur": "sulfur", "nitrate": " + nitrate", "ammonium": " + ammonium", "base_cation": " - base cations"}
     told = "".join(words[name] for name in row) if "sulfur" in row else ""
@@ -135,7 +138,7 @@ def test_net_acid_counts_what_is_given(gone):
 
 
 def test_sea_salt_of_the_sulfur():
-    """0.103 of the chloride (ICP Waters) where that is given, unless sea salt is left in; more salt than sulfur shows."""
+    """0.103 of the chloride (ICP Waters) where that is given, unless sea salt is left in; negative too."""
     rows = ({"sulfur": 0.040, "chloride": 0.100}, {"sulfur": 0.040}, {"sulfur": 0.005, "chloride": 0.100})
     assert_allclose(fallen(*rows).sulfur[:, 0], [0.0297, 0.040, -0.0053], rtol=1e-12)
     assert_allclose(fallen(*rows).net_acid[:, 0], [0.0297, 0.040, -0.0053], rtol=1e-12)
@@ -165,12 +168,14 @@ def test_years_close_the_mass_balance():
 
 
 def test_years_without_areas():
-    """A square meter of catchment holds runoff x residence time of lake water: 600 L/yr x 0.8 yr x 30 µeq/L over 0.065 eq/yr.
+    """A square meter of catchment holds runoff x residence time of lake water: 600 L/yr x 0.8 yr x 30 µeq/L over
+    0.065 eq/yr.
 
     The same as through volume and area where the residence time is volume over runoff x area.
     """
     bare = {"runoff_m_yr": 0.6, "residence_time_yr": 0.8}
-    catchment, surface = years(30.0, 0.065, bare, {"runoff_m_yr": 0.6, "watershed_area_m2": 2e6, "lake_volume_m3": 9.6e5})
+    catchment, surface = years(30.0, 0.065, bare,
+                               {"runoff_m_yr": 0.6, "watershed_area_m2": 2e6, "lake_volume_m3": 9.6e5})
     assert_allclose(catchment, 600.0 * 0.8 * 30e-6 / 0.065, rtol=1e-12)
     assert_array_equal(np.isnan(surface), [True, True])
 

@@ -39,12 +39,14 @@ def share_error(p):
 
 @pytest.mark.parametrize(("value", "u"), [(40.0, 4.0), (-21.7, 7.0)])
 def test_interval_of_a_gran_anc(value, u):
-    """Value and 1.645 standard uncertainties to either side, so for what is shifted from it by an exact limit or share."""
+    """Value and 1.645 standard uncertainties to either side, so for what an exact limit or share makes of it."""
     row = FULL | {"anc_eq_l": value * 1e-6, "anc_u_eq_l": u * 1e-6}
     found = result(exact(row, "anc_eq_l"), draws=DRAWS)
     # 0.6 of the lake's ANC and 0.4 of -30 µeq/L; dose to 100
-    for name, middle, width in (("anc_gran_ueq_l", value, u), ("anc_used_ueq_l", value, u), ("acid_to_anc_limit_ueq_l", value - 20.0, u),
-                                ("episode_anc_ueq_l", 0.6 * value - 12.0, 0.6 * u), ("lime_dose_ueq_l", 100.0 - value, u),
+    for name, middle, width in (("anc_gran_ueq_l", value, u), ("anc_used_ueq_l", value, u),
+                                ("acid_to_anc_limit_ueq_l", value - 20.0, u),
+                                ("episode_anc_ueq_l", 0.6 * value - 12.0, 0.6 * u),
+                                ("lime_dose_ueq_l", 100.0 - value, u),
                                 ("acid_to_anc_limit_keq", 0.96 * (value - 20.0), 0.96 * u)):
         ends = [found[f"{name}_low"], found[f"{name}_high"]]
         assert_allclose(ends, middle + width * np.array([-Z, Z]), rtol=0, atol=4.0 * END * width, err_msg=name)
@@ -53,7 +55,8 @@ def test_interval_of_a_gran_anc(value, u):
 def test_default_uncertainty_of_a_gran_anc():
     """5 µeq/L and 5 % of the value, as the table of columns says: 7 at 40 µeq/L."""
     found = result(FULL, draws=DRAWS)
-    assert_allclose(found["anc_gran_ueq_l_high"] - found["anc_gran_ueq_l_low"], 2.0 * Z * 7.0, rtol=0, atol=6.0 * END * 7.0)
+    assert_allclose(found["anc_gran_ueq_l_high"] - found["anc_gran_ueq_l_low"], 2.0 * Z * 7.0, rtol=0,
+                    atol=6.0 * END * 7.0)
 
 
 def test_interval_of_a_charge_balance():
@@ -62,7 +65,8 @@ def test_interval_of_a_charge_balance():
     row = exact(without(FULL, "anc_eq_l")) | {u_name(name): v for name, v in ions(**u).items()}
     found = result(row, draws=DRAWS)
     total = np.sqrt(sum(v**2 for v in u.values()))
-    assert_allclose([found["anc_used_ueq_l_low"], found["anc_used_ueq_l_high"]], 62.0 + total * np.array([-Z, Z]), rtol=0,
+    assert_allclose([found["anc_used_ueq_l_low"], found["anc_used_ueq_l_high"]], 62.0 + total * np.array([-Z, Z]),
+                    rtol=0,
                     atol=4.0 * END * total)
 
 
@@ -94,7 +98,7 @@ def test_probability_of_an_exceedance():
     """Only sulfur deposition uncertain: the exceedance is as normal as it is. 27.14 and 20 meq/m2/yr."""
     row = exact(HAWK) | {u_name("sulfur_deposition_eq_m2_yr"): 0.020}
     found = assessed(row, draws=DRAWS)
-    expected = norm.cdf(27.14 / 20.0)  # the deposition itself, 43.7, is cut at none in 1.4 % of the draws: below 0 anyway
+    expected = norm.cdf(27.14 / 20.0)  # deposition is cut at none in 1.4 % of the draws: below 0 anyway
     assert_allclose(found.results["exceedance_probability"], expected, rtol=0, atol=share_error(expected))
     assert_allclose(found.spread.limits["critical load exceeded"], expected, rtol=0, atol=share_error(expected))
 
@@ -122,7 +126,8 @@ def test_exact_readings_leave_no_width():
     checked = 0
     for name in ends:
         if np.isfinite(found[name]):
-            assert_allclose([found[f"{name}_low"], found[f"{name}_high"]], found[name], rtol=1e-9, atol=1e-9, err_msg=name)
+            assert_allclose([found[f"{name}_low"], found[f"{name}_high"]], found[name], rtol=1e-9, atol=1e-9,
+                            err_msg=name)
             checked += 1
     assert checked > 25
 
@@ -138,19 +143,24 @@ def test_drawn_readings_are_readings():
 
 
 MOVES = {  # an answer that each drawn reading moves
-    "ph": "ph", "anc_eq_l": "anc_gran_ueq_l", "alkalinity_eq_l": "alkalinity_ueq_l", "dic_mol_l": "dic_umol_l", "pco2_atm": "pco2_uatm",
+    "ph": "ph", "anc_eq_l": "anc_gran_ueq_l", "alkalinity_eq_l": "alkalinity_ueq_l", "dic_mol_l": "dic_umol_l",
+    "pco2_atm": "pco2_uatm",
     **{f"{ion}_mol_l": "anc_charge_ueq_l" for ion in IONS if ion != "fluoride"}, "fluoride_mol_l": "ph_at_air",
     "doc_mg_l": "organic_anion_ueq_l", "aluminum_mol_l": "ph_at_air", "runoff_m_yr": "critical_load_meq_m2_yr",
-    "precipitation_m_yr": "episode_anc_ueq_l", "residence_time_yr": "reacidify_yr", "lake_volume_m3": "acid_to_anc_limit_keq",
+    "precipitation_m_yr": "episode_anc_ueq_l", "residence_time_yr": "reacidify_yr",
+    "lake_volume_m3": "acid_to_anc_limit_keq",
     "mean_depth_m": "acid_to_anc_limit_keq", "lake_area_m2": "reacidify_yr", "watershed_area_m2": "reacidify_yr",
     "wind_speed_m_s": "co2_flux_mmol_m2_d", "sulfur_deposition_eq_m2_yr": "exceedance_meq_m2_yr",
     "nitrate_deposition_eq_m2_yr": "years_to_anc_limit", "ammonium_deposition_eq_m2_yr": "years_to_anc_limit",
     "chloride_deposition_eq_m2_yr": "exceedance_meq_m2_yr", "base_cation_deposition_eq_m2_yr": "years_to_anc_limit",
     "hydrogen_deposition_eq_m2_yr": "episode_anc_ueq_l",
 }
-IN_PLACE_OF = {"pco2_atm": ("dic_mol_l",), "alkalinity_eq_l": ("anc_eq_l",), "fluoride_mol_l": ("anc_eq_l", "alkalinity_eq_l"),
-               "mean_depth_m": ("lake_volume_m3",), "lake_area_m2": ("residence_time_yr",), "watershed_area_m2": ("residence_time_yr",)}
-GIVEN = FULL | {"dic_mol_l": 200e-6, "pco2_atm": 8e-4, "alkalinity_eq_l": 3e-5, "mean_depth_m": 4.0, "fluoride_mol_l": 2e-6}
+IN_PLACE_OF = {"pco2_atm": ("dic_mol_l",), "alkalinity_eq_l": ("anc_eq_l",),
+               "fluoride_mol_l": ("anc_eq_l", "alkalinity_eq_l"),
+               "mean_depth_m": ("lake_volume_m3",), "lake_area_m2": ("residence_time_yr",),
+               "watershed_area_m2": ("residence_time_yr",)}
+GIVEN = FULL | {"dic_mol_l": 200e-6, "pco2_atm": 8e-4, "alkalinity_eq_l": 3e-5, "mean_depth_m": 4.0,
+                "fluoride_mol_l": 2e-6}
 
 
 @pytest.mark.parametrize("name", DRAWN)
@@ -179,7 +189,8 @@ def test_no_draws_no_intervals():
         assert bare[name].isna().all()
         assert drawn[name].notna().all()
     for name in bare.columns:
-        if name not in ("class_probability", "exceedance_probability", "class_also", "pco2_from", "pco2_uatm", "pco2_air_ratio",
+        if name not in ("class_probability", "exceedance_probability", "class_also", "pco2_from", "pco2_uatm",
+                        "pco2_air_ratio",
                         "pco2_neal_uatm", "co2_flux_mmol_m2_d"):  # a wide interval takes a pressure away
             assert_array_equal(bare[name].to_numpy(), drawn[name].to_numpy(), err_msg=name)
 
@@ -189,14 +200,16 @@ def test_no_draws_no_work():
     found = assessed(FULL)
     assert (found.spread.low, found.spread.high, found.spread.classes, found.spread.limits) == ({}, {}, {}, {})
     options = options_of(draws=100)
-    nothing = spread({"temperature_c": np.zeros(0)}, {}, found.lakes.setting, found.plan, rules_of(options), options, ())
+    nothing = spread({"temperature_c": np.zeros(0)}, {}, found.lakes.setting, found.plan, rules_of(options), options,
+                     ())
     assert (nothing.low, nothing.classes) == ({}, {})
 
 
 def test_the_value_lies_within_its_interval():
     """Of nearly linear answers, in two very different lakes."""
     found = results(FULL, FULL | {"anc_eq_l": -40e-6, "ph": 4.8}, draws=1000)
-    for name in ("anc_used_ueq_l", "anc_charge_ueq_l", "ph", "ph_at_air", "buffer_closed_ueq_l_ph", "critical_load_meq_m2_yr",
+    for name in ("anc_used_ueq_l", "anc_charge_ueq_l", "ph", "ph_at_air", "buffer_closed_ueq_l_ph",
+                 "critical_load_meq_m2_yr",
                  "exceedance_meq_m2_yr", "episode_anc_ueq_l", "lime_dose_ueq_l", "acid_to_ph_5_0_open_ueq_l"):
         assert (found[f"{name}_low"] < found[name]).all(), name
         assert (found[name] < found[f"{name}_high"]).all(), name
@@ -214,9 +227,11 @@ def test_missing_answers_have_no_interval():
 
 
 LAKES = [
-    FULL, HAWK, FULL | {"anc_eq_l": -60e-6, "ph": 4.6, "dic_mol_l": np.nan}, without(FULL, "anc_eq_l"), without(FULL, "temperature_c"),
+    FULL, HAWK, FULL | {"anc_eq_l": -60e-6, "ph": 4.6, "dic_mol_l": np.nan}, without(FULL, "anc_eq_l"),
+    without(FULL, "temperature_c"),
     without(FULL, "sodium_mol_l", "doc_mg_l"), FULL | {"anc_method": "end_point"}, FULL | {"ph_temperature_c": 22.0},
-    without(FULL, "ph", "dic_mol_l"), FULL | {"alkalinity_eq_l": 3e-4, "anc_eq_l": np.nan, "salinity": 3.0}, {"ph": 5.0},
+    without(FULL, "ph", "dic_mol_l"), FULL | {"alkalinity_eq_l": 3e-4, "anc_eq_l": np.nan, "salinity": 3.0},
+    {"ph": 5.0},
     FULL | {"doc_mg_l": 14.0, "conductivity_us_cm": np.nan, "aluminum_mol_l": 9e-6},
 ]
 LAKES = [row | {"sample_id": f"lake {k}"} for k, row in enumerate(LAKES)]

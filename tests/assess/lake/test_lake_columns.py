@@ -22,8 +22,8 @@ SHIPPED = {limit.name: limit for limit in shipped_limits("lake_limits")}
 UP, DOWN = 1.0, -1.0
 
 # name: quantity, boundary, side that is warned, whether the boundary itself is.
-# Driscoll et al. 2003: at or below 0 acidic; Erstad et al. 2001: harm above pH 9; Lawrence et al. 2007: aluminum below a
-# base-cation surplus of 0; pH 6.0 and 2 µmol/L of aluminum recalled; an exceedance is one above 0.
+# Driscoll et al. 2003: at or below 0 acidic; Erstad et al. 2001: harm above pH 9; Lawrence et al. 2007: aluminum below
+# a base-cation surplus of 0; pH 6.0 and 2 µmol/L of aluminum recalled; an exceedance is one above 0.
 EXPECTED = {
     "below pH 6": ("ph", 6.0, DOWN, False),
     "aluminum": ("aluminum_umol_l", 2.0, UP, False),
@@ -49,7 +49,8 @@ def test_stars_become_thresholds():
 
 
 @pytest.mark.parametrize(("ph", "exchange", "name"), [
-    (6.0, "closed", "acid_to_ph_6_0_ueq_l"), (5.5, "open", "acid_to_ph_5_5_open_ueq_l"), (5.25, "closed", "acid_to_ph_5_25_ueq_l"),
+    (6.0, "closed", "acid_to_ph_6_0_ueq_l"), (5.5, "open", "acid_to_ph_5_5_open_ueq_l"),
+    (5.25, "closed", "acid_to_ph_5_25_ueq_l"),
     (4.0, "open", "acid_to_ph_4_0_open_ueq_l"),
 ])
 def test_name_of_a_threshold(ph, exchange, name):
@@ -80,9 +81,12 @@ def test_columns_as_given_are_those_of_readings():
 
 def test_units_of_names():
     """What a name ends in is the unit of its column."""
-    endings = {"_ueq_l": "µeq/L", "_umol_l": "µmol/L", "_uatm": "µatm", "_keq": "keq", "_meq_m2_yr": "meq/m²/yr", "_percent": "%",
-               "_us_cm": "µS/cm", "_kg": "kg", "_m3": "m³", "_mg_l": "mg/L", "_umol_m2_d": "µmol/m²/d", "_mmol_m2_d": "mmol/m²/d",
-               "_m_d": "m/d", "_ueq_l_ph": "µeq/L per pH", "_t": "t", "_t_yr": "t/yr", "_g_m3": "g/m³", "_ueq_mg": "µeq/mg",
+    endings = {"_ueq_l": "µeq/L", "_umol_l": "µmol/L", "_uatm": "µatm", "_keq": "keq", "_meq_m2_yr": "meq/m²/yr",
+               "_percent": "%",
+               "_us_cm": "µS/cm", "_kg": "kg", "_m3": "m³", "_mg_l": "mg/L", "_umol_m2_d": "µmol/m²/d",
+               "_mmol_m2_d": "mmol/m²/d",
+               "_m_d": "m/d", "_ueq_l_ph": "µeq/L per pH", "_t": "t", "_t_yr": "t/yr", "_g_m3": "g/m³",
+               "_ueq_mg": "µeq/mg",
                "_yr": "yr"}
     checked = 0
     for column in COLUMNS:
@@ -96,7 +100,8 @@ def test_units_of_names():
 def test_the_result_has_the_columns_of_the_table():
     """All in their order, ends of an interval behind those that have one, those only repeated where they were given."""
     for draws, ends in ((0, ()), (100, ("_low", "_high"))):
-        found = list(assessed(FULL | {"site": "Tarn", "date": "2001-05-01", "survey_weight": 4.0}, draws=draws).results.columns)
+        found = list(assessed(FULL | {"site": "Tarn", "date": "2001-05-01", "survey_weight": 4.0},
+                              draws=draws).results.columns)
         given = {"sample_id", "row", "site", "date", "anc_method", "survey_weight"}
         expected = [name for c in COLUMNS if c.name not in AS_GIVEN or c.name in given
                     for name in (c.name, *(c.name + end for end in ends if c.interval))]
@@ -156,7 +161,8 @@ def limits_of(tmp_path, text, table="lake_limits"):
     """Limits by name with the user's file of this text."""
     path = tmp_path / "mine.toml"
     path.write_text(text, encoding="utf-8")
-    return {limit.name: limit for limit in read_limits(path, QUANTITIES if table == "lake_limits" else limit_quantities(Options()),
+    return {limit.name: limit
+            for limit in read_limits(path, QUANTITIES if table == "lake_limits" else limit_quantities(Options()),
                                                        table)}
 
 
@@ -171,10 +177,12 @@ def test_without_a_file_the_shipped_ones():
 
 def test_own_limits_of_lakes(tmp_path):
     """A new one leads, one of a shipped name takes its place, a removed one is gone."""
-    found = limits_of(tmp_path, 'remove = ["aluminum"]\n' + OWN.format("poor", "anc_used_ueq_l", 35) + OWN.format("below pH 6", "ph", 6.4))
+    found = limits_of(tmp_path, 'remove = ["aluminum"]\n' + OWN.format("poor", "anc_used_ueq_l",
+                                                                       35) + OWN.format("below pH 6", "ph", 6.4))
     assert list(found) == ["poor", *(name for name in SHIPPED if name != "aluminum")]
     assert (found["below pH 6"].limit, found["below pH 6"].source) == (6.4, "own rule")
-    warned = assessed(FULL | {"ph": 6.3, "anc_eq_l": 30e-6}, FULL | {"ph": 6.5}, limits=tuple(found.values())).results["warnings"]
+    warned = assessed(FULL | {"ph": 6.3, "anc_eq_l": 30e-6}, FULL | {"ph": 6.5},
+                      limits=tuple(found.values())).results["warnings"]
     assert [w.split("; ")[1:] for w in warned] == [["poor", "below pH 6"], []]
 
 
@@ -184,10 +192,12 @@ def test_only_own_limits(tmp_path):
 
 
 @pytest.mark.parametrize(("text", "table", "message"), [
-    ('remove = ["acidic"]\n', "lake_limits", r"^mine\.toml: remove names a limit that is not there: 'acidic'; there are below pH 6, "
+    ('remove = ["acidic"]\n', "lake_limits",
+     r"^mine\.toml: remove names a limit that is not there: 'acidic'; there are below pH 6, "
      r"aluminum, base cations used up, critical load exceeded, episode to zero, over-limed\. Correct the name\.$"),
     ('remove = ["over-limed"]\n', "limits", "remove names a limit that is not there: 'over-limed'; there are acidic, "),
-    (OWN.format("x", "alkalinity_meq_l", 1), "lake_limits", r"limit 'x': quantity must be a figure of results\.csv; found "
+    (OWN.format("x", "alkalinity_meq_l", 1), "lake_limits",
+     r"limit 'x': quantity must be a figure of results\.csv; found "
      r"'alkalinity_meq_l'\. Choose from .*anc_used_ueq_l, .*acid_to_ph_6_0_open_ueq_l, .*critical_load_meq_m2_yr"),
     (OWN.format("x", "anc_used_ueq_l", 1), "limits", "quantity must be a figure .* found 'anc_used_ueq_l'"),
     (OWN.format("x", "anc_used_ueq_l", 1) + 'unit = "meq/L"\n', "lake_limits",

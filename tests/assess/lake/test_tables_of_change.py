@@ -1,4 +1,4 @@
-"""Tables of what may become of each lake: shares of event water, other deposition, lime; re-worked here, sums closed."""
+"""Tables of what may become of each lake: shares of event water, other deposition, lime; re-worked here."""
 
 import numpy as np
 import pytest
@@ -56,7 +56,8 @@ def test_the_share_of_the_results_is_among_them(survey):
     """0.4 of event water: ANC, pH and class as in the results."""
     rows = episode_table(survey).query("event_fraction == 0.4").set_index("sample_id")
     results = survey.results.set_index("sample_id").loc[rows.index]
-    for ours, theirs in (("anc_ueq_l", "episode_anc_ueq_l"), ("ph_at_air", "episode_ph"), ("ph_closed", "episode_ph_closed")):
+    for ours, theirs in (("anc_ueq_l", "episode_anc_ueq_l"), ("ph_at_air", "episode_ph"),
+                         ("ph_closed", "episode_ph_closed")):
         assert_allclose(rows[ours], results[theirs], rtol=1e-6)
     assert list(rows["class"]) == list(results["episode_class"])
 
@@ -89,7 +90,7 @@ def test_parts_with_organic_acids():
 
 
 def test_parts_by_hand():
-    """Half of the lake gives way to rain of 40, 20, 15, 20 and 10 meq/m2/yr in 1.0 m: µeq/L of S, NO3, NH4, Cl, other cations.
+    """Half of the lake gives way to rain of 40, 20, 15, 20 and 10 meq/m2/yr in 1.0 m: S, NO3, NH4, Cl, other cations.
 
     Sea salt of 25 µeq/L of chloride in the lake: 21.475 Na, 4.9 Mg, 0.925 Ca, 0.45 K, 2.575 SO4 (ICP Waters ratios).
     """
@@ -97,7 +98,8 @@ def test_parts_by_hand():
     salt = 0.859 + 0.196 + 0.037 + 0.018
     lake = {"base_cations": 155.0 - 25.0 * salt, "ammonium": 2.0, "sulfate": 2.575 - 65.0, "nitrate": -5.0,
             "sea_salt": 25.0 * (salt - 0.103) - 25.0}
-    rain = {"base_cations": 10.0, "ammonium": 15.0, "sulfate": 2.06 - 40.0, "nitrate": -20.0, "sea_salt": 20.0 * (salt - 0.103) - 20.0}
+    rain = {"base_cations": 10.0, "ammonium": 15.0, "sulfate": 2.06 - 40.0, "nitrate": -20.0,
+            "sea_salt": 20.0 * (salt - 0.103) - 20.0}
     for name in lake:
         assert_allclose(row[f"change_{name}_ueq_l"], 0.5 * (rain[name] - lake[name]), rtol=1e-9, err_msg=name)
     # what the ions do not tell: the lake's ANC of 40 against 62 by its ions, the rain's of -30 against its own sum
@@ -115,15 +117,18 @@ def test_ph_of_each_share():
 def test_shares_of_a_file(tmp_path):
     """Those of the file, rising."""
     path = tmp_path / "melt.toml"
-    path.write_text('[event]\nname = "melt"\nfraction = [0.5, 0.25]\n[water]\ntemperature_c = 1.0\nph = 5.0\n', encoding="utf-8")
+    path.write_text('[event]\nname = "melt"\nfraction = [0.5, 0.25]\n[water]\ntemperature_c = 1.0\nph = 5.0\n',
+                    encoding="utf-8")
     table = episode_table(assessed(FULL, HAWK, event=path))
     assert list(table["event_fraction"]) == [0.25, 0.5] * 2
-    assert table[[f"change_{name}_ueq_l" for name in ("sulfate", "nitrate")]].isna().all(axis=None)  # its ions are not known
+    assert table[[f"change_{name}_ueq_l" for name in ("sulfate",
+                                                      "nitrate")]].isna().all(axis=None)  # its ions are not known
 
 
-@pytest.mark.parametrize("table", [lambda a: episode_table(a).query("event_fraction == 0.1"), lambda a: deposition_table(a, options_of())])
+@pytest.mark.parametrize("table", [lambda a: episode_table(a).query("event_fraction == 0.1"),
+                                   lambda a: deposition_table(a, options_of())])
 def test_class_of_the_definition_of_the_scheme(table):
-    """Gran ANC 10, charge balance 62 µeq/L: by the charge balance the lake stands far above 20, today and with 10 % of rain."""
+    """Gran ANC 10, charge balance 62 µeq/L: by the charge balance the lake stays far above 20."""
     found = assessed(FULL | {"anc_eq_l": 10e-6}, schemes=("norway_20",))
     assert found.results["class"].iloc[0] == "at the limit or above"
     assert table(found)["class"].iloc[0] == "at the limit or above"
@@ -140,21 +145,23 @@ def test_no_change_of_deposition_is_today(survey):
     results = survey.results.set_index("sample_id").loc[today.index]
     assert len(table) == 2 * len(today)
     assert_array_equal(today["anc_change_ueq_l"], 0.0)
-    for ours, theirs in (("anc_ueq_l", "anc_used_ueq_l"), ("ph_at_air", "ph_at_air"), ("exceedance_meq_m2_yr", "exceedance_meq_m2_yr"),
+    for ours, theirs in (("anc_ueq_l", "anc_used_ueq_l"), ("ph_at_air", "ph_at_air"),
+                         ("exceedance_meq_m2_yr", "exceedance_meq_m2_yr"),
                          ("years_to_anc_limit", "years_to_anc_limit")):
         assert_allclose(today[ours], results[theirs], rtol=1e-9, err_msg=ours)
     assert list(today["class"]) == list(results["class"])
 
 
 def test_less_and_more_sulfur(survey):
-    """Exceedance falls with what no longer falls; years with the net acid; ANC rises when less falls and the other way."""
+    """Exceedance falls with what no longer falls; years with the net acid; ANC rises when less falls."""
     table = by_lake(deposition_table(survey, options_of(deposition_changes=(-100.0, -50.0, 50.0))), "full")
     table = table.set_index("sulfur_deposition_change_percent")
     assert list(table.index) == [0.0, -100.0, -50.0, 50.0]
     sulfur, net = 40.0 - 0.103 * 20.0, 62.94
     change = table.index.to_numpy() / 100.0
     assert_allclose(table["exceedance_meq_m2_yr"], table.loc[0.0, "exceedance_meq_m2_yr"] + change * sulfur, rtol=1e-9)
-    assert_allclose(table["years_to_anc_limit"], table.loc[0.0, "years_to_anc_limit"] * net / (net + change * sulfur), rtol=1e-9)
+    assert_allclose(table["years_to_anc_limit"], table.loc[0.0, "years_to_anc_limit"] * net / (net + change * sulfur),
+                    rtol=1e-9)
     anc = table["anc_ueq_l"]
     assert anc[-100.0] > anc[-50.0] > anc[0.0] > anc[50.0]
     assert_allclose(anc - 40.0, table["anc_change_ueq_l"], rtol=0, atol=1e-9)
@@ -162,7 +169,7 @@ def test_less_and_more_sulfur(survey):
 
 
 def test_half_of_the_sulfur_gone_from_hawk_pond(survey):
-    """Sulfate above its background of 29.48 halves: it falls by 51.07; the soil answers F of it, F at the mean base cations."""
+    """Sulfate beyond 29.48 halves: it falls by 51.07; soil answers F of it at the mean base cations."""
     table = by_lake(deposition_table(survey, options_of(deposition_changes=(-50.0,))), "hawk")
     fall = 0.5 * (131.629 - (15.0 + 0.16 * 90.472))
     mean = 90.472
@@ -175,7 +182,8 @@ def test_half_of_the_sulfur_gone_from_hawk_pond(survey):
 
 def test_no_years_where_no_net_acid_is_left():
     """Base cations outweigh what still falls."""
-    row = FULL | {"base_cation_deposition_eq_m2_yr": 0.060, "nitrate_deposition_eq_m2_yr": 0.020, "ammonium_deposition_eq_m2_yr": 0.010}
+    row = FULL | {"base_cation_deposition_eq_m2_yr": 0.060, "nitrate_deposition_eq_m2_yr": 0.020,
+                  "ammonium_deposition_eq_m2_yr": 0.010}
     table = deposition_table(assessed(row), options_of(deposition_changes=(-50.0,)))
     assert_array_equal(np.isnan(table["years_to_anc_limit"]), [False, True])
 
@@ -200,7 +208,8 @@ def test_figures_of_the_lime_table_are_those_of_the_results(survey):
     """Repeated lake by lake, with product, target and hazard in words."""
     table = liming_table(survey, options_of()).set_index("sample_id")
     results = survey.results.set_index("sample_id").loc[table.index]
-    for name in ("lime_dose_ueq_l", "lime_g_m3", "lime_t", "lime_least_t", "lime_most_t", "lime_stream_t_yr", "lime_ph_closed",
+    for name in ("lime_dose_ueq_l", "lime_g_m3", "lime_t", "lime_least_t", "lime_most_t", "lime_stream_t_yr",
+                 "lime_ph_closed",
                  "lime_ph_at_air", "reacidify_yr"):
         assert_array_equal(table[name], results[name], err_msg=name)
     assert set(table["product"]) == {"limestone"}
@@ -219,7 +228,8 @@ def test_target_in_words(options, target):
 
 def test_the_next_liming():
     """From the limit of 20 back to 100 µeq/L: 80 as CaCO3, 70 % dissolved; on the day 0.8 ln 9 years later."""
-    rows = [FULL | {"anc_eq_l": 10e-6}, FULL, without(FULL, "residence_time_yr", "lake_volume_m3") | {"anc_eq_l": 10e-6}]
+    rows = [FULL | {"anc_eq_l": 10e-6}, FULL,
+            without(FULL, "residence_time_yr", "lake_volume_m3") | {"anc_eq_l": 10e-6}]
     table = liming_table(assessed(*rows), options_of(lime_date="2026-05-01"))
     day = np.datetime64("2026-05-01") + np.timedelta64(round(0.8 * np.log(9.0) * 365.25), "D")
     assert list(table["reacidify_date"]) == [str(day), "", ""]
@@ -230,8 +240,10 @@ def test_the_next_liming():
 
 def test_how_long_lime_lasts_in_words():
     """A plain time; never, where the inflow stays above the limit; not known without a residence time."""
-    rows = [FULL | {"anc_eq_l": 10e-6}, FULL, without(FULL, "residence_time_yr", "lake_volume_m3") | {"anc_eq_l": 10e-6}]
+    rows = [FULL | {"anc_eq_l": 10e-6}, FULL,
+            without(FULL, "residence_time_yr", "lake_volume_m3") | {"anc_eq_l": 10e-6}]
     table = liming_table(assessed(*rows), options_of())
-    assert list(table["reacidify_words"]) == ["", "never by flushing: the inflow stays at or above the limit", "cannot be told"]
+    assert list(table["reacidify_words"]) == ["", "never by flushing: the inflow stays at or above the limit",
+                                              "cannot be told"]
     table = liming_table(assessed(rows[0], lime_anc_ueq_l=15.0), options_of(lime_anc_ueq_l=15.0))
     assert list(table["reacidify_words"]) == ["at or below the limit from the start"]
