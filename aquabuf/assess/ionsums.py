@@ -11,7 +11,7 @@ from aquabuf.arrays import exp10
 from aquabuf.chem.activity import log_gamma_davies
 from aquabuf.tables import read_table
 
-__all__ = ["conductivity_of_ions", "most_conductivity_percent", "most_imbalance_percent"]
+__all__ = ["conductivity_factor", "conductivity_of_ions", "most_conductivity_percent", "most_imbalance_percent"]
 
 Array = NDArray[np.float64]
 
@@ -28,7 +28,12 @@ def conductivity_of_ions(charges: Mapping[str, Array], ionic_strength_mol_l: Arr
     for row in read_table("ions"):
         if row["name"] in charges and row["conductivity_s_cm2_eq"]:
             total = total + np.nan_to_num(charges[row["name"]]) * float(row["conductivity_s_cm2_eq"]) * 1e3
-    return total * exp10(2.0 * log_gamma_davies(1, ionic_strength_mol_l, SM_2510_A))
+    return total * conductivity_factor(ionic_strength_mol_l)
+
+
+def conductivity_factor(ionic_strength_mol_l: Array) -> Array:
+    """What ions conduct at an ionic strength over infinite dilution: Standard Methods 2510 (recalled). [-]"""
+    return exp10(2.0 * log_gamma_davies(1, ionic_strength_mol_l, SM_2510_A))
 
 
 def most_imbalance_percent(total_ueq_l: Array) -> Array:

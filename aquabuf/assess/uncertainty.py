@@ -50,9 +50,12 @@ def drawn(values: Mapping[str, Array], u: Mapping[str, Array], draws: int, seed:
 
 
 def interval(many: Array) -> tuple[Array, Array]:
-    """Low and high end of the central COVERAGE of the solved draws, per row of a (rows, draws) array."""
+    """Low and high end of the central COVERAGE of the solved draws, per row of a (rows, draws) array.
+
+    Infinite draws count; an end that falls among them is infinite.
+    """
     ordered = np.sort(many, axis=1)  # nan sorts to the end
-    count = np.isfinite(ordered).sum(axis=1)
+    count = (~np.isnan(ordered)).sum(axis=1)
     tail = 0.5 * (1.0 - COVERAGE)
     ends = []
     for quantile in (tail, 1.0 - tail):
@@ -61,7 +64,10 @@ def interval(many: Array) -> tuple[Array, Array]:
         above = np.minimum(below + 1, np.maximum(count - 1, 0))
         pick = np.arange(many.shape[0])
         low, high = ordered[pick, below], ordered[pick, above]
-        ends.append(np.where(count > 1, low + (position - below) * (high - low), np.nan))
+        with np.errstate(invalid="ignore"):
+            between = low + (position - below) * (high - low)
+        between = np.where(np.isinf(high), np.where(position > below, high, low), between)
+        ends.append(np.where(count > 1, between, np.nan))
     return ends[0], ends[1]
 
 

@@ -25,6 +25,7 @@ Array = NDArray[np.float64]
 M_D_PER_CM_H = 0.24  # the sources print velocities in cm/h
 M2_PER_KM2 = 1e6
 ROUGH_FROM_M_S = 3.0  # wind from which small waves cover the water; common practice
+SCHMIDT = "wanninkhof_2014"  # the relation in use; that of 1992 fails above 30 °C
 ROUGH_EXPONENT, SMOOTH_EXPONENT = 1.0 / 2.0, 2.0 / 3.0
 
 
@@ -141,7 +142,7 @@ def _relations(kind: str) -> dict[str, TransferRelation]:
 
 
 def transfer_velocity_m_d(wind_m_s: ArrayLike, t_c: ArrayLike, relation: str = "cole_caraco", *,
-                          lake_area_m2: ArrayLike = np.nan, schmidt: str = "wanninkhof_2014") -> Array:
+                          lake_area_m2: ArrayLike = np.nan, schmidt: str = SCHMIDT) -> Array:
     """Transfer velocity of CO2 in fresh water by named relations. [m/d]
 
     nan where a reading that the relation needs is missing; `TransferRelation.outside` tells where it is stretched.

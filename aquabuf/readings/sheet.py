@@ -170,6 +170,8 @@ def likely_slip(column: Column, house: float) -> str:
     value = column.in_file_unit(house)
     if q.dimension == "temperature" and column.unit_label == "°C" and q.low <= (value - 32.0) / 1.8 <= q.high:
         return f"is it in °F (then {(value - 32.0) / 1.8:.1f} °C)? Then say so in the header; else correct it"
+    if q.dimension == "temperature" and column.unit_label == "°C" and q.low <= value - 273.15 <= q.high:
+        return f"is it in kelvin (then {value - 273.15:.1f} °C)? Then say so in the header; else correct it"
     for power in (10.0, 100.0, 1000.0):
         if q.dimension in ("ph", "temperature") and q.soft_low <= house / power <= q.soft_high:
             return f"is it {value / power:g}? Check the decimal sign"

@@ -103,7 +103,8 @@ def classes(run: LakeRun) -> str:
     unknown = int((table["class"] == "").sum())
     lines += [f"{unknown:,} x no class: nothing that this scheme can class them by"] if unknown else []
     rests = Counter(w for w in table["class_on"] if w)
-    lines.append(f"The class rests on: {', '.join(f'{w} {c:,}' for w, c in rests.most_common())}.")
+    if rests:
+        lines.append(f"The class rests on: {', '.join(f'{w} {c:,}' for w, c in rests.most_common())}.")
     lines += _by_definition(run) + _by_scheme(run)
     weighted = run.groups.iloc[0]["weighted"] == "yes"
     lines.append(
@@ -230,11 +231,14 @@ def quality(run: LakeRun) -> str:
         for name, fact in facts.items()
         if unmet.get(name)
     ]
-    bare, organic = unmet.get("ion balance", 0), unmet.get("ion balance with organic anions", 0)
-    if organic < bare:
+    checks = {check.name: check for check in run.found.checks}
+    fails = ~checks["ion balance"].met & np.isfinite(checks["ion balance"].value)
+    explained = int((fails & checks["ion balance with organic anions"].met).sum())
+    if explained:
         lines.append(
-            f"Of the {bare:,} that fail the ion balance, {bare - organic:,} pass once organic anions and aluminum are "
-            f"counted: these explain it."
+            f"Of the {int(fails.sum()):,} that fail the ion balance, {explained:,} "
+            f"{'passes' if explained == 1 else 'pass'} "
+            f"once organic anions and aluminum are counted: these explain it."
         )
     for r in file_check_rows(run.found.rounding, run.found.duplicates).itertuples():
         if r.met == "no":
@@ -248,7 +252,14 @@ def quality(run: LakeRun) -> str:
             f"Ions not measured, so that there is no charge balance: "
             f"{', '.join(w + ' (' + plural(c, 'lake') + ')' for w, c in missing.most_common(5))}."
         )
-    return block("Quality (checks.csv has each lake)", lines or ["Every check that could be made is met."])
+    return block("Quality (checks.csv has each lake)", [*(lines or ["Every check that could be made is "
+                                                                    "met."]), *_not_made(run)])
+
+
+def _not_made(run: LakeRun) -> list[str]:
+    """The checks that could be made for no lake, since a reading is missing."""
+    names = [name for name, count in run.found.made.items() if not count]
+    return [f"Could not be made for want of readings: {', '.join(names)}."] if names else []
 
 
 def refused(run: LakeRun) -> str:

@@ -11,7 +11,7 @@ from aquabuf.assess.lake.inputs import ORGANIC_U_REL
 from aquabuf.assess.sample.quality import allowed, check_facts
 from aquabuf.assess.uncertainty import COVERAGE
 from aquabuf.chem.gases import AIR_CO2_PPM, AIR_CO2_YEAR
-from aquabuf.chem.transfer import transfer_relations
+from aquabuf.chem.transfer import SCHMIDT, schmidt_relations, transfer_relations
 from aquabuf.report import lake_answer_blocks as answer_blocks
 from aquabuf.report import lake_blocks as blocks
 from aquabuf.report.lake_blocks import LakeRun, block
@@ -100,7 +100,8 @@ def _assumptions(run: LakeRun) -> str:
         else "No intervals (--draws 0)"
     )
     lines = [
-        f"ANC in use: Gran ANC, else alkalinity, else charge balance ("
+        f"ANC in use: Gran ANC, else alkalinity, else the Gran ANC that ions, organic carbon and aluminum imply, else "
+        f"charge balance ("
         f"{', '.join(f'{w} {c:,}' for w, c in Counter(w for w in run.lakes['anc_used_from'] if w).most_common(6))}).",
         f"An ANC whose method is not given counts as Gran: {plural(unstated, 'lake')} (column anc_method tells)."
         if unstated
@@ -110,7 +111,10 @@ def _assumptions(run: LakeRun) -> str:
         if end_point
         else "",
         f"Charge balance: calcium, magnesium, sodium, potassium{' and ammonium' if o.ammonium else ''} less sulfate, "
-        f"nitrate and chloride; fluoride is left out of it but counts in pH. Missing ions are never taken as zero.",
+        f"nitrate and chloride; fluoride is left out of it but counts in pH. A missing one of these ions is never "
+        f"taken as "
+        f"zero: there is no charge balance then.",
+        _as_none(run),
         f"Organic anions by {rules.organic.in_words()}; counted with their sites at pH, a third of all sites as "
         f"strong acids "
         f"(Hesthagen et al. 2008). A Gran titration leaves out what its tangent at pH {GRAN_PH:g} leaves out.",
@@ -127,11 +131,23 @@ def _assumptions(run: LakeRun) -> str:
         *(f"Event water, {line}." for line in (rules.event.in_words() if rules.event else ())),
         f"Liming: {rules.lime.name} ({rules.lime.formula}) to {target}; {rules.lime.source}. The inflow stays as the "
         f"lake is now.",
-        f"Gas transfer: {o.wind_relation}, {transfer_relations()[o.wind_relation].source}." if _has_flux(run) else "",
+        f"Gas transfer: {o.wind_relation}, {transfer_relations()[o.wind_relation].source}; Schmidt number: "
+        f"{schmidt_relations()[SCHMIDT].source}; exponent 1/2 from 3 m/s of wind on, else 2/3."
+        if _has_flux(run)
+        else "",
         *run.titrations,
         f"{draws}.",
     ]
     return block("What the answers rest on", [line for line in lines if line])
+
+
+def _as_none(run: LakeRun) -> str:
+    """Readings that count as none in pH and tolerance where they were not measured."""
+    t = run.lakes
+    gone = [(words, int(t[name].isna().sum())) for words, name in (
+        ("organic carbon", "doc_mg_l"), ("aluminum", "aluminum_umol_l"), ("ammonium", "ammonium_ueq_l"))]
+    told = ", ".join(f"{words} in {plural(count, 'lake')}" for words, count in gone if count)
+    return f"Counted as none in pH, tolerance and lime, because not measured: {told}." if told else ""
 
 
 def _has_flux(run: LakeRun) -> bool:

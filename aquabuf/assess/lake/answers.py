@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 from aquabuf.assess.lake.budget import AncKinds, Budget, budget, left_out_by_gran
 from aquabuf.assess.lake.capacity import H2SO4_KG_PER_KEQ, Deposition, Hydrology, deposition, hydrology, keq, years_left
 from aquabuf.assess.lake.chemistry import Chemistry, chemistry, choose_sources
-from aquabuf.assess.lake.co2 import flux_mol_m2_d
+from aquabuf.assess.lake.co2 import flux_mol_m2_d, supersaturation
 from aquabuf.assess.lake.columns import acid_column
 from aquabuf.assess.lake.critical import CriticalLoad, critical_load
 from aquabuf.assess.lake.episode import (
@@ -34,12 +34,12 @@ from aquabuf.assess.lake.options import LakeOptions, Rules
 from aquabuf.assess.lake.sea_salt import NO_TRACER
 from aquabuf.chem.transfer import transfer_velocity_m_d
 
-__all__ = ["ANC_KINDS", "Answers", "Episode", "Plan", "answers", "closed_lake", "plan_of", "with_carbon"]
+__all__ = ["ANC_KINDS", "Answers", "Episode", "Plan", "answers", "plan_of", "with_carbon"]
 
 Array = NDArray[np.float64]
 
 MICRO, MILLI = 1e6, 1e3
-ANC_KINDS = ("Gran ANC", "alkalinity", "charge balance")  # which ANC counts, best first
+ANC_KINDS = ("Gran ANC", "alkalinity", "Gran ANC of the ions", "charge balance")  # which ANC counts, best first
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -62,7 +62,7 @@ class Plan:
 def plan_of(lakes: Lakes, kinds: AncKinds, options: LakeOptions) -> Plan:
     """Decide from the readings of each lake what its answers rest on."""
     b = budget(lakes, kinds, ammonium=options.ammonium)
-    there = [np.isfinite(v)[:, 0] for v in (b.gran, b.alkalinity, b.charge)]
+    there = [np.isfinite(v)[:, 0] for v in (b.gran, b.alkalinity, b.gran_of_ions, b.charge)]
     used = np.full(kinds.is_gran.shape[0], len(ANC_KINDS), dtype=np.intp)
     for index in reversed(range(len(there))):
         used[there[index]] = index
@@ -107,16 +107,19 @@ def answers(lakes: Lakes, plan: Plan, rules: Rules, options: LakeOptions, *, dra
     c = chemistry(lakes, b, plan.sources, options.thresholds)
     water = hydrology(lakes)
     fallen = deposition(lakes, keep_sea_salt=rules.critical.tracer == NO_TRACER)
-    used = np.choose(np.minimum(plan.used, 2)[:, None], np.broadcast_arrays(b.gran, b.alkalinity, b.charge))
+    kinds = np.broadcast_arrays(b.gran, b.alkalinity, b.gran_of_ions, b.charge)
+    used = np.choose(np.minimum(plan.used, len(kinds) - 1)[:, None], kinds)
     load = critical_load({ion: lakes.charge(ion) for ion in IONS}, lakes.get("runoff_m_yr"), rules.critical,
                          sulfur_deposition_eq_m2_yr=fallen.sulfur)
     limit = load.anc_limit if rules.limit.is_variable else np.full((1, 1), rules.limit.value_eq_l)
     columns = _anc(lakes, b, c, used) | _water(c, options) | _carbon(lakes, c)
     columns |= _capacity(lakes, c, water, fallen, used, limit, options) | _loads(load)
-    both, of_episode = episode(lakes, c, rules, options, used, plan.used < 2, limit, draws)
+    both, of_episode = episode(lakes, b, c, rules, options, used, plan.used < ANC_KINDS.index("charge "
+                                                                                              "balance"), limit, draws)
     columns |= of_episode | lime(lakes, c, rules, options, water, used, limit)
     columns |= transfer(lakes, c, options.wind_relation)
-    by_definition = {"anc_gran": b.gran, "anc_charge": b.charge, "alkalinity": b.alkalinity,
+    by_definition = {"anc_gran": b.gran, "anc_gran_of_ions": b.gran_of_ions, "anc_charge": b.charge,
+                     "alkalinity": b.alkalinity,
                      "anc_organic_corrected": b.organic_corrected, "ph": c.ph}
     return Answers(columns, b, c, water, fallen, load, by_definition, used, limit, both)
 
@@ -124,11 +127,12 @@ def answers(lakes: Lakes, plan: Plan, rules: Rules, options: LakeOptions, *, dra
 def _anc(lakes: Lakes, b: Budget, c: Chemistry, used: Array) -> dict[str, Array]:
     """ANC by every definition, and what the difference is made of. [µeq/L]"""
     found = {
-        "anc_used": used, "anc_gran": b.gran, "alkalinity": b.alkalinity, "anc_end_point": b.end_point,
+        "anc_used": used, "anc_gran": b.gran, "anc_gran_of_ions": b.gran_of_ions, "alkalinity": b.alkalinity,
+        "anc_end_point": b.end_point,
         "anc_charge": b.charge, "anc_charge_bare": b.charge_bare, "anc_organic_corrected": b.organic_corrected,
         "anc_less_organic": b.charge - c.organic, "organic_anion": c.organic, "base_cation_surplus": b.surplus,
         "anc_gap": b.gap, "anc_gap_organic": b.gap_organic, "anc_gap_aluminum": b.gap_aluminum,
-        "anc_gap_rest": b.gap_rest, "base_cations": b.base_cations,
+        "anc_gap_other": b.gap_other, "anc_gap_rest": b.gap_rest, "base_cations": b.base_cations,
     } | {ion: lakes.charge(ion) for ion in IONS if ion != "fluoride"}
     out = {f"{name}_ueq_l": MICRO * v for name, v in found.items()}
     density = lakes.organic.charge(c.ph)[0] * lakes.organic_error
@@ -150,7 +154,8 @@ def _water(c: Chemistry, options: LakeOptions) -> dict[str, Array]:
 def _carbon(lakes: Lakes, c: Chemistry) -> dict[str, Array]:
     """Carbon, its pressure, and what the lake gives to the air; whether it can be stated is decided elsewhere."""
     s = lakes.setting
-    return {"dic_umol_l": MICRO * c.dic, "pco2_uatm": MICRO * c.pco2_atm, "pco2_air_ratio": c.pco2_atm / s.air_pco2_atm}
+    return {"dic_umol_l": MICRO * c.dic, "pco2_uatm": MICRO * c.pco2_atm,
+            "pco2_air_ratio": supersaturation(c.pco2_atm, s.air_pco2_atm)}
 
 
 def transfer(lakes: Lakes, c: Chemistry, relation: str) -> dict[str, Array]:
@@ -187,8 +192,14 @@ def _loads(load: CriticalLoad) -> dict[str, Array]:
     }
 
 
-def episode(lakes: Lakes, c: Chemistry, rules: Rules, options: LakeOptions, used: Array, is_titrated: NDArray[np.bool_],
-            limit: Array, draws: int) -> tuple[Episode, dict[str, Array]]:
+def _fluoride_of(rules: Rules) -> float:
+    """Fluoride of the event water, which its pH counts and the reported charge balance leaves out. [eq/L]"""
+    known = rules.event is not None and rules.event.anc_from == "ions"
+    return rules.event.values.get("fluoride_mol_l", 0.0) if known and rules.event else 0.0
+
+
+def episode(lakes: Lakes, b: Budget, c: Chemistry, rules: Rules, options: LakeOptions, used: Array,
+            is_titrated: NDArray[np.bool_], limit: Array, draws: int) -> tuple[Episode, dict[str, Array]]:
     """What the share of event water makes of each lake.
 
     The ANC in use mixes in proportion, whatever its definition: that of the event water is brought to the same one.
@@ -201,10 +212,11 @@ def episode(lakes: Lakes, c: Chemistry, rules: Rules, options: LakeOptions, used
                                organic_error=lakes.organic_error)
     left_organic, left_aluminum = left_out_by_gran(lakes.organic, event["doc_mg_l"], event["aluminum_mol_l"])
     titrated = event["anc_eq_l"] - left_organic + left_aluminum
+    charge = event["anc_eq_l"] + _fluoride_of(rules) - np.where(b.with_ammonium, 0.0, event["ammonium_eq_l"])
     by_definition = {
-        "anc_gran": titrated, "alkalinity": titrated, "anc_charge": event["anc_eq_l"],
-        "anc_organic_corrected": event["anc_eq_l"] - lakes.organic.strong_eq_l(event["doc_mg_l"])}
-    event_anc = np.where(is_titrated[:, None], titrated, event["anc_eq_l"])
+        "anc_gran": titrated, "anc_gran_of_ions": titrated, "alkalinity": titrated, "anc_charge": charge,
+        "anc_organic_corrected": charge - lakes.organic.strong_eq_l(event["doc_mg_l"])}
+    event_anc = np.where(is_titrated[:, None], titrated, charge)
     fraction = options.event_fraction if rules.event is None else max(rules.event.fractions)
     mixed = mix(lake, event, fraction)
     balance = balance_of(mixed, lakes.setting.lake, lakes.organic)
@@ -216,11 +228,6 @@ def episode(lakes: Lakes, c: Chemistry, rules: Rules, options: LakeOptions, used
         "event_fraction_to_limit": fraction_at_anc(used, event_anc, limit),
     }
     return Episode(lake, event, by_definition, event_anc, fraction), columns
-
-
-def closed_lake(of: Answers) -> Mapping[str, Array]:
-    """The lakes' water as the closed answers take it: ANC of the pH and the carbon that were measured."""
-    return {**of.episode.lake, "anc_eq_l": of.chemistry.anc_closed}
 
 
 def with_carbon(lakes: Lakes, event: Mapping[str, Array]) -> Mapping[str, Array]:
@@ -251,5 +258,5 @@ def lime(lakes: Lakes, c: Chemistry, rules: Rules, options: LakeOptions, water: 
         "lime_least_t": 1e-3 * product_kg(per_m3["high"], water.volume_m3),
         "lime_most_t": 1e-3 * product_kg(per_m3["low"], water.volume_m3),
         "lime_stream_t_yr": 1e-3 * product_kg(per_m3["usual"], water.outflow_m3_yr),
-        "reacidify_yr": np.where(needed & np.isfinite(again), again, np.nan),
+        "reacidify_yr": np.where(needed, again, np.nan),
     }

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections import Counter
 from collections.abc import Mapping
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 import pandas as pd
@@ -12,7 +12,17 @@ from numpy.typing import NDArray
 
 from aquabuf.arrays import worded
 from aquabuf.assess.frames import frame_of
-from aquabuf.assess.lake.answers import Answers, Plan, answers, closed_lake, plan_of, with_carbon
+from aquabuf.assess.lake.answers import Answers, Plan, answers, plan_of
+from aquabuf.assess.lake.beside import (
+    at_equilibration,
+    closed_episode,
+    event_words,
+    lime_words,
+    load_notes,
+    load_range,
+    neal_pco2_atm,
+    simple_lake,
+)
 from aquabuf.assess.lake.budget import NEEDED, anc_kinds, gran_leaves_out, missing_ions
 from aquabuf.assess.lake.chemistry import CARBON_SOURCES
 from aquabuf.assess.lake.classes import (
@@ -24,36 +34,30 @@ from aquabuf.assess.lake.classes import (
     second_class,
     values_used,
 )
-from aquabuf.assess.lake.co2 import NEAL_AIR_ATM, neal_excess_temperature, neal_left_out_share, stateable
+from aquabuf.assess.lake.co2 import stateable
 from aquabuf.assess.lake.columns import AS_GIVEN, lake_columns
-from aquabuf.assess.lake.critical import FLAGS
-from aquabuf.assess.lake.critical_variants import sensitivity
 from aquabuf.assess.lake.draws import Spread, spread
-from aquabuf.assess.lake.episode import DEPOSITION, balance_of, deposition_words, mix
 from aquabuf.assess.lake.inputs import IONS, ORGANIC_U_REL, Lakes, as_recorded, setting_of, words_of
-from aquabuf.assess.lake.liming import after_liming, over_liming_words
 from aquabuf.assess.lake.options import LakeOptions, Rules
 from aquabuf.assess.lake.quality import HISTORY_COLUMNS, IonSums, ion_sums, lake_checks, own_history
 from aquabuf.assess.lake.schemes import Scheme
 from aquabuf.assess.lake.sea_salt import negative_words, non_marine
-from aquabuf.assess.lake.simple_lake import at_both_ends, lake_share
 from aquabuf.assess.lake.survey import site_keys
 from aquabuf.assess.lake.words import anc_used_words, carbon_words, charge_form_words, gap_words, left_out_words
-from aquabuf.assess.limits import Limit, shipped_limits, verdicts
+from aquabuf.assess.limits import Limit, verdicts
 from aquabuf.assess.sample.inputs import TITRATED_BY, uncertainties, values_of
 from aquabuf.assess.sample.quality import Check, Rounding, counted, failed, fixed_check, roundings
 from aquabuf.engine.status import FLAGGED
 from aquabuf.readings.duplicates import duplicate_rows
-from aquabuf.readings.result import REJECTED_COLUMNS, Readings, notes_on_file
+from aquabuf.readings.result import BELOW_DETECTION, REJECTED_COLUMNS, Readings, notes_on_file
 from aquabuf.units import substances
 
-__all__ = ["BUBBLED_T_C", "LakeAssessment", "assess_lakes", "class_after", "closed_carbon"]
+__all__ = ["LakeAssessment", "assess_lakes", "class_after", "ph_after"]
 
 Array = NDArray[np.float64]
 Words = NDArray[np.object_]
 
-BUBBLED_T_C, BUBBLED_U_PH = 22.5, 0.05  # of a laboratory where air is bubbled through; what 5 °C either way move pH by
-NEAL_LEAVES_OUT = 0.1                   # share of carbonate and hydroxide from which the relation is not used
+ZERO_ANC_PH = 5.6                       # pH of water without ANC at equilibrium with air (closed form, 5.60)
 CONDUCTIVITY_ROOM = 0.02                # relative allowance of the conductivity meter for what missing ions may carry
 NOTHING = ("no ANC, alkalinity, complete major ions or pH", "a lake needs ANC, alkalinity, all of the major ions, or "
                                                             "pH",
@@ -114,6 +118,7 @@ def assess_lakes(readings: Readings, rules: Rules, options: LakeOptions, limits:
     frame = readings.frame.iloc[keep].reset_index(drop=True)
     values = as_recorded({name: v[keep] for name, v in values.items()}, words_of(frame, "filtered"),
                          words_of(frame, "ph_kind"), words_of(frame, "anc_method"))
+    values = without_censored(values, readings, frame)
     u = uncertainties(values, readings.headers)
     setting = setting_of(values, options.air_co2_ppm, options.carbonic)
     lakes = Lakes({name: v[:, None] for name, v in values.items()}, setting, rules.organic, np.ones((1, 1)))
@@ -122,27 +127,29 @@ def assess_lakes(readings: Readings, rules: Rules, options: LakeOptions, limits:
     found = answers(lakes, plan, rules, options)
     figures: dict[str, NDArray] = {name: np.broadcast_to(v, (keep.size, 1))[:, 0].copy()
                                    for name, v in found.columns.items()}
-    figures["event_fraction_to_limit"][np.isinf(figures["event_fraction_to_limit"])] = np.nan
-    around = spread(values, u, setting, plan, rules, options, limits)
+    for name in ("event_fraction_to_limit", "reacidify_yr"):  # never: told by blanks
+        figures[name][np.isinf(figures[name])] = np.nan
+    used = _definitions(found, rules, keep.size)
+    around = spread(values, u, setting, plan, rules, options, limits, used)
     _add_ions(figures, lakes, u, found, rules)
     _add_carbon(figures, around, lakes, plan, found, words_of(frame, "ph_kind"))
     sums = ion_sums(lakes, found.chemistry)
     _add_quality(figures, lakes, found, sums, values)
-    index, used = _classes(figures, found, rules, around)
-    figures |= _lime_words(lakes, found, rules, figures) | _simple_lake(lakes, found)
-    figures["critical_load_notes"] = _load_notes(found)
-    figures |= _sensitivity(lakes, found, rules) | _closed_episode(lakes, found)
+    index = _classes(figures, found, rules, around, used)
+    figures |= lime_words(lakes, found, rules, figures, limits) | simple_lake(lakes, found)
+    figures["critical_load_notes"] = load_notes(found)
+    figures |= load_range(lakes, found, rules) | closed_episode(lakes, found, figures)
     figures["exceedance_probability"] = np.full(keep.size, np.nan) if around.exceeded is None else around.exceeded
     figures |= {
         "anc_used_from": anc_used_words(plan, np.where(titrated != "", titrated, method)),
         "anc_charge_form": charge_form_words(found, plan.kinds.is_computed[:, 0]), "anc_gap_words": gap_words(figures),
         "volume_from": found.water.volume_from, "net_acid_from": found.deposition.counted,
-        "event_from": _event_words(lakes, rules, figures),
+        "event_from": event_words(lakes, rules, figures),
     }
     figures["left_out"] = left_out_words(lakes, figures, plan.kinds.is_gran[:, 0],
                                          with_event=rules.event is not None)
     figures["status"] = _status(lakes, figures)
-    bubbled = _at_equilibration(lakes, found, u, values)
+    bubbled = at_equilibration(lakes, found, u, values)
     checks = lake_checks(lakes, u, found.budget, found.chemistry, sums, figures, bubbled)
     kind = frame["water_kind"].to_numpy(dtype=object) if "water_kind" in frame else np.full(keep.size, "", dtype=object)
     broken = verdicts(limits, figures, kind, np.full(keep.size, "fresh", dtype=object))
@@ -155,6 +162,21 @@ def assess_lakes(readings: Readings, rules: Rules, options: LakeOptions, limits:
         notes=notes_on_file(readings),
         flags=Counter(zip(readings.flags["what"], readings.flags["column"], strict=True)),
         rounding=roundings(values, u, readings.headers), duplicates=duplicate_rows(readings.rejected))
+
+
+def without_censored(values: dict[str, Array], readings: Readings, frame: pd.DataFrame) -> dict[str, Array]:
+    """Values less the alkalinities below detection in waters so acid (below ZERO_ANC_PH) that they may be negative."""
+    if "ph" not in values:
+        return values
+    acid = values["ph"] < ZERO_ANC_PH
+    out = dict(values)
+    for name in ("alkalinity_eq_l", "anc_eq_l"):
+        if name in values:
+            flags = readings.flags
+            rows = flags["row"][(flags["column"] == name) & (flags["what"] == BELOW_DETECTION)]
+            here = frame["row"].isin(rows).to_numpy()
+            out[name] = np.where(here & acid, np.nan, values[name])
+    return out
 
 
 def _usable(values: Mapping[str, Array], frame: pd.DataFrame) -> NDArray[np.bool_]:
@@ -211,7 +233,7 @@ def _add_carbon(figures: dict, around: Spread, lakes: Lakes, plan: Plan, found: 
     of = stateable(c.pco2_atm[:, 0], of_titration=of_titration, ph=c.ph[:, 0], carbonate_eq_l=c.carbonate[:, 0],
                    organic_eq_l=counted_organic[:, 0], low_atm=1e-6 * around.low.get("pco2_uatm", none),
                    high_atm=1e-6 * around.high.get("pco2_uatm", none))
-    figures["pco2_neal_uatm"] = 1e6 * _neal(lakes, found)
+    figures["pco2_neal_uatm"] = 1e6 * neal_pco2_atm(lakes, found)
     for name in ("pco2_uatm", "pco2_air_ratio", "co2_flux_mmol_m2_d", "pco2_neal_uatm"):
         for store in (figures, around.low, around.high):
             if name in store:
@@ -219,21 +241,12 @@ def _add_carbon(figures: dict, around: Spread, lakes: Lakes, plan: Plan, found: 
     figures["pco2_from"] = np.where(of.mask, carbon_words(plan, ph_kind, lakes.get("doc_mg_l")[:, 0]), of.words)
 
 
-def _neal(lakes: Lakes, found: Answers) -> Array:
-    """CO2 pressure after Neal et al. from titrated ANC and pH, where what they leave out is small. [atm]"""
-    b, ph, t_c = found.budget, lakes.get("ph"), lakes.setting.at_meter.t_c
-    titrated = np.where(np.isfinite(b.gran), b.gran, b.alkalinity)
-    with np.errstate(invalid="ignore"):
-        small = neal_left_out_share(titrated, ph, t_c) <= NEAL_LEAVES_OUT
-    return np.where(small, NEAL_AIR_ATM * neal_excess_temperature(titrated, ph, t_c), np.nan)[:, 0]
-
-
 def _add_quality(figures: dict, lakes: Lakes, found: Answers, sums: IonSums, values: Mapping[str, Array]) -> None:
     """Ion balance, conductivity, and bounds where an ion is missing."""
     measured = lakes.get("conductivity_us_cm")
     room = (1.0 + CONDUCTIVITY_ROOM) * measured - sums.known[:, None]
     missing = missing_ions(lakes, room)
-    with np.errstate(invalid="ignore", divide="ignore"):
+    with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
         off = np.where(measured[:, 0] > 0.01, 100.0 * (sums.conductivity / measured[:, 0] - 1.0), np.nan)
     figures |= {
         "ion_balance_percent": sums.balance, "ion_balance_organic_percent": sums.balance_organic,
@@ -242,12 +255,20 @@ def _add_quality(figures: dict, lakes: Lakes, found: Answers, sums: IonSums, val
         "anc_charge_bound_low_ueq_l": 1e6 * missing.low[:, 0], "anc_charge_bound_high_ueq_l": 1e6 * missing.high[:, 0]}
 
 
-def _classes(figures: dict, found: Answers, rules: Rules, around: Spread) -> tuple[dict, dict]:
+def _values_of(found: Answers, lakes: int) -> dict[str, Array]:
+    return {name: np.broadcast_to(v, (lakes, 1))[:, 0] for name, v in found.by_definition.items()}
+
+
+def _definitions(found: Answers, rules: Rules, lakes: int) -> dict[str, NDArray[np.intp]]:
+    """Place of the definition that the class of each lake rests on, by scheme."""
+    return {s.name: definition_used(s, _values_of(found, lakes)) for s in rules.schemes}
+
+
+def _classes(figures: dict, found: Answers, rules: Rules, around: Spread, used: Mapping[str, NDArray[np.intp]],
+             ) -> dict[tuple[str, str], NDArray[np.intp]]:
     """Class of each lake by every scheme and definition; the first scheme's goes into the result."""
-    by = {name: v[:, 0] for name, v in found.by_definition.items()}
-    by = {name: np.broadcast_to(v, figures["ph"].shape) for name, v in by.items()}
+    by = _values_of(found, figures["ph"].size)
     index = {(s.name, d): classify(s, by[d]) for s in rules.schemes for d in s.definitions}
-    used = {s.name: definition_used(s, by) for s in rules.schemes}
     first = rules.schemes[0]
     place = used[first.name]
     code = classify(first, values_used(first, by, place))
@@ -259,98 +280,20 @@ def _classes(figures: dict, found: Answers, rules: Rules, around: Spread) -> tup
         "class_also": second_class(first, code, chance),
         "class_conflicts": disagreements(index, {s.name: s for s in rules.schemes}),
         "episode_class": class_after(first, found.episode.after(
-            found.episode.fraction, found.by_definition, figures["episode_ph"][:, None]), place),
+            found.episode.fraction, found.by_definition, ph_after(found, figures["episode_ph"][:, None])), place),
     }
-    return index | {(first.name, ""): code}, used
+    return index | {(first.name, ""): code}
+
+
+def ph_after(found: Answers, at_air: Array) -> Array:
+    """pH that a class by pH takes after a change: today's, moved as far as the pH at air moves."""
+    return found.chemistry.ph + (at_air - found.chemistry.ph_at_air)
 
 
 def class_after(scheme: Scheme, by_definition: Mapping[str, Array], place: NDArray[np.intp]) -> Words:
     """Class of each lake by values after a change, on the definition that its class rests on today."""
     values = {d: np.broadcast_to(v, (place.size, 1))[:, 0] for d, v in by_definition.items()}
     return class_names(scheme, classify(scheme, values_used(scheme, values, place)))
-
-
-def _load_notes(found: Answers) -> Words:
-    """What the critical load of each lake has to be told of, in words."""
-    known = np.isfinite(found.critical.load)[:, 0]
-    out = np.full(known.size, "", dtype=object)
-    for name, words in FLAGS.items():
-        hit = known & np.broadcast_to(found.critical.flags[name], (known.size, 1))[:, 0]
-        out[hit] = np.where(out[hit] == "", words, out[hit] + "; " + words)
-    return out
-
-
-def closed_carbon(lakes: Lakes, found: Answers, figures: Mapping[str, NDArray]) -> tuple[Array, Array]:
-    """Carbon and ANC that the first days after liming start from: those of the lake where its CO2 can be stated.
-
-    Elsewhere the CO2 of air at the lake's pH, which is the least that a lake open to air holds for long.
-    """
-    c, balance = found.chemistry, lakes.balance()
-    own = np.isfinite(figures["pco2_uatm"])[:, None]
-    of_air = lakes.setting.air_co2_mol_l / balance.co2_per_dic(c.ph)
-    dic = np.where(own, c.dic, of_air)
-    return dic, np.where(own, c.anc_closed, balance.anc(c.ph, dic=dic))
-
-
-def _lime_words(lakes: Lakes, found: Answers, rules: Rules, figures: Mapping[str, NDArray]) -> dict[str, NDArray]:
-    """pH after liming, in the first days and at air, and the warning of over-liming."""
-    dose = 1e-6 * figures["lime_dose_ueq_l"][:, None]
-    c = found.chemistry
-    air = lakes.setting.air_co2_mol_l
-    dic, anc = closed_carbon(lakes, found, figures)
-    after = after_liming(lakes.balance(), anc, dic, dose, rules.lime, air)
-    needed = (dose > 0.0)[:, 0]
-    closed = np.where(needed, after.ph_closed[:, 0], np.nan)
-    at_air = np.where(needed, lakes.balance().ph(c.anc + dose, co2=air)[:, 0], np.nan)
-    limit = next(x.limit for x in shipped_limits("lake_limits") if x.quantity == "lime_ph_closed")
-    return {"lime_ph_closed": closed, "lime_ph_at_air": at_air,
-            "lime_warning": over_liming_words(closed, after.aluminate_ug_l[:, 0], limit, rules.lime)}
-
-
-def _simple_lake(lakes: Lakes, found: Answers) -> dict[str, NDArray]:
-    """Whether sulfur and nitrogen together exceed the simple lake form, where its readings are there."""
-    share = lake_share(lakes.get("lake_area_m2"), lakes.get("watershed_area_m2"))
-    worse, better = at_both_ends(found.critical.load, lakes.get("nitrogen_sink_eq_m2_yr"), lakes.get("runoff_m_yr"),
-                                 share, found.deposition.sulfur, found.deposition.nitrogen)
-    known = np.isfinite(worse.excess)[:, 0]
-    outside = (known, "no"), (worse.outside[:, 0], "only with slow nitrogen uptake"), (better.outside[:, 0], "yes")
-    return {"simple_lake_exceeded": worded(known.size, *outside),
-            "simple_lake_sulfur_cut_meq_m2_yr": 1e3 * worse.sulfur_cut[:, 0]}
-
-
-def _sensitivity(lakes: Lakes, found: Answers, rules: Rules) -> dict[str, NDArray]:
-    """Lowest and highest critical load over the variants of the method."""
-    of = sensitivity({ion: lakes.charge(ion) for ion in IONS}, lakes.get("runoff_m_yr"), rules.critical,
-                     sulfur_deposition_eq_m2_yr=found.deposition.sulfur)
-    return {"critical_load_lowest_meq_m2_yr": 1e3 * of.load_lowest[:, 0],
-            "critical_load_highest_meq_m2_yr": 1e3 * of.load_highest[:, 0]}
-
-
-def _closed_episode(lakes: Lakes, found: Answers) -> dict[str, NDArray]:
-    """pH of the mixture before air changes its carbon."""
-    mixed = mix(closed_lake(found), with_carbon(lakes, found.episode.event), found.episode.fraction)
-    balance = balance_of(mixed, lakes.setting.lake, lakes.organic)
-    return {"episode_ph_closed": balance.ph(mixed["anc_eq_l"], dic=mixed["dic_mol_l"])[:, 0]}
-
-
-def _event_words(lakes: Lakes, rules: Rules, figures: Mapping[str, NDArray]) -> Words:
-    known = np.isfinite(figures["episode_anc_ueq_l"])
-    if rules.event is not None:
-        return worded(known.size, (known, rules.event.in_words()[0]))
-    return np.where(known, deposition_words({name: lakes.get(name)[:, 0] for name in DEPOSITION}), "")
-
-
-def _at_equilibration(lakes: Lakes, found: Answers, u: Mapping[str, Array], values: Mapping[str, Array],
-                      ) -> tuple[Array, Array]:
-    """pH for the air bubbled through the sample, and its standard uncertainty; nan where that air is not given."""
-    ppm = lakes.get("equilibration_co2_ppm")
-    warm = setting_of({**values, "temperature_c": np.full(values["temperature_c"].shape, BUBBLED_T_C)}, 1.0)
-    balance = replace(lakes, setting=warm).balance()
-    co2 = ppm * warm.air_co2_mol_l
-    ph = balance.ph(found.chemistry.anc, co2=co2)
-    anc_u = u.get("anc_eq_l", np.full(ph.shape[0], np.nan))
-    own = u.get("ph_air_equilibrated", np.full(ph.shape[0], np.nan))
-    return ph[:, 0], np.sqrt((anc_u / balance.intensity(ph, co2=co2)[:, 0]) ** 2 + own**2 + BUBBLED_U_PH**2)
 
 
 def _status(lakes: Lakes, figures: Mapping[str, NDArray]) -> Words:
@@ -385,6 +328,8 @@ def _results(frame: pd.DataFrame, figures: Mapping[str, NDArray], around: Spread
             continue
         ordered[column.name] = figures[column.name]
         if column.interval and options.draws:
+            known = np.isfinite(figures[column.name].astype(float))
             for end, store in (("low", around.low), ("high", around.high)):
-                ordered[f"{column.name}_{end}"] = store.get(column.name, np.full(n, np.nan))
+                ends = store.get(column.name, np.full(n, np.nan))
+                ordered[f"{column.name}_{end}"] = np.where(known & np.isfinite(ends), ends, np.nan)
     return frame_of(ordered)

@@ -11,6 +11,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from aquabuf.arrays import LN10
+from aquabuf.assess.ionsums import conductivity_factor
 from aquabuf.assess.lake.inputs import ANION_NAMES, BASE_CATIONS, CATION_NAMES, STRONG_ANIONS, Lakes
 from aquabuf.chem.aluminum import charge_and_slope
 from aquabuf.chem.organic import OrganicModel, strong_organic_anion
@@ -34,8 +35,10 @@ class Budget:
     charge : base cations and ammonium less sulfate, nitrate and chloride; without ammonium where that is not measured;
     as given where it was worked out elsewhere and ions are missing. charge_bare : of the ions, without ammonium.
     gran, alkalinity, end_point : titrated, of the whole sample, of the filtered one, to a fixed pH.
+    gran_of_ions : what a Gran titration would give by ions, organic carbon and aluminum; nan without organic carbon.
     organic_corrected : charge less a third of all organic acid sites. surplus : charge_bare less strong organic anions.
-    gap : charge less Gran; of it organic (organic anions that the titration leaves out), aluminum, and the rest.
+    gap : charge less Gran; of it organic (organic anions that the titration leaves out), aluminum, other (fluoride that
+    was measured, and ammonium where the charge leaves it out), and the rest.
     """
 
     base_cations: Array
@@ -44,6 +47,7 @@ class Budget:
     charge_bare: Array
     with_ammonium: NDArray[np.bool_]
     gran: Array
+    gran_of_ions: Array
     alkalinity: Array
     end_point: Array
     organic_corrected: Array
@@ -51,11 +55,12 @@ class Budget:
     gap: Array
     gap_organic: Array
     gap_aluminum: Array
+    gap_other: Array
 
     @property
     def gap_rest(self) -> Array:
-        """What organic anions and aluminum do not explain: error, or an ion that was not measured. [eq/L]"""
-        return self.gap - self.gap_organic - self.gap_aluminum
+        """What the parts do not explain: error, or an ion that was not measured. [eq/L]"""
+        return self.gap - self.gap_organic - self.gap_aluminum - self.gap_other
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -98,12 +103,15 @@ def budget(lakes: Lakes, kinds: AncKinds, *, ammonium: bool = True) -> Budget:
     doc = lakes.get("doc_mg_l")
     return Budget(
         base_cations=base, strong_anions=acid, charge=charge, charge_bare=bare, with_ammonium=counted, gran=gran,
-        alkalinity=np.where(kinds.is_gran, alkalinity, np.nan),
+        gran_of_ions=np.where(np.isfinite(doc), bare + np.nan_to_num(nh4) - np.nan_to_num(lakes.charge("fluoride"))
+                              - organic + aluminum, np.nan),
+        alkalinity=np.where(kinds.is_gran | np.isfinite(anc), alkalinity, np.nan),  # the method is that of `anc`
         end_point=np.where(kinds.is_end_point, np.where(np.isfinite(anc), anc, alkalinity), np.nan),
-        organic_corrected=charge - lakes.organic.strong_eq_l(doc),
-        surplus=bare - strong_organic_anion(doc),
+        organic_corrected=charge - lakes.organic.strong_eq_l(doc) * lakes.organic_error,
+        surplus=bare - strong_organic_anion(doc) * lakes.organic_error,
         gap=charge - gran, gap_organic=np.where(np.isfinite(doc), organic, np.nan),
-        gap_aluminum=-aluminum)
+        gap_aluminum=-aluminum,
+        gap_other=np.nan_to_num(lakes.charge("fluoride")) - np.where(counted, 0.0, np.nan_to_num(nh4)))
 
 
 def gran_leaves_out(lakes: Lakes) -> tuple[Array, Array]:
@@ -144,8 +152,9 @@ def missing_ions(lakes: Lakes, conductivity_room_us_cm: Array) -> Missing:
     """Name and bound the ions of the charge balance that are missing; arrays of shape (lakes, 1).
 
     `conductivity_room_us_cm` is measured conductivity, its allowance added, less that of the ions known; each missing
-    equivalent needs at least the conductivity of the slowest ion missing.
+    equivalent needs at least the conductivity of the slowest ion missing, at the ionic strength of the lake.
     """
+    slowed = conductivity_factor(lakes.setting.lake.ionic_strength_mol_l)
     per_eq = {r["name"]: float(r["conductivity_s_cm2_eq"] or "nan") * 1e3 for r in read_table("ions")}
     gone = {ion: np.isnan(lakes.charge(ion)) for ion in NEEDED}
     names = np.full(conductivity_room_us_cm.shape[0], "", dtype=object)
@@ -153,7 +162,7 @@ def missing_ions(lakes: Lakes, conductivity_room_us_cm: Array) -> Missing:
     for ion, mask in gone.items():
         where = mask[:, 0]
         names[where] = np.where(names[where] == "", ion, names[where] + "; " + ion)
-        slowest = np.where(mask, np.minimum(slowest, per_eq[ion]), slowest)
+        slowest = np.where(mask, np.minimum(slowest, per_eq[ion] * slowed), slowest)
         known = known + np.nan_to_num(lakes.charge(ion)) * (1.0 if ion in CATION_NAMES else -1.0)
     cation, anion = (np.any([mask for ion, mask in gone.items() if ion in side], axis=0)
                      for side in (CATION_NAMES, ANION_NAMES))

@@ -25,7 +25,7 @@ class Hydrology:
     """Water of each lake; nan where nothing tells it.
 
     volume_m3 and residence_yr : given, else from each other and the outflow. volume_from : in words.
-    outflow_m3_yr : runoff of the land, and precipitation (or as much as runoff) on the lake itself.
+    outflow_m3_yr : runoff times catchment, the lake counted in it; nan where the lake is larger than its catchment.
     """
 
     volume_m3: Array
@@ -37,9 +37,7 @@ class Hydrology:
 def hydrology(lakes: Lakes) -> Hydrology:
     """Volume, outflow and residence time of each lake."""
     runoff, lake, watershed = (lakes.get(n) for n in ("runoff_m_yr", "lake_area_m2", "watershed_area_m2"))
-    surface = np.nan_to_num(lake)
-    rain = np.where(np.isfinite(lakes.get("precipitation_m_yr")), lakes.get("precipitation_m_yr"), runoff)
-    outflow = runoff * np.maximum(watershed - surface, 0.0) + rain * surface
+    outflow = runoff * np.where(np.nan_to_num(lake) <= watershed, watershed, np.nan)  # the catchment holds its lake
     tau, given = lakes.get("residence_time_yr"), lakes.get("lake_volume_m3")
     by_depth, by_time = lakes.get("mean_depth_m") * lake, outflow * tau
     volume = np.where(np.isfinite(given), given, np.where(np.isfinite(by_depth), by_depth, by_time))

@@ -80,11 +80,18 @@ def chemistry(lakes: Lakes, b: Budget, sources: tuple[NDArray[np.intp], NDArray[
     measured = lakes.get("ph")
     titrated = of_titration(lakes, np.where(anc_from == 0, b.gran, b.alkalinity))
     carbonate = titrated - meter.without_carbon(measured)
+    by_charge = np.where(np.isfinite(b.charge_bare), b.charge_bare + np.nan_to_num(lakes.charge("ammonium")), b.charge)
+    by_charge = by_charge - np.nan_to_num(lakes.charge("fluoride"))  # both are in the water, whatever ANC is reported
+    anc = np.select([anc_from <= 1, anc_from == 2], [titrated, by_charge], np.nan)
     dic = _carbon(lakes, meter, measured, carbonate, carbon_from)
     of_pair = meter.anc(measured, dic=dic)
-    by_charge = b.charge - np.nan_to_num(lakes.charge("fluoride"))
-    anc = np.select([anc_from <= 1, anc_from == 2, anc_from == 3], [titrated, by_charge, of_pair], np.nan)
     ph = _closed_ph(lakes, water, measured, of_pair, anc, dic)
+    by_pressure = carbon_from == CARBON_SOURCES.index("CO2 pressure")
+    if by_pressure.any():
+        ph_there, dic_there = _of_pressure(lakes, water, measured, anc)
+        ph, dic = np.where(by_pressure, ph_there, ph), np.where(by_pressure, dic_there, dic)
+        of_pair = np.where(by_pressure, water.anc(ph_there, dic=dic_there), of_pair)
+    anc = np.where(anc_from == 3, of_pair, anc)
     air = lakes.setting.air_co2_mol_l
     ph_at_air = water.ph(anc, co2=air)
     at_start = water.anc(ph, dic=dic)
@@ -109,12 +116,20 @@ def of_titration(lakes: Lakes, titrated: Array) -> Array:
 
 
 def _carbon(lakes: Lakes, meter: LakeBalance, ph: Array, carbonate: Array, carbon_from: NDArray[np.intp]) -> Array:
-    """Inorganic carbon: measured, of a CO2 pressure, what carbonate alkalinity at this pH needs, or that of air."""
-    of_pressure = lakes.get("pco2_atm") * lakes.setting.lake.k0 / meter.co2_per_dic(ph)
+    """Inorganic carbon: measured, what carbonate alkalinity at this pH needs, or that of air."""
     of_anc = np.maximum(carbonate, 0.0) / meter.carbonate_per_dic(ph)
     of_air = lakes.setting.air_co2_mol_l / meter.co2_per_dic(ph)
-    return np.select([carbon_from == k for k in range(len(CARBON_SOURCES))],
-                     [lakes.get("dic_mol_l"), of_pressure, of_anc, of_air], np.nan)
+    return np.select([carbon_from == 0, carbon_from == 2, carbon_from == 3],
+                     [lakes.get("dic_mol_l"), of_anc, of_air], np.nan)
+
+
+def _of_pressure(lakes: Lakes, water: LakeBalance, measured: Array, anc: Array) -> tuple[Array, Array]:
+    """pH and carbon of a lake with a measured CO2 pressure: pH as read there, else of its ANC."""
+    co2 = lakes.get("pco2_atm") * lakes.setting.lake.k0
+    read_there = np.isfinite(measured) & ~lakes.setting.moved
+    ph = np.where(read_there, measured, water.ph(anc, co2=co2))
+    ph = np.where(np.isnan(ph), measured, ph)
+    return ph, co2 / water.co2_per_dic(ph)
 
 
 def _closed_ph(lakes: Lakes, water: LakeBalance, measured: Array, of_pair: Array, anc: Array, dic: Array) -> Array:
@@ -124,4 +139,5 @@ def _closed_ph(lakes: Lakes, water: LakeBalance, measured: Array, of_pair: Array
     if not moved.any() and not missing.any():
         return measured
     asked = np.where(moved, of_pair, np.where(missing, anc, np.nan))
-    return np.where(moved | missing, water.ph(asked, dic=dic), measured)
+    solved = water.ph(asked, dic=dic)
+    return np.where(np.isfinite(solved) & (moved | missing), solved, measured)  # without carbon it stays as it was read

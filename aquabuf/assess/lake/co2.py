@@ -128,7 +128,7 @@ def stateable(pco2_atm: ArrayLike, *, of_titration: ArrayLike, ph: ArrayLike, ca
     pressure = np.asarray(pco2_atm, dtype=float)
     shape = common_shape(pressure, of_titration, ph, carbonate_eq_l, organic_eq_l, low_atm, high_atm)
     quantities = _quantities(np.asarray(of_titration, dtype=bool), *(
-        np.asarray(v, dtype=float) for v in (ph, carbonate_eq_l, organic_eq_l, low_atm, high_atm)))
+        np.asarray(v, dtype=float) for v in (pressure, ph, carbonate_eq_l, organic_eq_l, low_atm, high_atm)))
     words, test = np.full(shape, "", dtype=object), np.full(shape, "", dtype=object)
     value, passed = np.full(shape, np.nan), np.broadcast_to(np.isfinite(pressure), shape).copy()
     for one in co2_tests() if tests is None else tests:
@@ -139,7 +139,8 @@ def stateable(pco2_atm: ArrayLike, *, of_titration: ArrayLike, ph: ArrayLike, ca
     return Stateable(mask=passed, words=words, test=test, value=value)
 
 
-def _quantities(of_titration: NDArray[np.bool_], ph: Array, carbonate: Array, organic: Array, low: Array, high: Array,
+def _quantities(of_titration: NDArray[np.bool_], pressure: Array, ph: Array, carbonate: Array, organic: Array,
+                low: Array, high: Array,
                 ) -> dict[str, Array]:
     """What the tests ask for, by the names in their table; nan where a test does not apply."""
     some, bounded, no_interval = carbonate > 0.0, low > 0.0, np.isnan(low) | np.isnan(high)
@@ -150,6 +151,7 @@ def _quantities(of_titration: NDArray[np.bool_], ph: Array, carbonate: Array, or
         "organic_share_percent": np.where(of_titration & some, share, np.nan),
         "ph": np.where(of_titration & np.isnan(organic), ph, np.nan),
         "interval_ratio": np.where(no_interval, np.nan, ratio),
+        "pco2_uatm": np.where(of_titration, MICRO * pressure, np.nan),
     }
 
 

@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from aquabuf.assess.lake.answers import Plan, answers
-from aquabuf.assess.lake.classes import class_probabilities, definition_used, values_used
+from aquabuf.assess.lake.classes import class_probabilities, values_used
 from aquabuf.assess.lake.columns import lake_columns
 from aquabuf.assess.lake.inputs import IONS, ORGANIC_U_REL, Lakes, Setting
 from aquabuf.assess.lake.options import LakeOptions, Rules
@@ -44,26 +44,29 @@ class Spread:
 
 
 def spread(values: Mapping[str, Array], u: Mapping[str, Array], setting: Setting, plan: Plan, rules: Rules,
-           options: LakeOptions, limits: tuple[Limit, ...]) -> Spread:
-    """Draw the readings of each lake within their uncertainty and answer every draw. Arrays are one-dimensional."""
+           options: LakeOptions, limits: tuple[Limit, ...], used: Mapping[str, NDArray[np.intp]]) -> Spread:
+    """Draw the readings of each lake within their uncertainty and answer every draw. Arrays are one-dimensional.
+
+    used : place of the definition that the class of each lake rests on, by scheme; a draw never changes it.
+    """
     out = Spread()
     n = values["temperature_c"].size
     if not options.draws or not n:
         return out
     exceeded = np.full(n, np.nan)
     wanted = [c.name for c in lake_columns(options.thresholds) if c.interval]
-    used = {name: v for name, v in values.items() if name in DRAWN}
+    kept = {name: v for name, v in values.items() if name in DRAWN}
     error = np.random.default_rng([options.seed, crc32(b"organic model")]).standard_normal(options.draws)
     factor = np.maximum(1.0 + ORGANIC_U_REL * error, 0.0)[None, :]
     for block in row_blocks(np.arange(n), options.draws):
-        many = drawn(take_rows(used, block), take_rows({k: v for k, v in u.items() if k in used}, block), options.draws,
-                     options.seed, used)
+        many = drawn(take_rows(kept, block), take_rows({k: v for k, v in u.items() if k in kept}, block), options.draws,
+                     options.seed, kept)
         lakes = Lakes({k: v.reshape(block.size, options.draws) for k, v in many.items()}, setting.take(block),
                       rules.organic, factor)
         found = answers(lakes, plan.take(block), rules, options, draws=options.draws)
         for name in wanted:
             _store(out, name, found.columns[name], block, n, options.draws)
-        _probabilities(out, found.by_definition, rules, block, n, options.draws)
+        _probabilities(out, found.by_definition, rules, used, block, n, options.draws)
         for limit in limits:
             if limit.quantity in found.columns:
                 figures = np.broadcast_to(found.columns[limit.quantity], (block.size, options.draws))
@@ -81,14 +84,13 @@ def _store(out: Spread, name: str, figures: Array, block: NDArray[np.intp], n: i
         store.setdefault(name, np.full(n, np.nan))[block] = end
 
 
-def _probabilities(out: Spread, by_definition: Mapping[str, Array], rules: Rules, block: NDArray[np.intp], n: int,
-                   draws: int) -> None:
+def _probabilities(out: Spread, by_definition: Mapping[str, Array], rules: Rules, used: Mapping[str, NDArray[np.intp]],
+                   block: NDArray[np.intp], n: int, draws: int) -> None:
     """Share of the draws in each class: by each definition of a scheme, and by the one in use ("")."""
     full = {d: np.broadcast_to(v, (block.size, draws)) for d, v in by_definition.items()}
     for scheme in rules.schemes:
-        known = {d: np.where(np.isfinite(v).any(axis=1), 0.0, np.nan) for d, v in full.items()}
-        place = definition_used(scheme, known)
-        by = {d: full[d] for d in scheme.definitions} | {"": values_used(scheme, full, place[:, None])}
+        by = {d: full[d] for d in scheme.definitions}
+        by[""] = values_used(scheme, full, used[scheme.name][block][:, None])
         for definition, v in by.items():
             store = out.classes.setdefault((scheme.name, definition), np.full((n, len(scheme.classes)), np.nan))
             store[block] = class_probabilities(scheme, v)

@@ -102,7 +102,7 @@ def setting_of(values: Mapping[str, Array], air_co2_ppm: float, carbonic: str = 
     strength = np.where(np.isnan(strength), np.fmax(titrated, LEAST_STRENGTH), strength)
     salinity, p = np.nan_to_num(reading(values, "salinity")), pressure(values)
     t_ph = reading(values, "ph_temperature_c")
-    moved = np.isfinite(t_ph) & (t_ph != t)
+    moved = np.isfinite(t_ph) & np.isfinite(t) & (t_ph != t)
 
     def at(temperature: Array) -> Conditions:
         c = conditions(temperature, salinity, strength, pressure_atm=p, carbonic=carbonic)

@@ -36,6 +36,8 @@ class _Seen:
 _VERDICTS: tuple[tuple[str, str, Callable[[_Seen], bool]], ...] = (
     ("no trend of ANC can be told", "unknown", lambda s: not s.anc),
     ("definitions of ANC disagree", "unclear", lambda s: {"rising", "falling"} <= set(s.anc)),
+    ("Gran ANC rises, charge balance does not: look for a change of method", "unclear",
+     lambda s: s.anc[0] == "rising" and len(s.anc) > 1 and "rising" not in s.anc[1:]),
     ("ANC rises as acid anions fall", "yes", lambda s: s.anc[0] == "rising" and s.driven),
     ("ANC rises, cause not shown", "unclear", lambda s: s.anc[0] == "rising"),
     ("ANC falls", "no", lambda s: s.anc[0] == "falling"),

@@ -37,6 +37,7 @@ __all__ = ["FILE_ENDING", "OWN", "QUANTITIES", "Scheme", "SensitivityClass", "fi
 # What a scheme can be defined on, and the words for it
 QUANTITIES: Mapping[str, str] = MappingProxyType({
     "anc_gran": "Gran ANC", "anc_charge": "charge balance", "alkalinity": "alkalinity",
+    "anc_gran_of_ions": "Gran ANC of the ions",
     "anc_organic_corrected": "charge balance less organic acids", "ph": "pH"})
 OWN = "own"  # mark of a class that a user's file brings
 FILE_ENDING = ".toml"

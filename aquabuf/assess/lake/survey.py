@@ -93,12 +93,19 @@ def _number_places(keys: NDArray[np.object_], places: NDArray[np.float64]) -> No
             keys[i] = f"{keys[i]} ({near + 1})"
 
 
-def latest_of_site(keys: NDArray[np.object_], dates: NDArray[np.datetime64]) -> NDArray[np.bool_]:
-    """Rows that stand for their lake in the survey: the latest sample of each key; every row without one."""
+def latest_of_site(keys: NDArray[np.object_], dates: NDArray[np.datetime64], *,
+                   classed: NDArray[np.bool_] | None = None, depth_m: NDArray[np.float64] | None = None,
+                   ) -> NDArray[np.bool_]:
+    """Rows that stand for their lake in the survey: the latest sample of each key; every row without one.
+
+    A sample that has a class goes before one that has none, and of one day the shallowest counts.
+    """
     keep = keys == ""
     named = np.flatnonzero(~keep)
     when = np.where(np.isnat(dates), np.datetime64("0001-01-01"), dates)[named]
-    order = named[np.lexsort((named, when))]
+    has_class = np.ones(named.size, dtype=bool) if classed is None else classed[named]
+    depth = np.zeros(named.size) if depth_m is None else np.nan_to_num(depth_m)[named]
+    order = named[np.lexsort((named, -depth, when, has_class))]
     last = {keys[i]: i for i in order.tolist()}
     keep[list(last.values())] = True
     return keep

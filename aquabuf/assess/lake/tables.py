@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import replace
 
 import numpy as np
 import pandas as pd
@@ -10,10 +11,11 @@ from numpy.typing import NDArray
 
 from aquabuf.arrays import worded
 from aquabuf.assess.frames import LongRows, frame_of
-from aquabuf.assess.lake.answers import closed_lake, with_carbon
-from aquabuf.assess.lake.assess import LakeAssessment, class_after, closed_carbon
+from aquabuf.assess.lake.answers import with_carbon
+from aquabuf.assess.lake.assess import LakeAssessment, class_after, ph_after
+from aquabuf.assess.lake.beside import closed_carbon, closed_lake
 from aquabuf.assess.lake.classes import basis_words
-from aquabuf.assess.lake.critical import after_deposition_change
+from aquabuf.assess.lake.critical import FLAGS, after_deposition_change
 from aquabuf.assess.lake.critical_variants import sensitivity
 from aquabuf.assess.lake.episode import anc_changes, balance_of, mix, solved, weak_changes
 from aquabuf.assess.lake.inputs import IONS
@@ -72,7 +74,7 @@ def verdict_table(a: LakeAssessment, limits: Sequence[Limit]) -> pd.DataFrame:
         value = a.results[limit.quantity].to_numpy(dtype=float)
         hit = a.broken.get(limit.name, np.zeros(n, dtype=bool))
         parts.append({
-            "mask": np.isfinite(value), "verdict": np.full(n, limit.name, dtype=object),
+            "mask": np.isfinite(value) & applies(limit, a), "verdict": np.full(n, limit.name, dtype=object),
             "quantity": np.full(n, limit.quantity, dtype=object), "value": value,
             "low": _end(a, limit.quantity, "low"), "high": _end(a, limit.quantity, "high"),
             "unit": np.full(n, limit.unit, dtype=object), "rule": np.full(n, limit.rule(), dtype=object),
@@ -86,11 +88,18 @@ def verdict_table(a: LakeAssessment, limits: Sequence[Limit]) -> pd.DataFrame:
     return frame_of(_head(a, rows) | {name: rows.pick([p[name] for p in parts]) for name in names})
 
 
+def applies(limit: Limit, a: LakeAssessment) -> NDArray[np.bool_]:
+    """Lakes whose kind of water a limit is for."""
+    kinds = a.frame["water_kind"] if "water_kind" in a.frame else pd.Series([""] * len(a.results), dtype=object)
+    return kinds.map(lambda kind: limit.applies(kind, "fresh")).to_numpy(dtype=bool)
+
+
 def _class_verdicts(a: LakeAssessment, k: int) -> dict[str, NDArray]:
     """The class of each lake by one scheme, on the definition in use."""
     scheme, n = a.rules.schemes[k], len(a.results)
     place = a.used[scheme.name]
-    columns = {"anc_gran": "anc_gran_ueq_l", "anc_charge": "anc_charge_ueq_l", "alkalinity": "alkalinity_ueq_l",
+    columns = {"anc_gran": "anc_gran_ueq_l", "anc_gran_of_ions": "anc_gran_of_ions_ueq_l",
+               "anc_charge": "anc_charge_ueq_l", "alkalinity": "alkalinity_ueq_l",
                "anc_organic_corrected": "anc_organic_corrected_ueq_l", "ph": "ph"}
     code = np.select([place == p for p in range(len(scheme.definitions))],
                      [a.index[scheme.name, d] for d in scheme.definitions], -1)
@@ -169,8 +178,9 @@ def episode_table(a: LakeAssessment) -> pd.DataFrame:
     e, n = a.answers.episode, len(a.results)
     event = with_carbon(a.lakes, e.event)
     used, limit = a.answers.anc_used, a.answers.limit
-    shares = SHARES if a.rules.event is None else tuple(sorted(a.rules.event.fractions))
-    closed = closed_lake(a.answers)
+    given = SHARES if a.rules.event is None else a.rules.event.fractions
+    shares = sorted({*given, e.fraction} - {0.0})
+    closed = closed_lake(a.lakes, a.answers, {"pco2_uatm": a.results["pco2_uatm"].to_numpy(dtype=float)})
     before = solved(closed, a.lakes.setting.lake, a.lakes.organic, a.lakes.setting.air_co2_mol_l)
     scheme = a.rules.schemes[0]
     parts: list[dict[str, NDArray]] = []
@@ -185,7 +195,8 @@ def episode_table(a: LakeAssessment) -> pd.DataFrame:
                    **{f"change_{name}_ueq_l": MICRO * v for name, v in causes.items()}}
         one = {name: np.broadcast_to(v, (n, 1))[:, 0] for name, v in figures.items()}
         one["event_fraction"] = np.full(n, share)
-        one["class"] = class_after(scheme, e.after(share, a.answers.by_definition, at_air), a.used[scheme.name])
+        one["class"] = class_after(
+            scheme, e.after(share, a.answers.by_definition, ph_after(a.answers, at_air)), a.used[scheme.name])
         with np.errstate(invalid="ignore"):
             below = np.broadcast_to(anc < limit, (n, 1))[:, 0]
         one["below_anc_limit"] = worded(n, (np.isfinite(one["anc_ueq_l"]), "no"), (below, "yes"))
@@ -200,11 +211,15 @@ def deposition_table(a: LakeAssessment, options: LakeOptions) -> pd.DataFrame:
     n, scheme = len(a.results), a.rules.schemes[0]
     changes = tuple(dict.fromkeys((0.0, *(c / 100.0 for c in options.deposition_changes))))
     found = after_deposition_change(a.answers.critical, a.answers.anc_used, changes)
+    above = np.broadcast_to(a.answers.critical.flags["background_above_today"], (n, 1))
     parts = []
     for one in found:
+        untold = above & (one.change != 0.0)
+        one = replace(one, anc_change=np.where(untold, np.nan, one.anc_change), anc=np.where(untold, np.nan, one.anc))
         anc = np.broadcast_to(one.anc, (n, 1))[:, 0]
         ph = a.lakes.balance().ph(a.answers.chemistry.anc + one.anc_change, co2=a.lakes.setting.air_co2_mol_l)[:, 0]
-        by_definition = {d: v + one.anc_change for d, v in a.answers.by_definition.items()} | {"ph": ph[:, None]}
+        by_definition = {d: v + one.anc_change for d, v in a.answers.by_definition.items()} | {
+            "ph": ph_after(a.answers, ph[:, None])}
         sulfur = np.broadcast_to(a.answers.deposition.sulfur, (n, 1))[:, 0]
         exceeded = a.results["exceedance_meq_m2_yr"].to_numpy(dtype=float) + MILLI * one.change * sulfur
         net = a.results["net_acid_deposition_meq_m2_yr"].to_numpy(dtype=float)
@@ -216,8 +231,10 @@ def deposition_table(a: LakeAssessment, options: LakeOptions) -> pd.DataFrame:
             "sulfur_deposition_change_percent": np.full(n, 100.0 * one.change), "anc_ueq_l": MICRO * anc,
             "anc_change_ueq_l": MICRO * np.broadcast_to(one.anc_change, (n, 1))[:, 0],
             "class": class_after(scheme, by_definition, a.used[scheme.name]), "ph_at_air": ph,
-            "exceedance_meq_m2_yr": exceeded, "years_to_anc_limit": lasts})
-    rows = LongRows([np.isfinite(p["anc_ueq_l"]) for p in parts])
+            "exceedance_meq_m2_yr": exceeded, "years_to_anc_limit": lasts,
+            "note": worded(n, (untold[:, 0], FLAGS["background_above_today"]))})
+    known = np.broadcast_to(np.isfinite(a.answers.anc_used + a.answers.critical.load), (n, 1))[:, 0]
+    rows = LongRows([known] * len(parts))
     return frame_of(_head(a, rows) | {name: rows.pick([p[name] for p in parts]) for name in parts[0]})
 
 

@@ -89,7 +89,7 @@ def anc_used_words(plan: Plan, method: Words) -> Words:
     out = worded(plan.used.size, *((plan.used == k, name) for k, name in enumerate(ANC_KINDS)))
     stated = (plan.used == 0) & (method != "") & (method != "gran")
     out[stated] = "titrated ANC (" + method[stated] + ")"
-    out[(plan.used == 0) & (method == "")] += " (method unstated)"
+    out[(plan.used <= 1) & (method == "")] += " (method unstated)"
     return out
 
 
@@ -122,7 +122,7 @@ def gap_words(columns: Mapping[str, NDArray]) -> Words:
                                                  "measured"),
                   *((known & explained & (by == k), f"mostly {name}") for k, name in enumerate(("organic "
                                                                                                 "anions", "aluminum"))),
-                  (known & small, "within error"),
+                  (known & small & explained, "within error"),
                   (unknown_doc & ~small, "organic carbon not given: organic anions cannot be told from error"))
 
 

@@ -8,7 +8,8 @@ from critical_lakes import bracketed_original
 from made_lakes import HAWK_POND, ions, lakes_of
 from numpy.testing import assert_allclose, assert_array_equal
 
-from aquabuf.assess.lake.answers import ANC_KINDS, answers, closed_lake, plan_of, with_carbon
+from aquabuf.assess.lake.answers import ANC_KINDS, answers, plan_of, with_carbon
+from aquabuf.assess.lake.beside import closed_lake
 from aquabuf.assess.lake.budget import NEEDED, anc_kinds
 from aquabuf.assess.lake.options import rules_of
 
@@ -233,7 +234,7 @@ def test_class_after_an_event_by_the_definition_of_its_scheme(tmp_path):
 def test_waters_of_an_episode():
     """The closed lake has the ANC of its pH and carbon; event water gets the carbon of air unless it has its own."""
     found, _, lakes = answered(CLEAR, air_co2_ppm=AIR_PPM)
-    assert_allclose(closed_lake(found)["anc_eq_l"], HAND.alkalinity(6.5, 80e-6), rtol=2e-3)
+    assert_allclose(closed_lake(lakes, found, {"pco2_uatm": np.array([500.0])})["anc_eq_l"], HAND.alkalinity(6.5, 80e-6), rtol=2e-3)
     assert_allclose(found.episode.lake["anc_eq_l"], 40e-6, rtol=1e-12)
     event = with_carbon(lakes, found.episode.event)
     co2 = 400e-6 * (1.0 - 1.2281 / 101.325) * HAND.k0  # the air of `lakes_of`

@@ -10,7 +10,7 @@ from numpy.testing import assert_allclose, assert_array_equal
 from published_rows import read_rows
 
 from aquabuf.assess.ionsums import conductivity_of_ions
-from aquabuf.assess.lake.assess import BUBBLED_T_C
+from aquabuf.assess.lake.beside import BUBBLED_T_C
 from aquabuf.assess.lake.budget import NEEDED
 from aquabuf.assess.lake.chemistry import chemistry, choose_sources
 from aquabuf.assess.lake.quality import HISTORY_COLUMNS, ion_sums, own_history
