@@ -32,6 +32,22 @@ HAWK = ions(**HAWK_POND) | {"anc_eq_l": -21.7e-6, "temperature_c": 10.0, "runoff
                             "sulfur_deposition_eq_m2_yr": 2.10 / SULFATE_G}
 
 
+def gran_leaves(doc_mg_l, aluminum_mol_l):
+    """What a Gran line leaves out, organic anions less aluminum [eq/L]: value at h = 0 of the tangents at pH 4.5.
+
+    Mass action written out: three steps of pK 3.04, 4.42 and 6.70 on 10.2 µeq/mg; hydroxides of aluminum of log beta
+    -5.00, -10.1, -16.9 and -22.7.
+    """
+    def charge(h):
+        steps = np.cumprod(10.0 ** -np.array([3.04, 4.42, 6.70]) / h)
+        hydroxides = 10.0 ** np.array([-5.00, -10.1, -16.9, -22.7]) / h ** np.arange(1, 5)
+        organic = 10.2e-6 * doc_mg_l * (steps @ [1, 2, 3]) / 3.0 / (1.0 + steps.sum())
+        return organic - aluminum_mol_l * (3.0 - (hydroxides @ [1, 2, 3, 4]) / (1.0 + hydroxides.sum()))
+
+    h = 10.0**-4.5
+    return charge(h) - h * (charge(h * 1.0001) - charge(h * 0.9999)) / (2e-4 * h)
+
+
 def without(row, *names):
     """The same lake with some readings never made."""
     return {name: value for name, value in row.items() if name not in names}
