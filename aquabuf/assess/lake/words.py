@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -112,19 +112,15 @@ def carbon_words(plan: Plan, ph_kind: Words, doc_mg_l: Array) -> Words:
 
 def gap_words(columns: Mapping[str, NDArray]) -> Words:
     """What explains the difference between charge-balance and titrated ANC of each lake."""
-    gap, organic, aluminum, rest, u = (columns[f"anc_gap{part}_ueq_l"].astype(float)
-                                       for part in ("", "_organic", "_aluminum", "_rest", "_u"))
+    gap, organic, aluminum, other, rest, u = (columns[f"anc_gap{part}_ueq_l"].astype(float)
+                                              for part in ("", "_organic", "_aluminum", "_other", "_rest", "_u"))
     known, explained = np.isfinite(gap), np.abs(rest) <= 2.0 * u
     small = np.abs(gap) <= 2.0 * u
-    by = _largest([(np.abs(organic), "organic anions"), (np.abs(aluminum), "aluminum")])
+    parts = ((organic, "organic anions"), (aluminum, "aluminum"), (other, "fluoride or ammonium"))
+    by = np.argmax(np.nan_to_num(np.abs([size for size, _ in parts])), axis=0)
     unknown_doc = known & np.isnan(organic)
     return worded(gap.size, (known & ~explained, "not explained by organic anions and aluminum: error or an ion not "
                                                  "measured"),
-                  *((known & explained & (by == k), f"mostly {name}") for k, name in enumerate(("organic "
-                                                                                                "anions", "aluminum"))),
-                  (known & small & explained, "within error"),
+                  *((known & explained & (by == k), f"mostly {name}") for k, (_, name) in enumerate(parts)),
+                  (known & small & (explained | unknown_doc), "within error"),
                   (unknown_doc & ~small, "organic carbon not given: organic anions cannot be told from error"))
-
-
-def _largest(parts: Sequence[tuple[Array, str]]) -> NDArray[np.intp]:
-    return np.argmax(np.stack([np.nan_to_num(size) for size, _ in parts]), axis=0)

@@ -47,12 +47,12 @@ def test_volume_given_before_depth_before_time():
 def test_outflow_is_runoff_of_land_and_rain_on_the_lake():
     """0.6 from 1.8e6 m2 of land and 1.0 on 2e5 m2 of lake; runoff all over where rain or lake is not given.
 
-    A lake as large as its catchment, or larger by error, has no land.
+    A lake as large as its catchment has no land; one larger than it is an error, and has no outflow.
     """
     rain = POND | {"precipitation_m_yr": 1.0}
     _, _, outflow, _ = water(rain, POND, {k: v for k, v in rain.items() if k != "lake_area_m2"},
                              rain | {"watershed_area_m2": 2e5}, rain | {"watershed_area_m2": 1e5})
-    assert_allclose(outflow, [0.6 * 1.8e6 + 1.0 * 2e5, 0.6 * 2e6, 0.6 * 2e6, 2e5, 2e5], rtol=1e-12)
+    assert_allclose(outflow, [0.6 * 1.8e6 + 1.0 * 2e5, 0.6 * 2e6, 0.6 * 2e6, 2e5, NAN], rtol=1e-12)
 
 
 def test_residence_time_of_volume_and_outflow():

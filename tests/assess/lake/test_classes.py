@@ -182,16 +182,19 @@ def test_negative_uncertainty():
 
 def test_first_definition_that_a_lake_has():
     """The scheme's own where there is one, else the stand-ins in their order; draws follow the choice for the value."""
-    values = {"anc_gran": [1e-5, np.nan, np.nan, np.nan], "alkalinity": [2e-5, 2e-5, np.nan, np.nan],
-              "anc_charge": [3e-5, 3e-5, 3e-5, np.nan]}
+    gone = np.nan
+    values = {"anc_gran": [1e-5, gone, gone, gone, gone], "alkalinity": [2e-5, 2e-5, gone, gone, gone],
+              "anc_gran_of_ions": [3e-5, 3e-5, 3e-5, gone, gone], "anc_charge": [4e-5, 4e-5, 4e-5, 4e-5, gone]}
     used = definition_used(BANDS, values)
-    assert used.tolist() == [0, 1, 2, NO_CLASS]
-    assert_array_equal(values_used(BANDS, values, used), [1e-5, 2e-5, 3e-5, np.nan])
+    assert used.tolist() == [0, 1, 2, 3, NO_CLASS]
+    assert_array_equal(values_used(BANDS, values, used), [1e-5, 2e-5, 3e-5, 4e-5, np.nan])
     draws = {name: np.array(v)[:, None] + [0.0, 1e-6] for name, v in values.items()}
     draws["anc_gran"][0, 1] = np.nan  # a missing draw is not filled by another definition
-    assert_allclose(values_used(BANDS, draws, used[:, None]), [[1e-5, np.nan], [2e-5, 2.1e-5], [3e-5, 3.1e-5], [np.nan] * 2])
+    assert_allclose(values_used(BANDS, draws, used[:, None]), [[1e-5, np.nan], [2e-5, 2.1e-5], [3e-5, 3.1e-5],
+                                                                  [4e-5, 4.1e-5], [np.nan] * 2])
     assert basis_words(BANDS, used).tolist() == [
-        "Gran ANC", "alkalinity, standing in for Gran ANC", "charge balance, standing in for Gran ANC", ""]
+        "Gran ANC", "alkalinity, standing in for Gran ANC", "Gran ANC of the ions, standing in for Gran ANC",
+        "charge balance, standing in for Gran ANC", ""]
 
 
 def test_nothing_stands_in_for_ph():

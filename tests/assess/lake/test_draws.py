@@ -149,7 +149,7 @@ MOVES = {  # an answer that each drawn reading moves
     "doc_mg_l": "organic_anion_ueq_l", "aluminum_mol_l": "ph_at_air", "runoff_m_yr": "critical_load_meq_m2_yr",
     "precipitation_m_yr": "episode_anc_ueq_l", "residence_time_yr": "reacidify_yr",
     "lake_volume_m3": "acid_to_anc_limit_keq",
-    "mean_depth_m": "acid_to_anc_limit_keq", "lake_area_m2": "acid_to_anc_limit_keq", "watershed_area_m2": "reacidify_yr",
+    "mean_depth_m": "acid_to_anc_limit_keq", "lake_area_m2": "reacidify_yr", "watershed_area_m2": "reacidify_yr",
     "wind_speed_m_s": "co2_flux_mmol_m2_d", "sulfur_deposition_eq_m2_yr": "exceedance_meq_m2_yr",
     "nitrate_deposition_eq_m2_yr": "years_to_anc_limit", "ammonium_deposition_eq_m2_yr": "years_to_anc_limit",
     "chloride_deposition_eq_m2_yr": "exceedance_meq_m2_yr", "base_cation_deposition_eq_m2_yr": "years_to_anc_limit",
@@ -157,7 +157,7 @@ MOVES = {  # an answer that each drawn reading moves
 }
 IN_PLACE_OF = {"pco2_atm": ("dic_mol_l",), "alkalinity_eq_l": ("anc_eq_l",),
                "fluoride_mol_l": ("anc_eq_l", "alkalinity_eq_l"),
-               "mean_depth_m": ("lake_volume_m3",), "lake_area_m2": ("lake_volume_m3",),
+               "mean_depth_m": ("lake_volume_m3",), "lake_area_m2": ("residence_time_yr",),
                "watershed_area_m2": ("residence_time_yr",)}
 GIVEN = FULL | {"dic_mol_l": 200e-6, "pco2_atm": 8e-4, "alkalinity_eq_l": 3e-5, "mean_depth_m": 4.0,
                 "fluoride_mol_l": 2e-6}

@@ -14,6 +14,8 @@ CASES = {  # slopes per year of what is measured, and the verdict
     "by charge": ({"anc_charge_ueq_l": 1, "nitrate_ueq_l": -1, "ph": 0.1}, "ANC rises as acid anions fall"),
     "limed": ({"anc_gran_ueq_l": 1, "sulfate_ueq_l": 0}, "ANC rises, cause not shown"),
     "nitrate takes over": ({"anc_gran_ueq_l": 1, "sulfate_ueq_l": -1, "nitrate_ueq_l": 2}, "ANC rises, cause not shown"),
+    "one only": ({"anc_gran_ueq_l": 1, "anc_charge_ueq_l": 0, "sulfate_ueq_l": -3},
+                 "Gran ANC rises, charge balance does not: look for a change of method"),
     "quarrel": ({"anc_gran_ueq_l": -1, "anc_charge_ueq_l": 1, "sulfate_ueq_l": -3}, "definitions of ANC disagree"),
     "not yet": ({"anc_gran_ueq_l": 0, "sulfate_ueq_l": -3, "base_cations_ueq_l": -3.2, "ph": 0.1},
                 "acid anions fall, ANC does not surely rise"),
@@ -43,6 +45,7 @@ def test_every_verdict():
     assert set(VERDICTS) == {verdict for _, verdict in CASES.values()}
     assert found["recovering"].to_dict() == {
         "recovering": "yes", "by charge": "yes", "limed": "unclear", "nitrate takes over": "unclear", "quarrel": "unclear",
+        "one only": "unclear",
         "not yet": "not shown", "still": "not shown", "worse": "no", "meter only": "unknown"}
 
 

@@ -76,9 +76,10 @@ def test_recalled_sources_say_so():
 
 @pytest.mark.parametrize("scheme", SHIPPED.values(), ids=lambda s: s.name)
 def test_what_may_stand_in(scheme):
-    """Nothing stands in for pH or for an ANC corrected for organic acids; elsewhere titrations go before charge balance."""
+    """Nothing stands in for pH or for an ANC corrected for organic acids; elsewhere titrations go before ions."""
     alone = scheme.quantity in ("ph", "anc_organic_corrected")
-    others = [name for name in ("anc_gran", "alkalinity", "anc_charge") if name != scheme.quantity]
+    of_ions = [] if scheme.quantity == "anc_charge" else ["anc_gran_of_ions", "anc_charge"]
+    others = [name for name in ("anc_gran", "alkalinity", *of_ions) if name != scheme.quantity]
     assert list(scheme.stand_ins) == ([] if alone else others)
 
 

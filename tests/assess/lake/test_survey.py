@@ -82,8 +82,8 @@ def test_reason_and_next_step():
     found = priorities(table(*rows), BANDS)
     acid, safe = BANDS.classes[0], BANDS.classes[-1]
     assert list(found["reason"]) == [f"{acid.words}; critical load exceeded (probability 0.97); below pH 6", safe.words,
-                                     "nothing to class it by: survey_bands needs Gran ANC or alkalinity or charge "
-                                     "balance; below pH 6"]
+                                     "nothing to class it by: survey_bands needs Gran ANC or alkalinity or Gran ANC of "
+                                     "the ions or charge balance; below pH 6"]
     assert list(found["next_step"]) == [acid.next_step, safe.next_step, "titrate it, or have its ions measured"]
 
 

@@ -72,10 +72,12 @@ def test_classes_of_each_definition(survey):
     full = by_lake(table, "full")
     assert set(zip(full["scheme"], full["definition"], full["in_use"], strict=True)) == {
         ("survey_bands", "Gran ANC", "yes"), ("survey_bands", "charge balance", "no"),
+        ("survey_bands", "Gran ANC of the ions", "no"),
         ("norway_20", "charge balance", "yes"), ("norway_20", "Gran ANC", "no")}
     end = by_lake(table, "end point")
-    assert set(end["definition"]) == {"charge balance"}
-    assert set(end["in_use"]) == {"yes"}
+    assert set(zip(end["scheme"], end["definition"], end["in_use"], strict=True)) == {
+        ("survey_bands", "Gran ANC of the ions", "yes"), ("survey_bands", "charge balance", "no"),
+        ("norway_20", "charge balance", "yes")}
     assert by_lake(table, "ph only").empty
     used = table[(table["scheme"] == "survey_bands") & (table["in_use"] == "yes")]
     used = used[used["is_class_of_value"] == "yes"]
@@ -88,7 +90,8 @@ def test_classes_of_each_definition(survey):
 
 def test_rules_of_the_classes_hold_for_the_value(survey):
     """The rule of the class found holds, those of the others do not."""
-    columns = {"Gran ANC": "anc_gran_ueq_l", "charge balance": "anc_charge_ueq_l"}
+    columns = {"Gran ANC": "anc_gran_ueq_l", "charge balance": "anc_charge_ueq_l",
+               "Gran ANC of the ions": "anc_gran_of_ions_ueq_l"}
     values = survey.results.set_index("sample_id")
     table = class_table(survey)
     for row in table.to_dict("records"):
@@ -101,7 +104,7 @@ def test_rules_of_the_classes_hold_for_the_value(survey):
 def test_classes_without_draws():
     """One row for each definition; no probability."""
     table = class_table(assessed(FULL))
-    assert list(table["is_class_of_value"]) == ["yes", "yes"]
+    assert list(table["is_class_of_value"]) == ["yes"] * 3
     assert table["probability"].isna().all()
 
 
@@ -192,7 +195,7 @@ def test_a_value_beside_its_limit_does_not_contradict_its_rule():
 @pytest.mark.parametrize(("verdict", "words"), [
     ("critical load exceeded", "variant concentration today norway; ANC limit 20 µeq/L"),
     ("episode to zero", "deposition over precipitation; ANC is minus the free acid"),
-    ("over-limed", "limestone, target of the run"), ("below pH 6", "readings"),
+    ("dose would over-lime", "limestone, target of the run"), ("below pH 6", "readings"),
 ])
 def test_what_a_verdict_rests_on(survey, verdict, words):
     """The variant, the event water, the product; else the readings."""

@@ -204,9 +204,9 @@ def test_a_step_that_cannot_be_told():
 @pytest.mark.parametrize(("quantity", "slope", "direction", "toward"), [
     ("anc_gran_ueq_l", 1.0, "rising", "recovery"), ("anc_gran_ueq_l", -1.0, "falling", "harm"),
     ("sulfate_ueq_l", -1.0, "falling", "recovery"), ("nitrate_ueq_l", 1.0, "rising", "harm"),
-    ("base_cations_ueq_l", -1.0, "falling", "harm"), ("doc_mg_l", 1.0, "rising", ""), ("ph", 0.0, "no sure trend", "")])
+    ("base_cations_ueq_l", -1.0, "falling", ""), ("doc_mg_l", 1.0, "rising", ""), ("ph", 0.0, "no sure trend", "")])
 def test_direction_and_what_it_means(quantity, slope, direction, toward):
-    """A fall of sulfate is recovery, a fall of ANC harm, DOC neither."""
+    """A fall of sulfate is recovery, a fall of ANC harm; of base cations and DOC neither."""
     dates = monthly(1995, 2014)
     t = pd.DatetimeIndex(dates).year - 1995.0
     row = one(samples(dates, **{quantity: slope * t + noise(dates)}))

@@ -15,7 +15,7 @@ LOADS = {"critical_load_meq_m2_yr", "critical_load_lowest_meq_m2_yr", "critical_
          "base_cations_original_ueq_l", "simple_lake_exceeded", "simple_lake_sulfur_cut_meq_m2_yr"}
 SIMPLE = {"simple_lake_exceeded", "simple_lake_sulfur_cut_meq_m2_yr"}
 SUMS = {"ion_balance_percent", "ion_balance_organic_percent", "conductivity_calculated_us_cm", "conductivity_percent"}
-CHARGE = {"anc_charge_ueq_l", "anc_charge_form", "anc_charge_bare_ueq_l", "anc_organic_corrected_ueq_l",
+CHARGE = {"anc_charge_ueq_l", "anc_gran_of_ions_ueq_l", "anc_charge_form", "anc_charge_bare_ueq_l", "anc_organic_corrected_ueq_l",
           "anc_less_organic_ueq_l",
           "base_cation_surplus_ueq_l", "anc_gap_ueq_l", "anc_gap_rest_ueq_l", "anc_gap_u_ueq_l", "anc_gap_words"} | SUMS
 WHOLE_LAKE = {"lake_volume_m3", "volume_from", "acid_to_anc_limit_keq", "acid_to_anc_limit_h2so4_kg",
@@ -48,7 +48,8 @@ CASES = [  # readings gone, answers that go with them beside the reading itself,
      "closed tolerance (give temperature); pH at air (give temperature)"),
     (("doc_mg_l",),
      {"doc_mg_l", "organic_anion_ueq_l", "organic_density_ueq_mg", "anc_less_organic_ueq_l", "anc_gap_organic_ueq_l",
-                     "anc_organic_corrected_ueq_l", "base_cation_surplus_ueq_l", "anc_gap_rest_ueq_l"},
+                     "anc_organic_corrected_ueq_l", "base_cation_surplus_ueq_l", "anc_gap_rest_ueq_l",
+                     "anc_gran_of_ions_ueq_l"},
                      "organic anions (give doc)"),
     (("sodium_mol_l",), CHARGE | LOADS | {"sodium_ueq_l", "base_cations_ueq_l", "base_cations_star_ueq_l", "f_factor"},
      "charge-balance ANC (give sodium); critical load (give sodium)"),
@@ -169,12 +170,13 @@ def test_event_of_a_file_needs_no_deposition(tmp_path):
     ({"anc_method": "curve_fit"}, "titrated ANC (curve_fit)"),
     ({"anc_method": "inflection"}, "titrated ANC (inflection)"),
     ({"anc_eq_l": np.nan, "alkalinity_eq_l": 3e-5}, "alkalinity"),
-    ({"anc_eq_l": np.nan}, "charge balance"), ({"anc_method": "end_point"}, "charge balance"),
+    ({"anc_eq_l": np.nan}, "Gran ANC of the ions"), ({"anc_method": "end_point"}, "Gran ANC of the ions"),
+    ({"anc_eq_l": np.nan, "doc_mg_l": np.nan}, "charge balance"),
     ({"anc_method": "end_point", "titrated_by": "gran"}, "Gran ANC"),
     ({"anc_eq_l": np.nan, "sodium_mol_l": np.nan}, ""),
 ])
 def test_which_anc_is_used(row, words):
-    """Gran before alkalinity before charge balance; one of a fixed end point never."""
+    """Titrated before computed from the ions; one of a fixed end point never."""
     assert result(WATER | row)["anc_used_from"] == words
 
 
@@ -212,23 +214,25 @@ NOT_EXPLAINED = "not explained by organic anions and aluminum: error or an ion n
 NO_DOC = "organic carbon not given: organic anions cannot be told from error"
 
 
-@pytest.mark.parametrize(("gap", "organic", "aluminum", "u", "words"), [
-    (60.0, 55.0, -2.0, 10.0, "mostly organic anions"),
-    (-60.0, 2.0, -55.0, 10.0, "mostly aluminum"),
-    (60.0, 20.0, -2.0, 10.0, NOT_EXPLAINED),
-    (-60.0, 20.0, -2.0, 10.0, NOT_EXPLAINED),
-    (19.9, 5.0, 0.0, 10.0, "within error"),
-    (-19.9, 5.0, 0.0, 10.0, "within error"),
-    (20.1, 5.0, 0.0, 10.0, "mostly organic anions"),
-    (60.0, np.nan, -2.0, 10.0, NO_DOC),
-    (10.0, np.nan, -2.0, 10.0, "within error"),
-    (np.nan, 20.0, -2.0, np.nan, ""),
+@pytest.mark.parametrize(("gap", "organic", "aluminum", "other", "u", "words"), [
+    (60.0, 55.0, -2.0, 0.0, 10.0, "mostly organic anions"),
+    (-60.0, 2.0, -55.0, 0.0, 10.0, "mostly aluminum"),
+    (60.0, 10.0, -2.0, 40.0, 10.0, "mostly fluoride or ammonium"),
+    (60.0, 20.0, -2.0, 5.0, 10.0, NOT_EXPLAINED),
+    (-60.0, 20.0, -2.0, 0.0, 10.0, NOT_EXPLAINED),
+    (19.9, 5.0, 0.0, 0.0, 10.0, "within error"),
+    (-19.9, -5.0, 0.0, 0.0, 10.0, "within error"),
+    (-19.9, 5.0, 0.0, 0.0, 10.0, NOT_EXPLAINED),  # organic anions make it more than error
+    (20.1, 5.0, 0.0, 0.0, 10.0, "mostly organic anions"),
+    (60.0, np.nan, -2.0, 0.0, 10.0, NO_DOC),
+    (10.0, np.nan, -2.0, 0.0, 10.0, "within error"),
+    (np.nan, 20.0, -2.0, 0.0, np.nan, ""),
 ])
-def test_what_explains_a_gap(gap, organic, aluminum, u, words):
-    """Within two standard uncertainties of none, or of what is explained; else by the larger part."""
-    rest = gap - organic - aluminum
+def test_what_explains_a_gap(gap, organic, aluminum, other, u, words):
+    """Within two standard uncertainties of what is explained: of none too, or mostly by the largest part."""
+    rest = gap - organic - aluminum - other
     columns = {f"anc_gap{part}_ueq_l": np.array([v, 0.0]) for part, v in (
-        ("", gap), ("_organic", organic), ("_aluminum", aluminum), ("_rest", rest), ("_u", u))}
+        ("", gap), ("_organic", organic), ("_aluminum", aluminum), ("_other", other), ("_rest", rest), ("_u", u))}
     assert_array_equal(gap_words(columns)[0], words)
 
 
