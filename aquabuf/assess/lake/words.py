@@ -24,14 +24,29 @@ TITRATED = ("anc", "alkalinity")
 
 @dataclass(frozen=True, slots=True)
 class _Answer:
-    """A result, what it is called, and the readings it needs: of each tuple any one serves."""
+    """A result, what it is called, and the readings it needs: of each tuple any one serves.
+
+    ways : tuples that serve only as a whole, any one of them.
+    """
 
     column: str
     label: str
-    needs: tuple[tuple[str, ...], ...]
+    needs: tuple[tuple[str, ...], ...] = ()
+    ways: tuple[tuple[str, ...], ...] = ()
+
+    def lacking(self, there: Mapping[str, bool]) -> str:
+        """Readings to give, in words."""
+        needs = [" or ".join(need) for need in self.needs if not any(there[name] for name in need)]
+        ways = [" and ".join(name for name in way if not there[name]) for way in self.ways]
+        return ", ".join(needs + [" or ".join(way for way in ways if way)] * bool(ways))
+
+    def readings(self) -> tuple[str, ...]:
+        """Those it depends on, each once."""
+        return tuple(dict.fromkeys(name for group in (*self.needs, *self.ways) for name in group))
 
 
 _ION_NEEDS = tuple((ion,) for ion in NEEDED)
+_RESIDENCE = tuple(("residence_time", other) for other in ("lake_volume", "runoff", "watershed_area"))
 _ANSWERS = (
     _Answer("anc_used_ueq_l", "class", (("anc", "alkalinity", "all major ions"),)),
     _Answer("anc_charge_ueq_l", "charge-balance ANC", _ION_NEEDS),
@@ -40,16 +55,14 @@ _ANSWERS = (
     _Answer("ph_at_air", "pH at air", (("temperature",), (*TITRATED, "all major ions"))),
     _Answer("critical_load_meq_m2_yr", "critical load", (("runoff",), *_ION_NEEDS)),
     _Answer("exceedance_meq_m2_yr", "exceedance", (("sulfur_deposition",),)),
-    _Answer("lake_volume_m3", "the whole lake's figures", (("lake_volume", "mean_depth", "residence_time"),
-                                                           ("lake_volume", "lake_area", "watershed_area"),
-                                                           ("lake_volume", "mean_depth", "watershed_area"))),
-    _Answer("years_to_anc_limit", "years", (("sulfur_deposition",), ("residence_time", "lake_volume"),
-                                            ("watershed_area", "residence_time"), ("watershed_area", "runoff"))),
+    _Answer("lake_volume_m3", "the whole lake's figures", ways=(
+        ("lake_volume",), ("mean_depth", "lake_area"), ("residence_time", "runoff", "watershed_area"))),
+    _Answer("years_to_anc_limit", "years", (("sulfur_deposition",), *_RESIDENCE)),
     _Answer("episode_anc_ueq_l", "episode", (
         ("precipitation",), ("hydrogen_deposition", "sulfur_deposition"), ("hydrogen_deposition", "nitrate_deposition"),
         ("hydrogen_deposition", "ammonium_deposition"))),
     _Answer("gas_transfer_m_d", "CO2 flux", (("wind_speed",),)),
-    _Answer("reacidify_yr", "re-acidification", (("residence_time",),)),
+    _Answer("reacidify_yr", "re-acidification", _RESIDENCE),
 )
 BASES = {
     "anc": "anc_eq_l", "alkalinity": "alkalinity_eq_l", "ph": "ph", "dic": "dic_mol_l", "temperature": "temperature_c",
@@ -69,18 +82,21 @@ def left_out_words(lakes: Lakes, columns: Mapping[str, NDArray], usable_titratio
     for name in TITRATED:  # one to a fixed end point, or worked out from ions, is none
         there[name] &= usable_titration
     there["all major ions"] = np.logical_and.reduce([there[ion] for ion in NEEDED])
+    there["lake_volume"] = np.isfinite(columns["lake_volume_m3"].astype(float))  # of depth and area serves as well
     out = np.full(next(iter(there.values())).size, "", dtype=object)
     for answer in _ANSWERS:
-        needs = () if answer.column.startswith("episode") and with_event else answer.needs
+        if answer.column.startswith("episode") and with_event:
+            continue
         gone = np.isnan(columns[answer.column].astype(float))
-        if answer.column == "reacidify_yr":  # blank too where no lime is needed or the lake stays above the limit
-            gone &= ~there["residence_time"] & np.isnan(columns["lake_volume_m3"].astype(float))
-        lacking = [~np.logical_or.reduce([there[name] for name in need]) for need in needs]
-        for pattern in np.unique(np.stack(lacking, axis=1), axis=0) if lacking else ():
-            needed = [" or ".join(need) for need, misses in zip(needs, pattern, strict=True) if misses]
-            if needed:
-                hit = gone & (np.stack(lacking, axis=1) == pattern).all(axis=1)
-                out[hit] += np.where(out[hit] == "", "", "; ") + f"{answer.label} (give {', '.join(needed)})"
+        if answer.column == "reacidify_yr":  # blank too where the lake stays above the limit
+            gone &= columns["lime_dose_ueq_l"].astype(float) > 0.0
+        readings = answer.readings()
+        given = np.stack([there[name] for name in readings], axis=1)
+        for pattern in np.unique(given[gone], axis=0):
+            words = answer.lacking(dict(zip(readings, pattern, strict=True)))
+            if words:
+                hit = gone & (given == pattern).all(axis=1)
+                out[hit] += np.where(out[hit] == "", "", "; ") + f"{answer.label} (give {words})"
     return out
 
 
