@@ -180,8 +180,8 @@ def first_to_look_at(run: LakeRun) -> str:
         )
         lines.append(
             item(
-                f"{p['rank']}. {name}{_sample(r)}: {r['class'] or 'no class'}{chance}{also}; "
-                f"{_figure(r['anc_used_from'] or 'ANC', r, 'anc_used_ueq_l', ' µeq/L')}"
+                f"{p['rank']}. {name}{_sample(r)}: {r['class'] or 'no class'}{chance}{also}"
+                f"{_figure('; ' + (r['anc_used_from'] or 'ANC'), r, 'anc_used_ueq_l', ' µeq/L')}"
                 f"{_figure('; pH', r, 'ph', '', 2)}"
                 f"{_figure('; acid to pH 6 at air', r, TO_PH_6, ' µeq/L')}{load}. {_sentence(p['reason'])}",
                 "  ",

@@ -99,11 +99,12 @@ def _assumptions(run: LakeRun) -> str:
         if o.draws
         else "No intervals (--draws 0)"
     )
+    used = Counter(w for w in run.lakes["anc_used_from"] if w)
+    counts = ", ".join(f"{w} {c:,}" for w, c in used.most_common(6))
     lines = [
         f"ANC in use: Gran ANC, else alkalinity, else the Gran ANC that ions, organic carbon and aluminum imply, else "
-        f"charge balance ("
-        f"{', '.join(f'{w} {c:,}' for w, c in Counter(w for w in run.lakes['anc_used_from'] if w).most_common(6))}).",
-        f"An ANC whose method is not given counts as Gran: {plural(unstated, 'lake')} (column anc_method tells)."
+        f"charge balance{f' ({counts})' if counts else ''}.",
+        f"An ANC or alkalinity whose method is not given counts as Gran: {plural(unstated, 'lake')} (column anc_method tells)."
         if unstated
         else "",
         f"ANC titrated to a fixed end point: {plural(end_point, 'lake')}. It is kept in its own column and never used: "

@@ -31,7 +31,9 @@ from lake_tables import (
     QA_SERIES,
     SCHEME,
     SURVEY,
+    SURVEY_ROWS,
     charge,
+    organic_left_by_gran,
     series,
     table_of,
 )
@@ -146,16 +148,20 @@ def test_defaults_of_the_command_are_those_of_the_options(call, table):
 # ------------------------------------------------------------------ what each option does
 
 def test_ammonium_moves_the_charge_balance_by_itself(lake):
-    """Left out, each charge-balance ANC falls by exactly the ammonium; what was titrated stays."""
-    lake(out="with")
-    lake("--no-ammonium", out="without")
+    """Left out, each charge-balance ANC falls by exactly the ammonium; what was titrated, or is on that scale, and pH stay."""
+    bare_dock = {k: v for k, v in DOCK.items() if k != "doc_mg_l"} | {"sample_id": "N-24", "site": "Nook Water"}
+    text = table_of(*SURVEY_ROWS, bare_dock)
+    lake(text=text, out="with")
+    lake("--no-ammonium", text=text, out="without")
     counted, bare = by_name(folder="with"), by_name(folder="without")
     for name, r in counted.items():
         assert_allclose(float(r["anc_charge_ueq_l"]) - float(bare[name]["anc_charge_ueq_l"]), float(r["ammonium_ueq_l"]), rtol=0, atol=1e-9)
         assert (r["anc_charge_form"], bare[name]["anc_charge_form"]) == ("with ammonium", "without ammonium")
-        assert (r["anc_gran_ueq_l"], r["alkalinity_ueq_l"]) == (bare[name]["anc_gran_ueq_l"], bare[name]["alkalinity_ueq_l"])
-    assert counted["D-24"]["anc_used_ueq_l"] == f"{charge(DOCK):.1f}"
-    assert bare["D-24"]["anc_used_ueq_l"] == f"{charge(DOCK, ammonium=False):.1f}"
+        for column in ("anc_gran_ueq_l", "alkalinity_ueq_l", "anc_gran_of_ions_ueq_l", "ph", "ph_at_air"):
+            assert r[column] == bare[name][column], (name, column)
+    assert counted["D-24"]["anc_used_ueq_l"] == bare["D-24"]["anc_used_ueq_l"] == f"{charge(DOCK) - organic_left_by_gran(1):.1f}"
+    assert counted["N-24"]["anc_used_ueq_l"] == f"{charge(DOCK):.1f}"
+    assert bare["N-24"]["anc_used_ueq_l"] == f"{charge(DOCK, ammonium=False):.1f}"
 
 
 @pytest.mark.parametrize(("text", "limit"), [("39", 39.0), ("norway_20", 20.0), ("trout_1995", 67.0), ("-5", -5.0), ("uk_0", 0.0)])
@@ -230,7 +236,7 @@ def test_event_water(lake, table):
     """The largest share of the file: half the lake's ANC and half of -30; shares of the file in episodes.csv; all of it told."""
     table(EVENT, "melt.toml")
     done = lake("--event", "melt.toml")
-    for name, anc in (("A-24", 60.0), ("C-24", -20.0), ("D-24", charge(DOCK))):
+    for name, anc in (("A-24", 60.0), ("C-24", -20.0), ("D-24", charge(DOCK) - organic_left_by_gran(1))):
         assert_allclose(float(by_name()[name]["episode_anc_ueq_l"]), 0.5 * anc + 0.5 * EVENT_ANC, rtol=0, atol=0.05)
     assert {r["event_fraction"] for r in rows("episodes.csv")} == {"0.2", "0.5"}
     assert "Episode: 50 % of event water mixed in" in done.stdout
@@ -340,7 +346,7 @@ def test_run_record(lake, table):
     assert (found["files"]["readings"], found["sha256"]["readings"]) == ("t.csv", hashlib.sha256(SURVEY.encode()).hexdigest())
     assert (found["options"]["seed"], found["options"]["draws"]) == (7, 0)
     assert sum(found["status"].values()) == 4
-    assert found["anc_from"] == {"Gran ANC": 2, "alkalinity": 1, "charge balance": 1}
+    assert found["anc_from"] == {"Gran ANC": 2, "alkalinity (method unstated)": 1, "Gran ANC of the ions": 1}
     assert [s["name"] for s in found["schemes"]] == ["two_steps", "uk_0"]
     assert found["schemes"][0]["classes"] == ["Gran ANC <= 30 µeq/L", "Gran ANC > 30 µeq/L"]
     assert {x["name"] for x in found["limits"]} == {r["name"] for r in read_table("lake_limits")}

@@ -129,7 +129,7 @@ def test_a_folder_where_a_file_should_be_and_the_other_way_round(call, table, op
 ONLY_IONS = {"sample_id": "a", **ions(60, 20, 30, 5, 2, 50, 5, 25)}
 LACKING = {
     "only ANC": ({"sample_id": "a", "anc_ueq_l": 40}, "prone to turn acid", "Gran ANC (method unstated)"),
-    "only alkalinity": ({"sample_id": "a", "alkalinity_mg_l_caco3": 8}, "sensitive", "alkalinity"),
+    "only alkalinity": ({"sample_id": "a", "alkalinity_mg_l_caco3": 8}, "sensitive", "alkalinity (method unstated)"),
     "only ions": (ONLY_IONS, "prone to turn acid", "charge balance"),
     "no pH": ({k: v for k, v in ALDER.items() if k != "ph"}, "sensitive", "Gran ANC"),
     "no temperature": ({k: v for k, v in ALDER.items() if k != "temperature_c"}, "sensitive", "Gran ANC"),

@@ -12,6 +12,7 @@ import numpy as np
 import pandas as pd
 import pytest
 from click.testing import CliRunner
+from lake_tables import organic_left_by_gran
 from numpy.testing import assert_allclose
 
 from aquabuf.assess.lake import quality, survey, trend, trend_words, trends, words
@@ -186,7 +187,7 @@ def spoken():
            f"{NITROGEN_VELOCITIES_M_YR[1]:g} m/yr, recalled)")
     yield f"{100 * options.event_fraction:g} % of it (`--event-fraction`)"
     yield f"`--lime-anc` (default {options.lime_anc_ueq_l:g} µeq/L)"
-    yield f"above {next(float(r['limit']) for r in read_table('lake_limits') if r['name'] == 'over-limed'):g} the lake is over-limed"
+    yield f"above {next(float(r['limit']) for r in read_table('lake_limits') if r['name'] == 'dose would over-lime'):g} the dose would over-lime"
     yield f"sampled in {lake_run.TREND_YEARS} or more years"
     yield f"told from {trend.MIN_YEARS} years and {trend.MIN_PAIRS} pairs on"
     yield f"its {100 * trend.CONFIDENCE:g} % interval"
@@ -270,12 +271,17 @@ def test_what_the_first_hour_says_of_the_demo(demo):
     t = pd.read_csv(demo / "lake_survey" / "results.csv", keep_default_na=False).set_index("sample_id")
     assert f"Pellin Tarn is {t.loc['PE-24', 'class']} with a probability of {t.loc['PE-24', 'class_probability']:.2f}" in text
     assert f'"could be {t.loc["PE-24", "class_also"]}"' in text
-    assert t.loc["QU-24", "class_conflicts"] == "Gran ANC: chronically acidic; charge balance: sensitive"
+    quagmoor = t.loc["QU-24"]
+    on_gran_scale = float(quagmoor["anc_charge_ueq_l"]) - organic_left_by_gran(float(quagmoor["doc_mg_l"]))
+    assert on_gran_scale + 3.0 * float(quagmoor["aluminum_umol_l"]) < 0.0  # acid by its ions too, were all its aluminum Al3+
+    assert quagmoor["class_conflicts"] == ("Gran ANC: chronically acidic; Gran ANC of the ions: chronically acidic; "
+                                           "charge balance: sensitive")
     known = pd.read_csv(demo / "lake_survey" / "results.csv").dropna(subset="exceedance_meq_m2_yr")
     load, over = known["critical_load_meq_m2_yr"], known["exceedance_meq_m2_yr"]
     counts = [int((over + load - known[f"critical_load{name}_meq_m2_yr"] > 0.0).sum()) for name in ("", "_highest", "_lowest")]
     assert f"{counts[0]} of {len(known)} lakes get more acid than their load by the usual variant, {counts[1]} to {counts[2]} by the others" in text
-    assert t.loc["KT-24", "anc_used_from"] == "charge balance"
+    assert t.loc["KT-24", ["anc_used_from", "anc_gran_ueq_l"]].tolist() == ["Gran ANC of the ions", ""]
+    assert t.loc["KT-24", "anc_end_point_ueq_l"] != ""
     assert (t.loc["FE-24", "missing_ions"], t.loc["FE-24", "anc_charge_ueq_l"]) == ("potassium; nitrate", "")
     history = pd.read_csv(demo / "lake_history" / "recovery.csv").set_index("site")
     assert history["recovering"].to_dict() == {"Ormsel Water": "yes", "Corriden Water": "not shown", "Lantry Tarn": "not shown", "Threlsby Lough": "unknown"}
@@ -365,7 +371,10 @@ def test_counts_of_the_open_survey(tmp_path):
     t = pd.read_csv(tmp_path / "o" / "results.csv")
     load, over = t["critical_load_meq_m2_yr"], t["exceedance_meq_m2_yr"]
     counts = [int((over + load - t[f"critical_load{name}_meq_m2_yr"] > 0.0).sum()) for name in ("", "_highest", "_lowest")]
-    assert f"In {t['class_conflicts'].notna().sum()} of the {len(t)} samples of the survey above" in FLAT
+    classes = [dict(part.split(": ") for part in words.split("; ")) for words in t["class_conflicts"].dropna()]
+    apart = sum(c["Gran ANC"] != c["charge balance"] for c in classes)
+    assert (f"In {apart} of the {len(t)} samples of the survey above Gran ANC and charge balance lead to different classes of "
+            f"`survey_bands`; in {len(classes)} any two of Gran ANC, Gran ANC of the ions and charge balance do.") in FLAT
     assert (f"Of those {len(t)} samples {counts[0]} exceed it by the default, {counts[1]} by the variant with the highest load, "
             f"{counts[2]} by the one with the lowest.") in FLAT
     span = ((t["critical_load_highest_meq_m2_yr"] - t["critical_load_lowest_meq_m2_yr"]) / load).quantile([0.5, 0.9])

@@ -6,7 +6,7 @@ import math
 import re
 
 import pytest
-from lake_tables import ALDER, BIRCH, CEDAR, DEPOSITION, DOCK, HAWK, QA_SERIES, SURVEY, charge, series, table_of
+from lake_tables import ALDER, BIRCH, CEDAR, DEPOSITION, DOCK, HAWK, QA_SERIES, SURVEY, series, table_of
 from numpy.testing import assert_allclose
 
 from aquabuf.assess.lake.options import LakeOptions
@@ -238,16 +238,6 @@ def test_whole_lake_and_lime_by_hand(lakes):
     assert_allclose(number(r, "lime_t"), 40.0 * 0.0500435 / 0.7 * 0.4, rtol=0, atol=0.001)
     assert r["reacidify_yr"] == ""  # its inflow keeps it above the limit
     assert_allclose(number(r, "gas_transfer_m_d"), 0.24 * 2.637, rtol=0, atol=0.002)  # k at 10 °C and 3 m/s, Cole & Caraco 1998
-
-
-def test_charge_balance_and_organic_correction_by_hand(lakes):
-    """Cations less anions; less a third of 10.2 µeq of sites per mg of carbon (Hesthagen et al. 2008)."""
-    rows = {r["sample_id"]: r for r in read(lakes()[1])}
-    for row in (ALDER, BIRCH, CEDAR, DOCK):
-        r = rows[row["sample_id"]]
-        assert_allclose(number(r, "anc_charge_ueq_l"), charge(row), rtol=0, atol=1e-9)
-        assert_allclose(number(r, "anc_organic_corrected_ueq_l"), charge(row) - 3.4 * row["doc_mg_l"], rtol=0, atol=1e-9)
-    assert [rows[n]["anc_used_from"] for n in ("A-24", "B-24", "D-24")] == ["Gran ANC", "alkalinity", "charge balance"]
 
 
 def test_trend_of_the_agency_series(lakes):

@@ -257,8 +257,9 @@ def test_every_assumption_is_told(told, table):
         *(f"Critical load: {line}." for line in record["critical_load"]), "base cations that run off per area and year, S 400", "sulfate before acid deposition 5 µeq/L + 0.05 BC*",
         "ANC limit 67 µeq/L (brown trout, Hesthagen et al. 2008, abstract)", "Liming: quicklime (CaO) to ANC 100 µeq/L", lime["source"],
         f"Gas transfer: vachon_prairie, {transfer_relations()['vachon_prairie'].source}", *(f"Event water, {line}." for line in record["event"]), "90% intervals and probabilities from 100 seeded draws (seed 5)",
-        "Charge balance: calcium, magnesium, sodium, potassium less sulfate", "Missing ions are never taken as zero",
-        "An ANC whose method is not given counts as Gran: 1 lake", "temperature and constants are taken as exact"]
+        "Charge balance: calcium, magnesium, sodium, potassium less sulfate", "A missing one of these ions is never taken as zero: there is no charge balance then.",
+        "Counted as none in pH, tolerance and lime, because not measured: aluminum in 2 lakes.",
+        "An ANC or alkalinity whose method is not given counts as Gran: 1 lake", "temperature and constants are taken as exact"]
     for text in (run.flat, run.flat_report):
         for words in rests:
             assert words in text, words

@@ -114,8 +114,8 @@ def answers(lakes: Lakes, plan: Plan, rules: Rules, options: LakeOptions, *, dra
     limit = load.anc_limit if rules.limit.is_variable else np.full((1, 1), rules.limit.value_eq_l)
     columns = _anc(lakes, b, c, used) | _water(c, options) | _carbon(lakes, c)
     columns |= _capacity(lakes, c, water, fallen, used, limit, options) | _loads(load)
-    both, of_episode = episode(lakes, b, c, rules, options, used, plan.used < ANC_KINDS.index("charge "
-                                                                                              "balance"), limit, draws)
+    by_gran = plan.used < ANC_KINDS.index("charge balance")
+    both, of_episode = episode(lakes, b, c, rules, options, used, by_gran, limit, draws)
     columns |= of_episode | lime(lakes, c, rules, options, water, used, limit)
     columns |= transfer(lakes, c, options.wind_relation)
     by_definition = {"anc_gran": b.gran, "anc_gran_of_ions": b.gran_of_ions, "anc_charge": b.charge,

@@ -282,7 +282,7 @@ def _classes(figures: dict, found: Answers, rules: Rules, around: Spread, used: 
         "episode_class": class_after(first, found.episode.after(
             found.episode.fraction, found.by_definition, ph_after(found, figures["episode_ph"][:, None])), place),
     }
-    return index | {(first.name, ""): code}
+    return index
 
 
 def ph_after(found: Answers, at_air: Array) -> Array:

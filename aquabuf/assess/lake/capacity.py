@@ -18,6 +18,7 @@ Array = NDArray[np.float64]
 
 H2SO4_KG_PER_KEQ = substances()["hydrogen"].molar_mass_g + 0.5 * substances()["sulfate"].molar_mass_g
 LITERS_PER_M3 = 1e3
+LEAST_ACID = 1e-12  # net acid that counts as none [eq/m2/yr]
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -101,7 +102,7 @@ def years_left(anc_above_eq_l: Array, lakes: Lakes, water: Hydrology, net_acid_e
     passed already; nan where no net acid falls.
     """
     per_liter = np.maximum(anc_above_eq_l, 0.0)
-    acid = np.where(net_acid_eq_m2_yr > 0.0, net_acid_eq_m2_yr, np.nan)
+    acid = np.where(net_acid_eq_m2_yr > LEAST_ACID, net_acid_eq_m2_yr, np.nan)
     in_lake = LITERS_PER_M3 * per_liter * water.volume_m3
     by_depth_of_runoff = LITERS_PER_M3 * per_liter * lakes.get("runoff_m_yr") * water.residence_yr / acid
     on_catchment = in_lake / (acid * lakes.get("watershed_area_m2"))

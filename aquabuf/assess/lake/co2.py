@@ -144,7 +144,8 @@ def _quantities(of_titration: NDArray[np.bool_], pressure: Array, ph: Array, car
                 ) -> dict[str, Array]:
     """What the tests ask for, by the names in their table; nan where a test does not apply."""
     some, bounded, no_interval = carbonate > 0.0, low > 0.0, np.isnan(low) | np.isnan(high)
-    share = 100.0 * organic / np.where(some, carbonate, 1.0)
+    with np.errstate(over="ignore"):  # next to no carbonate: all of it is organic
+        share = 100.0 * organic / np.where(some, carbonate, 1.0)
     ratio = np.where(bounded, high / np.where(bounded, low, 1.0), np.inf)
     return {
         "carbonate_ueq_l": np.where(of_titration, MICRO * carbonate, np.nan),

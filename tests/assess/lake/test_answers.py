@@ -239,7 +239,8 @@ def test_class_after_an_event_by_the_definition_of_its_scheme(tmp_path):
 def test_waters_of_an_episode():
     """The closed lake has the ANC of its pH and carbon; event water gets the carbon of air unless it has its own."""
     found, _, lakes = answered(CLEAR, air_co2_ppm=AIR_PPM)
-    assert_allclose(closed_lake(lakes, found, {"pco2_uatm": np.array([500.0])})["anc_eq_l"], HAND.alkalinity(6.5, 80e-6), rtol=2e-3)
+    assert_allclose(closed_lake(lakes, found, {"pco2_uatm": np.array([500.0])})["anc_eq_l"],
+                    HAND.alkalinity(6.5, 80e-6), rtol=2e-3)
     assert_allclose(found.episode.lake["anc_eq_l"], 40e-6, rtol=1e-12)
     event = with_carbon(lakes, found.episode.event)
     co2 = 400e-6 * (1.0 - 1.2281 / 101.325) * HAND.k0  # the air of `lakes_of`
@@ -292,6 +293,17 @@ def test_first_days_of_a_lake_whose_carbon_cannot_be_told():
     carbon = AIR_PPM * 1e-6 * (1.0 - 1.2281 / 101.325) * water.k0 / water.shares(4.79)[0]
     dose = 121.7e-6
     by_hand = water.ph(water.alkalinity(4.79, carbon) + dose, carbon + dose / 2.0)
+    assert_allclose(row["lime_ph_closed"], by_hand, rtol=0, atol=0.02)
+
+
+def test_first_days_of_a_lake_whose_pressure_is_not_stated():
+    """Acid clear water of unknown organic carbon: its own is not believed, the CO2 of air is taken."""
+    acid = without(CLEAR, "dic_mol_l") | {"ph": 5.3, "anc_eq_l": 60e-6}
+    row = result(acid, air_co2_ppm=AIR_PPM)
+    assert row["pco2_from"].startswith("not stated")
+    assert row["dic_umol_l"] > 500.0  # pH 5.3 with 60 µeq/L of bicarbonate
+    carbon = AIR_CO2 / HAND.shares(5.3)[0]
+    by_hand = HAND.ph(HAND.alkalinity(5.3, carbon) + 40e-6, carbon + 20e-6)
     assert_allclose(row["lime_ph_closed"], by_hand, rtol=0, atol=0.02)
 
 

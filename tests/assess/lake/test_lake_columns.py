@@ -195,7 +195,8 @@ def test_only_own_limits(tmp_path):
     ('remove = ["acidic"]\n', "lake_limits",
      r"^mine\.toml: remove names a limit that is not there: 'acidic'; there are below pH 6, "
      r"aluminum, base cations used up, critical load exceeded, episode to zero, dose would over-lime\. Correct the name\.$"),
-    ('remove = ["dose would over-lime"]\n', "limits", "remove names a limit that is not there: 'dose would over-lime'; there are acidic, "),
+    ('remove = ["dose would over-lime"]\n', "limits",
+     "remove names a limit that is not there: 'dose would over-lime'; there are acidic, "),
     (OWN.format("x", "alkalinity_meq_l", 1), "lake_limits",
      r"limit 'x': quantity must be a figure of results\.csv; found "
      r"'alkalinity_meq_l'\. Choose from .*anc_used_ueq_l, .*acid_to_ph_6_0_open_ueq_l, .*critical_load_meq_m2_yr"),

@@ -203,10 +203,11 @@ def test_quantile_of_nothing(values, weight):
     assert np.isnan(weighted_quantile(np.array(values), np.array(weight), 0.5))
 
 
-def test_tenths_of_equal_weights():
-    """Of ten equal weights each tenth is reached by its own value, whatever tenths add up to in binary."""
-    values, weight = np.arange(1.0, 11.0), np.full(10, 0.1)
-    assert [weighted_quantile(values, weight, k / 10) for k in range(1, 11)] == list(values)
+def test_parts_of_equal_weights():
+    """Each part of equal weights is reached by its own value, whatever their sums are in binary."""
+    for n, one in ((10, 0.1), (5, 0.3), (8, 0.7)):
+        values, weight = np.arange(1.0, n + 1.0), np.full(n, one)
+        assert [weighted_quantile(values, weight, k / n) for k in range(1, n + 1)] == list(values)
 
 
 GROUPS = table(

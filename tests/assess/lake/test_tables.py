@@ -101,6 +101,16 @@ def test_rules_of_the_classes_hold_for_the_value(survey):
         assert row["source"]
 
 
+def test_rare_classes_are_left_out():
+    """40 and 14 µeq/L: 24 % above 50 and 0.2 % at or below 0 (normal law); half a percent is needed to be shown."""
+    table = class_table(assessed(FULL | {"anc_u_eq_l": 14e-6}, draws=20_000))
+    shown = table[(table["scheme"] == "survey_bands") & (table["definition"] == "Gran ANC")]
+    assert list(shown["class"]) == ["prone to turn acid", "sensitive"]
+    table = class_table(assessed(FULL | {"anc_u_eq_l": 19e-6}, draws=20_000))  # 1.8 % at or below 0
+    shown = table[(table["scheme"] == "survey_bands") & (table["definition"] == "Gran ANC")]
+    assert list(shown["class"]) == ["chronically acidic", "prone to turn acid", "sensitive"]
+
+
 def test_classes_without_draws():
     """One row for each definition; no probability."""
     table = class_table(assessed(FULL))
