@@ -13,13 +13,14 @@ import math
 import tomllib
 from collections.abc import Mapping, Sequence
 from pathlib import Path
+from typing import Any
 
 from aquabuf.assess.limits import ANY, OPERATORS, UNSTATED, Limit, shipped_limits
 from aquabuf.assess.sample.headline import REGIMES
 from aquabuf.errors import FileError, InputError
 from aquabuf.readings.schema import quantities as reading_columns
 
-__all__ = ["read_limits"]
+__all__ = ["limits_of", "read_limits"]
 
 _NEEDED = ("quantity", "operator", "limit", "words", "source")
 _TEXT = ("quantity", "operator", "unit", "group", "words", "next_step", "source")
@@ -33,26 +34,36 @@ def read_limits(path: Path | None, quantities: Mapping[str, str], table: str = "
     `quantities` are the figures that can be limited, with their unit. New limits lead their group; one that replaces a
     shipped limit takes its place. Raises FileError or InputError naming file, key, value and remedy.
     """
-    limits = {limit.name: limit for limit in shipped_limits(table)}
-    if path is None:
-        return tuple(limits.values())
-    content = _toml(path)
+    shipped = shipped_limits(table)
+    return shipped if path is None else limits_of(path.name, _toml(path), quantities, shipped)
+
+
+def limits_of(file: str, content: Mapping[str, Any], quantities: Mapping[str, str], shipped: Sequence[Limit], *,
+              kinds: Sequence[str] = (), where: str = "results.csv") -> tuple[Limit, ...]:
+    """The `shipped` limits changed by tables of the user's own, as `read_limits` does; `file` names them in messages.
+
+    kinds : what a limit may be for beside "any"; by default the kinds of water of the readings. where : the table that
+    has the quantities.
+    """
+    limits = {limit.name: limit for limit in shipped}
+    kinds = kinds or (UNSTATED, *dict.fromkeys(word for _, word in reading_columns()["water_kind"].choices))
     unknown = sorted(set(content) - {"limits", "remove", "only_mine"})
     if unknown:
-        raise InputError(f"{path.name}: keys must be limits, remove or only_mine; found {unknown[0]!r}. "
+        raise InputError(f"{file}: keys must be limits, remove or only_mine; found {unknown[0]!r}. "
                          f"Put each limit under [limits.\"its name\"].")
     only_mine, remove, entries = (content.get(k, v) for k, v in (("only_mine", False), ("remove", []), ("limits", {})))
     if not isinstance(only_mine, bool):
-        raise InputError(f"{path.name}: only_mine must be true or false; found {only_mine!r}. Write it without quotes.")
+        raise InputError(f"{file}: only_mine must be true or false; found {only_mine!r}. Write it without quotes.")
     if not isinstance(entries, dict):
-        raise InputError(f"{path.name}: limits must be tables; found {entries!r}. Write [limits.\"its name\"].")
+        raise InputError(f"{file}: limits must be tables; found {entries!r}. Write [limits.\"its name\"].")
     limits = {} if only_mine else limits
-    for name in _word_list(path.name, "remove", remove, ()):
+    for name in _word_list(file, "remove", remove, ()):
         if name not in limits:
-            raise InputError(f"{path.name}: remove names a limit that is not there: {name!r}; there are "
+            raise InputError(f"{file}: remove names a limit that is not there: {name!r}; there are "
                              f"{', '.join(limits) or 'none'}. Correct the name.")
         del limits[name]
-    own = {name: _own_limit(f"{path.name}: limit {name!r}", name, entry, quantities) for name, entry in entries.items()}
+    own = {name: _own_limit(f"{file}: limit {name!r}", name, entry, quantities, (ANY, *kinds), where)
+           for name, entry in entries.items()}
     kept = {name: own.pop(name, limit) for name, limit in limits.items()}
     return (*own.values(), *kept.values())
 
@@ -67,14 +78,15 @@ def _toml(path: Path) -> dict:
         raise InputError(f"{path.name} is not valid TOML: {error}. Correct that line.") from None
 
 
-def _own_limit(where: str, name: str, entry: object, quantities: Mapping[str, str]) -> Limit:
+def _own_limit(where: str, name: str, entry: object, quantities: Mapping[str, str], kinds: Sequence[str], table: str,
+               ) -> Limit:
     """One limit of the file; `where` names file and limit in messages."""
     if not isinstance(entry, dict):
         raise InputError(f"{where} must be a table; found {entry!r}. Write [limits.\"{name}\"] and its keys below.")
     _check_keys(where, entry)
     quantity = entry["quantity"]
     if quantity not in quantities:
-        raise InputError(f"{where}: quantity must be a figure of results.csv; found {quantity!r}. "
+        raise InputError(f"{where}: quantity must be a figure of {table}; found {quantity!r}. "
                          f"Choose from {', '.join(quantities)}.")
     if entry["operator"] not in OPERATORS:
         raise InputError(f"{where}: operator must be one of {', '.join(OPERATORS)}; found {entry['operator']!r}. "
@@ -82,7 +94,6 @@ def _own_limit(where: str, name: str, entry: object, quantities: Mapping[str, st
     unit = entry.get("unit", quantities[quantity])
     if unit != quantities[quantity]:
         raise InputError(f"{where}: {quantity} is in {quantities[quantity]}; found unit {unit!r}. Convert the limit.")
-    kinds = (ANY, UNSTATED, *dict.fromkeys(word for _, word in reading_columns()["water_kind"].choices))
     return Limit(
         name=name, group=entry.get("group", name), quantity=quantity, operator=entry["operator"],
         limit=float(entry["limit"]), lower=float(entry.get("lower", -math.inf)), unit=unit,

@@ -15,7 +15,11 @@ ACID_ROWS = read_rows("weak_acids")
 # its slope, which has tests of its own; the ratios of sea salt have their rows in critical_loads.csv.
 NOT_QUANTITIES = {"Acid", "acid_named", "acid_table", "AIR_CO2_YEAR", "OrganicModel", "organic_models", "charge_and_slope",
                   "TransferRelation", "transfer_relations", "schmidt_relations", "transfer_velocity_m_d",
-                  "equivalents_per_chloride", "equivalents_per_sodium"}
+                  "equivalents_per_chloride", "equivalents_per_sodium",
+                  # products have their rows in treatment_products.csv
+                  "FORMS", "Product", "atoms", "find_product", "own_product", "products", "strength_of", "with_basicity",
+                  "zero_level_charge", "check_certificate", "density_from_strength", "freezes_at_c",
+                  "strength_from_density"}
 
 
 def _public_quantities():

@@ -38,10 +38,10 @@ def row_id(row):
 
 
 def arguments(row):
-    """Keyword arguments of a row as numbers."""
+    """Keyword arguments of a row as numbers; a formula stays text."""
     pairs = [pair.split("=") for pair in row["other"].split(";") if pair]
     own = [(key, row[key]) for key in ("t_c", "salinity") if row[key]]
-    return {key: float(value) for key, value in [*own, *pairs]}
+    return {key: value if key == "formula" else float(value) for key, value in [*own, *pairs]}
 
 
 def computed(row):

@@ -13,13 +13,11 @@ anc_method = "gran"                 needed with anc: gran, curve_fit or charge_b
 
 from __future__ import annotations
 
-import math
 import tomllib
 from collections.abc import Mapping
 from dataclasses import dataclass
 from functools import cache
 from pathlib import Path
-from typing import TypeGuard
 
 import numpy as np
 from numpy.typing import NDArray
@@ -30,9 +28,9 @@ from aquabuf.assess.lake.episode import completed, ion_anc, water_of
 from aquabuf.assess.lake.inputs import IONS, Lakes, setting_of
 from aquabuf.assess.uncertainty import drawn
 from aquabuf.chem.organic import OrganicModel
-from aquabuf.errors import FileError, HeaderError, InputError
-from aquabuf.readings.headers import Column, nearest_names, parse_header
-from aquabuf.readings.schema import Quantity, name_index, quantities
+from aquabuf.errors import FileError, InputError
+from aquabuf.readings.entries import is_number, read_entries
+from aquabuf.readings.schema import Quantity, quantities
 
 __all__ = ["DEFAULT_RELATIVE_U", "EventWater", "read_event", "water_of_event"]
 
@@ -166,13 +164,9 @@ def _table(file: str, content: Mapping[str, object], key: str) -> dict[str, obje
     return found
 
 
-def _is_number(value: object) -> TypeGuard[float]:
-    return isinstance(value, int | float) and not isinstance(value, bool) and math.isfinite(value)
-
-
 def _fractions(file: str, given: object) -> tuple[float, ...]:
     listed = given if isinstance(given, list) else [given]
-    shares = [float(f) for f in listed if _is_number(f) and 0.0 < f <= 1.0]
+    shares = [float(f) for f in listed if is_number(f) and 0.0 < f <= 1.0]
     if not shares or len(shares) < len(listed):
         raise InputError(f"{file}, [event]: fraction must be one share of event water or a list of them, above 0 and "
                          f"at most 1; found {given!r}. Write 40 % as fraction = 0.4.")
@@ -180,7 +174,7 @@ def _fractions(file: str, given: object) -> tuple[float, ...]:
 
 
 def _relative(file: str, given: object) -> float:
-    if _is_number(given) and 0.0 <= given <= 2.0:
+    if is_number(given) and 0.0 <= given <= 2.0:
         return float(given)
     raise InputError(f"{file}, [event]: relative_uncertainty must be a number from 0 to 2; found {given!r}. "
                      f"Write 20 % as 0.2.")
@@ -201,52 +195,11 @@ def _allowed() -> dict[str, Quantity]:
     return {name: quantities()[name] for name in names}
 
 
-def _values(file: str, entries: Mapping[str, object]) -> tuple[dict[str, float], dict[str, float]]:
+def _values(file: str, entries: Mapping[str, object]) -> tuple[Mapping[str, float], Mapping[str, float]]:
     """Values and standard uncertainties by column name of the value, in house units."""
-    values: dict[str, float] = {}
-    u: dict[str, float] = {}
-    for key, given in entries.items():
-        where = f"{file}, [water] {key!r}"
-        column = _column(where, key)
-        if not _is_number(given):
-            raise InputError(f"{where}: must be a number; found {given!r}. Write it without quotes; leave the key out "
-                             f"if there is no value.")
-        house = float(given) * column.scale + column.offset
-        _check_range(where, column, house, float(given))
-        into = u if column.is_u else values
-        if column.quantity.name in into:
-            raise InputError(f"{where}: {column.name} must be given once; found a second key for it. Remove one.")
-        into[column.quantity.name] = house
-    for name in u:
-        if name not in values:
-            raise InputError(f"{file}, [water]: {quantities()[name].u_name} must go with a value; found none of "
-                             f"{quantities()[name].base}. Add the value.")
-    return values, u
-
-
-def _column(where: str, key: str) -> Column:
-    index = name_index(schema=_allowed())
-    try:
-        column = parse_header(key, index)
-    except HeaderError as error:
-        if " is not known. " not in str(error):
-            raise InputError(f"{where}: {error}") from None
-        near = nearest_names(key, index)
-        hint = f" The nearest known names are {', '.join(near)}." if near else ""
-        bases = ", ".join(q.base for q in _allowed().values())
-        raise InputError(f"{where}: keys must be {METHOD} or one of {bases}, with unit; found {key!r}.{hint} Correct "
-                         f"it or remove it.") from None
-    if column.unit is not None and column.unit.per_kg:
-        raise InputError(f"{where}: must be per liter; found {column.unit_label}. Convert it.")
-    return column
-
-
-def _check_range(where: str, column: Column, house: float, given: float) -> None:
-    low, high = (0.0, math.inf) if column.is_u else (column.quantity.low, column.quantity.high)
-    if not low <= house <= high:
-        ends = f"at least {column.in_file_unit(low):g}" if math.isinf(high) else \
-            f"from {column.in_file_unit(low):g} to {column.in_file_unit(high):g}"
-        raise InputError(f"{where}: must be {ends} {column.unit_label}; found {given:g}. Check value and unit.")
+    found = read_entries(entries, _allowed(), lambda key: f"{file}, [water] {key!r}", beside=(METHOD,))
+    found.check_u(f"{file}, [water]", quantities())
+    return found.values, found.u
 
 
 def _check_enough(file: str, values: Mapping[str, float], method: str) -> None:

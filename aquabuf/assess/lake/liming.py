@@ -18,6 +18,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from aquabuf.arrays import worded
 from aquabuf.chem.aluminum import aluminum_charge
+from aquabuf.chem.products import Product, products, zero_level_charge
 from aquabuf.engine.lake import LakeBalance
 from aquabuf.tables import read_table
 from aquabuf.units import molar_mass_of, substances
@@ -32,10 +33,6 @@ Array = NDArray[np.float64]
 
 HARMFUL_ALUMINATE_UG_L = 100.0  # of a river limed with half-burnt dolomite past pH 9: Erstad et al. 2001, Vann
 
-# Acid that each part of a product binds [eq/mol] and carbon that it brings [mol/mol]
-_BINDS = MappingProxyType({"carbonate": 2, "bicarbonate": 1, "hydroxide": 1, "oxide": 2})
-_CARBON = MappingProxyType({"carbonate": 1, "bicarbonate": 1})
-
 # What takes up the dose, in words; exact bookkeeping, they add up to it. The terms are those of Henrikson et al. 1995,
 # Water Air Soil Pollut. 85:131: acid, aluminum, organic matter, and the buffer that is wanted.
 DEMANDS: Mapping[str, str] = MappingProxyType({
@@ -48,15 +45,14 @@ DEMANDS: Mapping[str, str] = MappingProxyType({
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class LimeProduct:
-    """One product as a pure compound; `parts` are its ions and how many of each.
+    """One product as it is spread on water; `pure` is its compound in the table of treatment products.
 
     is_quick : dissolves so fast that pH can overshoot before carbon dioxide from air comes in.
     dissolved_low, dissolved_usual, dissolved_high : share that dissolves before it settles. [-]
     """
 
     name: str
-    formula: str
-    parts: Mapping[str, int]
+    pure: Product
     is_quick: bool
     dissolved_low: float
     dissolved_usual: float
@@ -66,14 +62,19 @@ class LimeProduct:
     source: str
 
     @property
-    def eq_per_mol(self) -> int:
+    def formula(self) -> str:
+        """Formula of the pure compound."""
+        return self.pure.formula
+
+    @property
+    def eq_per_mol(self) -> float:
         """Acid that one formula unit binds. [eq/mol]"""
-        return sum(count * _BINDS.get(part, 0) for part, count in self.parts.items())
+        return self.pure.adds["alkalinity"]
 
     @property
     def g_per_eq(self) -> float:
         """Mass that binds one equivalent of acid. [g/eq]"""
-        return sum(count * _part_mass(part) for part, count in self.parts.items()) / self.eq_per_mol
+        return self.pure.molar_mass_g / self.eq_per_mol
 
     @property
     def neutralizing_value_pct(self) -> float:
@@ -83,20 +84,16 @@ class LimeProduct:
     @property
     def carbon_mol_per_eq(self) -> float:
         """Inorganic carbon that comes with each equivalent. [mol/eq]"""
-        return sum(count * _CARBON.get(part, 0) for part, count in self.parts.items()) / self.eq_per_mol
+        return self.pure.adds["carbon"] / self.eq_per_mol
 
     def cation_per_eq(self, ion: str) -> float:
         """Charge of calcium, magnesium or sodium added with each equivalent. [eq/eq]"""
-        return self.parts.get(ion, 0) * (substances()[ion].charge or 0) / self.eq_per_mol
+        return self.pure.adds.get(ion, 0.0) * zero_level_charge(ion) / self.eq_per_mol
 
     @property
     def shares(self) -> dict[str, float]:
         """Share that dissolves: usual, low and high. [-]"""
         return {"usual": self.dissolved_usual, "low": self.dissolved_low, "high": self.dissolved_high}
-
-
-def _part_mass(part: str) -> float:
-    return 0.5 * molar_mass_of("O2") if part == "oxide" else substances()[part].molar_mass_g
 
 
 def calcium_carbonate_g_per_eq() -> float:
@@ -108,11 +105,10 @@ def calcium_carbonate_g_per_eq() -> float:
 def lime_products() -> dict[str, LimeProduct]:
     """The shipped products by name (treat as read-only)."""
     return {r["name"]: LimeProduct(
-        name=r["name"], formula=r["formula"],
-        parts={part: int(count) for part, _, count in (item.partition("=") for item in r["parts"].split(";"))},
-        is_quick=r["is_quick"] == "yes", dissolved_low=float(r["dissolved_low"]),
-        dissolved_usual=float(r["dissolved_usual"]), dissolved_high=float(r["dissolved_high"]), words=r["words"],
-        hazard=r["hazard"], source=f"{r['source']}{' (recalled)' if r['mark'] == 'recalled' else ''}")
+        name=r["name"], pure=products()[r["name"]], is_quick=r["is_quick"] == "yes",
+        dissolved_low=float(r["dissolved_low"]), dissolved_usual=float(r["dissolved_usual"]),
+        dissolved_high=float(r["dissolved_high"]), words=r["words"], hazard=r["hazard"],
+        source=f"{r['source']}{' (recalled)' if r['mark'] == 'recalled' else ''}")
         for r in read_table("lime_products")}
 
 
