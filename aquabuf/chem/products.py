@@ -106,6 +106,8 @@ def atoms(formula: str) -> Mapping[str, float]:
         end = part.end()
     if end != len(formula) or not formula or formula[0] in ".·":
         _bad_formula(formula, f"the rest {formula[end:]!r} cannot be read")
+    if not all(found.values()):
+        _bad_formula(formula, f"{next(e for e, n in found.items() if not n)} has a count of 0")
     return MappingProxyType(found)
 
 

@@ -173,7 +173,7 @@ def test_atomic_masses_agree_with_the_ion_table():
 
 @pytest.mark.parametrize(("formula", "why"), [
     ("Ca(OH2", "bracket stays open"), ("Ca)2", "bracket closes"), ("Xx2", "'Xx' is no element"), ("", "cannot be read"),
-    ("caco3", "cannot be read"), (".5H2O", "cannot be read"), ("NaCl.", "cannot be read"), ("Ca OH", "cannot be read"),
+    ("caco3", "cannot be read"), ("Ca0", "Ca has a count of 0"), (".5H2O", "cannot be read"), ("NaCl.", "cannot be read"), ("Ca OH", "cannot be read"),
 ])
 def test_a_formula_that_is_none(formula, why):
     """The message says what cannot be read and shows a formula that can."""

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
@@ -19,7 +20,6 @@ from aquabuf.assess.plant.hold import Buffering, hold_ph, ranked
 from aquabuf.assess.plant.plan import Plan
 from aquabuf.assess.plant.ranges import ControlRange, control_range
 from aquabuf.assess.plant.rules import Judged, cautions_of, judged_by, plan_limits
-from aquabuf.assess.plant.season import Season, season
 from aquabuf.assess.plant.steps.base import Finding, Step
 from aquabuf.assess.plant.stream import Stream, stream_of
 from aquabuf.assess.plant.targets import Target
@@ -28,6 +28,9 @@ from aquabuf.assess.sample.inputs import uncertainties, values_of
 from aquabuf.errors import InputError
 from aquabuf.readings.result import join_readings
 from aquabuf.readings.source import open_any
+
+if TYPE_CHECKING:
+    from aquabuf.assess.plant.season import Season
 
 __all__ = ["Answer", "Hold", "TargetLine", "solve_plan"]
 
@@ -155,14 +158,17 @@ def _faults(plan: Plan, train: Train, feeds: Sequence[FeedLine]) -> tuple[tuple[
         if not line.mol_l[0] > 0.0:
             continue
         most = largest_mol_l(line, plan.flow.now_m3_d)
-        try:
-            if most is None:
-                words.append(f"{line.product.name}: the plan has no pump or feeder, so a stuck feed is taken as "
-                             f"{OVERFEED:g} times the dose")
-            out += full_stroke(train, line.product.name, flow_m3_d=plan.flow.now_m3_d, hours=FAULT_HOURS,
-                               step=line.step, most_mol_l=most, factor=OVERFEED if most is None else None)
-        except InputError as error:
-            words.append(str(error))
+        small = most is not None and most < line.mol_l[0]
+        if most is None:
+            words.append(f"{line.product.name}: the plan has no pump or feeder, so a stuck feed is taken as "
+                         f"{OVERFEED:g} times the dose")
+        elif small:
+            words.append(f"{line.product.name}: its pump or feeder gives less than the dose, so that a stuck one does "
+                         "not overfeed")
+        factor = OVERFEED if most is None else 1.0 if small else None
+        stuck, stopped = full_stroke(train, line.product.name, flow_m3_d=plan.flow.now_m3_d, hours=FAULT_HOURS,
+                                     step=line.step, most_mol_l=None if factor else most, factor=factor)
+        out += [stopped] if small else [stuck, stopped]
     return tuple(out), tuple(words)
 
 
@@ -184,6 +190,8 @@ def _drift(plan: Plan, steps: Sequence[Step], train: Train, draws: int | None,
 def _season(plan: Plan, steps: Sequence[Step]) -> Season | None:
     if plan.drift is None or plan.drift.readings is None:
         return None
+    from aquabuf.assess.plant.season import season  # its ranks are slow to import
+
     readings = join_readings(open_any(plan.drift.readings, plan.drift.mapping))
     return season(values_of(readings.frame), steps, flow_m3_d=plan.flow.now_m3_d)
 

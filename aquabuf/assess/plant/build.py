@@ -152,7 +152,7 @@ def _adjust(spec: StepSpec, plan: Plan, _: Mapping[str, Stream]) -> Step:
     targets = spec.values["target"]
     if spec.values["open_to_air"]:
         targets = tuple(_open(t) for t in targets)
-    return Adjust(name=spec.name, products=spec.values["products"], targets=targets)
+    return Adjust(name=spec.name, products=spec.values["products"], targets=targets, margin=spec.values["margin"])
 
 
 def _open(target: Target) -> Target:

@@ -17,7 +17,7 @@ from numpy.typing import NDArray
 from scipy.optimize import minimize
 
 from aquabuf.assess.plant.dose import NOTHING, REACHED, Point, dosed, refuse_curved, solve_doses
-from aquabuf.assess.plant.quantities import measured
+from aquabuf.assess.plant.quantities import find_quantity, measured
 from aquabuf.assess.plant.store import Stocked
 from aquabuf.assess.plant.stream import Stream
 from aquabuf.assess.plant.targets import Target, all_met
@@ -30,6 +30,8 @@ Array = NDArray[np.float64]
 Words = NDArray[np.object_]
 
 MOST_PRODUCTS, MOST_TARGETS = 6, 5  # corners grow fast with both
+SCANNED_PH = tuple(np.round(np.arange(6.0, 11.01, 0.1), 1))
+_ANY_PH = Target(quantity=find_quantity("ph"), low=SCANNED_PH[0], high=SCANNED_PH[-1])
 GAIN = 1e-6                         # relative saving from which a search counts
 SEARCHES, SMALL = 20, 1e-5          # rounds of it, and the step of its slopes in parts of a dose
 
@@ -99,19 +101,28 @@ Corners = tuple[tuple[int, ...], tuple[Target, ...], list[tuple[float, ...]]]
 def _corners(products: Sequence[Stocked], targets: Sequence[Target]) -> Iterator[Corners]:
     """Products used, targets held, and the values to hold them at; as many products as targets.
 
-    A value that must be met is always held, a window at either of its ends. One curved quantity at a time can be held.
+    A value that must be met is always held, a window at either of its ends. One curved quantity at a time can be held:
+    see `_with_ph`.
     """
     fixed = tuple(t for t in targets if t.is_point)
     windows = [t for t in targets if not t.is_point]
     for size in range(len(fixed), min(len(products), len(targets)) + 1):
         for extra in combinations(windows, size - len(fixed)):
-            held = fixed + extra
-            if sum(t.quantity.kind == "curved" for t in held) > 1:
-                continue
-            ends = list(product(*([t.low] if t.is_point else [v for v in (t.low, t.high) if math.isfinite(v)]
-                                  for t in held)))
+            held = _with_ph(fixed + extra)
+            ends = list(product(*(SCANNED_PH if t is _ANY_PH else [t.low] if t.is_point else
+                                  [v for v in (t.low, t.high) if math.isfinite(v)] for t in held)))
             for used in combinations(range(len(products)), size):
-                yield used, held, ends
+                if sum(t.quantity.kind == "curved" for t in held) <= 1:
+                    yield used, held, ends
+
+
+def _with_ph(held: tuple[Target, ...]) -> tuple[Target, ...]:
+    """Of two curved quantities one is held, the other watched while a scan of pH stands in for it."""
+    curved = [t for t in held if t.quantity.kind == "curved"]
+    if len(curved) != 2 or any(t.quantity.name == "ph" for t in held):
+        return held
+    watched = next(t for t in reversed(curved) if not t.is_point)
+    return tuple(_ANY_PH if t is watched else t for t in held)
 
 
 def _corner(stream: Stream, products: Sequence[Stocked], used: tuple[int, ...], held: tuple[Target, ...],
@@ -132,7 +143,7 @@ def _corner(stream: Stream, products: Sequence[Stocked], used: tuple[int, ...], 
 
 def _binding(target: Target, value: float) -> str:
     q = target.quantity
-    end = "" if target.is_point else " (low end)" if value == target.low else " (high end)"
+    end = "" if target.is_point or target is _ANY_PH else " (low end)" if value == target.low else " (high end)"
     return f"{q.label} {q.text(value)}{end}"
 
 

@@ -181,11 +181,10 @@ def _table(stocked: Stocked, mg_l: Array, mol_l: Array, after: Callable[[Array],
 
 
 def _slopes(after: Callable[[Array], Stream], mol_l: Array, h: float) -> Array:
-    """Slope of pH against dose, by a parabola through three doses, none below zero. [L/mol]"""
+    """Slope of pH against dose between two doses a small step to either side, none below zero. [L/mol]"""
     middle = np.maximum(mol_l, h)
-    ph = after(np.concatenate([middle - h, middle, middle + h])).water().ph.reshape(3, -1)
-    bend = (ph[2] - 2.0 * ph[1] + ph[0]) / h**2
-    return (ph[2] - ph[0]) / (2.0 * h) + bend * (mol_l - middle)
+    below, above = after(np.concatenate([middle - h, middle + h])).water().ph.reshape(2, -1)
+    return (above - below) / (2.0 * h)
 
 
 def _shift(at: _Ph, wanted: float, top: float, change: float) -> float:

@@ -42,6 +42,8 @@ SINGULAR = 1e-9       # determinant over the product of row lengths
 FIRST_STEP, LAST_STEP = 1e-6, 0.2  # of the search along one dose; no works doses more than the last [mol/L]
 MANY = 4096                        # waters worked at once in that search
 GROWTH = 2.0                       # from step to step of that search
+WELL_WITHIN = 0.01                 # of the closeness of the table, where a root ends
+NEAR_MISS_ROUNDS, NEAR_MISS_STEPS = 3, 17  # where no sign turned
 SMALL_GROWTH = {"buffer_intensity": 1.15}  # which falls and rises again along a dose
 FAR_BELOW = {"si_calcite": -10.0, "ccpp": -1e-2}  # in water without calcium or carbonate, where it has no value
 
@@ -223,17 +225,47 @@ def _linear(slopes: Array, right: Array) -> tuple[Array, NDArray[np.bool_]]:
 
 def _curved(stream: Stream, products: Sequence[Product], straight: Sequence[Point], point: Point, air_co2_ppm: float,
             signs: tuple[float, ...]) -> tuple[Array, NDArray[np.bool_]]:
-    """Doses where one target is curved: the others follow the dose of a lead, along which a root is searched."""
+    """Doses where one target is curved: the others follow the dose of a lead product, along which a root is searched.
+
+    Each product leads in turn, in the rows that have no doses yet, or less than nothing of one.
+    """
+    x, able = np.full((len(products), stream.rows), np.nan), np.zeros(stream.rows, dtype=bool)
     for lead in range(len(products)):
+        with np.errstate(invalid="ignore"):
+            rows = np.flatnonzero(~(x >= -NOTHING).all(axis=0))
+        if not rows.size:
+            break
         others = [p for k, p in enumerate(products) if k != lead]
-        if straight and not _straight(stream, others, straight, air_co2_ppm)[1].any():
-            continue
-        path = _Path(stream, products[lead], others, straight, point, air_co2_ppm)
+        if straight:
+            here = [Point(p.quantity, of_rows(p.value, stream.rows)[rows]) for p in straight]
+            rows = rows[_straight(stream.take(rows), others, here, air_co2_ppm)[1]]
+            if not rows.size:
+                continue
+        some, here = stream.take(rows), [Point(p.quantity, of_rows(p.value, stream.rows)[rows]) for p in (*straight, point)]
+        path = _Path(some, products[lead], others, here[:-1], here[-1], air_co2_ppm)
         t = path.root(signs)
-        if np.isfinite(t).any() or lead == len(products) - 1:
-            rest = path.others_at(t, np.arange(stream.rows))
-            return np.insert(rest, lead, t, axis=0), np.ones(stream.rows, dtype=bool)
-    return np.full((len(products), stream.rows), np.nan), np.zeros(stream.rows, dtype=bool)
+        found = np.insert(path.others_at(t, np.arange(rows.size)), lead, t, axis=0)
+        with np.errstate(invalid="ignore"):
+            better = np.isnan(x[:, rows]).any(axis=0) | (found >= -NOTHING).all(axis=0)
+        x[:, rows[better]], able[rows] = found[:, better], True
+    return x, able
+
+
+def of_rows(value: ArrayLike, rows: int) -> Array:
+    """A value per row."""
+    return np.broadcast_to(np.asarray(value, dtype=float), (rows,))
+
+
+def _turn(t: Array, f: Array) -> tuple[Array, Array]:
+    """Doses (steps, rows) on both sides of the first turn of sign of `f`, steps without a value passed over; else nan."""
+    near, far = np.full((2, t.shape[1]), np.nan)
+    last_t, last_f = np.full((2, t.shape[1]), np.nan)
+    for now_t, now_f in zip(t, f, strict=True):
+        with np.errstate(invalid="ignore"):
+            turned = np.isnan(far) & (now_f * last_f <= 0.0)
+        near, far = np.where(turned, last_t, near), np.where(turned, now_t, far)
+        last_t, last_f = np.where(np.isnan(now_f), last_t, now_t), np.where(np.isnan(now_f), last_f, now_f)
+    return near, far
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -247,9 +279,6 @@ class _Path:
     point: Point
     air_co2_ppm: float
 
-    def _value(self, value: ArrayLike, rows: NDArray[np.intp]) -> Array:
-        return np.broadcast_to(np.asarray(value, dtype=float), (self.stream.rows,))[rows]
-
     def _led(self, t: Array, rows: NDArray[np.intp]) -> Stream:
         return self.stream.take(rows).added(self.lead.adds, t, self.lead.solids)
 
@@ -257,7 +286,7 @@ class _Path:
         """Doses (others, rows) that hold the straight targets where the lead's dose is `t`."""
         if not self.straight:
             return np.zeros((0, rows.size))
-        points = [Point(p.quantity, self._value(p.value, rows)) for p in self.straight]
+        points = [Point(p.quantity, of_rows(p.value, self.stream.rows)[rows]) for p in self.straight]
         return _straight(self._led(t, rows), self.others, points, self.air_co2_ppm)[0]
 
     def off(self, t: Array, rows: NDArray[np.intp]) -> Array:
@@ -270,7 +299,7 @@ class _Path:
         if name in FAR_BELOW:
             empty = np.isfinite(sane.carbon_mol_l) & np.isfinite(sane.total("calcium")) & np.isnan(found)
             found = np.where(empty, FAR_BELOW[name], found)
-        return found - self._value(self.point.value, rows)
+        return found - of_rows(self.point.value, self.stream.rows)[rows]
 
     def root(self, signs: tuple[float, ...]) -> Array:
         """Dose where the curved quantity has its value: the least from zero up, else the least below; nan if none."""
@@ -287,28 +316,41 @@ class _Path:
         """Roots on one side of zero: steps that grow until the sign turns, then a bracketed root."""
         growth = SMALL_GROWTH.get(self.point.quantity.name, GROWTH)
         steps = sign * FIRST_STEP * growth ** np.arange(np.ceil(np.log(LAST_STEP / FIRST_STEP) / np.log(growth)))
-        near, far = np.zeros(rows.size), np.full(rows.size, np.nan)
-        f_near, k = start.copy(), np.arange(rows.size)
+        steps = np.concatenate([[0.0], steps])
+        f = np.full((steps.size, rows.size), np.nan)
+        f[0], k = start, np.arange(rows.size)
+        near, far = np.full((2, rows.size), np.nan)
         batch = max(1, MANY // rows.size)  # few rows: many steps at once
-        for first in range(0, steps.size, batch):
+        for first in range(1, steps.size, batch):
             some = steps[first:first + batch]
-            f = self.off(np.repeat(some, k.size), np.tile(rows[k], some.size)).reshape(some.size, k.size)
-            for t, now in zip(some, f, strict=True):
-                with np.errstate(invalid="ignore"):
-                    turned = np.isnan(far[k]) & (now * f_near[k] <= 0.0)
-                far[k[turned]] = t
-                known = np.isnan(far[k]) & np.isfinite(now)
-                near[k[known]], f_near[k[known]] = t, now[known]
+            f[first:first + batch, k] = self.off(np.repeat(some, k.size), np.tile(rows[k], some.size)).reshape(-1, k.size)
+            near[k], far[k] = _turn(np.broadcast_to(steps[:, None], (steps.size, k.size)), f[:, k])
             k = k[np.isnan(far[k])]
             if not k.size:
                 break
+        nearest = np.argmin(np.where(np.isfinite(f), np.abs(f), np.inf), axis=0)
+        k = k[(nearest[k] > 0) & (nearest[k] < len(steps) - 1)]
+        if k.size:
+            near[k], far[k] = self._near_miss(rows[k], np.repeat(steps[:, None], k.size, axis=1), f[:, k])
         return self._closed_in(rows, near, far)
+
+    def _near_miss(self, rows: NDArray[np.intp], t: Array, f: Array) -> tuple[Array, Array]:
+        """Bracket where the value turns between two steps and only just reaches: ever finer steps round the nearest."""
+        every = np.arange(rows.size)
+        for _ in range(NEAR_MISS_ROUNDS):
+            nearest = np.argmin(np.where(np.isfinite(f), np.abs(f), np.inf), axis=0)
+            low, high = (t[np.clip(nearest + side, 0, len(t) - 1), every] for side in (-1, 1))
+            t = low + (high - low) * np.linspace(0.0, 1.0, NEAR_MISS_STEPS)[:, None]
+            f = self.off(t.reshape(-1), np.tile(rows, len(t))).reshape(t.shape)
+        return _turn(t, f)
 
     def _closed_in(self, rows: NDArray[np.intp], near: Array, far: Array) -> Array:
         found, out = np.isfinite(far), np.full(rows.size, np.nan)
         if found.any():
-            root = elementwise.find_root(self._at, (near[found], far[found]), args=(rows[found].astype(float),),
-                                         tolerances={"xatol": 0.0, "xrtol": 1e-13, "fatol": 0.0, "frtol": 0.0})
+            q = self.point.quantity
+            root = elementwise.find_root(
+                self._at, (near[found], far[found]), args=(rows[found].astype(float),),
+                tolerances={"xatol": 0.0, "xrtol": 1e-13, "fatol": WELL_WITHIN * q.closeness / q.per_house, "frtol": 0.0})
             out[found] = np.where(root.success, root.x, np.nan)
         return out
 

@@ -94,6 +94,8 @@ def ph_levels() -> tuple[Level, ...]:
 def guard(train: Train, guards: Guards | None = None) -> tuple[Finding, ...]:
     """Stops with their explanation where a plan passes a guard rail, worst cases in numbers; () where it is safe.
 
+    Ahead of a later step that doses it is a warning: coagulation may want a pH that the mains must not have.
+
     pH is judged behind every step that doses and behind the last; then again with each product overdosed in its turn.
     """
     guards = guards or Guards()
@@ -115,9 +117,12 @@ def _judged(train: Train) -> list[int]:
 
 
 def _severity(train: Train, k: int, guards: Guards) -> tuple[str, str]:
-    """A stop, or a note within the works; and words for the latter."""
-    inner = train.passed[k].step.kind in guards.within and k < len(train.passed) - 1
-    return ("note", ", which this step is meant to do; later steps must bring it back") if inner else ("stop", "")
+    """A stop, or less within the works, where a later step doses; and words for that."""
+    if train.passed[k].step.kind in guards.within and k < len(train.passed) - 1:
+        return "note", ", which this step is meant to do; later steps must bring it back"
+    if any(p.outcome.doses for p in train.passed[k + 1:]):
+        return "warning", ", within the works; later steps must bring it back"
+    return "stop", ""
 
 
 def _ph_findings(train: Train, k: int, guards: Guards) -> list[Finding]:

@@ -131,10 +131,8 @@ def _sources(top: Place, content: Mapping[str, Any], folder: Path) -> Mapping[st
 def _guards(top: Place, content: Mapping[str, Any], told: Told) -> Guards:
     found = _section(top, content, "guards", told)
     low, high = found["ph"]
-    try:
-        return Guards(ph_low=low, ph_high=high, over_dose=found["over_dose"], over_ph=found["over_ph"])
-    except InputError as error:
-        raise _place(top, "guards").error(str(error), "ph") from None
+    return _place(top, "guards").tried("ph", lambda: Guards(
+        ph_low=low, ph_high=high, over_dose=found["over_dose"], over_ph=found["over_ph"]))
 
 
 def _hold(top: Place, content: Mapping[str, Any], use: str, guards: Guards, told: Told) -> HoldSpec | None:

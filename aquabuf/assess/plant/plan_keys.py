@@ -20,7 +20,6 @@ from aquabuf.assess.plant.feed import FORMS, KNOBS
 from aquabuf.assess.plant.hold import buffer_uses
 from aquabuf.assess.plant.plan_place import Place, nearest_hint, shown_value
 from aquabuf.assess.plant.plan_units import in_key_unit, units_of
-from aquabuf.assess.plant.steps.remineralize import criteria
 from aquabuf.assess.plant.steps.soften import PROCESSES
 from aquabuf.assess.plant.storage import SUPPLIES, feed_rules
 from aquabuf.errors import InputError
@@ -28,13 +27,12 @@ from aquabuf.readings.entries import is_number, number_and_unit
 from aquabuf.tables import read_table
 from aquabuf.units import key as plain
 
-__all__ = ["NONE", "Amount", "Checked", "PlanKey", "Window", "check_keys", "check_value", "plan_keys", "step_kinds",
+__all__ = ["Amount", "Checked", "PlanKey", "Window", "check_keys", "check_value", "plan_keys", "step_kinds",
            "window_of"]
 
 Window = tuple[float, float]  # an open side is infinite
 
 STEPS = "steps"
-NONE = "none"  # a choice that leaves something out
 OR = " or "  # between the dimensions of a key that may have either
 _LEAST, _MOST = "at least ", "at most "
 
@@ -88,7 +86,7 @@ class Amount:
 def _choices(cell: str) -> tuple[str, ...]:
     lists: Mapping[str, Callable[[], Iterable[str]]] = {
         "@buffer uses": buffer_uses, "@forms": lambda: FORMS, "@knobs": lambda: KNOBS, "@supplies": lambda: SUPPLIES,
-        "@steps": step_kinds, "@softening": lambda: PROCESSES, "@criteria": lambda: (*criteria(), NONE)}
+        "@steps": step_kinds, "@softening": lambda: PROCESSES}
     return tuple(lists[cell]()) if cell.startswith("@") else tuple(filter(None, cell.split(";")))
 
 

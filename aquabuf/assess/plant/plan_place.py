@@ -3,16 +3,18 @@
 from __future__ import annotations
 
 import datetime
-from collections.abc import Iterable
+from collections.abc import Callable, Iterable
 from dataclasses import dataclass
 from difflib import get_close_matches
-from typing import Any
+from typing import Any, TypeVar
 
 from aquabuf.assess.plant.toml_lines import KeyPath, Lines
 from aquabuf.errors import InputError
 from aquabuf.units import key as plain
 
 __all__ = ["Place", "nearest_hint", "nearest_word", "shown_value"]
+
+T = TypeVar("T")
 
 
 def nearest_word(word: str, known: Iterable[str]) -> str:
@@ -63,6 +65,16 @@ class Place:
             raise self.error(f"must be a table of keys and values; found {shown_value(value)}. Write {name} and its "
                              "keys below.")
         return value
+
+    def tried(self, key: str, do: Callable[[], T]) -> T:
+        """What `do` gives; its refusal gets file and line."""
+        try:
+            return do()
+        except InputError as error:
+            raise self.error(str(error), key) from None
+        except ZeroDivisionError:
+            raise self.error("a formula must count each element once or more; found a count of 0. Correct it.",
+                             key) from None
 
     def unknown(self, key: str, known: Iterable[str], what: str = "a key here") -> InputError:
         """What to say of a name that is not known."""

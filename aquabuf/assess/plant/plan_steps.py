@@ -27,7 +27,7 @@ PURE, DELIVERED = "pure", "product"  # what the mass of a dose may count, beside
 BARE = ("ph", "ratio")               # dimensions of targets without a unit
 _TRACE = 1e-3                        # any share: what a basis means goes in proportion
 MOST_MOL_L = 1.0
-_DOSES = {"dose": "product", "carbon_dioxide_dose": "carbon_dioxide"}  # key of a dose, key of its product
+_DOSES = {"dose": "product", "co2_dose": "co2"}  # key of a dose, key of its product
 SIGNED = ("alkalinity", "si_calcite", "ccpp")  # targets that may be below zero
 
 
@@ -131,10 +131,12 @@ def _pure_share(place: Place, key: str, counts: str, product: Stocked) -> float:
     """Mass of the active substance in a mass of what the dose counts. [-]"""
     if counts in (PURE, DELIVERED):
         return 1.0 if counts == PURE else product.strength
-    try:
-        return strength_of(product.product, _TRACE, counts) / _TRACE
-    except InputError as error:
-        raise place.error(str(error).replace("the strength of", "a dose of", 1), key) from None
+    def share() -> float:
+        try:
+            return strength_of(product.product, _TRACE, counts) / _TRACE
+        except InputError as error:
+            raise InputError(str(error).replace("the strength of", "a dose of", 1)) from None
+    return place.tried(key, share)
 
 
 def _counts(counts: str, product: Stocked) -> str:
@@ -260,8 +262,6 @@ def _blend(place: Place, values: Mapping[str, Any], sources: Mapping[str, Source
     elif len(shares) != len(names):
         raise place.error(f"shares must be as many as the sources in with; found {len(shares)} for {len(names)}. "
                           "Give one each.", "shares")
-    if "vary" in values and values["vary"] not in names:
-        raise place.error(f"vary must name one of {', '.join(names)}; found {values['vary']!r}. Correct it.", "vary")
     if sum(shares) > 1.0 + 1e-9:
         raise place.error(f"shares of a blend must add up to 100 % at most; found {100 * sum(shares):.4g} %. Lower "
                           "them; the rest is the water of the step before.", "shares" if own else "with")

@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
-from typing import Any, TypeVar
+from collections.abc import Mapping
+from typing import Any
 
 import numpy as np
 
@@ -14,13 +14,10 @@ from aquabuf.assess.plant.plan_place import Place, shown_value
 from aquabuf.assess.plant.store import Stocked
 from aquabuf.chem.products import NEEDS_BASICITY, Product, find_product, own_product, strength_of, with_basicity
 from aquabuf.chem.strength import check_certificate, density_from_strength, strength_from_density
-from aquabuf.errors import InputError
 from aquabuf.readings.entries import is_number
 from aquabuf.tables import read_table
 
 __all__ = ["Told", "read_product"]
-
-T = TypeVar("T")
 
 SECTION, OWN = "products", "own"
 OF_OWN = ("formula", "molar_mass", "adds", "solids", "form", "groups")  # keys of the user's own product
@@ -62,14 +59,6 @@ def read_product(place: Place, name: str, table: Mapping[str, object], told: Tol
     return stocked, _feed(place, name, checked, density, told)
 
 
-def _tried(place: Place, key: str, do: Callable[[], T]) -> T:
-    """What `do` gives; its refusal gets file and line."""
-    try:
-        return do()
-    except InputError as error:
-        raise place.error(str(error), key) from None
-
-
 def _product(place: Place, name: str, checked: Checked, own: bool, told: Told) -> tuple[Product, str]:
     """The product and what its strength counts where the plan does not say."""
     if own:
@@ -79,7 +68,7 @@ def _product(place: Place, name: str, checked: Checked, own: bool, told: Told) -
     if given:
         raise place.error(f"{given[0]} belongs to a product of your own; found is = {checked['is']!r}. Write is = "
                           f"\"own\", or remove it.", given[0])
-    product = _tried(place, "is", lambda: find_product(checked["is"]))
+    product = place.tried("is", lambda: find_product(checked["is"]))
     basis = next(row["strength_basis"] for row in read_table("products") if row["name"] == product.name)
     needs, basicity = NEEDS_BASICITY in product.groups, checked.get("basicity")
     if needs and basicity is None:
@@ -87,7 +76,7 @@ def _product(place: Place, name: str, checked: Checked, own: bool, told: Told) -
                           "example basicity = \"70 %\".")
     if basicity is not None:
         plain = product
-        product = _tried(place, "basicity", lambda: with_basicity(plain, basicity))
+        product = place.tried("basicity", lambda: with_basicity(plain, basicity))
     return product, basis or product.formula
 
 
@@ -95,7 +84,7 @@ def _own(place: Place, name: str, checked: Checked) -> Product:
     adds = _numbers(place, "adds", checked.get("adds", {}))
     solids = _numbers(place, "solids", checked.get("solids", {}))
     ions = {k: v for k, v in adds.items() if k not in ("alkalinity", "carbon")}
-    return _tried(place, "is", lambda: own_product(
+    return place.tried("is", lambda: own_product(
         name, formula=checked.get("formula", ""), molar_mass_g=checked.get("molar_mass"),
         alkalinity=adds.get("alkalinity"), carbon=adds.get("carbon", 0.0), ions=ions, solids=solids,
         form=checked["form"], groups=checked.get("groups", ())))
@@ -116,7 +105,7 @@ def _strength(place: Place, checked: Checked, product: Product, basis: str, told
     if stated is not None:
         if said is None and basis != product.formula:
             told.assume(f"{place.label}: its strength counts {basis}, as is usual for {product.name}")
-        strength = _tried(place, "strength", lambda: strength_of(product, stated, said or basis))
+        strength = _stated(place, product, stated, said or basis)
         low, high = product.strength_low or 0.0, product.strength_high or 1.0
         if not low - SAME_STRENGTH <= strength <= high + SAME_STRENGTH:
             told.notes.append(f"{place.label}: a strength of {100 * strength:.3g} % {product.formula} is outside the "
@@ -138,6 +127,15 @@ def _strength(place: Place, checked: Checked, product: Product, basis: str, told
     told.assume(f"{place.label}: strength {100 * product.strength:.4g} % {product.formula}, the usual one of "
                 f"{product.name} ({product.mark}: {product.source}), as no certificate strength is given")
     return product.strength, "usual strength of the table"
+
+
+def _stated(place: Place, product: Product, stated: float, basis: str) -> float:
+    """Mass fraction of the active substance by a strength as the certificate has it."""
+    if basis != product.name:  # which stands in for the formula where a product of the user's own has none
+        return place.tried("strength", lambda: strength_of(product, stated, basis))
+    if stated > 1.0:
+        raise place.error(f"strength must be at most 100 %; found {100 * stated:g} %. Correct it.", "strength")
+    return stated
 
 
 def _density(place: Place, checked: Checked, product: Product, strength: float, how: str, told: Told) -> float | None:
@@ -189,7 +187,7 @@ def _mixture(place: Place, checked: Checked) -> MadeUp | None:
                           "liter of the mixture, or take it from the recipe.", there)
     if fraction is None or density is None:
         return None
-    return _tried(place, "slurry", lambda: MadeUp(fraction=fraction, density_kg_l=density))
+    return place.tried("slurry", lambda: MadeUp(fraction=fraction, density_kg_l=density))
 
 
 def _mass(place: Place, key: str, amount: Amount | None, density: float | None) -> float | None:
@@ -217,8 +215,8 @@ def _machine(place: Place, name: str, checked: Checked, kind: str, told: Told) -
     common: dict[str, Any] = {"name": title, "range_pct": (100.0 * low, 100.0 * high), "curve": curve,
                               "turndown": found.get("turndown")}
     if kind == "feeder":
-        return _tried(inner, "", lambda: Feeder(largest_kg_h=found["largest"], **common))
-    return _tried(inner, "", lambda: Pump(largest_l_h=found["largest"], stroke=found["stroke"], speed=found["speed"],
+        return inner.tried("", lambda: Feeder(largest_kg_h=found["largest"], **common))
+    return inner.tried("", lambda: Pump(largest_l_h=found["largest"], stroke=found["stroke"], speed=found["speed"],
                                           sets=found["sets"], **common))
 
 
@@ -226,4 +224,4 @@ def _curve(place: Place, owner: str, found: Checked) -> Curve | None:
     points = found.get("curve")
     if points is None:
         return None
-    return _tried(place, "curve", lambda: measured_curve(owner, points, found["curve_unit"]))
+    return place.tried("curve", lambda: measured_curve(owner, points, found["curve_unit"]))

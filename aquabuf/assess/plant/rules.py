@@ -9,13 +9,14 @@ import numpy as np
 
 from aquabuf.assess.limits import Limit, shipped_limits
 from aquabuf.assess.limits_file import limits_of
+from aquabuf.assess.plant.hold import buffer_uses
 from aquabuf.assess.plant.plan import Plan
 from aquabuf.assess.plant.quantities import in_unit, measured, plant_quantities
 from aquabuf.assess.plant.stream import Stream
 from aquabuf.assess.plant.train import Train
 from aquabuf.tables import read_table
 
-__all__ = ["LIMITS_TABLE", "Judged", "cautions_of", "judged_by", "plan_limits", "plant_uses"]
+__all__ = ["LIMITS_TABLE", "Judged", "cautions_of", "judged_by", "plan_limits"]
 
 LIMITS_TABLE = "plant_limits"
 ALWAYS = "any"
@@ -30,16 +31,11 @@ class Judged:
     broken: bool
 
 
-def plant_uses() -> dict[str, str]:
-    """What a water may be for, and what that means."""
-    return {row["use"]: row["words"] for row in read_table("plant_uses")}
-
-
 def plan_limits(plan: Plan) -> tuple[Limit, ...]:
     """Shipped limits of the plan's use, replaced or joined by its own. Raises InputError for a faulty own limit."""
     units = {q.column: q.unit for q in plant_quantities().values()}
     found = limits_of(plan.file, {"limits": dict(plan.limits)}, units, shipped_limits(LIMITS_TABLE),
-                      kinds=tuple(plant_uses()), where="steps.csv")
+                      kinds=buffer_uses(), where="steps.csv")
     return tuple(x for x in found if x.applies(plan.use, "fresh"))
 
 

@@ -91,8 +91,8 @@ def season(raw: Values | Stream, steps: Sequence[Step], *, flow_m3_d: ArrayLike 
     flow = _flow(flow_m3_d, stream.rows)
     train = run_train(_filled(stream, unread), steps)
     aims = aims_of(train)
-    met = np.array([a.target.met(a.value(train)) for a in aims]).reshape(len(aims), stream.rows) & train.feasible()
-    whole = train.feasible() & met.all(axis=0)
+    met = np.array([a.target.met(a.value(train)) for a in aims], dtype=bool)
+    whole = np.logical_and.reduce([train.feasible(), *met])
     status = worded(stream.rows, (whole, MET), (unread, UNREAD), default=MISSED)
     missed = status == MISSED
     readings = _readings(raw, stream)

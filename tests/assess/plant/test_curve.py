@@ -2,12 +2,13 @@
 
 import numpy as np
 import pytest
-from made_streams import soft, target
+from made_streams import soft, stocked, target
 from numpy.testing import assert_allclose, assert_array_equal
 from scipy.optimize import brentq
 from works import CAUSTIC, CO2, LIME, adjusted, bare, by_hand, caustic_by_hand, dosing, ph, ph_by_hand
 
 from aquabuf.assess.plant.curve import dose_curve, round_doses
+from aquabuf.assess.plant.steps.coagulate import Coagulate
 from aquabuf.assess.plant.train import run_train
 from aquabuf.errors import InputError
 
@@ -48,7 +49,7 @@ def test_wanted_dose_and_price_of_a_tenth(curve):
 
 
 def test_slopes_are_those_of_the_hand_balance(curve):
-    """Slope at every dose, and at none by the parabola."""
+    """Slope at every dose, and at none."""
     found, dic = curve
     x, h = found.table["dose_mg_l_pure"].to_numpy() / NAOH_MG, 1e-8
     expected = [(ph_by_hand(ALKALINITY, dic, v + h) - ph_by_hand(ALKALINITY, dic, v - h)) / (2 * h) for v in x]
@@ -113,6 +114,15 @@ def test_no_dose_below_nothing():
     assert any("no dose of caustic soda lowers pH by 0.1" in w for w in found.words())
 
 
+def test_a_coagulant_lowers_ph_and_is_never_dosed_below_nothing():
+    """The step refuses negative doses; its slope at none is told all the same."""
+    iron = stocked("ferric chloride", strength=0.4)
+    run = run_train(soft(), [Coagulate(name="coagulate", product=iron, dose_mol_l=6e-5)])
+    found = dose_curve(run.passed[0], iron.name)
+    assert (found.table["slope_ph_per_mg_l"] < 0.0).all()
+    assert found.up_mg_l < 0.0 < found.down_mg_l
+
+
 def test_words(curve):
     """Numbers as people read them, with the direction."""
     found = curve[0]
@@ -133,12 +143,12 @@ def test_a_row_of_many_is_as_alone():
 def test_what_cannot_be_drawn():
     """Each refusal says why and what to do."""
     run = adjusted(soft(), ph(8.3))
-    with pytest.raises(InputError, match="step 'final' must dose the product of a dose-response; it doses caustic soda, not 'lime'. Name"):
+    with pytest.raises(InputError, match=r"step 'final' must dose the product of a dose-response; it doses caustic soda, not 'lime'. Name"):
         dose_curve(run.passed[0], "lime")
-    with pytest.raises(InputError, match="doses of step 'final'; they were not found. Change"):
+    with pytest.raises(InputError, match=r"doses of step 'final'; they were not found. Change"):
         dose_curve(adjusted(soft(), ph(5.0)).passed[0], CAUSTIC.name)
     none = run_train(soft(), [dosing((CAUSTIC,), (0.0,))])
-    with pytest.raises(InputError, match="largest dose above 0; the wanted dose is 0 and the largest not given. Give most_mg_l"):
+    with pytest.raises(InputError, match=r"largest dose above 0; the wanted dose is 0 and the largest not given. Give most_mg_l"):
         dose_curve(none.passed[0], CAUSTIC.name)
     found = dose_curve(none.passed[0], CAUSTIC.name, most_mg_l=20.0)
     assert found.up_mg_l > 0.0

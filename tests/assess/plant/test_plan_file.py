@@ -174,11 +174,12 @@ def test_notes_on_strength(plan_of):
 
 
 def test_own_product(plan_of):
-    """By formula and what it adds; alkalinity follows from the charge of calcium and nitrate."""
+    """By formula and what it adds; alkalinity follows from the charge of magnesium."""
     plan = plan_of(with_products('[products.mine]\nis = "own"\nformula = "Mg(OH)2"\nadds = { magnesium = 1 }\nstrength = "60 %"\nform = "slurry"\ngroups = ["base"]\n'
                                  '[products.other]\nis = "own"\nmolar_mass = 100\nadds = { alkalinity = 2, carbon = 1 }\nsolids = { "SiO2" = 0.5 }\nstrength = "50 %"\n'))
     mine, other = plan.store["mine"].product, plan.store["other"].product
     assert (mine.adds["alkalinity"], mine.form, mine.groups) == (2.0, "slurry", ("base",))
+    assert [plan.store[n].strength for n in ("mine", "other")] == [0.6, 0.5]
     assert (other.molar_mass_g, other.adds["carbon"], other.solids["SiO2"]) == (100.0, 1.0, 0.5)
     assert '[products.other]: form = "liquid", as the plan does not say' in plan.assumptions
 
@@ -217,10 +218,10 @@ def test_doses_count_what_they_say(plan_of, dose, expected):
 
 
 def test_chlorine_counts_as_cl2(plan_of):
-    """One hypochlorite is worth one Cl2, 70.90 g; caustic in grams per liter of product."""
+    """One hypochlorite is worth one Cl2, 70.90 g; caustic by mass."""
     hypo = '[products.hypo]\nis = "sodium hypochlorite"\nstrength = "12 %"\nstrength_as = "available chlorine"\ndensity = "1.2 kg/L"\n'
-    plan = plan_of(with_products(hypo, steps='[[steps]]\ndo = "chlorinate"\nproduct = "hypo"\ndose = "3.545 mg/L"\ndemand = "0.709 mg/L"\nexcess_caustic = "5 g/L"\n'))
-    assert_allclose([first_step(plan)[k] for k in ("dose", "demand", "excess_caustic")], [5e-5, 1e-5, 5.0], rtol=2e-4)
+    plan = plan_of(with_products(hypo, steps='[[steps]]\ndo = "chlorinate"\nproduct = "hypo"\ndose = "3.545 mg/L"\ndemand = "0.709 mg/L"\nexcess_caustic = "0.5 %"\n'))
+    assert_allclose([first_step(plan)[k] for k in ("dose", "demand", "excess_caustic")], [5e-5, 1e-5, 0.005], rtol=2e-4)
     assert_allclose(plan.store["hypo"].strength, 0.12 * 74.44 / 70.90, rtol=1e-4)
     assert "[[steps]] 1 (chlorinate): its dose counts Cl2, as the plan does not say" in plan.assumptions
 
@@ -241,12 +242,12 @@ def test_targets(plan_of):
 @pytest.mark.parametrize(("step", "expected"), [
     ('do = "nitrify"', {"oxidize": "all"}), ('do = "denitrify"\ndonor = "none"', {"remove": "all", "donor": "none"}),
     ('do = "aerate"\nefficiency = "80 %"', {"efficiency": 0.8}), ('do = "aerate"\nto_air = true', {"to_air": True}),
-    ('do = "aerate"\nkla = "120 per d"\ntime = "30 min"', {"kla": 5.0, "time": 0.5}), ('do = "saturate"\npco2 = "0.1 atm"', {"pco2": 0.1, "efficiency": 1.0}),
-    ('do = "temperature"\nto = "50 °F"', {"to": 10.0}), ('do = "recarbonate"\nproduct = "co2"\nph = 8.6', {"ph": (8.6,), "absorbed": 1.0}),
-    ('do = "contact"\nproduct = "stone"\nrate = "6 per h"\ntime = "0.5 h"', {"rate": 0.1, "time": 30.0}),
-    ('do = "contact"\nproduct = "stone"\ncarbon_dioxide = "co2"\ncarbon_dioxide_dose = "4.4009 mg/L"', {"carbon_dioxide_dose": 1e-4}),
-    ('do = "soften"\nmethod = "split"\nlime = "lime"\nmagnesium = "24.305 mg/L"\nexcess = "1.25 meq/L"', {"method": "split", "magnesium": 1e-3, "excess": 1.25e-3, "noncarbonate": 0.0}),
-    ('do = "remineralize"\nmineral = "stone"\ncarbon_dioxide = "co2"\ncalcium = "40.078 mg/L"\ncriteria = "none"', {"calcium": 1e-3, "criteria": "none"}),
+    ('do = "aerate"\nkla = "120 per d"\ntime = "30 min"', {"kla": 5.0, "time": 0.5}),
+    ('do = "temperature"\nto = "50 °F"', {"to": 10.0}), ('do = "recarbonate"\nproduct = "co2"\nph = 8.6', {"ph": (8.6,)}),
+    ('do = "contact"\nproduct = "stone"\nrate = "6 per h"\ntime = "0.5 h"', {"rate": 6.0, "time": 0.5}),
+    ('do = "contact"\nproduct = "stone"\nco2 = "co2"\nco2_dose = "4.4009 mg/L"', {"co2_dose": 1e-4}),
+    ('do = "soften"\nmethod = "split"\nlime = "lime"\nmagnesium = "24.305 mg/L"\nexcess = "1.25 meq/L"', {"method": "split", "magnesium": 1e-3, "excess": 1.25e-3, "noncarbonate_left": 0.0}),
+    ('do = "remineralize"\nmineral = "stone"\nco2 = "co2"\ncalcium = "40.078 mg/L"', {"calcium": 1e-3}),
     ('do = "fluoridate"\nproduct = "lime"\nfluoride = "0.7 mg/L"', {"fluoride": 0.7 / 18998.4}), ('do = "dose"\nproduct = "co2"\ndose = "44.009 mg/L"', {"dose": 1e-3})])
 def test_every_kind_of_step(plan_of, step, expected):
     """Values in the unit of the list of keys."""
@@ -267,8 +268,8 @@ def test_blend_of_sources(plan_of):
     plan = plan_of(HEAD + WATER + source.format("well", 'share = "30 %"') + source.format("permeate", "share = 0.2") + blend)
     assert [(s.name, s.share, s.water.values["ph"][0]) for s in plan.sources.values()] == [("well", 0.3, 7.2), ("permeate", 0.2, 7.2)]
     assert first_step(plan)["with"] == ("well", "permeate")
-    other = plan_of(HEAD + WATER + source.format("well", 'flow = "1 ML/d"') + source.format("permeate", "") + blend + 'shares = ["40 %", 0.1]\nvary = "well"\n')
-    assert (first_step(other)["shares"], first_step(other)["vary"], other.sources["well"].flow_m3_d) == ((0.4, 0.1), "well", 1000.0)
+    other = plan_of(HEAD + WATER + source.format("well", 'flow = "1 ML/d"') + source.format("permeate", "") + blend + 'shares = ["40 %", 0.1]\n')
+    assert (first_step(other)["shares"], other.sources["well"].flow_m3_d) == ((0.4, 0.1), 1000.0)
 
 
 # ---------------------------------------------------------------- the rest

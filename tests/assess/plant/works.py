@@ -24,7 +24,7 @@ def ph_by_hand(alkalinity, dic, caustic):
 
 def caustic_by_hand(alkalinity, dic, ph):
     """Caustic that brings a water to a pH. [mol/L]"""
-    return brentq(lambda x: ph_by_hand(alkalinity, dic, x) - ph, 0.0, 0.1, xtol=1e-15)
+    return brentq(lambda x: ph_by_hand(alkalinity, dic, x) - ph, 0.0, 5e-3, xtol=1e-15)
 
 
 def bare(alkalinity, ph):

@@ -20,6 +20,8 @@ __all__ = ["Adjust", "Dose"]
 
 Array = NDArray[np.float64]
 
+AT_THE_END = ", with no room left"  # where only the very end of a window is reached
+
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class Dose:
@@ -46,11 +48,15 @@ class Adjust:
     """Doses of the products that meet the targets: as many values as products solved exactly, else the cheapest mix.
 
     Rows that nothing reaches keep their water and have doses of nan; the finding says why, for the first of them.
+
+    margin : share of the width of a window that is kept free at each end, because the cheapest mix lies at an end and
+        any error would leave it; rows that only reach the window itself are taken to its end.
     """
 
     name: str
     products: tuple[Stocked, ...]
     targets: tuple[Target, ...]
+    margin: float = 0.0
     air_co2_ppm: float = AIR_CO2_PPM
     explain: bool = True
     kind: str = field(default="adjust", init=False)
@@ -78,8 +84,19 @@ class Adjust:
                                  [Point(t.quantity, t.low) for t in self.targets], air_co2_ppm=self.air_co2_ppm,
                                  only_positive=True)
             return np.where(solved.status == REACHED, solved.mol_l, np.nan), None
-        chosen = cheapest(stream, self.products, self.targets, air_co2_ppm=self.air_co2_ppm)
-        return np.where(chosen.feasible, chosen.mol_l, np.nan), chosen.binding
+        chosen = cheapest(stream, self.products, self._inside(), air_co2_ppm=self.air_co2_ppm)
+        x, binding = np.where(chosen.feasible, chosen.mol_l, np.nan), chosen.binding.copy()
+        rest = np.flatnonzero(~chosen.feasible)
+        if rest.size and self.margin > 0.0:
+            wider = cheapest(stream.take(rest), self.products, self.targets, air_co2_ppm=self.air_co2_ppm)
+            x[:, rest] = np.where(wider.feasible, wider.mol_l, np.nan)
+            binding[rest] = wider.binding + AT_THE_END
+        return x, binding
+
+    def _inside(self) -> tuple[Target, ...]:
+        """The targets, windows with two ends narrowed by the margin."""
+        return tuple(replace(t, low=t.low + self.margin * (t.high - t.low), high=t.high - self.margin * (t.high - t.low))
+                     if np.isfinite(t.high - t.low) else t for t in self.targets)
 
     def _one_curved(self) -> bool:
         return sum(t.quantity.kind == "curved" for t in self.targets) <= 1
@@ -93,4 +110,5 @@ class Adjust:
         _, by = cost_per_mol(self.products)
         words = binding[np.flatnonzero(~failed)[0]]
         least = "least cost" if by == "price" else "least mass of product (give every product a price for least cost)"
-        return Finding("note", f"{least}: held by {words}", ~failed)
+        aimed = f"; aimed {100.0 * self.margin:g} % of the width inside each window" if self.margin > 0.0 else ""
+        return Finding("note", f"{least}: held by {words}{aimed}", ~failed)

@@ -77,9 +77,10 @@ def carbon_dioxide_for(mineral_mol_l: ArrayLike, adds: Mapping[str, float]) -> A
 
 
 def saturation_ph(stream: Stream) -> Array:
-    """pH at which the water is saturated with calcite, its alkalinity and calcium held; nan without calcium. [-]
+    """pH at which the water is saturated with calcite, its alkalinity and calcium held. [-]
 
-    Saturation follows pH nearly one to one, so that the index itself is the step.
+    inf where that is so little that hydroxide takes the alkalinity before it is saturated; nan without known calcium.
+    The index rises with pH at most one to one, so that steps of its size come near without passing.
     """
     ph = np.full(stream.rows, START_PH)
     for _ in range(PH_ROUNDS):
@@ -87,7 +88,8 @@ def saturation_ph(stream: Stream) -> Array:
         ph = ph - index
         if not (np.abs(index) > PH_TOLERANCE).any():
             break
-    return ph
+    known = (stream.water().status >= 0) & np.isfinite(stream.total(CALCIUM))
+    return np.where(known & np.isnan(ph), np.inf, ph)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -142,8 +144,9 @@ class Remineralize:
         by_rule = np.maximum(carbon_dioxide_for(stone, adds) - present, 0.0)
         to_dissolve = np.zeros(stream.rows)
         if self._is_stone:
-            least = carbon_for_ph(with_stone, saturation_ph(with_stone))
-            to_dissolve = np.where(stone == 0.0, 0.0, np.maximum(least, 0.0))
+            ph = saturation_ph(with_stone)
+            least = np.maximum(carbon_for_ph(with_stone, ph), 0.0)
+            to_dissolve = np.where((stone == 0.0) | np.isinf(ph), 0.0, least)
         if self.fixed_mol_l is None:
             gas = np.maximum(by_rule, to_dissolve) / self.carbon_dioxide.product.adds[CARBON]
         before = with_stone.added(self.carbon_dioxide.product.adds, gas)

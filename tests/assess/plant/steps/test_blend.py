@@ -39,6 +39,8 @@ def test_mean_of_ph_is_shown_to_be_wrong():
     assert_allclose(out.figures["mean_of_ph"], 8.05, atol=1e-9)
     assert out.figures["ph_after"][0] < 7.6
     assert "the mean of the pH values, 8.05, would be wrong by" in words(out)
+    uneven = blend(3.0, ("well", water_of(**HARD), 1.0)).run(water_of(**SOFT))
+    assert_allclose(uneven.figures["mean_of_ph"], 8.475, atol=1e-9)
     same = blend(1.0, ("again", water_of(**SOFT), 1.0)).run(water_of(**SOFT))
     assert "mean of the pH" not in words(same)
 

@@ -60,7 +60,7 @@ def test_the_step_feeds_and_leaves_what_the_sweetwater_example_has():
     The example counts on magnesium staying, that is on hydroxide that does not form though it could.
     """
     raw = water(164 * EQ_PER_MG_CACO3, 164 * EQ_PER_MG_CACO3 + 15 * MG, calcium=164 * MG, magnesium=36 * MG)
-    out = step("single stage", excess_eq_l=20 * EQ_PER_MG_CACO3, brucite_ratio=5.0).run(raw)
+    out = step("single stage", excess_eq_l=20 * EQ_PER_MG_CACO3, brucite_ratio=10.0).run(raw)
     at_rest = step("single stage", excess_eq_l=20 * EQ_PER_MG_CACO3).run(raw)
     assert_allclose(out.doses[0].product.mg_l_product(out.doses[0].mol_l), 124.0, atol=1.0)
     assert_allclose(out.figures["lime_by_rule_mg_l_caco3"], 199.0, atol=1.0)

@@ -51,6 +51,7 @@ def test_warming_deposits_and_cooling_dissolves():
     again = ChangeTemperature(name="main", t_c=8.0).run(warm.stream)
     assert "at 8.0 °C the water turns to dissolving" in words(again, "warning")
     assert not words(ChangeTemperature(name="main", t_c=5.0).run(cold), "warning")
+    assert not words(ChangeTemperature(name="main", t_c=48.0).run(warm.stream), "warning")
 
 
 def test_ph_by_temperature_alone_is_said():

@@ -1,0 +1,307 @@
+"""Panels of a dosing plan, on axes that are handed in: response to a dose, water through the works, feeds at fault."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from matplotlib.axes import Axes
+from matplotlib.ticker import MaxNLocator
+from numpy.typing import NDArray
+
+from aquabuf.assess.plant.aims import banded
+from aquabuf.assess.plant.answer import Answer
+from aquabuf.assess.plant.curve import DoseCurve
+from aquabuf.assess.plant.faults import FULL, Fault
+from aquabuf.assess.plant.indices import potential_words
+from aquabuf.assess.plant.quantities import find_quantity, in_unit, measured
+from aquabuf.assess.plant.steps.base import Dosed, Held
+from aquabuf.assess.plant.targets import Target
+from aquabuf.report.dose_page import POINTS, text_width, wrapped
+from aquabuf.report.style import CALM, FAINT, GRAY, INK, WARNED
+
+__all__ = ["SMALL", "TRAIN_KEY", "ax_width", "control_doses", "faults_key", "label_height", "main_curve", "ph_axis",
+           "ph_window", "plot_faults", "plot_response", "plot_train", "response_key", "smooth_response", "train_labels",
+           "window_band"]
+
+Array = NDArray[np.float64]
+
+SMALL = 7.0             # points
+FINE = 240              # doses of a smooth curve
+WINDOW: Any = {"facecolor": "#dfe6ee", "edgecolor": CALM, "lw": 0.8}
+WEAK: Any = {"facecolor": "none", "edgecolor": GRAY, "hatch": "////", "lw": 0.0}
+PASSES: Any = {"color": WARNED, "lw": 1.1, "ls": (0, (5, 2))}   # guard rails
+OVER: Any = {"color": WARNED, "lw": 1.1, "ls": (0, (1, 1.5))}   # the rail of an overfeed
+LEAST_PH_SPAN = 1.0     # of an axis
+NAME_LINES = 3          # of a step under its column
+LABEL_LEADING = 1.1
+TRAIN_KEY = ("Below the names: calcium carbonate that the water would dissolve or deposit, mg/L. Shaded: window of pH "
+             "of a step. Dashed: guard rails.")
+WORDS_OF_CASE = {True: "stuck", False: "stopped"}
+
+
+# ---------------------------------------------------------------- dose and response
+
+
+def main_curve(answer: Answer) -> DoseCurve | None:
+    """Curve of the product that an error of its feed tells on most, in the last step with a target of pH (or any)."""
+    aimed = [t.step for t in answer.targets if t.target.quantity.name == "ph"] or [t.step for t in answer.targets]
+    pool = [c for c in answer.curves if aimed and c.step == aimed[-1]] or answer.curves
+    return max(pool, key=lambda c: abs(c.slope_ph_per_mg_l * c.wanted_mg_l), default=None)
+
+
+def ph_window(answer: Answer, step: str) -> Target | None:
+    """Window of pH behind a step; around a fixed value the band that it is held to. None where nothing is wanted."""
+    found = [t.target for t in answer.targets if t.step == step and t.target.quantity.name == "ph"]
+    return banded(found[-1]) if found else None
+
+
+def smooth_response(answer: Answer, curve: DoseCurve) -> tuple[Array, Array, Array]:
+    """Doses [mg/L of product] from none to the largest of the curve, its own among them, with pH and buffer intensity
+    [meq/L per pH] behind the step, other doses held."""
+    passed = next(p for p in answer.train.passed if p.step.name == curve.step)
+    table = curve.table["dose_mg_l_product"].to_numpy(dtype=float)
+    dose = np.unique(np.concatenate([table, np.linspace(0.0, table[-1], FINE)]))
+    held = tuple(Dosed(d.product, d.product.mol_l(dose) if d.product.name == curve.product
+                       else np.repeat(d.mol_l, dose.size)) for d in passed.outcome.doses)
+    assert isinstance(passed.step, Held)
+    found = measured(passed.step.held(held).run(passed.before.repeated(dose.size)).stream, ("ph", "buffer_intensity"))
+    return dose, found["ph"], in_unit(find_quantity("buffer_intensity"), found["buffer_intensity"])
+
+
+def control_doses(answer: Answer, curve: DoseCurve) -> tuple[float, float] | None:
+    """Least and most dose of a curve's product that keep every window [mg/L of product]; None where none does."""
+    for found in answer.ranges:
+        if found.product.name == curve.product and np.isfinite(found.least[0]):
+            return float(found.least[0] * curve.wanted_mg_l), float(found.most[0] * curve.wanted_mg_l)
+    return None
+
+
+def window_band(ax: Axes, window: Target) -> None:
+    """Shade a window of pH between its ends; an open end goes to that of the axis, whose limits must stand before."""
+    low, high = ax.get_ylim()
+    ax.axhspan(max(window.low, low), min(window.high, high), label="_window", zorder=0.4, **WINDOW)
+
+
+def ph_axis(ax: Axes, values: Array, *also: float) -> None:
+    """Vertical axis that holds pH values, not flatter than LEAST_PH_SPAN."""
+    known = [v for v in (*values, *also) if np.isfinite(v)] or [7.0]
+    low, high = min(known), max(known)
+    half = max(0.5 * (high - low) * 1.14, 0.5 * LEAST_PH_SPAN)
+    ax.set_ylim(0.5 * (low + high) - half, 0.5 * (low + high) + half)
+    ax.yaxis.set_major_locator(MaxNLocator(6, steps=[1, 2, 5, 10]))
+    ax.set_ylabel("pH")
+
+
+def _rails(ax: Axes, answer: Answer) -> None:
+    """Level lines at the guard rails that the axis reaches."""
+    guards = answer.plan.guards
+    low, high = ax.get_ylim()
+    for ph, style in ((guards.ph_low, PASSES), (guards.ph_high, PASSES), (guards.over_ph, OVER)):
+        if low < ph < high:
+            ax.axhline(ph, label="_rail", zorder=0.8, **style)
+
+
+def plot_response(answer: Answer, curve: DoseCurve, *, ax: Axes, below: Axes) -> Axes:
+    """pH against the dose of a product with window and control range; buffer intensity below, its weak zone hatched."""
+    dose, ph, intensity = smooth_response(answer, curve)
+    window, control = ph_window(answer, curve.step), control_doses(answer, curve)
+    ends = [] if window is None else [v for v in (window.low, window.high) if np.isfinite(v)]
+    ph_axis(ax, ph, *ends)
+    ax.set_xlim(0.0, dose[-1])
+    if window is not None:
+        window_band(ax, window)
+    _rails(ax, answer)
+    if control is not None:
+        ax.axvspan(control[0], min(control[1], dose[-1]), facecolor=FAINT, edgecolor=GRAY, lw=0.8, alpha=0.6,
+                   label="_control", zorder=0.5)
+    ax.plot(dose, ph, color=INK, lw=1.6, label="_ph", zorder=3)
+    ax.plot(curve.wanted_mg_l, curve.wanted_ph, ls="", marker="o", ms=7, mfc=WARNED, mec=INK, label="_wanted", zorder=4)
+    ax.tick_params(labelbottom=False)
+    ax.set_title(" ".join(wrapped(f"pH by dose of {curve.product}", ax_width(ax), 10.0, bold=True, most=1)),
+                 parse_math=False)
+    below.axvspan(curve.weakest_low_mg_l, curve.weakest_high_mg_l, label="_weak", zorder=0.5, **WEAK)
+    below.plot(dose, intensity, color=INK, lw=1.3, label="_intensity", zorder=3)
+    below.axvline(curve.wanted_mg_l, color=WARNED, lw=1.1, label="_wanted", zorder=2)
+    below.set(xlim=(0.0, dose[-1]), ylim=(0.0, 1.12 * float(np.nanmax(intensity))))
+    below.yaxis.set_major_locator(MaxNLocator(3))
+    below.set_ylabel("buffer\n[meq/L per pH]", fontsize=SMALL)
+    below.set_xlabel("dose of product as delivered [mg/L]")
+    return ax
+
+
+def response_key(answer: Answer, curve: DoseCurve) -> str:
+    """What the signs of the response mean."""
+    window, control = ph_window(answer, curve.step), control_doses(answer, curve)
+    parts = ["Dot and upright line: dose wanted"]
+    if window is not None:
+        parts.append(f"level band: {window.words}")
+    if control is not None:
+        parts.append("upright band: doses that keep every window")
+    return "; ".join([*parts, "hatched: weakest buffering", "dashed, dotted: guard rails"]) + "."
+
+
+def ax_width(ax: Axes) -> float:
+    """Width of an axis in inches."""
+    figure = ax.get_figure()
+    assert figure is not None
+    return float(ax.get_position().width * figure.get_figure(root=True).get_size_inches()[0])  # type: ignore[union-attr]
+
+
+# ---------------------------------------------------------------- the works
+
+
+@dataclass(frozen=True, slots=True)
+class _Column:
+    """One water of the works, in the units of the tables."""
+
+    name: str
+    ph: float
+    alkalinity: float
+    saturation: str
+
+
+def _columns(answer: Answer) -> list[_Column]:
+    waters = [("raw water", answer.raw), *((p.step.name, p.after) for p in answer.train.passed)]
+    out = []
+    for name, stream in waters:
+        found = measured(stream, ("ph", "alkalinity", "ccpp"))
+        words = potential_words(float(found["ccpp"][0]))
+        short = words.removeprefix("precipitation potential ").removesuffix(" mg/L CaCO3").removesuffix(
+            " calcium carbonate")
+        alkalinity = in_unit(find_quantity("alkalinity"), found["alkalinity"])
+        out.append(_Column(name, float(found["ph"][0]), float(alkalinity[0]), short))
+    return out
+
+
+def train_labels(answer: Answer, width: float) -> list[str]:
+    """Name of each water and what it does to calcium carbonate, wrapped for columns that share `width` [inches]."""
+    columns = _columns(answer)
+    room = 0.94 * width / len(columns)
+    names = [wrapped(c.name, room, SMALL, most=NAME_LINES) for c in columns]
+    tall = max(len(n) for n in names)
+    return ["\n".join([*name, *[""] * (tall - len(name)), *wrapped(c.saturation, room, SMALL, most=NAME_LINES)])
+            for name, c in zip(names, columns, strict=True)]
+
+
+def label_height(labels: Sequence[str]) -> float:
+    """Height of the tallest label. [inches]"""
+    return 0.06 + max(len(words.split("\n")) for words in labels) * 1.2 * LABEL_LEADING * SMALL / POINTS
+
+
+def plot_train(answer: Answer, labels: Sequence[str], *, ax: Axes, below: Axes) -> Axes:
+    """pH and, below, alkalinity of the raw water and behind each step; labels from `train_labels`."""
+    columns = _columns(answer)
+    x = np.arange(len(columns), dtype=float)
+    ph, alkalinity = (np.array([getattr(c, n) for c in columns]) for n in ("ph", "alkalinity"))
+    for each in (ax, below):
+        each.set_xlim(-0.5, len(columns) - 0.5)
+        each.set_xticks(x)
+    ph_axis(ax, ph)
+    low, high = ax.get_ylim()
+    ax.set_ylim(low, high + 0.22 * (high - low))
+    _rails(ax, answer)
+    _windows_of_steps(ax, answer, columns)
+    ax.plot(x, ph, color=INK, lw=1.2, marker="o", ms=5, mfc=CALM, label="_ph", zorder=3)
+    _values(ax, x, ph, 2)
+    ax.tick_params(labelbottom=False)
+    ax.set_title("Water through the works")
+    below.bar(x, alkalinity, width=0.5, color=FAINT, edgecolor=INK, lw=0.6, label="_alkalinity")
+    below.axhline(0.0, color=INK, lw=0.6)
+    least, most = min(float(np.nanmin(alkalinity)), 0.0), max(float(np.nanmax(alkalinity)), 0.0)
+    below.set_ylim(least - (0.3 if least < 0.0 else 0.0) * (most - least), most + 0.34 * ((most - least) or 1.0))
+    below.yaxis.set_major_locator(MaxNLocator(3))
+    below.set_ylabel("alkalinity [mg/L\nas CaCO3]", fontsize=SMALL)
+    _values(below, x, alkalinity, find_quantity("alkalinity").digits)
+    below.set_xticklabels(labels, fontsize=SMALL, parse_math=False, linespacing=LABEL_LEADING)
+    below.tick_params(axis="x", length=2, pad=2)
+    return ax
+
+
+def _windows_of_steps(ax: Axes, answer: Answer, columns: Sequence[_Column]) -> None:
+    """Shade the window of pH behind each step that has one, over its column alone."""
+    low, high = ax.get_ylim()
+    for k, column in enumerate(columns[1:], start=1):
+        window = ph_window(answer, column.name)
+        if window is not None:
+            ax.fill_between([k - 0.4, k + 0.4], max(window.low, low), min(window.high, high), label="_window",
+                            zorder=0.4, **WINDOW)
+
+
+def _values(ax: Axes, x: Array, y: Array, digits: int) -> None:
+    """Each value above its point, over a white ground."""
+    for at, value in zip(x, y, strict=True):
+        if np.isfinite(value):
+            ax.annotate(f"{value:z.{digits}f}", (at, max(value, 0.0)), (0.0, 5.0), textcoords="offset points",
+                        ha="center", va="bottom", fontsize=SMALL + 0.5, color=INK, zorder=5,
+                        bbox={"facecolor": "white", "edgecolor": "none", "alpha": 0.8, "pad": 0.6})
+
+
+# ---------------------------------------------------------------- faults
+
+
+def plot_faults(answer: Answer, *, ax: Axes) -> Axes:
+    """pH right behind the step with each feed stuck at full stroke and stopped, against the guard rails."""
+    faults = answer.faults
+    guards = answer.plan.guards
+    place = np.arange(len(faults))[::-1]
+    hours = f" ({faults[0].hours:g} h)" if faults else ""
+    ax.set_title(f"A feed at fault{hours}")
+    ends = [float(v) for f in faults for v in (f.ph_behind[0], f.ph_wanted[0]) if np.isfinite(v)]
+    low, high = min([*ends, guards.ph_low]) - 0.5, max([*ends, guards.over_ph]) + 0.5
+    words = [_beyond(f) for f in faults]
+    room = max((text_width(w, SMALL, True) for w in words), default=0.0) + 0.12
+    share = min(room / ax_width(ax), 0.6)
+    ax.set(xlim=(low, low + (high - low) / (1.0 - share)), ylim=(-0.6, max(len(faults), 1) - 0.4))
+    for ph, style in ((guards.ph_low, PASSES), (guards.ph_high, PASSES), (guards.over_ph, OVER)):
+        ax.axvline(ph, label="_rail", zorder=0.8, **style)
+    for y, fault, said in zip(place, faults, words, strict=True):
+        _fault(ax, float(y), fault, said, outside=_outside(answer, fault))
+    for k in range(2, len(faults), 2):
+        ax.axhline(len(faults) - k - 0.5, color=FAINT, lw=0.6, zorder=0.5)
+    ax.set_yticks(place, [_fault_name(answer, f) for f in faults], fontsize=SMALL, parse_math=False)
+    ax.tick_params(axis="y", length=0)
+    ax.set_xticks([t for t in range(int(np.ceil(low)), int(high) + 1)])
+    ax.set_xlabel("pH right behind the step")
+    return ax
+
+
+def faults_key(answer: Answer) -> str:
+    """What the signs of the faults mean."""
+    g = answer.plan.guards
+    return (f"Ring: pH as planned; arrow: feed stuck at its largest; cross: feed stopped. Dashed: guard rails "
+            f"{g.ph_low:g} and {g.ph_high:g}; dotted: {g.over_ph:g}, the most with {g.over_dose:g} times the dose.")
+
+
+def _outside(answer: Answer, fault: Fault) -> bool:
+    guards, ph = answer.plan.guards, float(fault.ph_behind[0])
+    return not guards.ph_low <= ph <= guards.ph_high
+
+
+def _beyond(fault: Fault) -> str:
+    """pH at the fault, and the worst that such water does."""
+    if not np.isfinite(fault.ph_behind[0]):
+        return "not known"
+    passed = fault.levels()
+    return f"{float(fault.ph_behind[0]):.2f}{f' {passed[-1].name}' if passed else ''}"
+
+
+def _fault_name(answer: Answer, fault: Fault) -> str:
+    """Product and case in two words; the step too where the product goes in at several."""
+    several = len({f.step for f in answer.faults if f.product.name == fault.product.name}) > 1
+    name = wrapped(f"{fault.product.name}, {fault.step}" if several else fault.product.name, 0.85, SMALL, most=1)[0]
+    return f"{name} {WORDS_OF_CASE[fault.case == FULL]}"
+
+
+def _fault(ax: Axes, y: float, fault: Fault, said: str, *, outside: bool) -> None:
+    """From the pH as wanted (hollow) to that of the fault."""
+    wanted, ph = float(fault.ph_wanted[0]), float(fault.ph_behind[0])
+    full = fault.case == FULL
+    ax.plot([wanted, ph], [y, y], color=GRAY, lw=1.2, label="_way", zorder=2)
+    ax.plot(wanted, y, ls="", marker="o", ms=4.5, mfc="white", mec=INK, label="_now", zorder=3)
+    ax.plot(ph, y, ls="", marker=">" if full else "X", ms=6.5, mec=INK, mew=0.6, mfc=WARNED if outside else CALM,
+            label="_stuck" if full else "_stopped", zorder=4)
+    ax.text(0.985, y, said, transform=ax.get_yaxis_transform(), ha="right", va="center", fontsize=SMALL,
+            fontweight="bold" if outside else "normal", color=INK, parse_math=False, zorder=5)

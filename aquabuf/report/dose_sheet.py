@@ -1,0 +1,202 @@
+"""The sheet for the wall: what to set this shift, the water that follows, and what would upset it."""
+
+from __future__ import annotations
+
+
+import numpy as np
+
+from aquabuf.assess.plant.answer import Answer
+from aquabuf.assess.plant.answer_json import step_rows
+from aquabuf.assess.plant.feed import FeedRate, both_units, in_us, shown
+from aquabuf.assess.plant.feed_lines import FeedLine
+from aquabuf.assess.plant.quantities import plant_quantities
+from aquabuf.assess.plant.rules import Judged
+from aquabuf.report.dose_blocks import (
+    assumptions,
+    cautions,
+    hold,
+    log,
+    saturation,
+    season,
+    store,
+    upset,
+)
+from aquabuf.report.dose_lines import aligned, block, bullet, figure, sentence, titled
+from aquabuf.report.summary import WIDTH, plural
+
+__all__ = ["dose_sheet"]
+
+BALANCED_MG_L = 0.05  # of calcium carbonate, below which the table says neither
+SHOWN = (("ph", "pH"), ("alkalinity", "alk."), ("dic", "carbon"), ("calcium", "Ca"), ("hardness", "hard."),
+         ("buffer_intensity", "buffer"), ("chloride_sulfate_ratio", "Cl/SO4"), ("larson_ratio", "Larson"),
+         ("tds", "TDS"))
+UNITS = ("Alkalinity, hardness and calcite (what would deposit or dissolve) in mg/L as CaCO3, carbon in mmol/L, buffer "
+         "intensity in meq/L per pH, Ca and TDS in mg/L, Cl/SO4 by mass; sat. is the saturation index of calcite.")
+TIGHT_FROM = 12  # columns
+
+
+def dose_sheet(answer: Answer) -> str:
+    """The whole page; same answer, same text."""
+    blocks = [_head(answer), _stop(answer), _feeds(answer), _water(answer), _targets(answer), _rules(answer),
+              log(answer), upset(answer), store(answer), saturation(answer), hold(answer), season(answer),
+              assumptions(answer), cautions(answer)]
+    return "\n\n".join(b for b in blocks if b) + "\n"
+
+
+# ---------------------------------------------------------------- head
+
+
+def _head(answer: Answer) -> str:
+    plan = answer.plan
+    title = f"{plan.name}{' ' * max(2, WIDTH - len(plan.name) - len(plan.date))}{plan.date}".rstrip()
+    flow = f"Flow {both_units(plan.flow.now_m3_d, 'm³/d')}"
+    ends = [f"{name} {shown(v)}" for name, v in (("least", plan.flow.least_m3_d), ("largest", plan.flow.most_m3_d))
+            if v is not None]
+    flow += f", {', '.join(ends)} m³/d" if ends else ""
+    lines = [title, "=" * min(WIDTH, max(len(title), 1)), f"{flow}. Water for: {plan.use}.",
+             bullet(f"Raw water ({plan.raw.words}): {_raw(answer)}.", mark="")]
+    return "\n".join([*lines, *([bullet(sentence(plan.note), mark="Note: ")] if plan.note else [])])
+
+
+def _raw(answer: Answer) -> str:
+    row = step_rows(answer)[0]
+    said = [f"{figure(row['temperature_c'], 1)} °C"]
+    for name in ("ph", "alkalinity", "dic", "calcium", "hardness"):
+        q = plant_quantities()[name]
+        if np.isfinite(row[q.column]):
+            said.append(f"{q.label} {figure(row[q.column], q.digits)}{'' if q.unit == '-' else f' {q.unit}'}")
+    return ", ".join(said)
+
+
+# ---------------------------------------------------------------- stop
+
+
+def _stop(answer: Answer) -> str:
+    if answer.feasible:
+        return ""
+    lines: list[str] = []
+    for name, f in answer.stops:
+        rule = f" Rule: {f.rule}." if f.rule else ""
+        lines.append(f"{name}: {sentence(f.words)}{rule}{_next(f.next_step)}")
+    if not lines:
+        lines.append(sentence(answer.reason or "no dose was found"))
+    found = bool(answer.train.feasible()[0])
+    closing = "Doses below are what the plan comes to; they are not to be fed." if found else \
+        "Figures below are without the doses that were not found."
+    return block("STOP: DO NOT SET THESE FEEDS. This plan does not hold.", [*lines, closing])
+
+
+def _next(text: str) -> str:
+    return f" Next: {text}." if text else ""
+
+
+# ---------------------------------------------------------------- feeds
+
+
+def _feeds(answer: Answer) -> str:
+    if not answer.feeds:
+        return "SET THE FEEDS\n  Nothing is dosed in this plan."
+    head = (("product", "step", "mg/L of", "mg/L", "product", "product", "feed", "feed", "set", "day tank"),
+            ("", "", "product", "pure", "kg/d", "lb/d", "metric", "US", "%", "lasts h"))
+    rows = [_feed_row(line) for line in answer.feeds]
+    said = [words for line in answer.feeds for words in _feed_words(line)]
+    return titled("SET THE FEEDS", aligned(head, rows, left=(0, 1)), *(bullet(w) for w in dict.fromkeys(said)))
+
+
+def _feed_row(line: FeedLine) -> list[str]:
+    rate, setting = line.rate, line.setting
+    if not np.isfinite(line.mol_l[0]):
+        return [line.product.name, line.step, "no dose", *["-"] * 7]
+    value, unit = _fed(rate)
+    us, name = in_us(value, unit)
+    pct = "-" if setting is None else shown(float(setting.setting_pct[0])) if setting.status[0] == "set" \
+        else str(setting.status[0])
+    hours = next((float(v.value[0]) for v in line.tank if v.rule.unit == "h"), np.nan)
+    return [line.product.name, line.step, shown(line.mg_l_product), shown(line.mg_l_pure),
+            shown(float(rate.product_kg_d[0])), shown(float(rate.in_us()["product_lb_d"][0])),
+            f"{shown(value)} {unit}", f"{shown(float(us))} {name}", pct, figure(hours, 1)]
+
+
+def _fed(rate: FeedRate) -> tuple[float, str]:
+    """What the machine moves, and in which unit."""
+    return (float(rate.l_h[0]), "L/h") if rate.moved else (float(rate.product_kg_h[0]), "kg/h")
+
+
+def _feed_words(line: FeedLine) -> list[str]:
+    p = line.product
+    strength = f"{100.0 * p.strength:.4g} % ({p.strength_from})"
+    mixture = line.spec.made_up
+    moved = "" if mixture is None else f", made up to {100.0 * mixture.fraction:.3g} % of product by mass"
+    out = [f"{p.name}: {p.product.name}, {p.product.formula}, {strength}{moved}. "
+           f"{sentence(line.setting_words())}{_at_flows(line)}"]
+    return out + [f"{p.name}, day tank: {v.words()}." for v in line.tank if v.judged[0] and not v.met[0]]
+
+
+def _at_flows(line: FeedLine) -> str:
+    """What the same dose asks for at the least and the largest flow."""
+    said = []
+    for name, rate, setting in line.at_flows:
+        value, unit = _fed(rate)
+        if not value > 0.0:
+            continue
+        reached = "" if setting is None else f" at {shown(float(setting.setting_pct[0]))} %" \
+            if setting.status[0] == "set" else f", {setting.status[0]} for it"
+        said.append(f"{both_units(value, unit)}{reached} at the {name}")
+    return f" Same dose: {'; '.join(said)}." if said else ""
+
+
+# ---------------------------------------------------------------- water
+
+
+def _water(answer: Answer) -> str:
+    named, rows = plant_quantities(), step_rows(answer)
+    warm = len({round(r["temperature_c"], 1) for r in rows}) > 1
+    columns = [(named[name], head) for name, head in SHOWN]
+    head = ["water after", "°C" if warm else "", *(word for _, word in columns), "sat.", "calcite"]
+    table = [[r["name"], figure(r["temperature_c"], 1) if warm else "",
+              *(figure(r[q.column], q.digits) for q, _ in columns), figure(r["si_calcite"], 2, "+"),
+              _calcite(r["ccpp_mg_l"])] for r in rows]
+    return titled(f"WATER AFTER EVERY STEP{'' if answer.train.feasible()[0] else ' (without the doses not found)'}",
+                  aligned([head], table, gap=" " * (2 if len(head) < TIGHT_FROM else 1)),
+                  *(bullet(line, mark="  ") for line in [UNITS]))
+
+
+def _calcite(mg_l: float) -> str:
+    if not np.isfinite(mg_l):
+        return "-"
+    if abs(mg_l) < BALANCED_MG_L:
+        return "in balance"
+    return f"{'deposits' if mg_l > 0.0 else 'dissolves'} {abs(mg_l):.1f}"
+
+
+# ---------------------------------------------------------------- targets and rules
+
+
+def _targets(answer: Answer) -> str:
+    rows = [[t.step, t.target.words, t.target.quantity.text(t.reached), "met" if t.met else "NOT MET"]
+            for t in answer.targets]
+    return titled("TARGETS", aligned([["step", "wanted", "reached", ""]], rows, left=(0, 1, 2, 3)))
+
+
+def _rules(answer: Answer) -> str:
+    lines = [f"{name}: {sentence(f.words)}{f' Rule: {f.rule}.' if f.rule else ''}{_next(f.next_step)}"
+             for name, f in answer.train.findings("warning")]
+    lines += [_broken(j) for j in answer.limits if j.broken]
+    lines += [f"Plan: {sentence(note)}" for note in answer.plan.notes]
+    lines += [f"{name}: {sentence(f.words)}" for name, f in answer.train.findings("note")]
+    kept = sum(not j.broken and np.isfinite(j.value) for j in answer.limits)
+    unknown = dict.fromkeys(j.limit.name for j in answer.limits if not np.isfinite(j.value))
+    if kept:
+        lines.append(f"{plural(kept, 'further rule')} for the water that leaves: kept (limits.csv).")
+    if unknown:
+        lines.append(f"Not judged, as an ion is not known: {', '.join(unknown)}.")
+    return block("RULES AND WARNINGS", lines)
+
+
+def _broken(j: Judged) -> str:
+    """A broken rule with its value, source and next step."""
+    q = next(q for q in plant_quantities().values() if q.column == j.limit.quantity)
+    unit = "" if q.unit == "-" else f" {q.unit}"
+    rule = f"{j.limit.operator} {j.limit.limit:g}"
+    return (f"{sentence(j.limit.words)} {q.label} {figure(j.value, q.digits)}{unit}; rule \"{j.limit.name}\", {rule}: "
+            f"{j.limit.source}.{_next(j.limit.next_step)}")

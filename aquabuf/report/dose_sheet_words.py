@@ -1,0 +1,195 @@
+"""Words of the sheet for the wall: head, stop, feeds to set, targets, warnings, cautions, what to log."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from aquabuf.assess.plant.answer import Answer
+from aquabuf.assess.plant.curve import DoseCurve
+from aquabuf.assess.plant.feed import metric_and_us, shown
+from aquabuf.assess.plant.feed_lines import FeedLine
+from aquabuf.assess.plant.quantities import find_quantity, measured
+from aquabuf.report.dose_page import Block, Line, beside, block_of, stacked, wrapped
+from aquabuf.report.style import GRAY, INK, WARNED
+
+__all__ = ["LOG", "curve_words", "feeds_block", "foot_block", "head_block", "rate_words", "setting_words",
+           "stop_block", "targets_block", "warnings_block"]
+
+LOG = ("Log each shift: time, flow, raw pH, alkalinity and temperature; pH behind each step; setting, drawdown and "
+       "tank level of each feed; lot and strength of each delivery; alarms; who changed what, and why.")
+RAW = ("ph", "alkalinity", "calcium", "dic", "buffer_intensity")  # of the raw water in the head
+MOST_REASON, MOST_WARNINGS = 7, 6
+LARGE, LESS = 11.5, 10.0         # points, of the figures to set and of what goes with them
+M3_PER_ML = 1e3
+PAD = 0.09                      # around the words of a box [inches]
+COLUMNS = (0.0, 1.95, 3.25, 4.4, 5.55)  # left ends in the table of feeds, for a page of WIDTH
+WIDTH = 7.57
+TITLES = ("Set the feeds", "dose as delivered", "rate", "US units", "setting")
+
+
+def head_block(answer: Answer, width: float) -> Block:
+    """Plan, day, flow in both units, and the raw water."""
+    plan = answer.plan
+    day = f", {plan.date}" if plan.date and plan.date not in plan.name else ""
+    us = metric_and_us(plan.flow.now_m3_d, "m³/d")[1]
+    flow = f"Flow {shown(plan.flow.now_m3_d / M3_PER_ML)} ML/d ({us})"
+    found = measured(answer.raw, RAW)
+    values = [f"{find_quantity(n).label} {find_quantity(n).text(float(v[0]))}" for n, v in found.items()]
+    raw = f"Raw water: {float(answer.raw.t_c[0]):.1f} °C, {', '.join(values)} (from {answer.pair.replace('_', ' ')})"
+    note = [plan.note] if plan.note else []
+    return stacked(block_of([f"{plan.name}{day}"], width, 15.0, bold=True, most=2),
+                   block_of([f"{flow}. For {plan.use}."], width, 11.0, bold=True, most=1),
+                   block_of([raw, *note], width, 8.0, most=2), gap=0.02)
+
+
+def stop_block(answer: Answer, width: float) -> Block:
+    """Why this plan must not be run; nothing where it may."""
+    if answer.feasible:
+        return Block()
+    reason = answer.reason or "no doses were found"
+    inner = stacked(
+        block_of(["STOP: do not dose by this sheet"], width - PAD, 15.0, bold=True, color="white", x=PAD),
+        block_of([reason[:1].upper() + reason[1:]], width - PAD, 8.5, color="white", x=PAD, most=MOST_REASON), gap=0.02)
+    lines = tuple(Line(o.x, o.y + PAD, o.words, o.size, o.bold, o.color) for o in inner.lines)
+    return Block(lines, (), inner.height + 2.0 * PAD, fill="#7d2315")
+
+
+# ---------------------------------------------------------------- feeds
+
+
+@dataclass(frozen=True, slots=True)
+class _Cell:
+    """Large words and small ones below them."""
+
+    large: str
+    small: str = ""
+    bold: bool = False
+    color: str = INK
+
+
+def rate_words(line: FeedLine) -> tuple[str, str]:
+    """What is fed in metric and US units: volume of what a pump moves, else mass."""
+    found = float(line.mol_l[0])
+    if not np.isfinite(found):
+        return "unknown", "unknown"
+    if line.rate.moved:
+        return metric_and_us(float(line.rate.l_h[0]), "L/h")
+    return metric_and_us(float(line.rate.product_kg_h[0]), "kg/h")
+
+
+def setting_words(line: FeedLine) -> tuple[str, str]:
+    """What to set in large letters, and what must be known of it."""
+    words = line.setting_words()
+    if not np.isfinite(line.mol_l[0]):
+        return "no dose", words
+    if line.mol_l[0] == 0.0:
+        return "OFF", "nothing is needed"
+    if line.setting is None:
+        return "not known", words
+    if line.setting.status[0] != "set":
+        return "OUT OF REACH", words
+    pump = line.spec.pump if line.rate.moved else None
+    knob = pump.sets if pump else "setting"
+    return f"{knob} {shown(float(line.setting.setting_pct[0]))} %", f"{line.setting.reach.owner}, {line.setting.reach.basis}"
+
+
+def _cells(line: FeedLine) -> tuple[_Cell, ...]:
+    product = line.product
+    known = bool(np.isfinite(line.mol_l[0]))
+    metric, us = rate_words(line)
+    setting, about = setting_words(line)
+    is_set = line.setting is not None and line.setting.status[0] == "set" or line.mol_l[0] == 0.0
+    own = f"{product.product.name} ({product.product.formula}), {100.0 * product.strength:.3g} % by {product.strength_from}"
+    per_day = metric_and_us(float(line.rate.product_kg_d[0]), "kg/d") if known else ("", "")
+    made = line.rate.moved.removesuffix(" to pump")
+    also = f"{made + '; ' if made else ''}{per_day[0]} of product" if known else ""
+    dose = metric_and_us(line.mg_l_product, "mg/L") if known else ("no dose", "")
+    pure = f"{shown(line.mg_l_pure)} mg/L pure; {dose[1]}" if known else ""
+    return (_Cell(product.name, f"{own}; in {line.step}", bold=True),
+            _Cell(dose[0], pure, bold=True), _Cell(metric, also), _Cell(us, per_day[1]),
+            _Cell(setting, about, bold=True, color=INK if is_set else WARNED))
+
+
+def feeds_block(answer: Answer, width: float, scale: float = 1.0) -> Block:
+    """The table of feeds: a row of large words for each, what belongs to it in small ones."""
+    lefts = [c * width / WIDTH for c in COLUMNS]
+    rooms = [b - a - 0.08 for a, b in zip(lefts, [*lefts[1:], width + 0.08], strict=True)]
+    head = tuple(Line(x, 0.03, t, 12.0 if k == 0 else 8.0, k == 0) for k, (x, t) in enumerate(zip(lefts, TITLES, strict=True)))
+    parts = [Block(head, (0.26,), 0.29)]
+    told: set[str] = set()
+    for line in answer.feeds:
+        cells = [_cell_block(c, x, room, scale) for c, x, room in zip(_cells(line), lefts, rooms, strict=True)]
+        row = tuple(item for cell in cells for item in cell.lines)
+        parts.append(Block(row, (), max(c.height for c in cells)))
+        if line.product.name not in told:
+            parts.append(block_of(_range_words(answer, line.product.name), width, 7.0, color=INK, most=2))
+        told.add(line.product.name)
+        parts.append(Block((), (0.02,), 0.06))
+    if not answer.feeds:
+        parts.append(block_of(["No step of this plan doses a product."], width, 10.0))
+    return stacked(*parts)
+
+
+def _cell_block(cell: _Cell, x: float, room: float, scale: float) -> Block:
+    large = block_of([cell.large], x + room, (LARGE if cell.bold else LESS) * scale, bold=cell.bold, color=cell.color, x=x, most=2)
+    return stacked(large, block_of([cell.small] if cell.small else [], x + room, 6.5, color=GRAY if cell.color == INK
+                                   else cell.color, x=x, most=5))
+
+
+def _range_words(answer: Answer, product: str) -> list[str]:
+    """How far the feed may go, in the words of its control range."""
+    return [f"{r.words()}." for r in answer.ranges if r.product.name == product]
+
+
+# ---------------------------------------------------------------- targets and warnings
+
+
+def targets_block(answer: Answer, width: float) -> Block:
+    """Wanted and reached, with a word whether it is met."""
+    parts = [block_of(["Targets"], width, 9.0, bold=True)]
+    for t in answer.targets:
+        reached = t.target.quantity.text(t.reached)
+        parts.append(block_of([f"{t.step}: {t.target.words}; reached {reached}: {'met' if t.met else 'NOT MET'}"], width,
+                              7.5, bold=not t.met, most=3))
+    if not answer.targets:
+        parts.append(block_of(["The plan sets no target; doses are fixed."], width, 7.5))
+    return stacked(*parts)
+
+
+def warnings_block(answer: Answer, width: float) -> Block:
+    """Warnings of the steps, rules that the final water breaks, tank rules; at most MOST_WARNINGS, the rest counted."""
+    found = [f"{name}: {f.words}" for name, f in answer.train.findings("warning")]
+    found += [f"guard rails: {f.words}" for f in answer.guards if f.severity == "warning"]
+    found += [f"final water, {j.limit.name}: {j.value:.3g}{'' if j.limit.unit == '-' else f' {j.limit.unit}'}"
+              for j in answer.limits if j.broken]
+    rest = len(found) - MOST_WARNINGS
+    shown_now = found[:MOST_WARNINGS] + ([f"and {rest} more in the summary"] if rest > 0 else [])
+    return stacked(block_of(["Look out"], width, 9.0, bold=True),
+                   block_of(shown_now or ["nothing is warned of"], width, 7.0, bullet="– ", most=2))
+
+
+def curve_words(curve: DoseCurve) -> Sequence[str]:
+    """What the curve says, and what is drawn."""
+    return (*(f"{w[:1].upper()}{w[1:]}." for w in curve.words()),)
+
+
+def foot_block(answer: Answer, width: float, scale: float = 1.0) -> Block:
+    """Cautions in two columns, and what to log."""
+    size = 6.6 * scale
+    half = 0.5 * (width - 0.2)
+    columns = _even(answer.cautions, half, size)
+    cautions = beside(*(block_of(c, half, size, bullet="– ") for c in columns), half + 0.2)
+    return stacked(Block((), (0.0,), 0.04), block_of(["Cautions"], width, 8.5, bold=True), cautions,
+                   block_of([LOG], width, 7.2 * scale, bold=True), gap=0.02)
+
+
+def _even(sentences: Sequence[str], width: float, size: float) -> tuple[Sequence[str], Sequence[str]]:
+    """The sentences in two columns of like height, in order."""
+    heights = np.cumsum([len(wrapped(s, width - 0.08, size)) for s in sentences])
+    if not heights.size:
+        return (), ()
+    cut = int(np.argmin(np.maximum(heights, heights[-1] - heights))) + 1
+    return sentences[:cut], sentences[cut:]
