@@ -11,6 +11,7 @@ import click
 from aquabuf import __version__
 from aquabuf.cli.assess import assess
 from aquabuf.cli.columns import columns
+from aquabuf.cli.dose import dose
 from aquabuf.cli.lake import lake
 from aquabuf.cli.template import template
 from aquabuf.cli.titration import titration
@@ -60,6 +61,7 @@ def main() -> None:
 
 main.add_command(assess)
 main.add_command(columns)
+main.add_command(dose)
 main.add_command(lake)
 main.add_command(template)
 main.add_command(titration)

@@ -126,8 +126,10 @@ def _costs(costs: Sequence) -> list[str]:
 
 def log(answer: Answer) -> str:
     """What to measure and to write down this shift."""
-    lines = [] if not answer.feeds else [_jars(answer)]
-    lines += [_check(line) for line in answer.feeds if line.mol_l[0] > 0.0]
+    lines = [_check(line) for line in answer.feeds if line.mol_l[0] > 0.0]
+    if lines:
+        off = feed_rules()["feed accuracy"]
+        lines = [_jars(answer), *lines, f"Reset a feed that is off by more than {off.limit:g} % ({off.source})."]
     lines += _watch(answer)
     if not lines:
         return ""
@@ -150,32 +152,30 @@ def _jars(answer: Answer) -> str:
 
 def _check(line: FeedLine) -> str:
     """How to prove the feed: a drawdown of what is pumped, a catch of what is dry, a meter for gas."""
-    off = feed_rules()["feed accuracy"]
-    within = f"reset it if off by more than {off.limit:g} % ({off.source})"
     name = line.product.name
     if line.rate.moved:
         l_h = float(line.rate.l_h[0])
         ml = next((v for v in COLUMNS_ML if float(column_seconds(v, l_h)[0]) >= READABLE_S), COLUMNS_ML[-1])
-        return f"{name}: drawdown of {ml:,.0f} mL in {shown(float(column_seconds(ml, l_h)[0]))} s; {within}."
+        return f"{name}: drawdown of {ml:,.0f} mL in {shown(float(column_seconds(ml, l_h)[0]))} s."
     kg_h = float(line.rate.product_kg_h[0])
     if line.product.product.form == "gas":
         return f"{name}: gas meter at {both_units(kg_h, 'kg/h')}; weigh the tank at the start and end of the shift."
-    return f"{name}: catch of one minute weighs {shown(1e3 * kg_h / 60.0)} g; {within}."
+    return f"{name}: catch of one minute weighs {shown(1e3 * kg_h / 60.0)} g."
 
 
 def _watch(answer: Answer) -> list[str]:
     """What to measure behind which step, with the window it must keep."""
     if not answer.train.feasible()[0]:
         return []
-    lines, told = [], set()
-    for aim in aims_of(answer.train):
-        q, value = aim.target.quantity, float(aim.value(answer.train)[0])
-        lines.append(f"Behind {aim.step}: {q.label} {q.text(value)}, keep {aim.window_words}.")
-        told |= {aim.step} if q.name == "ph" else set()
+    said: dict[str, list[str]] = {}
     for p in answer.train.passed:
-        if p.outcome.doses and p.step.name not in told:
-            lines.append(f"Behind {p.step.name}: pH {p.after.water().ph[0]:.2f} is expected.")
-    return lines
+        aims = [a for a in aims_of(answer.train) if a.step == p.step.name]
+        if p.outcome.doses and not any(a.target.quantity.name == "ph" for a in aims):
+            said[p.step.name] = [f"pH {p.after.water().ph[0]:.2f} is expected"]
+        for a in aims:
+            value = a.target.quantity.text(float(a.value(answer.train)[0]))
+            said.setdefault(p.step.name, []).append(f"{a.target.quantity.label} {value}, keep {a.window_words}")
+    return [f"Behind {step}: {'; '.join(words)}." for step, words in said.items()]
 
 
 # ---------------------------------------------------------------- water

@@ -13,6 +13,7 @@ from matplotlib.figure import Figure
 from aquabuf.assess.plant.answer import Answer
 from aquabuf.assess.plant.steps.blend import Blend
 from aquabuf.errors import InputError
+from aquabuf.report.dose_lines import sentence
 from aquabuf.report.dose_page import PAGE_STYLE, Block, beside, block_of, save_page, stacked
 from aquabuf.report.dose_panels import (
     SMALL,
@@ -28,6 +29,8 @@ from aquabuf.report.dose_panels import (
 )
 from aquabuf.report.dose_season import plot_blend, plot_season_dose, plot_season_ph, season_key
 from aquabuf.report.dose_sheet_words import (
+    MOST_WARNINGS,
+    TIGHT_BELOW,
     curve_words,
     feeds_block,
     foot_block,
@@ -43,7 +46,9 @@ __all__ = ["blend_figure", "blends_of", "save_blend", "save_season", "save_sheet
 WIDE, HIGH = 8.27, 11.69    # A4 portrait in inches
 EDGE, GAP = 0.35, 0.08      # of the page; between blocks
 SCALES = (1.2, 1.1, 1.0, 0.9, 0.8)  # of the words that give way to the panels
-LEAST_PANELS = 5.0          # inches that the panels want
+LEAST_PANELS, LEAST_AXES = 5.0, 1.1  # inches that the panels want, and the axes of one
+EMPTY, MOST_TRAIN = 0.45, 3.2        # inches of words in place of panels; of the works
+FEW_WARNINGS = 3
 AXIS, FAR = 0.5, 0.95       # room for an axis and its words at the left of a panel; for names of feeds
 TITLE, LABELS = 0.2, 0.4    # room above and below a panel
 SEASON_WIDE, SEASON_EDGES, PANEL_HIGH, PH_HIGH = 11.0, 2.0, 1.45, 2.2
@@ -75,9 +80,10 @@ def sheet_figure(answer: Answer) -> Figure:
 def _words(answer: Answer, width: float) -> tuple[list[Block], Block]:
     """Blocks above the panels and that below, as large as leaves the panels their room."""
     half = 0.5 * (width - 0.2)
-    aims = beside(targets_block(answer, half), warnings_block(answer, half), half + 0.2)
     for scale in SCALES:
-        upper = [head_block(answer, width), stop_block(answer, width), feeds_block(answer, width, scale), aims]
+        most = MOST_WARNINGS if scale >= TIGHT_BELOW else FEW_WARNINGS
+        aims = beside(targets_block(answer, half), warnings_block(answer, half, most), half + 0.2)
+        upper = [head_block(answer, width, scale), stop_block(answer, width), feeds_block(answer, width, scale), aims]
         foot = foot_block(answer, width, min(scale, 1.0))
         used = sum(b.height + GAP for b in (*upper, foot) if b.height)
         if HIGH - 2.0 * EDGE - used >= LEAST_PANELS:
@@ -87,21 +93,30 @@ def _words(answer: Answer, width: float) -> tuple[list[Block], Block]:
 
 def _panels(figure: Figure, answer: Answer, top: float, bottom: float, width: float) -> None:
     """Response and faults side by side, the works below, each with its key."""
-    middle = top + 0.56 * (bottom - top)
+    drawn = answer.curves or answer.faults
+    middle = top + (0.57 * (bottom - top) if drawn else EMPTY)
     left = 0.52 * width
-    _response(figure, answer, EDGE, top, left, middle - GAP - top)
-    _faults(figure, answer, EDGE + left + 0.15, top, width - left - 0.15, middle - GAP - top)
-    _train(figure, answer, EDGE, middle, width, bottom - middle)
+    if drawn:
+        _response(figure, answer, EDGE, top, left, middle - GAP - top)
+        _faults(figure, answer, EDGE + left + 0.15, top, width - left - 0.15, middle - GAP - top)
+    else:
+        _say(figure, " ".join((NO_CURVE, *answer.fault_words)), EDGE, top, width)
+    _train(figure, answer, EDGE, middle, width, min(bottom - middle, MOST_TRAIN))
 
 
 def _response(figure: Figure, answer: Answer, left: float, top: float, width: float, height: float) -> None:
     curve = main_curve(answer)
     if curve is None:
-        _empty(figure, NO_CURVE, left, top, width)
+        _say(figure, NO_CURVE, left, top, width)
         return
-    key = stacked(block_of(curve_words(curve), width - AXIS, SMALL, bullet="– "),
-                  block_of([response_key(answer, curve)], width - AXIS, SMALL - 0.5, color=GRAY))
-    room = height - TITLE - LABELS - key.height
+    words = curve_words(curve)
+    signs = block_of([response_key(answer, curve)], width - AXIS, SMALL - 0.5, color=GRAY)
+    for said in (words, words[1:3], ()):
+        key = stacked(block_of(said, width - AXIS, SMALL, bullet="– "), signs)
+        room = height - TITLE - LABELS - key.height
+        if room >= LEAST_AXES:
+            break
+    room = max(room, 0.5 * LEAST_AXES)
     upper = _axes(figure, left + AXIS, top + TITLE, width - AXIS, 0.66 * room)
     lower = _axes(figure, left + AXIS, top + TITLE + 0.71 * room, width - AXIS, 0.29 * room)
     plot_response(answer, curve, ax=upper, below=lower)
@@ -110,11 +125,12 @@ def _response(figure: Figure, answer: Answer, left: float, top: float, width: fl
 
 def _faults(figure: Figure, answer: Answer, left: float, top: float, width: float, height: float) -> None:
     if not answer.faults:
-        _empty(figure, " ".join((NO_FAULT, *answer.fault_words)), left, top, width)
+        _say(figure, " ".join((NO_FAULT, *answer.fault_words)), left, top, width)
         return
-    key = stacked(block_of([f"{w[:1].upper()}{w[1:]}." for w in answer.fault_words], width, SMALL, most=2, bullet="– "),
+    key = stacked(block_of([sentence(w) for w in answer.fault_words], width, SMALL, most=2, bullet="– "),
                   block_of([faults_key(answer)], width, SMALL - 0.5, color=GRAY))
-    ax = _axes(figure, left + FAR, top + TITLE, width - FAR, height - TITLE - LABELS - key.height)
+    room = max(height - TITLE - LABELS - key.height, 0.5 * LEAST_AXES)
+    ax = _axes(figure, left + FAR, top + TITLE, width - FAR, room)
     plot_faults(answer, ax=ax)
     key.draw(figure, left, top + height - key.height, width)
 
@@ -123,15 +139,16 @@ def _train(figure: Figure, answer: Answer, left: float, top: float, width: float
     labels = train_labels(answer, width - AXIS)
     key = block_of([TRAIN_KEY], width - AXIS, SMALL - 0.5, color=GRAY)
     below = label_height(labels) + key.height + 0.1
-    room = height - TITLE - below
+    room = max(height - TITLE - below, 0.5 * LEAST_AXES)
     upper = _axes(figure, left + AXIS, top + TITLE, width - AXIS, 0.56 * room)
     lower = _axes(figure, left + AXIS, top + TITLE + 0.62 * room, width - AXIS, 0.38 * room)
     plot_train(answer, labels, ax=upper, below=lower)
     key.draw(figure, left + AXIS, top + height - key.height, width - AXIS)
 
 
-def _empty(figure: Figure, words: str, left: float, top: float, width: float) -> None:
-    block_of([words], width - AXIS, 9.0, color=GRAY).draw(figure, left + 0.5 * AXIS, top + 0.5, width)
+def _say(figure: Figure, words: str, left: float, top: float, width: float) -> None:
+    """Words in place of a panel."""
+    block_of([words], width - AXIS, 8.5, color=GRAY).draw(figure, left + 0.5 * AXIS, top + 0.1, width)
 
 
 def _axes(figure: Figure, left: float, top: float, width: float, height: float) -> Axes:
@@ -199,7 +216,7 @@ def blend_figure(answer: Answer, step: str | None = None) -> Figure:
         FigureCanvasAgg(figure)
         width = BLEND_WIDE - 2.0 * EDGE
         head = stacked(block_of([f"{answer.plan.name}: blend {passed.step.name}"], width, 13.0, bold=True, most=2),
-                       block_of([f"{f.words[:1].upper()}{f.words[1:]}." for f in passed.outcome.findings], width, 8.0,
+                       block_of([sentence(f.words) for f in passed.outcome.findings], width, 8.0,
                                 bullet="– ", most=2), gap=0.03)
         head.draw(figure, EDGE, EDGE, width)
         top = EDGE + head.height + GAP

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
@@ -13,12 +12,13 @@ from numpy.typing import NDArray
 
 from aquabuf.assess.plant.aims import banded
 from aquabuf.assess.plant.answer import Answer
+from aquabuf.assess.plant.answer_json import step_rows
 from aquabuf.assess.plant.curve import DoseCurve
 from aquabuf.assess.plant.faults import FULL, Fault
-from aquabuf.assess.plant.indices import potential_words
 from aquabuf.assess.plant.quantities import find_quantity, in_unit, measured
 from aquabuf.assess.plant.steps.base import Dosed, Held
 from aquabuf.assess.plant.targets import Target
+from aquabuf.report.dose_lines import calcite_words
 from aquabuf.report.dose_page import POINTS, text_width, wrapped
 from aquabuf.report.style import CALM, FAINT, GRAY, INK, WARNED
 
@@ -153,37 +153,15 @@ def ax_width(ax: Axes) -> float:
 # ---------------------------------------------------------------- the works
 
 
-@dataclass(frozen=True, slots=True)
-class _Column:
-    """One water of the works, in the units of the tables."""
-
-    name: str
-    ph: float
-    alkalinity: float
-    saturation: str
-
-
-def _columns(answer: Answer) -> list[_Column]:
-    waters = [("raw water", answer.raw), *((p.step.name, p.after) for p in answer.train.passed)]
-    out = []
-    for name, stream in waters:
-        found = measured(stream, ("ph", "alkalinity", "ccpp"))
-        words = potential_words(float(found["ccpp"][0]))
-        short = words.removeprefix("precipitation potential ").removesuffix(" mg/L CaCO3").removesuffix(
-            " calcium carbonate")
-        alkalinity = in_unit(find_quantity("alkalinity"), found["alkalinity"])
-        out.append(_Column(name, float(found["ph"][0]), float(alkalinity[0]), short))
-    return out
-
-
 def train_labels(answer: Answer, width: float) -> list[str]:
     """Name of each water and what it does to calcium carbonate, wrapped for columns that share `width` [inches]."""
-    columns = _columns(answer)
-    room = 0.94 * width / len(columns)
-    names = [wrapped(c.name, room, SMALL, most=NAME_LINES) for c in columns]
+    rows = step_rows(answer)
+    room = 0.94 * width / len(rows)
+    names = [wrapped(str(r["name"]), room, SMALL, most=NAME_LINES) for r in rows]
     tall = max(len(n) for n in names)
-    return ["\n".join([*name, *[""] * (tall - len(name)), *wrapped(c.saturation, room, SMALL, most=NAME_LINES)])
-            for name, c in zip(names, columns, strict=True)]
+    words = [calcite_words(r["ccpp_mg_l"]).replace("-", "not known") for r in rows]
+    return ["\n".join([*name, *[""] * (tall - len(name)), *wrapped(does, room, SMALL)])
+            for name, does in zip(names, words, strict=True)]
 
 
 def label_height(labels: Sequence[str]) -> float:
@@ -193,17 +171,17 @@ def label_height(labels: Sequence[str]) -> float:
 
 def plot_train(answer: Answer, labels: Sequence[str], *, ax: Axes, below: Axes) -> Axes:
     """pH and, below, alkalinity of the raw water and behind each step; labels from `train_labels`."""
-    columns = _columns(answer)
-    x = np.arange(len(columns), dtype=float)
-    ph, alkalinity = (np.array([getattr(c, n) for c in columns]) for n in ("ph", "alkalinity"))
+    rows = step_rows(answer)
+    x = np.arange(len(rows), dtype=float)
+    ph, alkalinity = (np.array([r[find_quantity(n).column] for r in rows]) for n in ("ph", "alkalinity"))
     for each in (ax, below):
-        each.set_xlim(-0.5, len(columns) - 0.5)
+        each.set_xlim(-0.5, len(rows) - 0.5)
         each.set_xticks(x)
     ph_axis(ax, ph)
     low, high = ax.get_ylim()
     ax.set_ylim(low, high + 0.22 * (high - low))
     _rails(ax, answer)
-    _windows_of_steps(ax, answer, columns)
+    _windows_of_steps(ax, answer)
     ax.plot(x, ph, color=INK, lw=1.2, marker="o", ms=5, mfc=CALM, label="_ph", zorder=3)
     _values(ax, x, ph, 2)
     ax.tick_params(labelbottom=False)
@@ -220,11 +198,11 @@ def plot_train(answer: Answer, labels: Sequence[str], *, ax: Axes, below: Axes) 
     return ax
 
 
-def _windows_of_steps(ax: Axes, answer: Answer, columns: Sequence[_Column]) -> None:
+def _windows_of_steps(ax: Axes, answer: Answer) -> None:
     """Shade the window of pH behind each step that has one, over its column alone."""
     low, high = ax.get_ylim()
-    for k, column in enumerate(columns[1:], start=1):
-        window = ph_window(answer, column.name)
+    for k, step in enumerate(answer.steps, start=1):
+        window = ph_window(answer, step.name)
         if window is not None:
             ax.fill_between([k - 0.4, k + 0.4], max(window.low, low), min(window.high, high), label="_window",
                             zorder=0.4, **WINDOW)

@@ -21,12 +21,11 @@ from aquabuf.report.dose_blocks import (
     store,
     upset,
 )
-from aquabuf.report.dose_lines import aligned, block, bullet, figure, sentence, titled
+from aquabuf.report.dose_lines import aligned, block, bullet, calcite_words, figure, sentence, titled
 from aquabuf.report.summary import WIDTH, plural
 
 __all__ = ["dose_sheet"]
 
-BALANCED_MG_L = 0.05  # of calcium carbonate, below which the table says neither
 SHOWN = (("ph", "pH"), ("alkalinity", "alk."), ("dic", "carbon"), ("calcium", "Ca"), ("hardness", "hard."),
          ("buffer_intensity", "buffer"), ("chloride_sulfate_ratio", "Cl/SO4"), ("larson_ratio", "Larson"),
          ("tds", "TDS"))
@@ -155,18 +154,10 @@ def _water(answer: Answer) -> str:
     head = ["water after", "°C" if warm else "", *(word for _, word in columns), "sat.", "calcite"]
     table = [[r["name"], figure(r["temperature_c"], 1) if warm else "",
               *(figure(r[q.column], q.digits) for q, _ in columns), figure(r["si_calcite"], 2, "+"),
-              _calcite(r["ccpp_mg_l"])] for r in rows]
+              calcite_words(r["ccpp_mg_l"])] for r in rows]
     return titled(f"WATER AFTER EVERY STEP{'' if answer.train.feasible()[0] else ' (without the doses not found)'}",
                   aligned([head], table, gap=" " * (2 if len(head) < TIGHT_FROM else 1)),
                   *(bullet(line, mark="  ") for line in [UNITS]))
-
-
-def _calcite(mg_l: float) -> str:
-    if not np.isfinite(mg_l):
-        return "-"
-    if abs(mg_l) < BALANCED_MG_L:
-        return "in balance"
-    return f"{'deposits' if mg_l > 0.0 else 'dissolves'} {abs(mg_l):.1f}"
 
 
 # ---------------------------------------------------------------- targets and rules
@@ -197,6 +188,6 @@ def _broken(j: Judged) -> str:
     """A broken rule with its value, source and next step."""
     q = next(q for q in plant_quantities().values() if q.column == j.limit.quantity)
     unit = "" if q.unit == "-" else f" {q.unit}"
-    rule = f"{j.limit.operator} {j.limit.limit:g}"
-    return (f"{sentence(j.limit.words)} {q.label} {figure(j.value, q.digits)}{unit}; rule \"{j.limit.name}\", {rule}: "
-            f"{j.limit.source}.{_next(j.limit.next_step)}")
+    rule = f"{j.limit.name}, {j.limit.operator} {j.limit.limit:g}"
+    return (f"{q.label} {figure(j.value, q.digits)}{unit}: {sentence(j.limit.words)} Rule ({rule}): {j.limit.source}."
+            f"{_next(j.limit.next_step)}")

@@ -8,14 +8,16 @@ from dataclasses import dataclass
 import numpy as np
 
 from aquabuf.assess.plant.answer import Answer
+from aquabuf.assess.plant.answer_json import step_rows
 from aquabuf.assess.plant.curve import DoseCurve
 from aquabuf.assess.plant.feed import metric_and_us, shown
 from aquabuf.assess.plant.feed_lines import FeedLine
-from aquabuf.assess.plant.quantities import find_quantity, measured
+from aquabuf.assess.plant.quantities import find_quantity, plant_quantities
+from aquabuf.report.dose_lines import sentence
 from aquabuf.report.dose_page import Block, Line, beside, block_of, stacked, wrapped
 from aquabuf.report.style import GRAY, INK, WARNED
 
-__all__ = ["LOG", "curve_words", "feeds_block", "foot_block", "head_block", "rate_words", "setting_words",
+__all__ = ["LOG", "MOST_WARNINGS", "TIGHT_BELOW", "curve_words", "feeds_block", "foot_block", "head_block", "rate_words", "setting_words",
            "stop_block", "targets_block", "warnings_block"]
 
 LOG = ("Log each shift: time, flow, raw pH, alkalinity and temperature; pH behind each step; setting, drawdown and "
@@ -24,35 +26,38 @@ RAW = ("ph", "alkalinity", "calcium", "dic", "buffer_intensity")  # of the raw w
 MOST_REASON, MOST_WARNINGS = 7, 6
 LARGE, LESS = 11.5, 10.0         # points, of the figures to set and of what goes with them
 M3_PER_ML = 1e3
+TIGHT_BELOW = 0.85              # scale
+MOST_ALARM = 6                  # lines on a setting that cannot be made
 PAD = 0.09                      # around the words of a box [inches]
 COLUMNS = (0.0, 1.95, 3.25, 4.4, 5.55)  # left ends in the table of feeds, for a page of WIDTH
 WIDTH = 7.57
 TITLES = ("Set the feeds", "dose as delivered", "rate", "US units", "setting")
 
 
-def head_block(answer: Answer, width: float) -> Block:
+def head_block(answer: Answer, width: float, scale: float = 1.0) -> Block:
     """Plan, day, flow in both units, and the raw water."""
     plan = answer.plan
     day = f", {plan.date}" if plan.date and plan.date not in plan.name else ""
     us = metric_and_us(plan.flow.now_m3_d, "m³/d")[1]
     flow = f"Flow {shown(plan.flow.now_m3_d / M3_PER_ML)} ML/d ({us})"
-    found = measured(answer.raw, RAW)
-    values = [f"{find_quantity(n).label} {find_quantity(n).text(float(v[0]))}" for n, v in found.items()]
-    raw = f"Raw water: {float(answer.raw.t_c[0]):.1f} °C, {', '.join(values)} (from {answer.pair.replace('_', ' ')})"
+    row = step_rows(answer)[0]
+    known = [q for q in (find_quantity(n) for n in RAW) if np.isfinite(row[q.column])]
+    values = [f"{q.label} {row[q.column]:.{q.digits}f}{'' if q.unit == '-' else f' {q.unit}'}" for q in known]
+    raw = f"Raw water: {row['temperature_c']:.1f} °C, {', '.join(values)} (from {answer.pair.replace('_', ' ')})"
     note = [plan.note] if plan.note else []
-    return stacked(block_of([f"{plan.name}{day}"], width, 15.0, bold=True, most=2),
-                   block_of([f"{flow}. For {plan.use}."], width, 11.0, bold=True, most=1),
-                   block_of([raw, *note], width, 8.0, most=2), gap=0.02)
+    return stacked(block_of([f"{plan.name}{day}"], width, 14.0 * scale, bold=True, most=2),
+                   block_of([f"{flow}. For {plan.use}."], width, 10.5 * scale, bold=True, most=1),
+                   block_of([raw, *note], width, 7.5, most=2), gap=0.02)
 
 
 def stop_block(answer: Answer, width: float) -> Block:
     """Why this plan must not be run; nothing where it may."""
     if answer.feasible:
         return Block()
-    reason = answer.reason or "no doses were found"
+    reason = sentence(answer.reason or "no doses were found")
     inner = stacked(
         block_of(["STOP: do not dose by this sheet"], width - PAD, 15.0, bold=True, color="white", x=PAD),
-        block_of([reason[:1].upper() + reason[1:]], width - PAD, 8.5, color="white", x=PAD, most=MOST_REASON), gap=0.02)
+        block_of([reason], width - PAD, 8.5, color="white", x=PAD, most=MOST_REASON), gap=0.02)
     lines = tuple(Line(o.x, o.y + PAD, o.words, o.size, o.bold, o.color) for o in inner.lines)
     return Block(lines, (), inner.height + 2.0 * PAD, fill="#7d2315")
 
@@ -93,7 +98,7 @@ def setting_words(line: FeedLine) -> tuple[str, str]:
         return "OUT OF REACH", words
     pump = line.spec.pump if line.rate.moved else None
     knob = pump.sets if pump else "setting"
-    return f"{knob} {shown(float(line.setting.setting_pct[0]))} %", f"{line.setting.reach.owner}, {line.setting.reach.basis}"
+    return f"{knob} {shown(float(line.setting.setting_pct[0]))} %", line.setting.reach.owner
 
 
 def _cells(line: FeedLine) -> tuple[_Cell, ...]:
@@ -114,34 +119,47 @@ def _cells(line: FeedLine) -> tuple[_Cell, ...]:
 
 
 def feeds_block(answer: Answer, width: float, scale: float = 1.0) -> Block:
-    """The table of feeds: a row of large words for each, what belongs to it in small ones."""
+    """The table of feeds: a row of large words for each, what belongs to it in small ones; at a small scale in fewer
+    lines."""
+    tight = scale < TIGHT_BELOW
     lefts = [c * width / WIDTH for c in COLUMNS]
     rooms = [b - a - 0.08 for a, b in zip(lefts, [*lefts[1:], width + 0.08], strict=True)]
     head = tuple(Line(x, 0.03, t, 12.0 if k == 0 else 8.0, k == 0) for k, (x, t) in enumerate(zip(lefts, TITLES, strict=True)))
     parts = [Block(head, (0.26,), 0.29)]
     told: set[str] = set()
     for line in answer.feeds:
-        cells = [_cell_block(c, x, room, scale) for c, x, room in zip(_cells(line), lefts, rooms, strict=True)]
+        cells = [_cell_block(c, x, room, scale, 1 if tight else 5) for c, x, room in zip(_cells(line), lefts, rooms, strict=True)]
         row = tuple(item for cell in cells for item in cell.lines)
         parts.append(Block(row, (), max(c.height for c in cells)))
         if line.product.name not in told:
-            parts.append(block_of(_range_words(answer, line.product.name), width, 7.0, color=INK, most=2))
+            parts.append(block_of(_range_words(answer, line.product.name), width, 7.0, most=1 if tight else 2))
         told.add(line.product.name)
         parts.append(Block((), (0.02,), 0.06))
+    parts.append(block_of(_bases(answer), width, 6.5, color=GRAY, most=2))
     if not answer.feeds:
         parts.append(block_of(["No step of this plan doses a product."], width, 10.0))
     return stacked(*parts)
 
 
-def _cell_block(cell: _Cell, x: float, room: float, scale: float) -> Block:
+def _bases(answer: Answer) -> list[str]:
+    """How the settings are known, each way once with the feeds that it holds for."""
+    ways: dict[str, list[str]] = {}
+    for line in answer.feeds:
+        if line.setting is not None and line.setting.status[0] == "set":
+            ways.setdefault(line.setting.reach.basis, []).append(line.product.name)
+    return [f"Setting of {', '.join(dict.fromkeys(names))}: {way}." for way, names in ways.items()]
+
+
+def _cell_block(cell: _Cell, x: float, room: float, scale: float, most: int) -> Block:
     large = block_of([cell.large], x + room, (LARGE if cell.bold else LESS) * scale, bold=cell.bold, color=cell.color, x=x, most=2)
-    return stacked(large, block_of([cell.small] if cell.small else [], x + room, 6.5, color=GRAY if cell.color == INK
-                                   else cell.color, x=x, most=5))
+    alarm = cell.color != INK
+    return stacked(large, block_of([cell.small] if cell.small else [], x + room, 6.5, color=cell.color if alarm else GRAY,
+                                   x=x, most=MOST_ALARM if alarm else most))
 
 
 def _range_words(answer: Answer, product: str) -> list[str]:
     """How far the feed may go, in the words of its control range."""
-    return [f"{r.words()}." for r in answer.ranges if r.product.name == product]
+    return [sentence(r.words()) for r in answer.ranges if r.product.name == product]
 
 
 # ---------------------------------------------------------------- targets and warnings
@@ -159,21 +177,23 @@ def targets_block(answer: Answer, width: float) -> Block:
     return stacked(*parts)
 
 
-def warnings_block(answer: Answer, width: float) -> Block:
-    """Warnings of the steps, rules that the final water breaks, tank rules; at most MOST_WARNINGS, the rest counted."""
+def warnings_block(answer: Answer, width: float, most: int = MOST_WARNINGS) -> Block:
+    """Warnings of the steps, rules that the final water breaks, tank rules; at most `most`, the rest counted."""
     found = [f"{name}: {f.words}" for name, f in answer.train.findings("warning")]
     found += [f"guard rails: {f.words}" for f in answer.guards if f.severity == "warning"]
-    found += [f"final water, {j.limit.name}: {j.value:.3g}{'' if j.limit.unit == '-' else f' {j.limit.unit}'}"
-              for j in answer.limits if j.broken]
-    rest = len(found) - MOST_WARNINGS
-    shown_now = found[:MOST_WARNINGS] + ([f"and {rest} more in the summary"] if rest > 0 else [])
+    named = {q.column: q for q in plant_quantities().values()}
+    for q, j in ((named[j.limit.quantity], j) for j in answer.limits if j.broken):
+        unit = "" if q.unit == "-" else f" {q.unit}"
+        found.append(f"final water, {q.label} {j.value:z.{q.digits}f}{unit}: {j.limit.words}")
+    rest = len(found) - most
+    shown_now = found[:most] + ([f"and {rest} more, see the text of the sheet"] if rest > 0 else [])
     return stacked(block_of(["Look out"], width, 9.0, bold=True),
                    block_of(shown_now or ["nothing is warned of"], width, 7.0, bullet="– ", most=2))
 
 
-def curve_words(curve: DoseCurve) -> Sequence[str]:
-    """What the curve says, and what is drawn."""
-    return (*(f"{w[:1].upper()}{w[1:]}." for w in curve.words()),)
+def curve_words(curve: DoseCurve) -> tuple[str, ...]:
+    """What the curve says, a sentence each."""
+    return tuple(sentence(words) for words in curve.words())
 
 
 def foot_block(answer: Answer, width: float, scale: float = 1.0) -> Block:

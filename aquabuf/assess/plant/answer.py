@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 from aquabuf.assess.plant.aims import aims_of
 from aquabuf.assess.plant.build import build_steps
 from aquabuf.assess.plant.curve import DoseCurve, dose_curve
+from aquabuf.assess.plant.digester import alkali_for, digester, digester_words
 from aquabuf.assess.plant.drift import UnderError, UnderFeedError, under_error, under_feed_error
 from aquabuf.assess.plant.faults import Fault, full_stroke, guard
 from aquabuf.assess.plant.feed_lines import FeedLine, StoreLine, feed_lines, largest_mol_l, store_lines
@@ -25,7 +26,6 @@ from aquabuf.assess.plant.stream import Stream, stream_of
 from aquabuf.assess.plant.targets import Target
 from aquabuf.assess.plant.train import Train, run_train
 from aquabuf.assess.sample.inputs import uncertainties, values_of
-from aquabuf.errors import InputError
 from aquabuf.readings.result import join_readings
 from aquabuf.readings.source import open_any
 
@@ -89,6 +89,7 @@ class Answer:
     feed_error: UnderFeedError | None
     season: Season | None
     hold: Hold | None
+    digester_words: str
     cautions: tuple[str, ...]
 
     @property
@@ -131,7 +132,8 @@ def solve_plan(plan: Plan, *, draws: int | None = None) -> Answer:
         guards=guard(train, plan.guards) if found else (),
         curves=_curves(train) if found else (), ranges=_ranges(train) if found else (), faults=faults,
         fault_words=fault_words, readings_error=ways[0], feed_error=ways[1], season=_season(plan, steps),
-        hold=_hold(plan, train.final), cautions=cautions_of(train, [s.kind for s in plan.steps]))
+        hold=_hold(plan, train.final), digester_words=_digester(plan),
+        cautions=cautions_of(train, [s.kind for s in plan.steps]))
 
 
 def _fed(train: Train) -> list[tuple[int, str]]:
@@ -194,6 +196,17 @@ def _season(plan: Plan, steps: Sequence[Step]) -> Season | None:
 
     readings = join_readings(open_any(plan.drift.readings, plan.drift.mapping))
     return season(values_of(readings.frame), steps, flow_m3_d=plan.flow.now_m3_d)
+
+
+def _digester(plan: Plan) -> str:
+    """State of the plan's digester and the alkali it lacks; "" where it has none."""
+    spec = plan.digester
+    if spec is None:
+        return ""
+    found = digester(alkalinity_eq_l=spec.alkalinity_eq_l, volatile_acids_eq_l=spec.volatile_acids_eq_l,
+                     co2_share=spec.co2_share, t_c=spec.t_c, ionic_strength_mol_l=spec.ionic_strength_mol_l)
+    wanted = {"ratio": spec.ratio} if spec.ratio is not None else {"ph": spec.ph}
+    return digester_words(found, None if spec.ratio is None and spec.ph is None else alkali_for(found, **wanted))
 
 
 def _hold(plan: Plan, water: Stream) -> Hold | None:

@@ -11,7 +11,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from aquabuf.assess.plant.aims import dosed_of
 from aquabuf.assess.plant.steps.base import Dosed, Finding, Held, Step
-from aquabuf.assess.plant.steps.coagulate import as_rows_of, holding, span
+from aquabuf.assess.plant.steps.words import as_rows_of, holding, span
 from aquabuf.assess.plant.store import Stocked
 from aquabuf.assess.plant.train import Passed, Train, held_steps, run_train
 from aquabuf.errors import InputError

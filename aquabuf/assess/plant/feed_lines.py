@@ -24,7 +24,7 @@ from aquabuf.assess.plant.storage import (
 from aquabuf.assess.plant.store import Stocked
 from aquabuf.assess.plant.train import Train
 
-__all__ = ["FeedLine", "StoreLine", "feed_lines", "largest_mol_l", "store_lines"]
+__all__ = ["FeedLine", "StoreLine", "feed_lines", "feed_of", "largest_mol_l", "store_lines"]
 
 Array = NDArray[np.float64]
 MG_PER_G = 1e3
@@ -68,6 +68,8 @@ class FeedLine:
             return "no dose found"
         if self.mol_l[0] == 0.0:
             return "off: nothing is needed"
+        if self.setting is None and self.spec.pump is not None:
+            return f"its pump needs something to move: give [products.{self.product.name}] its slurry or solution"
         if self.setting is None:
             return f"give [products.{self.product.name}] a pump or feeder for its setting"
         return self.setting.words(dose_mg_l=self.mg_l_product)
@@ -114,6 +116,13 @@ def _setting(spec: FeedSpec, rate: FeedRate) -> Setting | None:
     if spec.feeder is not None:
         return spec.feeder.reach.setting(rate.product_kg_h)
     return None
+
+
+def feed_of(plan: Plan, product: Stocked, mol_l: Array) -> tuple[FeedRate, Setting | None]:
+    """Rates and settings of any doses of a product at the flow of the plan, row by row."""
+    spec = plan.feeds[product.name]
+    rate = _rate(product, spec, mol_l, plan.flow.now_m3_d)
+    return rate, _setting(spec, rate)
 
 
 def largest_mol_l(line: FeedLine, flow_m3_d: float) -> float | None:

@@ -14,7 +14,7 @@ from aquabuf.assess.plant.faults import Guards
 from aquabuf.assess.plant.feed import Feeder, MadeUp, Pump
 from aquabuf.assess.plant.store import Stocked
 
-__all__ = ["DriftSpec", "FeedSpec", "Flow", "HoldSpec", "Plan", "RawWater", "Source", "StepSpec"]
+__all__ = ["DigesterSpec", "DriftSpec", "FeedSpec", "Flow", "HoldSpec", "Plan", "RawWater", "Source", "StepSpec"]
 
 Array = NDArray[np.float64]
 
@@ -100,6 +100,19 @@ class HoldSpec:
     fault_eq_l: float | None = None
 
 
+@dataclass(frozen=True, slots=True, kw_only=True)
+class DigesterSpec:
+    """A digester to judge: total alkalinity and volatile acids [eq/L], CO2 of its dry gas [-]; what to come back to."""
+
+    alkalinity_eq_l: float
+    volatile_acids_eq_l: float
+    co2_share: float
+    t_c: float
+    ionic_strength_mol_l: float
+    ratio: float | None = None
+    ph: float | None = None
+
+
 @dataclass(frozen=True, slots=True, eq=False, kw_only=True)
 class DriftSpec:
     """What may vary: a season of raw water, errors of single readings, the feed.
@@ -134,6 +147,7 @@ class Plan:
     steps: tuple[StepSpec, ...]
     guards: Guards
     hold: HoldSpec | None
+    digester: DigesterSpec | None
     drift: DriftSpec | None
     limits: Mapping[str, Mapping[str, Any]]
     assumptions: tuple[str, ...]

@@ -12,8 +12,9 @@ from pathlib import Path
 from types import MappingProxyType
 from typing import Any
 
+from aquabuf.assess.plant.digester import ACID_IN_TITRATION
 from aquabuf.assess.plant.faults import Guards
-from aquabuf.assess.plant.plan import DriftSpec, Flow, HoldSpec, Plan, Source
+from aquabuf.assess.plant.plan import DigesterSpec, DriftSpec, Flow, HoldSpec, Plan, Source
 from aquabuf.assess.plant.plan_keys import Checked, check_keys
 from aquabuf.assess.plant.plan_place import Place, shown_value
 from aquabuf.assess.plant.plan_steps import read_steps
@@ -24,7 +25,7 @@ from aquabuf.errors import FileError, InputError
 
 __all__ = ["SECTIONS", "read_plan"]
 
-SECTIONS = ("plan", "flow", "water", "sources", "products", "steps", "hold", "drift", "limits", "guards")
+SECTIONS = ("plan", "flow", "water", "sources", "products", "steps", "hold", "digester", "drift", "limits", "guards")
 
 
 def read_plan(path: str | Path) -> Plan:
@@ -59,7 +60,7 @@ def read_plan(path: str | Path) -> Plan:
         note=head.get("note", ""), flow=_flow(top, content, told), raw=raw, sources=sources, store=store,
         feeds=MappingProxyType({name: feed for name, (_, feed) in products.items()}),
         steps=steps, guards=guards, hold=_hold(top, content, head["use"], guards, told),
-        drift=_drift(top, content, path.parent, told),
+        digester=_digester(top, content, told), drift=_drift(top, content, path.parent, told),
         limits=_limits(top, content), assumptions=tuple(told.assumptions), notes=tuple(told.notes), file=path.name)
 
 
@@ -153,6 +154,20 @@ def _hold(top: Place, content: Mapping[str, Any], use: str, guards: Guards, told
     return HoldSpec(ph=found["ph"], intensity_eq_l=found["intensity"], use=found.get("use", use),
                     window=window, basin_m3=found.get("basin"),
                     fault_eq_l=None if fault is None else fault if found["fault_of"] == "acid" else -fault)
+
+
+def _digester(top: Place, content: Mapping[str, Any], told: Told) -> DigesterSpec | None:
+    if "digester" not in content:
+        return None
+    found = _section(top, content, "digester", told)
+    if found.get("ratio") is not None and found.get("ph") is not None:
+        raise _place(top, "digester").error("a digester comes back to a ratio or to a pH; found both. Remove one.",
+                                            "ph")
+    told.assume(f"[digester]: {100 * ACID_IN_TITRATION:g} % of the volatile acids count in its alkalinity, as for an "
+                f"end point near pH 4")
+    return DigesterSpec(alkalinity_eq_l=found["alkalinity"], volatile_acids_eq_l=found["volatile_acids"],
+                        co2_share=found["co2_share"], t_c=found["temperature"],
+                        ionic_strength_mol_l=found["ionic_strength"], ratio=found.get("ratio"), ph=found.get("ph"))
 
 
 def _drift(top: Place, content: Mapping[str, Any], folder: Path, told: Told) -> DriftSpec | None:

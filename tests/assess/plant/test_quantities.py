@@ -8,7 +8,14 @@ from carbonate_by_hand import BareWater
 from made_streams import IONS, random_streams, stream
 from numpy.testing import assert_allclose, assert_array_equal
 
-from aquabuf.assess.plant.quantities import STEP_QUANTITIES, find_quantity, in_house, in_unit, measured, plant_quantities
+from aquabuf.assess.plant.quantities import (
+    STEP_QUANTITIES,
+    find_quantity,
+    in_house,
+    in_unit,
+    measured,
+    plant_quantities,
+)
 from aquabuf.errors import InputError
 
 # One house unit in the unit of the tables; IUPAC masses Ca 40.078, Mg 24.305, Na 22.990, F 18.998, CaCO3 100.086

@@ -12,15 +12,8 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from aquabuf.assess.plant.steps.base import Finding, StepOutcome
-from aquabuf.assess.plant.steps.coagulate import (
-    alkali_words,
-    as_caco3,
-    as_rows_of,
-    holding,
-    mg_l,
-    residual_alkali,
-    span,
-)
+from aquabuf.assess.plant.steps.coagulate import alkali_words, residual_alkali
+from aquabuf.assess.plant.steps.words import as_caco3, as_rows_of, holding, mg_l, span
 from aquabuf.assess.plant.stream import ALKALINITY, CARBON, Stream
 from aquabuf.errors import InputError
 from aquabuf.units import to_house

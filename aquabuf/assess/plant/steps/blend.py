@@ -13,7 +13,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from aquabuf.assess.plant.steps.base import Finding, StepOutcome
-from aquabuf.assess.plant.steps.coagulate import as_rows_of, holding, span
+from aquabuf.assess.plant.steps.words import as_rows_of, holding, span
 from aquabuf.assess.plant.stream import Stream, mixed
 from aquabuf.errors import InputError
 from aquabuf.units import to_house

@@ -8,9 +8,9 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from aquabuf.assess.plant.steps.base import Dosed, Finding, StepOutcome
-from aquabuf.assess.plant.steps.coagulate import as_caco3, as_rows_of, holding, mg_l, span
 from aquabuf.assess.plant.steps.precipitation import CALCITE, CALCITE_FORMULA, dissolvable_calcite
 from aquabuf.assess.plant.steps.recarbonate import check_carbon_dioxide
+from aquabuf.assess.plant.steps.words import as_caco3, as_rows_of, holding, mg_l, span
 from aquabuf.assess.plant.store import Stocked
 from aquabuf.assess.plant.stream import ALKALINITY, Stream
 from aquabuf.errors import InputError
@@ -54,7 +54,7 @@ class CalciteContactor:
     share: float | None = None
     rate_per_min: float | None = None
     contact_min: float | None = None
-    kind: str = "calcite contactor"
+    kind: str = "contact"
 
     def __post_init__(self) -> None:
         check_calcite(self.name, self.calcite)

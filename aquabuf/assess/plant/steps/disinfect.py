@@ -12,7 +12,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from aquabuf.assess.plant.steps.base import Dosed, Finding, StepOutcome
-from aquabuf.assess.plant.steps.coagulate import as_caco3, as_rows_of, holding, mg_l, span
+from aquabuf.assess.plant.steps.words import as_caco3, as_rows_of, holding, mg_l, span
 from aquabuf.assess.plant.store import Stocked
 from aquabuf.assess.plant.stream import ALKALINITY, Stream
 from aquabuf.chem.products import molar_mass
@@ -65,7 +65,7 @@ class Disinfect:
     dose_mol_l: ArrayLike
     demand_mol_l: ArrayLike = 0.0
     excess_caustic_g_l: float = 0.0
-    kind: str = "disinfect"
+    kind: str = "chlorinate"
 
     def __post_init__(self) -> None:
         product = self.product.product

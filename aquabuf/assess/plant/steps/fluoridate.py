@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from aquabuf.assess.plant.steps.base import Dosed, Finding, StepOutcome
-from aquabuf.assess.plant.steps.coagulate import as_caco3, as_rows_of, holding, mg_l, span
+from aquabuf.assess.plant.steps.words import as_caco3, as_rows_of, holding, mg_l, span
 from aquabuf.assess.plant.store import Stocked
 from aquabuf.assess.plant.stream import Stream
 from aquabuf.chem.products import molar_mass

@@ -16,7 +16,7 @@ from scipy.integrate import cumulative_simpson
 
 from aquabuf.arrays import LN10
 from aquabuf.assess.plant.steps.base import Finding, StepOutcome
-from aquabuf.assess.plant.steps.coagulate import as_rows_of, holding, mg_l, span
+from aquabuf.assess.plant.steps.words import as_rows_of, holding, mg_l, span
 from aquabuf.assess.plant.stream import CARBON, Stream
 from aquabuf.chem.gases import AIR_CO2_PPM, AIR_CO2_YEAR, pco2_of_air
 from aquabuf.engine.balance import protons_lost

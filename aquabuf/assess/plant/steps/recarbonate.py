@@ -9,9 +9,9 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from aquabuf.assess.plant.steps.base import Dosed, Finding, StepOutcome
-from aquabuf.assess.plant.steps.coagulate import as_caco3, as_rows_of, holding, mg_l, span
 from aquabuf.assess.plant.steps.precipitation import CALCITE_FORMULA, Rest, settled
 from aquabuf.assess.plant.steps.soften import LEAST_CALCIUM_MOL_L
+from aquabuf.assess.plant.steps.words import as_caco3, as_rows_of, holding, mg_l, span
 from aquabuf.assess.plant.store import Stocked
 from aquabuf.assess.plant.stream import ALKALINITY, CARBON, Stream
 from aquabuf.engine.water import Water

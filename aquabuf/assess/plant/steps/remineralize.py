@@ -16,8 +16,8 @@ from numpy.typing import ArrayLike, NDArray
 
 from aquabuf.assess.plant.quantities import PlantQuantity, find_quantity, in_house, measured
 from aquabuf.assess.plant.steps.base import Dosed, Finding, StepOutcome
-from aquabuf.assess.plant.steps.coagulate import as_caco3, as_rows_of, holding, mg_l, span
 from aquabuf.assess.plant.steps.recarbonate import carbon_for_ph, check_carbon_dioxide, water_at_ph
+from aquabuf.assess.plant.steps.words import as_caco3, as_rows_of, holding, mg_l, span
 from aquabuf.assess.plant.store import Stocked
 from aquabuf.assess.plant.stream import ALKALINITY, CARBON, Stream
 from aquabuf.errors import InputError

@@ -14,7 +14,6 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from aquabuf.assess.plant.steps.base import Dosed, Finding, StepOutcome
-from aquabuf.assess.plant.steps.coagulate import as_caco3, as_rows_of, holding, mg_l, span
 from aquabuf.assess.plant.steps.precipitation import (
     BRUCITE_FORMULA,
     CALCITE_FORMULA,
@@ -22,6 +21,7 @@ from aquabuf.assess.plant.steps.precipitation import (
     hydroxide_pair_share,
     settled,
 )
+from aquabuf.assess.plant.steps.words import as_caco3, as_rows_of, holding, mg_l, span
 from aquabuf.assess.plant.store import Stocked
 from aquabuf.assess.plant.stream import ALKALINITY, CARBON, Stream, mixed
 from aquabuf.chem.products import molar_mass

@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from aquabuf.assess.plant.steps.base import Finding, StepOutcome
-from aquabuf.assess.plant.steps.coagulate import as_rows_of, holding, span
+from aquabuf.assess.plant.steps.words import as_rows_of, holding, span
 from aquabuf.assess.plant.stream import Stream
 from aquabuf.engine.conditions import LIMITS
 

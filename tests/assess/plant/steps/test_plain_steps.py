@@ -18,7 +18,7 @@ from aquabuf.assess.plant.stream import TOTALS
 WELL = water_of(7.3, 250.0, **dict.fromkeys(TOTALS, 1e-3))
 STEPS = {
     "coagulate": Coagulate(name="s", product=stocked("alum 14-water"), dose_mol_l=6e-5),
-    "disinfect": Disinfect(name="s", product=stocked("sodium hypochlorite"), dose_mol_l=4e-5, demand_mol_l=1e-5),
+    "chlorinate": Disinfect(name="s", product=stocked("sodium hypochlorite"), dose_mol_l=4e-5, demand_mol_l=1e-5),
     "nitrify": Nitrify(name="s", fraction=0.8), "denitrify": Denitrify(name="s", fraction=0.8),
     "aerate": Aerate(name="s", kla_per_h=8.0, time_h=0.3), "saturate": Saturate(name="s", pco2_atm=0.02),
     "blend": Blend(name="s", own_share=2.0, others=(Source("well", WELL, 1.0),)),
