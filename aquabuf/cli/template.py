@@ -12,7 +12,7 @@ __all__ = ["template"]
 @click.command()
 @click.argument("kind", required=False)
 def template(kind: str | None) -> None:
-    """Print a starter file: readings for a KIND of water, titrations, or a map, limits, scheme or event file.
+    """Print a starter file: readings for a KIND of water, titrations, or a map, limits, scheme, event or plan.
 
     Without a KIND, list the kinds there are.
     """

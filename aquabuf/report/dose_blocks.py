@@ -10,8 +10,8 @@ import pandas as pd
 
 from aquabuf.assess.plant.aims import aims_of
 from aquabuf.assess.plant.answer import Answer
-from aquabuf.assess.plant.curve import PH_STEP
-from aquabuf.assess.plant.drift import worst_of
+from aquabuf.assess.plant.curve import PH_STEP, DoseCurve
+from aquabuf.assess.plant.drift import UnderError, UnderFeedError, worst_of
 from aquabuf.assess.plant.feed import both_units, shown
 from aquabuf.assess.plant.feed_lines import FeedLine
 from aquabuf.assess.plant.held import held_words
@@ -24,14 +24,14 @@ from aquabuf.assess.plant.indices import (
     low_point_words,
     potential_words,
 )
-from aquabuf.assess.plant.quantities import measured
+from aquabuf.assess.plant.quantities import find_quantity, measured
 from aquabuf.assess.plant.storage import column_seconds, feed_rules
 from aquabuf.assess.plant.stream import TOTALS
 from aquabuf.assess.uncertainty import COVERAGE
 from aquabuf.report.dose_lines import aligned, block, bullet, figure, sentence, titled
 from aquabuf.units import to_house
 
-__all__ = ["assumptions", "cautions", "hold", "log", "saturation", "season", "store", "upset"]
+__all__ = ["assumptions", "cautions", "digester", "hold", "log", "saturation", "season", "store", "upset"]
 
 BUFFERS_SHOWN = 2
 COLUMNS_ML = (100.0, 250.0, 500.0, 1000.0, 2000.0, 5000.0)  # calibration columns; common sizes, no source
@@ -49,20 +49,30 @@ def upset(answer: Answer) -> str:
     lines += [f"Range of {r.words()} (the other doses held)." for r in answer.ranges]
     e, f = answer.readings_error, answer.feed_error
     if e is not None:
-        lines += [_spreads(e.doses), f"Errors of the readings, these doses held: {worst_of(e)}."]
+        lines += [_spreads(e.doses), f"Errors of the readings, these doses held: {_told(e)}."]
     if f is not None:
         share = ", ".join(f"{100.0 * u:.3g} %" for u in dict.fromkeys(f.relative_u.values()))
-        lines.append(f"Feeds that err by {share} (one standard deviation): {worst_of(f)}.")
+        lines.append(f"Feeds that err by {share} (one standard deviation): {_told(f)}.")
     return titled("WHAT WOULD UPSET IT", *(bullet(line) for line in lines if line), _faults(answer))
 
 
-def _price(c) -> str:
+def _price(c: DoseCurve) -> str:
     """What 0.1 pH costs in dose."""
     ways = [f"{shown(abs(change))} mg/L {'more' if change > 0.0 else 'less'} "
             f"{f'({shown(abs(percent))} %) ' if np.isfinite(percent) else ''}{verb} pH by {PH_STEP:g}"
             for change, percent, verb in ((c.up_mg_l, c.up_percent, "raises"), (c.down_mg_l, c.down_percent, "lowers"))
             if np.isfinite(change)]
     return f"{c.product} in {c.step}, {shown(c.wanted_mg_l)} mg/L: {' and '.join(ways)}."
+
+
+def _told(found: UnderError | UnderFeedError) -> str:
+    """The window that is left most often; where nothing is wanted, how far pH moves."""
+    windows = found.windows
+    if windows["leaves_percent"].notna().any():
+        return worst_of(found)
+    r = windows[windows["quantity"] == find_quantity("ph").label].iloc[-1]
+    return (f"pH of the {r['step']} from {r['value_low']:.2f} to {r['value_high']:.2f} in {100.0 * COVERAGE:.0f} % of "
+            "draws")
 
 
 def _spreads(doses: pd.DataFrame) -> str:
@@ -145,9 +155,9 @@ def _jars(answer: Answer) -> str:
         return ""
     doses = " and ".join(f"{shown(x.mg_l_product)} mg of {x.product.name}" for x in fed)
     gas = any(x.product.product.form == "gas" and x.mol_l[0] > 0.0 for x in answer.feeds)
-    return (f"Jar test before a change: to 1 L of raw water {doses}, weighed as a dilution; one jar with a tenth less, "
-            f"one with a tenth more. {'Gas cannot be weighed into a jar: judge the others only. ' if gas else ''}"
-            "Change the feeds in small steps.")
+    apart = " Gas cannot be weighed into a jar: judge the others only." if gas else ""
+    return (f"Jar test before a change: per liter, in the order of the steps, {doses}, weighed as a dilution; one jar "
+            f"with a tenth less, one with a tenth more.{apart} Change the feeds in small steps.")
 
 
 def _check(line: FeedLine) -> str:
@@ -211,6 +221,11 @@ def hold(answer: Answer) -> str:
 def season(answer: Answer) -> str:
     """What a season of raw water does."""
     return "" if answer.season is None else block("OVER THE SEASON", [sentence(w) for w in answer.season.words()])
+
+
+def digester(answer: Answer) -> str:
+    """How the digester stands."""
+    return block("DIGESTER", [sentence(answer.digester_words)]) if answer.digester_words else ""
 
 
 # ---------------------------------------------------------------- what it rests on

@@ -14,10 +14,11 @@ from aquabuf.assess.plant.answer import Answer
 from aquabuf.assess.plant.steps.blend import Blend
 from aquabuf.errors import InputError
 from aquabuf.report.dose_lines import sentence
-from aquabuf.report.dose_page import PAGE_STYLE, Block, beside, block_of, save_page, stacked
+from aquabuf.report.dose_page import PAGE_STYLE, Block, beside, block_of, save_page, stacked, text_width
 from aquabuf.report.dose_panels import (
     SMALL,
     TRAIN_KEY,
+    fault_names,
     faults_key,
     label_height,
     main_curve,
@@ -46,11 +47,12 @@ __all__ = ["blend_figure", "blends_of", "save_blend", "save_season", "save_sheet
 WIDE, HIGH = 8.27, 11.69    # A4 portrait in inches
 EDGE, GAP = 0.35, 0.08      # of the page; between blocks
 SCALES = (1.2, 1.1, 1.0, 0.9, 0.8)  # of the words that give way to the panels
-LEAST_PANELS, LEAST_AXES = 5.0, 1.1  # inches that the panels want, and the axes of one
-EMPTY, MOST_TRAIN = 0.45, 3.2        # inches of words in place of panels; of the works
+LEAST_PANELS, LEAST_AXES = 4.9, 1.1  # inches that the panels want, and the axes of one
+SHARE, LEAST_WORKS = 0.57, 1.4       # of the upper panels in the room of all; inches of the axes of the works
+EMPTY, MOST_TRAIN = 0.4, 5.0         # inches of words in place of panels; of the works
 FEW_WARNINGS = 3
-AXIS, FAR = 0.5, 0.95       # room for an axis and its words at the left of a panel; for names of feeds
-TITLE, LABELS = 0.2, 0.4    # room above and below a panel
+AXIS = 0.5                  # room for an axis and its words at the left of a panel
+TITLE, LABELS = 0.2, 0.43   # room above and below a panel
 SEASON_WIDE, SEASON_EDGES, PANEL_HIGH, PH_HIGH = 11.0, 2.0, 1.45, 2.2
 BLEND_WIDE, BLEND_HIGH = 8.27, 8.0
 NO_CURVE = "No dose was found, or nothing is dosed: there is no curve to draw."
@@ -94,7 +96,8 @@ def _words(answer: Answer, width: float) -> tuple[list[Block], Block]:
 def _panels(figure: Figure, answer: Answer, top: float, bottom: float, width: float) -> None:
     """Response and faults side by side, the works below, each with its key."""
     drawn = answer.curves or answer.faults
-    middle = top + (0.57 * (bottom - top) if drawn else EMPTY)
+    works = TITLE + LEAST_WORKS + label_height(train_labels(answer, width - AXIS))
+    middle = min(top + SHARE * (bottom - top), bottom - works) if drawn else top + EMPTY
     left = 0.52 * width
     if drawn:
         _response(figure, answer, EDGE, top, left, middle - GAP - top)
@@ -127,10 +130,11 @@ def _faults(figure: Figure, answer: Answer, left: float, top: float, width: floa
     if not answer.faults:
         _say(figure, " ".join((NO_FAULT, *answer.fault_words)), left, top, width)
         return
-    key = stacked(block_of([sentence(w) for w in answer.fault_words], width, SMALL, most=2, bullet="– "),
+    key = stacked(block_of([f"{w}." for w in answer.fault_words], width, SMALL, most=2, bullet="– "),
                   block_of([faults_key(answer)], width, SMALL - 0.5, color=GRAY))
     room = max(height - TITLE - LABELS - key.height, 0.5 * LEAST_AXES)
-    ax = _axes(figure, left + FAR, top + TITLE, width - FAR, room)
+    names = max(text_width(name, SMALL) for name in fault_names(answer)) + 0.1
+    ax = _axes(figure, left + names, top + TITLE, width - names, room)
     plot_faults(answer, ax=ax)
     key.draw(figure, left, top + height - key.height, width)
 
@@ -215,7 +219,7 @@ def blend_figure(answer: Answer, step: str | None = None) -> Figure:
         figure = Figure(figsize=(BLEND_WIDE, BLEND_HIGH))
         FigureCanvasAgg(figure)
         width = BLEND_WIDE - 2.0 * EDGE
-        head = stacked(block_of([f"{answer.plan.name}: blend {passed.step.name}"], width, 13.0, bold=True, most=2),
+        head = stacked(block_of([f"{answer.plan.name}: {passed.step.name}"], width, 13.0, bold=True, most=2),
                        block_of([sentence(f.words) for f in passed.outcome.findings], width, 8.0,
                                 bullet="– ", most=2), gap=0.03)
         head.draw(figure, EDGE, EDGE, width)

@@ -15,7 +15,8 @@ GAP = "  "
 INDENT = "  "
 LEAST_NAME = 12  # characters that a column of names keeps on a narrow page
 HELD = "\u00a0"  # stands for a space at which a line must not break, while lines are made
-BEFORE_UNIT = re.compile(r"(?<=\d) (?=(%|mg/L|meq/L|mmol/L|kg|lb|L/h|L\b|gal|m³|ft³|h\b|d\b|s\b|°C|g\b|mL))|(?<=\bpH) (?=\d)")
+BEFORE_UNIT = re.compile(r"(?<=\d) (?=(%|mg/L|meq/L|mmol/L|kg|lb|L/h|L\b|gal|m³|ft³|h\b|d\b|s\b|°C|g\b|mL))"
+                         r"|(?<=\bpH) (?=\d)")
 
 
 def bullet(text: str, mark: str = "  - ") -> str:

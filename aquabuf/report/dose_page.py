@@ -18,7 +18,8 @@ from matplotlib.textpath import text_to_path
 
 from aquabuf.report.style import INK, STYLE
 
-__all__ = ["LEADING", "PAGE_STYLE", "POINTS", "Block", "Line", "beside", "block_of", "save_page", "stacked", "text_width", "wrapped"]
+__all__ = ["LEADING", "PAGE_STYLE", "POINTS", "Block", "Line", "beside", "block_of", "save_page", "stacked",
+           "text_width", "wrapped"]
 
 LEADING = 1.28   # from line to line, in type sizes
 POINTS = 72.0    # per inch
@@ -26,7 +27,7 @@ MORE = "…"
 _PARTS = re.compile(r"\s+|\S+")
 PAGE_STYLE = STYLE | {"pdf.fonttype": 42,  # type that can be searched
                       "axes.labelsize": 8, "xtick.labelsize": 8, "ytick.labelsize": 8}
-HINTED = 1.02    # widest that the pixels of a screen make a line
+HINTED = 1.03    # widest that the pixels of a screen make a line
 # No date and no program name goes into the files
 METADATA: Mapping[str, Mapping[str, None]] = {
     "png": {"Software": None}, "svg": {"Date": None, "Creator": None},

@@ -7,6 +7,7 @@ from typing import Any
 
 import numpy as np
 from matplotlib.axes import Axes
+from matplotlib.figure import Figure
 from matplotlib.ticker import MaxNLocator
 from numpy.typing import NDArray
 
@@ -14,7 +15,7 @@ from aquabuf.assess.plant.aims import banded
 from aquabuf.assess.plant.answer import Answer
 from aquabuf.assess.plant.answer_json import step_rows
 from aquabuf.assess.plant.curve import DoseCurve
-from aquabuf.assess.plant.faults import FULL, Fault
+from aquabuf.assess.plant.faults import FULL, STOPPED, Fault
 from aquabuf.assess.plant.quantities import find_quantity, in_unit, measured
 from aquabuf.assess.plant.steps.base import Dosed, Held
 from aquabuf.assess.plant.targets import Target
@@ -22,9 +23,9 @@ from aquabuf.report.dose_lines import calcite_words
 from aquabuf.report.dose_page import POINTS, text_width, wrapped
 from aquabuf.report.style import CALM, FAINT, GRAY, INK, WARNED
 
-__all__ = ["SMALL", "TRAIN_KEY", "ax_width", "control_doses", "faults_key", "label_height", "main_curve", "ph_axis",
-           "ph_window", "plot_faults", "plot_response", "plot_train", "response_key", "smooth_response", "train_labels",
-           "window_band"]
+__all__ = ["SMALL", "TRAIN_KEY", "ax_width", "control_doses", "fault_names", "faults_key", "feeds_at_fault",
+           "label_height", "main_curve", "ph_axis", "ph_window", "plot_faults", "plot_response", "plot_train",
+           "response_key", "smooth_response", "train_labels", "window_band"]
 
 Array = NDArray[np.float64]
 
@@ -39,7 +40,10 @@ NAME_LINES = 3          # of a step under its column
 LABEL_LEADING = 1.1
 TRAIN_KEY = ("Below the names: calcium carbonate that the water would dissolve or deposit, mg/L. Shaded: window of pH "
              "of a step. Dashed: guard rails.")
-WORDS_OF_CASE = {True: "stuck", False: "stopped"}
+NAME_ROOM = 1.1         # inches, of a product beside its fault
+ROW_SHARE = 0.75        # of the height of a row that its words take
+HEAD_INCHES = 0.17      # of the words above the rows of feeds
+CASES = {STOPPED: "stopped", FULL: "stuck"}
 
 
 # ---------------------------------------------------------------- dose and response
@@ -72,7 +76,12 @@ def smooth_response(answer: Answer, curve: DoseCurve) -> tuple[Array, Array, Arr
 
 
 def control_doses(answer: Answer, curve: DoseCurve) -> tuple[float, float] | None:
-    """Least and most dose of a curve's product that keep every window [mg/L of product]; None where none does."""
+    """Least and most dose of a curve's product that keep every window [mg/L of product].
+
+    None where none does, and where the product goes in at several steps: its range moves all of them together.
+    """
+    if sum(d.product.name == curve.product for _, d in answer.train.doses()) > 1:
+        return None
     for found in answer.ranges:
         if found.product.name == curve.product and np.isfinite(found.least[0]):
             return float(found.least[0] * curve.wanted_mg_l), float(found.most[0] * curve.wanted_mg_l)
@@ -145,9 +154,14 @@ def response_key(answer: Answer, curve: DoseCurve) -> str:
 
 def ax_width(ax: Axes) -> float:
     """Width of an axis in inches."""
-    figure = ax.get_figure()
-    assert figure is not None
-    return float(ax.get_position().width * figure.get_figure(root=True).get_size_inches()[0])  # type: ignore[union-attr]
+    return _inches(ax)[0]
+
+
+def _inches(ax: Axes) -> tuple[float, float]:
+    figure, box = ax.get_figure(), ax.get_position()
+    assert isinstance(figure, Figure)
+    wide, high = figure.get_size_inches()
+    return float(box.width * wide), float(box.height * high)
 
 
 # ---------------------------------------------------------------- the works
@@ -159,7 +173,7 @@ def train_labels(answer: Answer, width: float) -> list[str]:
     room = 0.94 * width / len(rows)
     names = [wrapped(str(r["name"]), room, SMALL, most=NAME_LINES) for r in rows]
     tall = max(len(n) for n in names)
-    words = [calcite_words(r["ccpp_mg_l"]).replace("-", "not known") for r in rows]
+    words = [calcite_words(r["ccpp_mg_l"]) if np.isfinite(r["ccpp_mg_l"]) else "not known" for r in rows]
     return ["\n".join([*name, *[""] * (tall - len(name)), *wrapped(does, room, SMALL)])
             for name, does in zip(names, words, strict=True)]
 
@@ -177,7 +191,8 @@ def plot_train(answer: Answer, labels: Sequence[str], *, ax: Axes, below: Axes) 
     for each in (ax, below):
         each.set_xlim(-0.5, len(rows) - 0.5)
         each.set_xticks(x)
-    ph_axis(ax, ph)
+    windows = [w for w in (ph_window(answer, s.name) for s in answer.steps) if w is not None]
+    ph_axis(ax, ph, *(end for w in windows for end in (w.low, w.high)))
     low, high = ax.get_ylim()
     ax.set_ylim(low, high + 0.22 * (high - low))
     _rails(ax, answer)
@@ -220,30 +235,49 @@ def _values(ax: Axes, x: Array, y: Array, digits: int) -> None:
 # ---------------------------------------------------------------- faults
 
 
+def feeds_at_fault(answer: Answer) -> list[tuple[Fault, ...]]:
+    """The faults of each feed together, in the order of the answer."""
+    feeds: dict[tuple[str, str], list[Fault]] = {}
+    for fault in answer.faults:
+        feeds.setdefault((fault.product.name, fault.step), []).append(fault)
+    return [tuple(each) for each in feeds.values()]
+
+
 def plot_faults(answer: Answer, *, ax: Axes) -> Axes:
     """pH right behind the step with each feed stuck at full stroke and stopped, against the guard rails."""
-    faults = answer.faults
-    guards = answer.plan.guards
-    place = np.arange(len(faults))[::-1]
-    hours = f" ({faults[0].hours:g} h)" if faults else ""
-    ax.set_title(f"A feed at fault{hours}")
-    ends = [float(v) for f in faults for v in (f.ph_behind[0], f.ph_wanted[0]) if np.isfinite(v)]
+    guards, feeds = answer.plan.guards, feeds_at_fault(answer)
+    every = [f for each in feeds for f in each]
+    ax.set_title(f"A feed at fault ({every[0].hours:g} h)")
+    ends = [float(v) for f in every for v in (f.ph_behind[0], f.ph_wanted[0]) if np.isfinite(v)]
     low, high = min([*ends, guards.ph_low]) - 0.5, max([*ends, guards.over_ph]) + 0.5
-    words = [_beyond(f) for f in faults]
-    room = max((text_width(w, SMALL, True) for w in words), default=0.0) + 0.12
-    share = min(room / ax_width(ax), 0.6)
-    ax.set(xlim=(low, low + (high - low) / (1.0 - share)), ylim=(-0.6, max(len(faults), 1) - 0.4))
+    high_inches = _inches(ax)[1]
+    head = (len(feeds) + 0.1) * HEAD_INCHES / (high_inches - HEAD_INCHES)  # in rows
+    size = min(SMALL, ROW_SHARE * POINTS * high_inches / (len(feeds) + head))
+    rooms = [max(text_width(w, size, True) for w in (case, *(_beyond(f) for f in every if f.case == of))) + 0.1
+             for of, case in CASES.items()]
+    share = min(sum(rooms) / ax_width(ax), 0.6)
+    ax.set(xlim=(low, low + (high - low) / (1.0 - share)), ylim=(-0.6, len(feeds) - 0.5 + head))
     for ph, style in ((guards.ph_low, PASSES), (guards.ph_high, PASSES), (guards.over_ph, OVER)):
-        ax.axvline(ph, label="_rail", zorder=0.8, **style)
-    for y, fault, said in zip(place, faults, words, strict=True):
-        _fault(ax, float(y), fault, said, outside=_outside(answer, fault))
-    for k in range(2, len(faults), 2):
-        ax.axhline(len(faults) - k - 0.5, color=FAINT, lw=0.6, zorder=0.5)
-    ax.set_yticks(place, [_fault_name(answer, f) for f in faults], fontsize=SMALL, parse_math=False)
+        ax.axvline(ph, ymax=(len(feeds) + 0.1) / (len(feeds) + 0.1 + head), label="_rail", zorder=0.8, **style)
+    right = {STOPPED: 1.0 - rooms[1] / ax_width(ax), FULL: 1.0}
+    for case, words in CASES.items():
+        _figure(ax, right[case], len(feeds) - 0.5 + 0.5 * head, words, size, bold=False)
+    for y, each in zip(range(len(feeds) - 1, -1, -1), feeds, strict=True):
+        for fault in each:
+            outside = not guards.ph_low <= fault.ph_behind[0] <= guards.ph_high
+            _fault(ax, float(y), fault, outside=outside)
+            _figure(ax, right[fault.case], y, _beyond(fault), size, bold=outside)
+    ax.set_yticks(range(len(feeds) - 1, -1, -1), fault_names(answer), fontsize=size, parse_math=False)
     ax.tick_params(axis="y", length=0)
-    ax.set_xticks([t for t in range(int(np.ceil(low)), int(high) + 1)])
+    ax.set_xticks(list(range(int(np.ceil(low)), int(high) + 1)))
     ax.set_xlabel("pH right behind the step")
     return ax
+
+
+def _figure(ax: Axes, right: float, y: float, words: str, size: float, *, bold: bool) -> None:
+    """Words that end at a place across the axis."""
+    ax.text(right, y, words, transform=ax.get_yaxis_transform(), ha="right", va="center", fontsize=size, color=INK,
+            fontweight="bold" if bold else "normal", parse_math=False, zorder=5)
 
 
 def faults_key(answer: Answer) -> str:
@@ -251,11 +285,6 @@ def faults_key(answer: Answer) -> str:
     g = answer.plan.guards
     return (f"Ring: pH as planned; arrow: feed stuck at its largest; cross: feed stopped. Dashed: guard rails "
             f"{g.ph_low:g} and {g.ph_high:g}; dotted: {g.over_ph:g}, the most with {g.over_dose:g} times the dose.")
-
-
-def _outside(answer: Answer, fault: Fault) -> bool:
-    guards, ph = answer.plan.guards, float(fault.ph_behind[0])
-    return not guards.ph_low <= ph <= guards.ph_high
 
 
 def _beyond(fault: Fault) -> str:
@@ -266,20 +295,22 @@ def _beyond(fault: Fault) -> str:
     return f"{float(fault.ph_behind[0]):.2f}{f' {passed[-1].name}' if passed else ''}"
 
 
-def _fault_name(answer: Answer, fault: Fault) -> str:
-    """Product and case in two words; the step too where the product goes in at several."""
-    several = len({f.step for f in answer.faults if f.product.name == fault.product.name}) > 1
-    name = wrapped(f"{fault.product.name}, {fault.step}" if several else fault.product.name, 0.85, SMALL, most=1)[0]
-    return f"{name} {WORDS_OF_CASE[fault.case == FULL]}"
+def fault_names(answer: Answer) -> list[str]:
+    """Product of each feed at fault; the step too where the product goes in at several."""
+    first = [each[0] for each in feeds_at_fault(answer)]
+    out = []
+    for fault in first:
+        several = sum(f.product.name == fault.product.name for f in first) > 1
+        parts = (fault.product.name, fault.step) if several else (fault.product.name,)
+        out.append(", ".join(wrapped(part, NAME_ROOM / len(parts), SMALL, most=1)[0] for part in parts))
+    return out
 
 
-def _fault(ax: Axes, y: float, fault: Fault, said: str, *, outside: bool) -> None:
-    """From the pH as wanted (hollow) to that of the fault."""
+def _fault(ax: Axes, y: float, fault: Fault, *, outside: bool) -> None:
+    """From the pH as planned (ring) to that of the fault."""
     wanted, ph = float(fault.ph_wanted[0]), float(fault.ph_behind[0])
     full = fault.case == FULL
     ax.plot([wanted, ph], [y, y], color=GRAY, lw=1.2, label="_way", zorder=2)
-    ax.plot(wanted, y, ls="", marker="o", ms=4.5, mfc="white", mec=INK, label="_now", zorder=3)
+    ax.plot(wanted, y, ls="", marker="o", ms=4.5, mfc="white", mec=INK, label="_planned", zorder=3)
     ax.plot(ph, y, ls="", marker=">" if full else "X", ms=6.5, mec=INK, mew=0.6, mfc=WARNED if outside else CALM,
             label="_stuck" if full else "_stopped", zorder=4)
-    ax.text(0.985, y, said, transform=ax.get_yaxis_transform(), ha="right", va="center", fontsize=SMALL,
-            fontweight="bold" if outside else "normal", color=INK, parse_math=False, zorder=5)

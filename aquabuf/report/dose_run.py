@@ -15,9 +15,10 @@ from aquabuf.assess.plant.answer import Answer, solve_plan
 from aquabuf.assess.plant.answer_json import answer_record
 from aquabuf.assess.plant.plan_file import read_plan
 from aquabuf.report.dose_sheet import dose_sheet
-from aquabuf.report.dose_tables import dose_tables
+from aquabuf.report.dose_tables import dose_tables, sweeps
 from aquabuf.report.files import OutputFolder
 from aquabuf.report.run import sha256
+from aquabuf.report.summary import item
 from aquabuf.report.tables import GrowingTables
 from aquabuf.tables import read_table
 
@@ -26,7 +27,7 @@ __all__ = ["OUTPUT_FILES", "DoseRun", "dose_plan"]
 OUTPUT_FILES = (
     "answer.json", "sheet.txt", "doses.csv", "steps.csv", "curves.csv", "faults.csv", "limits.csv", "errors.csv",
     "season.csv", "season_doses.csv", "blend.csv", "buffers.csv", "run.json", "dose.png", "dose.svg", "season.png",
-    "season.svg")
+    "season.svg", "blend.png", "blend.svg")
 KINDS = ("png", "svg")
 
 
@@ -62,7 +63,8 @@ def dose_plan(path: Path, folder: Path, *, force: bool = False, figure: bool = T
             _draw(answer, out)
         _write_json(out, "run.json", _record(path, hashes, answer))
         written = [name for name in OUTPUT_FILES if fnmatch.filter(out.written, name)]
-    return DoseRun(f"{sheet}\nWritten to {folder.name}: {', '.join(written)}.\n", answer.reason)
+    files = item(f"Written to {folder.name}: {', '.join(written)}.", mark="")
+    return DoseRun(f"{sheet}\n{files}\n", answer.reason)
 
 
 def _write_json(out: OutputFolder, name: str, record: Mapping[str, Any]) -> None:
@@ -71,11 +73,13 @@ def _write_json(out: OutputFolder, name: str, record: Mapping[str, Any]) -> None
 
 
 def _draw(answer: Answer, out: OutputFolder) -> None:
-    from aquabuf.report.dose_figures import save_season, save_sheet  # drawing is slow to import
+    from aquabuf.report.dose_figures import save_blend, save_season, save_sheet  # drawing is slow to import
 
     save_sheet(answer, {kind: out.part(f"dose.{kind}") for kind in KINDS})
     if answer.season is not None:
         save_season(answer, {kind: out.part(f"season.{kind}") for kind in KINDS})
+    if any(sweeps(p) for p in answer.train.passed):
+        save_blend(answer, {kind: out.part(f"blend.{kind}") for kind in KINDS})
 
 
 def _given(path: Path) -> dict[str, Path]:

@@ -54,9 +54,10 @@ def plot_season_dose(season: Season, k: int, *, ax: Axes) -> Axes:
         if np.isfinite(row[name]):
             ax.axhline(row[name], color=CALM, lw=1.1, ls=DASHED, label=f"_{name}", zorder=2)
     ax.yaxis.set_major_locator(MaxNLocator(4))
+    ax.xaxis.set_major_locator(MaxNLocator(12, integer=True))
     ax.set_ylabel("product [mg/L]", fontsize=SMALL + 0.5)
-    known = np.isfinite(row["low_mg_l_product"])
-    band = f": {row['low_mg_l_product']:.3g} to {row['high_mg_l_product']:.3g} mg/L in nine rows of ten" if known else ""
+    low, high = float(row["low_mg_l_product"]), float(row["high_mg_l_product"])
+    band = f": {low:.3g} to {high:.3g} mg/L in nine rows of ten" if np.isfinite(low) else ": no dose found"
     ax.set_title(wrapped(f"{row['product']} in {row['step']}{band}", ax_width(ax), 10.0, bold=True, most=1)[0],
                  parse_math=False)
     return ax
@@ -95,7 +96,7 @@ def plot_season_ph(answer: Answer, *, ax: Axes) -> Axes:
 
 def _line(ax: Axes, x: Array, y: Array, label: str, *, color: str = INK, style: object = "-") -> None:
     few = x.size <= FEW
-    ax.plot(x, y, color=color, lw=1.2, ls=style, marker="o" if few else "", ms=3.0, label=label, zorder=3)  # type: ignore[arg-type]
+    ax.plot(x, y, color=color, lw=1.2, ls=style, marker="o" if few else "", ms=3.0, label=label, zorder=3)
 
 
 def _mark_rows(ax: Axes, season: Season) -> None:
@@ -141,7 +142,7 @@ def _present(passed: Passed, sweep: Sweep) -> float:
 
 
 def plot_blend(passed: Passed, *, ax: Axes, below: Axes) -> Axes:
-    """pH and precipitation potential against the share of a source; the worst ratios and the blend of the plan marked."""
+    """pH and precipitation potential against the share of a source; worst ratios and the plan's own marked."""
     assert isinstance(passed.step, Blend)
     sweep = passed.step.sweep(passed.before)
     x, now = PERCENT * sweep.share, PERCENT * _present(passed, sweep)
@@ -188,4 +189,5 @@ def _potential(ax: Axes, sweep: Sweep, x: Array, potential: Array) -> None:
             right, up = share > 50.0, marker == "^"
             ax.annotate(f"{words}: {abs(value):.1f} mg/L at {share:.3g} %", (share, value),
                         (-8.0 if right else 8.0, 6.0 if up else -6.0), textcoords="offset points", zorder=5,
-                        ha="right" if right else "left", va="bottom" if up else "top", fontsize=SMALL + 0.5)
+                        ha="right" if right else "left", va="bottom" if up else "top", fontsize=SMALL + 0.5,
+                        bbox={"facecolor": "white", "edgecolor": "none", "alpha": 0.85, "pad": 0.8})

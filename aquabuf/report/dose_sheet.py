@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-
 import numpy as np
 
 from aquabuf.assess.plant.answer import Answer
@@ -11,9 +10,11 @@ from aquabuf.assess.plant.feed import FeedRate, both_units, in_us, shown
 from aquabuf.assess.plant.feed_lines import FeedLine
 from aquabuf.assess.plant.quantities import plant_quantities
 from aquabuf.assess.plant.rules import Judged
+from aquabuf.assess.plant.storage import batch, lime_feed
 from aquabuf.report.dose_blocks import (
     assumptions,
     cautions,
+    digester,
     hold,
     log,
     saturation,
@@ -29,8 +30,9 @@ __all__ = ["dose_sheet"]
 SHOWN = (("ph", "pH"), ("alkalinity", "alk."), ("dic", "carbon"), ("calcium", "Ca"), ("hardness", "hard."),
          ("buffer_intensity", "buffer"), ("chloride_sulfate_ratio", "Cl/SO4"), ("larson_ratio", "Larson"),
          ("tds", "TDS"))
-UNITS = ("Alkalinity, hardness and calcite (what would deposit or dissolve) in mg/L as CaCO3, carbon in mmol/L, buffer "
-         "intensity in meq/L per pH, Ca and TDS in mg/L, Cl/SO4 by mass; sat. is the saturation index of calcite.")
+UNITS = ("Alkalinity, hardness, calcite (what would deposit or dissolve): mg/L as CaCO3; carbon: mmol/L; buffer: meq/L "
+         "per pH; Ca, TDS: mg/L; Cl/SO4: by mass; sat.: saturation index of calcite.")
+LIME = "Ca(OH)2"
 TIGHT_FROM = 12  # columns
 
 
@@ -38,7 +40,7 @@ def dose_sheet(answer: Answer) -> str:
     """The whole page; same answer, same text."""
     blocks = [_head(answer), _stop(answer), _feeds(answer), _water(answer), _targets(answer), _rules(answer),
               log(answer), upset(answer), store(answer), saturation(answer), hold(answer), season(answer),
-              assumptions(answer), cautions(answer)]
+              digester(answer), assumptions(answer), cautions(answer)]
     return "\n\n".join(b for b in blocks if b) + "\n"
 
 
@@ -98,7 +100,7 @@ def _feeds(answer: Answer) -> str:
     head = (("product", "step", "mg/L of", "mg/L", "product", "product", "feed", "feed", "set", "day tank"),
             ("", "", "product", "pure", "kg/d", "lb/d", "metric", "US", "%", "lasts h"))
     rows = [_feed_row(line) for line in answer.feeds]
-    said = [words for line in answer.feeds for words in _feed_words(line)]
+    said = [words for line in answer.feeds for words in _feed_words(answer, line)]
     return titled("SET THE FEEDS", aligned(head, rows, left=(0, 1)), *(bullet(w) for w in dict.fromkeys(said)))
 
 
@@ -121,14 +123,30 @@ def _fed(rate: FeedRate) -> tuple[float, str]:
     return (float(rate.l_h[0]), "L/h") if rate.moved else (float(rate.product_kg_h[0]), "kg/h")
 
 
-def _feed_words(line: FeedLine) -> list[str]:
+def _feed_words(answer: Answer, line: FeedLine) -> list[str]:
     p = line.product
     strength = f"{100.0 * p.strength:.4g} % ({p.strength_from})"
     mixture = line.spec.made_up
     moved = "" if mixture is None else f", made up to {100.0 * mixture.fraction:.3g} % of product by mass"
     out = [f"{p.name}: {p.product.name}, {p.product.formula}, {strength}{moved}. "
            f"{sentence(line.setting_words())}{_at_flows(line)}"]
+    out += [f"{p.name}: {words}." for words in _made_up(answer, line)]
     return out + [f"{p.name}, day tank: {v.words()}." for v in line.tank if v.judged[0] and not v.met[0]]
+
+
+def _made_up(answer: Answer, line: FeedLine) -> list[str]:
+    """The recipe of a full day tank, and how much of a lime slurry is solid."""
+    mixture, rate = line.spec.made_up, line.rate
+    if mixture is None or not line.mol_l[0] > 0.0:
+        return []
+    out = [f"to fill the day tank, {batch(line.spec.day_tank_l, mixture).words()}"] if line.spec.day_tank_l else []
+    if line.product.product.formula == LIME:
+        kinds = [p.step.kind for p in answer.train.passed]
+        at = [p.step.name for p in answer.train.passed].index(line.step)
+        found = lime_feed(rate.pure_kg_d, rate.flow_m3_d, answer.train.passed[at].before.t_c, mixture=mixture,
+                          strength=line.product.strength)
+        out.append(found.words(after_filters="coagulate" in kinds[:at]))
+    return out
 
 
 def _at_flows(line: FeedLine) -> str:

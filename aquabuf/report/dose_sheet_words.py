@@ -17,8 +17,8 @@ from aquabuf.report.dose_lines import sentence
 from aquabuf.report.dose_page import Block, Line, beside, block_of, stacked, wrapped
 from aquabuf.report.style import GRAY, INK, WARNED
 
-__all__ = ["LOG", "MOST_WARNINGS", "TIGHT_BELOW", "curve_words", "feeds_block", "foot_block", "head_block", "rate_words", "setting_words",
-           "stop_block", "targets_block", "warnings_block"]
+__all__ = ["LOG", "MOST_WARNINGS", "TIGHT_BELOW", "curve_words", "feeds_block", "foot_block", "head_block",
+           "rate_words", "setting_words", "stop_block", "targets_block", "warnings_block"]
 
 LOG = ("Log each shift: time, flow, raw pH, alkalinity and temperature; pH behind each step; setting, drawdown and "
        "tank level of each feed; lot and strength of each delivery; alarms; who changed what, and why.")
@@ -27,11 +27,13 @@ MOST_REASON, MOST_WARNINGS = 7, 6
 LARGE, LESS = 11.5, 10.0         # points, of the figures to set and of what goes with them
 M3_PER_ML = 1e3
 TIGHT_BELOW = 0.85              # scale
-MOST_ALARM = 6                  # lines on a setting that cannot be made
+MOST_ALARM = 8                  # lines on a setting that cannot be made
 PAD = 0.09                      # around the words of a box [inches]
 COLUMNS = (0.0, 1.95, 3.25, 4.4, 5.55)  # left ends in the table of feeds, for a page of WIDTH
 WIDTH = 7.57
-TITLES = ("Set the feeds", "dose as delivered", "rate", "US units", "setting")
+SET, NOT_SET = "Set the feeds", "Not to be set:"
+PERCENT = 100.0
+TITLES = ("dose as delivered", "rate", "US units", "setting")
 
 
 def head_block(answer: Answer, width: float, scale: float = 1.0) -> Block:
@@ -77,9 +79,6 @@ class _Cell:
 
 def rate_words(line: FeedLine) -> tuple[str, str]:
     """What is fed in metric and US units: volume of what a pump moves, else mass."""
-    found = float(line.mol_l[0])
-    if not np.isfinite(found):
-        return "unknown", "unknown"
     if line.rate.moved:
         return metric_and_us(float(line.rate.l_h[0]), "L/h")
     return metric_and_us(float(line.rate.product_kg_h[0]), "kg/h")
@@ -89,7 +88,7 @@ def setting_words(line: FeedLine) -> tuple[str, str]:
     """What to set in large letters, and what must be known of it."""
     words = line.setting_words()
     if not np.isfinite(line.mol_l[0]):
-        return "no dose", words
+        return "none", words
     if line.mol_l[0] == 0.0:
         return "OFF", "nothing is needed"
     if line.setting is None:
@@ -101,21 +100,22 @@ def setting_words(line: FeedLine) -> tuple[str, str]:
     return f"{knob} {shown(float(line.setting.setting_pct[0]))} %", line.setting.reach.owner
 
 
-def _cells(line: FeedLine) -> tuple[_Cell, ...]:
-    product = line.product
-    known = bool(np.isfinite(line.mol_l[0]))
-    metric, us = rate_words(line)
+def _cells(line: FeedLine, control: str, *, tight: bool) -> tuple[_Cell, ...]:
+    product, rate = line.product, line.rate
+    own = (f"in {line.step}: {product.product.name} ({product.product.formula}), {PERCENT * product.strength:.3g} % by "
+           f"{product.strength_from}")
     setting, about = setting_words(line)
-    is_set = line.setting is not None and line.setting.status[0] == "set" or line.mol_l[0] == 0.0
-    own = f"{product.product.name} ({product.product.formula}), {100.0 * product.strength:.3g} % by {product.strength_from}"
-    per_day = metric_and_us(float(line.rate.product_kg_d[0]), "kg/d") if known else ("", "")
-    made = line.rate.moved.removesuffix(" to pump")
-    also = f"{made + '; ' if made else ''}{per_day[0]} of product" if known else ""
-    dose = metric_and_us(line.mg_l_product, "mg/L") if known else ("no dose", "")
-    pure = f"{shown(line.mg_l_pure)} mg/L pure; {dose[1]}" if known else ""
-    return (_Cell(product.name, f"{own}; in {line.step}", bold=True),
-            _Cell(dose[0], pure, bold=True), _Cell(metric, also), _Cell(us, per_day[1]),
-            _Cell(setting, about, bold=True, color=INK if is_set else WARNED))
+    if not np.isfinite(line.mol_l[0]):
+        return (_Cell(product.name, own, bold=True), _Cell("none", bold=True), _Cell("–"), _Cell("–"),
+                _Cell(setting, about, bold=True, color=WARNED))
+    is_set = line.mol_l[0] == 0.0 or (line.setting is not None and line.setting.status[0] == "set")
+    (metric, us), dose = rate_words(line), metric_and_us(line.mg_l_product, "mg/L")
+    per_day = metric_and_us(float(rate.product_kg_d[0]), "kg/d")
+    moved = "" if tight or not rate.moved else f"{rate.moved.removesuffix(' to pump')}; "
+    return (_Cell(product.name, own, bold=True),
+            _Cell(dose[0], f"{shown(line.mg_l_pure)} mg/L pure", bold=True), _Cell(metric, f"{moved}{per_day[0]}"),
+            _Cell(us, per_day[1] if tight else f"{per_day[1]}; {dose[1]}"),
+            _Cell(setting, control if tight and is_set else about, bold=True, color=INK if is_set else WARNED))
 
 
 def feeds_block(answer: Answer, width: float, scale: float = 1.0) -> Block:
@@ -124,21 +124,33 @@ def feeds_block(answer: Answer, width: float, scale: float = 1.0) -> Block:
     tight = scale < TIGHT_BELOW
     lefts = [c * width / WIDTH for c in COLUMNS]
     rooms = [b - a - 0.08 for a, b in zip(lefts, [*lefts[1:], width + 0.08], strict=True)]
-    head = tuple(Line(x, 0.03, t, 12.0 if k == 0 else 8.0, k == 0) for k, (x, t) in enumerate(zip(lefts, TITLES, strict=True)))
-    parts = [Block(head, (0.26,), 0.29)]
+    titles = tuple(Line(x, 0.05, t, 8.0) for x, t in zip(lefts[1:], TITLES, strict=True))
+    parts = [Block((Line(0.0, 0.03, SET if answer.feasible else NOT_SET, 12.0, True), *titles), (0.26,), 0.29)]
     told: set[str] = set()
     for line in answer.feeds:
-        cells = [_cell_block(c, x, room, scale, 1 if tight else 5) for c, x, room in zip(_cells(line), lefts, rooms, strict=True)]
+        cells = [_cell_block(c, x, room, scale, tight) for c, x, room in
+                 zip(_cells(line, _control(answer, line), tight=tight), lefts, rooms, strict=True)]
         row = tuple(item for cell in cells for item in cell.lines)
         parts.append(Block(row, (), max(c.height for c in cells)))
-        if line.product.name not in told:
-            parts.append(block_of(_range_words(answer, line.product.name), width, 7.0, most=1 if tight else 2))
+        if line.product.name not in told and not tight:
+            parts.append(block_of(_range_words(answer, line.product.name), width, 7.0, most=2))
         told.add(line.product.name)
         parts.append(Block((), (0.02,), 0.06))
     parts.append(block_of(_bases(answer), width, 6.5, color=GRAY, most=2))
     if not answer.feeds:
         parts.append(block_of(["No step of this plan doses a product."], width, 10.0))
     return stacked(*parts)
+
+
+def _control(answer: Answer, line: FeedLine) -> str:
+    """How far the dose of a line may go while every window is kept, in few words."""
+    for r in answer.ranges:
+        if r.product.name == line.product.name and np.isfinite(r.least[0]):
+            low, high = (shown(line.mg_l_product * float(end[0])) for end in (r.least, r.most))
+            several = sum(d.product.name == r.product.name for _, d in answer.train.doses()) > 1
+            also = ", its other feeds alike" if several else ""
+            return (f"keep {low} mg/L or more" if np.isinf(r.most[0]) else f"keep {low} to {high} mg/L") + also
+    return ""
 
 
 def _bases(answer: Answer) -> list[str]:
@@ -150,16 +162,17 @@ def _bases(answer: Answer) -> list[str]:
     return [f"Setting of {', '.join(dict.fromkeys(names))}: {way}." for way, names in ways.items()]
 
 
-def _cell_block(cell: _Cell, x: float, room: float, scale: float, most: int) -> Block:
-    large = block_of([cell.large], x + room, (LARGE if cell.bold else LESS) * scale, bold=cell.bold, color=cell.color, x=x, most=2)
-    alarm = cell.color != INK
-    return stacked(large, block_of([cell.small] if cell.small else [], x + room, 6.5, color=cell.color if alarm else GRAY,
-                                   x=x, most=MOST_ALARM if alarm else most))
+def _cell_block(cell: _Cell, x: float, room: float, scale: float, tight: bool) -> Block:
+    size, alarm = (LARGE if cell.bold else LESS) * scale, cell.color != INK
+    large = block_of([cell.large], x + room, size, bold=cell.bold, color=cell.color, x=x, most=1 if tight else 2)
+    small = [cell.small] if cell.small else []
+    return stacked(large, block_of(small, x + room, 6.5, color=cell.color if alarm else GRAY, x=x,
+                                   most=MOST_ALARM if alarm else 1 if tight else 4))
 
 
 def _range_words(answer: Answer, product: str) -> list[str]:
     """How far the feed may go, in the words of its control range."""
-    return [sentence(r.words()) for r in answer.ranges if r.product.name == product]
+    return [f"{r.words()}." for r in answer.ranges if r.product.name == product]
 
 
 # ---------------------------------------------------------------- targets and warnings
@@ -170,8 +183,8 @@ def targets_block(answer: Answer, width: float) -> Block:
     parts = [block_of(["Targets"], width, 9.0, bold=True)]
     for t in answer.targets:
         reached = t.target.quantity.text(t.reached)
-        parts.append(block_of([f"{t.step}: {t.target.words}; reached {reached}: {'met' if t.met else 'NOT MET'}"], width,
-                              7.5, bold=not t.met, most=3))
+        words = f"{t.step}: {t.target.words}; reached {reached}: {'met' if t.met else 'NOT MET'}"
+        parts.append(block_of([words], width, 7.5, bold=not t.met, most=3))
     if not answer.targets:
         parts.append(block_of(["The plan sets no target; doses are fixed."], width, 7.5))
     return stacked(*parts)
@@ -200,8 +213,8 @@ def foot_block(answer: Answer, width: float, scale: float = 1.0) -> Block:
     """Cautions in two columns, and what to log."""
     size = 6.6 * scale
     half = 0.5 * (width - 0.2)
-    columns = _even(answer.cautions, half, size)
-    cautions = beside(*(block_of(c, half, size, bullet="– ") for c in columns), half + 0.2)
+    left, right = (block_of(c, half, size, bullet="– ") for c in _even(answer.cautions, half, size))
+    cautions = beside(left, right, half + 0.2)
     return stacked(Block((), (0.0,), 0.04), block_of(["Cautions"], width, 8.5, bold=True), cautions,
                    block_of([LOG], width, 7.2 * scale, bold=True), gap=0.02)
 

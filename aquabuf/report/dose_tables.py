@@ -13,7 +13,7 @@ from aquabuf.assess.plant.quantities import in_unit, plant_quantities
 from aquabuf.assess.plant.steps.blend import Blend
 from aquabuf.assess.plant.train import Passed
 
-__all__ = ["dose_tables"]
+__all__ = ["dose_tables", "sweeps"]
 
 PERCENT = 100.0
 FLAT = str | int | float | bool | None
@@ -28,7 +28,7 @@ def dose_tables(answer: Answer, record: Mapping[str, Any]) -> dict[str, pd.DataF
         "faults.csv": _frame([_flat(f) | {"passes": "; ".join(f["passes"])} for f in record["faults"]]),
         "limits.csv": _frame(record["limits"]),
         "errors.csv": _errors(answer),
-        "blend.csv": _joined([_sweep(p) for p in answer.train.passed if _sweeps(p)]),
+        "blend.csv": _joined([_sweep(p) for p in answer.train.passed if sweeps(p)]),
         "buffers.csv": _frame(record["hold"]["buffers"] if record["hold"] else []),
     }
     if answer.season is not None:
@@ -77,7 +77,8 @@ def _errors(answer: Answer) -> pd.DataFrame:
     return pd.DataFrame(rows)[[*lead, *(n for n in names if n not in lead)]]
 
 
-def _sweeps(passed: Passed) -> bool:
+def sweeps(passed: Passed) -> bool:
+    """Whether a step blends and looks at the other ratios too."""
     return isinstance(passed.step, Blend) and passed.step.with_sweep
 
 

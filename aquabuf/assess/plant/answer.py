@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -22,6 +22,7 @@ from aquabuf.assess.plant.plan import Plan
 from aquabuf.assess.plant.ranges import ControlRange, control_range
 from aquabuf.assess.plant.rules import Judged, cautions_of, judged_by, plan_limits
 from aquabuf.assess.plant.steps.base import Finding, Step
+from aquabuf.assess.plant.steps.blend import Blend
 from aquabuf.assess.plant.stream import Stream, stream_of
 from aquabuf.assess.plant.targets import Target
 from aquabuf.assess.plant.train import Train, run_train
@@ -123,17 +124,25 @@ def solve_plan(plan: Plan, *, draws: int | None = None) -> Answer:
     train = run_train(raw, steps)
     feeds = feed_lines(plan, train)
     found = bool(train.feasible()[0])
-    faults, fault_words = _faults(plan, train, feeds) if found else ((), ())
-    ways = _drift(plan, steps, train, draws) if found else (None, None)
+    plain = _without_sweeps(train)
+    faults, fault_words = _faults(plan, plain, feeds) if found else ((), ())
+    ways = _drift(plan, plain, draws) if found else (None, None)
     return Answer(
         plan=plan, raw=raw, pair=str(pair[0]), steps=steps, train=train, feeds=feeds, store=store_lines(plan, feeds),
         targets=tuple(TargetLine(a.step, a.target, float(a.value(train)[0])) for a in aims_of(train)),
         limits=judged_by(train.final, plan_limits(plan)),
-        guards=guard(train, plan.guards) if found else (),
-        curves=_curves(train) if found else (), ranges=_ranges(train) if found else (), faults=faults,
-        fault_words=fault_words, readings_error=ways[0], feed_error=ways[1], season=_season(plan, steps),
+        guards=guard(plain, plan.guards) if found else (),
+        curves=_curves(plain) if found else (), ranges=_ranges(plain) if found else (), faults=faults,
+        fault_words=fault_words, readings_error=ways[0], feed_error=ways[1],
+        season=_season(plan, [p.step for p in plain.passed]),
         hold=_hold(plan, train.final), digester_words=_digester(plan),
         cautions=cautions_of(train, [s.kind for s in plan.steps]))
+
+
+def _without_sweeps(train: Train) -> Train:
+    """The run with blends that do not look at other ratios when they are run again, which only takes time."""
+    return Train(train.raw, tuple(
+        replace(p, step=replace(p.step, with_sweep=False)) if isinstance(p.step, Blend) else p for p in train.passed))
 
 
 def _fed(train: Train) -> list[tuple[int, str]]:
@@ -174,8 +183,7 @@ def _faults(plan: Plan, train: Train, feeds: Sequence[FeedLine]) -> tuple[tuple[
     return tuple(out), tuple(words)
 
 
-def _drift(plan: Plan, steps: Sequence[Step], train: Train, draws: int | None,
-           ) -> tuple[UnderError | None, UnderFeedError | None]:
+def _drift(plan: Plan, train: Train, draws: int | None) -> tuple[UnderError | None, UnderFeedError | None]:
     spec = plan.drift
     draws = (spec.draws if spec else USUAL_DRAWS) if draws is None else draws
     if not draws:
@@ -186,7 +194,7 @@ def _drift(plan: Plan, steps: Sequence[Step], train: Train, draws: int | None,
         u |= {name: np.array([value]) for name, value in spec.errors.items()}
     feed_u = spec.feed_error if spec else USUAL_FEED_U
     of_feeds = under_feed_error(train, relative_u=feed_u, draws=draws, seed=seed) if train.doses() else None
-    return under_error(dict(plan.raw.values), steps, u=u, draws=draws, seed=seed), of_feeds
+    return under_error(dict(plan.raw.values), [p.step for p in train.passed], u=u, draws=draws, seed=seed), of_feeds
 
 
 def _season(plan: Plan, steps: Sequence[Step]) -> Season | None:

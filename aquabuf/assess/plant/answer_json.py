@@ -1,4 +1,4 @@
-"""The answer to a plan as plain numbers, words, lists and dictionaries with documented keys: the content of answer.json.
+"""The answer to a plan as plain numbers, words, lists and dictionaries with documented keys: answer.json.
 
 Keys end in their unit. A value that is not known is None. Doses are of the product as delivered (`_product`) and of
 its active substance (`_pure`); `dose_meq_l` is the alkalinity that a dose adds, negative for acids.
@@ -61,6 +61,7 @@ def answer_record(answer: Answer) -> dict[str, Any]:
         "hold": None if answer.hold is None else {
             "words": held_words(answer.hold.held), "buffers": buffer_rows(answer.hold.buffers)},
         "season": _season(answer.season),
+        "digester": answer.digester_words or None,
     }
     return _plain(record)
 
@@ -192,7 +193,14 @@ def warning_words(answer: Answer) -> list[str]:
            for name, f in _found(answer, severity)]
     out += [f"{j.limit.name}: {j.limit.words} ({j.limit.rule()}, found {_figure(j.value)}; {j.limit.source})"
             f"{_next(j.limit.next_step)}" for j in answer.limits if j.broken]
+    out += [words for line in answer.feeds for words in _feed_warnings(line)]
     return [*out, *answer.plan.notes]
+
+
+def _feed_warnings(line: FeedLine) -> list[str]:
+    """A machine that cannot give the dose, and a day tank that breaks a rule."""
+    out = [f"{line.product.name}: {line.setting_words()}"] if line.out_of_reach else []
+    return out + [f"{line.product.name}, day tank: {v.words()}" for v in line.tank if v.judged[0] and not v.met[0]]
 
 
 def _figure(value: float) -> str:

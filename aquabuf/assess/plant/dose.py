@@ -216,7 +216,7 @@ def _linear(slopes: Array, right: Array) -> tuple[Array, NDArray[np.bool_]]:
         able &= np.abs(np.linalg.det(np.where(able[:, None, None], scaled, 0.0))) > SINGULAR
     out = np.full(right.shape, np.nan)
     if able.any():
-        out[able] = np.linalg.solve(scaled[able], (right / length)[able][:, :, None])[:, :, 0]
+        out[able] = np.linalg.solve(scaled[able], (right[able] / length[able])[:, :, None])[:, :, 0]
     return out, able
 
 
@@ -241,8 +241,8 @@ def _curved(stream: Stream, products: Sequence[Product], straight: Sequence[Poin
             rows = rows[_straight(stream.take(rows), others, here, air_co2_ppm)[1]]
             if not rows.size:
                 continue
-        some, here = stream.take(rows), [Point(p.quantity, of_rows(p.value, stream.rows)[rows]) for p in (*straight, point)]
-        path = _Path(some, products[lead], others, here[:-1], here[-1], air_co2_ppm)
+        here = [Point(p.quantity, of_rows(p.value, stream.rows)[rows]) for p in (*straight, point)]
+        path = _Path(stream.take(rows), products[lead], others, here[:-1], here[-1], air_co2_ppm)
         t = path.root(signs)
         found = np.insert(path.others_at(t, np.arange(rows.size)), lead, t, axis=0)
         with np.errstate(invalid="ignore"):
@@ -257,7 +257,7 @@ def of_rows(value: ArrayLike, rows: int) -> Array:
 
 
 def _turn(t: Array, f: Array) -> tuple[Array, Array]:
-    """Doses (steps, rows) on both sides of the first turn of sign of `f`, steps without a value passed over; else nan."""
+    """Doses on both sides of the first turn of sign of `f` (steps, rows), nan if none; steps without value passed over."""
     near, far = np.full((2, t.shape[1]), np.nan)
     last_t, last_f = np.full((2, t.shape[1]), np.nan)
     for now_t, now_f in zip(t, f, strict=True):
@@ -323,7 +323,8 @@ class _Path:
         batch = max(1, MANY // rows.size)  # few rows: many steps at once
         for first in range(1, steps.size, batch):
             some = steps[first:first + batch]
-            f[first:first + batch, k] = self.off(np.repeat(some, k.size), np.tile(rows[k], some.size)).reshape(-1, k.size)
+            found = self.off(np.repeat(some, k.size), np.tile(rows[k], some.size))
+            f[first:first + batch, k] = found.reshape(-1, k.size)
             near[k], far[k] = _turn(np.broadcast_to(steps[:, None], (steps.size, k.size)), f[:, k])
             k = k[np.isnan(far[k])]
             if not k.size:
@@ -347,10 +348,10 @@ class _Path:
     def _closed_in(self, rows: NDArray[np.intp], near: Array, far: Array) -> Array:
         found, out = np.isfinite(far), np.full(rows.size, np.nan)
         if found.any():
-            q = self.point.quantity
+            close = WELL_WITHIN * self.point.quantity.closeness / self.point.quantity.per_house
             root = elementwise.find_root(
                 self._at, (near[found], far[found]), args=(rows[found].astype(float),),
-                tolerances={"xatol": 0.0, "xrtol": 1e-13, "fatol": WELL_WITHIN * q.closeness / q.per_house, "frtol": 0.0})
+                tolerances={"xatol": 0.0, "xrtol": 1e-13, "fatol": close, "frtol": 0.0})
             out[found] = np.where(root.success, root.x, np.nan)
         return out
 

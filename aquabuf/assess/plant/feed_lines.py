@@ -62,6 +62,11 @@ class FeedLine:
         """Alkalinity that the dose adds; negative for acids. [meq/L]"""
         return float(self.product.meq_l(self.mol_l)[0])
 
+    @property
+    def out_of_reach(self) -> bool:
+        """Whether its pump or feeder cannot give the dose."""
+        return self.setting is not None and self.setting.status[0] in ("too small", "too large")
+
     def setting_words(self) -> str:
         """What to set, in words; what is missing where it cannot be told."""
         if not np.isfinite(self.mol_l[0]):

@@ -32,8 +32,9 @@ TOTALS = ("calcium", "magnesium", "sodium", "potassium", "chloride", "sulfate", 
 class Stream:
     """Water of one or many rows (hours, draws), one-dimensional; read-only.
 
-    totals : by the names in TOTALS, and other weak acids of the raw water (boron); nan where not known. In the balance of acids and bases an unknown total counts as
-        none; what is judged by it (saturation, ratios of ions) stays unknown. [mol/L]
+    totals : by the names in TOTALS, and other weak acids of the raw water (boron); nan where not known. In the balance
+        of acids and bases an unknown total counts as none; what is judged by it (saturation, ratios of ions) stays
+        unknown. [mol/L]
     ionic_strength_mol_l : of the raw water as its readings tell, then followed through everything added or removed.
     solids : formed on the way, by formula, and taken out with the sludge or filter. [mol/L]
     """

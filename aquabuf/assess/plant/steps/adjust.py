@@ -95,8 +95,9 @@ class Adjust:
 
     def _inside(self) -> tuple[Target, ...]:
         """The targets, windows with two ends narrowed by the margin."""
-        return tuple(replace(t, low=t.low + self.margin * (t.high - t.low), high=t.high - self.margin * (t.high - t.low))
-                     if np.isfinite(t.high - t.low) else t for t in self.targets)
+        free = [self.margin * (t.high - t.low) for t in self.targets]
+        return tuple(replace(t, low=t.low + f, high=t.high - f) if np.isfinite(f) else t
+                     for t, f in zip(self.targets, free, strict=True))
 
     def _one_curved(self) -> bool:
         return sum(t.quantity.kind == "curved" for t in self.targets) <= 1
