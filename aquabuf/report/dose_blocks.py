@@ -17,7 +17,6 @@ from aquabuf.assess.plant.feed_lines import FeedLine
 from aquabuf.assess.plant.held import held_words
 from aquabuf.assess.plant.hold import buffer_words
 from aquabuf.assess.plant.indices import (
-    SIGN_HABITS,
     band_names,
     langelier,
     langelier_words,
@@ -49,7 +48,8 @@ def upset(answer: Answer) -> str:
     lines += [f"Range of {r.words()} (the other doses held)." for r in answer.ranges]
     e, f = answer.readings_error, answer.feed_error
     if e is not None:
-        lines += [_spreads(e.doses), f"Errors of the readings, these doses held: {_told(e)}."]
+        held = ", these doses held" if answer.feeds else ""
+        lines += [_spreads(e.doses), f"Errors of the readings{held}: {_told(e)}."]
     if f is not None:
         share = ", ".join(f"{100.0 * u:.3g} %" for u in dict.fromkeys(f.relative_u.values()))
         lines.append(f"Feeds that err by {share} (one standard deviation): {_told(f)}.")
@@ -155,9 +155,9 @@ def _jars(answer: Answer) -> str:
         return ""
     doses = " and ".join(f"{shown(x.mg_l_product)} mg of {x.product.name}" for x in fed)
     gas = any(x.product.product.form == "gas" and x.mol_l[0] > 0.0 for x in answer.feeds)
-    apart = " Gas cannot be weighed into a jar: judge the others only." if gas else ""
-    return (f"Jar test before a change: per liter, in the order of the steps, {doses}, weighed as a dilution; one jar "
-            f"with a tenth less, one with a tenth more.{apart} Change the feeds in small steps.")
+    apart = " Gas cannot be weighed into a jar." if gas else ""
+    return (f"Jar test before a change: per liter, in the order of the steps, {doses}; one jar with a tenth less, one "
+            f"with a tenth more.{apart}")
 
 
 def _check(line: FeedLine) -> str:
@@ -198,7 +198,7 @@ def saturation(answer: Answer) -> str:
     v = measured(final, ("ccpp", "larson_ratio", "chloride_sulfate_ratio", "alkalinity"))
     lines = [langelier_words(langelier(water))]
     if np.isfinite(v["ccpp"][0]):
-        lines[0] += f" Brought to balance it {potential_words(float(v['ccpp'][0]))}. {SIGN_HABITS}"
+        lines[0] += f" Brought to balance it {potential_words(float(v['ccpp'][0]))}."
     caco3 = np.asarray(to_house(v["alkalinity"], "mg/L as CaCO3", "alkalinity", back=True))
     said = [f"{label} {v[name][0]:.2f}: {band}" for name, label in (
         ("larson_ratio", "Larson ratio"), ("chloride_sulfate_ratio", "chloride to sulfate")) if (

@@ -33,6 +33,7 @@ from aquabuf.report.dose_sheet_words import (
     MOST_WARNINGS,
     TIGHT_BELOW,
     curve_words,
+    fault_notes,
     feeds_block,
     foot_block,
     head_block,
@@ -103,7 +104,7 @@ def _panels(figure: Figure, answer: Answer, top: float, bottom: float, width: fl
         _response(figure, answer, EDGE, top, left, middle - GAP - top)
         _faults(figure, answer, EDGE + left + 0.15, top, width - left - 0.15, middle - GAP - top)
     else:
-        _say(figure, " ".join((NO_CURVE, *answer.fault_words)), EDGE, top, width)
+        _say(figure, " ".join((NO_CURVE, *fault_notes(answer))), EDGE, top, width)
     _train(figure, answer, EDGE, middle, width, min(bottom - middle, MOST_TRAIN))
 
 
@@ -128,11 +129,15 @@ def _response(figure: Figure, answer: Answer, left: float, top: float, width: fl
 
 def _faults(figure: Figure, answer: Answer, left: float, top: float, width: float, height: float) -> None:
     if not answer.faults:
-        _say(figure, " ".join((NO_FAULT, *answer.fault_words)), left, top, width)
+        _say(figure, " ".join((NO_FAULT, *fault_notes(answer))), left, top, width)
         return
-    key = stacked(block_of([f"{w}." for w in answer.fault_words], width, SMALL, most=2, bullet="– "),
-                  block_of([faults_key(answer)], width, SMALL - 0.5, color=GRAY))
-    room = max(height - TITLE - LABELS - key.height, 0.5 * LEAST_AXES)
+    signs = block_of([faults_key(answer)], width, SMALL - 0.5, color=GRAY)
+    for most in (3, 2, 1):
+        key = stacked(block_of(fault_notes(answer), width, SMALL - 0.5, most=most, bullet="– "), signs)
+        room = height - TITLE - LABELS - key.height
+        if room >= LEAST_AXES:
+            break
+    room = max(room, 0.5 * LEAST_AXES)
     names = max(text_width(name, SMALL) for name in fault_names(answer)) + 0.1
     ax = _axes(figure, left + names, top + TITLE, width - names, room)
     plot_faults(answer, ax=ax)

@@ -37,7 +37,7 @@ PASSES: Any = {"color": WARNED, "lw": 1.1, "ls": (0, (5, 2))}   # guard rails
 OVER: Any = {"color": WARNED, "lw": 1.1, "ls": (0, (1, 1.5))}   # the rail of an overfeed
 LEAST_PH_SPAN = 1.0     # of an axis
 NAME_LINES = 3          # of a step under its column
-LABEL_LEADING = 1.1
+LABEL_LEADING, LABEL_STEP = 1.1, 1.2  # as the drawing takes it, and from line to line in type sizes
 TRAIN_KEY = ("Below the names: calcium carbonate that the water would dissolve or deposit, mg/L. Shaded: window of pH "
              "of a step. Dashed: guard rails.")
 NAME_ROOM = 1.1         # inches, of a product beside its fault
@@ -180,7 +180,7 @@ def train_labels(answer: Answer, width: float) -> list[str]:
 
 def label_height(labels: Sequence[str]) -> float:
     """Height of the tallest label. [inches]"""
-    return 0.06 + max(len(words.split("\n")) for words in labels) * 1.2 * LABEL_LEADING * SMALL / POINTS
+    return 0.06 + max(len(words.split("\n")) for words in labels) * LABEL_STEP * SMALL / POINTS
 
 
 def plot_train(answer: Answer, labels: Sequence[str], *, ax: Axes, below: Axes) -> Axes:

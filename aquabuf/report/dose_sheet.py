@@ -206,6 +206,7 @@ def _broken(j: Judged) -> str:
     """A broken rule with its value, source and next step."""
     q = next(q for q in plant_quantities().values() if q.column == j.limit.quantity)
     unit = "" if q.unit == "-" else f" {q.unit}"
+    value = f"({calcite_words(j.value)}{unit})" if q.name == "ccpp" else f"{figure(j.value, q.digits)}{unit}"
     rule = f"{j.limit.name}, {j.limit.operator} {j.limit.limit:g}"
-    return (f"{q.label} {figure(j.value, q.digits)}{unit}: {sentence(j.limit.words)} Rule ({rule}): {j.limit.source}."
+    return (f"{q.label} {value}: {sentence(j.limit.words)} Rule ({rule}): {j.limit.source}."
             f"{_next(j.limit.next_step)}")

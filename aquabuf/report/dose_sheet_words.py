@@ -17,8 +17,8 @@ from aquabuf.report.dose_lines import sentence
 from aquabuf.report.dose_page import Block, Line, beside, block_of, stacked, wrapped
 from aquabuf.report.style import GRAY, INK, WARNED
 
-__all__ = ["LOG", "MOST_WARNINGS", "TIGHT_BELOW", "curve_words", "feeds_block", "foot_block", "head_block",
-           "rate_words", "setting_words", "stop_block", "targets_block", "warnings_block"]
+__all__ = ["LOG", "MOST_WARNINGS", "TIGHT_BELOW", "curve_words", "fault_notes", "feeds_block", "foot_block",
+           "head_block", "rate_words", "setting_words", "stop_block", "targets_block", "warnings_block"]
 
 LOG = ("Log each shift: time, flow, raw pH, alkalinity and temperature; pH behind each step; setting, drawdown and "
        "tank level of each feed; lot and strength of each delivery; alarms; who changed what, and why.")
@@ -27,7 +27,7 @@ MOST_REASON, MOST_WARNINGS = 7, 6
 LARGE, LESS = 11.5, 10.0         # points, of the figures to set and of what goes with them
 M3_PER_ML = 1e3
 TIGHT_BELOW = 0.85              # scale
-MOST_ALARM = 8                  # lines on a setting that cannot be made
+OUT_OF_REACH, NO_MACHINE = "OUT OF REACH", "no pump or feeder in the plan"
 PAD = 0.09                      # around the words of a box [inches]
 COLUMNS = (0.0, 1.95, 3.25, 4.4, 5.55)  # left ends in the table of feeds, for a page of WIDTH
 WIDTH = 7.57
@@ -86,15 +86,14 @@ def rate_words(line: FeedLine) -> tuple[str, str]:
 
 def setting_words(line: FeedLine) -> tuple[str, str]:
     """What to set in large letters, and what must be known of it."""
-    words = line.setting_words()
     if not np.isfinite(line.mol_l[0]):
-        return "none", words
+        return "none", line.setting_words()
     if line.mol_l[0] == 0.0:
         return "OFF", "nothing is needed"
     if line.setting is None:
-        return "not known", words
+        return "not known", NO_MACHINE
     if line.setting.status[0] != "set":
-        return "OUT OF REACH", words
+        return OUT_OF_REACH, "see below"
     pump = line.spec.pump if line.rate.moved else None
     knob = pump.sets if pump else "setting"
     return f"{knob} {shown(float(line.setting.setting_pct[0]))} %", line.setting.reach.owner
@@ -132,6 +131,8 @@ def feeds_block(answer: Answer, width: float, scale: float = 1.0) -> Block:
                  zip(_cells(line, _control(answer, line), tight=tight), lefts, rooms, strict=True)]
         row = tuple(item for cell in cells for item in cell.lines)
         parts.append(Block(row, (), max(c.height for c in cells)))
+        if setting_words(line)[0] == OUT_OF_REACH:
+            parts.append(block_of([f"{line.setting_words()}."], width, 6.8, color=WARNED, most=3))
         if line.product.name not in told and not tight:
             parts.append(block_of(_range_words(answer, line.product.name), width, 7.0, most=2))
         told.add(line.product.name)
@@ -167,7 +168,7 @@ def _cell_block(cell: _Cell, x: float, room: float, scale: float, tight: bool) -
     large = block_of([cell.large], x + room, size, bold=cell.bold, color=cell.color, x=x, most=1 if tight else 2)
     small = [cell.small] if cell.small else []
     return stacked(large, block_of(small, x + room, 6.5, color=cell.color if alarm else GRAY, x=x,
-                                   most=MOST_ALARM if alarm else 1 if tight else 4))
+                                   most=1 if tight else 4))
 
 
 def _range_words(answer: Answer, product: str) -> list[str]:
@@ -202,6 +203,16 @@ def warnings_block(answer: Answer, width: float, most: int = MOST_WARNINGS) -> B
     shown_now = found[:most] + ([f"and {rest} more, see the text of the sheet"] if rest > 0 else [])
     return stacked(block_of(["Look out"], width, 9.0, bold=True),
                    block_of(shown_now or ["nothing is warned of"], width, 7.0, bullet="– ", most=2))
+
+
+def fault_notes(answer: Answer) -> list[str]:
+    """What must be known of the faults, each way once with the feeds that it holds for."""
+    ways: dict[str, list[str]] = {}
+    names = dict.fromkeys(line.product.name for line in answer.feeds)
+    for words in answer.fault_words:
+        name = next((n for n in names if words.startswith(f"{n}: ")), "")
+        ways.setdefault(words.removeprefix(f"{name}: "), []).append(name)
+    return [f"{', '.join(dict.fromkeys(of))}: {way}." if any(of) else f"{way}." for way, of in ways.items()]
 
 
 def curve_words(curve: DoseCurve) -> tuple[str, ...]:

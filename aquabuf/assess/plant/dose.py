@@ -257,7 +257,7 @@ def of_rows(value: ArrayLike, rows: int) -> Array:
 
 
 def _turn(t: Array, f: Array) -> tuple[Array, Array]:
-    """Doses on both sides of the first turn of sign of `f` (steps, rows), nan if none; steps without value passed over."""
+    """Doses on both sides of the first turn of sign of `f` (steps, rows), nan if none; steps without value are skipped."""
     near, far = np.full((2, t.shape[1]), np.nan)
     last_t, last_f = np.full((2, t.shape[1]), np.nan)
     for now_t, now_f in zip(t, f, strict=True):
@@ -297,7 +297,7 @@ class _Path:
         name = self.point.quantity.name
         found = measured(sane, [name])[name]
         if name in FAR_BELOW:
-            empty = np.isfinite(sane.carbon_mol_l) & np.isfinite(sane.total("calcium")) & np.isnan(found)
+            empty = (sane.water().status >= 0) & np.isfinite(sane.total("calcium")) & np.isnan(found)
             found = np.where(empty, FAR_BELOW[name], found)
         return found - of_rows(self.point.value, self.stream.rows)[rows]
 

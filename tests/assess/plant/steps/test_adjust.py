@@ -87,6 +87,8 @@ def test_air_of_the_step():
     one, two = (adjust((CAUSTIC,), target("ph_at_air", 8.3), air_co2_ppm=ppm).run(soft()) for ppm in (400.0, 800.0))
     assert_allclose(one.stream.water().at_air(400.0).ph, 8.3, rtol=0, atol=1e-6)
     assert two.doses[0].mol_l[0] > one.doses[0].mol_l[0]
+    window = adjust((CAUSTIC,), target("ph_at_air", 8.3, 8.6), air_co2_ppm=800.0).run(soft())
+    assert_allclose(window.doses[0].mol_l, two.doses[0].mol_l, rtol=1e-6)
 
 
 def test_two_values_that_bend():
