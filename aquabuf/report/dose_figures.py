@@ -132,7 +132,7 @@ def _faults(figure: Figure, answer: Answer, left: float, top: float, width: floa
         _say(figure, " ".join((NO_FAULT, *fault_notes(answer))), left, top, width)
         return
     signs = block_of([faults_key(answer)], width, SMALL - 0.5, color=GRAY)
-    for most in (3, 2, 1):
+    for most in (3, 2):
         key = stacked(block_of(fault_notes(answer), width, SMALL - 0.5, most=most, bullet="– "), signs)
         room = height - TITLE - LABELS - key.height
         if room >= LEAST_AXES:

@@ -212,7 +212,8 @@ def fault_notes(answer: Answer) -> list[str]:
     for words in answer.fault_words:
         name = next((n for n in names if words.startswith(f"{n}: ")), "")
         ways.setdefault(words.removeprefix(f"{name}: "), []).append(name)
-    return [f"{', '.join(dict.fromkeys(of))}: {way}." if any(of) else f"{way}." for way, of in ways.items()]
+    named = {way: ", ".join(dict.fromkeys(name for name in of if name)) for way, of in ways.items()}
+    return [sentence(f"{way}: {names}" if names else way) for way, names in named.items()]
 
 
 def curve_words(curve: DoseCurve) -> tuple[str, ...]:

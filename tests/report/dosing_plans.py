@@ -170,6 +170,11 @@ over_ph = 9.9
 """,
     "many": f'[plan]\nname = "The Great Northern and Upper Vale Joint Works at Long Stretton by the Reservoir, stream B, '
             f'second half of the year"\n{SOFT}{MANY}',
+    "many, stopped": f'[plan]\nname = "Long Stretton"\n{SOFT}{MANY.replace("ph = 8.2", "ph = 9.8")}',
+    "many, no dose": f'[plan]\nname = "Long Stretton"\n{SOFT}{MANY.replace("60 mg/L as CaCO3", "2 mg/L as CaCO3")}',
+    "ten feeds": f'[plan]\nname = "Ten"\n{SOFT}{LIME}{GAS}' + "".join(
+        f'[[steps]]\ndo = "dose"\nname = "feed number {k}"\nproduct = "{"lime" if k % 2 else "gas"}"\ndose = "4 mg/L"\n'
+        for k in range(10)),
     "nitrify": """
 [plan]
 name = "Low Marsh sewage works"

@@ -250,8 +250,8 @@ def test_settings_that_cannot_be_made_are_told(page):
     small = answer_of("many").feeds[1]
     assert setting_words(small)[0] == "OUT OF REACH"
     assert f"{small.setting_words()}." in said(page("many"))
-    assert f"{LONG}, FSA, phosphoric acid, gas: the plan has no pump or feeder, so a stuck feed is taken as 2 times the " \
-           "dose." in fault_notes(answer_of("many"))
+    assert ("The plan has no pump or feeder, so a stuck feed is taken as 2 times the dose: "
+            f"{LONG}, FSA, phosphoric acid, gas.") in fault_notes(answer_of("many"))
 
 
 @pytest.mark.parametrize("name", ["infeasible", "guarded"])

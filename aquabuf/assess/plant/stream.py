@@ -14,6 +14,7 @@ from aquabuf.assess.sample.inputs import Values, ionic_strength, pressure, readi
 from aquabuf.assess.sample.solve import NO_PAIR, believable, choose, groups, has, take_rows, water_of
 from aquabuf.chem.acids import acid_table
 from aquabuf.engine.build import IONS
+from aquabuf.engine.conditions import FRESH_BELOW
 from aquabuf.engine.mix import mix
 from aquabuf.engine.water import Water
 from aquabuf.errors import InputError
@@ -145,7 +146,7 @@ def mixed(streams: Sequence[Stream], volumes: Sequence[ArrayLike]) -> Stream:
 def stream_of(values: Values, options: Options | None = None) -> tuple[Stream, NDArray[np.object_]]:
     """Raw water of readings (house units by column name, one-dimensional) and the pair each row was solved from.
 
-    The known pair is chosen as in an assessment of samples. Rows that cannot be solved are nan and have no pair.
+    The known pair is chosen as in an assessment of samples. Rows that cannot be solved, and salt water, are nan and have no pair.
     Raises InputError where no row can be.
     """
     options = options or Options(draws=0)
@@ -158,12 +159,14 @@ def stream_of(values: Values, options: Options | None = None) -> tuple[Stream, N
     for choice in choices:
         for name, ph_column, rows in groups(values, np.where(pair == "", choice, NO_PAIR).astype(np.int8)):
             water = water_of(take_rows(values, rows), name, ph_column, (), options)
-            good = believable(water)
+            good = believable(water) & ~water.is_marine
             for key, found in (("t_c", water.t_c), ("alkalinity", water.alkalinity_eq_l), ("carbon", water.dic_mol_l),
                                ("strength", water.ionic_strength_mol_l)):
                 solved[key][rows[good]] = found[good]
             pair[rows[good]] = name
     if (pair == "").all():
+        if (np.nan_to_num(reading(values, "salinity")) >= FRESH_BELOW).any():
+            raise InputError("a works treats fresh water, of a salinity below 1; found salt water. Correct the salinity.")
         there = [name for name, mask in has(values, n).items() if mask.any()]
         raise InputError(f"the raw water needs two of pH, alkalinity, carbon and pCO2 that fit together; found "
                          f"{', '.join(there) or 'none'}. Add another, or check these.")

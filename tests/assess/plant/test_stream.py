@@ -233,3 +233,11 @@ def test_readings_without_a_pair():
         stream_of(readings(ph=7.0))
     with pytest.raises(InputError, match="found none"):
         stream_of(readings(calcium_mol_l=1e-3))
+
+
+def test_salt_water_is_refused():
+    """Constants and counting of a works are those of fresh water."""
+    values = {"temperature_c": np.array([10.0]), "ph": np.array([8.0]), "alkalinity_eq_l": np.array([2.3e-3]),
+              "salinity": np.array([30.0])}
+    with pytest.raises(InputError, match=r"treats fresh water, of a salinity below 1; found salt water\. Correct"):
+        stream_of(values)
