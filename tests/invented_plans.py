@@ -149,6 +149,29 @@ name = "blend"
 with = ["permeate"]
 shares = ["60 %"]
 '''
+TWO_STAGES = '''[plan]
+name = "Two stages of gas"
+
+[flow]
+now = "10 ML/d"
+
+[water]
+temperature_c = 11
+ph = 10.8
+alkalinity = "90 mg/L as CaCO3"
+"calcium (mg/L)" = 25
+
+[products.gas]
+is = "carbon dioxide"
+strength = "99.9 %"
+feeder = { largest = "6 kg/h" }
+
+[[steps]]
+do = "recarbonate"
+name = "gas"
+product = "gas"
+ph = [10.0, 8.4]
+'''
 IMPOSSIBLE = FIXED[:FIXED.index("[[steps]]")] + '''[[steps]]
 do = "adjust"
 name = "final pH"

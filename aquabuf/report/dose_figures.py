@@ -51,7 +51,7 @@ SCALES = (1.2, 1.1, 1.0, 0.9, 0.8)  # of the words that give way to the panels
 LEAST_PANELS, LEAST_AXES = 4.9, 1.1  # inches that the panels want, and the axes of one
 SHARE, LEAST_WORKS = 0.57, 1.4       # of the upper panels in the room of all; inches of the axes of the works
 EMPTY, MOST_TRAIN = 0.4, 5.0         # inches of words in place of panels; of the works
-FEW_WARNINGS = 3
+FEW_WARNINGS = 2
 AXIS = 0.5                  # room for an axis and its words at the left of a panel
 TITLE, LABELS = 0.2, 0.43   # room above and below a panel
 SEASON_WIDE, SEASON_EDGES, PANEL_HIGH, PH_HIGH = 11.0, 2.0, 1.45, 2.2
@@ -86,7 +86,8 @@ def _words(answer: Answer, width: float) -> tuple[list[Block], Block]:
     for scale in SCALES:
         most = MOST_WARNINGS if scale >= TIGHT_BELOW else FEW_WARNINGS
         aims = beside(targets_block(answer, half), warnings_block(answer, half, most), half + 0.2)
-        upper = [head_block(answer, width, scale), stop_block(answer, width), feeds_block(answer, width, scale), aims]
+        upper = [head_block(answer, width, scale), stop_block(answer, width, scale),
+                 feeds_block(answer, width, scale), aims]
         foot = foot_block(answer, width, min(scale, 1.0))
         used = sum(b.height + GAP for b in (*upper, foot) if b.height)
         if HIGH - 2.0 * EDGE - used >= LEAST_PANELS:
@@ -132,10 +133,10 @@ def _faults(figure: Figure, answer: Answer, left: float, top: float, width: floa
         _say(figure, " ".join((NO_FAULT, *fault_notes(answer))), left, top, width)
         return
     signs = block_of([faults_key(answer)], width, SMALL - 0.5, color=GRAY)
-    for most in (3, 2):
-        key = stacked(block_of(fault_notes(answer), width, SMALL - 0.5, most=most, bullet="– "), signs)
+    for notes in (fault_notes(answer), ()):
+        key = stacked(block_of(notes, width, SMALL - 0.5, most=2, bullet="– "), signs)
         room = height - TITLE - LABELS - key.height
-        if room >= LEAST_AXES:
+        if room >= 0.75 * LEAST_AXES:
             break
     room = max(room, 0.5 * LEAST_AXES)
     names = max(text_width(name, SMALL) for name in fault_names(answer)) + 0.1

@@ -52,14 +52,14 @@ def head_block(answer: Answer, width: float, scale: float = 1.0) -> Block:
                    block_of([raw, *note], width, 7.5, most=2), gap=0.02)
 
 
-def stop_block(answer: Answer, width: float) -> Block:
+def stop_block(answer: Answer, width: float, scale: float = 1.0) -> Block:
     """Why this plan must not be run; nothing where it may."""
     if answer.feasible:
         return Block()
     reason = sentence(answer.reason or "no doses were found")
     inner = stacked(
-        block_of(["STOP: do not dose by this sheet"], width - PAD, 15.0, bold=True, color="white", x=PAD),
-        block_of([reason], width - PAD, 8.5, color="white", x=PAD, most=MOST_REASON), gap=0.02)
+        block_of(["STOP: do not dose by this sheet"], width - PAD, 14.0 * scale, bold=True, color="white", x=PAD),
+        block_of([reason], width - PAD, max(8.5 * scale, 7.5), color="white", x=PAD, most=MOST_REASON), gap=0.02)
     lines = tuple(Line(o.x, o.y + PAD, o.words, o.size, o.bold, o.color) for o in inner.lines)
     return Block(lines, (), inner.height + 2.0 * PAD, fill="#7d2315")
 
@@ -93,7 +93,7 @@ def setting_words(line: FeedLine) -> tuple[str, str]:
     if line.setting is None:
         return "not known", NO_MACHINE
     if line.setting.status[0] != "set":
-        return OUT_OF_REACH, "see below"
+        return OUT_OF_REACH, f"the rate is {line.setting.status[0]} for it"
     pump = line.spec.pump if line.rate.moved else None
     knob = pump.sets if pump else "setting"
     return f"{knob} {shown(float(line.setting.setting_pct[0]))} %", line.setting.reach.owner
@@ -131,7 +131,7 @@ def feeds_block(answer: Answer, width: float, scale: float = 1.0) -> Block:
                  zip(_cells(line, _control(answer, line), tight=tight), lefts, rooms, strict=True)]
         row = tuple(item for cell in cells for item in cell.lines)
         parts.append(Block(row, (), max(c.height for c in cells)))
-        if setting_words(line)[0] == OUT_OF_REACH:
+        if setting_words(line)[0] == OUT_OF_REACH and (answer.feasible or not tight):
             parts.append(block_of([f"{line.setting_words()}."], width, 6.8, color=WARNED, most=3))
         if line.product.name not in told and not tight:
             parts.append(block_of(_range_words(answer, line.product.name), width, 7.0, most=2))

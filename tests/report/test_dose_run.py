@@ -88,6 +88,7 @@ def test_errors_tell_readings_and_feeds_apart(run):
     found = rows(run()[1], "errors.csv")
     assert {(x["table"], x["erring"]) for x in found} == {("dose", "readings"), ("window", "readings"), ("cause", "readings"),
                                                          ("window", "feeds"), ("cause", "feeds")}
+    assert {x["cause"] for x in found if (x["table"], x["erring"]) == ("window", "feeds")} == {"all together", "lime", "gas"}
     share = sum(float(x["variance_percent"]) for x in found
                 if x["table"] == "cause" and x["erring"] == "readings" and x["quantity"] == "pH" and x["step"] == "final pH")
     assert share == pytest.approx(100.0, abs=0.01)

@@ -146,8 +146,9 @@ def _without_sweeps(train: Train) -> Train:
 
 
 def _fed(train: Train) -> list[tuple[int, str]]:
-    """Place of the step and product of every dose that is not nothing."""
-    return [(k, d.product.name) for k, p in enumerate(train.passed) for d in p.outcome.doses if d.mol_l[0] > 0.0]
+    """Place of the step and product of every dose that is not nothing, each once."""
+    return list(dict.fromkeys(
+        (k, d.product.name) for k, p in enumerate(train.passed) for d in p.outcome.doses if d.mol_l[0] > 0.0))
 
 
 def _curves(train: Train) -> tuple[DoseCurve, ...]:
@@ -165,9 +166,14 @@ def _faults(plan: Plan, train: Train, feeds: Sequence[FeedLine]) -> tuple[tuple[
     """A feed at full stroke and one that stands still, for every product that is fed."""
     out: list[Fault] = []
     words: list[str] = []
+    seen: set[tuple[str, str]] = set()
     for line in feeds:
         if not line.mol_l[0] > 0.0:
             continue
+        if (line.step, line.product.name) in seen:
+            words.append(f"{line.product.name} goes in twice in {line.step}: a fault is looked at where it first does")
+            continue
+        seen.add((line.step, line.product.name))
         most = largest_mol_l(line, plan.flow.now_m3_d)
         small = most is not None and most < line.mol_l[0]
         if most is None:

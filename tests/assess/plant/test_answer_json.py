@@ -200,6 +200,8 @@ def test_price_and_order():
     assert_allclose(lime["cost_per_day"], 0.31 * lime["use_kg_d"], rtol=1e-9)
     assert_allclose(lime["cost_per_1000_m3"], lime["cost_per_day"] / 10.0, rtol=1e-9)
     assert_allclose(lime["cost_per_million_gallons"], lime["cost_per_1000_m3"] * MGD / 1e3, rtol=1e-9)
+    assert_allclose(lime["use_kg_month"], 365.25 / 12.0 * lime["use_kg_d"], rtol=1e-9)
+    assert_allclose([lime["use_lb_d"], lime["use_lb_month"]], [lime["use_kg_d"] / LB, lime["use_kg_month"] / LB], rtol=1e-9)
     assert_allclose(lime["stock_days"], 4000.0 / lime["use_kg_d"], rtol=1e-9)
 
 
