@@ -61,7 +61,8 @@ def dose_responses(path: Path, *, step: str | None = None, product: str | None =
 
 def _chosen(plan: Plan, train: Train, step: str | None, product: str | None) -> list[tuple[Passed, Stocked]]:
     """Steps and products that are asked for. Raises InputError naming those there are where none is."""
-    there = list({(p.step.name, d.product.name): (p, d.product) for p in train.passed for d in p.outcome.doses}.values())
+    there = list({(p.step.name, d.product.name): (p, d.product)
+                  for p in train.passed for d in p.outcome.doses}.values())
     found = [(p, s) for p, s in there if step in (None, p.step.name) and product in (None, s.name)]
     if not found:
         asked = " and ".join(f"{what} {name!r}" for what, name in (("step", step), ("product", product)) if name)

@@ -104,7 +104,8 @@ def _assumptions(run: LakeRun) -> str:
     lines = [
         f"ANC in use: Gran ANC, else alkalinity, else the Gran ANC that ions, organic carbon and aluminum imply, else "
         f"charge balance{f' ({counts})' if counts else ''}.",
-        f"An ANC or alkalinity whose method is not given counts as Gran: {plural(unstated, 'lake')} (column anc_method tells)."
+        f"An ANC or alkalinity whose method is not given counts as Gran: {plural(unstated, 'lake')} "
+        "(column anc_method tells)."
         if unstated
         else "",
         f"ANC titrated to a fixed end point: {plural(end_point, 'lake')}. It is kept in its own column and never used: "

@@ -13,7 +13,7 @@ __all__ = ["starter", "starter_kinds"]
 
 LIMITS_KIND = "limits"
 TITRATION_KINDS = ("titration_points", "titration_samples")
-FILES = {"long_map": "toml", "scheme": "toml", "event": "toml", "plan": "toml"} | dict.fromkeys(TITRATION_KINDS, "csv")  # their endings
+FILES = {"long_map": "toml", "scheme": "toml", "event": "toml", "plan": "toml"} | dict.fromkeys(TITRATION_KINDS, "csv")
 
 
 def starter(kind: str) -> str:

@@ -155,7 +155,8 @@ def test_what_it_rests_on():
     text = joined(block("WHAT IT RESTS ON", "fixed"))
     assert "Raw water solved from pH and alkalinity" in text
     assert "Plummer & Busenberg 1982 with Davies activities" in text
-    assert "calcium, magnesium, sodium" in text and "not given, what needs them is not judged" in text
+    assert "calcium, magnesium, sodium" in text
+    assert "not given, what needs them is not judged" in text
     assert "[guards] ph = [6, 9.5]" in text
 
 

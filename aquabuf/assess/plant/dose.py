@@ -257,7 +257,7 @@ def of_rows(value: ArrayLike, rows: int) -> Array:
 
 
 def _turn(t: Array, f: Array) -> tuple[Array, Array]:
-    """Doses on both sides of the first turn of sign of `f` (steps, rows), nan if none; steps without value are skipped."""
+    """Doses on both sides of the first turn of sign of `f` (steps, rows), nan if none; steps without value skipped."""
     near, far = np.full((2, t.shape[1]), np.nan)
     last_t, last_f = np.full((2, t.shape[1]), np.nan)
     for now_t, now_f in zip(t, f, strict=True):

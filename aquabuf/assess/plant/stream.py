@@ -146,7 +146,8 @@ def mixed(streams: Sequence[Stream], volumes: Sequence[ArrayLike]) -> Stream:
 def stream_of(values: Values, options: Options | None = None) -> tuple[Stream, NDArray[np.object_]]:
     """Raw water of readings (house units by column name, one-dimensional) and the pair each row was solved from.
 
-    The known pair is chosen as in an assessment of samples. Rows that cannot be solved, and salt water, are nan and have no pair.
+    The known pair is chosen as in an assessment of samples. Rows that cannot be solved, and salt water, are nan
+    and have no pair.
     Raises InputError where no row can be.
     """
     options = options or Options(draws=0)
@@ -166,7 +167,8 @@ def stream_of(values: Values, options: Options | None = None) -> tuple[Stream, N
             pair[rows[good]] = name
     if (pair == "").all():
         if (np.nan_to_num(reading(values, "salinity")) >= FRESH_BELOW).any():
-            raise InputError("a works treats fresh water, of a salinity below 1; found salt water. Correct the salinity.")
+            raise InputError("a works treats fresh water, of a salinity below 1; found salt water. "
+                             "Correct the salinity.")
         there = [name for name, mask in has(values, n).items() if mask.any()]
         raise InputError(f"the raw water needs two of pH, alkalinity, carbon and pCO2 that fit together; found "
                          f"{', '.join(there) or 'none'}. Add another, or check these.")

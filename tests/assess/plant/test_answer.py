@@ -35,7 +35,8 @@ def test_a_target_that_is_missed_makes_the_plan_fail():
     """Whatever missed it; the reason has what was reached."""
     answer = answered("upland")[0]
     missed = replace(answer, targets=(TargetLine("final pH", target("ph", 8.0), 8.4),))
-    assert answer.feasible and not missed.feasible
+    assert answer.feasible
+    assert not missed.feasible
     assert missed.reason == "final pH: pH 8.00 not met, 8.40"
 
 
@@ -94,7 +95,8 @@ def test_a_product_that_goes_in_twice(solve, kg_h):
     answer = solve(TWO_STAGES.replace("6 kg/h", f"{kg_h} kg/h"))
     assert [line.product.name for line in answer.feeds] == ["gas", "gas"]
     assert len(answer.curves) == 1
-    assert {f.case for f in answer.faults} >= {"stopped"} and len(answer.faults) <= 2
+    assert {f.case for f in answer.faults} >= {"stopped"}
+    assert len(answer.faults) <= 2
     assert answer.fault_words[-1] == "gas goes in twice in gas: a fault is looked at where it first does"
 
 
@@ -133,7 +135,9 @@ def test_cautions_belong_to_the_products():
     """Lime has its own, caustic has none of lime; those for all stand in each."""
     lime, caustic = (answered(name)[0].cautions for name in ("upland", "fixed"))
     words = {r["hangs_on"]: r["words"] for r in read_table("plant_cautions")}
-    assert words["lime"] in lime and words["lime"] not in caustic
+    assert words["lime"] in lime
+    assert words["lime"] not in caustic
     assert words["strong base"] in caustic
-    assert words["any"] in lime and words["any"] in caustic
+    assert words["any"] in lime
+    assert words["any"] in caustic
     assert words["coagulant"] in answered("river")[0].cautions

@@ -172,7 +172,10 @@ def test_every_broken_rule_has_its_source_and_next_step(name):
     r = record(name)
     broken = [x for x in r["limits"] if x["broken"]]
     for x in broken:
-        assert x["source"] and x["next_step"] and x["words"] and x["value"] is not None
+        assert x["source"]
+        assert x["next_step"]
+        assert x["words"]
+        assert x["value"] is not None
         assert any(x["words"] in w and x["source"] in w and x["next_step"] in w for w in r["warnings"])
     if name in ("upland", "river"):
         assert "chlorine works slowly" in {x["name"] for x in broken}
@@ -225,7 +228,8 @@ def test_season_and_hold():
 def test_saturation_is_never_a_bare_sign():
     """Words, both indices, and the constants by name."""
     found = record("upland")["saturation"]
-    assert "dissolves calcium carbonate" in found["words"] and "Plummer & Busenberg 1982" in found["words"]
+    assert "dissolves calcium carbonate" in found["words"]
+    assert "Plummer & Busenberg 1982" in found["words"]
     assert "printed table" in found["words"]
     assert math.isfinite(found["si_by_table"])
     assert found["si_calcite"] == pytest.approx(step("upland", "tap in summer")["si_calcite"], abs=1e-9)
