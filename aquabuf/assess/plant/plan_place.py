@@ -72,9 +72,6 @@ class Place:
             return do()
         except InputError as error:
             raise self.error(str(error), key) from None
-        except ZeroDivisionError:
-            raise self.error("a formula must count each element once or more; found a count of 0. Correct it.",
-                             key) from None
 
     def unknown(self, key: str, known: Iterable[str], what: str = "a key here") -> InputError:
         """What to say of a name that is not known."""

@@ -123,7 +123,7 @@ MESSAGES = [
     (('strength = "92 %"', 'strength = "80 %"\nstrength_as = "CaO"'), "strength = \"80", r"80 % as CaO is more than pure Ca\(OH\)2 holds"),
     (product('is = "quicklime"\nstrength_as = "CaO"'), "strength_as", r"\[products.new\]: strength_as must go with strength; found none. Add strength or remove strength_as"),
     (product('is = "polyaluminum chloride"\nstrength = "17 %"'), "[products.new]", r"basicity is needed for polyaluminum chloride; it is missing. Take it from the certificate, for example basicity = \"70 %\""),
-    (product('is = "quicklime"\nstrength = "80 %"\nstrength_as = "Ca0"'), "strength = \"80", r"a formula must count each element once or more; found a count of 0. Correct it"),
+    (product('is = "quicklime"\nstrength = "80 %"\nstrength_as = "Ca0"'), "strength = \"80", r"'Ca0' is not a chemical formula: Ca has a count of 0"),
     (product('is = "quicklime"\nbasicity = "70 %"'), "basicity", r"\[products.new\]: 'quicklime' has no basicity; found 0.7"),
     (product('is = "quicklime"\nformula = "CaO"'), "formula", r"formula belongs to a product of your own; found is = 'quicklime'. Write is = \"own\", or remove it"),
     (product('is = "own"\nstrength = "50 %"\nadds = { calcium = 1 }'), "is = \"own\"", r"product 'new' needs the formula or the molar mass"),
