@@ -9,13 +9,12 @@ follows from them:
 held : base that one unit of the carrier has taken up at a pH, counted from the zero level of alkalinity.
 metal : hydroxide in the solid and in dissolved hydroxo complexes, z (C - s) + (z + n) complex.
 
-Reaction invariants: Gustafsson & Waller 1983, Chem. Eng. Sci. 38:389 (recalled). Tables are linear between grid points; the
-pH found agrees with the balance solved directly to about 1e-5.
+Reaction invariants: Gustafsson & Waller 1983, Chem. Eng. Sci. 38:389 (recalled). Tables are linear between grid
+points; the pH found agrees with the balance solved directly to about 1e-5.
 """
 
 from __future__ import annotations
 
-from collections.abc import Sequence
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -176,7 +175,8 @@ class Readout:
         y, c = np.asarray(base_eq_l, dtype=float), np.asarray(amounts, dtype=float)
         shape = np.broadcast_shapes(y.shape, c.shape[1:], () if start is None else np.shape(start))
         y = np.broadcast_to(y, shape)
-        c = np.broadcast_to(c.reshape(c.shape[:1] + (1,) * (len(shape) - c.ndim + 1) + c.shape[1:]), (c.shape[0], *shape))
+        missing = (1,) * (len(shape) - c.ndim + 1)
+        c = np.broadcast_to(c.reshape(c.shape[:1] + missing + c.shape[1:]), (c.shape[0], *shape))
         x = np.array(np.broadcast_to(self.neutral_ph if start is None else start, shape), dtype=float)
         with np.errstate(invalid="ignore"):
             np.clip(x, PH_LEAST, PH_MOST, out=x)
@@ -186,9 +186,8 @@ class Readout:
                 np.clip(x, PH_LEAST, PH_MOST, out=x)
                 rest = ~(np.abs(step) < STEP_DONE)
                 if not rest.any():
-                    return x if shape else np.asarray(x)
-            rows = np.nonzero(rest)
-            x[rows] = self._guarded(y[rows], c[(slice(None), *rows)], x[rows])
+                    return x
+            x[rest] = self._guarded(y[rest], c[:, rest], x[rest])
         return x
 
     def _step(self, x: Array, y: Array, c: Array) -> Array:

@@ -32,6 +32,8 @@ CACO3 = "mg/L as CaCO3"
 BICARBONATE, LIME = "NaHCO3", "Ca(OH)2"
 ACID_IN_TITRATION = 0.85  # share of volatile acids that the alkalinity titration to about pH 4.0 counts (recalled)
 MOST_LIME_MOL_L = 1.0     # search for the lime limit ends here
+NO_BICARBONATE = ("No bicarbonate is left, so that the volatile acids and not the gas set the pH, near their pKa of "
+                  "4.8 or below: measure it.")
 
 
 def acid_ratio(volatile_acids_eq_l: ArrayLike, alkalinity_eq_l: ArrayLike) -> Array:
@@ -102,8 +104,12 @@ class Digester:
 
     @property
     def ph(self) -> Array:
-        """pH that the gas and the bicarbonate alkalinity ask for."""
-        return self.water.ph
+        """pH that the gas and the bicarbonate alkalinity ask for; nan where no bicarbonate is left to set it."""
+        return _ph(self.water)
+
+
+def _ph(water: Water) -> Array:
+    return np.where(water.alkalinity_eq_l > 0.0, water.ph, np.nan)
 
 
 def digester(*, alkalinity_eq_l: ArrayLike, volatile_acids_eq_l: ArrayLike, co2_share: ArrayLike, t_c: ArrayLike,
@@ -137,7 +143,7 @@ def digester(*, alkalinity_eq_l: ArrayLike, volatile_acids_eq_l: ArrayLike, co2_
         alkalinity_eq_l=alkalinity, volatile_acids_eq_l=acids, ratio=ratio, ratio_eq=ratio / per_eq,
         bicarbonate_eq_l=bicarbonate, pco2_atm=pco2, water=water, ratio_band=banded("volatile_acid_ratio", ratio),
         bicarbonate_band=banded("bicarbonate_alkalinity", _mg_l(bicarbonate)),
-        ph_band=banded("digester_ph", water.ph))
+        ph_band=banded("digester_ph", _ph(water)))
 
 
 @dataclass(frozen=True, slots=True, eq=False, kw_only=True)
@@ -215,8 +221,9 @@ def digester_words(found: Digester, alkali: Alkali | None = None, row: int = 0) 
     lines = [f"Volatile acids over alkalinity {at(found.ratio):.2f} mg acetic acid per mg CaCO3 "
              f"({at(found.ratio_eq):.2f} in equivalents), {said(found.ratio_band)}.",
              f"Bicarbonate alkalinity {at(_mg_l(found.bicarbonate_eq_l)):.0f} {CACO3}, {said(found.bicarbonate_band)}.",
-             f"pH {at(found.ph):.2f} with {at(found.pco2_atm):.3f} atm of CO2 in the gas, {said(found.ph_band)}."]
-    if not np.isfinite(at(found.ph)):
+             f"pH {at(found.ph):.2f} with {at(found.pco2_atm):.3f} atm of CO2 in the gas, {said(found.ph_band)}."
+             if at(found.bicarbonate_eq_l) > 0.0 else NO_BICARBONATE]
+    if not np.isfinite(at(found.water.ph)):
         return "The state of the digester is not known: a reading is missing or outside the range of the constants."
     if alkali is not None and at(alkali.added_eq_l) > 0.0:
         lime = 1e3 * molar_mass(LIME)

@@ -23,11 +23,11 @@ from aquabuf.assess.plant.storage import (
 )
 from aquabuf.assess.plant.store import Stocked
 from aquabuf.assess.plant.train import Train
+from aquabuf.errors import InputError
 
 __all__ = ["FeedLine", "StoreLine", "feed_lines", "feed_of", "largest_mol_l", "store_lines"]
 
 Array = NDArray[np.float64]
-MG_PER_G = 1e3
 
 
 @dataclass(frozen=True, slots=True, eq=False, kw_only=True)
@@ -82,7 +82,11 @@ class FeedLine:
 
 @dataclass(frozen=True, slots=True, eq=False, kw_only=True)
 class StoreLine:
-    """One product over all its steps. silo_words, delivery_words : "" where the plan says too little."""
+    """One product over all its steps.
+
+    kg_d, kg_month : use, nan where a dose was not found. silo_words, delivery_words : "" where plan or doses say too
+    little.
+    """
 
     product: Stocked
     spec: FeedSpec
@@ -96,8 +100,17 @@ class StoreLine:
 
 
 def feed_lines(plan: Plan, train: Train) -> tuple[FeedLine, ...]:
-    """A line for every dose of the run, in the order of the steps. The run has one row."""
-    return tuple(_line(plan, step, dosed.product, np.atleast_1d(dosed.mol_l)) for step, dosed in train.doses())
+    """A line for every dose of the run, in the order of the steps. The run has one row.
+
+    Raises InputError naming file and product where what is fed cannot become a rate, as a liquid without its density.
+    """
+    lines = []
+    for step, dosed in train.doses():
+        try:
+            lines.append(_line(plan, step, dosed.product, np.atleast_1d(dosed.mol_l)))
+        except InputError as error:
+            raise InputError(f"{plan.file}, [products.{dosed.product.name}]: {error}") from None
+    return tuple(lines)
 
 
 def _line(plan: Plan, step: str, product: Stocked, mol_l: Array) -> FeedLine:
@@ -151,7 +164,7 @@ def store_lines(plan: Plan, lines: tuple[FeedLine, ...]) -> tuple[StoreLine, ...
 
 def _store_line(plan: Plan, lines: list[FeedLine]) -> StoreLine:
     product, spec = lines[0].product, lines[0].spec
-    kg_d = float(sum(np.nan_to_num(line.rate.product_kg_d[0]) for line in lines))
+    kg_d = float(sum(line.rate.product_kg_d[0] for line in lines))
     price = None if product.price_per_kg is None else cost(
         [kg_d], product.price_per_kg, plan.flow.now_m3_d, plan.currency or "of the plan's currency")
     stock = spec.stock_kg
@@ -160,16 +173,14 @@ def _store_line(plan: Plan, lines: list[FeedLine]) -> StoreLine:
     return StoreLine(
         product=product, spec=spec, kg_d=kg_d, kg_month=float(np.ravel(months_use(kg_d))[0]), cost=price,
         stock_days=float(np.ravel(storage_days(stock, kg_d))[0]) if stock is not None else np.nan, order=due,
-        silo_words=_silo_words(spec, product, kg_d), delivery_words=_delivery_words(spec, kg_d))
+        silo_words=_silo_words(spec, kg_d), delivery_words=_delivery_words(spec, kg_d))
 
 
-def _silo_words(spec: FeedSpec, product: Stocked, kg_d: float) -> str:
+def _silo_words(spec: FeedSpec, kg_d: float) -> str:
     """How much store the use asks for, against what there is."""
     if spec.shipping_d is None or not kg_d > 0.0:
         return ""
-    dry = product.product.form == "solid" and product.density_kg_l is not None
-    found = silo([kg_d], spec.shipping_d, supply=spec.supply, truck_kg=spec.delivery_kg or 0.0,
-                 bulk_density_kg_m3=1e3 * product.density_kg_l if dry else np.nan)  # type: ignore[operator]
+    found = silo([kg_d], spec.shipping_d, supply=spec.supply, truck_kg=spec.delivery_kg or 0.0)
     need = f"a store of {float(found.kg[0]):,.0f} kg ({float(found.days[0]):.3g} d) is asked for"
     if spec.store_kg is None:
         return need
@@ -177,9 +188,16 @@ def _silo_words(spec: FeedSpec, product: Stocked, kg_d: float) -> str:
 
 
 def _delivery_words(spec: FeedSpec, kg_d: float) -> str:
-    if spec.delivery_kg is None or spec.stock_kg is None or spec.store_kg is None or spec.shipping_d is None:
+    """Whether a load ordered now fits when it comes, and how long it lasts."""
+    if spec.delivery_kg is None or spec.stock_kg is None or spec.store_kg is None or spec.shipping_d is None or \
+            np.isnan(kg_d):
         return ""
     found = delivery([spec.delivery_kg], [spec.stock_kg], spec.store_kg, [kg_d], spec.shipping_d)
+    load, lasts, wait = f"a load of {spec.delivery_kg:,.0f} kg", float(found.lasts_d[0]), float(found.wait_d[0])
     if found.fits[0]:
-        return f"a load of {spec.delivery_kg:,.0f} kg fits and lasts {float(found.lasts_d[0]):.3g} d"
-    return f"a load of {spec.delivery_kg:,.0f} kg does not fit yet: wait {float(found.wait_d[0]):.3g} d"
+        return f"{load} fits{f' and lasts {lasts:.3g} d' if np.isfinite(lasts) else ''}"
+    if np.isfinite(wait):
+        return f"{load} does not fit yet: wait {wait:.3g} d"
+    if spec.delivery_kg > spec.store_kg:
+        return f"{load} is more than the store holds, {spec.store_kg:,.0f} kg"
+    return f"{load} does not fit, and nothing is used"

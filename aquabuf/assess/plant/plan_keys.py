@@ -1,4 +1,4 @@
-"""The keys of a plan file and their generic checks; `data/plan_keys.csv` is the one list of them.
+"""The keys of plan and stream files and their generic checks; `plan_keys.csv` and `stream_keys.csv` are the one list.
 
 A section is a table of the plan: "plan", "products", "products.pump", "steps.coagulate" ... Values come out in the
 unit that the list states for their key; what only other tables can tell (products, targets) is looked up elsewhere.
@@ -32,6 +32,7 @@ __all__ = ["Amount", "Checked", "PlanKey", "Window", "check_keys", "check_value"
 
 Window = tuple[float, float]  # an open side is infinite
 
+TABLES = ("plan_keys", "stream_keys")  # of plans and of wastes; their sections do not share names
 STEPS = "steps"
 OR = " or "  # between the dimensions of a key that may have either
 _LEAST, _MOST = "at least ", "at most "
@@ -114,7 +115,7 @@ def _edge(cell: str, missing: float) -> tuple[float, bool]:
 def plan_keys(section: str) -> Mapping[str, PlanKey]:
     """Keys of a section by name, in the order of the list."""
     found = {}
-    for row in read_table("plan_keys"):
+    for row in (row for table in TABLES for row in read_table(table)):
         if row["section"] != section:
             continue
         low, low_open = _edge(row["low"], -math.inf)
@@ -340,5 +341,6 @@ _CHECKS: Mapping[str, Callable[[Place, PlanKey, Any], Any]] = MappingProxyType({
     "text": _text, "flag": _flag, "number": _number, "integer": _integer, "choice": _choice, "date": _date,
     "quantity": _quantity, "window": _window, "dose": _dose, "points": _points, "table": _table, "targets": _table,
     "product": _text, **dict.fromkeys(("products", "words"), lambda p, k, v: _listed(p, k, v, _text)),
-    "shares": lambda p, k, v: _listed(p, k, v, _quantity), "numbers": lambda p, k, v: _listed(p, k, v, _number),
+    **dict.fromkeys(("shares", "quantities"), lambda p, k, v: _listed(p, k, v, _quantity)),
+    "numbers": lambda p, k, v: _listed(p, k, v, _number),
 })

@@ -1,0 +1,183 @@
+"""Stream files (TOML): wastes, the window of the discharge, reagents, site, layout, simulation. Keys: stream_keys.csv.
+
+Numbers with a dimension are strings with their unit, as in plan files. Every mistake is named with its line.
+"""
+
+from __future__ import annotations
+
+import tomllib
+from collections.abc import Mapping
+from pathlib import Path
+from types import MappingProxyType
+from typing import Any
+
+from aquabuf.assess.plant.plan_keys import Checked, check_keys, plan_keys
+from aquabuf.assess.plant.plan_place import Place
+from aquabuf.assess.plant.plan_store import Told, read_product
+from aquabuf.assess.plant.toml_lines import toml_lines
+from aquabuf.assess.tank.job import Job, Site, Trial, Window, Wishes
+from aquabuf.assess.tank.job_wastes import read_wastes
+from aquabuf.assess.tank.profile import Profile, profile_of
+from aquabuf.assess.tank.reagents import Reagent, reagent_of
+from aquabuf.errors import FileError, InputError
+
+__all__ = ["SECTIONS", "read_stream"]
+
+SECTIONS = ("tank", "acids", "wastes", "profile", "window", "reagents", "use", "site", "layout", "simulate")
+
+
+def read_stream(path: str | Path) -> Job:
+    """Read and check a stream file.
+
+    Raises
+    ------
+    FileError
+        The file cannot be read.
+    InputError
+        Not TOML, or a key or value that cannot be used; the message names file, line, key and remedy.
+    """
+    path = Path(path)
+    text = _text(path)
+    content = _parsed(path.name, text)
+    top = Place(path.name, toml_lines(text), (), "top level")
+    for name in content:
+        if name not in SECTIONS:
+            raise top.unknown(name, SECTIONS, "a table of a stream file")
+    told = Told()
+    head = _section(top, content, "tank", told, needed=True)
+    profile, names = _profile(top, content, path.parent, told)
+    arrivals = read_wastes(top, content, path.parent, told, profile_has=names)
+    window = _window(top, content, told)
+    reagents = MappingProxyType(_reagents(top, content, told))
+    use = _section(top, content, "use", told)
+    for kind in ("base", "acid"):
+        _check_use(top, use, kind, reagents)
+    return Job(
+        name=head["name"], date=head.get("date", ""), note=head.get("note", ""), currency=head.get("currency", ""),
+        arrivals=arrivals, window=window, reagents=reagents, base=use.get("base"), acid=use.get("acid"),
+        site=_site(top, content, told), wishes=_wishes(top, content, told, window),
+        trial=_trial(top, content, told), profile=profile, assumptions=tuple(told.assumptions),
+        notes=tuple(told.notes), file=path.name)
+
+
+def _text(path: Path) -> str:
+    try:
+        return path.read_text(encoding="utf-8-sig")
+    except (OSError, ValueError) as error:
+        reason = error.strerror if isinstance(error, OSError) and error.strerror else "not UTF-8 text"
+        raise FileError(f"the stream file {path.name} cannot be read: {reason}. Check the path.") from None
+
+
+def _parsed(file: str, text: str) -> dict[str, Any]:
+    try:
+        return tomllib.loads(text)
+    except tomllib.TOMLDecodeError as error:
+        raise InputError(f"{file} is not valid TOML: {error}. Correct that line.") from None
+    except (RecursionError, ValueError) as error:
+        reason = "brackets within brackets go too deep" if isinstance(error, RecursionError) else str(error)
+        raise InputError(f"{file} is not valid TOML: {reason}. Correct it.") from None
+
+
+def _section(top: Place, content: Mapping[str, Any], name: str, told: Told, *, needed: bool = False) -> Checked:
+    if needed and name not in content:
+        raise InputError(f"{top.file}: a stream file needs [{name}]; it is missing. Add it.")
+    place = top.inner(name, label=f"[{name}]")
+    checked = check_keys(place, place.table(content.get(name, {})), name)
+    told.defaults(place.label, checked)
+    return checked
+
+
+def _window(top: Place, content: Mapping[str, Any], told: Told) -> Window:
+    found = _section(top, content, "window", told, needed=True)
+    place = top.inner("window", label="[window]")
+    low, high = found["ph"]
+    if not low < high:
+        raise place.error(f"ph must have a lower limit below its upper one; found [{low:g}, {high:g}]. Give both.", "ph")
+    aim = found.get("aim")
+    if aim is not None and not low < aim < high:
+        raise place.error(f"aim must lie within the window {low:g} to {high:g}; found {aim:g}. Correct one of them.",
+                          "aim")
+    return Window(low=low, high=high, aim=aim, total_min=found["total"], each_min=found["each"], source=found["source"])
+
+
+def _reagents(top: Place, content: Mapping[str, Any], told: Told) -> dict[str, Reagent]:
+    """Reagents: the keys of a product of a store, and those of a neutralization."""
+    table = top.inner("reagents", label="[reagents]").table(content.get("reagents", {}))
+    if not table:
+        raise InputError(f"{top.file}: a stream file needs one reagent or more in [reagents]; none is there. Add for "
+                         "example [reagents.caustic] with is = \"caustic soda\".")
+    own = plan_keys("reagents")
+    found = {}
+    for name, value in table.items():
+        place = top.inner("reagents", name, label=f"[reagents.{name}]")
+        keys = place.table(value)
+        more = check_keys(place, {k: v for k, v in keys.items() if k in own}, "reagents")
+        stocked, _ = read_product(place, name, {k: v for k, v in keys.items() if k not in own}, told)
+        found[name] = place.tried("is", lambda s=stocked, m=more: reagent_of(
+            s, efficiency=m.get("efficiency"), fed=m.get("fed"), fed_density_kg_l=m.get("fed_density"),
+            residence_min=m.get("residence"), dissolution_per_min=_per_min(m.get("dissolves"))))
+        for words in found[name].assumptions:
+            told.assume(f"{place.label}: {words}")
+    return found
+
+
+def _per_min(per_h: float | None) -> float | None:
+    return None if per_h is None else per_h / 60.0
+
+
+def _check_use(top: Place, use: Checked, kind: str, reagents: Mapping[str, Reagent]) -> None:
+    name = use.get(kind)
+    if name is None:
+        return
+    place = top.inner("use", label="[use]")
+    if name not in reagents:
+        raise place.unknown(name, reagents, "a reagent of [reagents]")
+    if reagents[name].kind != kind:
+        raise place.error(f"{kind} must be a reagent that {'raises' if kind == 'base' else 'lowers'} pH; {name} is "
+                          f"{'an acid' if kind == 'base' else 'a base'}. Name another.", kind)
+
+
+def _profile(top: Place, content: Mapping[str, Any], folder: Path, told: Told) -> tuple[Profile | None, tuple[str, ...]]:
+    if "profile" not in content:
+        return None, ()
+    found = _section(top, content, "profile", told)
+    place = top.inner("profile", label="[profile]")
+    file = folder / found["file"]
+    if not file.is_file():
+        raise place.error(f"file must be a table beside the stream file; found no file {found['file']!r}. Correct the "
+                          "name.", "file")
+    names = tuple(content.get("wastes", {})) if isinstance(content.get("wastes"), dict) else ()
+    profile, words = profile_of(file, names, hold_gaps=found["hold_gaps"])
+    told.notes.extend(words)
+    return profile, names
+
+
+def _site(top: Place, content: Mapping[str, Any], told: Told) -> Site:
+    s = _section(top, content, "site", told)
+    return Site(depth_m=s["depth"], feed_error=s["feed_error"], resolution=s["resolution"], turndown=s["turndown"],
+                line_m=s["line"], line_bore_mm=s["line_bore"], probe_lag_s=s["probe_lag"],
+                probe_noise_ph=s["probe_noise"], outlet_limit_c=s["outlet_limit"], storage_d=s.get("storage"),
+                containment=s["containment"])
+
+
+def _wishes(top: Place, content: Mapping[str, Any], told: Told, window: Window) -> Wishes:
+    w = _section(top, content, "layout", told)
+    place = top.inner("layout", label="[layout]")
+    stages, volumes, points = w.get("stages"), w.get("volumes"), w.get("set_points")
+    counts = {name: n for name, n in (("stages", stages), ("volumes", None if volumes is None else len(volumes)),
+                                      ("set_points", None if points is None else len(points))) if n is not None}
+    if len(set(counts.values())) > 1:
+        told_counts = ", ".join(f"{name} {n}" for name, n in counts.items())
+        raise place.error(f"stages, volumes and set_points must agree in number; found {told_counts}. Correct one.",
+                          next(iter(counts)))
+    if points is not None and not window.low < points[-1] < window.high:
+        raise place.error(f"the last set point must lie within the window {window.low:g} to {window.high:g}; found "
+                          f"{points[-1]:g}. Correct it.", "set_points")
+    return Wishes(stages=next(iter(counts.values()), None), volumes_m3=volumes, set_points=points,
+                  equalization_m3=w.get("equalization"), axis=w["control"], feedforward=w["feedforward"])
+
+
+def _trial(top: Place, content: Mapping[str, Any], told: Told) -> Trial:
+    t = _section(top, content, "simulate", told)
+    return Trial(days=t["days"], step_s=t.get("step"), cases=t["cases"], seed=t["seed"], buffer_sd=t["buffer_spread"],
+                 probe_offset_sd=t["probe_offset"])
