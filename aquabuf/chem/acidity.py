@@ -32,8 +32,9 @@ def _not_negative(**values: ArrayLike) -> dict[str, Array]:
         v = np.asarray(value, dtype=float)
         bad = v < 0.0
         if bad.any():
-            raise InputRangeError(f"{name} must be 0 or more; found {np.atleast_1d(v)[np.atleast_1d(bad)][0]:g}. Enter a "
-                                  "value below detection as 0 or as half the limit.", bad)
+            first = np.atleast_1d(v)[np.atleast_1d(bad)][0]
+            raise InputRangeError(f"{name} must be 0 or more; found {first:g}. Enter a value below detection as 0 or "
+                                  "as half the limit.", bad)
         checked[name] = v
     return checked
 

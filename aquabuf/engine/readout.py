@@ -23,17 +23,18 @@ from numpy.typing import ArrayLike, NDArray
 from aquabuf.arrays import LN10
 from aquabuf.errors import InputError
 
-__all__ = ["GRID_PH", "MetalTable", "Readout"]
+__all__ = ["GRID_PH", "Follower", "MetalTable", "Readout"]
 
 Array = NDArray[np.float64]
 
 PH_LEAST, PH_MOST, PH_STEP = -1.0, 15.0, 0.004
 GRID_PH: Array = np.linspace(PH_LEAST, PH_MOST, round((PH_MOST - PH_LEAST) / PH_STEP) + 1)
-LAST = GRID_PH.size - 2
-BARE_STEPS = 4           # Newton steps from the start before rows are guarded
+BARE_STEPS = 6           # Newton steps from the start before rows are guarded
 STEP_DONE = 2e-3         # of a bare step; what is left after it is its square
+STEP_DONE_METALS = 1e-5  # where a metal begins to fall out the slope jumps, and only a small step says that it is over
 GUARDED_STEPS = 60
 GUARDED_DONE = 1e-7
+CLOSED = 1e-6            # of the gap in asinh: no more to be done
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -58,19 +59,6 @@ class MetalTable:
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class _Lines:
-    """Straight lines of a table between grid points: value a + b pH on each piece."""
-
-    a: Array
-    b: Array
-
-    @classmethod
-    def of(cls, table: Array) -> _Lines:
-        slope = np.diff(table, axis=-1) / PH_STEP
-        return cls(table[..., :-1] - slope * GRID_PH[:-1], slope)
-
-
-@dataclass(frozen=True, slots=True, eq=False)
 class Readout:
     """Tables of some carriers under one set of conditions.
 
@@ -85,8 +73,8 @@ class Readout:
     c_oh: float
     held: Array
     metals: tuple[MetalTable, ...] = ()
-    _lines: _Lines = field(init=False, repr=False)
-    _metal_lines: tuple[tuple[_Lines, _Lines], ...] = field(init=False, repr=False)
+    _lines: Array = field(init=False, repr=False)        # rows: a of each carrier, then b; held is a + b pH
+    _metal_lines: Array = field(init=False, repr=False)  # rows: dissolved (a, b), share in complexes (a, b), per metal
 
     def __post_init__(self) -> None:
         if self.held.ndim != 2 or self.held.shape[1] != GRID_PH.size:
@@ -97,9 +85,10 @@ class Readout:
             j, k = np.argwhere(falls)[0]
             raise InputError(f"the base held by a carrier must rise with pH; carrier {j + 1} falls at pH "
                              f"{GRID_PH[k]:.2f}. Correct its curve.")
-        object.__setattr__(self, "_lines", _Lines.of(self.held))
-        object.__setattr__(self, "_metal_lines", tuple(
-            (_Lines.of(np.log(m.free + m.bound)), _Lines.of(m.bound / (m.free + m.bound))) for m in self.metals))
+        object.__setattr__(self, "_lines", _lines(self.held))
+        over = np.reshape([m.free + m.bound for m in self.metals], (-1, GRID_PH.size))
+        share = np.reshape([m.bound / (m.free + m.bound) for m in self.metals], over.shape)
+        object.__setattr__(self, "_metal_lines", np.concatenate([_lines(over), _lines(share)]))
 
     @property
     def carriers(self) -> int:
@@ -111,6 +100,10 @@ class Readout:
         """pH at which [H+] equals [OH-]."""
         return 0.5 * float(np.log10(self.c_h / self.c_oh))
 
+    @property
+    def _done(self) -> float:
+        return STEP_DONE_METALS if self.metals else STEP_DONE
+
     # ------------------------------------------------------------ at a pH
 
     def base_at(self, ph: ArrayLike, amounts: ArrayLike) -> Array:
@@ -119,15 +112,13 @@ class Readout:
         ph, and amounts without its first axis of carriers, broadcast; pH outside -1 to 15 is nan.
         """
         x, c = self._given(ph, amounts)
-        held, _ = self._held(x, c)
-        return self._water(x) + held
+        return self._water(x) + self._held(x, c)[0]
 
     def buffer_at(self, ph: ArrayLike, amounts: ArrayLike) -> Array:
         """Buffer intensity of a mixture at a pH, the slope of base against pH. [eq/L per pH]"""
         x, c = self._given(ph, amounts)
-        _, slope = self._held(x, c)
         ten = np.exp(LN10 * x)
-        return LN10 * (self.c_oh * ten + self.c_h / ten) + slope
+        return LN10 * (self.c_oh * ten + self.c_h / ten) + self._held(x, c)[1]
 
     def solids_at(self, ph: ArrayLike, amounts: ArrayLike) -> dict[str, Array]:
         """Metal in solid hydroxide at a pH, by its name. [mol/L]"""
@@ -135,84 +126,195 @@ class Readout:
         return {m.name: m.solid(x, np.tensordot(m.per_unit, c, axes=1)) for m in self.metals}
 
     def _given(self, ph: ArrayLike, amounts: ArrayLike) -> tuple[Array, Array]:
-        x, c = np.asarray(ph, dtype=float), np.asarray(amounts, dtype=float)
+        x, c = np.asarray(ph, dtype=float), self._checked(amounts)
+        shape = np.broadcast_shapes(x.shape, c.shape[1:])
+        return np.broadcast_to(np.where((x >= PH_LEAST) & (x <= PH_MOST), x, np.nan), shape), _stretched(c, shape)
+
+    def _checked(self, amounts: ArrayLike) -> Array:
+        c = np.asarray(amounts, dtype=float)
         if c.ndim == 0 or c.shape[0] != self.carriers:
             raise InputError(f"amounts need one row per carrier ({self.carriers}); found shape {c.shape}. "
                              "Put carriers on the first axis.")
-        return np.where((x >= PH_LEAST) & (x <= PH_MOST), x, np.nan), c
+        return c
 
     def _water(self, x: Array) -> Array:
         ten = np.exp(LN10 * x)
         return self.c_oh * ten - self.c_h / ten
 
     def _held(self, x: Array, c: Array) -> tuple[Array, Array]:
-        """Base held by carriers and metals, and its slope against pH."""
-        k = np.clip(np.nan_to_num((x - PH_LEAST) / PH_STEP), 0, LAST).astype(np.intp)
-        value: Array = np.zeros(np.broadcast_shapes(x.shape, c.shape[1:]))
-        slope = np.zeros(value.shape)
-        for j in range(self.carriers):
-            b = self._lines.b[j][k]
-            value += c[j] * (self._lines.a[j][k] + b * x)
-            slope += c[j] * b
-        for m, (over, share) in zip(self.metals, self._metal_lines, strict=True):
-            total = np.tensordot(m.per_unit, c, axes=1)
-            s, up = np.exp(over.a[k] + over.b[k] * x), share.a[k] + share.b[k] * x
-            is_solid = total > s
-            dissolved = np.where(is_solid, s, total)
-            value += m.charge * (total - dissolved) + m.complex_charge * dissolved * up
-            ds = np.where(is_solid, s * over.b[k], 0.0)
-            slope += -m.charge * ds + m.complex_charge * (ds * up + dissolved * share.b[k])
-        return value, slope
+        """Base held by carriers and metals, and its slope against pH; x and c of one shape."""
+        rows = x.shape or (1,)
+        held = _Held(self, rows)
+        with np.errstate(invalid="ignore"):
+            held.give(c.reshape(c.shape[:1] + rows))
+            held.at(x.reshape(rows))
+        return held.value.reshape(x.shape), held.slope.reshape(x.shape)
 
     # ------------------------------------------------------------ pH
 
     def ph(self, base_eq_l: ArrayLike, amounts: ArrayLike, start: ArrayLike | None = None) -> Array:
         """pH of mixtures with this base and these amounts; nan where base is not finite or no pH from -1 to 15 fits.
 
-        Newton's method on asinh(rest / 2 sqrt(Kw)), in which water alone is a straight line; `start` is a first guess
-        (the pH a moment ago). Rows that do not settle at once are kept between two bounds and halved.
+        `start` is a first guess (the pH a moment ago). Rows that do not settle at once are kept between two bounds and
+        halved.
         """
-        y, c = np.asarray(base_eq_l, dtype=float), np.asarray(amounts, dtype=float)
-        shape = np.broadcast_shapes(y.shape, c.shape[1:], () if start is None else np.shape(start))
-        y = np.broadcast_to(y, shape)
-        missing = (1,) * (len(shape) - c.ndim + 1)
-        c = np.broadcast_to(c.reshape(c.shape[:1] + missing + c.shape[1:]), (c.shape[0], *shape))
-        x = np.array(np.broadcast_to(self.neutral_ph if start is None else start, shape), dtype=float)
+        y, c = np.asarray(base_eq_l, dtype=float), self._checked(amounts)
+        asked = np.broadcast_shapes(y.shape, c.shape[1:], () if start is None else np.shape(start))
+        shape = asked or (1,)
+        y, c = np.broadcast_to(y, shape), _stretched(c, shape)
+        newton = Follower(self, shape, self.neutral_ph if start is None else start,
+                          done=self._done)
         with np.errstate(invalid="ignore"):
-            np.clip(x, PH_LEAST, PH_MOST, out=x)
-            for _ in range(BARE_STEPS):
-                step = self._step(x, y, c)
-                x += step
-                np.clip(x, PH_LEAST, PH_MOST, out=x)
-                rest = ~(np.abs(step) < STEP_DONE)
-                if not rest.any():
-                    return x
-            x[rest] = self._guarded(y[rest], c[:, rest], x[rest])
-        return x
+            x = newton.follow(y, c)
+            outside = (y < self._edge(PH_LEAST, c)) | (y > self._edge(PH_MOST, c))
+            return np.where(np.isfinite(y) & np.isfinite(c).all(axis=0) & ~outside, x, np.nan).reshape(asked)
 
-    def _step(self, x: Array, y: Array, c: Array) -> Array:
-        held, slope = self._held(x, c)
-        rest = y - held
-        least = 4.0 * self.c_h * self.c_oh
-        gap = np.arcsinh(rest / np.sqrt(least)) - LN10 * (x - self.neutral_ph)
-        return gap / (LN10 + slope / np.sqrt(rest * rest + least))
-
-    def _guarded(self, y: Array, c: Array, x: Array) -> Array:
-        """The same between bounds that only come closer; one-dimensional."""
-        low, high = np.full(x.shape, PH_LEAST), np.full(x.shape, PH_MOST)
-        x = np.where(np.isfinite(x), x, self.neutral_ph)
-        last = np.full(x.shape, np.inf)
-        for _ in range(GUARDED_STEPS):
-            step = self._step(x, y, c)
-            low, high = np.where(step > 0.0, x, low), np.where(step > 0.0, high, x)
-            new = x + step
-            new = np.where((new > low) & (new < high) & (np.abs(step) < 0.5 * last), new, 0.5 * (low + high))
-            last, x = np.abs(new - x), new
-            if (last < GUARDED_DONE).all():
-                break
-        outside = (y < self._edge(PH_LEAST, c)) | (y > self._edge(PH_MOST, c))
-        return np.where(np.isfinite(y) & np.isfinite(c).all(axis=0) & ~outside, x, np.nan)
+    def follower(self, shape: tuple[int, ...], start: ArrayLike) -> Follower:
+        """Keeps the pH of mixtures that change a little from call to call; starts from a guess."""
+        return Follower(self, shape, start, done=self._done)
 
     def _edge(self, ph: float, c: Array) -> Array:
         x = np.full(c.shape[1:], ph)
         return self._water(x) + self._held(x, c)[0]
+
+
+class _Held:
+    """Base held by carriers and metals at a pH, with its slope, in arrays of one shape that are used again."""
+
+    def __init__(self, tables: Readout, shape: tuple[int, ...]):
+        j, m = tables.carriers, len(tables.metals)
+        self._lines, self._metal_lines, self._j, self._m = tables._lines, tables._metal_lines, j, m
+        each = (m,) + (1,) * len(shape)
+        self._charge = np.reshape([float(t.charge) for t in tables.metals], each)
+        self._complex = np.reshape([float(t.complex_charge) for t in tables.metals], each)
+        self._per_unit = [np.reshape([t.per_unit[i] for t in tables.metals], each) for i in range(j)]
+        self._position, self._piece = np.empty(shape), np.empty(shape, dtype=np.intp)
+        self._ab, self._sum, self._part = np.empty((2 * j, *shape)), np.empty((2, *shape)), np.empty((2, *shape))
+        self._metal_ab = np.empty((4 * m, *shape))
+        self.value, self.slope = np.empty(shape), self._sum[1]
+
+    def give(self, c: Array) -> None:
+        """Take amounts of the carriers, shape (J, ...), for the calls that follow."""
+        self._c = c
+        if self._m:
+            self._total = sum((p * c[i] for i, p in enumerate(self._per_unit)), start=np.zeros_like(self._charge))
+
+    def at(self, x: Array) -> None:
+        """Set `value` [eq/L] and `slope` [eq/L per pH] for the pH `x`."""
+        position, total, part = self._position, self._sum, self._part
+        np.subtract(x, PH_LEAST, out=position)
+        np.multiply(position, 1.0 / PH_STEP, out=position)
+        np.copyto(self._piece, position, casting="unsafe")
+        np.take(self._lines, self._piece, axis=1, out=self._ab, mode="clip")
+        if self._j == 0:
+            total.fill(0.0)
+        for i, amount in enumerate(self._c):
+            np.multiply(self._ab[i::self._j], amount, out=part if i else total)
+            if i:
+                np.add(total, part, out=total)
+        np.multiply(total[1], x, out=self.value)
+        np.add(self.value, total[0], out=self.value)
+        if self._m:
+            self._add_metals(x)
+
+    def _add_metals(self, x: Array) -> None:
+        """z per metal in the solid, and what the dissolved complexes hold."""
+        m, total = self._m, self._total
+        ab = np.take(self._metal_lines, self._piece, axis=1, out=self._metal_ab, mode="clip")
+        over, up = ab[:m] + ab[m:2 * m] * x, ab[2 * m:3 * m] + ab[3 * m:] * x
+        is_solid = total > over
+        dissolved = np.where(is_solid, over, total)
+        change = np.where(is_solid, ab[m:2 * m], 0.0)
+        held = self._charge * (total - dissolved) + self._complex * dissolved * up
+        slope = self._complex * (change * up + dissolved * ab[3 * m:]) - self._charge * change
+        for i in range(m):
+            np.add(self.value, held[i], out=self.value)
+            np.add(self.slope, slope[i], out=self.slope)
+
+
+class Follower:
+    """pH of mixtures from one moment to the next: starts from the last pH, and works in arrays that are used again.
+
+    ph : the last pH found, changed by `follow`. Base beyond pH -1 or 15 is held at that pH.
+    """
+
+    def __init__(self, tables: Readout, shape: tuple[int, ...], start: ArrayLike, done: float):
+        self._tables, self._held, self._done = tables, _Held(tables, shape), done
+        self.ph: Array = np.array(np.broadcast_to(np.clip(start, PH_LEAST, PH_MOST), shape), dtype=float)
+        self._step, self._z, self._per_base = np.empty(shape), np.empty(shape), np.empty(shape)
+        self._open = np.empty(shape, dtype=bool)
+        self._least = 4.0 * tables.c_h * tables.c_oh
+        self._neutral = LN10 * tables.neutral_ph
+
+    def follow(self, base_eq_l: Array, amounts: Array) -> Array:
+        """PH of the mixtures as they are now; base of the follower's shape, amounts (J, *shape).
+
+        A row takes steps until its own is small, whatever the others do.
+        """
+        x, step, size = self.ph, self._step, self._z
+        self._held.give(amounts)
+        rest: NDArray[np.bool_] | None = None
+        for _ in range(BARE_STEPS):
+            self._newton(x, base_eq_l)
+            if rest is not None:
+                np.multiply(step, rest, out=step)
+            np.add(x, step, out=x)
+            np.minimum(np.maximum(x, PH_LEAST, out=x), PH_MOST, out=x)
+            np.abs(step, out=size)
+            if size.max(initial=0.0) < self._done:
+                return x
+            large = ~(size < self._done)
+            rest = large if rest is None else rest & large
+        if rest is not None and rest.any():
+            x[rest] = _guarded(self._tables, base_eq_l[rest], amounts[:, rest], x[rest])
+        return x
+
+    def _newton(self, x: Array, y: Array) -> None:
+        """Step to where the balance would close if held went on as a straight line and water as its own secant. [pH]
+
+        The secant runs to where water alone would take up the rest: exact without carriers, Newton's step with many.
+        """
+        step, z, per_base = self._step, self._z, self._per_base
+        self._held.at(x)
+        np.subtract(y, self._held.value, out=step)                     # what is left for the water
+        np.multiply(step, self._least**-0.5, out=step)
+        np.subtract(np.multiply(x, LN10, out=z), self._neutral, out=z)
+        np.subtract(step, np.sinh(z, out=per_base), out=per_base)      # less what water has
+        np.subtract(np.arcsinh(step, out=step), z, out=step)
+        np.greater(np.abs(step, out=z), CLOSED, out=self._open)
+        np.divide(step, per_base, out=per_base, where=self._open)
+        np.multiply(per_base, self._open, out=per_base)
+        np.multiply(per_base, self._held.slope, out=per_base)
+        np.multiply(per_base, self._least**-0.5 / LN10, out=per_base)
+        np.add(per_base, 1.0, out=per_base)
+        np.divide(step, per_base, out=step)
+        np.multiply(step, 1.0 / LN10, out=step)
+
+
+def _guarded(tables: Readout, y: Array, c: Array, x: Array) -> Array:
+    """The same between bounds that only come closer; one-dimensional, each row until it is done."""
+    newton = Follower(tables, x.shape, np.where(np.isfinite(x), x, tables.neutral_ph), done=0.0)
+    newton._held.give(c)
+    low, high = np.full(x.shape, PH_LEAST), np.full(x.shape, PH_MOST)
+    x, last = newton.ph, np.full(x.shape, np.inf)
+    for _ in range(GUARDED_STEPS):
+        newton._newton(x, y)
+        step, open_ = newton._step, last >= GUARDED_DONE
+        low, high = np.where(step > 0.0, x, low), np.where(step > 0.0, high, x)
+        new = x + step
+        new = np.where((new > low) & (new < high) & (np.abs(step) < 0.5 * last), new, 0.5 * (low + high))
+        last, x = np.where(open_, np.abs(new - x), last), np.where(open_, new, x)
+        if not open_.any():
+            break
+    return x
+
+
+def _lines(tables: Array) -> Array:
+    """Straight lines a + b pH between the grid points of each table: all a, then all b."""
+    slope = np.diff(tables, axis=-1) / PH_STEP
+    return np.concatenate([tables[:, :-1] - slope * GRID_PH[:-1], slope])
+
+
+def _stretched(c: Array, shape: tuple[int, ...]) -> Array:
+    missing = (1,) * (len(shape) - c.ndim + 1)
+    return np.broadcast_to(c.reshape(c.shape[:1] + missing + c.shape[1:]), (c.shape[0], *shape))

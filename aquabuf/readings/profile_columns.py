@@ -76,7 +76,8 @@ def profile_quantities() -> Mapping[str, ProfileQuantity]:
         row["name"]: ProfileQuantity(
             row["name"], tuple(row["dimension"].split(";")), row["house_unit"], row["default_unit"],
             row["per_waste"] == "yes", _limit(row["sign"], 1.0), _limit(row["low"], -float("inf")),
-            _limit(row["high"], float("inf")), tuple(map(key, (row["name"], *row["aliases"].split(";")))), row["meaning"],
+            _limit(row["high"], float("inf")), tuple(map(key, (row["name"], *row["aliases"].split(";")))),
+            row["meaning"],
         )
         for row in read_table("profile_columns")
     }  # fmt: skip
@@ -110,7 +111,7 @@ def _found(header: str, names: Mapping[str, tuple[ProfileQuantity, str]]) -> tup
     return known
 
 
-def _column(at: int, header: str, found: tuple[ProfileQuantity, str, str]) -> ProfileColumn:
+def _column(at: int, header: str, found: tuple[ProfileQuantity, str, str], wastes: Sequence[str]) -> ProfileColumn:
     quantity, waste, text = found
     text = text or quantity.default_unit
     if not text and quantity.name == "time":
@@ -122,7 +123,9 @@ def _column(at: int, header: str, found: tuple[ProfileQuantity, str, str]) -> Pr
     counts = read is not None and not read[0].per_kg and (
         read[1] != "alkalinity" or read[0].kind == "charge" or read[0].basis in _COUNTS_ACID)
     if read is None or not counts:
-        raise HeaderError(f"column {header!r}: {text!r} is not a unit of {quantity.name}. Use one of: "
+        named = read is None and quantity.per_waste and wastes
+        known = f" or the name of a waste ({', '.join(wastes)})" if named else ""
+        raise HeaderError(f"column {header!r}: {text!r} is not a unit of {quantity.name}{known}. Use one of: "
                           f"{quantity.labels()}.")
     unit, dimension = read
     scale, offset = linear(unit, dimension)
@@ -130,7 +133,8 @@ def _column(at: int, header: str, found: tuple[ProfileQuantity, str, str]) -> Pr
     return ProfileColumn(at, header, quantity, waste, unit.label, scale, offset)
 
 
-def profile_columns(headers: Sequence[str], wastes: Sequence[str] = (), ignore: Collection[str] = ()) -> list[ProfileColumn]:
+def profile_columns(headers: Sequence[str], wastes: Sequence[str] = (), ignore: Collection[str] = (),
+                    ) -> list[ProfileColumn]:
     """What each header of a profile means.
 
     Raises
@@ -148,9 +152,9 @@ def profile_columns(headers: Sequence[str], wastes: Sequence[str] = (), ignore: 
             of = f", each alone or with the name of a waste ({', '.join(wastes)})" if wastes else ""
             per_waste = [q.name for q in profile_quantities().values() if q.per_waste]
             others = [q.name for q in profile_quantities().values() if not q.per_waste]
-            raise HeaderError(f"column {header!r} is not known; a profile has {', '.join(others)}, and {', '.join(per_waste)}"
-                              f"{of}. Rename it, or say that it is to be ignored.")
-        columns.append(_column(at, header, found))
+            raise HeaderError(f"column {header!r} is not known; a profile has {', '.join(others)}, and "
+                              f"{', '.join(per_waste)}{of}. Rename it, or say that it is to be ignored.")
+        columns.append(_column(at, header, found, wastes))
     _check_once(columns)
     return columns
 
@@ -162,7 +166,8 @@ def _check_once(columns: Sequence[ProfileColumn]) -> None:
         of = f" of {column.waste}" if column.waste else ""
         other = seen.setdefault((what, column.waste), column.header)
         if other != column.header or sum(c.header == other for c in columns) > 1:
-            raise HeaderError(f"columns {other!r} and {column.header!r} both give {what}{of}; one is needed. Remove one.")
+            raise HeaderError(f"columns {other!r} and {column.header!r} both give {what}{of}; one is needed. "
+                              "Remove one.")
     for name in ("time", "flow"):
         if (name, "") not in seen:
             raise HeaderError(f"a profile needs a column of {name}; found none. Add one, with its unit in the header.")

@@ -73,8 +73,8 @@ class _Problems:
         raise InputError(f"{self.name}, {' '.join(text for _, text in self.found[:SHOWN])}{rest}")
 
 
-def read_profile(path: str | Path, wastes: Sequence[str] = (), *, hold_gap_s: float = 0.0, usual_step_s: float | None = None,
-                 ignore: Collection[str] = ()) -> ProfileTable:
+def read_profile(path: str | Path, wastes: Sequence[str] = (), *, hold_gap_s: float = 0.0,
+                 usual_step_s: float | None = None, ignore: Collection[str] = ()) -> ProfileTable:
     """Read a profile.
 
     Parameters
@@ -136,8 +136,8 @@ def _body(records: list[Record], name: str) -> list[Record]:
     width = len(records[0][1])
     for row, record in records[1:]:
         if len(record) != width:
-            raise InputError(f"{name}, row {row}: each row needs {width} fields, as the header has; found {len(record)}. "
-                             "Check delimiters, decimal commas and quotation marks in this row.")
+            raise InputError(f"{name}, row {row}: each row needs {width} fields, as the header has; found "
+                             f"{len(record)}. Check delimiters, decimal commas and quotation marks in this row.")
     if len(records) < LEAST_ROWS + 1:
         raise InputError(f"{name}: a profile needs at least {LEAST_ROWS} rows; found {len(records) - 1}. Add rows, or "
                          "describe the stream by statistics.")
@@ -149,7 +149,8 @@ def _left_out(headers: Sequence[str], columns: Sequence[ProfileColumn]) -> list[
     left = [header for at, header in enumerate(headers) if at not in used and header.strip()]
     acids = [c.header for c in columns if c.quantity.sign < 0.0]
     notes = [f"columns left out: {', '.join(left)}"] if left else []
-    return notes + [f"{header!r} counts acid as positive; its sign is turned, so that acid is negative" for header in acids]
+    turned = "counts acid as positive; its sign is turned, so that acid is negative"
+    return notes + [f"{header!r} {turned}" for header in acids]
 
 
 # ------------------------------------------------------------ times
@@ -165,8 +166,8 @@ def _times(column: ProfileColumn, cells: Sequence[str], rows: NDArray[np.int64],
     if column.unit:
         parsed = parse_numbers(cells, column.quantity.cells, decimal=decimal)
         for p in parsed.problems:
-            remedy = "Write all times in the unit of the header"
-            problems.add(int(rows[p.at]), column.header, f"must be a number of {column.unit}", repr(cells[p.at]), remedy)
+            problems.add(int(rows[p.at]), column.header, f"must be a number of {column.unit}", repr(cells[p.at]),
+                         "Write all times in the unit of the header")
         return (parsed.values - parsed.values[0]) * column.scale, "", True
     stamps: list[datetime.datetime | None] = []
     for row, cell in zip(rows.tolist(), cells, strict=True):
@@ -206,24 +207,28 @@ def _span(seconds: float) -> str:
     return f"{seconds / 3600.0:.4g} h" if seconds >= 3600.0 else f"{seconds / 60.0:.4g} min"
 
 
-def _gaps(column: ProfileColumn, cells: Sequence[str], seconds: Array, usual: float, rows: NDArray[np.int64], hold: float,
-          problems: _Problems) -> list[str]:
+def _gaps(column: ProfileColumn, cells: Sequence[str], seconds: Array, usual: float, rows: NDArray[np.int64],
+          hold: float, problems: _Problems) -> list[str]:
     """Rows that are missing: problems where they may not be held, else what was held."""
     step = np.diff(seconds)
     found = np.flatnonzero(step > GAP_STEPS * usual)
     missing = step[found] - usual
-    for at, length in zip(found[missing > hold].tolist(), missing[missing > hold].tolist(), strict=True):
-        problems.add(int(rows[at + 1]), column.header, f"rows must follow within {GAP_STEPS:g} usual steps of {_span(usual)}",
+    long = missing > hold * (1.0 + _SLACK)
+    for at, length in zip(found[long].tolist(), missing[long].tolist(), strict=True):
+        problems.add(int(rows[at + 1]), column.header,
+                     f"rows must follow within {GAP_STEPS:g} usual steps of {_span(usual)}",
                      f"{_span(float(step[at]))} after {cells[at]!r}",
                      f"Add the missing rows, or allow a gap of {_span(length)} to be held at the value before it")
-    held = missing[missing <= hold]
-    return [f"{held.size} gaps between rows held at the value before, {_span(float(held.sum()))} in all"] if held.size else []
+    held = missing[~long]
+    told = f"{held.size} gaps between rows held at the value before, {_span(float(held.sum()))} in all"
+    return [told] if held.size else []
 
 
 # ------------------------------------------------------------ values
 
 
-def _numbers(column: ProfileColumn, cells: Sequence[str], rows: NDArray[np.int64], problems: _Problems, decimal: str) -> Array:
+def _numbers(column: ProfileColumn, cells: Sequence[str], rows: NDArray[np.int64], problems: _Problems,
+             decimal: str) -> Array:
     """House values, nan where a cell is empty."""
     parsed = parse_numbers(cells, column.quantity.cells, decimal=decimal)
     for p in parsed.problems:
@@ -239,7 +244,8 @@ def _numbers(column: ProfileColumn, cells: Sequence[str], rows: NDArray[np.int64
         if q.low == 0.0 and house[at] < 0.0:
             rule, remedy = f"{q.name} must be 0 or more", "Correct it; leave water that flows back out of the profile"
         else:
-            rule, remedy = f"{q.name} must be {low:.4g} to {high:.4g} {column.unit}", "Check the value and the unit in the header"
+            rule = f"{q.name} must be {low:.4g} to {high:.4g} {column.unit}"
+            remedy = "Check the value and the unit in the header"
         problems.add(int(rows[at]), column.header, rule, f"{cells[at]} {column.unit}".removesuffix(" -"), remedy)
     return house
 
@@ -267,7 +273,7 @@ def _held(column: ProfileColumn, values: Array, seconds: Array, usual: float, ro
     edge = np.flatnonzero(np.diff(np.concatenate([[False], ~known, [False]]).astype(int)))
     first, after = edge[::2], edge[1::2]
     length = ends[after] - ends[first]
-    kept = (length <= hold) & (first > 0)
+    kept = (length <= hold * (1.0 + _SLACK)) & (first > 0)
     for at, long in zip(first[~kept].tolist(), length[~kept].tolist(), strict=True):
         allow = "" if at == 0 else f", or allow a gap of {_span(long)} to be held at the value before it"
         zero = "" if column.quantity.name == "flow" else " (any value where nothing flows)"
@@ -286,7 +292,8 @@ def _table(name: str, rows: NDArray[np.int64], seconds: Array, usual: float, val
         by_name["base" if column.quantity.name == "acidity" else column.quantity.name][column.waste] = found
     flow = by_name["flow"][""]
     if not (flow > 0.0).any():
-        raise InputError(f"{name}: something must flow at some time; found zero flow in all {flow.size} rows. Check the "
-                         "column of flow.")
-    return ProfileTable(name=name, rows=rows, time_s=seconds, step_s=usual, flow_m3_h=flow, strength=by_name["strength"],
-                        base_eq_l=by_name["base"], t_c=by_name["temperature"].get(""), start=start, notes=tuple(notes))
+        raise InputError(f"{name}: something must flow at some time; found zero flow in all {flow.size} rows. Check "
+                         "the column of flow.")
+    return ProfileTable(name=name, rows=rows, time_s=seconds, step_s=usual, flow_m3_h=flow,
+                        strength=by_name["strength"], base_eq_l=by_name["base"], t_c=by_name["temperature"].get(""),
+                        start=start, notes=tuple(notes))

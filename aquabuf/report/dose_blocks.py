@@ -10,8 +10,9 @@ import pandas as pd
 
 from aquabuf.assess.plant.aims import aims_of
 from aquabuf.assess.plant.answer import Answer
-from aquabuf.assess.plant.curve import PH_STEP, DoseCurve
+from aquabuf.assess.plant.curve import PH_STEP, DoseCurve, percent_words
 from aquabuf.assess.plant.drift import UnderError, UnderFeedError, worst_of
+from aquabuf.assess.plant.faults import Fault
 from aquabuf.assess.plant.feed import both_units, shown
 from aquabuf.assess.plant.feed_lines import FeedLine
 from aquabuf.assess.plant.held import held_words
@@ -35,6 +36,7 @@ __all__ = ["assumptions", "cautions", "digester", "hold", "log", "saturation", "
 BUFFERS_SHOWN = 2
 COLUMNS_ML = (100.0, 250.0, 500.0, 1000.0, 2000.0, 5000.0)  # calibration columns; common sizes, no source
 READABLE_S = 30.0  # a drawdown that takes less cannot be timed to a few percent by hand; common practice, no source
+MOST_PERCENT = 100.0  # of the dose
 UNSAID = ", as the plan does not say"
 COUNTED = ("phosphate", "ammonium", "silica", "fluoride", "hypochlorite")  # weak acids among the totals
 
@@ -57,12 +59,13 @@ def upset(answer: Answer) -> str:
 
 
 def _price(c: DoseCurve) -> str:
-    """What 0.1 pH costs in dose."""
+    """What 0.1 pH costs in dose; a change of more than the dose itself is no price but a sign that pH hardly follows."""
     ways = [f"{shown(abs(change))} mg/L {'more' if change > 0.0 else 'less'} "
             f"{f'({shown(abs(percent))} %) ' if np.isfinite(percent) else ''}{verb} pH by {PH_STEP:g}"
             for change, percent, verb in ((c.up_mg_l, c.up_percent, "raises"), (c.down_mg_l, c.down_percent, "lowers"))
-            if np.isfinite(change)]
-    return f"{c.product} in {c.step}, {shown(c.wanted_mg_l)} mg/L: {' and '.join(ways)}."
+            if np.isfinite(change) and not abs(percent) > MOST_PERCENT]
+    said = " and ".join(ways) or f"pH hardly follows it, less than {PH_STEP:g} for none or twice of it"
+    return f"{c.product} in {c.step}, {shown(c.wanted_mg_l)} mg/L: {said}."
 
 
 def _told(found: UnderError | UnderFeedError) -> str:
@@ -77,29 +80,42 @@ def _told(found: UnderError | UnderFeedError) -> str:
 
 def _spreads(doses: pd.DataFrame) -> str:
     """How far the doses that are solved for follow errors of the readings."""
-    each = []
+    each, missed = [], []
     for r in doses.to_dict("records"):
         if r["u_mg_l_product"] > 0.0:
-            missing = r["not_found_percent"]
-            none = f" (none found in {shown(missing)} % of draws)" if missing > 0.0 else ""
-            each.append(f"{r['product']} {shown(r['low_mg_l_product'])} to {shown(r['high_mg_l_product'])} mg/L{none}")
-    return f"Errors of the readings: the dose would be {', '.join(each)} in {100.0 * COVERAGE:.0f} % of draws." \
-        if each else ""
+            if r["not_found_percent"] > 0.0:
+                missed.append(f"{percent_words(r['not_found_percent'])} of draws have no dose of {r['product']}")
+            if r["high_mg_l_product"] > 0.0:
+                each.append(f"{r['product']} {shown(r['low_mg_l_product'])} to {shown(r['high_mg_l_product'])} mg/L")
+    doses = f"the dose would be {', '.join(each)} in {100.0 * COVERAGE:.0f} % of draws" if each else ""
+    said = "; ".join(x for x in (doses, *missed) if x)
+    return f"Errors of the readings: {said}." if said else ""
 
 
 def _faults(answer: Answer) -> str:
     if not answer.faults:
         return ""
-    rows = [[f.product.name, f.case, f"{shown(float(f.product.mg_l_product(f.dose_mol_l)[0]))} for "
+    several = {f.product.name for f in answer.faults for g in answer.faults
+               if f.product.name == g.product.name and f.step != g.step}
+    rows = [[f.product.name, f.step if f.product.name in several else "", f.case, f"{shown(float(f.product.mg_l_product(f.dose_mol_l)[0]))} for "
              f"{shown(float(f.product.mg_l_product(f.wanted_mol_l)[0]))}", figure(float(f.ph_behind[0]), 2),
              figure(float(f.ph_final[0]), 2), shown(abs(float(f.excess_kg[0])))] for f in answer.faults]
     first = answer.faults[0]
     title = f"  A feed at fault for {first.hours:g} h, in {both_units(float(first.volume_m3[0]), 'm³')} of water:"
-    head = [["feed", "fault", "mg/L of product", "pH behind", "pH behind", "kg too much"],
-            ["", "", "", "the step", "the works", "or missing"]]
-    told = [words for f in answer.faults for words in f.words()[1:]]
-    return titled(title, aligned(head, rows, left=(0, 1)),
-                  *(bullet(w) for w in dict.fromkeys((*map(sentence, told), *(f"{w}." for w in answer.fault_words)))))
+    head = [["feed", "step", "fault", "mg/L of product", "pH behind", "pH behind", "kg too much"],
+            ["", "", "", "", "the step", "the works", "or missing"]]
+    return titled(title, aligned(head, rows, left=(0, 1, 2)), *(bullet(w) for w in _lessons(answer.faults, several)),
+                  *(bullet(f"{w}.") for w in answer.fault_words))
+
+
+def _lessons(faults: Sequence[Fault], several: set[str]) -> list[str]:
+    """What a fault does and asks for, each once, behind the feeds that it is said of."""
+    of: dict[str, list[str]] = {}
+    for f in faults:
+        where = f" in {f.step}" if f.product.name in several else ""
+        for words in f.words()[1:]:
+            of.setdefault(words, []).append(f"{f.product.name}{where} {f.case}")
+    return [f"{', '.join(feeds)}: {sentence(words)}" for words, feeds in of.items()]
 
 
 # ---------------------------------------------------------------- store
@@ -110,9 +126,10 @@ def store(answer: Answer) -> str:
     lines = [s for s in answer.store if s.kg_d > 0.0]
     if not lines:
         return ""
-    word = next((s.cost.currency for s in lines if s.cost), "")
+    word = answer.plan.currency
+    per = [f"{word}/d", f"{word}/month"] if word else ["per day", "per month"]
     head = [["product", "use", "use", "use", "stock", "cost", "cost", "cost per", "cost per"],
-            ["", "kg/d", "kg/month", "lb/month", "days", f"{word}/d", f"{word}/month", "1000 m³", "million gal"]]
+            ["", "kg/d", "kg/month", "lb/month", "days", *per, "1000 m³", "million gal"]]
     rows = [[s.product.name, shown(s.kg_d), shown(s.kg_month), both_units(s.kg_month, "kg").split("(")[1].split()[0],
              figure(s.stock_days, 1), *_costs([s.cost])] for s in lines]
     if len(lines) > 1 and all(s.cost for s in lines):
@@ -136,7 +153,7 @@ def _costs(costs: Sequence) -> list[str]:
 
 def log(answer: Answer) -> str:
     """What to measure and to write down this shift."""
-    lines = [_check(line) for line in answer.feeds if line.mol_l[0] > 0.0]
+    lines = [_check(line) for line in answer.feeds if _is_fed(answer, line)]
     if lines:
         off = feed_rules()["feed accuracy"]
         lines = [_jars(answer), *lines, f"Reset a feed that is off by more than {off.limit:g} % ({off.source})."]
@@ -148,9 +165,14 @@ def log(answer: Answer) -> str:
     return block("MEASURE AND LOG THIS SHIFT", lines)
 
 
+def _is_fed(answer: Answer, line: FeedLine) -> bool:
+    """Whether a machine feeds it and is on."""
+    return bool(line.mol_l[0] > 0.0) and (line.step, line.product.name) not in answer.beds
+
+
 def _jars(answer: Answer) -> str:
     """A jar with the doses, a jar on either side."""
-    fed = [x for x in answer.feeds if x.product.product.form != "gas" and x.mol_l[0] > 0.0]
+    fed = [x for x in answer.feeds if x.product.product.form != "gas" and _is_fed(answer, x)]
     if not fed:
         return ""
     doses = " and ".join(f"{shown(x.mg_l_product)} mg of {x.product.name}" for x in fed)
@@ -233,12 +255,12 @@ def digester(answer: Answer) -> str:
 
 def assumptions(answer: Answer) -> str:
     """What the figures rest on: the pair, the constants, what was taken because the plan does not say."""
-    unsaid = [a.removesuffix(UNSAID) for a in answer.plan.assumptions if a.endswith(UNSAID)]
+    unsaid = [a.removesuffix(UNSAID) for a in answer.assumptions if a.endswith(UNSAID)]
     lines = [f"Raw water solved from {answer.pair}; carbonate constants of Plummer & Busenberg 1982 with Davies "
              "activities; alkalinity is the proton deficit at the pH 4.5 zero level.", _unknown(answer)]
     if unsaid:
         lines.append(f"Taken because the plan does not say: {'; '.join(_grouped(unsaid))}.")
-    lines += [sentence(a) for a in answer.plan.assumptions if not a.endswith(UNSAID)]
+    lines += [sentence(a) for a in answer.assumptions if not a.endswith(UNSAID)]
     e = answer.readings_error
     if e is not None:
         lines.append(f"Shares are of {e.draws:,} draws, seed {e.seed}; a fixed target counts with the band that "

@@ -131,7 +131,8 @@ def plot_response(answer: Answer, curve: DoseCurve, *, ax: Axes, below: Axes) ->
     ax.tick_params(labelbottom=False)
     ax.set_title(" ".join(wrapped(f"pH by dose of {curve.product}", ax_width(ax), 10.0, bold=True, most=1)),
                  parse_math=False)
-    below.axvspan(curve.weakest_low_mg_l, curve.weakest_high_mg_l, label="_weak", zorder=0.5, **WEAK)
+    if not curve.weak_throughout:
+        below.axvspan(curve.weakest_low_mg_l, curve.weakest_high_mg_l, label="_weak", zorder=0.5, **WEAK)
     below.plot(dose, intensity, color=INK, lw=1.3, label="_intensity", zorder=3)
     below.axvline(curve.wanted_mg_l, color=WARNED, lw=1.1, label="_wanted", zorder=2)
     below.set(xlim=(0.0, dose[-1]), ylim=(0.0, 1.12 * float(np.nanmax(intensity))))
@@ -149,7 +150,8 @@ def response_key(answer: Answer, curve: DoseCurve) -> str:
         parts.append(f"level band: {window.words}")
     if control is not None:
         parts.append("upright band: doses that keep every window")
-    return "; ".join([*parts, "hatched: weakest buffering", "dashed, dotted: guard rails"]) + "."
+    parts += [] if curve.weak_throughout else ["hatched: weakest buffering"]
+    return "; ".join([*parts, "dashed, dotted: guard rails"]) + "."
 
 
 def ax_width(ax: Axes) -> float:

@@ -8,6 +8,7 @@ from matplotlib.ticker import MaxNLocator
 from numpy.typing import NDArray
 
 from aquabuf.assess.plant.answer import Answer
+from aquabuf.assess.plant.feed import shown
 from aquabuf.assess.plant.quantities import find_quantity, in_unit
 from aquabuf.assess.plant.season import MISSED, UNREAD, Season
 from aquabuf.assess.plant.steps.blend import Blend, Sweep
@@ -57,10 +58,17 @@ def plot_season_dose(season: Season, k: int, *, ax: Axes) -> Axes:
     ax.xaxis.set_major_locator(MaxNLocator(12, integer=True))
     ax.set_ylabel("product [mg/L]", fontsize=SMALL + 0.5)
     low, high = float(row["low_mg_l_product"]), float(row["high_mg_l_product"])
-    band = f": {low:.3g} to {high:.3g} mg/L in nine rows of ten" if np.isfinite(low) else ": no dose found"
+    band = f": {_band_words(low, high)}" if np.isfinite(low) else ": no dose found"
     ax.set_title(wrapped(f"{row['product']} in {row['step']}{band}", ax_width(ax), 10.0, bold=True, most=1)[0],
                  parse_math=False)
     return ax
+
+
+def _band_words(low: float, high: float) -> str:
+    """What nine rows of ten take."""
+    if shown(low) == shown(high):
+        return f"{shown(low)} mg/L in nine rows of ten" if high > 0.0 else "none in nine rows of ten"
+    return f"{shown(low)} to {shown(high)} mg/L in nine rows of ten"
 
 
 def plot_season_ph(answer: Answer, *, ax: Axes) -> Axes:

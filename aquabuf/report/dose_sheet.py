@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from aquabuf.assess.plant.answer import Answer
-from aquabuf.assess.plant.answer_json import step_rows
+from aquabuf.assess.plant.answer_json import found_of, step_rows
 from aquabuf.assess.plant.feed import FeedRate, both_units, in_us, shown
 from aquabuf.assess.plant.feed_lines import FeedLine
 from aquabuf.assess.plant.quantities import plant_quantities
@@ -30,9 +30,13 @@ __all__ = ["dose_sheet"]
 SHOWN = (("ph", "pH"), ("alkalinity", "alk."), ("dic", "carbon"), ("calcium", "Ca"), ("hardness", "hard."),
          ("buffer_intensity", "buffer"), ("chloride_sulfate_ratio", "Cl/SO4"), ("larson_ratio", "Larson"),
          ("tds", "TDS"))
-UNITS = ("Alkalinity, hardness, calcite (what would deposit or dissolve): mg/L as CaCO3; carbon: mmol/L; buffer: meq/L "
-         "per pH; Ca, TDS: mg/L; Cl/SO4: by mass; sat.: saturation index of calcite.")
+UNITS = (("alk.", "alkalinity", "mg/L as CaCO3"), ("hard.", "hardness", "mg/L as CaCO3"),
+         ("calcite", "calcite (what would deposit or dissolve)", "mg/L as CaCO3"), ("carbon", "carbon", "mmol/L"),
+         ("buffer", "buffer", "meq/L per pH"), ("Ca", "Ca", "mg/L"), ("TDS", "TDS", "mg/L"),
+         ("Cl/SO4", "Cl/SO4", "by mass"), ("sat.", "sat.", "saturation index of calcite"))
+THIN_PERCENT = 10.0  # setting below which few machines feed evenly; common practice, no source
 LIME = "Ca(OH)2"
+BED, BED_WORDS = "bed", "It dissolves from the bed as the water asks for it: nothing to set; keep the bed filled."
 TIGHT_FROM = 12  # columns
 
 
@@ -99,20 +103,22 @@ def _feeds(answer: Answer) -> str:
         return "SET THE FEEDS\n  Nothing is dosed in this plan."
     head = (("product", "step", "mg/L of", "mg/L", "product", "product", "feed", "feed", "set", "day tank"),
             ("", "", "product", "pure", "kg/d", "lb/d", "metric", "US", "%", "lasts h"))
-    rows = [_feed_row(line) for line in answer.feeds]
+    rows = [_feed_row(line, bed=(line.step, line.product.name) in answer.beds) for line in answer.feeds]
     said = [words for line in answer.feeds for words in _feed_words(answer, line)]
     return titled("SET THE FEEDS", aligned(head, rows, left=(0, 1)), *(bullet(w) for w in dict.fromkeys(said)))
 
 
-def _feed_row(line: FeedLine) -> list[str]:
-    rate, setting = line.rate, line.setting
+def _feed_row(line: FeedLine, *, bed: bool) -> list[str]:
+    rate, setting = line.rate, None if bed else line.setting
     if not np.isfinite(line.mol_l[0]):
         return [line.product.name, line.step, "no dose", *["-"] * 7]
     value, unit = _fed(rate)
     us, name = in_us(value, unit)
     pct = "-" if setting is None else shown(float(setting.setting_pct[0])) if setting.status[0] == "set" \
         else str(setting.status[0])
-    hours = next((float(v.value[0]) for v in line.tank if v.rule.unit == "h"), np.nan)
+    hours = next((float(v.value[0]) for v in line.tank if v.rule.unit == "h" and line.mol_l[0] > 0.0), np.nan)
+    if bed:
+        pct = BED
     return [line.product.name, line.step, shown(line.mg_l_product), shown(line.mg_l_pure),
             shown(float(rate.product_kg_d[0])), shown(float(rate.in_us()["product_lb_d"][0])),
             f"{shown(value)} {unit}", f"{shown(float(us))} {name}", pct, figure(hours, 1)]
@@ -128,10 +134,21 @@ def _feed_words(answer: Answer, line: FeedLine) -> list[str]:
     strength = f"{100.0 * p.strength:.4g} % ({p.strength_from})"
     mixture = line.spec.made_up
     moved = "" if mixture is None else f", made up to {100.0 * mixture.fraction:.3g} % of product by mass"
-    out = [f"{p.name}: {p.product.name}, {p.product.formula}, {strength}{moved}. "
-           f"{sentence(line.setting_words())}{_at_flows(line)}"]
+    said = f"{sentence(line.setting_words())}{_thin(line)}{_at_flows(line)}"
+    if (line.step, p.name) in answer.beds:
+        said = BED_WORDS
+    out = [f"{p.name}: {p.product.name}, {p.product.formula}, {strength}{moved}. {said}"]
     out += [f"{p.name}: {words}." for words in _made_up(answer, line)]
     return out + [f"{p.name}, day tank: {v.words()}." for v in line.tank if v.judged[0] and not v.met[0]]
+
+
+def _thin(line: FeedLine) -> str:
+    """A setting so low that the machine may not hold it, where the plan does not say what it can."""
+    setting, machine = line.setting, line.spec.pump if line.rate.moved and line.spec.pump else line.spec.feeder
+    if setting is None or machine is None or setting.status[0] != "set" or not setting.setting_pct[0] < THIN_PERCENT:
+        return ""
+    return (f" Below {THIN_PERCENT:g} % few machines feed evenly (common practice, no source): give its range or turndown, "
+            "thin the product, or take a smaller one.")
 
 
 def _made_up(answer: Answer, line: FeedLine) -> list[str]:
@@ -175,7 +192,17 @@ def _water(answer: Answer) -> str:
               calcite_words(r["ccpp_mg_l"])] for r in rows]
     return titled(f"WATER AFTER EVERY STEP{'' if answer.train.feasible()[0] else ' (without the doses not found)'}",
                   aligned([head], table, gap=" " * (2 if len(head) < TIGHT_FROM else 1)),
-                  *(bullet(line, mark="  ") for line in [UNITS]))
+                  bullet(_units([word for k, word in enumerate(head) if any(row[k] not in ("", "-") for row in table)]),
+                         mark="  "))
+
+
+def _units(heads: list[str]) -> str:
+    """What the columns of the table of waters are in."""
+    parts: dict[str, list[str]] = {}
+    for head, name, unit in UNITS:
+        if head in heads:
+            parts.setdefault(unit, []).append(name)
+    return sentence("; ".join(f"{', '.join(names)}: {unit}" for unit, names in parts.items()))
 
 
 # ---------------------------------------------------------------- targets and rules
@@ -189,10 +216,10 @@ def _targets(answer: Answer) -> str:
 
 def _rules(answer: Answer) -> str:
     lines = [f"{name}: {sentence(f.words)}{f' Rule: {f.rule}.' if f.rule else ''}{_next(f.next_step)}"
-             for name, f in answer.train.findings("warning")]
+             for name, f in found_of(answer, "warning")]
     lines += [_broken(j) for j in answer.limits if j.broken]
     lines += [f"Plan: {sentence(note)}" for note in answer.plan.notes]
-    lines += [f"{name}: {sentence(f.words)}" for name, f in answer.train.findings("note")]
+    lines += [f"{name}: {sentence(f.words)}" for name, f in found_of(answer, "note")]
     kept = sum(not j.broken and np.isfinite(j.value) for j in answer.limits)
     unknown = dict.fromkeys(j.limit.name for j in answer.limits if not np.isfinite(j.value))
     if kept:

@@ -150,6 +150,8 @@ def _control(answer: Answer, line: FeedLine) -> str:
             low, high = (shown(line.mg_l_product * float(end[0])) for end in (r.least, r.most))
             several = sum(d.product.name == r.product.name for _, d in answer.train.doses()) > 1
             also = ", its other feeds alike" if several else ""
+            if r.least[0] == 0.0:
+                return f"at most {high} mg/L{also}" if np.isfinite(r.most[0]) else ""
             return (f"keep {low} mg/L or more" if np.isinf(r.most[0]) else f"keep {low} to {high} mg/L") + also
     return ""
 

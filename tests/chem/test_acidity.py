@@ -4,7 +4,13 @@ import numpy as np
 import pytest
 from numpy.testing import assert_allclose
 
-from aquabuf.chem.acidity import acidity_eq_l, acidity_mg_l_caco3, caco3_mg_l_of_eq_l, load_short_tons_yr, net_acidity_eq_l
+from aquabuf.chem.acidity import (
+    acidity_eq_l,
+    acidity_mg_l_caco3,
+    caco3_mg_l_of_eq_l,
+    load_short_tons_yr,
+    net_acidity_eq_l,
+)
 from aquabuf.errors import InputRangeError
 
 G_MOL = {"fe": 55.845, "al": 26.9815, "mn": 54.938}  # standard atomic weights

@@ -133,6 +133,43 @@ def test_help_names_both_ways_and_the_exit_codes(call):
     assert "does not hold; then the results are written all the same, and the reason goes to standard error" in text
 
 
+# ------------------------------------------------------------------ the starter plan
+
+def test_starter_plan_is_a_plan_that_holds(call, table):
+    """What `aquabuf template plan` prints runs as it is: nothing refused, targets met, every feed within reach."""
+    text = call("template", "plan").stdout
+    done = call("dose", table(text, "mine.toml"), "--out", "o", "--no-figure")
+    assert (done.exit_code, done.stderr) == (0, "")
+    answer = json.loads(Path("o/answer.json").read_text(encoding="utf-8"))
+    assert (answer["feasible"], answer["reason"]) == (True, "")
+    assert len(answer["targets"]) == 2
+    assert all(t["met"] for t in answer["targets"])
+    status = {d["product"]: d["feed"]["setting_status"] for d in answer["doses"]}
+    assert status == {"alum": None, "lime": "set", "gas": "off"}  # the alum has no machine; lime alone is cheapest
+
+
+def test_starter_plan_by_mass_balance(call, table):
+    """20 mg/L of product at 99 % takes 0.5052 mg as CaCO3 per mg of alum, and lime brings 1.3508 (facts: computed)."""
+    call("dose", table(call("template", "plan").stdout, "mine.toml"), "--out", "o", "--no-figure", "--draws", "0")
+    answer = json.loads(Path("o/answer.json").read_text(encoding="utf-8"))
+    alkalinity = [step["alkalinity_mg_l_caco3"] for step in answer["steps"]]
+    alum, lime, gas = (d["dose_mg_l_pure"] for d in answer["doses"])
+    assert alum == pytest.approx(0.99 * 20.0)
+    assert alkalinity == pytest.approx([32.0, 32.0 - 0.5052 * alum, 32.0 - 0.5052 * alum + 1.3508 * lime], abs=0.01)
+    dic = [step["dic_mmol_l"] for step in answer["steps"]]
+    assert dic[2] - dic[1] == pytest.approx(gas / 44.009, abs=1e-4)
+    assert 8.0 <= answer["steps"][2]["ph"] <= 8.4
+
+
+@pytest.mark.parametrize("line", ['# least = "1 ML/d"', '# most = "4 ML/d"', '# price = "0.35 per kg"'])
+def test_what_the_starter_plan_leaves_out_can_be_used(call, table, line):
+    """Each key behind a # works once the # is taken away."""
+    text = call("template", "plan").stdout
+    assert f"\n{line}\n" in text
+    done = call("dose", table(text.replace(line, line.removeprefix("# ")), "mine.toml"), "--out", "o", "--no-figure", "--draws", "0")
+    assert (done.exit_code, done.stderr) == (0, "")
+
+
 # ------------------------------------------------------------------ the shift log
 
 def test_table_for_the_shift_log(log):

@@ -23,6 +23,7 @@ from aquabuf.assess.plant.ranges import ControlRange, control_range
 from aquabuf.assess.plant.rules import Judged, cautions_of, judged_by, plan_limits
 from aquabuf.assess.plant.steps.base import Finding, Step
 from aquabuf.assess.plant.steps.blend import Blend
+from aquabuf.assess.plant.steps.contactor import CalciteContactor
 from aquabuf.assess.plant.stream import Stream, stream_of
 from aquabuf.assess.plant.targets import Target
 from aquabuf.assess.plant.train import Train, run_train
@@ -94,6 +95,22 @@ class Answer:
     cautions: tuple[str, ...]
 
     @property
+    def beds(self) -> frozenset[tuple[str, str]]:
+        """Step and product of what dissolves from a bed, which no machine feeds."""
+        return frozenset(_beds(self.train))
+
+    @property
+    def assumptions(self) -> tuple[str, ...]:
+        """What was taken because the plan does not say."""
+        places: dict[str, list[str]] = {}
+        for line in self.feeds:
+            if line.setting is not None:
+                places.setdefault(line.product.name, []).append(line.step)
+        return (*self.plan.assumptions, *(
+            f"{name} goes in at {' and '.join(at)}: each is taken to have a machine of its own of the size in the plan"
+            for name, at in places.items() if len(at) > 1))
+
+    @property
     def stops(self) -> tuple[tuple[str, Finding], ...]:
         """Findings that forbid the plan, with the step they are of."""
         return (*self.train.findings("stop"), *(("guard rails", f) for f in self.guards if f.severity == "stop"))
@@ -145,10 +162,15 @@ def _without_sweeps(train: Train) -> Train:
         replace(p, step=replace(p.step, with_sweep=False)) if isinstance(p.step, Blend) else p for p in train.passed))
 
 
+def _beds(train: Train) -> set[tuple[str, str]]:
+    return {(p.step.name, p.step.calcite.name) for p in train.passed if isinstance(p.step, CalciteContactor)}
+
+
 def _fed(train: Train) -> list[tuple[int, str]]:
-    """Place of the step and product of every dose that is not nothing, each once."""
-    return list(dict.fromkeys(
-        (k, d.product.name) for k, p in enumerate(train.passed) for d in p.outcome.doses if d.mol_l[0] > 0.0))
+    """Place of the step and product of every dose that a machine feeds and that is not nothing, each once."""
+    beds = _beds(train)
+    return list(dict.fromkeys((k, d.product.name) for k, p in enumerate(train.passed) for d in p.outcome.doses
+                              if d.mol_l[0] > 0.0 and (p.step.name, d.product.name) not in beds))
 
 
 def _curves(train: Train) -> tuple[DoseCurve, ...]:
@@ -167,8 +189,9 @@ def _faults(plan: Plan, train: Train, feeds: Sequence[FeedLine]) -> tuple[tuple[
     out: list[Fault] = []
     words: list[str] = []
     seen: set[tuple[str, str]] = set()
+    beds = _beds(train)
     for line in feeds:
-        if not line.mol_l[0] > 0.0:
+        if not line.mol_l[0] > 0.0 or (line.step, line.product.name) in beds:
             continue
         if (line.step, line.product.name) in seen:
             words.append(f"{line.product.name} goes in twice in {line.step}: a fault is looked at where it first does")

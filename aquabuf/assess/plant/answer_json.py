@@ -29,7 +29,7 @@ from aquabuf.assess.plant.stream import Stream
 if TYPE_CHECKING:
     from aquabuf.assess.plant.season import Season
 
-__all__ = ["RAW_WATER", "answer_record", "buffer_rows", "limit_rows", "step_rows", "warning_words"]
+__all__ = ["RAW_WATER", "answer_record", "buffer_rows", "found_of", "limit_rows", "step_rows", "warning_words"]
 
 RAW_WATER = "raw water"
 FIGURES = 12  # significant; more would be rounding
@@ -50,8 +50,8 @@ def answer_record(answer: Answer) -> dict[str, Any]:
         "limits": limit_rows(answer.limits),
         "findings": _findings(answer),
         "warnings": warning_words(answer),
-        "notes": [f"{name}: {f.words}" for name, f in _found(answer, "note")],
-        "cautions": answer.cautions, "assumptions": plan.assumptions,
+        "notes": [f"{name}: {f.words}" for name, f in found_of(answer, "note")],
+        "cautions": answer.cautions, "assumptions": answer.assumptions,
         "saturation": _saturation(answer.train.final),
         "store": [_store(line) for line in answer.store],
         "curves": [_curve(c) for c in answer.curves],
@@ -177,20 +177,21 @@ def limit_rows(limits: Sequence[Judged]) -> list[dict[str, Any]]:
 # ---------------------------------------------------------------- findings
 
 
-def _found(answer: Answer, severity: str) -> list[tuple[str, Any]]:
+def found_of(answer: Answer, severity: str) -> list[tuple[str, Any]]:
+    """Findings of one severity: of the steps by their name, then of the guard rails."""
     guards = [("guard rails", f) for f in answer.guards if f.severity == severity]
     return [*answer.train.findings(severity), *guards]
 
 
 def _findings(answer: Answer) -> list[dict[str, Any]]:
     return [{"severity": severity, "step": name, "words": f.words, "rule": f.rule, "next_step": f.next_step}
-            for severity in ("stop", "warning", "note") for name, f in _found(answer, severity)]
+            for severity in ("stop", "warning", "note") for name, f in found_of(answer, severity)]
 
 
 def warning_words(answer: Answer) -> list[str]:
     """Warnings as sentences with their rule and next step: of the steps, of the rules for the water, of the plan."""
     out = [f"{name}: {f.words}{_rule(f.rule)}{_next(f.next_step)}" for severity in ("stop", "warning")
-           for name, f in _found(answer, severity)]
+           for name, f in found_of(answer, severity)]
     out += [f"{j.limit.name}: {j.limit.words} ({j.limit.rule()}, found {_figure(j.value)}; {j.limit.source})"
             f"{_next(j.limit.next_step)}" for j in answer.limits if j.broken]
     out += [words for line in answer.feeds for words in _feed_warnings(line)]

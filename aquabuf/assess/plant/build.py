@@ -33,6 +33,7 @@ DONORS: Mapping[str, float] = MappingProxyType({"methanol": METHANOL_CARBON, "no
 ALL = "all"
 MINUTES_PER_HOUR = 60.0
 G_PER_KG = 1e3
+ROUNDING = 1e-9  # of shares that add up to the whole
 
 
 def build_steps(plan: Plan) -> list[Step]:
@@ -95,14 +96,19 @@ def _temperature(spec: StepSpec, plan: Plan, _: Mapping[str, Stream]) -> Step:
 
 
 def _blend(spec: StepSpec, plan: Plan, sources: Mapping[str, Stream]) -> Step:
-    """Shares of the step, else those of the sources; flows count against the plan's flow, which is the blend's."""
+    """Shares of the step, else those of the sources; flows count against the plan's flow, which is the blend's.
+
+    Where one water is all of the blend, there are no other ratios to look at.
+    """
     names = spec.values["with"]
     shares = spec.values.get("shares") or tuple(_share(plan.sources[n], plan) for n in names)
-    if not 0.0 <= 1.0 - sum(shares) <= 1.0:
+    own = 1.0 - sum(shares)
+    if own < -ROUNDING:
         raise InputError(f"shares of the blend {spec.name!r} must add up to 100 % at most; found "
                          f"{100 * sum(shares):.4g} %. Lower them; the rest is the water of the step before.")
+    own = own if own > ROUNDING else 0.0
     return Blend(name=spec.name, others=tuple(Joining(n, sources[n], s) for n, s in zip(names, shares, strict=True)),
-                 own_share=1.0 - sum(shares), own_name=plan.raw.name)
+                 own_share=own, own_name=plan.raw.name, with_sweep=len(names) + (own > 0.0) > 1)
 
 
 def _share(source: Source, plan: Plan) -> float:

@@ -32,6 +32,7 @@ CACO3 = "mg/L as CaCO3"
 BICARBONATE, LIME = "NaHCO3", "Ca(OH)2"
 ACID_IN_TITRATION = 0.85  # share of volatile acids that the alkalinity titration to about pH 4.0 counts (recalled)
 MOST_LIME_MOL_L = 1.0     # search for the lime limit ends here
+LEAST_TOLD_MG_L = 0.5     # of sodium bicarbonate; less is told as 0
 NO_BICARBONATE = ("No bicarbonate is left, so that the volatile acids and not the gas set the pH, near their pKa of "
                   "4.8 or below: measure it.")
 
@@ -225,9 +226,9 @@ def digester_words(found: Digester, alkali: Alkali | None = None, row: int = 0) 
              if at(found.bicarbonate_eq_l) > 0.0 else NO_BICARBONATE]
     if not np.isfinite(at(found.water.ph)):
         return "The state of the digester is not known: a reading is missing or outside the range of the constants."
-    if alkali is not None and at(alkali.added_eq_l) > 0.0:
+    soda = 0.0 if alkali is None else 1e3 * molar_mass(BICARBONATE) * at(alkali.bicarbonate_mol_l)
+    if alkali is not None and soda >= LEAST_TOLD_MG_L:
         lime = 1e3 * molar_mass(LIME)
-        soda = 1e3 * molar_mass(BICARBONATE) * at(alkali.bicarbonate_mol_l)
         limit = at(alkali.lime_limit_mol_l)
         start = "already" if limit == 0.0 else f"from {lime * limit:.0f} mg/L of it on"
         bound = "" if np.isnan(limit) else f"; calcite is supersaturated {start}"

@@ -9,7 +9,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from aquabuf.assess.plant.choose import MOST_PRODUCTS, cheapest
-from aquabuf.assess.plant.dose import NEGATIVE, NO_EFFECT, NOTHING, Point, Solved, solve_doses
+from aquabuf.assess.plant.dose import NEGATIVE, NO_EFFECT, NOTHING, REACHED, Point, Solved, solve_doses
+from aquabuf.assess.plant.feed import shown
 from aquabuf.assess.plant.store import Stocked
 from aquabuf.assess.plant.stream import ALKALINITY, CARBON, Stream
 from aquabuf.assess.plant.targets import Target, reached
@@ -28,6 +29,8 @@ STRIPPING = Product(name="stripping of CO2", formula="CO2", molar_mass_g=44.009,
 SUGGESTED = {"base", "acid", "carbon", "calcium"}
 UNSUITED = {"coagulant", "oxidant", "fluoride", "phosphate", "ammonia", "nitrate", "basicity", "magnesium"}
 MOST_NAMED = 3
+SOFTENED = {"calcium", "magnesium", "hardness"}
+ONLY_ADDED = {*SOFTENED, "sodium", "fluoride"}  # by products; a step or another water takes them out
 MOST_STRIPPED = 0.95  # share of the dissolved CO2 that an aerator can take out; common practice, no source
 
 
@@ -59,7 +62,8 @@ def why_not(stream: Stream, stock: Sequence[Stocked], targets: Sequence[Target],
     if ways:
         remedy = f"What would reach it: {'; or '.join(w.words for w in ways)}."
     else:
-        remedy = "No single further product of the shipped table reaches it: widen a window, or drop a target."
+        remedy = " ".join(["No single further product of the shipped table reaches it: widen a window, or drop a target.",
+                           *_taken_out(one, targets, air_co2_ppm)])
     return f"{wanted} cannot be met with {names}{cause}. {remedy}"
 
 
@@ -74,36 +78,71 @@ def _cause(one: Stream, stock: Sequence[Stocked], targets: Sequence[Target], air
     """What is wrong with the doses that mathematics asks for, where as many products as values are there."""
     points = [Point(t.quantity, _nearest(one, t, air_co2_ppm)) for t in targets]
     points = [p for p, t in zip(points, targets, strict=True) if t.is_point or _off(one, t, air_co2_ppm)]
-    if not points or len(points) > len(stock):
-        return f": {len(targets)} targets need as many products that work apart" if len(points) > len(stock) else ""
+    if not points:
+        return ""
+    if len(points) > len(stock):
+        return _each_alone(one, stock[0], points, targets, air_co2_ppm)
     tried = list(stock[:len(points)])
     try:
         solved = solve_doses(one, [s.product for s in tried], points, air_co2_ppm=air_co2_ppm)
     except ValueError:
         return ""
-    return _of_status(solved, tried)
+    return _of_status(solved, tried, [p.quantity.name for p in points])
 
 
-def _of_status(solved: Solved, tried: Sequence[Stocked]) -> str:
+def _each_alone(one: Stream, only: Stocked, points: Sequence[Point], targets: Sequence[Target], air_co2_ppm: float) -> str:
+    """What one product would have to do for each target by itself, where there are more of them than products."""
+    said = [f": {len(points)} targets need as many products that work apart"]
+    for point in points:
+        solved = solve_doses(one, [only.product], [point], air_co2_ppm=air_co2_ppm)
+        alone = f"for {point.quantity.label} {point.quantity.text(float(np.ravel(point.value)[0]))} alone"
+        if solved.status[0] == REACHED:
+            found = reached(solved.stream, targets, air_co2_ppm)
+            others = [f"{t.quantity.label} {t.quantity.text(float(found[t.quantity.name][0]))}" for t in targets
+                      if t.quantity.name != point.quantity.name]
+            said.append(f"{alone} {shown(float(only.mg_l_product(solved.mol_l[0, 0])))} mg/L of {only.name}, which brings "
+                        f"{' and '.join(others)}")
+        elif solved.status[0] == NEGATIVE:
+            said.append(f"{alone} {shown(float(only.mg_l_product(-solved.mol_l[0, 0])))} mg/L of {only.name} taken out")
+    return "; ".join(said)
+
+
+def _of_status(solved: Solved, tried: Sequence[Stocked], wanted: Sequence[str]) -> str:
+    if solved.status[0] == NO_EFFECT and len(tried) == 1:
+        return f": {tried[0].name} does not move it"
     if solved.status[0] == NO_EFFECT:
         return ": they move these targets together, not apart"
     if solved.status[0] != NEGATIVE:
         return ": no dose of them reaches it"
-    parts = [f"{float(s.mg_l_product(-x[0])):.3g} mg/L of {s.name} taken out, which nothing does; {_opposite(s)}"
+    parts = [f"{shown(float(s.mg_l_product(-x[0])))} mg/L of {s.name} taken out, which nothing does; "
+             f"{_opposite(s, wanted)}"
              for s, x in zip(tried, solved.mol_l, strict=True) if x[0] < -NOTHING]
     return f": it would need {' and '.join(parts)}"
 
 
-def _opposite(s: Stocked) -> str:
-    """What takes out what a product brings."""
+def _opposite(s: Stocked, wanted: Sequence[str]) -> str:
+    """What works against a product on the quantities that are wanted; carbon dioxide leaves alkalinity as it is."""
     alkalinity, carbon = s.product.adds.get(ALKALINITY, 0.0), s.product.adds.get(CARBON, 0.0)
     if alkalinity > 0.0 and carbon > 0.0:
         return "acid takes out its alkalinity and aeration its carbon"
+    if alkalinity > 0.0 and not set(wanted) - {ALKALINITY}:
+        return "acid takes out alkalinity; carbon dioxide lowers pH and leaves alkalinity as it is"
     if alkalinity > 0.0:
         return "acid or carbon dioxide works the other way"
     if alkalinity < 0.0:
         return "a base works the other way"
     return "aeration (stripping of CO2) or a base without carbon works the other way"
+
+
+def _taken_out(one: Stream, targets: Sequence[Target], air_co2_ppm: float) -> list[str]:
+    """What lowers an ion that the water has too much of; no dose does."""
+    out = []
+    for t in targets:
+        if t.quantity.name in ONLY_ADDED and reached(one, (t,), air_co2_ppm)[t.quantity.name][0] > t.high:
+            soften = "soften, or " if t.quantity.name in SOFTENED else ""
+            out.append(f"The water brings more than this {t.quantity.label}, which no dose takes out: {soften}blend with "
+                       "water that has less.")
+    return out
 
 
 def _nearest(one: Stream, t: Target, air_co2_ppm: float) -> float:
@@ -132,8 +171,8 @@ def _ways(one: Stream, stock: Sequence[Stocked], targets: Sequence[Target], air_
         if not chosen.feasible[0] or x <= NOTHING or (product is STRIPPING and x > MOST_STRIPPED * _co2(one)):
             continue
         mg_l = float(extra.mg_l_pure(x))
-        what = f"strip {mg_l:.3g} mg/L of CO2 first (aerate)" if product is STRIPPING else f"{product.name}, " \
-            f"{mg_l:.3g} mg/L of pure {product.formula}, beside them"
+        what = f"strip {shown(mg_l)} mg/L of CO2 first (aerate)" if product is STRIPPING else f"{product.name}, " \
+            f"{shown(mg_l)} mg/L of pure {product.formula}, beside them"
         found[kind] = _Way(what, mg_l)
     return sorted(found.values(), key=lambda w: w.kg)[:MOST_NAMED]
 

@@ -10,10 +10,13 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from aquabuf.assess.plant.aims import dosed_of
+from aquabuf.assess.plant.feed import shown
 from aquabuf.assess.plant.steps.base import Dosed, Finding, Held, Step
 from aquabuf.assess.plant.steps.words import as_rows_of, holding, span
+from aquabuf.assess.plant.storage import lime_solubility_g_l
 from aquabuf.assess.plant.store import Stocked
 from aquabuf.assess.plant.train import Passed, Train, held_steps, run_train
+from aquabuf.chem.products import molar_mass
 from aquabuf.errors import InputError
 from aquabuf.tables import read_table
 
@@ -24,6 +27,7 @@ Mask = NDArray[np.bool_]
 
 FULL, STOPPED = "stuck at full stroke", "stopped"
 HOURS_PER_DAY = 24.0
+SOFTEN, LIME, LIME_FORMULA = "soften", "lime", "Ca(OH)2"  # kind of step; group of products; what dissolves of them
 CHANGED = 0.05  # pH that a fault must move before it is worth a word
 
 
@@ -47,7 +51,7 @@ class Guards:
     ph_high: float = field(default_factory=lambda: _rail("ph_high"))
     over_dose: float = field(default_factory=lambda: _rail("over_dose"))
     over_ph: float = field(default_factory=lambda: _rail("over_ph"))
-    within: tuple[str, ...] = ("soften",)
+    within: tuple[str, ...] = (SOFTEN,)
 
     def __post_init__(self) -> None:
         if not 0.0 <= self.ph_low < self.ph_high <= 14.0:
@@ -96,15 +100,32 @@ def guard(train: Train, guards: Guards | None = None) -> tuple[Finding, ...]:
 
     Ahead of a later step that doses it is a warning: coagulation may want a pH that the mains must not have.
 
-    pH is judged behind every step that doses and behind the last; then again with each product overdosed in its turn.
+    pH is judged behind every step that doses or moves pH beyond a rail, and behind the last; then again with each
+    product overdosed in its turn. More lime than dissolves stops a plan too: the pH it is solved for is not reached.
     """
     guards = guards or Guards()
-    found = [f for k in _judged(train) for f in _ph_findings(train, k, guards)]
+    found = [f for k in range(len(train.passed)) for f in _ph_findings(train, k, guards)]
     for product in dict.fromkeys(d.product.name for _, d in train.doses()):
         over = run_train(train.raw, held_steps(train, {product: guards.over_dose}))
         first = next(k for k, p in enumerate(train.passed) if product in _names(p))
         found += [f for k in _judged(train) if k >= first for f in _over_findings(train, over, k, product, guards)]
-    return holding(*found)
+    return holding(*found, *_undissolved(train))
+
+
+def _undissolved(train: Train) -> list[Finding]:
+    """Lime beyond its solubility where nothing is meant to settle: what stays solid raises no pH."""
+    out = []
+    for p in (p for p in train.passed if p.step.kind != SOFTEN):
+        limes = [d for d in p.outcome.doses if LIME in d.product.product.groups]
+        g_l = sum((d.mol_l for d in limes), start=np.zeros(train.raw.rows)) * molar_mass(LIME_FORMULA)
+        most = lime_solubility_g_l(p.after.t_c)
+        where = g_l > most
+        out += [Finding(
+            "stop", f"step {p.step.name!r} takes {span(1e3 * g_l, where, 0)} mg/L of {LIME_FORMULA} "
+            f"as {' and '.join(d.product.name for d in limes)}, and about {span(1e3 * most, where, 0)} mg/L dissolve: the rest stays solid and pH stays below "
+            f"{span(p.after.water().ph, where, 2)}", where, "solubility of lime (recalled)",
+            "aim lower, or take caustic soda, which dissolves")] if limes else []
+    return out
 
 
 def _names(passed: Passed) -> list[str]:
@@ -120,6 +141,8 @@ def _severity(train: Train, k: int, guards: Guards) -> tuple[str, str]:
     """A stop, or less within the works, where a later step doses; and words for that."""
     if train.passed[k].step.kind in guards.within and k < len(train.passed) - 1:
         return "note", ", which this step is meant to do; later steps must bring it back"
+    if k < len(train.passed) - 1 and not train.passed[k].outcome.doses:
+        return "warning", ", within the works"
     if any(p.outcome.doses for p in train.passed[k + 1:]):
         return "warning", ", within the works; later steps must bring it back"
     return "stop", ""
@@ -128,13 +151,14 @@ def _severity(train: Train, k: int, guards: Guards) -> tuple[str, str]:
 def _ph_findings(train: Train, k: int, guards: Guards) -> list[Finding]:
     ph = train.passed[k].after.water().ph
     severity, meant = _severity(train, k, guards)
+    moved = k in _judged(train) or np.abs(ph - train.passed[k].before.water().ph) >= CHANGED
     out = []
     for name, where, side, remedy in (
             ("ph_low", ph < guards.ph_low, "below", "lower the acid or coagulant, or add alkali ahead of it"),
             ("ph_high", ph > guards.ph_high, "above", "lower the alkali, or add carbon dioxide or another acid")):
         words = (f"behind step {train.passed[k].step.name!r} pH is {span(ph, where, 2)}, {side} the guard rail of "
                  f"{getattr(guards, name):g}{meant}")
-        out.append(Finding(severity, words, where, guards.rule(name), remedy))
+        out.append(Finding(severity, words, where & moved, guards.rule(name), remedy))
     return out
 
 
@@ -185,8 +209,8 @@ class Fault:
         if not np.isfinite(self.ph_behind[row]):
             return (f"pump of {name} {self.case}: not known, the doses or the water were not found",)
         given, wanted = (float(mg_l(x[row])) for x in (self.dose_mol_l, self.wanted_mol_l))
-        out = [f"pump of {name} in step {self.step!r} {self.case} for {self.hours:g} h: {given:.3g} mg/L of product in "
-               f"place of {wanted:.3g}, pH {self.ph_behind[row]:.2f} right behind the step in place of "
+        out = [f"pump of {name} in step {self.step!r} {self.case} for {self.hours:g} h: {shown(given)} mg/L of product in "
+               f"place of {shown(wanted)}, pH {self.ph_behind[row]:.2f} right behind the step in place of "
                f"{self.ph_wanted[row]:.2f} and {self.ph_final[row]:.2f} behind the works, in "
                f"{self.volume_m3[row]:,.0f} m3 of water"]
         out += [f"that water {level.words} (pH {'above' if level.side == 'high' else 'below'} {level.ph:g}; "
@@ -248,8 +272,8 @@ def full_stroke(train: Train, product: str, *, flow_m3_d: ArrayLike, hours: floa
     if (most < dosed.mol_l * (1.0 - 1e-9)).any():
         low = int(np.argmax(most < dosed.mol_l))
         raise InputError(f"the pump of {product!r} must give at least the wanted dose at full stroke; found "
-                         f"{float(dosed.product.mg_l_product(most[low])):.3g} of "
-                         f"{float(dosed.product.mg_l_product(dosed.mol_l[low])):.3g} mg/L. Take a larger pump, or "
+                         f"{shown(float(dosed.product.mg_l_product(most[low])))} of "
+                         f"{shown(float(dosed.product.mg_l_product(dosed.mol_l[low])))} mg/L. Take a larger pump, or "
                          "correct its size.")
     volume = as_rows_of(flow_m3_d, rows, "flow_m3_d") * hours / HOURS_PER_DAY
     nothing = np.where(np.isfinite(dosed.mol_l), 0.0, np.nan)

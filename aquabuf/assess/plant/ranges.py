@@ -11,6 +11,8 @@ from numpy.typing import NDArray
 
 from aquabuf.assess.frames import frame_of
 from aquabuf.assess.plant.aims import PERCENT, Aim, aims_of, dosed_of, repeated
+from aquabuf.assess.plant.curve import percent_words
+from aquabuf.assess.plant.feed import shown
 from aquabuf.assess.plant.store import Stocked
 from aquabuf.assess.plant.targets import Target
 from aquabuf.assess.plant.train import Train, held_steps, run_train
@@ -26,6 +28,7 @@ DOWN = 40            # equal steps on the way down to nothing
 CLOSE = 1e-8         # of the end, in parts of the dose
 AT_ONCE = 64         # waters worked at once in closing in
 EDGE_PERCENT = 0.05  # less room is none
+PURPOSES = {"oxidant": "disinfection", "coagulant": "coagulation", "fluoride": "fluoride"}  # by group of product
 
 
 @dataclass(frozen=True, slots=True, eq=False, kw_only=True)
@@ -35,6 +38,7 @@ class ControlRange:
     least, most : 0 where nothing of it is needed, inf where MOST_FACTOR times as much still keeps every window, nan
         where the windows are not kept even with the dose that was found, or where none is dosed.
     ends_low, ends_high : the target that is left first beyond each end, "" where there is no end.
+    feeds : places where it goes in; the doses are their sum.
     """
 
     product: Stocked
@@ -43,6 +47,7 @@ class ControlRange:
     most: Array
     ends_low: NDArray[np.object_]
     ends_high: NDArray[np.object_]
+    feeds: int = 1
 
     def table(self) -> pd.DataFrame:
         """One row per water."""
@@ -59,16 +64,22 @@ class ControlRange:
         if np.isnan(least):
             return f"{self.product.name}: no range, since its dose does not keep every window, or none is dosed"
         low = "nothing" if least == 0.0 else _end_words(dose, least)
+        fed = f", {self.feeds} feeds moved alike, {shown(dose)} mg/L together" if self.feeds > 1 else ""
         high = f"more than {MOST_FACTOR:g} times as much" if np.isinf(most) else _end_words(dose, most)
         sides = (("below", self.ends_low[row]), ("above", self.ends_high[row]))
         ends = [f"{side}, {end} is left" for side, end in sides if end]
-        return f"{self.product.name}: from {low} to {high} keeps every window{'; ' if ends else ''}{'; '.join(ends)}"
+        return "; ".join([f"{self.product.name}{fed}: from {low} to {high} keeps every window", *ends, *self._purpose()])
+
+    def _purpose(self) -> list[str]:
+        """What the product is fed for where that is no window, so that nobody turns it down by the range alone."""
+        found = [work for group, work in PURPOSES.items() if group in self.product.product.groups]
+        return [f"{found[0]} is no window here and sets its least dose"] if found else []
 
 
 def _end_words(dose: float, factor: float) -> str:
     percent = PERCENT * (factor - 1.0)
-    room = f"{percent:+.2g} %" if abs(percent) >= EDGE_PERCENT else "no room: the dose sits at the end of a window"
-    return f"{dose * factor:.3g} mg/L ({room})"
+    room = percent_words(percent, "+") if abs(percent) >= EDGE_PERCENT else "no room: the dose sits at the end of a window"
+    return f"{shown(dose * factor)} mg/L ({room})"
 
 
 def control_range(train: Train, product: str, targets: Sequence[Target] = ()) -> ControlRange:
@@ -97,7 +108,8 @@ def control_range(train: Train, product: str, targets: Sequence[Target] = ()) ->
     least, low = search.end(np.linspace(1.0, 0.0, DOWN + 1), inside, beyond=0.0)
     ups = np.append(GROWTH ** np.arange(np.ceil(np.log(MOST_FACTOR) / np.log(GROWTH))), MOST_FACTOR)
     most, high = search.end(ups, inside, beyond=np.inf)
-    return ControlRange(product=where[0][1].product, mol_l=mol_l, least=least, most=most, ends_low=low, ends_high=high)
+    return ControlRange(product=where[0][1].product, mol_l=mol_l, least=least, most=most, ends_low=low, ends_high=high,
+                        feeds=len(where))
 
 
 @dataclass(frozen=True, slots=True, eq=False)

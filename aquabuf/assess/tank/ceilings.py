@@ -51,8 +51,8 @@ def hydroxide_ksp_of_solubility(mol_l: ArrayLike) -> Array:
 def hydroxide_ceiling_ph(ksp: ArrayLike, acid_eq_l: ArrayLike, c: Conditions) -> Array:
     """Highest pH that a hydroxide M(OH)2 brings a strong acid to, its own metal ion holding it back. [-]
 
-    M++ is half of acid and hydroxide, so OH^2 (acid + OH) = 2 Ksp. Follows from the definition of Ksp; other sources of the
-    metal, its pairs with sulfate and hydroxide left out. ksp in mol/L, acid_eq_l 0 or more.
+    M++ is half of acid and hydroxide, so OH^2 (acid + OH) = 2 Ksp. Follows from the definition of Ksp; other sources of
+    the metal and its pairs with sulfate and hydroxide are left out. ksp in concentrations; acid_eq_l 0 or more.
     """
     twice, acid = 2.0 * np.asarray(ksp, dtype=float), np.maximum(np.asarray(acid_eq_l, dtype=float), 0.0)
     oh = np.cbrt(twice) + 0.0 * acid
@@ -85,14 +85,14 @@ def _open_base(ph: Array, pco2_atm: Array, c: Conditions) -> tuple[Array, Array]
 def limestone_end_ph(acid_eq_l: ArrayLike, pco2_atm: ArrayLike, c: Conditions, ksp: ArrayLike | None = None) -> Array:
     """pH at which strong acid has dissolved all the limestone it can, under a pressure of CO2. [-]
 
-    Calcite saturation with the charges balanced: 2 Ca++ = acid + base, Ca++ = Ksp / CO3--. A bed without aeration stands
-    at about 1 atm, what bubbles off. ksp : in concentrations; that of calcite if not given.
+    Calcite saturation with the charges balanced: 2 Ca++ = acid + base, Ca++ = Ksp / CO3--. A bed without aeration
+    stands at about 1 atm, what bubbles off. ksp : in concentrations; that of calcite if not given.
     """
     acid, pressure = np.asarray(acid_eq_l, dtype=float), np.asarray(pco2_atm, dtype=float)
     k = calcite_ksp(c) if ksp is None else np.asarray(ksp, dtype=float)
 
     def gap(ph: Array) -> Array:
-        base, carbonate = _open_base(ph, pressure, c)
+        base, carbonate = _open_base(ph, np.where(pressure > 0.0, pressure, 1.0), c)
         return base + acid - 2.0 * k / carbonate
     found = _root(gap, np.broadcast_shapes(acid.shape, pressure.shape, k.shape))
     return np.where(np.isfinite(acid) & (pressure > 0.0), found, np.nan)

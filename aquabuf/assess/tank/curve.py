@@ -31,8 +31,10 @@ __all__ = ["WIDEST_GAP", "Band", "MeasuredCurve", "Resolution", "band", "held_ta
 Array = NDArray[np.float64]
 
 WIDEST_GAP = 0.5      # pH between neighboring points in the window; common practice, no source
+UNSURE_MOST = 0.1     # of the window: a wider step does where base is known as well as that; common practice
 FLOORED_TOLD = 1e-3   # of the rise of the curve, from which on flooring is told
 HALVINGS = 52
+ROUNDING = 1e-9       # of the rise of the curve
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -53,7 +55,7 @@ class MeasuredCurve:
     base_eq_l: Array
     ph: Array
     t_c: float = 25.0
-    dilution: ArrayLike = 1.0
+    dilution: Array | float = 1.0
     c_h: float = 0.0
     c_oh: float = 0.0
     tails: tuple[float, float] | None = None
@@ -64,13 +66,14 @@ class MeasuredCurve:
         base, ph = (np.asarray(v, dtype=float) for v in (self.base_eq_l, self.ph))
         where = f"the titration curve of {self.sample_id!r}"
         if base.ndim != 1 or base.shape != ph.shape or base.size < FEWEST_POINTS:
-            raise InputError(f"{where} needs {FEWEST_POINTS} points or more, one base for each pH; found {base.size} and "
-                             f"{ph.size}. Titrate on, with smaller steps where pH is steep.")
+            raise InputError(f"{where} needs {FEWEST_POINTS} points or more, one base for each pH; found {base.size} "
+                             f"and {ph.size}. Titrate on, with smaller steps where pH is steep.")
         rises = (np.diff(base) > 0.0) & (np.diff(ph) > 0.0)  # False for nan
         if not rises.all():
             i = int(np.flatnonzero(~rises)[0]) + 1
-            raise InputError(f"{where}: base and pH must both rise from point to point; point {i + 1} has {base[i]:g} eq/L "
-                             f"at pH {ph[i]:g} after {base[i - 1]:g} eq/L at pH {ph[i - 1]:g}. Correct or remove it.")
+            raise InputError(f"{where}: base and pH must both rise from point to point; point {i + 1} has {base[i]:g} "
+                             f"eq/L at pH {ph[i]:g} after {base[i - 1]:g} eq/L at pH {ph[i - 1]:g}. Correct or remove "
+                             "it.")
         d = np.broadcast_to(np.asarray(self.dilution, dtype=float), base.shape)
         if not ((d > 0.0) & (d <= 1.0)).all():
             raise InputError(f"{where}: the share of waste in the mixture must be above 0 and 1 at most; found "
@@ -111,7 +114,8 @@ class MeasuredCurve:
         """pH after so much base (negative: acid), the inverse of `base_at`; nan out of reach."""
         y = np.asarray(base_eq_l, dtype=float)
         low, high = (np.full(y.shape, end) for end in self.reach)
-        inside = (y >= self.base_at(low)) & (y <= self.base_at(high))
+        least, most = self.base_at(low), self.base_at(high)
+        inside = (y >= least - ROUNDING * (most - least)) & (y <= most + ROUNDING * (most - least))
         for _ in range(HALVINGS):
             middle = 0.5 * (low + high)
             above = self.base_at(middle) > y
@@ -133,15 +137,15 @@ class MeasuredCurve:
         """
         if (self.c_h, self.c_oh) == (c_h, c_oh):
             return self
-        water = c_oh * exp10(self.ph) - c_h * exp10(-self.ph)
-        held = self.base_eq_l - water / self.dilution
-        slope = LN10 * (c_oh * exp10(self.ph) + c_h * exp10(-self.ph)) / self.dilution
+        water, share = c_oh * exp10(self.ph) - c_h * exp10(-self.ph), np.asarray(self.dilution)
+        held = self.base_eq_l - water / share
+        slope = LN10 * (c_oh * exp10(self.ph) + c_h * exp10(-self.ph)) / share
         q, meter = curve_quantities()["base_added_eq_l"], curve_quantities()["ph"]
         error = np.hypot(meter.default_u * slope, q.default_u + q.default_u_rel * np.abs(self.base_eq_l))
         floored = np.asarray(isotonic_regression(held, weights=error**-2).x)
         told = list(self.notes)
-        if self.dilution.min() < 1.0:
-            told.append(f"thinning by the titrant, down to {100.0 * self.dilution.min():.3g} % of waste, was taken out")
+        if share.min() < 1.0:
+            told.append(f"thinning by the titrant, down to {100.0 * share.min():.3g} % of waste, was taken out")
         told += _floor_words(self.ph, floored - held, float(self.base_eq_l[-1] - self.base_eq_l[0]))
         new = replace(self, base_eq_l=floored + water, dilution=1.0, c_h=c_h, c_oh=c_oh, notes=tuple(told))
         raw = self.raw_ph
@@ -153,8 +157,8 @@ class MeasuredCurve:
         Raises InputError while water is not told apart.
         """
         if not self.c_h > 0.0 or not self.c_oh > 0.0:
-            raise InputError(f"the curve of {self.sample_id!r} can be carried on by strong acid and base only when water is "
-                             "told apart; found no constants of water. Call with_water first.")
+            raise InputError(f"the curve of {self.sample_id!r} can be carried on by strong acid and base only when "
+                             "water is told apart; found no constants of water. Call with_water first.")
         return replace(self, tails=(low_ph, high_ph), notes=(*self.notes, _beyond_words(self)))
 
 
@@ -163,13 +167,13 @@ def _floor_words(ph: Array, shift: Array, rise: float) -> list[str]:
     if not hit.size:
         return []
     worst = float(np.abs(shift).max())
-    return [f"from pH {ph[hit[0]]:.2f} to {ph[hit[-1]]:.2f} the curve is flatter than water alone can be; it was floored by "
-            f"up to {worst:.2g} eq/L ({100.0 * worst / rise:.2g} % of its rise): check the electrode at its ends"]
+    return [f"from pH {ph[hit[0]]:.2f} to {ph[hit[-1]]:.2f} the curve is flatter than water alone can be; it was "
+            f"floored by up to {worst:.2g} eq/L ({100.0 * worst / rise:.2g} % of its rise): check the electrode there"]
 
 
 def _beyond_words(curve: MeasuredCurve) -> str:
-    return (f"measured from pH {curve.ph[0]:.2f} to {curve.ph[-1]:.2f}; beyond, only strong acid and base and water are "
-            "counted, so that a buffer there would be missed")
+    return (f"measured from pH {curve.ph[0]:.2f} to {curve.ph[-1]:.2f}; beyond, only strong acid and base and water "
+            "are counted, so that a buffer there would be missed")
 
 
 def measured(points: CurvePoints, t_c: float = 25.0) -> MeasuredCurve:
@@ -197,8 +201,8 @@ def held_table(curve: MeasuredCurve, c_h: float, c_oh: float) -> tuple[Array, fl
     known = curve.with_water(c_h, c_oh)
     raw = curve.raw_ph
     if np.isnan(raw):
-        raise InputError(f"the titration curve of {curve.sample_id!r} must hold the raw waste, with nothing added; it runs "
-                         f"from {curve.base_eq_l[0]:.4g} to {curve.base_eq_l[-1]:.4g} eq/L. Add its pH at 0 added.")
+        raise InputError(f"the titration curve of {curve.sample_id!r} must hold the raw waste, with nothing added; it "
+                         f"runs from {curve.base_eq_l[0]:.4g} to {curve.base_eq_l[-1]:.4g} eq/L. Add its pH at 0.")
     low, high = known.ph[0], known.ph[-1]
     at = np.clip(np.append(GRID_PH, ZERO_LEVEL_PK), low, high)
     held = known._held(at)
@@ -310,7 +314,8 @@ def resolution(curve: MeasuredCurve, ph_low: float, ph_high: float, widest: floa
     Raises InputError for a window whose ends do not rise.
     """
     if not ph_low < ph_high:
-        raise InputError(f"a window needs a low and a high pH, in this order; found {ph_low:g} and {ph_high:g}. Turn them.")
+        raise InputError(f"a window needs a low and a high pH, in this order; found {ph_low:g} and {ph_high:g}. "
+                         "Turn them.")
     covered = bool(curve.ph[0] <= ph_low and ph_high <= curve.ph[-1])
     touch = np.flatnonzero((curve.ph[1:] > ph_low) & (curve.ph[:-1] < ph_high))
     points = int(((curve.ph >= ph_low) & (curve.ph <= ph_high)).sum())
@@ -322,19 +327,20 @@ def resolution(curve: MeasuredCurve, ph_low: float, ph_high: float, widest: floa
     i = int(touch[np.argmax(steps)])
     gap = float(curve.ph[i + 1] - curve.ph[i])
     held = curve.base_eq_l - curve._water(curve.ph)
-    unsure = float(np.diff(held)[touch].max())
+    unsure = float(held[i + 1] - held[i])
     first, last = float(curve.base_eq_l[i]), float(curve.base_eq_l[i + 1])
     window = float(curve.base_at(ph_high) - curve.base_at(ph_low)) if covered else np.nan
     step = (last - first) / np.ceil(gap / widest)
     words = [] if covered else [_uncovered_words(curve, ph_low, ph_high)]
-    if gap > widest:
+    fine = gap <= widest or unsure <= UNSURE_MOST * window
+    if not fine:
         share = f", {100.0 * unsure / window:.3g} % of the window" if covered else ""
-        words.append(f"From pH {curve.ph[i]:.2f} to {curve.ph[i + 1]:.2f} no point was read ({gap:.2g} pH; {widest:g} is the "
-                     f"most by common practice), so base there is known to {unsure:.2g} eq/L{share}. Titrate again from "
-                     f"{first:.4g} to {last:.4g} eq/L in steps of {step:.2g} eq/L or less, with thinner titrant if the "
-                     "burette cannot, until no step is wider.")
+        words.append(f"From pH {curve.ph[i]:.2f} to {curve.ph[i + 1]:.2f} no point was read ({gap:.2g} pH; {widest:g} "
+                     f"is the most by common practice), so base there may be off by up to {unsure:.2g} eq/L{share}. "
+                     f"Titrate again from {first:.4g} to {last:.4g} eq/L in steps of {step:.2g} eq/L or less, with "
+                     "thinner titrant if the burette cannot, until no step is wider.")
     return Resolution(covered=covered, points=points, gap_low=float(curve.ph[i]), gap_high=float(curve.ph[i + 1]),
-                      unsure_eq_l=unsure, window_eq_l=window, step_eq_l=float(step), fine=covered and gap <= widest,
+                      unsure_eq_l=unsure, window_eq_l=window, step_eq_l=float(step), fine=covered and fine,
                       words=" ".join(words))
 
 

@@ -9,9 +9,9 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 
 from aquabuf.assess.tank.curve import MeasuredCurve
-from aquabuf.assess.tank.profile import Profile
 from aquabuf.assess.tank.reagents import Reagent
 from aquabuf.assess.tank.waste import Waste
+from aquabuf.readings.profile_file import ProfileTable
 
 __all__ = ["Arrival", "Batch", "Daily", "Job", "Site", "Spread", "Trial", "Window", "Wishes"]
 
@@ -113,7 +113,10 @@ class Trial:
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class Job:
-    """A stream file, read and checked."""
+    """A stream file, read and checked.
+
+    residence_min : by reagent, where the file sets it. profile : measured course; statistics of the wastes else.
+    """
 
     name: str
     arrivals: tuple[Arrival, ...]
@@ -122,9 +125,10 @@ class Job:
     site: Site
     wishes: Wishes
     trial: Trial
+    residence_min: Mapping[str, float] = field(default_factory=dict)
     base: str | None = None
     acid: str | None = None
-    profile: Profile | None = None
+    profile: ProfileTable | None = None
     date: str = ""
     note: str = ""
     currency: str = ""

@@ -17,13 +17,14 @@ from aquabuf.assess.plant.plan_store import Told, read_product
 from aquabuf.assess.plant.toml_lines import toml_lines
 from aquabuf.assess.tank.job import Job, Site, Trial, Window, Wishes
 from aquabuf.assess.tank.job_wastes import read_wastes
-from aquabuf.assess.tank.profile import Profile, profile_of
 from aquabuf.assess.tank.reagents import Reagent, reagent_of
 from aquabuf.errors import FileError, InputError
+from aquabuf.readings.profile_file import ProfileTable, read_profile
 
 __all__ = ["SECTIONS", "read_stream"]
 
 SECTIONS = ("tank", "acids", "wastes", "profile", "window", "reagents", "use", "site", "layout", "simulate")
+S_PER_H = 3600.0
 
 
 def read_stream(path: str | Path) -> Job:
@@ -45,16 +46,16 @@ def read_stream(path: str | Path) -> Job:
             raise top.unknown(name, SECTIONS, "a table of a stream file")
     told = Told()
     head = _section(top, content, "tank", told, needed=True)
-    profile, names = _profile(top, content, path.parent, told)
-    arrivals = read_wastes(top, content, path.parent, told, profile_has=names)
+    profile = _profile(top, content, path.parent, told)
+    arrivals = read_wastes(top, content, path.parent, told, has_profile=profile is not None)
     window = _window(top, content, told)
-    reagents = MappingProxyType(_reagents(top, content, told))
+    reagents, residence = _reagents(top, content, told)
     use = _section(top, content, "use", told)
     for kind in ("base", "acid"):
         _check_use(top, use, kind, reagents)
     return Job(
         name=head["name"], date=head.get("date", ""), note=head.get("note", ""), currency=head.get("currency", ""),
-        arrivals=arrivals, window=window, reagents=reagents, base=use.get("base"), acid=use.get("acid"),
+        arrivals=arrivals, window=window, reagents=reagents, residence_min=residence, base=use.get("base"), acid=use.get("acid"),
         site=_site(top, content, told), wishes=_wishes(top, content, told, window),
         trial=_trial(top, content, told), profile=profile, assumptions=tuple(told.assumptions),
         notes=tuple(told.notes), file=path.name)
@@ -100,25 +101,39 @@ def _window(top: Place, content: Mapping[str, Any], told: Told) -> Window:
     return Window(low=low, high=high, aim=aim, total_min=found["total"], each_min=found["each"], source=found["source"])
 
 
-def _reagents(top: Place, content: Mapping[str, Any], told: Told) -> dict[str, Reagent]:
-    """Reagents: the keys of a product of a store, and those of a neutralization."""
+def _reagents(top: Place, content: Mapping[str, Any], told: Told,
+              ) -> tuple[Mapping[str, Reagent], Mapping[str, float]]:
+    """Reagents, by the keys of a product of a store and those of a neutralization; residence times that are set."""
     table = top.inner("reagents", label="[reagents]").table(content.get("reagents", {}))
     if not table:
         raise InputError(f"{top.file}: a stream file needs one reagent or more in [reagents]; none is there. Add for "
                          "example [reagents.caustic] with is = \"caustic soda\".")
     own = plan_keys("reagents")
-    found = {}
+    found, residence = {}, {}
     for name, value in table.items():
         place = top.inner("reagents", name, label=f"[reagents.{name}]")
         keys = place.table(value)
         more = check_keys(place, {k: v for k, v in keys.items() if k in own}, "reagents")
-        stocked, _ = read_product(place, name, {k: v for k, v in keys.items() if k not in own}, told)
-        found[name] = place.tried("is", lambda s=stocked, m=more: reagent_of(
-            s, efficiency=m.get("efficiency"), fed=m.get("fed"), fed_density_kg_l=m.get("fed_density"),
-            residence_min=m.get("residence"), dissolution_per_min=_per_min(m.get("dissolves"))))
-        for words in found[name].assumptions:
-            told.assume(f"{place.label}: {words}")
-    return found
+        stocked, feed = read_product(place, name, {k: v for k, v in keys.items() if k not in own}, told)
+        found[name] = place.tried("is", lambda s=stocked, f=feed, m=more: reagent_of(
+            s, efficiency=m.get("efficiency"), made_up=f.made_up, dry=m["dry"],
+            dissolution_per_min=_per_min(m.get("dissolves"))))
+        if "residence" in more.values:
+            residence[name] = more["residence"]
+        _tell(place, found[name], more, feed.made_up is None, told)
+    return MappingProxyType(found), MappingProxyType(residence)
+
+
+def _tell(place: Place, reagent: Reagent, more: Checked, made_up_by_table: bool, told: Told) -> None:
+    """What was taken from the table of reagents."""
+    if "efficiency" not in more.values:
+        told.assume(f"{place.label}: {100.0 * reagent.efficiency:g} % of its equivalents react "
+                    f"({reagent.efficiency_source}), as the file does not say")
+    if made_up_by_table and reagent.fed_as.endswith("made up on site"):
+        told.assume(f"{place.label}: fed as {reagent.fed_as}, as the file does not say")
+    if reagent.dissolution_per_min is not None and "dissolves" not in more.values:
+        told.assume(f"{place.label}: dissolves at {60.0 * reagent.dissolution_per_min:.3g} per h, the rate of the "
+                    "reagents table, as the file does not say")
 
 
 def _per_min(per_h: float | None) -> float | None:
@@ -137,19 +152,19 @@ def _check_use(top: Place, use: Checked, kind: str, reagents: Mapping[str, Reage
                           f"{'an acid' if kind == 'base' else 'a base'}. Name another.", kind)
 
 
-def _profile(top: Place, content: Mapping[str, Any], folder: Path, told: Told) -> tuple[Profile | None, tuple[str, ...]]:
+def _profile(top: Place, content: Mapping[str, Any], folder: Path, told: Told) -> ProfileTable | None:
     if "profile" not in content:
-        return None, ()
+        return None
     found = _section(top, content, "profile", told)
     place = top.inner("profile", label="[profile]")
     file = folder / found["file"]
     if not file.is_file():
         raise place.error(f"file must be a table beside the stream file; found no file {found['file']!r}. Correct the "
                           "name.", "file")
-    names = tuple(content.get("wastes", {})) if isinstance(content.get("wastes"), dict) else ()
-    profile, words = profile_of(file, names, hold_gaps=found["hold_gaps"])
-    told.notes.extend(words)
-    return profile, names
+    names = tuple(content["wastes"]) if isinstance(content.get("wastes"), dict) else ()
+    table = read_profile(file, names, hold_gap_s=S_PER_H * found["hold_gaps"])
+    told.notes.extend(f"{place.label}: {words}" for words in table.notes)
+    return table
 
 
 def _site(top: Place, content: Mapping[str, Any], told: Told) -> Site:

@@ -6,17 +6,20 @@ from collections.abc import Mapping
 from pathlib import Path
 from typing import Any
 
+import numpy as np
+
 from aquabuf.assess.plant.plan_keys import Checked, check_keys
 from aquabuf.assess.plant.plan_place import Place, nearest_word, shown_value
 from aquabuf.assess.plant.plan_store import Told
 from aquabuf.assess.plant.plan_units import in_key_unit
-from aquabuf.assess.tank.curve import MeasuredCurve, curves_of, median_curve
+from aquabuf.assess.tank.curve import MeasuredCurve, measured, strength_of
 from aquabuf.assess.tank.job import Arrival, Batch, Daily, Spread
 from aquabuf.assess.tank.waste import CARBON, Waste, dissolved
 from aquabuf.chem.acids import Acid, acid_table
 from aquabuf.chem.metals import metals
 from aquabuf.chem.products import Product, find_product, products
 from aquabuf.errors import InputError
+from aquabuf.readings.curve_file import read_curves
 from aquabuf.readings.entries import number_and_unit
 from aquabuf.readings.schema import quantities
 from aquabuf.units import Unit, parse_unit, substances
@@ -24,12 +27,13 @@ from aquabuf.units import Unit, parse_unit, substances
 __all__ = ["read_wastes"]
 
 ALKALINITY = "alkalinity"
+MIDDLE_POINTS = 81  # at which samples are compared
 MOST_MOL_L = 20.0  # more than the strongest waste acid holds
 NORMAL = "N"        # equivalents per liter, as the trade writes it
 UNITS = "mg/L, g/L, mmol/L, meq/L, N"
 
 
-def read_wastes(top: Place, content: Mapping[str, Any], folder: Path, told: Told, *, profile_has: tuple[str, ...],
+def read_wastes(top: Place, content: Mapping[str, Any], folder: Path, told: Told, *, has_profile: bool,
                 ) -> tuple[Arrival, ...]:
     """The wastes of a stream file in its order. Raises InputError naming line, key and remedy."""
     table = top.inner("wastes", label="[wastes]").table(content.get("wastes", {}))
@@ -38,7 +42,7 @@ def read_wastes(top: Place, content: Mapping[str, Any], folder: Path, told: Told
                          "[wastes.rinse] with its temperature, flow and what it holds.")
     own = _own_acids(top, content)
     return tuple(_arrival(top.inner("wastes", name, label=f"[wastes.{name}]"), name, value, own, folder, told,
-                          in_profile=name in profile_has) for name, value in table.items())
+                          in_profile=has_profile) for name, value in table.items())
 
 
 def _own_acids(top: Place, content: Mapping[str, Any]) -> dict[str, tuple[Acid, float | None]]:
@@ -118,12 +122,14 @@ def _samples(place: Place, found: Checked, folder: Path, told: Told) -> tuple[Me
     if not file.is_file():
         raise place.error(f"titration must be a table beside the stream file; found no file {name!r}. Correct the name.",
                           "titration")
-    curves, notes = curves_of(file, t_c=found["temperature"])
-    told.notes.extend(f"{place.label}: {words}" for words in notes)
-    if not curves:
-        raise place.error(f"no titration of {name} can be used: {notes[0] if notes else 'it is empty'}. Mend the table.",
-                          "titration")
-    return curves
+    table = place.tried("titration", lambda: read_curves(file))
+    told.notes.extend(f"{place.label}, {name}: {words}" for words in table.notes)
+    lines = [f"row {r.row}, sample {r.sample_id!r}, {r.column}: {r.rule}; found {r.value}. {r.remedy}"
+             for r in table.refused.itertuples()]
+    told.notes.extend(f"{place.label}, {name}, left out: {words}" for words in lines)
+    if not table.curves:
+        raise place.error(f"no titration of {name} can be used. {lines[0] if lines else 'It is empty'}.", "titration")
+    return tuple(measured(points, found["temperature"]) for points in table.curves)
 
 
 def _chosen(place: Place, found: Checked, samples: tuple[MeasuredCurve, ...], told: Told) -> MeasuredCurve | None:
@@ -131,7 +137,7 @@ def _chosen(place: Place, found: Checked, samples: tuple[MeasuredCurve, ...], to
         return None
     wanted = found.get("sample")
     if wanted is None:
-        curve = median_curve(samples)
+        curve = _middle(samples)
         if len(samples) > 1:
             told.assume(f"{place.label}: designed for sample {curve.sample_id}, the middle one of {len(samples)} by demand")
         return curve
@@ -139,6 +145,15 @@ def _chosen(place: Place, found: Checked, samples: tuple[MeasuredCurve, ...], to
     if wanted not in by_name:
         raise place.unknown(wanted, by_name, f"a sample of {found['titration']}")
     return by_name[wanted]
+
+
+def _middle(samples: tuple[MeasuredCurve, ...]) -> MeasuredCurve:
+    """The sample in the middle by its strength, the first of two."""
+    low, high = max(c.ph[0] for c in samples), min(c.ph[-1] for c in samples)
+    if len(samples) == 1 or not low < high:
+        return samples[0]
+    strength, _ = strength_of(samples, np.linspace(low, high, MIDDLE_POINTS))
+    return samples[int(np.argsort(strength, kind="stable")[(len(samples) - 1) // 2])]
 
 
 # ---------------------------------------------------------------- what is dissolved

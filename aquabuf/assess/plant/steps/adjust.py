@@ -96,7 +96,7 @@ class Adjust:
     def _inside(self) -> tuple[Target, ...]:
         """The targets, windows with two ends narrowed by the margin."""
         free = [self.margin * (t.high - t.low) for t in self.targets]
-        return tuple(replace(t, low=t.low + f, high=t.high - f) if np.isfinite(f) else t
+        return tuple(replace(t, low=t.low + f, high=max(t.low + f, t.high - f)) if np.isfinite(f) else t
                      for t, f in zip(self.targets, free, strict=True))
 
     def _one_curved(self) -> bool:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -78,6 +78,10 @@ class CalciteContactor:
         if self.rate_per_min is not None and self.contact_min is not None:
             return float(share_in_bed(self.rate_per_min, self.contact_min))
         return USUAL_SHARE if self.share is None else self.share
+
+    def held(self, doses: tuple[Dosed, ...]) -> CalciteContactor:
+        """The same bed behind another dose of gas; what dissolves is up to the water and no feed."""
+        return self if self.carbon_dioxide is None else replace(self, co2_mol_l=doses[0].mol_l)
 
     def run(self, stream: Stream) -> StepOutcome:
         """The water after the bed. Water that would deposit passes unchanged."""
