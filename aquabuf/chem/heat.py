@@ -1,7 +1,7 @@
 """Heat of neutralization and of dilution, and how far it warms water. Heat given off is positive; kJ.
 
-Enthalpies at 25 °C and infinite dilution. Water is counted at 4.18 kJ per liter and kelvin; salts lower that by some per
-cent, so that strong wastes warm a little more.
+Enthalpies at 25 °C and infinite dilution. Water is counted at 4.18 kJ per liter and kelvin; salts lower that by some
+per cent, so that strong wastes warm a little more.
 """
 
 from __future__ import annotations
@@ -64,7 +64,8 @@ def carbonic_enthalpies_kj_mol(t_c: float = 25.0) -> tuple[float, float]:
     """Enthalpies of the two ionizations of carbonic acid, from its constants by van 't Hoff's equation. [kJ/mol]"""
     low, high = t_c - VANT_HOFF_STEP, t_c + VANT_HOFF_STEP
     inverse = 1.0 / kelvin(low) - 1.0 / kelvin(high)
-    first, second = (float(1e-3 * GAS_CONSTANT * np.log(k(high) / k(low)) / inverse) for k in (k1_carbonic, k2_carbonic))
+    first, second = (float(1e-3 * GAS_CONSTANT * np.log(k(high) / k(low)) / inverse) for k in (k1_carbonic,
+                                                                                               k2_carbonic))
     return first, second
 
 
@@ -79,13 +80,14 @@ def dilution_heat_kj_mol(formula: str, strength: float) -> float:
     """Heat that a reagent solution gives off when it is diluted without end. [kJ/mol]
 
     strength : mass fraction of the active substance, above 0 to 1. [-] H2SO4 as `sulfuric_dilution_kj_mol`; others by
-    straight lines over molality between the points of `data/dilution_heats.csv`, read on by a fifth past the last; nan for
-    a substance or strength that it does not have.
+    straight lines over molality between the points of `data/dilution_heats.csv`, read on by a fifth past the last; nan
+    for a substance or strength that it does not have.
 
     Raises InputError for a strength that is no mass fraction.
     """
     if not 0.0 < strength <= 1.0:
-        raise InputError(f"the strength of {formula} must be a mass fraction above 0 and at most 1; found {strength:g}. "
+        raise InputError(f"the strength of {formula} must be a mass fraction above 0 and at most 1; found "
+                         f"{strength:g}. "
                          "Give 50 % as 0.5.")
     if formula == "H2SO4":
         water = (1.0 - strength) / molar_mass("H2O")

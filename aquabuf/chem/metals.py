@@ -1,13 +1,15 @@
-"""Metals that fall out as hydroxides: what stays dissolved at a pH, how much hydroxide, and where one pH cannot serve all.
+"""Metals that fall out as hydroxides: what stays dissolved at a pH, how much hydroxide, and where one pH cannot serve
+all.
 
 The table `data/metals.csv` has one row per metal. Over the solid, with [OH-] = 10^(pH - pKw):
 
     free ion = 10^-pKsp / [OH-]^z,    anion = 10^log_k_up [OH-]^n    for M(OH)z(s) + n OH- = M(OH)z+n
 
 Solubility products are of fresh precipitates (aged ones dissolve less) at 25 °C; activities are those of an ideal
-solution, or conditional where pkw is. Hydroxo complexes between ion and anion, complexes with cyanide, ammonia, citrate or
-EDTA, and fine solids that pass a clarifier are not in it: all hold more metal in the effluent. Near its least a computed
-level is therefore a lower bound; plants seldom keep below some tenths of a mg/L by hydroxide alone (practice).
+solution, or conditional where pkw is. Hydroxo complexes between ion and anion, complexes with cyanide, ammonia,
+citrate or EDTA, and fine solids that pass a clarifier are not in it: all hold more metal in the effluent. Near its
+least a computed level is therefore a lower bound; plants seldom keep below some tenths of a mg/L by hydroxide alone
+(practice).
 """
 
 from __future__ import annotations
@@ -44,8 +46,8 @@ START_MOL_L, DONE_MOL_L = 1e-2, 1e-5  # of the tables of precipitation that anal
 class Metal:
     """A metal and its hydroxide.
 
-    pksp : of M(OH)z(s). log_k_up, charge_up : constant of M(OH)z(s) + n OH- and n, the charge of the anion; None where it
-    forms none. ph_low, ph_high : window of least solubility in practice, nan where none is known.
+    pksp : of M(OH)z(s). log_k_up, charge_up : constant of M(OH)z(s) + n OH- and n, the charge of the anion; None where
+    it forms none. ph_low, ph_high : window of least solubility in practice, nan where none is known.
     table_window : pH of start, end and return as a table of analysts has it, nan where it has none.
     limit_mg_l : level to compare with where no other is given, nan where none is known. mg/L of the element.
     """
@@ -174,8 +176,10 @@ def window_disagreement(metal: Metal, pkw: float = PKW) -> str:
              if not (np.isnan(a) or np.isnan(b))]
     if not any(apart):
         return ""
-    return (f"{metal.name}: starts to fall out, is out, dissolves again at pH {_window_words(computed)} by its constants and at "
-            f"{_window_words(metal.table_window)} by {metal.table_source}. Where they differ, find the pH in a jar test.")
+    return (f"{metal.name}: starts to fall out, is out, dissolves again at pH {_window_words(computed)} by its "
+            "constants and at "
+            f"{_window_words(metal.table_window)} by {metal.table_source}. Where they differ, find the pH in a jar "
+            "test.")
 
 
 def _window_words(window: tuple[float, float, float]) -> str:
@@ -221,7 +225,8 @@ def conflict(chosen: Sequence[Metal], limits_mol_l: Mapping[str, float] | None =
     given = limits_mol_l or {}
     for name, value in given.items():
         if not value > 0.0:
-            raise InputError(f"the level of {metal_named(name).name} must be above zero; found {value:g} mol/L. Give what "
+            raise InputError(f"the level of {metal_named(name).name} must be above zero; found {value:g} mol/L. Give "
+                             "what "
                              "the permit allows.")
     levels = {m.name: given.get(m.name, m.limit_mol_l) for m in chosen}
     windows = {m.name: soluble_window(m, levels[m.name], pkw) for m in chosen if np.isfinite(levels[m.name])}
@@ -238,14 +243,16 @@ def _common(windows: Mapping[str, tuple[float, float]], purpose: str) -> tuple[f
         return np.nan, np.nan, ""
     never = [name for name, (low, _) in windows.items() if np.isnan(low)]
     if never:
-        return np.nan, np.nan, (f"By these constants no pH brings {_listed(never)} below its level by hydroxide alone: test it, "
+        return np.nan, np.nan, (f"By these constants no pH brings {_listed(never)} below its level by hydroxide "
+                                "alone: test it, "
                                 "or plan for sulfide, carbonate or another treatment.")
     low, high = max(w[0] for w in windows.values()), min(w[1] for w in windows.values())
     if low <= high:
         return low, high, ""
     late = [f"{n} at least {w[0]:.1f}" for n, w in windows.items() if w[0] > high]
     early = [f"{n} at most {w[1]:.1f}" for n, w in windows.items() if w[1] < low]
-    return np.nan, np.nan, (f"No single pH serves all metals {purpose}: {_listed([*late, *early])}. Treat in two stages with "
+    return np.nan, np.nan, (f"No single pH serves all metals {purpose}: {_listed([*late, *early])}. Treat in two "
+                            "stages with "
                             "a clarifier between, or keep the streams apart; after the higher pH the discharge must be "
                             "brought back.")
 

@@ -15,8 +15,8 @@ __all__ = ["metal_table"]
 def metal_table(metal: Metal, per_unit: ArrayLike, *, pkw: float = PKW) -> MetalTable:
     """Solubility of a hydroxide on GRID_PH. [mol/L]
 
-    Ideal activities of the metal ions; `pkw` may be conditional, -log10 of [H+] times [OH-] at 10^-pH, which carries the
-    temperature and the activity of hydroxide. Ksp in terms of OH- hardly moves with temperature.
+    Ideal activities of the metal ions; `pkw` may be conditional, -log10 of [H+] times [OH-] at 10^-pH, which carries
+    the temperature and the activity of hydroxide. Ksp in terms of OH- hardly moves with temperature.
 
     Parameters
     ----------

@@ -174,7 +174,7 @@ def fit_spectrum(base_eq_l: ArrayLike, ph: ArrayLike, *, c_h: float, c_oh: float
                          "scatter of the burette.")
     start = Spectrum(pk=grid, mol_l=np.zeros(grid.size), carbon_mol_l=0.0, constant=0.0, covariance=np.zeros((2, 2)),
                      grid_pk=grid, grid_mol_l=np.zeros(grid.size), ridge=0.0, c_h=c_h, c_oh=c_oh, k1=k1, k2=k2, ph=x,
-                     residual_eq_l=y, error_eq_l=np.hypot(u_ph * _slope(x, y), u_base))
+                     residual_eq_l=y, error_eq_l=np.hypot(u_ph * np.ptp(y) / np.ptp(x), u_base))
     problem = _Problem(y, d, u_base, u_ph, carbonate)
     smooth = start
     for _ in range(ROUNDS):
@@ -211,13 +211,6 @@ def _carbonic(ph: Array, k1: float, k2: float) -> tuple[Array, Array]:
     inv_h = exp10(ph)
     mean, variance, _ = moments(fractions((np.asarray(k1), np.asarray(k2)), inv_h))
     return mean, variance
-
-
-def _slope(x: Array, y: Array) -> Array:
-    """First guess of the slope of a curve whose readings may scatter: over both neighbors in order of base."""
-    order = np.argsort(y)
-    rise = np.gradient(y[order]) / np.maximum(np.abs(np.gradient(x[order])), 1e-3)
-    return rise[np.argsort(order)]
 
 
 @dataclass(frozen=True, slots=True)

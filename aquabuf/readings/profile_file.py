@@ -220,7 +220,7 @@ def _gaps(column: ProfileColumn, cells: Sequence[str], seconds: Array, usual: fl
                      f"{_span(float(step[at]))} after {cells[at]!r}",
                      f"Add the missing rows, or allow a gap of {_span(length)} to be held at the value before it")
     held = missing[~long]
-    told = f"{held.size} gaps between rows held at the value before, {_span(float(held.sum()))} in all"
+    told = f"{held.size} x rows missing, held at the value before ({_span(float(held.sum()))} in all)"
     return [told] if held.size else []
 
 
@@ -280,8 +280,8 @@ def _held(column: ProfileColumn, values: Array, seconds: Array, usual: float, ro
         problems.add(int(rows[at]), column.header, "each row needs a value", f"none for {_span(long)}",
                      f"Fill it in{zero}{allow}")
     last = np.maximum.accumulate(np.where(known, np.arange(values.size), 0))
-    told = [f"{int(kept.sum())} gaps in {column.header!r} held at the value before, "
-            f"{_span(float(length[kept].sum()))} in all"] if kept.any() else []
+    told = [f"{int(kept.sum())} x cells missing in {column.header!r}, held at the value before "
+            f"({_span(float(length[kept].sum()))} in all)"] if kept.any() else []
     return values[last], told
 
 

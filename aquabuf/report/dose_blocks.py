@@ -10,10 +10,10 @@ import pandas as pd
 
 from aquabuf.assess.plant.aims import aims_of
 from aquabuf.assess.plant.answer import Answer
-from aquabuf.assess.plant.curve import PH_STEP, DoseCurve, percent_words
+from aquabuf.assess.plant.curve import PH_STEP, DoseCurve
 from aquabuf.assess.plant.drift import UnderError, UnderFeedError, worst_of
-from aquabuf.assess.plant.faults import Fault
-from aquabuf.assess.plant.feed import both_units, shown
+from aquabuf.assess.plant.faults import FULL, Fault
+from aquabuf.assess.plant.feed import both_units, brief, shown
 from aquabuf.assess.plant.feed_lines import FeedLine
 from aquabuf.assess.plant.held import held_words
 from aquabuf.assess.plant.hold import buffer_words
@@ -59,7 +59,7 @@ def upset(answer: Answer) -> str:
 
 
 def _price(c: DoseCurve) -> str:
-    """What 0.1 pH costs in dose; a change of more than the dose itself is no price but a sign that pH hardly follows."""
+    """What 0.1 pH costs in dose; where that is more than the dose itself, that pH hardly follows it."""
     ways = [f"{shown(abs(change))} mg/L {'more' if change > 0.0 else 'less'} "
             f"{f'({shown(abs(percent))} %) ' if np.isfinite(percent) else ''}{verb} pH by {PH_STEP:g}"
             for change, percent, verb in ((c.up_mg_l, c.up_percent, "raises"), (c.down_mg_l, c.down_percent, "lowers"))
@@ -84,7 +84,7 @@ def _spreads(doses: pd.DataFrame) -> str:
     for r in doses.to_dict("records"):
         if r["u_mg_l_product"] > 0.0:
             if r["not_found_percent"] > 0.0:
-                missed.append(f"{percent_words(r['not_found_percent'])} of draws have no dose of {r['product']}")
+                missed.append(f"{brief(r['not_found_percent'], 2)} % of draws have no dose of {r['product']}")
             if r["high_mg_l_product"] > 0.0:
                 each.append(f"{r['product']} {shown(r['low_mg_l_product'])} to {shown(r['high_mg_l_product'])} mg/L")
     doses = f"the dose would be {', '.join(each)} in {100.0 * COVERAGE:.0f} % of draws" if each else ""
@@ -97,7 +97,8 @@ def _faults(answer: Answer) -> str:
         return ""
     several = {f.product.name for f in answer.faults for g in answer.faults
                if f.product.name == g.product.name and f.step != g.step}
-    rows = [[f.product.name, f.step if f.product.name in several else "", f.case, f"{shown(float(f.product.mg_l_product(f.dose_mol_l)[0]))} for "
+    rows = [[f.product.name, f.step if f.product.name in several else "", _case(f, bool(several)),
+              f"{shown(float(f.product.mg_l_product(f.dose_mol_l)[0]))} for "
              f"{shown(float(f.product.mg_l_product(f.wanted_mol_l)[0]))}", figure(float(f.ph_behind[0]), 2),
              figure(float(f.ph_final[0]), 2), shown(abs(float(f.excess_kg[0])))] for f in answer.faults]
     first = answer.faults[0]
@@ -115,7 +116,15 @@ def _lessons(faults: Sequence[Fault], several: set[str]) -> list[str]:
         where = f" in {f.step}" if f.product.name in several else ""
         for words in f.words()[1:]:
             of.setdefault(words, []).append(f"{f.product.name}{where} {f.case}")
-    return [f"{', '.join(feeds)}: {sentence(words)}" for words, feeds in of.items()]
+    said: dict[tuple[str, ...], list[str]] = {}
+    for words, feeds in of.items():
+        said.setdefault(tuple(feeds), []).append(sentence(words))
+    return [f"{', '.join(feeds)}: {' '.join(words)}" for feeds, words in said.items()]
+
+
+def _case(fault: Fault, short: bool) -> str:
+    """The case in the table; where steps take up room, in fewer words."""
+    return FULL.removeprefix("stuck at ") if short and fault.case == FULL else fault.case
 
 
 # ---------------------------------------------------------------- store

@@ -8,7 +8,7 @@ from matplotlib.ticker import MaxNLocator
 from numpy.typing import NDArray
 
 from aquabuf.assess.plant.answer import Answer
-from aquabuf.assess.plant.feed import shown
+from aquabuf.assess.plant.feed import brief
 from aquabuf.assess.plant.quantities import find_quantity, in_unit
 from aquabuf.assess.plant.season import MISSED, UNREAD, Season
 from aquabuf.assess.plant.steps.blend import Blend, Sweep
@@ -66,9 +66,9 @@ def plot_season_dose(season: Season, k: int, *, ax: Axes) -> Axes:
 
 def _band_words(low: float, high: float) -> str:
     """What nine rows of ten take."""
-    if shown(low) == shown(high):
-        return f"{shown(low)} mg/L in nine rows of ten" if high > 0.0 else "none in nine rows of ten"
-    return f"{shown(low)} to {shown(high)} mg/L in nine rows of ten"
+    if brief(low) == brief(high):
+        return f"{brief(low)} mg/L in nine rows of ten" if high > 0.0 else "none in nine rows of ten"
+    return f"{brief(low)} to {brief(high)} mg/L in nine rows of ten"
 
 
 def plot_season_ph(answer: Answer, *, ax: Axes) -> Axes:

@@ -147,8 +147,8 @@ def _thin(line: FeedLine) -> str:
     setting, machine = line.setting, line.spec.pump if line.rate.moved and line.spec.pump else line.spec.feeder
     if setting is None or machine is None or setting.status[0] != "set" or not setting.setting_pct[0] < THIN_PERCENT:
         return ""
-    return (f" Below {THIN_PERCENT:g} % few machines feed evenly (common practice, no source): give its range or turndown, "
-            "thin the product, or take a smaller one.")
+    return (f" Below {THIN_PERCENT:g} % few machines feed evenly (common practice, no source): give its range or "
+            "turndown, thin the product, or take a smaller one.")
 
 
 def _made_up(answer: Answer, line: FeedLine) -> list[str]:

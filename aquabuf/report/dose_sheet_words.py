@@ -84,8 +84,10 @@ def rate_words(line: FeedLine) -> tuple[str, str]:
     return metric_and_us(float(line.rate.product_kg_h[0]), "kg/h")
 
 
-def setting_words(line: FeedLine) -> tuple[str, str]:
-    """What to set in large letters, and what must be known of it."""
+def setting_words(line: FeedLine, *, bed: bool = False) -> tuple[str, str]:
+    """What to set in large letters, and what must be known of it; of a `bed` there is nothing to set."""
+    if bed:
+        return "bed", "keep it filled"
     if not np.isfinite(line.mol_l[0]):
         return "none", line.setting_words()
     if line.mol_l[0] == 0.0:
@@ -99,15 +101,15 @@ def setting_words(line: FeedLine) -> tuple[str, str]:
     return f"{knob} {shown(float(line.setting.setting_pct[0]))} %", line.setting.reach.owner
 
 
-def _cells(line: FeedLine, control: str, *, tight: bool) -> tuple[_Cell, ...]:
+def _cells(line: FeedLine, control: str, *, tight: bool, bed: bool) -> tuple[_Cell, ...]:
     product, rate = line.product, line.rate
     own = (f"in {line.step}: {product.product.name} ({product.product.formula}), {PERCENT * product.strength:.3g} % by "
            f"{product.strength_from}")
-    setting, about = setting_words(line)
+    setting, about = setting_words(line, bed=bed)
     if not np.isfinite(line.mol_l[0]):
         return (_Cell(product.name, own, bold=True), _Cell("none", bold=True), _Cell("–"), _Cell("–"),
                 _Cell(setting, about, bold=True, color=WARNED))
-    is_set = line.mol_l[0] == 0.0 or (line.setting is not None and line.setting.status[0] == "set")
+    is_set = bed or line.mol_l[0] == 0.0 or (line.setting is not None and line.setting.status[0] == "set")
     (metric, us), dose = rate_words(line), metric_and_us(line.mg_l_product, "mg/L")
     per_day = metric_and_us(float(rate.product_kg_d[0]), "kg/d")
     moved = "" if tight or not rate.moved else f"{rate.moved.removesuffix(' to pump')}; "
@@ -127,8 +129,8 @@ def feeds_block(answer: Answer, width: float, scale: float = 1.0) -> Block:
     parts = [Block((Line(0.0, 0.03, SET if answer.feasible else NOT_SET, 12.0, True), *titles), (0.26,), 0.29)]
     told: set[str] = set()
     for line in answer.feeds:
-        cells = [_cell_block(c, x, room, scale, tight) for c, x, room in
-                 zip(_cells(line, _control(answer, line), tight=tight), lefts, rooms, strict=True)]
+        row = _cells(line, _control(answer, line), tight=tight, bed=(line.step, line.product.name) in answer.beds)
+        cells = [_cell_block(c, x, room, scale, tight) for c, x, room in zip(row, lefts, rooms, strict=True)]
         row = tuple(item for cell in cells for item in cell.lines)
         parts.append(Block(row, (), max(c.height for c in cells)))
         if setting_words(line)[0] == OUT_OF_REACH and (answer.feasible or not tight):

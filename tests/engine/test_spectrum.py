@@ -20,6 +20,11 @@ def lost(ph, pks):
     return sum(j * t for j, t in enumerate(terms)) / sum(terms)
 
 
+def water_of(ph):
+    """[OH-] - [H+]."""
+    return KW * 10.0**ph - 10.0**-ph
+
+
 WASTES = {  # strong acid [eq/L], acids as (mol/L, pK values)
     "HCl 0.01 N": (0.01, []),
     "HCl 0.01 N + 1 mmol/L CT": (0.01, [(1e-3, PK_CARBONIC)]),
@@ -27,6 +32,7 @@ WASTES = {  # strong acid [eq/L], acids as (mol/L, pK values)
     "phosphoric 0.1 M": (0.0, [(0.1, [2.148, 7.198, 12.35])]),
     "citric 0.1 M": (0.0, [(0.1, [3.128, 4.761, 6.396])]),
     "acetic and carbonate": (0.0, [(0.05, [4.756]), (0.02, PK_CARBONIC)]),
+    "two close acids": (0.0, [(0.05, [4.8]), (0.03, [5.3])]),
     "three acids": (0.0, [(0.02, [4.5]), (0.03, [6.5]), (0.025, [8.5])]),
 }
 
@@ -60,7 +66,7 @@ def site_pks(pks):
     return np.sort(np.log10(-1.0 / np.real(roots)) * -1.0)
 
 
-@pytest.mark.parametrize("name", ["acetic 0.1 M", "phosphoric 0.1 M", "citric 0.1 M", "three acids"])
+@pytest.mark.parametrize("name", ["acetic 0.1 M", "phosphoric 0.1 M", "citric 0.1 M", "two close acids", "three acids"])
 def test_known_acids_are_found(name):
     """Strength within 3 % and pK within 0.1, one buffer per step, no carbon where there is none."""
     found = fit(name)
@@ -128,6 +134,14 @@ def test_demand_of_the_waste_thinned_tenfold(name):
     assert_allclose(fit(name).base_at(11.0, 0.1), thin, rtol=0.01)
 
 
+@pytest.mark.parametrize("share", [1.0, 0.3])
+def test_buffer_is_the_slope_of_base(share):
+    """Central differences, with carbon and with thinning."""
+    found, ph = fit("acetic and carbonate"), np.array([1.5, 4.0, 6.5, 9.0, 10.5, 12.5])
+    slope = (found.base_at(ph + 1e-5, share) - found.base_at(ph - 1e-5, share)) / 2e-5
+    assert_allclose(found.buffer_at(ph, share), slope, rtol=1e-6)
+
+
 def test_readings_thinned_by_titrant_tell_the_same_acid():
     """Each reading has its own share of waste; the acid found is that of the raw waste."""
     ph = np.linspace(2.9, 12.0, 40)
@@ -168,10 +182,33 @@ def test_stated_uncertainty_covers_the_truth(name):
 def test_uncertainty_of_one_acid_by_repetition():
     """The scatter of 200 seeded fits is the stated standard uncertainty."""
     found = [noisy("acetic 0.1 M", seed) for seed in range(200)]
+    assert sum(s.carbon_mol_l > 0.0 for s in found) < 20  # scatter is not taken for carbon
     found = [s for s in found if s.pk.size == 1]
     assert len(found) > 180
     assert_allclose(np.std([s.pk[0] for s in found]), np.median([s.u_pk[0] for s in found]), rtol=0.2)
     assert_allclose(np.std([s.mol_l[0] for s in found]), np.median([s.u_mol_l[0] for s in found]), rtol=0.2)
+
+
+def test_scatter_is_not_taken_for_a_buffer():
+    """A strong acid read with errors keeps its alkalinity, and seldom gets a buffer that is not there."""
+    found = [noisy("HCl 0.01 N", seed, u_share=2e-3) for seed in range(20)]
+    assert sum(s.pk.size > 0 for s in found) <= 3
+    assert_allclose([s.base_eq_l for s in found], -0.01, rtol=0.02)
+
+
+def test_the_penalty_is_as_strong_as_errors_allow():
+    """Discrepancy principle: larger stated errors, stronger smoothing; squares on the grid within the number of readings."""
+    base, ph = curve_of("three acids")
+
+    def squares(found):
+        left = base - water_of(ph) - 1.0 / (1.0 + 10.0 ** (found.grid_pk - ph[:, None])) @ found.grid_mol_l
+        return np.sum(((left - np.average(left, weights=found.error_eq_l**-2)) / found.error_eq_l) ** 2)
+
+    kind = {"u_base_eq_l": 1e-5, "carbonate": False, **WATER}
+    careful, careless = (fit_spectrum(base, ph, u_ph=u, **kind) for u in (0.005, 0.2))
+    assert careless.ridge > careful.ridge > 1e-7
+    assert squares(careless) < 1.1 * ph.size  # weights still followed the curve after the penalty was chosen
+    assert squares(fit_spectrum(base, ph, u_ph=0.2, ridge=10.0 * careless.ridge, **kind)) > ph.size
 
 
 def test_residuals_as_large_as_errors():

@@ -84,8 +84,8 @@ def test_gaps_are_held_only_if_told(table):
     assert_allclose(got.time_s, np.array([0, 1, 2, 5, 6]) * 3600.0)
     assert_allclose(got.flow_m3_h, [1, 2, 4, 8, 16])
     assert_allclose(got.strength[""], [1, 3, 1, 1, 5])
-    assert "1 gaps between rows held at the value before, 2 h in all" in got.notes
-    assert "1 gaps in 'strength' held at the value before, 1 h in all" in got.notes
+    assert "1 x rows missing, held at the value before (2 h in all)" in got.notes
+    assert "1 x cells missing in 'strength', held at the value before (1 h in all)" in got.notes
 
 
 def test_missing_cells(table):

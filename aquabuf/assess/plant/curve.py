@@ -12,7 +12,7 @@ from scipy.optimize import brentq
 
 from aquabuf.assess.frames import frame_of
 from aquabuf.assess.plant.aims import PERCENT, column_of
-from aquabuf.assess.plant.feed import shown
+from aquabuf.assess.plant.feed import brief
 from aquabuf.assess.plant.quantities import find_quantity, in_unit, measured
 from aquabuf.assess.plant.steps.base import Dosed, Held
 from aquabuf.assess.plant.store import Stocked
@@ -20,7 +20,7 @@ from aquabuf.assess.plant.stream import Stream
 from aquabuf.assess.plant.train import Passed
 from aquabuf.errors import InputError
 
-__all__ = ["CURVE_QUANTITIES", "PH_STEP", "DoseCurve", "dose_curve", "percent_words", "round_doses"]
+__all__ = ["CURVE_QUANTITIES", "PH_STEP", "DoseCurve", "dose_curve", "round_doses"]
 
 Array = NDArray[np.float64]
 
@@ -33,7 +33,6 @@ SLOPE_PART = 1e-5    # step of the slope in parts of the largest dose
 FINE = 401           # doses along which the weakest buffering is looked for
 WEAK = 1.25          # weakly buffered: intensity up to this times the least
 SCAN = 64            # doses on the way to a shifted pH
-ALL_FIGURES = 99.5    # percent from which two figures would be a power of ten
 FARTHEST = 1e4       # of them, in parts of the wanted dose or of the largest
 
 
@@ -85,24 +84,20 @@ class DoseCurve:
 
     def words(self) -> tuple[str, ...]:
         """What the curve says, a sentence each."""
-        return (f"{shown(self.wanted_mg_l)} mg/L of {self.product} gives pH {self.wanted_ph:.2f}; there 1 mg/L more or "
+        low, high = brief(self.weakest_low_mg_l), brief(self.weakest_high_mg_l)
+        weak = f"buffering is weakest from {low} to {high} mg/L (around pH {self.weakest_ph:.1f})"
+        if self.weak_throughout:
+            weak = f"buffering is much the same at every dose up to {brief(self.most_mg_l)} mg/L"
+        return (f"{brief(self.wanted_mg_l)} mg/L of {self.product} gives pH {self.wanted_ph:.2f}; there 1 mg/L more or "
                 f"less moves pH by about {abs(self.slope_ph_per_mg_l):.2g}",
                 self._cost(self.up_mg_l, self.up_percent, "raises"),
-                self._cost(self.down_mg_l, self.down_percent, "lowers"),
-                f"buffering is much the same at every dose up to {shown(self.most_mg_l)} mg/L" if self.weak_throughout
-                else f"buffering is weakest from {shown(self.weakest_low_mg_l)} to {shown(self.weakest_high_mg_l)} mg/L "
-                f"(around pH {self.weakest_ph:.1f})")
+                self._cost(self.down_mg_l, self.down_percent, "lowers"), weak)
 
     def _cost(self, change: float, percent: float, verb: str) -> str:
         if not np.isfinite(change):
             return f"no dose of {self.product} {verb} pH by {PH_STEP:g} from there"
-        share = f" ({percent_words(abs(percent))})" if np.isfinite(percent) else ""
-        return f"{shown(abs(change))} mg/L{share} {'more' if change > 0.0 else 'less'} {verb} pH by {PH_STEP:g}"
-
-
-def percent_words(percent: float, sign: str = "") -> str:
-    """A change in percent for people: two figures, or all of a whole number with more. `sign` : "+" writes it."""
-    return f"{percent:{sign}.2g} %" if abs(percent) < ALL_FIGURES else f"{percent:{sign},.0f} %"
+        share = f" ({brief(abs(percent), 2)} %)" if np.isfinite(percent) else ""
+        return f"{brief(abs(change), 2)} mg/L{share} {'more' if change > 0.0 else 'less'} {verb} pH by {PH_STEP:g}"
 
 
 def round_doses(wanted: float, most: float | None = None) -> Array:

@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from aquabuf.assess.plant.choose import MOST_PRODUCTS, cheapest
 from aquabuf.assess.plant.dose import NEGATIVE, NO_EFFECT, NOTHING, REACHED, Point, Solved, solve_doses
-from aquabuf.assess.plant.feed import shown
+from aquabuf.assess.plant.feed import brief
 from aquabuf.assess.plant.store import Stocked
 from aquabuf.assess.plant.stream import ALKALINITY, CARBON, Stream
 from aquabuf.assess.plant.targets import Target, reached
@@ -62,8 +62,8 @@ def why_not(stream: Stream, stock: Sequence[Stocked], targets: Sequence[Target],
     if ways:
         remedy = f"What would reach it: {'; or '.join(w.words for w in ways)}."
     else:
-        remedy = " ".join(["No single further product of the shipped table reaches it: widen a window, or drop a target.",
-                           *_taken_out(one, targets, air_co2_ppm)])
+        none = "No single further product of the shipped table reaches it: widen a window, or drop a target."
+        remedy = " ".join([none, *_taken_out(one, targets, air_co2_ppm)])
     return f"{wanted} cannot be met with {names}{cause}. {remedy}"
 
 
@@ -90,20 +90,22 @@ def _cause(one: Stream, stock: Sequence[Stocked], targets: Sequence[Target], air
     return _of_status(solved, tried, [p.quantity.name for p in points])
 
 
-def _each_alone(one: Stream, only: Stocked, points: Sequence[Point], targets: Sequence[Target], air_co2_ppm: float) -> str:
+def _each_alone(one: Stream, only: Stocked, points: Sequence[Point], targets: Sequence[Target], air_co2_ppm: float,
+                ) -> str:
     """What one product would have to do for each target by itself, where there are more of them than products."""
     said = [f": {len(points)} targets need as many products that work apart"]
     for point in points:
         solved = solve_doses(one, [only.product], [point], air_co2_ppm=air_co2_ppm)
-        alone = f"for {point.quantity.label} {point.quantity.text(float(np.ravel(point.value)[0]))} alone"
+        alone = f"{point.quantity.label} {point.quantity.text(float(np.ravel(point.value)[0]))} alone"
         if solved.status[0] == REACHED:
             found = reached(solved.stream, targets, air_co2_ppm)
             others = [f"{t.quantity.label} {t.quantity.text(float(found[t.quantity.name][0]))}" for t in targets
                       if t.quantity.name != point.quantity.name]
-            said.append(f"{alone} {shown(float(only.mg_l_product(solved.mol_l[0, 0])))} mg/L of {only.name}, which brings "
-                        f"{' and '.join(others)}")
+            mg_l = brief(float(only.mg_l_product(solved.mol_l[0, 0])))
+            said.append(f"{alone} takes {mg_l} mg/L of {only.name}, and then it has {' and '.join(others)}")
         elif solved.status[0] == NEGATIVE:
-            said.append(f"{alone} {shown(float(only.mg_l_product(-solved.mol_l[0, 0])))} mg/L of {only.name} taken out")
+            mg_l = brief(float(only.mg_l_product(-solved.mol_l[0, 0])))
+            said.append(f"{alone} would need {mg_l} mg/L of {only.name} taken out")
     return "; ".join(said)
 
 
@@ -114,7 +116,7 @@ def _of_status(solved: Solved, tried: Sequence[Stocked], wanted: Sequence[str]) 
         return ": they move these targets together, not apart"
     if solved.status[0] != NEGATIVE:
         return ": no dose of them reaches it"
-    parts = [f"{shown(float(s.mg_l_product(-x[0])))} mg/L of {s.name} taken out, which nothing does; "
+    parts = [f"{brief(float(s.mg_l_product(-x[0])))} mg/L of {s.name} taken out, which nothing does; "
              f"{_opposite(s, wanted)}"
              for s, x in zip(tried, solved.mol_l, strict=True) if x[0] < -NOTHING]
     return f": it would need {' and '.join(parts)}"
@@ -140,8 +142,8 @@ def _taken_out(one: Stream, targets: Sequence[Target], air_co2_ppm: float) -> li
     for t in targets:
         if t.quantity.name in ONLY_ADDED and reached(one, (t,), air_co2_ppm)[t.quantity.name][0] > t.high:
             soften = "soften, or " if t.quantity.name in SOFTENED else ""
-            out.append(f"The water brings more than this {t.quantity.label}, which no dose takes out: {soften}blend with "
-                       "water that has less.")
+            out.append(f"The water brings more {t.quantity.label} than this, and no dose takes it out: {soften}blend "
+                       "with water that has less.")
     return out
 
 
@@ -171,8 +173,8 @@ def _ways(one: Stream, stock: Sequence[Stocked], targets: Sequence[Target], air_
         if not chosen.feasible[0] or x <= NOTHING or (product is STRIPPING and x > MOST_STRIPPED * _co2(one)):
             continue
         mg_l = float(extra.mg_l_pure(x))
-        what = f"strip {shown(mg_l)} mg/L of CO2 first (aerate)" if product is STRIPPING else f"{product.name}, " \
-            f"{shown(mg_l)} mg/L of pure {product.formula}, beside them"
+        what = f"strip {brief(mg_l)} mg/L of CO2 first (aerate)" if product is STRIPPING else f"{product.name}, " \
+            f"{brief(mg_l)} mg/L of pure {product.formula}, beside them"
         found[kind] = _Way(what, mg_l)
     return sorted(found.values(), key=lambda w: w.kg)[:MOST_NAMED]
 

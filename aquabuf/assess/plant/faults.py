@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from aquabuf.assess.plant.aims import dosed_of
-from aquabuf.assess.plant.feed import shown
+from aquabuf.assess.plant.feed import brief
 from aquabuf.assess.plant.steps.base import Dosed, Finding, Held, Step
 from aquabuf.assess.plant.steps.words import as_rows_of, holding, span
 from aquabuf.assess.plant.storage import lime_solubility_g_l
@@ -121,10 +121,11 @@ def _undissolved(train: Train) -> list[Finding]:
         most = lime_solubility_g_l(p.after.t_c)
         where = g_l > most
         out += [Finding(
-            "stop", f"step {p.step.name!r} takes {span(1e3 * g_l, where, 0)} mg/L of {LIME_FORMULA} "
-            f"as {' and '.join(d.product.name for d in limes)}, and about {span(1e3 * most, where, 0)} mg/L dissolve: the rest stays solid and pH stays below "
-            f"{span(p.after.water().ph, where, 2)}", where, "solubility of lime (recalled)",
-            "aim lower, or take caustic soda, which dissolves")] if limes else []
+            "stop",
+            f"step {p.step.name!r} takes {span(1e3 * g_l, where, 0)} mg/L of {LIME_FORMULA} "
+            f"as {' and '.join(d.product.name for d in limes)}, and about {span(1e3 * most, where, 0)} mg/L dissolve: the "
+            f"rest stays solid and pH stays below {span(p.after.water().ph, where, 2)}", where,
+            "solubility of lime (recalled)", "aim lower, or take caustic soda, which dissolves")] if limes else []
     return out
 
 
@@ -209,8 +210,8 @@ class Fault:
         if not np.isfinite(self.ph_behind[row]):
             return (f"pump of {name} {self.case}: not known, the doses or the water were not found",)
         given, wanted = (float(mg_l(x[row])) for x in (self.dose_mol_l, self.wanted_mol_l))
-        out = [f"pump of {name} in step {self.step!r} {self.case} for {self.hours:g} h: {shown(given)} mg/L of product in "
-               f"place of {shown(wanted)}, pH {self.ph_behind[row]:.2f} right behind the step in place of "
+        out = [f"pump of {name} in step {self.step!r} {self.case} for {self.hours:g} h: {brief(given)} mg/L of product "
+               f"in place of {brief(wanted)}, pH {self.ph_behind[row]:.2f} right behind the step in place of "
                f"{self.ph_wanted[row]:.2f} and {self.ph_final[row]:.2f} behind the works, in "
                f"{self.volume_m3[row]:,.0f} m3 of water"]
         out += [f"that water {level.words} (pH {'above' if level.side == 'high' else 'below'} {level.ph:g}; "
@@ -272,8 +273,8 @@ def full_stroke(train: Train, product: str, *, flow_m3_d: ArrayLike, hours: floa
     if (most < dosed.mol_l * (1.0 - 1e-9)).any():
         low = int(np.argmax(most < dosed.mol_l))
         raise InputError(f"the pump of {product!r} must give at least the wanted dose at full stroke; found "
-                         f"{shown(float(dosed.product.mg_l_product(most[low])))} of "
-                         f"{shown(float(dosed.product.mg_l_product(dosed.mol_l[low])))} mg/L. Take a larger pump, or "
+                         f"{brief(float(dosed.product.mg_l_product(most[low])))} of "
+                         f"{brief(float(dosed.product.mg_l_product(dosed.mol_l[low])))} mg/L. Take a larger pump, or "
                          "correct its size.")
     volume = as_rows_of(flow_m3_d, rows, "flow_m3_d") * hours / HOURS_PER_DAY
     nothing = np.where(np.isfinite(dosed.mol_l), 0.0, np.nan)

@@ -16,7 +16,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from aquabuf.arrays import LN10, as_rows, common_shape
-from aquabuf.assess.plant.feed import shown
+from aquabuf.assess.plant.feed import brief
 from aquabuf.chem.acids import acid_named
 from aquabuf.chem.products import molar_mass, zero_level_charge
 from aquabuf.engine.balance import fractions, moments, protons_lost
@@ -346,9 +346,9 @@ def buffer_words(option: Buffering, row: int = 0) -> str:
     said += [f"not usable: {'; '.join(reasons)}"] if reasons and not at.leads else list(reasons)
     if np.isfinite(at.acid_mol_l) and at.in_reach:
         if not at.lacking_eq_l > 0.0:
-            said.append(f"at pH {at.ph:.2f} the water has the intensity wanted without any buffer: only its pH is to be moved")
+            said.append(f"at pH {at.ph:.2f} the water has that intensity without any buffer: only its pH is to be moved")
         made = f"{'made all the same, ' if reasons else ''}pH {at.ph:.2f} with {1e3 * at.reached:.3g} meq/L per pH"
-        amounts = [f"{shown(mg_l)} mg/L of {r.name} ({r.formula})" for mg_l, r in (
+        amounts = [f"{brief(mg_l)} mg/L of {r.name} ({r.formula})" for mg_l, r in (
             (at.acid_mg_l, pair.acid_reagent), (at.base_mg_l, pair.base_reagent)) if mg_l > 0.0] or ["nothing"]
         said.append(f"{made} takes {' and '.join(amounts)}, "
                     f"{1e3 * at.total_mol_l:.3g} mmol/L in all; pKa {at.pka:.2f}, acid to base form "

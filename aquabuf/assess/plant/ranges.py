@@ -11,8 +11,7 @@ from numpy.typing import NDArray
 
 from aquabuf.assess.frames import frame_of
 from aquabuf.assess.plant.aims import PERCENT, Aim, aims_of, dosed_of, repeated
-from aquabuf.assess.plant.curve import percent_words
-from aquabuf.assess.plant.feed import shown
+from aquabuf.assess.plant.feed import brief
 from aquabuf.assess.plant.store import Stocked
 from aquabuf.assess.plant.targets import Target
 from aquabuf.assess.plant.train import Train, held_steps, run_train
@@ -64,11 +63,12 @@ class ControlRange:
         if np.isnan(least):
             return f"{self.product.name}: no range, since its dose does not keep every window, or none is dosed"
         low = "nothing" if least == 0.0 else _end_words(dose, least)
-        fed = f", {self.feeds} feeds moved alike, {shown(dose)} mg/L together" if self.feeds > 1 else ""
+        fed = f", {self.feeds} feeds moved alike, {brief(dose)} mg/L together" if self.feeds > 1 else ""
         high = f"more than {MOST_FACTOR:g} times as much" if np.isinf(most) else _end_words(dose, most)
         sides = (("below", self.ends_low[row]), ("above", self.ends_high[row]))
         ends = [f"{side}, {end} is left" for side, end in sides if end]
-        return "; ".join([f"{self.product.name}{fed}: from {low} to {high} keeps every window", *ends, *self._purpose()])
+        kept = f"{self.product.name}{fed}: from {low} to {high} keeps every window"
+        return "; ".join([kept, *ends, *self._purpose()])
 
     def _purpose(self) -> list[str]:
         """What the product is fed for where that is no window, so that nobody turns it down by the range alone."""
@@ -78,8 +78,10 @@ class ControlRange:
 
 def _end_words(dose: float, factor: float) -> str:
     percent = PERCENT * (factor - 1.0)
-    room = percent_words(percent, "+") if abs(percent) >= EDGE_PERCENT else "no room: the dose sits at the end of a window"
-    return f"{shown(dose * factor)} mg/L ({room})"
+    room = "no room: the dose sits at the end of a window"
+    if abs(percent) >= EDGE_PERCENT:
+        room = f"{brief(percent, 2, '+')} %"
+    return f"{brief(dose * factor)} mg/L ({room})"
 
 
 def control_range(train: Train, product: str, targets: Sequence[Target] = ()) -> ControlRange:

@@ -13,7 +13,7 @@ from scipy.stats import rankdata
 from aquabuf.arrays import worded
 from aquabuf.assess.frames import frame_of
 from aquabuf.assess.plant.aims import PERCENT, Aim, aims_of, column_of
-from aquabuf.assess.plant.feed import shown
+from aquabuf.assess.plant.feed import brief
 from aquabuf.assess.plant.quantities import find_quantity, in_unit, measured, plant_quantities
 from aquabuf.assess.plant.steps.base import Dosed, Step
 from aquabuf.assess.plant.stream import TOTALS, Stream, stream_of
@@ -189,12 +189,12 @@ def _dose_words(row: Mapping) -> str:
     if not np.isfinite(row["most_mg_l_product"]):
         return f"{name} in {row['step']}: no dose was found in any row"
     if row["most_mg_l_product"] - row["least_mg_l_product"] <= 1e-9 * row["most_mg_l_product"]:
-        return f"{name} in {row['step']}: {shown(row['most_mg_l_product'])} mg/L of product throughout"
+        return f"{name} in {row['step']}: {brief(row['most_mg_l_product'])} mg/L of product throughout"
     turndown = f", a turndown of {row['turndown']:,.1f} to 1 while dosing" if np.isfinite(row["turndown"]) else ""
     none = f", none in {row['not_dosed_percent']:.2g} % of rows" if row["not_dosed_percent"] > 0.0 else ""
-    return (f"{name} in {row['step']}: {shown(row['low_mg_l_product'])} to {shown(row['high_mg_l_product'])} mg/L of product "
-            f"in nine rows of ten ({shown(row['least_mg_l_product'])} to {shown(row['most_mg_l_product'])} at the ends)"
-            f"{turndown}{none}; {_follow_words(row)}")
+    low, high, least, most = (brief(row[f"{n}_mg_l_product"]) for n in ("low", "high", "least", "most"))
+    return (f"{name} in {row['step']}: {low} to {high} mg/L of product in nine rows of ten ({least} to {most} at the "
+            f"ends){turndown}{none}; {_follow_words(row)}")
 
 
 def _follow_words(row: Mapping) -> str:

@@ -3,10 +3,11 @@
 Bicarbonate x [mol/L of waste] changes every term of the balance by a straight line in x, so the amount that lets one
 feed error fit into the window has a closed form:
 
-    e |D + x (c_mid - 1)| = (W + x (c_high - c_low)) / 2   =>   x = (e |D| - W / 2) / ((c_high - c_low) / 2 - s e (c_mid - 1))
+    e |D + x (c_mid - 1)| = (W + x (c_high - c_low)) / 2
+    x = (e |D| - W / 2) / ((c_high - c_low) / 2 - s e (c_mid - 1))
 
-D : demand to the middle of the window on the axis of reagent, of sign s; W : reagent across the window; c : base held by
-a mole of carbon; c_mid : mean of both ends. Follows from the proton balance, closed to air.
+D : demand to the middle of the window on the axis of reagent, of sign s; W : reagent across the window; c : base held
+by a mole of carbon; c_mid : mean of both ends. Follows from the proton balance, closed to air.
 """
 
 from __future__ import annotations
@@ -50,11 +51,10 @@ class BufferAid:
 def with_bicarbonate(curve: DemandCurve, mol_l: float) -> DemandCurve:
     """The curve of a waste with bicarbonate in it. Raises InputError where carbon is no part of its tables."""
     if curve.carbon is None:
-        raise InputError("bicarbonate needs the base that carbon holds along the curve; none is given. Name the carrier "
-                         "of inorganic carbon.")
-    held = curve.base + mol_l * curve.carbon
+        raise InputError("bicarbonate needs the base that carbon holds along the curve; none is given. Name the "
+                         "carrier of inorganic carbon.")
     carbon = curve.carbon
-    return curve_of(lambda ph: held, curve.base_eq_l + mol_l, lambda ph: carbon)
+    return curve_of(lambda ph: curve.base + mol_l * carbon, curve.base_eq_l + mol_l, lambda ph: carbon)
 
 
 def bicarbonate_aid(curve: DemandCurve, low: float, high: float, error: float, tanks: int = 1) -> BufferAid:
@@ -65,11 +65,12 @@ def bicarbonate_aid(curve: DemandCurve, low: float, high: float, error: float, t
     """
     plain = with_bicarbonate(curve, 0.0)
     at_low, at_high = (float(v) for v in plain.base_at([low, high]))
-    c_low, c_high = (float(v) for v in np.interp([low, high], GRID_PH, plain.carbon))
-    need, sign = 0.5 * (at_low + at_high) - plain.base_eq_l, np.sign(0.5 * (at_low + at_high) - plain.base_eq_l)
+    carbon = np.zeros_like(GRID_PH) if plain.carbon is None else plain.carbon
+    c_low, c_high = (float(v) for v in np.interp([low, high], GRID_PH, carbon))
+    need = 0.5 * (at_low + at_high) - plain.base_eq_l
     left = float(residual_eq_l(1.0, error, tanks))
     short = left * abs(need) - 0.5 * (at_high - at_low)
-    gains = 0.5 * (c_high - c_low) - sign * left * (0.5 * (c_low + c_high) - 1.0)
+    gains = 0.5 * (c_high - c_low) - np.sign(need) * left * (0.5 * (c_low + c_high) - 1.0)
     x = 0.0 if short <= 0.0 else short / gains if gains > 0.0 else np.nan
     return _buffer_aid(plain, low, high, x, tanks, need)
 
@@ -87,7 +88,7 @@ def _buffer_aid(plain: DemandCurve, low: float, high: float, x: float, tanks: in
     words = "none is needed" if x == 0.0 else (
         f"{shown(1e3 * x)} meq/L of bicarbonate, {shown(kg)} kg/m³ as {BICARBONATE}, {shown(100 * share)} % of the "
         f"demand, let {tanks} tank{'s' if tanks > 1 else ''} do; {'worth' if worth else 'not worth'} more than another "
-        f"tank ({limit.range_words.replace(' -', '')} of the demand as a share: {limit.source}). Not with aeration: "
+        f"tank (worth it up to {100 * limit.high:g} %: {limit.source}). Not with aeration: "
         "CO2 that strips takes the buffer along")
     return BufferAid(tanks=tanks, bicarbonate_eq_l=x, kg_m3=kg, share_of_demand=share,
                      demand_eq_l=float(helped.demand(window.aim)), aim=window.aim,
@@ -111,11 +112,11 @@ class TrimAid:
     words: str
 
 
-def trim_aid(curve: DemandCurve, window: Window, error: float, normality_eq_l: float, *, goes_in_eq_l: float | None = None,
-             ) -> TrimAid:
+def trim_aid(curve: DemandCurve, window: Window, error: float, normality_eq_l: float, *,
+             goes_in_eq_l: float | None = None) -> TrimAid:
     """A trim feed that makes up for the error of the strong feed either way, and what it leaves of that.
 
-    normality_eq_l : of the strong reagent. goes_in_eq_l : demand of the tank it stands in; that of the waste if not given.
+    normality_eq_l : of the strong reagent. goes_in_eq_l : demand of the tank it stands in; of the waste if not given.
     """
     positive(normality_eq_l, "normality of the reagent [eq/L]", "Give that of what is pumped.")
     dose = abs(float(curve.demand(window.aim))) if goes_in_eq_l is None else abs(goes_in_eq_l)

@@ -165,7 +165,7 @@ def _risks(reagent: Reagent, end_ph: float, co2_atm: float, high_ph: float, cold
     found = [*reagent.limited_by, *reagent.hazards]
     if reagent.carbon_per_eq and co2_atm > BUBBLES_ATM:
         found.append(f"its CO2 would stand at {shown(co2_atm)} atm, so that it bubbles off: less is needed than a "
-                     "closed tank would take; state the share that leaves, or titrate with this reagent in an open vessel")
+                     "closed tank would take; state the share that leaves, or titrate with it in an open vessel")
     if reagent.kind == BASE and _stops_inside(end_ph, high_ph):
         found.append(f"cannot pass the window: it stops at pH {end_ph:.1f}")
     minutes = reagent.residence_min.usual

@@ -114,6 +114,9 @@ class Draw:
         for what, value in (("draw", self.m3_h), ("draw per volume", self.per_h or 0.0)):
             if not (np.isfinite(value) and value >= 0.0):
                 raise InputError(f"the {what} must be 0 or more; found {value:g}. Correct it.")
+        if self.per_h is not None and self.m3_h > 0.0:
+            raise InputError(f"a draw must be constant or follow the level; found {self.m3_h:g} m3/h and "
+                             f"{self.per_h:g} per hour. Leave one out.")
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -236,9 +239,7 @@ def _step(v: Array, f: Array, t: float, v_min: Array, v_max: Array, draw: Draw) 
     new, left = _constant(v, f, moving, draw.m3_h) if draw.per_h is None else _level(v, f, moving, v_min, draw.per_h)
     stands = moving < t
     if stands.any():
-        rises = f > (draw.m3_h if draw.per_h is None else draw.per_h * (v - v_min))
-        bound = np.where(rises, v_max, v_min)
-        new = np.where(stands, bound, new)
+        bound = np.where(f > draw.m3_h, v_max, v_min)  # a draw that follows the level only meets the upper one
         left = np.where(stands, left * _exponential(bound, f, t - moving), left)
     new = np.clip(new, v_min, v_max)
     through = v - new * left

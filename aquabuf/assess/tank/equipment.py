@@ -65,7 +65,7 @@ class Feeder:
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Probe:
-    """A pH electrode: dead time (mixing and its own) and first-order lag [s], standard deviation of noise, offset [pH]."""
+    """A pH electrode: dead time (mixing and its own) and first-order lag [s], standard deviation of noise and offset."""
 
     lag_s: float = 0.0
     noise_ph: float = 0.0
@@ -84,7 +84,8 @@ class Tank:
 
     volume_m3 : of its contents, which stay full; with least_m3 the level moves between the two while out_m3_h is
         drawn off; full, it lets everything through, and at its least no more than comes in.
-    start_m3 : level at the start; halfway where None.
+    start_m3 : level at the start; halfway where None. start_base_eq_l, start_amounts : contents at the start, which
+        are else those of the steady state.
     fixed_eq_h : feed where there is no controller, negative for acid; one value or one per case. [eq/h]
     """
 
@@ -98,6 +99,8 @@ class Tank:
     least_m3: float | None = None
     out_m3_h: float | None = None
     start_m3: float | None = None
+    start_base_eq_l: float | None = None
+    start_amounts: tuple[float, ...] | None = None
     faults: tuple[Fault, ...] = ()
 
     def __post_init__(self) -> None:

@@ -160,10 +160,10 @@ def _middle(samples: tuple[MeasuredCurve, ...]) -> MeasuredCurve:
 
 
 def _contents(place: Place, table: Mapping[str, Any], own: Mapping[str, tuple[Acid, float | None]],
-              ) -> dict[str | Product, float]:
+              ) -> list[tuple[str | Product, float]]:
     """Substances by the name of their total, or as products. [mol/L; eq/L of alkalinity]"""
     inner = place.inner("holds", label=f"{place.label} holds")
-    return {_meant(inner, name, own): _mol_l(inner, name, value, own) for name, value in table.items()}
+    return [(_meant(inner, name, own), _mol_l(inner, name, value, own)) for name, value in table.items()]
 
 
 def _totals() -> dict[str, str]:

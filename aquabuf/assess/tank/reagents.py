@@ -285,7 +285,7 @@ def _fed(stock: Stocked, rules: tuple[Rule, ...], made_up: MadeUp | None, dry: b
                              stock.product.density_kg_l) if d is not None), None)
     if kg_l is None:
         raise InputError(f"a {form} reagent needs its density to become a normality; none is known for "
-                         f"{stock.name!r} at {100.0 * stock.strength:g} %. Take density_kg_l from the certificate.")
+                         f"{stock.name!r} at {100.0 * stock.strength:g} %. Take its density from the certificate.")
     return eq * kg_l, "as delivered"
 
 

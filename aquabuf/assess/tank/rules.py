@@ -17,7 +17,9 @@ from aquabuf.errors import InputError
 from aquabuf.tables import read_table
 from aquabuf.units import convert
 
-__all__ = ["HP_W", "Standing", "TankRule", "at_least_zero", "positive", "power_w_m3", "rule", "rules_in", "stands", "words_for"]
+__all__ = [
+    "HP_W", "Standing", "TankRule", "at_least_zero", "positive", "power_w_m3", "rule", "rules_in", "stands", "words_for",
+]
 
 HP_W = 745.69987158227022  # 550 foot pounds a second (definition)
 RECALLED = "recalled"
@@ -103,9 +105,12 @@ def rule(key: str, group: str | None = None) -> TankRule:
 
 
 def words_for(group: str, names: Iterable[str]) -> tuple[TankRule, ...]:
-    """Rules in words of a group that belong to any of these names (of products or their groups), or to all."""
+    """Rules in words of a group that belong to any of these names (of products or their groups), or to all.
+
+    The key of such a rule may hold several names, with ";" between them.
+    """
     asked = {"any", *names}
-    return tuple(r for r in rules_in(group) if r.key in asked)
+    return tuple(r for r in rules_in(group) if asked & set(r.key.split(";")))
 
 
 def stands(key: str, quantity: str, value: float) -> Standing:

@@ -34,7 +34,8 @@ ON_STEP = 1e-6  # of a step: a time this close to a step falls on it
 class Simulated:
     """What happened.
 
-    Recorded: time_s (T,), ph, reagent_eq_h (base less acid, as it reaches the tank) and level_m3, each (S, T, N).
+    Recorded: time_s (T,), ph, base_eq_l, reagent_eq_h (base less acid, as it reaches the tank) and level_m3, each
+    (S, T, N).
     Over all steps, per case (N,): minutes of the last tank outside `window` and in its longest excursion, lowest and
     highest pH there. Per stage and case: base_used_eq, acid_used_eq; full_min, empty_min of a moving level.
     balance_error (1 + J, N): of base and each carrier, share of all that came in and was there at the start.
@@ -46,6 +47,7 @@ class Simulated:
     steps: int
     time_s: Array
     ph: Array
+    base_eq_l: Array
     reagent_eq_h: Array
     level_m3: Array
     outside_min: Array
@@ -92,7 +94,7 @@ def simulate(readout: Readout, tanks: Sequence[Tank], inflow: Inflow, *, until_s
     used = run.fed_sum * (dt_s / 3600.0)
     return Simulated(
         stages=tuple(t.name for t in tanks), window=window, step_s=dt_s, steps=steps, time_s=record.time_s,
-        ph=record.ph, reagent_eq_h=record.reagent, level_m3=record.level, outside_min=tally.outside,
+        ph=record.ph, base_eq_l=record.base, reagent_eq_h=record.reagent, level_m3=record.level, outside_min=tally.outside,
         longest_min=tally.longest, lowest_ph=tally.lowest, highest_ph=tally.highest, base_used_eq=used[0],
         acid_used_eq=used[1], full_min=60.0 * run.flows.full_h, empty_min=60.0 * run.flows.empty_h,
         balance_error=run.balance_error(start, steps))
@@ -236,13 +238,13 @@ class _Record:
         s, n = start.ph.shape
         size = (s, steps // keep + 1, n)
         self.time_s: Array = np.arange(size[1], dtype=float) * keep * run._dt_s
-        self.ph, self.reagent, self.level = np.empty(size), np.empty(size), np.empty(size)
+        self.ph, self.base, self.reagent, self.level = (np.empty(size) for _ in range(4))
         self.add(0)
 
     def add(self, step: int) -> None:
         """Keep the moment after this many steps."""
         i, run = step // self._keep, self._run
-        self.ph[:, i], self.level[:, i] = run.ph, run.flows.volume
+        self.ph[:, i], self.base[:, i], self.level[:, i] = run.ph, run.flows.x[:, 0], run.flows.volume
         np.subtract(run.fed[0], run.fed[1], out=self.reagent[:, i])
 
 

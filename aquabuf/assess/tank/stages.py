@@ -180,7 +180,7 @@ def set_points(curve: DemandCurve, window: Window, tanks: int, error: float, tur
         takes = tolerance / (error * share ** (tanks - 1 - i))  # largest demand that the tanks behind can bring home
         most = max(least, min((takes - error * comes) / (1.0 - error), comes))
         ends = curve.ph_of(float(curve.base_at(window.aim)) - np.sign(need) * np.array([least, np.sqrt(least * most)]))
-        among = np.linspace(*np.sort(ends), 101)
+        among = np.linspace(float(ends.min()), float(ends.max()), 101)
         ph = float(among[np.argmax(curve.buffer(among))])
         aims.append(ph)
         left = abs(float(curve.base_at(window.aim) - curve.base_at(ph)))
@@ -217,8 +217,8 @@ def opinions(curve: DemandCurve, window: Window, *, error: float, turndown: floa
     off, most = window.distance(ph), int(rule("most tanks").high)
     n = stages_by_residual(need, tolerance, error)
     held = stages_within_turndown(need, tolerance, error, turndown)
-    left = (f"{100 * error:.3g} % of {abs(need):.3g} eq/L is {residual_eq_l(need, error):.3g} eq/L, the nearer end of the "
-            f"window {tolerance:.3g} eq/L away")
+    left = (f"{100 * error:.3g} % of {abs(need):.3g} eq/L is {residual_eq_l(need, error):.3g} eq/L, the nearer end of "
+            f"the window {tolerance:.3g} eq/L away")
     far = rule("distance")
     swing = np.log10(turndown)
     return (
@@ -268,7 +268,7 @@ def choose_stages(curve: DemandCurve, window: Window, *, error: float, turndown:
                   wanted: int | None = None, aims: Sequence[float] | None = None) -> StageChoice:
     """The number of tanks by titration curve, feed error and turndown; rules of thumb only raise one tank to two.
 
-    wanted : number that is set already. aims : set points that are set already, one per tank, the last within the window.
+    wanted : number that is set already. aims : set points that are set, one per tank, the last within the window.
     """
     if aims:
         window = replace(window, aim=float(aims[-1]))

@@ -52,6 +52,10 @@ def start_of(readout: Readout, tanks: Sequence[Tank], inflow: Inflow, pools: Seq
         feed[s] = one.settled_feed() if tank.controller is not None else tank.fixed_eq_h
         flow_in[s] = flow
         x[s], u[:, s], flow = one.contents(feed[s])
+        if tank.start_base_eq_l is not None:
+            x[s, 0] = tank.start_base_eq_l
+        if tank.start_amounts is not None:
+            x[s, 1:] = np.reshape(tank.start_amounts, (-1, 1))
         rate, waiting = x[s] * flow, u[:, s] * flow
     return Start(volume, x, u, feed, flow_in, readout.ph(x[:, 0], np.moveaxis(x[:, 1:], 1, 0)))
 

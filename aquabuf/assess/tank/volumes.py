@@ -82,8 +82,8 @@ def unequal_volumes(volumes_m3: Sequence[float]) -> tuple[tuple[float, ...], str
     if not raised:
         return tuple(out), ""
     which = " and ".join(str(i) for i in raised)
-    return tuple(out), (f"tank{'s' if len(raised) > 1 else ''} {which} made at least {r.low:g} times as large as the one "
-                        f"before: {r.words} ({r.told_by})")
+    return tuple(out), (f"tank{'s' if len(raised) > 1 else ''} {which} made at least {r.low:g} times as large as the "
+                        f"one before: {r.words} ({r.told_by})")
 
 
 # ---------------------------------------------------------------- shape

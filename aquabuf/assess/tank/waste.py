@@ -7,7 +7,7 @@ alone, because buffers that pH does not show may ask for many times as much reag
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from types import MappingProxyType
 
@@ -16,11 +16,12 @@ from numpy.typing import ArrayLike, NDArray
 
 from aquabuf.assess.tank.curve import MeasuredCurve, held_table
 from aquabuf.chem.acids import Acid, acid_named
-from aquabuf.chem.metals import metal_table, metals
+from aquabuf.chem.metals import metals
 from aquabuf.chem.products import Product
 from aquabuf.engine.balance import fractions, protons_lost
 from aquabuf.engine.conditions import Conditions, conditions
-from aquabuf.engine.readout import GRID_PH, Readout
+from aquabuf.engine.hydroxides import metal_table
+from aquabuf.engine.readout import GRID_PH, MetalTable, Readout
 from aquabuf.errors import InputError
 from aquabuf.units import substances
 
@@ -72,7 +73,7 @@ class Waste:
         return acids.get(name, 0.0) + self.metals.get(name, 0.0) + self.ions.get(name, 0.0)
 
 
-def dissolved(waste: Waste, contents: Mapping[str | Product, float], own: Sequence[Acid] = ()) -> Waste:
+def dissolved(waste: Waste, contents: Iterable[tuple[str | Product, float]], own: Sequence[Acid] = ()) -> Waste:
     """The waste with these substances dissolved in it as well, by name or as a product. [mol/L]
 
     Weak acids, metals and ions go by the name of their total; a product brings what its row says, strong acids and
@@ -82,12 +83,13 @@ def dissolved(waste: Waste, contents: Mapping[str | Product, float], own: Sequen
     """
     acids, ions, found = dict(waste.acids), dict(waste.ions), dict(waste.metals)
     carbon, base, titrated = waste.carbon_mol_l, waste.base_eq_l, waste.titrated
-    for what, mol in contents.items():
+    for what, mol in contents:
+        name = what if isinstance(what, str) else what.name
         if not (mol >= 0.0 or what == ALKALINITY):
-            raise InputError(f"the amount of {what!s} in waste {waste.name!r} must be zero or more; found {mol:g} mol/L. "
+            raise InputError(f"the amount of {name} in waste {waste.name!r} must be zero or more; found {mol:g} mol/L. "
                              "Correct it.")
         parts = {what: 1.0} if isinstance(what, str) else dict(what.adds)
-        titrated |= what == ALKALINITY
+        titrated |= name == ALKALINITY
         base_part = parts.pop(ALKALINITY, None)
         if base_part is not None:
             base = (base or 0.0) + base_part * mol
@@ -207,7 +209,8 @@ def chemistry(wastes: Sequence[Waste], *, t_c: float | None = None, ionic_streng
     held, bases = [], []
     for waste in wastes:
         if waste.curve is not None:
-            table, base, told = held_table(waste.curve, c_h, c_oh)
+            own = conditions(waste.curve.t_c, 0.0, min(strength, HIGHEST_STRENGTH))  # water as it was when titrated
+            table, base, told = held_table(waste.curve, float(own.c_h), float(own.c_oh))
             warnings += [f"{waste.name}: {words}" for words in told]
         else:
             waste, words = _with_carbon(waste, c)
@@ -281,10 +284,12 @@ def _held_by_acids(waste: Waste, c: Conditions) -> Array:
     return table
 
 
-def _metal_tables(wastes: Sequence[Waste], c: Conditions) -> tuple:
-    """Metals of wastes that are known by composition; a measured curve holds its metals already."""
-    by_waste = [{} if w.curve is not None else w.metals for w in wastes]
-    names = [m for m in metals() if any(mol.get(m, 0.0) > 0.0 for mol in by_waste)]
+def _metal_tables(wastes: Sequence[Waste], c: Conditions) -> tuple[MetalTable, ...]:
+    """Metals of wastes that are known by composition; a measured curve holds its metals already.
+
+    Solubility by concentration products of ideal solutions at the pKw of the waste.
+    """
+    by_waste: list[Mapping[str, float]] = [{} if w.curve is not None else w.metals for w in wastes]
     pkw = -np.log10(float(c.c_h * c.c_oh))
-    return tuple(metal_table(metals()[m], np.array([*(mol.get(m, 0.0) for mol in by_waste), 0.0]), pkw=pkw)
-                 for m in names)
+    return tuple(metal_table(metal, [*(mol.get(name, 0.0) for mol in by_waste), 0.0], pkw=pkw)
+                 for name, metal in metals().items() if any(mol.get(name, 0.0) > 0.0 for mol in by_waste))

@@ -54,7 +54,7 @@ def test_correlated_loads_by_simulation():
 
 @pytest.mark.parametrize(("d", "one", "two"), [(0.1, 0.0952, 0.0726), (0.5, 0.393, 0.352)])
 def test_slug(d, one, two):
-    """Facts, section 6.1, where two tanks were stepped coarsely (1.2 % low); the exact peak by running two tanks finely."""
+    """Facts, section 6.1: its value of two tanks is 1.2 % below the exact one; the exact peak by running two tanks finely."""
     assert_allclose(slug_peak(d, 1.0), one, atol=5e-4)
     assert_allclose(slug_peak_two_tanks(d, 1.0), two, rtol=0.013)
     a = 2.0

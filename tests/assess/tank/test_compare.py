@@ -133,6 +133,8 @@ def test_stripping_makes_soda_ash_count_whole():
     assert_allclose([open_.row()["nominal_eq_kg"], open_.row()["effective_eq_kg"]], 0.98 * 1e3 / 52.994, rtol=1e-4)
     assert_allclose(closed.row()["effective_eq_kg"], closed.effective_share * 0.98 * 1e3 / 52.994, rtol=1e-4)
     assert open_.demand.kg_d < 0.65 * closed.demand.kg_d
+    briquettes = judged([reagent("soda ash", 0.98, efficiency=0.6)], stripped=1.0).candidates[0].row()
+    assert_allclose(briquettes["effective_eq_kg"], 0.6 * briquettes["nominal_eq_kg"], rtol=1e-9)
 
 
 def test_carbon_dioxide_that_cannot_stay_dissolved():

@@ -62,7 +62,7 @@ def test_nothing_outside_unless_asked_for():
     assert_allclose(long.base_at([1.0, 13.0]) - long.base_at([STEPS[0], STEPS[-1]]),
                     water([1.0, 13.0]) - water([STEPS[0], STEPS[-1]]), rtol=1e-12)
     assert_allclose(long.ph_at(long.base_at([1.0, 13.0])), [1.0, 13.0], atol=1e-10)
-    assert_allclose(long.buffer_at(13.0), np.log(10.0) * 0.1, rtol=1e-6)
+    assert_allclose(long.buffer_at([1.0, 13.0]), np.log(10.0) * 0.1, rtol=1e-6)
     assert np.isnan(long.base_at(0.4))
     assert "measured from pH 2.00 to 12.00; beyond, only strong acid and base" in long.notes[-1]
     with pytest.raises(InputError, match=r"only when water is told apart; found no constants.*Call with_water first"):
@@ -157,6 +157,17 @@ def test_flatter_than_water_is_floored_and_told():
     assert acetic().with_water(1.0, KW).notes == ()
 
 
+def test_flooring_does_not_move_the_raw_waste():
+    """Where the raw waste itself is floored, demand still counts from its pH."""
+    ph = np.array([1.0, 1.3, 1.5, 2.0, 3.0, 7.0, 11.0])
+    read = ph - np.array([0.1, 0.05, 0.0, 0.0, 0.0, 0.0, 0.0])
+    curve = MeasuredCurve("HCl", 0.1 + water(ph), read)  # raw waste of pH 1, read as 0.9
+    found = curve.with_water(1.0, KW)
+    assert "floored" in found.notes[0]
+    assert_allclose(found.base_at(0.9), 0.0, atol=1e-12)
+    assert_allclose(curve.raw_ph, 0.9, atol=1e-12)
+
+
 def test_raw_waste_must_be_in_the_curve():
     """Demand counts from the raw waste."""
     curve = MeasuredCurve("x", np.arange(1.0, 6.0), np.arange(3.0, 8.0))
@@ -223,6 +234,9 @@ def test_strength_of_each_sample():
     strength, _ = strength_of([*scaled, far], ph)
     assert np.isnan(strength[3])
     assert_allclose(strength[:3], [0.5, 1.0, 1.8], rtol=1e-12)
+    part = MeasuredCurve("part", 2.0 * scaled[1].base_eq_l[:12], STEPS[:12])  # a curve that ends early
+    strength, misfit = strength_of([*scaled[:2], scaled[1], part], ph)
+    assert_allclose([strength[3], misfit[3]], [2.0, 0.0], rtol=0, atol=1e-12)
 
 
 def test_resolution_of_a_window():

@@ -228,6 +228,8 @@ def test_refusals():
         Draw(-1.0)
     with pytest.raises(InputError, match=r"the draw per volume must be 0 or more; found -1\. Correct it"):
         Draw(per_h=-1.0)
+    with pytest.raises(InputError, match=r"a draw must be constant or follow the level; found 5 m3/h and 1 per hour\. Leave one out"):
+        Draw(5.0, 1.0)
 
 
 # ------------------------------------------------------------ what mixing saves

@@ -50,6 +50,14 @@ def test_table_has_ph_and_savings():
     assert_allclose(aimed["saved_eq_d"], 0, atol=1e-6)
 
 
+def test_peak_counts_both_sides():
+    """One hour in four at -0.03 and three at 0.01 eq/L: the mean is 0, the farthest 0.03."""
+    p = profile(np.full(40, 2.0), base=np.tile([-0.03, 0.01, 0.01, 0.01], 10)).cases(1, 0)
+    table = volume_table(p, [np.nan], [0.0])
+    assert_allclose(table[["peak_eq_l", "low_eq_l", "high_eq_l"]].iloc[0], [0.03, -0.03, 0.01])
+    assert_allclose(table["sd_eq_l"], np.sqrt((0.03**2 + 3 * 0.01**2) / 4))
+
+
 def test_volume_for_flow_is_added():
     """With the volume of the cumulative curve above it, the draw is steady; content is mixed in both together."""
     p = profile(np.tile([0.0] * 12 + [20.0] * 12, 5), base=np.tile([-0.02] * 3 + [0.01] * 3, 20))

@@ -71,6 +71,8 @@ def test_peak_factor_of_a_window():
     assert_allclose(peak_factor(v, dt, 4 * 3600), 2.5 / 1.6)
     assert_allclose(peak_factor(v, dt, 3600), 4 / 1.6)
     assert_allclose(peak_factor(v, dt, 10 * 3600), 1.0)
+    # 3.5 h at 2 before: 4 h that end with the block have mean 3, those that begin with it 2.5; the mean of all is 1.95
+    assert_allclose(peak_factor([2.0, 4.0, 1.0], dt, 4 * 3600), 3 / 1.95)
     with pytest.raises(InputError, match=r"the window of a peak factor must be 0 to 36000 s, the length of the profile; found 40000 s"):
         peak_factor(v, dt, 4e4)
 
@@ -217,6 +219,8 @@ def test_dumps_bring_their_volume_and_load():
     assert_array_equal(at, [3, 11, 19, 27, 35, 43])
     assert_allclose(c.strength[:, 3, 0], [0.75 * 4 / 6, (0.25 * 4 + 5 * 2) / 6])
     assert_allclose(c.strength[:, 4, 0], [0.75, 0.25])
+    late = Statistics(mean_m3_h=4, days=1, dumps=(Dump(size_m3=2, every_h=8, lasts_h=0.5, first_h=7.75),))
+    assert_array_equal(np.flatnonzero(draw(late, 1, 1).flow_m3_h[:, 0] > 4.0), [7, 8, 15, 16, 23])  # none before the first
 
 
 def test_expected_load_with_dumps_at_any_time():
