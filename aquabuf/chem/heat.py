@@ -29,7 +29,7 @@ NEUTRALIZATION_KJ_EQ = 285.830 - 230.015  # H+ + OH- = H2O, standard enthalpies 
 WATER_KJ_L_K = 4.18                       # heat capacity of a liter of water
 SULFURIC_DILUTION_KJ_MOL = 909.3 - 814.0  # H2SO4(l) to infinite dilution, both protons off (worked example, printed)
 SLAKING_KJ_G = 1.14                       # CaO + H2O = Ca(OH)2 (recalled) [kJ/g CaO]
-CO2_DISSOLVING_KJ_MOL = 19.4              # CO2(g) to CO2(aq): formation -393.5 and -412.9 without its water (recalled)
+CO2_DISSOLVING_KJ_MOL = 413.26 - 393.51   # CO2(g) = CO2(aq), CODATA enthalpies of formation (recalled)
 
 THOMSEN_KJ_MOL, THOMSEN_WATERS = 74.73, 1.7983  # heat of mixing 74.73 n / (n + 1.7983); Thomsen (recalled)
 VANT_HOFF_STEP = 1.0                      # °C to each side

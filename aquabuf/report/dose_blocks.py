@@ -87,9 +87,9 @@ def _spreads(doses: pd.DataFrame) -> str:
                 missed.append(f"{brief(r['not_found_percent'], 2)} % of draws have no dose of {r['product']}")
             if r["high_mg_l_product"] > 0.0:
                 each.append(f"{r['product']} {shown(r['low_mg_l_product'])} to {shown(r['high_mg_l_product'])} mg/L")
-    doses = f"the dose would be {', '.join(each)} in {100.0 * COVERAGE:.0f} % of draws" if each else ""
-    said = "; ".join(x for x in (doses, *missed) if x)
-    return f"Errors of the readings: {said}." if said else ""
+    told = f"the dose would be {', '.join(each)} in {100.0 * COVERAGE:.0f} % of draws" if each else ""
+    said = "; ".join(x for x in (told, *missed) if x)
+    return f"Readings err: {said}." if said else ""
 
 
 def _faults(answer: Answer) -> str:

@@ -129,8 +129,8 @@ def feeds_block(answer: Answer, width: float, scale: float = 1.0) -> Block:
     parts = [Block((Line(0.0, 0.03, SET if answer.feasible else NOT_SET, 12.0, True), *titles), (0.26,), 0.29)]
     told: set[str] = set()
     for line in answer.feeds:
-        row = _cells(line, _control(answer, line), tight=tight, bed=(line.step, line.product.name) in answer.beds)
-        cells = [_cell_block(c, x, room, scale, tight) for c, x, room in zip(row, lefts, rooms, strict=True)]
+        told_of = _cells(line, _control(answer, line), tight=tight, bed=(line.step, line.product.name) in answer.beds)
+        cells = [_cell_block(c, x, room, scale, tight) for c, x, room in zip(told_of, lefts, rooms, strict=True)]
         row = tuple(item for cell in cells for item in cell.lines)
         parts.append(Block(row, (), max(c.height for c in cells)))
         if setting_words(line)[0] == OUT_OF_REACH and (answer.feasible or not tight):
@@ -205,8 +205,9 @@ def warnings_block(answer: Answer, width: float, most: int = MOST_WARNINGS) -> B
         found.append(f"final water, {q.label} {j.value:z.{q.digits}f}{unit}: {j.limit.words}")
     rest = len(found) - most
     shown_now = found[:most] + ([f"and {rest} more, see the text of the sheet"] if rest > 0 else [])
+    none = "nothing is warned of" if answer.feasible else "nothing beyond the stop"
     return stacked(block_of(["Look out"], width, 9.0, bold=True),
-                   block_of(shown_now or ["nothing is warned of"], width, 7.0, bullet="– ", most=2))
+                   block_of(shown_now or [none], width, 7.0, bullet="– ", most=2))
 
 
 def fault_notes(answer: Answer) -> list[str]:

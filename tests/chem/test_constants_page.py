@@ -20,7 +20,9 @@ PUBLIC = {name: getattr(module, name) for module in MODULES for name in module._
 LOOK_UPS = {"Acid", "acid_named", "acid_table", "OrganicModel", "organic_models", "TransferRelation", "transfer_relations",
             "schmidt_relations", "transfer_velocity_m_d", "FORMS", "Product", "atoms", "find_product", "molar_mass",
             "own_product", "products", "strength_of", "with_basicity", "zero_level_charge", "check_certificate",
-            "density_from_strength", "freezes_at_c", "strength_from_density"}
+            "density_from_strength", "freezes_at_c", "strength_from_density",
+            "Conflict", "Metal", "complex_at", "conflict", "dissolved_at", "free_at", "least_ph", "metal_named", "metals",
+            "precipitation_window", "soluble_window", "window_disagreement"}
 
 # The conditions that the page states above its tables.
 CONDITIONS = {
@@ -29,7 +31,7 @@ CONDITIONS = {
     "k_bisulfate": 0.1003, "fluoride": 6.833e-5, "k_fluoride": 0.002366, "pk": 4.756, "enthalpy_j_mol": -410.0,
     "heat_capacity_j_mol_k": -142.0, "doc_mg_l": 1.0, "ph": 7.0, "pk1": 3.04, "pk2": 4.42, "pk3": 6.70, "wind_m_s": 5.0,
     "lake_area_m2": 1e6, "k600_m_d": 1.0, "schmidt": 600.0,
-    "sg": 1.335,
+    "sg": 1.335, "ionization_kj_mol": 43.6, "heat_kj_l": 55.815, "capacity_kj_l_k": 4.18, "water_per_acid": 1.0,
 }
 
 

@@ -18,13 +18,17 @@ SAMPLES = {
     "k_bisulfate": (0.05, 0.08, 0.1), "fluoride": (1e-5, 3e-5, 7e-5), "k_fluoride": (0.001, 0.002, 0.0025),
     "wind_m_s": (0.5, 3.0, 8.0), "lake_area_m2": (2e5, 1e6, 4e7), "k600_m_d": (0.5, 0.8, 2.0),
     "schmidt": (1400.0, 800.0, 470.0), "sg": (1.1, 1.25, 1.335),
+    "ionization_kj_mol": (-22.4, 0.0, 51.95), "heat_kj_l": (1.0, 20.0, 55.8), "capacity_kj_l_k": (4.0, 4.1, 4.18),
+    "water_per_acid": (0.0, 1.0, 10.0),
 }
 FIXED = {"pk": 4.756, "enthalpy_j_mol": -410.0, "heat_capacity_j_mol_k": -142.0,  # one acid at a time
          "pk1": 3.04, "pk2": 4.51, "pk3": 6.46}
 OTHERS = {"acid_named", "acid_table", "organic_models", "charge_and_slope",  # look-ups take names; a pair has its own tests
           "transfer_relations", "schmidt_relations", "transfer_velocity_m_d",
           "atoms", "find_product", "molar_mass", "own_product", "products", "strength_of", "with_basicity",  # one product
-          "zero_level_charge", "check_certificate", "density_from_strength", "freezes_at_c", "strength_from_density"}
+          "zero_level_charge", "check_certificate", "density_from_strength", "freezes_at_c", "strength_from_density",
+          "complex_at", "conflict", "dissolved_at", "free_at", "least_ph", "metal_named", "metals",  # one metal at a time
+          "precipitation_window", "soluble_window", "window_disagreement", "dilution_heat_kj_mol", "carbonic_enthalpies_kj_mol"}
 
 
 def _functions():

@@ -129,6 +129,7 @@ def metal_base(x, iron, zinc, acid):
 
 
 def metal_waters(n=400):
+    """Readout with two metals, and random mixtures; every seventh has none."""
     rng = np.random.default_rng(8)
     amounts = np.array([rng.uniform(0, 5, n), rng.uniform(0, 5, n)])
     amounts[:, ::7] = 0.0

@@ -194,6 +194,7 @@ def test_scatter_is_not_taken_for_a_buffer():
     found = [noisy("HCl 0.01 N", seed, u_share=2e-3) for seed in range(20)]
     assert sum(s.pk.size > 0 for s in found) <= 3
     assert_allclose([s.base_eq_l for s in found], -0.01, rtol=0.02)
+    assert sum(noisy("HCl 0.01 N", seed).carbon_mol_l > 0.0 for seed in range(40)) <= 6
 
 
 def test_the_penalty_is_as_strong_as_errors_allow():

@@ -21,6 +21,7 @@ from aquabuf.report.dose_figures import (
     save_season,
     season_figure,
 )
+from aquabuf.report.dose_season import _band_words
 
 KINDS = ("png", "svg", "pdf")
 
@@ -140,3 +141,11 @@ def test_a_plan_that_does_not_blend_says_so():
 
 
 # ---------------------------------------------------------------- text
+
+
+@pytest.mark.parametrize(("low", "high", "wanted"), [
+    (4.34, 7.25, "4.34 to 7.25 mg/L in nine rows of ten"), (13.0, 13.0, "13 mg/L in nine rows of ten"),
+    (0.0, 0.0, "none in nine rows of ten"), (0.0, 3.0, "0 to 3 mg/L in nine rows of ten"), (1890.0, 4916.3, "1,890 to 4,916 mg/L in nine rows of ten")])
+def test_band_of_a_dose_in_words(low, high, wanted):
+    """One dose throughout is no band, and no dose is none."""
+    assert _band_words(low, high) == wanted

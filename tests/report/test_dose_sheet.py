@@ -2,19 +2,22 @@
 
 import re
 import sys
+from dataclasses import replace
 from pathlib import Path
 
 import pytest
 
 sys.path.insert(0, str(Path(__file__).parents[1]))
 
-from invented_plans import PLANS, UPLAND, answered, write_plan
+from invented_plans import PLANS, RIVER, UPLAND, answered, write_plan
 
 from aquabuf.assess.plant.answer import solve_plan
 from aquabuf.assess.plant.feed import shown
 from aquabuf.assess.plant.plan_file import read_plan
+from aquabuf.report.dose_blocks import _spreads, upset
 from aquabuf.report.dose_lines import aligned, bullet, figure, sentence
 from aquabuf.report.dose_sheet import dose_sheet
+from aquabuf.report.dose_sheet_words import _control, setting_words
 
 PAGE_WIDTH = 100
 TWO_PAGES = 160  # lines, of a plan with everything in it
@@ -209,3 +212,105 @@ def test_sentences(text, wanted):
 def test_figures(value, digits, sign, wanted):
     """No negative zero; a dash for what is not known."""
     assert figure(value, digits, sign) == wanted
+
+
+# ------------------------------------------------------------------ what an operator must not miss
+
+
+@pytest.mark.parametrize("name", PLANS)
+def test_every_warning_is_told(name):
+    """Those of the guard rails too, with their next step."""
+    text = joined(sheet(name))
+    for f in answered(name)[1]["findings"]:
+        assert sentence(f["words"]) in text
+        assert f["severity"] == "note" or f"Next: {f['next_step']}." in text
+
+
+def test_a_rail_passed_within_the_works(tmp_path):
+    """Lime beyond pH 9.5 ahead of alum is no stop; it stands among the warnings."""
+    first = '[[steps]]\ndo = "dose"\nname = "ahead"\nproduct = "lime"\ndose = "14 mg/L"\n\n'
+    answer = solve_plan(read_plan(write_plan(tmp_path, text=RIVER.replace("[[steps]]", first + "[[steps]]", 1))), draws=0)
+    ph = answer.train.passed[0].after.water().ph[0]
+    assert ph > 9.5
+    assert f"guard rails: Behind step 'ahead' pH is {ph:.2f}, above the guard rail of 9.5" in joined(dose_sheet(answer))
+
+
+def test_lessons_name_their_feeds():
+    """What to do at a fault says at which; each lesson stands once."""
+    text = joined(block("WHAT WOULD UPSET IT"))
+    answer = answered("upland")[0]
+    for f in answer.faults:
+        for words in f.words()[1:]:
+            assert text.count(sentence(words)) == 1
+            before = text[:text.index(sentence(words))]
+            assert f"{f.product.name} {f.case}" in before[before.rindex(" - "):]
+
+
+def test_a_dose_that_ph_hardly_follows():
+    """A change of more than the dose itself is not offered as its price."""
+    answer = answered("upland")[0]
+    curve = answer.curves[0]
+    slack = replace(curve, up_mg_l=21.6 * curve.wanted_mg_l, down_mg_l=float("nan"))
+    with_price, without = (joined(upset(replace(answer, curves=(c,)))) for c in (curve, slack))
+    assert "raises pH by 0.1 and" in with_price
+    assert f"{curve.wanted_mg_l:.3g} mg/L: " in with_price
+    assert "raises pH by 0.1" not in without
+
+
+def test_costs_without_a_currency(tmp_path):
+    """The head says per day, and no word stands in for the currency."""
+    text = UPLAND.replace('currency = "EUR"\n', "")
+    found = dose_sheet(solve_plan(read_plan(write_plan(tmp_path, text=text)), draws=0))
+    store = next(b for b in found.split("\n\n") if b.startswith("STORE AND COST"))
+    assert "per day" in store
+    assert "currency" not in store
+
+
+def test_a_setting_too_low_to_hold(tmp_path):
+    """Below a tenth of the machine, unless the plan says what it can."""
+    for largest, told in (("15 kg/h", False), ("150 kg/h", True)):
+        text = UPLAND.replace('largest = "15 kg/h"', f'largest = "{largest}"')
+        found = joined(dose_sheet(solve_plan(read_plan(write_plan(tmp_path, text=text)), draws=0)))
+        assert ("Below 10 % few machines feed evenly" in found) is told
+
+
+def test_doses_that_readings_leave_alone():
+    """Draws that have no dose are counted; a dose of nothing throughout is not told."""
+    doses = answered("upland")[0].readings_error.doses
+    none = doses.assign(low_mg_l_product=0.0, high_mg_l_product=0.0)
+    assert _spreads(none) == ""
+    some = doses.assign(not_found_percent=[0.1, 0.0])
+    assert _spreads(some).endswith("in 90 % of draws; 0.1 % of draws have no dose of lime.")
+
+
+def test_units_are_of_the_columns_that_stand():
+    """A column that is left out needs no unit."""
+    full, few = joined(block("WATER AFTER", "upland")), joined(block("WATER AFTER", "fixed"))
+    assert "Cl/SO4: by mass" in full
+    assert "TDS" not in few
+    assert "Alkalinity: mg/L as CaCO3" in few
+
+
+def test_a_bed_has_nothing_to_set(tmp_path):
+    """Limestone of a contactor: no setting, drawdown or jar on the sheet, no alarm on the page."""
+    start = UPLAND[:UPLAND.index("[products.lime]")].replace('name = "Ambrel Dam"', 'name = "Bed"')
+    stone = '[products.stone]\nis = "limestone"\nstrength = "98 %"\n[[steps]]\ndo = "contact"\nname = "contactor"\nproduct = "stone"\n'
+    answer = solve_plan(read_plan(write_plan(tmp_path, text=start + stone)), draws=0)
+    text = joined(dose_sheet(answer))
+    assert "nothing to set; keep the bed filled" in text
+    assert "stone: catch of one minute" not in text
+    assert "mg of stone" not in text
+    assert setting_words(answer.feeds[0], bed=True) == ("bed", "keep it filled")
+
+
+def test_a_low_end_of_nothing_is_no_leave_to_stop(tmp_path):
+    """Bleach whose windows hold without it may be "at most" so much, not "0 to" so much."""
+    bleach = ('[products.bleach]\nis = "sodium hypochlorite"\nstrength = "12 %"\ndensity = "1.2 kg/L"\n[[steps]]\ndo = "chlorinate"\n'
+              'name = "chlorine"\nproduct = "bleach"\ndose = "1 mg/L as Cl2"\n')
+    text = RIVER.replace("[[steps]]", bleach + "[[steps]]", 1).replace("[products.bleach]", "\n[products.bleach]")
+    answer = solve_plan(read_plan(write_plan(tmp_path, text=text.replace("ph = 8.2 }", "ph = [7.9, 8.3] }"))), draws=0)
+    line = next(x for x in answer.feeds if x.product.name == "bleach")
+    found = next(r for r in answer.ranges if r.product.name == "bleach")
+    assert found.least[0] == 0.0
+    assert _control(answer, line).startswith("at most ")
+    assert found.words().endswith("disinfection is no window here and sets its least dose")

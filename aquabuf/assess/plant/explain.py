@@ -98,7 +98,7 @@ def _each_alone(one: Stream, only: Stocked, points: Sequence[Point], targets: Se
         solved = solve_doses(one, [only.product], [point], air_co2_ppm=air_co2_ppm)
         alone = f"{point.quantity.label} {point.quantity.text(float(np.ravel(point.value)[0]))} alone"
         if solved.status[0] == REACHED:
-            found = reached(solved.stream, targets, air_co2_ppm)
+            found = reached(solved.stream, tuple(targets), air_co2_ppm)
             others = [f"{t.quantity.label} {t.quantity.text(float(found[t.quantity.name][0]))}" for t in targets
                       if t.quantity.name != point.quantity.name]
             mg_l = brief(float(only.mg_l_product(solved.mol_l[0, 0])))

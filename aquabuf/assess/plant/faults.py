@@ -123,8 +123,8 @@ def _undissolved(train: Train) -> list[Finding]:
         out += [Finding(
             "stop",
             f"step {p.step.name!r} takes {span(1e3 * g_l, where, 0)} mg/L of {LIME_FORMULA} "
-            f"as {' and '.join(d.product.name for d in limes)}, and about {span(1e3 * most, where, 0)} mg/L dissolve: the "
-            f"rest stays solid and pH stays below {span(p.after.water().ph, where, 2)}", where,
+            f"as {' and '.join(d.product.name for d in limes)}, and about {span(1e3 * most, where, 0)} mg/L dissolve: "
+            f"the rest stays solid and pH stays below {span(p.after.water().ph, where, 2)}", where,
             "solubility of lime (recalled)", "aim lower, or take caustic soda, which dissolves")] if limes else []
     return out
 

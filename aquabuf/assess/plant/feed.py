@@ -21,8 +21,8 @@ from aquabuf.units import convert, parse_unit
 
 __all__ = [
     "FORMS", "HOURS_PER_DAY", "KNOBS", "Curve", "FeedRate", "Feeder", "MadeUp", "Pump", "Reach", "Setting",
-    "both_units", "brief", "checked", "feed_rate", "in_us", "liquid_l_h", "made_up_l_h", "measured_curve", "metric_and_us",
-    "product_kg_d", "pure_kg_d", "shown",
+    "both_units", "brief", "checked", "feed_rate", "in_us", "liquid_l_h", "made_up_l_h", "measured_curve",
+    "metric_and_us", "product_kg_d", "pure_kg_d", "shown",
 ]
 
 Array = NDArray[np.float64]

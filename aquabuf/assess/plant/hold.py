@@ -330,7 +330,7 @@ def why_not(option: Buffering, row: int = 0) -> tuple[str, ...]:
     if not at.in_range:
         said.append(f"pH {at.ph:.2f} lies {at.outside_ph:.2f} outside its range of pKa {at.pka:.2f} ± "
                     f"{EFFECTIVE_RANGE:g}: there it works at {100 * at.peak_share:.2g} % of its peak and would take "
-                    f"{1e3 * at.least_mol_l:.3g} mmol/L even so")
+                    f"{brief(1e3 * at.least_mol_l)} mmol/L even so")
     if not at.reachable:
         said.append(f"{pair.acid_reagent.name} and {pair.base_reagent.name} cannot make pH {at.ph:.2f} in this water, "
                     f"as one of them would have to be taken out: bring the pH nearer with a strong acid or base first")
@@ -346,12 +346,12 @@ def buffer_words(option: Buffering, row: int = 0) -> str:
     said += [f"not usable: {'; '.join(reasons)}"] if reasons and not at.leads else list(reasons)
     if np.isfinite(at.acid_mol_l) and at.in_reach:
         if not at.lacking_eq_l > 0.0:
-            said.append(f"at pH {at.ph:.2f} the water has that intensity without any buffer: only its pH is to be moved")
-        made = f"{'made all the same, ' if reasons else ''}pH {at.ph:.2f} with {1e3 * at.reached:.3g} meq/L per pH"
+            said.append(f"at pH {at.ph:.2f} the water has that intensity without a buffer: only its pH is to be moved")
+        made = f"{'made all the same, ' if reasons else ''}pH {at.ph:.2f} with {brief(1e3 * at.reached)} meq/L per pH"
         amounts = [f"{brief(mg_l)} mg/L of {r.name} ({r.formula})" for mg_l, r in (
             (at.acid_mg_l, pair.acid_reagent), (at.base_mg_l, pair.base_reagent)) if mg_l > 0.0] or ["nothing"]
         said.append(f"{made} takes {' and '.join(amounts)}, "
-                    f"{1e3 * at.total_mol_l:.3g} mmol/L in all; pKa {at.pka:.2f}, acid to base form "
+                    f"{brief(1e3 * at.total_mol_l)} mmol/L in all; pKa {at.pka:.2f}, acid to base form "
                     f"{at.acid_base_ratio:.2g} to 1")
     return f"{pair.label}: {'; '.join(said)}; against it: {pair.against}."
 

@@ -27,9 +27,10 @@ SAME_STRENGTH = 0.005  # within which a density of the table belongs to a streng
 
 
 class Told:
-    """What reading a plan brings to say: assumptions and notes, each once."""
+    """What reading a plan, or another file of keys, brings to say: assumptions and notes, each once."""
 
-    def __init__(self) -> None:
+    def __init__(self, file: str = "plan") -> None:
+        self.file = file
         self.assumptions: list[str] = []
         self.notes: list[str] = []
 
@@ -42,7 +43,7 @@ class Told:
         """The defaults of a table."""
         for key in checked.defaults:
             if key.name not in skip:
-                self.assume(f"{label}: {key.name} = {key.default}, as the plan does not say")
+                self.assume(f"{label}: {key.name} = {key.default}, as the {self.file} does not say")
 
 
 def read_product(place: Place, name: str, table: Mapping[str, object], told: Told) -> tuple[Stocked, FeedSpec]:

@@ -67,6 +67,8 @@ class ControlRange:
         high = f"more than {MOST_FACTOR:g} times as much" if np.isinf(most) else _end_words(dose, most)
         sides = (("below", self.ends_low[row]), ("above", self.ends_high[row]))
         ends = [f"{side}, {end} is left" for side, end in sides if end]
+        if self.ends_low[row] and self.ends_low[row] == self.ends_high[row]:
+            ends = [f"beyond, {self.ends_low[row]} is left"]
         kept = f"{self.product.name}{fed}: from {low} to {high} keeps every window"
         return "; ".join([kept, *ends, *self._purpose()])
 

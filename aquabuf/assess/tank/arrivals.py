@@ -15,7 +15,8 @@ from aquabuf.errors import InputError
 __all__ = ["courses", "design_course", "mean_shares", "statistics_of"]
 
 FLOW_LASTS_H = 1.0       # how long a flow stays much the same where nothing tells; practice, no source
-STEP_H = 1.0 / 12.0      # of a drawn course
+STEP_H = 1.0 / 12.0      # of a drawn course that is simulated
+DESIGN_STEP_H = 0.25     # of the course that volumes are sized by
 DESIGN_DAYS = 14.0       # of the course that volumes are sized by: two weeks, as a survey of a waste should last
 HARDLY = 1e-6            # steady flow beside batches where there is none, as a share of theirs
 
@@ -27,7 +28,7 @@ def mean_shares(arrivals: Sequence[Arrival]) -> np.ndarray:
     return flows / total if total > 0.0 else np.full(flows.size, 1.0 / flows.size)
 
 
-def statistics_of(arrivals: Sequence[Arrival], days: float) -> Statistics:
+def statistics_of(arrivals: Sequence[Arrival], days: float, step_h: float = STEP_H) -> Statistics:
     """What is known of wastes that nobody recorded, as statistics of their common stream.
 
     Steady flows add up, their daily cycles as vectors; a largest flow is passed for one percent of the time.
@@ -50,7 +51,7 @@ def statistics_of(arrivals: Sequence[Arrival], days: float) -> Statistics:
     return Statistics(
         mean_m3_h=mean, least_m3_h=least, most_m3_h=most, flow=Variation(sd, FLOW_LASTS_H), daily_amplitude=amplitude,
         daily_peak_h=peak, wastes=len(arrivals), shares=tuple(float(s) for s in shares),
-        strength=tuple(_variation(a) for a in arrivals), dumps=dumps, days=days, step_h=min(STEP_H, days * 24.0))
+        strength=tuple(_variation(a) for a in arrivals), dumps=dumps, days=days, step_h=min(step_h, days * 24.0))
 
 
 def _daily(steady: Sequence[Arrival], mean: float) -> tuple[float, float]:
@@ -69,7 +70,7 @@ def design_course(job: Job, chem: Chemistry) -> Profile:
     """The course that volumes are sized by: the measured one, else one drawn for two weeks."""
     if job.profile is not None:
         return _measured(job, chem)
-    drawn = draw(statistics_of(job.arrivals, DESIGN_DAYS), 1, job.trial.seed)
+    drawn = draw(statistics_of(job.arrivals, DESIGN_DAYS, DESIGN_STEP_H), 1, job.trial.seed)
     return Profile(time_s=drawn.time_s, flow_m3_h=drawn.flow_m3_h[:, 0], strength=drawn.strength[:, :, 0],
                    step_s=drawn.step_s, source=f"drawn for {DESIGN_DAYS:g} days from the statistics of the wastes, seed "
                                                f"{job.trial.seed}")

@@ -18,7 +18,7 @@ from aquabuf.assess.tank.reagents import ACID, BASE, Reagent
 from aquabuf.assess.tank.waste import Chemistry, chemistry
 from aquabuf.errors import InputError
 
-__all__ = ["Basis", "Need", "basis_of", "needs_of"]
+__all__ = ["Basis", "L_PER_M3", "NEVER", "Need", "amounts_of", "basis_of", "needs_of"]
 
 Array = NDArray[np.float64]
 
@@ -70,7 +70,7 @@ class Basis:
         return max(self.needs, key=lambda kind: self.needs[kind].mean_eq_h)
 
 
-def amounts_of(chem: Chemistry, strength: Array) -> Array:
+def amounts_of(strength: Array) -> Array:
     """Amounts of a course, (J, n) or (J, n, cases): its strengths, and no carbon of reagents."""
     return np.concatenate([strength, np.zeros_like(strength[:1])])
 
@@ -135,7 +135,7 @@ def basis_of(job: Job) -> Basis:
     """
     chem = chemistry(job.wastes, t_c=float(mean_shares(job.arrivals) @ np.array([w.t_c for w in job.wastes])))
     course = design_course(job, chem)
-    base, amounts = course.base(chem.base_eq_l), amounts_of(chem, course.strength)
+    base, amounts = course.base(chem.base_eq_l), amounts_of(course.strength)
     mean = _mean_load(course, base, amounts)
     aim, why = _aim(job, chem, mean)
     fit = window_fit(chem.readout, mean.base_eq_l, mean.amounts, job.window.low, job.window.high, aim)

@@ -238,13 +238,13 @@ class Loops:
         np.minimum(np.maximum(part, 0.0, out=part), self._last, out=part)
         np.add(part, self._offset, out=part)
         np.copyto(k, part, casting="unsafe")
-        np.take(self._slope, k, out=error, mode="clip")
+        self._slope.take(k, out=error, mode="clip")
         np.multiply(error, ph, out=error)
-        np.take(self._start, k, out=part, mode="clip")
+        self._start.take(k, out=part, mode="clip")
         np.add(error, part, out=error)
         np.subtract(self._aim, error, out=error)
         if self._is_scheduled:
-            np.take(self._gains, k, out=part, mode="clip")
+            self._gains.take(k, out=part, mode="clip")
             np.multiply(part, error, out=part)
         else:
             np.multiply(self._gain, error, out=part)

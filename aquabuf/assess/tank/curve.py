@@ -32,7 +32,7 @@ Array = NDArray[np.float64]
 
 WIDEST_GAP = 0.5      # pH between neighboring points in the window; common practice, no source
 UNSURE_MOST = 0.1     # of the window: a wider step does where base is known as well as that; common practice
-FLOORED_TOLD = 1e-3   # of the rise of the curve, from which on flooring is told
+FLOORED_TOLD, FLOORED_ERRORS = 1e-3, 2.0  # of the rise of the curve, and of reading errors, from which flooring is told
 HALVINGS = 52
 ROUNDING = 1e-9       # of the rise of the curve
 
@@ -146,7 +146,7 @@ class MeasuredCurve:
         told = list(self.notes)
         if share.min() < 1.0:
             told.append(f"thinning by the titrant, down to {100.0 * share.min():.3g} % of waste, was taken out")
-        told += _floor_words(self.ph, floored - held, float(self.base_eq_l[-1] - self.base_eq_l[0]))
+        told += _floor_words(self.ph, floored - held, error, float(self.base_eq_l[-1] - self.base_eq_l[0]))
         new = replace(self, base_eq_l=floored + water, dilution=1.0, c_h=c_h, c_oh=c_oh, notes=tuple(told))
         raw = self.raw_ph
         return new if np.isnan(raw) else replace(new, base_eq_l=new.base_eq_l - float(new.base_at(raw)))
@@ -162,13 +162,16 @@ class MeasuredCurve:
         return replace(self, tails=(low_ph, high_ph), notes=(*self.notes, _beyond_words(self)))
 
 
-def _floor_words(ph: Array, shift: Array, rise: float) -> list[str]:
-    hit = np.flatnonzero(np.abs(shift) > FLOORED_TOLD * rise)
+def _floor_words(ph: Array, shift: Array, error: Array, rise: float) -> list[str]:
+    """Stretches that were floored by more than reading errors explain."""
+    hit = np.flatnonzero((np.abs(shift) > FLOORED_TOLD * rise) & (np.abs(shift) > FLOORED_ERRORS * error))
     if not hit.size:
         return []
-    worst = float(np.abs(shift).max())
-    return [f"from pH {ph[hit[0]]:.2f} to {ph[hit[-1]]:.2f} the curve is flatter than water alone can be; it was "
-            f"floored by up to {worst:.2g} eq/L ({100.0 * worst / rise:.2g} % of its rise): check the electrode there"]
+    worst = float(np.abs(shift[hit]).max())
+    runs = np.split(hit, np.flatnonzero(np.diff(hit) > 1) + 1)
+    where = " and ".join(f"from pH {ph[run[0]]:.2f} to {ph[run[-1]]:.2f}" for run in runs)
+    return [f"{where} the curve is flatter than water alone can be; it was floored by up to {worst:.2g} eq/L "
+            f"({100.0 * worst / rise:.2g} % of its rise): check the electrode there"]
 
 
 def _beyond_words(curve: MeasuredCurve) -> str:

@@ -17,9 +17,9 @@ __all__ = ["Feeder", "Inflow", "Probe", "Tank", "step_for"]
 
 Array = NDArray[np.float64]
 
-STEPS_PER_LAG = 6.0  # of dead time plus probe lag: sampling then adds less than a tenth to the dead time
+STEPS_PER_LAG = 5.0  # of dead time plus probe lag: sampling then adds a tenth to the dead time
 STEPS_PER_TANK = 20.0
-ROUND_STEPS_S = (0.5, 1.0, 2.0, 5.0, 10.0, 15.0, 20.0, 30.0, 60.0)
+ROUND_STEPS_S = (0.5, 1.0, 2.0, 3.0, 4.0, 5.0, 6.0, 8.0, 10.0, 12.0, 15.0, 20.0, 30.0, 60.0)
 
 
 @dataclass(frozen=True, slots=True)
@@ -33,7 +33,7 @@ class Feeder:
     repeatability : each setting is off by an even chance within plus or minus this share of the flow asked for.
     turndown : largest over least; below the least it is off.
     line_dead_s : from feeder to tank. dissolution_per_min : first order; None at once.
-    ceiling_ph : dissolution fades to nothing there, with the deficit 1 - 10^(pH - ceiling) (assumed: film diffusion).
+    ceiling_ph : what is undissolved stops dissolving there.
     """
 
     largest_eq_h: float
@@ -65,7 +65,7 @@ class Feeder:
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Probe:
-    """A pH electrode: dead time (mixing and its own) and first-order lag [s], standard deviation of noise and offset."""
+    """A pH electrode: dead time (mixing and its own) and first-order lag [s], noise (standard deviation) and offset."""
 
     lag_s: float = 0.0
     noise_ph: float = 0.0
@@ -162,7 +162,7 @@ class Inflow:
 
 
 def step_for(tanks: Sequence[Tank], flow_m3_h: float | None = None) -> float:
-    """Step for a simulation, from the fastest loop: a sixth of dead time plus probe lag, at least 0.5 s. [s]
+    """Step for a simulation, from the fastest loop: a fifth of dead time plus probe lag, at least 0.5 s. [s]
 
     With a flow, also no more than a twentieth of the shortest residence. Rounded down to a plain number.
     """

@@ -24,6 +24,7 @@ __all__ = ["Flows", "Pool", "pools_of"]
 Array = NDArray[np.float64]
 
 NO_FLOW = 1e-300  # keeps a tank without flow from dividing by zero
+STANDING = 1e-9   # of its contents: a tank that exchanges less in a step counts as standing
 
 
 @dataclass(frozen=True, slots=True)
@@ -44,12 +45,11 @@ class Pool:
         """Base moved per equivalent dissolved."""
         return self.feeder.base_eq_eq * (1.0, -1.0)[self.side]
 
-    def share(self, ph: Array) -> Array:
-        """Share of its rate left at a pH."""
+    def rate_at(self, ph: Array) -> Array:
+        """Rate at a pH: the same up to the ceiling, then none. [1/h]"""
         if self.feeder.ceiling_ph is None:
-            return np.ones_like(ph)
-        away = (ph - self.feeder.ceiling_ph) * (1.0, -1.0)[self.side]
-        return 1.0 - 10.0 ** np.minimum(away, 0.0)
+            return np.full(ph.shape, self.per_h)
+        return np.where((ph - self.feeder.ceiling_ph) * (1.0, -1.0)[self.side] < 0.0, self.per_h, 0.0)
 
 
 def pools_of(tanks: Sequence[Tank]) -> list[Pool]:
@@ -66,7 +66,9 @@ class Flows:
         shape = volume_m3.shape
         self._readout, self._pools, self._dt, self._carbon = readout, pools, dt_h, carbon
         self.volume, self.x, self.u = volume_m3.copy(), x.copy(), u.copy()
+        self._per_step = volume_m3 / dt_h
         self._moves = [t.least_m3 is not None for t in tanks]
+        self._any_moves = any(self._moves)
         self._most = [t.volume_m3 for t in tanks]
         self._least = [t.least_m3 or t.volume_m3 for t in tanks]
         self._draw = [t.out_m3_h or 0.0 for t in tanks]
@@ -87,19 +89,15 @@ class Flows:
         self.out_pools = np.zeros((len(pools), shape[1]))    # [keq/h]
         self.full_h, self.empty_h = np.zeros(shape), np.zeros(shape)
 
-    def advance(self, flow_m3_h: Array, in_rate: Array, fed_eq_h: Array, ph: Array) -> None:
-        """One step: inflow (N,), what it carries (rows, N) [keq/h], feeds (2, S, N), pH at its start (S, N)."""
+    def advance(self, flow_m3_h: Array, in_rate: Array, fed_eq_h: Array) -> None:
+        """One step: inflow (N,), what it carries (rows, N) [keq/h], and feeds (2, S, N)."""
         self._flow(flow_m3_h, fed_eq_h)
         np.multiply(fed_eq_h, self._base_per_eq, out=self._added)
         np.add(self._added[0], self._added[1], out=self._added[0])
         if self._has_carbon:
             np.multiply(fed_eq_h, self._carbon_per_eq, out=self._added_carbon)
             np.add(self._added_carbon[0], self._added_carbon[1], out=self._added_carbon[0])
-        else:
-            self._added_carbon[0] = 0.0
-        for p, pool in enumerate(self._pools):
-            self._dissolve(p, pool, fed_eq_h[pool.side, pool.stage], ph)
-        self._carry(in_rate)
+        self._carry(in_rate, fed_eq_h)
         self.volume, self._new_volume = self._new_volume, self.volume
 
     def _flow(self, flow_m3_h: Array, fed_eq_h: Array) -> None:
@@ -107,14 +105,14 @@ class Flows:
         fed, through, decay = self._fed, self._through, self._decay
         np.multiply(fed_eq_h, self._water, out=fed)
         np.add(fed[0], fed[1], out=fed[0])
-        if any(self._moves):
+        if self._any_moves:
             self._flow_levels(flow_m3_h)
         else:
             np.cumsum(fed[0], axis=0, out=through)
             np.add(through, flow_m3_h, out=through)
             np.subtract(through, fed[0], out=self.inflow)
             np.divide(through, self.volume, out=decay)
-            self._out_flow = through
+            self._out_flow = through  # the same array
         np.multiply(decay, -self._dt, out=decay)
         np.exp(decay, out=decay)
 
@@ -141,60 +139,73 @@ class Flows:
                 self._decay[s] = self._through[s] / v0 * slowed
             above = self._out_flow[s]
 
-    def _dissolve(self, p: int, pool: Pool, fed_eq_h: Array, ph: Array) -> None:
-        """Undissolved reagent of one feeder down the tanks; adds what dissolves to base and carbon."""
-        rate_in = 1e-3 * fed_eq_h
-        for s in range(pool.stage, self.volume.shape[0]):
-            v0, v1, through, u0 = self.volume[s], self._new_volume[s], self._through[s], self.u[p, s]
-            middle = 0.5 * (v0 + v1)
-            k = self._per_h(pool, s, ph[s], u0 * v0)
-            loss = through + k * middle
-            target = rate_in / np.maximum(loss, NO_FLOW)
-            u1 = target + (u0 - target) * self._decay[s] * np.exp(-k * self._dt)
-            gone = rate_in - (v1 * u1 - v0 * u0) / self._dt  # dissolved and carried off
-            dissolved = gone * (k * middle / np.maximum(self._out_flow[s] + k * middle, NO_FLOW))
-            self.u[p, s] = u1
-            self._added[0, s] += pool.sign * dissolved
-            self._added_carbon[0, s] += pool.feeder.carbon_mol_eq * dissolved
-            rate_in = gone - dissolved
-        self.out_pools[p] = rate_in
-
-    def _per_h(self, pool: Pool, s: int, ph: Array, waiting: Array) -> Array:
-        """Rate of dissolution [1/h]; near the ceiling no more in a step than would lift the tank to it."""
-        k = pool.per_h * pool.share(ph)
-        ceiling = pool.feeder.ceiling_ph
-        if ceiling is None or pool.sign == 0.0:
-            return k
-        room = (self._readout.base_at(ceiling, self.x[s, 1:]) - self.x[s, 0]) / pool.sign * self.volume[s]
-        at_most = np.maximum(room, 0.0) / np.maximum(waiting * self._dt, NO_FLOW)
-        return np.minimum(k, at_most)
-
-    def _carry(self, in_rate: Array) -> None:
+    def _carry(self, in_rate: Array, fed_eq_h: Array) -> None:
         """Base and carriers down the tanks."""
-        rate, target, change = self._rate, self._target, self._change
+        rate, change = self._rate, self._change
         np.copyto(rate, in_rate)
-        through, decay, fresh = self._through, self._decay, self._has_carbon or bool(self._pools)
-        np.maximum(through, NO_FLOW, out=through)
+        np.maximum(self._through, NO_FLOW, out=self._through)
+        self.out_pools.fill(0.0)
         for s, moves in enumerate(self._moves):
             rate[0] += self._added[0, s]
-            if fresh and self._carbon is not None:
-                rate[1 + self._carbon] += self._added_carbon[0, s]
+            if self._has_carbon:
+                rate[1 + self._carbon] += self._added_carbon[0, s]  # type: ignore[operator]
+            self._mix(s)
+            for p, pool in enumerate(self._pools):
+                if pool.stage <= s:
+                    self._dissolve(p, pool, s, fed_eq_h)
+                    self._mix(s)
             x = self.x[s]
-            np.divide(rate, through[s], out=target)
-            np.subtract(x, target, out=change)
-            np.multiply(change, decay[s], out=change)
-            np.add(change, target, out=change)   # contents at the end
             if moves:
                 np.subtract(rate, (self._new_volume[s] * change - self.volume[s] * x) / self._dt, out=rate)
                 np.copyto(x, change)
             else:
-                np.copyto(target, x)
+                stored = np.subtract(change, x, out=self._target)
                 np.copyto(x, change)
-                np.subtract(change, target, out=change)
-                np.multiply(change, self.volume[s], out=change)
-                np.multiply(change, 1.0 / self._dt, out=change)
-                np.subtract(rate, change, out=rate)
+                np.multiply(stored, self._per_step[s], out=stored)
+                np.subtract(rate, stored, out=rate)
         np.copyto(self.out_rate, rate)
+
+    def _mix(self, s: int) -> None:
+        """Contents of a tank at the end of the step, given the rate at which all comes in; into `_change`."""
+        x, target, change = self.x[s], self._target, self._change
+        np.divide(self._rate, self._through[s], out=target)
+        np.subtract(x, target, out=change)
+        np.multiply(change, self._decay[s], out=change)
+        np.add(change, target, out=change)
+
+    def _dissolve(self, p: int, pool: Pool, s: int, fed_eq_h: Array) -> None:
+        """Undissolved reagent of one feeder in one tank; adds what dissolves to what comes in.
+
+        First order, but no more than brings the tank to the ceiling by the end of the step; then dissolution runs
+        evenly at what there is room for.
+        """
+        v0, v1, through, decay, u0 = self.volume[s], self._new_volume[s], self._through[s], self._decay[s], self.u[p, s]
+        into = 1e-3 * fed_eq_h[pool.side, s] if pool.stage == s else self.out_pools[p].copy()
+        middle, k = 0.5 * (v0 + v1), pool.per_h
+        target = into / (through + k * middle)
+        u1 = target + (u0 - target) * decay * np.exp(-k * self._dt)
+        gone = into - (v1 * u1 - v0 * u0) / self._dt  # dissolved and carried off
+        dissolved = gone * (k * middle / (self._out_flow[s] + k * middle))
+        room = self._room(pool, s)
+        is_full = dissolved > room
+        if is_full.any():
+            dissolved = np.where(is_full, room, dissolved)
+            target = (into - dissolved) / through
+            u1 = np.where(is_full, target + (u0 - target) * decay, u1)
+            gone = into - (v1 * u1 - v0 * u0) / self._dt
+        self.u[p, s], self.out_pools[p] = u1, gone - dissolved
+        self._rate[0] += pool.sign * dissolved
+        if self._carbon is not None:
+            self._rate[1 + self._carbon] += pool.feeder.carbon_mol_eq * dissolved
+
+    def _room(self, pool: Pool, s: int) -> Array:
+        """Rate of dissolution that brings a tank to the ceiling by the end of the step. [keq/h]"""
+        if pool.feeder.ceiling_ph is None or pool.sign == 0.0:
+            return np.full(self.volume.shape[1], np.inf)
+        end = self._change
+        lift = (self._readout.base_at(pool.feeder.ceiling_ph, end[1:]) - end[0]) / pool.sign
+        stays = np.maximum(1.0 - self._decay[s], STANDING)  # a steady rate lifts contents by stays / through
+        return np.maximum(lift, 0.0) * np.where(stays > STANDING, self._through[s] / stays, self.volume[s] / self._dt)
 
 
 def _each(feeders: Sequence[Sequence[Feeder | None]], of: object) -> Array:

@@ -44,7 +44,7 @@ def read_stream(path: str | Path) -> Job:
     for name in content:
         if name not in SECTIONS:
             raise top.unknown(name, SECTIONS, "a table of a stream file")
-    told = Told()
+    told = Told("file")
     head = _section(top, content, "tank", told, needed=True)
     profile = _profile(top, content, path.parent, told)
     arrivals = read_wastes(top, content, path.parent, told, has_profile=profile is not None)

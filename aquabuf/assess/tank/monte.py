@@ -79,6 +79,7 @@ class MonteCarlo:
     """Outcome of the cases, each array (cases,).
 
     probability, low, high : of meeting the rule, with its exact 95 % interval (Clopper & Pearson 1934).
+    processes : how many the cases ran in; the answer does not depend on it.
     """
 
     meets: NDArray[np.bool_]
@@ -94,6 +95,7 @@ class MonteCarlo:
     simulated_min: float
     allowed_min: float
     rule: str
+    processes: int
 
     def quantiles(self, shares: ArrayLike = (0.5, 0.9, 0.95, 1.0)) -> dict[str, Array]:
         """Quantiles of time outside and of the worst pH; of the lowest pH the same share is above."""
@@ -145,7 +147,8 @@ def monte_carlo(readout: Readout, tanks: Sequence[Tank], inflow: Inflow | Draw, 
     job = _Job(readout, tuple(tanks), inflow, bands or Bands(), seed, until_s, window, dt_s, sample_s, carbon_carrier)
     parts = max(processes, math.ceil(cases / TOGETHER))
     blocks = [b.tolist() for b in np.array_split(np.arange(cases), parts) if b.size]
-    done = _in_processes(job, blocks, processes) or [_run_block(job, b) for b in blocks]
+    shared = _in_processes(job, blocks, processes)
+    done = shared or [_run_block(job, b) for b in blocks]
     outside, longest, lowest, highest, strength, buffer = (np.concatenate(part) for part in zip(
         *(d[:-1] for d in done), strict=True))
     simulated_min = done[0][-1]
@@ -154,7 +157,8 @@ def monte_carlo(readout: Readout, tanks: Sequence[Tank], inflow: Inflow | Draw, 
     low, high = clopper_pearson(int(meets.sum()), cases)
     return MonteCarlo(meets=meets, outside_min=outside, longest_min=longest, lowest_ph=lowest, highest_ph=highest,
                       strength=strength, buffer=buffer, probability=float(meets.mean()), low=low, high=high,
-                      simulated_min=simulated_min, allowed_min=allowed, rule=rule.words(simulated_min))
+                      simulated_min=simulated_min, allowed_min=allowed, rule=rule.words(simulated_min),
+                      processes=processes if shared else 1)
 
 
 _Done = tuple[Array, Array, Array, Array, Array, Array, float]

@@ -18,7 +18,8 @@ from aquabuf.tables import read_table
 from aquabuf.units import convert
 
 __all__ = [
-    "HP_W", "Standing", "TankRule", "at_least_zero", "positive", "power_w_m3", "rule", "rules_in", "stands", "words_for",
+    "HP_W", "Standing", "TankRule", "at_least_zero", "positive", "power_w_m3", "rule", "rules_in", "stands",
+    "words_for",
 ]
 
 HP_W = 745.69987158227022  # 550 foot pounds a second (definition)
@@ -118,8 +119,8 @@ def stands(key: str, quantity: str, value: float) -> Standing:
     r = rule(key)
     kept = r.keeps(value)
     unit = "" if r.unit == "-" else f" {r.unit}"
-    words = (f"{quantity} {shown(value)}{unit}: {'within' if kept else 'outside'} {r.range_words}, "
-             f"{r.words} ({r.told_by})")
+    words = (f"{quantity} {shown(value)}{unit}: {'keeps' if kept else 'breaks'} {r.range_words}; {r.words} "
+             f"({r.told_by})")
     return Standing(rule=r, quantity=quantity, value=value, kept=kept, words=words)
 
 

@@ -47,8 +47,7 @@ class Treated:
     strength : mass fraction at which the reagent is fed or thinned on site, for its heat; None where not known.
     totals : dissolved in the waste, by name: "carbon", weak acids, metals, ions. [mol/L]
     acids : other weak acids, for heat and the pH after stripping. [mol/L]
-    held : base that everything but carbon and water holds at a pH, counted as alkalinity, where a curve tells it.
-    [eq/L]
+    held : base that everything but carbon and water holds at a pH, where a curve tells it, in place of acids. [eq/L]
     efficiency : share of a solid reagent that reacts; the rest is sludge.
     constants : of the mixture; ideal solution at t_c if not given.
 

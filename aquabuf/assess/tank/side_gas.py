@@ -44,10 +44,10 @@ def co2_m3_per_kg(t_c: ArrayLike) -> Array:
 
 
 def _non_carbon(case: Treated, ph: float) -> float:
-    """Base that everything but carbon and water holds. [eq/L]"""
+    """Base that everything but carbon and water holds, but for a constant. [eq/L]"""
     if case.held is not None:
         return case.held(ph)
-    return sum(total * (_lost(case.acid_shares(acid, ph)) - acid.zero_level) for acid, total in case.weak_acids.items())
+    return sum(total * _lost(case.acid_shares(acid, ph)) for acid, total in case.weak_acids.items())
 
 
 def _lost(shares: Array) -> float:
@@ -67,8 +67,8 @@ def stripped_ph(case: Treated, pco2_atm: float | None = None) -> tuple[float, fl
 
     def gap(ph: float) -> float:
         first = co2 * k1 * 10.0**ph
-        return first + 2.0 * first * k2 * 10.0**ph + case.hydroxide(ph) - case.hydrogen(ph) + _non_carbon(case,
-                                                                                                          ph) - base
+        carbonate = first * (1.0 + 2.0 * k2 * 10.0**ph)
+        return carbonate + case.hydroxide(ph) - case.hydrogen(ph) + _non_carbon(case, ph) - base
     low, high = PH_RANGE
     for _ in range(HALVINGS):
         middle = 0.5 * (low + high)
@@ -87,8 +87,8 @@ def co2_effects(case: Treated, window: tuple[float, float] | None = None) -> lis
         name="pH after CO2 strips" if strips else "pH in contact with air", value=ph, unit="pH",
         words=("what the water comes to downstream" if strips else "the water takes CO2 up from air, slowly")
         + (", outside the window" if outside else ""),
-        rule=f"equilibrium with air of {AIR_CO2_PPM:g} ppm CO2, base unchanged", source="Henry's law and carbonic "
-                                                                                        "acid constants",
+        rule=f"equilibrium with air of {AIR_CO2_PPM:g} ppm CO2, base unchanged",
+        source="Henry's law and carbonic acid constants",
         severity=WARNING if outside and strips else NOTE)]
     if not strips:
         return rows
@@ -106,11 +106,9 @@ def co2_effects(case: Treated, window: tuple[float, float] | None = None) -> lis
                rule="carbon of waste and reagent less what stays in balance with air", source=STOICHIOMETRY),
         Effect(name="carbon dioxide gas", value=kg_d * float(co2_m3_per_kg(case.t_c)), unit="m3/d",
                words="volume of the same at 1 atm", rule="ideal gas", source="gas law"),
-        Effect(name="carbon dioxide pressure", value=pressure, unit="atm",
-               words=said,
-               rule=f"workplace limit {CO2_LIMIT_ATM:g} atm in the air over the water; bubbles above {BUBBLES_ATM:g} "
-                    "atm",
-               source="Henry's law; limit of 5000 ppm (recalled)",
+        Effect(name="carbon dioxide pressure", value=pressure, unit="atm", words=said,
+               rule=f"limit of {CO2_LIMIT_ATM:g} atm in the air over the water; bubbles above {BUBBLES_ATM:g} atm",
+               source="Henry's law; workplace limit of 5000 ppm (recalled)",
                severity=WARNING if presses else NOTE),
         *rows]
 
@@ -184,9 +182,8 @@ def _gas_row(case: Treated, hazard: GasHazard, share: Array) -> Effect:
     side = "above" if hazard.side == ACID_SIDE else "below"
     return Effect(
         name=f"{hazard.name}, {mg_l:.3g} mg/L as {hazard.counted_as}", value=float(share.max()), unit="-", words=said,
-        rule=f"{hazard.severity} from {hazard.limit_mg_l:g} mg/L on where {_article(hazard.side)} is fed; hold {side} "
-             "pH "
-             f"{hazard.hold_ph:g}", source=hazard.source, severity=severity)
+        rule=f"{hazard.severity} from {hazard.limit_mg_l:g} mg/L on where {_article(hazard.side)} is fed; "
+             f"hold {side} pH {hazard.hold_ph:g}", source=hazard.source, severity=severity)
 
 
 def _article(side: str) -> str:
@@ -207,8 +204,7 @@ def mixing_effects(streams: Sequence[tuple[str, float, Mapping[str, float]]]) ->
                 rows.append(Effect(
                     name=f"{holder} beside {', '.join(acids)}", value=mg_l, unit="mg/L",
                     words=f"{hazard.gas} comes off when they meet: {hazard.words}",
-                    rule=f"{hazard.limit_mg_l:g} mg/L of {hazard.name} as {hazard.counted_as} beside a stream below "
-                         "pH 7",
+                    rule=f"{hazard.limit_mg_l:g} mg/L as {hazard.counted_as} beside a stream below pH {NEUTRAL_PH:g}",
                     source=hazard.source, severity=hazard.severity))
         bleach, ammonia = gas_hazards()["hypochlorite"], gas_hazards()["ammonium"]
         others = [name for name, _, other in streams if other.get(ammonia.name, 0.0) > 0.0]

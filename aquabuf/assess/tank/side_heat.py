@@ -62,13 +62,13 @@ def heat_kj_l(case: Treated) -> tuple[float, float, bool]:
     changes = _changes(case)
     off = sum(float(change.sum()) for change, _ in changes)
     taken = sum(float(change @ enthalpy) for change, enthalpy in changes)
-    less_oh = case.hydroxide(case.start_ph) - case.hydroxide(case.end_ph)
     if case.is_acid:
         fed = case.dose_eq_l if case.product.adds["alkalinity"] else 0.0
         more_h = case.hydrogen(case.end_ph) - case.hydrogen(case.start_ph)
-        water = less_oh + max(fed - more_h - less_oh + off, 0.0)
+        water = fed - more_h + off  # every proton that neither stays free nor goes to an acid that is known
     else:
         as_carbonate = float(_off_as_fed(case).sum()) if case.added(CARBON) else 0.0
+        less_oh = case.hydroxide(case.start_ph) - case.hydroxide(case.end_ph)
         water = less_oh + max(case.added("alkalinity") - case.added(CARBON) * as_carbonate, 0.0)
     other, known = _other_heat(case)
     return NEUTRALIZATION_KJ_EQ * water - taken, other, known
@@ -103,11 +103,11 @@ def heat_effects(case: Treated, outlet_limit_c: float = SEWER_LIMIT_C) -> list[E
         Effect(name="heat of dilution", value=other, unit="kJ/L",
                words="thinning, slaking or dissolving of the reagent" if known else
                "not known for this reagent or strength: comes on top",
-               rule="by the strength that is fed", source="CRC Handbook; worked example (printed), NBS tables "
-                                                          "(recalled)",
+               rule="by the strength that is fed",
+               source="CRC Handbook; worked example (printed), NBS tables (recalled)",
                severity=NOTE if known else WARNING),
-        Effect(name="temperature rise", value=rise, unit="K", words="nothing lost to the surroundings; reagent water "
-                                                                    "left out",
+        Effect(name="temperature rise", value=rise, unit="K",
+               words="nothing lost to the surroundings; reagent water left out",
                rule="13.35 K per eq/L of strong acid with strong base", source=SOURCE),
         Effect(name="outlet temperature", value=outlet, unit="°C", words=said, rule=f"limit {outlet_limit_c:g} °C",
                source="40 CFR 403.5 for 40 °C, as summarized in Environmental Engineers' Handbook (printed); the "
@@ -118,7 +118,7 @@ def heat_effects(case: Treated, outlet_limit_c: float = SEWER_LIMIT_C) -> list[E
 def dissolved_effects(case: Treated) -> list[Effect]:
     """Dissolved solids that the treatment adds: ions of the reagent less what falls out; CO2 is taken as gone."""
     ions = sum(case.added(name) * substances()[name].molar_mass_g for name in case.product.adds
-               if name in substances())
+               if name in substances() and name != CARBON)
     solids = solids_kg_m3(case)
     left = metal_left_mol_l(case)
     out = (solids["gypsum"] * molar_mass("CaSO4") / molar_mass("CaSO4.2H2O") + solids["calcium fluoride"]

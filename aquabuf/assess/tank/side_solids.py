@@ -28,6 +28,13 @@ NEAR = 0.5                   # of saturation, from which on scale is told
 SLUDGE_SHARE = 0.02          # solids in settled hydroxide sludge; common practice 1 to 3 %, gypsum and limestone more
 SOURCE_GYPSUM = "Environmental Engineers' Handbook (printed), read as CaSO4 (recalled)"
 STOICHIOMETRY = "atomic masses"
+BELOW = "below saturation: no gypsum sludge"
+CLOSE = "near saturation: scale where it warms or dries"
+ABOVE = ("above saturation: sludge and much scale; a clear solution may stay supersaturated for hours and scale "
+         "downstream unless sludge is recycled as seed (10 g/L halves scale)")
+FLUORIDE_FALLS = ("stays dissolved at equilibrium; plants reach 10 to 20 mg/L, since fine crystals pass and aluminum "
+                  "or iron bind fluoride")
+FLUORIDE_STAYS = "nothing takes it out: sodium and magnesium fluoride stay dissolved"
 
 
 # ---------------------------------------------------------------- calcium salts
@@ -115,10 +122,7 @@ def salt_effects(case: Treated) -> list[Effect]:
             source="handbook Ksp (recalled)"))
         rows.append(Effect(
             name="fluoride left", value=left, unit="mg/L",
-            words=("stays dissolved at equilibrium; plants reach 10 to 20 mg/L, since fine crystals pass and aluminum "
-                   "or iron "
-                   "bind fluoride" if fluorite else "nothing takes it out: sodium and magnesium fluoride stay "
-                                                    "dissolved"),
+            words=FLUORIDE_FALLS if fluorite else FLUORIDE_STAYS,
             rule="equilibrium with fluorite; practice 10 to 20 mg/L", source="handbook Ksp and practice (recalled)",
             severity=NOTE if fluorite else WARNING))
     return rows
@@ -130,17 +134,13 @@ def _gypsum_rows(case: Treated, gypsum: float) -> list[Effect]:
     limit = float(gypsum_onset_acid_g_l(case.t_c))
     rows = [Effect(
         name="gypsum saturation", value=float(share), unit="-",
-        words=("below saturation: no gypsum sludge" if share < NEAR else "near saturation: scale where it warms or "
-                                                                         "dries"
-               if share <= 1.0 else "above saturation: sludge and much scale; a clear solution may stay "
-                                    "supersaturated for hours "
-               "and scale downstream unless sludge is recycled as seed (10 g/L halves scale)"),
+        words=BELOW if share < NEAR else CLOSE if share <= 1.0 else ABOVE,
         rule=f"calcium sulfate that stays dissolved; lime on sulfuric acid passes it above {limit:.2f} g/L of acid",
         source=f"{SOURCE_GYPSUM}; MIL-HDBK-1005/9A on scaling (printed)", severity=NOTE if share < NEAR else WARNING)]
     if np.isfinite(onset):
         rows.append(Effect(name="gypsum onset", value=float(onset), unit="eq/L",
-                           words="dose from which on gypsum may fall out", rule="calcium times sulfate as in a "
-                                                                                "saturated solution",
+                           words="dose from which on gypsum may fall out",
+                           rule="calcium times sulfate as in a saturated solution",
                            source=SOURCE_GYPSUM))
     if gypsum > 0.0:
         mass = gypsum * molar_mass(GYPSUM)
@@ -168,17 +168,18 @@ def hydroxide_effects(case: Treated) -> list[Effect]:
         mg_l = 1e3 * left[metal.name] * metal.molar_mass_g
         known = np.isfinite(metal.limit_mg_l)
         over = bool(known and mg_l > metal.limit_mg_l)
-        level = f"{metal.limit_mg_l:g} mg/L, to compare: {metal.limit_source}; the permit outranks it" if known else "no level listed"
+        level = (f"{metal.limit_mg_l:g} mg/L, to compare: {metal.limit_source}; the permit outranks it" if known
+                 else "no level listed")
         rows.append(Effect(
             name=f"{metal.name} hydroxide", value=solid * metal.hydroxide_g_mol, unit="kg/m3",
-            words=f"{100.0 * solid / total:.3g} % of it falls out as {metal.hydroxide}", rule="solubility at the end pH",
-            source=metal.solubility_source))
+            words=f"{100.0 * solid / total:.3g} % of it falls out as {metal.hydroxide}",
+            rule="solubility at the end pH", source=metal.solubility_source))
         rows.append(Effect(
             name=f"{metal.name} left", value=mg_l, unit="mg/L",
             words=("above the level: another end pH, sulfide or a complex breaker is needed" if over else
                    "at least; mixed complexes and fine solids that pass the clarifier come on top"),
             rule=level, source=metal.solubility_source, severity=WARNING if over else NOTE))
-        if told := window_disagreement(metal, case.pkw):
+        if told := window_disagreement(metal):  # at 25 °C, as the tables are
             rows.append(Effect(name=f"{metal.name} window", value=case.end_ph, unit="pH", words=told,
                                rule="within half a pH of the table of analysts", source=metal.table_source))
     judged = [m for m in case.metals if np.isfinite(m.limit_mg_l) or np.isfinite(m.ph_low)]
@@ -217,13 +218,13 @@ def sludge_effects(case: Treated, sludge_share: float = SLUDGE_SHARE) -> list[Ef
     parts = solids_kg_m3(case)
     total = sum(parts.values())
     said = ", ".join(f"{name} {value:.3g}" for name, value in parts.items() if value > 0.0) or "none"
-    rule = "gypsum, fluoride, hydroxides, solids of the waste, reagent that did not react; calcium carbonate is not counted"
+    rule = "gypsum, fluoride, hydroxides, solids of the waste, unreacted reagent; calcium carbonate is not counted"
     return [
         Effect(name="dry solids", value=total, unit="kg/m3", words=said, rule=rule, source=STOICHIOMETRY),
         Effect(name="dry solids per day", value=total * case.m3_d, unit="kg/d", words="at this flow all day", rule=rule,
                source=STOICHIOMETRY),
         Effect(name="wet sludge", value=total * case.m3_d / sludge_share * 1e-3, unit="m3/d",
                words=f"settled, at {100.0 * sludge_share:g} % of solids",
-               rule=f"{100.0 * sludge_share:g} % of solids by mass; hydroxide sludge settles to 1 to 3 %, gypsum far denser",
+               rule="hydroxide sludge settles to 1 to 3 % of solids by mass, gypsum far denser",
                source="common practice, no source; a settling test tells it"),
     ]

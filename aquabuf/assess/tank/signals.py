@@ -21,11 +21,12 @@ class Delay:
     """Dead time of each row of a signal (R, N), in whole steps, kept in a ring."""
 
     def __init__(self, steps: NDArray[np.intp], start: Array):
-        self._steps = steps
         self._length = int(steps.max(initial=0)) + 1
         rows, n = start.shape
         self._ring = np.repeat(start[None], self._length, axis=0).reshape(-1, n)
-        self._row, self._rows = np.arange(rows), rows
+        self._rows = rows
+        now = np.arange(self._length)[:, None]
+        self._late = (now - steps) % self._length * rows + np.arange(rows)  # places in the ring, for each now
         self._out = start.copy()
         self._now = 0
 
@@ -34,7 +35,7 @@ class Delay:
         if self._length == 1:
             return value
         self._ring[self._now * self._rows:(self._now + 1) * self._rows] = value
-        np.take(self._ring, (self._now - self._steps) % self._length * self._rows + self._row, axis=0, out=self._out)
+        self._ring.take(self._late[self._now], axis=0, out=self._out, mode="clip")
         self._now = (self._now + 1) % self._length
         return self._out
 

@@ -94,10 +94,10 @@ def simulate(readout: Readout, tanks: Sequence[Tank], inflow: Inflow, *, until_s
     used = run.fed_sum * (dt_s / 3600.0)
     return Simulated(
         stages=tuple(t.name for t in tanks), window=window, step_s=dt_s, steps=steps, time_s=record.time_s,
-        ph=record.ph, base_eq_l=record.base, reagent_eq_h=record.reagent, level_m3=record.level, outside_min=tally.outside,
-        longest_min=tally.longest, lowest_ph=tally.lowest, highest_ph=tally.highest, base_used_eq=used[0],
-        acid_used_eq=used[1], full_min=60.0 * run.flows.full_h, empty_min=60.0 * run.flows.empty_h,
-        balance_error=run.balance_error(start, steps))
+        ph=record.ph, base_eq_l=record.base, reagent_eq_h=record.reagent, level_m3=record.level,
+        outside_min=tally.outside, longest_min=tally.longest, lowest_ph=tally.lowest, highest_ph=tally.highest,
+        base_used_eq=used[0], acid_used_eq=used[1], full_min=60.0 * run.flows.full_h,
+        empty_min=60.0 * run.flows.empty_h, balance_error=run.balance_error(start, steps))
 
 
 def _check(readout: Readout, tanks: Sequence[Tank], inflow: Inflow, until_s: float, dt_s: float,
@@ -171,7 +171,7 @@ class _Run:
             np.copyto(self._delivered, 0.0, where=self._masks.out)
         two_rows = self._delivered.reshape(-1, self._delivered.shape[-1])
         self.fed = self._line.pass_on(two_rows).reshape(self._delivered.shape)
-        self.flows.advance(self._flow, self._in_rate, self.fed, self.ph)
+        self.flows.advance(self._flow, self._in_rate, self.fed)
         self._follower.follow(self.flows.x[:, 0], self._amounts)
         self._probes.follow(self.ph)
         np.add(self.fed_sum, self.fed, out=self.fed_sum)

@@ -3,11 +3,13 @@
 A feeder that is off by a share e of what it was asked for leaves that share of the demand; the next tank sees only the
 rest. Counting on the axis of reagent, not of pH, makes this exact for any titration curve:
 
-    rest after n tanks = e^n |demand|                                          base and acid in every tank
-    r >= q e (R - r),   q = (T + 1) / (T - 1),   rest = r + e (R - r)          one reagent: R comes in, r is aimed at
+    rest after n tanks = e^n |demand|                                 base and acid in every tank
+    r >= a e (R - r),   largest rest = r + e (R - r)                  one reagent in every tank
 
-r : demand that a tank leaves on purpose, so that what is really left keeps its sign and stays within the turndown T of
-the next feeder, (r + e (R - r)) / (r - e (R - r)) <= T. Both forms follow from the definition of e.
+R : largest demand that comes in; r : what the tank leaves on purpose, so that the next feeder is always asked for
+something, and within its turndown T. Before the last tank a = q = (T + 1) / (T - 1). A tank in between gives only
+1 / (1 + e a) of what comes in, so that the one before it must leave more: a' = (q + 1) (1 + e a) - 1. All of it follows
+from the definition of e.
 """
 
 from __future__ import annotations
@@ -31,7 +33,9 @@ __all__ = [
 
 Array = NDArray[np.float64]
 
-NOT_TOLD = 0  # a rule that says nothing about this stream
+NOT_TOLD = 0   # a rule that says nothing about this stream
+ROUNDING = 1e-9  # of base, as in the tables
+PH_PLACES = 3  # to which a distance from the window is known
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -71,9 +75,11 @@ def curve_of(base_at: Callable[[Array], Array], base_eq_l: float,
              carbon_at: Callable[[Array], Array] | None = None) -> DemandCurve:
     """The curve of a waste from a function of pH. Raises InputError where it does not rise with pH."""
     base = np.asarray(base_at(GRID_PH), dtype=float)
-    if not np.all(np.diff(base) > 0.0):
-        raise InputError("the base of a waste must rise with pH all along; found a place where it does not. "
-                         "Correct its curve.")
+    falls = np.diff(base) < -ROUNDING * (1.0 + np.abs(base[1:]))
+    if falls.any() or not np.isfinite(base).all():
+        where = f"fall at pH {GRID_PH[int(falls.argmax())]:.2f}" if falls.any() else "value that is no number"
+        raise InputError(f"the base of a waste must rise with pH all along; found a {where}. Correct its curve.")
+    base = np.maximum.accumulate(base)
     if not base[0] <= base_eq_l <= base[-1]:
         raise InputError(f"the base of a waste must lie on its curve, {base[0]:.4g} to {base[-1]:.4g} eq/L; found "
                          f"{base_eq_l:.4g} eq/L. Correct one of them.")
@@ -114,7 +120,7 @@ class Window:
 
     def distance(self, ph: float) -> float:
         """How far a pH lies outside the window; 0 inside."""
-        return max(self.low - ph, ph - self.high, 0.0)
+        return round(max(self.low - ph, ph - self.high, 0.0), PH_PLACES)
 
 
 # ---------------------------------------------------------------- feed error
@@ -146,21 +152,33 @@ def stages_by_residual(demand_eq_l: float, tolerance_eq_l: float, error: float) 
     return max(1, int(np.ceil(n - EDGE)))
 
 
-def remaining_share(error: float, turndown: float) -> float:
-    """Largest demand a tank passes on over the largest it got, when it leaves no more than it must (module text)."""
+def _least_left(error: float, turndown: float, behind: int) -> float:
+    """What a tank must leave, over its own error (`a` of the module text), with so many tanks behind it."""
     if not turndown > 1.0:
         raise InputError(f"the turndown must be above 1; found {turndown:g}. It is the largest over the smallest rate.")
     q = 1.0 if np.isinf(turndown) else (turndown + 1.0) / (turndown - 1.0)
-    return _share(error) * (1.0 + q) / (1.0 + error * q)
+    a = q
+    for _ in range(behind - 1):
+        a = (q + 1.0) * (1.0 + _share(error) * a) - 1.0
+    return a
+
+
+def remaining_share(error: float, turndown: float, behind: int = 1) -> float:
+    """Largest demand a tank passes on over the largest it got, when it leaves no more than it must.
+
+    behind : tanks that follow it. See the module text.
+    """
+    a = _least_left(error, turndown, behind)
+    return _share(error) * (1.0 + a) / (1.0 + error * a)
 
 
 def stages_within_turndown(demand_eq_l: float, tolerance_eq_l: float, error: float, turndown: float) -> int | None:
     """Least number of tanks with one reagent each; None where more tanks do not help or more than are looked at."""
-    share, rest, most = remaining_share(error, turndown), abs(demand_eq_l), int(rule("most tanks").high)
-    for n in range(1, most + 1):
+    rest = abs(demand_eq_l)
+    for n in range(1, int(rule("most tanks").high) + 1):
         if _share(error) * rest <= tolerance_eq_l * (1.0 + EDGE):
             return n
-        rest *= share
+        rest *= remaining_share(error, turndown, n)
     return None
 
 
@@ -168,23 +186,25 @@ def set_points(curve: DemandCurve, window: Window, tanks: int, error: float, tur
     """pH that each tank aims at, the last at the aim of the window.
 
     What a tank leaves lies between the least that keeps the next feeder within its turndown and the most that the rest
-    of the train can take; of that, the half next to the least (by ratio) is used, and there the pH at which the curve
-    has the lowest gain. Where the train is too short the least is left.
+    of the train can take and that leaves its own feeder enough to do; of that, the half next to the least (by ratio) is
+    used, and there the pH at which the curve has the lowest gain. Where the train is too short the least is left.
     """
-    need = float(curve.demand(window.aim))
-    tolerance, share = window.tolerance_eq_l(curve), remaining_share(error, turndown)
-    q = 1.0 if np.isinf(turndown) else (turndown + 1.0) / (turndown - 1.0)
-    comes, aims = abs(need), []
-    for i in range(1, tanks):
-        least = error * q * comes / (1.0 + error * q)
-        takes = tolerance / (error * share ** (tanks - 1 - i))  # largest demand that the tanks behind can bring home
-        most = max(least, min((takes - error * comes) / (1.0 - error), comes))
+    need, takes = float(curve.demand(window.aim)), [window.tolerance_eq_l(curve) / _share(error)]
+    for behind in range(1, tanks - 1):  # largest demand that so many tanks and one more can bring home
+        takes.append(takes[-1] / remaining_share(error, turndown, behind))
+    comes, off, aims = abs(need), 0.0, []
+    for behind in range(tanks - 1, 0, -1):
+        a = error * _least_left(error, turndown, behind)
+        least = a * comes / (1.0 + a)
+        own = comes - off * (1.0 + _least_left(error, turndown, 1))  # more would starve the feeder of this tank
+        most = max(least, min((takes[behind - 1] - error * comes) / (1.0 - error), own))
         ends = curve.ph_of(float(curve.base_at(window.aim)) - np.sign(need) * np.array([least, np.sqrt(least * most)]))
         among = np.linspace(float(ends.min()), float(ends.max()), 101)
         ph = float(among[np.argmax(curve.buffer(among))])
         aims.append(ph)
         left = abs(float(curve.base_at(window.aim) - curve.base_at(ph)))
-        comes = left + error * (comes - left)
+        off = error * (comes - left)
+        comes = left + off
     return (*aims, window.aim)
 
 
@@ -285,9 +305,9 @@ def choose_stages(curve: DemandCurve, window: Window, *, error: float, turndown:
     elif counted > 1:
         tanks, why = counted, f"curve and feed error need {counted}; {told[1].words}"
     elif error * abs(need) <= spare.high * tolerance:
-        tanks, why = 1, (f"one is enough: the feed error takes {shown(100 * error * abs(need) / tolerance)} % of the "
-                         f"tolerance, at most {100 * spare.high:g} % ({spare.source}), though a manual asks for "
-                         f"{int(two.low)} ({two.told_by})")
+        took = shown(100.0 * error * abs(need) / tolerance)
+        tanks, why = 1, (f"the feed error takes {took} % of the tolerance, and one may do up to {100 * spare.high:g} % "
+                         f"({spare.source}), though a manual asks for {int(two.low)} ({two.told_by})")
     else:
         tanks, why = int(two.low), f"one would just do, and {two.words} ({two.told_by})"
     points = set_points(curve, window, tanks, error, turndown) if not aims else _own(aims, tanks)

@@ -104,7 +104,7 @@ class _One:
         u = np.zeros(self._waiting.shape)
         for p, pool in enumerate(self._pools):
             supply = self._waiting[p] + (fed[pool.side] if pool.stage == self._stage else 0.0)
-            k = pool.per_h * np.maximum(pool.share(self._ph), 0.0)
+            k = pool.rate_at(self._ph)
             u[p] = supply / (some + k * self._volume)
             self._add(rate, pool.sign, pool.feeder.carbon_mol_eq, k * self._volume * u[p])
         return rate / some, u, through

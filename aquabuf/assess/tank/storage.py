@@ -130,7 +130,7 @@ def containment(name: str, volumes_m3: Sequence[float], *, rain_m: float | None 
     if not volumes_m3:
         raise InputError("containment needs the volume of at least one tank; found none. Give what each holds.")
     all_m3 = [positive(v, "volume of a stored tank [m3]", "Give what it holds when full.") for v in volumes_m3]
-    share, largest = rule(name).high, max(all_m3)
+    share, largest = rule(name).value, max(all_m3)
     if name == GREATER:
         return max(share * sum(all_m3), largest)
     if name == LARGEST:
@@ -181,9 +181,9 @@ def lime_words(reagent: Reagent, peak_kg_h: float, slurry_m3_h: float) -> Mappin
     if reagent.stock.product.formula not in LIME_FORMULAS:
         return MappingProxyType({})
     slaker, tank, standby = rule("slaker"), rule("slurry tank"), rule("standby caustic")
-    figures = ((slaker, slaker.high * positive(peak_kg_h, "lime at the peak [kg/h]", "Give the largest need.")),
-               (tank, tank.high / 60.0 * positive(slurry_m3_h, "slurry [m3/h]", "Give the largest need.")),
-               (standby, standby.high))
+    figures = ((slaker, slaker.value * positive(peak_kg_h, "lime at the peak [kg/h]", "Give the largest need.")),
+               (tank, tank.value / 60.0 * positive(slurry_m3_h, "slurry [m3/h]", "Give the largest need.")),
+               (standby, standby.value))
     return MappingProxyType({r.key: (value, f"{r.words} ({r.told_by})") for r, value in figures})
 
 
@@ -195,8 +195,9 @@ def freezing_words(reagent: Reagent, coldest_c: float) -> str:
     begin = f"{reagent.name} begins to freeze or to form crystals at {freezes:g} °C"
     if coldest_c >= freezes + FREEZING_MARGIN_K - EDGE:
         return f"{begin}, {coldest_c:g} °C at the coldest: no heating"
-    return (f"{begin}, {coldest_c:g} °C at the coldest is within {FREEZING_MARGIN_K:g} K of it or below: keep it "
-            "indoors, heat tank and lines, or buy it weaker")
+    near = "below that" if coldest_c < freezes else f"within {FREEZING_MARGIN_K:g} K of that"
+    return (f"{begin}, {coldest_c:g} °C at the coldest is {near}: keep it indoors, heat tank and lines, or buy it in a "
+            "strength that freezes later")
 
 
 def cautions(reagents: Iterable[Reagent]) -> tuple[str, ...]:

@@ -150,8 +150,8 @@ def test_masses_and_words():
     acid, base = 119.976e3 * found.acid_mol_l, 141.957e3 * found.base_mol_l  # NaH2PO4, Na2HPO4 from IUPAC masses
     assert_allclose([found.acid_mg_l, found.base_mg_l], [acid, base], rtol=1e-4)
     said = buffer_words(found)
-    assert f"takes {acid:.3g} mg/L of monosodium phosphate (NaH2PO4) and {base:.3g} mg/L of disodium phosphate" in said
-    assert f"pH 7.00 with 20 meq/L per pH takes {acid:.3g}" in said
+    assert f"takes {acid:,.0f} mg/L of monosodium phosphate (NaH2PO4) and {base:,.0f} mg/L of disodium phosphate" in said
+    assert f"pH 7.00 with 20 meq/L per pH takes {acid:,.0f}" in said
     assert "against it: phosphorus feeds algae" in said
     assert "not usable" not in said
 

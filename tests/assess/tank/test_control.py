@@ -62,10 +62,12 @@ def test_a_loop_cycles_at_its_ultimate_gain(share, grows):
 
 
 def loops_of(controller, interval_s=1.0, low=-1e9, high=1e9):
+    """One controller on one case."""
     return Loops([controller], np.zeros((1, 1)), np.full((1, 1), low), np.full((1, 1), high), interval_s)
 
 
 def act(loops, ph, flow=1.0):
+    """Output at a pH and a flow."""
     return float(loops.act(np.array([[ph]]), np.array([[flow]]))[0, 0])
 
 

@@ -155,6 +155,10 @@ def test_flatter_than_water_is_floored_and_told():
     assert "check the electrode" in words
     assert_allclose(told.base_at(told.ph_at(0.0)), 0.0, atol=1e-12)
     assert acetic().with_water(1.0, KW).notes == ()
+    both = MeasuredCurve("HCl", 0.01 + water(ph), read - np.where(ph < 2.5, 0.2, 0.0)).with_water(1.0, KW)
+    assert "from pH 1.80 to 1.80 and from pH 11.65 to 12.15 the curve" in both.notes[0]
+    scatter = ph + 0.01 * np.where(np.arange(ph.size) % 2, 1.0, -1.0)  # within reading errors: evened out without words
+    assert MeasuredCurve("HCl", 0.01 + water(ph), scatter).with_water(1.0, KW).notes == ()
 
 
 def test_flooring_does_not_move_the_raw_waste():

@@ -1,0 +1,222 @@
+"""The design put to the test: tanks, feeders, probes and controllers from the layout, run under its own disturbances.
+
+The design is accepted by this and not by a rule of thumb: by the share of simulated cases that keep the time rule.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from aquabuf.assess.tank.arrivals import courses
+from aquabuf.assess.tank.basis import L_PER_M3, Basis, amounts_of
+from aquabuf.assess.tank.control import Controller, Tuning, simc, steepest_slope, tank_loop
+from aquabuf.assess.tank.curve import strength_of
+from aquabuf.assess.tank.equalize_volume import run_tank
+from aquabuf.assess.tank.equipment import Feeder, Inflow, Probe, Tank, step_for
+from aquabuf.assess.tank.faults import FAULTS, Fault
+from aquabuf.assess.tank.layout import Layout, Stage, StageFeed
+from aquabuf.assess.tank.mixing import mixer
+from aquabuf.assess.tank.monte import Bands, MonteCarlo, TimeRule, monte_carlo
+from aquabuf.assess.tank.reagents import ACID, BASE
+from aquabuf.assess.tank.simulate import Simulated, simulate
+from aquabuf.engine.readout import GRID_PH
+
+__all__ = ["FaultRun", "Trial", "inflow_of", "tanks_of", "tunings_of", "trial_of"]
+
+Array = NDArray[np.float64]
+
+DAY_S, MIN_S = 86400.0, 60.0
+LONGEST_STEP_S = 10.0     # of a simulation whose step nobody set
+RECORDS = 1440            # of a simulated course, at most
+FAULT_S = 3600.0          # how long a fault lasts: an hour until somebody comes (practice)
+BEFORE_S, AFTER_S = 1800.0, 7200.0  # of a fault run, ahead of the fault and behind it
+CHANGE = 1.3              # of the strength while a probe is stuck: practice
+ENOUGH = 0.95             # share of the cases that must keep the time rule: practice, no source
+CURVE_STEP = 5            # every so many points of the grid in the curve of a controller
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class FaultRun:
+    """One failure of one tank, at the mean of the stream. minutes_to_leave : from its start, nan where it never leaves."""
+
+    tank: str
+    kind: str
+    words: str
+    minutes_to_leave: float
+    minutes_outside: float
+    lowest_ph: float
+    highest_ph: float
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class Trial:
+    """What the simulation says. monte : None where no cases were asked for. accepted : None then too."""
+
+    tanks: tuple[Tank, ...]
+    tunings: tuple[Tuning, ...]
+    course: Simulated
+    inflow: Inflow
+    rule: TimeRule
+    monte: MonteCarlo | None
+    faults: tuple[FaultRun, ...]
+    step_s: float
+
+    @property
+    def kept(self) -> bool:
+        """Whether the one course that is shown keeps the time rule."""
+        allowed = self.rule.allowed_min(self.course.simulated_min)
+        return bool(self.course.outside_min[0] <= allowed and self.course.longest_min[0] <= self.rule.each_min)
+
+    @property
+    def accepted(self) -> bool:
+        """Whether enough cases keep it; the one course counts where there are no cases."""
+        return self.kept if self.monte is None else self.monte.probability >= ENOUGH
+
+
+# ---------------------------------------------------------------- the plant
+
+
+def _feeder(feed: StageFeed, basis: Basis) -> Feeder:
+    r, site = feed.reagent, basis.job.site
+    fine = feed.split if feed.split is not None and feed.split.works else None
+    slow = r.dissolution_per_min
+    return Feeder(
+        largest_eq_h=feed.need.size_eq_h, normality_eq_l=r.reacting_eq_l, carbon_mol_eq=r.carbon_per_eq,
+        base_eq_eq=abs(r.base_per_eq), resolution=site.resolution * (1.0 if fine is None else fine.fine_share),
+        repeatability=site.feed_error, turndown=site.turndown if fine is None else fine.turndown,
+        line_dead_s=feed.line_s, dissolution_per_min=slow, ceiling_ph=None if slow is None else r.ceiling_ph)
+
+
+def _probe(stage: Stage, basis: Basis, flow_m3_h: float) -> Probe:
+    site = basis.job.site
+    return Probe(lag_s=site.probe_lag_s, noise_ph=site.probe_noise_ph, dead_s=_mixing_dead_s(stage, flow_m3_h))
+
+
+def _mixing_dead_s(stage: Stage, flow_m3_h: float) -> float:
+    return mixer(stage.volume_m3, flow_m3_h, pumping_m3_h=stage.mixer.pumping_m3_h).dead_s
+
+
+def tunings_of(basis: Basis, layout: Layout) -> tuple[Tuning, ...]:
+    """PI settings of each tank at the mean flow, on the axis that the file wants."""
+    out = []
+    for stage in layout.stages:
+        main = next(f for f in stage.feeds.values() if not f.trim)
+        loop = tank_loop(stage.volume_m3, layout.mean_m3_h, mixing_dead_s=_mixing_dead_s(stage, layout.mean_m3_h),
+                         line_dead_s=main.line_s, probe_lag_s=basis.job.site.probe_lag_s,
+                         dissolution_per_min=main.reagent.dissolution_per_min)
+        gain = 1.0 / (L_PER_M3 * layout.mean_m3_h)
+        if basis.job.wishes.axis == "ph":
+            gain *= steepest_slope(GRID_PH, layout.curve.base, layout.window.low, layout.window.high)
+        out.append(simc(loop, gain))
+    return tuple(out)
+
+
+def tanks_of(basis: Basis, layout: Layout, tunings: Sequence[Tuning], faults: Sequence[tuple[Fault, ...]] = (),
+             ) -> tuple[Tank, ...]:
+    """The stages with feeders, probes and controllers; the equalization tank is in the inflow."""
+    wishes, readout = basis.job.wishes, basis.chem.readout
+    amounts = basis.mean.amounts
+    curve_ph = GRID_PH[::CURVE_STEP]
+    curve_base = readout.base_at(curve_ph, amounts[:, None])
+    tanks = []
+    for k, (stage, tuning) in enumerate(zip(layout.stages, tunings, strict=True)):
+        feeders = {kind: _feeder(f, basis) for kind, f in stage.feeds.items()}
+        controller = Controller(
+            setpoint_ph=stage.setpoint_ph, gain=tuning.gain, reset_s=tuning.reset_s, axis=wishes.axis, curve_ph=curve_ph,
+            curve_base_eq_l=curve_base, flow_ref_m3_h=layout.mean_m3_h if wishes.feedforward else None)
+        tanks.append(Tank(name=stage.name, volume_m3=stage.volume_m3, base=feeders.get(BASE), acid=feeders.get(ACID),
+                          probe=_probe(stage, basis, layout.mean_m3_h), controller=controller,
+                          faults=faults[k] if faults else ()))
+    return tuple(tanks)
+
+
+def inflow_of(basis: Basis, layout: Layout, cases: int) -> Inflow:
+    """What reaches the first tank in each case: drawn courses behind the equalization tank."""
+    drawn = courses(basis.job, basis.chem, cases)
+    base = drawn.base(basis.chem.base_eq_l)
+    eq = layout.equalization
+    if eq.volume_m3 == 0.0:
+        return Inflow(drawn.time_s, drawn.flow_m3_h, base, amounts_of(drawn.strength))
+    tank = run_tank(drawn, base, np.array([eq.content_m3]), flow_volume_m3=eq.flow_m3, draw_m3_h=eq.draw_m3_h)
+    return Inflow(drawn.time_s, tank.out_m3_h[:, 0], tank.out_base_eq_l[:, 0], amounts_of(tank.out_amounts[:, :, 0]))
+
+
+def _of_case(inflow: Inflow, case: int) -> Inflow:
+    return Inflow(inflow.time_s, inflow.flow_m3_h[:, [case]], inflow.base_eq_l[:, [case]], inflow.amounts[:, :, [case]])
+
+
+# ---------------------------------------------------------------- the runs
+
+
+def trial_of(basis: Basis, layout: Layout, *, cases: int, processes: int = 2) -> Trial:
+    """One course as shown, failures one by one, and the cases that the probability is counted over."""
+    job, chem = basis.job, basis.chem
+    tunings = tunings_of(basis, layout)
+    tanks = tanks_of(basis, layout, tunings)
+    inflow = inflow_of(basis, layout, max(cases, 1))
+    until = job.trial.days * DAY_S
+    step = job.trial.step_s or min(LONGEST_STEP_S, step_for(tanks, layout.peak_m3_h))
+    window = (job.window.low, job.window.high)
+    rule = TimeRule(job.window.total_min, job.window.each_min, job.window.source)
+    common = {"window": window, "dt_s": step, "seed": job.trial.seed, "carbon_carrier": chem.carbon_carrier}
+    every = step * max(1.0, np.ceil(until / RECORDS / step))
+    course = simulate(chem.readout, tanks, _of_case(inflow, 0), until_s=until, record_every_s=every, **common)
+    monte = None
+    if cases > 0:
+        monte = monte_carlo(chem.readout, tanks, inflow, cases=cases, until_s=until, rule=rule, bands=bands_of(basis),
+                            processes=processes, **common)
+    return Trial(tanks=tanks, tunings=tunings, course=course, inflow=_of_case(inflow, 0), rule=rule, monte=monte,
+                 faults=_fault_runs(basis, layout, tunings, step), step_s=step)
+
+
+def bands_of(basis: Basis) -> Bands:
+    """What is not known of the plant: buffers by the spread of the samples where there are several, probe offset."""
+    spread = basis.job.trial.buffer_sd
+    for a in basis.job.arrivals:
+        if len(a.samples) > 2:
+            low, high = max(c.ph[0] for c in a.samples), min(c.ph[-1] for c in a.samples)
+            strength, _ = strength_of(a.samples, np.linspace(low, high, 81))
+            spread = float(np.std(strength, ddof=1) / np.mean(strength))
+    return Bands(buffer_share=spread, offset_ph=basis.job.trial.probe_offset_sd)
+
+
+def _faults_for(layout: Layout) -> list[tuple[int, str]]:
+    """Failures worth a look: the last probe stuck, each main feed full on or out at its tank, buffers lost."""
+    last = len(layout.stages) - 1
+    found = [(last, "probe stuck")]
+    for k in sorted({0, last}):
+        for kind, feed in layout.stages[k].feeds.items():
+            if not feed.trim:
+                found += [(k, f"{kind} pump full on"), (k, f"{kind} out")]
+    return [*found, (0, "buffer lost")]
+
+
+def _fault_runs(basis: Basis, layout: Layout, tunings: Sequence[Tuning], step_s: float) -> tuple[FaultRun, ...]:
+    job, chem = basis.job, basis.chem
+    mean = layout.needs[max(layout.needs, key=lambda kind: layout.needs[kind].mean_eq_h)].loads[1]
+    inflow = Inflow([0.0], [layout.mean_m3_h], [mean.base_eq_l], mean.amounts[:, None])
+    until = BEFORE_S + FAULT_S + AFTER_S
+    runs = []
+    for k, kind in _faults_for(layout):
+        faults = [(Fault(kind, BEFORE_S, FAULT_S),) if i == k else () for i in range(len(layout.stages))]
+        tanks = tanks_of(basis, layout, tunings, faults)
+        if kind == "probe stuck":  # a probe that stays where it is does harm only once the stream changes
+            at = BEFORE_S + 0.25 * FAULT_S
+            inflow_k = Inflow([0.0, at], np.full(2, layout.mean_m3_h), np.array([1.0, CHANGE]) * mean.base_eq_l,
+                              np.outer(mean.amounts, [1.0, CHANGE]).reshape(-1, 2))
+        else:
+            inflow_k = inflow
+        done = simulate(chem.readout, tanks, inflow_k, until_s=until, window=(job.window.low, job.window.high),
+                        dt_s=step_s, seed=job.trial.seed, carbon_carrier=chem.carbon_carrier, record_every_s=MIN_S)
+        ph = done.ph[-1, :, 0]
+        out = (ph < job.window.low) | (ph > job.window.high)
+        left = done.time_s[out & (done.time_s >= BEFORE_S)]
+        runs.append(FaultRun(
+            tank=layout.stages[k].name, kind=kind, words=FAULTS[kind], lowest_ph=float(done.lowest_ph[0]),
+            minutes_to_leave=float((left[0] - BEFORE_S) / MIN_S) if left.size else np.nan,
+            minutes_outside=float(done.outside_min[0]), highest_ph=float(done.highest_ph[0])))
+    return tuple(runs)
