@@ -20,6 +20,10 @@ SAMPLES = {
     "schmidt": (1400.0, 800.0, 470.0), "sg": (1.1, 1.25, 1.335),
     "ionization_kj_mol": (-22.4, 0.0, 51.95), "heat_kj_l": (1.0, 20.0, 55.8), "capacity_kj_l_k": (4.0, 4.1, 4.18),
     "water_per_acid": (0.0, 1.0, 10.0),
+    **{f"{metal}_mg_l": (0.0, 12.0, 55.0) for metal in ("iron_ii", "iron_iii", "aluminum", "manganese")},
+    **{f"{metal}_mol_l": (0.0, 2e-4, 1e-3) for metal in ("iron_ii", "iron_iii", "aluminum", "manganese")},
+    "acidity": (1e-3, 5e-3, 2e-2), "alkalinity_eq_l": (0.0, 1e-3, 2e-3), "eq_l": (-1e-3, 2e-3, 6e-3),
+    "flow_m3_h": (1.0, 22.7, 400.0), "mg_l": (-20.0, 313.0, 1344.0),
 }
 FIXED = {"pk": 4.756, "enthalpy_j_mol": -410.0, "heat_capacity_j_mol_k": -142.0,  # one acid at a time
          "pk1": 3.04, "pk2": 4.51, "pk3": 6.46}
@@ -28,7 +32,8 @@ OTHERS = {"acid_named", "acid_table", "organic_models", "charge_and_slope",  # l
           "atoms", "find_product", "molar_mass", "own_product", "products", "strength_of", "with_basicity",  # one product
           "zero_level_charge", "check_certificate", "density_from_strength", "freezes_at_c", "strength_from_density",
           "complex_at", "conflict", "dissolved_at", "free_at", "least_ph", "metal_named", "metals",  # one metal at a time
-          "precipitation_window", "soluble_window", "window_disagreement", "dilution_heat_kj_mol", "carbonic_enthalpies_kj_mol"}
+          "precipitation_window", "soluble_window", "window_disagreement", "dilution_heat_kj_mol",
+          "carbonic_enthalpies_kj_mol"}
 
 
 def _functions():

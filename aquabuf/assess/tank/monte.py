@@ -137,12 +137,15 @@ def monte_carlo(readout: Readout, tanks: Sequence[Tank], inflow: Inflow | Draw, 
                 processes: int = 2) -> MonteCarlo:
     """Simulate `cases` drawn plants and count how many meet the rule.
 
-    inflow : one for all (a single case), or a function of a random generator that draws one; all with the same times.
-    A function must be one that can be pickled to run in several processes; else, or where processes cannot be started,
-    all cases run in this one.
+    inflow : of one case, for all; of `cases` cases, one for each; or a function of a random generator that draws one,
+    all with the same times. A function must be one that can be pickled to run in several processes; else, or where
+    processes cannot be started, all cases run in this one.
     """
     if cases < 1:
         raise InputError(f"a Monte Carlo run needs at least 1 case; found {cases}. Ask for some hundreds.")
+    if isinstance(inflow, Inflow) and inflow.cases not in (1, cases):
+        raise InputError(f"an inflow of a Monte Carlo run has one case or as many as the run ({cases}); found "
+                         f"{inflow.cases}. Draw one for each case.")
     dt_s = step_for(tanks) if dt_s is None else dt_s
     job = _Job(readout, tuple(tanks), inflow, bands or Bands(), seed, until_s, window, dt_s, sample_s, carbon_carrier)
     parts = max(processes, math.ceil(cases / TOGETHER))
@@ -182,7 +185,7 @@ def _in_processes(job: _Job, blocks: list[list[int]], processes: int) -> list[_D
 def _run_block(job: _Job, cases: list[int]) -> _Done:
     """Some neighboring cases in one array."""
     generators = [np.random.default_rng(np.random.SeedSequence([job.seed, c]).spawn(DRAWN + 1)[DRAWN]) for c in cases]
-    drawn = [_draw_one(job, g) for g in generators]
+    drawn = [_draw_one(job, c, g) for c, g in zip(cases, generators, strict=True)]
     strength, buffer = np.array([d[1] for d in drawn]), np.array([d[2] for d in drawn])
     offsets = np.array([d[3] for d in drawn])
     tanks = [replace(t, probe=replace(t.probe, offset_ph=t.probe.offset_ph + offsets[:, s]))
@@ -194,13 +197,19 @@ def _run_block(job: _Job, cases: list[int]) -> _Done:
             result.simulated_min)
 
 
-def _draw_one(job: _Job, generator: np.random.Generator) -> tuple[Inflow, float, float, Array]:
+def _draw_one(job: _Job, case: int, generator: np.random.Generator) -> tuple[Inflow, float, float, Array]:
     """Inflow, strength, buffer and probe offsets of one case."""
     normal = generator.standard_normal(2 + len(job.tanks))
     strength, buffer = (_log_normal(z, share)
                         for z, share in zip(normal, (job.bands.strength_share, job.bands.buffer_share), strict=False))
-    inflow = job.inflow if isinstance(job.inflow, Inflow) else job.inflow(generator)
+    inflow = _of_case(job.inflow, case) if isinstance(job.inflow, Inflow) else job.inflow(generator)
     return inflow, strength, buffer, job.bands.offset_ph * normal[2:]
+
+
+def _of_case(inflow: Inflow, case: int) -> Inflow:
+    if inflow.cases == 1:
+        return inflow
+    return Inflow(inflow.time_s, inflow.flow_m3_h[:, [case]], inflow.base_eq_l[:, [case]], inflow.amounts[:, :, [case]])
 
 
 def _log_normal(normal: float, share: float) -> float:

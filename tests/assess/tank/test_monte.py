@@ -61,6 +61,18 @@ def test_first_cases_are_the_same_in_a_longer_run():
     assert not np.isin(other.lowest_ph, seven.lowest_ph).any()
 
 
+def test_each_case_has_its_own_inflow():
+    """Strong acid of 1e-3, 1e-4 ... eq/L in four cases, no feed: lowest pH 3, 4, 5, 6; across two processes too."""
+    base = -(10.0 ** np.array([[-3.0, -4.0, -5.0, -6.0]]))
+    inflow = Inflow([0.0], np.full((1, 4), 10.0), base, np.zeros((0, 1)))
+    for processes in (1, 2):
+        found = monte_carlo(BARE, [Tank("one", 1.0)], inflow, cases=4, seed=0, until_s=HOUR, window=(6.0, 9.0), rule=RULE,
+                            dt_s=60.0, processes=processes)
+        assert_allclose(found.lowest_ph, [3.0, 4.0, 5.0, 6.0], rtol=0, atol=0.01)
+    with pytest.raises(InputError, match=r"one case or as many as the run \(3\); found 4. Draw one for each case"):
+        monte_carlo(BARE, [Tank("one", 1.0)], inflow, cases=3, seed=0, until_s=HOUR, window=(6.0, 9.0), rule=RULE)
+
+
 def test_what_cannot_be_sent_runs_in_one_process():
     """A function made on the spot cannot be pickled, and the answer is the same."""
     waste = Waste()

@@ -245,7 +245,7 @@ def test_efficiency_is_a_share(efficiency):
 
 def test_a_liquid_without_density():
     """Nitric acid of 60 %, which no table has."""
-    with pytest.raises(InputError, match=r"liquid reagent needs its density .* 'nitric acid' at 60 %\. Take density_kg_l"):
+    with pytest.raises(InputError, match=r"liquid reagent needs its density .* 'nitric acid' at 60 %\. Take its density"):
         reagent("nitric acid", 0.6)
 
 

@@ -144,9 +144,9 @@ def test_set_points_keep_turndown_and_sign(ph):
 
 
 def test_tanks_to_spare_keep_every_feeder_busy():
-    """Aim at the pK of carbonate: the first tank goes as near as it may, and the second must not be starved by that."""
-    curve, error, turndown = carbonated(1.5, 0.02), 0.1, 5.0
-    points = set_points(curve, Window(low=5.5, high=7.5, aim=PK_CARBONIC[0]), 3, error, turndown)
+    """pK of carbonate just inside the aim: the first tank goes as near as it may, and must not starve the second."""
+    curve, error, turndown = carbonated(2.0, 0.02), 0.02, 2.0
+    points = set_points(curve, Window(low=5.0, high=9.0, aim=6.45), 3, error, turndown)
     comes = np.array([curve.base_eq_l, curve.base_eq_l])
     for i, at in enumerate(curve.base_at(points)):
         dose = at - comes
