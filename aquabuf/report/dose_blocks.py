@@ -13,7 +13,7 @@ from aquabuf.assess.plant.answer import Answer
 from aquabuf.assess.plant.curve import PH_STEP, DoseCurve
 from aquabuf.assess.plant.drift import UnderError, UnderFeedError, worst_of
 from aquabuf.assess.plant.faults import FULL, Fault
-from aquabuf.assess.plant.feed import both_units, brief, shown
+from aquabuf.assess.plant.feed import both_units, shown
 from aquabuf.assess.plant.feed_lines import FeedLine
 from aquabuf.assess.plant.held import held_words
 from aquabuf.assess.plant.hold import buffer_words
@@ -25,6 +25,7 @@ from aquabuf.assess.plant.indices import (
     potential_words,
 )
 from aquabuf.assess.plant.quantities import find_quantity, measured
+from aquabuf.assess.plant.steps.words import brief
 from aquabuf.assess.plant.storage import column_seconds, feed_rules
 from aquabuf.assess.plant.stream import TOTALS
 from aquabuf.assess.uncertainty import COVERAGE

@@ -68,8 +68,9 @@ def smooth_response(answer: Answer, curve: DoseCurve) -> tuple[Array, Array, Arr
     passed = next(p for p in answer.train.passed if p.step.name == curve.step)
     table = curve.table["dose_mg_l_product"].to_numpy(dtype=float)
     dose = np.unique(np.concatenate([table, np.linspace(0.0, table[-1], FINE)]))
-    held = tuple(Dosed(d.product, d.product.mol_l(dose) if d.product.name == curve.product
-                       else np.repeat(d.mol_l, dose.size)) for d in passed.outcome.doses)
+    which = [d.product.name for d in passed.outcome.doses].index(curve.product)  # the first, as in the curve itself
+    held = tuple(Dosed(d.product, d.product.mol_l(dose) if k == which else np.repeat(d.mol_l, dose.size))
+                 for k, d in enumerate(passed.outcome.doses))
     assert isinstance(passed.step, Held)
     found = measured(passed.step.held(held).run(passed.before.repeated(dose.size)).stream, ("ph", "buffer_intensity"))
     return dose, found["ph"], in_unit(find_quantity("buffer_intensity"), found["buffer_intensity"])

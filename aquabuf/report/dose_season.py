@@ -8,10 +8,10 @@ from matplotlib.ticker import MaxNLocator
 from numpy.typing import NDArray
 
 from aquabuf.assess.plant.answer import Answer
-from aquabuf.assess.plant.feed import brief
 from aquabuf.assess.plant.quantities import find_quantity, in_unit
 from aquabuf.assess.plant.season import MISSED, UNREAD, Season
 from aquabuf.assess.plant.steps.blend import Blend, Sweep
+from aquabuf.assess.plant.steps.words import brief
 from aquabuf.assess.plant.train import Passed
 from aquabuf.report.dose_page import wrapped
 from aquabuf.report.dose_panels import SMALL, ax_width, ph_axis, ph_window, window_band

@@ -5,17 +5,20 @@ import sys
 from dataclasses import replace
 from pathlib import Path
 
+import numpy as np
 import pytest
+from numpy.testing import assert_allclose
 
 sys.path.insert(0, str(Path(__file__).parents[1]))
 
-from invented_plans import PLANS, RIVER, UPLAND, answered, write_plan
+from invented_plans import PLANS, RIVER, TWO_STAGES, UPLAND, answered, write_plan
 
 from aquabuf.assess.plant.answer import solve_plan
 from aquabuf.assess.plant.feed import shown
 from aquabuf.assess.plant.plan_file import read_plan
 from aquabuf.report.dose_blocks import _spreads, upset
 from aquabuf.report.dose_lines import aligned, bullet, figure, sentence
+from aquabuf.report.dose_panels import smooth_response
 from aquabuf.report.dose_sheet import dose_sheet
 from aquabuf.report.dose_sheet_words import _control, setting_words
 
@@ -306,7 +309,7 @@ def test_a_bed_has_nothing_to_set(tmp_path):
 def test_a_low_end_of_nothing_is_no_leave_to_stop(tmp_path):
     """Bleach whose windows hold without it may be "at most" so much, not "0 to" so much."""
     bleach = ('[products.bleach]\nis = "sodium hypochlorite"\nstrength = "12 %"\ndensity = "1.2 kg/L"\n[[steps]]\ndo = "chlorinate"\n'
-              'name = "chlorine"\nproduct = "bleach"\ndose = "1 mg/L as Cl2"\n')
+              'name = "chlorine"\nproduct = "bleach"\ndose = "2 mg/L as Cl2"\n')
     text = RIVER.replace("[[steps]]", bleach + "[[steps]]", 1).replace("[products.bleach]", "\n[products.bleach]")
     answer = solve_plan(read_plan(write_plan(tmp_path, text=text.replace("ph = 8.2 }", "ph = [7.9, 8.3] }"))), draws=0)
     line = next(x for x in answer.feeds if x.product.name == "bleach")
@@ -314,3 +317,13 @@ def test_a_low_end_of_nothing_is_no_leave_to_stop(tmp_path):
     assert found.least[0] == 0.0
     assert _control(answer, line).startswith("at most ")
     assert found.words().endswith("disinfection is no window here and sets its least dose")
+
+
+def test_the_drawn_response_of_two_stages_is_that_of_the_table(tmp_path):
+    """Gas that goes in twice in a step: the line moves the first feed alone, as the table does, and passes the dose."""
+    answer = solve_plan(read_plan(write_plan(tmp_path, text=TWO_STAGES)), draws=0)
+    curve = answer.curves[0]
+    dose, ph, _ = smooth_response(answer, curve)
+    at = np.searchsorted(dose, curve.table["dose_mg_l_product"])
+    assert_allclose(ph[at], curve.table["ph"], atol=1e-9)
+    assert_allclose(np.interp(curve.wanted_mg_l, dose, ph), curve.wanted_ph, atol=1e-6)

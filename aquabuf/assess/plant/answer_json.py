@@ -33,6 +33,7 @@ __all__ = ["RAW_WATER", "answer_record", "buffer_rows", "found_of", "limit_rows"
 
 RAW_WATER = "raw water"
 FIGURES = 12  # significant; more would be rounding
+ROUNDING = 1e-10  # below every figure of a water, a dose or a cost
 
 
 def answer_record(answer: Answer) -> dict[str, Any]:
@@ -79,7 +80,9 @@ def _plain(value: Any) -> Any:
     if isinstance(value, np.bool_ | np.integer):
         return value.item()
     number = float(value)
-    return float(f"{number:.{FIGURES}g}") + 0.0 if math.isfinite(number) else None
+    if not math.isfinite(number):
+        return None
+    return float(f"{number:.{FIGURES}g}") if abs(number) >= ROUNDING else 0.0
 
 
 def _rows(table: pd.DataFrame | None) -> list[dict[str, Any]]:

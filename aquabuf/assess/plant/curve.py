@@ -12,9 +12,9 @@ from scipy.optimize import brentq
 
 from aquabuf.assess.frames import frame_of
 from aquabuf.assess.plant.aims import PERCENT, column_of
-from aquabuf.assess.plant.feed import brief
 from aquabuf.assess.plant.quantities import find_quantity, in_unit, measured
 from aquabuf.assess.plant.steps.base import Dosed, Held
+from aquabuf.assess.plant.steps.words import brief
 from aquabuf.assess.plant.store import Stocked
 from aquabuf.assess.plant.stream import Stream
 from aquabuf.assess.plant.train import Passed
@@ -28,6 +28,7 @@ CURVE_QUANTITIES = ("ph", "alkalinity", "si_calcite", "ccpp", "buffer_intensity"
 PH_STEP = 0.1        # the shift of pH whose price in dose is told
 INTERVALS = 10       # between round doses
 ROUND = (1.0, 1.2, 1.5, 2.0, 2.5, 3.0, 4.0, 5.0, 6.0, 8.0, 10.0)  # times a power of ten
+ROUNDING = 1e-10    # of a figure of the table, which is none
 SAME = 1e-9          # two doses that differ by less, in parts of the largest, are one
 SLOPE_PART = 1e-5    # step of the slope in parts of the largest dose
 FINE = 401           # doses along which the weakest buffering is looked for
@@ -189,7 +190,8 @@ def _table(stocked: Stocked, mg_l: Array, mol_l: Array, after: Callable[[Array],
     columns: dict[str, NDArray] = {"dose_mg_l_product": mg_l, "dose_mg_l_pure": stocked.mg_l_pure(mol_l)}
     for name, house in values.items():
         quantity = find_quantity(name)
-        columns[column_of(quantity)] = in_unit(quantity, house)
+        value = np.asarray(in_unit(quantity, house))
+        columns[column_of(quantity)] = np.where(np.abs(value) < ROUNDING, 0.0, value)
     return frame_of(columns | {"slope_ph_per_mg_l": slopes, "is_wanted": mol_l == wanted})
 
 

@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from aquabuf.assess.plant.choose import MOST_PRODUCTS, cheapest
 from aquabuf.assess.plant.dose import NEGATIVE, NO_EFFECT, NOTHING, REACHED, Point, Solved, solve_doses
-from aquabuf.assess.plant.feed import brief
+from aquabuf.assess.plant.steps.words import brief
 from aquabuf.assess.plant.store import Stocked
 from aquabuf.assess.plant.stream import ALKALINITY, CARBON, Stream
 from aquabuf.assess.plant.targets import Target, reached

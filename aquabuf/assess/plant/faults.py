@@ -10,9 +10,8 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from aquabuf.assess.plant.aims import dosed_of
-from aquabuf.assess.plant.feed import brief
 from aquabuf.assess.plant.steps.base import Dosed, Finding, Held, Step
-from aquabuf.assess.plant.steps.words import as_rows_of, holding, span
+from aquabuf.assess.plant.steps.words import as_rows_of, brief, holding, span
 from aquabuf.assess.plant.storage import lime_solubility_g_l
 from aquabuf.assess.plant.store import Stocked
 from aquabuf.assess.plant.train import Passed, Train, held_steps, run_train

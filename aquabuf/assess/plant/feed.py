@@ -21,8 +21,8 @@ from aquabuf.units import convert, parse_unit
 
 __all__ = [
     "FORMS", "HOURS_PER_DAY", "KNOBS", "Curve", "FeedRate", "Feeder", "MadeUp", "Pump", "Reach", "Setting",
-    "both_units", "brief", "checked", "feed_rate", "in_us", "liquid_l_h", "made_up_l_h", "measured_curve",
-    "metric_and_us", "product_kg_d", "pure_kg_d", "shown",
+    "both_units", "checked", "feed_rate", "in_us", "liquid_l_h", "made_up_l_h", "measured_curve", "metric_and_us",
+    "product_kg_d", "pure_kg_d", "shown",
 ]
 
 Array = NDArray[np.float64]
@@ -58,12 +58,6 @@ def shown(value: float) -> str:
         return "unknown" if np.isnan(value) else "endless"
     places = 2 - int(f"{value:.2e}".partition("e")[2]) if value else 0
     return f"{value:,.{min(max(places, 0), 8)}f}"
-
-
-def brief(value: float, figures: int = 3, sign: str = "") -> str:
-    """A number in a sentence: so many figures, no zeros behind them; all of a whole number with more. `sign` : "+"."""
-    whole = abs(value) >= 10.0**figures - 0.5
-    return f"{value:{sign},.0f}" if whole else f"{value:{sign}.{figures}g}"
 
 
 def metric_and_us(value: float, unit: str) -> tuple[str, str]:

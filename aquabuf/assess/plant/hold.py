@@ -16,7 +16,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from aquabuf.arrays import LN10, as_rows, common_shape
-from aquabuf.assess.plant.feed import brief
+from aquabuf.assess.plant.steps.words import brief
 from aquabuf.chem.acids import acid_named
 from aquabuf.chem.products import molar_mass, zero_level_charge
 from aquabuf.engine.balance import fractions, moments, protons_lost

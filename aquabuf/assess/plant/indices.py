@@ -28,6 +28,7 @@ Array = NDArray[np.float64]
 
 EDGE = 1e-9                 # relative distance within which a value is the limit itself
 TDS_PER_STRENGTH = 1 / 2.5e-5  # mg/L of dissolved solids per mol/L of ionic strength: Langelier 1936
+NOTHING_INDEX = 0.005       # saturation index that is written as 0.00
 NOTHING_MG_L = 0.05         # of calcium carbonate, below which a water is called balanced
 TABLE_CONSTANTS = ("printed table of pHs = pCa + pAlk + C (Davis, Water and Wastewater Engineering, Table 7-5), with "
                    "constants of 1936 to 1941")
@@ -211,7 +212,9 @@ def langelier_words(found: Langelier, row: int = 0) -> str:
 
 def _does(index: float) -> str:
     """What a saturation index says, in a word."""
-    return "deposits" if index > 0.0 else "dissolves" if index < 0.0 else "neither deposits nor dissolves"
+    if abs(index) < NOTHING_INDEX:
+        return "neither deposits nor dissolves"
+    return "deposits" if index > 0.0 else "dissolves"
 
 
 def potential_mg_l(potential_mol_l: ArrayLike) -> Array:

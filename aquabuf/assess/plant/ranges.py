@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 
 from aquabuf.assess.frames import frame_of
 from aquabuf.assess.plant.aims import PERCENT, Aim, aims_of, dosed_of, repeated
-from aquabuf.assess.plant.feed import brief
+from aquabuf.assess.plant.steps.words import brief
 from aquabuf.assess.plant.store import Stocked
 from aquabuf.assess.plant.targets import Target
 from aquabuf.assess.plant.train import Train, held_steps, run_train

@@ -13,9 +13,9 @@ from scipy.stats import rankdata
 from aquabuf.arrays import worded
 from aquabuf.assess.frames import frame_of
 from aquabuf.assess.plant.aims import PERCENT, Aim, aims_of, column_of
-from aquabuf.assess.plant.feed import brief
 from aquabuf.assess.plant.quantities import find_quantity, in_unit, measured, plant_quantities
 from aquabuf.assess.plant.steps.base import Dosed, Step
+from aquabuf.assess.plant.steps.words import brief
 from aquabuf.assess.plant.stream import TOTALS, Stream, stream_of
 from aquabuf.assess.plant.train import Train, run_train
 from aquabuf.assess.sample.inputs import Values

@@ -7,7 +7,7 @@ from collections.abc import Sequence
 import numpy as np
 
 from aquabuf.assess.tank.job import Arrival, Job
-from aquabuf.assess.tank.profile import Cases, Profile, Variation, profile_of_table, shares_of
+from aquabuf.assess.tank.profile import Cases, Profile, Variation, profile_of_table
 from aquabuf.assess.tank.profile_draw import Dump, Statistics, draw, sd_from_most
 from aquabuf.assess.tank.waste import Chemistry
 from aquabuf.errors import InputError
@@ -31,7 +31,8 @@ def mean_shares(arrivals: Sequence[Arrival]) -> np.ndarray:
 def statistics_of(arrivals: Sequence[Arrival], days: float, step_h: float = STEP_H) -> Statistics:
     """What is known of wastes that nobody recorded, as statistics of their common stream.
 
-    Steady flows add up, their daily cycles as vectors; a largest flow is passed for one percent of the time.
+    Steady flows add up, their daily cycles as vectors; a largest flow is passed for one percent of the time. Where some
+    wastes have a largest flow, the others add the top of their daily cycle to it.
 
     Raises InputError where a daily cycle leaves the least and the largest flow.
     """
@@ -45,13 +46,20 @@ def statistics_of(arrivals: Sequence[Arrival], days: float, step_h: float = STEP
     if mean == 0.0:
         mean = HARDLY * sum(a.mean_m3_h or 0.0 for a in arrivals)
     least = sum(a.least_m3_h or 0.0 for a in steady)
-    most = sum(a.most_m3_h or np.inf for a in steady) if steady else np.inf
+    most = sum(_most(a) for a in steady) if any(a.most_m3_h is not None for a in steady) else np.inf
     amplitude, peak = _daily(steady, mean)
     sd = sd_from_most(mean * (1.0 + amplitude), most) if np.isfinite(most) and most > mean * (1.0 + amplitude) else 0.0
     return Statistics(
         mean_m3_h=mean, least_m3_h=least, most_m3_h=most, flow=Variation(sd, FLOW_LASTS_H), daily_amplitude=amplitude,
         daily_peak_h=peak, wastes=len(arrivals), shares=tuple(float(s) for s in shares),
         strength=tuple(_variation(a) for a in arrivals), dumps=dumps, days=days, step_h=min(step_h, days * 24.0))
+
+
+def _most(arrival: Arrival) -> float:
+    """Largest flow of a waste, by its daily cycle where nobody says. [m3/h]"""
+    if arrival.most_m3_h is not None:
+        return arrival.most_m3_h
+    return (arrival.mean_m3_h or 0.0) * (1.0 + (0.0 if arrival.daily is None else arrival.daily.swing))
 
 
 def _daily(steady: Sequence[Arrival], mean: float) -> tuple[float, float]:
@@ -72,8 +80,8 @@ def design_course(job: Job, chem: Chemistry) -> Profile:
         return _measured(job, chem)
     drawn = draw(statistics_of(job.arrivals, DESIGN_DAYS, DESIGN_STEP_H), 1, job.trial.seed)
     return Profile(time_s=drawn.time_s, flow_m3_h=drawn.flow_m3_h[:, 0], strength=drawn.strength[:, :, 0],
-                   step_s=drawn.step_s, source=f"drawn for {DESIGN_DAYS:g} days from the statistics of the wastes, seed "
-                                               f"{job.trial.seed}")
+                   step_s=drawn.step_s, source=f"drawn for {DESIGN_DAYS:g} days from the statistics of the wastes, "
+                                               f"seed {job.trial.seed}")
 
 
 def _measured(job: Job, chem: Chemistry) -> Profile:

@@ -22,8 +22,6 @@ class Spread:
 
     relative_sd: float
     lasting_h: float
-    least: float | None = None
-    most: float | None = None
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

@@ -11,12 +11,14 @@ from pathlib import Path
 from types import MappingProxyType
 from typing import Any
 
+from aquabuf.assess.plant.plan import FeedSpec
 from aquabuf.assess.plant.plan_keys import Checked, check_keys, plan_keys
 from aquabuf.assess.plant.plan_place import Place
 from aquabuf.assess.plant.plan_store import Told, read_product
+from aquabuf.assess.plant.store import Stocked
 from aquabuf.assess.plant.toml_lines import toml_lines
 from aquabuf.assess.tank.job import Job, Site, Trial, Window, Wishes
-from aquabuf.assess.tank.job_wastes import read_wastes
+from aquabuf.assess.tank.job_wastes import beside, not_there, read_wastes
 from aquabuf.assess.tank.reagents import Reagent, reagent_of
 from aquabuf.errors import FileError, InputError
 from aquabuf.readings.profile_file import ProfileTable, read_profile
@@ -24,7 +26,8 @@ from aquabuf.readings.profile_file import ProfileTable, read_profile
 __all__ = ["SECTIONS", "read_stream"]
 
 SECTIONS = ("tank", "acids", "wastes", "profile", "window", "reagents", "use", "site", "layout", "simulate")
-S_PER_H = 3600.0
+S_PER_H, S_PER_D = 3600.0, 86400.0
+MOST_STEPS = 1e7  # of a simulation: a year of steps of 3 s
 
 
 def read_stream(path: str | Path) -> Job:
@@ -49,15 +52,18 @@ def read_stream(path: str | Path) -> Job:
     profile = _profile(top, content, path.parent, told)
     arrivals = read_wastes(top, content, path.parent, told, has_profile=profile is not None)
     window = _window(top, content, told)
+    trial = _trial(top, content, told)
+    if profile is not None:
+        _tell_profile(profile, trial.days, told)
     reagents, residence = _reagents(top, content, told)
     use = _section(top, content, "use", told)
     for kind in ("base", "acid"):
         _check_use(top, use, kind, reagents)
     return Job(
         name=head["name"], date=head.get("date", ""), note=head.get("note", ""), currency=head.get("currency", ""),
-        arrivals=arrivals, window=window, reagents=reagents, residence_min=residence, base=use.get("base"), acid=use.get("acid"),
-        site=_site(top, content, told), wishes=_wishes(top, content, told, window),
-        trial=_trial(top, content, told), profile=profile, assumptions=tuple(told.assumptions),
+        arrivals=arrivals, window=window, reagents=reagents, residence_min=residence, base=use.get("base"),
+        acid=use.get("acid"), site=_site(top, content, told), wishes=_wishes(top, content, told, window),
+        trial=trial, profile=profile, assumptions=tuple(told.assumptions),
         notes=tuple(told.notes), file=path.name)
 
 
@@ -93,7 +99,8 @@ def _window(top: Place, content: Mapping[str, Any], told: Told) -> Window:
     place = top.inner("window", label="[window]")
     low, high = found["ph"]
     if not low < high:
-        raise place.error(f"ph must have a lower limit below its upper one; found [{low:g}, {high:g}]. Give both.", "ph")
+        raise place.error(f"ph must have a lower limit below its upper one; found [{low:g}, {high:g}]. Give both.",
+                          "ph")
     aim = found.get("aim")
     if aim is not None and not low < aim < high:
         raise place.error(f"aim must lie within the window {low:g} to {high:g}; found {aim:g}. Correct one of them.",
@@ -109,19 +116,27 @@ def _reagents(top: Place, content: Mapping[str, Any], told: Told,
         raise InputError(f"{top.file}: a stream file needs one reagent or more in [reagents]; none is there. Add for "
                          "example [reagents.caustic] with is = \"caustic soda\".")
     own = plan_keys("reagents")
+    known = {**plan_keys("products"), **own}
     found, residence = {}, {}
     for name, value in table.items():
         place = top.inner("reagents", name, label=f"[reagents.{name}]")
         keys = place.table(value)
+        for key in keys:
+            if key not in known:
+                raise place.unknown(key, known)
         more = check_keys(place, {k: v for k, v in keys.items() if k in own}, "reagents")
         stocked, feed = read_product(place, name, {k: v for k, v in keys.items() if k not in own}, told)
-        found[name] = place.tried("is", lambda s=stocked, f=feed, m=more: reagent_of(
-            s, efficiency=m.get("efficiency"), made_up=f.made_up, dry=m["dry"],
-            dissolution_per_min=_per_min(m.get("dissolves"))))
+        found[name] = _reagent(place, stocked, feed, more)
         if "residence" in more.values:
             residence[name] = more["residence"]
         _tell(place, found[name], more, feed.made_up is None, told)
     return MappingProxyType(found), MappingProxyType(residence)
+
+
+def _reagent(place: Place, stocked: Stocked, feed: FeedSpec, more: Checked) -> Reagent:
+    return place.tried("is", lambda: reagent_of(
+        stocked, efficiency=more.get("efficiency"), made_up=feed.made_up, dry=more["dry"],
+        dissolution_per_min=_per_min(more.get("dissolves"))))
 
 
 def _tell(place: Place, reagent: Reagent, more: Checked, made_up_by_table: bool, told: Told) -> None:
@@ -146,7 +161,7 @@ def _check_use(top: Place, use: Checked, kind: str, reagents: Mapping[str, Reage
         return
     place = top.inner("use", label="[use]")
     if name not in reagents:
-        raise place.unknown(name, reagents, "a reagent of [reagents]")
+        raise not_there(place, kind, name, reagents, "a reagent of [reagents]")
     if reagents[name].kind != kind:
         raise place.error(f"{kind} must be a reagent that {'raises' if kind == 'base' else 'lowers'} pH; {name} is "
                           f"{'an acid' if kind == 'base' else 'a base'}. Name another.", kind)
@@ -157,14 +172,28 @@ def _profile(top: Place, content: Mapping[str, Any], folder: Path, told: Told) -
         return None
     found = _section(top, content, "profile", told)
     place = top.inner("profile", label="[profile]")
-    file = folder / found["file"]
-    if not file.is_file():
-        raise place.error(f"file must be a table beside the stream file; found no file {found['file']!r}. Correct the "
-                          "name.", "file")
+    file = beside(place, folder, found["file"], "file")
     names = tuple(content["wastes"]) if isinstance(content.get("wastes"), dict) else ()
-    table = read_profile(file, names, hold_gap_s=S_PER_H * found["hold_gaps"])
+    table = place.tried("file", lambda: _table(file, names, S_PER_H * found["hold_gaps"]))
     told.notes.extend(f"{place.label}: {words}" for words in table.notes)
     return table
+
+
+def _table(file: Path, names: tuple[str, ...], hold_gap_s: float) -> ProfileTable:
+    try:
+        return read_profile(file, names, hold_gap_s=hold_gap_s)
+    except FileError as error:
+        raise InputError(str(error)) from None
+
+
+def _tell_profile(table: ProfileTable, days: float, told: Told) -> None:
+    """What is made of a profile: repeated where it is short, its temperature left aside."""
+    lasts = float(table.time_s[-1] - table.time_s[0] + table.step_s) / S_PER_D
+    if lasts < days:
+        told.assume(f"[profile]: its {lasts:.3g} days are repeated over the {days:g} days of the simulation")
+    if table.t_c is not None:
+        told.notes.append("[profile]: its temperature is not followed; the chemistry is that of the mean temperature "
+                          "of the wastes")
 
 
 def _site(top: Place, content: Mapping[str, Any], told: Told) -> Site:
@@ -188,11 +217,18 @@ def _wishes(top: Place, content: Mapping[str, Any], told: Told, window: Window) 
     if points is not None and not window.low < points[-1] < window.high:
         raise place.error(f"the last set point must lie within the window {window.low:g} to {window.high:g}; found "
                           f"{points[-1]:g}. Correct it.", "set_points")
+    if points is not None and window.aim is not None and points[-1] != window.aim:
+        raise place.error(f"the last set point must be the aim of [window], {window.aim:g}; found {points[-1]:g}. Remove "
+                          "one of them.", "set_points")
     return Wishes(stages=next(iter(counts.values()), None), volumes_m3=volumes, set_points=points,
                   equalization_m3=w.get("equalization"), axis=w["control"], feedforward=w["feedforward"])
 
 
 def _trial(top: Place, content: Mapping[str, Any], told: Told) -> Trial:
     t = _section(top, content, "simulate", told)
+    if t.get("step") is not None and t["days"] * S_PER_D > MOST_STEPS * t["step"]:
+        raise top.inner("simulate", label="[simulate]").error(
+            f"step must be long enough for {MOST_STEPS:.0e} steps at most; found {t['step']:g} s for {t['days']:g} d. "
+            "Lengthen it, or leave it out.", "step")
     return Trial(days=t["days"], step_s=t.get("step"), cases=t["cases"], seed=t["seed"], buffer_sd=t["buffer_spread"],
                  probe_offset_sd=t["probe_offset"])

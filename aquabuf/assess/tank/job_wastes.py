@@ -9,28 +9,21 @@ from typing import Any
 import numpy as np
 
 from aquabuf.assess.plant.plan_keys import Checked, check_keys
-from aquabuf.assess.plant.plan_place import Place, nearest_word, shown_value
+from aquabuf.assess.plant.plan_place import Place
 from aquabuf.assess.plant.plan_store import Told
-from aquabuf.assess.plant.plan_units import in_key_unit
+from aquabuf.assess.tank.composition import Waste, check_known, dissolved
 from aquabuf.assess.tank.curve import MeasuredCurve, measured, strength_of
 from aquabuf.assess.tank.job import Arrival, Batch, Daily, Spread
-from aquabuf.assess.tank.waste import CARBON, Waste, dissolved
-from aquabuf.chem.acids import Acid, acid_table
-from aquabuf.chem.metals import metals
-from aquabuf.chem.products import Product, find_product, products
-from aquabuf.errors import InputError
-from aquabuf.readings.curve_file import read_curves
-from aquabuf.readings.entries import number_and_unit
-from aquabuf.readings.schema import quantities
-from aquabuf.units import Unit, parse_unit, substances
+from aquabuf.assess.tank.job_contents import OwnAcids, contents_of, own_acids, tell_contents
+from aquabuf.assess.tank.profile_draw import sd_from_most
+from aquabuf.engine.conditions import LIMITS
+from aquabuf.errors import FileError, InputError
+from aquabuf.readings.curve_file import CurveTable, read_curves
+from aquabuf.units import key as plain
 
-__all__ = ["read_wastes"]
+__all__ = ["beside", "not_there", "read_wastes"]
 
-ALKALINITY = "alkalinity"
 MIDDLE_POINTS = 81  # at which samples are compared
-MOST_MOL_L = 20.0  # more than the strongest waste acid holds
-NORMAL = "N"        # equivalents per liter, as the trade writes it
-UNITS = "mg/L, g/L, mmol/L, meq/L, N"
 
 
 def read_wastes(top: Place, content: Mapping[str, Any], folder: Path, told: Told, *, has_profile: bool,
@@ -38,43 +31,59 @@ def read_wastes(top: Place, content: Mapping[str, Any], folder: Path, told: Told
     """The wastes of a stream file in its order. Raises InputError naming line, key and remedy."""
     table = top.inner("wastes", label="[wastes]").table(content.get("wastes", {}))
     if not table:
-        raise InputError(f"{top.file}: a stream file needs one waste or more in [wastes]; none is there. Add for example "
-                         "[wastes.rinse] with its temperature, flow and what it holds.")
-    own = _own_acids(top, content)
+        raise InputError(f"{top.file}: a stream file needs one waste or more in [wastes]; none is there. Add for "
+                         "example [wastes.rinse] with its temperature, flow and what it holds.")
+    own = own_acids(top, top.inner("acids", label="[acids]").table(content.get("acids", {})))
+    by_plain: dict[str, str] = {}
+    for name in table:
+        place = top.inner("wastes", name, label=f"[wastes.{name}]")
+        if not plain(name):
+            raise place.error(f"a waste needs a name of letters; found {name!r}. Name it.")
+        if plain(name) in by_plain:
+            raise place.error(f"the name of a waste must differ from the others in its letters; found {name!r} and "
+                              f"{by_plain[plain(name)]!r}. Rename one.")
+        by_plain[plain(name)] = name
     return tuple(_arrival(top.inner("wastes", name, label=f"[wastes.{name}]"), name, value, own, folder, told,
                           in_profile=has_profile) for name, value in table.items())
 
 
-def _own_acids(top: Place, content: Mapping[str, Any]) -> dict[str, tuple[Acid, float | None]]:
-    """Acids of the user's own by name, with their molar mass where it is given."""
-    table = top.inner("acids", label="[acids]").table(content.get("acids", {}))
-    found = {}
-    for name, value in table.items():
-        place = top.inner("acids", name, label=f"[acids.{name}]")
-        checked = check_keys(place, place.table(value), "acids")
-        acid = place.tried("pk", lambda n=name, c=checked: Acid(name=n, pk=c["pk"], charge_full=c["charge"]))
-        found[name] = acid, checked.get("molar_mass")
-    return found
+def beside(place: Place, folder: Path, name: str, key: str) -> Path:
+    """A table beside the stream file. Raises InputError where there is none."""
+    try:
+        there = (folder / name).is_file()
+    except (OSError, ValueError):  # a name that no file can have
+        there = False
+    if not there:
+        raise place.error(f"{key} must be a table beside the stream file; found no file {name!r}. Correct the name.",
+                          key)
+    return folder / name
 
 
-def _arrival(place: Place, name: str, value: object, own: Mapping[str, tuple[Acid, float | None]], folder: Path,
-             told: Told, *, in_profile: bool) -> Arrival:
+def not_there(place: Place, key: str, word: str, known: Mapping[str, Any], what: str) -> InputError:
+    """What to say of a word at a key that names nothing."""
+    return InputError(str(place.unknown(word, known, what)).replace(place.where(word), place.where(key), 1))
+
+
+def _arrival(place: Place, name: str, value: object, own: OwnAcids, folder: Path, told: Told, *, in_profile: bool,
+             ) -> Arrival:
     found = check_keys(place, place.table(value), "wastes")
     samples = _samples(place, found, folder, told)
     curve = _chosen(place, found, samples, told)
     waste = Waste(name=name, t_c=found["temperature"], ph=found.get("ph"), solids_g_l=found.get("solids", 0.0),
                   curve=curve)
-    contents = _contents(place, found.get("holds", {}), own)
+    contents = contents_of(place.inner("holds", label=f"{place.label} holds"), found.get("holds", {}), own)
     waste = place.tried("holds", lambda: dissolved(waste, contents, tuple(acid for acid, _ in own.values())))
+    place.tried("ph" if "ph" in found.values else "holds", lambda: check_known(waste))
+    tell_contents(place.label, waste, contents, own, told)
     batch = _inner(place, found, "batch", told)
     spread, daily = _inner(place, found, "strength", told), _inner(place, found, "daily", told)
     mean, least, most = found.get("flow"), found.get("least"), found.get("most")
-    _check_flows(place, found, batch, in_profile)
+    _check_flows(place, found, daily, batch, in_profile)
+    _tell_course(place, found, told, in_profile)
     return Arrival(
         waste=waste, mean_m3_h=mean if batch is None else batch["size"] / batch["every"], least_m3_h=least,
         most_m3_h=most, samples=samples,
-        spread=None if spread is None else Spread(relative_sd=spread["spread"], lasting_h=spread["lasting"],
-                                                  least=spread.get("least"), most=spread.get("most")),
+        spread=None if spread is None else Spread(relative_sd=spread["spread"], lasting_h=spread["lasting"]),
         daily=None if daily is None else Daily(swing=daily["swing"], peak_h=daily["peak"]),
         batch=None if batch is None else Batch(size_m3=batch["size"], every_h=batch["every"], over_h=batch["over"],
                                                first_h=batch["first"]))
@@ -89,7 +98,7 @@ def _inner(place: Place, found: Checked, key: str, told: Told) -> Checked | None
     return checked
 
 
-def _check_flows(place: Place, found: Checked, batch: Checked | None, in_profile: bool) -> None:
+def _check_flows(place: Place, found: Checked, daily: Checked | None, batch: Checked | None, in_profile: bool) -> None:
     mean, least, most = found.get("flow"), found.get("least"), found.get("most")
     steady = [key for key in ("flow", "least", "most", "daily") if key in found.values]
     if batch is not None and steady:
@@ -100,13 +109,39 @@ def _check_flows(place: Place, found: Checked, batch: Checked | None, in_profile
     if mean is None and batch is None and not in_profile:
         raise place.error("flow is needed: a mean flow, a batch, or a [profile]; none is there. Add for example flow = "
                           "\"12 m3/h\".")
+    if mean is None and batch is None and steady:
+        raise place.error(f"{steady[0]} must go with flow, its mean; found none. Add flow or remove {steady[0]}.",
+                          steady[0])
     if mean is None:
         return
     for key, wrong, rule in (("least", least is not None and least > mean, "at most"),
                              ("most", most is not None and most < mean, "at least")):
         if wrong:
-            raise place.error(f"{key} must be {rule} the mean flow, {mean:g} m³/h; found {found[key]:g} m³/h. Correct one "
-                              "of them.", key)
+            raise place.error(f"{key} must be {rule} the mean flow, {mean:g} m³/h; found {found[key]:g} m³/h. Correct "
+                              "one of them.", key)
+    swing = 0.0 if daily is None else daily["swing"]
+    for key, end, wrong in (("least", 1.0 - swing, least is not None and mean * (1.0 - swing) < least),
+                            ("most", 1.0 + swing, most is not None and mean * (1.0 + swing) > most)):
+        if wrong:
+            raise place.error(f"daily must stay within least and most; found a swing of {100.0 * swing:g} %, to "
+                              f"{mean * end:g} m³/h, past {key} = {found[key]:g} m³/h. Correct one of them.", "daily")
+    if most is not None:
+        place.tried("most", lambda: sd_from_most(mean, most))
+
+
+def _tell_course(place: Place, found: Checked, told: Told, in_profile: bool) -> None:
+    """What is taken of flow, strength and solids where nothing is said, and what a profile makes idle."""
+    if "solids" not in found.values:
+        told.assume(f"{place.label}: no suspended solids, as the file does not say")
+    if "strength" not in found.values:
+        told.assume(f"{place.label}: its strength stays as stated{' but for [profile]' if in_profile else ''}, as the "
+                    "file gives no spread")
+    if in_profile:
+        idle = [key for key in ("least", "most", "daily", "batch") if key in found.values]
+        if idle:
+            told.notes.append(f"{place.label}: {', '.join(idle)} left aside, as [profile] has the flow over time")
+    elif "batch" not in found.values and not {"most", "daily"} & set(found.values):
+        told.assume(f"{place.label}: a steady flow, as the file gives neither a largest flow nor a daily cycle")
 
 
 # ---------------------------------------------------------------- titrations
@@ -118,33 +153,45 @@ def _samples(place: Place, found: Checked, folder: Path, told: Told) -> tuple[Me
         if "sample" in found.values:
             raise place.error("sample must go with titration; found none. Add titration or remove sample.", "sample")
         return ()
-    file = folder / name
-    if not file.is_file():
-        raise place.error(f"titration must be a table beside the stream file; found no file {name!r}. Correct the name.",
-                          "titration")
-    table = place.tried("titration", lambda: read_curves(file))
+    file = beside(place, folder, name, "titration")
+    table = place.tried("titration", lambda: _read(file))
     told.notes.extend(f"{place.label}, {name}: {words}" for words in table.notes)
     lines = [f"row {r.row}, sample {r.sample_id!r}, {r.column}: {r.rule}; found {r.value}. {r.remedy}"
              for r in table.refused.itertuples()]
     told.notes.extend(f"{place.label}, {name}, left out: {words}" for words in lines)
     if not table.curves:
         raise place.error(f"no titration of {name} can be used. {lines[0] if lines else 'It is empty'}.", "titration")
-    return tuple(measured(points, found["temperature"]) for points in table.curves)
+    t_c = found["temperature"]
+    if any(np.isnan(points.t_c) for points in table.curves):
+        if t_c > LIMITS["t_c"][3]:
+            raise place.error(f"{name} must say at which temperature it was titrated, as a waste of {t_c:g} °C hardly "
+                              "was as it is; found none. Add a column temperature_c.", "titration")
+        told.assume(f"{place.label}: titrated at its own {t_c:g} °C, as {name} has no temperature")
+    return tuple(measured(points, t_c) for points in table.curves)
+
+
+def _read(file: Path) -> CurveTable:
+    try:
+        return read_curves(file)
+    except FileError as error:
+        raise InputError(str(error)) from None
 
 
 def _chosen(place: Place, found: Checked, samples: tuple[MeasuredCurve, ...], told: Told) -> MeasuredCurve | None:
     if not samples:
         return None
     wanted = found.get("sample")
-    if wanted is None:
-        curve = _middle(samples)
-        if len(samples) > 1:
-            told.assume(f"{place.label}: designed for sample {curve.sample_id}, the middle one of {len(samples)} by demand")
-        return curve
     by_name = {curve.sample_id: curve for curve in samples}
-    if wanted not in by_name:
-        raise place.unknown(wanted, by_name, f"a sample of {found['titration']}")
-    return by_name[wanted]
+    if wanted is not None and wanted not in by_name:
+        raise not_there(place, "sample", wanted, by_name, f"a sample of {found['titration']}")
+    curve = _middle(samples) if wanted is None else by_name[wanted]
+    if wanted is None and len(samples) > 1:
+        told.assume(f"{place.label}: designed for sample {curve.sample_id}, the middle one of {len(samples)} by demand")
+    if np.isnan(curve.raw_ph):
+        raise place.error(f"the titration of {curve.sample_id!r} must hold the raw waste, with nothing added; it runs "
+                          f"from {curve.base_eq_l[0]:.4g} to {curve.base_eq_l[-1]:.4g} eq/L. Add its pH at 0.",
+                          "titration")
+    return curve
 
 
 def _middle(samples: tuple[MeasuredCurve, ...]) -> MeasuredCurve:
@@ -154,93 +201,3 @@ def _middle(samples: tuple[MeasuredCurve, ...]) -> MeasuredCurve:
         return samples[0]
     strength, _ = strength_of(samples, np.linspace(low, high, MIDDLE_POINTS))
     return samples[int(np.argsort(strength, kind="stable")[(len(samples) - 1) // 2])]
-
-
-# ---------------------------------------------------------------- what is dissolved
-
-
-def _contents(place: Place, table: Mapping[str, Any], own: Mapping[str, tuple[Acid, float | None]],
-              ) -> list[tuple[str | Product, float]]:
-    """Substances by the name of their total, or as products. [mol/L; eq/L of alkalinity]"""
-    inner = place.inner("holds", label=f"{place.label} holds")
-    return [(_meant(inner, name, own), _mol_l(inner, name, value, own)) for name, value in table.items()]
-
-
-def _totals() -> dict[str, str]:
-    """Columns of readings whose totals a waste may hold: name in the file, dimension."""
-    dissolved_names = {*acid_table(), *substances()}
-    named = {n.removesuffix("_mol_l"): n for n in quantities() if n.endswith("_mol_l")}
-    return {"inorganic carbon": "dic_mol_l"} | {n: d for n, d in named.items() if n in dissolved_names}
-
-
-def _meant(place: Place, name: str, own: Mapping[str, tuple[Acid, float | None]]) -> str | Product:
-    """What a name stands for: an acid of the user's own, a metal, a total, alkalinity, or a product."""
-    if name in own or name in metals():
-        return name
-    if name == ALKALINITY:
-        return ALKALINITY
-    if name in _totals():
-        return CARBON if name == "inorganic carbon" else name
-    try:
-        return find_product(name)
-    except InputError as error:
-        if "can mean several" in str(error):
-            raise place.error(str(error), name) from None
-    known = (*own, *metals(), ALKALINITY, *_totals(), *products())
-    near = nearest_word(name, known)
-    hint = f" The nearest is {near}." if near else ""
-    raise place.error(f"{name!r} is no product, weak acid, metal or ion.{hint} Correct it, or define an acid of your own "
-                      "in [acids].", name)
-
-
-def _mol_l(place: Place, name: str, value: Any, own: Mapping[str, tuple[Acid, float | None]]) -> float:
-    meant = _meant(place, name, own)
-    if not isinstance(value, str):
-        raise place.error(f"{name} must be a concentration with its unit, in quotes; found {shown_value(value)}. Write for "
-                          f"example \"{name}\" = \"120 mg/L\".", name)
-    try:
-        number, unit = number_and_unit(value)
-    except InputError as error:
-        raise place.error(f"{name} {error}. Write for example \"{name}\" = \"120 mg/L\".", name) from None
-    if number < 0.0 and name != ALKALINITY:
-        raise place.error(f"{name} must be zero or more; found {value!r}. Correct it.", name)
-    try:
-        found = _converted(name, meant, number, unit, own)
-    except InputError as error:
-        raise place.error(f"{name} {error}. Write for example \"{name}\" = \"120 mg/L\".", name) from None
-    if not abs(found) <= MOST_MOL_L:
-        raise place.error(f"{name} must be at most {MOST_MOL_L:g} mol/L; found {value!r}. Check value and unit.", name)
-    return found
-
-
-def _converted(name: str, meant: str | Product, number: float, unit: str, own: Mapping[str, tuple[Acid, float | None]],
-               ) -> float:
-    """Amount of a substance. [mol/L, eq/L of alkalinity]"""
-    if isinstance(meant, Product):
-        parsed = _parsed(unit)
-        if parsed.kind == "charge":
-            per_mole = abs(meant.adds["alkalinity"])
-            if not per_mole:
-                raise InputError(f"has no equivalents; found {unit!r}. Give it as mass or moles")
-            return number * parsed.scale / per_mole
-        return number * parsed.scale / (meant.molar_mass_g if parsed.kind == "mass" else 1.0)
-    if meant == ALKALINITY:
-        return in_key_unit(number, unit, "alkalinity_eq_l", "eq/L")
-    if meant in own or meant in metals():
-        mass = own[meant][1] if meant in own else metals()[meant].molar_mass_g
-        parsed = _parsed(unit)
-        if parsed.kind == "charge":
-            raise InputError(f"must be in mg/L, g/L or mmol/L; found {unit!r}")
-        if parsed.kind == "mass" and mass is None:
-            raise InputError(f"is given as mass, and no molar mass is known; found {unit!r}. Add molar_mass to "
-                             f"[acids.{name}]")
-        return number * parsed.scale / (mass if parsed.kind == "mass" and mass is not None else 1.0)
-    return in_key_unit(number, unit, _totals()[name], "mol/L")
-
-
-def _parsed(unit: str) -> Unit:
-    """A unit of mass, moles or equivalents per liter, without a basis; scales lead to g/L, mol/L, eq/L."""
-    found = parse_unit("eq/L" if unit == NORMAL else unit, "amount") if unit else None
-    if found is None or found.kind not in ("mass", "amount", "charge") or found.basis or found.per_kg:
-        raise InputError(f"must be in one of {UNITS}; found {unit!r}")
-    return found

@@ -1,139 +1,40 @@
-"""A waste as it is known: what is dissolved in it, or a measured titration curve, or both; and its chemistry as tables.
-
-The strength of a waste is its `base_eq_l`: alkalinity by the house's definition, negative for an acid waste. It follows
-from the strong acids and bases that are named, from pH and composition together, or from a titration; never from pH
-alone, because buffers that pH does not show may ask for many times as much reagent.
-"""
+"""The chemistry of wastes as tables: base held by what each holds, or by its titration curve, and pH of mixtures."""
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass, field, replace
-from types import MappingProxyType
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from aquabuf.assess.tank.curve import MeasuredCurve, held_table
-from aquabuf.chem.acids import Acid, acid_named
-from aquabuf.chem.metals import metals
-from aquabuf.chem.products import Product
+from aquabuf.assess.tank.composition import (
+    CARBON,
+    PH_FOR_STRENGTH,
+    Waste,
+    check_known,
+    dissolved,
+    ionic_strength_of,
+)
+from aquabuf.assess.tank.curve import held_table
+from aquabuf.chem.metals import Metal, complex_at, free_at, metals
 from aquabuf.engine.balance import fractions, protons_lost
-from aquabuf.engine.conditions import Conditions, conditions
+from aquabuf.engine.conditions import LIMITS, Conditions, conditions
 from aquabuf.engine.hydroxides import metal_table
-from aquabuf.engine.readout import GRID_PH, MetalTable, Readout
+from aquabuf.engine.readout import GRID_PH, PH_LEAST, PH_MOST, MetalTable, Readout
 from aquabuf.errors import InputError
-from aquabuf.units import substances
 
 __all__ = ["CARBON", "Chemistry", "Waste", "chemistry", "dissolved", "ionic_strength_of"]
 
 Array = NDArray[np.float64]
 
-ALKALINITY = "alkalinity"
-CARBON = "carbon"
 HIGHEST_STRENGTH = 0.5     # the Davies equation is not carried beyond; its coefficients of that strength are kept
-PH_FOR_STRENGTH = 7.0      # ionic strength is that of the neutralized waste
 PH_DISAGREES = 0.3         # between the pH measured and the one that strong acids and bases imply
-
-
-@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
-class Waste:
-    """One waste. Concentrations in mol/L of the undiluted waste.
-
-    base_eq_l : strong base less strong acid; None where pH or a curve tells it. [eq/L]
-    ph : measured, if it was.
-    acids : totals of weak acids. carbon_mol_l : total inorganic carbon. metals : totals by name of the metals table.
-    ions : other dissolved totals, for side effects only. solids_g_l : suspended solids that come with it.
-    titrated : whether the base is an alkalinity that was titrated, so that with pH it tells the carbon.
-    curve : measured titration; it decides the demand where there is one.
-    """
-
-    name: str
-    t_c: float = 25.0
-    base_eq_l: float | None = None
-    ph: float | None = None
-    acids: Mapping[Acid, float] = field(default_factory=dict)
-    carbon_mol_l: float = 0.0
-    metals: Mapping[str, float] = field(default_factory=dict)
-    ions: Mapping[str, float] = field(default_factory=dict)
-    solids_g_l: float = 0.0
-    titrated: bool = False
-    curve: MeasuredCurve | None = None
-
-    @property
-    def has_composition(self) -> bool:
-        """Whether anything but pH says what holds protons in it."""
-        return bool(self.base_eq_l is not None or self.acids or self.carbon_mol_l or self.metals)
-
-    def total(self, name: str) -> float:
-        """Dissolved total of a weak acid, metal or ion by name. [mol/L]"""
-        acids = {acid.name: mol for acid, mol in self.acids.items()}
-        if name == CARBON:
-            return self.carbon_mol_l
-        return acids.get(name, 0.0) + self.metals.get(name, 0.0) + self.ions.get(name, 0.0)
-
-
-def dissolved(waste: Waste, contents: Iterable[tuple[str | Product, float]], own: Sequence[Acid] = ()) -> Waste:
-    """The waste with these substances dissolved in it as well, by name or as a product. [mol/L]
-
-    Weak acids, metals and ions go by the name of their total; a product brings what its row says, strong acids and
-    bases among it, so that the base of the waste is then known without pH.
-
-    Raises InputError for a name that nothing has, with the nearest, and for an amount below zero.
-    """
-    acids, ions, found = dict(waste.acids), dict(waste.ions), dict(waste.metals)
-    carbon, base, titrated = waste.carbon_mol_l, waste.base_eq_l, waste.titrated
-    for what, mol in contents:
-        name = what if isinstance(what, str) else what.name
-        if not (mol >= 0.0 or what == ALKALINITY):
-            raise InputError(f"the amount of {name} in waste {waste.name!r} must be zero or more; found {mol:g} mol/L. "
-                             "Correct it.")
-        parts = {what: 1.0} if isinstance(what, str) else dict(what.adds)
-        titrated |= name == ALKALINITY
-        base_part = parts.pop(ALKALINITY, None)
-        if base_part is not None:
-            base = (base or 0.0) + base_part * mol
-        for name, per_mole in parts.items():
-            if name == CARBON:
-                carbon += per_mole * mol
-            elif name in metals():
-                found[name] = found.get(name, 0.0) + per_mole * mol
-            elif name in substances() and not _is_acid(name, own):
-                ions[name] = ions.get(name, 0.0) + per_mole * mol
-            else:
-                acid = acid_named(name, own)
-                acids[acid] = acids.get(acid, 0.0) + per_mole * mol
-    return replace(waste, acids=MappingProxyType(acids), ions=MappingProxyType(ions), metals=MappingProxyType(found),
-                   carbon_mol_l=carbon, base_eq_l=base, titrated=titrated)
-
-
-def _is_acid(name: str, own: Sequence[Acid]) -> bool:
-    try:
-        acid_named(name, own)
-    except InputError:
-        return False
-    return True
-
-
-def ionic_strength_of(waste: Waste) -> float:
-    """Ionic strength of the neutralized waste, from what is known to be dissolved in it. [mol/L]
-
-    Half the sum of z^2 c over its weak acids at pH 7, its metals and ions, and as many single charges as it takes to
-    balance them (at least the strong acid or base there is). Follows from the definition.
-    """
-    h = np.array([10.0**-PH_FOR_STRENGTH])
-    squares = charge = 0.0
-    for acid, mol in waste.acids.items():
-        alpha = fractions([np.array([10.0**-pk]) for pk in acid.pk], 1.0 / h)
-        for lost, share in enumerate(alpha):
-            z = acid.charge_full - lost
-            squares, charge = squares + z * z * mol * float(share[0]), charge + z * mol * float(share[0])
-    for name, mol in waste.ions.items():
-        z = substances()[name].charge
-        squares, charge = squares + z * z * mol, charge + z * mol
-    squares, charge = squares + waste.carbon_mol_l, charge - waste.carbon_mol_l
-    counter = max(abs(charge), abs(waste.base_eq_l or 0.0))
-    return 0.5 * (squares + counter)
+CARBON_FROM_PH = 4.5       # below, alkalinity and pH tell nothing of carbon, which holds hardly any base there
+OVERSATURATED_PH = 1.5     # above the pH where hydroxide begins to fall out, up to which metals stay dissolved for long
+PH_ERROR = 0.1             # of a pH measured in a waste; practice
+UNSURE = 0.1               # of the demand, from which such an error is told
+FAR_FROM_TITRATION_K = 10.0  # between waste and titration
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -185,77 +86,150 @@ def chemistry(wastes: Sequence[Waste], *, t_c: float | None = None, ionic_streng
               ) -> Chemistry:
     """The tables of some wastes that are treated together.
 
-    t_c : of the mixture; the mean of the wastes if not given. ionic_strength_mol_l : the mean of theirs if not given.
+    t_c : of the mixture; the mean of the wastes if not given. ionic_strength_mol_l : the mean of those whose
+    composition is known if not given. Carbon that follows from alkalinity and pH is in the wastes of the result.
 
     Raises
     ------
     InputError
-        No waste; a waste of which only pH is known, or nothing; a pH that its composition cannot have.
+        No waste; a waste of which only pH is known, or nothing; a temperature or ionic strength out of range; a waste
+        so strong that it has no pH from -1 to 15.
     """
     if not wastes:
         raise InputError("a neutralization needs at least one waste; found none. Describe the stream.")
-    warnings: list[str] = []
     for waste in wastes:
-        _refuse_ph_alone(waste)
-    t = float(np.mean([w.t_c for w in wastes])) if t_c is None else t_c
-    strength = (float(np.mean([ionic_strength_of(w) for w in wastes])) if ionic_strength_mol_l is None
-                else ionic_strength_mol_l)
-    if strength > HIGHEST_STRENGTH:
-        warnings.append(f"The neutralized waste has an ionic strength of about {strength:.2g} mol/L; activities are held "
-                        f"at those of {HIGHEST_STRENGTH:g} mol/L, where the Davies equation ends. pH values near 1 and 13 "
-                        f"are then good to about 0.2; the demand to the window is hardly touched.")
+        check_known(waste)
+    t = _checked_t(float(np.mean([w.t_c for w in wastes])) if t_c is None else t_c, "the mixture of the wastes",
+                   "Correct it, or cool the stream first")
+    strength, warnings = _strength(wastes, ionic_strength_mol_l)
     c = conditions(t, 0.0, min(strength, HIGHEST_STRENGTH))
     c_h, c_oh = float(c.c_h), float(c.c_oh)
-    held, bases = [], []
+    held, bases, complete = [], [], []
     for waste in wastes:
         if waste.curve is not None:
-            own = conditions(waste.curve.t_c, 0.0, min(strength, HIGHEST_STRENGTH))  # water as it was when titrated
+            titrated_at = _checked_t(waste.curve.t_c, f"the titration of waste {waste.name!r}", "Correct it")
+            own = conditions(titrated_at, 0.0, min(strength, HIGHEST_STRENGTH))  # water as it was when titrated
             table, base, told = held_table(waste.curve, float(own.c_h), float(own.c_oh))
-            warnings += [f"{waste.name}: {words}" for words in told]
+            warnings += [f"{waste.name}: {words}" for words in (*told, *_far(t, titrated_at))]
         else:
             waste, words = _with_carbon(waste, c)
             warnings += words
             table, base = _held_by_acids(waste, c), np.nan if waste.base_eq_l is None else waste.base_eq_l
+        complete.append(waste)
         held.append(table)
         bases.append(base)
     held.append(_lost((c.k1, c.k2)))
-    readout = Readout(c_h, c_oh, np.stack(held), _metal_tables(wastes, c))
+    readout = Readout(c_h, c_oh, np.stack(held), _metal_tables(complete, c))
     base_eq_l = np.array(bases)
     ones = np.eye(len(wastes) + 1)[:, :len(wastes)]
-    for k, waste in enumerate(wastes):
+    for k, waste in enumerate(complete):
         if np.isnan(base_eq_l[k]):
-            base_eq_l[k] = readout.base_at(_measured(waste), ones[:, k])
+            base_eq_l[k], words = _base_of_ph(waste, readout, ones[:, k])
+            warnings += words
     ph = readout.ph(base_eq_l, ones)
-    warnings += [_disagreement(w, float(x)) for w, x in zip(wastes, ph, strict=True)]
-    return Chemistry(wastes=tuple(wastes), t_c=t, constants=c, readout=readout, base_eq_l=base_eq_l, ph=ph,
+    for waste, found, x in zip(complete, base_eq_l, ph, strict=True):
+        if not np.isfinite(x):
+            raise InputError(f"waste {waste.name!r} must have a pH from {PH_LEAST:g} to {PH_MOST:g}; its base of "
+                             f"{found:.3g} eq/L lies beyond. Check the amounts and their units; what is so strong is a "
+                             "reagent.")
+    warnings += [_disagreement(w, float(x)) for w, x in zip(complete, ph, strict=True)]
+    return Chemistry(wastes=tuple(complete), t_c=t, constants=c, readout=readout, base_eq_l=base_eq_l, ph=ph,
                      warnings=tuple(filter(None, warnings)))
 
 
-def _refuse_ph_alone(waste: Waste) -> None:
-    if waste.curve is not None or waste.base_eq_l is not None or (waste.has_composition and waste.ph is not None):
-        return
-    known = "its pH" if waste.ph is not None else "its composition without pH" if waste.has_composition else "nothing"
-    raise InputError(
-        f"waste {waste.name!r} must be known by a titration, by its strong acids and bases, or by pH and composition "
-        f"together; found {known} alone. pH does not show what buffers hold: an acetic waste asks for some 75 times "
-        "what its pH says. Titrate a liter of it with the reagent past both ends of the window, or have its acids, bases and "
-        "metals analyzed; nothing is sized until then.")
+def _checked_t(t_c: float, what: str, remedy: str) -> float:
+    low, high = LIMITS["t_c"][2:]
+    if not low <= t_c <= high:
+        raise InputError(f"the temperature of {what} must be {low:g} to {high:g} °C, as far as the constants go; found "
+                         f"{t_c:g} °C. {remedy}.")
+    return t_c
+
+
+def _far(t_c: float, titrated_c: float) -> list[str]:
+    if abs(t_c - titrated_c) <= FAR_FROM_TITRATION_K:
+        return []
+    return [f"titrated at {titrated_c:g} °C, treated at {t_c:.3g} °C; what its acids hold is taken as it was titrated, "
+            "only water is corrected"]
+
+
+def _strength(wastes: Sequence[Waste], given: float | None) -> tuple[float, list[str]]:
+    """Ionic strength of the tables, and what to say of it. [mol/L]"""
+    if given is not None:
+        if not 0.0 <= given < np.inf:
+            raise InputError(f"the ionic strength must be zero or more; found {given:g} mol/L. Correct it or leave it "
+                             "out.")
+        strength, warnings = given, []
+    else:
+        known = [w for w in wastes if w.has_composition or w.ions]
+        strength = float(np.mean([ionic_strength_of(w) for w in known])) if known else 0.0
+        taken = f"that of the other wastes is taken, {strength:.2g} mol/L" if known else "it is taken as zero"
+        warnings = [f"{w.name}: its ionic strength is not known, as no ions are given; {taken}." for w in wastes
+                    if not (w.has_composition or w.ions)]
+    if strength > HIGHEST_STRENGTH:
+        warnings.append(f"The neutralized waste has an ionic strength of about {strength:.2g} mol/L; activities are "
+                        f"held at those of {HIGHEST_STRENGTH:g} mol/L, where the Davies equation ends. pH values near "
+                        "1 and 13 are then good to about 0.2; the demand to the window is hardly touched.")
+    return strength, warnings
+
+
+def _base_of_ph(waste: Waste, readout: Readout, one: Array) -> tuple[float, list[str]]:
+    """Base of a waste that pH and composition tell, with metals dissolved as stated, and what to say of it. [eq/L]
+
+    A little above the pH where its hydroxide begins to fall out a metal stays dissolved for long, held by sulfate and
+    hydroxo complexes that the tables leave out; it then asks for base as Kirby & Cravotta (2005) count it.
+    Far above it is there as hydroxide already.
+    """
+    ph = _measured(waste)
+    base, words = float(readout.base_at(ph, one)), []
+    for name, solid in readout.solids_at(ph, one).items():
+        mol = float(solid)
+        if not mol > 0.0:
+            continue
+        metal, total = metals()[name], waste.metals[name]
+        mg = 1e3 * metal.molar_mass_g
+        told = (f"{waste.name}: of {mg * total:.3g} mg/L {name} its hydroxide leaves {mg * (total - mol):.2g} mg/L "
+                f"dissolved at pH {ph:.2f}; ")
+        if ph <= _falls_out_at(metal, total, -float(np.log10(readout.c_h * readout.c_oh))) + OVERSATURATED_PH:
+            base -= metal.charge * mol
+            words.append(told + "all of it is counted as dissolved and asks for base, and pH sinks as it falls out. "
+                                "State the dissolved part alone if some is solid.")
+        else:
+            words.append(told + "the rest is counted as hydroxide that is solid already and asks for no base. Titrate "
+                                "the waste if that is not so.")
+    unsure = PH_ERROR * float(readout.buffer_at(ph, one))
+    demand = abs(float(readout.base_at(PH_FOR_STRENGTH, one)) - base)
+    if unsure > UNSURE * demand > 0.0:
+        words.append(f"{waste.name}: its strong acid or base follows from pH {ph:.2f}; an error of {PH_ERROR:g} in pH "
+                     f"is {100.0 * unsure / demand:.0f} % of the demand to pH 7. Titrate it, or name the strong acids "
+                     "and bases.")
+    return base, words
+
+
+def _falls_out_at(metal: Metal, mol_l: float, pkw: float) -> float:
+    """pH where hydroxide of so much metal begins to fall out."""
+    over = free_at(metal, GRID_PH, pkw) + complex_at(metal, GRID_PH, pkw)
+    return float(GRID_PH[int(np.argmax(over < mol_l))])
 
 
 def _with_carbon(waste: Waste, c: Conditions) -> tuple[Waste, list[str]]:
     """The waste with the carbon that its titrated alkalinity and pH imply, where carbon is not given."""
     if not waste.titrated or waste.ph is None or waste.carbon_mol_l or waste.base_eq_l is None:
         return waste, []
+    if waste.ph < CARBON_FROM_PH:
+        return waste, [f"{waste.name}: below pH {CARBON_FROM_PH:g} alkalinity and pH do not tell inorganic carbon; "
+                       "none is counted. Have it measured where the stream may hold carbonate."]
+
     def at_ph(table: Array) -> float:
         return float(np.interp(waste.ph, GRID_PH, table))  # type: ignore[arg-type]
     h = 10.0**-waste.ph
     rest = waste.base_eq_l - (float(c.c_oh) / h - float(c.c_h) * h) - at_ph(_held_by_acids(waste, c))
-    carbon = rest / max(at_ph(_lost((c.k1, c.k2))), 1e-6)
-    if 0.0 <= carbon < 1.0:
+    carbon = rest / at_ph(_lost((c.k1, c.k2)))
+    free = carbon * float(fractions([np.asarray(c.k1), np.asarray(c.k2)], 1.0 / h)[0])
+    if carbon >= 0.0 and free <= float(c.k0):  # more would bubble out of it
         return replace(waste, carbon_mol_l=carbon), [
             f"{waste.name}: inorganic carbon {1e3 * carbon:.3g} mmol/L follows from its alkalinity and pH."]
-    return waste, [f"{waste.name}: alkalinity and pH imply an inorganic carbon of {1e3 * carbon:.3g} mmol/L, which no water has; "
-                   "none is counted. Check both, and what else holds protons."]
+    return waste, [f"{waste.name}: alkalinity and pH imply an inorganic carbon of {1e3 * carbon:.3g} mmol/L, which no "
+                   "open water has; none is counted. Check both, and what else holds protons."]
 
 
 def _measured(waste: Waste) -> float:
@@ -265,14 +239,16 @@ def _measured(waste: Waste) -> float:
 
 
 def _disagreement(waste: Waste, ph: float) -> str:
-    if waste.ph is None or not abs(ph - waste.ph) > PH_DISAGREES:
+    told = waste.curve is not None or waste.base_eq_l is not None  # else the base follows from this pH
+    if waste.ph is None or not told or not abs(ph - waste.ph) > PH_DISAGREES:
         return ""
-    basis = "titration starts at" if waste.curve is not None else "strong acids and bases imply"
-    return (f"{waste.name}: the {basis} pH {ph:.2f}, measured is {waste.ph:.2f}. The demand follows the former; find out why "
-            "they differ before anything is built.")
+    basis = "titration starts at" if waste.curve is not None else \
+        "alkalinity implies" if waste.titrated else "strong acids and bases imply"
+    return (f"{waste.name}: the {basis} pH {ph:.2f}, measured is {waste.ph:.2f}. The demand follows the former; find "
+            "out why they differ before anything is built.")
 
 
-def _lost(k: Sequence[ArrayLike]) -> Array:
+def _lost(k: Sequence[Array]) -> Array:
     inv_h = 10.0**GRID_PH
     return protons_lost(fractions([np.full(GRID_PH.shape, float(x)) for x in k], inv_h))
 

@@ -16,9 +16,9 @@ from invented_plans import FIXED, PLANS, RIVER, answered, write_plan
 from aquabuf.assess.plant.answer import solve_plan
 from aquabuf.assess.plant.answer_json import answer_record
 from aquabuf.assess.plant.faults import STOPPED
-from aquabuf.assess.plant.feed import brief
 from aquabuf.assess.plant.hold import buffer_words
 from aquabuf.assess.plant.plan_file import read_plan
+from aquabuf.assess.plant.steps.words import brief
 
 LIME_G_MOL, NAOH_G_MOL = 74.093, 39.997  # IUPAC masses
 MG_CACO3_MEQ = 50.0435                   # mg of CaCO3 per milliequivalent
@@ -240,3 +240,18 @@ def test_two_targets_that_pull_apart(solve):
     reason = solve(HARD + 'products = ["caustic"]\ntarget = { ph = [7.0, 7.5], ccpp = "at least 20 mg/L as CaCO3" }\n').reason
     assert re.search(r"pH 7\.50 alone would need [\d.]+ mg/L of caustic taken out; precipitation potential 20\.00 mg/L as CaCO3 alone "
                      r"takes [\d.]+ mg/L of caustic, and then it has pH 8\.\d\d", reason)
+
+
+# ------------------------------------------------------------------ rounding
+
+
+def test_rounding_is_no_figure(solve):
+    """Water that a softener leaves at saturation has an index of 0, not 1e-13, and is not said to deposit."""
+    soften = HARD.replace('[products.caustic]\nis = "caustic soda 50 %"\n', "").replace('do = "adjust"\nname = "final pH"',
+        'do = "soften"\nmethod = "excess lime"\nlime = "lime"') + "[guards]\nph = [5, 13]\nover_ph = 13\n"
+    record = answer_record(solve(soften))
+    small = [v for row in (*record["steps"], *(r for c in record["curves"] for r in c["rows"])) for v in row.values()
+             if isinstance(v, float) and 0.0 < abs(v) < 1e-10]
+    assert small == []
+    assert record["steps"][-1]["si_calcite"] == 0.0
+    assert record["saturation"]["words"].startswith("The water neither deposits nor dissolves calcium carbonate: saturation index")

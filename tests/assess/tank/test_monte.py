@@ -5,6 +5,7 @@ import pickle
 import numpy as np
 import pytest
 from numpy.testing import assert_allclose, assert_array_equal
+from scipy.optimize import brentq
 from scipy.stats import binom
 
 from aquabuf.assess.tank.control import Controller
@@ -106,6 +107,15 @@ def test_factors_have_mean_one_and_their_share():
     assert_allclose([found.strength.mean(), found.strength.std()], [1.0, 0.3], rtol=0, atol=0.02)
     assert_allclose([found.buffer.mean(), found.buffer.std()], [1.0, 0.2], rtol=0, atol=0.02)
     assert abs(np.corrcoef(found.strength, found.buffer)[0, 1]) < 0.05
+
+
+def test_strength_and_buffer_are_in_the_water():
+    """0.005 s of base in 0.01 s b of acetate: pH by scipy's root of the balance, case by case."""
+    found = monte_carlo(ACETATE, [Tank("one", 1.0)], Inflow([0.0], [1.0], [0.005], [[0.01]]), cases=20, seed=5, until_s=60.0,
+                        window=(4.0, 9.0), rule=RULE, bands=Bands(0.3, 0.1), dt_s=60.0, processes=1)
+    expected = [brentq(lambda x, s=s, b=b: 0.01 * s * b / (1.0 + 10.0 ** (4.756 - x)) + 10.0 ** (x - 14) - 10.0**-x
+                       - 0.005 * s, 1.0, 13.0) for s, b in zip(found.strength, found.buffer, strict=True)]
+    assert_allclose(found.lowest_ph, expected, rtol=0, atol=1e-4)
 
 
 def test_probe_offset_moves_the_tank():

@@ -93,6 +93,15 @@ def test_level_stays_between_its_bounds():
     assert_allclose(run.balance_error, 0.0, rtol=0, atol=1e-12)
 
 
+def test_equalization_starts_at_the_mean_of_what_comes():
+    """Weighted by flow and time: 1 h of 30 m3/h at -0.02, 3 h of 10 m3/h at +0.01 eq/L give (-0.6 + 0.3) / 60."""
+    tank = Tank("equalization", 60.0, least_m3=10.0, out_m3_h=15.0)
+    inflow = Inflow([0.0, HOUR], [30.0, 10.0], [-0.02, 0.01], np.zeros((0, 2)))
+    run = simulate(BARE, [tank, Tank("next", 1.0)], inflow, until_s=4 * HOUR, dt_s=60.0, window=WINDOW)
+    assert_allclose(run.base_eq_l[:, 0, 0], -0.3 / 60.0, rtol=1e-12)
+    assert_allclose(run.level_m3[0, 0, 0], 35.0, rtol=1e-12)
+
+
 def test_slow_reagent_leaves_a_share_undissolved():
     """First order in stirred tanks: of the feed, k V/(F + k V) dissolves in the first and of the rest in the second."""
     lime = Feeder(200.0, math.inf, dissolution_per_min=0.1)

@@ -1,4 +1,4 @@
-"""Words and checks that the steps share: rows of a setting, spans of a figure, findings that hold."""
+"""Words and checks that the steps share: rows of a setting, figures in sentences, findings that hold."""
 
 from __future__ import annotations
 
@@ -11,7 +11,7 @@ from aquabuf.chem.products import molar_mass
 from aquabuf.errors import InputError
 from aquabuf.units import to_house
 
-__all__ = ["as_caco3", "as_rows_of", "holding", "mg_l", "span"]
+__all__ = ["as_caco3", "as_rows_of", "brief", "holding", "mg_l", "span"]
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -52,6 +52,12 @@ def span(values: ArrayLike, where: Mask, digits: int = 1) -> str:
         return "unknown"
     low, high = (f"{v + 0.0:.{digits}f}" for v in (some.min(), some.max()))
     return low if low == high else f"{low} to {high}"
+
+
+def brief(value: float, figures: int = 3, sign: str = "") -> str:
+    """A number in a sentence: so many figures, no zeros behind them; all of a whole number with more. `sign` : "+"."""
+    whole = abs(value) >= 10.0**figures - 0.5
+    return f"{value:{sign},.0f}" if whole else f"{value:{sign}.{figures}g}"
 
 
 def holding(*findings: Finding) -> tuple[Finding, ...]:
