@@ -83,7 +83,7 @@ def _totals() -> Mapping[str, str]:
     """Totals that a waste may hold: name in the file, column of readings that brings its units."""
     dissolved_names = {*acid_table(), *substances()}
     named = {n.removesuffix("_mol_l"): n for n in quantities() if n.endswith("_mol_l")}
-    elements = {name.partition("(")[0] for name in metals()}  # iron is not said to be one of its ions
+    elements = {name.partition("(")[0] for name in metals()}  # as metals they ask for base, as mere ions they would not
     return MappingProxyType({INORGANIC: "dic_mol_l"} | {
         n: d for n, d in named.items() if n in dissolved_names and n not in elements})
 
@@ -124,6 +124,8 @@ def _meant(place: Place, name: str, own: OwnAcids) -> Meant:
     if known:
         return known
     ions = [metal for metal in metals() if "(" in metal and metal.partition("(")[0] == plain(name)]
+    if len(ions) == 1 and plain(name) in substances():
+        return ions[0]  # manganese that is dissolved is manganese(II)
     if ions:
         raise place.error(f"{name} must say which ion it is, as each asks for base of its own; found {name!r}. Write "
                           f"{' or '.join(ions)}.", name)

@@ -218,8 +218,8 @@ def _wishes(top: Place, content: Mapping[str, Any], told: Told, window: Window) 
         raise place.error(f"the last set point must lie within the window {window.low:g} to {window.high:g}; found "
                           f"{points[-1]:g}. Correct it.", "set_points")
     if points is not None and window.aim is not None and points[-1] != window.aim:
-        raise place.error(f"the last set point must be the aim of [window], {window.aim:g}; found {points[-1]:g}. Remove "
-                          "one of them.", "set_points")
+        raise place.error(f"the last set point must be the aim of [window], {window.aim:g}; found {points[-1]:g}. "
+                          "Remove one of them.", "set_points")
     return Wishes(stages=next(iter(counts.values()), None), volumes_m3=volumes, set_points=points,
                   equalization_m3=w.get("equalization"), axis=w["control"], feedforward=w["feedforward"])
 

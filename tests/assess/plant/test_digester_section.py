@@ -131,7 +131,7 @@ def test_it_reaches_record_and_sheet(plan_of):
 @pytest.mark.parametrize(("old", "new", "message"), [
     ('co2_share = "35 %"', 'co2_shar = "35 %"', r"line 28, \[digester\]: co2_shar is not a key here\. The nearest is co2_share\."),
     ('co2_share = "35 %"\n', "", r"\[digester\]: co2_share is needed .*it is missing"),
-    ('"35 %"', "35", r"line 28, \[digester\]: co2_share must be at least 0 and at most 1; found 35"),
+    ('"35 %"', "35", r"line 28, \[digester\]: co2_share must be above 0 and at most 1; found 35"),
     ('"2000 mg/L as CaCO3"', "2000", r"line 26, \[digester\]: alkalinity must have a unit"),
     ('"1000 mg/L as CH3COOH"', '"1000 mg/L as CaCO3"', r"line 27, \[digester\]: volatile_acids must be in one of .*found 'mg/L as CaCO3'"),
     ('"35 °C"', '"95 °C"', r"line 29, \[digester\]: temperature must be at least 0 and at most 60"),

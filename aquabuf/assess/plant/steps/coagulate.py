@@ -8,6 +8,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+from aquabuf.assess.limits import EDGE
 from aquabuf.assess.plant.steps.base import Dosed, Finding, StepOutcome
 from aquabuf.assess.plant.steps.words import CACO3, as_caco3, as_rows_of, holding, mg_l, span
 from aquabuf.assess.plant.store import Stocked
@@ -136,7 +137,7 @@ class Coagulate:
         row = _row(self.product.product, ALKALINITY)
         rule = _rule(row, self.floor_eq_l is not None)
         limit = f"{as_caco3(floor):.1f} {CACO3}"
-        low, gone, takes = short > 0.0, (left <= 0.0) & (used > 0.0), used > 0.0
+        low, gone, takes = short > EDGE * max(floor, EDGE), (left <= 0.0) & (used > 0.0), used > 0.0
         return (
             Finding("warning", f"the coagulant leaves {span(as_caco3(left), low)} {CACO3} of alkalinity, below the "
                     f"floor of {limit}", low, rule, f"{alkali_words(short, low)} ahead of the coagulant"),

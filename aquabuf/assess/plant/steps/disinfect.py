@@ -11,6 +11,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+from aquabuf.assess.limits import EDGE
 from aquabuf.assess.plant.steps.base import Dosed, Finding, StepOutcome
 from aquabuf.assess.plant.steps.words import as_caco3, as_rows_of, holding, mg_l, span
 from aquabuf.assess.plant.store import Stocked
@@ -99,7 +100,8 @@ class Disinfect:
             "ph_no_chlorine_left": gone.water().ph, "hocl_share_all_chlorine_there": hocl_share(dosed),
             "hocl_share_after": hocl_share(after),
         }
-        findings = _findings(stream, after, demand - there, figures)
+        missing = np.where(demand - there > EDGE * demand, demand - there, 0.0)  # rounding is no shortage
+        findings = _findings(stream, after, missing, figures)
         return StepOutcome(after, (Dosed(self.product, dose),), findings, figures)
 
     def held(self, doses: tuple[Dosed, ...]) -> Disinfect:

@@ -190,6 +190,15 @@ def test_own_floor_and_a_coagulant_that_brings_alkalinity():
     assert "floor" not in words(base)
 
 
+@pytest.mark.parametrize("off", [-1e-6, -1e-13, 0.0, 1e-13, 1e-6])
+def test_a_floor_that_is_just_kept_is_no_warning(off):
+    """Rounding of the sum is no shortage; a millionth is."""
+    used = coagulated("alum 14-water", 40, water_of(7.5, 60.0)).figures["alkalinity_used_mg_l_caco3"][0]
+    floor = (60.0 - used) * EQ_PER_MG_CACO3 * (1.0 + off)
+    out = coagulated("alum 14-water", 40, water_of(7.5, 60.0), floor_eq_l=floor)
+    assert any(f.severity == "warning" and "floor" in f.words for f in out.findings) == (off > 1e-9)
+
+
 def test_phosphate_is_said_to_be_left_out_unless_there_is_none():
     """The note goes where phosphate is measured as zero."""
     assert "phosphate" in words(coagulated("alum 14-water", 10, water_of(7.5, 60.0)))

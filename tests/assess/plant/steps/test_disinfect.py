@@ -100,6 +100,13 @@ def test_demand_beyond_the_dose():
     assert "was wanted" not in words(chlorinated(GAS, 4.0, water_of(7.2, 100.0), 3.5))
 
 
+@pytest.mark.parametrize(("dose", "short"), [(4.0, False), (4.0 - 1e-13, False), (3.99, True)])
+def test_a_dose_that_just_meets_the_demand_is_no_shortage(dose, short):
+    """Rounding is not told as chlorine that was wanted."""
+    out = chlorinated(GAS, dose, water_of(7.6, 100.0), 4.0)
+    assert any("more was wanted" in f.words for f in out.findings) == short
+
+
 def test_chlorine_that_the_water_brings_is_used_too():
     """0.5 mg/L there before and no dose: the demand takes it."""
     out = chlorinated(GAS, 0.0, water_of(7.2, 100.0, hypochlorite=0.5 / CL2), 0.2)
