@@ -13,6 +13,7 @@ from aquabuf.cli.assess import assess
 from aquabuf.cli.columns import columns
 from aquabuf.cli.dose import dose
 from aquabuf.cli.lake import lake
+from aquabuf.cli.tank import tank
 from aquabuf.cli.template import template
 from aquabuf.cli.titration import titration
 from aquabuf.errors import AquabufError
@@ -63,5 +64,6 @@ main.add_command(assess)
 main.add_command(columns)
 main.add_command(dose)
 main.add_command(lake)
+main.add_command(tank)
 main.add_command(template)
 main.add_command(titration)

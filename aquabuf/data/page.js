@@ -3,7 +3,7 @@
   function value(row, column) {
     var cell = row.cells[column];
     var text = cell.getAttribute("data-value") || cell.textContent.trim();
-    var number = parseFloat(text.replace(/[ ,]/g, ""));
+    var number = parseFloat(text.replace(/\u2212/g, "-").replace(/[ ,]/g, ""));
     return isNaN(number) || /[a-z]{3}/i.test(text) ? text.toLowerCase() : number;
   }
   function order(a, b) {

@@ -32,7 +32,9 @@ from aquabuf.assess.uncertainty import COVERAGE
 from aquabuf.report.dose_lines import aligned, block, bullet, figure, sentence, titled
 from aquabuf.units import to_house
 
-__all__ = ["assumptions", "cautions", "digester", "hold", "log", "saturation", "season", "store", "upset"]
+__all__ = ["assumption_lines", "assumptions", "cautions", "cost_words", "digester", "fault_lines", "hold", "hold_lines",
+           "log", "log_lines", "saturation", "saturation_lines", "season", "store", "store_lines", "upset",
+           "upset_lines"]
 
 BUFFERS_SHOWN = 2
 COLUMNS_ML = (100.0, 250.0, 500.0, 1000.0, 2000.0, 5000.0)  # calibration columns; common sizes, no source
@@ -47,6 +49,11 @@ COUNTED = ("phosphate", "ammonium", "silica", "fluoride", "hypochlorite")  # wea
 
 def upset(answer: Answer) -> str:
     """What an error of the dose, the readings or the feed does, and a feed at fault."""
+    return titled("WHAT WOULD UPSET IT", *(bullet(line) for line in upset_lines(answer)), _faults(answer))
+
+
+def upset_lines(answer: Answer) -> list[str]:
+    """What an error of the dose, the readings or the feed does, a sentence each."""
     lines = [_price(c) for c in answer.curves if np.isfinite(c.up_mg_l) or np.isfinite(c.down_mg_l)]
     lines += [f"Range of {r.words()} (the other doses held)." for r in answer.ranges]
     e, f = answer.readings_error, answer.feed_error
@@ -56,7 +63,7 @@ def upset(answer: Answer) -> str:
     if f is not None:
         share = ", ".join(f"{100.0 * u:.3g} %" for u in dict.fromkeys(f.relative_u.values()))
         lines.append(f"Feeds that err by {share} (one standard deviation): {_told(f)}.")
-    return titled("WHAT WOULD UPSET IT", *(bullet(line) for line in lines if line), _faults(answer))
+    return [line for line in lines if line]
 
 
 def _price(c: DoseCurve) -> str:
@@ -96,8 +103,7 @@ def _spreads(doses: pd.DataFrame) -> str:
 def _faults(answer: Answer) -> str:
     if not answer.faults:
         return ""
-    several = {f.product.name for f in answer.faults for g in answer.faults
-               if f.product.name == g.product.name and f.step != g.step}
+    several = _in_several_steps(answer)
     rows = [[f.product.name, f.step if f.product.name in several else "", _case(f, bool(several)),
               f"{shown(float(f.product.mg_l_product(f.dose_mol_l)[0]))} for "
              f"{shown(float(f.product.mg_l_product(f.wanted_mol_l)[0]))}", figure(float(f.ph_behind[0]), 2),
@@ -106,8 +112,18 @@ def _faults(answer: Answer) -> str:
     title = f"  A feed at fault for {first.hours:g} h, in {both_units(float(first.volume_m3[0]), 'm³')} of water:"
     head = [["feed", "step", "fault", "mg/L of product", "pH behind", "pH behind", "kg too much"],
             ["", "", "", "", "the step", "the works", "or missing"]]
-    return titled(title, aligned(head, rows, left=(0, 1, 2)), *(bullet(w) for w in _lessons(answer.faults, several)),
-                  *(bullet(f"{w}.") for w in answer.fault_words))
+    return titled(title, aligned(head, rows, left=(0, 1, 2)), *(bullet(w) for w in fault_lines(answer)))
+
+
+def _in_several_steps(answer: Answer) -> set[str]:
+    """Products at fault in more steps than one."""
+    return {f.product.name for f in answer.faults for g in answer.faults
+            if f.product.name == g.product.name and f.step != g.step}
+
+
+def fault_lines(answer: Answer) -> list[str]:
+    """What the faults do and ask for, and how they were taken."""
+    return [*_lessons(answer.faults, _in_several_steps(answer)), *(f"{w}." for w in answer.fault_words)]
 
 
 def _lessons(faults: Sequence[Fault], several: set[str]) -> list[str]:
@@ -141,17 +157,23 @@ def store(answer: Answer) -> str:
     head = [["product", "use", "use", "use", "stock", "cost", "cost", "cost per", "cost per"],
             ["", "kg/d", "kg/month", "lb/month", "days", *per, "1000 m³", "million gal"]]
     rows = [[s.product.name, shown(s.kg_d), shown(s.kg_month), both_units(s.kg_month, "kg").split("(")[1].split()[0],
-             figure(s.stock_days, 1), *_costs([s.cost])] for s in lines]
+             figure(s.stock_days, 1), *cost_words([s.cost])] for s in lines]
     if len(lines) > 1 and all(s.cost for s in lines):
-        rows.append(["all", "", "", "", "", *_costs([s.cost for s in lines])])
+        rows.append(["all", "", "", "", "", *cost_words([s.cost for s in lines])])
+    return titled("STORE AND COST", aligned(head, rows), *(bullet(w) for w in store_lines(answer)))
+
+
+def store_lines(answer: Answer) -> list[str]:
+    """When to order, whether the store is large enough, whether a load fits."""
     said = []
-    for s in lines:
+    for s in (s for s in answer.store if s.kg_d > 0.0):
         parts = [s.order.words() if s.order else "", s.silo_words, s.delivery_words]
-        said.append(f"{s.product.name}: {sentence('; '.join(p for p in parts if p))}" if any(parts) else "")
-    return titled("STORE AND COST", aligned(head, rows), *(bullet(w) for w in said if w))
+        said += [f"{s.product.name}: {sentence('; '.join(p for p in parts if p))}"] if any(parts) else []
+    return said
 
 
-def _costs(costs: Sequence) -> list[str]:
+def cost_words(costs: Sequence) -> list[str]:
+    """Costs together per day, per month, per 1000 m3 and per million gallons; dashes where one is not known."""
     if not all(costs):
         return ["-"] * 4
     return [shown(float(sum(getattr(c, name)[0] for c in costs)))
@@ -163,16 +185,20 @@ def _costs(costs: Sequence) -> list[str]:
 
 def log(answer: Answer) -> str:
     """What to measure and to write down this shift."""
+    return block("MEASURE AND LOG THIS SHIFT", log_lines(answer))
+
+
+def log_lines(answer: Answer) -> list[str]:
+    """What to measure and to write down, a sentence each."""
     lines = [_check(line) for line in answer.feeds if _is_fed(answer, line)]
     if lines:
         off = feed_rules()["feed accuracy"]
         lines = [_jars(answer), *lines, f"Reset a feed that is off by more than {off.limit:g} % ({off.source})."]
     lines += _watch(answer)
-    if not lines:
-        return ""
-    lines.append("Write down: time, name, flow, raw pH, alkalinity and temperature, the settings, level of each tank, "
-                 "strength and lot of each load, alarms, and who changed a set point.")
-    return block("MEASURE AND LOG THIS SHIFT", lines)
+    if lines:
+        lines.append("Write down: time, name, flow, raw pH, alkalinity and temperature, the settings, level of each "
+                     "tank, strength and lot of each load, alarms, and who changed a set point.")
+    return [line for line in lines if line]
 
 
 def _is_fed(answer: Answer, line: FeedLine) -> bool:
@@ -225,6 +251,11 @@ def _watch(answer: Answer) -> list[str]:
 
 def saturation(answer: Answer) -> str:
     """Scale and corrosion of the last water, constants named."""
+    return block("SCALE, CORROSION AND BUFFERING OF THE LAST WATER", saturation_lines(answer))
+
+
+def saturation_lines(answer: Answer) -> list[str]:
+    """Scale, corrosion and buffering of the last water, a sentence each."""
     final = answer.train.final
     water = final.water()
     v = measured(final, ("ccpp", "larson_ratio", "chloride_sulfate_ratio", "alkalinity"))
@@ -237,17 +268,22 @@ def saturation(answer: Answer) -> str:
         band := band_names(name, v[name], caco3)[0])]
     lines += [f"{'; '.join(said)}."] if said else []
     lines.append(low_point_words(water))
-    return block("SCALE, CORROSION AND BUFFERING OF THE LAST WATER", [sentence(x) for x in lines])
+    return [sentence(x) for x in lines if x]
 
 
 def hold(answer: Answer) -> str:
     """Buffers that hold the wanted pH, and what a feed fault does to the water as it is."""
+    return block("HOLDING THE pH", hold_lines(answer))
+
+
+def hold_lines(answer: Answer) -> list[str]:
+    """How long the pH holds, the best buffers, and how many more there are."""
     if answer.hold is None:
-        return ""
+        return []
     first, *others = answer.hold.buffers
     told = [first, *(b for b in others if b.usable[0])][:BUFFERS_SHOWN]
-    return block("HOLDING THE pH", [held_words(answer.hold.held), *(buffer_words(b) for b in told),
-                                    f"{len(answer.hold.buffers) - len(told)} more pairs are in buffers.csv."])
+    return [held_words(answer.hold.held), *(buffer_words(b) for b in told),
+            f"{len(answer.hold.buffers) - len(told)} more pairs are in buffers.csv."]
 
 
 def season(answer: Answer) -> str:
@@ -265,6 +301,11 @@ def digester(answer: Answer) -> str:
 
 def assumptions(answer: Answer) -> str:
     """What the figures rest on: the pair, the constants, what was taken because the plan does not say."""
+    return block("WHAT IT RESTS ON", assumption_lines(answer))
+
+
+def assumption_lines(answer: Answer) -> list[str]:
+    """What the figures rest on, a sentence each."""
     unsaid = [a.removesuffix(UNSAID) for a in answer.assumptions if a.endswith(UNSAID)]
     lines = [f"Raw water solved from {answer.pair}; carbonate constants of Plummer & Busenberg 1982 with Davies "
              "activities; alkalinity is the proton deficit at the pH 4.5 zero level.", _unknown(answer)]
@@ -275,7 +316,7 @@ def assumptions(answer: Answer) -> str:
     if e is not None:
         lines.append(f"Shares are of {e.draws:,} draws, seed {e.seed}; a fixed target counts with the band that "
                      "practice holds it to.")
-    return block("WHAT IT RESTS ON", lines)
+    return [line for line in lines if line]
 
 
 def _unknown(answer: Answer) -> str:

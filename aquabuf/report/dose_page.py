@@ -18,7 +18,7 @@ from matplotlib.textpath import text_to_path
 
 from aquabuf.report.style import INK, STYLE
 
-__all__ = ["LEADING", "PAGE_STYLE", "POINTS", "Block", "Line", "beside", "block_of", "save_page", "stacked",
+__all__ = ["LEADING", "METADATA", "PAGE_STYLE", "POINTS", "Block", "Line", "beside", "block_of", "save_page", "stacked",
            "text_width", "wrapped"]
 
 LEADING = 1.28   # from line to line, in type sizes

@@ -25,7 +25,7 @@ from aquabuf.report.dose_blocks import (
 from aquabuf.report.dose_lines import aligned, block, bullet, calcite_words, figure, sentence, titled
 from aquabuf.report.summary import WIDTH, plural
 
-__all__ = ["dose_sheet"]
+__all__ = ["SHOWN", "dose_sheet", "feed_words", "raw_words", "rule_lines", "stop_lines"]
 
 SHOWN = (("ph", "pH"), ("alkalinity", "alk."), ("dic", "carbon"), ("calcium", "Ca"), ("hardness", "hard."),
          ("buffer_intensity", "buffer"), ("chloride_sulfate_ratio", "Cl/SO4"), ("larson_ratio", "Larson"),
@@ -59,11 +59,12 @@ def _head(answer: Answer) -> str:
             if v is not None]
     flow += f", {', '.join(ends)} m³/d" if ends else ""
     lines = [title, "=" * min(WIDTH, max(len(title), 1)), f"{flow}. Water for: {plan.use}.",
-             bullet(f"Raw water ({plan.raw.words}): {_raw(answer)}.", mark="")]
+             bullet(f"Raw water ({plan.raw.words}): {raw_words(answer)}.", mark="")]
     return "\n".join([*lines, *([bullet(sentence(plan.note), mark="Note: ")] if plan.note else [])])
 
 
-def _raw(answer: Answer) -> str:
+def raw_words(answer: Answer) -> str:
+    """Readings of the raw water."""
     row = step_rows(answer)[0]
     said = [f"{figure(row['temperature_c'], 1)} °C"]
     for name in ("ph", "alkalinity", "dic", "calcium", "hardness"):
@@ -79,16 +80,23 @@ def _raw(answer: Answer) -> str:
 def _stop(answer: Answer) -> str:
     if answer.feasible:
         return ""
+    found = bool(answer.train.feasible()[0])
+    closing = "Doses below are what the plan comes to; they are not to be fed." if found else \
+        "Figures below are without the doses that were not found."
+    return block("STOP: DO NOT SET THESE FEEDS. This plan does not hold.", [*stop_lines(answer), closing])
+
+
+def stop_lines(answer: Answer) -> list[str]:
+    """Why a plan does not hold, with rule and next step; nothing where it does."""
+    if answer.feasible:
+        return []
     lines: list[str] = []
     for name, f in answer.stops:
         rule = f" Rule: {f.rule}." if f.rule else ""
         lines.append(f"{name}: {sentence(f.words)}{rule}{_next(f.next_step)}")
     if not lines:
         lines.append(sentence(answer.reason or "no dose was found"))
-    found = bool(answer.train.feasible()[0])
-    closing = "Doses below are what the plan comes to; they are not to be fed." if found else \
-        "Figures below are without the doses that were not found."
-    return block("STOP: DO NOT SET THESE FEEDS. This plan does not hold.", [*lines, closing])
+    return lines
 
 
 def _next(text: str) -> str:
@@ -104,7 +112,7 @@ def _feeds(answer: Answer) -> str:
     head = (("product", "step", "mg/L of", "mg/L", "product", "product", "feed", "feed", "set", "day tank"),
             ("", "", "product", "pure", "kg/d", "lb/d", "metric", "US", "%", "lasts h"))
     rows = [_feed_row(line, bed=(line.step, line.product.name) in answer.beds) for line in answer.feeds]
-    said = [words for line in answer.feeds for words in _feed_words(answer, line)]
+    said = [words for line in answer.feeds for words in feed_words(answer, line)]
     return titled("SET THE FEEDS", aligned(head, rows, left=(0, 1)), *(bullet(w) for w in dict.fromkeys(said)))
 
 
@@ -129,7 +137,8 @@ def _fed(rate: FeedRate) -> tuple[float, str]:
     return (float(rate.l_h[0]), "L/h") if rate.moved else (float(rate.product_kg_h[0]), "kg/h")
 
 
-def _feed_words(answer: Answer, line: FeedLine) -> list[str]:
+def feed_words(answer: Answer, line: FeedLine) -> list[str]:
+    """What goes with a setting: product and strength, other flows, what to make up, rules of the day tank."""
     p = line.product
     strength = f"{100.0 * p.strength:.4g} % ({p.strength_from})"
     mixture = line.spec.made_up
@@ -215,6 +224,11 @@ def _targets(answer: Answer) -> str:
 
 
 def _rules(answer: Answer) -> str:
+    return block("RULES AND WARNINGS", rule_lines(answer))
+
+
+def rule_lines(answer: Answer) -> list[str]:
+    """Warnings, broken rules, notes of plan and steps, then what was kept and what could not be judged."""
     lines = [f"{name}: {sentence(f.words)}{f' Rule: {f.rule}.' if f.rule else ''}{_next(f.next_step)}"
              for name, f in found_of(answer, "warning")]
     lines += [_broken(j) for j in answer.limits if j.broken]
@@ -226,7 +240,7 @@ def _rules(answer: Answer) -> str:
         lines.append(f"{plural(kept, 'further rule')} for the water that leaves: kept (limits.csv).")
     if unknown:
         lines.append(f"Not judged, as an ion is not known: {', '.join(unknown)}.")
-    return block("RULES AND WARNINGS", lines)
+    return lines
 
 
 def _broken(j: Judged) -> str:

@@ -15,10 +15,11 @@ from aquabuf.assess.plant.feed_lines import FeedLine
 from aquabuf.assess.plant.quantities import find_quantity, plant_quantities
 from aquabuf.report.dose_lines import sentence
 from aquabuf.report.dose_page import Block, Line, beside, block_of, stacked, wrapped
+from aquabuf.report.dose_settings import OUT_OF_REACH, control_words, rate_words, setting_words
 from aquabuf.report.style import GRAY, INK, WARNED
 
 __all__ = ["LOG", "MOST_WARNINGS", "TIGHT_BELOW", "curve_words", "fault_notes", "feeds_block", "foot_block",
-           "head_block", "rate_words", "setting_words", "stop_block", "targets_block", "warnings_block"]
+           "head_block", "stop_block", "targets_block", "warnings_block"]
 
 LOG = ("Log each shift: time, flow, raw pH, alkalinity and temperature; pH behind each step; setting, drawdown and "
        "tank level of each feed; lot and strength of each delivery; alarms; who changed what, and why.")
@@ -27,7 +28,6 @@ MOST_REASON, MOST_WARNINGS = 7, 6
 LARGE, LESS = 11.5, 10.0         # points, of the figures to set and of what goes with them
 M3_PER_ML = 1e3
 TIGHT_BELOW = 0.85              # scale
-OUT_OF_REACH, NO_MACHINE = "OUT OF REACH", "no pump or feeder in the plan"
 PAD = 0.09                      # around the words of a box [inches]
 COLUMNS = (0.0, 1.95, 3.25, 4.4, 5.55)  # left ends in the table of feeds, for a page of WIDTH
 WIDTH = 7.57
@@ -77,30 +77,6 @@ class _Cell:
     color: str = INK
 
 
-def rate_words(line: FeedLine) -> tuple[str, str]:
-    """What is fed in metric and US units: volume of what a pump moves, else mass."""
-    if line.rate.moved:
-        return metric_and_us(float(line.rate.l_h[0]), "L/h")
-    return metric_and_us(float(line.rate.product_kg_h[0]), "kg/h")
-
-
-def setting_words(line: FeedLine, *, bed: bool = False) -> tuple[str, str]:
-    """What to set in large letters, and what must be known of it; of a `bed` there is nothing to set."""
-    if bed:
-        return "bed", "keep it filled"
-    if not np.isfinite(line.mol_l[0]):
-        return "none", line.setting_words()
-    if line.mol_l[0] == 0.0:
-        return "OFF", "nothing is needed"
-    if line.setting is None:
-        return "not known", NO_MACHINE
-    if line.setting.status[0] != "set":
-        return OUT_OF_REACH, f"the rate is {line.setting.status[0]} for it"
-    pump = line.spec.pump if line.rate.moved else None
-    knob = pump.sets if pump else "setting"
-    return f"{knob} {shown(float(line.setting.setting_pct[0]))} %", line.setting.reach.owner
-
-
 def _cells(line: FeedLine, control: str, *, tight: bool, bed: bool) -> tuple[_Cell, ...]:
     product, rate = line.product, line.rate
     own = (f"in {line.step}: {product.product.name} ({product.product.formula}), {PERCENT * product.strength:.3g} % by "
@@ -129,7 +105,8 @@ def feeds_block(answer: Answer, width: float, scale: float = 1.0) -> Block:
     parts = [Block((Line(0.0, 0.03, SET if answer.feasible else NOT_SET, 12.0, True), *titles), (0.26,), 0.29)]
     told: set[str] = set()
     for line in answer.feeds:
-        told_of = _cells(line, _control(answer, line), tight=tight, bed=(line.step, line.product.name) in answer.beds)
+        bed = (line.step, line.product.name) in answer.beds
+        told_of = _cells(line, control_words(answer, line), tight=tight, bed=bed)
         cells = [_cell_block(c, x, room, scale, tight) for c, x, room in zip(told_of, lefts, rooms, strict=True)]
         row = tuple(item for cell in cells for item in cell.lines)
         parts.append(Block(row, (), max(c.height for c in cells)))
@@ -143,19 +120,6 @@ def feeds_block(answer: Answer, width: float, scale: float = 1.0) -> Block:
     if not answer.feeds:
         parts.append(block_of(["No step of this plan doses a product."], width, 10.0))
     return stacked(*parts)
-
-
-def _control(answer: Answer, line: FeedLine) -> str:
-    """How far the dose of a line may go while every window is kept, in few words."""
-    for r in answer.ranges:
-        if r.product.name == line.product.name and np.isfinite(r.least[0]):
-            low, high = (shown(line.mg_l_product * float(end[0])) for end in (r.least, r.most))
-            several = sum(d.product.name == r.product.name for _, d in answer.train.doses()) > 1
-            also = ", its other feeds alike" if several else ""
-            if r.least[0] == 0.0:
-                return f"at most {high} mg/L{also}" if np.isfinite(r.most[0]) else ""
-            return (f"keep {low} mg/L or more" if np.isinf(r.most[0]) else f"keep {low} to {high} mg/L") + also
-    return ""
 
 
 def _bases(answer: Answer) -> list[str]:

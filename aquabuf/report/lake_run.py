@@ -39,6 +39,7 @@ from aquabuf.readings.result import join_readings
 from aquabuf.readings.source import open_any, resolve_map
 from aquabuf.readings.titration.paths import TitrationFiles
 from aquabuf.report.files import OutputFolder
+from aquabuf.report.html.lake_page import lake_page
 from aquabuf.report.lake_blocks import LakeRun
 from aquabuf.report.lake_summary import lake_report, lake_summary
 from aquabuf.report.run import FAILED_RUN_FILES, sha256
@@ -61,6 +62,7 @@ OUTPUT_FILES = (
     "recovery.csv",
     "checks.csv",
     "rejected.csv",
+    "report.html",
     "report.txt",
     "run.json",
     "lakes.png",
@@ -138,11 +140,13 @@ def assess_survey(
                 titrated.in_words(files.titrations.points.name) if files.titrations else [],
             )
             _write(out, _tables(found, run, options, limits), options)
-            if figure:
-                _draw(found, run, out)
+            drawings = _draw(found, run, out) if figure else []
             record = _record(files, hashes, options, rules, run, limits)
             out.part("run.json").write_text(json.dumps(record, indent=1, ensure_ascii=False) + "\n", encoding="utf-8")
-            out.part("report.txt").write_text(lake_report(run), encoding="utf-8")
+            report, page = lake_report(run), out.part("report.html")
+            out.part("report.txt").write_text(report, encoding="utf-8")
+            page.write_text(lake_page(run, report=report, record=record, written=out.written, drawings=drawings),
+                            encoding="utf-8")
             written = [name for name in OUTPUT_FILES if fnmatch.filter(out.written, name)]
     if not len(found.results):
         raise InputError(f"{failure} rejected.csv in {folder.name} names each with its remedy.")
@@ -270,7 +274,9 @@ def _write(out: OutputFolder, tables: Mapping[str, pd.DataFrame], options: LakeO
             writer.add(name, table)
 
 
-def _draw(found: LakeAssessment, run: LakeRun, out: OutputFolder) -> None:
+def _draw(found: LakeAssessment, run: LakeRun, out: OutputFolder) -> list[str]:
+    """Write the figures; returns the panels for the page."""
+    from aquabuf.report.html.panels import lake_drawings
     from aquabuf.report.lake_figures import save_lakes  # drawing is slow to import
     from aquabuf.report.trend_figures import save_trends, sites_on_page
 
@@ -287,6 +293,7 @@ def _draw(found: LakeAssessment, run: LakeRun, out: OutputFolder) -> None:
             name = "trends" if page == 1 else f"trends_{page}"
             paths = {kind: out.part(f"{name}.{kind}") for kind in ("png", "svg")}
             save_trends(run.series, run.trends, paths, source=run.source, sites=sites)
+    return lake_drawings(run)
 
 
 def _record(

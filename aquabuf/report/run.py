@@ -21,6 +21,7 @@ from aquabuf.errors import FileError, InputError
 from aquabuf.readings.source import open_any, resolve_map
 from aquabuf.readings.titration.paths import TitrationFiles
 from aquabuf.report.files import OutputFolder
+from aquabuf.report.html.assess_page import AssessRows, assess_page
 from aquabuf.report.summary import summary_text
 from aquabuf.report.tables import GrowingTables, csv_text, result_digits, rounded
 from aquabuf.report.tally import Tally
@@ -28,8 +29,8 @@ from aquabuf.tables import read_table
 
 __all__ = ["OUTPUT_FILES", "assess_file", "sha256"]
 
-OUTPUT_FILES = ("results.csv", "verdicts.csv", "checks.csv", "curves.csv", "rejected.csv", "run.json", "samples.png",
-                "samples.svg")
+OUTPUT_FILES = ("results.csv", "verdicts.csv", "checks.csv", "curves.csv", "rejected.csv", "report.html", "run.json",
+                "samples.png", "samples.svg")
 SECONDS_PER_DRAW = 7e-6  # on one core, measured; only for the notice
 FAILED_RUN_FILES = ("rejected.csv", "run.json")  # of a run that could assess no row
 CHUNK_ROWS = 16_384      # long enough for the fixed cost of a piece not to count, short enough for the cache
@@ -56,7 +57,7 @@ def assess_file(path: Path, folder: Path, options: Options, *, mapping: str | Pa
     hashes |= {f"titration {name}": sha256(p) for name, p in (titrations.given() if titrations else {}).items()}
     pieces = open_any(path, map_file, CHUNK_ROWS)
     titrated = Titrated() if titrations is None else titrated_by(titrations)
-    tally, few = Tally(), _fewer_rows_than(path, ALL_CHECKS_UP_TO)
+    tally, rows, few = Tally(), AssessRows(), _fewer_rows_than(path, ALL_CHECKS_UP_TO)
     if not few and options.draws:
         minutes = ALL_CHECKS_UP_TO * options.draws * SECONDS_PER_DRAW / 60.0
         notify(f"{options.draws:,} draws for each of more than {ALL_CHECKS_UP_TO:,} rows take about {minutes:.0f} "
@@ -70,14 +71,14 @@ def assess_file(path: Path, folder: Path, options: Options, *, mapping: str | Pa
                                     ("checks.csv", part.checks), ("rejected.csv", part.rejected)):
                     writer.add(name, table)
                 tally.add(part)
+                rows.add(part)
             writer.add("checks.csv", tally.file_checks())
         if not tally.refused_rows:
             out.drop("rejected.csv")
         if tally.assessed:
             curves = tally.curves(options)
             out.part("curves.csv").write_text(csv_text(rounded(curves, {"ph": 2}), header=True), encoding="utf-8")
-            if figure:
-                _draw(tally, curves, out, path.name)
+            drawings = _draw(tally, curves, out, path.name) if figure else []
         else:
             failure = _nothing_assessed(path.name, tally)
             if (folder / OUTPUT_FILES[0]).exists():  # a failed run must not take an earlier result away
@@ -88,10 +89,15 @@ def assess_file(path: Path, folder: Path, options: Options, *, mapping: str | Pa
             tally.titrations = titrated.in_words(titrations.points.name)
         record = _record(path.name, hashes, options, rules, tally, all_checks=few)
         out.part("run.json").write_text(json.dumps(record, indent=1, ensure_ascii=False) + "\n", encoding="utf-8")
-        written = [name for name in OUTPUT_FILES if name in out.written]
+        if tally.assessed:
+            page = out.part("report.html")
+            written = [name for name in OUTPUT_FILES if name in out.written]
+            summary = summary_text(tally, options, rules, source=path.name, files=written)
+            page.write_text(assess_page(tally, rows, options, rules, source=path.name, summary=summary, record=record,
+                                        written=written, drawings=drawings), encoding="utf-8")
     if not tally.assessed:
         raise InputError(f"{failure} rejected.csv in {folder.name} names each with its remedy.")
-    return summary_text(tally, options, rules, source=path.name, files=written)
+    return summary
 
 
 def _nothing_assessed(name: str, tally: Tally) -> str:
@@ -100,10 +106,13 @@ def _nothing_assessed(name: str, tally: Tally) -> str:
             f"({count} x).")
 
 
-def _draw(tally: Tally, curves: pd.DataFrame, out: OutputFolder, source: str) -> None:
+def _draw(tally: Tally, curves: pd.DataFrame, out: OutputFolder, source: str) -> list[str]:
+    """Write the figure; returns its panels for the page."""
     from aquabuf.report.figures import save_samples  # drawing is slow to import
+    from aquabuf.report.html.panels import sample_drawings
 
     save_samples(tally, curves, {kind: out.part(f"samples.{kind}") for kind in ("png", "svg")}, source=source)
+    return sample_drawings(tally, curves)
 
 
 def sha256(path: Path) -> str:

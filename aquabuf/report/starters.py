@@ -1,4 +1,4 @@
-"""Starter files of every kind: tables of readings, maps, limits, schemes, event water, plans, titrations."""
+"""Starter files of every kind: tables of readings, maps, limits, schemes, event water, plans, wastes, titrations."""
 
 from __future__ import annotations
 
@@ -13,7 +13,8 @@ __all__ = ["starter", "starter_kinds"]
 
 LIMITS_KIND = "limits"
 TITRATION_KINDS = ("titration_points", "titration_samples")
-FILES = {"long_map": "toml", "scheme": "toml", "event": "toml", "plan": "toml"} | dict.fromkeys(TITRATION_KINDS, "csv")
+FILES = {"long_map": "toml", "scheme": "toml", "event": "toml", "plan": "toml", "tank": "toml"} | dict.fromkeys(
+    TITRATION_KINDS, "csv")
 
 
 def starter(kind: str) -> str:

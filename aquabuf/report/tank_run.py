@@ -28,7 +28,8 @@ __all__ = ["OUTPUT_FILES", "TankRun", "tank_stream"]
 
 KINDS = ("png", "svg")
 FIGURES = ("design", "simulation")
-OUTPUT_FILES = ("report.txt", "design.json", *TABLES, "run.json", *(f"{name}.{kind}" for name in FIGURES for kind in KINDS))
+OUTPUT_FILES = ("report.txt", "design.json", *TABLES, "run.json",
+                *(f"{name}.{kind}" for name in FIGURES for kind in KINDS))
 LIBRARIES = ("numpy", "scipy", "pandas")
 
 
@@ -101,8 +102,9 @@ def _record(found: Design, record: Mapping[str, Any], files: Mapping[str, str], 
     return {
         "program": "aquabuf", "version": aquabuf.__version__, "command": "tank",
         "versions": {name: version(name) for name in LIBRARIES}, "files": dict(files), "sha256": dict(hashes),
-        "options": {"simulation": simulate, "cases": job.trial.cases if cases is None else cases, "days": job.trial.days,
-                    "step_s": None if found.trial is None else found.trial.step_s, "seed": job.trial.seed},
+        "options": {"simulation": simulate, "cases": job.trial.cases if cases is None else cases,
+                    "days": job.trial.days, "step_s": None if found.trial is None else found.trial.step_s,
+                    "seed": job.trial.seed},
         "accepted": record["accepted"], "verdict": record["verdict"],
         "constants": [dict(row) for row in read_table("constants") if row["regime"] in ("fresh", "both")],
         "assumptions": record["assumptions"], "notes": list(job.notes),

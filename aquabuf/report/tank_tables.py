@@ -11,12 +11,14 @@ import pandas as pd
 from aquabuf.assess.tank.basis import basis_of
 from aquabuf.assess.tank.demand import demand_eq_l
 from aquabuf.assess.tank.design import Design
+from aquabuf.assess.tank.feed import turndown_words
 from aquabuf.assess.tank.job import Job
 from aquabuf.assess.tank.mixing import places
 from aquabuf.assess.tank.monte import MonteCarlo
 from aquabuf.assess.tank.rules import rules_in
 from aquabuf.assess.tank.trial import ENOUGH, Trial
-from aquabuf.report.dose_lines import aligned, figure, titled
+from aquabuf.report.dose_lines import aligned, bullet, figure, titled
+from aquabuf.report.tank_blocks import MILLI, number, tanks_asked
 
 __all__ = ["TABLES", "curve_log", "rule_rows", "tank_tables"]
 
@@ -24,7 +26,6 @@ TABLES = ("curve.csv", "demand.csv", "reagents.csv", "equalization.csv", "stages
           "cases.csv", "faults.csv", "side_effects.csv", "sensitivity.csv", "storage.csv", "rules.csv")
 LOG_STEP, LOG_AROUND = 0.25, 1.0  # pH of the printed curve, and how far it runs past waste and window
 FLAT = str | int | float | bool | None
-MILLI = 1e3
 
 
 def tank_tables(found: Design, record: Mapping[str, Any]) -> dict[str, pd.DataFrame]:
@@ -101,23 +102,22 @@ def rule_rows(found: Design, record: Mapping[str, Any]) -> list[dict[str, Any]]:
 
     tanks = record["stage_choice"]["tanks"]
     for o in record["stage_choice"]["rules"]:
-        wants = o["tanks"]
-        many = "" if wants is None else f"{'at least ' if o['at_least'] else ''}{wants} tank{'' if wants == 1 else 's'}: "
-        add("number of tanks", o["rule"], f"{many}{o['words']}", o["source"], None if wants is None else tanks >= wants)
+        add("number of tanks", o["rule"], f"{tanks_asked(o)}{o['words']}", o["source"],
+            None if o["tanks"] is None else tanks >= o["tanks"])
     for stage in found.layout.stages:
         r = stage.residence
         for told in r.rules:
-            add(f"residence time, {stage.name}", getattr(told, "key", getattr(told, "name", "")),
-                told.words or r.words, told.told_by if hasattr(told, "told_by") else told.source)
+            add(f"residence time, {stage.name}", told.words or r.words, _span(told.low, told.high, told.unit),
+                f"{told.source} ({told.mark})")
         for s in stage.mixer.standings:
             add(f"mixing, {stage.name}", s.rule.key, s.words, s.source, s.kept)
         for p in stage.mixer.powers:
             add(f"mixer power, {stage.name}", p.rule.key, p.words, p.rule.told_by,
                 bool(p.low_w <= stage.mixer.power_w <= p.high_w))
         for feed in stage.feeds.values():
-            for words in feed.devices:
-                add(f"feeder, {stage.name}, {feed.reagent.name}", "turndown", words.rpartition(" (")[0],
-                    words.rpartition(" (")[2].removesuffix(")"))
+            for device, serves, _ in turndown_words(feed.need):
+                add(f"feeder, {stage.name}, {feed.reagent.name}", device.key,
+                    f"turndown {device.range_words}, asked for {feed.need.device_turndown:.3g}", device.told_by, serves)
     for place in places():
         add("places in a tank", place.key, place.words, place.told_by)
     for held in found.containments:
@@ -125,14 +125,21 @@ def rule_rows(found: Design, record: Mapping[str, Any]) -> list[dict[str, Any]]:
     for days in rules_in("supply"):
         add("storage", days.key, f"{days.value:g} d: {days.words}", days.told_by)
     for reason in found.batch_reasons:
-        add("batch instead", reason.name, f"{reason.words} ({reason.quantity} {reason.value:.3g}, rule {reason.operator} "
-            f"{reason.limit:g} {reason.unit})", reason.source, reason.holds)
+        add("batch instead", reason.name, f"{reason.words} ({reason.quantity} {reason.value:.3g}, rule "
+            f"{reason.operator} {reason.limit:g} {reason.unit})", reason.source, reason.holds)
     add("acceptance", "share of cases", f"at least {100.0 * ENOUGH:.0f} % of the simulated cases keep the time rule",
         "practice, no source", None if found.trial is None or found.trial.monte is None else found.trial.accepted)
     for e in record["side_effects"]:
         if e["rule"]:
-            add(f"side effect, {e['name']}", e["severity"], e["rule"], e["source"])
+            add(f"side effect, {e['reagent']}", e["name"], e["rule"], e["source"])
     return list({tuple(row.items()): row for row in rows}.values())
+
+
+def _span(low: float, high: float, unit: str) -> str:
+    """A range of which either end may be missing."""
+    known = [f"{v:g}" for v in dict.fromkeys((low, high)) if np.isfinite(v)]
+    begin = "at most " if not np.isfinite(low) else "at least " if not np.isfinite(high) else ""
+    return f"{begin}{' to '.join(known)} {unit}"
 
 
 # ---------------------------------------------------------------- the curve for the log
@@ -148,14 +155,16 @@ def curve_log(job: Job) -> str:
     ph = np.arange(np.floor(first / LOG_STEP), np.ceil(last / LOG_STEP) + 1.0) * LOG_STEP
     c = mean.amounts[:, None]
     strong, buffer = readout.base_at(ph, c) - mean.base_eq_l, readout.buffer_at(ph, c)
-    fed = {r.name: MILLI * r.kg_per_eq * demand_eq_l(readout, mean.base_eq_l, c, ph, r, carbon_carrier=basis.chem.carbon_carrier)
+    carbon = basis.chem.carbon_carrier
+    fed = {r.name: MILLI * r.kg_per_eq * demand_eq_l(readout, mean.base_eq_l, c, ph, r, carbon_carrier=carbon)
            for r in basis.chosen.values()}
     head = [["", "pH", "base", *fed, "buffer", "gain"],
             ["", "", "meq/L", *("kg/m³" for _ in fed), "meq/L per pH", "pH per meq/L"]]
     rows = [["*" if job.window.low <= x <= job.window.high else "", f"{x:.2f}", figure(MILLI * y, 3),
-             *(figure(float(kg[k]), 3) for kg in fed.values()), figure(MILLI * b, 4), figure(1.0 / (MILLI * b), 3)]
+             *(figure(float(kg[k]), 3) for kg in fed.values()), number(MILLI * float(b)), number(1.0 / (MILLI * float(b)))]
             for k, (x, y, b) in enumerate(zip(ph, strong, buffer, strict=True))]
     return titled(
         f"{job.name}: titration curve of the mean waste, pH {start:.2f} as it comes, {basis.chem.t_c:.1f} °C",
-        aligned(head, rows), "  Base: strong base to reach the pH, per liter of waste; negative: acid. Reagents as delivered; "
-        "- where it lies\n  on the other side or out of reach. * within the window of the discharge.") + "\n"
+        aligned(head, rows),
+        bullet("* within the window of the discharge. Base: strong base per liter of waste to reach the pH; negative: "
+               "acid. Reagents as delivered; - where the pH lies on their other side or out of reach.", mark="  ")) + "\n"

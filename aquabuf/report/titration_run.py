@@ -3,8 +3,9 @@
 from __future__ import annotations
 
 import json
+from collections import Counter
 from collections.abc import Callable
-from dataclasses import asdict
+from dataclasses import asdict, dataclass, field
 from pathlib import Path
 
 import aquabuf
@@ -15,6 +16,7 @@ from aquabuf.errors import InputError
 from aquabuf.readings.titration.paths import TitrationFiles
 from aquabuf.readings.titration.reader import iter_titrations
 from aquabuf.report.files import OutputFolder
+from aquabuf.report.html.titration_page import TitrationRows, titration_page
 from aquabuf.report.run import sha256
 from aquabuf.report.tables import GrowingTables
 from aquabuf.report.titration_summary import titration_summary
@@ -24,9 +26,10 @@ from aquabuf.tables import read_table
 __all__ = ["ALL_FIGURES", "OUTPUT_FILES", "titrate_file"]
 
 FIGURE_NAMES = "titration_*.png"
-OUTPUT_FILES = ("alkalinity.csv", "findings.csv", "rejected.csv", "run.json", FIGURE_NAMES)
+OUTPUT_FILES = ("alkalinity.csv", "findings.csv", "rejected.csv", "report.html", "run.json", FIGURE_NAMES)
 FAILED_RUN_FILES = ("rejected.csv",)
 ALL_FIGURES = 10**9
+PAGE_TITRATIONS = 4  # whose figures are on the page
 SLOW_FROM = 100  # figures, from which the user is told
 
 
@@ -42,7 +45,7 @@ def titrate_file(files: TitrationFiles, folder: Path, options: TitrationOptions,
     """
     hashes = {name: sha256(path) for name, path in files.given().items()}
     pieces = iter_titrations(files.points, files.samples, points_map=files.points_map, samples_map=files.samples_map)
-    tally = TitrationTally()
+    tally, rows, drawings = TitrationTally(), TitrationRows(), PageDrawings()
     with OutputFolder(folder, OUTPUT_FILES, force=force, leftovers=FAILED_RUN_FILES) as out:
         with GrowingTables(out, {"alkalinity.csv": titration_digits(options)}) as tables:
             for t in pieces:
@@ -50,11 +53,12 @@ def titrate_file(files: TitrationFiles, folder: Path, options: TitrationOptions,
                 by_kilogram = "sample_mass_g" in columns
                 part = assess_titrations(t, options, by_kilogram=by_kilogram,
                                          by_liter="sample_volume_ml" in columns or not by_kilogram)
-                _draw(part, tally, out, figures, notify)
+                _draw(part, tally, drawings, out, figures, notify)
                 for name, table in (("alkalinity.csv", part.results), ("findings.csv", part.findings),
                                     ("rejected.csv", part.rejected)):
                     tables.add(name, table)
                 tally.add(t, part)
+                rows.add(part)
         if not tally.refusals:
             out.drop("rejected.csv")
         usable = tally.samples - tally.status["refused"]
@@ -67,10 +71,14 @@ def titrate_file(files: TitrationFiles, folder: Path, options: TitrationOptions,
         else:
             record = _record(files, hashes, options, tally)
             out.part("run.json").write_text(json.dumps(record, indent=1, ensure_ascii=False) + "\n", encoding="utf-8")
-        written = [name for name in OUTPUT_FILES if name in out.written] + ([FIGURE_NAMES] if tally.figures else [])
+            page = out.part("report.html")
+            written = [name for name in OUTPUT_FILES if name in out.written] + ([FIGURE_NAMES] if tally.figures else [])
+            summary = titration_summary(tally, options, source=files.points.name, files=written)
+            page.write_text(titration_page(tally, rows, source=files.points.name, summary=summary, record=record,
+                                           written=out.written, drawings=drawings.all()), encoding="utf-8")
     if not usable:
         raise InputError(f"{failure} rejected.csv in {folder.name} names each with its remedy.")
-    return titration_summary(tally, options, source=files.points.name, files=written)
+    return summary
 
 
 def _nothing(name: str, tally: TitrationTally) -> str:
@@ -80,8 +88,32 @@ def _nothing(name: str, tally: TitrationTally) -> str:
             f"({count} x).")
 
 
-def _draw(part: TitrationResult, tally: TitrationTally, out: OutputFolder, figures: int, notify: Callable[[str], None],
-          ) -> None:
+@dataclass(slots=True)
+class PageDrawings:
+    """Drawings of the few titrations that the page shows: those with a warning first, else the first of the file."""
+
+    warned: list[str] = field(default_factory=list)
+    calm: list[str] = field(default_factory=list)
+    _count: Counter = field(default_factory=Counter)
+
+    def add(self, part: TitrationResult, i: int) -> None:
+        """Draw titration `i` of a piece for the page if it may come onto it."""
+        warned = bool(part.results["warnings"].iloc[part.at[i]])
+        if self._count[True] >= PAGE_TITRATIONS or (not warned and sum(self._count.values()) >= PAGE_TITRATIONS):
+            return
+        from aquabuf.report.html.panels import titration_drawings
+
+        self._count[warned] += 1
+        (self.warned if warned else self.calm).extend(titration_drawings(part, i))
+
+    def all(self) -> list[str]:
+        """At most those of `PAGE_TITRATIONS`."""
+        each = 2
+        return [*self.warned, *self.calm][:each * PAGE_TITRATIONS]
+
+
+def _draw(part: TitrationResult, tally: TitrationTally, drawings: PageDrawings, out: OutputFolder, figures: int,
+          notify: Callable[[str], None]) -> None:
     """Figures of the piece while the number asked for is not reached; their names go into the table.
 
     Files are numbered by the place in alkalinity.csv: a sample's name never becomes a file name.
@@ -95,6 +127,7 @@ def _draw(part: TitrationResult, tally: TitrationTally, out: OutputFolder, figur
     for i, place in enumerate(part.at[:room].tolist()):
         names[place] = FIGURE_NAMES.replace("*", f"{tally.samples + place + 1:05d}")
         save_titration(part, i, out.part(names[place]))
+        drawings.add(part, i)
         tally.figures += 1
         if tally.figures == SLOW_FROM:
             notify("drawing; each figure takes about a quarter of a second. --figures 0 leaves them out.")

@@ -23,7 +23,8 @@ from aquabuf.report.dose_figures import (
 )
 from aquabuf.report.dose_page import block_of, stacked, text_width, wrapped
 from aquabuf.report.dose_panels import fault_names, main_curve, train_labels
-from aquabuf.report.dose_sheet_words import LOG, fault_notes, rate_words, setting_words
+from aquabuf.report.dose_settings import rate_words, setting_words
+from aquabuf.report.dose_sheet_words import LOG, fault_notes
 
 KINDS = ("png", "svg", "pdf")
 SEVERAL = ("upland", "minimal", "many", "guarded", "nitrify", "blend")  # plans whose doses were found

@@ -19,8 +19,8 @@ from aquabuf.assess.plant.plan_file import read_plan
 from aquabuf.report.dose_blocks import _spreads, upset
 from aquabuf.report.dose_lines import aligned, bullet, figure, sentence
 from aquabuf.report.dose_panels import smooth_response
+from aquabuf.report.dose_settings import control_words, setting_words
 from aquabuf.report.dose_sheet import dose_sheet
-from aquabuf.report.dose_sheet_words import _control, setting_words
 
 PAGE_WIDTH = 100
 TWO_PAGES = 160  # lines, of a plan with everything in it
@@ -315,7 +315,7 @@ def test_a_low_end_of_nothing_is_no_leave_to_stop(tmp_path):
     line = next(x for x in answer.feeds if x.product.name == "bleach")
     found = next(r for r in answer.ranges if r.product.name == "bleach")
     assert found.least[0] == 0.0
-    assert _control(answer, line).startswith("at most ")
+    assert control_words(answer, line).startswith("at most ")
     assert found.words().endswith("disinfection is no window here and sets its least dose")
 
 

@@ -14,6 +14,8 @@ from aquabuf.assess.limits import shipped_limits
 from aquabuf.assess.limits_file import read_limits
 from aquabuf.assess.options import Options
 from aquabuf.assess.sample.columns import limit_quantities
+from aquabuf.assess.tank.job_file import read_stream
+from aquabuf.assess.tank.waste import chemistry
 from aquabuf.assess.titration.options import TitrationOptions
 from aquabuf.errors import InputError
 from aquabuf.readings.result import join_readings
@@ -128,6 +130,35 @@ def test_starter_scheme_and_event_serve_a_run(lake_starters, tmp_path):
     assert record["event"][0].startswith(read_event(event).name)
     shares = pd.read_csv(tmp_path / "out" / "episodes.csv")["event_fraction"].unique()
     assert_allclose(shares, read_event(event).fractions)
+
+
+# ------------------------------------------------------------------ wastes
+
+
+def test_starter_stream_is_read_as_it_is(table):
+    """Two invented wastes, one in batches; base of the rinse by hand (98.079 g/mol, two equivalents); its pH agrees."""
+    job = read_stream(table(starter("tank"), "stream.toml"))
+    assert [a.waste.name for a in job.arrivals] == ["rinse", "spent cleaner"]
+    assert [a.batch is None for a in job.arrivals] == [True, False]
+    chem = chemistry(job.wastes)
+    assert_allclose(chem.base_eq_l[0], -2 * 0.40 / 98.079, rtol=1e-4)
+    assert_allclose(chem.base_eq_l[1], 4 / 39.997 + 2 * 1.5 / 105.988, rtol=1e-4)
+    assert abs(chem.ph[0] - job.wastes[0].ph) < 0.3
+    assert (job.notes, [w for w in chem.warnings if "imply" in w]) == ((), [])
+
+
+def test_remarks_of_the_starter_stream_are_true(table):
+    """What stands behind a # can be used: an own acid, stages, a profile; the titration and the profile need their tables."""
+    text = starter("tank")
+    for words in ("[acids.additive]", "pk = [3.9, 9.1]", "molar_mass = 210", "[layout]", "stages = 2", "set_points = [4.5, 7.5]"):
+        assert f"# {words}" in text
+        text = text.replace(f"# {words}", words)
+    job = read_stream(table(text.replace("calcium =", 'additive = "21 mg/L", calcium ='), "stream.toml"))
+    assert (job.wishes.stages, job.wishes.set_points) == (2, (4.5, 7.5))
+    assert_allclose(job.wastes[0].total("additive"), 1e-4)
+    table("time (h),flow (m3/h),strength rinse\n0,4,1\n1,6,2\n", "flows.csv")
+    uncommented = text.replace("# [profile]", "[profile]").replace('# file = "flows.csv"', 'file = "flows.csv"')
+    assert read_stream(table(uncommented, "stream.toml")).profile is not None
 
 
 # ------------------------------------------------------------------ long tables

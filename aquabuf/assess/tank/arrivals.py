@@ -22,10 +22,11 @@ HARDLY = 1e-6            # steady flow beside batches where there is none, as a 
 
 
 def mean_shares(arrivals: Sequence[Arrival]) -> np.ndarray:
-    """Share of each waste in the mean volume that comes."""
-    flows = np.array([a.mean_m3_h or 0.0 for a in arrivals])
-    total = float(flows.sum())
-    return flows / total if total > 0.0 else np.full(flows.size, 1.0 / flows.size)
+    """Share of each waste in the mean volume that comes; even where a flow is not known."""
+    if any(a.mean_m3_h is None for a in arrivals):
+        return np.full(len(arrivals), 1.0 / len(arrivals))
+    flows = np.array([a.mean_m3_h for a in arrivals], dtype=float)
+    return flows / flows.sum()
 
 
 def statistics_of(arrivals: Sequence[Arrival], days: float, step_h: float = STEP_H) -> Statistics:

@@ -156,7 +156,7 @@ def _dissolved_product(place: Place, name: str, product: Product) -> Product:
 
 
 def _mol_l(place: Place, name: str, value: Any, meant: Meant, own: OwnAcids) -> float:
-    example = f"Write for example {_quoted(name)} = \"120 mg/L\"."
+    example = f"Write for example {_quoted(name)} = \"120 mg/L{_basis_of(meant)}\"."
     if not isinstance(value, str):
         raise place.error(f"{name} must be a concentration with its unit, in quotes; found {shown_value(value)}. "
                           f"{example}", name)
@@ -170,6 +170,14 @@ def _mol_l(place: Place, name: str, value: Any, meant: Meant, own: OwnAcids) -> 
     if not abs(found) <= MOST_MOL_L:
         raise place.error(f"{name} must be at most {MOST_MOL_L:g} mol/L; found {value!r}. Check value and unit.", name)
     return found
+
+
+def _basis_of(meant: Meant) -> str:
+    """What a mass of a total counts, in words, where it must be said."""
+    column = _totals().get(INORGANIC if meant == CARBON else meant, "") if isinstance(meant, str) else ""
+    column = "alkalinity_eq_l" if meant == ALKALINITY else column
+    bases = quantities()[column].bases if column else ()
+    return f" as {bases[0]}" if bases else ""
 
 
 def _quoted(name: str) -> str:
@@ -200,9 +208,10 @@ def _converted(name: str, meant: Meant, number: float, unit: str, own: OwnAcids)
 
 def _equivalents(product: Product, unit: str) -> float:
     """Equivalents of a mole, where they do not hang on the end point."""
-    many = [name for name in product.adds if name in acid_table()
-            and acid_table()[name].zero_level < len(acid_table()[name].pk) > 1]
-    if many:
+    acids = [acid_table()[name] for name in product.adds if name in acid_table()]
+    if product.name in free_acids() and len(acids[0].pk) == 1:
+        return 1.0
+    if any(acid.zero_level < len(acid.pk) > 1 for acid in acids):
         raise InputError(f"loses protons in steps, so that its equivalents hang on the end point; found {unit!r}. Give "
                          f"it in {PLAIN_UNITS}")
     per_mole = abs(product.adds["alkalinity"])

@@ -6,7 +6,7 @@ Numbers with a dimension are strings with their unit, as in plan files. Every mi
 from __future__ import annotations
 
 import tomllib
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from pathlib import Path
 from types import MappingProxyType
 from typing import Any
@@ -17,7 +17,7 @@ from aquabuf.assess.plant.plan_place import Place
 from aquabuf.assess.plant.plan_store import Told, read_product
 from aquabuf.assess.plant.store import Stocked
 from aquabuf.assess.plant.toml_lines import toml_lines
-from aquabuf.assess.tank.job import Job, Site, Trial, Window, Wishes
+from aquabuf.assess.tank.job import Arrival, Job, Site, Trial, Window, Wishes
 from aquabuf.assess.tank.job_wastes import beside, not_there, read_wastes
 from aquabuf.assess.tank.reagents import Reagent, reagent_of
 from aquabuf.errors import FileError, InputError
@@ -54,7 +54,7 @@ def read_stream(path: str | Path) -> Job:
     window = _window(top, content, told)
     trial = _trial(top, content, told)
     if profile is not None:
-        _tell_profile(profile, trial.days, told)
+        _tell_profile(top.inner("profile", label="[profile]"), profile, arrivals, trial.days, told)
     reagents, residence = _reagents(top, content, told)
     use = _section(top, content, "use", told)
     for kind in ("base", "acid"):
@@ -186,8 +186,20 @@ def _table(file: Path, names: tuple[str, ...], hold_gap_s: float) -> ProfileTabl
         raise InputError(str(error)) from None
 
 
-def _tell_profile(table: ProfileTable, days: float, told: Told) -> None:
-    """What is made of a profile: repeated where it is short, its temperature left aside."""
+def _tell_profile(place: Place, table: ProfileTable, arrivals: Sequence[Arrival], days: float, told: Told) -> None:
+    """What is made of a profile: shares of several wastes, repetition where it is short, temperature left aside."""
+    known = [a.waste.name for a in arrivals if a.mean_m3_h is not None]
+    columns = {name for name in (*table.strength, *table.base_eq_l) if name}
+    if len(arrivals) > 1:
+        if len(known) == len(arrivals):
+            told.assume("[profile]: each waste has its share of the mean flows, times its strength in the table")
+        elif columns == {a.waste.name for a in arrivals}:
+            told.assume("[profile]: the strength of each waste in the table is its share of the flow, the rest water")
+        else:
+            no_flow, no_column = (next(a.waste.name for a in arrivals if a.waste.name not in names)
+                                  for names in (known, columns))
+            raise place.error("several wastes need the flow of each, or a column of strength for each; found no flow "
+                              f"of {no_flow!r}, and in {table.name} no column for {no_column!r}. Add either.", "file")
     lasts = float(table.time_s[-1] - table.time_s[0] + table.step_s) / S_PER_D
     if lasts < days:
         told.assume(f"[profile]: its {lasts:.3g} days are repeated over the {days:g} days of the simulation")

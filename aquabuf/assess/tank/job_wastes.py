@@ -138,6 +138,8 @@ def _tell_course(place: Place, found: Checked, told: Told, in_profile: bool) -> 
                     "file gives no spread")
     if in_profile:
         idle = [key for key in ("least", "most", "daily", "batch") if key in found.values]
+        if "strength" in found.values:
+            told.assume(f"{place.label}: its spread comes on top of the strengths of [profile]")
         if idle:
             told.notes.append(f"{place.label}: {', '.join(idle)} left aside, as [profile] has the flow over time")
     elif "batch" not in found.values and not {"most", "daily"} & set(found.values):

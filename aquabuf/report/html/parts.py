@@ -6,11 +6,12 @@ import re
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from html import escape
+from urllib.parse import quote
 
 from aquabuf.errors import InputError
 
-__all__ = ["TONES", "Column", "bullets", "card", "details", "drawing", "facts", "paragraph", "section", "shown_text",
-           "table"]
+__all__ = ["TONES", "Column", "Link", "bullets", "card", "details", "drawing", "facts", "gallery", "paragraph",
+           "section", "shown_text", "table"]
 
 TONES: Mapping[str, str] = {"stop": "STOP", "warn": "WARNING", "good": "OK", "note": "NOTE"}  # sign beside the color
 LONGEST_TEXT = 400   # of a text from a file; the rest is cut with a mark
@@ -24,9 +25,26 @@ def shown_text(value: object, longest: int = LONGEST_TEXT) -> str:
     return escape(text if len(text) <= longest else f"{text[:longest]}…", quote=True)
 
 
-def paragraph(words: str, *, soft: bool = False) -> str:
-    """A paragraph, empty for no words."""
-    return f'<p{" class=soft" if soft else ""}>{shown_text(words, 4000)}</p>' if words else ""
+@dataclass(frozen=True, slots=True)
+class Link:
+    """Words that lead to a file of the same folder."""
+
+    words: str
+    file: str
+
+    def html(self) -> str:
+        """The link; a name with a slash, colon or hash in it still leads nowhere but into the folder."""
+        return f'<a href="{quote(self.file, safe="")}">{shown_text(self.words)}</a>'
+
+
+def _cell(value: str | Link) -> str:
+    return value.html() if isinstance(value, Link) else shown_text(value)
+
+
+def paragraph(words: str, *, soft: bool = False, link: Link | None = None) -> str:
+    """A paragraph, with a link at its end if one is given; empty for no words."""
+    more = f" {link.html()}" if link else ""
+    return f'<p{" class=soft" if soft else ""}>{shown_text(words, 4000)}{more}</p>' if words else ""
 
 
 def section(title: str, *body: str, name: str = "") -> str:
@@ -83,16 +101,19 @@ class Column:
         return f'<th scope="col"{" class=number" if self.number else ""}{hint}>{shown_text(self.title)}</th>'
 
 
-def table(columns: Sequence[Column], rows: Iterable[Sequence[str]], *, caption: str = "", tones: Sequence[str] = (),
-          sortable: bool = True) -> str:
-    """A table of texts; the first column names the rows. `tones` marks rows by color, so the rows must say it too."""
+def table(columns: Sequence[Column], rows: Iterable[Sequence[str | Link]], *, caption: str = "",
+          tones: Sequence[str] = (), sortable: bool = True) -> str:
+    """A table of texts and links; the first column names the rows.
+
+    tones : marks rows by color, so the rows must say it too.
+    """
     lines = []
     for k, row in enumerate(rows):
         if len(row) != len(columns):
             raise InputError(f"row {k + 1} of a table must have {len(columns)} cells; found {len(row)}. Fill it up.")
         tone = f' class="{tones[k]}"' if k < len(tones) and tones[k] in ("stop", "warn") else ""
-        cells = [f'<th scope="row">{shown_text(row[0])}</th>']
-        cells += [f'<td{" class=number" if c.number else ""}>{shown_text(v)}</td>'
+        cells = [f'<th scope="row">{_cell(row[0])}</th>']
+        cells += [f'<td{" class=number" if c.number else ""}>{_cell(v)}</td>'
                   for c, v in zip(columns[1:], row[1:], strict=True)]
         lines.append(f"<tr{tone}>{''.join(cells)}</tr>")
     if not lines:
@@ -136,3 +157,9 @@ def drawing(svg: str, *, name: str, alt: str, caption: str = "") -> str:
     words = f"<figcaption>{shown_text(caption, 1000)}</figcaption>" if caption else ""
     return (f'<figure>\n<div class="drawing">\n<svg xmlns="http://www.w3.org/2000/svg" viewBox="{box.group(1)}" '
             f'role="img" aria-label="{said}">{inner.strip()}\n</div>\n{words}\n</figure>')
+
+
+def gallery(drawings: Iterable[str]) -> str:
+    """Drawings side by side where there is room; empty for none."""
+    inner = "\n".join(drawings)
+    return f'<div class="gallery">\n{inner}\n</div>' if inner else ""
