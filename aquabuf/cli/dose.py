@@ -45,7 +45,8 @@ def run(plan: Path, folder: Path, draws: int | None, figure: bool, force: bool) 
 
     The folder gets answer.json (everything, under documented keys), sheet.txt, doses.csv (with the feed), steps.csv
     (the water after every step), curves.csv, faults.csv, limits.csv, errors.csv, season.csv and season_doses.csv,
-    blend.csv, buffers.csv, run.json and figures, as far as the plan has something for them.
+    blend.csv, buffers.csv, report.html (all of it on a page, with sliders that answer what if), run.json and figures,
+    as far as the plan has something for them.
 
     Exit code 0: every dose is found, every target met, no guard rail passed. 1: the plan cannot be read, or it does not
     hold; then the results are written all the same, and the reason goes to standard error. 2: wrong usage.

@@ -12,6 +12,7 @@ from aquabuf import __version__
 from aquabuf.cli.assess import assess
 from aquabuf.cli.columns import columns
 from aquabuf.cli.dose import dose
+from aquabuf.cli.explain import explain
 from aquabuf.cli.lake import lake
 from aquabuf.cli.tank import tank
 from aquabuf.cli.template import template
@@ -63,6 +64,7 @@ def main() -> None:
 main.add_command(assess)
 main.add_command(columns)
 main.add_command(dose)
+main.add_command(explain)
 main.add_command(lake)
 main.add_command(tank)
 main.add_command(template)

@@ -1,4 +1,4 @@
-"""Solve a plan and write its results: the answer, the sheet for the wall, tables, figure, and what the run rests on."""
+"""Solve a plan and write its results: answer, sheet for the wall, page, tables, figures, and what the run rests on."""
 
 from __future__ import annotations
 
@@ -17,6 +17,7 @@ from aquabuf.assess.plant.plan_file import read_plan
 from aquabuf.report.dose_sheet import dose_sheet
 from aquabuf.report.dose_tables import dose_tables, sweeps
 from aquabuf.report.files import OutputFolder
+from aquabuf.report.html.dose_page import dose_page
 from aquabuf.report.run import sha256
 from aquabuf.report.summary import item
 from aquabuf.report.tables import GrowingTables
@@ -27,7 +28,7 @@ __all__ = ["OUTPUT_FILES", "DoseRun", "dose_plan"]
 OUTPUT_FILES = (
     "answer.json", "sheet.txt", "doses.csv", "steps.csv", "curves.csv", "faults.csv", "limits.csv", "errors.csv",
     "season.csv", "season_doses.csv", "blend.csv", "buffers.csv", "run.json", "dose.png", "dose.svg", "season.png",
-    "season.svg", "blend.png", "blend.svg")
+    "season.svg", "blend.png", "blend.svg", "report.html")
 KINDS = ("png", "svg")
 
 
@@ -61,7 +62,10 @@ def dose_plan(path: Path, folder: Path, *, force: bool = False, figure: bool = T
                 writer.add(name, table)
         if figure:
             _draw(answer, out)
-        _write_json(out, "run.json", _record(path, hashes, answer))
+        rests_on = _record(path, hashes, answer)
+        _write_json(out, "run.json", rests_on)
+        page = dose_page(answer, rests_on, written=out.written, figure=figure)
+        out.part("report.html").write_text(page, encoding="utf-8")
         written = [name for name in OUTPUT_FILES if fnmatch.filter(out.written, name)]
     files = item(f"Written to {folder.name}: {', '.join(written)}.", mark="")
     return DoseRun(f"{sheet}\n{files}\n", answer.reason)

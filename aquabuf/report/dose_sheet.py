@@ -25,7 +25,7 @@ from aquabuf.report.dose_blocks import (
 from aquabuf.report.dose_lines import aligned, block, bullet, calcite_words, figure, sentence, titled
 from aquabuf.report.summary import WIDTH, plural
 
-__all__ = ["SHOWN", "dose_sheet", "feed_words", "raw_words", "rule_lines", "stop_lines"]
+__all__ = ["dose_sheet", "feed_words", "raw_words", "rest_lines", "stop_lines"]
 
 SHOWN = (("ph", "pH"), ("alkalinity", "alk."), ("dic", "carbon"), ("calcium", "Ca"), ("hardness", "hard."),
          ("buffer_intensity", "buffer"), ("chloride_sulfate_ratio", "Cl/SO4"), ("larson_ratio", "Larson"),
@@ -224,16 +224,22 @@ def _targets(answer: Answer) -> str:
 
 
 def _rules(answer: Answer) -> str:
-    return block("RULES AND WARNINGS", rule_lines(answer))
+    return block("RULES AND WARNINGS", _rule_lines(answer))
 
 
-def rule_lines(answer: Answer) -> list[str]:
+def _rule_lines(answer: Answer) -> list[str]:
     """Warnings, broken rules, notes of plan and steps, then what was kept and what could not be judged."""
     lines = [f"{name}: {sentence(f.words)}{f' Rule: {f.rule}.' if f.rule else ''}{_next(f.next_step)}"
              for name, f in found_of(answer, "warning")]
     lines += [_broken(j) for j in answer.limits if j.broken]
     lines += [f"Plan: {sentence(note)}" for note in answer.plan.notes]
     lines += [f"{name}: {sentence(f.words)}" for name, f in found_of(answer, "note")]
+    return [*lines, *rest_lines(answer)]
+
+
+def rest_lines(answer: Answer) -> list[str]:
+    """How many rules are kept, and which could not be judged."""
+    lines = []
     kept = sum(not j.broken and np.isfinite(j.value) for j in answer.limits)
     unknown = dict.fromkeys(j.limit.name for j in answer.limits if not np.isfinite(j.value))
     if kept:

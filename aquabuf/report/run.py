@@ -52,9 +52,9 @@ def assess_file(path: Path, folder: Path, options: Options, *, mapping: str | Pa
     """
     map_file = None if mapping is None else resolve_map(mapping)
     rules = read_limits(limits, limit_quantities(options))
-    hashes = {"readings": sha256(path)} | {
-        name: sha256(p) for name, p in (("map", map_file), ("limits", limits)) if p is not None}
-    hashes |= {f"titration {name}": sha256(p) for name, p in (titrations.given() if titrations else {}).items()}
+    used = {"readings": path} | {name: p for name, p in (("map", map_file), ("limits", limits)) if p is not None}
+    used |= {f"titration {name}": p for name, p in (titrations.given() if titrations else {}).items()}
+    hashes = {name: sha256(p) for name, p in used.items()}
     pieces = open_any(path, map_file, CHUNK_ROWS)
     titrated = Titrated() if titrations is None else titrated_by(titrations)
     tally, rows, few = Tally(), AssessRows(), _fewer_rows_than(path, ALL_CHECKS_UP_TO)
@@ -87,7 +87,7 @@ def assess_file(path: Path, folder: Path, options: Options, *, mapping: str | Pa
                 out.drop(name)
         if titrations is not None:
             tally.titrations = titrated.in_words(titrations.points.name)
-        record = _record(path.name, hashes, options, rules, tally, all_checks=few)
+        record = _record({name: p.name for name, p in used.items()}, hashes, options, rules, tally, all_checks=few)
         out.part("run.json").write_text(json.dumps(record, indent=1, ensure_ascii=False) + "\n", encoding="utf-8")
         if tally.assessed:
             page = out.part("report.html")
@@ -138,13 +138,13 @@ def _fewer_rows_than(path: Path, count: int) -> bool:
     return True
 
 
-def _record(name: str, hashes: Mapping[str, str], options: Options, limits: tuple[Limit, ...], tally: Tally, *,
-            all_checks: bool) -> dict:
+def _record(files: Mapping[str, str], hashes: Mapping[str, str], options: Options, limits: tuple[Limit, ...],
+            tally: Tally, *, all_checks: bool) -> dict:
     """What the run rests on, for run.json: no clock, no paths."""
     regimes = {"fresh" if r == "fresh" else "salt" for r in tally.regimes} | {"both"}
     return {
-        "program": "aquabuf", "version": aquabuf.__version__, "command": "assess", "input": name,
-        "sha256": dict(hashes), "options": asdict(options),
+        "program": "aquabuf", "version": aquabuf.__version__, "command": "assess",
+        "input": files["readings"], "files": dict(files), "sha256": dict(hashes), "options": asdict(options),
         "samples": {"assessed": tally.assessed, "warned": tally.warned, "refused_rows": len(tally.refused_rows)},
         "known_pairs": dict(sorted(tally.pairs.items())), "status": dict(sorted(tally.statuses.items())),
         "ionic_strength_from": dict(sorted(tally.strengths.items())),

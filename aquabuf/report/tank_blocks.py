@@ -47,8 +47,8 @@ def stream(found: Design, record: Record) -> str:
              _comes(a)] for w, a in zip(s["wastes"], found.job.arrivals, strict=True)]
     head = [["waste", "known by its", "°C", "pH", "base meq/L", "comes"]]
     lines = [f"Together: {shown(s['mean_flow_m3_h'])} m³/h on average, {s['temperature_c']:.1f} °C, base "
-             f"{shown(MILLI * s['mean_base_eq_l'])} meq/L, pH {s['mean_ph']:.2f}. Base is strong base less strong acid, "
-             "or alkalinity; negative: an acid waste."]
+             f"{shown(MILLI * s['mean_base_eq_l'])} meq/L, pH {s['mean_ph']:.2f}. Base is strong base less strong "
+             "acid, or alkalinity; negative: an acid waste."]
     return titled("STREAM", aligned(head, rows, left=(0, 1, 5)), bullets([*lines, sentence(f"course: {s['course']}")]))
 
 
@@ -67,11 +67,11 @@ def demand(found: Design, record: Record) -> str:
     money = f"{found.job.currency or 'cost'}/d"
     head = [["reagent", "stream", "m³/h", "brought to", "pH", "eq/L", "kg/h", "L/h", money]]
     rows = [[d["reagent"] or "-", d["condition"], number(d["flow_m3_h"]), d["aim"], figure(d["ph"], 2),
-             number(d["eq_l"]), number(d["kg_h"]), _pumped(d["l_h"]), number(d["cost_per_day"])] for d in record["demand"]]
+             number(d["eq_l"]), number(d["kg_h"]), _pumped(d["l_h"]), number(d["cost_per_day"])]
+            for d in record["demand"]]
     words = [sentence(d["words"]) for d in record["demand"] if d["words"]]
     words.append("Least and most are the steps of the course that ask for the least and the most an hour, as the waste "
-                 "comes; what the tanks see behind equalization stands under FEEDS. kg as delivered, L as pumped, cost "
-                 "as if it lasted all day.")
+                 "comes, ahead of equalization. kg as delivered, L as pumped, cost as if it lasted all day.")
     return titled("REAGENT DEMAND", aligned(head, rows, left=(0, 1, 3)), bullets(words))
 
 
@@ -115,7 +115,8 @@ def window(found: Design, record: Record) -> str:
     w = record["window"]
     toward = share = ""
     if w["share_of_demand"] is not None:
-        share = (f", {PERCENT * w['share_of_demand']:.3g} % of the demand of {shown(MILLI * abs(w['demand_eq_l']))} meq/L")
+        need = shown(MILLI * abs(w["demand_eq_l"]))
+        share = f", {PERCENT * w['share_of_demand']:.3g} % of the demand of {need} meq/L"
         toward = (f" From the set point, {PERCENT * w['low_share']:.3g} % of the demand lies to the low end and "
                   f"{PERCENT * w['high_share']:.3g} % to the high end.")
     lines = [
@@ -148,12 +149,13 @@ def equalization(found: Design, record: Record) -> str:
     saves = any(r["saved_eq_d"] > 0.5 for r in rows)
     flows = any(r["overflow_share"] > 1e-6 for r in rows)
     table = [[">" if abs(r["volume_m3"] - e["content_m3"]) < SAME_M3 else "", number(r["volume_m3"]),
-              number(r["total_m3"]), f"{r['hold_h']:g}", f"{PERCENT * r['sd_share']:.0f}" if r["sd_share"] is not None else "-",
+              number(r["total_m3"]), f"{r['hold_h']:g}",
+              "-" if r["sd_share"] is None else f"{PERCENT * r['sd_share']:.0f}",
               number(MILLI * r["peak_eq_l"]), f"{figure(r['ph_low'], 1)} to {figure(r['ph_high'], 1)}",
               figure(r["flow_peak_factor"], 2), f"{PERCENT * r['overflow_share']:.1f}" if flows else "",
               number(r["saved_eq_d"]) if saves else ""] for r in rows]
-    said = ["> taken. Swings: standard deviation of what the stream asks for, over that of the stream as it comes. Largest "
-            "off: farthest from the mean."] if rows else []
+    said = ["> taken. Swings: standard deviation of what the stream asks for, over that of the stream as it comes. "
+            "Largest off: farthest from the mean."] if rows else []
     if rows and flows:
         said.append("Passes over: share of the water that comes while the volume for the flow is full.")
     return titled("EQUALIZATION", bullets(lines), aligned(head, table), bullets(said))
@@ -173,13 +175,14 @@ def stages(found: Design, record: Record) -> str:
     head = [["tank", "set", "liquid", "wide", "deep", "wall", "stays", "dead", "lag", "pumping", "turns", "power"],
             ["", "pH", "m³", "m", "m", "m", "min", "s", "s", "m³/h", "1/min", "kW"]]
     rows = [[s["name"], figure(s["setpoint_ph"], 2), number(s["volume_m3"]), number(s["diameter_m"]),
-             number(s["liquid_m"]), number(s["wall_m"]), number(s["residence_min"]), number(s["dead_time_s"]), number(s["lag_s"]),
+             number(s["liquid_m"]), number(s["wall_m"]), number(s["residence_min"]), number(s["dead_time_s"]),
+             number(s["lag_s"]),
              number(s["pumping_m3_h"]), number(s["turnover_per_min"]),
              f"{_kw(s['power_low_w'])} to {_kw(s['power_high_w'])}"] for s in record["stages"]]
     layout = found.layout
     lines = [sentence(record["stage_choice"]["why"]),
-             f"Sized for {shown(layout.peak_m3_h)} m³/h, the largest flow that reaches them; time of stay in the table "
-             f"at the mean of {shown(layout.mean_m3_h)} m³/h."]
+             f"Sized for {shown(layout.peak_m3_h)} m³/h, the largest flow that reaches them; time of stay in the "
+             f"table at the mean of {shown(layout.mean_m3_h)} m³/h."]
     if len(layout.stages) > 1 and layout.unequal_words:
         lines.append(sentence(f"volumes: {layout.unequal_words}"))
     aid = record["stage_choice"]["bicarbonate_instead"]
@@ -221,8 +224,8 @@ def rules_of_thumb(found: Design, record: Record) -> str:
     else:
         proof = f"{PERCENT * trial.monte.probability:.0f} % of the simulated cases keep the time rule"
     return block("NUMBER OF TANKS BY RULES OF THUMB, and by simulation",
-                 [f"Taken: {tanks_words(choice['tanks'])}; {proof}. The design is accepted or not by this, not by a rule "
-                  "below.", *lines])
+                 [f"Taken: {tanks_words(choice['tanks'])}; {proof}. The design is accepted or not by this, not by "
+                  "a rule below.", *lines])
 
 
 # ---------------------------------------------------------------- feeds
@@ -233,7 +236,8 @@ def feeds(record: Record) -> str:
     head = [["tank", "reagent", "least", "most", "feeder", "least", "most", "feeder", "turndown", "needs", "has",
              "line"], ["", "", "eq/h", "eq/h", "eq/h", "L/h", "L/h", "L/h", "", "%", "%", "s"]]
     rows = [[f["tank"], f["reagent"] + (" *" if f["trim_only"] else ""), number(f["least_eq_h"]),
-             number(f["largest_eq_h"]), number(f["size_eq_h"]), _pumped(f["least_l_h"]), _pumped(f["largest_l_h"]), _pumped(f["size_l_h"]),
+             number(f["largest_eq_h"]), number(f["size_eq_h"]),
+             *(_pumped(f[key]) for key in ("least_l_h", "largest_l_h", "size_l_h")),
              f"{f['turndown']:.3g}", _percent(f["resolution_needed"]), _percent(f["resolution_has"]),
              number(f["line_dead_s"])] for f in record["feed"]]
     lines = []

@@ -8,7 +8,7 @@ from typing import Any, NamedTuple
 
 import numpy as np
 from matplotlib.axes import Axes
-from matplotlib.ticker import LogLocator, MaxNLocator, NullFormatter
+from matplotlib.ticker import LogLocator, MaxNLocator, NullLocator
 from numpy.typing import NDArray
 
 from aquabuf.assess.plant.feed import shown
@@ -29,6 +29,7 @@ PERCENT = 100.0
 TITLE_SIZE = 10.0
 PH_ENDS = (0.0, 14.0)       # of the axis of pH
 BEYOND = 0.22               # of the span from the raw waste to the window, shown on both sides
+EDGE_SHARE = 0.012          # of the width, kept free at the edge
 LABEL_STEP = 1.45           # from label to label, in type sizes
 STEPS = (1, 2, 2.5, 5, 10)  # of the numbers on an axis
 GROUND: Any = {"facecolor": "white", "edgecolor": "none", "alpha": 0.85, "pad": 0.6}
@@ -81,22 +82,28 @@ def label_gap(ax: Axes, size: float = SMALL) -> float:
     return LABEL_STEP * size / POINTS / ax_height(ax) * (high - low)
 
 
-def side_labels(ax: Axes, points: Sequence[tuple[float, float, str]], *, left: bool, away: float = 0.16) -> list[float]:
-    """Words beside points, `away` inches from the farthest of them, with a line to each; where they stand is returned.
+def side_labels(ax: Axes, points: Sequence[tuple[float, float, str]], *, left: bool, away: float = 0.16,
+                outside: bool = False) -> list[float]:
+    """Words `away` inches beside points, with a line to each; the heights at which they stand are returned.
 
-    Only for a level axis that is linear or logarithmic.
+    Words without room at that side stand at the edge of the axes, above their point (below it if not `left`);
+    `outside`: they may leave the axes.
     """
-    gap = label_gap(ax)
+    gap, side = label_gap(ax), -1.0 if left else 1.0
     low, high = ax.get_ylim()
-    at = spread([y for _, y, _ in points], gap, low + 0.6 * gap, high - 0.6 * gap)
-    across = ax.transAxes.inverted()
-    shares = [float(across.transform(ax.transData.transform((x, y)))[0]) for x, y, _ in points]
-    move = away / ax_width(ax)
-    x_words = min(shares) - move if left else max(shares) + move
-    for (x, y, words), share, level in zip(points, shares, at, strict=True):
-        ax.plot([share, x_words + (0.02 if left else -0.02) / ax_width(ax)],
-                [y, level], transform=ax.get_yaxis_transform(), label="_leader", zorder=2.5, **LEADER)
-        ax.text(x_words, level, words, transform=ax.get_yaxis_transform(), ha="right" if left else "left", va="center",
+    across = [float(ax.transAxes.inverted().transform(ax.transData.transform((x, y)))[0]) for x, y, _ in points]
+    ends, wanted = [], []
+    for share, (_, y, words) in zip(across, points, strict=True):
+        wide = text_width(words, SMALL) / ax_width(ax) + EDGE_SHARE
+        end = share + side * away / ax_width(ax)
+        fits = outside or (end >= wide if left else end <= 1.0 - wide)
+        ends.append(end if fits else (wide if left else 1.0 - wide))
+        wanted.append(y if fits else y - side * 1.4 * gap)
+    at = spread(wanted, gap, low + 0.6 * gap, high - 0.6 * gap)
+    for share, end, (_, y, words), level in zip(across, ends, points, at, strict=True):
+        ax.plot([share, end - side * 0.02 / ax_width(ax)], [y, level], transform=ax.get_yaxis_transform(),
+                label="_leader", zorder=2.5, clip_on=False, **LEADER)
+        ax.text(end, level, words, transform=ax.get_yaxis_transform(), ha="right" if left else "left", va="center",
                 fontsize=SMALL, zorder=5, bbox=GROUND, parse_math=False)
     return at
 
@@ -115,8 +122,9 @@ class StagePoint(NamedTuple):
 def stage_points(design: Design) -> list[StagePoint]:
     """Where the set points of the tanks lie."""
     basis = design.basis
-    return [StagePoint(s.name, float(basis.chem.readout.base_at(s.setpoint_ph, basis.mean.amounts)) - basis.mean.base_eq_l,
-                       s.setpoint_ph) for s in design.layout.stages]
+    at = [float(basis.chem.readout.base_at(s.setpoint_ph, basis.mean.amounts)) for s in design.layout.stages]
+    return [StagePoint(s.name, base - basis.mean.base_eq_l, s.setpoint_ph)
+            for s, base in zip(design.layout.stages, at, strict=True)]
 
 
 def mean_ph(design: Design) -> float:
@@ -175,7 +183,7 @@ def plot_titration(design: Design, *, ax: Axes) -> Axes:
     for p in points:
         ax.plot(p.reagent_eq_l, p.ph, ls="", marker="o", ms=6, mfc=WARNED, mec=INK, label="_setpoint", zorder=4)
     last = len(points) - 1
-    words = [(p.reagent_eq_l, p.ph, f"{'aim' if k == last else 'set point'}, {p.name}: pH {shown(p.ph)}")
+    words = [(p.reagent_eq_l, p.ph, f"{p.name}: pH {shown(p.ph)}{', the aim' if k == last and k else ''}")
              for k, p in enumerate(points)]
     at = side_labels(ax, words, left=acid)
     gap = label_gap(ax)
@@ -183,7 +191,7 @@ def plot_titration(design: Design, *, ax: Axes) -> Axes:
                 (6.0, -7.0) if acid else (-6.0, 7.0), textcoords="offset points", ha="left" if acid else "right",
                 va="top" if acid else "bottom", fontsize=SMALL, bbox=GROUND, zorder=5, annotation_clip=False)
     inside = [y for y in at if window.low - gap < y < window.high + 2.0 * gap]
-    lines = wrapped(tolerance_words(design), 0.62 * ax_width(ax), SMALL)
+    lines = wrapped(tolerance_words(design), 0.7 * ax_width(ax), SMALL)
     step = LABEL_STEP * SMALL / POINTS / ax_height(ax) * (PH_ENDS[1] - PH_ENDS[0])
     level = max([window.high, *(y + 0.5 * gap for y in inside)]) if acid else min(
         [window.low, *(y - 0.5 * gap for y in inside)])
@@ -216,22 +224,27 @@ def plot_buffer(design: Design, *, ax: Axes) -> Axes:
     ax.set(ylim=PH_ENDS, xlim=(0.5 * min(float(intensity.min()), steepest), 1.6 * float(intensity.max())))
     _window(ax, design)
     ax.plot(intensity, curve["ph"], color=INK, lw=1.6, label="_buffer", zorder=3)
-    ax.plot(float(fit.buffer_eq_l_ph), fit.setpoint_ph, ls="", marker="o", ms=6, mfc=WARNED, mec=INK, label="_aim", zorder=4)
-    ax.plot(steepest, float(fit.steepest_ph), ls="", marker="D", ms=6, mfc="white", mec=INK, label="_steepest", zorder=4)
+    for x, y, marker, color, label in ((float(fit.buffer_eq_l_ph), fit.setpoint_ph, "o", WARNED, "_aim"),
+                                       (steepest, float(fit.steepest_ph), "D", "white", "_steepest")):
+        ax.plot(x, y, ls="", marker=marker, ms=6, mfc=color, mec=INK, label=label, zorder=4)
     words = [(steepest, float(fit.steepest_ph),
-              f"steepest in the window, pH {float(fit.steepest_ph):.2f}:\n{shown(float(fit.steepest_gain_ph_per_eq_l))} pH "
-              "per eq/L"),
+              f"steepest, pH {float(fit.steepest_ph):.2f}:\n{_gain(fit.steepest_gain_ph_per_eq_l)}"),
              (float(fit.buffer_eq_l_ph), fit.setpoint_ph,
-              f"aim, pH {fit.setpoint_ph:g}:\n{shown(float(fit.gain_ph_per_eq_l))} pH per eq/L")]
+              f"aim, pH {fit.setpoint_ph:g}:\n{_gain(fit.gain_ph_per_eq_l)}")]
     _right_labels(ax, words)
     for axis in (ax.xaxis, gain := ax.secondary_xaxis("top", functions=(_over, _over)).xaxis):
         axis.set_major_locator(LogLocator(numticks=5))
-        axis.set_minor_formatter(NullFormatter())
+        axis.set_minor_locator(NullLocator())
     gain.axes.tick_params(labelsize=8, pad=1)
     gain.axes.set_xlabel("process gain [pH per eq/L]", labelpad=2)
     ax.yaxis.set_major_locator(MaxNLocator(7, steps=[1, 2, 10]))
     ax.set(ylabel="pH", xlabel="buffer intensity [eq/L per pH]")
     return ax
+
+
+def _gain(value: Any) -> str:
+    """A process gain to three figures."""
+    return f"{shown(float(f'{float(value):.3g}'))} pH per eq/L"
 
 
 def _right_labels(ax: Axes, points: Sequence[tuple[float, float, str]]) -> None:
@@ -282,8 +295,8 @@ def plot_equalization(design: Design, *, ax: Axes) -> Axes:
 
 def _say(ax: Axes, words: str) -> None:
     """Words in place of a drawing."""
-    ax.text(0.0, 0.95, "\n".join(wrapped(words, ax_width(ax), SMALL + 1.0)), transform=ax.transAxes, ha="left", va="top",
-            fontsize=SMALL + 1.0, color=GRAY, parse_math=False)
+    ax.text(0.0, 0.95, "\n".join(wrapped(words, ax_width(ax), SMALL + 1.0)), transform=ax.transAxes, ha="left",
+            va="top", fontsize=SMALL + 1.0, color=GRAY, parse_math=False)
 
 
 # ---------------------------------------------------------------- demand
@@ -326,9 +339,10 @@ def plot_demand(design: Design, *, ax: Axes) -> Axes:
     for y, (g, of_kg, words) in enumerate(zip(reversed(groups), kg[::-1], reversed(told), strict=True)):
         ax.plot(of_kg[[0, -1]], [y - 0.16] * 2, color=CALM, lw=2.2, label="_range", zorder=2)
         for d, value in zip(g.rows, of_kg, strict=True):
-            ax.plot(value, y - 0.16, ls="", marker=MARKS[d.load.name], ms=5.5, mfc=WARNED if d.load.name == "mean" else CALM,
-                    mec=INK, mew=0.6, label=f"_{d.load.name}", zorder=3)
-        name = wrapped(f"{g.reagent}, {g.place}", (1.0 - share) * ax_width(ax) - 0.05, SMALL, most=1)[0]
+            color = WARNED if d.load.name == "mean" else CALM
+            ax.plot(value, y - 0.16, ls="", marker=MARKS[d.load.name], ms=5.5, mfc=color, mec=INK, mew=0.6,
+                    label=f"_{d.load.name}", zorder=3)
+        name = wrapped(f"{g.reagent}, {g.place}", 0.97 * ax_width(ax), SMALL, most=1)[0]
         ax.text(0.0, y + 0.12, name, fontsize=SMALL, va="bottom", ha="left", zorder=4, parse_math=False)
         for right, text in zip((1.0 - rooms[1] / ax_width(ax), 1.0), words, strict=True):
             ax.text(right, y - 0.16, text, transform=ax.get_yaxis_transform(), ha="right", va="center", fontsize=SMALL)
@@ -379,4 +393,4 @@ def _signed(value: float) -> str:
     """A change in percent, as a label."""
     if not np.isfinite(value):
         return "not known"
-    return f"{value:+.1f}" if abs(value) < 10.0 else f"{value:+,.0f}"
+    return (f"{value:+z.1f}" if round(value, 1) else "0") if abs(value) < 9.95 else f"{value:+,.0f}"

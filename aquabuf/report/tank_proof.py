@@ -9,6 +9,7 @@ from aquabuf.assess.plant.feed import shown
 from aquabuf.assess.tank.design import Design
 from aquabuf.assess.tank.monte import MonteCarlo
 from aquabuf.assess.tank.side_case import NOTE, SEVERITIES
+from aquabuf.assess.tank.trial import CHANGE, FAULT_S, MIN_S
 from aquabuf.report.dose_lines import aligned, block, figure, sentence, titled
 from aquabuf.report.tank_blocks import MILLI, PERCENT, Record, bullets, number, united
 
@@ -16,7 +17,7 @@ __all__ = ["batch", "failures", "sensitivity", "side_effects", "simulation", "sp
            "worst_change"]
 
 LEAST_SHOWN = 0.001
-PH_WINDOW = "pH"
+METAL_WINDOW = " window"  # ends the name of a row that tells where a metal falls out
 QUANTILES = ("half of the cases", "90 %", "95 %", "all")
 
 
@@ -79,7 +80,8 @@ def failures(record: Record) -> str:
     head = [["tank", "failure", "leaves after min", "min outside", "lowest pH", "highest pH"]]
     rows = [[f["tank"], f["kind"], "stays in" if f["minutes_to_leave"] is None else f"{f['minutes_to_leave']:.0f}",
              f"{f['minutes_outside']:.0f}", figure(f["lowest_ph"], 1), figure(f["highest_ph"], 1)] for f in s["faults"]]
-    lines = ["Each lasts an hour, at the mean of the stream; with a stuck probe the strength rises by 30 % meanwhile."]
+    lines = [f"Each lasts {FAULT_S / MIN_S:.0f} min, at the mean of what asks for the reagent; as a probe gets stuck the "
+             f"strength rises by {PERCENT * (CHANGE - 1.0):.0f} % (practice, no source). Nobody acts meanwhile."]
     lines += [f"{kind}: {words}." for kind, words in dict.fromkeys((f["kind"], f["words"]) for f in s["faults"])]
     return titled("FAILURES", aligned(head, rows, left=(0, 1)), bullets(lines))
 
@@ -87,18 +89,22 @@ def failures(record: Record) -> str:
 def side_effects(record: Record) -> str:
     """The gravest first: those to be acted on in words, the others as a table."""
     rows = sorted(record["side_effects"], key=lambda e: -SEVERITIES.index(e["severity"]))
-    grave = [f"{e['severity'].upper()}, {e['reagent']}: {e['name']}, {united(e['value'], e['unit'].replace('m3', 'm³'))}: "
-             f"{sentence(e['words'])} Rule: {e['rule']} ({e['source']})." for e in rows if e["severity"] != NOTE]
-    windows = [f"{sentence(e['words'])} [{e['source']}]" for e in rows if e["severity"] == NOTE and e["unit"] == PH_WINDOW
-               and e["name"].endswith("window")]
-    notes = [e for e in rows if e["severity"] == NOTE and e["value"] and not e["name"].endswith("window")]
+    grave = [f"{e['severity'].upper()}, {e['reagent']}: {e['name']}, {_valued(e)}: {sentence(e['words'])} Rule: "
+             f"{e['rule']} ({e['source']})." for e in rows if e["severity"] != NOTE]
+    noted = [e for e in rows if e["severity"] == NOTE]
+    windows = [f"{sentence(e['words'])} [{e['source']}]" for e in noted if e["name"].endswith(METAL_WINDOW)]
+    notes = [e for e in noted if e["value"] and not e["name"].endswith(METAL_WINDOW)]
     table = aligned([["with", "effect", "", ""]], [[e["reagent"], e["name"], _small(e["value"]), _unit(e["unit"])]
                                                    for e in notes], left=(0, 1, 3))
     told = bool(grave or windows or notes)
-    per = "At the mean of what each reagent has to treat; amounts per m³ of that waste, per day as if it came all day. " \
-          "Words, rules and sources: side_effects.csv." if told else ""
+    per = "At the mean of what each reagent has to treat; amounts per m³ of that waste, per day as if it came all " \
+          "day. Words, rules and sources: side_effects.csv." if told else ""
     return titled("SIDE EFFECTS, the gravest first", bullets([*grave, "" if told else "None was found."]), table,
                   bullets([*windows, per]))
+
+
+def _valued(e: Record) -> str:
+    return united(e["value"], e["unit"].replace("m3", "m³"))
 
 
 def _small(value: float) -> str:
@@ -125,14 +131,14 @@ def batch(record: Record) -> str:
     plan = b["plan"]
     if plan is not None:
         lines.append(f"It may suit: {plan['tanks']} tanks of {shown(plan['volume_m3'])} m³ in turn. Each fills in "
-                     f"{plan['fill_h']:.2g} h, reacts {plan['react_h']:.2g} h, is tested {plan['test_h']:.2g} h, drains "
-                     f"in {plan['drain_h']:.2g} h, waits {plan['idle_h']:.2g} h; {plan['cycle_h']:.2g} h from fill to "
-                     "fill. Nothing leaves before it is measured.")
+                     f"{plan['fill_h']:.2g} h, reacts {plan['react_h']:.2g} h, is tested {plan['test_h']:.2g} h, "
+                     f"drains in {plan['drain_h']:.2g} h, waits {plan['idle_h']:.2g} h; {plan['cycle_h']:.2g} h from "
+                     "fill to fill. Nothing leaves before it is measured.")
     else:
         lines.append("No rule speaks for it." if not any(r["holds"] for r in b["rules"]) else
                      "A rule speaks for it, but no cycle can be laid out.")
-    lines += [f"{'For' if r['holds'] else 'Not for'} it: {r['quantity']} {united(r['value'], r['unit'])}, rule {r['operator']} {r['limit']:g}: {r['words']} "
-              f"({r['source']})." for r in b["rules"]]
+    lines += [f"{'For' if r['holds'] else 'Not for'} it: {r['quantity']} {united(r['value'], r['unit'])}, rule "
+              f"{r['operator']} {r['limit']:g}: {r['words']} ({r['source']})." for r in b["rules"]]
     return block("BATCH TANKS INSTEAD", lines)
 
 

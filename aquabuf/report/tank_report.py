@@ -28,12 +28,15 @@ LESS_SWING = 0.75  # of the swings left, below which a larger tank is worth nami
 
 def tank_report(found: Design, record: Record) -> str:
     """The whole report; same design, same text. `record` : the design as `design_record` gives it."""
-    blocks = [
-        _head(found), _verdict(found, record), _stops(record), built.stream(found, record), built.demand(found, record),
-        built.reagents(found, record), built.window(found, record), built.equalization(found, record),
-        built.stages(found, record), built.rules_of_thumb(found, record), built.feeds(record),
-        proof.simulation(found, record), proof.failures(record), proof.side_effects(record), proof.storage(record),
-        proof.batch(record), proof.sensitivity(record), block("ASSUMPTIONS", record["assumptions"])]
+    blocks = [_head(found), _verdict(found, record), _stops(record), built.stream(found, record),
+              built.demand(found, record), built.reagents(found, record), built.window(found, record)]
+    if not found.stops:  # nothing is to be built else
+        blocks += [built.equalization(found, record), built.stages(found, record), built.rules_of_thumb(found, record),
+                   built.feeds(record)]
+    blocks += [proof.simulation(found, record), proof.failures(record), proof.side_effects(record)]
+    if not found.stops:
+        blocks += [proof.storage(record), proof.batch(record)]
+    blocks += [proof.sensitivity(record), block("ASSUMPTIONS", record["assumptions"])]
     blocks += [block("WARNINGS", _untold(record["warnings"], blocks)), block("CAUTIONS", record["cautions"]),
                block("WHAT TO DO NEXT", next_steps(found, record))]
     return "\n\n".join(b for b in blocks if b) + "\n"
@@ -84,7 +87,8 @@ def _verdict(found: Design, record: Record) -> str:
                      "time rule (practice, no source).")
         lines += [_beside_ph(record), _in_short(found, record)]
     else:
-        lines.append("Do not build this. Figures below show what the stream asks for; no tank was simulated.")
+        lines.append("Do not build this. Figures below show what the stream asks for, no tanks or feeds; nothing was "
+                     "simulated.")
     return block(f"VERDICT: {word}", lines)
 
 
@@ -95,8 +99,9 @@ def _in_short(found: Design, record: Record) -> str:
     first = f"{shown(ahead)} m³ of equalization, then " if ahead > 0.0 else ""
     vessels = " and ".join(f"{shown(s['volume_m3'])} m³ at pH {s['setpoint_ph']:.1f}" for s in tanks)
     chosen = record["reagents"]["chosen"]
-    fed = " and ".join(name for kind, name in chosen.items() if kind in found.layout.needs)
-    trim = "".join(f", {name} to take back overdoses" for kind, name in chosen.items() if kind not in found.layout.needs)
+    needed = found.layout.needs
+    fed = " and ".join(name for kind, name in chosen.items() if kind in needed)
+    trim = "".join(f", with {name} to take back overdoses" for kind, name in chosen.items() if kind not in needed)
     return f"In short: {first}{built.tanks_words(len(tanks))}, stirred ({vessels}), fed with {fed}{trim}."
 
 
@@ -107,7 +112,7 @@ def _beside_ph(record: Record) -> str:
 
 
 def _stops(record: Record) -> str:
-    return block("STOP: NOTHING IS TO BE BUILT", [sentence(words) for words in record["stops"]]) if record["stops"] else ""
+    return block("STOP: NOTHING IS TO BE BUILT", [sentence(words) for words in record["stops"]])
 
 
 # ---------------------------------------------------------------- next
@@ -117,16 +122,16 @@ def next_steps(found: Design, record: Record) -> list[str]:
     """What to do next, in words, the most pressing first."""
     word, lines = headline(found), []
     if word == STOPPED:
-        lines.append("Do away with what forbids the design first: keep that waste apart, destroy what it holds, or "
-                     "choose another reagent; then run this again.")
+        return ["Do away with what forbids the design: keep that waste apart, destroy what it holds, or choose another "
+                "reagent; then run this again. Until then no reagent is to be tried on this waste, not in a beaker either."]
     if word == REFUSED:
         lines += _mend(found, record)
     if word == UNPROVEN:
         lines.append(f"Prove it: run with the simulation and --cases {MORE_CASES}.")
     monte = None if found.trial is None else found.trial.monte
     if word == ACCEPTED and monte is not None and monte.low < ENOUGH:
-        lines.append(f"Run more cases: with {monte.meets.size} the interval begins at {PERCENT * monte.low:.0f} %, below "
-                     f"the {PERCENT * ENOUGH:.0f} % asked for; --cases {MORE_CASES} narrows it.")
+        lines.append(f"Run more cases: with {monte.meets.size} the interval begins at {PERCENT * monte.low:.0f} %, "
+                     f"below the {PERCENT * ENOUGH:.0f} % asked for; --cases {MORE_CASES} narrows it.")
     return [*lines, *_alarms(record), *_measure(found)]
 
 
@@ -136,8 +141,8 @@ def _mend(found: Design, record: Record) -> list[str]:
     for f in record["feed"]:
         if f["holds"] is False:
             needed, has = PERCENT * f["resolution_needed"], PERCENT * f["resolution_has"]
-            lines.append(f"Buy a finer feeder for {f['reagent']} in {f['tank']}: the window needs {needed:.2g} % of the full "
-                         f"rate, this one has {has:.2g} %.")
+            lines.append(f"Buy a finer feeder for {f['reagent']} in {f['tank']}: the window needs {needed:.2g} % of "
+                         f"the full rate, this one has {has:.2g} %.")
     choice = record["stage_choice"]
     aid = choice["bicarbonate_instead"]
     if choice["tanks"] < MOST_TANKS:
@@ -194,8 +199,9 @@ def _alarms(record: Record) -> list[str]:
     if not left:
         return []
     first = min(left, key=lambda f: f["minutes_to_leave"])
-    return [f"Provide an alarm and a stop valve or diversion that act within {first['minutes_to_leave']:.0f} min: so "
-            f"soon the window is left with {first['kind']} in {first['tank']}."]
+    soon = "less than a minute" if first["minutes_to_leave"] < 1.0 else f"{first['minutes_to_leave']:.0f} min"
+    return [f"Provide an alarm and a stop valve or diversion that act within {soon}: so soon the window is left with "
+            f"{first['kind']} in {first['tank']}."]
 
 
 def _measure(found: Design) -> list[str]:
@@ -203,14 +209,14 @@ def _measure(found: Design) -> list[str]:
     lines = []
     untitrated = [a.waste.name for a in found.job.arrivals if a.waste.curve is None]
     if untitrated:
-        lines.append(f"Titrate samples of {', '.join(untitrated)} and name the table as titration in the stream file: what "
-                     "is known by its composition alone may hold buffers that nobody named.")
+        lines.append(f"Titrate samples of {', '.join(untitrated)} and name the table as titration in the stream file: "
+                     "what is known by its composition alone may hold buffers that nobody named.")
     few = [a.waste.name for a in found.job.arrivals if a.waste.curve is not None and len(a.samples) < FEW_SAMPLES]
     if few:
         lines.append(f"Titrate more samples of {', '.join(few)}, from different days and hours: {FEW_SAMPLES} or more "
                      "show how its buffers vary.")
     if found.job.profile is None:
-        lines.append("Record flow and strength for two weeks at work and give the table as [profile]: now they are drawn "
-                     "from statistics.")
+        lines.append("Record flow and strength for two weeks at work and give the table as [profile]: now they are "
+                     "drawn from statistics.")
     lines.append("Try the chosen reagents in a beaker of the real waste: dose, pH over time, sludge, gas.")
     return lines

@@ -27,6 +27,7 @@ FILL, LOWER = "#dfe6ee", "#b9c9da"
 FULL = 0.8                   # of the height of a tank that is drawn as liquid
 SIGNS = {True: "▼", False: "▽"}  # base, acid
 NAME_LINES = 2
+MORE = 1.005                  # times the steady draw, beyond which the largest flow is told too
 
 
 class _Column(NamedTuple):
@@ -85,13 +86,21 @@ def _columns(design: Design, width: float) -> tuple[list[_Column], float]:
     if eq.volume_m3 > 0.0:
         parts = [f"equalization: {shown(eq.volume_m3)} m³", f"{shown(eq.content_m3)} m³ always full"]
         parts += [f"{shown(eq.flow_m3)} m³ for the flow"] if eq.flow_m3 > 0.0 else []
-        parts.append(f"leaves at {'a steady ' if eq.draw_m3_h is not None else 'most '}{shown(layout.peak_m3_h)} m³/h")
+        parts += _leaving(design)
         columns.append(_Column("equalization", lines(parts), (), None))
     for stage in layout.stages:
         columns.append(_Column("tank", lines(stage_words(design, stage)), tuple(feed_lines(stage, room)), stage))
     window = job.window
-    columns.append(_Column("out", lines([f"out: pH {window.low:g} to {window.high:g}", f"({window.source})"], 4), (), None))
+    leaves = [f"out: pH {window.low:g} to {window.high:g}", f"({window.source})"]
+    columns.append(_Column("out", lines(leaves, 4), (), None))
     return columns, room
+
+
+def _leaving(design: Design) -> list[str]:
+    """Flow out of the equalization tank."""
+    draw, peak = design.layout.equalization.draw_m3_h, design.layout.peak_m3_h
+    most = [f"{shown(peak)} m³/h at most"] if draw is None or peak > MORE * draw else []
+    return [*([] if draw is None else [f"{shown(draw)} m³/h drawn off"]), *most]
 
 
 def train_height(design: Design, width: float) -> float:
@@ -104,7 +113,7 @@ def plot_train(design: Design, *, ax: Axes) -> Axes:
     """Draw the train; tanks are as high as their share of the largest volume, in thirds."""
     width, height = ax_width(ax), ax_height(ax)
     columns, room = _columns(design, width)
-    ax.set(xlim=(0.0, width), ylim=(0.0, height))
+    ax.set(xlim=(0.0, width), ylim=(0.0, height), xticks=[], yticks=[])
     ax.set_axis_off()
     floor = 0.06 + STEP * max(len(c.below) for c in columns)
     tall = max(height - floor - HEAD - STEP * max(len(c.above) for c in columns), 0.5 * TANK)
@@ -171,7 +180,7 @@ def _end(ax: Axes, kind: str, left: float, level: float, wide: float) -> None:
     """Arrow of what comes or leaves."""
     begin, end = (left, left + wide) if kind == "in" else (left - GAP, left + 0.55 * wide)
     ax.annotate("", (end, level), (begin, level), arrowprops={
-        "arrowstyle": "-" if kind == "in" else "-|>", "color": INK, "lw": 1.6, "shrinkA": 0, "shrinkB": 0,
+        "arrowstyle": "-" if kind == "in" else "-|>", "color": INK, "lw": 1.2, "shrinkA": 0, "shrinkB": 0,
         "mutation_scale": 14})
     if kind == "in":
         ax.plot(begin, level, marker="o", ms=4, color=INK, label="_source")

@@ -161,10 +161,11 @@ def curve_log(job: Job) -> str:
     head = [["", "pH", "base", *fed, "buffer", "gain"],
             ["", "", "meq/L", *("kg/m³" for _ in fed), "meq/L per pH", "pH per meq/L"]]
     rows = [["*" if job.window.low <= x <= job.window.high else "", f"{x:.2f}", figure(MILLI * y, 3),
-             *(figure(float(kg[k]), 3) for kg in fed.values()), number(MILLI * float(b)), number(1.0 / (MILLI * float(b)))]
-            for k, (x, y, b) in enumerate(zip(ph, strong, buffer, strict=True))]
+             *(figure(float(kg[k]), 3) for kg in fed.values()), number(MILLI * float(b)),
+             number(1.0 / (MILLI * float(b)))] for k, (x, y, b) in enumerate(zip(ph, strong, buffer, strict=True))]
     return titled(
         f"{job.name}: titration curve of the mean waste, pH {start:.2f} as it comes, {basis.chem.t_c:.1f} °C",
         aligned(head, rows),
         bullet("* within the window of the discharge. Base: strong base per liter of waste to reach the pH; negative: "
-               "acid. Reagents as delivered; - where the pH lies on their other side or out of reach.", mark="  ")) + "\n"
+               "acid. Reagents as delivered; - where the pH lies on their other side or out of reach.",
+               mark="  ")) + "\n"

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import json
-from collections import Counter
 from collections.abc import Callable
 from dataclasses import asdict, dataclass, field
 from pathlib import Path
@@ -16,7 +15,7 @@ from aquabuf.errors import InputError
 from aquabuf.readings.titration.paths import TitrationFiles
 from aquabuf.readings.titration.reader import iter_titrations
 from aquabuf.report.files import OutputFolder
-from aquabuf.report.html.titration_page import TitrationRows, titration_page
+from aquabuf.report.html.titration_page import TitrationRows, rank_of, titration_page
 from aquabuf.report.run import sha256
 from aquabuf.report.tables import GrowingTables
 from aquabuf.report.titration_summary import titration_summary
@@ -90,26 +89,23 @@ def _nothing(name: str, tally: TitrationTally) -> str:
 
 @dataclass(slots=True)
 class PageDrawings:
-    """Drawings of the few titrations that the page shows: those with a warning first, else the first of the file."""
+    """Drawings of the few titrations that the page shows, in the order of its table."""
 
-    warned: list[str] = field(default_factory=list)
-    calm: list[str] = field(default_factory=list)
-    _count: Counter = field(default_factory=Counter)
+    _of_rank: dict[int, list[list[str]]] = field(default_factory=dict)
 
     def add(self, part: TitrationResult, i: int) -> None:
         """Draw titration `i` of a piece for the page if it may come onto it."""
-        warned = bool(part.results["warnings"].iloc[part.at[i]])
-        if self._count[True] >= PAGE_TITRATIONS or (not warned and sum(self._count.values()) >= PAGE_TITRATIONS):
+        rank = rank_of(part.results["status"].iloc[part.at[i]])
+        if sum(len(drawn) for r, drawn in self._of_rank.items() if r <= rank) >= PAGE_TITRATIONS:
             return
         from aquabuf.report.html.panels import titration_drawings
 
-        self._count[warned] += 1
-        (self.warned if warned else self.calm).extend(titration_drawings(part, i))
+        self._of_rank.setdefault(rank, []).append(titration_drawings(part, i))
 
     def all(self) -> list[str]:
         """At most those of `PAGE_TITRATIONS`."""
-        each = 2
-        return [*self.warned, *self.calm][:each * PAGE_TITRATIONS]
+        ordered = [drawn for rank in sorted(self._of_rank) for drawn in self._of_rank[rank]]
+        return [drawing for drawn in ordered[:PAGE_TITRATIONS] for drawing in drawn]
 
 
 def _draw(part: TitrationResult, tally: TitrationTally, drawings: PageDrawings, out: OutputFolder, figures: int,

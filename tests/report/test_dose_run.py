@@ -18,7 +18,7 @@ from aquabuf.errors import FileError, InputError
 from aquabuf.report import dose_run
 from aquabuf.report.dose_run import dose_plan
 
-ALWAYS = {"answer.json", "sheet.txt", "steps.csv", "limits.csv", "run.json", "errors.csv"}
+ALWAYS = {"answer.json", "sheet.txt", "report.html", "steps.csv", "limits.csv", "run.json", "errors.csv"}
 FED = ALWAYS | {"doses.csv", "curves.csv", "faults.csv"}
 FILES = {"upland": FED | {"buffers.csv"}, "fixed": FED, "blend": ALWAYS | {"blend.csv"},
          "impossible": ALWAYS - {"errors.csv"} | {"doses.csv"}, "season": FED | {"buffers.csv", "season.csv", "season_doses.csv"}}

@@ -14,7 +14,8 @@ from aquabuf.report.lake_run import OUTPUT_FILES, LakeFiles, assess_survey
 from aquabuf.tables import read_table
 
 WITHOUT_SERIES = {"results.csv", "priorities.csv", "classes.csv", "verdicts.csv", "groups.csv", "critical_loads.csv",
-                  "episodes.csv", "deposition.csv", "liming.csv", "checks.csv", "rejected.csv", "report.txt", "run.json"}
+                  "episodes.csv", "deposition.csv", "liming.csv", "checks.csv", "rejected.csv", "report.html", "report.txt",
+                  "run.json"}
 # What users of the results may rely on
 CONTRACT = ("sample_id", "status", "anc_gran_ueq_l", "anc_charge_ueq_l", "organic_anion_ueq_l", "anc_organic_corrected_ueq_l",
             "ion_balance_percent", "conductivity_calculated_us_cm", "scheme", "class", "class_probability", "acid_to_ph_6_0_ueq_l",
@@ -82,7 +83,7 @@ def test_files_of_a_series(lakes):
 def test_tables_with_nothing_to_say_are_not_written(lakes):
     """One lake with an ANC above every target: no load, no episode, no deposition, no lime, nothing refused."""
     _, folder = lakes("sample_id,anc_ueq_l\na,500\n")
-    assert set(contents(folder)) == {"results.csv", "priorities.csv", "classes.csv", "verdicts.csv", "groups.csv", "checks.csv", "report.txt", "run.json"}
+    assert set(contents(folder)) == {"results.csv", "priorities.csv", "classes.csv", "verdicts.csv", "groups.csv", "checks.csv", "report.html", "report.txt", "run.json"}
 
 
 @pytest.mark.parametrize("draws", [0, 100])

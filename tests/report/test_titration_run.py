@@ -16,7 +16,7 @@ from aquabuf.readings.titration.paths import TitrationFiles
 from aquabuf.report import titration_run
 from aquabuf.report.titration_run import ALL_FIGURES, titrate_file
 
-TABLES = ("alkalinity.csv", "findings.csv", "rejected.csv", "run.json")
+TABLES = ("alkalinity.csv", "findings.csv", "rejected.csv", "report.html", "run.json")
 
 
 @pytest.fixture
@@ -55,7 +55,7 @@ def contents(folder):
 def test_files_of_a_run(titrate):
     """The three tables and run.json; rejected.csv only where something was refused; figures only where asked for."""
     assert names(titrate()[1]) == sorted(TABLES)
-    assert names(titrate(POINTS.replace(BROKEN, ""), SAMPLES.replace(facts("broken"), ""), out="clean")[1]) == ["alkalinity.csv", "findings.csv", "run.json"]
+    assert names(titrate(POINTS.replace(BROKEN, ""), SAMPLES.replace(facts("broken"), ""), out="clean")[1]) == ["alkalinity.csv", "findings.csv", "report.html", "run.json"]
 
 
 def test_results_give_the_waters_back(titrate):

@@ -73,7 +73,7 @@ def between(values: Array, at: Sequence[float]) -> float:
 
     Places beyond the grid are taken to its edge.
     """
-    if not at:
+    if not len(at):
         return float(values)
     last = values.shape[0] - 1
     place = min(max(at[0], 0.0), float(last))

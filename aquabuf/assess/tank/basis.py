@@ -8,6 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from aquabuf.assess.plant.feed import HOURS_PER_DAY
 from aquabuf.assess.tank.arrivals import design_course, mean_shares
 from aquabuf.assess.tank.compare import Comparison, Effects, compare
 from aquabuf.assess.tank.demand import Aim, Demand, Load, WindowFit, aims_of, demands, window_fit
@@ -18,7 +19,7 @@ from aquabuf.assess.tank.reagents import ACID, BASE, Reagent
 from aquabuf.assess.tank.waste import Chemistry, chemistry
 from aquabuf.errors import InputError
 
-__all__ = ["Basis", "L_PER_M3", "MOVED_PH", "NEVER", "Need", "amounts_of", "basis_of", "lacking_words", "needs_of"]
+__all__ = ["L_PER_M3", "MOVED_PH", "NEVER", "Basis", "Need", "amounts_of", "basis_of", "lacking_words", "needs_of"]
 
 Array = NDArray[np.float64]
 
@@ -134,14 +135,15 @@ def _aim(job: Job, half_ph: float) -> tuple[float, str]:
 
 
 def _effects_of(chem: Chemistry, load: Load, aim_ph: float) -> Callable[[Reagent, float], Effects]:
-    return lambda reagent, eq_l: summary_of(effects_of(chem, load, reagent, eq_l, aim_ph))
+    return lambda reagent, eq_l: summary_of(effects_of(chem, load, reagent, eq_l, aim_ph),
+                                            HOURS_PER_DAY * load.flow_m3_h)
 
 
 def basis_of(job: Job) -> Basis:
     """Chemistry to reagents of a job.
 
-    Raises InputError where a waste is not known well enough, the stream keeps the window by itself, the reagent that the
-    file names cannot reach the aim, or no reagent at all serves the stream.
+    Raises InputError where a waste is not known well enough, the stream keeps the window by itself, the reagent that
+    the file names cannot reach the aim, or no reagent at all serves the stream.
     """
     chem = chemistry(job.wastes, t_c=float(mean_shares(job.arrivals) @ np.array([w.t_c for w in job.wastes])))
     course = design_course(job, chem)
@@ -202,8 +204,6 @@ def _reagents(job: Job, chem: Chemistry, needs: Mapping[str, Need], aim_ph: floa
             lacking[kind] = "; ".join(f"{c.reagent.name} {c.words}" for c in comparisons[kind].candidates)
         elif need is not None:
             lacking[kind] = f"the file names no {kind}"
-        elif there:
-            chosen[kind] = min(there, key=lambda r: r.residence_min.usual)  # for overshoot alone: the quickest
     main = max(needs, key=lambda k: needs[k].mean_eq_h)
     if not chosen.keys() & needs.keys():
         raise InputError(lacking_words(main, aim_ph, needs[main].mean_eq_h, lacking[main]))
@@ -220,8 +220,8 @@ def _check_reaches(name: str, comparison: Comparison | None, aim_ph: float) -> N
     """Refuse a reagent that the file names and that does not bring the waste to the aim."""
     found = next((c for c in comparison.candidates if c.reagent.name == name), None) if comparison else None
     if found is not None and not found.reaches:
-        raise InputError(f"the reagent that [use] names must bring the stream to the aim, pH {aim_ph:g}; {name} does not: "
-                         f"{found.words}. Name another, or set an aim that it reaches.")
+        raise InputError(f"the reagent that [use] names must bring the stream to the aim, pH {aim_ph:g}; {name} does "
+                         f"not: {found.words}. Name another, or set an aim that it reaches.")
 
 
 def _samples(job: Job, aim_ph: float) -> tuple[str, ...]:

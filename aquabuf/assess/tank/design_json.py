@@ -26,9 +26,7 @@ def design_record(design: Design) -> dict[str, Any]:
         "reagents": _reagents(design), "window": _window(design), "equalization": _equalization(design),
         "stage_choice": _choice(design), "stages": [_stage(s, design.layout.mean_m3_h) for s in design.layout.stages],
         "feed": _feed(design), "simulation": None if design.trial is None else _simulation(design.trial, design),
-        "side_effects": [{"reagent": design.basis.chosen[kind].name if kind in design.basis.chosen else kind, "name": e.name, "value": e.value, "unit": e.unit,
-                          "severity": e.severity, "words": e.words, "rule": e.rule, "source": e.source}
-                         for kind, s in design.side.items() for e in s.rows],
+        "side_effects": _side_effects(design),
         "storage": _storage(design), "batch": _batch(design), "sensitivity": design.sensitivity.to_dict("records"),
         "assumptions": list(design.assumptions), "warnings": list(design.warnings), "cautions": list(design.cautions),
     }
@@ -50,9 +48,11 @@ def _plain(value: Any) -> Any:
 
 def _stream(design: Design) -> dict[str, Any]:
     chem, mean = design.basis.chem, design.basis.mean
-    wastes = [{"name": w.name, "base_eq_l": b, "ph": p, "known_by": "titration" if w.curve is not None else "composition"}
+    wastes = [{"name": w.name, "base_eq_l": b, "ph": p,
+               "known_by": "titration" if w.curve is not None else "composition"}
               for w, b, p in zip(chem.wastes, chem.base_eq_l, chem.ph, strict=True)]
-    return {"wastes": wastes, "temperature_c": chem.t_c, "mean_flow_m3_h": mean.flow_m3_h, "mean_base_eq_l": mean.base_eq_l,
+    return {"wastes": wastes, "temperature_c": chem.t_c, "mean_flow_m3_h": mean.flow_m3_h,
+            "mean_base_eq_l": mean.base_eq_l,
             "mean_ph": chem.readout.ph(mean.base_eq_l, mean.amounts), "course": design.basis.course.source}
 
 
@@ -68,8 +68,9 @@ def _need(n: Need) -> dict[str, Any]:
 
 
 def _reagents(design: Design) -> dict[str, Any]:
-    return {"chosen": {kind: r.name for kind, r in design.basis.chosen.items()},
-            "compared": [{"why": c.why, "rows": c.table().to_dict("records")} for c in design.basis.comparisons.values()]}
+    basis = design.basis
+    return {"chosen": {kind: r.name for kind, r in basis.chosen.items()},
+            "compared": [{"why": c.why, "rows": c.table().to_dict("records")} for c in basis.comparisons.values()]}
 
 
 def _window(design: Design) -> dict[str, Any]:
@@ -102,8 +103,8 @@ def _stage(s: Stage, mean_m3_h: float) -> dict[str, Any]:
             "residence_conflict": s.residence.conflict, "setpoint_ph": s.setpoint_ph, "dead_time_s": s.mixer.dead_s,
             "lag_s": s.mixer.lag_s, "power_w": s.mixer.power_w, "power_low_w": s.mixer.power_low_w,
             "power_high_w": s.mixer.power_high_w, "pumping_m3_h": s.mixer.pumping_m3_h,
-            "turnover_per_min": s.mixer.turnover_per_min, "diameter_m": s.vessel.diameter_m, "liquid_m": s.vessel.liquid_m,
-            "wall_m": s.vessel.wall_m, "vessel": s.vessel.words, "mixer": s.mixer.words}
+            "turnover_per_min": s.mixer.turnover_per_min, "diameter_m": s.vessel.diameter_m,
+            "liquid_m": s.vessel.liquid_m, "wall_m": s.vessel.wall_m, "vessel": s.vessel.words, "mixer": s.mixer.words}
 
 
 def _feed(design: Design) -> list[dict[str, Any]]:
@@ -117,8 +118,8 @@ def _feed_row(stage: Stage, kind: str, f: StageFeed) -> dict[str, Any]:
             "least_l_h": f.need.least_l_h, "largest_l_h": f.need.largest_l_h, "size_l_h": f.need.size_l_h,
             "turndown": f.need.device_turndown, "resolution_needed": None if a is None else a.needed,
             "resolution_has": None if a is None else a.has, "holds": None if a is None else a.holds,
-            "verdict": "" if a is None else a.words, "split_range": None if f.split is None else f.split.words,
-            "line_dead_s": f.line_s, "line": "" if f.line is None else f.line.words, "devices": list(f.devices)}
+            "verdict": "" if a is None else a.words, "judged_at_m3_h": f.judged_m3_h,
+            "split_range": None if f.split is None else f.split.words, "line_dead_s": f.line_s, "line": "" if f.line is None else f.line.words, "devices": list(f.devices)}
 
 
 def _simulation(t: Trial, design: Design) -> dict[str, Any]:
@@ -129,7 +130,8 @@ def _simulation(t: Trial, design: Design) -> dict[str, Any]:
     return {
         "days": c.simulated_min / 1440.0, "step_s": t.step_s, "minutes_outside": c.outside_min[0],
         "percent_outside": 100.0 * c.outside_min[0] / c.simulated_min, "longest_excursion_min": c.longest_min[0],
-        "worst_ph": worst, "lowest_ph": low, "highest_ph": high, "rule": t.rule.words(c.simulated_min), "keeps_rule": t.kept,
+        "worst_ph": worst, "lowest_ph": low, "highest_ph": high, "rule": t.rule.words(c.simulated_min),
+        "keeps_rule": t.kept,
         "balance_error": float(np.abs(c.balance_error).max()),
         "base_used_eq": c.base_used_eq[:, 0], "acid_used_eq": c.acid_used_eq[:, 0],
         "cases": None if m is None else int(m.meets.size),
@@ -142,6 +144,13 @@ def _simulation(t: Trial, design: Design) -> dict[str, Any]:
         "faults": [{"tank": f.tank, "kind": f.kind, "words": f.words, "minutes_to_leave": f.minutes_to_leave,
                     "minutes_outside": f.minutes_outside, "lowest_ph": f.lowest_ph, "highest_ph": f.highest_ph}
                    for f in t.faults]}
+
+
+def _side_effects(design: Design) -> list[dict[str, Any]]:
+    chosen = design.basis.chosen
+    return [{"reagent": chosen[kind].name if kind in chosen else kind, "name": e.name, "value": e.value, "unit": e.unit,
+             "severity": e.severity, "words": e.words, "rule": e.rule, "source": e.source}
+            for kind, s in design.side.items() for e in s.rows]
 
 
 def _storage(design: Design) -> dict[str, Any]:

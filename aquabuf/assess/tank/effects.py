@@ -1,4 +1,4 @@
-"""Side effects of a load of wastes with a reagent: from tables and totals to the record that they are worked out from."""
+"""Side effects of a load of wastes with a reagent: from tables and totals to the record that they follow from."""
 
 from __future__ import annotations
 
@@ -16,7 +16,7 @@ from aquabuf.engine.readout import GRID_PH
 
 __all__ = ["effects_of", "summary_of", "totals_of", "treated"]
 
-LOWEST_C, HIGHEST_C = 0.0, 60.0
+LOWEST_C = 0.0  # of side effects; a waste may be a little colder
 SLUDGE, HEAT, GAS = "dry solids per day", "temperature rise", "carbon dioxide set free"
 
 
@@ -39,10 +39,10 @@ def totals_of(chem: Chemistry, load: Load) -> tuple[dict[str, float], dict[Acid,
 
 
 def treated(chem: Chemistry, load: Load, reagent: Reagent, eq_l: float, end_ph: float) -> Treated:
-    """A load that a reagent brings to a pH, as side effects need it. eq_l : equivalents that react, per liter. [eq/L]"""
+    """A load that a reagent brings to a pH, as side effects need it. eq_l : reacting equivalents per liter. [eq/L]"""
     totals, own, solids = totals_of(chem, load)
     return Treated(
-        flow_m3_h=load.flow_m3_h, t_c=float(np.clip(chem.t_c, LOWEST_C, HIGHEST_C)),
+        flow_m3_h=load.flow_m3_h, t_c=max(chem.t_c, LOWEST_C),
         start_ph=float(chem.readout.ph(load.base_eq_l, load.amounts)), end_ph=end_ph, dose_eq_l=eq_l,
         product=reagent.stock.product, strength=reagent.stock.strength, totals=totals, acids=own,
         held=_held(chem, load), solids_g_l=solids, efficiency=reagent.efficiency, constants=chem.constants)
@@ -58,14 +58,13 @@ def _held(chem: Chemistry, load: Load) -> Callable[[float], float] | None:
     return lambda ph: float(np.interp(ph, GRID_PH, table))
 
 
-def effects_of(chem: Chemistry, load: Load, reagent: Reagent, eq_l: float, end_ph: float, *,
-               window: tuple[float, float] | None = None, outlet_limit_c: float | None = None) -> SideEffects:
+def effects_of(chem: Chemistry, load: Load, reagent: Reagent, eq_l: float, end_ph: float) -> SideEffects:
     """Side effects of a reagent in a load."""
-    more = {} if outlet_limit_c is None else {"outlet_limit_c": outlet_limit_c}
-    return side_effects(treated(chem, load, reagent, eq_l, end_ph), window=window, **more)
+    return side_effects(treated(chem, load, reagent, eq_l, end_ph))
 
 
-def summary_of(effects: SideEffects) -> Effects:
-    """What the comparison of reagents shows of them."""
+def summary_of(effects: SideEffects, m3_d: float) -> Effects:
+    """What the comparison of reagents shows of them. m3_d : flow, as gas is told per volume."""
     values = {row.name: row.value for row in effects.rows}
-    return Effects(sludge_kg_d=values.get(SLUDGE, 0.0), heat_k=values.get(HEAT, 0.0), gas_kg_d=values.get(GAS, 0.0))
+    return Effects(sludge_kg_d=values.get(SLUDGE, 0.0), heat_k=values.get(HEAT, 0.0),
+                   gas_kg_d=values.get(GAS, 0.0) * m3_d)

@@ -123,20 +123,27 @@ def _meant(place: Place, name: str, own: OwnAcids) -> Meant:
         return CARBON
     if known:
         return known
-    ions = [metal for metal in metals() if "(" in metal and metal.partition("(")[0] == plain(name)]
-    if len(ions) == 1 and plain(name) in substances():
-        return ions[0]  # manganese that is dissolved is manganese(II)
-    if ions:
-        raise place.error(f"{name} must say which ion it is, as each asks for base of its own; found {name!r}. Write "
-                          f"{' or '.join(ions)}.", name)
+    if plain(name) in substances() and len(_metals_in(name)) == 1:
+        return _metals_in(name)[0]  # manganese that is dissolved is manganese(II)
     try:
-        return _dissolved_product(place, name, find_product(name))
+        product = find_product(name)
     except InputError as error:
-        if "can mean several" in str(error) or str(error).startswith(place.file):
-            raise place.error(str(error).removeprefix(f"{place.where(name)}: "), name) from None
+        if "can mean several" in str(error):
+            raise place.error(str(error), name) from None
+    else:
+        return _dissolved_product(place, name, product)
+    if _metals_in(name):
+        raise place.error(f"{name} must say which ion it is, as each asks for base of its own; found {name!r}. Write "
+                          f"{' or '.join(_metals_in(name))}.", name)
     hint = nearest_hint(name, (*own, *free_acids(), *metals(), ALKALINITY, *_totals(), *products()))
     raise place.error(f"{name!r} is no product, weak acid, metal or ion.{hint} Correct it, or define an acid of your "
                       "own in [acids].", name)
+
+
+def _metals_in(name: str) -> list[str]:
+    """Metals that a name has in it ("total iron"), or the symbol of which it is."""
+    words = plain(name).split("_")
+    return [n for n, metal in metals().items() if plain(n).split("_")[0] in words or metal.symbol == name]
 
 
 def _dissolved_product(place: Place, name: str, product: Product) -> Product:

@@ -6,77 +6,92 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 import pandas as pd
+from numpy.typing import NDArray
 
 from aquabuf.assess.tank.basis import Basis
 from aquabuf.assess.tank.demand import window_fit
-from aquabuf.assess.tank.layout import Layout
-from aquabuf.assess.tank.waste import Chemistry, chemistry
+from aquabuf.assess.tank.waste import HIGHEST_STRENGTH, Chemistry, chemistry
+from aquabuf.engine.conditions import LIMITS
+from aquabuf.engine.readout import PH_LEAST, PH_MOST
 
 __all__ = ["sensitivity_of"]
 
+Array = NDArray[np.float64]
+
 STRENGTH, BUFFERS, AIM_PH, TEMPERATURE_K, PH_READING, IONIC = 0.1, 0.2, 0.5, 10.0, 0.1, 2.0
+NEAR_END = 0.1  # of the width of the window: an aim is moved no closer to its ends
 
 
-@dataclass(frozen=True, slots=True)
-class _Point:
-    demand_eq_l: float
-    tolerance_eq_l: float
+@dataclass(frozen=True, slots=True, eq=False)
+class _Mean:
+    """The mean of the stream under some chemistry: its base as it comes, and its amounts."""
+
+    chem: Chemistry
+    base_eq_l: float
+    amounts: Array
 
 
-def _point(basis: Basis, chem: Chemistry, base: float, amounts: np.ndarray, aim: float) -> _Point:
-    window = basis.job.window
-    aim = float(np.clip(aim, window.low + 0.05, window.high - 0.05))
-    fit = window_fit(chem.readout, base, amounts, window.low, window.high, aim)
-    return _Point(float(fit.demand_eq_l), float(fit.tolerance_eq_l))
-
-
-def sensitivity_of(basis: Basis, layout: Layout) -> pd.DataFrame:
+def sensitivity_of(basis: Basis) -> pd.DataFrame:
     """One row per change: demand to the aim and tolerance of the window, and both over those of the design.
+
+    Strength moves base and buffers together, buffers what holds base alone. A change of chemistry moves the base of a
+    waste only where it follows from a measured pH. Changes that cannot be made have no row.
 
     Columns: change, demand_eq_l, demand_ratio, tolerance_eq_l, tolerance_ratio.
     """
-    mean, aim = basis.mean, basis.aim_ph
-    shares = mean.amounts[:-1]
-
-    def at(chem: Chemistry, strength: float = 1.0, buffers: float = 1.0, aim_ph: float = aim) -> _Point:
-        base, amounts = chem.blend(shares)
-        if chem is basis.chem:
-            base = mean.base_eq_l
-        return _point(basis, chem, strength * base, strength * buffers * amounts, aim_ph)
-
-    def remade(t_c: float | None = None, strength: float | None = None, ph: float = 0.0) -> Chemistry | None:
-        wastes = [w if w.ph is None or w.base_eq_l is not None or w.curve is not None else replace(w, ph=w.ph + ph)
-                  for w in basis.job.wastes]
-        if ph and all(a is b for a, b in zip(wastes, basis.job.wastes, strict=True)):
-            return None
-        return chemistry(wastes, t_c=basis.chem.t_c if t_c is None else t_c, ionic_strength_mol_l=strength)
-
-    usual = at(basis.chem)
-    i = float(basis.chem.constants.ionic_strength_mol_l)
-    t_low, t_high = max(basis.chem.t_c - TEMPERATURE_K, 0.0), min(basis.chem.t_c + TEMPERATURE_K, 50.0)
-    made = [
-        (f"strength {100 * STRENGTH:+.0f} %", lambda: at(basis.chem, 1.0 + STRENGTH)),
-        (f"strength {-100 * STRENGTH:+.0f} %", lambda: at(basis.chem, 1.0 - STRENGTH)),
-        (f"buffers {100 * BUFFERS:+.0f} %", lambda: at(basis.chem, buffers=1.0 + BUFFERS)),
-        (f"buffers {-100 * BUFFERS:+.0f} %", lambda: at(basis.chem, buffers=1.0 - BUFFERS)),
-        (f"aim {AIM_PH:+.1f} pH", lambda: at(basis.chem, aim_ph=aim + AIM_PH)),
-        (f"aim {-AIM_PH:+.1f} pH", lambda: at(basis.chem, aim_ph=aim - AIM_PH)),
-        (f"at {t_low:.0f} °C", lambda: at(remade(t_c=t_low) or basis.chem)),
-        (f"at {t_high:.0f} °C", lambda: at(remade(t_c=t_high) or basis.chem)),
-        (f"pH read {PH_READING:+.1f}", lambda: _or_none(remade(ph=PH_READING), at)),
-        (f"pH read {-PH_READING:+.1f}", lambda: _or_none(remade(ph=-PH_READING), at)),
-        (f"ionic strength times {IONIC:g}", lambda: at(remade(strength=IONIC * i) or basis.chem)),
-        ("no ionic strength", lambda: at(remade(strength=0.0) or basis.chem)),
+    as_is = _Mean(basis.chem, basis.mean.base_eq_l, basis.mean.amounts)
+    usual = _row(basis, "", as_is, basis.aim_ph)
+    rows = [
+        *(_row(basis, f"strength {100.0 * x:+.0f} %", _scaled(as_is, 1.0 + x, 1.0 + x), basis.aim_ph)
+          for x in (STRENGTH, -STRENGTH)),
+        *(_row(basis, f"buffers {100.0 * x:+.0f} %", _scaled(as_is, 1.0, 1.0 + x), basis.aim_ph)
+          for x in (BUFFERS, -BUFFERS)),
+        *(_row(basis, f"aim pH {ph:.4g}", as_is, ph) for ph in _other_aims(basis)),
+        *(_row(basis, words, _remade(basis, chem), basis.aim_ph) for words, chem in _other_chemistry(basis)),
     ]
-    rows = []
-    for change, do in made:
-        p = do()
-        if p is not None:
-            rows.append({"change": change, "demand_eq_l": p.demand_eq_l,
-                         "demand_ratio": p.demand_eq_l / usual.demand_eq_l if usual.demand_eq_l else np.nan,
-                         "tolerance_eq_l": p.tolerance_eq_l, "tolerance_ratio": p.tolerance_eq_l / usual.tolerance_eq_l})
-    return pd.DataFrame(rows)
+    for row in rows:
+        for what in ("demand", "tolerance"):
+            before = usual[f"{what}_eq_l"]
+            row[f"{what}_ratio"] = row[f"{what}_eq_l"] / before if before != 0.0 else np.nan
+    return pd.DataFrame(rows)[["change", "demand_eq_l", "demand_ratio", "tolerance_eq_l", "tolerance_ratio"]]
 
 
-def _or_none(chem: Chemistry | None, at) -> _Point | None:
-    return None if chem is None else at(chem)
+def _row(basis: Basis, change: str, mean: _Mean, aim_ph: float) -> dict:
+    window = basis.job.window
+    fit = window_fit(mean.chem.readout, mean.base_eq_l, mean.amounts, window.low, window.high, aim_ph)
+    return {"change": change, "demand_eq_l": float(fit.demand_eq_l), "tolerance_eq_l": float(fit.tolerance_eq_l)}
+
+
+def _scaled(mean: _Mean, base: float, amounts: float) -> _Mean:
+    return _Mean(mean.chem, base * mean.base_eq_l, amounts * mean.amounts)
+
+
+def _remade(basis: Basis, chem: Chemistry) -> _Mean:
+    """The mean under other chemistry; where the base of the stream was measured, it moves by as much as that of the
+    wastes."""
+    shares = basis.mean.amounts[:-1]
+    return _Mean(chem, basis.mean.base_eq_l + chem.blend(shares)[0] - basis.chem.blend(shares)[0], basis.mean.amounts)
+
+
+def _other_aims(basis: Basis) -> list[float]:
+    window = basis.job.window
+    free = NEAR_END * (window.high - window.low)
+    found = (float(np.clip(basis.aim_ph + x, window.low + free, window.high - free)) for x in (AIM_PH, -AIM_PH))
+    return [ph for ph in found if abs(ph - basis.aim_ph) > 1e-6]
+
+
+def _other_chemistry(basis: Basis) -> list[tuple[str, Chemistry]]:
+    """Other temperatures, pH as measured, and ionic strengths."""
+    wastes, t_c, i = basis.job.wastes, basis.chem.t_c, float(basis.chem.constants.ionic_strength_mol_l)
+    low, high = LIMITS["t_c"][:2]
+    made = [(f"at {t:.0f} °C", chemistry(wastes, t_c=t))
+            for t in (max(t_c - TEMPERATURE_K, low), min(t_c + TEMPERATURE_K, high)) if abs(t - t_c) > 1e-6]
+    for x in (PH_READING, -PH_READING):
+        read = [replace(w, ph=float(np.clip(w.ph + x, PH_LEAST, PH_MOST)))
+                if w.ph is not None and w.base_eq_l is None and w.curve is None else w for w in wastes]
+        if any(a is not b for a, b in zip(read, wastes, strict=True)):
+            made.append((f"pH read {x:+.1f}", chemistry(read, t_c=t_c)))
+    strengths = ((f"ionic strength times {IONIC:g}", IONIC * i), ("no ionic strength", 0.0))
+    made += [(words, chemistry(wastes, t_c=t_c, ionic_strength_mol_l=mol_l)) for words, mol_l in strengths
+             if i > 0.0 and mol_l <= HIGHEST_STRENGTH]
+    return made

@@ -6,7 +6,7 @@ The design is accepted by this and not by a rule of thumb: by the share of simul
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 from aquabuf.assess.tank.arrivals import courses
 from aquabuf.assess.tank.basis import L_PER_M3, Basis, amounts_of
 from aquabuf.assess.tank.control import Controller, Tuning, simc, steepest_slope, tank_loop
-from aquabuf.assess.tank.curve import strength_of
+from aquabuf.assess.tank.curve import MeasuredCurve, strength_of
 from aquabuf.assess.tank.equalize_volume import run_tank
 from aquabuf.assess.tank.equipment import Feeder, Inflow, Probe, Tank, step_for
 from aquabuf.assess.tank.faults import FAULTS, Fault
@@ -25,7 +25,7 @@ from aquabuf.assess.tank.reagents import ACID, BASE
 from aquabuf.assess.tank.simulate import Simulated, simulate
 from aquabuf.engine.readout import GRID_PH
 
-__all__ = ["FaultRun", "Trial", "inflow_of", "tanks_of", "tunings_of", "trial_of"]
+__all__ = ["ENOUGH", "OPERATOR_MIN", "FaultRun", "Trial", "bands_of", "inflow_of", "tanks_of", "trial_of", "tunings_of"]
 
 Array = NDArray[np.float64]
 
@@ -33,15 +33,20 @@ DAY_S, MIN_S = 86400.0, 60.0
 LONGEST_STEP_S = 10.0     # of a simulation whose step nobody set
 RECORDS = 1440            # of a simulated course, at most
 FAULT_S = 3600.0          # how long a fault lasts: an hour until somebody comes (practice)
-BEFORE_S, AFTER_S = 1800.0, 7200.0  # of a fault run, ahead of the fault and behind it
-CHANGE = 1.3              # of the strength while a probe is stuck: practice
+BEFORE_S, AFTER_S = 300.0, 1800.0  # of a fault run: at rest ahead of the fault, and behind it
+CHANGE = 1.3              # of the strength as a probe gets stuck: practice
+OPERATOR_MIN = 10.0       # that an operator takes to see an alarm and act: practice
 ENOUGH = 0.95             # share of the cases that must keep the time rule: practice, no source
+SPREAD_POINTS = 81        # at which samples of a titration are held against each other
 CURVE_STEP = 5            # every so many points of the grid in the curve of a controller
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class FaultRun:
-    """One failure of one tank, at the mean of the stream. minutes_to_leave : from its start, nan where it never leaves."""
+    """One failure of one tank for an hour, at the mean of what asks for the reagent concerned.
+
+    minutes_to_leave : the window, from the start of the failure; nan where it never does.
+    """
 
     tank: str
     kind: str
@@ -51,10 +56,15 @@ class FaultRun:
     lowest_ph: float
     highest_ph: float
 
+    @property
+    def is_quick(self) -> bool:
+        """Whether the window is left before an operator can act."""
+        return self.minutes_to_leave < OPERATOR_MIN
+
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class Trial:
-    """What the simulation says. monte : None where no cases were asked for. accepted : None then too."""
+    """What the simulation says. monte : None where no cases were asked for; the one course decides then."""
 
     tanks: tuple[Tank, ...]
     tunings: tuple[Tuning, ...]
@@ -101,16 +111,22 @@ def _mixing_dead_s(stage: Stage, flow_m3_h: float) -> float:
 
 
 def tunings_of(basis: Basis, layout: Layout) -> tuple[Tuning, ...]:
-    """PI settings of each tank at the mean flow, on the axis that the file wants."""
+    """PI settings of each tank at the mean flow, on the axis that the file wants.
+
+    On the pH axis by the steepest point of the curve as far from the set point as the window is wide to its nearer end.
+    """
     out = []
+    half = min(layout.window.high - layout.window.aim, layout.window.aim - layout.window.low)
     for stage in layout.stages:
-        main = next(f for f in stage.feeds.values() if not f.trim)
+        feeds = list(stage.feeds.values())
+        main = next((f for f in feeds if not f.trim), feeds[0])
         loop = tank_loop(stage.volume_m3, layout.mean_m3_h, mixing_dead_s=_mixing_dead_s(stage, layout.mean_m3_h),
                          line_dead_s=main.line_s, probe_lag_s=basis.job.site.probe_lag_s,
-                         dissolution_per_min=main.reagent.dissolution_per_min)
+                         dissolution_per_min=main.reagent.dissolution_per_min,
+                         sample_s=basis.job.trial.step_s or LONGEST_STEP_S)
         gain = 1.0 / (L_PER_M3 * layout.mean_m3_h)
         if basis.job.wishes.axis == "ph":
-            gain *= steepest_slope(GRID_PH, layout.curve.base, layout.window.low, layout.window.high)
+            gain *= steepest_slope(GRID_PH, layout.curve.base, stage.setpoint_ph - half, stage.setpoint_ph + half)
         out.append(simc(loop, gain))
     return tuple(out)
 
@@ -126,8 +142,9 @@ def tanks_of(basis: Basis, layout: Layout, tunings: Sequence[Tuning], faults: Se
     for k, (stage, tuning) in enumerate(zip(layout.stages, tunings, strict=True)):
         feeders = {kind: _feeder(f, basis) for kind, f in stage.feeds.items()}
         controller = Controller(
-            setpoint_ph=stage.setpoint_ph, gain=tuning.gain, reset_s=tuning.reset_s, axis=wishes.axis, curve_ph=curve_ph,
-            curve_base_eq_l=curve_base, flow_ref_m3_h=layout.mean_m3_h if wishes.feedforward else None)
+            setpoint_ph=stage.setpoint_ph, gain=tuning.gain, reset_s=tuning.reset_s, axis=wishes.axis,
+            curve_ph=curve_ph, curve_base_eq_l=curve_base,
+            flow_ref_m3_h=layout.mean_m3_h if wishes.feedforward else None)
         tanks.append(Tank(name=stage.name, volume_m3=stage.volume_m3, base=feeders.get(BASE), acid=feeders.get(ACID),
                           probe=_probe(stage, basis, layout.mean_m3_h), controller=controller,
                           faults=faults[k] if faults else ()))
@@ -159,64 +176,80 @@ def trial_of(basis: Basis, layout: Layout, *, cases: int, processes: int = 2) ->
     tanks = tanks_of(basis, layout, tunings)
     inflow = inflow_of(basis, layout, max(cases, 1))
     until = job.trial.days * DAY_S
-    step = job.trial.step_s or min(LONGEST_STEP_S, step_for(tanks, layout.peak_m3_h))
+    shortest = float(np.diff(inflow.time_s).min(initial=np.inf))
+    step = job.trial.step_s or min(LONGEST_STEP_S, step_for(tanks, layout.peak_m3_h), shortest)
     window = (job.window.low, job.window.high)
     rule = TimeRule(job.window.total_min, job.window.each_min, job.window.source)
-    common = {"window": window, "dt_s": step, "seed": job.trial.seed, "carbon_carrier": chem.carbon_carrier}
     every = step * max(1.0, np.ceil(until / RECORDS / step))
-    course = simulate(chem.readout, tanks, _of_case(inflow, 0), until_s=until, record_every_s=every, **common)
+    course = simulate(chem.readout, tanks, _of_case(inflow, 0), until_s=until, record_every_s=every,
+                      window=window, dt_s=step, seed=job.trial.seed, carbon_carrier=chem.carbon_carrier)
     monte = None
     if cases > 0:
         monte = monte_carlo(chem.readout, tanks, inflow, cases=cases, until_s=until, rule=rule, bands=bands_of(basis),
-                            processes=processes, **common)
+                            processes=processes, window=window, dt_s=step, seed=job.trial.seed,
+                            carbon_carrier=chem.carbon_carrier)
     return Trial(tanks=tanks, tunings=tunings, course=course, inflow=_of_case(inflow, 0), rule=rule, monte=monte,
                  faults=_fault_runs(basis, layout, tunings, step), step_s=step)
 
 
 def bands_of(basis: Basis) -> Bands:
-    """What is not known of the plant: buffers by the spread of the samples where there are several, probe offset."""
-    spread = basis.job.trial.buffer_sd
-    for a in basis.job.arrivals:
-        if len(a.samples) > 2:
-            low, high = max(c.ph[0] for c in a.samples), min(c.ph[-1] for c in a.samples)
-            strength, _ = strength_of(a.samples, np.linspace(low, high, 81))
-            spread = float(np.std(strength, ddof=1) / np.mean(strength))
-    return Bands(buffer_share=spread, offset_ph=basis.job.trial.probe_offset_sd)
+    """What is not known of the plant: buffers by the spread of the samples where there are several, probe offset.
+
+    With several wastes so titrated, by the largest spread.
+    """
+    spreads = [_spread(a.samples) for a in basis.job.arrivals if len(a.samples) > 1]
+    known = [s for s in spreads if np.isfinite(s)]
+    return Bands(buffer_share=max(known, default=basis.job.trial.buffer_sd), offset_ph=basis.job.trial.probe_offset_sd)
+
+
+def _spread(samples: Sequence[MeasuredCurve]) -> float:
+    """Relative standard deviation of the strength of samples; nan where they share no pH."""
+    low, high = max(c.ph[0] for c in samples), min(c.ph[-1] for c in samples)
+    if not low < high:
+        return np.nan
+    strength, _ = strength_of(samples, np.linspace(low, high, SPREAD_POINTS))
+    return float(np.std(strength, ddof=1) / abs(np.mean(strength)))
 
 
 def _faults_for(layout: Layout) -> list[tuple[int, str]]:
-    """Failures worth a look: the last probe stuck, each main feed full on or out at its tank, buffers lost."""
+    """Failures worth a look: the last probe stuck, feeds full on, main feeds out, buffers lost."""
     last = len(layout.stages) - 1
     found = [(last, "probe stuck")]
     for k in sorted({0, last}):
         for kind, feed in layout.stages[k].feeds.items():
+            if not feed.trim or k == last:
+                found.append((k, f"{kind} pump full on"))
             if not feed.trim:
-                found += [(k, f"{kind} pump full on"), (k, f"{kind} out")]
+                found.append((k, f"{kind} out"))
     return [*found, (0, "buffer lost")]
 
 
 def _fault_runs(basis: Basis, layout: Layout, tunings: Sequence[Tuning], step_s: float) -> tuple[FaultRun, ...]:
-    job, chem = basis.job, basis.chem
-    mean = layout.needs[max(layout.needs, key=lambda kind: layout.needs[kind].mean_eq_h)].loads[1]
-    inflow = Inflow([0.0], [layout.mean_m3_h], [mean.base_eq_l], mean.amounts[:, None])
-    until = BEFORE_S + FAULT_S + AFTER_S
+    job, window = basis.job, (basis.job.window.low, basis.job.window.high)
+    begin = step_s * np.ceil(BEFORE_S / step_s)
     runs = []
     for k, kind in _faults_for(layout):
-        faults = [(Fault(kind, BEFORE_S, FAULT_S),) if i == k else () for i in range(len(layout.stages))]
+        faults = [(Fault(kind, begin, FAULT_S),) if i == k else () for i in range(len(layout.stages))]
         tanks = tanks_of(basis, layout, tunings, faults)
-        if kind == "probe stuck":  # a probe that stays where it is does harm only once the stream changes
-            at = BEFORE_S + 0.25 * FAULT_S
-            inflow_k = Inflow([0.0, at], np.full(2, layout.mean_m3_h), np.array([1.0, CHANGE]) * mean.base_eq_l,
-                              np.outer(mean.amounts, [1.0, CHANGE]).reshape(-1, 2))
-        else:
-            inflow_k = inflow
-        done = simulate(chem.readout, tanks, inflow_k, until_s=until, window=(job.window.low, job.window.high),
-                        dt_s=step_s, seed=job.trial.seed, carbon_carrier=chem.carbon_carrier, record_every_s=MIN_S)
+        done = simulate(basis.chem.readout, tanks, _fault_inflow(layout, kind, begin),
+                        until_s=begin + FAULT_S + AFTER_S, window=window, dt_s=step_s, seed=job.trial.seed,
+                        carbon_carrier=basis.chem.carbon_carrier, record_every_s=step_s)
         ph = done.ph[-1, :, 0]
-        out = (ph < job.window.low) | (ph > job.window.high)
-        left = done.time_s[out & (done.time_s >= BEFORE_S)]
+        left = done.time_s[((ph < window[0]) | (ph > window[1])) & (done.time_s > begin)]
         runs.append(FaultRun(
             tank=layout.stages[k].name, kind=kind, words=FAULTS[kind], lowest_ph=float(done.lowest_ph[0]),
-            minutes_to_leave=float((left[0] - BEFORE_S) / MIN_S) if left.size else np.nan,
+            minutes_to_leave=float((left[0] - begin) / MIN_S) if left.size else np.nan,
             minutes_outside=float(done.outside_min[0]), highest_ph=float(done.highest_ph[0])))
     return tuple(runs)
+
+
+def _fault_inflow(layout: Layout, kind: str, begin_s: float) -> Inflow:
+    """The mean of what asks for the reagent that fails, else for the main one; stronger once a probe is stuck.
+
+    A probe that stays where it is does harm only when the stream changes.
+    """
+    asks = kind.split(" ")[0] if kind.endswith("out") else ""
+    needs = layout.needs.values()
+    load = layout.needs.get(asks, max(needs, key=lambda need: need.mean_eq_h)).loads[1]
+    factor = np.array([1.0, CHANGE if kind == "probe stuck" else 1.0])
+    return Inflow([0.0, begin_s], np.full(2, layout.mean_m3_h), factor * load.base_eq_l, np.outer(load.amounts, factor))

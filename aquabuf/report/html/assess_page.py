@@ -117,8 +117,10 @@ def _told(block: Block) -> str:
 
 
 def _reason(row: Mapping[str, Any], words: Mapping[str, str]) -> str:
+    """The first limit that a sample breaks, in words, and how many more."""
     names = [name for name in str(row["warnings"]).split("; ") if name]
-    return "; ".join(words.get(name, name) for name in names) if names else "no limit broken"
+    more = f" (and {len(names) - 1} more)" if len(names) > 1 else ""
+    return f"{words.get(names[0], names[0])}{more}" if names else "no limit broken"
 
 
 def _cards(tally: Tally, rows: AssessRows, limits: Sequence[Limit], quantities: Mapping[str, str], caution: str,
@@ -146,13 +148,14 @@ def _worst(rows: AssessRows, limits: Sequence[Limit]) -> str:
     """The samples that take the least acid."""
     words = {x.name: x.words for x in limits}
     kept = rows.worst.rows
-    given = [(name, title) for name, title in (("site", "Site"), ("region", "Region"), ("date", "Date"))
+    given = [(name, title) for name, title in (("site", "Site"), ("region", "Region"))
              if kept and name in kept[0]]
     columns = [Column(title="Sample"), *(Column(title=title) for _, title in given), Column(title="pH", number=True),
                Column(title="Alkalinity (meq/L)", number=True),
                Column(title=f"Acid to pH {ALWAYS_ACID:g} (meq/L)", number=True,
                       meaning="strong acid that brings the water there; negative: it is below already"),
-               Column(title="Carried by", meaning="pair of acid and base that buffers most now"), Column(title="Why")]
+               Column(title="Carried by", meaning="pair of acid and base that buffers most now"),
+               Column(title="Why", sentence=True)]
     lines = [[str(r["sample_id"]), *(str(r[name]) for name, _ in given), number(r["ph"], 2),
               number(r["alkalinity_meq_l"], 3), spread(r, RANK_BY, 3), str(r["carrier"]), _reason(r, words)]
              for r in kept]
@@ -166,7 +169,7 @@ def _worst(rows: AssessRows, limits: Sequence[Limit]) -> str:
 def _warnings(tally: Tally, limits: Sequence[Limit], quantities: Mapping[str, str]) -> str:
     """Every limit that is broken, with rule, source and next step."""
     columns = [Column(title="Warning"), Column(title="Samples", number=True), Column(title="Rule"),
-               Column(title="What to do"), Column(title="Source")]
+               Column(title="What to do", sentence=True), Column(title="Source", sentence=True)]
     lines = [[x.words, f"{tally.warnings[x.name]:,}", rule_words(x, quantities), capital(x.next_step), x.source]
              for x in limits if tally.warnings[x.name]]
     where = paragraph("Each sample with its own value and probability:" if lines else "", soft=True,

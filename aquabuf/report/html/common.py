@@ -16,10 +16,12 @@ from aquabuf.assess.uncertainty import COVERAGE
 from aquabuf.report.html.parts import Column, Link, bullets, details, facts, paragraph, section, table
 from aquabuf.tables import read_table
 
-__all__ = ["INTERVAL", "ROWS", "Block", "Kept", "blocks_of", "capital", "constants_part", "file_part", "first", "folded",
-           "limited", "number", "provenance", "quantity_words", "refused_part", "rule_words", "spread", "titled"]
+__all__ = ["INTERVAL", "ROWS", "Block", "Kept", "blocks_of", "capital", "constants_part", "file_part", "first",
+           "folded", "limited", "number", "provenance", "quantity_words", "refused_part", "rule_words", "spread",
+           "titled"]
 
 ROWS = 200  # of a table; the rest is in the CSV file beside the page
+OPEN_ROWS, FEW_ROWS = 25, 40  # rows that stand open, the others folded; up to so many all stand open
 INTERVAL = f"{COVERAGE:.0%} interval"
 SIGNS = {"<": "below", "<=": "at or below", ">": "above", ">=": "at or above"}
 OPTION_UNITS = {"_ueq_l": " [µeq/L]", "_ppm": " [ppm]"}
@@ -55,8 +57,11 @@ def limited(columns: Sequence[Column], rows: Sequence[Sequence[str | Link]], *, 
     """A table of at most `ROWS` rows, and where the rest is; `what` names the rows, such as "samples"."""
     shown = min(len(rows), ROWS)
     said = f"All {total:,} {what}, every column:" if shown >= total else \
-        f"These are {shown:,} of {total:,} {what}; all of them, every column:"
-    return table(columns, rows[:ROWS], caption=caption, tones=tones) + paragraph(said, soft=True, link=Link(file, file))
+        f"The first {shown:,} of {total:,} {what}; all of them, every column:"
+    cut = shown if shown <= FEW_ROWS else OPEN_ROWS
+    more = details(f"The next {shown - cut:,}", table(columns, rows[cut:ROWS], tones=tones[cut:ROWS]), printed=False)
+    return table(columns, rows[:cut], caption=caption, tones=tones) + more + paragraph(said, soft=True,
+                                                                                       link=Link(file, file))
 
 
 # ---------------------------------------------------------------- numbers and words
@@ -139,7 +144,7 @@ def folded(block: Block) -> str:
 
 def _title(block: Block) -> tuple[str, str]:
     title, mark, more = block.title.partition(" (")
-    return (title, capital(more.removesuffix(")"))) if mark and more.endswith(")") else (block.title, "")
+    return (title, more.removesuffix(")")) if mark and more.endswith(")") else (block.title, "")
 
 
 # ---------------------------------------------------------------- what stands at the end of a page
@@ -151,7 +156,8 @@ def refused_part(block: Block | None, kept: Kept) -> str:
         return ""
     has_file = "file" in (kept.rows[0] if kept.rows else {})
     columns = [Column(title="Name"), *([Column(title="File")] if has_file else []), Column(title="Row", number=True),
-               Column(title="Column"), Column(title="Found"), Column(title="Rule"), Column(title="What to do")]
+               Column(title="Column"), Column(title="Found"), Column(title="Rule", sentence=True),
+               Column(title="What to do", sentence=True)]
     rows = [[str(r["sample_id"]), *([str(r["file"])] if has_file else []), str(r["row"]), str(r["column"]),
              "" if pd.isna(r["value"]) else str(r["value"]), str(r["rule"]), str(r["remedy"])] for r in kept.rows]
     title, _ = _title(block)

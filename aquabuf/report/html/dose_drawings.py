@@ -106,9 +106,10 @@ def _response(answer: Answer) -> list[str]:
         plot_response(answer, curve, ax=upper, below=lower)
         svg = _svg(figure)
     dose, ph, intensity = smooth_response(answer, curve)
+    least = int(np.nanargmin(intensity))
     alt = (f"pH behind {curve.step} against the dose of {curve.product}: {ph[0]:.2f} with none, {curve.wanted_ph:.2f} "
-           f"with the {curve.wanted_mg_l:.3g} mg/L of the plan, {ph[-1]:.2f} with {dose[-1]:.3g} mg/L. Buffer intensity "
-           f"is least, {np.nanmin(intensity):.3g} meq/L per pH, at {dose[int(np.nanargmin(intensity))]:.3g} mg/L.")
+           f"with the {curve.wanted_mg_l:.3g} mg/L of the plan, {ph[-1]:.2f} with {dose[-1]:.3g} mg/L. Buffer "
+           f"intensity is least, {intensity[least]:.3g} meq/L per pH, at {dose[least]:.3g} mg/L.")
     return [drawing(svg, name="response", alt=alt, caption=response_key(answer, curve))]
 
 

@@ -108,7 +108,7 @@ def _cards(run: LakeRun) -> list[str]:
     said = ", ".join(f"{count:,} {name}" for name, count in counts.items() if count)
     unknown = f"; {len(lakes) - known:,} without a class" if known < len(lakes) else ""
     loads = f" Critical load exceeded in {exceeded:,} of {plural(over.size, 'lake')}." if over.size else ""
-    out = [card(tone, f"{risk:,} of {plural(len(lakes), 'lake')} {'is' if risk == 1 else 'are'} at risk of acid",
+    out = [card(tone, f"{risk:,} of {plural(len(lakes), 'lake')} {'is' if risk == 1 or len(lakes) == 1 else 'are'} at risk of acid",
                 number=f"{capital(said + unknown)}{loads}")]
     return out + [_lake_card(run, row, scheme) for row in _rows(run)[:1]]
 
@@ -123,10 +123,11 @@ def _lake_card(run: LakeRun, row: Mapping[str, Any], scheme: Scheme) -> str:
         ("pH", number(row["ph"], 2), ""), ("acid to pH 6 at air", spread(row, TO_PH_6, 0), " µeq/L"),
         ("above its critical load by", spread(row, "exceedance_meq_m2_yr", 0), " meq/m²/yr")) if value]
     around = f"; in parentheses the {INTERVAL}" if run.options.draws else ""
+    rule = scheme.rule(place).replace("<=", "≤").replace(">=", "≥")
     tone = "note" if not has_class else "warn" if scheme.classes[place].at_risk else "good"
     return card(tone, f"Look at first: {_name(row)}, {row['class'] or 'no class'}{chance}",
                 number=f"{'; '.join(figures)}{around}." if figures else "",
-                rule=f"{scheme.rule(place)} ({scheme.classes[place].source})" if has_class else "",
+                rule=f"{rule} ({scheme.classes[place].source})" if has_class else "",
                 next_step=capital(row["next_step"]), caution=cautions("lake")[0])
 
 
@@ -136,20 +137,18 @@ def _lake_card(run: LakeRun, row: Mapping[str, Any], scheme: Scheme) -> str:
 def _first(run: LakeRun) -> str:
     """The lakes in the order in which to look at them."""
     rows, scheme = _rows(run), run.found.rules.schemes[0]
-    given = [(name, title) for name, title in (("region", "Region"), ("date", "Date")) if rows and name in rows[0]]
-    columns = [Column(title="Lake"), *(Column(title=title) for _, title in given), Column(title="Class"),
+    has_region = bool(rows) and "region" in rows[0]
+    columns = [Column(title="Lake"), *([Column(title="Region")] if has_region else []), Column(title="Class"),
                Column(title="Probability", number=True, meaning="of this class, with the errors of the readings"),
                Column(title="ANC (µeq/L)", number=True, meaning="acid neutralizing capacity in use"),
                Column(title="pH", number=True),
                Column(title="Acid to pH 6 at air (µeq/L)", number=True, meaning="negative: below pH 6 already"),
                Column(title="Exceedance (meq/m²/yr)", number=True, meaning="above the critical load; negative: below"),
-               Column(title="ANC in an episode (µeq/L)", number=True, meaning="with melt or storm water mixed in"),
-               Column(title="ANC from"), Column(title="Why")]
-    lines = [[_name(r), *(_plain(r[name]) for name, _ in given),
+               Column(title="Why", sentence=True)]
+    lines = [[_name(r), *([_plain(r["region"])] if has_region else []),
               (r["class"] or "no class") + (f", could be {r['class_also']}" if r["class_also"] else ""),
               number(r["class_probability"], 2), spread(r, "anc_used_ueq_l", 0), number(r["ph"], 2),
-              spread(r, TO_PH_6, 0), spread(r, "exceedance_meq_m2_yr", 0), number(r["episode_anc_ueq_l"], 0),
-              str(r["anc_used_from"]), str(r["reason"])] for r in rows]
+              spread(r, TO_PH_6, 0), spread(r, "exceedance_meq_m2_yr", 0), str(r["reason"])] for r in rows]
     worst, risk = scheme.classes[0].name, _at_risk(scheme)
     tones = ["stop" if r["class"] == worst and worst in risk else "warn" if r["class"] in risk else "" for r in rows]
     around = f"; in parentheses the {INTERVAL}" if run.options.draws else ""
@@ -194,7 +193,7 @@ def _trends(run: LakeRun) -> str:
     order = {word: place for place, word in enumerate(("no", "not shown", "unclear", "unknown", "yes"))}
     rows = sorted(run.recovery.to_dict("records"), key=lambda r: order.get(r["recovering"], len(order)))
     columns = [Column(title="Lake"), Column(title="Recovers from acid"), Column(title="What is seen"),
-               Column(title="ANC per year (µeq/L)", number=True), Column(title="In words")]
+               Column(title="ANC per year (µeq/L)", number=True), Column(title="In words", sentence=True)]
     lines = [[str(r["site"]), str(r["recovering"]), str(r["verdict"]), number(r["anc_slope_ueq_l_yr"], 2),
               str(r["words"])] for r in rows]
     counts = run.recovery["recovering"].value_counts()
@@ -211,7 +210,7 @@ def _warnings(run: LakeRun) -> str:
     """The limits behind the warnings, folded."""
     quantities = quantity_words(lake_columns(run.options.thresholds))
     columns = [Column(title="Warning"), Column(title="Lakes", number=True), Column(title="Rule"),
-               Column(title="What to do"), Column(title="Source")]
+               Column(title="What to do", sentence=True), Column(title="Source", sentence=True)]
     lines = []
     for x in run.limits:
         broken = run.found.broken.get(x.name)

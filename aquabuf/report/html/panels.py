@@ -6,6 +6,7 @@ import io
 import warnings
 from collections.abc import Callable, Sequence
 from functools import partial
+from typing import Any
 
 import matplotlib
 import numpy as np
@@ -73,7 +74,7 @@ def sample_drawings(tally: Tally, curves: pd.DataFrame) -> list[str]:
     warned = warned > 0.5
     worst = tally.worst
     bars = "; ".join(f"{r['sample_id']} {number(r[RANK_BY], 3)}" for _, r in worst.head(BARS).iterrows())
-    names = ", ".join(str(name) for name in worst["sample_id"].head(CURVES))
+    starts = ", ".join(f"{r['sample_id']} (from pH {number(r['ph'], 2)})" for _, r in worst.head(CURVES).iterrows())
     of = f"{ph.size:,} samples, {int(warned.sum()):,} with a warning"
     return [
         drawing(panel(lambda ax: plot_worst(worst, ax=ax)), name="worst-samples",
@@ -83,7 +84,7 @@ def sample_drawings(tally: Tally, curves: pd.DataFrame) -> list[str]:
                 alt=f"{of}: pH {_range(ph, 2)}, alkalinity {_range(alkalinity, 3)} meq/L.",
                 caption="pH against alkalinity; triangles: a limit is broken."),
         drawing(panel(lambda ax: plot_curves(curves, worst, ax=ax)), name="added-acid",
-                alt=f"pH against strong acid or base added to {names}.",
+                alt=f"pH against strong acid or base added to {starts}.",
                 caption="What acid (right of 0) or base (left) does to the worst-buffered samples."),
         drawing(panel(lambda ax: plot_buffering(ph, buffer, warned, ax=ax)), name="buffer-intensity",
                 alt=f"Buffer intensity of {of}: {_range(buffer, 4)} meq/L per pH.",
@@ -98,12 +99,13 @@ def titration_drawings(result: TitrationResult, i: int) -> list[str]:
     """Curve and Gran line of titration `i` of `result.solved`; `name` of the drawings is its row."""
     title, row = title_line(result, i), int(result.results["row"].iloc[result.at[i]])
     ph = result.solved.ph[i]
+    points = f"{int(np.isfinite(ph).sum())} points"
     return [
         drawing(panel(lambda ax: plot_curve(result, i, ax=ax)), name=f"curve-{row}",
-                alt=f"Titration curve, {title}; {int(np.isfinite(ph).sum())} points from pH {_range(ph, 2)}.",
+                alt=f"Titration curve, {title}; {points} from pH {_range(ph, 2)}.",
                 caption=title),
         drawing(panel(lambda ax: plot_gran(result, i, ax=ax)), name=f"gran-{row}",
-                alt=f"First Gran function and its line, {title}.", caption="The same titration: Gran line."),
+                alt=f"First Gran function of the {points} and its line, {title}.", caption="The same titration: Gran line."),
     ]
 
 
@@ -147,7 +149,7 @@ def lake_drawings(run: LakeRun) -> list[str]:
     return out + _trend_drawings(run)
 
 
-def _trend(series: pd.DataFrame, row: pd.Series, ax: Axes) -> None:
+def _trend(series: pd.DataFrame, row: pd.Series[Any], ax: Axes) -> None:
     plot_trend(series, row, ax=ax, width_inches=SMALL_WIDE)
 
 
@@ -157,9 +159,9 @@ def _trend_drawings(run: LakeRun) -> list[str]:
         return []
     out: list[str] = []
     for site in sites_on_page(run.trends)[0]:
-        of_site = run.trends[run.trends["site"] == site].set_index("quantity", drop=False)
+        of_site = run.trends[run.trends["site"] == site]
         for name in main_quantities(run.trends, site):
-            row = of_site.loc[name]
+            row = of_site[of_site["quantity"] == name].iloc[0]
             svg = panel(partial(_trend, run.series, row), wide=SMALL_WIDE, high=SMALL_HIGH)
             out.append(drawing(svg, name=f"trend-{len(out) + 1}", alt=f"{site}: {row['words']}."))
     return out

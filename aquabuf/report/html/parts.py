@@ -81,24 +81,31 @@ def facts(pairs: Iterable[tuple[str, str]]) -> str:
     return f'<div class="scroll" tabindex="0"><table>\n<tbody>\n{rows}\n</tbody>\n</table></div>' if rows else ""
 
 
-def details(title: str, *body: str) -> str:
-    """Something folded; empty where there is nothing in it."""
+def details(title: str, *body: str, printed: bool = True) -> str:
+    """Something folded, which opens for the printer or stays away from it; empty where there is nothing in it."""
     inner = "\n".join(part for part in body if part)
-    return f"<details>\n<summary>{shown_text(title)}</summary>\n{inner}\n</details>" if inner else ""
+    kind = "" if printed else ' class="screen"'
+    return f"<details{kind}>\n<summary>{shown_text(title)}</summary>\n{inner}\n</details>" if inner else ""
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Column:
-    """A column of a table: its heading with the unit, whether it holds numbers, what the heading means."""
+    """A column of a table: its heading with the unit, whether it holds numbers or sentences, what the heading means."""
 
     title: str
     number: bool = False
+    sentence: bool = False
     meaning: str = ""
+
+    @property
+    def kind(self) -> str:
+        """Its class as an attribute."""
+        return ' class="number"' if self.number else ' class="sentence"' if self.sentence else ""
 
     def head(self) -> str:
         """Its heading."""
         hint = f' title="{shown_text(self.meaning)}"' if self.meaning else ""
-        return f'<th scope="col"{" class=number" if self.number else ""}{hint}>{shown_text(self.title)}</th>'
+        return f'<th scope="col"{self.kind}{hint}>{shown_text(self.title)}</th>'
 
 
 def table(columns: Sequence[Column], rows: Iterable[Sequence[str | Link]], *, caption: str = "",
@@ -113,8 +120,7 @@ def table(columns: Sequence[Column], rows: Iterable[Sequence[str | Link]], *, ca
             raise InputError(f"row {k + 1} of a table must have {len(columns)} cells; found {len(row)}. Fill it up.")
         tone = f' class="{tones[k]}"' if k < len(tones) and tones[k] in ("stop", "warn") else ""
         cells = [f'<th scope="row">{_cell(row[0])}</th>']
-        cells += [f'<td{" class=number" if c.number else ""}>{_cell(v)}</td>'
-                  for c, v in zip(columns[1:], row[1:], strict=True)]
+        cells += [f"<td{c.kind}>{_cell(v)}</td>" for c, v in zip(columns[1:], row[1:], strict=True)]
         lines.append(f"<tr{tone}>{''.join(cells)}</tr>")
     if not lines:
         return ""

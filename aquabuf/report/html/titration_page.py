@@ -13,7 +13,7 @@ from aquabuf.assess.titration.choose import method_facts
 from aquabuf.assess.titration.findings import finding_facts
 from aquabuf.assess.titration.options import ph_digits
 from aquabuf.assess.titration.solve import ACIDITY_END_POINTS
-from aquabuf.assess.titration.tables import NO_RESULT, REFUSED, WARNED
+from aquabuf.assess.titration.tables import NO_RESULT, REFUSED, WARNED, limit_words
 from aquabuf.assess.uncertainty import TO_COVERAGE
 from aquabuf.report.html.common import (
     INTERVAL,
@@ -35,7 +35,7 @@ from aquabuf.report.html.parts import Column, Link, card, details, gallery, sect
 from aquabuf.report.summary import plural
 from aquabuf.report.titration_tally import TitrationTally
 
-__all__ = ["TitrationRows", "titration_page"]
+__all__ = ["TitrationRows", "rank_of", "titration_page"]
 
 UNITS = {"ueq_l": "µeq/L", "umol_kg": "µmol/kg"}
 RANKS = {NO_RESULT: 0, REFUSED: 1, WARNED: 2}  # what to look at first
@@ -44,6 +44,11 @@ WHOLE_FROM = 10.0  # half an interval, from which on a result has no decimals
 TONES = {NO_RESULT: "stop", REFUSED: "stop", WARNED: "warn"}
 OWN = ("Results", "Refused", "Next")
 FOLDED = ("Files",)
+
+
+def rank_of(status: str) -> int:
+    """Place of a status in the order in which to look: the lowest first."""
+    return RANKS.get(status, LAST)
 
 
 @dataclass(slots=True)
@@ -56,7 +61,7 @@ class TitrationRows:
 
     def add(self, part: TitrationResult) -> None:
         """Take in one piece."""
-        self.results.add(part.results, part.results["status"].map(lambda s: RANKS.get(s, LAST)).to_numpy(dtype=float))
+        self.results.add(part.results, part.results["status"].map(rank_of).to_numpy(dtype=float))
         self.findings.add(part.findings)
         self.refused.add(part.rejected)
 
@@ -146,9 +151,10 @@ def _first(row: Mapping[str, Any], caution: str) -> str:
     value, unit, definition = _result(row)
     said = f"{definition} {value} {unit} ({INTERVAL})" if value else "no result"
     fact = facts.get(found[0]) if found else None
+    limit = f", {limit_words(fact)}" if fact and limit_words(fact) else ""
     return card(TONES.get(row["status"], "good"), f"{row['sample_id']}: {said}",
-                number=capital(fact["words"]) if fact else capital(_method(row)),
-                rule=f"{row['recommended_reason']}" + (f" ({fact['source']})" if fact else ""),
+                number=capital(f"{fact['words']}; {row['recommended_reason']}" if fact else row["recommended_reason"]),
+                rule=f"{found[0]}{limit} ({fact['source']})" if fact else "",
                 next_step=capital(fact["remedy"]) if fact else "", caution=caution)
 
 
@@ -156,9 +162,13 @@ def _results(rows: TitrationRows) -> str:
     """Each titration with its result, method and why."""
     kept = rows.results.rows
     has_figure = any(r.get("figure") for r in kept)
-    columns = [Column(title="Sample"), Column(title="Result", number=True, meaning=f"± is half the {INTERVAL}"),
-               Column(title="Unit"), Column(title="mg/L as CaCO3", number=True, meaning="of the alkalinity or ANC"),
-               Column(title="What it is"), Column(title="Method"), Column(title="Findings"), Column(title="Why"),
+    units = sorted({_result(r)[1] for r in kept} - {""})
+    one = f" ({units[0]})" if len(units) == 1 else ""
+    columns = [Column(title="Sample"), Column(title=f"Result{one}", number=True, meaning=f"± is half the {INTERVAL}"),
+               *([Column(title="Unit")] if not one else []),
+               Column(title="mg/L as CaCO3", number=True, meaning="of the alkalinity or ANC"),
+               Column(title="What it is"), Column(title="Method"), Column(title="Findings"),
+               Column(title="Why", sentence=True),
                *([Column(title="Figure")] if has_figure else [])]
     lines: list[list[str | Link]] = []
     for r in kept:
@@ -168,7 +178,8 @@ def _results(rows: TitrationRows) -> str:
         why = str(r["recommended_reason"]) if r["status"] != REFUSED else "see what was refused, below"
         name = str(r.get("figure") or "")
         figure = [Link("figure", name) if name else ""] if has_figure else []
-        lines.append([str(r["sample_id"]), value or r["status"], unit, mg, definition, _method(r), said, why, *figure])
+        lines.append([str(r["sample_id"]), value or str(r["status"]), *([unit] if not one else []), mg, definition,
+                      _method(r), said, why, *figure])
     return section("Results", limited(
         columns, lines, total=rows.results.total, file="alkalinity.csv", what="titrations",
         caption=f"Without a result first, then those with a warning; ± is half the {INTERVAL}",
@@ -180,8 +191,9 @@ def _findings(rows: TitrationRows) -> str:
     if not rows.findings.total:
         return ""
     columns = [Column(title="Sample"), Column(title="Finding"), Column(title="Row", number=True),
-               Column(title="Value", number=True), Column(title="Unit"), Column(title="Limit"), Column(title="Meaning"),
-               Column(title="What to do"), Column(title="Source")]
+               Column(title="Value", number=True), Column(title="Unit"), Column(title="Limit"),
+               Column(title="Meaning", sentence=True),
+               Column(title="What to do", sentence=True), Column(title="Source", sentence=True)]
     lines = [[str(r["sample_id"]), str(r["finding"]), "" if pd.isna(r["point_row"]) else str(r["point_row"]),
               "" if pd.isna(r["value"]) else f"{r['value']:.4g}", "" if r["unit"] == "-" else str(r["unit"]),
               str(r["limit"]), first(str(r["words"]), "\n"), str(r["remedy"]), str(r["source"])]

@@ -1,4 +1,4 @@
-"""The part of a page that answers "what if": sliders over doses worked out in advance, or their table without a script."""
+"""The part of a page that answers "what if": sliders over doses worked out in advance; without a script, tables."""
 
 from __future__ import annotations
 
@@ -44,8 +44,8 @@ def whatif_panels(answer: Answer) -> tuple[str, ...]:
     if not grids:
         return ()
     records = [grid_record(answer, grid) for grid in grids]
-    out = [paragraph("Move a dose and see the water that follows; the other doses stay as planned. The works were run in "
-                     f"advance with doses from none to {LARGEST_FACTOR:g} times the plan's, so nothing is sent or "
+    out = [paragraph("Move a dose and see the water that follows; the other doses stay as planned. The works were run "
+                     f"in advance with doses from none to {LARGEST_FACTOR:g} times the plan's, so nothing is sent or "
                      "fetched. It is a reading of that table, not a new plan: before a change, solve the plan again or "
                      "try it in a jar.")]
     for k, (grid, record) in enumerate(zip(grids, records, strict=True)):
@@ -84,7 +84,7 @@ def _moved_record(answer: Answer, moved: MovedDose, mg_l: Array) -> dict[str, An
 def _line_of(answer: Answer, moved: MovedDose) -> FeedLine:
     """Feed of a dose; feeds stand in the order of the doses of the run."""
     before = sum(len(p.outcome.doses) for p in answer.train.passed[:moved.place])
-    return answer.feeds[before + moved.which]
+    return answer.feeds[moved.which]
 
 
 def _settings(answer: Answer, moved: MovedDose, mg_l: Array) -> list[float | None] | None:
@@ -109,7 +109,9 @@ def _channel_record(answer: Answer, channel: Channel) -> dict[str, Any]:
 def _windows(answer: Answer, channel: Channel) -> list[dict[str, Any]]:
     """What is wanted of a quantity there; of the pH of the final water the guard rails too."""
     q = channel.quantity
-    out = [{"words": f"{aim.step}: {aim.window.words}", "short": f"{q.label} ({aim.step})", "low": _number(float(in_unit(q, aim.window.low)), 9),
+    several = len({t.step for t in answer.targets}) > 1
+    out = [{"words": f"{aim.step}: {aim.window.words}", "short": f"{q.label} ({aim.step})" if several else q.label,
+            "low": _number(float(in_unit(q, aim.window.low)), 9),
             "high": _number(float(in_unit(q, aim.window.high)), 9)} for aim in channel.targets]
     if q.name == "ph" and channel.place in (None, len(answer.train.passed) - 1):
         g = answer.plan.guards
@@ -194,9 +196,8 @@ def _table_of(grid: DoseGrid, record: Mapping[str, Any]) -> str:
     """Water along each dose with the other as planned; open where no script folds it."""
     first = grid.channels[0].where
     shown_channels = [c for c in grid.channels if c.where == first]
-    columns = [Column(title="dose (mg/L)"), Column(title="% of the plan", number=True),
-               *(Column(title=_labelled(c), number=True, meaning=c.quantity.words) for c in shown_channels),
-               Column(title="windows")]
+    columns = [Column(title="dose (mg/L)"), Column(title="% of the plan", number=True), Column(title="windows"),
+               *(Column(title=_labelled(c), number=True, meaning=c.quantity.words) for c in shown_channels)]
     parts = []
     for i, m in enumerate(grid.moved):
         step = (grid.mg_l[i].size - 1) // TABLE_ROWS
@@ -204,8 +205,8 @@ def _table_of(grid: DoseGrid, record: Mapping[str, Any]) -> str:
         for k in range(0, grid.mg_l[i].size, step):
             at = tuple(k if j == i else (x.size - 1) // 2 for j, x in enumerate(grid.mg_l))
             lost = _lost(grid, record, at)
-            rows.append([shown(float(grid.mg_l[i][k])), f"{LARGEST * k / (grid.mg_l[i].size - 1):.0f}",
-                         *(_cell(c, float(c.values[at])) for c in shown_channels), lost])
+            rows.append([shown(float(grid.mg_l[i][k])), f"{LARGEST * k / (grid.mg_l[i].size - 1):.0f}", lost,
+                         *(_cell(c, float(c.values[at])) for c in shown_channels)])
             tones.append("warn" if lost.startswith(LOST) else "")
         parts.append(table(columns, rows, tones=tones, caption=f"{m.product.name} in {m.step}: water {first} along its "
                            "dose, the other doses as planned"))
@@ -225,7 +226,7 @@ def _lost(grid: DoseGrid, record: Mapping[str, Any], at: Sequence[int]) -> str:
     lost = [w["short"] for c, r in zip(grid.channels, record["channels"], strict=True) for w in r["windows"]
             if not _inside(float(c.values[tuple(at)]), w, r["close"])]
     every = any(r["windows"] for r in record["channels"])
-    return f"{LOST}: {'; '.join(lost)}" if lost else KEPT if every else "none wanted"
+    return f"{LOST}: {', '.join(lost)}" if lost else KEPT if every else "none wanted"
 
 
 def _inside(value: float, window: Mapping[str, Any], close: float) -> bool:

@@ -64,6 +64,9 @@ def test_largest_flow_is_passed_one_percent_of_the_time():
     s = statistics_of([arrival(6.0, most_m3_h=10.0)], 3.0)
     log_sd = np.sqrt(np.log1p(s.flow.relative_sd**2))
     assert_allclose(2.3263 * log_sd - 0.5 * log_sd**2, np.log(10.0 / 6.0), rtol=1e-4)
+    daily = statistics_of([arrival(6.0, most_m3_h=10.0, daily=Daily(swing=0.2, peak_h=1.0))], 3.0)  # from the top of the day
+    log_sd = np.sqrt(np.log1p(daily.flow.relative_sd**2))
+    assert_allclose(2.3263 * log_sd - 0.5 * log_sd**2, np.log(10.0 / 7.2), rtol=1e-4)
 
 
 def test_cycle_that_reaches_the_largest_flow_leaves_no_noise():

@@ -29,7 +29,7 @@ PH = "ph = 4.0"
     ('ammonium = "14.007 mg/L as N"', "ammonium", 1e-3), ('acetate = "5 mmol/L"', "acetate", 5e-3),
     ('"iron(III)" = "55.845 mg/L"', "iron(III)", 1e-3), ('"iron(III)" = "55.845 mg/L as Fe"', "iron(III)", 1e-3),
     ('zinc = "0.6538 g/L"', "zinc", 1e-2), ('Zinc = "653.8 mg/L"', "zinc", 1e-2), ('nickel = "2 mmol/L"', "nickel", 2e-3),
-    ('manganese = "54.938 mg/L"', "manganese(II)", 1e-3), ('"inorganic carbon" = "12.011 mg/L as C"', "carbon", 1e-3),
+    ('manganese = "54.938 mg/L"', "manganese(II)", 1e-3), ('"magnesium hydroxide" = "58.32 mg/L"', "magnesium", 1e-3), ('"inorganic carbon" = "12.011 mg/L as C"', "carbon", 1e-3),
     ('"inorganic carbon" = "2 mmol/L"', "carbon", 2e-3), ('silica = "60.083 mg/L as SiO2"', "silica", 1e-3),
     ('acetate = "1 mmol/L", calcium = "40.078 mg/L"', "calcium", 1e-3),
     ('acetate = "1 mmol/L", calcium = "2 meq/L"', "calcium", 1e-3),

@@ -2,6 +2,7 @@
 
 import re
 from html.parser import HTMLParser
+from urllib.parse import quote
 
 import pytest
 
@@ -10,11 +11,13 @@ from aquabuf.report.html.document import document
 from aquabuf.report.html.parts import (
     TONES,
     Column,
+    Link,
     bullets,
     card,
     details,
     drawing,
     facts,
+    gallery,
     paragraph,
     section,
     shown_text,
@@ -151,3 +154,36 @@ def test_no_drawing():
 def test_text_is_cut_with_a_mark():
     """A long name ends in an ellipsis."""
     assert shown_text("abc", 2) == "ab…"
+
+
+@pytest.mark.parametrize("file", ["a b.csv", "javascript:alert(1)", "../x", 'a"onclick="x', "https://x.org/y", "#top"])
+def test_a_link_leads_into_the_folder(file):
+    """No scheme, path, fragment or attribute comes out of the name of a file; the words stay words."""
+    words = "<b>all</b>"
+    page = table([Column(title="file")], [[Link(words, file)]]) + paragraph("All rows:", link=Link(words, file))
+    found = read(page)
+    (first, second) = [value for name, value in found.attributes if name == "href"]
+    assert first == second == quote(file, safe="")
+    assert not set(':/#"') & set(first)
+    assert found.text.count(words) == 2
+    assert "b" not in found.tags
+
+
+def test_sentences_and_numbers_have_a_class_of_their_own():
+    """The style gives sentences room and sets numbers to the right."""
+    page = table([Column(title="a"), Column(title="b", number=True), Column(title="c", sentence=True)], [["1", "2", "3"]])
+    assert '<td class="number">2</td><td class="sentence">3</td>' in page
+
+
+def test_what_is_not_printed():
+    """Long lists stay away from the printer; the style hides that class there."""
+    assert '<details class="screen">' in details("a", paragraph("b"), printed=False)
+    assert "<details>" in details("a", paragraph("b"))
+    assert ".screen { display: none; }" in document("a", "b", [])
+
+
+def test_a_gallery_holds_its_drawings():
+    """None, no gallery."""
+    page = gallery([drawing(SVG, name="one", alt="a"), drawing(SVG, name="two", alt="b")])
+    assert read(page).tags.count("figure") == 2
+    assert gallery([]) == ""
