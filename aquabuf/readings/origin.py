@@ -68,7 +68,8 @@ class Cell:
         return f"{unit.basis or quantity.base}: {mass:.6g} g/mol{f', {each:g} equivalents per mole' if each else ''}"
 
 
-def cells_of(path: str | Path, mapping: TableMap | LongMap | None, rows: Collection[int]) -> dict[int, tuple[Cell, ...]]:
+def cells_of(path: str | Path, mapping: TableMap | LongMap | None, rows: Collection[int],
+             ) -> dict[int, tuple[Cell, ...]]:
     """The cells with something in them, by the row of their sample as `Readings.frame` has it.
 
     Rows that do not fit the header have none. Raises as the reader of the table does.

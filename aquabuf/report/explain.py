@@ -53,4 +53,6 @@ def _sentence(words: str) -> str:
 
 
 def _filled(text: str, indent: str) -> str:
-    return textwrap.fill(text, WIDTH, subsequent_indent=indent, break_on_hyphens=False)
+    kept = text.replace(" %", "\N{NO-BREAK SPACE}%")  # a number keeps its sign
+    lines = textwrap.fill(kept, WIDTH, subsequent_indent=indent, break_on_hyphens=False)
+    return lines.replace("\N{NO-BREAK SPACE}", " ")

@@ -40,7 +40,7 @@ def read_record(folder: Path) -> dict[str, Any]:
 
 @dataclass(frozen=True, slots=True)
 class RunFiles:
-    """The files of a run: their names and hashes, the folder of its results, and the readings if they were named."""
+    """The files of a run: names and hashes by part, the folder of its results, the readings if they were named."""
 
     folder: Path
     names: Mapping[str, str]
@@ -53,8 +53,8 @@ class RunFiles:
         names, hashes = record["files"], record["sha256"]
         whole = isinstance(names, dict) and isinstance(hashes, dict) and set(names) == set(hashes) and READINGS in names
         if not whole or not all(isinstance(v, str) for v in (*names.values(), *hashes.values())):
-            raise FileError(f"{folder.name}/run.json must name each file with its hash; it does not. Run the assessment "
-                            f"again with --force.")
+            raise FileError(f"{folder.name}/run.json must name each file with its hash; it does not. Run the "
+                            f"assessment again with --force.")
         return cls(folder, names, hashes, given)
 
     def find(self, part: str) -> Path | None:
@@ -101,8 +101,8 @@ class RunFiles:
 
     def _changed(self, path: Path, part: str) -> FileError:
         now, then = sha256(path)[:SHOWN], self.hashes[part][:SHOWN]
-        return FileError(f"{path.name}, the {part} of this run, has changed since: its sha256 begins with {now}, that of "
-                         f"the run with {then}. Give back the file of the run (--input names the readings), or run "
+        return FileError(f"{path.name}, the {part} of this run, has changed since: its sha256 begins with {now}, that "
+                         f"of the run with {then}. Give back the file of the run (--input names the readings), or run "
                          f"the assessment again and explain that.")
 
 

@@ -1,10 +1,10 @@
-"""Explain one sample of a run: the same readings, options and rules again, and the proof that the numbers are the same."""
+"""Explain one sample of a run: the same readings, options and rules again, and proof that the numbers are the same."""
 
 from __future__ import annotations
 
 import csv
 import io
-from collections.abc import Iterable, Iterator, Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field, replace
 from difflib import get_close_matches
 from pathlib import Path
@@ -22,7 +22,8 @@ from aquabuf.assess.sample.chain_readings import Origin
 from aquabuf.assess.sample.columns import limit_quantities
 from aquabuf.assess.sample.titrated import Titrated, titrated_by
 from aquabuf.errors import FileError, InputError
-from aquabuf.readings.origin import Cell, cells_of
+from aquabuf.readings.long.mapping import LongMap
+from aquabuf.readings.origin import cells_of
 from aquabuf.readings.result import Readings
 from aquabuf.readings.source import load_map, open_any
 from aquabuf.readings.titration.paths import TitrationFiles
@@ -66,9 +67,19 @@ def chains_of_run(folder: Path, sample_id: str, *, given: Path | None = None, ro
     if not rows:
         raise _unknown(found, sample_id, path.name, row)
     cells = cells_of(path, mapping, set(rows))
-    version = str(record.get("version", ""))
-    return [chain for one in rows for chain in _chains(found, one, cells.get(one, ()), path.name, options, limits,
-                                                       folder, version)]
+    in_parts = isinstance(mapping, LongMap) and bool(found.accepted)
+    chains = []
+    for one in rows:
+        own = cells.get(one, ())
+        if one in found.accepted:
+            readings, part = found.accepted[one]
+            _prove(part, folder, options, str(record.get("version", "")))
+            origin = Origin.of(path.name, own, readings.flags, readings.frame, readings.headers)
+            chains.append(chain_of(part, readings, options, limits, origin))
+        if one in found.refused:
+            chains.append(refused_chain(sample_id, one, Origin(file=path.name, cells=own), found.refused[one],
+                                        only_result=in_parts))
+    return chains
 
 
 def _titrations(files: RunFiles) -> Titrated | None:
@@ -113,9 +124,9 @@ def _search(pieces: Iterable[Readings], titrated: Titrated | None, sample_id: st
             if len(part.results):
                 found.accepted[int(part.results["row"].iloc[0])] = (readings, part)
         for lines in refused:
-            for row, reasons in lines.groupby("row", sort=False):
-                before = found.refused.get(int(row))
-                found.refused[int(row)] = reasons if before is None else pd.concat([before, reasons])
+            for row in dict.fromkeys(lines["row"].tolist()):
+                reasons, before = lines[lines["row"] == row], found.refused.get(row)
+                found.refused[row] = reasons if before is None else pd.concat([before, reasons])
     return found
 
 
@@ -124,17 +135,6 @@ def _only(piece: Readings, hit: Any) -> Readings:
     frame = piece.frame[hit].reset_index(drop=True)
     flags = piece.flags[piece.flags["row"].isin(frame["row"])].reset_index(drop=True)
     return replace(piece, frame=frame, flags=flags, rejected=piece.rejected.iloc[:0])
-
-
-def _chains(found: _Found, row: int, cells: tuple[Cell, ...], file: str, options: Options, limits: tuple[Limit, ...],
-            folder: Path, version: str) -> Iterator[Chain]:
-    if row in found.accepted:
-        readings, part = found.accepted[row]
-        _prove(part, folder, options, version)
-        origin = Origin.of(file, cells, readings.flags, readings.frame, readings.headers)
-        yield chain_of(part, readings, options, limits, origin)
-    if row in found.refused:
-        yield refused_chain(found.sample_id, row, Origin(file=file, cells=cells), found.refused[row])
 
 
 def _unknown(found: _Found, sample_id: str, file: str, row: int | None) -> InputError:
@@ -177,9 +177,9 @@ def _prove(part: Assessment, folder: Path, options: Options, version: str) -> No
         if not _same(value, then.get(name), digits.get(name)):
             other = f" The run was made by version {version}, this is {aquabuf.__version__}." \
                 if version != aquabuf.__version__ else ""
-            raise FileError(f"results.csv in {folder.name} has {name} = {then.get(name)!r} for {plain(now['sample_id'])!r}; "
-                            f"worked out again it is {value!r}.{other} Run the assessment again with --force and explain "
-                            f"that.")
+            raise FileError(f"results.csv in {folder.name} has {name} = {then.get(name)!r} for "
+                            f"{plain(now['sample_id'])!r}; worked out again it is {value!r}.{other} Run the assessment "
+                            f"again with --force and explain that.")
 
 
 def _written_row(folder: Path, sample_id: str, row: str) -> Mapping[str, str]:
@@ -191,9 +191,10 @@ def _written_row(folder: Path, sample_id: str, row: str) -> Mapping[str, str]:
                 if line.get("sample_id") == sample_id and line.get("row") == row:
                     return line
     except OSError:
-        raise FileError(f"{folder.name} has no results.csv that can be read. Run the assessment again with --force.") from None
-    raise FileError(f"results.csv in {folder.name} has no line for {plain(sample_id)!r} of row {row}, which the readings "
-                    f"have. Run the assessment again with --force.")
+        raise FileError(f"{folder.name} has no results.csv that can be read. Run the assessment again with "
+                        f"--force.") from None
+    raise FileError(f"results.csv in {folder.name} has no line for {plain(sample_id)!r} of row {row}, which the "
+                    f"readings have. Run the assessment again with --force.")
 
 
 def _same(now: str, then: str | None, digits: int | None) -> bool:

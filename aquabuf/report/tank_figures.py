@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
+from dataclasses import replace
 from pathlib import Path
 
 import matplotlib
@@ -42,15 +43,16 @@ from aquabuf.report.tank_time import (
 __all__ = ["design_figure", "save_design", "save_simulation", "simulation_figure"]
 
 WIDE, HIGH = 8.27, 11.69       # A4 portrait in inches
-EDGE, GAP, AXIS = 0.35, 0.1, 0.5
+EDGE, GAP, AXIS, BLOCK_GAP = 0.35, 0.1, 0.5, 0.05
 TITLE, LABELS = 0.22, 0.43     # room above and below a panel
-TOP_SCALE = 0.4                # of the gain, above the panel of buffering
+TOP_SCALE = 0.44               # of the gain, above the panel of buffering
 BETWEEN = 0.3                  # between panels side by side
 CURVES, LOWER = 2.5, 1.55      # inches of the axes of the curves, and of those below, at least
+FORBIDS, INSET = "#f6dcd5", 0.1  # ground of the verdict on a design that is not to be built, inches within its box
 MOST_STOPS = 3
 CASES_HIGH, FAULT_ROW = 1.35, 0.155
 WEIGHTS = {"inflow": 0.8, "early": 1.1, "last": 1.7, "reagent": 0.8}
-LEAST_PANEL = 0.42             # inches of the axes of a course, per weight
+LEAST_PANEL = 0.57             # inches of the axes of a course, per weight
 
 Panel = tuple[float, Callable[[Axes], Axes]]
 
@@ -84,7 +86,7 @@ def design_figure(design: Design) -> Figure:
 def _curves(figure: Figure, design: Design, top: float, width: float, high: float) -> float:
     """Titration curve and buffering side by side, on one scale of pH; where the next begins."""
     left = 0.54 * width
-    y = top + TITLE + TOP_SCALE - 0.08
+    y = top + TITLE + TOP_SCALE - 0.06
     plot_titration(design, ax=_axes(figure, EDGE + AXIS, y, left - AXIS - 0.5 * BETWEEN, high))
     start = EDGE + left + 0.5 * BETWEEN + 0.75 * AXIS
     plot_buffer(design, ax=_axes(figure, start, y, WIDE - EDGE - start, high))
@@ -116,23 +118,33 @@ def _heading(figure: Figure, words: str, top: float) -> None:
     figure.text(EDGE / wide, 1.0 - (top + 0.03) / page, words, fontsize=10.0, fontweight="bold", va="top")
 
 
-def _head(design: Design, width: float, title: str) -> Block:
+def _head(design: Design, width: float, title: str) -> tuple[Block, ...]:
     """Name, verdict, and what the design is for."""
     job, basis = design.job, design.basis
     verdict = [design.verdict, *design.stops[1:MOST_STOPS]]
     window = job.window
     facts = (f"Mean flow {shown(basis.course.mean_m3_h)} m³/h at {basis.chem.t_c:.0f} °C. Window pH {window.low:g} to "
              f"{window.high:g} ({window.source}). Aim pH {basis.aim_ph:g}: {basis.aim_why}.")
-    return stacked(block_of([job.name], width, 13.0, bold=True, most=2), block_of([title], width, 9.0, color=GRAY),
-                   block_of(verdict, width, 9.0, bold=True, most=4), block_of([facts], width, 8.0, most=4), gap=0.04)
+    name = stacked(block_of([job.name], width, 13.0, bold=True, most=2), block_of([title], width, 9.0, color=GRAY),
+                   gap=0.04)
+    return name, _verdict(verdict, width, boxed=not design.accepted), block_of([facts], width, 8.0, most=4)
+
+
+def _verdict(words: Sequence[str], width: float, *, boxed: bool) -> Block:
+    """The outcome in bold; in a box where the design is not to be built as it stands."""
+    found = block_of(words, width - (INSET if boxed else 0.0), 8.7, bold=True, most=4, x=INSET if boxed else 0.0)
+    if not boxed:
+        return found
+    lines = tuple(replace(line, y=line.y + 0.5 * INSET) for line in found.lines)
+    return Block(lines, (), found.height + 0.8 * INSET, FORBIDS)
 
 
 def _foot(design: Design, width: float) -> Block:
     """How the signs read, and what the page does not replace."""
-    words = ("Square: waste as it comes. Red dots: set points, and volume chosen. Diamond: steepest point in the window. "
-             "Filled arrow: base, open arrow: acid; dashed: corrects what the other overdoes. Demand: triangles least and "
-             "most while it is asked for, dot mean of all time. A licensed engineer must check the design; permit and codes "
-             "outrank it.")
+    words = ("Square: waste as it comes. Red dots: set points, and volume chosen. Diamond: steepest point in the "
+             "window. Filled arrow: base, open arrow: acid; dashed: corrects what the other overdoes. Demand: "
+             "triangles least and most while it is asked for, dot mean of all time. A licensed engineer must check the "
+             "design; permit and codes outrank it.")
     return block_of([words], width, SMALL - 0.5, color=GRAY)
 
 
@@ -155,9 +167,10 @@ def simulation_figure(design: Design) -> Figure:
         head = _head(design, width, "Neutralization: simulated under its own disturbances")
         words = block_of(cases_words(trial), width, SMALL)
         faults = FAULT_ROW * (len(trial.faults) + 1)
-        below = TITLE + CASES_HIGH + LABELS + words.height + 2 * GAP + TITLE + faults + LABELS
+        cases = 0.0 if trial.monte is None else TITLE + CASES_HIGH + LABELS
+        below = cases + words.height + 2 * GAP + TITLE + faults + LABELS
         weight = sum(w for w, _ in panels)
-        used = EDGE + head.height + 2 * GAP + TITLE * len(panels) + LABELS + below + EDGE
+        used = 2.0 * EDGE + sum(b.height + BLOCK_GAP for b in head) + 2 * GAP + TITLE * len(panels) + LABELS + below
         high = max(HIGH, used + LEAST_PANEL * weight)
         figure = Figure(figsize=(WIDE, high))
         FigureCanvasAgg(figure)
@@ -207,12 +220,12 @@ def _courses(figure: Figure, trial: Trial, panels: Sequence[Panel], top: float, 
 
 def _cases(figure: Figure, design: Design, trial: Trial, top: float, words: Block) -> float:
     """Distributions over the cases side by side, and what they say; where the next begins."""
-    half = 0.5 * (WIDE - 2.0 * EDGE)
-    left = EDGE + AXIS + 0.1
-    plot_cases(trial, ax=_axes(figure, left, top + TITLE, half - AXIS - 0.1 - 0.5 * BETWEEN, CASES_HIGH))
-    start = EDGE + half + 0.5 * BETWEEN + AXIS
-    plot_worst_ph(design, trial, ax=_axes(figure, start, top + TITLE, WIDE - EDGE - start, CASES_HIGH))
-    y = top + TITLE + CASES_HIGH + LABELS
+    half, y = 0.5 * (WIDE - 2.0 * EDGE), top
+    if trial.monte is not None:
+        left, start = EDGE + AXIS + 0.1, EDGE + half + 0.5 * BETWEEN + AXIS
+        plot_cases(trial, ax=_axes(figure, left, y + TITLE, half - AXIS - 0.1 - 0.5 * BETWEEN, CASES_HIGH))
+        plot_worst_ph(design, trial, ax=_axes(figure, start, y + TITLE, WIDE - EDGE - start, CASES_HIGH))
+        y += TITLE + CASES_HIGH + LABELS
     words.draw(figure, EDGE, y, WIDE - 2.0 * EDGE)
     return y + words.height + GAP
 
@@ -225,10 +238,12 @@ def save_simulation(design: Design, paths: Mapping[str, Path]) -> None:
 # ---------------------------------------------------------------- places
 
 
-def _put(figure: Figure, block: Block, top: float, width: float) -> float:
-    """Draw a block at the left edge; where the next begins."""
-    block.draw(figure, EDGE, top, width)
-    return top + block.height + GAP
+def _put(figure: Figure, blocks: Sequence[Block], top: float, width: float) -> float:
+    """Draw blocks one below the other at the left edge; where the next begins."""
+    for block in blocks:
+        block.draw(figure, EDGE, top, width)
+        top += block.height + BLOCK_GAP
+    return top - BLOCK_GAP + GAP
 
 
 def _axes(figure: Figure, left: float, top: float, width: float, height: float) -> Axes:

@@ -18,94 +18,31 @@ from aquabuf.assess.tank.design import Design
 from aquabuf.report.dose_page import POINTS, text_width, wrapped
 from aquabuf.report.dose_panels import SMALL, WINDOW, ax_width
 from aquabuf.report.style import CALM, FAINT, GRAY, INK, WARNED
+from aquabuf.report.tank_labels import (
+    AWAY,
+    DASHED,
+    GROUND,
+    LABEL_STEP,
+    LEADER,
+    ax_height,
+    cut,
+    label_gap,
+    side_labels,
+    spread,
+)
 
-__all__ = ["GROUND", "ax_height", "cut", "demand_groups", "plot_buffer", "plot_demand", "plot_equalization",
-           "plot_sensitivity", "plot_titration", "sample_band", "side_labels", "spread", "stage_points",
-           "tolerance_words"]
+__all__ = ["demand_groups", "plot_buffer", "plot_demand", "plot_equalization", "plot_sensitivity", "plot_titration",
+           "sample_band", "stage_points", "tolerance_words"]
 
 Array = NDArray[np.float64]
 
 PERCENT = 100.0
-TITLE_SIZE = 10.0
 PH_ENDS = (0.0, 14.0)       # of the axis of pH
 BEYOND = 0.22               # of the span from the raw waste to the window, shown on both sides
-EDGE_SHARE = 0.012          # of the width, kept free at the edge
-LABEL_STEP = 1.45           # from label to label, in type sizes
 STEPS = (1, 2, 2.5, 5, 10)  # of the numbers on an axis
-GROUND: Any = {"facecolor": "white", "edgecolor": "none", "alpha": 0.85, "pad": 0.6}
-LEADER: Any = {"color": GRAY, "lw": 0.6}
+MOST_LINES = 6
 WIDEST_CHANGE = 200.0       # percent that a bar shows; beyond, its figure alone tells
-DASHED, DOTTED = (0, (5, 2)), (0, (1, 1.5))
 MARKS = {"least": "<", "mean": "o", "most": ">"}
-
-
-# ---------------------------------------------------------------- labels that keep apart
-
-
-def ax_height(ax: Axes) -> float:
-    """Height of an axis in inches."""
-    figure = ax.get_figure()
-    assert figure is not None
-    return float(ax.get_position().height * figure.get_size_inches()[1])  # type: ignore[union-attr]
-
-
-def cut(ax: Axes, words: str, size: float = TITLE_SIZE) -> str:
-    """Words as a title that the axis has room for."""
-    return wrapped(words, ax_width(ax), size, bold=True, most=1)[0]
-
-
-def spread(places: Sequence[float], gap: float, low: float, high: float) -> list[float]:
-    """Places moved as little as keeps them `gap` apart, in the order of their size, between `low` and `high`."""
-    order = sorted(range(len(places)), key=lambda k: places[k])
-    groups: list[tuple[float, list[int]]] = []  # middle and members of what stands together
-    for k in order:
-        groups.append((float(places[k]), [k]))
-        while True:
-            placed = []
-            for middle, members in groups:
-                half = 0.5 * gap * (len(members) - 1)
-                placed.append((min(max(middle, low + half), max(high - half, low + half)), half))
-            if len(groups) < 2 or placed[-1][0] - placed[-1][1] - placed[-2][0] - placed[-2][1] >= gap * (1.0 - 1e-9):
-                break
-            (a, first), (b, second) = groups[-2:]
-            groups[-2:] = [((a * len(first) + b * len(second)) / (len(first) + len(second)), [*first, *second])]
-    found = [0.0] * len(places)
-    for (_, members), (middle, half) in zip(groups, placed, strict=True):
-        for j, k in enumerate(members):
-            found[k] = middle - half + gap * j
-    return found
-
-
-def label_gap(ax: Axes, size: float = SMALL) -> float:
-    """Distance of two labels one above the other, in units of the vertical axis."""
-    low, high = ax.get_ylim()
-    return LABEL_STEP * size / POINTS / ax_height(ax) * (high - low)
-
-
-def side_labels(ax: Axes, points: Sequence[tuple[float, float, str]], *, left: bool, away: float = 0.16,
-                outside: bool = False) -> list[float]:
-    """Words `away` inches beside points, with a line to each; the heights at which they stand are returned.
-
-    Words without room at that side stand at the edge of the axes, above their point (below it if not `left`);
-    `outside`: they may leave the axes.
-    """
-    gap, side = label_gap(ax), -1.0 if left else 1.0
-    low, high = ax.get_ylim()
-    across = [float(ax.transAxes.inverted().transform(ax.transData.transform((x, y)))[0]) for x, y, _ in points]
-    ends, wanted = [], []
-    for share, (_, y, words) in zip(across, points, strict=True):
-        wide = text_width(words, SMALL) / ax_width(ax) + EDGE_SHARE
-        end = share + side * away / ax_width(ax)
-        fits = outside or (end >= wide if left else end <= 1.0 - wide)
-        ends.append(end if fits else (wide if left else 1.0 - wide))
-        wanted.append(y if fits else y - side * 1.4 * gap)
-    at = spread(wanted, gap, low + 0.6 * gap, high - 0.6 * gap)
-    for share, end, (_, y, words), level in zip(across, ends, points, at, strict=True):
-        ax.plot([share, end - side * 0.02 / ax_width(ax)], [y, level], transform=ax.get_yaxis_transform(),
-                label="_leader", zorder=2.5, clip_on=False, **LEADER)
-        ax.text(end, level, words, transform=ax.get_yaxis_transform(), ha="right" if left else "left", va="center",
-                fontsize=SMALL, zorder=5, bbox=GROUND, parse_math=False)
-    return at
 
 
 # ---------------------------------------------------------------- titration curve
@@ -139,6 +76,13 @@ def tolerance_words(design: Design) -> str:
     share = float(fit.share_of_demand)
     told = f", {shown(PERCENT * share)} % of the demand" if np.isfinite(share) else ""
     return f"window: {shown(float(fit.tolerance_eq_l))} eq/L wide{told}"
+
+
+def _on_curve(ax: Axes, point: StagePoint, words: str, left: bool, curve: tuple[Array, Array]) -> bool:
+    """Whether words beside a point of the curve would lie on it."""
+    inch = (ax.get_xlim()[1] - ax.get_xlim()[0]) / ax_width(ax)
+    along = np.linspace(AWAY, AWAY + text_width(words, SMALL), 40) * (-inch if left else inch)
+    return bool(np.abs(np.interp(point.reagent_eq_l + along, *curve) - point.ph).min() < 0.8 * label_gap(ax))
 
 
 def sample_band(design: Design) -> tuple[Array, Array, Array] | None:
@@ -185,8 +129,9 @@ def plot_titration(design: Design, *, ax: Axes) -> Axes:
     last = len(points) - 1
     words = [(p.reagent_eq_l, p.ph, f"{p.name}: pH {shown(p.ph)}{', the aim' if k == last and k else ''}")
              for k, p in enumerate(points)]
-    at = side_labels(ax, words, left=acid)
     gap = label_gap(ax)
+    flat = [_on_curve(ax, p, said, acid, (reagent, ph)) for p, (_, _, said) in zip(points, words, strict=True)]
+    at = side_labels(ax, words, left=acid, lifted=flat)
     ax.annotate(f"{'waste' if len(design.job.wastes) == 1 else 'mean of the wastes'}: pH {raw:.2f}", (0.0, raw),
                 (6.0, -7.0) if acid else (-6.0, 7.0), textcoords="offset points", ha="left" if acid else "right",
                 va="top" if acid else "bottom", fontsize=SMALL, bbox=GROUND, zorder=5, annotation_clip=False)
@@ -236,7 +181,7 @@ def plot_buffer(design: Design, *, ax: Axes) -> Axes:
         axis.set_major_locator(LogLocator(numticks=5))
         axis.set_minor_locator(NullLocator())
     gain.axes.tick_params(labelsize=8, pad=1)
-    gain.axes.set_xlabel("process gain [pH per eq/L]", labelpad=2)
+    gain.axes.set_xlabel("process gain [pH per eq/L]", labelpad=3)
     ax.yaxis.set_major_locator(MaxNLocator(7, steps=[1, 2, 10]))
     ax.set(ylabel="pH", xlabel="buffer intensity [eq/L per pH]")
     return ax
@@ -285,11 +230,12 @@ def plot_equalization(design: Design, *, ax: Axes) -> Axes:
         words = f"chosen: {shown(eq.content_m3)} m³ always full, {shown(at)} % left"
         words += f"; {shown(eq.flow_m3)} m³ above it for the flow" if eq.flow_m3 > 0.0 else ""
     else:
-        words = "None is built. " + eq.words[0].upper() + eq.words[1:]
+        words = f"None is built: {eq.words.removeprefix('none for the strength: ')}"
+    built = eq.volume_m3 > 0.0
     clear = np.interp(np.linspace(0.4, 1.0, 50) * ax.get_xlim()[1], volume, left).max() < 0.55 * top
-    room = 0.6 * ax_width(ax)
-    ax.text(0.98, 0.97 if clear else 0.05, "\n".join(wrapped(words, room, SMALL, most=5)), transform=ax.transAxes,
-            ha="right", va="top" if clear else "bottom", multialignment="left", fontsize=SMALL, zorder=5, bbox=GROUND)
+    lines = wrapped(words, (0.6 if built else 0.9) * ax_width(ax), SMALL, most=MOST_LINES)
+    ax.text(0.98, 0.97 if clear else 0.05, "\n".join(lines), transform=ax.transAxes, ha="right",
+            va="top" if clear else "bottom", multialignment="left", fontsize=SMALL, zorder=5, bbox=GROUND)
     return ax
 
 

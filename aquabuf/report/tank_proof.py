@@ -80,8 +80,8 @@ def failures(record: Record) -> str:
     head = [["tank", "failure", "leaves after min", "min outside", "lowest pH", "highest pH"]]
     rows = [[f["tank"], f["kind"], "stays in" if f["minutes_to_leave"] is None else f"{f['minutes_to_leave']:.0f}",
              f"{f['minutes_outside']:.0f}", figure(f["lowest_ph"], 1), figure(f["highest_ph"], 1)] for f in s["faults"]]
-    lines = [f"Each lasts {FAULT_S / MIN_S:.0f} min, at the mean of what asks for the reagent; as a probe gets stuck the "
-             f"strength rises by {PERCENT * (CHANGE - 1.0):.0f} % (practice, no source). Nobody acts meanwhile."]
+    lines = [f"Each lasts {FAULT_S / MIN_S:.0f} min, at the mean of what asks for the reagent; as a probe gets stuck "
+             f"the strength rises by {PERCENT * (CHANGE - 1.0):.0f} % (practice, no source). Nobody acts meanwhile."]
     lines += [f"{kind}: {words}." for kind, words in dict.fromkeys((f["kind"], f["words"]) for f in s["faults"])]
     return titled("FAILURES", aligned(head, rows, left=(0, 1)), bullets(lines))
 

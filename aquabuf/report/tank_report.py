@@ -123,7 +123,8 @@ def next_steps(found: Design, record: Record) -> list[str]:
     word, lines = headline(found), []
     if word == STOPPED:
         return ["Do away with what forbids the design: keep that waste apart, destroy what it holds, or choose another "
-                "reagent; then run this again. Until then no reagent is to be tried on this waste, not in a beaker either."]
+                "reagent; then run this again. Until then no reagent is to be tried on this waste, not in a beaker "
+                "either."]
     if word == REFUSED:
         lines += _mend(found, record)
     if word == UNPROVEN:
@@ -171,9 +172,9 @@ def _side_of(found: Design, record: Record) -> str:
     said = f"pH leaves the window {' and '.join(e for e in ends if e)}."
     chosen = record["reagents"]["chosen"]
     if over and "acid" not in chosen:
-        said += " No acid is named, so nothing takes an overdose of base back: name one in [use]."
+        said += " No acid is named, so nothing takes an overdose of base back: add one in [reagents] and [use]."
     if under and "base" not in chosen:
-        said += " No base is named, so nothing takes an overdose of acid back: name one in [use]."
+        said += " No base is named, so nothing takes an overdose of acid back: add one in [reagents] and [use]."
     return said if under or over else ""
 
 

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import NamedTuple
+from typing import Any, NamedTuple
 
 import numpy as np
 from matplotlib.axes import Axes
@@ -15,7 +15,7 @@ from aquabuf.assess.tank.reagents import BASE
 from aquabuf.report.dose_page import POINTS, wrapped
 from aquabuf.report.dose_panels import SMALL, ax_width
 from aquabuf.report.style import CALM, GRAY, INK, WARNED
-from aquabuf.report.tank_panels import ax_height
+from aquabuf.report.tank_labels import ax_height
 
 __all__ = ["feed_lines", "feed_words", "plot_train", "stage_words", "train_height"]
 
@@ -25,6 +25,7 @@ TANK = 0.62                  # inches of the height of the tallest tank drawn
 HEAD = 0.34                  # inches that the arrow of a feed and the rim above the tanks take
 FILL, LOWER = "#dfe6ee", "#b9c9da"
 FULL = 0.8                   # of the height of a tank that is drawn as liquid
+PIPE: Any = {"arrowstyle": "-|>", "color": INK, "lw": 1.2, "shrinkA": 0, "shrinkB": 0}
 SIGNS = {True: "▼", False: "▽"}  # base, acid
 NAME_LINES = 2
 MORE = 1.005                  # times the steady draw, beyond which the largest flow is told too
@@ -48,7 +49,8 @@ def feed_words(feed: StageFeed) -> str:
         unit = "kg/h"
     if feed.trim:
         return f"to {shown(most)} {unit}, to correct"
-    return f"{shown(least)} to {shown(most)} {unit}"
+    ends = dict.fromkeys((shown(least), shown(most)))
+    return f"{' to '.join(ends)} {unit}"
 
 
 def stage_words(design: Design, stage: Stage) -> list[str]:
@@ -128,12 +130,9 @@ def plot_train(design: Design, *, ax: Axes) -> Axes:
             _vessel(ax, design, column, left, floor, room, high)
             _feeds(ax, column, left, room, floor + high, height)
         else:
-            _end(ax, column.kind, left, pipe, room)
-        if k and column.kind != "out":
-            previous = columns[k - 1].kind
-            start = left - GAP - (0.0 if previous != "in" else 0.12)
-            ax.annotate("", (left, pipe), (start, pipe), arrowprops={"arrowstyle": "-|>", "color": INK, "lw": 1.2,
-                                                                     "shrinkA": 0, "shrinkB": 0})
+            _end(ax, column.kind, left, pipe, room, left + pitch)
+        if k > 1 and column.kind != "out":
+            ax.annotate("", (left, pipe), (left - GAP, pipe), arrowprops=PIPE)
         for j, words in enumerate(column.below):
             ax.text(left, floor - 0.06 - STEP * j, words, ha="left", va="top", fontsize=SMALL, color=INK,
                     fontweight="bold" if j == 0 else "normal", parse_math=False)
@@ -176,11 +175,9 @@ def _feeds(ax: Axes, column: _Column, left: float, wide: float, rim: float, top:
             "fc": (WARNED if kind == BASE else "white")})
 
 
-def _end(ax: Axes, kind: str, left: float, level: float, wide: float) -> None:
-    """Arrow of what comes or leaves."""
-    begin, end = (left, left + wide) if kind == "in" else (left - GAP, left + 0.55 * wide)
-    ax.annotate("", (end, level), (begin, level), arrowprops={
-        "arrowstyle": "-" if kind == "in" else "-|>", "color": INK, "lw": 1.2, "shrinkA": 0, "shrinkB": 0,
-        "mutation_scale": 14})
+def _end(ax: Axes, kind: str, left: float, level: float, wide: float, after: float) -> None:
+    """Arrow of what comes, as far as the tank at `after`, or of what leaves."""
+    begin, end = (left, after) if kind == "in" else (left - GAP, left + 0.55 * wide)
+    ax.annotate("", (end, level), (begin, level), arrowprops=PIPE)
     if kind == "in":
         ax.plot(begin, level, marker="o", ms=4, color=INK, label="_source")

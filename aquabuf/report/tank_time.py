@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 from matplotlib.axes import Axes
-from matplotlib.ticker import MaxNLocator
+from matplotlib.ticker import MaxNLocator, MultipleLocator
 from numpy.typing import NDArray
 
 from aquabuf.assess.plant.feed import shown
@@ -13,7 +13,7 @@ from aquabuf.assess.tank.trial import FAULT_S, Trial
 from aquabuf.report.dose_page import POINTS, text_width, wrapped
 from aquabuf.report.dose_panels import SMALL, WINDOW, ax_width, ph_axis
 from aquabuf.report.style import CALM, FAINT, GRAY, INK, WARNED
-from aquabuf.report.tank_panels import DASHED, DOTTED, GROUND, ax_height, cut, side_labels
+from aquabuf.report.tank_labels import DASHED, DOTTED, GROUND, ax_height, cut, side_labels
 
 __all__ = ["cases_words", "fault_name_room", "outside_runs", "plot_cases", "plot_early_ph", "plot_faults", "plot_flow",
            "plot_last_ph", "plot_reagent", "plot_strength", "plot_worst_ph", "rule_words", "time_unit"]
@@ -27,6 +27,9 @@ PERCENT, TOP_SHARE = 100.0, 105.0
 FAR = 12.0               # largest time outside over that allowed, from which the axis is not linear throughout
 KINDS = ((CALM, "-"), (GRAY, DASHED), (WARNED, DOTTED))  # of the tanks ahead of the last
 NAME_SHARE = 0.3         # of the width of the failures that their names may take
+TICKS_H, MOST_TICKS = (0.25, 0.5, 1.0, 2.0, 3.0, 4.0, 6.0, 8.0), 12
+TICK_ROOM = 0.17         # inches from number to number up an axis
+REAGENT_ROOM = 1.1       # inches of the name of a reagent
 LEAST_SPAN = 0.2         # of an axis, over its largest value
 NEAR_LIMIT = 2.0         # times the largest rate seen, up to which the largest of a feeder is drawn
 
@@ -40,8 +43,18 @@ def _time_axis(ax: Axes, trial: Trial) -> float:
     """Limits of the time axis; its unit in seconds."""
     unit, _ = time_unit(trial)
     ax.set_xlim(0.0, trial.course.simulated_min * MIN_S / unit)
-    ax.xaxis.set_major_locator(MaxNLocator(10, steps=[1, 2, 5, 10] if unit == DAY_S else [1, 1.2, 2, 2.4, 3, 4, 6, 10]))
+    span = ax.get_xlim()[1]
+    if unit == DAY_S:
+        ax.xaxis.set_major_locator(MaxNLocator(10, steps=[1, 2, 5, 10]))
+    else:
+        ax.xaxis.set_major_locator(MultipleLocator(next((h for h in TICKS_H if span / h <= MOST_TICKS), TICKS_H[-1])))
     return unit
+
+
+def _ticks(ax: Axes) -> None:
+    """As many numbers up the axis as there is room for."""
+    ax.yaxis.set_major_locator(MaxNLocator(int(np.clip(ax_height(ax) / TICK_ROOM, 2, 6)), steps=[1, 2, 2.5, 5, 10]))
+    ax.ticklabel_format(axis="y", useOffset=False)
 
 
 def _title(ax: Axes, words: str) -> None:
@@ -69,8 +82,7 @@ def _steps(ax: Axes, trial: Trial, values: Array, label: str) -> None:
     ax.plot(np.append(time[kept], end) / unit, np.append(values[kept], values[kept][-1]), drawstyle="steps-post",
             color=INK, lw=1.0, label=label, zorder=3)
     ax.set_ylim(_span(values[kept]))
-    ax.yaxis.set_major_locator(MaxNLocator(4))
-    ax.ticklabel_format(axis="y", useOffset=False)
+    _ticks(ax)
 
 
 def plot_flow(design: Design, trial: Trial, *, ax: Axes) -> Axes:
@@ -131,6 +143,7 @@ def plot_early_ph(design: Design, trial: Trial, *, ax: Axes) -> Axes:
     course, stages = trial.course, design.layout.stages[:-1]
     aims = [s.setpoint_ph for s in stages]
     ph_axis(ax, course.ph[:-1, :, 0].ravel(), *aims)
+    _ticks(ax)
     for k, stage in enumerate(stages):
         color, style = KINDS[k % len(KINDS)]
         ax.axhline(stage.setpoint_ph, color=FAINT, lw=1.0, label="_setpoint", zorder=1)
@@ -147,6 +160,7 @@ def plot_last_ph(design: Design, trial: Trial, *, ax: Axes) -> Axes:
     course, window, stage = trial.course, design.job.window, design.layout.stages[-1]
     ph = course.ph[-1, :, 0]
     ph_axis(ax, ph, window.low, window.high)
+    _ticks(ax)
     low, high = ax.get_ylim()
     ax.set_ylim(low, high + 0.1 * (high - low))
     ax.axhspan(window.low, window.high, label="_window", zorder=0.4, **WINDOW)
@@ -158,7 +172,8 @@ def plot_last_ph(design: Design, trial: Trial, *, ax: Axes) -> Axes:
         ax.plot(0.5 * (begin + end) / unit, 0.965, ls="", marker="x", ms=4.0, mew=1.0, color=WARNED, label="_cross",
                 transform=ax.get_xaxis_transform(), zorder=4)
     ax.plot(course.time_s / unit, ph, color=INK, lw=1.0, label="_ph", zorder=3)
-    _title(ax, f"pH of {stage.name}, the last: {rule_words(trial)}")
+    last = ", the last" if len(design.layout.stages) > 1 else ""
+    _title(ax, f"pH of {stage.name}{last}: {rule_words(trial)}")
     return ax
 
 
@@ -177,11 +192,12 @@ def plot_reagent(design: Design, trial: Trial, k: int, *, ax: Axes) -> Axes:
     ax.set_ylim(_span(rate, 0.0, *near))
     if float(rate.min()) < 0.0 < float(rate.max()):
         ax.axhline(0.0, color=GRAY, lw=0.8, zorder=1)
-    ax.yaxis.set_major_locator(MaxNLocator(4))
+    _ticks(ax)
     ax.set_ylabel("[eq/h]")
-    names = [f"{f.reagent.name}{'' if len(stage.feeds) == 1 else ' above zero' if kind == 'base' else ' below'}"
+    side = {"base": " above zero", "acid": " below"} if len(stage.feeds) > 1 else {}
+    names = [f"{wrapped(f.reagent.name, REAGENT_ROOM, SMALL_TITLE, bold=True, most=1)[0]}{side.get(kind, '')}"
              for kind, f in stage.feeds.items()]
-    parts = [f"Reagent to {stage.name}: {', '.join(names)}", *(["dotted: largest of its feeder"] if near else [])]
+    parts = [f"Reagent to {stage.name}: {', '.join(names)}", *(["dotted: largest feed"] if near else [])]
     _title(ax, "; ".join(parts))
     return ax
 
@@ -202,11 +218,13 @@ def _say(ax: Axes, words: str) -> Axes:
     return ax
 
 
-def _name(ax: Axes, values: Array, name: str, *, high: bool) -> None:
-    """Name of a distribution beside its line, on the side with more room, in the upper or the lower half."""
+def _name(ax: Axes, values: Array, name: str, *, high: bool, right: bool) -> None:
+    """Name of a distribution beside its line, in its upper or lower half, on the side wanted if there is room."""
     level = 70.0 if high else 30.0
     x = float(np.quantile(values, level / PERCENT, method="inverted_cdf"))
-    right = ax.transAxes.inverted().transform(ax.transData.transform((x, level)))[0] < 0.5
+    share = float(ax.transAxes.inverted().transform(ax.transData.transform((x, level)))[0])
+    room = (text_width(name, SMALL) + 0.1) / ax_width(ax)
+    right = share < 1.0 - room if right else share < room
     ax.annotate(name, (x, level), (4.0 if right else -4.0, 0.0), textcoords="offset points", va="center",
                 ha="left" if right else "right", fontsize=SMALL, bbox=GROUND, zorder=5)
 
@@ -216,7 +234,7 @@ def plot_cases(trial: Trial, *, ax: Axes) -> Axes:
     _title(ax, "Time outside, all cases")
     monte = trial.monte
     if monte is None:
-        return _say(ax, "No cases were asked for, so there is no probability.")
+        return _say(ax, *cases_words(trial))
     allowed, each = monte.allowed_min, trial.rule.each_min
     most = max(float(monte.outside_min.max()), float(monte.longest_min.max()))
     limit = max(allowed, each)
@@ -236,7 +254,7 @@ def plot_cases(trial: Trial, *, ax: Axes) -> Axes:
         ax.plot([*x, ax.get_xlim()[1]], [*share, PERCENT], drawstyle="steps-post", color=color, lw=1.6, ls=style,
                 label=f"_{name}", zorder=3)
         ax.axvline(bound, color=color, lw=1.0, ls=DOTTED, label=f"_{name}_allowed", zorder=2)
-        _name(ax, values, name, high=name == "total")
+        _name(ax, values, name, high=name == "total", right=name == "total")
     ax.set(xlabel="minutes", ylabel="share of cases [%]")
     return ax
 
@@ -245,7 +263,7 @@ def cases_words(trial: Trial) -> list[str]:
     """What the lines of the cases mean, and the share that keeps the rule."""
     monte = trial.monte
     if monte is None:
-        return []
+        return ["No cases were asked for, so there is no probability."]
     return [f"Solid: minutes outside in all, dotted line at {brief(monte.allowed_min)} allowed; dashed blue: longest "
             f"excursion, at most {brief(trial.rule.each_min)} allowed.",
             f"{PERCENT * monte.probability:.0f} % of {monte.meets.size} cases keep both (95 % interval "
@@ -257,7 +275,7 @@ def plot_worst_ph(design: Design, trial: Trial, *, ax: Axes) -> Axes:
     _title(ax, "Worst pH, all cases")
     monte, window = trial.monte, design.job.window
     if monte is None:
-        return _say(ax, "No cases were asked for.")
+        return _say(ax, *cases_words(trial))
     low = min(float(monte.lowest_ph.min()), window.low) - 0.4
     high = max(float(monte.highest_ph.max()), window.high) + 0.4
     ax.set(xlim=(low, high), ylim=(0.0, TOP_SHARE))
@@ -267,7 +285,7 @@ def plot_worst_ph(design: Design, trial: Trial, *, ax: Axes) -> Axes:
         x, share = _shares(values)
         ax.plot([low, *x, high], [0.0, *share, PERCENT], drawstyle="steps-post", color=color, lw=1.6, ls=style,
                 label=f"_{name}", zorder=3)
-        _name(ax, values, name, high=name == "lowest")
+        _name(ax, values, name, high=name == "lowest", right=name == "highest")
     ax.xaxis.set_major_locator(MaxNLocator(5, steps=[1, 2, 5, 10]))
     ax.set(xlabel="pH of the last tank", ylabel="share of cases [%]")
     return ax
@@ -311,13 +329,14 @@ def plot_faults(design: Design, trial: Trial, *, ax: Axes) -> Axes:
         out = min(fault.lowest_ph - window.low, window.high - fault.highest_ph) < 0.0
         ax.text(1.0, y, words, transform=ax.get_yaxis_transform(), ha="right", va="center", fontsize=size,
                 fontweight="normal" if not out else "bold")
-    ax.set_yticks(place, fault_names(trial, fault_name_room(trial, ax_width(ax) / (1.0 - NAME_SHARE)) - 0.06),
-                  fontsize=size, parse_math=False)
+    names = fault_names(trial, fault_name_room(trial, ax_width(ax) / (1.0 - NAME_SHARE)) - 0.06)
+    ax.set_yticks(place, names, fontsize=size, parse_math=False)
     ax.tick_params(axis="y", length=0)
     ax.xaxis.labelpad = 2.0
     ticks = [t for t in MaxNLocator(5).tick_values(0.0, most) if 0.0 <= t <= 1.02 * most]
     ax.set_xticks(ticks)
-    ax.set_xlabel("minutes from its start until the water leaves the window; ring: it stays inside; dotted: end of the failure",
+    dotted = "; dotted: end of the failure" if ends < most else ""
+    ax.set_xlabel(f"minutes from its start until the water leaves the window; ring: it stays inside{dotted}",
                   loc="left")
     _title(ax, f"Failures of {brief(FAULT_S / MIN_S)} min, one at a time, at the mean of the stream")
     return ax

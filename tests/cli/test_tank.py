@@ -111,8 +111,8 @@ def test_ph_alone_is_refused(run):
 
 
 @pytest.mark.parametrize(("text", "old", "new", "message"), [
-    (MINIMAL, "flow =", "flwo =", r"stream\.toml, line 7, \[wastes\.w\]: flwo is not a key here\. The nearest is flow\."),
-    (MINIMAL, '"6 m3/h"', '"6 furlongs"', r"line 7, \[wastes\.w\].*'furlongs'"),
+    (MINIMAL, "flow =", "flwo =", r"stream\.toml, line 8, \[wastes\.w\]: flwo is not a key here\. The nearest is flow\."),
+    (MINIMAL, '"6 m3/h"', '"6 furlongs"', r"line 8, \[wastes\.w\].*'furlongs'"),
     (MINIMAL, "[6.0, 9.0]", "[9.0, 6.0]", r"\[window\]: ph must .*found \[9.*6"),
     (MINIMAL, "[window]", "[window", r"stream\.toml is not valid TOML"),
     (MINIMAL, '[reagents.caustic]\nis = "caustic soda"\nstrength = "25 %"', "", r"needs one reagent or more in \[reagents\]"),

@@ -47,7 +47,7 @@ acid = "acid"
 SHORT = """
 [simulate]
 days = "0.1 d"
-step = "10 s"
+step = "15 s"
 cases = 2
 """
 

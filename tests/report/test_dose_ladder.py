@@ -85,6 +85,7 @@ def test_legs_that_hide_each_other():
     up = Leg(1, "up", (1.0, 1.0), (1.0, 3.0))
     assert _against(up, Leg(2, "down", (1.0, 3.0), (1.0, 0.0)))
     assert not _against(up, Leg(2, "on", (1.0, 3.0), (1.0, 5.0)))
+    assert not _against(up, Leg(2, "same way", (1.0, 1.5), (1.0, 2.5)))
     assert not _against(up, Leg(2, "beside", (1.1, 3.0), (1.1, 0.0)))
     assert not _against(up, Leg(2, "across", (0.0, 2.0), (2.0, 2.0)))
     assert not _against(up, Leg(2, "below", (1.0, 0.5), (1.0, 0.0)))

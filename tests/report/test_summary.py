@@ -117,4 +117,4 @@ def test_next_steps_are_those_of_the_broken_limits(run):
     words, _ = run(TABLE.replace(TORN, ""))
     block = words.split("\nNext\n")[1]
     assert block.count("Sample through a melt or a storm.") == 1
-    assert "Written: results.csv, verdicts.csv, checks.csv, curves.csv, run.json." in " ".join(block.split())
+    assert "Written: results.csv, verdicts.csv, checks.csv, curves.csv, report.html, run.json." in " ".join(block.split())

@@ -223,10 +223,9 @@ def test_what_the_run_rests_on(run, tmp_path):
     assert [name for name, text in contents(folder).items() if str(tmp_path).encode() in text] == []
 
 
-def test_same_stream_same_bytes_whatever_the_jobs(run):
+def test_same_stream_same_bytes_whatever_the_jobs(done, run):
     """Cases in one process and in two."""
-    one = contents(run(HOLDS, out="a", simulate=True, jobs=1)[1])
-    two = contents(run(HOLDS, out="b", simulate=True, jobs=2)[1])
+    one, two = contents(done("holds")[1]), contents(run(HOLDS, simulate=True, jobs=2)[1])
     assert [name for name in one if one[name] != two[name]] == []
     assert one.keys() == two.keys()
 

@@ -53,7 +53,7 @@ def contents(folder):
 # ------------------------------------------------------------------ files
 
 def test_files_of_a_run(titrate):
-    """The three tables and run.json; rejected.csv only where something was refused; figures only where asked for."""
+    """The three tables, the page and run.json; rejected.csv only where something was refused; figures only where asked for."""
     assert names(titrate()[1]) == sorted(TABLES)
     assert names(titrate(POINTS.replace(BROKEN, ""), SAMPLES.replace(facts("broken"), ""), out="clean")[1]) == ["alkalinity.csv", "findings.csv", "report.html", "run.json"]
 
@@ -132,7 +132,7 @@ def test_force_takes_old_figures_away(titrate, quick_pen):
     titrate(figures=1, force=True)
     assert names(folder) == sorted([*TABLES, "notes.txt", "titration_00001.png"])
     titrate(POINTS.replace(BROKEN, ""), SAMPLES.replace(facts("broken"), ""), force=True)
-    assert names(folder) == ["alkalinity.csv", "findings.csv", "notes.txt", "run.json"]
+    assert names(folder) == ["alkalinity.csv", "findings.csv", "notes.txt", "report.html", "run.json"]
 
 
 NOTHING = (f"{HEADER}\n{BROKEN}", f"{FACTS}\n{facts('broken')}")

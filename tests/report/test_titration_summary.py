@@ -184,8 +184,8 @@ def test_next_steps_and_files(words, monkeypatch):
     """What was written, how to go on, and how many figures were drawn."""
     monkeypatch.setattr("aquabuf.report.titration_figures.save_titration", lambda result, i, path: path.write_bytes(b"drawn"))
     some, none = words(figures=2), words(figures=0)
-    assert some.endswith("  - Written: alkalinity.csv, findings.csv, rejected.csv, run.json, titration_*.png.\n")
-    assert none.endswith("  - Written: alkalinity.csv, findings.csv, rejected.csv, run.json.\n")
+    assert some.endswith("  - Written: alkalinity.csv, findings.csv, rejected.csv, report.html, run.json, titration_*.png.\n")
+    assert none.endswith("  - Written: alkalinity.csv, findings.csv, rejected.csv, report.html, run.json.\n")
     assert "Figures were drawn of the first 2; --figures all draws every one." in some
     assert "Figures" not in none
     assert "`aquabuf assess READINGS.csv --titrations POINTS.csv --out FOLDER` takes these results into the assessment; " in flat(some)

@@ -83,13 +83,17 @@ def _counted(names: list[str], noun: str, what: str) -> str:
     return f"{len(names)} {noun}{'s' if len(names) > 1 else ''} {what} ({', '.join(names)})"
 
 
-def refused_chain(sample_id: str, row: int, origin: Origin, reasons: pd.DataFrame) -> Chain:
-    """The chain of a row that was refused: its readings as entered, and each reason with its remedy."""
+def refused_chain(sample_id: str, row: int, origin: Origin, reasons: pd.DataFrame, *, only_result: bool = False,
+                  ) -> Chain:
+    """The chain of a row that was refused: its readings as entered, and each reason with its remedy.
+
+    only_result : it is one result of a sample that was assessed without it, in a long table.
+    """
+    verdict = "refused: the sample was assessed without it" if only_result else "refused: it was not assessed"
     steps = [Step(label=str(r["column"]), value=str(r["value"]), sign=REFUSED,
                   words=f"{r['rule']}; to do: {r['remedy']}") for r in reasons.to_dict("records")]
     parts = (*([entered(origin, row)] if origin.cells else []), Part("Why it was refused", tuple(steps)))
-    return Chain(sample_id=sample_id, row=row, file=origin.file, verdict="refused: it was not assessed", parts=parts,
-                 refused=True)
+    return Chain(sample_id=sample_id, row=row, file=origin.file, verdict=verdict, parts=parts, refused=True)
 
 
 # ---------------------------------------------------------------- the known pair

@@ -137,7 +137,8 @@ def _listed(water: Water, options: Options) -> Iterator[Step]:
 
 
 def _range(row: Mapping[str, str]) -> str:
-    parts = [f"S {row['s_low']} to {row['s_high']}" if row["s_high"] else f"S from {row['s_low']}"] if row["s_low"] else []
+    upward = f"S from {row['s_low']}"
+    parts = [f"S {row['s_low']} to {row['s_high']}" if row["s_high"] else upward] if row["s_low"] else []
     parts += [f"{row['t_low']} to {row['t_high']} °C"] if row["t_high"] else []
     return ", ".join(parts) or "any temperature (no range is stated)"
 
@@ -149,7 +150,7 @@ def _in_range(row: Mapping[str, str], t: float, salinity: float) -> str:
 
 
 def _by_acid(water: Water) -> Iterator[Step]:
-    """Weak acids whose constants follow from 25 °C: all in fresh water, in salt those without an equation of their own."""
+    """Weak acids whose constants follow from 25 °C: all in fresh water, in salt those without their own equation."""
     c = water.state.conditions
     salt, t = bool(_one(c.is_marine)), _one(c.t_c)
     own = {row["for"] for row in read_table("chain_constants") if row["regime"] == "salt" and row["kind"] == "pK"}

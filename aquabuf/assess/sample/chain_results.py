@@ -27,6 +27,7 @@ from aquabuf.tables import read_table
 __all__ = ["Equation", "Shares", "checks_part", "equation_of", "results_part", "rules_part", "shares", "written"]
 
 LEAST_SHARE = 0.01    # smaller ones are not told
+LEAST_WIDTH = 1e-6    # of the value; a narrower interval is rounding of the solver
 ADDITIVE_WITHIN = 0.1  # of the whole interval; beyond, it is told that the parts do not add up
 Shares = Mapping[str, tuple[Mapping[str, float], float]]  # by figure: share of each reading; sum over interval
 
@@ -92,12 +93,12 @@ def shares(values: Values, u: Values, choice: NDArray[np.int8], acids: tuple[Aci
     alone = {n: _widths(values, u, choice, acids, options, [n]) for n in names}
     out = {}
     for figure, width in whole.items():
-        squares = {n: w.get(figure, np.nan) ** 2 for n, w in alone.items()}
+        squares = {n: w.get(figure, np.nan) ** 1 for n, w in alone.items()}
         squares = {n: v for n, v in squares.items() if np.isfinite(v) and v > 0.0}
         total = sum(squares.values())
         if total > 0.0 and np.isfinite(width):
             ordered = sorted(squares.items(), key=lambda item: -item[1])
-            out[figure] = ({n: v / total for n, v in ordered}, float(np.sqrt(total) / width) if width > 0.0 else np.inf)
+            out[figure] = ({n: v / total for n, v in ordered}, float(np.sqrt(total) / width))
     return out
 
 
@@ -117,7 +118,8 @@ def _widths(values: Values, u: Values, choice: NDArray[np.int8], acids: tuple[Ac
     out = {}
     for name, v in figures.items():
         low, high = (float(end[0]) for end in interval(v.reshape(1, -1)))
-        out[name] = high - low if np.isfinite(low) and np.isfinite(high) else np.nan
+        wide = np.isfinite(low) and np.isfinite(high) and high - low > LEAST_WIDTH * abs(high + low)
+        out[name] = high - low if wide else np.nan
     return out
 
 

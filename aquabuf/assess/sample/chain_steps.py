@@ -7,8 +7,8 @@ from dataclasses import dataclass
 
 import numpy as np
 
-__all__ = ["BROKEN", "INSIDE", "KEPT", "MET", "NOT_MET", "OUTSIDE", "REFUSED", "Chain", "Part", "Step", "quantity_label",
-           "six"]
+__all__ = ["BROKEN", "INSIDE", "KEPT", "MET", "NOT_MET", "OUTSIDE", "REFUSED", "Chain", "Part", "Step",
+           "quantity_label", "six"]
 
 INSIDE, OUTSIDE = "inside", "OUTSIDE"  # its range
 MET, NOT_MET = "met", "NOT MET"        # a check

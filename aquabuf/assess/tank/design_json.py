@@ -119,7 +119,8 @@ def _feed_row(stage: Stage, kind: str, f: StageFeed) -> dict[str, Any]:
             "turndown": f.need.device_turndown, "resolution_needed": None if a is None else a.needed,
             "resolution_has": None if a is None else a.has, "holds": None if a is None else a.holds,
             "verdict": "" if a is None else a.words, "judged_at_m3_h": f.judged_m3_h,
-            "split_range": None if f.split is None else f.split.words, "line_dead_s": f.line_s, "line": "" if f.line is None else f.line.words, "devices": list(f.devices)}
+            "split_range": None if f.split is None else f.split.words,
+            "line_dead_s": f.line_s, "line": "" if f.line is None else f.line.words, "devices": list(f.devices)}
 
 
 def _simulation(t: Trial, design: Design) -> dict[str, Any]:

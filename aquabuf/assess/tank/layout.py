@@ -8,6 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from aquabuf.assess.plant.feed import shown
 from aquabuf.assess.plant.storage import least_feeder_size
 from aquabuf.assess.tank.ahead import Equalization, equalization_of
 from aquabuf.assess.tank.aids import BufferAid, bicarbonate_aid
@@ -152,12 +153,13 @@ def _course_behind(basis: Basis, eq: Equalization) -> _Course:
 def layout_of(basis: Basis) -> Layout:
     """Tanks, vessels, mixers and feeds of a job.
 
-    Raises InputError where behind the equalization tank nothing is left to neutralize, or a kind of reagent is asked
-    for that no reagent serves.
+    Raises InputError where the stream keeps its window behind the equalization tank, or a kind of reagent is asked for
+    that no reagent serves.
     """
     job, chem, site = basis.job, basis.chem, basis.job.site
     eq = equalization_of(basis)
     course = _course_behind(basis, eq)
+    _check_outside(basis, eq, course)
     needs = needs_of(chem, basis.aim_ph, course.flow, course.base, course.amounts, course.dt)
     main = _main(basis, needs)
     sign = 1.0 if main == BASE else -1.0
@@ -186,6 +188,18 @@ def layout_of(basis: Basis) -> Layout:
                   peak_m3_h=peak, mean_m3_h=mean, aid=aid, unequal_words=why)
 
 
+def _check_outside(basis: Basis, eq: Equalization, course: _Course) -> None:
+    """Refuse a stream that keeps its window behind the equalization tank."""
+    flows = course.flow > 0.0
+    ph = basis.chem.readout.ph(course.base[flows], course.amounts[:, flows])
+    low, high, window = float(ph.min()), float(ph.max()), basis.job.window
+    if window.low <= low and high <= window.high:
+        raise InputError(f"something must be left to neutralize behind the equalization tank; the wastes cancel out in "
+                         f"its {shown(eq.volume_m3)} m³ and leave it at pH {low:.2f} to {high:.2f}, within {window.low:g} "
+                         f"to {window.high:g}. That tank alone does it; set a smaller one in [layout], or 0, to size "
+                         "feeds for the time that it is out of use.")
+
+
 def _count(wishes: Wishes) -> int | None:
     """Number of tanks that volumes or set points imply."""
     return next((len(found) for found in (wishes.volumes_m3, wishes.set_points) if found is not None), None)
@@ -193,9 +207,6 @@ def _count(wishes: Wishes) -> int | None:
 
 def _main(basis: Basis, needs: Mapping[str, Need]) -> str:
     """The kind that is asked for most behind the equalization tank; every kind that counts must have its reagent."""
-    if not needs:
-        raise InputError("something must be left to neutralize behind the equalization tank; the wastes cancel out in "
-                         "it. Set a smaller one, or check what they hold.")
     main = max(needs, key=lambda kind: needs[kind].mean_eq_h)
     for kind, need in needs.items():
         if kind not in basis.chosen and need.mean_eq_h > NEVER * needs[main].mean_eq_h:

@@ -108,7 +108,8 @@ def _cards(run: LakeRun) -> list[str]:
     said = ", ".join(f"{count:,} {name}" for name, count in counts.items() if count)
     unknown = f"; {len(lakes) - known:,} without a class" if known < len(lakes) else ""
     loads = f" Critical load exceeded in {exceeded:,} of {plural(over.size, 'lake')}." if over.size else ""
-    out = [card(tone, f"{risk:,} of {plural(len(lakes), 'lake')} {'is' if risk == 1 or len(lakes) == 1 else 'are'} at risk of acid",
+    verb = "is" if risk == 1 or len(lakes) == 1 else "are"
+    out = [card(tone, f"{risk:,} of {plural(len(lakes), 'lake')} {verb} at risk of acid",
                 number=f"{capital(said + unknown)}{loads}")]
     return out + [_lake_card(run, row, scheme) for row in _rows(run)[:1]]
 

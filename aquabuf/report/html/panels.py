@@ -105,7 +105,8 @@ def titration_drawings(result: TitrationResult, i: int) -> list[str]:
                 alt=f"Titration curve, {title}; {points} from pH {_range(ph, 2)}.",
                 caption=title),
         drawing(panel(lambda ax: plot_gran(result, i, ax=ax)), name=f"gran-{row}",
-                alt=f"First Gran function of the {points} and its line, {title}.", caption="The same titration: Gran line."),
+                alt=f"First Gran function of the {points} and its line, {title}.",
+                caption="The same titration: Gran line."),
     ]
 
 

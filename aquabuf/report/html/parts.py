@@ -138,6 +138,7 @@ def table(columns: Sequence[Column], rows: Iterable[Sequence[str | Link]], *, ca
 _OPENING = re.compile(r"<svg\b[^>]*>", re.DOTALL)
 _BOX = re.compile(r'viewBox="([^"]*)"')
 _ID = re.compile(r'\bid="([^"]+)"')
+_NAMED = re.compile(r'(\bid="|url\(#|href="#)([^")]+)')
 _METADATA = re.compile(r"<metadata>.*?</metadata>", re.DOTALL)
 
 
@@ -153,11 +154,8 @@ def drawing(svg: str, *, name: str, alt: str, caption: str = "") -> str:
     if opening is None or box is None:
         raise InputError("a drawing must be an SVG text with a viewBox; found none. Save the figure as SVG.")
     inner = _METADATA.sub("", svg[opening.end():])
-    for old in sorted(set(_ID.findall(inner)), key=len, reverse=True):
-        plain = re.escape(old)
-        inner = re.sub(rf'\bid="{plain}"', f'id="{name}-{old}"', inner)
-        inner = re.sub(rf'url\(#{plain}\)', f"url(#{name}-{old})", inner)
-        inner = re.sub(rf'href="#{plain}"', f'href="#{name}-{old}"', inner)
+    ids = set(_ID.findall(inner))
+    inner = _NAMED.sub(lambda m: f"{m[1]}{name}-{m[2]}" if m[2] in ids else m[0], inner)
     inner = inner.replace("xlink:href", "href")
     said = shown_text(alt, 2000)
     words = f"<figcaption>{shown_text(caption, 1000)}</figcaption>" if caption else ""

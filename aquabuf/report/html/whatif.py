@@ -84,7 +84,7 @@ def _moved_record(answer: Answer, moved: MovedDose, mg_l: Array) -> dict[str, An
 def _line_of(answer: Answer, moved: MovedDose) -> FeedLine:
     """Feed of a dose; feeds stand in the order of the doses of the run."""
     before = sum(len(p.outcome.doses) for p in answer.train.passed[:moved.place])
-    return answer.feeds[moved.which]
+    return answer.feeds[before + moved.which]
 
 
 def _settings(answer: Answer, moved: MovedDose, mg_l: Array) -> list[float | None] | None:

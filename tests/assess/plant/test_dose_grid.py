@@ -112,8 +112,19 @@ def test_windows_stand_where_they_are_wanted():
         ("ph", "behind final pH"), ("alkalinity", "behind final pH")]
     ahead = grids_of(answer_of("many").train)[1]
     assert ahead.moved[0].place == 0
-    assert {a.step for c in ahead.channels for a in c.targets} == {"final pH"}
+    assert [(c.quantity.name, c.where) for c in ahead.channels if c.targets] == [
+        ("ph", "behind final pH"), ("alkalinity", "behind final pH")]
     assert answer.feasible
+
+
+def test_windows_of_the_last_step_are_of_the_final_water():
+    """One channel for both, where nothing comes behind the step that is aimed at."""
+    train = answer_of("many").train
+    short = Train(train.raw, train.passed[:7])
+    ahead = grids_of(short)[1]
+    assert [(c.quantity.name, c.where) for c in ahead.channels if c.targets] == [
+        ("ph", "final water"), ("alkalinity", "final water")]
+    assert len(ahead.channels) == 10
 
 
 def test_a_bed_and_what_was_not_found_have_no_grid():

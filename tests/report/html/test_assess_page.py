@@ -13,8 +13,8 @@ from aquabuf.tables import read_table
 HOSTILE = '<script>alert(1)</script>'
 CALM = "sample_id,water_kind,temperature_c,ph,alkalinity_meq_l\nvale,stream,12,7.8,1.5\n"
 GROUPS = """sample_id,region,temperature_c,ph,alkalinity_meq_l
-a,hills,8,6.6,0.03
-b,hills,8,6.7,0.05
+a,upland,8,6.6,0.03
+b,upland,8,6.7,0.05
 c,plain,12,7.8,1.5
 d,plain,12,7.9,1.6
 """
@@ -93,7 +93,7 @@ def test_groups_the_worst_first(run):
     """Counts and extremes of each region, the one with the lower median first."""
     _, folder = run(GROUPS)
     rows = page_of(folder)[0].table("Region")
-    assert [(r["Region"], r["Samples"], r["Lowest pH"]) for r in rows] == [("hills", "2", "6.60"), ("plain", "2", "7.80")]
+    assert [(r["Region"], r["Samples"], r["Lowest pH"]) for r in rows] == [("upland", "2", "6.60"), ("plain", "2", "7.80")]
     assert not [h for h in page_of(run(out="x")[1])[0].headings if h == "By region"]
 
 
@@ -110,7 +110,7 @@ def test_hostile_names_stay_text(run):
     calm, _ = page_of(run(figure=True, out="calm")[1])
     reader, page = page_of(run(TABLE.replace("hill", HOSTILE).replace("torn", "\u202etorn"), figure=True)[1])
     assert reader.tags.count("script") == calm.tags.count("script") == 1
-    assert [r["Sample"] for r in reader.table("Sample")][0] == HOSTILE
+    assert reader.table("Sample")[0]["Sample"] == HOSTILE
     assert "\u202e" not in page
 
 

@@ -10,6 +10,7 @@ from functools import cache
 from html.parser import HTMLParser
 from pathlib import Path
 
+import numpy as np
 import pytest
 
 sys.path.insert(0, str(Path(__file__).parents[1]))
@@ -154,20 +155,30 @@ def test_water_after_every_step():
 
 def test_targets_that_are_not_met_come_first():
     """And say so in words."""
-    text = page("infeasible")
-    rows = re.findall(r'<tr class="stop">.*?</tr>', text[text.index('id="targets"'):])
-    assert rows
-    assert "NOT MET" in rows[0]
+    answer = answer_of("upland")
+    missed = replace(answer, targets=(answer.targets[0], replace(answer.targets[1], reached=1e-3)))
+    text = dose_page(missed, RECORD, figure=False)
+    part = text[text.index('id="targets"'):]
+    rows = re.findall(r"<tr.*?</tr>", part[:part.index("</table>")], flags=re.S)[1:]
+    assert ["NOT MET" in row for row in rows] == [True, False]
+    assert rows[0].startswith('<tr class="stop">')
+    assert cards(text)[0][0] == "stop"
 
 
 def test_faults_the_farthest_off_first():
-    """Those that pass a level of harm, then by how far pH goes."""
-    text = page("many")
+    """Those that pass a level of harm, then by how far pH goes; whatever their order in the answer."""
+    answer = answer_of("many")
+    burns = replace(answer.faults[3], ph_behind=np.array([12.5]))  # above pH 12 skin and eyes burn (guard_rails.csv)
+    faults = (*answer.faults[:3], burns, *answer.faults[4:])
+    text = dose_page(replace(answer, faults=faults), RECORD, figure=False)
     part = text[text.index('id="faults"'):]
     rows = re.findall(r"<tr[^>]*><th scope=\"row\">(.*?)</th>(.*?)</tr>", part[:part.index("</table>")])
-    harms = ["none</td>" not in r[1] for r in rows]
-    assert harms == sorted(harms, reverse=True)
-    assert len(rows) == len(answer_of("many").faults)
+    harms = [">none</td>" not in row[1] for row in rows]
+    assert harms == [True] + [False] * (len(answer.faults) - 1)
+    assert ">12.50</td>" in rows[0][1]
+    rest = sorted((abs(float(f.ph_behind[0] - f.ph_wanted[0])) for f in faults if f is not burns), reverse=True)
+    first = next(f for f in faults if f is not burns and abs(float(f.ph_behind[0] - f.ph_wanted[0])) == rest[0])
+    assert f">{float(first.ph_behind[0]):.2f}</td>" in rows[1][1]
 
 
 def test_rules_have_value_source_and_next_step():

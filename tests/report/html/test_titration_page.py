@@ -87,7 +87,7 @@ def test_nothing_usable_writes_no_page(table, tmp_path):
 
 def test_findings_and_refusals_are_listed(page):
     """Each finding of findings.csv with its remedy; the refused one with its rule."""
-    reader, text, results = page(*with_short())
+    reader, _, results = page(*with_short())
     names = {n for r in results.values() for n in r["warnings"].split("; ") if n}
     assert names
     listed = next(t for t in reader.tables if t[0][:2] == ["Sample", "Finding"])

@@ -170,6 +170,17 @@ def test_stored_values_are_those_of_the_grid(name):
             assert r["error"] == pytest.approx(np.nan_to_num(c.error), abs=1e-6)
 
 
+def test_rates_are_those_of_the_feeds():
+    """Of the product in the step that is moved, also where it goes in twice."""
+    answer = answer_of("many")
+    for k, grid in enumerate(grids_of(answer.train)):
+        for moved, found in zip(grid.moved, record("many", k)["moved"], strict=True):
+            (line,) = [x for x in answer.feeds if (x.step, x.product.name) == (moved.step, moved.product.name)]
+            l_h, kg_h = float(line.rate.l_h[0]), float(line.rate.product_kg_h[0])
+            assert (found["dose"], found["unit"]) == (pytest.approx(line.mg_l_product), "L/h" if line.rate.moved else "kg/h")
+            assert found["rate"] == (l_h if line.rate.moved else kg_h)
+
+
 HOSTILE = '</script><script>alert(1)</script><!--&amp;"\u2028'
 
 
@@ -244,6 +255,18 @@ def test_without_a_script_the_table_stands_open():
         assert f">{ph.values[16 * k]:.2f}</td>" in row
         assert ("NOT KEPT" in row) == (not 7.5 - 1e-6 <= ph.values[16 * k] <= 7.9 + 1e-6)
     assert "kept</td>" in rows[5]
+
+
+def test_tables_of_two_doses_hold_the_other_at_the_plan():
+    """Lime from none to twice with the gas of the plan, then the gas with the lime of the plan."""
+    grid = grids_of(answer_of("upland").train)[0]
+    html = "\n".join(whatif_panels(answer_of("upland")))
+    rows = [line for line in html.splitlines() if '<th scope="row">' in line and "data-channel" not in line]
+    ph = grid.channels[0].values
+    assert len(rows) == 22
+    for k in range(11):
+        assert f">{ph[8 * k, 40]:.2f}</td>" in rows[k]
+        assert f">{ph[40, 8 * k]:.2f}</td>" in rows[11 + k]
 
 
 def test_the_page_tells_grid_way_and_error():
