@@ -1,5 +1,8 @@
 """`aquabuf explain`: the chain to standard output; what cannot be explained is 1, wrong usage 2."""
 
+import re
+from pathlib import Path
+
 QUICK = ("--draws", "0", "--no-figure")
 
 
@@ -61,3 +64,17 @@ def test_help_has_two_examples(call):
 def test_wrong_usage(call):
     """A name is needed."""
     assert call("explain", "o").exit_code == 2
+
+
+def test_the_page_shows_what_is_printed(call):
+    """Every line of the examples in docs/explain.md is printed for that sample, in this order."""
+    root = Path(__file__).parents[2]
+    readings = root / "field_data" / "stream_survey.csv"
+    call("assess", readings, "--out", "result", "--no-figure")
+    printed = call("explain", "result", "UT-base", "--input", readings).stdout.splitlines()
+    blocks = re.findall(r"```text\n(.*?)```", (root / "docs" / "explain.md").read_text(encoding="utf-8"), flags=re.S)
+    lines = [line for block in blocks for line in block.splitlines()]
+    assert len(lines) > 30
+    at = -1
+    for line in lines:
+        at = printed.index(line, at + 1)

@@ -34,7 +34,8 @@ def test_factor_and_basis(table, header, text, name, factor, words):
 
 
 def test_temperature_with_an_offset(table):
-    """°F: times 5/9 less 160/9."""
+    """°F: times 5/9 less 160/9; K: less 273.15."""
+    assert cells(table("sample_id,Water temp (K)\na,283\n"))["temperature_c"].conversion() == "× 1 - 273.15"
     assert cells(table("sample_id,Water temp (°F)\na,50\n"))["temperature_c"].conversion() == "× 0.555556 - 17.7778"
 
 

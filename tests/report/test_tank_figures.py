@@ -8,6 +8,7 @@ from pathlib import Path
 import matplotlib
 import numpy as np
 import pytest
+from matplotlib.patches import Rectangle
 from numpy.testing import assert_allclose, assert_array_equal
 
 sys.path.insert(0, str(Path(__file__).parent))
@@ -283,7 +284,9 @@ def test_head_says_what_is_known(page):
     assert design_of("two").verdict in words
     assert "Window pH 6 to 9 (permit of the example)" in words
     assert "Do not build this: cyanide" in said(page("stopped"))
-    assert len([p for p in page("stopped").patches if p is not page("stopped").patch]) + len(page("stopped").artists) >= 1
+    boxed = {name: sum(isinstance(a, Rectangle) and a is not page(name).patch for a in page(name).get_children())
+             for name in ("stopped", "four")}
+    assert boxed == {"stopped": 1, "four": 0}  # the four tanks hold
     assert LONG[:20] in " ".join(t for ax in page("four").axes for t in texts(ax)).replace("\n", " ")
 
 

@@ -16,7 +16,7 @@ from aquabuf.assess.options import Options
 from aquabuf.assess.sample.assess import Assessment
 from aquabuf.assess.sample.chain_constants import balance, conditions_part, constants_part
 from aquabuf.assess.sample.chain_readings import Origin, entered, house_label, in_house_units, uncertainty_steps
-from aquabuf.assess.sample.chain_results import checks_part, results_part, rules_part, shares
+from aquabuf.assess.sample.chain_results import checks_part, results_part, rules_part, shares, written
 from aquabuf.assess.sample.chain_steps import MET, NOT_MET, REFUSED, Chain, Part, Step, six
 from aquabuf.assess.sample.closure import MUCH_BETTER, Closure, closure
 from aquabuf.assess.sample.inputs import PH_COLUMNS, Values, uncertainties
@@ -120,9 +120,18 @@ def _known_pair(values: Values, pair: str, gap: Closure, water: Water, options: 
         steps.append(Step(label="alkalinity less that of pH and carbon", value=six(carbon), unit="meq/L",
                           words=f"three readings of one pair; standard uncertainty {carbon_u:.3g} meq/L",
                           sign=MET if abs(carbon) <= 2.0 * carbon_u else NOT_MET))
-    if str(row["alkalinity_from"]) == "computed":
-        steps.append(Step(label="alkalinity", value="computed", words="not titrated; it follows from the known pair"))
+    steps += list(_alkalinity(pair, row))
     return Part("What the answer rests on", tuple(steps))
+
+
+def _alkalinity(pair: str, row: Mapping[str, Any]) -> Iterable[Step]:
+    """What became of the alkalinity where it is not one of the pair."""
+    if str(row["alkalinity_from"]) == "computed":
+        yield Step(label="alkalinity", value="computed", words="not titrated; it follows from the known pair")
+    elif "alkalinity" not in pair.split(" and "):
+        yield Step(label="alkalinity as titrated", value=written(float(row["alkalinity_meq_l"]), 4), unit="meq/L",
+                   words=f"stands among the results; species and tolerances rest on the "
+                         f"{written(float(row['alkalinity_used_meq_l']), 4)} meq/L of the solved water")
 
 
 def _temperature_of_ph(values: Values) -> Iterable[Step]:

@@ -93,7 +93,7 @@ def shares(values: Values, u: Values, choice: NDArray[np.int8], acids: tuple[Aci
     alone = {n: _widths(values, u, choice, acids, options, [n]) for n in names}
     out = {}
     for figure, width in whole.items():
-        squares = {n: w.get(figure, np.nan) ** 1 for n, w in alone.items()}
+        squares = {n: w.get(figure, np.nan) ** 2 for n, w in alone.items()}
         squares = {n: v for n, v in squares.items() if np.isfinite(v) and v > 0.0}
         total = sum(squares.values())
         if total > 0.0 and np.isfinite(width):
@@ -211,5 +211,6 @@ def _rule(limit: Limit, row: Mapping[str, Any], column: ResultColumn, broken: Ma
     elif limit.met(np.array([value]))[0]:
         words.append("holds too, but a rule of its group that is listed before says it already")
     sign = BROKEN if verdict is not None else "" if np.isnan(value) else KEPT
-    return Step(label=limit.name, value=f"{label} {written(value, column.digits)}", unit=unit.strip(), sign=sign,
+    return Step(label=limit.name, value=f"{label} {written(value, column.digits)}", sign=sign,
+                unit="" if np.isnan(value) else unit.strip(),
                 words="; ".join(words), source=limit.source)

@@ -10,12 +10,14 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from aquabuf.assess.plant.feed import HOURS_PER_DAY
+from aquabuf.assess.tank.alternatives import Alternative, alternatives_of
 from aquabuf.assess.tank.basis import L_PER_M3, Basis, Need, basis_of
 from aquabuf.assess.tank.batch import BatchPlan, Reason, batch_plan, batch_reasons, batch_suits
 from aquabuf.assess.tank.demand import Load, demand_eq_l
 from aquabuf.assess.tank.design_words import assumptions_of, warnings_of
 from aquabuf.assess.tank.effects import totals_of, treated
 from aquabuf.assess.tank.job import Job
+from aquabuf.assess.tank.known import Known, known_of
 from aquabuf.assess.tank.layout import Layout, layout_of
 from aquabuf.assess.tank.reagents import Reagent
 from aquabuf.assess.tank.sensitivity import sensitivity_of
@@ -65,6 +67,8 @@ class Design:
     batch: BatchPlan | None
     batch_reasons: tuple[Reason, ...]
     sensitivity: pd.DataFrame
+    alternatives: tuple[Alternative, ...]
+    known: tuple[Known, ...]
     curve: pd.DataFrame
     assumptions: tuple[str, ...]
     warnings: tuple[str, ...]
@@ -78,8 +82,9 @@ class Design:
 
     @property
     def accepted(self) -> bool:
-        """Whether nothing forbids it and the simulation shows it holding."""
-        return not self.stops and self.trial is not None and self.trial.accepted
+        """Whether nothing forbids it and enough simulated cases show it holding; one course alone proves nothing."""
+        proof = None if self.trial is None else self.trial.monte
+        return not self.stops and self.trial is not None and proof is not None and self.trial.accepted
 
     @property
     def verdict(self) -> str:
@@ -90,7 +95,7 @@ class Design:
             return "Not proven: no simulation was run."
         if self.trial.monte is None:
             keeps = "keeps" if self.trial.kept else "breaks"
-            return f"The course simulated {keeps} the time rule; no probability, as no cases were asked for."
+            return f"Not proven: the course simulated {keeps} the time rule, and no cases were asked for."
         m = self.trial.monte
         share = f"{100.0 * m.probability:.0f} % of {m.meets.size} simulated cases keep the time rule (95 % interval " \
                 f"{100.0 * m.low:.0f} to {100.0 * m.high:.0f} %)"
@@ -117,13 +122,15 @@ def design(job: Job, *, simulate: bool = True, cases: int | None = None, process
     trial = None
     if simulate and not stopped:
         trial = trial_of(basis, layout, cases=job.trial.cases if cases is None else cases, processes=processes)
+    others = () if trial is None else alternatives_of(basis, layout, trial, processes=processes)
+    known = known_of(basis.chem, tuple(a.mean_m3_h or 0.0 for a in job.arrivals))
     stores, held, words = _storage(basis, layout)
     plan, reasons = _batch(basis, layout)
     told = cautions_of(list(cases_of.values()), list(side.values()))
     return Design(
         job=job, basis=basis, layout=layout, trial=trial, side=side, stores=stores, containments=held,
         storage_words=words, batch=plan, batch_reasons=tuple(reasons), sensitivity=sensitivity_of(basis),
-        curve=_curve(basis),
+        alternatives=others, known=known, curve=_curve(basis),
         assumptions=assumptions_of(basis, layout), warnings=warnings_of(basis, layout, trial, side),
         cautions=tuple(dict.fromkeys((*(c.words for c in told), *cautions(basis.chosen.values())))),
         caution_sources=told)

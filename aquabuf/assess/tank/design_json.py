@@ -11,6 +11,7 @@ import numpy as np
 from aquabuf.assess.tank.basis import Need
 from aquabuf.assess.tank.demand import Demand
 from aquabuf.assess.tank.design import Design
+from aquabuf.assess.tank.known import Known
 from aquabuf.assess.tank.layout import Stage, StageFeed
 from aquabuf.assess.tank.trial import Trial
 
@@ -28,6 +29,10 @@ def design_record(design: Design) -> dict[str, Any]:
         "feed": _feed(design), "simulation": None if design.trial is None else _simulation(design.trial, design),
         "side_effects": _side_effects(design),
         "storage": _storage(design), "batch": _batch(design), "sensitivity": design.sensitivity.to_dict("records"),
+        "alternatives": [{"change": a.words, "tanks": a.tanks, "equalization_m3": a.equalization_m3,
+                          "volume_m3": a.volume_m3, "cases": a.cases, "probability_of_meeting_rule": a.probability,
+                          "probability_low": a.low, "probability_high": a.high, "minutes_outside": a.outside_min,
+                          "accepted": a.accepted} for a in design.alternatives],
         "assumptions": list(design.assumptions), "warnings": list(design.warnings), "cautions": list(design.cautions),
     }
     return _plain(record)
@@ -51,9 +56,18 @@ def _stream(design: Design) -> dict[str, Any]:
     wastes = [{"name": w.name, "base_eq_l": b, "ph": p,
                "known_by": "titration" if w.curve is not None else "composition"}
               for w, b, p in zip(chem.wastes, chem.base_eq_l, chem.ph, strict=True)]
-    return {"wastes": wastes, "temperature_c": chem.t_c, "mean_flow_m3_h": mean.flow_m3_h,
+    return {"wastes": wastes, "known": [_known(k) for k in design.known], "temperature_c": chem.t_c, "mean_flow_m3_h": mean.flow_m3_h,
             "mean_base_eq_l": mean.base_eq_l,
             "mean_ph": chem.readout.ph(mean.base_eq_l, mean.amounts), "course": design.basis.course.source}
+
+
+def _known(k: Known) -> dict[str, Any]:
+    s = k.spectrum
+    buffers = [] if s is None else [{"pk": pk, "u_pk": u_pk, "mol_l": mol, "u_mol_l": u}
+                                    for pk, u_pk, mol, u in zip(s.pk, s.u_pk, s.mol_l, s.u_mol_l, strict=True)]
+    return {"name": k.waste, "buffers": buffers, "carbon_mol_l": None if s is None else s.carbon_mol_l,
+            "u_carbon_mol_l": None if s is None else s.u_carbon_mol_l, "acidity_eq_l": k.acidity_eq_l,
+            "words": list(k.words)}
 
 
 def _demand(d: Demand) -> dict[str, Any]:

@@ -36,7 +36,7 @@ def assumptions_of(basis: Basis, layout: Layout) -> tuple[str, ...]:
         f"Reagent lines are full of liquid; where one is longer than the tank's dead time, carrier water is taken for "
         f"granted (line {job.site.line_m:g} m, {job.site.line_bore_mm:g} mm).",
         f"Time rule: {job.window.total_min:g} min a month in all and {job.window.each_min:g} min at a time "
-        f"({job.window.source}).",
+        f"({job.window.time_source}).",
         "Stores and reagent lines are as cold as 0 °C at the coldest.",
     ]
     if len(basis.chosen) == 1:

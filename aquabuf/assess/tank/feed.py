@@ -14,6 +14,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from aquabuf.assess.limits import EDGE
 from aquabuf.assess.plant.feed import shown
+from aquabuf.assess.plant.steps.words import brief
 from aquabuf.assess.plant.storage import least_feeder_size
 from aquabuf.assess.tank.demand import L_PER_M3, Demand
 from aquabuf.assess.tank.rules import TankRule, at_least_zero, positive, rule, rules_in
@@ -28,10 +29,6 @@ __all__ = [
 Array = NDArray[np.float64]
 
 S_PER_H, M_PER_MM = 3600.0, 1e-3
-
-
-def _rate(value: float) -> str:
-    return f"{value:.3g}"
 
 
 # ---------------------------------------------------------------- range
@@ -113,7 +110,7 @@ def turndown_words(need: FeedNeed) -> tuple[tuple[TankRule, bool, str], ...]:
         surely = need.device_turndown <= r.low * (1.0 + EDGE)
         maybe = np.isfinite(r.high) and need.device_turndown <= r.high * (1.0 + EDGE)
         says = "serves" if surely else "serves if a good one" if maybe else "does not reach"
-        out.append((r, bool(surely or maybe), f"{r.key}, {r.range_words}: {says} {need.device_turndown:.3g}:1 "
+        out.append((r, bool(surely or maybe), f"{r.key}, {r.range_words}: {says} {brief(need.device_turndown)}:1 "
                                               f"({r.told_by})"))
     return tuple(out)
 
@@ -184,8 +181,8 @@ def accuracy(curve: DemandCurve, window: Window, span: float, *, repeatability: 
     return Accuracy(
         span_eq_l=span, window=whole, needed=needed, has=has, lowest_ph=low, highest_ph=high, holds=holds,
         gain_ph_per_pct=float(gain_ph_per_pct(curve, window.aim, span)), class_words=known,
-        words=f"the nearer end of the window is {_rate(100 * needed)} % of the span away, this feed is good to "
-              f"{_rate(100 * has)} %: {'it holds' if holds else 'it cannot hold'} the window on its own "
+        words=f"the nearer end of the window is {brief(100 * needed)} % of the span away, this feed is good to "
+              f"{brief(100 * has)} %: {'it holds' if holds else 'it cannot hold'} the window on its own "
               f"(pH {_end(low)} to {_end(high)}); {known}")
 
 
@@ -228,7 +225,7 @@ def split_range(tolerance_eq_l: float, span: float, size_l_h: float, *, repeatab
     f = min(1.0, float(np.sqrt(least * most))) if works else min(1.0, least)
     left, wide = off * f * span, turndown / f
     words = (f"coarse {shown(size_l_h)} L/h and fine {shown(f * size_l_h)} L/h of the same reagent, "
-             f"{_rate(100 * f)} % of the span, {wide:.3g}:1 together")
+             f"{brief(100 * f)} % of the span, {brief(wide)}:1 together")
     words += (f": leaves {left:.2g} of {tolerance_eq_l:.2g} eq/L" if works else
               f": still leaves {left:.2g} where {tolerance_eq_l:.2g} eq/L is allowed; take another tank, a buffer or "
               "a weaker trim reagent")
@@ -259,12 +256,12 @@ def strength_for(need: FeedNeed, stock_eq_l: float, device_l_h: float, turndown:
     chosen = min(high, stock_eq_l)
     if low > chosen * (1.0 + EDGE):
         why = ("even as delivered it is too weak for the largest need: take a larger device" if low > stock_eq_l else
-               f"no one strength serves a need of {need.turndown:.3g}:1 with a turndown of {turndown:.3g}: "
-               "split it over two devices")
+               f"no one strength serves a need of {brief(need.turndown)}:1 with a turndown of "
+               f"{brief(turndown)}: split it over two devices")
         return Strength(low_eq_l=low, high_eq_l=high, chosen_eq_l=np.nan, thinned=np.nan, words=why)
     thinned = stock_eq_l / chosen
-    words = (f"{chosen:.3g} eq/L, " + ("as delivered" if thinned <= 1.0 + EDGE else f"thinned {thinned:.3g} times so "
-             f"that the least need, {need.least_eq_h / chosen:.3g} L/h, can be fed"))
+    words = (f"{brief(chosen)} eq/L, " + ("as delivered" if thinned <= 1.0 + EDGE else
+             f"thinned {brief(thinned)} times so that the least need, {brief(need.least_eq_h / chosen)} L/h, can be fed"))
     return Strength(low_eq_l=low, high_eq_l=high, chosen_eq_l=chosen, thinned=thinned, words=words)
 
 
@@ -293,8 +290,8 @@ def line(length_m: float, bore_mm: float, reagent_l_h: float, tank_dead_s: float
     dead = volume / rate * S_PER_H
     holds = dead <= tank * (1.0 + EDGE)
     carrier = 0.0 if holds else volume / tank * S_PER_H - rate
-    words = f"{volume:.3g} L of line delay {rate:.3g} L/h by {dead:.3g} s"
-    words += (f", no more than the {tank:.3g} s of the tank" if holds else
-              f", longer than the {tank:.3g} s of the tank: put valve and pump at the tank, or send {carrier:.3g} L/h "
-              "of water with the reagent; keep the line full with a loop seal")
+    words = f"{brief(volume)} L of line delay {brief(rate)} L/h by {brief(dead)} s"
+    words += (f", no more than the {brief(tank)} s of the tank" if holds else
+              f", longer than the {brief(tank)} s of the tank: put valve and pump at the tank, or send "
+              f"{brief(carrier)} L/h of water with the reagent; keep the line full with a loop seal")
     return Line(volume_l=volume, dead_s=dead, tank_dead_s=tank, carrier_l_h=carrier, holds=holds, words=words)

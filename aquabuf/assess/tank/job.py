@@ -13,7 +13,9 @@ from aquabuf.assess.tank.reagents import Reagent
 from aquabuf.assess.tank.waste import Waste
 from aquabuf.readings.profile_file import ProfileTable
 
-__all__ = ["Arrival", "Batch", "Daily", "Job", "Site", "Spread", "Trial", "Window", "Wishes"]
+__all__ = ["TIME_RULE", "Arrival", "Batch", "Daily", "Job", "Site", "Spread", "Trial", "Window", "Wishes"]
+
+TIME_RULE = "40 CFR 401.17 on continuous monitoring (recalled); the permit outranks it"
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -58,7 +60,10 @@ class Arrival:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Window:
-    """pH that the discharge must keep, the aim of the last stage (None: to be chosen), and the time rule."""
+    """pH that the discharge must keep, the aim of the last stage (None: to be chosen), and the time rule.
+
+    source : of the window. time_source : of the time rule, where that is not the file's own.
+    """
 
     low: float
     high: float
@@ -66,6 +71,7 @@ class Window:
     total_min: float
     each_min: float
     source: str
+    time_source: str = TIME_RULE
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

@@ -17,7 +17,7 @@ from aquabuf.assess.plant.plan_place import Place
 from aquabuf.assess.plant.plan_store import Told, read_product
 from aquabuf.assess.plant.store import Stocked
 from aquabuf.assess.plant.toml_lines import toml_lines
-from aquabuf.assess.tank.job import Arrival, Job, Site, Trial, Window, Wishes
+from aquabuf.assess.tank.job import TIME_RULE, Arrival, Job, Site, Trial, Window, Wishes
 from aquabuf.assess.tank.job_wastes import beside, not_there, read_wastes
 from aquabuf.assess.tank.reagents import Reagent, reagent_of
 from aquabuf.errors import FileError, InputError
@@ -101,11 +101,12 @@ def _window(top: Place, content: Mapping[str, Any], told: Told) -> Window:
     if not low < high:
         raise place.error(f"ph must have a lower limit below its upper one; found [{low:g}, {high:g}]. Give both.",
                           "ph")
-    aim = found.get("aim")
+    aim, own = found.get("aim"), not {"total", "each"} <= {key.name for key in found.defaults}
     if aim is not None and not low < aim < high:
         raise place.error(f"aim must lie within the window {low:g} to {high:g}; found {aim:g}. Correct one of them.",
                           "aim")
-    return Window(low=low, high=high, aim=aim, total_min=found["total"], each_min=found["each"], source=found["source"])
+    return Window(low=low, high=high, aim=aim, total_min=found["total"], each_min=found["each"], source=found["source"],
+                  time_source=found["source"] if own else TIME_RULE)
 
 
 def _reagents(top: Place, content: Mapping[str, Any], told: Told,

@@ -194,10 +194,10 @@ def _check_outside(basis: Basis, eq: Equalization, course: _Course) -> None:
     ph = basis.chem.readout.ph(course.base[flows], course.amounts[:, flows])
     low, high, window = float(ph.min()), float(ph.max()), basis.job.window
     if window.low <= low and high <= window.high:
-        raise InputError(f"something must be left to neutralize behind the equalization tank; the wastes cancel out in "
-                         f"its {shown(eq.volume_m3)} m³ and leave it at pH {low:.2f} to {high:.2f}, within {window.low:g} "
-                         f"to {window.high:g}. That tank alone does it; set a smaller one in [layout], or 0, to size "
-                         "feeds for the time that it is out of use.")
+        raise InputError("something must be left to neutralize behind the equalization tank; the wastes cancel out in "
+                         f"its {shown(eq.volume_m3)} m³ and leave it at pH {low:.2f} to {high:.2f}, within "
+                         f"{window.low:g} to {window.high:g}. That tank alone does it; set a smaller one in [layout], "
+                         "or 0, to size feeds for the time that it is out of use.")
 
 
 def _count(wishes: Wishes) -> int | None:

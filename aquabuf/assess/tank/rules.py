@@ -13,6 +13,7 @@ import numpy as np
 
 from aquabuf.assess.limits import EDGE
 from aquabuf.assess.plant.feed import shown
+from aquabuf.assess.plant.steps.words import brief
 from aquabuf.errors import InputError
 from aquabuf.tables import read_table
 from aquabuf.units import convert
@@ -56,11 +57,11 @@ class TankRule:
         unit = "" if self.unit == "-" else f" {self.unit}"
         low, high = np.isfinite(self.low), np.isfinite(self.high)
         if low and high:
-            both = f"{self.low:.3g}" if self.low == self.high else f"{self.low:.3g} to {self.high:.3g}"
+            both = brief(self.low) if self.low == self.high else f"{brief(self.low)} to {brief(self.high)}"
             return f"{both}{unit}"
         if low:
-            return f"at least {self.low:.3g}{unit}"
-        return f"at most {self.high:.3g}{unit}" if high else ""
+            return f"at least {brief(self.low)}{unit}"
+        return f"at most {brief(self.high)}{unit}" if high else ""
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

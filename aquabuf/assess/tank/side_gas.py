@@ -101,7 +101,7 @@ def co2_effects(case: Treated, window: tuple[float, float] | None = None) -> lis
             "below the workplace limit even in closed air")
     return [
         Effect(name="carbon dioxide set free", value=kg, unit="kg/m3",
-               words=f"{kg_d:.3g} kg/d, {kg_d * float(co2_m3_per_kg(case.t_c)):.3g} m3/d at {case.t_c:g} °C, if all "
+               words=f"{kg_d:.3g} kg/d, {kg_d * float(co2_m3_per_kg(case.t_c)):.3g} m3/d at {case.t_c:.1f} °C, if all "
                      "that air can strip leaves; what stays in holds pH down and lifts it later",
                rule="carbon of waste and reagent less what stays in balance with air", source=STOICHIOMETRY),
         Effect(name="carbon dioxide gas", value=kg_d * float(co2_m3_per_kg(case.t_c)), unit="m3/d",
@@ -174,7 +174,7 @@ def _gas_row(case: Treated, hazard: GasHazard, share: Array) -> Effect:
     already = is_much and share.max() > TELLING_SHARE
     severity = hazard.severity if sets_free and is_much else WARNING if sets_free or already else NOTE
     gives = f"share as {hazard.gas}" if hazard.name != "hypochlorite" else "share as HOCl, which gives chlorine"
-    said = f"{gives} {share[0]:.3g} at pH {case.start_ph:g}, {share[1]:.3g} at pH {case.end_ph:g}"
+    said = f"{gives} {share[0]:.3g} at pH {case.start_ph:.2f}, {share[1]:.3g} at pH {case.end_ph:.2f}"
     if severity == STOP:
         said += f". Acid must not go to this waste: {hazard.words}"
     elif severity == WARNING:

@@ -24,8 +24,12 @@ from aquabuf.assess.tank.monte import Bands, MonteCarlo, TimeRule, monte_carlo
 from aquabuf.assess.tank.reagents import ACID, BASE
 from aquabuf.assess.tank.simulate import Simulated, simulate
 from aquabuf.engine.readout import GRID_PH
+from aquabuf.errors import InputError
 
-__all__ = ["ENOUGH", "OPERATOR_MIN", "FaultRun", "Trial", "bands_of", "inflow_of", "tanks_of", "trial_of", "tunings_of"]
+__all__ = [
+    "ENOUGH", "OPERATOR_MIN", "FaultRun", "Trial", "bands_of", "inflow_of", "step_of", "tanks_of", "trial_of",
+    "tunings_of",
+]
 
 Array = NDArray[np.float64]
 
@@ -169,17 +173,16 @@ def _of_case(inflow: Inflow, case: int) -> Inflow:
 # ---------------------------------------------------------------- the runs
 
 
-def trial_of(basis: Basis, layout: Layout, *, cases: int, processes: int = 2) -> Trial:
+def trial_of(basis: Basis, layout: Layout, *, cases: int, processes: int = 2, with_faults: bool = True) -> Trial:
     """One course as shown, failures one by one, and the cases that the probability is counted over."""
     job, chem = basis.job, basis.chem
     tunings = tunings_of(basis, layout)
     tanks = tanks_of(basis, layout, tunings)
     inflow = inflow_of(basis, layout, max(cases, 1))
     until = job.trial.days * DAY_S
-    shortest = float(np.diff(inflow.time_s).min(initial=np.inf))
-    step = job.trial.step_s or min(LONGEST_STEP_S, step_for(tanks, layout.peak_m3_h), shortest)
+    step = step_of(basis, layout, tanks, inflow)
     window = (job.window.low, job.window.high)
-    rule = TimeRule(job.window.total_min, job.window.each_min, job.window.source)
+    rule = TimeRule(job.window.total_min, job.window.each_min, job.window.time_source)
     every = step * max(1.0, np.ceil(until / RECORDS / step))
     course = simulate(chem.readout, tanks, _of_case(inflow, 0), until_s=until, record_every_s=every,
                       window=window, dt_s=step, seed=job.trial.seed, carbon_carrier=chem.carbon_carrier)
@@ -189,7 +192,19 @@ def trial_of(basis: Basis, layout: Layout, *, cases: int, processes: int = 2) ->
                             processes=processes, window=window, dt_s=step, seed=job.trial.seed,
                             carbon_carrier=chem.carbon_carrier)
     return Trial(tanks=tanks, tunings=tunings, course=course, inflow=_of_case(inflow, 0), rule=rule, monte=monte,
-                 faults=_fault_runs(basis, layout, tunings, step), step_s=step)
+                 faults=_fault_runs(basis, layout, tunings, step) if with_faults else (), step_s=step)
+
+
+def step_of(basis: Basis, layout: Layout, tanks: Sequence[Tank], inflow: Inflow) -> float:
+    """Step of the simulation: as the file sets it, else by the fastest loop and the rows of the course. [s]
+
+    Raises InputError where the file sets one that is longer than a value of the course holds.
+    """
+    wish, shortest = basis.job.trial.step_s, float(np.diff(inflow.time_s).min(initial=np.inf))
+    if wish is not None and wish > shortest:
+        raise InputError("the step of [simulate] must not be longer than the course holds a value, "
+                         f"{shortest:g} s; found {wish:g} s. Shorten it, or leave it out.")
+    return wish or min(LONGEST_STEP_S, step_for(tanks, layout.peak_m3_h), shortest)
 
 
 def bands_of(basis: Basis) -> Bands:

@@ -207,6 +207,24 @@ def test_a_pair_that_fails_is_named():
     assert "pH and alkalinity came first and cannot be solved" in part_of(chain(row), "What the answer rests on")["known pair"].words
 
 
+def test_a_titrated_alkalinity_beside_the_pair():
+    """pH with carbon: the titration stands, the rest follows from [HCO3-] = C a1 (a1 0.313 at pH 6, 25 °C: pK1 6.352)."""
+    row = STREAM | {"ph": 6.0, "alkalinity_eq_l": 2e-5, "dic_mol_l": 6e-5}
+    step = part_of(chain(row), "What the answer rests on")["alkalinity as titrated"]
+    assert (step.value, step.unit) == ("0.0200", "meq/L")
+    used = float(step.words.split("rest on the ")[1].split()[0])
+    assert_allclose(used, 0.06 / (1.0 + 10.0**0.352) - 0.001, rtol=0, atol=3e-4)  # less the hydrogen ion
+    assert part_of(chain({k: v for k, v in (STREAM | {"dic_mol_l": 1e-3}).items() if k != "alkalinity_eq_l"}),
+                   "What the answer rests on")["alkalinity"].value == "computed"
+
+
+def test_a_rule_without_its_quantity_is_not_judged():
+    """At pH 4.7 no pair buffers within its range: the rule on what is left of it has nothing to judge."""
+    step = rules({"temperature_c": 10.0, "water_kind": "lake", "ph": 4.7, "alkalinity_eq_l": -2e-5})["pair nearly used up"]
+    assert (step.value, step.unit, step.sign) == ("acid until that pair is used up none", "", "")
+    assert "not judged" in step.words
+
+
 def test_open_water_is_in_balance_with_air():
     """Henry's law: CO2 is K0 p of air at 425 ppm less vapor (0.0313 atm at 25 °C), 411.7 µatm; the balance says so."""
     found = chain(STREAM, exchange="open", air_co2_ppm=425.0)
@@ -296,7 +314,7 @@ def rules(row, **options):
 def test_each_rule_broken_or_kept():
     """A lake of 0.1 meq/L: below 0.2 (survey band) and not below 0.05 or 0 (Driscoll et al. 2003)."""
     found = rules({"temperature_c": 10.0, "water_kind": "lake", "ph": 6.8, "alkalinity_eq_l": 1e-4}, draws=100)
-    assert list(found)[0] == "sensitive to acid"
+    assert next(iter(found)) == "sensitive to acid"
     assert [found[n].sign for n in ("sensitive to acid", "may turn acid", "acidic")] == [BROKEN, KEPT, KEPT]
     step = found["sensitive to acid"]
     assert (step.value, step.unit) == ("alkalinity 0.1000", "meq/L")

@@ -69,7 +69,8 @@ def test_aim_of_strong_acid_keeps_its_distance_from_the_ends():
     """Half of the way is at pH 8.65: (10^-5 - 10^-6) / 2 = 4.5e-6 mol/L of hydroxide; a quarter of 3 pH is kept."""
     found = basis_of(job(steady(strong())))
     assert found.half_ph == pytest.approx(14.0 + np.log10(4.5e-6), abs=0.05)
-    assert found.aim_ph == 8.2 and "kept 0.75 pH from both ends" in found.aim_why
+    assert found.aim_ph == 8.2
+    assert "kept 0.75 pH from both ends" in found.aim_why
 
 
 def test_aim_of_a_buffered_waste_is_the_middle_on_the_axis_of_reagent():
@@ -80,7 +81,8 @@ def test_aim_of_a_buffered_waste_is_the_middle_on_the_axis_of_reagent():
     grid = np.linspace(6.0, 9.0, 3001)
     half = grid[np.argmin(np.abs(held(grid) - 0.5 * (held(6.0) + held(9.0))))]
     assert found.half_ph == pytest.approx(half, abs=0.1)  # activities move pK1 by some 0.05
-    assert found.aim_ph == 6.8 and "kept 0.75" in found.aim_why
+    assert found.aim_ph == 6.8
+    assert "kept 0.75" in found.aim_why
 
 
 @pytest.mark.parametrize("window", [(6.92, 6.98), (8.94, 8.98), (6.0, 6.06)])
@@ -95,7 +97,8 @@ def test_aim_that_the_file_sets():
     """By the window, or by the last set point."""
     assert basis_of(job(steady(strong()), aim=7.5)).aim_ph == 7.5
     found = basis_of(job(steady(strong()), wishes={"set_points": (4.0, 7.2)}))
-    assert found.aim_ph == 7.2 and found.aim_why == "as the file sets it"
+    assert found.aim_ph == 7.2
+    assert found.aim_why == "as the file sets it"
 
 
 def test_demand_rows_by_hand():
@@ -166,7 +169,8 @@ def test_missing_reagent_is_left_to_the_equalized_stream():
     """Acid and alkaline batches: acid is asked for before they are mixed, and noted as lacking."""
     found = basis_of(job(batch(strong(-0.2, name="a"), 6.0, 6.0, 0.5), batch(strong(0.05, name="b"), 6.0, 6.0, 0.5, 3.0),
                          reagents={"caustic": CAUSTIC}))
-    assert found.lacking == {"acid": "the file names no acid"} and set(found.needs) == {"base", "acid"}
+    assert found.lacking == {"acid": "the file names no acid"}
+    assert set(found.needs) == {"base", "acid"}
 
 
 def test_samples_of_a_waste_are_told():

@@ -74,6 +74,6 @@ def test_measured_curve_holds_more_than_the_composition():
     """Base held between two pH by a titrated waste is that of its curve, less that of water; carbon of the other waste
     is counted apart."""
     curve = MeasuredCurve("a", np.linspace(0.0, 0.04, 9), np.linspace(3.0, 11.0, 9))
-    chem = chemistry([acetic(curve=curve, base_eq_l=None), bicarbonate()])
+    chem = chemistry([acetic(curve=curve, base_eq_l=None, carbon_mol_l=0.002), bicarbonate()])
     case = treated(chem, load(0.5, 0.5, base=-0.001), CAUSTIC, 0.01, 7.0)
     assert case.held(8.0) - case.held(6.0) == pytest.approx(0.5 * 0.01, rel=1e-3)

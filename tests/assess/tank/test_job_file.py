@@ -40,7 +40,11 @@ def test_time_rule_of_the_default(read):
     window = read().window
     assert (window.total_min, window.each_min) == (446.0, 60.0)
     assert_allclose(window.total_min / (31 * 24 * 60), 0.00999, rtol=1e-3)
-    assert "401.17" in window.source
+    assert "401.17" in window.time_source
+    own = read(changed(("[window]", "[window]\ntotal = \"90 min\"\nsource = \"our permit\""))).window
+    assert (own.source, own.time_source, own.total_min) == ("our permit", "our permit", 90.0)
+    told = read(changed(("[window]", "[window]\nsource = \"our permit\""))).window
+    assert "401.17" in told.time_source  # a permit that names no time rule is not its source
 
 
 def test_every_key_has_its_place(read):
