@@ -49,7 +49,8 @@ def stream(found: Design, record: Record) -> str:
     lines = [f"Together: {shown(s['mean_flow_m3_h'])} m³/h on average, {s['temperature_c']:.1f} °C, base "
              f"{shown(MILLI * s['mean_base_eq_l'])} meq/L, pH {s['mean_ph']:.2f}. Base is strong base less strong "
              "acid, or alkalinity; negative: an acid waste."]
-    return titled("STREAM", aligned(head, rows, left=(0, 1, 5)), bullets([*lines, sentence(f"course: {s['course']}")]))
+    lines += [sentence(f"course: {s['course']}"), *(sentence(w) for k in s["known"] for w in k["words"])]
+    return titled("STREAM", aligned(head, rows, left=(0, 1, 5)), bullets(lines))
 
 
 def _comes(a: Arrival) -> str:

@@ -13,8 +13,8 @@ from aquabuf.assess.tank.trial import CHANGE, FAULT_S, MIN_S
 from aquabuf.report.dose_lines import aligned, block, figure, sentence, titled
 from aquabuf.report.tank_blocks import MILLI, PERCENT, Record, bullets, number, united
 
-__all__ = ["batch", "failures", "sensitivity", "side_effects", "simulation", "spread_words", "storage",
-           "worst_change"]
+__all__ = ["alternatives", "batch", "best_alternative", "failures", "sensitivity", "side_effects", "simulation",
+           "spread_words", "storage", "worst_change"]
 
 LEAST_SHOWN = 0.001
 METAL_WINDOW = " window"  # ends the name of a row that tells where a metal falls out
@@ -84,6 +84,30 @@ def failures(record: Record) -> str:
              f"the strength rises by {PERCENT * (CHANGE - 1.0):.0f} % (practice, no source). Nobody acts meanwhile."]
     lines += [f"{kind}: {words}." for kind, words in dict.fromkeys((f["kind"], f["words"]) for f in s["faults"])]
     return titled("FAILURES", aligned(head, rows, left=(0, 1)), bullets(lines))
+
+
+def alternatives(record: Record) -> str:
+    """Other layouts under the same disturbances."""
+    rows = record["alternatives"]
+    if len(rows) < 2:
+        return ""
+    head = [["layout", "tanks", "equalization", "all tanks", "cases", "keep rule", "95 % interval", "outside"],
+            ["", "", "m³", "m³", "", "%", "%", "median min"]]
+    table = [[a["change"], f"{a['tanks']}", number(a["equalization_m3"]), number(a["volume_m3"]), f"{a['cases']}",
+              f"{PERCENT * a['probability_of_meeting_rule']:.0f}",
+              f"{PERCENT * a['probability_low']:.0f} to {PERCENT * a['probability_high']:.0f}",
+              figure(a["minutes_outside"], 0)] for a in rows]
+    what = "what could be left out" if rows[0]["accepted"] else "what could make it hold"
+    return titled(f"OTHER LAYOUTS under the same disturbances: {what}", aligned(head, table),
+                  bullets(["One thing is changed at a time, with few cases, enough to rank them and not to prove one: "
+                           "put the one that is wanted into [layout] or [site] and run it."]))
+
+
+def best_alternative(record: Record) -> Record | None:
+    """The other layout that keeps the rule most often, the smallest of equals; None where none does better."""
+    rows = record["alternatives"]
+    better = [a for a in rows[1:] if a["probability_of_meeting_rule"] > rows[0]["probability_of_meeting_rule"]]
+    return min(better, key=lambda a: (-a["probability_of_meeting_rule"], a["volume_m3"])) if better else None
 
 
 def side_effects(record: Record) -> str:

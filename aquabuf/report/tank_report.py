@@ -33,7 +33,8 @@ def tank_report(found: Design, record: Record) -> str:
     if not found.stops:  # nothing is to be built else
         blocks += [built.equalization(found, record), built.stages(found, record), built.rules_of_thumb(found, record),
                    built.feeds(record)]
-    blocks += [proof.simulation(found, record), proof.failures(record), proof.side_effects(record)]
+    blocks += [proof.simulation(found, record), proof.alternatives(record), proof.failures(record),
+               proof.side_effects(record)]
     if not found.stops:
         blocks += [proof.storage(record), proof.batch(record)]
     blocks += [proof.sensitivity(record), block("ASSUMPTIONS", record["assumptions"])]
@@ -138,7 +139,7 @@ def next_steps(found: Design, record: Record) -> list[str]:
 
 def _mend(found: Design, record: Record) -> list[str]:
     """What a design that does not hold points to: feeds, side of the excursions, tanks, equalization, sensitivity."""
-    lines = [_side_of(found, record)]
+    lines = [_side_of(found, record), _best(record)]
     for f in record["feed"]:
         if f["holds"] is False:
             needed, has = PERCENT * f["resolution_needed"], PERCENT * f["resolution_has"]
@@ -158,6 +159,17 @@ def _mend(found: Design, record: Record) -> list[str]:
     if record["batch"]["plan"] is not None:
         lines.append("Or treat in batches (see there): nothing leaves before it is measured.")
     return [line for line in lines if line]
+
+
+def _best(record: Record) -> str:
+    """The other layout that did best, and whether that is enough."""
+    best = proof.best_alternative(record)
+    if best is None:
+        return "None of the other layouts tried does better: what the waste or the feed is must change first." \
+            if record["alternatives"] else ""
+    share = f"{PERCENT * best['probability_of_meeting_rule']:.0f} % of {best['cases']} cases"
+    return (f"Of the other layouts tried, {best['change']} does best: {share} keep the rule "
+            f"({'enough; prove it with more cases' if best['accepted'] else 'not enough yet'}).")
 
 
 def _side_of(found: Design, record: Record) -> str:

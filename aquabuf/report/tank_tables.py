@@ -23,7 +23,8 @@ from aquabuf.report.tank_blocks import MILLI, number, tanks_asked
 __all__ = ["TABLES", "curve_log", "rule_rows", "tank_tables"]
 
 TABLES = ("curve.csv", "demand.csv", "reagents.csv", "equalization.csv", "stages.csv", "feed.csv", "simulation.csv",
-          "cases.csv", "faults.csv", "side_effects.csv", "sensitivity.csv", "storage.csv", "rules.csv")
+          "cases.csv", "alternatives.csv", "faults.csv", "side_effects.csv", "sensitivity.csv", "storage.csv",
+          "rules.csv")
 LOG_STEP, LOG_AROUND = 0.25, 1.0  # pH of the printed curve, and how far it runs past waste and window
 FLAT = str | int | float | bool | None
 
@@ -40,6 +41,7 @@ def tank_tables(found: Design, record: Mapping[str, Any]) -> dict[str, pd.DataFr
         "feed.csv": _frame([{**row, "devices": "; ".join(row["devices"])} for row in record["feed"]]),
         "simulation.csv": pd.DataFrame() if trial is None else _course(trial),
         "cases.csv": pd.DataFrame() if trial is None or trial.monte is None else _cases(trial.monte),
+        "alternatives.csv": _frame(record["alternatives"]),
         "faults.csv": _frame([] if simulated is None else simulated["faults"]),
         "side_effects.csv": _frame(record["side_effects"]),
         "sensitivity.csv": _frame(record["sensitivity"]),

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -42,44 +41,59 @@ class Alternative:
     accepted: bool
 
 
-def alternatives_of(basis: Basis, layout: Layout, trial: Trial, *, processes: int = 2) -> tuple[Alternative, ...]:
-    """The layout first, then others that differ in one thing; empty where the trial has no cases."""
+def alternatives_of(basis: Basis, layout: Layout, trial: Trial) -> tuple[Alternative, ...]:
+    """The layout first, then others that differ in one thing; empty where the trial has no cases.
+
+    What could be left out beside a design that holds, what could be added to one that does not.
+    """
     if trial.monte is None:
         return ()
     cases = min(trial.monte.meets.size, MOST_CASES)
     found = [_row("as designed", layout, trial)]
-    for words, change in _changes(basis.job, layout):
-        job = change(basis.job)
+    changes = _smaller(basis.job, layout) if trial.accepted else _larger(basis.job, layout)
+    for words, job in changes:
         try:
             other = replace(basis, job=job)
             made = layout_of(other)
-            tried = trial_of(other, made, cases=cases, processes=processes, with_faults=False)
+            tried = trial_of(other, made, cases=cases, processes=1, with_faults=False)
         except InputError:  # a layout that cannot be made is no alternative
             continue
         found.append(_row(words, made, tried))
     return tuple(found)
 
 
-def _changes(job: Job, layout: Layout) -> list[tuple[str, Callable[[Job], Job]]]:
+def _smaller(job: Job, layout: Layout) -> list[tuple[str, Job]]:
     tanks, eq = len(layout.stages), layout.equalization.volume_m3
-    volumes = tuple(LARGER * s.volume_m3 for s in layout.stages)
-    aims = tuple(s.setpoint_ph for s in layout.stages)
-    usual = USUAL_HOURS * layout.mean_m3_h
-    found: list[tuple[str, Callable[[Job], Job]]] = []
+    found = []
     if tanks > 1:
-        found.append((f"{tanks - 1} tank{'s' if tanks > 2 else ''}", lambda j: _wish(j, stages=tanks - 1)))
-    if tanks < MOST_TANKS:
-        found.append((f"{tanks + 1} tanks", lambda j: _wish(j, stages=tanks + 1)))
-    found.append((f"tanks {brief(LARGER)} times as large", lambda j: _wish(
-        j, stages=tanks, volumes_m3=volumes, set_points=aims)))
+        found.append((f"{tanks - 1} tank{'s' if tanks > 2 else ''}", _wish(job, stages=tanks - 1)))
     if eq > 0.0:
-        found.append(("no equalization", lambda j: _wish(j, equalization_m3=0.0)))
-        found.append((f"equalization {brief(LARGER)} times as large", lambda j: _wish(j, equalization_m3=LARGER * eq)))
-    elif np.isfinite(usual):
-        found.append((f"equalization of {brief(usual)} m³", lambda j: _wish(j, equalization_m3=usual)))
-    found.append((f"feed error of {100.0 * FINER * job.site.feed_error:.2g} %", lambda j: replace(
-        j, site=replace(j.site, feed_error=FINER * j.site.feed_error, resolution=FINER * j.site.resolution))))
+        found.append((f"equalization {brief(1.0 / LARGER)} times as large",
+                      _fixed(job, layout, equalization_m3=eq / LARGER)))
+        found.append(("no equalization", _fixed(job, layout, equalization_m3=0.0)))
     return found
+
+
+def _larger(job: Job, layout: Layout) -> list[tuple[str, Job]]:
+    tanks, eq = len(layout.stages), layout.equalization.volume_m3
+    more_eq = LARGER * eq or USUAL_HOURS * layout.mean_m3_h
+    eq_words = f"equalization of {brief(more_eq)} m³"
+    volumes = tuple(LARGER * s.volume_m3 for s in layout.stages)
+    found = []
+    if tanks < MOST_TANKS:
+        found.append((f"{tanks + 1} tanks", _wish(job, stages=tanks + 1)))
+    found.append((f"tanks {brief(LARGER)} times as large", _fixed(job, layout, volumes_m3=volumes)))
+    found.append((eq_words, _fixed(job, layout, equalization_m3=more_eq)))
+    found.append((f"{eq_words} and tanks {brief(LARGER)} times as large",
+                  _fixed(job, layout, equalization_m3=more_eq, volumes_m3=volumes)))
+    finer = replace(job.site, feed_error=FINER * job.site.feed_error, resolution=FINER * job.site.resolution)
+    found.append((f"feed error of {100.0 * finer.feed_error:.2g} %", replace(_fixed(job, layout), site=finer)))
+    return found
+
+
+def _fixed(job: Job, layout: Layout, **changes: object) -> Job:
+    """The job with the number of tanks and aims of the layout, and other wishes."""
+    return _wish(job, stages=len(layout.stages), set_points=tuple(s.setpoint_ph for s in layout.stages), **changes)
 
 
 def _wish(job: Job, **changes: object) -> Job:

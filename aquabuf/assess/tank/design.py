@@ -122,7 +122,7 @@ def design(job: Job, *, simulate: bool = True, cases: int | None = None, process
     trial = None
     if simulate and not stopped:
         trial = trial_of(basis, layout, cases=job.trial.cases if cases is None else cases, processes=processes)
-    others = () if trial is None else alternatives_of(basis, layout, trial, processes=processes)
+    others = () if trial is None else alternatives_of(basis, layout, trial)
     known = known_of(basis.chem, tuple(a.mean_m3_h or 0.0 for a in job.arrivals))
     stores, held, words = _storage(basis, layout)
     plan, reasons = _batch(basis, layout)

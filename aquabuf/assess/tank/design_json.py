@@ -56,8 +56,8 @@ def _stream(design: Design) -> dict[str, Any]:
     wastes = [{"name": w.name, "base_eq_l": b, "ph": p,
                "known_by": "titration" if w.curve is not None else "composition"}
               for w, b, p in zip(chem.wastes, chem.base_eq_l, chem.ph, strict=True)]
-    return {"wastes": wastes, "known": [_known(k) for k in design.known], "temperature_c": chem.t_c, "mean_flow_m3_h": mean.flow_m3_h,
-            "mean_base_eq_l": mean.base_eq_l,
+    return {"wastes": wastes, "known": [_known(k) for k in design.known], "temperature_c": chem.t_c,
+            "mean_flow_m3_h": mean.flow_m3_h, "mean_base_eq_l": mean.base_eq_l,
             "mean_ph": chem.readout.ph(mean.base_eq_l, mean.amounts), "course": design.basis.course.source}
 
 

@@ -260,8 +260,9 @@ def strength_for(need: FeedNeed, stock_eq_l: float, device_l_h: float, turndown:
                f"{brief(turndown)}: split it over two devices")
         return Strength(low_eq_l=low, high_eq_l=high, chosen_eq_l=np.nan, thinned=np.nan, words=why)
     thinned = stock_eq_l / chosen
+    least = brief(need.least_eq_h / chosen)
     words = (f"{brief(chosen)} eq/L, " + ("as delivered" if thinned <= 1.0 + EDGE else
-             f"thinned {brief(thinned)} times so that the least need, {brief(need.least_eq_h / chosen)} L/h, can be fed"))
+             f"thinned {brief(thinned)} times so that the least need, {least} L/h, can be fed"))
     return Strength(low_eq_l=low, high_eq_l=high, chosen_eq_l=chosen, thinned=thinned, words=words)
 
 

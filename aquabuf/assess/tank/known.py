@@ -83,4 +83,5 @@ def _acidity_words(chem: Chemistry, k: int, waste: Waste, acidity: float, flow_m
     demand = float(chem.demand(END_PH, shares))
     load, taken = float(load_kg_d(flow_m3_h, mg_l)), float(caco3_mg_l_of_eq_l(demand))
     return (f"{waste.name}: acidity by pH and metals {brief(mg_l)} mg/L as CaCO3, {brief(load)} kg/d (Kirby & Cravotta "
-            f"2005); by its chemistry it takes {brief(taken)} mg/L to pH {END_PH:g}. The sum counts iron(III) and aluminum a little high and leaves hydrogen sulfate out")
+            f"2005); by its chemistry it takes {brief(taken)} mg/L to pH {END_PH:g}. The sum counts iron(III) and "
+            "aluminum a little high and leaves hydrogen sulfate out")

@@ -123,7 +123,7 @@ def _buffer(design: Design) -> str:
     fit = design.basis.fit
     alt = (f"Buffer intensity against pH: {shown(float(fit.buffer_eq_l_ph))} eq/L per pH at the aim, pH "
            f"{fit.setpoint_ph:.2f}; steepest in the window at pH {float(fit.steepest_ph):.2f}, "
-           f"{shown(float(fit.steepest_gain_ph_per_eq_l))} pH per eq/L.")
+           f"{brief(float(fit.steepest_gain_ph_per_eq_l))} pH per eq/L.")
     return drawing(_single(lambda ax: plot_buffer(design, ax=ax), top=TOP_SCALE), name="buffering", alt=alt,
                    caption="Buffering and, on the upper scale, process gain. Red dot: aim. Diamond: steepest point in "
                            "the window.")

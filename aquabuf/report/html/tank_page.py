@@ -112,7 +112,8 @@ def _verdict(found: Design, record: Mapping[str, Any], lines: Lines, steps: Sequ
     if word == STOPPED:
         big = next(title_of(title) for title in lines if title.startswith(STOP_BLOCK))
         said = [sentence(found.stops[0]), *said]
-        rules = [f"{e['rule']} ({e['source']})" for e in record["side_effects"] if e["severity"] == STOP and e["rule"]][:1]
+        stops = [e for e in record["side_effects"] if e["severity"] == STOP]
+        rules = [f"{e['rule']} ({e['source']})" for e in stops[:1] if e["rule"]]
     else:
         big = word.capitalize()
         rules = [line.removeprefix(TIME_RULE) for line in told if line.startswith(TIME_RULE)]

@@ -214,7 +214,8 @@ def side_effects_section(record: Record, lines: Lines, files: Files) -> str:
     rows = [[f"{e['severity'].upper()}: {e['name']}", e["reagent"], united(e["value"], _unit(e["unit"])),
              sentence(e["words"]), sentence(e["rule"]) if e["rule"] else "-", e["source"]] for e in grave]
     notes = [[e["name"], e["reagent"], united(e["value"], _unit(e["unit"])),
-              sentence(e["words"]) if e["words"] else "-"] for e in record["side_effects"] if e["severity"] == NOTE and e["value"] is not None]
+              sentence(e["words"]) if e["words"] else "-"]
+             for e in record["side_effects"] if e["severity"] == NOTE and e["value"] is not None]
     return section(title, _table(
         ("Effect", "With", "Value", "What it means", "Rule", "Source"), rows, text=(0, 1), sentences=(3, 4, 5),
         tones=["stop" if e["severity"] == SEVERITIES[-1] else "warn" for e in grave]),
