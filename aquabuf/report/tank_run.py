@@ -1,5 +1,5 @@
-"""Design a neutralization from a stream file and write its results: report, design, tables, figures, and what they rest
-on."""
+"""Design a neutralization from a stream file and write its results: report, page, design, tables, figures, and what they
+rest on."""
 
 from __future__ import annotations
 
@@ -28,7 +28,7 @@ __all__ = ["OUTPUT_FILES", "TankRun", "tank_stream"]
 
 KINDS = ("png", "svg")
 FIGURES = ("design", "simulation")
-OUTPUT_FILES = ("report.txt", "design.json", *TABLES, "run.json",
+OUTPUT_FILES = ("report.txt", "design.json", *TABLES, "report.html", "run.json",
                 *(f"{name}.{kind}" for name in FIGURES for kind in KINDS))
 LIBRARIES = ("numpy", "scipy", "pandas")
 
@@ -66,7 +66,10 @@ def tank_stream(path: Path, folder: Path, *, cases: int | None = None, simulate:
         if figure:
             _draw(found, out)
         files = {name: file.name for name, file in given.items()}
-        _write_json(out, "run.json", _record(found, record, files, hashes, simulate=simulate, cases=cases))
+        run = _record(found, record, files, hashes, simulate=simulate, cases=cases)
+        _write_json(out, "run.json", run)
+        page = _page(found, record, report, run, out.written, figure=figure)
+        out.part("report.html").write_text(page, encoding="utf-8")
         written = [name for name in OUTPUT_FILES if name in out.written]
     listed = item(f"Written to {folder.name}: {', '.join(written)}.", mark="")
     return TankRun(f"{report}\n{listed}\n", failing(found))
@@ -83,6 +86,15 @@ def _draw(found: Design, out: OutputFolder) -> None:
     save_design(found, {kind: out.part(f"design.{kind}") for kind in KINDS})
     if found.trial is not None:
         save_simulation(found, {kind: out.part(f"simulation.{kind}") for kind in KINDS})
+
+
+def _page(found: Design, record: Mapping[str, Any], report: str, run: Mapping[str, Any], written: frozenset[str], *,
+          figure: bool) -> str:
+    from aquabuf.report.html.tank_drawings import tank_drawings  # drawing is slow to import
+    from aquabuf.report.html.tank_page import tank_page
+
+    drawings = tank_drawings(found) if figure else ()
+    return tank_page(found, record, report=report, run=run, written=written, drawings=drawings)
 
 
 def _given(path: Path) -> dict[str, Path]:

@@ -14,6 +14,7 @@ from aquabuf.report.html.document import document
 from aquabuf.report.html.parts import bullets, card, section
 from aquabuf.report.html.tank_sections import (
     Lines,
+    alternatives_section,
     batch_section,
     demand_section,
     equalization_section,
@@ -37,6 +38,9 @@ __all__ = ["tank_page"]
 TONES = {ACCEPTED: "good", REFUSED: "warn", UNPROVEN: "note", STOPPED: "stop"}
 TIME_RULE, ASKED, ASIDE = "Time rule: ", "A design is accepted where ", "It is a verdict on pH."  # of its items
 STOP_BLOCK = "STOP: "
+PLACED = ("VERDICT", STOP_BLOCK, "WHAT TO DO NEXT", "STREAM", "REAGENT DEMAND", "REAGENTS COMPARED", "WINDOW",
+          "SIMULATION", "OTHER LAYOUTS", "FAILURES", "SIDE EFFECTS", "NUMBER OF TANKS", "EQUALIZATION", "TANKS",
+          "FEEDS", "STORAGE", "BATCH", "SENSITIVITY", "WARNINGS", "ASSUMPTIONS", "CAUTIONS")  # blocks with a place
 ITEM, MORE = re.compile(r"  - (?=\S)"), re.compile(r"    (?=\S)")  # first line of an item of the report, and the others
 OPTIONS = {"step_s": "step of the simulation [s]", "days": "days simulated"}
 
@@ -58,11 +62,13 @@ def tank_page(found: Design, record: Mapping[str, Any], *, report: str, run: Map
         stream_section(found, record, lines),
         demand_section(found, record, lines, files), reagents_section(found, record, lines, files),
         *_told(lines, "WINDOW"),
-        simulation_section(record, lines, files), failures_section(record, lines, files),
+        simulation_section(record, lines, files), alternatives_section(record, lines, files),
+        failures_section(record, lines, files),
         side_effects_section(record, lines, files), rules_section(record, lines, files),
         equalization_section(record, lines, files), tanks_section(record, lines, files),
         feeds_section(record, lines, files), storage_section(lines, files), batch_section(lines),
         sensitivity_section(record, lines, files),
+        *(part for title in lines if not title.startswith(PLACED) for part in _told(lines, title)),
         section("Figures", *drawings, name="figures"),
         *_told(lines, "WARNINGS"), *_told(lines, "ASSUMPTIONS"), *_told(lines, "CAUTIONS"),
         file_part("tank", files),
@@ -78,9 +84,9 @@ def _subtitle(found: Design) -> str:
 
 
 def _lines(report: str) -> Lines:
-    """Items of each block of the report by its title, put together again; its tables are made anew for the page."""
+    """Items of each block of the report behind its head by title, put together again; tables are made anew."""
     out: dict[str, list[str]] = {}
-    for part in report.split("\n\n"):
+    for part in report.split("\n\n")[1:]:
         title, *rest = part.strip("\n").split("\n")
         items = out.setdefault(title, [])
         open_item = False

@@ -14,9 +14,10 @@ from aquabuf.report.tank_blocks import MILLI, PERCENT, SAME_M3, W_PER_KW, number
 from aquabuf.report.tank_proof import QUANTILES
 from aquabuf.report.tank_scheme import feed_words
 
-__all__ = ["Lines", "batch_section", "demand_section", "equalization_section", "failures_section", "feeds_section",
-           "reagents_section", "rules_section", "sensitivity_section", "side_effects_section", "simulation_section",
-           "storage_section", "stream_section", "tanks_section", "title_of", "train_section"]
+__all__ = ["Lines", "alternatives_section", "batch_section", "demand_section", "equalization_section",
+           "failures_section", "feeds_section", "reagents_section", "rules_section", "sensitivity_section",
+           "side_effects_section", "simulation_section", "storage_section", "stream_section", "tanks_section",
+           "title_of", "train_section"]
 
 Lines = Mapping[str, Sequence[str]]  # items of each block of the report by its title
 Record = Mapping[str, Any]
@@ -190,6 +191,19 @@ def simulation_section(record: Record, lines: Lines, files: Files) -> str:
                    details("Controllers and their tuning", bullets(how), tuned),
                    _beside("The course shown:", "simulation.csv", files), _beside("Each case:", "cases.csv", files),
                    name="simulation")
+
+
+def alternatives_section(record: Record, lines: Lines, files: Files) -> str:
+    """Other layouts under the same disturbances."""
+    title, items = _block(lines, "OTHER LAYOUTS")
+    others = record["alternatives"]
+    rows = [[a["change"], f"{a['tanks']}", number(a["equalization_m3"]), number(a["volume_m3"]), f"{a['cases']}",
+             f"{PERCENT * a['probability_of_meeting_rule']:.0f} ({PERCENT * a['probability_low']:.0f} to "
+             f"{PERCENT * a['probability_high']:.0f})", figure(a["minutes_outside"], 0)] for a in others]
+    return section(title, _table(
+        ("Layout", "Tanks", "Equalization (m³)", "All tanks (m³)", "Cases", "Keep the rule (%, 95 % interval)",
+         "Outside (median min)"), rows, tones=["" if a["accepted"] else "warn" for a in others]),
+        bullets(items), _beside("Every column:", "alternatives.csv", files), name="alternatives") if items else ""
 
 
 def failures_section(record: Record, lines: Lines, files: Files) -> str:
