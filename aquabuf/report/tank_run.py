@@ -1,5 +1,5 @@
-"""Design a neutralization from a stream file and write its results: report, page, design, tables, figures, and what they
-rest on."""
+"""Design a neutralization from a stream file and write its results: report, page, design, tables, figures, and what
+they rest on."""
 
 from __future__ import annotations
 

@@ -19,7 +19,7 @@ from aquabuf.report import tank_run
 from aquabuf.report.tank_run import tank_stream
 
 ALWAYS = {"report.txt", "design.json", "curve.csv", "demand.csv", "reagents.csv", "stages.csv", "feed.csv",
-          "side_effects.csv", "sensitivity.csv", "storage.csv", "rules.csv", "run.json"}
+          "side_effects.csv", "sensitivity.csv", "storage.csv", "rules.csv", "run.json", "report.html"}
 SIMULATED = ALWAYS | {"simulation.csv", "faults.csv"}
 TEXTS = {"holds": HOLDS, "breaks": BREAKS, "minimal": MINIMAL, "cyanide": CYANIDE, "titrated": TITRATED}
 FILES = {"holds": SIMULATED | {"cases.csv", "equalization.csv"}, "breaks": SIMULATED | {"cases.csv"}, "minimal": SIMULATED,

@@ -25,11 +25,12 @@ FAULTS = {
 
 @dataclass(frozen=True, slots=True)
 class Fault:
-    """A failure of one tank: what, from when, how long. [s]"""
+    """A failure of one tank: what, from when, how long [s], and in which case (None: in all)."""
 
     kind: str
     start_s: float
     length_s: float = math.inf
+    case: int | None = None
 
     def __post_init__(self) -> None:
         if self.kind not in FAULTS:
@@ -40,19 +41,24 @@ class Fault:
 
 
 class FaultMasks:
-    """Which faults are on at a moment, per stage; `stuck` (S, 1), `full` and `out` (2, S, 1) with base first."""
+    """Which faults are on at a moment; `stuck` (S, N), `full` and `out` (2, S, N) with base first, `buffer_lost` (N,).
 
-    def __init__(self, faults: Sequence[Sequence[Fault]]):
+    N : number of cases, 1 where no fault is of one case alone.
+    """
+
+    def __init__(self, faults: Sequence[Sequence[Fault]], cases: int):
         self._faults = [(s, f) for s, some in enumerate(faults) for f in some]
         for s, f in self._faults:
             if f.kind == "buffer lost" and s > 0:
                 raise InputError(f"the fault 'buffer lost' belongs to the inflow of the first tank; found it at tank "
                                  f"{s + 1}. Move it to the first.")
-        n = len(faults)
-        self.stuck: NDArray[np.bool_] = np.zeros((n, 1), dtype=bool)
-        self.full: NDArray[np.bool_] = np.zeros((2, n, 1), dtype=bool)
-        self.out: NDArray[np.bool_] = np.zeros((2, n, 1), dtype=bool)
-        self.is_buffer_lost = False
+            if f.case is not None and not 0 <= f.case < cases:
+                raise InputError(f"a fault of one case needs a case from 0 to {cases - 1}; found {f.case}. Correct it.")
+        n, wide = len(faults), cases if any(f.case is not None for _, f in self._faults) else 1
+        self.stuck: NDArray[np.bool_] = np.zeros((n, wide), dtype=bool)
+        self.full: NDArray[np.bool_] = np.zeros((2, n, wide), dtype=bool)
+        self.out: NDArray[np.bool_] = np.zeros((2, n, wide), dtype=bool)
+        self.buffer_lost: NDArray[np.bool_] = np.zeros(wide, dtype=bool)
 
     @property
     def edges_s(self) -> list[float]:
@@ -61,14 +67,15 @@ class FaultMasks:
 
     def set(self, time_s: float) -> None:
         """Set the masks to a moment."""
-        self.stuck[:], self.full[:], self.out[:], self.is_buffer_lost = False, False, False, False
+        self.stuck[:], self.full[:], self.out[:], self.buffer_lost[:] = False, False, False, False
         for s, f in self._faults:
             if not f.start_s <= time_s < f.start_s + f.length_s:
                 continue
+            case = slice(None) if f.case is None else f.case
             if f.kind == "probe stuck":
-                self.stuck[s] = True
+                self.stuck[s, case] = True
             elif f.kind == "buffer lost":
-                self.is_buffer_lost = True
+                self.buffer_lost[case] = True
             else:
                 side = 0 if f.kind.startswith("base") else 1
-                (self.full if f.kind.endswith("full on") else self.out)[side, s] = True
+                (self.full if f.kind.endswith("full on") else self.out)[side, s, case] = True

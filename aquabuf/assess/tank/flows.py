@@ -10,6 +10,7 @@ Arrays are stages first, then base and carriers as rows, then cases. Base in kil
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 
@@ -17,7 +18,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from aquabuf.assess.tank.equipment import Feeder, Tank
-from aquabuf.engine.readout import Readout
+from aquabuf.engine.readout import GRID_PH, Readout
 
 __all__ = ["Flows", "Pool", "pools_of"]
 
@@ -72,6 +73,7 @@ class Flows:
         self._most = [t.volume_m3 for t in tanks]
         self._least = [t.least_m3 or t.volume_m3 for t in tanks]
         self._draw = [t.out_m3_h or 0.0 for t in tanks]
+        self._at_ceiling = {p: _ceiling(readout, p.feeder.ceiling_ph) for p in pools if p.feeder.ceiling_ph is not None}
         feeders = [[t.feeders[side] for t in tanks] for side in (0, 1)]
         self._water = _each(feeders, lambda f: 1e-3 / f.normality_eq_l)
         direct = _each(feeders, lambda f: 1e-3 * float(f.dissolution_per_min is None))
@@ -182,13 +184,13 @@ class Flows:
         v0, v1, through, decay, u0 = self.volume[s], self._new_volume[s], self._through[s], self._decay[s], self.u[p, s]
         into = 1e-3 * fed_eq_h[pool.side, s] if pool.stage == s else self.out_pools[p].copy()
         middle, k = 0.5 * (v0 + v1), pool.per_h
-        target = into / (through + k * middle)
-        u1 = target + (u0 - target) * decay * np.exp(-k * self._dt)
+        rate = k * middle
+        target = into / (through + rate)
+        u1 = target + (u0 - target) * (decay * math.exp(-k * self._dt))
         gone = into - (v1 * u1 - v0 * u0) / self._dt  # dissolved and carried off
-        dissolved = gone * (k * middle / (self._out_flow[s] + k * middle))
-        room = self._room(pool, s)
-        is_full = dissolved > room
-        if is_full.any():
+        dissolved = gone * (rate / (self._out_flow[s] + rate))
+        room = self._room(pool, s, dissolved)
+        if room is not None and (is_full := dissolved > room).any():
             dissolved = np.where(is_full, room, dissolved)
             target = (into - dissolved) / through
             u1 = np.where(is_full, target + (u0 - target) * decay, u1)
@@ -198,14 +200,28 @@ class Flows:
         if self._carbon is not None:
             self._rate[1 + self._carbon] += pool.feeder.carbon_mol_eq * dissolved
 
-    def _room(self, pool: Pool, s: int) -> Array:
-        """Rate of dissolution that brings a tank to the ceiling by the end of the step. [keq/h]"""
+    def _room(self, pool: Pool, s: int, wanted: Array) -> Array | None:
+        """Rate of dissolution that brings a tank to the ceiling by the end of the step [keq/h]; None where there is
+        surely more than is wanted.
+
+        Metals only hold base: what a base has room for without them is no more than it has.
+        """
         if pool.feeder.ceiling_ph is None or pool.sign == 0.0:
-            return np.full(self.volume.shape[1], np.inf)
-        end = self._change
-        lift = (self._readout.base_at(pool.feeder.ceiling_ph, end[1:]) - end[0]) / pool.sign
+            return None
+        end, (water, held) = self._change, self._at_ceiling[pool]
         stays = np.maximum(1.0 - self._decay[s], STANDING)  # a steady rate lifts contents by stays / through
+        if pool.sign > 0.0:
+            lift = water + held @ end[1:] - end[0]
+            if (pool.sign * wanted * stays <= lift * self._through[s]).all():
+                return None
+        lift = (self._readout.base_at(pool.feeder.ceiling_ph, end[1:]) - end[0]) / pool.sign
         return np.maximum(lift, 0.0) * np.where(stays > STANDING, self._through[s] / stays, self.volume[s] / self._dt)
+
+
+def _ceiling(readout: Readout, ph: float) -> tuple[float, Array]:
+    """Base of the water and of one unit of each carrier at a pH, without metals."""
+    held = np.array([np.interp(ph, GRID_PH, table) for table in readout.held])
+    return float(readout.c_oh * 10.0**ph - readout.c_h * 10.0**-ph), held
 
 
 def _each(feeders: Sequence[Sequence[Feeder | None]], of: object) -> Array:

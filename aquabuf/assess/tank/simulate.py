@@ -146,7 +146,7 @@ class _Run:
         lines = [[round((0.0 if f is None else f.line_dead_s) / dt_s) for f in side] for side in feeders]
         feed = np.maximum(np.stack([start.feed_eq_h, -start.feed_eq_h]), 0.0)
         self._line = Delay(np.ravel(lines).astype(np.intp), feed.reshape(2 * s, n))
-        self._masks = FaultMasks([t.faults for t in tanks])
+        self._masks = FaultMasks([t.faults for t in tanks], n)
         self._events = self._event_steps()
         self._delivered, self.fed, self.fed_sum = feed, feed, np.zeros((2, s, n))
         self.out_sum, self.pools_out_sum = np.zeros((1 + readout.carriers, n)), np.zeros((len(pools), n))
@@ -189,7 +189,7 @@ class _Run:
         self._any_pump = bool(self._masks.full.any() or self._masks.out.any())
         i = int(np.searchsorted(self._inflow.time_s, time_s, side="right")) - 1
         self._flow = self._inflow.flow_m3_h[i]
-        amounts = self._inflow.amounts[:, i] * (0.0 if self._masks.is_buffer_lost else 1.0)
+        amounts = self._inflow.amounts[:, i] * ~self._masks.buffer_lost
         self._in_rate = self._flow * np.concatenate([self._inflow.base_eq_l[i][None], amounts])
 
     def _close(self, k: int) -> None:

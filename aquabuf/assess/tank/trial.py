@@ -240,31 +240,34 @@ def _faults_for(layout: Layout) -> list[tuple[int, str]]:
 
 
 def _fault_runs(basis: Basis, layout: Layout, tunings: Sequence[Tuning], step_s: float) -> tuple[FaultRun, ...]:
+    """Each failure as a case of one simulation."""
     job, window = basis.job, (basis.job.window.low, basis.job.window.high)
     begin = step_s * np.ceil(BEFORE_S / step_s)
+    kinds = _faults_for(layout)
+    faults = [tuple(Fault(kind, begin, FAULT_S, case) for case, (k, kind) in enumerate(kinds) if k == i)
+              for i in range(len(layout.stages))]
+    done = simulate(basis.chem.readout, tanks_of(basis, layout, tunings, faults),
+                    _fault_inflow(layout, [kind for _, kind in kinds], begin), until_s=begin + FAULT_S + AFTER_S,
+                    window=window, dt_s=step_s, seed=job.trial.seed, carbon_carrier=basis.chem.carbon_carrier,
+                    record_every_s=step_s)
     runs = []
-    for k, kind in _faults_for(layout):
-        faults = [(Fault(kind, begin, FAULT_S),) if i == k else () for i in range(len(layout.stages))]
-        tanks = tanks_of(basis, layout, tunings, faults)
-        done = simulate(basis.chem.readout, tanks, _fault_inflow(layout, kind, begin),
-                        until_s=begin + FAULT_S + AFTER_S, window=window, dt_s=step_s, seed=job.trial.seed,
-                        carbon_carrier=basis.chem.carbon_carrier, record_every_s=step_s)
-        ph = done.ph[-1, :, 0]
+    for case, (k, kind) in enumerate(kinds):
+        ph = done.ph[-1, :, case]
         left = done.time_s[((ph < window[0]) | (ph > window[1])) & (done.time_s > begin)]
         runs.append(FaultRun(
-            tank=layout.stages[k].name, kind=kind, words=FAULTS[kind], lowest_ph=float(done.lowest_ph[0]),
+            tank=layout.stages[k].name, kind=kind, words=FAULTS[kind], lowest_ph=float(done.lowest_ph[case]),
             minutes_to_leave=float((left[0] - begin) / MIN_S) if left.size else np.nan,
-            minutes_outside=float(done.outside_min[0]), highest_ph=float(done.highest_ph[0])))
+            minutes_outside=float(done.outside_min[case]), highest_ph=float(done.highest_ph[case])))
     return tuple(runs)
 
 
-def _fault_inflow(layout: Layout, kind: str, begin_s: float) -> Inflow:
+def _fault_inflow(layout: Layout, kinds: Sequence[str], begin_s: float) -> Inflow:
     """The mean of what asks for the reagent that fails, else for the main one; stronger once a probe is stuck.
 
     A probe that stays where it is does harm only when the stream changes.
     """
-    asks = kind.split(" ")[0] if kind.endswith("out") else ""
-    needs = layout.needs.values()
-    load = layout.needs.get(asks, max(needs, key=lambda need: need.mean_eq_h)).loads[1]
-    factor = np.array([1.0, CHANGE if kind == "probe stuck" else 1.0])
-    return Inflow([0.0, begin_s], np.full(2, layout.mean_m3_h), factor * load.base_eq_l, np.outer(load.amounts, factor))
+    main = max(layout.needs.values(), key=lambda need: need.mean_eq_h)
+    loads = [layout.needs.get(kind.split(" ")[0] if kind.endswith("out") else "", main).loads[1] for kind in kinds]
+    factor = np.array([[1.0] * len(kinds), [CHANGE if kind == "probe stuck" else 1.0 for kind in kinds]])
+    return Inflow([0.0, begin_s], np.full(2, layout.mean_m3_h), factor * np.array([load.base_eq_l for load in loads]),
+                  np.stack([load.amounts for load in loads], axis=1)[:, None] * factor)

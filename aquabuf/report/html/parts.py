@@ -153,7 +153,7 @@ def drawing(svg: str, *, name: str, alt: str, caption: str = "") -> str:
     box = _BOX.search(opening.group()) if opening else None
     if opening is None or box is None:
         raise InputError("a drawing must be an SVG text with a viewBox; found none. Save the figure as SVG.")
-    inner = _METADATA.sub("", svg[opening.end():])
+    inner = _CONTROLS.sub("\N{REPLACEMENT CHARACTER}", _METADATA.sub("", svg[opening.end():]))
     ids = set(_ID.findall(inner))
     inner = _NAMED.sub(lambda m: f"{m[1]}{name}-{m[2]}" if m[2] in ids else m[0], inner)
     inner = inner.replace("xlink:href", "href")
