@@ -9,7 +9,7 @@ import pytest
 
 sys.path.insert(0, str(Path(__file__).parents[1] / "report"))
 
-from made_streams import BREAKS, CURVE, CYANIDE, HOLDS, MINIMAL, PH_ALONE, PROFILE, TITRATED
+from stream_files import BREAKS, CURVE, CYANIDE, HOLDS, MINIMAL, PH_ALONE, PROFILE, TITRATED
 
 
 @pytest.fixture

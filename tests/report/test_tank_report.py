@@ -11,7 +11,7 @@ import pytest
 
 sys.path.insert(0, str(Path(__file__).parent))
 
-from made_streams import BREAKS, CYANIDE, HOLDS, MINIMAL, TITRATED, write_stream
+from stream_files import BREAKS, CYANIDE, HOLDS, MINIMAL, TITRATED, write_stream
 
 from aquabuf.assess.tank.design import design
 from aquabuf.assess.tank.design_json import design_record

@@ -11,7 +11,7 @@ import pytest
 
 sys.path.insert(0, str(Path(__file__).parent))
 
-from made_streams import BREAKS, CYANIDE, HOLDS, MINIMAL, PH_ALONE, TITRATED, write_stream
+from stream_files import BREAKS, CYANIDE, HOLDS, MINIMAL, PH_ALONE, TITRATED, write_stream
 
 import aquabuf
 from aquabuf.errors import FileError, InputError

@@ -12,7 +12,7 @@ import pytest
 
 sys.path.insert(0, str(Path(__file__).parents[1]))
 
-from made_streams import BREAKS, CYANIDE, HOLDS, MINIMAL, TITRATED, write_stream
+from stream_files import BREAKS, CYANIDE, HOLDS, MINIMAL, TITRATED, write_stream
 
 from aquabuf.report.html.parts import TONES
 from aquabuf.report.html.tank_page import tank_page
