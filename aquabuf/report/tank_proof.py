@@ -91,7 +91,7 @@ def alternatives(record: Record) -> str:
     rows = record["alternatives"]
     if len(rows) < 2:
         return ""
-    head = [["layout", "tanks", "equalization", "all tanks", "cases", "keep rule", "95 % interval", "outside"],
+    head = [["layout", "tanks", "ahead", "all", "cases", "keep rule", "95 % interval", "outside"],
             ["", "", "m³", "m³", "", "%", "%", "median min"]]
     table = [[a["change"], f"{a['tanks']}", number(a["equalization_m3"]), number(a["volume_m3"]), f"{a['cases']}",
               f"{PERCENT * a['probability_of_meeting_rule']:.0f}",
@@ -99,8 +99,9 @@ def alternatives(record: Record) -> str:
               figure(a["minutes_outside"], 0)] for a in rows]
     what = "what could be left out" if rows[0]["accepted"] else "what could make it hold"
     return titled(f"OTHER LAYOUTS under the same disturbances: {what}", aligned(head, table),
-                  bullets(["One thing is changed at a time, with few cases, enough to rank them and not to prove one: "
-                           "put the one that is wanted into [layout] or [site] and run it."]))
+                  bullets(["Ahead: equalization; all: with the tanks. One thing is changed at a time, with few cases, "
+                           "enough to rank them and not to prove one: put the one that is wanted into [layout] or [site] "
+                           "and run it."]))
 
 
 def best_alternative(record: Record) -> Record | None:

@@ -68,8 +68,7 @@ def _smaller(job: Job, layout: Layout) -> list[tuple[str, Job]]:
     if tanks > 1:
         found.append((f"{tanks - 1} tank{'s' if tanks > 2 else ''}", _wish(job, stages=tanks - 1)))
     if eq > 0.0:
-        found.append((f"equalization {brief(1.0 / LARGER)} times as large",
-                      _fixed(job, layout, equalization_m3=eq / LARGER)))
+        found.append((f"equalization {brief(eq / LARGER)} m³", _fixed(job, layout, equalization_m3=eq / LARGER)))
         found.append(("no equalization", _fixed(job, layout, equalization_m3=0.0)))
     return found
 
@@ -77,17 +76,17 @@ def _smaller(job: Job, layout: Layout) -> list[tuple[str, Job]]:
 def _larger(job: Job, layout: Layout) -> list[tuple[str, Job]]:
     tanks, eq = len(layout.stages), layout.equalization.volume_m3
     more_eq = LARGER * eq or USUAL_HOURS * layout.mean_m3_h
-    eq_words = f"equalization of {brief(more_eq)} m³"
+    eq_words = f"equalization {brief(more_eq)} m³"
     volumes = tuple(LARGER * s.volume_m3 for s in layout.stages)
     found = []
     if tanks < MOST_TANKS:
         found.append((f"{tanks + 1} tanks", _wish(job, stages=tanks + 1)))
-    found.append((f"tanks {brief(LARGER)} times as large", _fixed(job, layout, volumes_m3=volumes)))
+    larger = f"tanks {brief(LARGER)} times larger"
+    found.append((larger, _fixed(job, layout, volumes_m3=volumes)))
     found.append((eq_words, _fixed(job, layout, equalization_m3=more_eq)))
-    found.append((f"{eq_words} and tanks {brief(LARGER)} times as large",
-                  _fixed(job, layout, equalization_m3=more_eq, volumes_m3=volumes)))
+    found.append((f"{eq_words}, {larger}", _fixed(job, layout, equalization_m3=more_eq, volumes_m3=volumes)))
     finer = replace(job.site, feed_error=FINER * job.site.feed_error, resolution=FINER * job.site.resolution)
-    found.append((f"feed error of {100.0 * finer.feed_error:.2g} %", replace(_fixed(job, layout), site=finer)))
+    found.append((f"feed error {100.0 * finer.feed_error:.2g} %", replace(_fixed(job, layout), site=finer)))
     return found
 
 
