@@ -100,8 +100,8 @@ def alternatives(record: Record) -> str:
     what = "what could be left out" if rows[0]["accepted"] else "what could make it hold"
     return titled(f"OTHER LAYOUTS under the same disturbances: {what}", aligned(head, table),
                   bullets(["Ahead: equalization; all: with the tanks. One thing is changed at a time, with few cases, "
-                           "enough to rank them and not to prove one: put the one that is wanted into [layout] or [site] "
-                           "and run it."]))
+                           "enough to rank them and not to prove one: put the one that is wanted into [layout] or "
+                           "[site] and run it."]))
 
 
 def best_alternative(record: Record) -> Record | None:
