@@ -258,8 +258,8 @@ def test_a_sample_missing_from_the_results(run, tmp_path):
     ("[]", r"out/run\.json must have command, files, options, sha256; it lacks command"),
     ('{"command": "assess", "sha256": {}, "options": {}}', r"it lacks files\. It is of another version: run the assessment again with --force\."),
     ('{"command": "assess", "sha256": {}, "options": {}, "files": {}}', r"must name each file with its hash; it does not\."),
-    ('{"command": "lake", "sha256": {}, "options": {}, "files": {}}', r"out holds results of `aquabuf lake`; only samples of `aquabuf assess` can be explained\."),
-], ids=["none", "broken", "list", "old", "empty", "lake"])
+    ('{"command": "dose", "sha256": {}, "options": {}, "files": {}}', r"out holds results of `aquabuf dose`; only samples of `aquabuf assess`.* can be explained\."),
+], ids=["none", "broken", "list", "old", "empty", "dose"])
 def test_records_that_cannot_be_used(tmp_path, text, words):
     """Each says what is wrong and what to do."""
     (tmp_path / "out").mkdir()

@@ -22,7 +22,8 @@ ALWAYS = {"report.txt", "design.json", "curve.csv", "demand.csv", "reagents.csv"
           "side_effects.csv", "sensitivity.csv", "storage.csv", "rules.csv", "run.json", "report.html"}
 SIMULATED = ALWAYS | {"simulation.csv", "faults.csv"}
 TEXTS = {"holds": HOLDS, "breaks": BREAKS, "minimal": MINIMAL, "cyanide": CYANIDE, "titrated": TITRATED}
-FILES = {"holds": SIMULATED | {"cases.csv", "equalization.csv"}, "breaks": SIMULATED | {"cases.csv"}, "minimal": SIMULATED,
+CASES = SIMULATED | {"cases.csv", "alternatives.csv"}
+FILES = {"holds": CASES | {"equalization.csv"}, "breaks": CASES, "minimal": SIMULATED,
          "cyanide": ALWAYS, "titrated": SIMULATED | {"equalization.csv"}}
 
 NUMBER, TEXT, FLAG, TABLE, LIST, NONE = (int, float), str, bool, dict, list, type(None)

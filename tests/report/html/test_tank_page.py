@@ -16,6 +16,7 @@ from stream_files import BREAKS, CYANIDE, HOLDS, MINIMAL, TITRATED, write_stream
 
 from aquabuf.report.html.parts import TONES
 from aquabuf.report.html.tank_page import tank_page
+from aquabuf.report.html.tank_sections import failures_section
 from aquabuf.report.tank_run import OUTPUT_FILES, tank_stream
 from aquabuf.tables import read_table
 
@@ -234,14 +235,14 @@ def test_worst_first(folder):
     """The failure that leaves soonest, the change that takes most of the tolerance, the gravest side effect."""
     place = folder("breaks")
     reader, record = read(page_of(place)), design_of(place)
-    minutes = [r["Leaves the window after (min)"] for r in reader.table("Tank", "Failure")]
-    known = [float(m) for m in minutes if m != "stays in"]
-    assert len(known) > 1
-    assert known == sorted(known)
-    assert minutes[len(known):] == ["stays in"] * (len(minutes) - len(known))
+    faults = [f | {"minutes_to_leave": m} for f, m in zip(record["simulation"]["faults"], (9.0, None, 2.0), strict=False)]
+    section = failures_section({"simulation": {"faults": faults}}, {"FAILURES": ["Each lasts an hour."]}, frozenset())
+    assert [r["Leaves the window after (min)"] for r in read(section).table("Tank", "Failure")] == ["2", "9", "stays in"]
     first = min((r for r in record["sensitivity"] if r["tolerance_ratio"] is not None), key=lambda r: r["tolerance_ratio"])
     assert reader.table("One change")[0]["One change"] == first["change"]
-    assert read(page_of(folder("cyanide"))).table("Effect", "With")[0]["Effect"].startswith("STOP: cyanide")
+    gravest = read(page_of(folder("cyanide"))).table("Effect", "With")[0]
+    assert gravest["Effect"].startswith("STOP: cyanide")
+    assert gravest["Rule"].startswith("Stop from 0.2 mg/L")
 
 
 def test_rules_of_thumb_stand_beside_the_simulated_answer(folder):
