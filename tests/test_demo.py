@@ -367,8 +367,12 @@ def test_surface_takes_up_carbon_and_depth_gives_it_back(results):
 # ---------------------------------------------------------------- the walk-through
 
 
+REFUSED = "tank field_data/stream_regeneration.toml --out regeneration"  # the walk-through shows a design that fails
+QUICK = {"titration": ["--figures", "0"], "tank": ["--no-figure", "--cases", "0"]}
+
+
 def test_commands_of_the_walk_through_run(tmp_path, monkeypatch):
-    """Every command of docs/first_hour.md ends well; its output goes elsewhere."""
+    """Every command of docs/first_hour.md ends as the page says; its output goes elsewhere."""
     text = (ROOT / "docs" / "first_hour.md").read_text(encoding="utf-8")
     commands = re.findall(r"^    aquabuf (.+)$", text, flags=re.MULTILINE)
     assert len(commands) >= 11
@@ -377,7 +381,6 @@ def test_commands_of_the_walk_through_run(tmp_path, monkeypatch):
         words = command.split(" > ")[0].split()
         if "--out" in words:
             at = words.index("--out") + 1
-            quick = ["--figures", "0"] if words[0] == "titration" else ["--no-figure", "--draws", "0"]
-            words[at:at + 1] = [str(tmp_path / words[at]), *quick]
+            words[at:at + 1] = [str(tmp_path / words[at]), *QUICK.get(words[0], ["--no-figure", "--draws", "0"])]
         done = CliRunner().invoke(main, words)
-        assert done.exit_code == 0, f"{command}: {done.output or done.exception}"
+        assert done.exit_code == int(command == REFUSED), f"{command}: {done.output or done.exception}"

@@ -4,16 +4,20 @@ from __future__ import annotations
 
 import click
 
+from aquabuf.cli.command import Command, option
 from aquabuf.errors import InputError
 
 __all__ = ["columns"]
 
 
-@click.command()
+@click.command(cls=Command, examples=(
+    "aquabuf columns alkalinity_eq_l", "aquabuf columns --results --titration"))
 @click.argument("names", nargs=-1)
-@click.option("--results", is_flag=True, help="Show the columns of the results instead.")
-@click.option("--titration", is_flag=True, help="Show the columns of titrations (with --results: of alkalinity.csv).")
-@click.option("--lake", is_flag=True, help="With --results: those of `aquabuf lake`, which reads the same readings.")
+@option("Which columns", "--results", is_flag=True, help="Show the columns of the results instead.")
+@option("Which columns", "--titration", is_flag=True,
+        help="Show the columns of titrations (with --results: of alkalinity.csv).")
+@option("Which columns", "--lake", is_flag=True,
+        help="With --results: those of `aquabuf lake`, which reads the same readings.")
 def columns(names: tuple[str, ...], results: bool, titration: bool, lake: bool) -> None:
     """Print the columns that a table of readings may have; name some to see their units, headers and ranges."""
     if lake and titration:

@@ -3,11 +3,12 @@
 from __future__ import annotations
 
 from pathlib import Path
-from typing import Any
 
 import click
 
+from aquabuf.cli.command import Command, option
 from aquabuf.cli.default import DefaultGroup
+from aquabuf.cli.screen import Screen, screen_options
 from aquabuf.errors import InputError
 
 __all__ = ["dose"]
@@ -15,15 +16,7 @@ __all__ = ["dose"]
 MOST_DRAWS = 100_000
 
 
-class _PlanGroup(DefaultGroup):
-    """Runs a plan when no command is named."""
-
-    def format_usage(self, ctx: click.Context, formatter: Any) -> None:
-        """Show both ways of calling."""
-        formatter.write_usage(ctx.command_path, "PLAN.toml --out FOLDER [OPTIONS] | COMMAND [ARGS]...")
-
-
-@click.group(cls=_PlanGroup, invoke_without_command=False)
+@click.group(cls=DefaultGroup, file_word="PLAN.toml", invoke_without_command=False)
 def dose() -> None:
     """Doses, feeder settings and the water after every step, from a plan of the works.
 
@@ -32,15 +25,18 @@ def dose() -> None:
     """
 
 
-@dose.command("run")
+@dose.command("run", cls=Command, examples=(
+    "aquabuf dose field_data/plan_upland.toml --out upland",
+    "aquabuf dose field_data/plan_river.toml --draws 0 --no-figure --json --out river"))
 @click.argument("plan", type=click.Path(path_type=Path))
-@click.option("--out", "folder", type=click.Path(path_type=Path), required=True, help="Folder for the results.")
-@click.option("--draws", type=click.IntRange(0, MOST_DRAWS),
-              help="Random draws behind what errors of readings and feeds do; 0 leaves that out.  [default: of the "
+@option("Results", "--out", "folder", type=click.Path(path_type=Path), required=True, help="Folder for the results.")
+@option("Intervals", "--draws", type=click.IntRange(0, MOST_DRAWS),
+        help="Random draws behind what errors of readings and feeds do; 0 leaves that out.  [default: of the "
                    "plan, else 500]")
-@click.option("--figure/--no-figure", default=True, help="Draw the figure.  [default: figure]")
-@click.option("--force", is_flag=True, help="Replace an earlier result in the folder.")
-def run(plan: Path, folder: Path, draws: int | None, figure: bool, force: bool) -> None:
+@option("Results", "--figure/--no-figure", default=True, help="Draw the figure.  [default: figure]")
+@option("Results", "--force", is_flag=True, help="Replace an earlier result in the folder.")
+@screen_options
+def run(plan: Path, folder: Path, draws: int | None, figure: bool, force: bool, quiet: bool, as_json: bool) -> None:
     """Solve the plan PLAN (TOML), print the sheet for the wall, and write the results to a folder.
 
     The folder gets answer.json (everything, under documented keys), sheet.txt, doses.csv (with the feed), steps.csv
@@ -53,17 +49,21 @@ def run(plan: Path, folder: Path, draws: int | None, figure: bool, force: bool) 
     """
     from aquabuf.report.dose_run import dose_plan
 
-    done = dose_plan(plan, folder, draws=draws, force=force, figure=figure)
-    click.echo(done.text, nl=False)
+    with Screen("dose", quiet=quiet, as_json=as_json) as screen:
+        done = dose_plan(plan, folder, draws=draws, force=force, figure=figure, step=screen.step, tell=screen.tell)
+        screen.show(done.text)
     if done.reason:
         raise click.ClickException(f"the plan does not hold. {done.reason}")
 
 
-@dose.command("sheet")
+@dose.command("sheet", cls=Command, examples=(
+    "aquabuf dose sheet field_data/plan_upland.toml",
+    "aquabuf dose sheet field_data/plan_river.toml --product alum --most '120 mg/L'"))
 @click.argument("plan", type=click.Path(path_type=Path))
-@click.option("--step", help="Name of one step.  [default: every step that doses]")
-@click.option("--product", help="Name of one product of the store.  [default: all that are dosed]")
-@click.option("--most", help="Largest dose of product, such as \"60 mg/L\".  [default: about twice the wanted one]")
+@option("Which dose", "--step", help="Name of one step.  [default: every step that doses]")
+@option("Which dose", "--product", help="Name of one product of the store.  [default: all that are dosed]")
+@option("Which dose", "--most",
+        help="Largest dose of product, such as \"60 mg/L\".  [default: about twice the wanted one]")
 def sheet(plan: Path, step: str | None, product: str | None, most: str | None) -> None:
     """Print the dose-response table of the plan PLAN for the shift log.
 

@@ -6,25 +6,24 @@ from pathlib import Path
 
 import click
 
+from aquabuf.cli.command import Command, option
+
 __all__ = ["explain"]
 
 
-@click.command()
+@click.command(cls=Command, examples=(
+    "aquabuf explain result UT-base --input field_data/stream_survey.csv",
+    "aquabuf explain result LT-base --input field_data/stream_survey.csv --row 27 | less"))
 @click.argument("results", metavar="RESULTS_DIR", type=click.Path(path_type=Path))
 @click.argument("sample_id")
-@click.option("--input", "given", type=click.Path(path_type=Path),
-              help="The readings of the run, where they are neither beside RESULTS_DIR nor in the current folder.")
-@click.option("--row", type=int, help="One row of the readings, where several have this name.")
+@option("Which reading", "--input", "given", type=click.Path(path_type=Path),
+        help="The readings of the run, where they are neither beside RESULTS_DIR nor in the current folder.")
+@option("Which reading", "--row", type=int, help="One row of the readings, where several have this name.")
 def explain(results: Path, sample_id: str, given: Path | None, row: int | None) -> None:
     """Print the chain from reading to verdict for one sample of an `aquabuf assess` run.
 
     RESULTS_DIR is the folder that --out made. The readings (with map, limits and titrations) must be those of the run:
     they are told by their hash, and the numbers are worked out again and compared with results.csv.
-
-    \b
-    Examples:
-      aquabuf explain result UT-base --input field_data/stream_survey.csv
-      aquabuf explain result LT-base --row 27 | less
     """
     from aquabuf.report.explain_run import explain as explained
 

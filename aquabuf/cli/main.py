@@ -11,6 +11,8 @@ import click
 from aquabuf import __version__
 from aquabuf.cli.assess import assess
 from aquabuf.cli.columns import columns
+from aquabuf.cli.command import write_examples
+from aquabuf.cli.completion import completion
 from aquabuf.cli.dose import dose
 from aquabuf.cli.explain import explain
 from aquabuf.cli.lake import lake
@@ -45,11 +47,17 @@ class _Group(click.Group):
     def resolve_command(self, ctx: click.Context, args: list[str]) -> Any:
         from difflib import get_close_matches
 
-        if args and not args[0].startswith("-") and args[0] not in self.commands:
+        if args and not args[0].startswith("-") and args[0] not in self.commands and not ctx.resilient_parsing:
             near = get_close_matches(args[0], self.commands, n=1)
             hint = f" Did you mean {near[0]!r}?" if near else ""
             raise click.UsageError(f"No such command {args[0]!r}.{hint} Commands: {', '.join(sorted(self.commands))}.")
         return super().resolve_command(ctx, args)
+
+    def format_epilog(self, ctx: click.Context, formatter: click.HelpFormatter) -> None:
+        """Where to start."""
+        super().format_epilog(ctx, formatter)
+        write_examples(("aquabuf assess field_data/stream_survey.csv --out result",
+                        "aquabuf dose field_data/plan_upland.toml --out upland"), formatter)
 
 
 @click.group(cls=_Group, context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100})
@@ -57,12 +65,13 @@ class _Group(click.Group):
 def main() -> None:
     """Alkalinity, speciation, buffering and acid tolerance of water, from field readings, with error bars.
 
-    Start with `aquabuf template stream > readings.csv`, fill it in, then `aquabuf assess readings.csv --out result`.
+    Start with `aquabuf template assess > readings.csv`, fill it in, then `aquabuf assess readings.csv --out result`.
     """
 
 
 main.add_command(assess)
 main.add_command(columns)
+main.add_command(completion)
 main.add_command(dose)
 main.add_command(explain)
 main.add_command(lake)

@@ -3,26 +3,19 @@
 from __future__ import annotations
 
 from pathlib import Path
-from typing import Any
 
 import click
 
+from aquabuf.cli.command import Command, option
 from aquabuf.cli.default import DefaultGroup
+from aquabuf.cli.screen import Screen, screen_options
 
 __all__ = ["tank"]
 
 MOST_CASES, MOST_JOBS = 5000, 64
 
 
-class _StreamGroup(DefaultGroup):
-    """Designs for a stream when no command is named."""
-
-    def format_usage(self, ctx: click.Context, formatter: Any) -> None:
-        """Show both ways of calling."""
-        formatter.write_usage(ctx.command_path, "STREAM.toml --out FOLDER [OPTIONS] | COMMAND [ARGS]...")
-
-
-@click.group(cls=_StreamGroup, invoke_without_command=False)
+@click.group(cls=DefaultGroup, file_word="STREAM.toml", invoke_without_command=False)
 def tank() -> None:
     """Size a neutralization from titration curve or composition, and try it by simulation.
 
@@ -31,17 +24,22 @@ def tank() -> None:
     """
 
 
-@tank.command("run")
+@tank.command("run", cls=Command, examples=(
+    "aquabuf tank field_data/stream_plating.toml --out tanks",
+    "aquabuf tank field_data/stream_seep.toml --no-simulation --json --out seep"))
 @click.argument("stream", type=click.Path(path_type=Path))
-@click.option("--out", "folder", type=click.Path(path_type=Path), required=True, help="Folder for the results.")
-@click.option("--cases", type=click.IntRange(0, MOST_CASES),
-              help="Cases of the Monte Carlo; 0 leaves the probability out.  [default: of the stream file, else 40]")
-@click.option("--simulation/--no-simulation", default=True, help="Try the design by simulation.  [default: simulation]")
-@click.option("--figure/--no-figure", default=True, help="Draw the figures.  [default: figure]")
-@click.option("--force", is_flag=True, help="Replace an earlier result in the folder.")
-@click.option("--jobs", type=click.IntRange(1, MOST_JOBS), default=2, show_default=True,
-              help="Processes that the cases share; the results do not depend on it.")
-def run(stream: Path, folder: Path, cases: int | None, simulation: bool, figure: bool, force: bool, jobs: int) -> None:
+@option("Results", "--out", "folder", type=click.Path(path_type=Path), required=True, help="Folder for the results.")
+@option("Simulation", "--cases", type=click.IntRange(0, MOST_CASES),
+        help="Cases of the Monte Carlo; 0 leaves the probability out.  [default: of the stream file, else 40]")
+@option("Simulation", "--simulation/--no-simulation", default=True,
+        help="Try the design by simulation.  [default: simulation]")
+@option("Results", "--figure/--no-figure", default=True, help="Draw the figures.  [default: figure]")
+@option("Results", "--force", is_flag=True, help="Replace an earlier result in the folder.")
+@option("Simulation", "--jobs", type=click.IntRange(1, MOST_JOBS), default=2, show_default=True,
+        help="Processes that the cases share; the results do not depend on it.")
+@screen_options
+def run(stream: Path, folder: Path, cases: int | None, simulation: bool, figure: bool, force: bool, jobs: int,
+        quiet: bool, as_json: bool) -> None:
     """Design for the stream file STREAM (TOML), print the report, and write the results to a folder.
 
     The folder gets report.txt, design.json (everything, under documented keys), curve.csv, demand.csv, reagents.csv,
@@ -57,13 +55,17 @@ def run(stream: Path, folder: Path, cases: int | None, simulation: bool, figure:
 
     if cases and not simulation:
         raise click.UsageError("--cases needs the simulation. Leave out --no-simulation, or --cases.")
-    done = tank_stream(stream, folder, cases=cases, simulate=simulation, figure=figure, force=force, jobs=jobs)
-    click.echo(done.text, nl=False)
+    with Screen("tank", quiet=quiet, as_json=as_json) as screen:
+        done = tank_stream(stream, folder, cases=cases, simulate=simulation, figure=figure, force=force, jobs=jobs,
+                           step=screen.step, tell=screen.tell)
+        screen.show(done.text)
     if done.reason:
         raise click.ClickException(f"the design is not accepted. {done.reason}")
 
 
-@tank.command("curve")
+@tank.command("curve", cls=Command, examples=(
+    "aquabuf tank curve field_data/stream_plating.toml",
+    "aquabuf tank curve field_data/stream_dairy.toml | less"))
 @click.argument("stream", type=click.Path(path_type=Path))
 def curve(stream: Path) -> None:
     """Print the titration curve of the mean waste of STREAM: reagent to each pH, buffer intensity, gain."""

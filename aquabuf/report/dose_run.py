@@ -18,9 +18,11 @@ from aquabuf.report.dose_sheet import dose_sheet
 from aquabuf.report.dose_tables import dose_tables, sweeps
 from aquabuf.report.files import OutputFolder
 from aquabuf.report.html.dose_page import dose_page
+from aquabuf.report.machine import Tell, dose_machine, untold
 from aquabuf.report.run import sha256
 from aquabuf.report.summary import item
 from aquabuf.report.tables import GrowingTables
+from aquabuf.report.terminal import Step, silent
 from aquabuf.tables import read_table
 
 __all__ = ["OUTPUT_FILES", "DoseRun", "dose_plan"]
@@ -41,10 +43,11 @@ class DoseRun:
 
 
 def dose_plan(path: Path, folder: Path, *, force: bool = False, figure: bool = True, draws: int | None = None,
-              ) -> DoseRun:
+              step: Step = silent, tell: Tell = untold) -> DoseRun:
     """Solve the plan at `path` and write OUTPUT_FILES to `folder`, also where it does not hold.
 
-    draws : replaces those of the plan; 0 leaves out what errors of readings and feeds do.
+    draws : replaces those of the plan; 0 leaves out what errors of readings and feeds do. step, tell : are told what is
+    being done, and the summary for programs.
 
     Raises InputError or FileError where the plan cannot be read or worked out; nothing is written then, and an earlier
     result stays.
@@ -52,6 +55,7 @@ def dose_plan(path: Path, folder: Path, *, force: bool = False, figure: bool = T
     plan = read_plan(path)
     hashes = {name: sha256(file) for name, file in _given(path).items()}
     with OutputFolder(folder, OUTPUT_FILES, force=force) as out:
+        step("the plan being solved")
         answer = solve_plan(plan, draws=draws)
         record = answer_record(answer)
         _write_json(out, "answer.json", record)
@@ -61,12 +65,15 @@ def dose_plan(path: Path, folder: Path, *, force: bool = False, figure: bool = T
             for name, table in dose_tables(answer, record).items():
                 writer.add(name, table)
         if figure:
+            step("figures")
             _draw(answer, out)
+        step("page")
         rests_on = _record(path, hashes, answer)
         _write_json(out, "run.json", rests_on)
         page = dose_page(answer, rests_on, written=out.written, figure=figure)
         out.part("report.html").write_text(page, encoding="utf-8")
         written = [name for name in OUTPUT_FILES if fnmatch.filter(out.written, name)]
+    tell(dose_machine(record, rests_on, out.written))
     files = item(f"Written to {folder.name}: {', '.join(written)}.", mark="")
     return DoseRun(f"{sheet}\n{files}\n", answer.reason)
 

@@ -8,11 +8,13 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
+from aquabuf.assess.sample.titrated import Titrated, titrated_by
 from aquabuf.errors import FileError, InputError
 from aquabuf.readings.long.shipped import shipped_map, shipped_names
+from aquabuf.readings.titration.paths import TitrationFiles
 from aquabuf.report.run import sha256
 
-__all__ = ["RunFiles", "options_from", "read_record"]
+__all__ = ["RunFiles", "options_from", "read_record", "titrations_of"]
 
 READINGS = "readings"
 SHOWN = 12  # characters of a hash in a message
@@ -40,22 +42,26 @@ def read_record(folder: Path) -> dict[str, Any]:
 
 @dataclass(frozen=True, slots=True)
 class RunFiles:
-    """The files of a run: names and hashes by part, the folder of its results, the readings if they were named."""
+    """The files of a run: names and hashes by part, the folder of its results, the readings if they were named.
+
+    main : the part that --input names.
+    """
 
     folder: Path
     names: Mapping[str, str]
     hashes: Mapping[str, str]
     given: Path | None = None
+    main: str = READINGS
 
     @classmethod
-    def of(cls, folder: Path, record: Mapping[str, Any], given: Path | None = None) -> RunFiles:
+    def of(cls, folder: Path, record: Mapping[str, Any], given: Path | None = None, main: str = READINGS) -> RunFiles:
         """The files that a run record names. Raises FileError where names or hashes are not whole."""
         names, hashes = record["files"], record["sha256"]
-        whole = isinstance(names, dict) and isinstance(hashes, dict) and set(names) == set(hashes) and READINGS in names
+        whole = isinstance(names, dict) and isinstance(hashes, dict) and set(names) == set(hashes) and main in names
         if not whole or not all(isinstance(v, str) for v in (*names.values(), *hashes.values())):
             raise FileError(f"{folder.name}/run.json must name each file with its hash; it does not. Run the "
                             f"assessment again with --force.")
-        return cls(folder, names, hashes, given)
+        return cls(folder, names, hashes, given, main)
 
     def find(self, part: str) -> Path | None:
         """The unchanged file of one part of the run ("readings", "map", ...), None where the run had none.
@@ -65,14 +71,14 @@ class RunFiles:
         """
         if part not in self.names:
             return None
-        if part == READINGS and self.given is not None:
+        if part == self.main and self.given is not None:
             return self._same(self.given)
         name = Path(self.names[part]).name
         places = list(dict.fromkeys(path for path in self._places(name) if path.is_file()))
         match = next((path for path in (*places, *self._shipped(part)) if sha256(path) == self.hashes[part]), None)
         if match is not None:
             return match
-        remedy = "Name it with --input." if part == READINGS else \
+        remedy = "Name it with --input." if part == self.main else \
             f"Put the {part} file there, or beside the readings and name these with --input."
         if not places:
             raise FileError(f"{name}, the {part} of this run, is neither beside {self.folder.name} nor in the current "
@@ -95,8 +101,8 @@ class RunFiles:
         """The readings the user named, if they are those of the run."""
         if not path.exists():
             raise FileError(f"{path}: no such file. Check the name given with --input.")
-        if sha256(path) != self.hashes[READINGS]:
-            raise self._changed(path, READINGS)
+        if sha256(path) != self.hashes[self.main]:
+            raise self._changed(path, self.main)
         return path
 
     def _changed(self, path: Path, part: str) -> FileError:
@@ -114,3 +120,12 @@ def options_from(record: Mapping[str, Any], kind: type) -> Any:
     except (TypeError, AttributeError, InputError) as error:
         raise InputError(f"run.json has options that this version does not know ({error}). Run the assessment again "
                          f"with --force.") from None
+
+
+def titrations_of(files: RunFiles) -> Titrated | None:
+    """The titrations that took part in the run, None where it had none."""
+    points = files.find("titration points")
+    if points is None:
+        return None
+    return titrated_by(TitrationFiles(points, files.find("titration samples"), files.find("titration points_map"),
+                                      files.find("titration samples_map")))

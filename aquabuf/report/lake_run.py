@@ -42,11 +42,13 @@ from aquabuf.report.files import OutputFolder
 from aquabuf.report.html.lake_page import lake_page
 from aquabuf.report.lake_blocks import LakeRun
 from aquabuf.report.lake_summary import lake_report, lake_summary
+from aquabuf.report.machine import Tell, lake_machine, untold
 from aquabuf.report.run import FAILED_RUN_FILES, sha256
 from aquabuf.report.tables import GrowingTables
+from aquabuf.report.terminal import Step, silent
 from aquabuf.tables import read_table
 
-__all__ = ["OUTPUT_FILES", "LakeFiles", "assess_survey"]
+__all__ = ["OUTPUT_FILES", "LakeFiles", "assess_survey", "lake_digits"]
 
 OUTPUT_FILES = (
     "results.csv",
@@ -105,8 +107,13 @@ def assess_survey(
     force: bool = False,
     figure: bool = True,
     notify: Callable[[str], None] = lambda text: None,
+    step: Step = silent,
+    tell: Tell = untold,
 ) -> str:
     """Assess the lakes of a survey, write OUTPUT_FILES to `folder`, and return the summary text.
+
+    `notify` is told beforehand when the draws will take long, `step` what is being done, `tell` the summary for
+    programs.
 
     Raises InputError or FileError where the table as a whole cannot be used or no lake is accepted; rejected.csv is
     still written then.
@@ -114,6 +121,7 @@ def assess_survey(
     rules = rules_of(options, files.event)
     limits = read_limits(files.limits, lake_quantities(options.thresholds), "lake_limits")
     hashes = {name: sha256(path) for name, path in files.given(options.schemes).items()}
+    step("reading")
     titrated = Titrated() if files.titrations is None else titrated_by(files.titrations)
     readings = join_readings(open_any(files.survey, files.mapping))
     if files.titrations is not None:
@@ -124,6 +132,7 @@ def assess_survey(
             f"{options.draws:,} draws for each of {len(readings.frame):,} lakes take about {minutes:.0f} minutes; "
             f"--draws 0 leaves intervals and probabilities out and takes seconds."
         )
+    step(f"{len(readings.frame):,} lakes being worked out")
     found = assess_lakes(readings, rules, options, limits)
     with OutputFolder(folder, OUTPUT_FILES, force=force, leftovers=FAILED_RUN_FILES[:1]) as out:
         if not len(found.results):
@@ -132,6 +141,7 @@ def assess_survey(
                 raise InputError(f"{failure} The earlier result is untouched; use another --out to see the reasons.")
             _write(out, {"rejected.csv": found.rejected}, options)
         else:
+            step("trends, tables, figures and page")
             run = _run_of(
                 found,
                 options,
@@ -150,6 +160,7 @@ def assess_survey(
             written = [name for name in OUTPUT_FILES if fnmatch.filter(out.written, name)]
     if not len(found.results):
         raise InputError(f"{failure} rejected.csv in {folder.name} names each with its remedy.")
+    tell(lake_machine(run, record, out.written))
     return lake_summary(run, written)
 
 
@@ -253,7 +264,7 @@ def _tables(
     return {name: table for name, table in tables.items() if len(table)}
 
 
-def _digits(options: LakeOptions) -> dict[str, dict[str, int]]:
+def lake_digits(options: LakeOptions) -> dict[str, dict[str, int]]:
     """Decimals of the columns of every table: those of results.csv also where a column is repeated elsewhere."""
     of_results = {
         f"{c.name}{end}": c.digits
@@ -269,7 +280,7 @@ def _digits(options: LakeOptions) -> dict[str, dict[str, int]]:
 
 
 def _write(out: OutputFolder, tables: Mapping[str, pd.DataFrame], options: LakeOptions) -> None:
-    with GrowingTables(out, _digits(options)) as writer:
+    with GrowingTables(out, lake_digits(options)) as writer:
         for name, table in tables.items():
             writer.add(name, table)
 

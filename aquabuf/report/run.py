@@ -14,7 +14,7 @@ import aquabuf
 from aquabuf.assess.limits import Limit
 from aquabuf.assess.limits_file import read_limits
 from aquabuf.assess.options import Options
-from aquabuf.assess.sample.assess import assess
+from aquabuf.assess.sample.assess import Assessment, assess
 from aquabuf.assess.sample.columns import limit_quantities
 from aquabuf.assess.sample.titrated import Titrated, titrated_by
 from aquabuf.errors import FileError, InputError
@@ -22,9 +22,11 @@ from aquabuf.readings.source import open_any, resolve_map
 from aquabuf.readings.titration.paths import TitrationFiles
 from aquabuf.report.files import OutputFolder
 from aquabuf.report.html.assess_page import AssessRows, assess_page
+from aquabuf.report.machine import Tell, assess_machine, untold
 from aquabuf.report.summary import summary_text
 from aquabuf.report.tables import GrowingTables, csv_text, result_digits, rounded
 from aquabuf.report.tally import Tally
+from aquabuf.report.terminal import Step, silent
 from aquabuf.tables import read_table
 
 __all__ = ["OUTPUT_FILES", "assess_file", "sha256"]
@@ -39,13 +41,15 @@ ALL_CHECKS_UP_TO = 20_000  # samples; beyond, checks.csv holds the unmet ones on
 
 def assess_file(path: Path, folder: Path, options: Options, *, mapping: str | Path | None = None,
                 limits: Path | None = None, titrations: TitrationFiles | None = None, force: bool = False,
-                figure: bool = True, notify: Callable[[str], None] = lambda text: None) -> str:
+                figure: bool = True, notify: Callable[[str], None] = lambda text: None, step: Step = silent,
+                tell: Tell = untold) -> str:
     """Assess the table at `path`, write OUTPUT_FILES to `folder`, and return the summary text.
 
     `mapping` is a map file or the name of a shipped map.
 
     `titrations` give the alkalinity of the samples they name, in place of any that the table has. `notify` is told
-    beforehand when the draws of a long table will take long.
+    beforehand when the draws of a long table will take long, `step` what is being done, `tell` the summary for
+    programs.
 
     Raises InputError or FileError where the table as a whole cannot be used or no row is accepted; rejected.csv is
     still written then.
@@ -57,7 +61,9 @@ def assess_file(path: Path, folder: Path, options: Options, *, mapping: str | Pa
     hashes = {name: sha256(p) for name, p in used.items()}
     pieces = open_any(path, map_file, CHUNK_ROWS)
     titrated = Titrated() if titrations is None else titrated_by(titrations)
-    tally, rows, few = Tally(), AssessRows(), _fewer_rows_than(path, ALL_CHECKS_UP_TO)
+    lines = _lines(path)
+    tally, rows, few = Tally(), AssessRows(), lines <= ALL_CHECKS_UP_TO
+    step("reading")
     if not few and options.draws:
         minutes = ALL_CHECKS_UP_TO * options.draws * SECONDS_PER_DRAW / 60.0
         notify(f"{options.draws:,} draws for each of more than {ALL_CHECKS_UP_TO:,} rows take about {minutes:.0f} "
@@ -72,10 +78,12 @@ def assess_file(path: Path, folder: Path, options: Options, *, mapping: str | Pa
                     writer.add(name, table)
                 tally.add(part)
                 rows.add(part)
+                step(f"{tally.assessed:,} samples assessed", _share(part, lines))
             writer.add("checks.csv", tally.file_checks())
         if not tally.refused_rows:
             out.drop("rejected.csv")
         if tally.assessed:
+            step("curves, figure and page")
             curves = tally.curves(options)
             out.part("curves.csv").write_text(csv_text(rounded(curves, {"ph": 2}), header=True), encoding="utf-8")
             drawings = _draw(tally, curves, out, path.name) if figure else []
@@ -97,6 +105,7 @@ def assess_file(path: Path, folder: Path, options: Options, *, mapping: str | Pa
                                         written=written, drawings=drawings), encoding="utf-8")
     if not tally.assessed:
         raise InputError(f"{failure} rejected.csv in {folder.name} names each with its remedy.")
+    tell(assess_machine(tally, options, record, out.written))
     return summary
 
 
@@ -127,15 +136,16 @@ def sha256(path: Path) -> str:
                         f"Check the path and its permissions.") from None
 
 
-def _fewer_rows_than(path: Path, count: int) -> bool:
-    """Whether the file has fewer lines than `count`, read no further than needed."""
-    lines = 0
+def _lines(path: Path) -> int:
+    """Lines of the file."""
     with path.open("rb") as stream:
-        while block := stream.read(1 << 20):
-            lines += block.count(b"\n")
-            if lines > count:
-                return False
-    return True
+        return sum(block.count(b"\n") for block in iter(lambda: stream.read(1 << 20), b""))
+
+
+def _share(part: Assessment, lines: int) -> float | None:
+    """How far down the file a piece ends; None where that is not known."""
+    ends = [float(table["row"].max()) for table in (part.results, part.rejected) if len(table)]
+    return max(ends) / lines if ends and lines else None
 
 
 def _record(files: Mapping[str, str], hashes: Mapping[str, str], options: Options, limits: tuple[Limit, ...],

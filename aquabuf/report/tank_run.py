@@ -17,11 +17,13 @@ from aquabuf.assess.tank.design_json import design_record
 from aquabuf.assess.tank.job import Job
 from aquabuf.assess.tank.job_file import read_stream
 from aquabuf.report.files import OutputFolder
+from aquabuf.report.machine import Tell, tank_machine, untold
 from aquabuf.report.run import sha256
 from aquabuf.report.summary import item
 from aquabuf.report.tables import GrowingTables
 from aquabuf.report.tank_report import failing, tank_report
 from aquabuf.report.tank_tables import TABLES, tank_tables
+from aquabuf.report.terminal import Step, silent
 from aquabuf.tables import read_table
 
 __all__ = ["OUTPUT_FILES", "TankRun", "tank_stream"]
@@ -42,11 +44,12 @@ class TankRun:
 
 
 def tank_stream(path: Path, folder: Path, *, cases: int | None = None, simulate: bool = True, figure: bool = True,
-                force: bool = False, jobs: int = 2) -> TankRun:
+                force: bool = False, jobs: int = 2, step: Step = silent, tell: Tell = untold) -> TankRun:
     """Design for the stream file at `path` and write OUTPUT_FILES to `folder`, also where the design does not hold.
 
     cases : of the Monte Carlo in place of those of the file; 0 leaves the probability out. jobs : processes that the
-    cases share; the results do not depend on it.
+    cases share; the results do not depend on it. step, tell : are told what is being done, and the summary for
+    programs.
 
     Raises InputError or FileError where the file cannot be read or nothing can be sized; nothing is written then, and
     an earlier result stays.
@@ -55,6 +58,7 @@ def tank_stream(path: Path, folder: Path, *, cases: int | None = None, simulate:
     given = _given(path)
     hashes = {name: sha256(file) for name, file in given.items()}
     with OutputFolder(folder, OUTPUT_FILES, force=force) as out:
+        step("the design being worked out and tried" if simulate else "the design being worked out")
         found = design(job, simulate=simulate, cases=cases, processes=jobs)
         record = design_record(found)
         report = tank_report(found, record)
@@ -64,13 +68,16 @@ def tank_stream(path: Path, folder: Path, *, cases: int | None = None, simulate:
             for name, table in tank_tables(found, record).items():
                 writer.add(name, table)
         if figure:
+            step("figures")
             _draw(found, out)
+        step("page")
         files = {name: file.name for name, file in given.items()}
         run = _record(found, record, files, hashes, simulate=simulate, cases=cases)
         _write_json(out, "run.json", run)
         page = _page(found, record, report, run, out.written, figure=figure)
         out.part("report.html").write_text(page, encoding="utf-8")
         written = [name for name in OUTPUT_FILES if name in out.written]
+    tell(tank_machine(found, record, run, out.written))
     listed = item(f"Written to {folder.name}: {', '.join(written)}.", mark="")
     return TankRun(f"{report}\n{listed}\n", failing(found))
 

@@ -16,8 +16,10 @@ from aquabuf.readings.titration.paths import TitrationFiles
 from aquabuf.readings.titration.reader import iter_titrations
 from aquabuf.report.files import OutputFolder
 from aquabuf.report.html.titration_page import TitrationRows, rank_of, titration_page
+from aquabuf.report.machine import Tell, titration_machine, untold
 from aquabuf.report.run import sha256
 from aquabuf.report.tables import GrowingTables
+from aquabuf.report.terminal import Step, silent
 from aquabuf.report.titration_summary import titration_summary
 from aquabuf.report.titration_tally import TitrationTally
 from aquabuf.tables import read_table
@@ -33,11 +35,12 @@ SLOW_FROM = 100  # figures, from which the user is told
 
 
 def titrate_file(files: TitrationFiles, folder: Path, options: TitrationOptions, *, force: bool = False,
-                 figures: int = 50, notify: Callable[[str], None] = lambda text: None) -> str:
+                 figures: int = 50, notify: Callable[[str], None] = lambda text: None, step: Step = silent,
+                 tell: Tell = untold) -> str:
     """Assess the titrations in `files`, write OUTPUT_FILES to `folder`, and return the text.
 
     `figures` is the number of titrations to draw, in the order of the file. `notify` is told when drawing will take
-    long.
+    long, `step` what is being done, `tell` the summary for programs.
 
     Raises InputError or FileError where a file as a whole cannot be used or no titration is accepted; rejected.csv is
     still written then.
@@ -45,6 +48,7 @@ def titrate_file(files: TitrationFiles, folder: Path, options: TitrationOptions,
     hashes = {name: sha256(path) for name, path in files.given().items()}
     pieces = iter_titrations(files.points, files.samples, points_map=files.points_map, samples_map=files.samples_map)
     tally, rows, drawings = TitrationTally(), TitrationRows(), PageDrawings()
+    step("reading")
     with OutputFolder(folder, OUTPUT_FILES, force=force, leftovers=FAILED_RUN_FILES) as out:
         with GrowingTables(out, {"alkalinity.csv": titration_digits(options)}) as tables:
             for t in pieces:
@@ -58,6 +62,7 @@ def titrate_file(files: TitrationFiles, folder: Path, options: TitrationOptions,
                     tables.add(name, table)
                 tally.add(t, part)
                 rows.add(part)
+                step(f"{tally.samples:,} titrations worked out")
         if not tally.refusals:
             out.drop("rejected.csv")
         usable = tally.samples - tally.status["refused"]
@@ -77,6 +82,7 @@ def titrate_file(files: TitrationFiles, folder: Path, options: TitrationOptions,
                                            written=out.written, drawings=drawings.all()), encoding="utf-8")
     if not usable:
         raise InputError(f"{failure} rejected.csv in {folder.name} names each with its remedy.")
+    tell(titration_machine(tally, options, record, out.written))
     return summary
 
 

@@ -95,7 +95,7 @@ def test_columns(call):
 # ------------------------------------------------------------------ wrong usage is 2
 
 WRONG = [
-    ((), "Usage: aquabuf"), (("asess",), "No such command 'asess'. Did you mean 'assess'? Commands: assess, columns, dose, explain, lake, tank, template, titration."),
+    ((), "Usage: aquabuf"), (("asess",), "No such command 'asess'. Did you mean 'assess'? Commands: assess, columns, completion, dose, explain, lake, tank, template, titration."),
     (("xyz",), "No such command 'xyz'. Commands: assess"), (("assess",), "Missing argument 'READINGS'"),
     (("assess", "t.csv"), "Missing option '--out'"), (("assess", "t.csv", "--out", "o", "--wide"), "No such option"),
     (("assess", "t.csv", "--out", "o", "--exchange", "ajar"), "'ajar' is not one of 'closed', 'open'"),

@@ -209,7 +209,7 @@ WRONG = [
     ((*PLAN, "--sample-ml", "0"), "the sample volume must be 1 to 5000 mL; found 0"), ((*PLAN, "--strength", "-1"), "the strength must be 0.0001 to 20 eq/L"),
     ((*PLAN, "--temperature", "99"), "the temperature must be 0 to 50 °C; found 99"), ((*PLAN, "--ph", "1"), "the expected pH must be 3 to 12; found 1"),
     ((*PLAN, "--ph", "11.5"), "no water has an alkalinity of 50 µeq/L at pH 11.5"), (("titration", "plan", "--alkalinity", "nan"), "found nan"),
-    (("template", "titration"), "no starter file is named 'titration'. Use one of: lake"), (("columns", "--titration", "nosuch"), "no column is named 'nosuch'"),
+    (("template", "titrate"), "no starter file is named 'titrate'. Did you mean 'titration'? Use one of: lake"), (("columns", "--titration", "nosuch"), "no column is named 'nosuch'"),
     (("titraton", "x"), "No such command 'titraton'. Did you mean 'titration'?"),
 ]
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Mapping
+from typing import Any
 
 import numpy as np
 
@@ -22,11 +23,12 @@ from aquabuf.chem import activity, fresh, marine
 from aquabuf.chem.acids import k_of_temperature
 from aquabuf.engine.balance import fractions, protons_lost
 from aquabuf.engine.build import of_sea_salt
-from aquabuf.engine.conditions import LIMITS
+from aquabuf.engine.conditions import LIMITS, Conditions
 from aquabuf.engine.water import Water
 from aquabuf.tables import read_table
 
-__all__ = ["balance", "conditions_part", "constant_value", "constants_part"]
+__all__ = ["STRENGTH_SOURCES", "STRENGTH_WORDS", "balance", "carbonate_constants", "conditions_part",
+           "constant_value", "constants_part", "pressure_words", "within"]
 
 ACID_RANGE = (1.0, 77.0)  # °C, of the form that `k_of_temperature` takes; Goldberg et al. 2002
 STRENGTH_WORDS = {
@@ -57,17 +59,17 @@ def conditions_part(water: Water, values: Values, options: Options) -> Part:
     no_salt = np.isnan(reading(values, "salinity")[0])
     steps = [
         Step(label="temperature", value=six(_one(water.t_c)), unit="°C", words="of the water", source="reading",
-             sign=_within("t_c", _one(water.t_c))),
+             sign=within("t_c", _one(water.t_c))),
         Step(label="salinity", value=six(_one(water.salinity)),
              source="none given counts as zero" if no_salt else "reading",
              words="from 1 on the constants of sea water hold" if salt else "below 1 the constants of fresh water hold",
-             sign=_within("salinity", _one(water.salinity))),
+             sign=within("salinity", _one(water.salinity))),
         Step(label=f"ionic strength, from {strength}", value=six(_one(water.ionic_strength_mol_l)),
              unit="mol/kg of water" if salt else "mol/L", words=STRENGTH_WORDS[strength],
              source=STRENGTH_SOURCES[strength],
-             sign="" if salt else _within("ionic_strength_mol_l", _one(water.ionic_strength_mol_l))),
-        Step(label="air pressure", value=six(_one(water.pressure_atm)), unit="atm", **_pressure(values),
-             sign=_within("pressure_atm", _one(water.pressure_atm))),
+             sign="" if salt else within("ionic_strength_mol_l", _one(water.ionic_strength_mol_l))),
+        Step(label="air pressure", value=six(_one(water.pressure_atm)), unit="atm", **pressure_words(values),
+             sign=within("pressure_atm", _one(water.pressure_atm))),
         Step(label="density", value=six(_one(water.density_kg_l)), unit="kg/L", words="of the water as it is",
              source="Millero & Poisson 1981" if salt else "Kell 1975"),
         Step(label="CO2 pressure of air", value=f"{1e6 * _air(water, options):.1f}", unit="µatm",
@@ -81,12 +83,14 @@ def _air(water: Water, options: Options) -> float:
     return _one(air_pco2({"t_c": water.t_c, "pressure_atm": water.pressure_atm, "salinity": water.salinity}, options))
 
 
-def _within(key: str, value: float) -> str:
+def within(key: str, value: float) -> str:
+    """Whether a condition lies in the range that the constants are made for."""
     low, high = LIMITS[key][:2]
     return INSIDE if low <= value <= high else OUTSIDE
 
 
-def _pressure(values: Values) -> dict[str, str]:
+def pressure_words(values: Values) -> dict[str, str]:
+    """Where the air pressure comes from."""
     if np.isfinite(reading(values, "air_pressure_atm")[0]):
         return {"words": "as measured", "source": "reading"}
     if np.isfinite(reading(values, "elevation_m")[0]):
@@ -114,20 +118,29 @@ def constants_part(water: Water, options: Options) -> Part:
 
 def _listed(water: Water, options: Options) -> Iterator[Step]:
     c, s = water.state.conditions, water.state
-    salt, t, salinity = bool(_one(c.is_marine)), _one(c.t_c), _one(c.salinity)
     there = {d.acid.name for d in s.acids if _one(d.total) > 0.0} | {
         name for name, v in s.ions.items() if _one(v) > 0.0} | {options.carbonic}
-    if salt:
+    if bool(_one(c.is_marine)):
         there |= {"sulfate", "fluoride"}  # they set the scales of pH
+    return _listed_at(c, there, options.carbonic, {d.acid.name: c.acid_constants(d.acid) for d in s.acids})
+
+
+def carbonate_constants(c: Conditions, carbonic: str) -> Iterator[Step]:
+    """Constants of carbon dioxide, carbonate and water at these conditions; `carbonic` is the set of sea water."""
+    return _listed_at(c, {carbonic}, carbonic, {})
+
+
+def _listed_at(c: Conditions, there: set[str], carbonic: str, acids: Mapping[str, Any]) -> Iterator[Step]:
+    """The constants of the table that are needed with the acids and ions that are there."""
+    salt, t, salinity = bool(_one(c.is_marine)), _one(c.t_c), _one(c.salinity)
     used = {"K0": _one(c.k0), "K1": _one(c.k1), "K2": _one(c.k2), "Kw": _one(c.c_oh)}
-    steps = {d.acid.name: c.acid_constants(d.acid) for d in s.acids}
     for row in read_table("chain_constants"):
         needs = set(filter(None, row["for"].split(";")))
         if (row["regime"] == "salt") != salt or not needs <= there:
             continue
-        as_used = used.get(row["symbol"]) if not needs or needs == {options.carbonic} else None
-        if len(needs) == 1 and (acid := next(iter(needs))) in steps and row["kind"] == "pK":
-            as_used = _one(steps[acid][int(row["step"])])
+        as_used = used.get(row["symbol"]) if not needs or needs == {carbonic} else None
+        if len(needs) == 1 and (acid := next(iter(needs))) in acids and row["kind"] == "pK":
+            as_used = _one(acids[acid][int(row["step"])])
         log = np.log10(constant_value(row["function"], t, salinity))
         sign = -1.0 if row["kind"] == "pK" else 1.0
         also = "" if as_used is None else f"; used: {row['kind']} {sign * np.log10(as_used):.4f}"

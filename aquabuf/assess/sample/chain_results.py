@@ -24,7 +24,8 @@ from aquabuf.assess.uncertainty import COVERAGE, drawn, interval
 from aquabuf.chem.acids import Acid
 from aquabuf.tables import read_table
 
-__all__ = ["Equation", "Shares", "checks_part", "equation_of", "results_part", "rules_part", "shares", "written"]
+__all__ = ["Equation", "Shares", "checks_part", "equation_of", "results_part", "rules_part", "shares", "with_interval",
+           "written"]
 
 LEAST_SHARE = 0.01    # smaller ones are not told
 LEAST_WIDTH = 1e-6    # of the value; a narrower interval is rounding of the solver
@@ -136,7 +137,7 @@ def results_part(row: Mapping[str, Any], of: Shares, options: Options) -> Part:
         equation = equation_of(column.name)
         words = [] if equation.key in told else [f"{equation.symbols}: {equation.words}"]
         words += [_from_words(*of[column.name])] if column.name in of else []
-        steps.append(Step(label=equation.label, value=_with_interval(row, column), words=". ".join(words),
+        steps.append(Step(label=equation.label, value=with_interval(row, column), words=". ".join(words),
                           unit="" if column.unit == "-" else column.unit,
                           source="" if equation.key in told else equation.source))
         told.add(equation.key)
@@ -146,7 +147,8 @@ def results_part(row: Mapping[str, Any], of: Shares, options: Options) -> Part:
     return Part("Results", tuple(steps), about)
 
 
-def _with_interval(row: Mapping[str, Any], column: ResultColumn) -> str:
+def with_interval(row: Mapping[str, Any], column: ResultColumn) -> str:
+    """A number with the ends of its interval where it has one."""
     low, high = (float(row.get(f"{column.name}_{end}", np.nan)) for end in ("low", "high"))
     value = written(float(row[column.name]), column.digits)
     if np.isnan(low) or np.isnan(high):

@@ -2,18 +2,20 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Iterator
 from dataclasses import dataclass
 
 import numpy as np
 
-__all__ = ["BROKEN", "INSIDE", "KEPT", "MET", "NOT_MET", "OUTSIDE", "REFUSED", "Chain", "Part", "Step",
-           "quantity_label", "six"]
+__all__ = ["BROKEN", "FOUND", "INSIDE", "KEPT", "MET", "NOT_MET", "OUTSIDE", "REFUSED", "USED", "Chain", "Part", "Step",
+           "label_and_words", "quantity_label", "six"]
 
 INSIDE, OUTSIDE = "inside", "OUTSIDE"  # its range
 MET, NOT_MET = "met", "NOT MET"        # a check
 KEPT, BROKEN = "kept", "BROKEN"        # a rule
 REFUSED = "REFUSED"                    # a row
+FOUND, USED = "FOUND", "used"          # something suspicious; a method
 _CAPITALS = {"ph": "pH", "anc": "ANC", "dic": "DIC", "doc": "DOC", "tds": "TDS", "pco2": "pCO2", "co2": "CO2"}
 
 
@@ -66,3 +68,9 @@ def six(value: float) -> str:
 def quantity_label(base: str) -> str:
     """The name of a column without its unit as words, such as "pH total"."""
     return " ".join(_CAPITALS.get(word, word) for word in base.split("_"))
+
+
+def label_and_words(meaning: str) -> tuple[str, str]:
+    """The meaning of a column as a label, which ends at the first mark, and what is left of it."""
+    label, mark, words = re.match(r"([^;:,]*)([;:,]?)\s*(.*)", meaning, flags=re.DOTALL).groups()  # type: ignore[union-attr]
+    return label.strip(), words if mark else ""

@@ -94,8 +94,9 @@ class Design:
         if self.trial is None:
             return "Not proven: no simulation was run."
         if self.trial.monte is None:
-            keeps = "keeps" if self.trial.kept else "breaks"
-            return f"Not proven: the course simulated {keeps} the time rule, and no cases were asked for."
+            kept = self.trial.kept
+            return ("Not proven: the course simulated keeps the time rule, and no cases were asked for." if kept else
+                    "The design does not hold: the course simulated breaks the time rule.")
         m = self.trial.monte
         share = f"{100.0 * m.probability:.0f} % of {m.meets.size} simulated cases keep the time rule (95 % interval " \
                 f"{100.0 * m.low:.0f} to {100.0 * m.high:.0f} %)"

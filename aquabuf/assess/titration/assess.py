@@ -16,7 +16,7 @@ from aquabuf.assess.titration.solve import Solved, solve_titrations
 from aquabuf.assess.titration.tables import figures_of, findings_table, results_table
 from aquabuf.readings.titration.result import Titrations
 
-__all__ = ["TitrationResult", "assess_titrations"]
+__all__ = ["TitrationResult", "assess_titrations", "assumptions"]
 
 
 @dataclass(frozen=True, slots=True, eq=False, kw_only=True)
@@ -55,6 +55,11 @@ def assess_titrations(t: Titrations, options: TitrationOptions, *, by_liter: boo
 
 def _assumed(s: Solved) -> dict[str, int]:
     """How many titrations rest on each assumption, in words."""
+    return {words: int(mask.sum()) for words, mask in assumptions(s).items() if mask.any()}
+
+
+def assumptions(s: Solved) -> dict[str, NDArray[np.bool_]]:
+    """What is taken where it was not stated, in words, and of which titrations."""
     n = s.curves.count.size
 
     def blank(name: str) -> NDArray[np.bool_]:
@@ -64,7 +69,7 @@ def _assumed(s: Solved) -> dict[str, int]:
         return v == "" if v.dtype.kind == "O" else np.isnan(v)
 
     acid = ~s.curves.is_base
-    cases = {
+    return {
         "no temperature: 20 °C": blank("temperature_c"),
         "kind of acid not stated: hydrochloric": blank("titrant_acid") & acid,
         "CO2 in the vessel not stated: kept in (closed)": blank("exchange"),
@@ -80,5 +85,3 @@ def _assumed(s: Solved) -> dict[str, int]:
             s.curves.is_potential & (s.calibration.standards < 2),
         "density of the titrant not stated: 1 kg/L": blank("titrant_density_kg_l") & s.curves.needs_density,
     }
-    return {words: int(mask.sum()) for words, mask in cases.items() if mask.any()}
-

@@ -15,7 +15,7 @@ from aquabuf.chem.properties import seawater_density
 from aquabuf.readings.schema import Quantity, titration_quantities
 from aquabuf.readings.titration.result import COUNTS_PER_ML, Titrations
 
-__all__ = ["ASSUMED_PH_SCATTER", "ASSUMED_T_C", "Curves", "curves_of", "u_of"]
+__all__ = ["ASSUMED_PH_SCATTER", "ASSUMED_T_C", "SHARED_BY_ALL", "Curves", "curves_of", "u_of"]
 
 Array = NDArray[np.float64]
 
@@ -25,6 +25,8 @@ COARSE_PH = (0.1, 0.05, 0.02)  # steps that a meter may be read to; anywhere in 
 LEAST_READ = 6             # readings that must all be whole steps before it counts as how the meter was read
 PER_LITER = 1e3            # mL per L, and g per kg
 ADDED_BY = {"volume": "titrant_volume_ml", "counts": "titrant_counts", "mass": "titrant_mass_g"}
+SHARED_BY_ALL = ("titrant_strength_eq_l", "titrant_strength_eq_kg", "sample_volume_ml", "sample_mass_g",
+                 "cartridge_factor")  # whose relative uncertainty all points of a titration share
 
 
 @dataclass(frozen=True, slots=True, eq=False, kw_only=True)
@@ -196,8 +198,7 @@ def _relative_u(values: Mapping[str, Array], value, scale: Array) -> Array:
     """Relative uncertainty of acid per unit of sample that all points share: strength, sample, scale, cartridge."""
     known = titration_quantities()
     total = scale**2
-    for name in ("titrant_strength_eq_l", "titrant_strength_eq_kg", "sample_volume_ml", "sample_mass_g",
-                 "cartridge_factor"):
+    for name in SHARED_BY_ALL:
         size = value(name)
         total = total + np.where(np.isfinite(size), u_of(values, known[name], size) / size, 0.0) ** 2
     return np.sqrt(total)

@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
-from aquabuf.assess.sample.chain_steps import BROKEN, NOT_MET, OUTSIDE, REFUSED, Chain, Part, Step
+from aquabuf.assess.sample.chain_steps import BROKEN, FOUND, NOT_MET, OUTSIDE, REFUSED, Chain, Part, Step
 from aquabuf.report.html.parts import Column, details, paragraph, table
 
 __all__ = ["chain_details"]
 
-_TONES = {BROKEN: "stop", REFUSED: "stop", NOT_MET: "warn", OUTSIDE: "warn"}  # beside the words, which say it too
+# beside the words, which say it too
+_TONES = {BROKEN: "stop", REFUSED: "stop", NOT_MET: "warn", OUTSIDE: "warn", FOUND: "warn"}
 
 
 def chain_details(chain: Chain) -> str:

@@ -126,4 +126,4 @@ def _verdict(found: Design, record: Mapping[str, Any], lines: Lines, steps: Sequ
         rules += [line for line in told if line.startswith(ASKED)]
     caution = [*(line for line in told if line.startswith(ASIDE)), record["cautions"][0]]
     return card(TONES[word], big, number=" ".join(said), rule=" ".join(sentence(rule) for rule in rules),
-                next_step=steps[0], caution=" ".join(caution))
+                next_step=" ".join(steps[:2 if word == REFUSED else 1]), caution=" ".join(caution))

@@ -56,6 +56,11 @@ def _pumped(l_h: float | None) -> str:
     return "-" if not l_h else number(l_h)
 
 
+def _range(least: float | None, most: float | None) -> str:
+    """Both ends in a cell; a dash where nothing is pumped."""
+    return "-" if not most else f"{number(least)} to {number(most)}"
+
+
 def _money(found: Design) -> str:
     return f"Cost ({found.job.currency + ' ' if found.job.currency else ''}per day)"
 
@@ -86,12 +91,12 @@ def tanks_section(record: Record, lines: Lines, files: Files) -> str:
     """Vessels and mixers."""
     title, items = _block(lines, "TANKS")
     rows = [[s["name"], number(s["volume_m3"]), number(s["diameter_m"]), number(s["liquid_m"]), number(s["wall_m"]),
-             number(s["residence_min"]), number(s["dead_time_s"]), number(s["lag_s"]), number(s["pumping_m3_h"]),
-             number(s["turnover_per_min"]), f"{number(s['power_low_w'] / W_PER_KW)} to "
+             number(s["residence_min"]), number(s["dead_time_s"]), number(s["lag_s"]), number(s["turnover_per_min"]),
+             f"{number(s['power_low_w'] / W_PER_KW)} to "
              f"{number(s['power_high_w'] / W_PER_KW)}"] for s in record["stages"]]
     return section(title, _table(
         ("Tank", "Liquid (m³)", "Wide (m)", "Deep (m)", "Wall (m)", "Stays (min)", "Dead time (s)", "Lag (s)",
-         "Pumping (m³/h)", "Turnovers (1/min)", "Power (kW)"), rows),
+         "Turnovers (1/min)", "Power (kW)"), rows),
         details("Why so many and so large, vessels, mixers, where things go", bullets(items)),
         _beside("Each tank, every column:", "stages.csv", files), name="tanks") if items else ""
 
@@ -100,15 +105,15 @@ def feeds_section(record: Record, lines: Lines, files: Files) -> str:
     """Range, resolution and line of every feeder; those that do not hold the window first."""
     title, items = _block(lines, "FEEDS")
     found = sorted(record["feed"], key=lambda f: f["holds"] is not False)
-    rows = [[f["tank"], f["reagent"] + (" *" if f["trim_only"] else ""), number(f["least_eq_h"]),
-             number(f["largest_eq_h"]), number(f["size_eq_h"]),
-             *(_pumped(f[key]) for key in ("least_l_h", "largest_l_h", "size_l_h")), f"{f['turndown']:.3g}",
+    rows = [[f["tank"], f["reagent"] + (" *" if f["trim_only"] else ""),
+             _range(f["least_eq_h"], f["largest_eq_h"]), number(f["size_eq_h"]),
+             _range(f["least_l_h"], f["largest_l_h"]), _pumped(f["size_l_h"]), f"{f['turndown']:.3g}",
              *("-" if share is None else f"{PERCENT * share:.3g}" for share in (f["resolution_needed"],
                                                                                f["resolution_has"])),
              {True: "yes", False: "NO", None: "-"}[f["holds"]], number(f["line_dead_s"])] for f in found]
     return section(title, _table(
-        ("Tank", "Reagent", "Least (eq/h)", "Most (eq/h)", "Feeder (eq/h)", "Least (L/h)", "Most (L/h)",
-         "Feeder (L/h)", "Turndown", "Needs (%)", "Has (%)", "Holds the window", "Line (s)"), rows, text=(0, 1, 11),
+        ("Tank", "Reagent", "Least to most (eq/h)", "Feeder (eq/h)", "Least to most (L/h)", "Feeder (L/h)", "Turndown",
+         "Needs (%)", "Has (%)", "Holds the window", "Line (s)"), rows, text=(0, 1, 9),
         tones=["warn" if f["holds"] is False else "" for f in found]), details("Each feeder in words", bullets(items)),
         _beside("Each feeder, every column:", "feed.csv", files), name="feeds") if items else ""
 
@@ -158,11 +163,11 @@ def reagents_section(found: Design, record: Record, lines: Lines, files: Files) 
     chosen = [line for line in items if line.startswith(CHOSEN)]
     every = [r for one in record["reagents"]["compared"] for r in one["rows"]]
     rows = [[r["reagent"], "yes" if r["reaches_setpoint"] else "NO", number(r["demand_meq_l"]),
-             number(r["product_kg_d"]), number(r["cost_per_day"]), _pumped(r["fed_l_h"]), number(r["residence_min"]),
+             number(r["product_kg_d"]), number(r["cost_per_day"]), number(r["residence_min"]),
              number(r["gain_ph_per_meq_l"]), number(r["sludge_kg_d"]), figure(r["heat_k"], 2), number(r["co2_kg_d"])]
             for r in every]
     return section(title, bullets(chosen), _table(
-        ("Reagent", "Reaches the set point", "Dose (meq/L)", "Product (kg/d)", _money(found), "Pumped (L/h)",
+        ("Reagent", "Reaches the set point", "Dose (meq/L)", "Product (kg/d)", _money(found),
          "Stays (min)", "Gain (pH per meq/L)", "Sludge (kg/d)", "Heat (K)", "CO2 (kg/d)"), rows, text=(0, 1),
         tones=["" if r["reaches_setpoint"] else "warn" for r in every]),
         bullets(line for line in items if line not in chosen), _beside("Every column:", "reagents.csv", files),
