@@ -44,7 +44,7 @@ def _figures(_: click.Context, option: click.Parameter, text: str) -> int:
 
 @titration.command("run", cls=Command, examples=(
     "aquabuf titration field_data/titration_points.csv --samples field_data/titration_samples.csv --out titrated",
-    "aquabuf titration field_data/dairy_titration.csv --end-points 8.3,4.5 --out dairy"))
+    "aquabuf titration field_data/sea_titration_points.csv --samples field_data/sea_titration_samples.csv --out sea"))
 @click.argument("points", type=click.Path(path_type=Path))
 @option("Results", "--out", "folder", type=click.Path(path_type=Path), required=True, help="Folder for the results.")
 @option("Files read", "--samples", type=click.Path(path_type=Path),

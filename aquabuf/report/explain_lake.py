@@ -24,8 +24,9 @@ from aquabuf.readings.long.mapping import LongMap
 from aquabuf.readings.origin import cells_of
 from aquabuf.readings.result import join_readings
 from aquabuf.readings.source import load_map, open_any
+from aquabuf.report.chains import only_rows
 from aquabuf.report.explain_files import RunFiles, options_from, titrations_of
-from aquabuf.report.explain_search import only_rows, prove, unknown_sample
+from aquabuf.report.explain_search import prove, unknown_sample
 from aquabuf.report.lake_run import lake_digits
 
 __all__ = ["lake_chains"]

@@ -22,10 +22,11 @@ from aquabuf.readings.long.mapping import LongMap
 from aquabuf.readings.origin import cells_of
 from aquabuf.readings.result import Readings
 from aquabuf.readings.source import load_map, open_any
+from aquabuf.report.chains import only_rows
 from aquabuf.report.explain import chain_text
 from aquabuf.report.explain_files import RunFiles, options_from, read_record, titrations_of
 from aquabuf.report.explain_lake import lake_chains
-from aquabuf.report.explain_search import only_rows, prove, unknown_sample
+from aquabuf.report.explain_search import prove, unknown_sample
 from aquabuf.report.explain_titration import titration_chains
 from aquabuf.report.run import CHUNK_ROWS
 from aquabuf.report.tables import result_digits

@@ -5,22 +5,18 @@ from __future__ import annotations
 import csv
 import io
 from collections.abc import Collection, Iterable, Mapping
-from dataclasses import replace
 from difflib import get_close_matches
 from pathlib import Path
 from typing import Any
 
-import numpy as np
 import pandas as pd
-from numpy.typing import NDArray
 
 import aquabuf
 from aquabuf.errors import FileError, InputError
-from aquabuf.readings.result import Readings
 from aquabuf.report.explain import plain
 from aquabuf.report.tables import csv_text, rounded
 
-__all__ = ["only_rows", "prove", "unknown_sample"]
+__all__ = ["prove", "unknown_sample"]
 
 NEAR = 3              # names that are told where one is not known
 SEARCHED = 20_000     # names that are compared letter by letter; beyond, only those with the same beginning
@@ -56,13 +52,6 @@ def _nearest(wanted: str, names: Iterable[str]) -> list[str]:
     close = get_close_matches(key, plain_names, n=NEAR, cutoff=0.5)
     close += [name for name in plain_names if key and key in name and name not in close]
     return [by_plain[name] for name in close[:NEAR]]
-
-
-def only_rows(readings: Readings, kept: NDArray[np.bool_]) -> Readings:
-    """The readings with some samples left and what was noticed about them."""
-    frame = readings.frame[kept].reset_index(drop=True)
-    flags = readings.flags[readings.flags["row"].isin(frame["row"])].reset_index(drop=True)
-    return replace(readings, frame=frame, flags=flags, rejected=readings.rejected.iloc[:0])
 
 
 # ---------------------------------------------------------------- the proof

@@ -14,6 +14,7 @@ import pandas as pd
 
 import aquabuf
 from aquabuf.assess.lake.assess import LakeAssessment, assess_lakes
+from aquabuf.assess.lake.chain import LakeTables
 from aquabuf.assess.lake.columns import lake_columns, lake_quantities
 from aquabuf.assess.lake.episode import CHANGES, WEAK_CHANGES
 from aquabuf.assess.lake.liming import DEMANDS
@@ -32,12 +33,14 @@ from aquabuf.assess.lake.tables import (
 from aquabuf.assess.lake.trends import trend_table
 from aquabuf.assess.limits import Limit
 from aquabuf.assess.limits_file import read_limits
+from aquabuf.assess.sample.chain_steps import Chain
 from aquabuf.assess.sample.quality import check_rows, file_check_rows
 from aquabuf.assess.sample.titrated import Titrated, titrated_by
 from aquabuf.errors import InputError
-from aquabuf.readings.result import join_readings
+from aquabuf.readings.result import Readings, join_readings
 from aquabuf.readings.source import open_any, resolve_map
 from aquabuf.readings.titration.paths import TitrationFiles
+from aquabuf.report.chains import ON_PAGE, first_lakes
 from aquabuf.report.files import OutputFolder
 from aquabuf.report.html.lake_page import lake_page
 from aquabuf.report.lake_blocks import LakeRun
@@ -149,14 +152,18 @@ def assess_survey(
                 files.survey.name,
                 titrated.in_words(files.titrations.points.name) if files.titrations else [],
             )
-            _write(out, _tables(found, run, options, limits), options)
+            tables = _tables(found, run, options, limits)
+            _write(out, tables, options)
             drawings = _draw(found, run, out) if figure else []
             record = _record(files, hashes, options, rules, run, limits)
             out.part("run.json").write_text(json.dumps(record, indent=1, ensure_ascii=False) + "\n", encoding="utf-8")
             report, page = lake_report(run), out.part("report.html")
             out.part("report.txt").write_text(report, encoding="utf-8")
-            page.write_text(lake_page(run, report=report, record=record, written=out.written, drawings=drawings),
-                            encoding="utf-8")
+            chains = _chains(readings, run, tables, files, options, limits)
+            page.write_text(
+                lake_page(run, report=report, record=record, written=out.written, drawings=drawings, chains=chains),
+                encoding="utf-8",
+            )
             written = [name for name in OUTPUT_FILES if fnmatch.filter(out.written, name)]
     if not len(found.results):
         raise InputError(f"{failure} rejected.csv in {folder.name} names each with its remedy.")
@@ -262,6 +269,29 @@ def _tables(
         "rejected.csv": found.rejected,
     }
     return {name: table for name, table in tables.items() if len(table)}
+
+
+def _chains(
+    readings: Readings,
+    run: LakeRun,
+    tables: Mapping[str, pd.DataFrame],
+    files: LakeFiles,
+    options: LakeOptions,
+    limits: tuple[Limit, ...],
+) -> list[Chain]:
+    """Chains of the lakes to look at first; none for a long table, which would have to be read again."""
+    if len(run.found.results) > ALL_CHECKS_UP_TO:
+        return []
+    none = pd.DataFrame({"row": []})
+    of = LakeTables(
+        checks=tables.get("checks.csv", none),
+        classes=tables.get("classes.csv", none),
+        verdicts=tables.get("verdicts.csv", none),
+        loads=tables.get("critical_loads.csv", none),
+    )
+    rows = [int(row) for row in run.priorities["row"].head(ON_PAGE)]
+    map_file = None if files.mapping is None else resolve_map(files.mapping)
+    return first_lakes(run.found, readings, rows, of, options, limits, files.survey, map_file)
 
 
 def lake_digits(options: LakeOptions) -> dict[str, dict[str, int]]:

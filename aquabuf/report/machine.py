@@ -28,6 +28,7 @@ CLEAR, WARNINGS, HOLDS, FAILS = "clear", "warnings", "holds", "does not hold"
 ASSESS_COLUMNS = ("sample_id", "row", "ph", "alkalinity_meq_l", RANK_BY, f"{RANK_BY}_low", f"{RANK_BY}_high", "carrier",
                   "warnings")
 TITRATION_COLUMNS = ("sample_id", "row", "status", "definition", "recommended_ueq_l", "recommended_u_ueq_l",
+                     "recommended_umol_kg", "recommended_u_umol_kg",
                      "recommended_mg_l_caco3", "recommended_u_mg_l_caco3", "recommended_method", "warnings")
 LAKE_COLUMNS = ("rank", "sample_id", "row", "site", "region", "class", "class_probability", "anc_used_ueq_l", "ph",
                 "exceedance_meq_m2_yr", "exceedance_probability", "episode_anc_ueq_l", "warnings", "next_step")
@@ -55,7 +56,8 @@ def titration_machine(tally: TitrationTally, options: TitrationOptions, record: 
     """Summary of `aquabuf titration`."""
     counts = {"titrations": tally.samples} | {name: int(tally.status[status]) for status, name in STATUSES.items()}
     shown = rounded(pd.DataFrame(tally.shown[:LISTED]).infer_objects(), titration_digits(options))
-    return _summary(record, written, counts=counts, verdict=CLEAR if not tally.findings else WARNINGS, figures={
+    verdict = CLEAR if counts["ok"] == tally.samples else WARNINGS
+    return _summary(record, written, counts=counts, verdict=verdict, figures={
         "findings": dict(sorted(tally.findings.items())), "methods": dict(sorted(tally.methods.items())),
         "results": _rows(shown, TITRATION_COLUMNS)})
 
@@ -73,7 +75,8 @@ def lake_machine(run: LakeRun, record: Mapping[str, Any], written: Collection[st
 def dose_machine(answer: Mapping[str, Any], record: Mapping[str, Any], written: Collection[str]) -> dict[str, Any]:
     """Summary of `aquabuf dose`; `answer` is the content of answer.json."""
     targets, limits = answer["targets"], answer["limits"]
-    counts = {"doses": len(answer["doses"]), "targets": len(targets), "targets_met": sum(t["met"] for t in targets),
+    counts = {"doses": len(answer["doses"]), "targets": len(targets),
+              "targets_met": sum(bool(t["met"]) for t in targets),
               "limits_broken": sum(bool(x["broken"]) for x in limits), "warnings": len(answer["warnings"])}
     doses = [{"step": d["step"], "product": d["product"], "mg_l_product": d["dose_mg_l_product"],
               "kg_d_product": d["feed"]["product_kg_d"], "setting_percent": d["feed"]["setting_percent"]}

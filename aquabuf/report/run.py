@@ -20,6 +20,7 @@ from aquabuf.assess.sample.titrated import Titrated, titrated_by
 from aquabuf.errors import FileError, InputError
 from aquabuf.readings.source import open_any, resolve_map
 from aquabuf.readings.titration.paths import TitrationFiles
+from aquabuf.report.chains import WorstSamples
 from aquabuf.report.files import OutputFolder
 from aquabuf.report.html.assess_page import AssessRows, assess_page
 from aquabuf.report.machine import Tell, assess_machine, untold
@@ -62,7 +63,7 @@ def assess_file(path: Path, folder: Path, options: Options, *, mapping: str | Pa
     pieces = open_any(path, map_file, CHUNK_ROWS)
     titrated = Titrated() if titrations is None else titrated_by(titrations)
     lines = _lines(path)
-    tally, rows, few = Tally(), AssessRows(), lines <= ALL_CHECKS_UP_TO
+    tally, rows, worst, few = Tally(), AssessRows(), WorstSamples(), lines <= ALL_CHECKS_UP_TO
     step("reading")
     if not few and options.draws:
         minutes = ALL_CHECKS_UP_TO * options.draws * SECONDS_PER_DRAW / 60.0
@@ -78,6 +79,8 @@ def assess_file(path: Path, folder: Path, options: Options, *, mapping: str | Pa
                     writer.add(name, table)
                 tally.add(part)
                 rows.add(part)
+                if few:
+                    worst.add(readings, part)
                 step(f"{tally.assessed:,} samples assessed", _share(part, lines))
             writer.add("checks.csv", tally.file_checks())
         if not tally.refused_rows:
@@ -102,7 +105,8 @@ def assess_file(path: Path, folder: Path, options: Options, *, mapping: str | Pa
             written = [name for name in OUTPUT_FILES if name in out.written]
             summary = summary_text(tally, options, rules, source=path.name, files=written)
             page.write_text(assess_page(tally, rows, options, rules, source=path.name, summary=summary, record=record,
-                                        written=written, drawings=drawings), encoding="utf-8")
+                                        written=written, drawings=drawings,
+                                        chains=worst.chains(path, map_file, options, rules)), encoding="utf-8")
     if not tally.assessed:
         raise InputError(f"{failure} rejected.csv in {folder.name} names each with its remedy.")
     tell(assess_machine(tally, options, record, out.written))

@@ -14,6 +14,7 @@ from aquabuf.assess.titration.tables import titration_digits
 from aquabuf.errors import InputError
 from aquabuf.readings.titration.paths import TitrationFiles
 from aquabuf.readings.titration.reader import iter_titrations
+from aquabuf.report.chains import FirstTitrations, amounts_of
 from aquabuf.report.files import OutputFolder
 from aquabuf.report.html.titration_page import TitrationRows, rank_of, titration_page
 from aquabuf.report.machine import Tell, titration_machine, untold
@@ -31,6 +32,7 @@ OUTPUT_FILES = ("alkalinity.csv", "findings.csv", "rejected.csv", "report.html",
 FAILED_RUN_FILES = ("rejected.csv",)
 ALL_FIGURES = 10**9
 PAGE_TITRATIONS = 4  # whose figures are on the page
+CHAINS_UP_TO = 20_000  # titrations; beyond, the page has no chains, for which the points are read again
 SLOW_FROM = 100  # figures, from which the user is told
 
 
@@ -47,21 +49,20 @@ def titrate_file(files: TitrationFiles, folder: Path, options: TitrationOptions,
     """
     hashes = {name: sha256(path) for name, path in files.given().items()}
     pieces = iter_titrations(files.points, files.samples, points_map=files.points_map, samples_map=files.samples_map)
-    tally, rows, drawings = TitrationTally(), TitrationRows(), PageDrawings()
-    step("reading")
+    tally, rows, drawings, first = TitrationTally(), TitrationRows(), PageDrawings(), FirstTitrations()
+    step("titrations being read, worked out and drawn")
     with OutputFolder(folder, OUTPUT_FILES, force=force, leftovers=FAILED_RUN_FILES) as out:
         with GrowingTables(out, {"alkalinity.csv": titration_digits(options)}) as tables:
             for t in pieces:
-                columns = {name for name, _ in t.headers.values()}
-                by_kilogram = "sample_mass_g" in columns
-                part = assess_titrations(t, options, by_kilogram=by_kilogram,
-                                         by_liter="sample_volume_ml" in columns or not by_kilogram)
+                by_liter, by_kilogram = amounts_of(t)
+                part = assess_titrations(t, options, by_kilogram=by_kilogram, by_liter=by_liter)
                 _draw(part, tally, drawings, out, figures, notify)
                 for name, table in (("alkalinity.csv", part.results), ("findings.csv", part.findings),
                                     ("rejected.csv", part.rejected)):
                     tables.add(name, table)
                 tally.add(t, part)
                 rows.add(part)
+                first.add(t, part, rank_of)
                 step(f"{tally.samples:,} titrations worked out")
         if not tally.refusals:
             out.drop("rejected.csv")
@@ -76,10 +77,12 @@ def titrate_file(files: TitrationFiles, folder: Path, options: TitrationOptions,
             record = _record(files, hashes, options, tally)
             out.part("run.json").write_text(json.dumps(record, indent=1, ensure_ascii=False) + "\n", encoding="utf-8")
             page = out.part("report.html")
+            chains = first.chains(files, options) if tally.samples <= CHAINS_UP_TO else []
             written = [name for name in OUTPUT_FILES if name in out.written] + ([FIGURE_NAMES] if tally.figures else [])
             summary = titration_summary(tally, options, source=files.points.name, files=written)
             page.write_text(titration_page(tally, rows, source=files.points.name, summary=summary, record=record,
-                                           written=out.written, drawings=drawings.all()), encoding="utf-8")
+                                           written=out.written, drawings=drawings.all(), chains=chains),
+                            encoding="utf-8")
     if not usable:
         raise InputError(f"{failure} rejected.csv in {folder.name} names each with its remedy.")
     tell(titration_machine(tally, options, record, out.written))

@@ -24,7 +24,7 @@ def run(words, folder, *, out_tty=False, err_tty=False, code=PLAIN, **environmen
     child = subprocess.Popen([sys.executable, "-c", code, *map(str, words)], cwd=folder, env=env, stdin=subprocess.DEVNULL, **theirs)
     for end in theirs.values():
         os.close(end)
-    got = {end: b"" for end in ends.values()}
+    got = dict.fromkeys(ends.values(), b"")
     live = set(got)
     while live:
         ready = select.select(live, [], [], SLOW)[0]

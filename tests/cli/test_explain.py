@@ -3,6 +3,8 @@
 import re
 from pathlib import Path
 
+import pytest
+
 QUICK = ("--draws", "0", "--no-figure")
 
 
@@ -66,15 +68,23 @@ def test_wrong_usage(call):
     assert call("explain", "o").exit_code == 2
 
 
-def test_the_page_shows_what_is_printed(call):
+@pytest.mark.parametrize(("heading", "name", "given", "least", "command"), [
+    ("# Why this verdict?", "UT-base", "stream_survey.csv", 30, ("assess", "stream_survey.csv", "--no-figure")),
+    ("## A titration", "CS-melt", "titration_points.csv", 10,
+     ("titration", "titration_points.csv", "--samples", "titration_samples.csv", "--figures", "0")),
+    ("## A lake", "DU-24", "lake_survey.csv", 10, ("lake", "lake_survey.csv", "--no-figure")),
+], ids=["sample", "titration", "lake"])
+def test_the_page_shows_what_is_printed(call, heading, name, given, least, command):
     """Every line of the examples in docs/explain.md is printed for that sample, in this order."""
     root = Path(__file__).parents[2]
-    readings = root / "field_data" / "stream_survey.csv"
-    call("assess", readings, "--out", "result", "--no-figure")
-    printed = call("explain", "result", "UT-base", "--input", readings).stdout.splitlines()
-    blocks = re.findall(r"```text\n(.*?)```", (root / "docs" / "explain.md").read_text(encoding="utf-8"), flags=re.S)
-    lines = [line for block in blocks for line in block.splitlines()]
-    assert len(lines) > 30
+    data = root / "field_data"
+    call(*(data / word if word.endswith(".csv") else word for word in command), "--out", "result")
+    done = call("explain", "result", name, "--input", data / given)
+    printed = done.stdout.splitlines()
+    page = (root / "docs" / "explain.md").read_text(encoding="utf-8")
+    section = re.split(r"^#+ ", page.split(f"{heading}\n")[1], maxsplit=1, flags=re.M)[0]
+    lines = [line for block in re.findall(r"```text\n(.*?)```", section, flags=re.S) for line in block.splitlines()]
+    assert len(lines) > least
     at = -1
     for line in lines:
         at = printed.index(line, at + 1)

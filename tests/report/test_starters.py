@@ -17,13 +17,13 @@ from aquabuf.assess.sample.columns import limit_quantities
 from aquabuf.assess.tank.job_file import read_stream
 from aquabuf.assess.tank.waste import chemistry
 from aquabuf.assess.titration.options import TitrationOptions
-from aquabuf.errors import InputError
+from aquabuf.errors import FileError, InputError
 from aquabuf.readings.result import join_readings
 from aquabuf.readings.source import open_any
 from aquabuf.readings.template import template_kinds
 from aquabuf.readings.titration.paths import TitrationFiles
 from aquabuf.report.lake_run import LakeFiles, assess_survey
-from aquabuf.report.starters import FILES, TITRATION_KINDS, starter, starter_kinds
+from aquabuf.report.starters import COMMANDS, FILES, TITRATION_KINDS, starter, starter_kinds, write_starter
 from aquabuf.report.titration_run import titrate_file
 
 TABLES = [kind for kind in template_kinds() if kind != "map"]
@@ -42,6 +42,35 @@ def test_unknown_kind_names_those_there_are():
     """The user learns what to ask for."""
     with pytest.raises(InputError, match=r"no starter file is named 'pond'. Use one of: lake, stream, .*map, limits"):
         starter("pond")
+
+
+def test_a_slip_is_told_the_nearest_kind():
+    """One letter too many."""
+    with pytest.raises(InputError, match=r"no starter file is named 'tankk'. Did you mean 'tank'\? Use one of: lake, stream"):
+        starter("tankk")
+
+
+@pytest.mark.parametrize(("command", "kind"), [("assess", "stream"), ("dose", "plan")])
+def test_starter_of_a_command_is_that_of_its_kind(command, kind):
+    """One text under two names, but for the first line."""
+    assert starter(command).split("\n", 1)[1] == starter(kind)
+
+
+def test_written_starter_is_the_printed_one(tmp_path):
+    """Whole, with plain line ends, and never over a file that is there."""
+    path = tmp_path / "mine.csv"
+    write_starter("titration", path)
+    assert path.read_bytes() == starter("titration").encode()
+    with pytest.raises(FileError, match=r"mine.csv exists already and is not overwritten. Choose another name with --out, or replace it"):
+        write_starter("assess", path)
+    assert path.read_bytes() == starter("titration").encode()
+    write_starter("assess", path, force=True)
+    assert path.read_bytes() == starter("assess").encode()
+    with pytest.raises(FileError, match=r"mine.csv cannot be written: no such file or directory. Choose another name"):
+        write_starter("assess", tmp_path / "none" / "mine.csv")
+    with pytest.raises(InputError, match="no starter file is named 'pond'"):
+        write_starter("pond", tmp_path / "pond")
+    assert not (tmp_path / "pond").exists()
 
 
 def test_limits_starter_changes_nothing_as_it_is(tmp_path):
@@ -87,6 +116,20 @@ def test_starter_titrations_say_what_each_column_is():
         assert all(name in remarks for name in header.split(",")), kind
 
 
+def test_one_table_of_titrations_says_what_the_two_say(table, tmp_path):
+    """Points and samples in one table or in two: the same results; every column has its remark."""
+    two = TitrationFiles(*(table(starter(kind), f"{kind}.csv") for kind in TITRATION_KINDS))
+    titrate_file(two, tmp_path / "two", TitrationOptions(), figures=0)
+    titrate_file(TitrationFiles(table(starter("titration"), "t.csv")), tmp_path / "one", TitrationOptions(), figures=0)
+    found = [pd.read_csv(tmp_path / name / "alkalinity.csv").drop(columns="row") for name in ("one", "two")]
+    pd.testing.assert_frame_equal(*found)
+    assert len(found[0]) == 2
+    lines = starter("titration").splitlines()
+    remarks = " ".join(line for line in lines if line.startswith("#"))
+    assert all(name in remarks for name in next(line for line in lines if not line.startswith("#")).split(","))
+    assert max(map(len, lines)) <= 200
+
+
 # ------------------------------------------------------------------ lakes
 
 LAKE_STARTERS = ("scheme", "event")
@@ -99,7 +142,8 @@ def lake_starters(table):
 
 
 def test_every_starter_file_is_offered():
-    """Each file of its own is among the kinds, once."""
+    """Each file of its own is among the kinds, once, and each command has one."""
+    assert set(COMMANDS) <= set(starter_kinds())
     assert [kind for kind in starter_kinds() if kind in FILES] == list(FILES)
     assert set(LAKE_STARTERS) < set(FILES)
 

@@ -124,7 +124,7 @@ def _conditions(found: LakeAssessment, i: int, values: Values, options: LakeOpti
              source="Weiss & Price 1980 (recalled)"),
     ]
     organic = found.rules.organic
-    steps.append(Step(label="organic acids", value=organic.name, words=organic.in_words(), source=organic.source))
+    steps.append(Step(label="organic acids", value=organic.name, words=organic.in_words()))
     return Part("Conditions", tuple(steps))
 
 

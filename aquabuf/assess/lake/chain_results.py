@@ -13,7 +13,7 @@ from aquabuf.assess.lake.columns import AS_GIVEN, lake_columns
 from aquabuf.assess.lake.options import LakeOptions
 from aquabuf.assess.limits import Limit
 from aquabuf.assess.sample.chain_results import with_interval, written
-from aquabuf.assess.sample.chain_steps import BROKEN, KEPT, USED, Part, Step, label_and_words
+from aquabuf.assess.sample.chain_steps import AT_RISK, BROKEN, KEPT, USED, Part, Step, label_and_words
 from aquabuf.assess.sample.columns import ResultColumn
 from aquabuf.assess.uncertainty import COVERAGE
 
@@ -38,7 +38,7 @@ HOLDS = (  # the beginnings of the columns under each title
 ELSEWHERE = ("status", "left_out", "scheme", "class", "failed_checks", "warnings")  # told by parts of their own
 LOAD_CHOICES = ("share F of acid that the soil answers", "where F is taken", "sulfate before acid deposition",
                 "nitrate before acid deposition", "ANC limit", "sea salt")
-LONG = 30  # letters of a text that stands as a value
+LONG, LONG_WORDS = 30, 120  # letters of a text that stands as a value, and of one that is told in full
 MICRO = 1e6
 NOT_STATED = "not stated"
 
@@ -160,7 +160,7 @@ def verdict_part(found: LakeAssessment, row: Mapping[str, Any], table: pd.DataFr
     columns = {c.name: c for c in lake_columns(options.thresholds)}
     by_name = {limit.name: limit for limit in limits}
     steps = sorted((_verdict(r, columns, by_name, row) for r in table.to_dict("records")),
-                   key=lambda step: step.sign != BROKEN)
+                   key=lambda step: step.sign not in (BROKEN, AT_RISK))
     return Part("Verdicts", tuple(steps), f"{len(limits)} limits, and the class")
 
 
@@ -173,12 +173,14 @@ def _verdict(r: Mapping[Any, Any], columns: Mapping[str, ResultColumn], limits: 
     if limit is not None:
         floor = "" if np.isneginf(limit.lower) else f", from {limit.lower:g} on"
         rule = f"warned where {label} {limit.operator} {limit.limit:g} {unit}".rstrip() + floor
-    chance = float(r["probability"])
-    words = [rule, f"rests on: {r['rests_on']}", "" if np.isnan(chance) else f"in {100.0 * chance:.0f} % of the draws",
+    chance, warned = float(r["probability"]), r["warned"] == "yes"
+    rests_on = str(r["rests_on"])
+    rests_on = rests_on if len(rests_on) <= LONG_WORDS else rests_on.split(" (")[0]  # the load tells its limit already
+    words = [rule, f"rests on: {rests_on}", "" if np.isnan(chance) else f"in {100.0 * chance:.0f} % of the draws",
              str(r["words"]), f"next: {r['next_step']}" if r["next_step"] else ""]
     return Step(label=str(r["verdict"]), value=with_interval(row, column), unit=unit,
                 words="; ".join(filter(None, words)), source=str(r["source"]),
-                sign=BROKEN if r["warned"] == "yes" else KEPT)
+                sign=(BROKEN if warned else KEPT) if limit else AT_RISK if warned else "")
 
 
 def verdict_words(found: LakeAssessment, row: Mapping[str, Any]) -> str:

@@ -42,9 +42,11 @@ __all__ = ["Chain", "Part", "Step", "chain_of", "refused_chain"]
 ORDER_SOURCE = "order of preference by uncertainty; our choice"
 
 
-def chain_of(part: Assessment, readings: Readings, options: Options, limits: tuple[Limit, ...], origin: Origin,
-             ) -> Chain:
+def chain_of(part: Assessment, readings: Readings, options: Options, limits: tuple[Limit, ...], origin: Origin, *,
+             with_shares: bool = True) -> Chain:
     """The chain of the one accepted sample of `part`, which is the assessment of `readings` with these options.
+
+    with_shares : draw each reading alone too, to tell which of them the intervals come from.
 
     Raises InputError unless there is just one sample.
     """
@@ -64,7 +66,7 @@ def chain_of(part: Assessment, readings: Readings, options: Options, limits: tup
         _known_pair(values, pair, gap, water, options, row),
         conditions_part(water, values, options), constants_part(water, options),
         balance(water, ALKALINITY_AIR if opened else pair),
-        results_part(row, shares(values, u, inputs.choice, inputs.acids, options), options),
+        results_part(row, shares(values, u, inputs.choice, inputs.acids, options) if with_shares else {}, options),
         checks_part(part.checks), rules_part(row, part.verdicts, limits, options))
     return Chain(sample_id=str(row["sample_id"]), row=int(row["row"]), file=origin.file, verdict=_verdict(row),
                  parts=tuple(p for p in parts if p.steps or p.words))

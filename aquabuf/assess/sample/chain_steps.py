@@ -8,14 +8,15 @@ from dataclasses import dataclass
 
 import numpy as np
 
-__all__ = ["BROKEN", "FOUND", "INSIDE", "KEPT", "MET", "NOT_MET", "OUTSIDE", "REFUSED", "USED", "Chain", "Part", "Step",
-           "label_and_words", "quantity_label", "six"]
+__all__ = ["AT_RISK", "BROKEN", "FOUND", "INSIDE", "KEPT", "MET", "NOT_MET", "OUTSIDE", "REFUSED", "USED", "Chain",
+           "Part", "Step", "label_and_words", "quantity_label", "six"]
 
 INSIDE, OUTSIDE = "inside", "OUTSIDE"  # its range
 MET, NOT_MET = "met", "NOT MET"        # a check
 KEPT, BROKEN = "kept", "BROKEN"        # a rule
 REFUSED = "REFUSED"                    # a row
-FOUND, USED = "FOUND", "used"          # something suspicious; a method
+FOUND, USED = "FOUND", "used"          # something suspicious; a method or choice
+AT_RISK = "AT RISK"                    # a class
 _CAPITALS = {"ph": "pH", "anc": "ANC", "dic": "DIC", "doc": "DOC", "tds": "TDS", "pco2": "pCO2", "co2": "CO2"}
 
 
@@ -71,6 +72,6 @@ def quantity_label(base: str) -> str:
 
 
 def label_and_words(meaning: str) -> tuple[str, str]:
-    """The meaning of a column as a label, which ends at the first mark, and what is left of it."""
-    label, mark, words = re.match(r"([^;:,]*)([;:,]?)\s*(.*)", meaning, flags=re.DOTALL).groups()  # type: ignore[union-attr]
-    return label.strip(), words if mark else ""
+    """The meaning of a column as a label, which ends at the first mark or bracket, and what is left of it."""
+    label = re.split(r"[;:,(]", meaning, maxsplit=1)[0]
+    return label.strip(), meaning[len(label):].lstrip(";:, ")

@@ -38,6 +38,8 @@ ABOUT = {
     "Gran line": "free acid past the end point, (V0 + V)/V0 10^-pH, against acid added: its root is the alkalinity",
     "Fit of the whole curve": "least squares on the proton balance; alkalinity, carbon and electrode offset sought",
 }
+FITTED = {"Fit of the whole curve": "pH of the points in the fit",
+          "Other ways to the end point": "pH of the points of acid in excess"}
 LEAST_SHARE = 0.005  # of the variance; smaller ones are not told
 
 
@@ -86,11 +88,22 @@ def method_part(part: TitrationResult, i: int) -> Part:
         value = "none" if np.isnan(e.value[i]) else \
             f"{written(MICRO * e.value[i], 2)} ± {written(MICRO * TO_COVERAGE * e.u[i], 2)}"
         chosen = name == choice.method[i]
-        words = fact["why"] if chosen else "could be used; another comes first for this water" if able[i] else \
-            f"not used: {why[i]}"
+        words = fact["why"] if chosen else _passed_over(name, str(choice.method[i]), water["order"].split(";")) \
+            if able[i] else f"not used: {why[i]}"
         steps.append(Step(label=fact["words"], value=value, unit="" if value == "none" else _unit(part, i), words=words,
                           source=_source(fact), sign=USED if chosen else ""))
     return Part("Method", tuple(steps), f"± is half the {COVERAGE:.0%} interval")
+
+
+def _passed_over(name: str, chosen: str, order: list[str]) -> str:
+    """Why a method that has a sound result is not the one recommended."""
+    if not chosen:
+        return "has a result, which is not given: see above"
+    if name not in order:
+        return "has a result; not a method for this kind of water"
+    if chosen not in order or order.index(name) < order.index(chosen):
+        return "has a result; your own method is kept"
+    return "has a result; another comes first for this kind of water"
 
 
 def _source(fact: Mapping[str, str]) -> str:
@@ -104,7 +117,7 @@ def column_label(key: str, fact: Mapping[str, str]) -> tuple[str, str]:
     """The label of a column of alkalinity.csv and what more is to say of it."""
     label, words = label_and_words(fact["meaning"])
     if key == "partition_holds":
-        return "whether that rule holds", ""
+        return "phenolphthalein and total alkalinity tell it", ""
     if "*" in fact["name"]:
         before, after = fact["name"].split("*")
         ph = key.removeprefix(before).removesuffix(after).replace("_", ".")
@@ -142,6 +155,10 @@ def result_parts(part: TitrationResult, i: int, row: Mapping[str, Any], options:
             continue
         steps[title].append(Step(label=label, value=text, unit=_shown_unit(fact["unit"], part, i),
                                  words="; ".join(filter(None, (around, words)))))
+    for title, fit in zip(FITTED, (part.solved.fit, part.solved.excess), strict=True):
+        used = part.solved.ph[i, np.isfinite(fit.fit.residual_ph[i])]
+        if used.size and steps[title]:
+            steps[title].append(Step(label=FITTED[title], value=f"{used.max():.2f} to {used.min():.2f}"))
     return [Part(title, tuple(of), ABOUT.get(title, "")) for title, of in steps.items() if of]
 
 

@@ -12,8 +12,10 @@ import pandas as pd
 from aquabuf.assess.limits import Limit
 from aquabuf.assess.options import ALWAYS_ACID, Options
 from aquabuf.assess.sample.assess import Assessment
+from aquabuf.assess.sample.chain_steps import Chain
 from aquabuf.assess.sample.columns import result_columns
 from aquabuf.assess.sample.headline import RANK_BY
+from aquabuf.report.html.chain import chains_part
 from aquabuf.report.html.common import (
     INTERVAL,
     ROWS,
@@ -76,10 +78,12 @@ class AssessRows:
 
 
 def assess_page(tally: Tally, rows: AssessRows, options: Options, limits: Sequence[Limit], *, source: str, summary: str,
-                record: Mapping[str, Any], written: Iterable[str], drawings: Sequence[str] = ()) -> str:
+                record: Mapping[str, Any], written: Iterable[str], drawings: Sequence[str] = (),
+                chains: Sequence[Chain] = ()) -> str:
     """The page of a run; same run, same bytes.
 
-    summary : its text. record : its run.json. written : its files. drawings : figures as HTML.
+    summary : its text. record : its run.json. written : its files. drawings : figures as HTML. chains : of the worst
+    samples.
     """
     quantities = quantity_words(result_columns(options))
     head, *blocks = blocks_of(summary)
@@ -93,6 +97,8 @@ def assess_page(tally: Tally, rows: AssessRows, options: Options, limits: Sequen
         _groups(rows),
         section("Figures", gallery(drawings), name="figures"),
         *(_told(b) for b in told if not b.title.startswith(FOLDED)),
+        chains_part(chains, total=tally.assessed, what="samples", more=", and for the readings that each interval "
+                                                                       "comes from"),
         refused_part(refused, rows.refused),
         file_part("assess", written),
         *(folded(b) for b in told if b.title.startswith(FOLDED)),

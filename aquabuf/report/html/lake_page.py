@@ -10,6 +10,8 @@ import pandas as pd
 from aquabuf.assess.lake.columns import TO_PH_6, lake_columns
 from aquabuf.assess.lake.schemes import Scheme
 from aquabuf.assess.lake.survey import ALL_LAKES
+from aquabuf.assess.sample.chain_steps import Chain
+from aquabuf.report.html.chain import chains_part
 from aquabuf.report.html.common import (
     INTERVAL,
     ROWS,
@@ -43,10 +45,11 @@ TREND_TONES = {"no": "warn"}
 
 
 def lake_page(run: LakeRun, *, report: str, record: Mapping[str, Any], written: Iterable[str],
-              drawings: Sequence[str] = ()) -> str:
+              drawings: Sequence[str] = (), chains: Sequence[Chain] = ()) -> str:
     """The page of a survey; same run, same bytes.
 
-    report : its text. record : its run.json. written : its files. drawings : figures as HTML.
+    report : its text. record : its run.json. written : its files. drawings : figures as HTML. chains : of the lakes to
+    look at first.
     """
     head, *blocks = blocks_of(report)
     refused_block = next((b for b in blocks if b.title.startswith("Refused")), None)
@@ -62,6 +65,7 @@ def lake_page(run: LakeRun, *, report: str, record: Mapping[str, Any], written: 
         *(titled(b) for b in classes),
         _trends(run),
         *(titled(b) for b in told if b not in classes and not b.title.startswith(FOLDED)),
+        chains_part(chains, total=len(run.priorities), what="lakes"),
         refused_part(refused_block, refused),
         _warnings(run),
         file_part("lake", written),

@@ -37,8 +37,8 @@ class Link:
         return f'<a href="{quote(self.file, safe="")}">{shown_text(self.words)}</a>'
 
 
-def _cell(value: str | Link) -> str:
-    return value.html() if isinstance(value, Link) else shown_text(value)
+def _cell(value: str | Link, longest: int) -> str:
+    return value.html() if isinstance(value, Link) else shown_text(value, longest)
 
 
 def paragraph(words: str, *, soft: bool = False, link: Link | None = None) -> str:
@@ -109,18 +109,18 @@ class Column:
 
 
 def table(columns: Sequence[Column], rows: Iterable[Sequence[str | Link]], *, caption: str = "",
-          tones: Sequence[str] = (), sortable: bool = True) -> str:
+          tones: Sequence[str] = (), sortable: bool = True, longest: int = LONGEST_TEXT) -> str:
     """A table of texts and links; the first column names the rows.
 
-    tones : marks rows by color, so the rows must say it too.
+    tones : marks rows by color, so the rows must say it too. longest : letters of a cell that are shown.
     """
     lines = []
     for k, row in enumerate(rows):
         if len(row) != len(columns):
             raise InputError(f"row {k + 1} of a table must have {len(columns)} cells; found {len(row)}. Fill it up.")
         tone = f' class="{tones[k]}"' if k < len(tones) and tones[k] in ("stop", "warn") else ""
-        cells = [f'<th scope="row">{_cell(row[0])}</th>']
-        cells += [f"<td{c.kind}>{_cell(v)}</td>" for c, v in zip(columns[1:], row[1:], strict=True)]
+        cells = [f'<th scope="row">{_cell(row[0], longest)}</th>']
+        cells += [f"<td{c.kind}>{_cell(v, longest)}</td>" for c, v in zip(columns[1:], row[1:], strict=True)]
         lines.append(f"<tr{tone}>{''.join(cells)}</tr>")
     if not lines:
         return ""

@@ -8,6 +8,7 @@ from typing import Any
 
 import pandas as pd
 
+from aquabuf.assess.sample.chain_steps import Chain
 from aquabuf.assess.titration.assess import TitrationResult
 from aquabuf.assess.titration.choose import method_facts
 from aquabuf.assess.titration.findings import finding_facts
@@ -15,6 +16,7 @@ from aquabuf.assess.titration.options import ph_digits
 from aquabuf.assess.titration.solve import ACIDITY_END_POINTS
 from aquabuf.assess.titration.tables import NO_RESULT, REFUSED, WARNED, limit_words
 from aquabuf.assess.uncertainty import TO_COVERAGE
+from aquabuf.report.html.chain import chains_part
 from aquabuf.report.html.common import (
     INTERVAL,
     Kept,
@@ -67,10 +69,11 @@ class TitrationRows:
 
 
 def titration_page(tally: TitrationTally, rows: TitrationRows, *, source: str, summary: str, record: Mapping[str, Any],
-                   written: Iterable[str], drawings: Sequence[str] = ()) -> str:
+                   written: Iterable[str], drawings: Sequence[str] = (), chains: Sequence[Chain] = ()) -> str:
     """The page of a run; same run, same bytes.
 
-    summary : its text. record : its run.json. written : its files. drawings : figures as HTML.
+    summary : its text. record : its run.json. written : its files. drawings : figures as HTML. chains : of the
+    titrations to look at first.
     """
     head, *blocks = blocks_of(summary)
     refused = next((b for b in blocks if b.title.startswith("Refused")), None)
@@ -82,6 +85,7 @@ def titration_page(tally: TitrationTally, rows: TitrationRows, *, source: str, s
         section("Figures", gallery(drawings), name="figures"),
         *(titled(b) for b in told if b.title.startswith("Diagnosis")),
         _findings(rows),
+        chains_part(chains, total=tally.samples - tally.status[REFUSED], what="titrations"),
         refused_part(refused, rows.refused),
         *(titled(b) for b in told if not b.title.startswith(("Diagnosis", *FOLDED))),
         file_part("titration", written),

@@ -6,6 +6,7 @@ import pytest
 from page_reader import assert_stands_alone, read_page
 from run_table import TABLE
 
+from aquabuf.report.chains import ON_PAGE
 from aquabuf.report.html.common import OPEN_ROWS, ROWS, Kept, blocks_of, quantity_words, rule_words
 from aquabuf.report.run import OUTPUT_FILES
 from aquabuf.tables import read_table
@@ -133,7 +134,11 @@ def test_many_samples(run):
     assert len(reader.table("Sample")) == OPEN_ROWS
     assert max(values[name] for name in shown) <= sorted(values.values())[ROWS]
     assert f"The first {ROWS} of {len(values):,} samples" in page
-    assert len(page) < 300_000
+    before, chains = page.split('<section id="chains">')
+    chains, after = chains.split("</section>", 1)
+    assert len(before) + len(after) < 300_000
+    assert chains.count("<details") == ON_PAGE
+    assert len(chains) < ON_PAGE * 20_000
 
 
 def test_provenance_and_files(run):
