@@ -50,7 +50,8 @@ def run(plan: Path, folder: Path, draws: int | None, figure: bool, force: bool, 
     from aquabuf.report.dose_run import dose_plan
 
     with Screen("dose", quiet=quiet, as_json=as_json) as screen:
-        done = dose_plan(plan, folder, draws=draws, force=force, figure=figure, step=screen.step, tell=screen.tell)
+        done = dose_plan(plan, folder, draws=draws, force=force, figure=figure, step=screen.step, tell=screen.tell,
+                         show=screen.early)
         screen.show(done.text)
     if done.reason:
         raise click.ClickException(f"the plan does not hold. {done.reason}")

@@ -36,6 +36,7 @@ class Screen:
         self._quiet, self._as_json = quiet, as_json
         self._progress = Progress(f"aquabuf {command}", sys.stderr)
         self._summary: Mapping[str, Any] = {}
+        self._shown = ""
         self.step = self._progress.step
 
     def __enter__(self) -> Screen:
@@ -56,12 +57,22 @@ class Screen:
         """Keep the summary for programs."""
         self._summary = summary
 
+    def early(self, text: str) -> None:
+        """Print the beginning of the text while figures and page are still being made."""
+        if not (self._as_json or self._quiet):
+            self._shown = text
+            self._progress.close()
+            self._print(text)
+
     def show(self, text: str) -> None:
-        """Print the text of the run, or its summary as JSON, to stdout."""
+        """Print the text of the run, or what is left of it, or its summary as JSON, to stdout."""
         self._progress.close()
         if self._as_json:
             import json
 
             click.echo(json.dumps(self._summary, indent=1, ensure_ascii=False, allow_nan=False))
         elif not self._quiet:
-            click.echo(colored(text) if wants_color(sys.stdout, os.environ) else text, nl=False)
+            self._print(text.removeprefix(self._shown))
+
+    def _print(self, text: str) -> None:
+        click.echo(colored(text) if wants_color(sys.stdout, os.environ) else text, nl=False)

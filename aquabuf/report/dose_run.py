@@ -5,7 +5,7 @@ from __future__ import annotations
 import fnmatch
 import json
 import tomllib
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -16,10 +16,9 @@ from aquabuf.assess.plant.answer_json import answer_record
 from aquabuf.assess.plant.plan_file import read_plan
 from aquabuf.report.dose_sheet import dose_sheet
 from aquabuf.report.dose_tables import dose_tables, sweeps
-from aquabuf.report.files import OutputFolder
+from aquabuf.report.files import OutputFolder, sha256
 from aquabuf.report.html.dose_page import dose_page
 from aquabuf.report.machine import Tell, dose_machine, untold
-from aquabuf.report.run import sha256
 from aquabuf.report.summary import item
 from aquabuf.report.tables import GrowingTables
 from aquabuf.report.terminal import Step, silent
@@ -42,12 +41,16 @@ class DoseRun:
     reason: str
 
 
+def unseen(text: str) -> None:
+    """A place where nothing is shown."""
+
+
 def dose_plan(path: Path, folder: Path, *, force: bool = False, figure: bool = True, draws: int | None = None,
-              step: Step = silent, tell: Tell = untold) -> DoseRun:
+              step: Step = silent, tell: Tell = untold, show: Callable[[str], None] = unseen) -> DoseRun:
     """Solve the plan at `path` and write OUTPUT_FILES to `folder`, also where it does not hold.
 
     draws : replaces those of the plan; 0 leaves out what errors of readings and feeds do. step, tell : are told what is
-    being done, and the summary for programs.
+    being done, and the summary for programs. show : gets the sheet as soon as it is there, ahead of figures and page.
 
     Raises InputError or FileError where the plan cannot be read or worked out; nothing is written then, and an earlier
     result stays.
@@ -64,6 +67,7 @@ def dose_plan(path: Path, folder: Path, *, force: bool = False, figure: bool = T
         with GrowingTables(out, {}) as writer:
             for name, table in dose_tables(answer, record).items():
                 writer.add(name, table)
+        show(sheet)
         if figure:
             step("figures")
             _draw(answer, out)

@@ -12,7 +12,7 @@ from aquabuf.assess.sample.titrated import Titrated, titrated_by
 from aquabuf.errors import FileError, InputError
 from aquabuf.readings.long.shipped import shipped_map, shipped_names
 from aquabuf.readings.titration.paths import TitrationFiles
-from aquabuf.report.run import sha256
+from aquabuf.report.files import sha256
 
 __all__ = ["RunFiles", "options_from", "read_record", "titrations_of"]
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import hashlib
 import os
 import tempfile
 from collections.abc import Iterable
@@ -10,7 +11,7 @@ from types import TracebackType
 
 from aquabuf.errors import FileError
 
-__all__ = ["OutputFolder"]
+__all__ = ["OutputFolder", "sha256"]
 
 
 class OutputFolder:
@@ -99,3 +100,15 @@ class OutputFolder:
 
 def _why(error: OSError) -> str:
     return (error.strerror or "unknown reason").lower()
+
+
+def sha256(path: Path) -> str:
+    """Hash of a file. Raises FileError where it cannot be read."""
+    if path.is_dir():
+        raise FileError(f"{path.name} is a folder; a file is needed. Name the file in it.")
+    try:
+        with path.open("rb") as stream:
+            return hashlib.file_digest(stream, "sha256").hexdigest()
+    except OSError as error:
+        raise FileError(f"{path.name} cannot be read: {(error.strerror or 'unknown reason').lower()}. "
+                        f"Check the path and its permissions.") from None

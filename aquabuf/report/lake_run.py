@@ -41,12 +41,12 @@ from aquabuf.readings.result import Readings, join_readings
 from aquabuf.readings.source import open_any, resolve_map
 from aquabuf.readings.titration.paths import TitrationFiles
 from aquabuf.report.chains import ON_PAGE, first_lakes
-from aquabuf.report.files import OutputFolder
+from aquabuf.report.files import OutputFolder, sha256
 from aquabuf.report.html.lake_page import lake_page
 from aquabuf.report.lake_blocks import LakeRun
 from aquabuf.report.lake_summary import lake_report, lake_summary
 from aquabuf.report.machine import Tell, lake_machine, untold
-from aquabuf.report.run import FAILED_RUN_FILES, sha256
+from aquabuf.report.run import FAILED_RUN_FILES
 from aquabuf.report.tables import GrowingTables
 from aquabuf.report.terminal import Step, silent
 from aquabuf.tables import read_table

@@ -4,21 +4,21 @@ from __future__ import annotations
 
 from collections import Counter
 from collections.abc import Callable, Collection, Mapping
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import pandas as pd
 
-from aquabuf.assess.options import Options
 from aquabuf.assess.sample.headline import RANK_BY
-from aquabuf.assess.tank.design import Design
-from aquabuf.assess.titration.options import TitrationOptions
-from aquabuf.assess.titration.tables import NO_RESULT, OK, REFUSED, WARNED, titration_digits
-from aquabuf.report.lake_blocks import LakeRun
 from aquabuf.report.tables import result_digits, rounded
-from aquabuf.report.tally import Tally
-from aquabuf.report.tank_report import failing, headline
-from aquabuf.report.titration_tally import TitrationTally
+
+if TYPE_CHECKING:  # each command waits for its own room only
+    from aquabuf.assess.options import Options
+    from aquabuf.assess.tank.design import Design
+    from aquabuf.assess.titration.options import TitrationOptions
+    from aquabuf.report.lake_blocks import LakeRun
+    from aquabuf.report.tally import Tally
+    from aquabuf.report.titration_tally import TitrationTally
 
 __all__ = ["LISTED", "Tell", "assess_machine", "dose_machine", "lake_machine", "tank_machine", "titration_machine",
            "untold"]
@@ -34,7 +34,6 @@ LAKE_COLUMNS = ("rank", "sample_id", "row", "site", "region", "class", "class_pr
                 "exceedance_meq_m2_yr", "exceedance_probability", "episode_anc_ueq_l", "warnings", "next_step")
 LAKE_DIGITS = {"class_probability": 3, "anc_used_ueq_l": 1, "ph": 2, "exceedance_meq_m2_yr": 2,
                "exceedance_probability": 3, "episode_anc_ueq_l": 1}
-STATUSES = {OK: "ok", WARNED: "warned", NO_RESULT: "no_result", REFUSED: "refused"}
 
 Tell = Callable[[Mapping[str, Any]], None]
 
@@ -54,7 +53,10 @@ def assess_machine(tally: Tally, options: Options, record: Mapping[str, Any], wr
 def titration_machine(tally: TitrationTally, options: TitrationOptions, record: Mapping[str, Any],
                       written: Collection[str]) -> dict[str, Any]:
     """Summary of `aquabuf titration`."""
-    counts = {"titrations": tally.samples} | {name: int(tally.status[status]) for status, name in STATUSES.items()}
+    from aquabuf.assess.titration.tables import NO_RESULT, OK, REFUSED, WARNED, titration_digits
+
+    names = {OK: "ok", WARNED: "warned", NO_RESULT: "no_result", REFUSED: "refused"}
+    counts = {"titrations": tally.samples} | {name: int(tally.status[status]) for status, name in names.items()}
     shown = rounded(pd.DataFrame(tally.shown[:LISTED]).infer_objects(), titration_digits(options))
     verdict = CLEAR if counts["ok"] == tally.samples else WARNINGS
     return _summary(record, written, counts=counts, verdict=verdict, figures={
@@ -91,6 +93,8 @@ def dose_machine(answer: Mapping[str, Any], record: Mapping[str, Any], written: 
 def tank_machine(found: Design, design: Mapping[str, Any], record: Mapping[str, Any], written: Collection[str],
                  ) -> dict[str, Any]:
     """Summary of `aquabuf tank`; `design` is the content of design.json."""
+    from aquabuf.report.tank_report import failing, headline
+
     simulated, equal = design["simulation"] or {}, design["equalization"] or {}
     stages = design["stages"] or []
     counts = {"wastes": len(design["stream"]["wastes"]), "tanks": len(stages), "stops": len(design["stops"]),

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import hashlib
 import json
 from collections.abc import Callable, Mapping
 from dataclasses import asdict
@@ -17,11 +16,11 @@ from aquabuf.assess.options import Options
 from aquabuf.assess.sample.assess import Assessment, assess
 from aquabuf.assess.sample.columns import limit_quantities
 from aquabuf.assess.sample.titrated import Titrated, titrated_by
-from aquabuf.errors import FileError, InputError
+from aquabuf.errors import InputError
 from aquabuf.readings.source import open_any, resolve_map
 from aquabuf.readings.titration.paths import TitrationFiles
 from aquabuf.report.chains import WorstSamples
-from aquabuf.report.files import OutputFolder
+from aquabuf.report.files import OutputFolder, sha256
 from aquabuf.report.html.assess_page import AssessRows, assess_page
 from aquabuf.report.machine import Tell, assess_machine, untold
 from aquabuf.report.summary import summary_text
@@ -30,7 +29,7 @@ from aquabuf.report.tally import Tally
 from aquabuf.report.terminal import Step, silent
 from aquabuf.tables import read_table
 
-__all__ = ["OUTPUT_FILES", "assess_file", "sha256"]
+__all__ = ["OUTPUT_FILES", "assess_file"]
 
 OUTPUT_FILES = ("results.csv", "verdicts.csv", "checks.csv", "curves.csv", "rejected.csv", "report.html", "run.json",
                 "samples.png", "samples.svg")
@@ -126,18 +125,6 @@ def _draw(tally: Tally, curves: pd.DataFrame, out: OutputFolder, source: str) ->
 
     save_samples(tally, curves, {kind: out.part(f"samples.{kind}") for kind in ("png", "svg")}, source=source)
     return sample_drawings(tally, curves)
-
-
-def sha256(path: Path) -> str:
-    """Hash of a file. Raises FileError where it cannot be read."""
-    if path.is_dir():
-        raise FileError(f"{path.name} is a folder; a file is needed. Name the file in it.")
-    try:
-        with path.open("rb") as stream:
-            return hashlib.file_digest(stream, "sha256").hexdigest()
-    except OSError as error:
-        raise FileError(f"{path.name} cannot be read: {(error.strerror or 'unknown reason').lower()}. "
-                        f"Check the path and its permissions.") from None
 
 
 def _lines(path: Path) -> int:

@@ -16,9 +16,8 @@ from aquabuf.assess.tank.design import Design, design
 from aquabuf.assess.tank.design_json import design_record
 from aquabuf.assess.tank.job import Job
 from aquabuf.assess.tank.job_file import read_stream
-from aquabuf.report.files import OutputFolder
+from aquabuf.report.files import OutputFolder, sha256
 from aquabuf.report.machine import Tell, tank_machine, untold
-from aquabuf.report.run import sha256
 from aquabuf.report.summary import item
 from aquabuf.report.tables import GrowingTables
 from aquabuf.report.tank_report import failing, tank_report

@@ -15,10 +15,9 @@ from aquabuf.errors import InputError
 from aquabuf.readings.titration.paths import TitrationFiles
 from aquabuf.readings.titration.reader import iter_titrations
 from aquabuf.report.chains import FirstTitrations, amounts_of
-from aquabuf.report.files import OutputFolder
+from aquabuf.report.files import OutputFolder, sha256
 from aquabuf.report.html.titration_page import TitrationRows, rank_of, titration_page
 from aquabuf.report.machine import Tell, titration_machine, untold
-from aquabuf.report.run import sha256
 from aquabuf.report.tables import GrowingTables
 from aquabuf.report.terminal import Step, silent
 from aquabuf.report.titration_summary import titration_summary

@@ -285,3 +285,14 @@ def test_every_run_tells_its_steps(monkeypatch, tmp_path, command):
     assert shares == sorted(shares)
     assert all(0 < share <= 1 for share in shares)
     assert bool(shares) == (command == "assess")
+
+
+def test_the_sheet_is_shown_once(tmp_path):
+    """It comes ahead of figures and page; what follows at the end does not repeat it."""
+    done = CliRunner().invoke(main, ["dose", str(DATA / "plan_upland.toml"), "--draws", "0", "--no-figure", "--out",
+                                     str(tmp_path / "out")])
+    assert done.exit_code == 0
+    sheet = (tmp_path / "out" / "sheet.txt").read_text(encoding="utf-8")
+    assert done.stdout.startswith(sheet)
+    assert done.stdout[len(sheet):].strip().startswith("Written to out: ")
+    assert done.stdout.count("SET THE FEEDS") == 1

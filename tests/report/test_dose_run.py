@@ -195,3 +195,18 @@ def test_the_record_is_the_same_twice():
     """No draw of luck in the words."""
     answer, record = answered("upland")
     assert answer_record(answer) == record
+
+
+def test_the_sheet_is_there_before_figures_and_page(tmp_path):
+    """An operator does not wait for drawings; the files appear only when all is done."""
+    told = []
+
+    def show(text):
+        told.append(("sheet", text, (tmp_path / "out" / "sheet.txt").exists()))
+
+    done = dose_plan(Path(__file__).parents[2] / "field_data" / "plan_upland.toml", tmp_path / "out", draws=0, figure=False,
+                     step=lambda words, share=None: told.append((words,)), show=show)
+    assert [one[0] for one in told] == ["the plan being solved", "sheet", "page"]
+    assert done.text.startswith(told[1][1])
+    assert told[1][2] is False
+    assert (tmp_path / "out" / "sheet.txt").read_text(encoding="utf-8") == told[1][1]

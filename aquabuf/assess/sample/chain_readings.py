@@ -123,7 +123,9 @@ def uncertainty_steps(values: Values, u: Values, origin: Origin) -> Part:
         own_u = values.get(quantities()[name].u_name if name in quantities() else name.replace("_mol_l", "_u_mol_l"))
         given = own_u is not None and np.isfinite(own_u[0])
         words, source = _given(name, origin) if given else _default(name, origin)
-        percent = f" ({_percent(u[name][0] / value)} %)" if value and unit not in ("", "°C") else ""
+        with np.errstate(over="ignore"):
+            share = np.divide(u[name][0], value) if value else np.inf
+        percent = f" ({_percent(share)} %)" if np.isfinite(share) and unit not in ("", "°C") else ""
         steps.append(Step(label=label, value=six(float(u[name][0])), unit=f"{unit}{percent}".strip(),
                           words=words, source=source))
     return Part("Standard uncertainty of each reading", tuple(steps),
