@@ -6,7 +6,6 @@ numbers. Every mistake is named with its line.
 
 from __future__ import annotations
 
-import tomllib
 from collections.abc import Mapping
 from pathlib import Path
 from types import MappingProxyType
@@ -20,8 +19,9 @@ from aquabuf.assess.plant.plan_place import Place, shown_value
 from aquabuf.assess.plant.plan_steps import read_steps
 from aquabuf.assess.plant.plan_store import Told, read_product
 from aquabuf.assess.plant.plan_water import errors_of, read_water
+from aquabuf.assess.plant.toml_file import read_toml
 from aquabuf.assess.plant.toml_lines import toml_lines
-from aquabuf.errors import FileError, InputError
+from aquabuf.errors import InputError
 
 __all__ = ["SECTIONS", "read_plan"]
 
@@ -39,8 +39,7 @@ def read_plan(path: str | Path) -> Plan:
         Not TOML, or a key or value that cannot be used; the message names file, line, key and remedy.
     """
     path = Path(path)
-    text = _text(path)
-    content = _parsed(path.name, text)
+    text, content = read_toml(path, "plan file")
     top = Place(path.name, toml_lines(text), (), "top level")
     for name in content:
         if name not in SECTIONS:
@@ -62,24 +61,6 @@ def read_plan(path: str | Path) -> Plan:
         steps=steps, guards=guards, hold=_hold(top, content, head["use"], guards, told),
         digester=_digester(top, content, told), drift=_drift(top, content, path.parent, told),
         limits=_limits(top, content), assumptions=tuple(told.assumptions), notes=tuple(told.notes), file=path.name)
-
-
-def _text(path: Path) -> str:
-    try:
-        return path.read_text(encoding="utf-8-sig")
-    except (OSError, ValueError) as error:
-        reason = error.strerror if isinstance(error, OSError) and error.strerror else "not UTF-8 text"
-        raise FileError(f"the plan file {path.name} cannot be read: {reason}. Check the path.") from None
-
-
-def _parsed(file: str, text: str) -> dict[str, Any]:
-    try:
-        return tomllib.loads(text)
-    except tomllib.TOMLDecodeError as error:
-        raise InputError(f"{file} is not valid TOML: {error}. Correct that line.") from None
-    except (RecursionError, ValueError) as error:
-        reason = "brackets within brackets go too deep" if isinstance(error, RecursionError) else str(error)
-        raise InputError(f"{file} is not valid TOML: {reason}. Correct it.") from None
 
 
 def _place(top: Place, name: str) -> Place:

@@ -5,7 +5,6 @@ Numbers with a dimension are strings with their unit, as in plan files. Every mi
 
 from __future__ import annotations
 
-import tomllib
 from collections.abc import Mapping, Sequence
 from pathlib import Path
 from types import MappingProxyType
@@ -16,6 +15,7 @@ from aquabuf.assess.plant.plan_keys import Checked, check_keys, plan_keys
 from aquabuf.assess.plant.plan_place import Place
 from aquabuf.assess.plant.plan_store import Told, read_product
 from aquabuf.assess.plant.store import Stocked
+from aquabuf.assess.plant.toml_file import read_toml
 from aquabuf.assess.plant.toml_lines import toml_lines
 from aquabuf.assess.tank.job import TIME_RULE, Arrival, Job, Site, Trial, Window, Wishes
 from aquabuf.assess.tank.job_wastes import beside, not_there, read_wastes
@@ -41,8 +41,7 @@ def read_stream(path: str | Path) -> Job:
         Not TOML, or a key or value that cannot be used; the message names file, line, key and remedy.
     """
     path = Path(path)
-    text = _text(path)
-    content = _parsed(path.name, text)
+    text, content = read_toml(path, "stream file")
     top = Place(path.name, toml_lines(text), (), "top level")
     for name in content:
         if name not in SECTIONS:
@@ -65,24 +64,6 @@ def read_stream(path: str | Path) -> Job:
         acid=use.get("acid"), site=_site(top, content, told), wishes=_wishes(top, content, told, window),
         trial=trial, profile=profile, assumptions=tuple(told.assumptions),
         notes=tuple(told.notes), file=path.name)
-
-
-def _text(path: Path) -> str:
-    try:
-        return path.read_text(encoding="utf-8-sig")
-    except (OSError, ValueError) as error:
-        reason = error.strerror if isinstance(error, OSError) and error.strerror else "not UTF-8 text"
-        raise FileError(f"the stream file {path.name} cannot be read: {reason}. Check the path.") from None
-
-
-def _parsed(file: str, text: str) -> dict[str, Any]:
-    try:
-        return tomllib.loads(text)
-    except tomllib.TOMLDecodeError as error:
-        raise InputError(f"{file} is not valid TOML: {error}. Correct that line.") from None
-    except (RecursionError, ValueError) as error:
-        reason = "brackets within brackets go too deep" if isinstance(error, RecursionError) else str(error)
-        raise InputError(f"{file} is not valid TOML: {reason}. Correct it.") from None
 
 
 def _section(top: Place, content: Mapping[str, Any], name: str, told: Told, *, needed: bool = False) -> Checked:

@@ -2,13 +2,9 @@
 
 from __future__ import annotations
 
-import io
-import warnings
-
 import matplotlib
 import numpy as np
 from matplotlib.axes import Axes
-from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.figure import Figure
 
 from aquabuf.assess.plant.answer import Answer
@@ -18,7 +14,7 @@ from aquabuf.assess.plant.steps.blend import Blend
 from aquabuf.assess.plant.train import Passed
 from aquabuf.report.dose_ladder import ladder_key, plot_ladder
 from aquabuf.report.dose_lines import sentence
-from aquabuf.report.dose_page import METADATA, PAGE_STYLE, text_width
+from aquabuf.report.dose_page import PAGE_STYLE, text_width
 from aquabuf.report.dose_panels import (
     SMALL,
     TRAIN_KEY,
@@ -36,6 +32,7 @@ from aquabuf.report.dose_panels import (
 )
 from aquabuf.report.dose_season import plot_blend, plot_season_dose, plot_season_ph, season_key
 from aquabuf.report.dose_tables import sweeps
+from aquabuf.report.html.canvas import axes_at, blank, svg_of
 from aquabuf.report.html.parts import drawing, gallery
 
 __all__ = ["dose_drawings"]
@@ -60,24 +57,8 @@ def dose_drawings(answer: Answer) -> tuple[str, ...]:
 # ---------------------------------------------------------------- drawing
 
 
-def _figure(wide: float, high: float) -> Figure:
-    figure = Figure(figsize=(wide, high))
-    FigureCanvasAgg(figure)
-    return figure
-
-
 def _axes(figure: Figure, top: float, height: float, left: float = LEFT, right: float = RIGHT) -> Axes:
-    """Axes over the width of a figure, by their top and height in inches."""
-    wide, high = figure.get_size_inches()
-    return figure.add_axes((left / wide, 1.0 - (top + height) / high, (wide - left - right) / wide, height / high))
-
-
-def _svg(figure: Figure) -> str:
-    out = io.BytesIO()
-    with warnings.catch_warnings():
-        warnings.filterwarnings("ignore", "Glyph")  # a name in letters that the font lacks is drawn as boxes
-        figure.savefig(out, format="svg", dpi=150, metadata=METADATA["svg"])
-    return out.getvalue().decode("utf-8")
+    return axes_at(figure, top, height, left=left, right=right)
 
 
 # ---------------------------------------------------------------- panels
@@ -85,9 +66,9 @@ def _svg(figure: Figure) -> str:
 
 def _ladder(answer: Answer) -> str:
     with matplotlib.rc_context(PAGE_STYLE):
-        figure = _figure(NARROW, HIGH)
+        figure = blank(NARROW, HIGH)
         plot_ladder(answer, ax=_axes(figure, 0.45, HIGH - 0.45 - BOTTOM, right=0.35))
-        svg = _svg(figure)
+        svg = svg_of(figure)
     carbon, alkalinity = find_quantity("dic"), find_quantity("alkalinity")
     rows = "; ".join(f"{r['name']}: {r[carbon.column]:.3f} {carbon.unit} of carbon, {r[alkalinity.column]:.1f} "
                      f"{alkalinity.unit}" for r in step_rows(answer))
@@ -100,11 +81,11 @@ def _response(answer: Answer) -> list[str]:
     if curve is None:
         return []
     with matplotlib.rc_context(PAGE_STYLE):
-        figure = _figure(NARROW, HIGH)
+        figure = blank(NARROW, HIGH)
         room = HIGH - TOP - BOTTOM - GAP
         upper, lower = _axes(figure, TOP, 0.68 * room), _axes(figure, TOP + 0.68 * room + GAP, 0.32 * room)
         plot_response(answer, curve, ax=upper, below=lower)
-        svg = _svg(figure)
+        svg = svg_of(figure)
     dose, ph, intensity = smooth_response(answer, curve)
     least = int(np.nanargmin(intensity))
     alt = (f"pH behind {curve.step} against the dose of {curve.product}: {ph[0]:.2f} with none, {curve.wanted_ph:.2f} "
@@ -118,10 +99,10 @@ def _faults(answer: Answer) -> list[str]:
         return []
     with matplotlib.rc_context(PAGE_STYLE):
         room = HEAD_HIGH + FEED_HIGH * len(feeds_at_fault(answer))
-        figure = _figure(NARROW, TOP + room + BOTTOM)
+        figure = blank(NARROW, TOP + room + BOTTOM)
         names = max(text_width(name, SMALL) for name in fault_names(answer)) + 0.15
         plot_faults(answer, ax=_axes(figure, TOP, room, left=names))
-        svg = _svg(figure)
+        svg = svg_of(figure)
     said = "; ".join(f"{f.product.name} in {f.step} {f.case}: pH {float(f.ph_behind[0]):.2f} in place of "
                      f"{float(f.ph_wanted[0]):.2f}" for f in answer.faults)
     return [drawing(svg, name="faults", alt=f"pH right behind the step with a feed at fault. {said}.",
@@ -138,10 +119,10 @@ def _works(answer: Answer) -> str:
         labels = train_labels(answer, wide - LEFT - RIGHT)
         below = label_height(labels) + 0.1
         room = HIGH - TOP - BOTTOM - GAP
-        figure = _figure(wide, TOP + room + GAP + below)
+        figure = blank(wide, TOP + room + GAP + below)
         upper, lower = _axes(figure, TOP, 0.6 * room), _axes(figure, TOP + 0.6 * room + GAP, 0.4 * room)
         plot_train(answer, labels, ax=upper, below=lower)
-        svg = _svg(figure)
+        svg = svg_of(figure)
     ph, alkalinity = find_quantity("ph"), find_quantity("alkalinity")
     rows = "; ".join(f"{r['name']}: pH {r[ph.column]:.2f}, alkalinity {r[alkalinity.column]:.1f} {alkalinity.unit}"
                      for r in step_rows(answer))
@@ -155,13 +136,13 @@ def _season(answer: Answer) -> list[str]:
         return []
     count, each = len(season.doses), 1.5
     with matplotlib.rc_context(PAGE_STYLE):
-        figure = _figure(WIDE, (each + TOP) * (count + 1) + GAP * count + BOTTOM)
+        figure = blank(WIDE, (each + TOP) * (count + 1) + GAP * count + BOTTOM)
         for k in range(count):
             ax = _axes(figure, TOP + k * (each + TOP + GAP), each)
             plot_season_dose(season, k, ax=ax)
             ax.tick_params(labelbottom=False)
         plot_season_ph(answer, ax=_axes(figure, TOP + count * (each + TOP + GAP), each))
-        svg = _svg(figure)
+        svg = svg_of(figure)
     said = " ".join(sentence(words) for words in season.words())
     return [drawing(svg, name="season", alt=f"Doses and pH row by row of the season. {said}",
                     caption=season_key(season))]
@@ -170,11 +151,11 @@ def _season(answer: Answer) -> list[str]:
 def _blend(k: int, passed: Passed) -> str:
     assert isinstance(passed.step, Blend)
     with matplotlib.rc_context(PAGE_STYLE):
-        figure = _figure(NARROW, HIGH + 0.4)
+        figure = blank(NARROW, HIGH + 0.4)
         room = 0.5 * (HIGH + 0.4 - 2.0 * TOP - BOTTOM - GAP)
         plot_blend(passed, ax=_axes(figure, TOP, room, left=0.75),
                    below=_axes(figure, 2.0 * TOP + GAP + room, room, left=0.75))
-        svg = _svg(figure)
+        svg = svg_of(figure)
     sweep, potential = passed.step.sweep(passed.before), find_quantity("ccpp")
     ends = "; ".join(
         f"{100.0 * float(sweep.share[i]):.0f} %: pH {float(sweep.ph[i, 0]):.2f}, precipitation potential "

@@ -2,22 +2,20 @@
 
 from __future__ import annotations
 
-import io
-import warnings
 from collections.abc import Callable
 
 import matplotlib
 import numpy as np
 from matplotlib.axes import Axes
-from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.figure import Figure
 
 from aquabuf.assess.plant.feed import shown
 from aquabuf.assess.tank.design import Design
 from aquabuf.assess.tank.trial import FAULT_S, MIN_S, Trial
 from aquabuf.report.dose_lines import sentence
-from aquabuf.report.dose_page import METADATA, PAGE_STYLE, text_width
+from aquabuf.report.dose_page import PAGE_STYLE, text_width
 from aquabuf.report.dose_panels import SMALL
+from aquabuf.report.html.canvas import axes_at, blank, svg_of
 from aquabuf.report.html.parts import drawing, gallery
 from aquabuf.report.tank_panels import (
     PERCENT,
@@ -78,33 +76,17 @@ def tank_drawings(design: Design) -> tuple[str, ...]:
 # ---------------------------------------------------------------- drawing
 
 
-def _figure(wide: float, high: float) -> Figure:
-    figure = Figure(figsize=(wide, high))
-    FigureCanvasAgg(figure)
-    return figure
-
-
 def _axes(figure: Figure, top: float, height: float, left: float = LEFT, right: float = RIGHT) -> Axes:
-    """Axes over the width of a figure, by their top and height in inches."""
-    wide, high = figure.get_size_inches()
-    return figure.add_axes((left / wide, 1.0 - (top + height) / high, (wide - left - right) / wide, height / high))
-
-
-def _svg(figure: Figure) -> str:
-    out = io.BytesIO()
-    with warnings.catch_warnings():
-        warnings.filterwarnings("ignore", "Glyph")  # a name in letters that the font lacks is drawn as boxes
-        figure.savefig(out, format="svg", dpi=150, metadata=METADATA["svg"])
-    return out.getvalue().decode("utf-8")
+    return axes_at(figure, top, height, left=left, right=right)
 
 
 def _single(draw: Callable[[Axes], object], *, wide: float = NARROW, high: float = HIGH, top: float = TOP,
             left: float = LEFT) -> str:
     """One panel as SVG text."""
     with matplotlib.rc_context(PAGE_STYLE):
-        figure = _figure(wide, high)
+        figure = blank(wide, high)
         draw(_axes(figure, top, high - top - BOTTOM, left))
-        return _svg(figure)
+        return svg_of(figure)
 
 
 # ---------------------------------------------------------------- the design
@@ -136,9 +118,9 @@ def _train(design: Design) -> str:
     with matplotlib.rc_context(PAGE_STYLE):
         width = WIDE - 2.0 * RIGHT
         high = train_height(design, width) + 0.1
-        figure = _figure(WIDE, high)
+        figure = blank(WIDE, high)
         plot_train(design, ax=_axes(figure, 0.05, high - 0.1, RIGHT, RIGHT))
-        svg = _svg(figure)
+        svg = svg_of(figure)
     return drawing(svg, name="train-drawn", alt=f"The train: {'; '.join([*ahead, *tanks])}.",
                    caption="The train. Filled arrow: base, open arrow: acid; dashed: corrects what the other overdoes.")
 
@@ -170,12 +152,12 @@ def _sensitivity(design: Design) -> str:
     with matplotlib.rc_context(PAGE_STYLE):
         names = max(text_width(str(n), SMALL) for n in changes["change"]) + 0.25
         high = TOP + BOTTOM + ROW_HIGH * 1.15 * (len(changes) + 1)
-        figure = _figure(NARROW, high)
+        figure = blank(NARROW, high)
         half = 0.5 * (NARROW - names - 2.0 * RIGHT)
         room = high - TOP - BOTTOM
         plot_sensitivity(design, ax=_axes(figure, TOP, room, names, NARROW - names - half),
                          beside=_axes(figure, TOP, room, NARROW - RIGHT - half))
-        svg = _svg(figure)
+        svg = svg_of(figure)
     return drawing(svg, name="changes", alt=f"Demand and tolerance if one thing is not as taken. {said}.",
                    caption="If one thing is not as taken.")
 
@@ -193,7 +175,7 @@ def _course(design: Design, trial: Trial) -> str:
         panels.append((COURSE_HIGH["reagent"],
                        lambda ax, k=k: plot_reagent(design, trial, k, ax=ax)))  # type: ignore[misc]
     with matplotlib.rc_context(PAGE_STYLE):
-        figure = _figure(WIDE, sum(high + TOP for high, _ in panels) + BOTTOM)
+        figure = blank(WIDE, sum(high + TOP for high, _ in panels) + BOTTOM)
         top, right = 0.0, TANK_NAMES if len(design.layout.stages) > 1 else RIGHT
         for k, (high, draw) in enumerate(panels):
             ax = _axes(figure, top + TOP, high - 0.04, LEFT + 0.1, right)
@@ -203,7 +185,7 @@ def _course(design: Design, trial: Trial) -> str:
             else:
                 ax.set_xlabel(f"time [{time_unit(trial)[1]}]")
             top += high + TOP
-        svg = _svg(figure)
+        svg = svg_of(figure)
     course, flow, lack = trial.course, trial.inflow.flow_m3_h[:, 0], strength(design, trial)
     tanks = "; ".join(f"{s.name} pH {float(ph.min()):.2f} to {float(ph.max()):.2f}"
                       for s, ph in zip(design.layout.stages, course.ph[:, :, 0], strict=True))
