@@ -188,6 +188,8 @@ def stages(found: Design, record: Record) -> str:
         lines.append(sentence(f"volumes: {layout.unequal_words}"))
     aid = record["stage_choice"]["bicarbonate_instead"]
     lines.append(sentence(f"bicarbonate in place of the last tank: {aid}") if aid else "")
+    trim, better = record["stage_choice"]["trim_instead"], record["stage_choice"]["tank_or_aid"]
+    lines.append(sentence(f"a weaker trim reagent in place of it: {trim}. Of the three: {better}") if trim else "")
     for s in record["stages"]:
         lines += [sentence(s[key]) for key in ("residence_rule", "residence_conflict") if s[key]]
     for s, stage in zip(record["stages"], layout.stages, strict=True):

@@ -8,6 +8,7 @@ from typing import Any
 
 import numpy as np
 
+from aquabuf.assess.tank.aids import aids_words
 from aquabuf.assess.tank.basis import Need
 from aquabuf.assess.tank.demand import Demand
 from aquabuf.assess.tank.design import Design
@@ -104,9 +105,11 @@ def _equalization(design: Design) -> dict[str, Any]:
 
 
 def _choice(design: Design) -> dict[str, Any]:
-    c, aid = design.layout.choice, design.layout.aid
+    c, aid, trim = design.layout.choice, design.layout.aid, design.layout.trim
     return {"tanks": c.tanks, "why": c.words, "reaches": c.reaches, "left_eq_l": c.left_eq_l,
             "tolerance_eq_l": c.tolerance_eq_l, "bicarbonate_instead": None if aid is None else aid.words,
+            "trim_instead": None if trim is None else trim.words,
+            "tank_or_aid": None if trim is None else aids_words(aid, trim),
             "rules": [{"rule": o.rule.key, "tanks": o.tanks or None, "at_least": o.at_least, "words": o.words,
                        "source": o.source} for o in c.opinions]}
 

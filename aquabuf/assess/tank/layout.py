@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from aquabuf.assess.plant.feed import shown
 from aquabuf.assess.plant.storage import least_feeder_size
 from aquabuf.assess.tank.ahead import Equalization, equalization_of
-from aquabuf.assess.tank.aids import BufferAid, bicarbonate_aid
+from aquabuf.assess.tank.aids import BufferAid, TrimAid, bicarbonate_aid, trim_aid
 from aquabuf.assess.tank.basis import L_PER_M3, NEVER, Basis, Need, amounts_of, lacking_words, needs_of
 from aquabuf.assess.tank.feed import (
     Accuracy,
@@ -94,8 +94,8 @@ class Stage:
 class Layout:
     """The whole train. needs : after equalization. peak_m3_h, mean_m3_h : flow through the tanks.
 
-    curve : the waste where its need is largest against what the window tolerates. aid : bicarbonate instead of a tank,
-    None where it is of no use.
+    curve : the waste where its need is largest against what the window tolerates. aid, trim : bicarbonate, and a
+    weaker trim reagent, in place of the last tank; None with one tank, or for a trim that is no liquid.
     """
 
     equalization: Equalization
@@ -107,6 +107,7 @@ class Layout:
     peak_m3_h: float
     mean_m3_h: float
     aid: BufferAid | None
+    trim: TrimAid | None
     unequal_words: str
 
 
@@ -184,8 +185,16 @@ def layout_of(basis: Basis) -> Layout:
                             vessel=round_vessel(v, site.depth_m, foams=foams), mixer=mixer(v, peak), feeds=feeds))
     aid = None if choice.tanks < 2 else bicarbonate_aid(curve, window.low, window.high, site.feed_error,
                                                         choice.tanks - 1)
+    trim = None if choice.tanks < 2 or not np.isfinite(reagent.reacting_eq_l) else trim_aid(
+        curve, window, site.feed_error, reagent.reacting_eq_l, goes_in_eq_l=_into_last_but_one(curve, choice, window))
     return Layout(equalization=eq, choice=choice, curve=curve, window=window, needs=needs, stages=tuple(stages),
-                  peak_m3_h=peak, mean_m3_h=mean, aid=aid, unequal_words=why)
+                  peak_m3_h=peak, mean_m3_h=mean, aid=aid, trim=trim, unequal_words=why)
+
+
+def _into_last_but_one(curve: DemandCurve, choice: StageChoice, window: Window) -> float:
+    """Demand that the last tank would see if the train were one tank shorter. [eq/L]"""
+    before = curve.base_eq_l if choice.tanks < 3 else float(curve.base_at(choice.set_points[-3]))
+    return float(curve.base_at(window.aim)) - before
 
 
 def _check_outside(basis: Basis, eq: Equalization, course: _Course) -> None:

@@ -269,3 +269,30 @@ def test_daily_cycle_is_evened_out():
     assert found.flow_m3 == pytest.approx(24.0 / np.pi * 0.6 * 6.0, rel=0.02)
     assert found.draw_m3_h == pytest.approx(6.0, rel=0.01)
     assert found.out.time_s[-1] < 14.0 * DAY_S
+
+
+# ---------------------------------------------------------------- what beats another tank
+
+
+def test_trim_reagent_in_place_of_the_last_tank():
+    """Two tanks: the trim covers the error of the whole demand both ways, 2 e D, and leaves e of that."""
+    basis, found = laid(steady(strong(-0.1)), wishes={"stages": 2})
+    demand = float(basis.chem.readout.base_at(basis.aim_ph, [1.0, 0.0])) + 0.1
+    assert_allclose(found.trim.span_eq_l, 2.0 * 0.01 * demand, rtol=1e-6)
+    assert_allclose(found.trim.left_eq_l, 0.01 * 2.0 * 0.01 * demand, rtol=1e-6)
+    assert found.trim.works == (found.trim.left_eq_l <= found.window.tolerance_eq_l(found.curve))
+
+
+def test_trim_reagent_of_a_longer_train():
+    """Three tanks: the tank that it would stand in sees what the first one passes on."""
+    basis, found = laid(steady(strong(-0.1)), wishes={"stages": 3})
+    at = [float(basis.chem.readout.base_at(ph, [1.0, 0.0])) for ph in (found.choice.set_points[0], basis.aim_ph)]
+    assert_allclose(found.trim.span_eq_l, 2.0 * 0.01 * (at[1] - at[0]), rtol=1e-3)
+
+
+def test_no_trim_reagent_for_one_tank_or_a_gas():
+    """Nothing to do without; a gas is not thinned."""
+    assert laid(steady(bicarbonate()), wishes={"stages": 1})[1].trim is None
+    _, gas = laid(steady(strong(0.02)), reagents={"gas": GAS}, base=None, acid="gas", wishes={"stages": 2},
+                  window=(6.5, 9.0))
+    assert gas.trim is None
